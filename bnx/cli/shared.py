@@ -1,0 +1,179 @@
+"""What several commands share: common options, settings from options, and what goes to standard error."""
+
+import os
+import sys
+from collections.abc import Callable, Collection, Iterator, Sequence
+from contextlib import contextmanager
+from dataclasses import fields
+from typing import Annotated, Any
+
+import typer
+from rich.console import Console
+from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeElapsedColumn
+
+from bnx.classifier import Classifier
+from bnx.cli.plain import one_line
+from bnx.errors import SettingError
+from bnx.formats.evidence import check_evidence
+from bnx.formats.structure_json import classifier_of, read_structure
+from bnx.independence import TESTS
+from bnx.multiplicity import METHODS as ADJUSTMENTS
+from bnx.reading import Source
+from bnx.recipe import Recipe
+
+__all__ = [
+    "Adjust",
+    "Alpha",
+    "Bins",
+    "Categorical",
+    "ClassColumn",
+    "Data",
+    "Ignore",
+    "Jobs",
+    "JsonOut",
+    "Keep",
+    "MaxLevels",
+    "Missing",
+    "Negligible",
+    "Numeric",
+    "Overwrite",
+    "Quiet",
+    "StructureFile",
+    "Test",
+    "listed",
+    "opened",
+    "progress_bar",
+    "recipe_of",
+    "say",
+    "threads",
+]
+
+Columns = list[str] | None
+
+Data = Annotated[
+    str,
+    typer.Argument(
+        metavar="DATA", help="CSV or TSV (also .gz, .zst), Parquet file or folder, Arrow file; - for standard input."
+    ),
+]
+StructureFile = Annotated[str, typer.Argument(metavar="NAME.json", help="A structure file of bnx learn or bnx export.")]
+ClassColumn = Annotated[str, typer.Option("--class", metavar="COL", help="The column to classify by.")]
+Numeric = Annotated[Columns, typer.Option("--numeric", metavar="COL,...", help="Treat columns as numeric.")]
+Categorical = Annotated[
+    Columns, typer.Option("--categorical", metavar="COL,...", help="Treat columns of numbers as levels.")
+]
+Ignore = Annotated[Columns, typer.Option("--ignore", metavar="COL,...", help="Leave columns out.")]
+Keep = Annotated[
+    Columns,
+    typer.Option("--keep", metavar="COL,...", help="Keep columns that would be left out; 'all' for every one."),
+]
+Missing = Annotated[
+    str,
+    typer.Option("--missing", metavar="level|drop", help="Blank cells: make them a level, or drop their records."),
+]
+MaxLevels = Annotated[
+    int, typer.Option("--max-levels", metavar="N", help="Levels kept per column; rarer ones are pooled.")
+]
+Bins = Annotated[
+    str,
+    typer.Option("--bins", metavar="RULE", help="Cut points of numeric columns: auto, mdl, frequency:K or width:K."),
+]
+Test = Annotated[str, typer.Option("--test", metavar="|".join(TESTS), help="Test of independence.")]
+Adjust = Annotated[str, typer.Option("--adjust", metavar="|".join(ADJUSTMENTS), help="Correction for many pairs.")]
+Alpha = Annotated[float, typer.Option("--alpha", metavar="P", help="Level of the tests.")]
+Negligible = Annotated[
+    float, typer.Option("--negligible", metavar="BITS", help="Bits given the class that do not matter.")
+]
+Jobs = Annotated[
+    int, typer.Option("--jobs", metavar="N", help="Threads; 0 for one per processor. Results do not depend on it.")
+]
+Quiet = Annotated[bool, typer.Option("--quiet", help="No progress and no notes on standard error.")]
+JsonOut = Annotated[bool, typer.Option("--json", help="Print JSON instead of a table.")]
+Overwrite = Annotated[bool, typer.Option("--overwrite", help="Replace what an earlier run wrote.")]
+
+
+def listed(option: str, values: Sequence[str] | None, known: Collection[str] = ()) -> tuple[str, ...]:
+    """Split what may be given as several options, as a comma-separated list, or as both.
+
+    A value that is a known name, or two of them joined by a colon, is taken whole whatever signs it holds.
+
+    Raises:
+        SettingError: a value names nothing.
+    """
+    found: list[str] = []
+    for value in values or ():
+        parts = [value] if _is_whole(value, known) else [part.strip() for part in value.split(",") if part.strip()]
+        if not parts:
+            raise SettingError(f"--{option}: {value!r} names nothing; give one or more names, or drop the option")
+        found += parts
+    return tuple(found)
+
+
+def _is_whole(value: str, known: Collection[str]) -> bool:
+    """Tell whether a value is a known name or a pair of them, so that its commas are no separators."""
+    colons = [place for place, sign in enumerate(value) if sign == ":"]
+    return value in known or any(value[:place] in known and value[place + 1 :] in known for place in colons)
+
+
+def recipe_of(ctx: typer.Context, source: Source) -> Recipe:
+    """Take the settings from the options of a command, which have the names of the fields.
+
+    Raises:
+        SettingError: a setting cannot be used.
+    """
+    settings: dict[str, Any] = {}
+    for field in fields(Recipe):
+        value = ctx.params.get(field.name)
+        if isinstance(value, list | tuple):
+            value = listed(field.name, value, source.columns) or None
+        if value is not None:
+            settings[field.name] = value
+    return Recipe(**settings)
+
+
+def opened(path: str) -> tuple[dict[str, Any], Classifier]:
+    """Read a structure file and everything in it that a command may show.
+
+    Raises:
+        DataError, FormatError: there is no such file, or it is not what it claims to be.
+    """
+    document = read_structure(path)
+    classifier = classifier_of(document, path)
+    check_evidence(document, path)
+    return document, classifier
+
+
+def threads(jobs: int) -> int:
+    """Turn the option into a number of threads.
+
+    Raises:
+        SettingError: the number is negative.
+    """
+    if jobs < 0:
+        raise SettingError(f"--jobs: {jobs} cannot be used; give a number of threads, or 0 for one per processor")
+    usable = len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count()
+    return jobs or usable or 1
+
+
+def say(sentence: str, quiet: bool = False) -> None:
+    """Write a note to standard error."""
+    if not quiet:
+        typer.echo(one_line(sentence), err=True)
+
+
+@contextmanager
+def progress_bar(quiet: bool) -> Iterator[Callable[[str, int, int], None]]:
+    """Show one bar per stage on standard error while the block runs, if it is a terminal."""
+    if quiet or not sys.stderr.isatty():
+        yield lambda stage, done, total: None
+        return
+    columns = (TextColumn("{task.description:<20}"), BarColumn(), MofNCompleteColumn(), TimeElapsedColumn())
+    with Progress(*columns, console=Console(stderr=True), transient=True) as bar:
+        tasks: dict[str, Any] = {}
+
+        def tell(stage: str, done: int, total: int) -> None:
+            if stage not in tasks:
+                tasks[stage] = bar.add_task(stage, total=total)
+            bar.update(tasks[stage], completed=done, total=total)
+
+        yield tell

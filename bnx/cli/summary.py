@@ -1,0 +1,137 @@
+"""The one screen that ``bnx learn`` prints."""
+
+import textwrap
+from collections.abc import Mapping
+from typing import Any
+
+from bnx.text import aligned, count_of, fixed, quoted, signed
+
+__all__ = ["summary"]
+
+
+WIDTH = 120
+
+
+def summary(document: Mapping[str, Any], output: str) -> str:
+    """Say in one screen what a run found out."""
+    parts = [_head(document), [_table(document)], _legend(document), _held_out(document), _advice(document)]
+    return "\n\n".join("\n".join(part) for part in [*parts, [_files(document, output)]] if part)
+
+
+def _wrapped(sentence: str) -> str:
+    return textwrap.fill(sentence, WIDTH, break_long_words=False, break_on_hyphens=False)
+
+
+def _head(document: Mapping[str, Any]) -> list[str]:
+    first = document["structures"][0]
+    shares = ", ".join(
+        f"{level} {sum(line) / sum(map(sum, first['confusion'])):.0%}"
+        for level, line in zip(document["class_levels"], first["confusion"], strict=True)
+    )
+    numeric = sum(one["numeric"] for one in document["schema"])
+    line = (
+        f"{document['source']}   {count_of(document['rows'], 'row')}   class {document['class']}: {shares}   "
+        f"{count_of(len(document['attributes']), 'attribute')} ({numeric} numeric)"
+    )
+    return [line, *(_wrapped(f"left out: {one['name']} ({one['reason']})") for one in document["left_out"])]
+
+
+def _ranked(document: Mapping[str, Any]) -> list[Mapping[str, Any]]:
+    return sorted(document["structures"], key=lambda one: (one["log_loss"] is None, one["log_loss"]))
+
+
+def _table(document: Mapping[str, Any]) -> str:
+    against = f"against {document['settings']['baseline']}, bits"
+    header = ("structure", "edges", "params", "log loss, bits", against, "p", *_SCORES, "temp.")
+    return aligned(header, [_row(one, document) for one in _ranked(document)])
+
+
+_SCORES = ("Brier", "accuracy", "AUC", "calib.")
+
+
+def _bits(loss: float | None) -> str:
+    return "infinite" if loss is None else fixed(loss)
+
+
+def _scores(one: Mapping[str, Any]) -> tuple[str, ...]:
+    return (fixed(one["brier"]), fixed(one["accuracy"]), fixed(one["auc"]), fixed(one["calibration_error"]))
+
+
+def _row(one: Mapping[str, Any], document: Mapping[str, Any]) -> tuple[str, ...]:
+    against = one["against_baseline"]
+    difference = (
+        ""
+        if against["difference"] is None
+        else (f"{signed(against['difference'])} [{signed(against['interval'][0])}, {signed(against['interval'][1])}]")
+    )
+    error = "" if one["log_loss_se"] is None else f" +- {fixed(one['log_loss_se'])}"
+    p = "" if against["p_value"] is None else "<.001" if against["p_value"] < 0.001 else fixed(against["p_value"])
+    mark = "*" if one["name"] == document["recommended"]["name"] else " "
+    return (
+        f"{mark} {one['name']}",
+        str(len(one["edges"])),
+        f"{one['free_parameters']:,}",
+        _bits(one["log_loss"]) + error,
+        difference,
+        p,
+        *_scores(one),
+        fixed(one["temperature"], 2),
+    )
+
+
+def _legend(document: Mapping[str, Any]) -> list[str]:
+    """Say the names in words, and the short headings in full."""
+    names = "; ".join(f"{one['name']}: {one['words']}" for one in _ranked(document) if one["words"] != one["name"])
+    columns = "interval 95 %; p adjusted over the structures; calib.: calibration error; temp.: temperature"
+    return [_wrapped(part + ".") for part in (names, columns) if part]
+
+
+def _held_out(document: Mapping[str, Any]) -> list[str]:
+    """Lay out the scores on a table that took no part, if there is one."""
+    scored = [one for one in _ranked(document) if "holdout" in one]
+    if not scored:
+        return []
+    rows = [(f"  {one['name']}", _bits(one["holdout"]["log_loss"]), *_scores(one["holdout"])) for one in scored]
+    head = "On the --holdout table, by the structures learnt from all rows of this one:"
+    return [head, aligned(("structure", "log loss, bits", *_SCORES), rows)]
+
+
+def _advice(document: Mapping[str, Any]) -> list[str]:
+    advice = document["recommended"]
+    honest = advice["honest_log_loss"]
+    lines = [
+        f"recommended (*): {advice['name']}. {advice['reason']}",
+        f"Its honest score, from folds that took no part in choosing: "
+        f"{_bits(honest)} bits, accuracy {fixed(advice['honest_accuracy'])}.",
+    ]
+    naive = next((one for one in document["structures"] if one["name"] == "naive"), None)
+    if naive and naive["temperature"] < 0.95:
+        lines.append(
+            f"Naive Bayes is over-confident here: its evidence is worth {naive['temperature']:.2f} of its face value, "
+            "because dependent attributes are counted as if each were news."
+        )
+    return [_wrapped(line) for line in (*lines, *_pairs(document))]
+
+
+def _pairs(document: Mapping[str, Any]) -> list[str]:
+    """Say how many pairs depend, which most, and how many cannot be told."""
+    verdicts = [pair["verdict"] for pair in document["pairs"]]
+    settings = document["settings"]
+    rate = {"bh": "false-discovery rate", "by": "false-discovery rate", "holm": "family-wise rate", "none": "level"}
+    line = (
+        f"{document['pairs_rejected']} of {count_of(document['pairs_total'], 'pair')} depend given {document['class']} "
+        f"({rate[settings['adjust']]} {settings['alpha']:g})"
+    )
+    if len(verdicts) == document["pairs_total"]:
+        small = sum("negligible" in verdict for verdict in verdicts)
+        line += f"; {small} are negligible; {verdicts.count('not enough data')} cannot be told at this sample size"
+    dependent = [pair for pair in document["pairs"] if pair["verdict"] == "dependent"][:3]
+    if not dependent:
+        return [line + "."]
+    most = quoted(f"{pair['a']} ~ {pair['b']} ({pair['bits']:.3f} bits)" for pair in dependent)
+    return [line + ".", f"Most dependent: {most}."]
+
+
+def _files(document: Mapping[str, Any], output: str) -> str:
+    structures = count_of(len(document["structures"]), "structure")
+    return f"{output.rstrip('/') or '/'}/: report.html, comparison.json, pairs.csv, {structures} as .json .svg .dot"

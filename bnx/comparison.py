@@ -1,0 +1,208 @@
+"""The main job: one table in; structures learnt, tested, cross-validated on the same folds, and one recommended."""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from pathlib import PurePath
+
+import numpy as np
+
+from bnx.choosing import Choice
+from bnx.classifier import Classifier
+from bnx.coding import Coded
+from bnx.dependence import Pairs
+from bnx.encoding import encode
+from bnx.engines import start_local
+from bnx.engines.local import Progress
+from bnx.errors import DataError
+from bnx.evaluation import Evaluation, evaluate
+from bnx.folds import assign_blocks, assign_given, assign_grouped, sub_blocks
+from bnx.gains import edge_gains
+from bnx.independence import Statistics, p_values
+from bnx.judging import Against, Recommendation, StructureScore, against, recommend, score
+from bnx.learners import Learner, learner
+from bnx.learning import make_bounds
+from bnx.ledger import EdgeEvidence, edge_ledger
+from bnx.losses import Scores, scores
+from bnx.reading import Source
+from bnx.recipe import Recipe
+from bnx.refining import refined
+from bnx.resampling import stability
+from bnx.scoring import families
+from bnx.structure import Structure
+from bnx.tables import LeftOut
+from bnx.text import count_of
+from bnx.verdicts import Judgement, judge
+
+__all__ = ["Comparison", "compare"]
+
+
+@dataclass(frozen=True)
+class Comparison:
+    """Everything that one run found out; per structure in the order asked for.
+
+    ``relevance`` (n,): bits each attribute shares with the class. ``pairs`` and ``judgement``: all pairs, on all rows.
+    ``held_out``: scores on a table that took no part, empty without one.
+    """
+
+    recipe: Recipe
+    source: str
+    sha256: str
+    rows: int
+    folds: int
+    classifiers: tuple[Classifier, ...]
+    relevance: np.ndarray
+    pairs: Pairs
+    judgement: Judgement
+    results: tuple[StructureScore, ...]
+    against: tuple[Against | None, ...]
+    edges: tuple[tuple[EdgeEvidence, ...], ...]
+    recommendation: Recommendation
+    held_out: tuple[Scores, ...]
+    left_out: tuple[LeftOut, ...]
+    warnings: tuple[str, ...]
+    evaluations: tuple[Evaluation, ...]
+    line_of_row: np.ndarray
+
+    @property
+    def structures(self) -> tuple[Structure, ...]:
+        """The structures learnt from all rows."""
+        return tuple(classifier.structure for classifier in self.classifiers)
+
+    @property
+    def names(self) -> tuple[str, ...]:
+        """Names of the attributes."""
+        return tuple(domain.name for domain in self.classifiers[0].domains)
+
+
+def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdout: Source | None = None) -> Comparison:
+    """Run the main job on one table.
+
+    progress: called with (stage, done, of how many) while it runs.
+
+    Raises:
+        DataError, SettingError, StructureError: the table or a setting cannot be used.
+    """
+    progress("reading", 0, 1)
+    coded = recipe.code(source)
+    progress("reading", 1, 1)
+    bounds = make_bounds(recipe, coded.table.schema.names)
+    learners = [learner(name) for name in recipe.structures]
+    evaluations, folds = [], recipe.folds
+    for repeat in range(recipe.repeats):
+        blocks, folds = _fold_blocks(coded, recipe, repeat)
+        engine = start_local(coded.table, blocks, folds * sub_blocks(folds), jobs, progress)
+        evaluations.append(evaluate(engine, coded.table.schema, folds, learners, bounds, recipe))
+    gains = [fold for one in evaluations for fold in edge_gains(one)]
+    first = evaluations[0]
+    learned = first.learned(())
+    stable = stability(first.engine, learned.training.view, folds, learners, bounds, recipe)
+    results = score(evaluations, first.engine)
+    baseline = recipe.structures.index(recipe.baseline)
+    statistics = Statistics.of(learned.pairs.statistics)
+    tested = p_values(statistics, recipe.test)
+    tested = refined(first.engine, [learned.training], learned.pairs.requests(0), statistics, tested)
+    judged = judge(statistics, tested, adjust=recipe.adjust, alpha=recipe.alpha, negligible=recipe.negligible)
+    classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
+    return Comparison(
+        recipe=recipe,
+        source=PurePath(source.name).name,
+        sha256=source.sha256(),
+        rows=len(coded.table.target),
+        folds=folds,
+        classifiers=classifiers,
+        relevance=learned.dependence.relevance,
+        pairs=learned.pairs,
+        judgement=judged,
+        results=tuple(results),
+        against=tuple(against(results, baseline, folds)),
+        edges=tuple(edge_ledger(first, gains, stable, learners, recipe, folds)),
+        recommendation=recommend(evaluations, results, recipe.structures, folds),
+        held_out=tuple(_held_out(classifiers, holdout, recipe)) if holdout else (),
+        left_out=coded.left_out,
+        warnings=(*coded.warnings, *_run_warnings(evaluations, coded, recipe, learners)),
+        evaluations=tuple(evaluations),
+        line_of_row=coded.table.rows,
+    )
+
+
+def _fold_blocks(coded: Coded, recipe: Recipe, repeat: int) -> tuple[np.ndarray, int]:
+    """Deal the rows to folds and blocks; give the block of each row and the number of folds."""
+    target, rows = coded.table.target, coded.table.rows
+    if recipe.fold_column:
+        column = coded.extra[recipe.fold_column]
+        used, codes = np.unique(column.codes, return_inverse=True)
+        if len(used) < 3:
+            raise DataError(
+                f"--fold-column {column.name} holds {count_of(len(used), 'different value')}, but at least 3 folds are "
+                "needed to choose inside each training fold; take a column with more values or drop the option"
+            )
+        return assign_given(codes, target, rows, recipe.seed), len(used)
+    if len(rows) < recipe.folds:
+        raise DataError(
+            f"the table has {count_of(len(rows), 'usable row')} for {recipe.folds} folds; give fewer --folds"
+        )
+    if recipe.group:
+        return assign_grouped(coded.extra[recipe.group].codes, target, recipe.seed, recipe.folds, repeat), recipe.folds
+    return assign_blocks(target, rows, recipe.seed, recipe.folds, repeat), recipe.folds
+
+
+def _classifier(evaluation: Evaluation, s: int, coded: Coded) -> Classifier:
+    """Build the classifier of one structure from all rows."""
+    choice: Choice = evaluation.choices[()]
+    learned = choice.trial.learned[()]
+    structure, view = learned.structures[s], learned.training.view
+    counts = tuple(
+        choice.trial.counts[()][members].reshape(-1, *view.sizes_of(members)) for members in families(structure)
+    )
+    return Classifier(
+        view.domains,
+        coded.table.schema.target,
+        structure,
+        counts,
+        learned.training.class_counts,
+        choice.smoothings[s],
+        choice.calibrations[s],
+    )
+
+
+def _held_out(classifiers: Sequence[Classifier], source: Source, recipe: Recipe) -> list[Scores]:
+    """Score the final classifiers on a table that took no part in anything."""
+    target = classifiers[0].target
+    parts: list[list[np.ndarray]] = [[] for _ in classifiers]
+    truth = []
+    for codes, _ in encode(source, [*classifiers[0].domains, target]):
+        known = codes[-1] >= 0
+        truth.append(codes[-1][known])
+        for part, classifier in zip(parts, classifiers, strict=True):
+            part.append(classifier.probabilities(codes[:-1][:, known]))
+    rows = np.concatenate(truth) if truth else np.zeros(0, np.int32)
+    if not len(rows):
+        raise DataError(
+            f"{source.name} (--holdout) has no row whose {recipe.target} is one of {', '.join(target.levels)}"
+        )
+    return [scores(np.concatenate(part), rows, len(target)) for part in parts]
+
+
+def _run_warnings(
+    evaluations: Sequence[Evaluation], coded: Coded, recipe: Recipe, learners: Sequence[Learner]
+) -> list[str]:
+    """Say what a reader of the figures must know about how they were made."""
+    notes = []
+    sample, engine = evaluations[0].sample, evaluations[0].engine
+    if len(sample.target) < len(engine.order):
+        notes.append(
+            f"choices inside training folds and gains of edges are judged on {len(sample.target):,} of "
+            f"{len(engine.order):,} rows, a seeded sample by fold and class; scores and tests use all rows"
+        )
+    if recipe.group:
+        notes.append(
+            f"rows of one {recipe.group} may be alike, but the tests assume independent records: every p is descriptive"
+        )
+    for level, rows in zip(coded.table.schema.target.levels, engine.class_counts.sum(axis=0).tolist(), strict=True):
+        if rows < len(evaluations[0].fold_rows):
+            notes.append(
+                f"class {level} has {count_of(rows, 'row')} for {len(evaluations[0].fold_rows)} folds: some hold none"
+            )
+    if any(member.name.endswith("-tested") for member in learners) and recipe.alpha > 0.1:
+        notes.append(f"edges are tested at {recipe.alpha:g}: that share of the drawn edges may be false")
+    return notes

@@ -1,0 +1,183 @@
+"""Where to cut numeric columns: fine cut points without the class, and coarser cuts of the fine bins.
+
+A cut is a position: position k cuts after bin k, so bins 0 to k fall on its left.
+"""
+
+import re
+
+import numpy as np
+
+from bnx.errors import SettingError
+
+__all__ = ["fine_cuts", "frequency_cuts", "mdl_cuts", "parse_bins", "width_cuts"]
+
+TIE = 1e-12  # bits; entropies nearer than this are equal, and the lowest cut wins on every machine
+
+
+def parse_bins(text: str) -> tuple[str, int]:
+    """Read the setting ``bins``: ``auto``, ``mdl``, ``frequency:K`` or ``width:K``; K is 0 for the first two.
+
+    Raises:
+        SettingError: the text is none of these, or K is not in 2 to 255.
+    """
+    if text in {"auto", "mdl"}:
+        return text, 0
+    found = re.fullmatch(r"(frequency|width):([0-9]+)", text)
+    if not found or not 2 <= int(found[2]) <= 255:
+        raise SettingError(f"bins is {text!r}; it must be auto, mdl, frequency:K or width:K with K from 2 to 255")
+    return found[1], int(found[2])
+
+
+def fine_cuts(values: np.ndarray, weights: np.ndarray, limit: int) -> np.ndarray:
+    """Cut distinct sorted values (m,), carried by ``weights`` (m,) rows each, into min(m, ``limit``) bins.
+
+    Up to ``limit`` values get a bin each. More values get bins as equal in rows as they allow: the smallest T is taken
+    such that ``limit`` bins suffice when a bin holds at most T rows or a single value, so a value shared by many rows
+    has a bin of its own and does not cost the others theirs; bins still free then halve the heaviest of several values.
+    Returns cuts (bins - 1,), halfway between neighbours.
+    """
+    m = len(values)
+    starts = np.arange(m + 1)
+    if m > limit:
+        totals = np.concatenate([[0], np.cumsum(weights)])
+        low, high = 1, int(totals[-1])
+        while low < high:
+            middle = (low + high) // 2
+            if len(_filled(totals, middle, limit)) > limit:
+                low = middle + 1
+            else:
+                high = middle
+        starts = _halved(totals, np.append(_filled(totals, low, limit), m), limit)
+    return _halfway(values[starts[1:-1] - 1], values[starts[1:-1]])
+
+
+def _filled(totals: np.ndarray, most: int, limit: int) -> np.ndarray:
+    """Fill bins from the left with up to ``most`` rows; the first value of each, given up after ``limit`` + 1 bins."""
+    starts: list[int] = []
+    start = 0
+    while start < len(totals) - 1 and len(starts) <= limit:
+        starts.append(start)
+        start = max(int(np.searchsorted(totals, totals[start] + most, side="right")) - 1, start + 1)
+    return np.array(starts, dtype=np.int64)
+
+
+def _halved(totals: np.ndarray, starts: np.ndarray, limit: int) -> np.ndarray:
+    """Halve the heaviest bin of several values again and again until there are ``limit`` bins."""
+    while len(starts) <= limit:
+        rows = np.where(np.diff(starts) > 1, np.diff(totals[starts]), 0)
+        heaviest = int(rows.argmax())
+        inside = np.arange(starts[heaviest] + 1, starts[heaviest + 1])
+        uneven = np.abs(2 * totals[inside] - totals[starts[heaviest]] - totals[starts[heaviest + 1]])
+        starts = np.insert(starts, heaviest + 1, inside[uneven.argmin()])
+    return starts
+
+
+def _halfway(low: np.ndarray, high: np.ndarray) -> np.ndarray:
+    """Cut halfway between neighbours; where no float lies between them, at the lower one."""
+    middle = low / 2 + high / 2
+    simple = (low + high) / 2 if np.abs(high).max(initial=0) < 1e300 and np.abs(low).max(initial=0) < 1e300 else middle
+    return np.where((simple >= low) & (simple < high), simple, low)
+
+
+def mdl_cuts(counts: np.ndarray) -> np.ndarray:
+    """Cut bins by class entropy until a cut no longer pays for its description.
+
+    ``counts`` (bins, C) rows per bin and class; bins without rows may occur. Returns sorted positions, int64. Only
+    boundary points are tried (a cut inside a run of one class is never best); of equal cuts the lowest is taken.
+    Between two bins with rows, the middle of the empty ones is cut.
+
+    Source: Fayyad & Irani 1993, Multi-interval discretization of continuous-valued attributes: boundary points, the MDL
+    criterion, and the recursion.
+    """
+    used = np.flatnonzero(counts.sum(axis=1))
+    positions: list[int] = []
+    pending = [(0, len(used))]
+    filled = counts[used].astype(np.int64)
+    while pending:
+        start, stop = pending.pop()
+        cut = _best_cut(filled[start:stop])
+        if cut is not None:
+            positions.append(int((used[start + cut] + used[start + cut + 1] - 1) // 2))
+            pending += [(start, start + cut + 1), (start + cut + 1, stop)]
+    return np.array(sorted(positions), dtype=np.int64)
+
+
+def _best_cut(counts: np.ndarray) -> int | None:
+    """Find the cut with the least class information, if it passes the MDL criterion; the bin before it."""
+    boundary = _boundaries(counts)
+    if not len(boundary):
+        return None
+    left = np.cumsum(counts, axis=0)[boundary]
+    right = counts.sum(axis=0) - left
+    rows = counts.sum()
+    entropy_left, entropy_right = _entropy(left), _entropy(right)
+    information = (left.sum(axis=1) * entropy_left + right.sum(axis=1) * entropy_right) / rows
+    k = int(np.flatnonzero(information <= information.min() + TIE)[0])
+    whole = _entropy(counts.sum(axis=0)[None])[0]
+    classes = [int(np.count_nonzero(part)) for part in (counts.sum(axis=0), left[k], right[k])]
+    delta = np.log2(3.0 ** classes[0] - 2) - (
+        classes[0] * whole - classes[1] * entropy_left[k] - classes[2] * entropy_right[k]
+    )
+    pays = whole - information[k] > (np.log2(rows - 1) + delta) / rows
+    return int(boundary[k]) if pays else None
+
+
+def _boundaries(counts: np.ndarray) -> np.ndarray:
+    """Find the bins whose right neighbour does not hold rows of the very same single class."""
+    pure = np.count_nonzero(counts, axis=1) == 1
+    first = counts.argmax(axis=1)
+    return np.flatnonzero(~(pure[:-1] & pure[1:] & (first[:-1] == first[1:])))
+
+
+def _entropy(counts: np.ndarray) -> np.ndarray:
+    """Class entropy in bits of every line of ``counts`` (m, C)."""
+    shares = counts / np.maximum(counts.sum(axis=1, keepdims=True), 1)
+    logs = np.log2(shares, out=np.zeros_like(shares), where=shares > 0)
+    entropy: np.ndarray = -(shares * logs).sum(axis=1)
+    return entropy
+
+
+def frequency_cuts(counts: np.ndarray, k: int) -> np.ndarray:
+    """Cut bins (m,) of row counts into at most ``k`` groups of rows as equal as the bins allow; sorted positions.
+
+    The sum of squared group sizes is the least possible: a bin with far more rows than its share stands alone and the
+    other groups stay equal. Bins without rows join the group on their left (before the first row: the first group).
+    """
+    used = np.flatnonzero(counts)
+    groups = min(k, len(used))
+    if groups < 2:
+        return np.zeros(0, dtype=np.int64)
+    totals = np.concatenate([[0], np.cumsum(counts[used], dtype=np.int64)]).astype(np.float64)
+    squares = np.where(np.tri(len(totals), k=-1, dtype=bool), (totals[:, None] - totals[None, :]) ** 2, np.inf)
+    cost = squares[:, 0]
+    choices = []
+    for _ in range(groups - 1):
+        options = squares + cost[None, :]
+        choice = options.argmin(axis=1)
+        choices.append(choice)
+        cost = np.take_along_axis(options, choice[:, None], axis=1)[:, 0]
+    end, ends = len(used), []
+    for choice in reversed(choices):
+        end = int(choice[end])
+        ends.append(end)
+    return used[np.array(ends[::-1], dtype=np.int64)] - 1
+
+
+def width_cuts(cuts: np.ndarray, counts: np.ndarray, k: int) -> np.ndarray:
+    """Cut the range of a column into ``k`` equal widths, each cut moved to the nearest fine one; sorted positions.
+
+    ``cuts`` (bins - 1,) are the fine cut points, ``counts`` (bins,) the rows. The range runs from the middle of the
+    first bin with rows to the middle of the last; an outermost bin is taken to be as wide as its neighbour.
+    Cuts that fall on one fine cut, or leave no row on a side, are one cut or none.
+    """
+    used = np.flatnonzero(counts)
+    if len(used) < 2:
+        return np.zeros(0, dtype=np.int64)
+    outer = [2 * cuts[0] - cuts[1], 2 * cuts[-1] - cuts[-2]] if len(cuts) > 1 else [cuts[0] - 1, cuts[0] + 1]
+    edges = np.concatenate([outer[:1], cuts, outer[1:]])
+    middles = edges[:-1] / 2 + edges[1:] / 2
+    low, high = middles[used[0]], middles[used[-1]]
+    wanted = low + (high - low) * np.arange(1, k) / k
+    nearest = np.abs(wanted[:, None] - cuts[None, :]).argmin(axis=1)
+    inside = (nearest >= used[0]) & (nearest < used[-1])
+    return np.unique(nearest[inside]).astype(np.int64)

@@ -1,0 +1,276 @@
+"""The machine-readable results: comparison, structures, pairs, predictions, as plain values ready to be written."""
+
+import math
+import platform
+from collections.abc import Sequence
+from typing import Any
+
+import numba
+import numpy as np
+import pandas as pd
+import scipy
+
+from bnx import __version__
+from bnx.comparison import Comparison
+from bnx.formats.dot import dot_source
+from bnx.formats.structure_json import classifier_document
+from bnx.independence import Statistics
+from bnx.judging import Against, StructureScore
+from bnx.ledger import EdgeEvidence
+from bnx.picture import Arrow, Chip, Picture
+from bnx.structure import words
+from bnx.verdicts import TestResult, results
+
+__all__ = [
+    "COMPARISON_FORMAT",
+    "PAIRS_SHOWN",
+    "comparison_document",
+    "dot_of",
+    "pair_results",
+    "picture_of",
+    "predictions_frame",
+    "structure_document",
+]
+
+COMPARISON_FORMAT = "bnx-comparison/1"
+PAIRS_SHOWN = 20_000
+
+
+def versions() -> dict[str, str]:
+    """Name the versions that the figures come from."""
+    return {
+        "bnx": __version__,
+        "python": platform.python_version(),
+        "numpy": np.__version__,
+        "scipy": scipy.__version__,
+        "numba": numba.__version__,
+    }
+
+
+def finite(value: Any) -> Any:
+    """Replace what JSON does not know (infinity, NaN) by None, inside lists and dicts too."""
+    if isinstance(value, float):
+        return value if math.isfinite(value) else None
+    if isinstance(value, dict):
+        return {key: finite(item) for key, item in value.items()}
+    if isinstance(value, list | tuple):
+        return [finite(item) for item in value]
+    return value
+
+
+def comparison_document(comparison: Comparison) -> dict[str, Any]:
+    """Describe a whole run, ready for JSON."""
+    advice = comparison.recommendation
+    names = comparison.recipe.structures
+    judged = comparison.judgement
+    document: dict[str, Any] = finite(
+        {
+            "format": COMPARISON_FORMAT,
+            "class": comparison.recipe.target,
+            "class_levels": list(comparison.classifiers[0].target.levels),
+            "source": comparison.source,
+            "sha256": comparison.sha256,
+            "rows": comparison.rows,
+            "folds": comparison.folds,
+            "attributes": list(comparison.names),
+            "schema": [
+                {
+                    "name": domain.name,
+                    "numeric": domain.numeric,
+                    "levels": list(domain.levels),
+                    "cuts": list(domain.cuts),
+                    "bits_with_class": float(bits),
+                }
+                for domain, bits in zip(comparison.classifiers[0].domains, comparison.relevance, strict=True)
+            ],
+            "settings": comparison.recipe.to_dict(),
+            "structures": [structure_entry(comparison, s) for s in range(len(names))],
+            "best": names[advice.best],
+            "recommended": {
+                "name": names[advice.recommended],
+                "reason": advice.reason,
+                "honest_log_loss": advice.honest.log_loss,
+                "honest_accuracy": advice.honest.accuracy,
+                "picks": [names[number] for number in advice.picks],
+            },
+            "pairs": [result.to_dict() for result in pair_results(comparison)],
+            "pairs_total": len(comparison.pairs.left),
+            "pairs_rejected": int(judged.rejected.sum()),
+            "left_out": [{"name": one.name, "reason": one.reason} for one in comparison.left_out],
+            "warnings": list(comparison.warnings),
+            "versions": versions(),
+        }
+    )
+    return document
+
+
+def structure_entry(comparison: Comparison, s: int) -> dict[str, Any]:
+    """Describe one structure and its scores."""
+    classifier, result = comparison.classifiers[s], comparison.results[s]
+    levels = classifier.target.levels
+    calibration = classifier.calibration
+    entry = {
+        "name": classifier.structure.name,
+        "words": words(classifier.structure.name),
+        "edges": [edge_entry(comparison.names, edge) for edge in comparison.edges[s]],
+        "free_parameters": classifier.free_parameters,
+        **result.pooled.to_dict(levels),
+        "log_loss_se": result.error,
+        "calibration_slope": result.slope,
+        "temperature": calibration.temperature,
+        "class_offsets": dict(zip(levels, calibration.offsets.tolist(), strict=True)),
+        "floor": calibration.floor,
+        "smoothing": str(classifier.smoothing),
+        "by_fold": fold_entries(result, levels),
+        "against_baseline": against_entry(comparison.against[s]),
+    }
+    if comparison.held_out:
+        entry["holdout"] = comparison.held_out[s].to_dict(levels)
+    return entry
+
+
+def edge_entry(names: Sequence[str], edge: EdgeEvidence) -> dict[str, Any]:
+    """Describe one edge by names."""
+    return {
+        "parent": names[edge.parent],
+        "child": names[edge.child],
+        "bits": edge.bits,
+        "gain": edge.gain,
+        "gain_se": edge.gain_se,
+        "chosen_in": edge.chosen_in,
+        "stability": edge.stability,
+        "gate_p": edge.gate_p,
+        "gate_given": [names[parent] for parent in edge.gate_given],
+        "verdict": edge.verdict,
+    }
+
+
+def fold_entries(result: StructureScore, levels: Sequence[str]) -> list[dict[str, Any]]:
+    """Describe the scores of every fold."""
+    return [
+        {
+            "repeat": fold.repeat,
+            "fold": fold.fold,
+            "rows": fold.rows,
+            **fold.scores.to_dict(levels),
+            "calibration_slope": fold.slope,
+        }
+        for fold in result.by_fold
+    ]
+
+
+def against_entry(against: Against | None) -> dict[str, Any]:
+    """Describe the difference to the baseline; nulls for the baseline itself."""
+    if against is None:
+        keys = ("difference", "interval", "p_value", "region_bits", "probability_better", "probability_equivalent")
+        return dict.fromkeys(keys)
+    return {
+        "difference": against.difference.mean,
+        "interval": [against.difference.low, against.difference.high],
+        "p_value": against.adjusted_p,
+        "p_value_alone": against.difference.p_value,
+        "region_bits": against.region,
+        "probability_better": against.chances.better,
+        "probability_equivalent": against.chances.equivalent,
+    }
+
+
+def pair_results(comparison: Comparison, everything: bool = False) -> list[TestResult]:
+    """List tested pairs, most bits first: all up to 20,000, else the drawn, the rejected and the strongest."""
+    statistics = Statistics.of(comparison.pairs.statistics)
+    order = np.argsort(-statistics.bits, kind="stable")
+    if len(order) > PAIRS_SHOWN and not everything:
+        order = order[_first(comparison, order)]
+    names = comparison.names
+    left, right = comparison.pairs.left[order].tolist(), comparison.pairs.right[order].tolist()
+    ends = [(names[i], names[j]) for i, j in zip(left, right, strict=True)]
+    marginal = Statistics.of(comparison.pairs.marginal).take(order)
+    return results(ends, statistics.take(order), marginal, comparison.judgement.take(order))
+
+
+def _first(comparison: Comparison, order: np.ndarray) -> np.ndarray:
+    """Choose places in ``order``: drawn pairs, then rejected ones, then the strongest, 20,000 in all."""
+    drawn = {frozenset((edge.parent, edge.child)) for edges in comparison.edges for edge in edges}
+    left, right = comparison.pairs.left[order].tolist(), comparison.pairs.right[order].tolist()
+    is_drawn = np.array([frozenset(ends) in drawn for ends in zip(left, right, strict=True)])
+    rank = np.where(is_drawn, 0, np.where(comparison.judgement.rejected[order], 1, 2))
+    return np.sort(np.argsort(rank, kind="stable")[:PAIRS_SHOWN])
+
+
+def structure_document(comparison: Comparison, s: int) -> dict[str, Any]:
+    """Describe one structure with its tables and the evidence that speaks for it, ready for JSON."""
+    entry = structure_entry(comparison, s)
+    given = {
+        "name",
+        "words",
+        "edges",
+        "free_parameters",
+        "temperature",
+        "class_offsets",
+        "floor",
+        "smoothing",
+        "by_fold",
+    }
+    document: dict[str, Any] = finite(
+        {
+            **classifier_document(comparison.classifiers[s]),
+            "bits_with_class": dict(zip(comparison.names, comparison.relevance.tolist(), strict=True)),
+            "edges": entry["edges"],
+            "scores": {key: value for key, value in entry.items() if key not in given},
+            "recommended": s == comparison.recommendation.recommended,
+            "settings": comparison.recipe.to_dict(),
+            "seed": comparison.recipe.seed,
+            "rows": comparison.rows,
+            "source": comparison.source,
+            "sha256": comparison.sha256,
+            "versions": versions(),
+        }
+    )
+    return document
+
+
+def picture_of(document: dict[str, Any]) -> Picture:
+    """Turn a structure document into what a drawing shows."""
+    names = [attribute["name"] for attribute in document["attributes"]]
+    chips = tuple(
+        Chip(one["name"], len(one["levels"]), document["bits_with_class"][one["name"]])
+        for one in document["attributes"]
+    )
+    arrows = tuple(
+        Arrow(
+            names.index(edge["parent"]),
+            names.index(edge["child"]),
+            edge["bits"],
+            edge["verdict"],
+            edge["gain"],
+            edge["gain_se"],
+        )
+        for edge in document["edges"]
+    )
+    subtitle = words(document["name"]) if words(document["name"]) != document["name"] else ""
+    return Picture(document["name"], document["class"]["name"], chips, arrows, subtitle)
+
+
+def dot_of(document: dict[str, Any]) -> str:
+    """Draw a structure document as DOT, light theme."""
+    return dot_source(picture_of(document))
+
+
+def predictions_frame(comparison: Comparison) -> pd.DataFrame:
+    """List out-of-fold probabilities: one row per row of data, repeat and structure."""
+    frames = []
+    levels = comparison.classifiers[0].target.levels
+    for repeat, one in enumerate(comparison.evaluations):
+        fold = np.empty(len(one.engine.order), np.int64)
+        for number, rows in enumerate(one.fold_rows):
+            fold[rows] = number
+        back = np.argsort(one.engine.order)
+        for name, p in zip(comparison.recipe.structures, one.p, strict=True):
+            frame = pd.DataFrame(
+                {"row": comparison.line_of_row, "repeat": repeat, "fold": fold[back], "structure": name}
+            )
+            frame["truth"] = np.array(levels, dtype=object)[one.engine.target[back]]
+            for c, level in enumerate(levels):
+                frame[f"p:{level}"] = p[back, c]
+            frames.append(frame)
+    return pd.concat(frames, ignore_index=True)

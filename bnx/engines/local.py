@@ -1,0 +1,158 @@
+"""Count on this machine: bit planes for pairs, one blocked pass for a family, threads over both."""
+
+from collections.abc import Callable, Iterable, Sequence
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass, replace
+from typing import TypeVar
+
+import numpy as np
+
+from bnx.counts import FamilyCounts, PairCounts, PairLayout
+from bnx.kernels import count_cells, count_pairs, pack_planes
+from bnx.tables import CodedTable
+from bnx.views import View
+
+__all__ = ["LocalEngine", "start_local"]
+
+Progress = Callable[[str, int, int], None]  # stage, done, of how many
+Item = TypeVar("Item")
+Result = TypeVar("Result")
+
+
+@dataclass(frozen=True)
+class LocalEngine:
+    """Rows sorted by (block, class) in memory, and the counting of them.
+
+    ``codes`` (n, N) as stored; ``target`` (N,); ``order`` (N,): row of the table behind each sorted row;
+    ``starts`` (blocks * C + 1,): first sorted row of each group; ``margins``: per attribute, counts (blocks, C, stored
+    levels) int64.
+    """
+
+    codes: np.ndarray
+    target: np.ndarray
+    order: np.ndarray
+    starts: np.ndarray
+    blocks: int
+    classes: int
+    sizes: np.ndarray
+    margins: tuple[np.ndarray, ...]
+    jobs: int
+    progress: Progress
+
+    @property
+    def class_counts(self) -> np.ndarray:
+        """Rows of each block and class, int64 (blocks, C)."""
+        return np.diff(self.starts).reshape(self.blocks, self.classes)
+
+    def rows_of(self, first_block: int, last_block: int) -> slice:
+        """Sorted rows of neighbouring blocks."""
+        return slice(int(self.starts[first_block * self.classes]), int(self.starts[last_block * self.classes]))
+
+    def map(self, function: Callable[[Item], Result], items: Iterable[Item], stage: str = "") -> list[Result]:
+        """Apply a function to items on this engine's threads; results keep the items' order.
+
+        stage: what to tell the progress callback after each item; nothing is told without it.
+        """
+        work = list(items)
+        results = []
+        with ThreadPoolExecutor(self.jobs) as pool:
+            for done, result in enumerate(pool.map(function, work), start=1):
+                results.append(result)
+                if stage:
+                    self.progress(stage, done, len(work))
+        return results
+
+    def recoded(self, view: View) -> "LocalEngine":
+        """Store the rows as ``view`` sees them, so that every attribute can be used as stored."""
+        if view.plain.all():
+            return self
+        codes = self.codes.copy()
+        for i in np.flatnonzero(~view.plain):
+            np.take(view.recode[i].astype(codes.dtype), self.codes[i], out=codes[i])
+        margins = tuple(view.merge(i, margin) for i, margin in enumerate(self.margins))
+        return replace(self, codes=codes, sizes=view.sizes, margins=margins)
+
+    def pair_counts(self, layout: PairLayout) -> PairCounts:
+        """Count pairs of attributes, as stored, by block and class."""
+        words = (np.diff(self.starts) + 63) // 64
+        word_starts = np.concatenate([[0], np.cumsum(words)]).astype(np.int64)
+        plane_starts = np.concatenate([[0], np.cumsum(self.sizes - 1)]).astype(np.int64)
+        planes = np.zeros((plane_starts[-1] + 4, word_starts[-1]), np.uint64)
+        used = np.zeros(len(self.sizes), bool)
+        used[layout.left] = used[layout.right] = True
+        self.map(
+            lambda i: pack_planes(self.codes, self.starts, word_starts, self.sizes, plane_starts, i, i + 1, planes),
+            np.flatnonzero(used).tolist(),
+        )
+        flat = [margin.reshape(self.blocks * self.classes, -1) for margin in self.margins]
+        margin_starts = np.concatenate([[0], np.cumsum(self.sizes)]).astype(np.int64)
+        margins = np.ascontiguousarray(np.concatenate(flat, axis=1))
+        out = np.zeros((self.blocks * self.classes, layout.offsets[-1]), np.int32)
+        bounds = np.linspace(0, len(layout.left), self.jobs * 4 + 1).astype(int).tolist()
+
+        def count(part: int) -> None:
+            count_pairs(
+                planes,
+                word_starts,
+                self.sizes,
+                plane_starts,
+                margins,
+                margin_starts,
+                layout.left,
+                layout.right,
+                layout.offsets,
+                bounds[part],
+                bounds[part + 1],
+                out,
+            )
+
+        self.map(count, range(self.jobs * 4))
+        return PairCounts(layout, out.reshape(self.blocks, self.classes, -1))
+
+    def family_counts(self, members: Sequence[int], view: View) -> FamilyCounts:
+        """Count a family of attributes that ``view`` leaves as stored, by block and class."""
+        slots = np.arange(self.blocks * self.classes, dtype=np.int64)
+        counts = self._count(members, view, slots)
+        return FamilyCounts(tuple(members), view.sizes_of(members), counts.reshape(self.blocks, self.classes, -1))
+
+    def training_counts(self, members: Sequence[int], view: View, mask: np.ndarray) -> np.ndarray:
+        """Count a family over the blocks of ``mask`` (blocks,) bool, by class: (C, cells) int32."""
+        by_class = np.arange(self.classes, dtype=np.int64)
+        slots = np.where(mask[:, None], by_class, -1).ravel()
+        return self._count(members, view, slots)
+
+    def _count(self, members: Sequence[int], view: View, slots: np.ndarray) -> np.ndarray:
+        sizes = np.array(view.sizes_of(members), dtype=np.int64)
+        out = np.zeros((int(slots.max()) + 1, int(sizes.prod())), np.int32)
+        plain = view.all_plain(members)
+        count_cells(self.codes, view.recode, plain, np.array(members), sizes, self.starts, slots, out)
+        return out
+
+
+def start_local(
+    table: CodedTable, blocks_of_rows: np.ndarray, blocks: int, jobs: int, progress: Progress
+) -> LocalEngine:
+    """Sort a coded table by (block, class, position) and count the levels of every attribute.
+
+    blocks_of_rows (N,): the block of each row.
+    """
+    classes = len(table.schema.target)
+    group = blocks_of_rows.astype(np.int64) * classes + table.target
+    order = np.argsort(group, kind="stable")
+    starts = np.searchsorted(group[order], np.arange(blocks * classes + 1)).astype(np.int64)
+    sizes = table.schema.sizes
+    codes = np.empty_like(table.codes)
+    margins: list[np.ndarray] = [np.empty(0)] * len(sizes)
+    group = group[order]
+
+    def sort(i: int) -> None:
+        np.take(table.codes[i], order, out=codes[i])
+        size = int(sizes[i])
+        cells = np.bincount(group * size + codes[i], minlength=blocks * classes * size)
+        margins[i] = cells.reshape(blocks, classes, size)
+
+    with ThreadPoolExecutor(jobs) as pool:
+        list(pool.map(sort, range(len(sizes))))
+    return LocalEngine(
+        codes, table.target[order], order, starts, blocks, classes, sizes, tuple(margins), jobs, progress
+    )

@@ -1,0 +1,60 @@
+"""Counts of families for many training sets at once, from as few passes over the rows as possible."""
+
+from collections import defaultdict
+from collections.abc import Callable, Iterable, Sequence
+from typing import TypeVar
+
+import numpy as np
+
+from bnx.counts import sum_blocks
+from bnx.engines import LocalEngine
+from bnx.trainings import Training
+
+__all__ = ["Request", "for_each_family"]
+
+Result = TypeVar("Result")
+Request = tuple[int, tuple[int, ...]]  # (number of the training set, members with the child last)
+
+_DENSE = 8  # a family is counted by block when its cells over all blocks and classes are at most this many per row
+
+
+def for_each_family(
+    engine: LocalEngine,
+    trainings: Sequence[Training],
+    requests: Iterable[Request],
+    use: Callable[[np.ndarray, tuple[int, ...]], Result],
+    stage: str = "",
+) -> dict[Request, Result]:
+    """Call ``use(counts (C, cells) int32, sizes)`` once for every different request.
+
+    A family of attributes that are used as stored, and that several training sets ask for, is counted once by block
+    and added up; any other is counted in its own training rows. Nothing is kept but what ``use`` returns.
+    """
+    askers: dict[tuple[int, ...], list[int]] = defaultdict(list)
+    for number, members in dict.fromkeys(requests):
+        askers[members].append(number)
+
+    def answer(item: tuple[tuple[int, ...], list[int]]) -> list[tuple[Request, Result]]:
+        members, numbers = item
+        return [
+            ((number, members), use(counts, trainings[number].view.sizes_of(members)))
+            for number, counts in _counts(engine, trainings, members, numbers)
+        ]
+
+    return {request: result for answers in engine.map(answer, askers.items(), stage) for request, result in answers}
+
+
+def _counts(
+    engine: LocalEngine, trainings: Sequence[Training], members: tuple[int, ...], numbers: list[int]
+) -> Iterable[tuple[int, np.ndarray]]:
+    """Yield (training set, its counts (C, cells)) of one family."""
+    view = trainings[numbers[0]].view
+    cells = int(np.prod(view.sizes_of(members))) * engine.blocks * engine.classes
+    if len(numbers) > 1 and view.all_plain(members) and cells <= _DENSE * len(engine.order):
+        counted = engine.family_counts(members, view).counts
+        total = counted.sum(axis=0, dtype=np.int32)
+        for number in numbers:
+            yield number, sum_blocks(counted, total, [trainings[number].mask])[0]
+    else:
+        for number in numbers:
+            yield number, engine.training_counts(members, trainings[number].view, trainings[number].mask)

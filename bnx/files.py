@@ -1,0 +1,46 @@
+"""Write one file: whole or not at all, and never over another unless told to."""
+
+import os
+import tempfile
+from pathlib import Path
+
+from bnx.errors import DataError, SettingError
+
+__all__ = ["check_free", "write_bytes"]
+
+
+def check_free(path: str, overwrite: bool) -> None:
+    """Refuse a path that is taken.
+
+    Raises:
+        SettingError: there is a file and ``overwrite`` is off, or the path is empty or a folder.
+    """
+    if not path:
+        raise SettingError("-o is empty; give the name of a file")
+    if Path(path).is_dir():
+        raise SettingError(f"-o {path} is a folder, but a file is to be written; add a file name")
+    if Path(path).exists() and not overwrite:
+        raise SettingError(f"the file {path} exists already; give another one with -o, or --overwrite to replace it")
+
+
+def write_bytes(path: str, content: bytes, overwrite: bool) -> None:
+    """Write a file through a temporary neighbour; a link is followed, so that what it points to is replaced.
+
+    Raises:
+        SettingError: the path is taken. DataError: it cannot be written.
+    """
+    check_free(path, overwrite)
+    place = Path(path).resolve()
+    work = None
+    try:
+        handle, name = tempfile.mkstemp(prefix=f".{place.name[:80]}-", dir=place.parent)
+        work = Path(name)
+        with os.fdopen(handle, "wb") as file:
+            file.write(content)
+        work.chmod(0o644)
+        work.replace(place)
+    except OSError as error:
+        raise DataError(f"cannot write {path} ({error.strerror or error}); choose another place with -o") from None
+    finally:
+        if work:
+            work.unlink(missing_ok=True)

@@ -1,0 +1,172 @@
+"""The structure file: one self-contained JSON that others can read, check and score with."""
+
+import json
+from collections.abc import Mapping, Sequence
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from bnx.calibrating import Calibration
+from bnx.classifier import Classifier
+from bnx.domains import Domain
+from bnx.errors import BnxError, DataError, FormatError
+from bnx.parameters import parse_smoothing
+from bnx.structure import Structure, words
+
+__all__ = ["STRUCTURE_FORMAT", "classifier_document", "classifier_of", "read_structure"]
+
+STRUCTURE_FORMAT = "bnx-structure/1"
+
+
+def classifier_document(classifier: Classifier) -> dict[str, Any]:
+    """Describe a classifier: schema, parents, tables, prior, smoothing and calibration.
+
+    Tables are nested lists by class, then by the levels of each parent in the order taken, then by the own level.
+    """
+    names = [domain.name for domain in classifier.domains]
+    calibration = classifier.calibration
+    levels = classifier.target.levels
+    prior = classifier.class_counts / classifier.class_counts.sum()
+    return {
+        "format": STRUCTURE_FORMAT,
+        "name": classifier.structure.name,
+        "words": words(classifier.structure.name),
+        "class": {
+            "name": classifier.target.name,
+            "levels": list(levels),
+            "rows": classifier.class_counts.tolist(),
+            "prior": prior.tolist(),
+        },
+        "attributes": [
+            {
+                "name": domain.name,
+                "numeric": domain.numeric,
+                "cuts": list(domain.cuts),
+                "levels": list(domain.levels),
+                "pooled": domain.pooled,
+                "blank": domain.blank,
+                "parents": [names[parent] for parent in classifier.structure.parents[child]],
+                "counts": classifier.counts[child].tolist(),
+                "probabilities": classifier.table(child).tolist(),
+            }
+            for child, domain in enumerate(classifier.domains)
+        ],
+        "free_parameters": classifier.free_parameters,
+        "smoothing": str(classifier.smoothing),
+        "temperature": calibration.temperature,
+        "class_offsets": dict(zip(levels, calibration.offsets.tolist(), strict=True)),
+        "floor": calibration.floor,
+        "floor_shares": dict(zip(levels, calibration.shares.tolist(), strict=True)),
+    }
+
+
+def read_structure(path: str) -> dict[str, Any]:
+    """Read a structure file.
+
+    Raises:
+        DataError: there is no such file. FormatError: it is not a structure file of this version.
+    """
+    try:
+        text = Path(path).read_text(encoding="utf-8")
+    except FileNotFoundError:
+        raise DataError(f"there is no file {path}; give the NAME.json that bnx learn or bnx export wrote") from None
+    except (OSError, UnicodeDecodeError) as error:
+        raise FormatError(f"{path} cannot be read as text ({error}); give the NAME.json that bnx learn wrote") from None
+    try:
+        document = json.loads(text)
+    except json.JSONDecodeError as error:
+        raise FormatError(f"{path} is not JSON (line {error.lineno}: {error.msg}); give a NAME.json of bnx") from None
+    if not isinstance(document, dict) or document.get("format") != STRUCTURE_FORMAT:
+        found = document.get("format") if isinstance(document, dict) else None
+        raise FormatError(f"{path} has the format {found!r}, not {STRUCTURE_FORMAT!r}; give a NAME.json of bnx learn")
+    return document
+
+
+def classifier_of(document: Mapping[str, Any], path: str) -> Classifier:
+    """Rebuild the classifier of a structure document.
+
+    Raises:
+        FormatError: a part is missing, or the tables contradict their counts.
+    """
+    try:
+        classifier = _classifier(document)
+    except (KeyError, TypeError, ValueError, AttributeError, BnxError) as error:
+        what = f"has no {error}" if isinstance(error, KeyError) else f"contradicts itself ({error})"
+        raise FormatError(f"{path} {what}; write it anew with bnx learn or bnx export") from None
+    for child, attribute in enumerate(document["attributes"]):
+        written = np.array(attribute["probabilities"], dtype=float)
+        if written.shape != classifier.counts[child].shape or np.abs(written - classifier.table(child)).max() > 1e-9:
+            raise FormatError(
+                f"{path}: the probabilities of {attribute['name']} contradict its counts; write it anew with bnx learn"
+            )
+    return classifier
+
+
+def _classifier(document: Mapping[str, Any]) -> Classifier:
+    attributes = document["attributes"]
+    domains = tuple(
+        Domain(
+            one["name"],
+            tuple(one["levels"]),
+            bool(one["numeric"]),
+            tuple(one["cuts"]),
+            bool(one["pooled"]),
+            bool(one["blank"]),
+        )
+        for one in attributes
+    )
+    names = [domain.name for domain in domains]
+    parents = tuple(tuple(names.index(parent) for parent in one["parents"]) for one in attributes)
+    target = Domain(document["class"]["name"], tuple(document["class"]["levels"]))
+    if len({target.name, *names}) <= len(names):
+        raise ValueError("two columns have the same name")
+    for domain in (target, *domains):
+        _check_domain(domain)
+    counts = tuple(np.array(one["counts"], dtype=np.int32) for one in attributes)
+    for table, domain, own in zip(counts, domains, parents, strict=True):
+        shape = (len(target), *(len(domains[parent]) for parent in own), len(domain))
+        if table.shape != shape or (table < 0).any():
+            raise ValueError(f"the counts of {domain.name} have the shape {table.shape}, not {shape}")
+    rows = np.array(document["class"]["rows"], dtype=np.int64)
+    _check_class(document["class"], rows)
+    return Classifier(
+        domains,
+        target,
+        Structure(document["name"], parents),
+        counts,
+        rows,
+        parse_smoothing(document["smoothing"]),
+        _calibration(document, target.levels),
+    )
+
+
+def _check_domain(domain: Domain) -> None:
+    """Refuse levels that cannot be told apart, or that do not follow from the cut points."""
+    if len(set(domain.levels)) < len(domain.levels) or not domain.levels:
+        raise ValueError(f"{domain.name} needs levels, each named once")
+    if domain.numeric and (
+        len(domain.cuts) + 1 + domain.blank != len(domain) or list(domain.cuts) != sorted(set(domain.cuts))
+    ):
+        raise ValueError(f"the {len(domain.cuts)} cut points of {domain.name} do not make its {len(domain)} levels")
+
+
+def _check_class(target: Mapping[str, Any], rows: np.ndarray) -> None:
+    """Refuse rows per class that cannot be, or a prior that does not follow from them."""
+    if rows.shape != (len(target["levels"]),) or (rows < 0).any() or not rows.sum():
+        raise ValueError(f"the rows {rows.tolist()} do not fit the {len(target['levels'])} levels of the class")
+    prior = np.array(target["prior"], dtype=float)
+    if prior.shape != rows.shape or not np.allclose(prior, rows / rows.sum(), rtol=0, atol=1e-9):
+        raise ValueError(f"the prior {prior.tolist()} does not follow from the rows {rows.tolist()}")
+
+
+def _calibration(document: Mapping[str, Any], levels: Sequence[str]) -> Calibration:
+    """Read the calibration and refuse one that could not have been fitted."""
+    temperature, floor = float(document["temperature"]), float(document["floor"])
+    offsets = np.array([document["class_offsets"][level] for level in levels], dtype=float)
+    shares = np.array([document["floor_shares"][level] for level in levels], dtype=float)
+    if not 0 < temperature < np.inf or not np.isfinite(offsets).all():
+        raise ValueError(f"the temperature {temperature} or an offset is not a usable number")
+    if not 0 <= floor <= 1 or (shares < 0).any() or abs(shares.sum() - 1) > 1e-9:
+        raise ValueError(f"the floor {floor} and its shares are not probabilities")
+    return Calibration(temperature, offsets, floor, shares)

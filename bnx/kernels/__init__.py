@@ -1,0 +1,18 @@
+"""The hot loops: arrays in, arrays out, nothing of bnx.
+
+Every loop releases the interpreter lock, so callers may run several on threads; none reassociates float sums.
+"""
+
+from bnx.kernels.counting import count_cells, count_pairs, number_cells, pack_planes
+from bnx.kernels.scoring import add_terms, calibrated_loss, smoothed_tables, tempered_losses
+
+__all__ = [
+    "add_terms",
+    "calibrated_loss",
+    "count_cells",
+    "count_pairs",
+    "number_cells",
+    "pack_planes",
+    "smoothed_tables",
+    "tempered_losses",
+]

@@ -1,0 +1,45 @@
+"""Learners: from a ``Dependence`` to a ``Structure``. A member never sees a row."""
+
+import re
+from typing import Protocol
+
+from bnx.dependence import Dependence
+from bnx.errors import SettingError
+from bnx.gating import Bounds, Gate, Learning
+from bnx.learners.kdb import Kdb, KdbTested
+from bnx.learners.naive import Naive
+from bnx.learners.tan import Tan
+
+__all__ = ["Learner", "learner"]
+
+
+class Learner(Protocol):
+    """What every member offers: a name, the most parents an attribute can have, and the learning itself."""
+
+    @property
+    def name(self) -> str:
+        """Name the structure."""
+
+    @property
+    def depths(self) -> int:
+        """Most parents of an attribute, besides the class."""
+
+    def learn(self, dependence: Dependence, gate: Gate, bounds: Bounds) -> Learning:
+        """Start learning; questions are yielded, the structure is returned."""
+
+
+def learner(name: str) -> Learner:
+    """Find the learner of a structure by its name.
+
+    Raises:
+        SettingError: no structure has this name.
+    """
+    fixed: dict[str, Learner] = {"naive": Naive(), "tan": Tan(tested=False), "tan-tested": Tan(tested=True)}
+    if name in fixed:
+        return fixed[name]
+    found = re.fullmatch(r"kdb([1-9]\d?)(-tested)?", name)
+    if found:
+        return KdbTested(int(found[1])) if found[2] else Kdb(int(found[1]))
+    raise SettingError(
+        f"--structures: {name!r} is not a structure; known: naive, tan, tan-tested, kdbK, kdbK-tested (K = 1, 2, ...)"
+    )

@@ -1,0 +1,147 @@
+"""Learn every structure in every training set."""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from bnx.contingency import table_statistics
+from bnx.dependence import Dependence, Pairs, measure
+from bnx.engines import LocalEngine
+from bnx.errors import DataError
+from bnx.families import Request, for_each_family
+from bnx.gating import Answer, Bounds, Gate, Question, learn_together
+from bnx.independence import Statistics, p_values
+from bnx.learners import Learner
+from bnx.recipe import Recipe
+from bnx.refining import refined
+from bnx.structure import Structure
+from bnx.text import nearest
+from bnx.trainings import Training
+
+__all__ = ["Learned", "ask_tests", "learn", "make_bounds", "test_statistics"]
+
+
+@dataclass(frozen=True)
+class Learned:
+    """What was learnt in one training set: ``structures`` in the order of the learners."""
+
+    training: Training
+    dependence: Dependence
+    pairs: Pairs
+    structures: tuple[Structure, ...]
+
+
+def make_bounds(recipe: Recipe, names: Sequence[str]) -> Bounds:
+    """Turn the required and forbidden pairs of names into attribute numbers.
+
+    Raises:
+        DataError: a name is not an attribute. StructureError: the bounds contradict each other.
+    """
+    from_names = {name: number for number, name in enumerate(names)}
+
+    def numbers(option: str, pairs: Sequence[str]) -> tuple[tuple[int, int], ...]:
+        found = []
+        for pair in pairs:
+            ends = pair.split(":")
+            for end in ends:
+                if end not in from_names:
+                    raise DataError(
+                        f"--{option} {pair}: {end!r} is not an attribute in use; {nearest(end, list(names))}"
+                    )
+            if ends[0] == ends[1]:
+                raise DataError(f"--{option} {pair}: the two ends are the same attribute; name two")
+            found.append((from_names[ends[0]], from_names[ends[1]]))
+        return tuple(dict.fromkeys(found))
+
+    return Bounds(tuple(names), numbers("require", recipe.require), numbers("forbid", recipe.forbid))
+
+
+def learn(
+    engine: LocalEngine,
+    trainings: Sequence[Training],
+    learners: Sequence[Learner],
+    bounds: Bounds,
+    recipe: Recipe,
+    marginal_of_first: bool = False,
+) -> list[Learned]:
+    """Measure all pairs and learn every structure in each training set.
+
+    marginal_of_first: also measure the pairs without the class in the first training set.
+    """
+    measured = measure(engine, trainings, marginal_of_first)
+    attributes = len(bounds.names)
+    low, high = _doubt(learners, attributes, recipe.alpha)
+    learnings, known = [], []
+    for number, (dependence, pairs) in enumerate(measured):
+        statistics = Statistics.of(pairs.statistics)
+        tested = refined(
+            engine, trainings, pairs.requests(number), statistics, p_values(statistics, recipe.test), low, high
+        )
+        gate = Gate(recipe.alpha, pairs.matrix(tested.p, attributes))
+        known.append((gate.p, pairs.matrix(statistics.bits_corrected, attributes)))
+        learnings += [member.learn(dependence, gate, bounds) for member in learners]
+
+    def ask(questions: Sequence[tuple[int, Question]]) -> list[Answer]:
+        numbered = [(number // len(learners), question) for number, question in questions]
+        tested = iter(ask_tests(engine, trainings, [one for one in numbered if one[1].given], recipe.test, low, high))
+        return [next(tested) if question.given else _answer(*known[number], question) for number, question in numbered]
+
+    structures = learn_together(learnings, ask)
+    return [
+        Learned(training, dependence, pairs, tuple(structures[k * len(learners) : (k + 1) * len(learners)]))
+        for k, (training, (dependence, pairs)) in enumerate(zip(trainings, measured, strict=True))
+    ]
+
+
+def _doubt(learners: Sequence[Learner], attributes: int, alpha: float) -> tuple[float, float]:
+    """Bound the p-values that decide about an edge: from far below the strictest threshold to above the mildest."""
+    depths = [member.depths for member in learners if member.name.endswith("-tested")]
+    if not depths or attributes < 2:
+        return 1.0, 0.0
+    pairs = attributes * (attributes - 1) / 2
+    return alpha / max(depths) / pairs / 1000, min(1.0, 5 * alpha * 2 / attributes)
+
+
+def _answer(p: np.ndarray, bits: np.ndarray, question: Question) -> Answer:
+    """Answer a question that only takes the class as given, from what was measured of all pairs."""
+    found = p[question.child, question.candidate]
+    return Answer(1.0 if np.isnan(found) else float(found), float(bits[question.child, question.candidate]))
+
+
+def ask_tests(
+    engine: LocalEngine,
+    trainings: Sequence[Training],
+    questions: Sequence[tuple[int, Question]],
+    test: str,
+    low: float = 0.0,
+    high: float = 0.02,
+) -> list[Answer]:
+    """Answer (number of the training set, question) pairs by conditional-independence tests.
+
+    low, high: the p-values that are worth an exact test.
+    """
+    if not questions:
+        return []
+    requests = [(number, (*question.given, question.candidate, question.child)) for number, question in questions]
+    rows = test_statistics(engine, trainings, requests)
+    different = {request: place for place, request in enumerate(rows)}
+    statistics = Statistics.of(np.array(list(rows.values())))
+    p = refined(engine, trainings, list(rows), statistics, p_values(statistics, test), low, high).p
+    p = np.where(np.isnan(p), 1.0, p)
+    bits = statistics.bits_corrected
+    return [Answer(float(p[different[request]]), float(bits[different[request]])) for request in requests]
+
+
+def test_statistics(
+    engine: LocalEngine, trainings: Sequence[Training], requests: Sequence[Request]
+) -> dict[Request, np.ndarray]:
+    """Compute the statistics (COLUMNS,) of the last two members given the class and the members before them."""
+
+    def use(counts: np.ndarray, sizes: tuple[int, ...]) -> np.ndarray:
+        strata = counts.reshape(-1, sizes[-2] * sizes[-1])
+        one = (np.array([sizes[-2]]), np.array([sizes[-1]]))
+        row: np.ndarray = table_statistics(strata, np.zeros(1, np.int64), *one)[0]
+        return row
+
+    return for_each_family(engine, trainings, requests, use, "testing parents")

@@ -1,0 +1,118 @@
+"""Many tests at once: adjusted p-values, the threshold they amount to, and the gate of a forest."""
+
+from itertools import pairwise
+
+import numpy as np
+
+from bnx.errors import SettingError
+
+__all__ = ["METHODS", "adjusted", "forest_threshold", "threshold"]
+
+METHODS = ("bh", "holm", "by", "none")
+
+
+def adjusted(p: np.ndarray, method: str) -> np.ndarray:
+    """Adjust p-values for the number of tests; a pair is rejected where its adjusted p is at most alpha.
+
+    Args:
+        p: p-values, (m,); NaN where nothing was tested, which stays NaN and does not count.
+        method: ``bh`` (false-discovery rate), ``by`` (the same under any dependence), ``holm`` (family-wise), ``none``.
+
+    Raises:
+        SettingError: the method is not known.
+
+    Source: Benjamini & Hochberg 1995; Benjamini & Yekutieli 2001; Holm 1979.
+    """
+    _check(method)
+    result = np.full(np.shape(p), np.nan)
+    tested = np.flatnonzero(~np.isnan(p))
+    order = tested[np.argsort(p[tested], kind="stable")]
+    rising = p[order]
+    m = rising.size
+    if method == "holm":
+        rising = np.maximum.accumulate(rising * (m - np.arange(m)))
+    elif method != "none":
+        steps = rising * (m * _dependence_factor(m, method)) / np.arange(1, m + 1)
+        rising = np.minimum.accumulate(steps[::-1])[::-1]
+    result[order] = np.minimum(rising, 1.0)
+    return result
+
+
+def threshold(p: np.ndarray, method: str, alpha: float) -> float:
+    """Find the raw p-value that the family was judged by, given how many of it (m tested) were rejected (R).
+
+    ``bh`` alpha max(1, R) / m, ``by`` the same over the sum of 1/k, ``holm`` alpha / max(1, m - R), ``none`` alpha.
+    NaN if nothing was tested.
+
+    Raises:
+        SettingError: the method is not known.
+    """
+    _check(method)
+    m = int(np.count_nonzero(~np.isnan(p)))
+    if m == 0:
+        return float("nan")
+    if method == "none":
+        return alpha
+    rejected = int(np.count_nonzero(adjusted(p, method) <= alpha))
+    if method == "holm":
+        return alpha / max(1, m - rejected)
+    return alpha * max(1, rejected) / (m * _dependence_factor(m, method))
+
+
+def forest_threshold(pairs: np.ndarray, p: np.ndarray, n: int, alpha: float) -> float:
+    """Find the largest p-value t at which the false share among the edges of the forest stays below alpha.
+
+    The forest grown from the pairs with p <= t holds e(t) edges, whatever their order; of m tested pairs about m t
+    pass by chance; t is the largest observed p with m t / e(t) <= alpha. NaN if there is none.
+
+    Args:
+        pairs: the two attributes of each pair, integers (m, 2).
+        p: p-value of each pair, (m,); NaN where nothing was tested.
+        n: number of attributes.
+        alpha: false-discovery rate among the edges.
+
+    Source: Katsevich, Sabatti & Bogomolov 2021 (focused Benjamini-Hochberg).
+    """
+    m = int(np.count_nonzero(~np.isnan(p)))
+    candidates = np.flatnonzero(p * m <= alpha * (n - 1))
+    order = candidates[np.argsort(p[candidates], kind="stable")]
+    values = p[order]
+    root = list(range(n))
+    edges, found = 0, float("nan")
+    for start, stop in pairwise([0, *np.flatnonzero(np.diff(values)) + 1, values.size] if values.size else [0]):
+        edges += _join(root, pairs[order[start:stop]])
+        if values[start] * m <= alpha * edges:
+            found = float(values[start])
+        if edges == n - 1:
+            return float(values[-1])
+    return found
+
+
+def _join(root: list[int], pairs: np.ndarray) -> int:
+    """Join the trees of each pair's attributes and count the joins."""
+    joins = 0
+    for first, second in pairs.tolist():
+        tree, other = _find(root, first), _find(root, second)
+        if tree != other:
+            root[tree] = other
+            joins += 1
+    return joins
+
+
+def _find(root: list[int], node: int) -> int:
+    """Find the root of a tree, halving the path on the way."""
+    while root[node] != node:
+        root[node] = root[root[node]]
+        node = root[node]
+    return node
+
+
+def _dependence_factor(m: int, method: str) -> float:
+    """Return the sum of 1/k up to m for ``by``, 1 otherwise."""
+    return float(np.sum(1.0 / np.arange(1, m + 1))) if method == "by" else 1.0
+
+
+def _check(method: str) -> None:
+    """Refuse an unknown method."""
+    if method not in METHODS:
+        raise SettingError(f"adjust is {method!r}; it must be one of {', '.join(METHODS)}")

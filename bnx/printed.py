@@ -1,0 +1,234 @@
+"""Rows of the page's tables, every figure as it is printed."""
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+from bnx.findings import percent
+from bnx.text import fixed, signed
+
+__all__ = [
+    "AttributeRow",
+    "EdgeRow",
+    "PairRow",
+    "ScoreRow",
+    "attribute_rows",
+    "confusion_rows",
+    "edge_row",
+    "pair_row",
+    "score_row",
+    "setting",
+]
+
+_DASH = "–"
+_METHODS = {
+    "chi2-tail": "X², tail of chi-square",
+    "g-tail": "G, tail of chi-square",
+    "moments": "X², matched moments",
+    "none": "none: nothing to test",
+}
+
+
+@dataclass(frozen=True)
+class ScoreRow:
+    """One structure in the table of scores, as printed."""
+
+    name: str
+    words: str
+    role: str
+    edges: str
+    parameters: str
+    log_loss: str
+    error: str
+    difference: str
+    interval: str
+    p_value: str
+    better: str
+    brier: str
+    accuracy: str
+    auc: str
+    calibration: str
+    temperature: str
+    smoothing: str
+    holdout: str
+
+
+@dataclass(frozen=True)
+class EdgeRow:
+    """One edge in the ledger of its structure, as printed."""
+
+    parent: str
+    child: str
+    bits: str
+    gain: str
+    error: str
+    chosen: str
+    stability: str
+    gate_p: str
+    given: tuple[str, ...]
+    verdict: str
+
+
+@dataclass(frozen=True)
+class PairRow:
+    """One pair in the ledger, as printed."""
+
+    a: str
+    b: str
+    bits: str
+    interval: str
+    marginal: str
+    cramers_v: str
+    statistic: str
+    df: str
+    adjusted_p: str
+    method: str
+    carried: str
+    min_expected: str
+    detectable: str
+    verdict: str
+    drawn: bool
+
+
+@dataclass(frozen=True)
+class AttributeRow:
+    """One attribute: its levels, cut points, and the bits it shares with the class; ``bar`` in 0 to 100."""
+
+    name: str
+    kind: str
+    levels: tuple[str, ...]
+    cuts: tuple[str, ...]
+    bits: str
+    bar: float
+
+
+def _p(value: float | None) -> str:
+    """Write a p-value: four decimals, or a power of ten below a thousandth."""
+    if value is None:
+        return _DASH
+    if value == 0.0:
+        return "< 1e-300"
+    return f"{value:.4f}" if value >= 0.001 else f"{value:.0e}"
+
+
+def _number(value: float | None, digits: int = 3) -> str:
+    return _DASH if value is None else fixed(value, digits)
+
+
+def _range(ends: Sequence[float | None] | None, digits: int = 3, sign: bool = True) -> str:
+    if ends is None or ends[0] is None or ends[1] is None:
+        return ""
+    write = signed if sign else fixed
+    return f"[{write(ends[0], digits)}, {write(ends[1], digits)}]"
+
+
+def _loss(value: float | None) -> str:
+    return "infinite" if value is None else fixed(value)
+
+
+def score_row(document: Mapping[str, Any], entry: Mapping[str, Any]) -> ScoreRow:
+    """Write one structure's scores; nothing stands where the baseline has no difference to itself."""
+    against = entry["against_baseline"]
+    role = {document["best"]: "best", document["settings"]["baseline"]: "baseline"}.get(entry["name"], "")
+    if entry["name"] == document["recommended"]["name"]:
+        role = f"recommended, {role}" if role else "recommended"
+    return ScoreRow(
+        name=entry["name"],
+        words=entry["words"],
+        role=role,
+        edges=f"{len(entry['edges']):,}",
+        parameters=f"{entry['free_parameters']:,}",
+        log_loss=_loss(entry["log_loss"]),
+        error="" if entry["log_loss_se"] is None else fixed(entry["log_loss_se"]),
+        difference=_DASH if against["difference"] is None else signed(against["difference"]),
+        interval=_range(against["interval"]),
+        p_value=_p(against["p_value"]),
+        better=percent(against["probability_better"]),
+        brier=_number(entry["brier"]),
+        accuracy=_number(entry["accuracy"]),
+        auc=_number(entry["auc"]),
+        calibration=_number(entry["calibration_error"]),
+        temperature=_number(entry["temperature"], 2),
+        smoothing=entry["smoothing"],
+        holdout=_loss(entry["holdout"]["log_loss"]) if "holdout" in entry else "",
+    )
+
+
+def edge_row(edge: Mapping[str, Any], tries: int) -> EdgeRow:
+    """Write one edge; tries: folds x repeats."""
+    return EdgeRow(
+        parent=edge["parent"],
+        child=edge["child"],
+        bits=fixed(edge["bits"]),
+        gain=signed(edge["gain"], 4),
+        error=fixed(edge["gain_se"], 4),
+        chosen=f"{edge['chosen_in']} of {tries}",
+        stability=percent(edge["stability"], 0),
+        gate_p=_p(edge["gate_p"]),
+        given=tuple(edge["gate_given"]),
+        verdict=edge["verdict"],
+    )
+
+
+def confusion_rows(
+    entry: Mapping[str, Any], levels: Sequence[str]
+) -> tuple[tuple[str, tuple[tuple[str, str, int], ...], str], ...]:
+    """List (true class, ((records, share of the class, shade 0 to 9) per class given), recall) for every class."""
+    table = []
+    for level, row in zip(levels, entry["confusion"], strict=True):
+        total = sum(row)
+        shares = [count / total if total else 0.0 for count in row]
+        cells = tuple(
+            (f"{count:,}", percent(share, 0) if total else _DASH, min(9, int(10 * share)))
+            for count, share in zip(row, shares, strict=True)
+        )
+        table.append((level, cells, percent(entry["recall"][level])))
+    return tuple(table)
+
+
+def pair_row(pair: Mapping[str, Any], drawn: frozenset[frozenset[str]]) -> PairRow:
+    """Write one pair; drawn: the pairs that the recommended structure joins."""
+    return PairRow(
+        a=pair["a"],
+        b=pair["b"],
+        bits=fixed(pair["bits"], 4),
+        interval=_range((pair["bits_low"], pair["bits_high"]), 3, sign=False) or _DASH,
+        marginal=_number(pair["marginal_bits"], 4),
+        cramers_v=_number(pair["cramers_v"], 2),
+        statistic=_number(pair["statistic"], 1),
+        df=f"{pair['df']:,}",
+        adjusted_p=_p(pair["adjusted_p"]),
+        method=_METHODS.get(pair["method"], pair["method"]),
+        carried="yes" if pair["sample_carries_it"] else "no",
+        min_expected=_number(pair["min_expected"], 1),
+        detectable=_DASH
+        if pair["detectable_bits"] is None
+        else ("" if pair["sample_carries_it"] else "at least ") + fixed(pair["detectable_bits"], 4),
+        verdict=pair["verdict"],
+        drawn=frozenset((pair["a"], pair["b"])) in drawn,
+    )
+
+
+def attribute_rows(schema: Sequence[Mapping[str, Any]]) -> tuple[AttributeRow, ...]:
+    """List the attributes, most bits with the class first."""
+    most = max((one["bits_with_class"] for one in schema), default=0.0) or 1.0
+    return tuple(
+        AttributeRow(
+            name=one["name"],
+            kind="numeric, cut" if one["numeric"] else "levels",
+            levels=tuple(one["levels"]),
+            cuts=tuple(f"{cut:.6g}" for cut in one["cuts"]),
+            bits=fixed(one["bits_with_class"]),
+            bar=round(100 * one["bits_with_class"] / most, 1),
+        )
+        for one in sorted(schema, key=lambda one: -one["bits_with_class"])
+    )
+
+
+def setting(value: Any) -> str:
+    """Write the value of a setting in words."""
+    if isinstance(value, list):
+        return ", ".join(str(one) for one in value) or "none"
+    if isinstance(value, bool):
+        return "yes" if value else "no"
+    return "none" if value == "" else str(value)

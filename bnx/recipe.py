@@ -1,0 +1,128 @@
+"""Every setting of a run, with its default and its check."""
+
+from collections.abc import Sequence
+from dataclasses import asdict, dataclass
+from typing import Any
+
+from bnx.coding import Coded, code_table
+from bnx.discretising import parse_bins
+from bnx.errors import SettingError
+from bnx.independence import TESTS
+from bnx.learners import learner
+from bnx.multiplicity import METHODS as ADJUSTMENTS
+from bnx.parameters import candidates
+from bnx.reading import Source
+from bnx.text import quoted
+
+__all__ = ["DEFAULT_STRUCTURES", "Recipe"]
+
+DEFAULT_STRUCTURES = ("naive", "tan", "tan-tested", "kdb1-tested", "kdb2", "kdb2-tested", "kdb3-tested")
+
+
+@dataclass(frozen=True)
+class Recipe:
+    """The settings of ``bnx learn``; an option of the command line, a field here and a key in the JSON share a name.
+
+    Raises:
+        SettingError: a setting cannot be used.
+    """
+
+    target: str
+    structures: tuple[str, ...] = DEFAULT_STRUCTURES
+    baseline: str = "naive"
+    test: str = "auto"
+    adjust: str = "bh"
+    alpha: float = 0.05
+    negligible: float = 0.005
+    folds: int = 10
+    repeats: int = 1
+    group: str = ""
+    fold_column: str = ""
+    seed: int = 1
+    bins: str = "auto"
+    numeric: tuple[str, ...] = ()
+    categorical: tuple[str, ...] = ()
+    ignore: tuple[str, ...] = ()
+    keep: tuple[str, ...] = ()
+    missing: str = "level"
+    max_levels: int = 50
+    smoothing: str = "auto"
+    temperature: bool = True
+    require: tuple[str, ...] = ()
+    forbid: tuple[str, ...] = ()
+    resamples: int = 100
+
+    def __post_init__(self) -> None:
+        """Check every setting that can be checked without the table."""
+        _one_of("test", self.test, TESTS)
+        _one_of("adjust", self.adjust, ADJUSTMENTS)
+        _one_of("missing", self.missing, ("level", "drop"))
+        _between("alpha", self.alpha, 0, 1)
+        _between("negligible", self.negligible, 0, 10)
+        _whole("folds", self.folds, 3, 1000)
+        _whole("repeats", self.repeats, 1, 1000)
+        _whole("seed", self.seed, 0, 2**63 - 1)
+        _whole("max-levels", self.max_levels, 2, 60_000)
+        _whole("resamples", self.resamples, 0, 100_000)
+        candidates(self.smoothing)
+        parse_bins(self.bins)
+        if len(set(self.structures)) < len(self.structures):
+            raise SettingError(f"--structures names one structure twice ({quoted(self.structures)}); name each once")
+        for name in self.structures:
+            learner(name)
+        if self.baseline not in self.structures:
+            raise SettingError(
+                f"--baseline {self.baseline} is not among the structures; add it to --structures, or choose one of "
+                f"{quoted(self.structures)} with --baseline"
+            )
+        if self.group and self.fold_column:
+            raise SettingError("--group and --fold-column both decide the folds; give one of them")
+        if self.fold_column and self.repeats > 1:
+            raise SettingError(
+                f"--repeats {self.repeats} cannot be used with --fold-column, whose folds are given; leave it at 1"
+            )
+        for option, pairs in (("require", self.require), ("forbid", self.forbid)):
+            for pair in pairs:
+                if len(pair.split(":")) != 2:
+                    raise SettingError(f"--{option}: {pair!r} is not a pair of attributes; write PARENT:CHILD")
+
+    def code(self, source: Source) -> Coded:
+        """Code a table as these settings say; ``keep`` = all keeps every column that could be left out.
+
+        Raises:
+            DataError, SettingError: the table or a setting cannot be used.
+        """
+        extra = [name for name in (self.group, self.fold_column) if name]
+        keep: Sequence[str] = self.keep
+        if self.keep == ("all",) and "all" not in source.columns:
+            keep = [name for name in source.columns if name not in {self.target, *self.ignore, *extra}]
+        return code_table(
+            source,
+            self.target,
+            numeric=self.numeric,
+            categorical=self.categorical,
+            ignore=self.ignore,
+            keep=keep,
+            missing="drop" if self.missing == "drop" else "level",
+            max_levels=self.max_levels,
+            extra=extra,
+        )
+
+    def to_dict(self) -> dict[str, Any]:
+        """Give the settings by name, ready for JSON."""
+        return {key: list(value) if isinstance(value, tuple) else value for key, value in asdict(self).items()}
+
+
+def _one_of(option: str, value: str, allowed: tuple[str, ...]) -> None:
+    if value not in allowed:
+        raise SettingError(f"--{option}: {value!r} cannot be used; give one of {', '.join(allowed)}")
+
+
+def _between(option: str, value: float, low: float, high: float) -> None:
+    if not low < value < high:
+        raise SettingError(f"--{option}: {value:g} cannot be used; give a number above {low:g} and below {high:g}")
+
+
+def _whole(option: str, value: int, low: int, high: int) -> None:
+    if not low <= value <= high:
+        raise SettingError(f"--{option}: {value} cannot be used; give a whole number from {low} to {high}")

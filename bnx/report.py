@@ -1,0 +1,166 @@
+"""The report: a comparison summed up, then rendered as one page that needs nothing else."""
+
+import base64
+import hashlib
+from collections.abc import Mapping
+from dataclasses import dataclass
+from pathlib import PurePath
+from typing import Any
+
+import jinja2
+from markupsafe import Markup
+
+from bnx.charts import FoldChart, HeatMap, fold_chart, heat_map
+from bnx.embedding import embed
+from bnx.findings import Findings, drawn_pairs, findings
+from bnx.palette import PALETTES
+from bnx.printed import (
+    AttributeRow,
+    EdgeRow,
+    PairRow,
+    ScoreRow,
+    attribute_rows,
+    confusion_rows,
+    edge_row,
+    pair_row,
+    score_row,
+    setting,
+)
+
+__all__ = ["PAIRS_ON_PAGE", "Report", "report_html", "summarise"]
+
+PAIRS_ON_PAGE = 300
+"""Rows of the ledger of pairs that the page shows, strongest first."""
+
+_ADJUSTMENTS = {
+    "bh": "after adjustment for the number of pairs (Benjamini and Hochberg)",
+    "holm": "after adjustment for the number of pairs (Holm)",
+    "by": "after adjustment for the number of pairs (Benjamini and Yekutieli)",
+    "none": "without any adjustment for the number of pairs",
+}
+_UNPRINTABLE = {code: "�" for code in (*range(32), *range(127, 160)) if chr(code) not in "\t\n\r"}
+
+
+@dataclass(frozen=True)
+class Drawn:
+    """One structure: its drawing (empty without a drawing engine), its ledger, its confusion table and recalls."""
+
+    score: ScoreRow
+    picture: Markup
+    edges: tuple[EdgeRow, ...]
+    confusion: tuple[tuple[str, tuple[tuple[str, str, int], ...], str], ...]
+    is_open: bool
+
+
+@dataclass(frozen=True)
+class Report:
+    """The whole page in finished words and numbers."""
+
+    target: str
+    class_levels: tuple[str, ...]
+    source: str
+    sha256: str
+    rows: str
+    attributes_used: int
+    folds: int
+    repeats: int
+    findings: Findings
+    scores: tuple[ScoreRow, ...]
+    has_holdout: bool
+    structures: tuple[Drawn, ...]
+    folds_chart: FoldChart | None
+    pairs: tuple[PairRow, ...]
+    pairs_total: str
+    pairs_rejected: str
+    heat: HeatMap | None
+    attributes: tuple[AttributeRow, ...]
+    left_out: tuple[tuple[str, str], ...]
+    settings: tuple[tuple[str, str], ...]
+    versions: tuple[tuple[str, str], ...]
+    warnings: tuple[str, ...]
+    alpha: str
+    adjust: str
+    negligible: str
+
+
+def report_html(comparison: Mapping[str, Any], pictures: Mapping[str, str]) -> str:
+    """Write the page.
+
+    comparison: the document of ``comparison.json``. pictures: structure name -> SVG text, absent or empty where nothing
+    could be drawn; the page then says so.
+
+    Raises:
+        FormatError: a picture is no SVG.
+    """
+    report, styles = summarise(comparison, pictures)
+    engine = jinja2.Environment(
+        loader=jinja2.PackageLoader("bnx", "templates"),
+        autoescape=True,
+        undefined=jinja2.StrictUndefined,
+        trim_blocks=True,
+        lstrip_blocks=True,
+    )
+    style = engine.get_template("report.css.j2").render(palettes=PALETTES) + "".join(styles)
+    digest = base64.b64encode(hashlib.sha256(style.encode()).digest()).decode()
+    html = engine.get_template("report.html.j2").render(report=report, style=Markup(style), digest=digest)
+    return html.translate(_UNPRINTABLE)
+
+
+def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple[Report, tuple[str, ...]]:
+    """Turn a comparison document into what the page shows, and the style rules its pictures need."""
+    chosen = next(one for one in document["structures"] if one["name"] == document["recommended"]["name"])
+    drawn = drawn_pairs(chosen)
+    ranked = sorted(document["structures"], key=lambda one: (one["log_loss"] is None, one["log_loss"] or 0.0))
+    structures, styles = [], dict.fromkeys("")
+    for number, entry in enumerate(ranked):
+        one, rules = _drawn(document, entry, pictures.get(entry["name"], ""), f"s{number}")
+        structures.append(one)
+        styles.update(dict.fromkeys(rules))
+    settings = document["settings"]
+    report = Report(
+        target=document["class"],
+        class_levels=tuple(document["class_levels"]),
+        source=PurePath(document["source"]).name or document["source"],
+        sha256=document["sha256"],
+        rows=f"{document['rows']:,}",
+        attributes_used=len(document["attributes"]),
+        folds=document["folds"],
+        repeats=settings["repeats"],
+        findings=findings(document),
+        scores=tuple(one.score for one in structures),
+        has_holdout=any("holdout" in one for one in ranked),
+        structures=tuple(structures),
+        folds_chart=fold_chart(document),
+        pairs=tuple(pair_row(pair, drawn) for pair in _strongest_pairs(document)),
+        pairs_total=f"{document['pairs_total']:,}",
+        pairs_rejected=f"{document['pairs_rejected']:,}",
+        heat=heat_map(document, drawn),
+        attributes=attribute_rows(document["schema"]),
+        left_out=tuple((one["name"], one["reason"]) for one in document["left_out"]),
+        settings=tuple((key, setting(value)) for key, value in settings.items()),
+        versions=tuple(document["versions"].items()),
+        warnings=tuple(document["warnings"]),
+        alpha=f"{settings['alpha']:g}",
+        adjust=_ADJUSTMENTS[settings["adjust"]],
+        negligible=f"{settings['negligible']:g}",
+    )
+    return report, tuple(styles)
+
+
+def _strongest_pairs(document: Mapping[str, Any]) -> list[Mapping[str, Any]]:
+    return sorted(document["pairs"], key=lambda one: -one["bits"])[:PAIRS_ON_PAGE]
+
+
+def _drawn(
+    document: Mapping[str, Any], entry: Mapping[str, Any], svg: str, prefix: str
+) -> tuple[Drawn, tuple[str, ...]]:
+    picture = embed(svg, prefix) if svg else None
+    tries = document["folds"] * document["settings"]["repeats"]
+    one = Drawn(
+        score=score_row(document, entry),
+        picture=Markup(picture.markup) if picture else Markup(),
+        edges=tuple(edge_row(edge, tries) for edge in sorted(entry["edges"], key=lambda one: -one["bits"])),
+        confusion=confusion_rows(entry, document["class_levels"]),
+        is_open=entry["name"] == document["recommended"]["name"],
+    )
+    return one, picture.styles if picture else ()

@@ -1,0 +1,55 @@
+"""How often learning from a random half of the rows chooses an edge."""
+
+from collections import Counter
+from collections.abc import Mapping, Sequence
+
+import numpy as np
+
+from bnx.contingency import COLUMNS
+from bnx.engines import LocalEngine
+from bnx.folds import halves
+from bnx.gating import Bounds
+from bnx.learners import Learner
+from bnx.learning import learn
+from bnx.recipe import Recipe
+from bnx.trainings import Training
+from bnx.views import View
+
+__all__ = ["Stability", "stability"]
+
+Stability = Mapping[tuple[int, frozenset[int]], float]  # (structure, the two ends) -> share of the halves
+
+_FLOATS_AT_A_TIME = 50_000_000
+
+
+def stability(
+    engine: LocalEngine, view: View, folds: int, learners: Sequence[Learner], bounds: Bounds, recipe: Recipe
+) -> Stability:
+    """Learn every structure from random halves, each half of the blocks of every fold.
+
+    view: cut points and pooled levels of all rows, which the halves share. An edge counts in either direction.
+
+    Source: Meinshausen & Buhlmann 2010 (halves without replacement).
+    """
+    if not recipe.resamples:
+        return {}
+    rows = engine.recoded(view)
+    plain = _plain(view)
+    found: Counter[tuple[int, frozenset[int]]] = Counter()
+    masks = halves(folds, engine.blocks // folds, recipe.resamples, recipe.seed)
+    pairs = len(view.domains) * (len(view.domains) - 1) // 2
+    together = max(1, _FLOATS_AT_A_TIME // (COLUMNS * max(pairs, 1)))
+    for start in range(0, recipe.resamples, together):
+        trainings = [
+            Training((), mask, plain, engine.class_counts[mask].sum(axis=0)) for mask in masks[start : start + together]
+        ]
+        for learned in learn(rows, trainings, learners, bounds, recipe):
+            for s, structure in enumerate(learned.structures):
+                found.update((s, frozenset(edge)) for edge in structure.edges)
+    return {key: number / recipe.resamples for key, number in found.items()}
+
+
+def _plain(view: View) -> View:
+    """See already recoded rows as they are."""
+    recode = np.tile(np.arange(view.sizes.max(), dtype=np.int32), (len(view.domains), 1))
+    return View(view.domains, recode, np.ones(len(view.domains), bool), view.sizes)

@@ -1,0 +1,166 @@
+"""Write a run's results: a whole folder or nothing."""
+
+import json
+import shutil
+import tempfile
+from collections.abc import Iterator, Mapping
+from concurrent.futures import ThreadPoolExecutor
+from contextlib import contextmanager, suppress
+from pathlib import Path
+from typing import Any
+
+import pandas as pd
+
+from bnx.comparison import Comparison
+from bnx.documents import (
+    COMPARISON_FORMAT,
+    comparison_document,
+    dot_of,
+    pair_results,
+    predictions_frame,
+    structure_document,
+)
+from bnx.drawing import render
+from bnx.errors import DataError, EngineError, SettingError
+from bnx.report import report_html
+from bnx.text import quoted
+
+__all__ = ["json_text", "new_folder", "write_results"]
+
+_OURS = "comparison.json"
+
+
+@contextmanager
+def new_folder(path: str, overwrite: bool) -> Iterator[Path]:
+    """Give a temporary folder beside ``path`` that takes its place when the block ends well, and vanishes if not.
+
+    Raises:
+        SettingError: the place is taken, or taken by something that bnx did not write.
+        DataError: the folder cannot be made or filled.
+    """
+    if not path:
+        raise SettingError("-o is empty; give the name of a folder")
+    place = Path(path).resolve()
+    _check_place(place, path, overwrite)
+    missing = [folder for folder in place.parents if not folder.exists()]
+    work = None
+    try:
+        place.parent.mkdir(parents=True, exist_ok=True)
+        work = Path(tempfile.mkdtemp(prefix=f".{place.name[:80]}-", dir=place.parent))
+        yield work
+        _check_place(place, path, overwrite)
+        _put_in_place(work, place)
+    except BrokenPipeError:
+        raise
+    except OSError as error:
+        raise DataError(f"cannot write {path} ({error.strerror or error}); choose another folder with -o") from None
+    finally:
+        if work:
+            shutil.rmtree(work, ignore_errors=True)
+        for folder in missing:
+            with suppress(OSError):  # it holds the results, or something of somebody else
+                folder.rmdir()
+
+
+def _put_in_place(work: Path, place: Path) -> None:
+    """Let a finished folder take the place of an older one, if there is one; that one goes last."""
+    work.chmod(0o755)
+    if not place.exists():
+        work.rename(place)
+        return
+    old = Path(tempfile.mkdtemp(prefix=f".{place.name[:80]}-old-", dir=place.parent))
+    try:
+        place.rename(old / "old")
+        try:
+            work.rename(place)
+        except OSError:
+            (old / "old").rename(place)
+            raise
+    finally:
+        shutil.rmtree(old, ignore_errors=True)
+
+
+def _check_place(place: Path, path: str, overwrite: bool) -> None:
+    """Refuse a place that holds something worth keeping."""
+    if not place.exists():
+        return
+    if not place.is_dir():
+        raise SettingError(f"{path} is a file, but -o takes a folder; give another name")
+    found = sorted(one.name for one in place.iterdir())
+    if not found:
+        return
+    if not overwrite:
+        raise SettingError(f"the folder {path} exists already; give another one with -o, or --overwrite to replace it")
+    ours = _files_of_a_run(place / _OURS)
+    strangers = [name for name in found if name not in ours]
+    if strangers:
+        raise SettingError(
+            f"the folder {path} holds {quoted(strangers, 3)}, which no run of bnx learn wrote, so it is left alone; "
+            "give another folder with -o"
+        )
+
+
+def _files_of_a_run(comparison: Path) -> set[str]:
+    """Name the files that a run wrote beside its comparison; none if that is not one of ours."""
+    try:
+        document = json.loads(comparison.read_text(encoding="utf-8"))
+        if document["format"] != COMPARISON_FORMAT:
+            return set()
+        names = [one["name"] for one in document["structures"]]
+    except (OSError, ValueError, TypeError, KeyError):
+        return set()
+    drawn = {f"{name}.{form}" for name in names for form in ("json", "dot", "svg")}
+    return drawn | {_OURS, "pairs.csv", "pairs.parquet", "predictions.parquet", "report.html"}
+
+
+def write_results(
+    comparison: Comparison, folder: Path, jobs: int, predictions: bool = False, all_pairs: bool = False
+) -> list[str]:
+    """Write every result file into a folder.
+
+    Returns:
+        Sentences about what could not be written.
+    """
+    document = comparison_document(comparison)
+    write_json(folder / _OURS, document)
+    frame = pd.DataFrame(document["pairs"])
+    frame.to_csv(folder / "pairs.csv", index=False)
+    structures = [structure_document(comparison, s) for s in range(len(comparison.classifiers))]
+    drawings = {one["name"]: dot_of(one) for one in structures}
+    for one in structures:
+        write_json(folder / f"{one['name']}.json", one)
+        (folder / f"{one['name']}.dot").write_text(drawings[one["name"]], encoding="utf-8")
+    pictures, notes = draw_all(drawings, jobs)
+    for name, picture in pictures.items():
+        (folder / f"{name}.svg").write_text(picture, encoding="utf-8")
+    (folder / "report.html").write_text(report_html(document, pictures), encoding="utf-8")
+    if all_pairs:
+        every = pd.DataFrame([result.to_dict() for result in pair_results(comparison, everything=True)])
+        every.to_parquet(folder / "pairs.parquet", index=False)
+    if predictions:
+        predictions_frame(comparison).to_parquet(folder / "predictions.parquet", index=False)
+    return notes
+
+
+def draw_all(drawings: Mapping[str, str], jobs: int) -> tuple[dict[str, str], list[str]]:
+    """Draw DOT texts as SVG; without an engine give none and say so."""
+    try:
+        with ThreadPoolExecutor(jobs) as pool:
+            drawn = list(pool.map(lambda dot: render(dot, "svg").decode(), drawings.values()))
+    except EngineError as error:
+        return {}, [f"no picture was drawn, only .dot files were written: {error}"]
+    return dict(zip(drawings, drawn, strict=True)), []
+
+
+def write_json(path: Path, document: Mapping[str, Any]) -> None:
+    """Write a document as JSON."""
+    path.write_text(json_text(document), encoding="utf-8")
+
+
+def json_text(document: Mapping[str, Any]) -> str:
+    """Lay a document out as JSON, a key a line at the top and compact below it."""
+    lines = [
+        f" {json.dumps(key)}: {json.dumps(value, ensure_ascii=False, allow_nan=False)}"
+        for key, value in document.items()
+    ]
+    return "{\n" + ",\n".join(lines) + "\n}\n"

@@ -1,0 +1,55 @@
+"""The rows that inner choices and gains are judged on: all of them, or a share of every fold and class."""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from bnx.engines import LocalEngine
+
+__all__ = ["Sample", "draw_sample"]
+
+_ROWS_PER_CLASS = 5_000
+_ROWS = 50_000
+
+
+@dataclass(frozen=True)
+class Sample:
+    """Rows of every fold, fold by fold.
+
+    ``codes`` (n, S) as stored; ``target`` (S,); ``weights`` (S,): rows of the table that each stands for;
+    ``starts`` (folds + 1,): first row of each fold.
+    """
+
+    codes: np.ndarray
+    target: np.ndarray
+    weights: np.ndarray
+    starts: np.ndarray
+
+    def rows(self, fold: int) -> slice:
+        """Rows of one fold."""
+        return slice(int(self.starts[fold]), int(self.starts[fold + 1]))
+
+
+def draw_sample(engine: LocalEngine, folds: int) -> Sample:
+    """Take at least 5,000 rows of every fold and class (all, if there are fewer) and 50,000 in all.
+
+    Rows are spread evenly over each fold and class; what lies in which fold was decided by the seed.
+    """
+    blocks = engine.blocks // folds
+    chosen, weights, starts = [], [], [0]
+    for fold in range(folds):
+        taken = 0
+        for c in range(engine.classes):
+            groups = (np.arange(fold * blocks, (fold + 1) * blocks)) * engine.classes + c
+            rows = np.concatenate([np.arange(engine.starts[g], engine.starts[g + 1]) for g in groups])
+            wanted = min(len(rows), max(_ROWS_PER_CLASS, -(-_ROWS * len(rows) // len(engine.order))))
+            places = (np.arange(wanted) * len(rows)) // max(wanted, 1)
+            chosen.append(rows[places])
+            weights.append(np.full(wanted, len(rows) / max(wanted, 1)))
+            taken += wanted
+        starts.append(starts[-1] + taken)
+    index = np.concatenate(chosen)
+    codes = engine.codes if len(index) == len(engine.order) else None
+    if codes is None or not np.array_equal(index, np.arange(len(index))):
+        codes = np.ascontiguousarray(engine.codes[:, index])
+    return Sample(codes, engine.target[index], np.concatenate(weights), np.array(starts))

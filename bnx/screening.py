@@ -1,0 +1,128 @@
+"""What to leave out of a table, and what to warn of, before anything is learnt from it."""
+
+from collections.abc import Sequence
+
+import numpy as np
+
+from bnx.columns import NumberColumn, Tally, TextColumn, part_numbers
+from bnx.text import count_of, quoted
+
+__all__ = ["column_warnings", "count_duplicates", "few_rows", "reason_to_leave_out"]
+
+IDENTIFIER_LEVELS = 50
+IDENTIFIER_SHARE = 0.9
+FEW_ROWS = 10
+MOSTLY_BLANK = 0.5
+MOSTLY_NUMBERS = 0.9
+
+
+def reason_to_leave_out(
+    column: TextColumn | NumberColumn, found: Tally, target: TextColumn, levels: int, drops_blanks: bool
+) -> str | None:
+    """Say why a column can or must tell nothing: all blank, constant, an identifier, or the class itself; else None.
+
+    ``target`` is the class with ``levels`` levels among the same rows. Identifiers are sought among texts and whole
+    numbers only: measurements may well differ in every row.
+    """
+    distinct, filled = len(found.counts), int(found.counts.sum())
+    if not distinct:
+        return "every cell is blank"
+    if distinct == 1 and (drops_blanks or not found.blanks):
+        return f"the same value in every {'row' if not found.blanks else 'cell that is not blank'}"
+    if distinct > IDENTIFIER_LEVELS and distinct > IDENTIFIER_SHARE * filled and _names_things(column, found):
+        some = f"{distinct:,} different values in {filled:,} rows"
+        return "a different value in every row" if distinct == filled else some
+    if distinct + (found.blanks > 0) == levels and _one_to_one(column, found, target):
+        return "it is the class under other names"
+    return None
+
+
+def _names_things(column: TextColumn | NumberColumn, found: Tally) -> bool:
+    """Tell a column that could be an identifier: texts, or whole numbers."""
+    return isinstance(column, TextColumn) or bool(np.all(found.values == np.floor(found.values)))
+
+
+def _one_to_one(column: TextColumn | NumberColumn, found: Tally, target: TextColumn) -> bool:
+    """Tell whether every value goes with one class level and every class level with one value."""
+    if isinstance(column, NumberColumn):
+        codes = np.searchsorted(found.values, column.values)
+    else:
+        codes = column.codes.astype(np.int64)
+    width = int(target.codes.max()) + 1
+    cells = np.flatnonzero(np.bincount(codes * width + target.codes))
+    return len(np.unique(cells // width)) == len(cells) == len(np.unique(cells % width))
+
+
+def few_rows(name: str, levels: Sequence[str], counts: np.ndarray) -> list[str]:
+    """Warn of class levels with fewer than 10 rows."""
+    return [
+        f"class {name} = {level} has {count_of(int(count), 'row')}: every figure for this class is anecdotal"
+        for level, count in zip(levels, counts, strict=True)
+        if count < FEW_ROWS
+    ]
+
+
+def column_warnings(column: TextColumn | NumberColumn, found: Tally, rows: int, max_levels: int) -> list[str]:
+    """Warn of a column that is mostly blank, has many levels, is nearly numeric, or spells a level in several ways."""
+    warnings = []
+    if found.blanks > MOSTLY_BLANK * rows:
+        warnings.append(f"{column.name} is blank in {found.blanks:,} of {count_of(rows, 'row')}")
+    if isinstance(column, TextColumn):
+        texts = [column.texts[raw - 1] for raw in found.values]
+        if len(texts) > max_levels:
+            warnings.append(
+                f"{column.name} has {len(texts):,} levels; "
+                f"all but the {max_levels:,} most frequent of the training rows are pooled"
+            )
+        warnings += _nearly_numeric(column.name, texts) + _spellings(column.name, texts)
+    return warnings
+
+
+def _nearly_numeric(name: str, texts: list[str]) -> list[str]:
+    """Warn of a text column in which only a few levels are no numbers."""
+    numbers = part_numbers(texts)
+    others = [text for text, number in zip(texts, numbers, strict=True) if not number]
+    if not others or len(texts) - len(others) <= 20 or len(others) > (1 - MOSTLY_NUMBERS) * len(texts):
+        return []
+    return [
+        f"{name} is read as text because of {quoted(map(repr, others), 3)}, the only "
+        f"{count_of(len(others), 'level')} of {len(texts):,} that {'is' if len(others) == 1 else 'are'} not a number; "
+        "leave such cells blank to have it numeric"
+    ]
+
+
+def _spellings(name: str, texts: list[str]) -> list[str]:
+    """Warn of levels that differ only in capitals or in white space around them."""
+    first: dict[str, str] = {}
+    twins = [(first.setdefault(text.strip().casefold(), text), text) for text in sorted(texts)]
+    pairs = [f"{one!r} and {other!r}" for one, other in twins if one != other]
+    if not pairs:
+        return []
+    return [f"{name} has levels that differ only in capitals or in spaces around them: {quoted(pairs, 3)}"]
+
+
+def count_duplicates(columns: Sequence[TextColumn | NumberColumn]) -> int:
+    """Count the rows that repeat an earlier row in all columns, by sums of 64-bit hashes.
+
+    Among a million rows a chance match turns up in about one table of 37 million.
+
+    Source: the mixing function of SplitMix64, Steele, Lea & Flood 2014 (constants from memory).
+    """
+    total = np.zeros(len(columns[0].blanks), dtype=np.uint64)
+    for position, column in enumerate(columns):
+        key = _mixed(np.array([position + 1], dtype=np.uint64))
+        if isinstance(column, NumberColumn):
+            total += _mixed(np.where(column.blanks, np.nan, column.values).view(np.uint64) ^ key)
+        else:
+            total += _mixed(np.arange(len(column.texts) + 1, dtype=np.uint64) ^ key)[column.codes]
+    total.sort()
+    return int(np.count_nonzero(total[1:] == total[:-1]))
+
+
+def _mixed(numbers: np.ndarray) -> np.ndarray:
+    """Scramble uint64 numbers, each into one of its own."""
+    mixed = numbers + np.uint64(0x9E3779B97F4A7C15)
+    mixed = (mixed ^ (mixed >> np.uint64(30))) * np.uint64(0xBF58476D1CE4E5B9)
+    mixed = (mixed ^ (mixed >> np.uint64(27))) * np.uint64(0x94D049BB133111EB)
+    scrambled: np.ndarray = mixed ^ (mixed >> np.uint64(31))
+    return scrambled

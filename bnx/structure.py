@@ -1,0 +1,66 @@
+"""A structure: which attributes each attribute takes as parents, besides the class."""
+
+import re
+from dataclasses import dataclass
+
+from bnx.errors import StructureError
+
+__all__ = ["Structure", "words"]
+
+
+@dataclass(frozen=True)
+class Structure:
+    """Parents per attribute, in the order they were taken; the class is a parent of all and is not listed.
+
+    Raises:
+        StructureError: the parents form a cycle, or an attribute is its own parent or names a parent twice.
+    """
+
+    name: str
+    parents: tuple[tuple[int, ...], ...]
+
+    def __post_init__(self) -> None:
+        """Refuse parents that contradict each other."""
+        for child, parents in enumerate(self.parents):
+            if child in parents or len(set(parents)) < len(parents):
+                raise StructureError(
+                    f"attribute {child} of {self.name} has itself or one parent twice among its parents"
+                )
+        self.order()
+
+    @property
+    def edges(self) -> tuple[tuple[int, int], ...]:
+        """(parent, child) of every edge, by child, then in the order taken."""
+        return tuple((parent, child) for child, parents in enumerate(self.parents) for parent in parents)
+
+    def order(self) -> tuple[int, ...]:
+        """List the attributes with parents before children.
+
+        Raises:
+            StructureError: there is no such order.
+        """
+        placed: list[int] = []
+        waiting = list(range(len(self.parents)))
+        while waiting:
+            done = set(placed)
+            free = [child for child in waiting if all(parent in done for parent in self.parents[child])]
+            if not free:
+                raise StructureError(f"the parents in {self.name} form a cycle through attributes {waiting}")
+            placed += free
+            waiting = [child for child in waiting if child not in set(free)]
+        return tuple(placed)
+
+
+def words(name: str) -> str:
+    """Say a structure's name in words: ``up to 2 parents, tested``."""
+    base, _, tested = name.partition("-")
+    ending = ", tested" if tested == "tested" else ""
+    if base == "naive":
+        return "no edges"
+    if base == "tan":
+        return "tree" + ending
+    found = re.fullmatch(r"kdb(\d+)", base)
+    if found:
+        number = int(found[1])
+        return f"up to {number} parent{'' if number == 1 else 's'}{ending}"
+    return name

@@ -1,0 +1,50 @@
+"""Words and numbers for people: aligned tables, number formats, the nearest name."""
+
+import difflib
+from collections.abc import Iterable, Sequence
+
+__all__ = ["aligned", "count_of", "fixed", "nearest", "quoted", "signed"]
+
+
+def fixed(value: float | None, digits: int = 3) -> str:
+    """Format a number with a fixed count of decimals; nothing for None."""
+    return "" if value is None else f"{value:.{digits}f}"
+
+
+def signed(value: float | None, digits: int = 3) -> str:
+    """Format a number with its sign; nothing for None."""
+    return "" if value is None else f"{value:+.{digits}f}"
+
+
+def count_of(number: int, noun: str, plural: str | None = None) -> str:
+    """Say how many: ``1 row``, ``6,000 rows``."""
+    return f"{number:,} {noun if number == 1 else plural or noun + 's'}"
+
+
+def quoted(names: Iterable[str], limit: int = 8) -> str:
+    """List names for a sentence, the first few in full and the others as a number."""
+    every = list(names)
+    shown = ", ".join(every[:limit])
+    return shown if len(every) <= limit else f"{shown} and {len(every) - limit:,} more"
+
+
+def nearest(name: str, names: Sequence[str]) -> str:
+    """End a sentence about an unknown name: the nearest known one, or all of them."""
+    close = difflib.get_close_matches(name, names, n=1, cutoff=0.6)
+    if not close:
+        folded = {known.casefold(): known for known in names}
+        close = [folded[name.casefold()]] if name.casefold() in folded else []
+    return f"did you mean {close[0]}?" if close else f"known: {quoted(names)}"
+
+
+def aligned(header: Sequence[str], rows: Iterable[Sequence[str]], left: int = 1) -> str:
+    """Lay out rows under a header; the first ``left`` columns flush left, the others right."""
+    lines = [list(header), *(list(row) for row in rows)]
+    widths = [max(len(line[k]) for line in lines) for k in range(len(header))]
+    return "\n".join(
+        "  ".join(
+            cell.ljust(width) if k < left else cell.rjust(width)
+            for k, (cell, width) in enumerate(zip(line, widths, strict=True))
+        ).rstrip()
+        for line in lines
+    )

@@ -1,0 +1,113 @@
+"""Verdicts on pairs tested as one family: adjusted p, what could have been detected, and what it all says."""
+
+from collections.abc import Sequence
+from dataclasses import dataclass, fields
+
+import numpy as np
+
+from bnx.independence import METHODS, Statistics, Tested, bits_interval, bits_upper, detectable_bits
+from bnx.multiplicity import adjusted, threshold
+
+__all__ = ["VERDICTS", "Judgement", "TestResult", "judge", "results"]
+
+VERDICTS = ("negligible", "detected, but negligible", "dependent", "not enough data")
+
+_NEGLIGIBLE, _DETECTED_NEGLIGIBLE, _DEPENDENT, _UNKNOWN = range(4)
+
+
+@dataclass(frozen=True)
+class Judgement:
+    """What the tests of P pairs say, judged as one family; arrays (P,).
+
+    ``method`` indexes METHODS, ``verdict`` indexes VERDICTS, ``at`` is the p-value the family was judged by,
+    ``low`` and ``high`` bound the bits at 95 %. NaN where there is nothing to say.
+    """
+
+    statistic: np.ndarray
+    p: np.ndarray
+    method: np.ndarray
+    carried: np.ndarray
+    adjusted: np.ndarray
+    at: float
+    rejected: np.ndarray
+    low: np.ndarray
+    high: np.ndarray
+    detectable: np.ndarray
+    verdict: np.ndarray
+
+    def take(self, chosen: np.ndarray) -> "Judgement":
+        """Keep the chosen pairs."""
+        parts = (getattr(self, field.name) for field in fields(self))
+        return Judgement(*(part[chosen] if isinstance(part, np.ndarray) else part for part in parts))
+
+
+def judge(
+    stats: Statistics, tested: Tested, *, adjust: str = "bh", alpha: float = 0.05, negligible: float = 0.005
+) -> Judgement:
+    """Judge P tested pairs as one family and give each a verdict; ``negligible`` in bits.
+
+    Raises:
+        SettingError: the adjustment is not known.
+    """
+    corrected = adjusted(tested.p, adjust)
+    at = threshold(tested.p, adjust, alpha)
+    rejected = corrected <= alpha
+    low, high = bits_interval(stats)
+    small = bits_upper(stats) < negligible
+    verdict = np.select(
+        [small & ~rejected, small & rejected, rejected], [_NEGLIGIBLE, _DETECTED_NEGLIGIBLE, _DEPENDENT], _UNKNOWN
+    )
+    detectable = detectable_bits(at, np.where(stats.varies, stats.df, 0.0), stats.rows)
+    return Judgement(*tested, corrected, at, rejected, low, high, detectable, verdict.astype(np.int8))
+
+
+@dataclass(frozen=True)
+class TestResult:
+    """One pair, tested: bits per record, statistics, p-values and the verdict; NaN where there is nothing to say."""
+
+    __test__ = False  # pytest would collect the class by its name
+
+    a: str
+    b: str
+    bits: float
+    bits_corrected: float
+    bits_low: float
+    bits_high: float
+    marginal_bits: float
+    x2: float
+    g: float
+    statistic: float
+    df: int
+    p_value: float
+    adjusted_p: float
+    method: str
+    sample_carries_it: bool
+    min_expected: float
+    share_expected_below_5: float
+    cramers_v: float
+    detectable_bits: float
+    detectable_at: float
+    verdict: str
+
+    def to_dict(self) -> dict[str, str | float | int | bool | None]:
+        """Give the fields by name, None for NaN."""
+        return {field.name: _plain(getattr(self, field.name)) for field in fields(self)}
+
+
+def results(
+    names: Sequence[tuple[str, str]], stats: Statistics, marginal: Statistics, judgement: Judgement
+) -> list[TestResult]:
+    """Write P judged pairs as one result each."""
+    method, verdict = (np.array(words, dtype=object) for words in (METHODS, VERDICTS))
+    at = np.full(stats.rows.shape, judgement.at)
+    shared = (stats.bits, stats.bits_corrected, judgement.low, judgement.high, marginal.bits, stats.x2, stats.g)
+    tested = (judgement.statistic, stats.df.astype(np.int64), judgement.p, judgement.adjusted)
+    trust = (method[judgement.method], judgement.carried, stats.min_expected, stats.share_below_5)
+    effect = (stats.cramers_v, judgement.detectable, at, verdict[judgement.verdict])
+    columns = [column.tolist() for column in (*shared, *tested, *trust, *effect)]
+    return [TestResult(*pair, *row) for pair, *row in zip(names, *columns, strict=True)]
+
+
+def _plain(value: str | float | int | bool) -> str | float | int | bool | None:
+    """Replace NaN, which JSON does not know, by None."""
+    return None if isinstance(value, float) and np.isnan(value) else value

@@ -1,0 +1,35 @@
+import numpy as np
+import pytest
+
+from bnx.coarsening import coarsen, needs_coarsening
+from bnx.domains import Domain
+from bnx.errors import SettingError
+
+
+def test_pooling_keeps_the_most_frequent_levels():
+    fine = Domain("a", ("p", "q", "(other)", "r", "s", "(blank)"), blank=True)
+    counts = np.array([[1, 1], [5, 0], [0, 2], [0, 2], [0, 0], [3, 3]])
+    coarse = coarsen(fine, counts, "mdl", 2)
+    assert coarse.domain == Domain("a", ("p", "q", "(other 2)", "(blank)"), pooled=True, blank=True)
+    assert coarse.codes.tolist() == [0, 1, 2, 2, 2, 3]
+    assert coarsen(fine, counts, "mdl", 5).domain == fine
+    assert needs_coarsening(fine, 4)
+    assert not needs_coarsening(fine, 5)
+    pooled = Domain("a", ("p", "q", "r", "(other)"), pooled=True)
+    again = coarsen(pooled, np.array([[1], [2], [3], [9]]), "mdl", 1)
+    assert again.domain == Domain("a", ("r", "(other)"), pooled=True)
+    assert again.codes.tolist() == [1, 1, 0, 1]
+
+
+def test_numeric_coarsening_keeps_blanks_apart():
+    fine = Domain("x", ("<= 1", "1 to 2", "2 to 3", "> 3", "(blank)"), numeric=True, cuts=(1.0, 2.0, 3.0), blank=True)
+    counts = np.array([[30, 0], [30, 0], [0, 30], [0, 30], [9, 9]])
+    coarse = coarsen(fine, counts, "mdl", 50)
+    assert coarse.domain == Domain("x", ("<= 2", "> 2", "(blank)"), numeric=True, cuts=(2.0,), blank=True)
+    assert coarse.codes.tolist() == [0, 0, 1, 1, 2]
+    nothing = coarsen(fine, counts * 0, "frequency:4", 50)
+    assert nothing.domain == Domain("x", ("any", "(blank)"), numeric=True, blank=True)
+    assert nothing.codes.tolist() == [0, 0, 0, 0, 1]
+    with pytest.raises(SettingError) as caught:
+        coarsen(fine, counts, "auto", 50)
+    assert str(caught.value) == "bins is 'auto'; here it must be one way to cut: mdl, frequency:K or width:K"

@@ -1,0 +1,68 @@
+"""The exact test of 2 x 2 x K tables against enumeration, scipy, and simulation."""
+
+from itertools import product
+
+import numpy as np
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+from scipy.stats import fisher_exact, hypergeom
+
+from bnx.exact import exact_tail
+
+CELL = st.integers(0, 7)
+
+
+def enumerated(tables: np.ndarray) -> float:
+    """Sum the chances of all combinations of strata (S, 4) whose X2 is at least as large as observed."""
+    strata, observed = [], 0.0
+    for a, b, c, d in tables.tolist():
+        n, down, across = a + b + c + d, a + b, a + c
+        if min(down, across, n - down, n - across) == 0:
+            continue
+        first = np.arange(max(0, down + across - n), min(down, across) + 1)
+        x2 = n * (first * n - down * across) ** 2 / (down * (n - down) * across * (n - across))
+        strata.append(list(zip(x2, hypergeom(n, down, across).pmf(first), strict=True)))
+        observed += x2[a - first[0]]
+    total = 0.0
+    for cells in product(*strata):
+        if sum(x2 for x2, _ in cells) >= observed - 1e-9 * (1 + observed):
+            total += float(np.prod([chance for _, chance in cells]))
+    return total
+
+
+@given(st.lists(st.tuples(CELL, CELL, CELL, CELL), min_size=1, max_size=3))
+@settings(max_examples=150, deadline=None)
+def test_few_sums_are_kept_apart_and_equal_enumeration(strata: list[tuple[int, int, int, int]]) -> None:
+    tables = np.array(strata, dtype=np.int32)
+    assert exact_tail(tables, 2, 2) == pytest.approx(enumerated(tables), rel=1e-9)
+
+
+def test_one_stratum_equals_fishers_test_where_both_order_tables_alike() -> None:
+    # With equal row totals X2 and the chance of a table order the tables alike; scipy's two-sided test uses the chance.
+    for table in ([[3, 7], [8, 2]], [[1, 9], [6, 4]], [[12, 3], [5, 10]]):
+        counts = np.array(table, dtype=np.int32).reshape(1, 4)
+        assert exact_tail(counts, 2, 2) == pytest.approx(fisher_exact(table).pvalue, rel=1e-9)
+
+
+def test_unused_rows_columns_and_strata_change_nothing() -> None:
+    small = np.array([[4, 1, 2, 6], [3, 3, 0, 5]], dtype=np.int32)
+    wide = np.zeros((3, 3, 4), dtype=np.int32)
+    wide[0][np.ix_([0, 2], [1, 3])] = small[0].reshape(2, 2)
+    wide[2][np.ix_([1, 2], [0, 2])] = small[1].reshape(2, 2)
+    wide[1][1, 1] = 9
+    assert exact_tail(wide.reshape(3, 12), 3, 4) == exact_tail(small, 2, 2)
+
+
+def test_many_sums_gathered_in_steps_stay_within_monte_carlo_error() -> None:
+    rng = np.random.default_rng(5)
+    tables = rng.multinomial(200, [0.02, 0.08, 0.12, 0.78], 10).astype(np.int32)
+    draws, observed, drawn = 400_000, 0.0, np.zeros(400_000)
+    for a, b, c, d in tables.tolist():
+        n, down, across = a + b + c + d, a + b, a + c
+        scale = n / (down * (n - down) * across * (n - across))
+        observed += scale * (a * n - down * across) ** 2
+        first = rng.hypergeometric(across, n - across, down, draws)
+        drawn += scale * (first * float(n) - down * across) ** 2
+    share = float(np.mean(drawn >= observed - 1e-9 * (1 + observed)))
+    assert exact_tail(tables, 2, 2) == pytest.approx(share, abs=4 * np.sqrt(share * (1 - share) / draws))

@@ -1,0 +1,323 @@
+"""The page: nothing lost, nothing run, every figure that of the comparison document."""
+
+import base64
+import copy
+import hashlib
+import re
+from html.parser import HTMLParser
+from typing import Any
+
+import pytest
+from smallrun import HOSTILE_LEVELS, HOSTILE_NAMES, SmallRun, small_run
+
+from bnx.charts import heat_map
+from bnx.errors import FormatError
+from bnx.findings import drawn_pairs, findings
+from bnx.report import PAIRS_ON_PAGE, report_html
+
+VOID = {"meta", "br", "link", "img", "input", "hr"}
+
+
+class Page(HTMLParser):
+    """Reads a page as a browser would: elements with attributes, texts, and the cells of tables by id."""
+
+    def __init__(self, html: str) -> None:
+        super().__init__()
+        self.elements: list[tuple[str, dict[str, str]]] = []
+        self.tables: dict[str, list[list[str]]] = {}
+        self.rows: list[list[str]] = []
+        self.texts: list[str] = []
+        self.style = ""
+        self._open: list[str] = []
+        self.feed(html)
+
+    def handle_starttag(self, tag: str, attrs: list[tuple[str, str | None]]) -> None:
+        found = {key: value or "" for key, value in attrs}
+        self.elements.append((tag, found))
+        if tag == "table":
+            self.rows = self.tables.setdefault(found.get("id", f"table {len(self.tables)}"), [])
+        if tag == "tr":
+            self.rows.append([])
+        if tag in {"td", "th"}:
+            self.rows[-1].append("")
+        if tag not in VOID:
+            self._open.append(tag)
+
+    def handle_endtag(self, tag: str) -> None:
+        assert self._open.pop() == tag
+
+    def handle_data(self, data: str) -> None:
+        if self._open and self._open[-1] == "style":
+            self.style += data
+            return
+        self.texts.append(data)
+        if "td" in self._open or "th" in self._open:
+            self.rows[-1][-1] += data
+
+    @property
+    def text(self) -> str:
+        return re.sub(r"\s+", " ", "".join(self.texts))
+
+
+def page_of(run: SmallRun) -> Page:
+    return Page(report_html(run.comparison, run.pictures))
+
+
+@pytest.fixture(scope="module")
+def plain() -> SmallRun:
+    return small_run()
+
+
+@pytest.fixture(scope="module")
+def hostile() -> SmallRun:
+    return small_run(hostile=True)
+
+
+@pytest.fixture
+def document(plain: SmallRun) -> dict[str, Any]:
+    return copy.deepcopy(plain.comparison)
+
+
+@pytest.mark.parametrize("is_hostile", [False, True])
+def test_nothing_runs_and_nothing_is_loaded(is_hostile: bool) -> None:
+    page = page_of(small_run(is_hostile))
+    assert not {tag for tag, _ in page.elements} & {
+        "script",
+        "img",
+        "iframe",
+        "object",
+        "link",
+        "base",
+        "form",
+        "image",
+    }
+    for _, attributes in page.elements:
+        assert not [key for key in attributes if key.startswith("on") or key in {"src", "style", "action", "srcset"}]
+        assert all(attributes[key].startswith("#") for key in attributes if key.endswith("href"))
+    assert "http" not in re.sub(r"http-equiv", "", report_html(small_run(is_hostile).comparison, {}))
+    assert "url(" not in page.style.replace("url(#", "")
+    assert "@import" not in page.style
+
+
+def test_the_policy_allows_exactly_the_one_style_sheet(hostile: SmallRun) -> None:
+    page = page_of(hostile)
+    digest = base64.b64encode(hashlib.sha256(page.style.encode()).digest()).decode()
+    policy = next(one["content"] for tag, one in page.elements if one.get("http-equiv") == "Content-Security-Policy")
+    assert policy == f"default-src 'none'; style-src 'sha256-{digest}'; base-uri 'none'; form-action 'none'"
+    assert sum(tag == "style" for tag, _ in page.elements) == 1
+
+
+def test_hostile_names_and_levels_stand_on_the_page_as_they_are(hostile: SmallRun) -> None:
+    page = page_of(hostile)
+    for name in (*HOSTILE_NAMES, *HOSTILE_LEVELS):
+        assert re.sub(r"\s+", " ", name) in page.text
+    attributes = {row[0] for row in page.tables["attribute-table"][1:]}
+    assert attributes == set(hostile.comparison["attributes"])
+    assert {*HOSTILE_NAMES[:-1]} <= attributes
+
+
+def test_control_characters_become_a_sign_that_can_be_seen(document: dict[str, Any]) -> None:
+    document["warnings"] = ["a\x00b\x1bc\x85d"]
+    assert "a�b�c�d" in report_html(document, {})
+
+
+def test_ids_are_unique_and_every_reference_is_met(plain: SmallRun) -> None:
+    elements = page_of(plain).elements
+    ids = [one["id"] for _, one in elements if "id" in one]
+    assert len(ids) == len(set(ids))
+    assert all(one["href"][1:] in ids for _, one in elements if "href" in one)
+
+
+def test_every_structure_stands_with_its_picture_and_every_edge(plain: SmallRun) -> None:
+    page = page_of(plain)
+    shown = [one["data-structure"] for tag, one in page.elements if tag == "details" and "data-structure" in one]
+    assert sorted(shown) == sorted(one["name"] for one in plain.comparison["structures"])
+    assert sum(one.get("class", "").startswith("bnx-picture") for tag, one in page.elements if tag == "svg") == len(
+        shown
+    )
+    cells = [row[:3] for rows in page.tables.values() for row in rows]
+    for structure in plain.comparison["structures"]:
+        for edge in structure["edges"]:
+            assert [edge["parent"], edge["child"], f"{edge['bits']:.3f}"] in cells
+
+
+def test_score_table_shows_the_figures_of_the_document(plain: SmallRun) -> None:
+    rows = page_of(plain).tables["score-table"][1:]
+    assert len(rows) == len(plain.comparison["structures"])
+    losses = [one["log_loss"] for one in plain.comparison["structures"]]
+    assert [row[3].split()[0] for row in rows] == [f"{loss:.3f}" for loss in sorted(losses)]
+    for one in plain.comparison["structures"]:
+        row = next(row for row in rows if row[0].startswith(one["name"] + one["words"]))
+        against = one["against_baseline"]
+        assert row[1:4] == [
+            f"{len(one['edges'])}",
+            f"{one['free_parameters']:,}",
+            f"{one['log_loss']:.3f} ± {one['log_loss_se']:.3f}",
+        ]
+        if against["difference"] is not None:
+            low, high = against["interval"]
+            assert row[4] == f"{against['difference']:+.3f} [{low:+.3f}, {high:+.3f}]"
+            assert float(row[5]) == pytest.approx(against["p_value"], abs=5e-5)
+            assert row[6] == f"{100 * against['probability_better']:.1f} %"
+        else:
+            assert [cell.strip() for cell in row[4:7]] == ["–"] * 3
+        figures = [f"{one[key]:.3f}" for key in ("brier", "accuracy", "auc", "calibration_error")]
+        assert row[7:] == [*figures, f"{one['temperature']:.2f}"]
+
+
+def test_every_pair_stands_in_the_ledger_strongest_first(plain: SmallRun) -> None:
+    page = page_of(plain)
+    pairs = sorted(plain.comparison["pairs"], key=lambda one: -one["bits"])
+    expected = [[f"{one['a']} ~ {one['b']}", one["verdict"], f"{one['bits']:.4f}"] for one in pairs]
+    assert [[cell.strip() for cell in row[:3]] for row in page.tables["pair-table"][1:]] == expected
+    drawn = [row[-1] for row in page.tables["pair-table"][1:]]
+    chosen = next(
+        one for one in plain.comparison["structures"] if one["name"] == plain.comparison["recommended"]["name"]
+    )
+    assert drawn.count("yes") == len(drawn_pairs(chosen))
+
+
+def test_above_the_limit_the_strongest_pairs_are_shown_and_the_file_named(document: dict[str, Any]) -> None:
+    document["pairs"] = [{**document["pairs"][0], "bits": 1 / (number + 1)} for number in range(PAIRS_ON_PAGE + 7)]
+    document["pairs_total"] = PAIRS_ON_PAGE + 7
+    page = Page(report_html(document, {}))
+    assert len(page.tables["pair-table"]) == PAIRS_ON_PAGE + 1
+    assert f"Shown are the strongest 300 of {PAIRS_ON_PAGE + 7}; pairs.csv holds all." in page.text
+
+
+def test_confusion_and_recall_are_those_of_the_document(plain: SmallRun) -> None:
+    rows = [row for table in page_of(plain).tables.values() for row in table]
+    for one in plain.comparison["structures"]:
+        recalls = [f"{100 * one['recall'][level]:.1f} %" for level in plain.comparison["class_levels"]]
+        assert [one["name"], *recalls] in rows
+    naive = plain.comparison["structures"][0]
+    for level, counts in zip(plain.comparison["class_levels"], naive["confusion"], strict=True):
+        shares = [f"{count:,}{100 * count / sum(counts):.0f} %" for count in counts]
+        assert [level, *shares, f"{100 * naive['recall'][level]:.1f} %"] in rows
+
+
+def test_the_first_screen_says_what_and_why_and_how_much(document: dict[str, Any]) -> None:
+    text = Page(report_html(document, {})).text
+    chosen = next(one for one in document["structures"] if one["name"] == document["recommended"]["name"])
+    naive = document["structures"][0]
+    assert document["recommended"]["reason"] in text
+    assert f"Model grade with {chosen['name']}" in text
+    assert (
+        f"It saves {-chosen['against_baseline']['difference']:.3f} bits of log loss per record against naive, " in text
+    )
+    share = -chosen["against_baseline"]["difference"] / naive["log_loss"]
+    assert f", {100 * share:.0f} % of what that leaves open (bits saved: 95 % interval" in text
+    assert (
+        f"{round(1000 * (1 - chosen['accuracy']))} mistakes; naive makes {round(1000 * (1 - naive['accuracy']))}"
+        in text
+    )
+    assert f"{document['recommended']['honest_log_loss']:.3f} bits of log loss (0 is perfect) and" in text
+    assert f"multiplied by {naive['temperature']:.2f}" in text
+    assert "dock ~ alarm" in text
+
+
+def test_a_worse_choice_and_an_even_one_are_called_so(document: dict[str, Any]) -> None:
+    chosen = next(one for one in document["structures"] if one["name"] == document["recommended"]["name"])
+    chosen["against_baseline"] |= {"difference": 0.25, "interval": [0.125, 0.5]}
+    gain = findings(document).gain
+    assert gain is not None
+    assert (gain.kind, gain.bits, gain.interval, gain.credible) == ("worse", "0.250", ("-0.500", "-0.125"), True)
+    assert "It costs 0.250 bits of log loss per record more than naive" in Page(report_html(document, {})).text
+    chosen["against_baseline"] |= {"difference": 0.0001, "interval": [-0.1, 0.1]}
+    assert "Its log loss is that of naive" in Page(report_html(document, {})).text
+
+
+@pytest.mark.parametrize(
+    ("temperature", "says"),
+    [
+        (0.5, "Over-confident: before correction, naive counts its evidence about 2.0 times"),
+        (1.0, "About right: the evidence of naive had to be multiplied by 1.00"),
+        (1.25, "Too timid: the evidence of naive had to be multiplied by 1.25"),
+    ],
+)
+def test_the_temperature_is_put_in_words(document: dict[str, Any], temperature: float, says: str) -> None:
+    document["structures"][0]["temperature"] = temperature
+    assert says in Page(report_html(document, {})).text
+
+
+def test_without_temperature_the_calibration_slope_speaks_or_nothing(document: dict[str, Any]) -> None:
+    document["settings"]["temperature"] = False
+    document["structures"][0] |= {"temperature": 1.0, "calibration_slope": 0.5}
+    assert findings(document).confidence.times == "2.0"
+    document["structures"][0]["calibration_slope"] = None
+    assert "Not measured: there are too few mistakes to tell" in Page(report_html(document, {})).text
+
+
+def test_missing_figures_are_said_not_printed_as_none(document: dict[str, Any]) -> None:
+    for one in document["structures"]:
+        one |= {"log_loss": None, "log_loss_se": None, "auc": None, "calibration_slope": None}
+        one["against_baseline"] = dict.fromkeys(one["against_baseline"])
+        one["recall"] = dict.fromkeys(one["recall"])
+        for fold in one["by_fold"]:
+            fold["log_loss"] = None
+        for edge in one["edges"]:
+            edge |= {"stability": None, "gate_p": None}
+    for pair in document["pairs"]:
+        pair.update(
+            dict.fromkeys(("statistic", "p_value", "adjusted_p", "cramers_v", "min_expected", "detectable_bits"))
+        )
+        pair.update({"bits_low": None, "bits_high": None, "method": "none", "verdict": "not enough data"})
+    document["recommended"] |= {"honest_log_loss": None, "honest_accuracy": None}
+    text = Page(report_html(document, {})).text
+    assert "None" not in text.replace("None.", "")
+    assert "nan" not in text
+    assert "infinite bits" in text
+
+
+def test_one_structure_and_no_drawing_engine(plain: SmallRun) -> None:
+    run = small_run(structures=("naive",))
+    text = Page(report_html(run.comparison, {})).text
+    assert "Keep naive for grade" in text
+    assert "Not drawn: no drawing engine was found" in text
+    assert "There is nothing to compare with naive." in text
+
+
+def test_settings_warnings_versions_and_cautions_stand_on_the_page(document: dict[str, Any]) -> None:
+    document["warnings"] = ["the first <warning>", "the second"]
+    document["left_out"] = [{"name": "id <b>", "reason": "a different value in every row"}]
+    page = Page(report_html(document, {}))
+    cells = {row[0]: row[1] for rows in page.tables.values() for row in rows if len(row) == 2}
+    assert set(document["settings"]) <= set(cells)
+    assert cells["seed"] == "1"
+    for words in (
+        "the first <warning>", "the second", "id <b>: a different value in every row", document["sha256"],
+        f"numpy {document['versions']['numpy']}", "A dependence is not a cause", "A probability is not a decision",
+        "bias in who was recorded and how", "A rare class or a small table makes every figure soft",
+        "health, safety, credit, work or rights", "leave the decision to those licensed to make it",
+        "Friedman, Geiger & Goldszmidt 1997", "Nadeau & Bengio 2003",
+    ):  # fmt: skip
+        assert words in page.text
+
+
+def test_a_second_table_is_shown_where_there_is_one(document: dict[str, Any]) -> None:
+    assert "separate table" not in Page(report_html(document, {})).text
+    for one in document["structures"]:
+        one["holdout"] = {"log_loss": 0.4375}
+    assert all(row[-1] == "0.438" for row in Page(report_html(document, {})).tables["score-table"][1:])
+
+
+def test_the_same_document_gives_the_same_page(plain: SmallRun) -> None:
+    assert report_html(plain.comparison, plain.pictures) == report_html(copy.deepcopy(plain.comparison), plain.pictures)
+
+
+def test_two_attributes_and_one(document: dict[str, Any]) -> None:
+    two = document["pairs"][0]
+    chart = heat_map({"attributes": [two["a"], two["b"]], "pairs": [two]}, frozenset())
+    assert chart is not None
+    assert len(chart.marks) == 1
+    assert heat_map({"attributes": ["alone"], "pairs": []}, frozenset()) is None
+    document |= {"attributes": ["alone"], "pairs": [], "pairs_total": 0, "pairs_rejected": 0}
+    document["schema"] = [{**document["schema"][0], "name": "alone"}]
+    for one in document["structures"]:
+        one["edges"] = []
+    assert "There is only one attribute" in Page(report_html(document, {})).text
+
+
+def test_a_picture_that_is_no_svg_is_refused(document: dict[str, Any]) -> None:
+    with pytest.raises(FormatError, match="the picture for s0 is no SVG"):
+        report_html(document, dict.fromkeys((one["name"] for one in document["structures"]), "<svg"))
