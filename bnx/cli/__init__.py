@@ -86,8 +86,9 @@ def main() -> None:
     except MemoryError:
         _refuse("the memory of this machine is not enough for this table; give fewer --structures or fewer columns")
     except OSError as error:
+        if not error.filename:
+            _let_go_of_output()
         what = f"use {error.filename}" if error.filename else "write the output"
-        _let_go_of_output()
         _refuse(f"cannot {what} ({error.strerror or error}); give another place")
 
 

@@ -16,7 +16,7 @@ from typing import Any
 _START = time.perf_counter(), 0.0  # processor time counts from the start of the interpreter
 
 from bnx import comparison, documents, evaluation, results  # noqa: E402  (imports are a stage, so the clock runs first)
-from bnx.cli import learn  # noqa: E402
+from bnx.cli.summary import summary  # noqa: E402
 from bnx.engines import LocalEngine  # noqa: E402
 from bnx.reading import Source, open_source  # noqa: E402
 from bnx.recipe import Recipe  # noqa: E402
@@ -96,7 +96,7 @@ def watch(clock: Clock) -> None:
         with clock.stage(MAPPED[stage]):
             return plain(engine, function, items, stage)
 
-    LocalEngine.map = mapped  # type: ignore[method-assign]  # the stage has no function of its own
+    LocalEngine.map = mapped  # type: ignore[method-assign, assignment]  # these stages have no function of their own
 
 
 def profile(path: str, target: str, jobs: int) -> dict[str, list[float]]:
@@ -107,7 +107,7 @@ def profile(path: str, target: str, jobs: int) -> dict[str, list[float]]:
     with tempfile.TemporaryDirectory() as folder:
         found = comparison.compare(open_source(path), Recipe(target), jobs, lambda *_: None)
         results.write_results(found, Path(folder), jobs)
-        learn.summary(documents.comparison_document(found), folder)
+        summary(documents.comparison_document(found), folder)
     clock.turn_to("")
     return clock.spent
 

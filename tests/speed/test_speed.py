@@ -1,4 +1,4 @@
-"""How fast, as ratios measured side by side in one run (``pytest -m speed tests/speed -s``); no absolute time is asserted.
+"""How fast, as ratios measured side by side in one run: ``pytest -m speed tests/speed -s``; no time is asserted.
 
 Both bounds stand for a million rows of 50 attributes (2 to 12 levels) and 3 classes.
 """
