@@ -12,13 +12,14 @@ from bnx.kernels import calibrated_loss, tempered_losses
 from bnx.learning import Learned
 from bnx.parameters import Smoothing
 from bnx.sampling import Sample
-from bnx.scoring import Members, evidence, families
+from bnx.scoring import Members, Terms, evidence, families, terms_of
 
 __all__ = ["Choice", "Trial", "choose", "inner_losses", "make_trial", "mean_loss"]
 
 Held = tuple[int, ...]
 
 _TEMPERATURES = np.array([1.0, 0.7, 0.45])
+_ROWS = 512  # rows judged at a time, so that their evidence stays in the cache
 
 
 @dataclass(frozen=True)
@@ -77,28 +78,28 @@ def inner_losses(
 
     def judge(held: Held) -> list[tuple[tuple[Held, int], np.ndarray]]:
         learned = trial.learned[held]
-        results = []
-        for fold in held:
-            rows = sample.rows(fold)
-            sums: dict[int, np.ndarray] = {}
-            every = [options] * len(learned.structures)
-            scores = evidence(sample.codes, rows, learned.training.view, learned.structures, every, trial.counts[held])
-            for one in scores:
-                if id(one) not in sums:
-                    sums[id(one)] = np.zeros((len(options), len(temperatures)))
-                    tempered_losses(
-                        one,
-                        learned.training.log_prior,
-                        sample.target[rows],
-                        sample.weights[rows],
-                        temperatures,
-                        sums[id(one)],
-                    )
-            results.append(((held, fold), np.array([sums[id(one)] for one in scores])))
-        return results
+        every = [options] * len(learned.structures)
+        terms = terms_of(learned.training.view, learned.structures, every, trial.counts[held])
+        prior = learned.training.log_prior
+        return [((held, fold), _losses(terms, prior, sample, fold, len(options), temperatures)) for fold in held]
 
     sets = [held for held in trial.learned if held]
     return {key: sums for results in engine.map(judge, sets, "trying smoothings") for key, sums in results}
+
+
+def _losses(
+    terms: Terms, log_prior: np.ndarray, sample: Sample, fold: int, options: int, temperatures: np.ndarray
+) -> np.ndarray:
+    """Sum the losses of one fold's rows, (structures, V, temperatures), a few rows at a time."""
+    rows = sample.rows(fold)
+    sums = np.zeros((max(terms.holder) + 1, options, len(temperatures)))
+    for first in range(rows.start, rows.stop, _ROWS):
+        part = slice(first, min(first + _ROWS, rows.stop))
+        found = terms.empty(part.stop - part.start)
+        terms.add(sample.codes, part.start, part.stop, found)
+        for one, total in zip(found, sums, strict=True):
+            tempered_losses(one, log_prior, sample.target[part], sample.weights[part], temperatures, total)
+    return np.asarray(sums[list(terms.holder)])
 
 
 def choose(

@@ -2,6 +2,7 @@
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 
@@ -47,6 +48,19 @@ class Classifier:
         logs = log_tables(counts.reshape(len(counts), -1), counts.shape[1:], [self.smoothing])
         return np.asarray(np.exp(logs.T).reshape(counts.shape))
 
+    @cached_property
+    def _log_tables(self) -> dict[tuple[int, tuple[int, ...]], np.ndarray]:
+        """Log tables made so far, by attribute and the parents left out."""
+        return {}
+
+    def _log_table(self, child: int, left_out: tuple[int, ...]) -> np.ndarray:
+        """Smooth the family of an attribute without some of its parents (their axes in the counts), (cells, C)."""
+        key = (child, left_out)
+        if key not in self._log_tables:
+            counts = self.counts[child].sum(axis=left_out, dtype=np.int32)
+            self._log_tables[key] = log_tables(counts.reshape(len(counts), -1), counts.shape[1:], [self.smoothing])
+        return self._log_tables[key]
+
     def terms(self, codes: np.ndarray, child: int) -> np.ndarray:
         """Log table terms (nats) of one attribute, (N, C), for codes (n, N) with -1 for what was never seen.
 
@@ -60,10 +74,10 @@ class Classifier:
             rows = np.flatnonzero(known & (patterns == pattern))
             seen = [k for k in range(len(parents)) if pattern >> k & 1]
             unseen = tuple(k + 1 for k in range(len(parents)) if not pattern >> k & 1)
-            counts = self.counts[child].sum(axis=unseen, dtype=np.int32)
-            table = log_tables(counts.reshape(len(counts), -1), counts.shape[1:], [self.smoothing])
             members = [*parents[seen].tolist(), child]
-            terms[rows] = table[np.ravel_multi_index(tuple(codes[members][:, rows]), counts.shape[1:])]
+            sizes = tuple(len(self.domains[member]) for member in members)
+            table = self._log_table(child, unseen)
+            terms[rows] = table[np.ravel_multi_index(tuple(codes[members][:, rows]), sizes)]
         return terms
 
     def probabilities(self, codes: np.ndarray) -> np.ndarray:

@@ -56,7 +56,7 @@ def _positions(cuts: np.ndarray, counts: np.ndarray, bins: str) -> np.ndarray:
         return frequency_cuts(counts.sum(axis=1), k)
     if kind == "width":
         return width_cuts(cuts, counts.sum(axis=1), k)
-    raise SettingError(f"bins is {bins!r}; here it must be one way to cut: mdl, frequency:K or width:K")
+    raise SettingError(f"--bins: {bins!r} cannot be used here; give one way to cut: mdl, frequency:K or width:K")
 
 
 def _pool(domain: Domain, counts: np.ndarray, max_levels: int) -> Coarsening:

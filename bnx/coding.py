@@ -1,5 +1,6 @@
 """From a source of rows to a coded table: which columns take part, what their levels are, and what looks odd."""
 
+import math
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Literal
@@ -18,6 +19,7 @@ from bnx.text import count_of, quoted
 __all__ = ["Coded", "SideColumn", "code_table"]
 
 CLASS_LEVELS = 100
+_FEW_KINDS = 10  # times the rows: repeats are then a matter of course
 
 Column = TextColumn | NumberColumn
 
@@ -106,8 +108,8 @@ def code_table(
         used, again = _screened(raw, used, keep, drops=True) if dropped else (used, [])
         left_out = sorted(left_out + again, key=lambda item: source.columns.index(item.name))
     duplicates = count_duplicates([*(raw.attributes[name] for name in used), raw.target])
-    warnings += _table_warnings(raw, used, max_levels) + _duplicate_warning(duplicates, len(raw.rows))
     table, pooled = _coded(raw, used)
+    warnings += _table_warnings(raw, used, max_levels) + _duplicate_warning(duplicates, len(raw.rows), table.schema)
     side = {name: _side(column) for name, column in raw.side.items()}
     return Coded(table, tuple(left_out), tuple(warnings + pooled), side, read, duplicates)
 
@@ -235,14 +237,18 @@ def _table_warnings(raw: _Raw, used: Mapping[str, Tally], max_levels: int) -> li
     return warnings
 
 
-def _duplicate_warning(duplicates: int, rows: int) -> list[str]:
-    """Warn of rows that may be copies."""
+def _duplicate_warning(duplicates: int, rows: int, schema: Schema) -> list[str]:
+    """Warn of rows that may be copies; where few kinds of rows are possible, they repeat anyway."""
+    kinds = math.prod(len(domain) for domain in (*schema.attributes, schema.target))
     if not duplicates:
         return []
-    return [
+    sentence = (
         f"{count_of(duplicates, 'row')} of {rows:,} {'repeats' if duplicates == 1 else 'repeat'} an earlier row in "
-        "every attribute used and the class; if they are copies of one record, every figure is too sure of itself"
-    ]
+        "every attribute used and the class"
+    )
+    if kinds <= _FEW_KINDS * rows:
+        return [f"{sentence}, as must happen where only {kinds:,} different rows are possible"]
+    return [f"{sentence}; if they are copies of one record, every figure is too sure of itself"]
 
 
 def _coded(raw: _Raw, used: Mapping[str, Tally]) -> tuple[CodedTable, list[str]]:

@@ -13,10 +13,11 @@ from bnx.dependence import Pairs
 from bnx.encoding import encode
 from bnx.engines import start_local
 from bnx.engines.local import Progress
-from bnx.errors import DataError
+from bnx.errors import DataError, SettingError
 from bnx.evaluation import Evaluation, evaluate
 from bnx.folds import assign_blocks, assign_given, assign_grouped, sub_blocks
 from bnx.gains import edge_gains
+from bnx.gating import Bounds
 from bnx.independence import Statistics, p_values
 from bnx.judging import Against, Recommendation, StructureScore, against, recommend, score
 from bnx.learners import Learner, learner
@@ -24,8 +25,8 @@ from bnx.learning import make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
 from bnx.reading import Source
-from bnx.recipe import Recipe
-from bnx.refining import refined
+from bnx.recipe import MOST_FOLDS, Recipe
+from bnx.refining import REPORTED, refined
 from bnx.resampling import stability
 from bnx.scoring import families
 from bnx.structure import Structure
@@ -85,13 +86,11 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
     progress("reading", 0, 1)
     coded = recipe.code(source)
     progress("reading", 1, 1)
+    if holdout:
+        holdout.check([*coded.table.schema.names, recipe.target])
     bounds = make_bounds(recipe, coded.table.schema.names)
     learners = [learner(name) for name in recipe.structures]
-    evaluations, folds = [], recipe.folds
-    for repeat in range(recipe.repeats):
-        blocks, folds = _fold_blocks(coded, recipe, repeat)
-        engine = start_local(coded.table, blocks, folds * sub_blocks(folds), jobs, progress)
-        evaluations.append(evaluate(engine, coded.table.schema, folds, learners, bounds, recipe))
+    evaluations, folds = _evaluations(coded, recipe, learners, bounds, jobs, progress)
     gains = [fold for one in evaluations for fold in edge_gains(one)]
     first = evaluations[0]
     learned = first.learned(())
@@ -100,9 +99,10 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
     baseline = recipe.structures.index(recipe.baseline)
     statistics = Statistics.of(learned.pairs.statistics)
     tested = p_values(statistics, recipe.test)
-    tested = refined(first.engine, [learned.training], learned.pairs.requests(0), statistics, tested)
+    tested = refined(first.engine, [learned.training], learned.pairs.requests(0), statistics, tested, REPORTED)
     judged = judge(statistics, tested, adjust=recipe.adjust, alpha=recipe.alpha, negligible=recipe.negligible)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
+    held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
     return Comparison(
         recipe=recipe,
         source=PurePath(source.name).name,
@@ -115,14 +115,34 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
         judgement=judged,
         results=tuple(results),
         against=tuple(against(results, baseline, folds)),
-        edges=tuple(edge_ledger(first, gains, stable, learners, recipe, folds)),
+        edges=tuple(edge_ledger(first, gains, stable, learners, bounds, recipe, folds)),
         recommendation=recommend(evaluations, results, recipe.structures, folds),
-        held_out=tuple(_held_out(classifiers, holdout, recipe)) if holdout else (),
+        held_out=held_out,
         left_out=coded.left_out,
-        warnings=(*coded.warnings, *_run_warnings(evaluations, coded, recipe, learners)),
+        warnings=(*coded.warnings, *_run_warnings(evaluations, coded, recipe, learners), *not_scored),
         evaluations=tuple(evaluations),
         line_of_row=coded.table.rows,
     )
+
+
+def _evaluations(
+    coded: Coded, recipe: Recipe, learners: Sequence[Learner], bounds: Bounds, jobs: int, progress: Progress
+) -> tuple[list[Evaluation], int]:
+    """Evaluate every repeat; give the evaluations and the number of folds."""
+    evaluations: list[Evaluation] = []
+    dealt: list[np.ndarray] = []
+    folds = recipe.folds
+    for repeat in range(recipe.repeats):
+        blocks, folds = _fold_blocks(coded, recipe, repeat)
+        if any(np.array_equal(blocks, other) for other in dealt):
+            raise SettingError(
+                f"--repeats {recipe.repeats}: repeat {repeat + 1} deals the folds just as an earlier one did and would "
+                f"be no new evidence; give --repeats {len(dealt)} or fewer"
+            )
+        dealt.append(blocks)
+        engine = start_local(coded.table, blocks, folds * sub_blocks(folds), jobs, progress)
+        evaluations.append(evaluate(engine, coded.table.schema, folds, learners, bounds, recipe))
+    return evaluations, folds
 
 
 def _fold_blocks(coded: Coded, recipe: Recipe, repeat: int) -> tuple[np.ndarray, int]:
@@ -135,6 +155,11 @@ def _fold_blocks(coded: Coded, recipe: Recipe, repeat: int) -> tuple[np.ndarray,
             raise DataError(
                 f"--fold-column {column.name} holds {count_of(len(used), 'different value')}, but at least 3 folds are "
                 "needed to choose inside each training fold; take a column with more values or drop the option"
+            )
+        if len(used) > MOST_FOLDS:
+            raise DataError(
+                f"--fold-column {column.name} holds {len(used):,} different values, but nested choices take at most "
+                f"{MOST_FOLDS} folds; take a coarser column, or --group {column.name} to keep its rows together"
             )
         return assign_given(codes, target, rows, recipe.seed), len(used)
     if len(rows) < recipe.folds:
@@ -165,14 +190,17 @@ def _classifier(evaluation: Evaluation, s: int, coded: Coded) -> Classifier:
     )
 
 
-def _held_out(classifiers: Sequence[Classifier], source: Source, recipe: Recipe) -> list[Scores]:
-    """Score the final classifiers on a table that took no part in anything."""
+def _held_out(
+    classifiers: Sequence[Classifier], source: Source, recipe: Recipe
+) -> tuple[tuple[Scores, ...], list[str]]:
+    """Score the final classifiers on a table that took no part in anything; say which rows could not be scored."""
     target = classifiers[0].target
     parts: list[list[np.ndarray]] = [[] for _ in classifiers]
-    truth = []
+    truth, dropped = [], 0
     for codes, _ in encode(source, [*classifiers[0].domains, target]):
         known = codes[-1] >= 0
         truth.append(codes[-1][known])
+        dropped += int((~known).sum())
         for part, classifier in zip(parts, classifiers, strict=True):
             part.append(classifier.probabilities(codes[:-1][:, known]))
     rows = np.concatenate(truth) if truth else np.zeros(0, np.int32)
@@ -180,7 +208,11 @@ def _held_out(classifiers: Sequence[Classifier], source: Source, recipe: Recipe)
         raise DataError(
             f"{source.name} (--holdout) has no row whose {recipe.target} is one of {', '.join(target.levels)}"
         )
-    return [scores(np.concatenate(part), rows, len(target)) for part in parts]
+    notes = []
+    if dropped:
+        why = f"{recipe.target} is blank there or was never seen"
+        notes.append(f"{count_of(dropped, 'row')} of {source.name} (--holdout) left out: {why}")
+    return tuple(scores(np.concatenate(part), rows, len(target)) for part in parts), notes
 
 
 def _run_warnings(
@@ -198,11 +230,17 @@ def _run_warnings(
         notes.append(
             f"rows of one {recipe.group} may be alike, but the tests assume independent records: every p is descriptive"
         )
+    sizes = [rows.stop - rows.start for rows in evaluations[0].fold_rows]
+    if max(sizes) > 1.2 * min(sizes):
+        notes.append(
+            f"folds hold {min(sizes):,} to {max(sizes):,} rows; differences to {recipe.baseline} are means over folds "
+            "and may differ from those of the log losses, which are means over rows"
+        )
     for level, rows in zip(coded.table.schema.target.levels, engine.class_counts.sum(axis=0).tolist(), strict=True):
         if rows < len(evaluations[0].fold_rows):
             notes.append(
                 f"class {level} has {count_of(rows, 'row')} for {len(evaluations[0].fold_rows)} folds: some hold none"
             )
-    if any(member.name.endswith("-tested") for member in learners) and recipe.alpha > 0.1:
+    if any(member.tested for member in learners) and recipe.alpha > 0.1:
         notes.append(f"edges are tested at {recipe.alpha:g}: that share of the drawn edges may be false")
     return notes

@@ -3,7 +3,6 @@
 Folds, pairs of folds, random halves, threads and machines are all that one law.
 """
 
-from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -66,22 +65,25 @@ class FamilyCounts:
         return FamilyCounts(self.members, self.sizes, self.counts - other.counts)
 
 
-def sum_blocks(counts: np.ndarray, total: np.ndarray, masks: Sequence[np.ndarray]) -> list[np.ndarray]:
-    """Sum counts (blocks, C, cells) over the blocks of each mask (blocks,) bool, as (C, cells) int32.
+_GATHERED = 1 << 16  # cells that are gathered and summed at once; more of them are added block by block
+
+
+def _sum(counts: np.ndarray, blocks: np.ndarray) -> np.ndarray:
+    """Sum some blocks of counts (blocks, C, cells), as (C, cells) int32."""
+    if len(blocks) * counts[0].size <= _GATHERED:
+        return np.asarray(counts[blocks].sum(axis=0, dtype=np.int32))
+    result = np.zeros(counts.shape[1:], np.int32)
+    for block in blocks:
+        result += counts[block]
+    return result
+
+
+def sum_blocks(counts: np.ndarray, total: np.ndarray, mask: np.ndarray) -> np.ndarray:
+    """Sum counts (blocks, C, cells) over the blocks of ``mask`` (blocks,) bool, as (C, cells) int32.
 
     A training set leaves few blocks out, so it is the ``total`` minus those.
     """
-    sums = []
-    for mask in masks:
-        chosen = np.flatnonzero(mask)
-        missing = np.flatnonzero(~mask)
-        if len(missing) < len(chosen):
-            result = total.copy()
-            for block in missing:
-                result -= counts[block]
-        else:
-            result = np.zeros_like(total)
-            for block in chosen:
-                result += counts[block]
-        sums.append(result)
-    return sums
+    chosen, missing = np.flatnonzero(mask), np.flatnonzero(~mask)
+    if len(missing) < len(chosen):
+        return np.asarray(total - _sum(counts, missing))
+    return _sum(counts, chosen)

@@ -99,7 +99,7 @@ def _parts(
     """List (which pairs, their layout, their counts (C, cells)) of one training set."""
     parts = []
     if shared.any():
-        parts.append((np.flatnonzero(shared), counted.layout, sum_blocks(counted.counts, total, [training.mask])[0]))
+        parts.append((np.flatnonzero(shared), counted.layout, sum_blocks(counted.counts, total, training.mask)))
     for p in np.flatnonzero(~shared):
         i, j = left[p : p + 1], right[p : p + 1]
         counts = engine.training_counts((int(i[0]), int(j[0])), training.view, training.mask)

@@ -24,7 +24,9 @@ def parse_bins(text: str) -> tuple[str, int]:
         return text, 0
     found = re.fullmatch(r"(frequency|width):([0-9]+)", text)
     if not found or not 2 <= int(found[2]) <= 255:
-        raise SettingError(f"bins is {text!r}; it must be auto, mdl, frequency:K or width:K with K from 2 to 255")
+        raise SettingError(
+            f"--bins: {text!r} cannot be used; give auto, mdl, frequency:K or width:K with K from 2 to 255"
+        )
     return found[1], int(found[2])
 
 

@@ -19,7 +19,7 @@ from bnx.judging import Against, StructureScore
 from bnx.ledger import EdgeEvidence
 from bnx.picture import Arrow, Chip, Picture
 from bnx.structure import words
-from bnx.verdicts import TestResult, results
+from bnx.verdicts import VERDICTS, TestResult, results
 
 __all__ = [
     "COMPARISON_FORMAT",
@@ -96,6 +96,7 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
             "pairs": [result.to_dict() for result in pair_results(comparison)],
             "pairs_total": len(comparison.pairs.left),
             "pairs_rejected": int(judged.rejected.sum()),
+            "pairs_verdicts": {word: int((judged.verdict == code).sum()) for code, word in enumerate(VERDICTS)},
             "left_out": [{"name": one.name, "reason": one.reason} for one in comparison.left_out],
             "warnings": list(comparison.warnings),
             "versions": versions(),
@@ -221,6 +222,7 @@ def structure_document(comparison: Comparison, s: int) -> dict[str, Any]:
             "settings": comparison.recipe.to_dict(),
             "seed": comparison.recipe.seed,
             "rows": comparison.rows,
+            "folds": comparison.folds,
             "source": comparison.source,
             "sha256": comparison.sha256,
             "versions": versions(),

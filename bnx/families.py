@@ -54,7 +54,7 @@ def _counts(
         counted = engine.family_counts(members, view).counts
         total = counted.sum(axis=0, dtype=np.int32)
         for number in numbers:
-            yield number, sum_blocks(counted, total, [trainings[number].mask])[0]
+            yield number, sum_blocks(counted, total, trainings[number].mask)
     else:
         for number in numbers:
             yield number, engine.training_counts(members, trainings[number].view, trainings[number].mask)

@@ -33,13 +33,12 @@ class Gain:
 class Confidence:
     """How sure a structure is of itself before correction: ``over``, ``right``, ``timid`` or ``unknown``.
 
-    ``factor``: what its evidence had to be multiplied by; ``times``: how often it counts its evidence in effect.
+    ``factor``: what its evidence had to be multiplied by.
     """
 
     name: str
     kind: str
     factor: str
-    times: str
 
 
 @dataclass(frozen=True)
@@ -99,7 +98,7 @@ def findings(document: Mapping[str, Any]) -> Findings:
     drawn = drawn_pairs(chosen)
     dependent = [pair for pair in document["pairs"] if pair["verdict"] == "dependent"]
     lines = [_pair_line(pair, drawn) for pair in sorted(dependent, key=lambda one: -one["bits"])]
-    picks = advice["picks"]
+    picks, verdicts = advice["picks"], document["pairs_verdicts"]
     rows = dict(zip(document["class_levels"], (sum(row) for row in chosen["confusion"]), strict=True))
     rarest = min(rows, key=lambda level: rows[level])
     mistakes = [round(1000 * (1 - one["accuracy"])) for one in (chosen, baseline)]
@@ -114,13 +113,13 @@ def findings(document: Mapping[str, Any]) -> Findings:
         mistakes=str(mistakes[0]),
         mistakes_baseline=str(mistakes[1]),
         mistakes_difference=mistakes[1] - mistakes[0],
-        honest_log_loss=fixed(advice["honest_log_loss"]),
+        honest_log_loss="infinite" if advice["honest_log_loss"] is None else fixed(advice["honest_log_loss"]),
         honest_right=percent(advice["honest_accuracy"]),
         picked=f"{picks.count(chosen['name'])} of {len(picks)}" if picks else "",
         confidence=_confidence(by_name.get("naive", baseline), settings["temperature"]),
-        dependent=len(dependent),
-        negligible=sum(pair["verdict"].endswith("negligible") for pair in document["pairs"]),
-        unknown=sum(pair["verdict"] == "not enough data" for pair in document["pairs"]),
+        dependent=verdicts["dependent"],
+        negligible=verdicts["negligible"] + verdicts["detected, but negligible"],
+        unknown=verdicts["not enough data"],
         listed=len(document["pairs"]),
         modelled=sum(line.drawn for line in lines),
         strongest=tuple(lines[:_SHOWN]),
@@ -156,7 +155,6 @@ def _confidence(entry: Mapping[str, Any], tempered: bool) -> Confidence:
     """Read off the temperature, or without one the calibration slope, how sure a structure is of itself."""
     factor = entry["temperature"] if tempered else entry["calibration_slope"]
     if factor is None:
-        return Confidence(entry["name"], "unknown", "", "")
+        return Confidence(entry["name"], "unknown", "")
     kind = "over" if factor < _RIGHT[0] else "timid" if factor > _RIGHT[1] else "right"
-    times = f"{1 / factor:.1f}" if factor > 0 else ""
-    return Confidence(entry["name"], kind, fixed(factor, 2), times)
+    return Confidence(entry["name"], kind, fixed(factor, 2))

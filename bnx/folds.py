@@ -79,7 +79,9 @@ def assign_grouped(groups: np.ndarray, target: np.ndarray, seed: int, folds: int
     _check_folds(folds)
     names, of_row = np.unique(groups, return_inverse=True)
     if len(names) < folds:
-        raise DataError(f"the rows form {len(names)} group(s) for {folds} folds; give at most {len(names)} folds")
+        raise DataError(
+            f"{folds} folds need as many groups, but the rows form {len(names)}; give fewer --folds or another --group"
+        )
     counts = _class_counts(of_row, target, len(names))
     order = _big_first(counts, keyed_hash(_key(seed, repeat, _GROUP_ORDER), np.arange(len(names))))
     fold = np.empty(len(names), dtype=np.int64)

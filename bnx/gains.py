@@ -8,7 +8,7 @@ from bnx.choosing import mean_loss
 from bnx.evaluation import Evaluation
 from bnx.families import for_each_family
 from bnx.parameters import log_tables
-from bnx.scoring import Members, add_family, evidence
+from bnx.scoring import Members, family_terms, terms_of
 
 __all__ = ["Gains", "edge_gains"]
 
@@ -57,16 +57,21 @@ def _gains(
     if not structure.edges or not len(truth):
         return [(edge, 0.0) for edge in structure.edges]
     counts = choice.trial.counts[(fold,)]
-    whole = evidence(sample.codes, rows, view, [structure], [(choice.smoothings[s],)], counts)[0]
+    terms = terms_of(view, [structure], [(choice.smoothings[s],)], counts)
+    whole = terms.empty(len(truth))
+    terms.add(sample.codes, rows.start, rows.stop, whole)
     prior, calibration = learned.training.log_prior, choice.calibrations[s]
-    before = mean_loss(whole, prior, calibration, truth, weights)
+    before = mean_loss(whole[0], prior, calibration, truth, weights)
     gains = []
     for parent, child in structure.edges:
         full = (*structure.parents[child], child)
         less = _without(structure.parents[child], parent, child)
+        tables = [
+            sign * log_tables(table, view.sizes_of(members), [choice.smoothings[s]])
+            for members, table, sign in ((full, counts[full], -1.0), (less, reduced[(fold, less)], 1.0))
+        ]
         changed = whole.copy()
-        for members, table, sign in ((full, counts[full], -1.0), (less, reduced[(fold, less)], 1.0)):
-            terms = sign * log_tables(table, view.sizes_of(members), [choice.smoothings[s]])
-            add_family(sample.codes, rows, view, members, terms, [changed])
-        gains.append(((parent, child), mean_loss(changed, prior, calibration, truth, weights) - before))
+        change = family_terms(view, (full, less), tables, ((0,), (0,)), (0,))
+        change.add(sample.codes, rows.start, rows.stop, changed)
+        gains.append(((parent, child), mean_loss(changed[0], prior, calibration, truth, weights) - before))
     return gains

@@ -150,7 +150,6 @@ def pick(
         The best, the pick, and the chances of the pick against the best.
     """
     best = int(np.argmin(means))
-    best = next(s for s in range(len(means)) if structures[s].parents == structures[best].parents)
     region = region_of(means)
     chances = [_chances(row, losses[best], folds, region) for row in losses]
     able = [s for s in range(len(structures)) if s == best or chances[s].worse < 0.5]
@@ -206,7 +205,7 @@ def _reason(
     if chosen == best:
         return f"It has the lowest log loss, and {fewer}."
     if structures[chosen].parents == structures[best].parents:
-        return f"It learnt the same edges as {names[best]}, which has the lowest log loss, and {fewer}."
+        return f"From all rows it learnt the same edges as {names[best]}, which has the lowest log loss; {fewer}."
     return (
         f"It has the fewest edges of all structures that are not credibly worse than the best, {names[best]}: the "
         f"difference is {means[chosen] - means[best]:.4f} bits, with a chance of {chances.worse:.0%} to exceed "

@@ -14,12 +14,12 @@ from bnx.gating import Answer, Bounds, Gate, Question, learn_together
 from bnx.independence import Statistics, p_values
 from bnx.learners import Learner
 from bnx.recipe import Recipe
-from bnx.refining import refined
+from bnx.refining import Doubt, refined
 from bnx.structure import Structure
 from bnx.text import nearest
 from bnx.trainings import Training
 
-__all__ = ["Learned", "ask_tests", "learn", "make_bounds", "test_statistics"]
+__all__ = ["Learned", "ask_tests", "doubt", "learn", "make_bounds", "test_statistics"]
 
 
 @dataclass(frozen=True)
@@ -43,7 +43,7 @@ def make_bounds(recipe: Recipe, names: Sequence[str]) -> Bounds:
     def numbers(option: str, pairs: Sequence[str]) -> tuple[tuple[int, int], ...]:
         found = []
         for pair in pairs:
-            ends = pair.split(":")
+            ends = _ends(pair, names)
             for end in ends:
                 if end not in from_names:
                     raise DataError(
@@ -55,6 +55,13 @@ def make_bounds(recipe: Recipe, names: Sequence[str]) -> Bounds:
         return tuple(dict.fromkeys(found))
 
     return Bounds(tuple(names), numbers("require", recipe.require), numbers("forbid", recipe.forbid))
+
+
+def _ends(pair: str, names: Sequence[str]) -> tuple[str, str]:
+    """Split PARENT:CHILD at the colon that leaves two known names, else at the first."""
+    places = [place for place, character in enumerate(pair) if character == ":"]
+    splits = [(pair[:place], pair[place + 1 :]) for place in places]
+    return next((split for split in splits if set(split) <= set(names)), splits[0])
 
 
 def learn(
@@ -71,20 +78,21 @@ def learn(
     """
     measured = measure(engine, trainings, marginal_of_first)
     attributes = len(bounds.names)
-    low, high = _doubt(learners, attributes, recipe.alpha)
+    unsure = doubt(learners, attributes, recipe.alpha)
     learnings, known = [], []
     for number, (dependence, pairs) in enumerate(measured):
         statistics = Statistics.of(pairs.statistics)
         tested = refined(
-            engine, trainings, pairs.requests(number), statistics, p_values(statistics, recipe.test), low, high
+            engine, trainings, pairs.requests(number), statistics, p_values(statistics, recipe.test), unsure
         )
         gate = Gate(recipe.alpha, pairs.matrix(tested.p, attributes))
-        known.append((gate.p, pairs.matrix(statistics.bits_corrected, attributes)))
+        p = np.where(np.isnan(gate.p), 1.0, gate.p)
+        known.append((p.tolist(), pairs.matrix(statistics.bits_corrected, attributes).tolist()))
         learnings += [member.learn(dependence, gate, bounds) for member in learners]
 
     def ask(questions: Sequence[tuple[int, Question]]) -> list[Answer]:
         numbered = [(number // len(learners), question) for number, question in questions]
-        tested = iter(ask_tests(engine, trainings, [one for one in numbered if one[1].given], recipe.test, low, high))
+        tested = iter(ask_tests(engine, trainings, [one for one in numbered if one[1].given], recipe.test, unsure))
         return [next(tested) if question.given else _answer(*known[number], question) for number, question in numbered]
 
     structures = learn_together(learnings, ask)
@@ -94,19 +102,22 @@ def learn(
     ]
 
 
-def _doubt(learners: Sequence[Learner], attributes: int, alpha: float) -> tuple[float, float]:
-    """Bound the p-values that decide about an edge: from far below the strictest threshold to above the mildest."""
-    depths = [member.depths for member in learners if member.name.endswith("-tested")]
+def doubt(learners: Sequence[Learner], attributes: int, alpha: float) -> Doubt:
+    """Bound the p-values by moments that an exact test could move over a threshold of the tested structures.
+
+    The strictest threshold is alpha / depths / pairs, the mildest alpha x edges of a tree / pairs = 2 alpha /
+    attributes. p by moments is too small where it errs, so there is more room below than above.
+    """
+    depths = [member.depths for member in learners if member.tested]
     if not depths or attributes < 2:
-        return 1.0, 0.0
+        return Doubt(1.0, 0.0)
     pairs = attributes * (attributes - 1) / 2
-    return alpha / max(depths) / pairs / 1000, min(1.0, 5 * alpha * 2 / attributes)
+    return Doubt(alpha / max(depths) / pairs / 1000, min(1.0, 5 * alpha * 2 / attributes))
 
 
-def _answer(p: np.ndarray, bits: np.ndarray, question: Question) -> Answer:
+def _answer(p: list[list[float]], bits: list[list[float]], question: Question) -> Answer:
     """Answer a question that only takes the class as given, from what was measured of all pairs."""
-    found = p[question.child, question.candidate]
-    return Answer(1.0 if np.isnan(found) else float(found), float(bits[question.child, question.candidate]))
+    return Answer(p[question.child][question.candidate], bits[question.child][question.candidate])
 
 
 def ask_tests(
@@ -114,20 +125,16 @@ def ask_tests(
     trainings: Sequence[Training],
     questions: Sequence[tuple[int, Question]],
     test: str,
-    low: float = 0.0,
-    high: float = 0.02,
+    unsure: Doubt,
 ) -> list[Answer]:
-    """Answer (number of the training set, question) pairs by conditional-independence tests.
-
-    low, high: the p-values that are worth an exact test.
-    """
+    """Answer (number of the training set, question) pairs by conditional-independence tests."""
     if not questions:
         return []
     requests = [(number, (*question.given, question.candidate, question.child)) for number, question in questions]
     rows = test_statistics(engine, trainings, requests)
     different = {request: place for place, request in enumerate(rows)}
     statistics = Statistics.of(np.array(list(rows.values())))
-    p = refined(engine, trainings, list(rows), statistics, p_values(statistics, test), low, high).p
+    p = refined(engine, trainings, list(rows), statistics, p_values(statistics, test), unsure).p
     p = np.where(np.isnan(p), 1.0, p)
     bits = statistics.bits_corrected
     return [Answer(float(p[different[request]]), float(bits[different[request]])) for request in requests]

@@ -1,5 +1,6 @@
 """The edge ledger: the evidence on every edge that a structure draws."""
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -7,9 +8,9 @@ import numpy as np
 
 from bnx.evaluation import Evaluation
 from bnx.gains import Gains
-from bnx.gating import Question
+from bnx.gating import Bounds, Question
 from bnx.learners import Learner
-from bnx.learning import ask_tests
+from bnx.learning import ask_tests, doubt
 from bnx.paired import edge_verdict
 from bnx.recipe import Recipe
 from bnx.resampling import Stability
@@ -24,7 +25,8 @@ class EdgeEvidence:
     ``bits``: shared given the class; ``gain``: held-out bits per row, mean over folds, with its standard error;
     ``chosen_in``: how many folds' own structures join the two, in either direction; ``stability``: share of random
     halves that do, None if none were drawn; ``gate_p``: p of the test that let it in given the class and
-    ``gate_given``, None if the structure does not test.
+    ``gate_given``, None if the structure does not test or the edge was required. A fold whose loss is infinite with and
+    without the edge counts as no gain.
     """
 
     parent: int
@@ -44,6 +46,7 @@ def edge_ledger(
     gains: Sequence[Gains],
     stable: Stability,
     learners: Sequence[Learner],
+    bounds: Bounds,
     recipe: Recipe,
     folds: int,
 ) -> list[tuple[EdgeEvidence, ...]]:
@@ -51,20 +54,25 @@ def edge_ledger(
     learned = evaluation.learned(())
     ledger = []
     for s, structure in enumerate(learned.structures):
-        tested = learners[s].name.endswith("-tested")
         questions = [
-            Question(child, parent, structure.parents[child][:place] if learners[s].depths > 1 else ())
+            Question(child, parent, structure.parents[child][:place])
             for child in range(len(structure.parents))
             for place, parent in enumerate(structure.parents[child])
         ]
+        gate = [q for q in questions if learners[s].tested and (q.candidate, q.child) not in bounds.required]
         answers = ask_tests(
-            evaluation.engine, [learned.training], [(0, question) for question in questions if tested], recipe.test
+            evaluation.engine,
+            [learned.training],
+            [(0, question) for question in gate],
+            recipe.test,
+            doubt(learners, len(bounds.names), recipe.alpha),
         )
+        gate_p = {question: answer.p for question, answer in zip(gate, answers, strict=True)}
         rows = []
-        for k, question in enumerate(questions):
-            by_fold = np.array([_gain(fold, s, question.candidate, question.child) for fold in gains])
-            chosen = int(np.isfinite(by_fold).sum())
-            by_fold = np.where(np.isnan(by_fold), 0.0, by_fold)
+        for question in questions:
+            found = [_gain(fold, s, question.candidate, question.child) for fold in gains]
+            chosen = sum(gain is not None for gain in found)
+            by_fold = np.array([gain if gain is not None and math.isfinite(gain) else 0.0 for gain in found])
             spread = float(by_fold.std(ddof=1)) * np.sqrt(1 / len(by_fold) + 1 / (folds - 1))
             ends = frozenset((question.candidate, question.child))
             rows.append(
@@ -76,8 +84,8 @@ def edge_ledger(
                     gain_se=float(spread),
                     chosen_in=chosen,
                     stability=stable.get((s, ends), 0.0) if recipe.resamples else None,
-                    gate_p=answers[k].p if tested else None,
-                    gate_given=question.given if tested else (),
+                    gate_p=gate_p.get(question),
+                    gate_given=question.given if question in gate_p else (),
                     verdict=edge_verdict(by_fold, chosen, folds),
                 )
             )
@@ -85,6 +93,6 @@ def edge_ledger(
     return ledger
 
 
-def _gain(gains: Gains, s: int, parent: int, child: int) -> float:
-    """Look up an edge of one fold, in whichever direction the fold drew it; NaN if it did not."""
-    return gains.get((s, (parent, child)), gains.get((s, (child, parent)), float("nan")))
+def _gain(gains: Gains, s: int, parent: int, child: int) -> float | None:
+    """Look up an edge of one fold, in whichever direction the fold drew it; None if it did not."""
+    return gains.get((s, (parent, child)), gains.get((s, (child, parent))))

@@ -6,6 +6,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from bnx.errors import DataError
+from bnx.kernels import rank_sums, sort_whole
 
 __all__ = ["Scores", "log_losses", "scores"]
 
@@ -54,15 +55,16 @@ class Scores:
 
 @dataclass(frozen=True)
 class _Ranking:
-    """Rows in the order of a score, rows of equal score as one group.
+    """What ranking rows by a score tells: the ``area`` under the curve and the ``error`` of calibration.
 
-    All (groups,): ``values`` the score, ``starts`` the rows before, ``sizes`` its rows, ``hits`` those that are right.
+    ``area``: share of (hit, miss) pairs in which the hit scores higher, equal scores counting one half; None without
+    pairs. ``error``: mean over rows of | mean score - share of hits | in their bin, up to 15 bins of equal count, fewer
+    so that each holds 20 rows. Rows of equal score stay together: a group falls into the bin that holds its middle row,
+    so no order among equals matters and a bin may stay empty.
     """
 
-    values: np.ndarray
-    starts: np.ndarray
-    sizes: np.ndarray
-    hits: np.ndarray
+    area: float | None
+    error: float
 
 
 def log_losses(p: np.ndarray, truth: np.ndarray) -> np.ndarray:
@@ -95,7 +97,6 @@ def scores(p: np.ndarray, truth: np.ndarray, classes: int) -> Scores:
     recall = [int(confusion[k, k]) / int(totals[k]) if totals[k] else None for k in range(classes)]
     known = [value for value in recall if value is not None]
     rankings = [_ranking(columns[k], truth == k) for k in range(classes)]
-    errors = [_calibration_error(ranking, len(truth)) for ranking in rankings]
     top = _ranking(columns.max(axis=0), label == truth)
     return Scores(
         log_loss=float(log_losses(p, truth).mean()),
@@ -105,8 +106,8 @@ def scores(p: np.ndarray, truth: np.ndarray, classes: int) -> Scores:
         auc=_macro_auc(rankings),
         recall=tuple(recall),
         confusion=tuple(tuple(int(count) for count in row) for row in confusion),
-        calibration_error=_calibration_error(top, len(truth)),
-        classwise_calibration_error=sum(errors) / classes,
+        calibration_error=top.error,
+        classwise_calibration_error=sum(one.error for one in rankings) / classes,
     )
 
 
@@ -116,47 +117,23 @@ def _brier(columns: np.ndarray, truth: np.ndarray) -> float:
 
 
 def _ranking(score: np.ndarray, right: np.ndarray) -> _Ranking:
-    """Order rows by ``score`` (N,), 0 to 1, and join equal scores; ``right`` (N,) says which rows are hits.
+    """Rank rows by ``score`` (N,), 0 to 1; ``right`` (N,) says which rows are hits.
 
     Bit patterns of numbers from 0 to below 2 order as the numbers do and leave two bits free, so one sort carries the
     hits along.
     """
+    rows, bins = len(score), min(_BINS, max(1, len(score) // _ROWS_PER_BIN))
     packed = (score + 0.0).view(np.int64) << 1
     packed |= right
-    packed.sort()
-    values = (packed >> 1).view(np.float64)
-    starts = np.flatnonzero(values[1:] != values[:-1]) + 1
-    starts = np.concatenate((np.zeros(1, dtype=np.int64), starts))
-    packed &= 1
-    hits = np.add.reduceat(packed, starts)
-    return _Ranking(values[starts], starts, np.diff(starts, append=len(score)), hits)
+    packed = sort_whole(packed)
+    score_sums, hit_sums = np.zeros(bins), np.zeros(bins)
+    doubled = int(rank_sums(packed, (packed >> 1).view(np.float64), score_sums, hit_sums))
+    hits = int(right.sum())
+    pairs = hits * (rows - hits)
+    return _Ranking(doubled / (2 * pairs) if pairs else None, float(np.abs(score_sums - hit_sums).sum() / rows))
 
 
 def _macro_auc(rankings: Sequence[_Ranking]) -> float | None:
     """Average the areas of the classes that have one; with two classes take the second, as both are the same area."""
-    found = [_auc(ranking) for ranking in (rankings[1:] if len(rankings) == 2 else rankings)]
-    areas = [area for area in found if area is not None]
+    areas = [one.area for one in (rankings[1:] if len(rankings) == 2 else rankings) if one.area is not None]
     return sum(areas) / len(areas) if areas else None
-
-
-def _auc(ranking: _Ranking) -> float | None:
-    """Share of (hit, miss) pairs in which the hit scores higher, equal scores counting one half; None without pairs."""
-    misses = ranking.sizes - ranking.hits
-    pairs = int(ranking.hits.sum()) * int(misses.sum())
-    if pairs == 0:
-        return None
-    below = np.cumsum(misses) - misses
-    return int((ranking.hits * (2 * below + misses)).sum()) / (2 * pairs)
-
-
-def _calibration_error(ranking: _Ranking, rows: int) -> float:
-    """Mean over rows of | mean score - share of hits | in their bin.
-
-    Up to 15 bins of equal count, fewer so that each holds 20 rows. Rows of equal score stay together: a group falls
-    into the bin that holds its middle row, so no order among equals matters and a bin may stay empty.
-    """
-    bins = min(_BINS, max(1, rows // _ROWS_PER_BIN))
-    number = (2 * ranking.starts + ranking.sizes) * bins // (2 * rows)
-    score = np.bincount(number, weights=ranking.values * ranking.sizes, minlength=bins)
-    hits = np.bincount(number, weights=ranking.hits, minlength=bins)
-    return float(np.abs(score - hits).sum() / rows)

@@ -25,6 +25,7 @@ _METHODS = {
     "chi2-tail": "X², tail of chi-square",
     "g-tail": "G, tail of chi-square",
     "moments": "X², matched moments",
+    "exact": "X², exact",
     "none": "none: nothing to test",
 }
 
@@ -129,9 +130,12 @@ def _loss(value: float | None) -> str:
 def score_row(document: Mapping[str, Any], entry: Mapping[str, Any]) -> ScoreRow:
     """Write one structure's scores; nothing stands where the baseline has no difference to itself."""
     against = entry["against_baseline"]
-    role = {document["best"]: "best", document["settings"]["baseline"]: "baseline"}.get(entry["name"], "")
-    if entry["name"] == document["recommended"]["name"]:
-        role = f"recommended, {role}" if role else "recommended"
+    roles = {
+        "recommended": document["recommended"]["name"],
+        "best": document["best"],
+        "baseline": document["settings"]["baseline"],
+    }
+    role = ", ".join(word for word, name in roles.items() if name == entry["name"])
     return ScoreRow(
         name=entry["name"],
         words=entry["words"],
@@ -198,7 +202,7 @@ def pair_row(pair: Mapping[str, Any], drawn: frozenset[frozenset[str]]) -> PairR
         statistic=_number(pair["statistic"], 1),
         df=f"{pair['df']:,}",
         adjusted_p=_p(pair["adjusted_p"]),
-        method=_METHODS.get(pair["method"], pair["method"]),
+        method=_METHODS[pair["method"]],
         carried="yes" if pair["sample_carries_it"] else "no",
         min_expected=_number(pair["min_expected"], 1),
         detectable=_DASH

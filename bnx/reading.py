@@ -1,5 +1,6 @@
 """Tables from files: CSV and TSV, Parquet, Arrow, standard input; always in blocks of rows."""
 
+import difflib
 import hashlib
 import io
 import shutil
@@ -83,10 +84,17 @@ def open_source(path: str, delimiter: str | None = None) -> Source:
     if path == "-" or (place.exists() and not place.is_file() and not place.is_dir()):
         return _spooled(path, delimiter)
     if not place.exists():
-        raise DataError(f"there is no file {path}")
+        raise DataError(f"there is no file {path}; {_near(place)}")
     if place.is_dir():
         return _opened(_parquet_files(place), path, delimiter, "parquet")
     return _opened((place,), path, delimiter, _form(place, path))
+
+
+def _near(place: Path) -> str:
+    """End a sentence about a missing file: a file of nearly the same name, or what would be right."""
+    names = sorted(other.name for other in place.parent.iterdir()) if place.parent.is_dir() else []
+    close = difflib.get_close_matches(place.name, names, n=1, cutoff=0.6)
+    return f"did you mean {place.parent / close[0]}?" if close else "give a table that exists, or - for standard input"
 
 
 def _spooled(path: str, delimiter: str | None) -> Source:

@@ -14,9 +14,12 @@ from bnx.parameters import candidates
 from bnx.reading import Source
 from bnx.text import quoted
 
-__all__ = ["DEFAULT_STRUCTURES", "Recipe"]
+__all__ = ["DEFAULT_STRUCTURES", "MOST_FOLDS", "Recipe"]
 
 DEFAULT_STRUCTURES = ("naive", "tan", "tan-tested", "kdb1-tested", "kdb2", "kdb2-tested", "kdb3-tested")
+
+
+MOST_FOLDS = 50  # every pair of folds is a training set of its own, so the work grows with their square
 
 
 @dataclass(frozen=True)
@@ -38,6 +41,7 @@ class Recipe:
     repeats: int = 1
     group: str = ""
     fold_column: str = ""
+    holdout: str = ""
     seed: int = 1
     bins: str = "auto"
     numeric: tuple[str, ...] = ()
@@ -59,7 +63,7 @@ class Recipe:
         _one_of("missing", self.missing, ("level", "drop"))
         _between("alpha", self.alpha, 0, 1)
         _between("negligible", self.negligible, 0, 10)
-        _whole("folds", self.folds, 3, 1000)
+        _whole("folds", self.folds, 3, MOST_FOLDS)
         _whole("repeats", self.repeats, 1, 1000)
         _whole("seed", self.seed, 0, 2**63 - 1)
         _whole("max-levels", self.max_levels, 2, 60_000)
@@ -83,7 +87,7 @@ class Recipe:
             )
         for option, pairs in (("require", self.require), ("forbid", self.forbid)):
             for pair in pairs:
-                if len(pair.split(":")) != 2:
+                if not all(pair.partition(":")):
                     raise SettingError(f"--{option}: {pair!r} is not a pair of attributes; write PARENT:CHILD")
 
     def code(self, source: Source) -> Coded:

@@ -1,6 +1,7 @@
 """Make the p of doubtful pairs exact: near the threshold, where the sample is too sparse for a chi-square tail."""
 
 from collections.abc import Sequence
+from typing import NamedTuple
 
 import numpy as np
 
@@ -10,7 +11,17 @@ from bnx.families import Request, for_each_family
 from bnx.independence import Statistics, Tested
 from bnx.trainings import Training
 
-__all__ = ["refined"]
+__all__ = ["REPORTED", "Doubt", "refined"]
+
+
+class Doubt(NamedTuple):
+    """The p-values by moments that are worth an exact test."""
+
+    low: float
+    high: float
+
+
+REPORTED = Doubt(0.0, 0.02)  # above, the two agree within a quarter
 
 
 def refined(
@@ -19,14 +30,13 @@ def refined(
     requests: Sequence[Request],
     stats: Statistics,
     tested: Tested,
-    low: float = 0.0,
-    high: float = 0.02,
+    unsure: Doubt,
 ) -> Tested:
-    """Replace p by moments with the exact p wherever it lies from ``low`` to ``high`` and all strata are 2 x 2.
+    """Replace p by moments with the exact p wherever it is in doubt and all strata are 2 x 2.
 
     requests: of each of the P pairs, its training set and members, the pair last.
     """
-    chosen = tested.in_doubt(stats, low, high)
+    chosen = tested.in_doubt(stats, unsure.low, unsure.high)
     if not len(chosen):
         return tested
     wanted = [requests[k] for k in chosen.tolist()]

@@ -20,7 +20,7 @@ from bnx.documents import (
     predictions_frame,
     structure_document,
 )
-from bnx.drawing import render
+from bnx.drawing import find_engine, render
 from bnx.errors import DataError, EngineError, SettingError
 from bnx.report import report_html
 from bnx.text import quoted
@@ -115,11 +115,11 @@ def _files_of_a_run(comparison: Path) -> set[str]:
 
 def write_results(
     comparison: Comparison, folder: Path, jobs: int, predictions: bool = False, all_pairs: bool = False
-) -> list[str]:
+) -> tuple[dict[str, Any], list[str]]:
     """Write every result file into a folder.
 
     Returns:
-        Sentences about what could not be written.
+        The comparison as written, and sentences about what could not be written.
     """
     document = comparison_document(comparison)
     write_json(folder / _OURS, document)
@@ -139,17 +139,26 @@ def write_results(
         every.to_parquet(folder / "pairs.parquet", index=False)
     if predictions:
         predictions_frame(comparison).to_parquet(folder / "predictions.parquet", index=False)
-    return notes
+    return document, notes
 
 
 def draw_all(drawings: Mapping[str, str], jobs: int) -> tuple[dict[str, str], list[str]]:
-    """Draw DOT texts as SVG; without an engine give none and say so."""
+    """Draw DOT texts as SVG; say which could not be drawn, and why."""
     try:
-        with ThreadPoolExecutor(jobs) as pool:
-            drawn = list(pool.map(lambda dot: render(dot, "svg").decode(), drawings.values()))
+        find_engine()
     except EngineError as error:
         return {}, [f"no picture was drawn, only .dot files were written: {error}"]
-    return dict(zip(drawings, drawn, strict=True)), []
+    with ThreadPoolExecutor(jobs) as pool:
+        drawn = dict(zip(drawings, pool.map(_drawn, drawings.values()), strict=True))
+    failed = [f"{name}.svg was not drawn: {one}" for name, one in drawn.items() if isinstance(one, EngineError)]
+    return {name: one for name, one in drawn.items() if isinstance(one, str)}, failed
+
+
+def _drawn(dot: str) -> str | EngineError:
+    try:
+        return render(dot, "svg").decode()
+    except EngineError as error:
+        return error
 
 
 def write_json(path: Path, document: Mapping[str, Any]) -> None:

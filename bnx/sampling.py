@@ -49,7 +49,4 @@ def draw_sample(engine: LocalEngine, folds: int) -> Sample:
             taken += wanted
         starts.append(starts[-1] + taken)
     index = np.concatenate(chosen)
-    codes = engine.codes if len(index) == len(engine.order) else None
-    if codes is None or not np.array_equal(index, np.arange(len(index))):
-        codes = np.ascontiguousarray(engine.codes[:, index])
-    return Sample(codes, engine.target[index], np.concatenate(weights), np.array(starts))
+    return Sample(np.take(engine.codes, index, axis=1), engine.target[index], np.concatenate(weights), np.array(starts))

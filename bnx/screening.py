@@ -5,6 +5,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from bnx.columns import NumberColumn, Tally, TextColumn, part_numbers
+from bnx.folds import keyed_hash
 from bnx.text import count_of, quoted
 
 __all__ = ["column_warnings", "count_duplicates", "few_rows", "reason_to_leave_out"]
@@ -110,19 +111,9 @@ def count_duplicates(columns: Sequence[TextColumn | NumberColumn]) -> int:
     """
     total = np.zeros(len(columns[0].blanks), dtype=np.uint64)
     for position, column in enumerate(columns):
-        key = _mixed(np.array([position + 1], dtype=np.uint64))
         if isinstance(column, NumberColumn):
-            total += _mixed(np.where(column.blanks, np.nan, column.values).view(np.uint64) ^ key)
+            total += keyed_hash(position, np.where(column.blanks, np.nan, column.values).view(np.uint64))
         else:
-            total += _mixed(np.arange(len(column.texts) + 1, dtype=np.uint64) ^ key)[column.codes]
+            total += keyed_hash(position, np.arange(len(column.texts) + 1, dtype=np.uint64))[column.codes]
     total.sort()
     return int(np.count_nonzero(total[1:] == total[:-1]))
-
-
-def _mixed(numbers: np.ndarray) -> np.ndarray:
-    """Scramble uint64 numbers, each into one of its own."""
-    mixed = numbers + np.uint64(0x9E3779B97F4A7C15)
-    mixed = (mixed ^ (mixed >> np.uint64(30))) * np.uint64(0xBF58476D1CE4E5B9)
-    mixed = (mixed ^ (mixed >> np.uint64(27))) * np.uint64(0x94D049BB133111EB)
-    scrambled: np.ndarray = mixed ^ (mixed >> np.uint64(31))
-    return scrambled

@@ -93,7 +93,7 @@ def _edges(document: Mapping[str, Any]) -> str:
     if not document["edges"]:
         return "no edges between attributes"
     settings = document["settings"]
-    folds = "" if settings["fold_column"] else f" of {settings['folds'] * settings['repeats']}"
+    folds = f" of {document['folds'] * settings['repeats']}"
     rows = [
         (
             f"{edge['parent']} -> {edge['child']}",

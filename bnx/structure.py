@@ -3,6 +3,8 @@
 import re
 from dataclasses import dataclass
 
+import networkx as nx
+
 from bnx.errors import StructureError
 
 __all__ = ["Structure", "words"]
@@ -26,29 +28,13 @@ class Structure:
                 raise StructureError(
                     f"attribute {child} of {self.name} has itself or one parent twice among its parents"
                 )
-        self.order()
+        if not nx.is_directed_acyclic_graph(nx.DiGraph(self.edges)):
+            raise StructureError(f"the parents in {self.name} form a cycle; no attribute may be an ancestor of itself")
 
     @property
     def edges(self) -> tuple[tuple[int, int], ...]:
         """(parent, child) of every edge, by child, then in the order taken."""
         return tuple((parent, child) for child, parents in enumerate(self.parents) for parent in parents)
-
-    def order(self) -> tuple[int, ...]:
-        """List the attributes with parents before children.
-
-        Raises:
-            StructureError: there is no such order.
-        """
-        placed: list[int] = []
-        waiting = list(range(len(self.parents)))
-        while waiting:
-            done = set(placed)
-            free = [child for child in waiting if all(parent in done for parent in self.parents[child])]
-            if not free:
-                raise StructureError(f"the parents in {self.name} form a cycle through attributes {waiting}")
-            placed += free
-            waiting = [child for child in waiting if child not in set(free)]
-        return tuple(placed)
 
 
 def words(name: str) -> str:

@@ -3,7 +3,7 @@
 import difflib
 from collections.abc import Iterable, Sequence
 
-__all__ = ["aligned", "count_of", "fixed", "nearest", "quoted", "signed"]
+__all__ = ["aligned", "count_of", "fixed", "nearest", "printable", "quoted", "signed"]
 
 
 def fixed(value: float | None, digits: int = 3) -> str:
@@ -37,9 +37,14 @@ def nearest(name: str, names: Sequence[str]) -> str:
     return f"did you mean {close[0]}?" if close else f"known: {quoted(names)}"
 
 
+def printable(text: str) -> str:
+    """Write line ends and control characters as escapes: none may break a line or steer a terminal."""
+    return "".join(one if one.isprintable() else one.encode("unicode_escape").decode() for one in text)
+
+
 def aligned(header: Sequence[str], rows: Iterable[Sequence[str]], left: int = 1) -> str:
     """Lay out rows under a header; the first ``left`` columns flush left, the others right."""
-    lines = [list(header), *(list(row) for row in rows)]
+    lines = [[printable(cell) for cell in row] for row in (header, *rows)]
     widths = [max(len(line[k]) for line in lines) for k in range(len(header))]
     return "\n".join(
         "  ".join(

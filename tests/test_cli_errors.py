@@ -120,7 +120,7 @@ SETTINGS = {
     "--alpha 0": "--alpha: 0 cannot be used; give a number above 0 and below 1",
     "--alpha nan": "--alpha: nan cannot be used; give a number above 0 and below 1",
     "--negligible -1": "--negligible: -1 cannot be used; give a number above 0 and below 10",
-    "--folds 2": "--folds: 2 cannot be used; give a whole number from 3 to 1000",
+    "--folds 2": "--folds: 2 cannot be used; give a whole number from 3 to 50",
     "--repeats 0": "--repeats: 0 cannot be used; give a whole number from 1 to 1000",
     "--max-levels 1": "--max-levels: 1 cannot be used; give a whole number from 2 to 60000",
     "--resamples -1": "--resamples: -1 cannot be used; give a whole number from 0 to 100000",

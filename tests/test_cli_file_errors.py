@@ -95,7 +95,8 @@ TAMPERED = [
     (change("bits_with_class", "dock", value=...), f"f.json has no bits_with_class.dock; {WRITE_ANEW} or bnx export"),
     (
         change("attributes", 0, "probabilities", 0, 0, value=0.5),
-        "f.json: the probabilities of dock contradict its counts; write it anew with bnx learn",
+        "f.json contradicts itself (the probabilities of dock do not follow from its counts); "
+        "write it anew with bnx learn or bnx export",
     ),
 ]
 

@@ -65,7 +65,7 @@ def test_blocks_of_a_mask_are_the_rows_of_those_blocks(
     alone = counted(started(coded(codes[:, chosen], target[chosen], SIZES, 2)))
     for blocks, expected in zip(by_block, alone, strict=True):
         total = blocks.counts.sum(axis=0, dtype=np.int32)
-        found = sum_blocks(blocks.counts, total, [np.array(mask)])[0]
+        found = sum_blocks(blocks.counts, total, np.array(mask))
         assert np.array_equal(found, expected.counts[0])
 
 

@@ -182,4 +182,6 @@ def test_parse_bins(text, expected):
 def test_parse_bins_refuses(text):
     with pytest.raises(SettingError) as caught:
         parse_bins(text)
-    assert str(caught.value) == (f"bins is {text!r}; it must be auto, mdl, frequency:K or width:K with K from 2 to 255")
+    assert str(caught.value) == (
+        f"--bins: {text!r} cannot be used; give auto, mdl, frequency:K or width:K with K from 2 to 255"
+    )

@@ -147,7 +147,9 @@ def test_seed_and_repeat_change_grouped_folds():
 
 
 def test_fewer_groups_than_folds_are_refused():
-    with pytest.raises(DataError, match=r"^the rows form 3 group\(s\) for 5 folds; give at most 3 folds$"):
+    with pytest.raises(
+        DataError, match=r"^5 folds need as many groups, but the rows form 3; give fewer --folds or another --group$"
+    ):
         assign_grouped(np.array([1, 2, 3, 3]), np.zeros(4, dtype=np.uint8), 1, 5)
 
 

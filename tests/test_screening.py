@@ -56,8 +56,8 @@ def test_warnings(tmp_path):
         "a has 3 levels; all but the 2 most frequent of the training rows are pooled",
         "a has levels that differ only in capitals or in spaces around them: 'X ' and 'x'",
         "holes is blank in 24 of 40 rows",
-        f"{coded.duplicates} rows of 40 repeat an earlier row in every attribute used and the class; "
-        "if they are copies of one record, every figure is too sure of itself",
+        f"{coded.duplicates} rows of 40 repeat an earlier row in every attribute used and the class, "
+        "as must happen where only 27 different rows are possible",
     )
     assert coded.duplicates == 40 - len(set(zip(*columns.values(), strict=True)))
 

@@ -10,9 +10,8 @@ import typer
 from typer.core import TyperGroup
 
 from bnx import __version__
-from bnx.cli.plain import one_line
 from bnx.errors import BnxError
-from bnx.text import nearest
+from bnx.text import nearest, printable
 
 __all__ = ["app", "main"]
 
@@ -78,7 +77,7 @@ def main() -> None:
     for number in (signal.SIGTERM, getattr(signal, "SIGHUP", signal.SIGTERM)):
         signal.signal(number, _leave)
     try:
-        sys.exit(app(standalone_mode=False))
+        sys.exit(app(prog_name="bnx", standalone_mode=False))
     except BnxError as error:
         _refuse(str(error))
     except typer.TyperException as error:
@@ -98,7 +97,7 @@ def _leave(number: int, _frame: Any) -> None:
 
 
 def _refuse(sentence: str, code: int = 1) -> None:
-    typer.echo(f"error: {one_line(sentence)}", err=True)
+    typer.echo(f"error: {printable(sentence)}", err=True)
     sys.exit(code)
 
 

@@ -30,7 +30,6 @@ from bnx.cli.shared import (
 )
 from bnx.cli.summary import summary
 from bnx.comparison import compare
-from bnx.documents import comparison_document
 from bnx.errors import SettingError
 from bnx.reading import open_source
 from bnx.recipe import DEFAULT_STRUCTURES, Recipe
@@ -117,8 +116,7 @@ def run(
         recipe = recipe_of(ctx, source)
         held_out = None if holdout is None else open_source(holdout)
         comparison = compare(source, recipe, number, progress, held_out)
-        notes = write_results(comparison, folder, number, predictions, all_pairs)
-    document = comparison_document(comparison)
+        document, notes = write_results(comparison, folder, number, predictions, all_pairs)
     text = json.dumps(document, ensure_ascii=False, allow_nan=False) if json_out else summary(document, output)
     typer.echo(text)
     for note in (*comparison.warnings, *notes):

@@ -12,7 +12,6 @@ from rich.console import Console
 from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeElapsedColumn
 
 from bnx.classifier import Classifier
-from bnx.cli.plain import one_line
 from bnx.errors import SettingError
 from bnx.formats.evidence import check_evidence
 from bnx.formats.structure_json import classifier_of, read_structure
@@ -20,6 +19,7 @@ from bnx.independence import TESTS
 from bnx.multiplicity import METHODS as ADJUSTMENTS
 from bnx.reading import Source
 from bnx.recipe import Recipe
+from bnx.text import printable
 
 __all__ = [
     "Adjust",
@@ -158,7 +158,7 @@ def threads(jobs: int) -> int:
 def say(sentence: str, quiet: bool = False) -> None:
     """Write a note to standard error."""
     if not quiet:
-        typer.echo(one_line(sentence), err=True)
+        typer.echo(printable(sentence), err=True)
 
 
 @contextmanager

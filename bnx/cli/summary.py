@@ -107,24 +107,27 @@ def _advice(document: Mapping[str, Any]) -> list[str]:
     naive = next((one for one in document["structures"] if one["name"] == "naive"), None)
     if naive and naive["temperature"] < 0.95:
         lines.append(
-            f"Naive Bayes is over-confident here: its evidence is worth {naive['temperature']:.2f} of its face value, "
-            "because dependent attributes are counted as if each were news."
+            f"Naive Bayes is over-confident here: its evidence is worth {naive['temperature']:.2f} of its face value"
+            + (
+                ", as happens where dependent attributes are each counted as news."
+                if document["pairs_verdicts"]["dependent"]
+                else "; with no dependent pair in sight, a small table may be why."
+            )
         )
     return [_wrapped(line) for line in (*lines, *_pairs(document))]
 
 
 def _pairs(document: Mapping[str, Any]) -> list[str]:
     """Say how many pairs depend, which most, and how many cannot be told."""
-    verdicts = [pair["verdict"] for pair in document["pairs"]]
+    verdicts = document["pairs_verdicts"]
     settings = document["settings"]
     rate = {"bh": "false-discovery rate", "by": "false-discovery rate", "holm": "family-wise rate", "none": "level"}
+    small = verdicts["negligible"] + verdicts["detected, but negligible"]
     line = (
-        f"{document['pairs_rejected']} of {count_of(document['pairs_total'], 'pair')} depend given {document['class']} "
-        f"({rate[settings['adjust']]} {settings['alpha']:g})"
+        f"{verdicts['dependent']} of {count_of(document['pairs_total'], 'pair')} depend given {document['class']} "
+        f"({rate[settings['adjust']]} {settings['alpha']:g}); {small} are negligible; "
+        f"{verdicts['not enough data']} cannot be told at this sample size"
     )
-    if len(verdicts) == document["pairs_total"]:
-        small = sum("negligible" in verdict for verdict in verdicts)
-        line += f"; {small} are negligible; {verdicts.count('not enough data')} cannot be told at this sample size"
     dependent = [pair for pair in document["pairs"] if pair["verdict"] == "dependent"][:3]
     if not dependent:
         return [line + "."]

@@ -15,13 +15,14 @@ _TOP: Mapping[str, Kinds] = {
     "words": (str,),
     "source": (str,),
     "rows": (int,),
+    "folds": (int,),
     "free_parameters": (int,),
     "bits_with_class": (dict,),
     "edges": (list,),
     "scores": (dict,),
     "settings": (dict,),
 }
-_SETTINGS: Mapping[str, Kinds] = {"folds": (int,), "repeats": (int,), "fold_column": (str,)}
+_SETTINGS: Mapping[str, Kinds] = {"repeats": (int,)}
 _EDGE: Mapping[str, Kinds] = {
     "parent": (str,),
     "child": (str,),

@@ -91,16 +91,19 @@ def classifier_of(document: Mapping[str, Any], path: str) -> Classifier:
     """
     try:
         classifier = _classifier(document)
-    except (KeyError, TypeError, ValueError, AttributeError, BnxError) as error:
+        for child, attribute in enumerate(document["attributes"]):
+            _check_table(classifier, child, attribute["probabilities"])
+    except (KeyError, TypeError, ValueError, AttributeError, OverflowError, BnxError) as error:
         what = f"has no {error}" if isinstance(error, KeyError) else f"contradicts itself ({error})"
         raise FormatError(f"{path} {what}; write it anew with bnx learn or bnx export") from None
-    for child, attribute in enumerate(document["attributes"]):
-        written = np.array(attribute["probabilities"], dtype=float)
-        if written.shape != classifier.counts[child].shape or np.abs(written - classifier.table(child)).max() > 1e-9:
-            raise FormatError(
-                f"{path}: the probabilities of {attribute['name']} contradict its counts; write it anew with bnx learn"
-            )
     return classifier
+
+
+def _check_table(classifier: Classifier, child: int, probabilities: Any) -> None:
+    """Refuse probabilities that do not follow from the counts and the smoothing."""
+    written, table = np.array(probabilities, dtype=float), classifier.table(child)
+    if written.shape != table.shape or not (np.abs(written - table) <= 1e-9).all():
+        raise ValueError(f"the probabilities of {classifier.domains[child].name} do not follow from its counts")
 
 
 def _classifier(document: Mapping[str, Any]) -> Classifier:
@@ -143,8 +146,11 @@ def _classifier(document: Mapping[str, Any]) -> Classifier:
 
 def _check_domain(domain: Domain) -> None:
     """Refuse levels that cannot be told apart, or that do not follow from the cut points."""
-    if len(set(domain.levels)) < len(domain.levels) or not domain.levels:
-        raise ValueError(f"{domain.name} needs levels, each named once")
+    texts = all(isinstance(level, str) for level in (domain.name, *domain.levels))
+    if not texts or len(set(domain.levels)) < len(domain.levels) or not domain.levels:
+        raise ValueError(f"{domain.name} needs levels that are texts, each named once")
+    if not all(isinstance(cut, int | float) and np.isfinite(cut) for cut in domain.cuts):
+        raise ValueError(f"the cut points of {domain.name} are not all numbers")
     if domain.numeric and (
         len(domain.cuts) + 1 + domain.blank != len(domain) or list(domain.cuts) != sorted(set(domain.cuts))
     ):

@@ -4,6 +4,7 @@ Every loop releases the interpreter lock, so callers may run several on threads;
 """
 
 from bnx.kernels.counting import count_cells, count_pairs, number_cells, pack_planes
+from bnx.kernels.ranking import rank_sums, sort_whole
 from bnx.kernels.scoring import add_terms, calibrated_loss, smoothed_tables, tempered_losses
 
 __all__ = [
@@ -13,6 +14,8 @@ __all__ = [
     "count_pairs",
     "number_cells",
     "pack_planes",
+    "rank_sums",
     "smoothed_tables",
+    "sort_whole",
     "tempered_losses",
 ]

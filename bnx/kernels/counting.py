@@ -4,7 +4,9 @@ Rows come sorted into groups (one per block of rows and class): group g holds ro
 """
 
 import numpy as np
+from llvmlite import ir
 from numba import njit, types
+from numba.core.errors import TypingError
 from numba.extending import intrinsic
 
 __all__ = ["count_cells", "count_pairs", "number_cells", "pack_planes"]
@@ -23,6 +25,26 @@ def _ones(typing_context, word):  # type: ignore[no-untyped-def]
     return types.uint64(types.uint64), generate
 
 
+@intrinsic
+def _equals(typing_context, codes, first, level):  # type: ignore[no-untyped-def]
+    """Compare 64 codes from ``first`` on with a level at once: bit k tells whether code k equals it."""
+
+    def generate(context, builder, signature, arguments):  # type: ignore[no-untyped-def]
+        row = context.make_array(signature.args[0])(context, builder, arguments[0])
+        lanes = ir.VectorType(context.get_data_type(signature.args[0].dtype), 64)
+        place = builder.bitcast(builder.gep(row.data, [arguments[1]]), lanes.as_pointer())
+        wanted = builder.trunc(arguments[2], lanes.element)
+        alone = builder.insert_element(ir.Constant(lanes, ir.Undefined), wanted, ir.Constant(ir.IntType(32), 0))
+        everywhere = ir.Constant(ir.VectorType(ir.IntType(32), 64), [0] * 64)
+        spread = builder.shuffle_vector(alone, ir.Constant(lanes, ir.Undefined), everywhere)
+        same = builder.icmp_unsigned("==", builder.load(place, align=1), spread)
+        return builder.bitcast(same, ir.IntType(64))
+
+    if codes.layout != "C":
+        raise TypingError("the codes of an attribute must lie side by side")
+    return types.uint64(codes, types.int64, types.int64), generate
+
+
 @njit(nogil=True, cache=True)
 def pack_planes(
     codes: np.ndarray,
@@ -37,18 +59,24 @@ def pack_planes(
     """Write one bit per row and level for attributes ``first:last``; the last level of each has no plane.
 
     codes (n, N); starts, word_starts (G + 1,): rows and words of each group; plane_starts (n + 1,);
-    planes (planes, words) uint64, zero on entry. The last level's counts follow from the margins by subtraction.
+    planes (planes, words) uint64, every word of those attributes is written. The last level's counts follow from the
+    margins by subtraction.
     """
     for i in range(first, last):
-        top = sizes[i] - 1
-        base = plane_starts[i]
+        row = codes[i]
         for g in range(starts.size - 1):
-            shift = starts[g]
-            for row in range(starts[g], starts[g + 1]):
-                code = codes[i, row]
-                if code < top:
-                    bit = row - shift
-                    planes[base + code, word_starts[g] + (bit >> 6)] |= np.uint64(1) << np.uint64(bit & 63)
+            whole = starts[g] + (starts[g + 1] - starts[g]) // 64 * 64
+            word = word_starts[g]
+            for low in range(starts[g], whole, 64):
+                for level in range(sizes[i] - 1):
+                    planes[plane_starts[i] + level, word] = _equals(row, low, level)
+                word += 1
+            if whole < starts[g + 1]:
+                for level in range(sizes[i] - 1):
+                    bits = np.uint64(0)
+                    for k in range(starts[g + 1] - whole):
+                        bits |= np.uint64(row[whole + k] == level) << np.uint64(k)
+                    planes[plane_starts[i] + level, word] = bits
 
 
 @njit(nogil=True, cache=True)
@@ -155,7 +183,7 @@ def count_cells(
     members (m,), sizes (m,): attributes and their levels; starts (G + 1,); slots (G,): row of ``out`` that group g adds
     to, negative to skip it; out (slots, cells) int32.
     """
-    cells = np.empty(_ROWS, np.int64)
+    cells = np.empty(_ROWS, np.int32)
     for g in range(slots.size):
         slot = slots[g]
         if slot < 0:
@@ -178,14 +206,18 @@ def number_cells(
     number: int,
     cells: np.ndarray,
 ) -> None:
-    """Number the joint level of each of ``number`` rows from ``low`` on, mixed radix, the last member fastest."""
-    for k in range(number):
-        cells[k] = 0
+    """Number the joint level of each of ``number`` rows from ``low`` on, mixed radix, the last member fastest.
+
+    cells int32: a table of more cells than that would not fit anywhere.
+    """
+    mine = cells[:number]
+    mine[:] = 0
     for m in range(members.size):
-        i, size = members[m], sizes[m]
+        i, size = members[m], np.int32(sizes[m])
+        row = codes[i, low : low + number]
         if plain:
-            for k in range(number):
-                cells[k] = cells[k] * size + codes[i, low + k]
+            for k in range(mine.size):
+                mine[k] = mine[k] * size + np.int32(row[k])
         else:
-            for k in range(number):
-                cells[k] = cells[k] * size + recode[i, codes[i, low + k]]
+            for k in range(mine.size):
+                mine[k] = mine[k] * size + recode[i, row[k]]

@@ -1,42 +1,75 @@
 """Loops from counts to tables, from tables to evidence, and from evidence to losses."""
 
 import numpy as np
-from numba import njit
+from llvmlite import ir
+from numba import njit, types
+from numba.extending import intrinsic
 
 from bnx.kernels.counting import number_cells
+from bnx.kernels.exponentials import exponentials
 
 __all__ = ["add_terms", "calibrated_loss", "smoothed_tables", "tempered_losses"]
 
-_ROWS = 2048  # rows whose cell numbers are computed at a time
+_ROWS = 512  # rows that go through all families at a time, so that their evidence stays in the cache
+_JOINED = 32  # rows of one weight whose losses are taken together
+
+
+@intrinsic
+def _add_four(typing_context, out, i, terms, j):  # type: ignore[no-untyped-def]
+    """Add ``terms[j:j + 4]`` to ``out[i:i + 4]``, one instruction where the machine has it."""
+
+    def generate(context, builder, signature, arguments):  # type: ignore[no-untyped-def]
+        four = ir.VectorType(ir.DoubleType(), 4)
+
+        places = []
+        for k in (0, 2):
+            array = context.make_array(signature.args[k])(context, builder, arguments[k])
+            places.append(builder.bitcast(builder.gep(array.data, [arguments[k + 1]]), four.as_pointer()))
+        into, added = places
+        total = builder.fadd(builder.load(into, align=8), builder.load(added, align=8))
+        builder.store(total, into, align=8)
+        return context.get_dummy_value()
+
+    return types.void(out, types.int64, terms, types.int64), generate
 
 
 @njit(nogil=True, cache=True)
 def add_terms(
     codes: np.ndarray,
     recode: np.ndarray,
-    plain: bool,
+    plain: np.ndarray,
     members: np.ndarray,
     sizes: np.ndarray,
+    depths: np.ndarray,
+    starts: np.ndarray,
+    terms: np.ndarray,
+    user_starts: np.ndarray,
+    users: np.ndarray,
     first: int,
     last: int,
-    table: np.ndarray,
     out: np.ndarray,
 ) -> None:
-    """Add a family's table terms to the evidence of rows ``first:last``.
+    """Add the table terms of families to the evidence of rows ``first:last``, family by family.
 
-    members (m,): parents in the order taken, then the child; table (cells, T) float64: T terms per cell;
-    out (last - first, T) float64.
+    members, sizes (F, M): parents in the order taken, then the child, of which the first ``depths`` (F,) count; plain
+    (F,) bool: used as stored; starts (F,): where a family's cells begin in terms (cells, T) float64, T a multiple of 4;
+    ``users[user_starts[f]:user_starts[f + 1]]``: which structures hold family f; out (structures, last - first, T).
     """
-    cells = np.empty(_ROWS, np.int64)
-    terms = table.shape[1]
+    cells = np.empty(_ROWS, np.int32)
+    width = terms.shape[1]
+    flat, into = terms.reshape(-1), out.reshape(-1)
     for low in range(first, last, _ROWS):
         number = min(_ROWS, last - low)
-        number_cells(codes, recode, plain, members, sizes, low, number, cells)
-        for k in range(number):
-            cell = cells[k]
-            row = low - first + k
-            for t in range(terms):
-                out[row, t] += table[cell, t]
+        for f in range(depths.size):
+            own = depths[f]
+            number_cells(codes, recode, plain[f], members[f, :own], sizes[f, :own], low, number, cells)
+            for u in range(user_starts[f], user_starts[f + 1]):
+                at = (users[u] * (last - first) + low - first) * width
+                for k in range(number):
+                    term = (starts[f] + cells[k]) * width
+                    for t in range(0, width, 4):
+                        _add_four(into, at + t, flat, term + t)
+                    at += width
 
 
 @njit(nogil=True, cache=True)
@@ -121,26 +154,69 @@ def tempered_losses(
 ) -> None:
     """Sum the weighted log losses (nats) of rows at several temperatures.
 
-    evidence (N, V * C); log_prior (C,), minus infinity for a class that is left out, whose rows are skipped;
+    evidence (N, at least V * C); log_prior (C,), minus infinity for a class that is left out, whose rows are skipped;
     truth, weights (N,); temperatures (K,); out (V, K) float64, added to.
     """
-    classes = log_prior.size
+    powers = np.empty((_JOINED, out.size * log_prior.size))
+    work = np.empty((3, powers.size))
+    joined, weight = 0, 0.0
     for row in range(truth.size):
         own = truth[row]
         if log_prior[own] == -np.inf:
             continue
-        for v in range(out.shape[0]):
-            base = v * classes
-            for k in range(temperatures.size):
-                t = temperatures[k]
-                top = -np.inf
-                for c in range(classes):
-                    top = max(top, log_prior[c] + t * evidence[row, base + c])
+        if joined == _JOINED or weights[row] != weight:
+            _add_totals(powers[:joined], work, weight, log_prior.size, out)
+            joined, weight = 0, weights[row]
+        _powers(evidence[row], log_prior, temperatures, own, weight, powers[joined], out)
+        joined += 1
+    _add_totals(powers[:joined], work, weight, log_prior.size, out)
+
+
+@njit(nogil=True, cache=True)
+def _powers(
+    evidence: np.ndarray,
+    log_prior: np.ndarray,
+    temperatures: np.ndarray,
+    own: int,
+    weight: float,
+    powers: np.ndarray,
+    out: np.ndarray,
+) -> None:
+    """Write one row's log posteriors below that of its likeliest class; subtract those of its own class from out."""
+    classes = log_prior.size
+    at = 0
+    for v in range(out.shape[0]):
+        base = v * classes
+        for k in range(out.shape[1]):
+            t = temperatures[k]
+            top = -np.inf
+            for c in range(classes):
+                power = log_prior[c] + t * evidence[base + c]
+                powers[at + c] = power
+                top = max(top, power)
+            for c in range(classes):
+                powers[at + c] -= top
+            out[v, k] -= weight * powers[at + own]
+            at += classes
+
+
+@njit(nogil=True, cache=True)
+def _add_totals(powers: np.ndarray, work: np.ndarray, weight: float, classes: int, out: np.ndarray) -> None:
+    """Add the logs of rows' sums over classes to out (V, K); one logarithm for the product over rows (rows, V * K * C).
+
+    Each sum lies between 1 and the number of classes.
+    """
+    exponentials(powers.reshape(-1), work)
+    for v in range(out.shape[0]):
+        for k in range(out.shape[1]):
+            at = (v * out.shape[1] + k) * classes
+            product = 1.0
+            for row in range(powers.shape[0]):
                 total = 0.0
                 for c in range(classes):
-                    total += np.exp(log_prior[c] + t * evidence[row, base + c] - top)
-                loss = top + np.log(total) - log_prior[own] - t * evidence[row, base + own]
-                out[v, k] += weights[row] * loss
+                    total += powers[row, at + c]
+                product *= total
+            out[v, k] += weight * np.log(product)
 
 
 @njit(nogil=True, cache=True)

@@ -24,6 +24,10 @@ class Learner(Protocol):
     def depths(self) -> int:
         """Most parents of an attribute, besides the class."""
 
+    @property
+    def tested(self) -> bool:
+        """Whether an edge has to pass a test."""
+
     def learn(self, dependence: Dependence, gate: Gate, bounds: Bounds) -> Learning:
         """Start learning; questions are yielded, the structure is returned."""
 

@@ -22,6 +22,7 @@ class Kdb:
     """
 
     depths: int
+    tested: bool = False
 
     @property
     def name(self) -> str:
@@ -49,6 +50,7 @@ class KdbTested:
     """
 
     depths: int
+    tested: bool = True
 
     @property
     def name(self) -> str:
@@ -106,12 +108,14 @@ def relevance_order(relevance: np.ndarray, bounds: Bounds) -> list[int]:
 def _earlier(dependence: Dependence, bounds: Bounds) -> dict[int, list[int]]:
     """List, for every attribute in order, the attributes before it that it may take."""
     order = relevance_order(dependence.relevance, bounds)
+    barred = bounds.forbidden != ()
     return {
-        child: [parent for parent in order[:place] if not bounds.forbids(parent, child)]
+        child: [parent for parent in order[:place] if not (barred and bounds.forbids(parent, child))]
         for place, child in enumerate(order)
     }
 
 
 def _strongest(dependence: Dependence, child: int, attributes: list[int]) -> list[int]:
     """Sort attributes by bits given the class, most first, ties by column order."""
-    return sorted(attributes, key=lambda other: (-dependence.strength[child, other], other))
+    bits = dependence.strength[child].tolist()
+    return sorted(attributes, key=lambda other: (-bits[other], other))

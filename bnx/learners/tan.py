@@ -6,6 +6,7 @@ from dataclasses import dataclass
 import networkx as nx
 import numpy as np
 
+from bnx.branching import best_branching
 from bnx.dependence import Dependence
 from bnx.gating import Bounds, Gate, Learning, settled
 from bnx.multiplicity import forest_threshold
@@ -43,8 +44,7 @@ class Tan:
             barred[a, b] = barred[b, a] = True
         allowed = np.asarray(~barred[left, right])
         if self.tested:
-            p = gate.p[left, right]
-            allowed = allowed & (p <= forest_threshold(np.stack([left, right], axis=1), p, attributes, gate.alpha))
+            allowed = allowed & (gate.p[left, right] <= _threshold(left[allowed], right[allowed], gate, bounds))
         left, right = left[allowed], right[allowed]
         strongest = np.argsort(-dependence.strength[left, right], kind="stable")
         edges = list(zip(left[strongest].tolist(), right[strongest].tolist(), strict=True))
@@ -56,6 +56,20 @@ class Tan:
         return settled(Structure(self.name, tuple(parents)))
 
 
+def _threshold(left: np.ndarray, right: np.ndarray, gate: Gate, bounds: Bounds) -> float:
+    """Find the largest p that may enter among the pairs that an edge is neither forbidden to join nor sure to.
+
+    Attributes that required edges join are one tree from the start, so the forest grows between such trees.
+    """
+    joined = nx.utils.UnionFind(range(len(gate.p)))
+    for parent, child in bounds.required:
+        joined.union(parent, child)
+    tree = np.array([joined[attribute] for attribute in range(len(gate.p))])
+    pairs = np.stack([tree[left], tree[right]], axis=1)
+    open_ = pairs[:, 0] != pairs[:, 1]
+    return forest_threshold(pairs[open_], gate.p[left, right][open_], len(gate.p), gate.alpha)
+
+
 def _forest(edges: Sequence[Edge], attributes: int) -> list[Edge]:
     """Keep the edges, taken in order, that close no cycle."""
     joined = nx.utils.UnionFind(range(attributes))
@@ -64,6 +78,8 @@ def _forest(edges: Sequence[Edge], attributes: int) -> list[Edge]:
         if joined[a] != joined[b]:
             joined.union(a, b)
             kept.append((a, b))
+            if len(kept) == attributes - 1:
+                break
     return kept
 
 
@@ -82,17 +98,11 @@ def _directed(forest: Sequence[Edge], relevance: np.ndarray) -> list[tuple[int, 
 
 
 def _branching(edges: Sequence[Edge], strength: np.ndarray, bounds: Bounds) -> list[tuple[int, ...]]:
-    """Find the strongest forest that holds the required edges in their direction.
-
-    Source: Edmonds 1967 (optimum branchings).
-    """
-    graph: nx.DiGraph[int] = nx.DiGraph()
-    sure = 1.0 + len(strength) * float(strength.max(initial=0.0))
-    for parent, child in [*edges, *((b, a) for a, b in edges), *bounds.required]:
-        if not bounds.parents(child) or (parent, child) in bounds.required:
-            bonus = sure if (parent, child) in bounds.required else 1e-12
-            graph.add_edge(parent, child, weight=float(strength[parent, child]) + bonus)
-    parents: list[tuple[int, ...]] = [()] * len(strength)
-    for parent, child in nx.maximum_branching(graph).edges:
-        parents[child] = (parent,)
-    return parents
+    """Find the strongest forest that holds the required edges in their direction."""
+    weights = np.full(strength.shape, -np.inf)
+    for a, b in edges:
+        weights[a, b] = weights[b, a] = strength[a, b] + 1e-12  # a pair without a single bit may still be joined
+    for parent, child in bounds.required:
+        weights[:, child] = -np.inf
+        weights[parent, child] = 1.0 + len(strength) * float(strength.max(initial=0.0))
+    return [() if parent < 0 else (parent,) for parent in best_branching(weights)]

@@ -98,8 +98,8 @@ def _whole(times: Mapping[str, Times]) -> list[str]:
         "Times as fast: against the first line. `bnx learn` starts from the Parquet file with text levels in a new "
         "process: it reads and codes, tests all pairs, learns seven structures in 56 training sets, chooses smoothing "
         "and calibration inside each, predicts and scores ten folds, judges every edge, draws and writes the report. "
-        "scikit-learn gets the coded integers in memory, of 8 bits, which it is faster with than with 64, and does 10 fits of one "
-        "model, 10 predictions and the log loss.",
+        "scikit-learn gets the coded integers in memory, of 8 bits, which it is faster with than with 64, and does 10 "
+        "fits of one model, 10 predictions and the log loss.",
         "",
     ]
 
