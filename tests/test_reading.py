@@ -326,5 +326,5 @@ def test_what_the_csv_module_writes_is_read_back(tmp_path, rows, delimiter):
 
 def test_an_unknown_column_is_answered_with_the_nearest(tmp_path):
     path = write(tmp_path, "a.csv", "arrival,route\n1,2\n")
-    with pytest.raises(DataError, match="has no column 'arival'; did you mean arrival\\?$"):
+    with pytest.raises(DataError, match=r"has no column 'arival'; did you mean arrival\?$"):
         open_source(path).check(["arival"])

@@ -2,7 +2,9 @@
 
 import numpy as np
 import pytest
+from builders import coded, started
 
+from bnx.counts import PairLayout
 from bnx.kernels import pack_planes, rank_sums, sort_whole
 from bnx.kernels.exponentials import exponentials
 
@@ -43,16 +45,25 @@ def test_the_area_counts_pairs_and_halves_of_ties() -> None:
 @pytest.mark.parametrize(("kind", "levels"), [(np.uint8, 256), (np.uint16, 300)])
 @pytest.mark.parametrize("rows", [1, 63, 64, 65, 200])
 def test_every_word_of_a_plane_is_written(kind: type, levels: int, rows: int) -> None:
-    codes = np.random.default_rng(rows).integers(0, levels, (2, rows)).astype(kind)
-    starts = np.array([0, rows // 3, rows])
-    words = np.concatenate([[0], np.cumsum((np.diff(starts) + 63) // 64)])
-    sizes, ends = np.array([levels, levels]), np.arange(3) * (levels - 1)
-    planes = np.full((ends[-1] + 4, words[-1]), 12345, np.uint64)
-    pack_planes(codes, starts, words, sizes, ends, 0, 2, planes)
-    for i in range(2):
-        for level in range(levels - 1):
-            for g in range(2):
-                bits = np.zeros((words[g + 1] - words[g]) * 64, np.uint8)
-                bits[: starts[g + 1] - starts[g]] = codes[i, starts[g] : starts[g + 1]] == level
-                wanted = np.packbits(bits, bitorder="little").view("<u8")
-                assert (planes[ends[i] + level, words[g] : words[g + 1]] == wanted).all()
+    before = 7
+    codes = np.random.default_rng(rows).integers(0, levels, before + rows).astype(kind)
+    planes = np.full((levels - 1, (rows + 63) // 64), 12345, np.uint64)
+    pack_planes(codes, before, rows, levels, planes)
+    for level in range(levels - 1):
+        bits = np.zeros(planes.shape[1] * 64, np.uint8)
+        bits[:rows] = codes[before:] == level
+        assert (planes[level] == np.packbits(bits, bitorder="little").view("<u8")).all()
+
+
+@pytest.mark.parametrize("levels", [(32, 31), (31, 3), (40, 2), (60, 60)])
+def test_pairs_with_many_cells_are_counted_like_any_other(levels: tuple[int, int]) -> None:
+    rng = np.random.default_rng(8)
+    codes = np.array([rng.integers(0, size, 500) for size in levels], dtype=np.uint8)
+    target = np.sort(rng.integers(0, 2, 500))
+    engine = started(coded(codes, target, levels))
+    pair = np.array([0]), np.array([1])
+    counts = engine.pair_counts(PairLayout.of(np.array(levels), *pair)).counts[0]
+    for c in range(2):
+        expected = np.zeros(levels, int)
+        np.add.at(expected, tuple(codes[:, target == c]), 1)
+        assert (counts[c].reshape(levels) == expected).all()

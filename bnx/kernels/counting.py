@@ -9,9 +9,10 @@ from numba import njit, types
 from numba.core.errors import TypingError
 from numba.extending import intrinsic
 
-__all__ = ["count_cells", "count_pairs", "number_cells", "pack_planes"]
+__all__ = ["complete_pairs", "count_cells", "count_pairs", "number_cells", "pack_planes"]
 
 _WORDS = 256  # words of a plane read at a time: the planes of 50 attributes then stay in the second-level cache
+_MOST_CELLS = 900  # of a pair counted by bit planes; measured: beyond, single increments win
 _ROWS = 2048  # rows whose cell numbers are computed at a time
 
 
@@ -46,50 +47,34 @@ def _equals(typing_context, codes, first, level):  # type: ignore[no-untyped-def
 
 
 @njit(nogil=True, cache=True)
-def pack_planes(
-    codes: np.ndarray,
-    starts: np.ndarray,
-    word_starts: np.ndarray,
-    sizes: np.ndarray,
-    plane_starts: np.ndarray,
-    first: int,
-    last: int,
-    planes: np.ndarray,
-) -> None:
-    """Write one bit per row and level for attributes ``first:last``; the last level of each has no plane.
+def pack_planes(codes: np.ndarray, first: int, rows: int, size: int, planes: np.ndarray) -> None:
+    """Write one bit per row and level for ``rows`` codes from ``first`` on; the last level has no plane.
 
-    codes (n, N); starts, word_starts (G + 1,): rows and words of each group; plane_starts (n + 1,);
-    planes (planes, words) uint64, every word of those attributes is written. The last level's counts follow from the
-    margins by subtraction.
+    codes (N,); planes (size - 1, words) uint64: the words that the rows fill are written.
     """
-    for i in range(first, last):
-        row = codes[i]
-        for g in range(starts.size - 1):
-            whole = starts[g] + (starts[g + 1] - starts[g]) // 64 * 64
-            word = word_starts[g]
-            for low in range(starts[g], whole, 64):
-                for level in range(sizes[i] - 1):
-                    planes[plane_starts[i] + level, word] = _equals(row, low, level)
-                word += 1
-            if whole < starts[g + 1]:
-                for level in range(sizes[i] - 1):
-                    bits = np.uint64(0)
-                    for k in range(starts[g + 1] - whole):
-                        bits |= np.uint64(row[whole + k] == level) << np.uint64(k)
-                    planes[plane_starts[i] + level, word] = bits
+    whole = rows // 64
+    for word in range(whole):
+        for level in range(size - 1):
+            planes[level, word] = _equals(codes, first + 64 * word, level)
+    if 64 * whole < rows:
+        for level in range(size - 1):
+            bits = np.uint64(0)
+            for k in range(rows - 64 * whole):
+                bits |= np.uint64(codes[first + 64 * whole + k] == level) << np.uint64(k)
+            planes[level, whole] = bits
 
 
 @njit(nogil=True, cache=True)
-def _tile(planes: np.ndarray, a: int, b: int, low: int, high: int, out: np.ndarray) -> None:
-    """Count the common ones of planes a..a+3 with b, b+1 over words low:high into out (8,)."""
-    p0 = planes[a, low:high]
-    p1 = planes[a + 1, low:high]
-    p2 = planes[a + 2, low:high]
-    p3 = planes[a + 3, low:high]
-    q0 = planes[b, low:high]
-    q1 = planes[b + 1, low:high]
+def _tile(planes: np.ndarray, a: int, b: int, words: int, out: np.ndarray) -> None:
+    """Count the common ones of planes a..a+3 with b, b+1 over the first words into out (8,)."""
+    p0 = planes[a, :words]
+    p1 = planes[a + 1, :words]
+    p2 = planes[a + 2, :words]
+    p3 = planes[a + 3, :words]
+    q0 = planes[b, :words]
+    q1 = planes[b + 1, :words]
     s0 = s1 = s2 = s3 = t0 = t1 = t2 = t3 = np.uint64(0)
-    for w in range(high - low):
+    for w in range(words):
         x = q0[w]
         y = q1[w]
         s0 += _ones(p0[w] & x)
@@ -106,12 +91,9 @@ def _tile(planes: np.ndarray, a: int, b: int, low: int, high: int, out: np.ndarr
 
 @njit(nogil=True, cache=True)
 def count_pairs(
-    planes: np.ndarray,
-    word_starts: np.ndarray,
+    codes: np.ndarray,
+    starts: np.ndarray,
     sizes: np.ndarray,
-    plane_starts: np.ndarray,
-    margins: np.ndarray,
-    margin_starts: np.ndarray,
     left: np.ndarray,
     right: np.ndarray,
     offsets: np.ndarray,
@@ -119,34 +101,78 @@ def count_pairs(
     last: int,
     out: np.ndarray,
 ) -> None:
-    """Count pairs ``first:last`` of attributes in every group.
+    """Count pairs of attributes in the groups ``first:last``, but for the last level of either attribute.
 
-    planes must end with 4 spare planes (tiles may read past the last). margins (G, D) int64; left, right (P,): the two
-    attributes; out (G, cells) int32, zero on entry: pair p fills ``offsets[p]:`` row-major, left level by right level.
+    codes (n, N); starts (G + 1,): rows of each group; sizes (n,): levels; left, right (P,): the two attributes;
+    out (G, cells) int32, zero on entry: pair p fills ``offsets[p]:`` row-major, left level by right level. Rows are
+    packed into bit planes and counted a few thousand at a time, so that the planes stay in the second-level cache.
     """
+    used = np.zeros(sizes.size, np.bool_)
+    used[left] = True
+    used[right] = True
+    ends = np.cumsum(np.where(used, sizes - 1, 0))
+    planes = np.zeros((ends[-1] + 4, _WORDS), np.uint64)  # tiles may read past the last plane
     tile = np.zeros(8, np.uint64)
-    for g in range(word_starts.size - 1):
-        for low in range(word_starts[g], word_starts[g + 1], _WORDS):
-            high = min(low + _WORDS, word_starts[g + 1])
-            for p in range(first, last):
+    for g in range(first, last):
+        for low in range(starts[g], starts[g + 1], 64 * _WORDS):
+            rows = min(64 * _WORDS, starts[g + 1] - low)
+            for i in range(sizes.size):
+                if used[i]:
+                    pack_planes(codes[i], low, rows, sizes[i], planes[ends[i] - sizes[i] + 1 :])
+            for p in range(left.size):
                 i, j = left[p], right[p]
-                rows, columns = sizes[i] - 1, sizes[j] - 1
-                for a in range(0, rows, 4):
-                    for b in range(0, columns, 2):
-                        _tile(planes, plane_starts[i] + a, plane_starts[j] + b, low, high, tile)
-                        for v in range(min(2, columns - b)):
-                            for u in range(min(4, rows - a)):
-                                out[g, offsets[p] + (a + u) * sizes[j] + b + v] += np.int32(tile[4 * v + u])
-        for p in range(first, last):
-            _fill_last(
-                out[g],
-                offsets[p],
-                sizes[left[p]],
-                sizes[right[p]],
-                margins[g],
-                margin_starts[left[p]],
-                margin_starts[right[p]],
-            )
+                if (sizes[i] - 1) * (sizes[j] - 1) > _MOST_CELLS:
+                    _increment(codes[i], codes[j], low, rows, sizes[j], out[g, offsets[p] :])
+                else:
+                    _count_tiles(
+                        planes,
+                        ends[i] - sizes[i] + 1,
+                        ends[j] - sizes[j] + 1,
+                        sizes[i] - 1,
+                        sizes[j],
+                        (rows + 63) // 64,
+                        tile,
+                        out[g, offsets[p] :],
+                    )
+
+
+@njit(nogil=True, cache=True)
+def _count_tiles(
+    planes: np.ndarray, a0: int, b0: int, rows: int, width: int, words: int, tile: np.ndarray, cells: np.ndarray
+) -> None:
+    """Add the common ones of planes a0..a0+rows-1 with b0..b0+width-2 to a table ``width`` cells wide."""
+    for a in range(0, rows, 4):
+        for b in range(0, width - 1, 2):
+            _tile(planes, a0 + a, b0 + b, words, tile)
+            for v in range(min(2, width - 1 - b)):
+                for u in range(min(4, rows - a)):
+                    cells[(a + u) * width + b + v] += np.int32(tile[4 * v + u])
+
+
+@njit(nogil=True, cache=True)
+def _increment(left: np.ndarray, right: np.ndarray, low: int, rows: int, width: int, cells: np.ndarray) -> None:
+    """Count one by one, which is faster where a table has very many cells."""
+    for row in range(low, low + rows):
+        cells[np.int64(left[row]) * width + right[row]] += 1
+
+
+@njit(nogil=True, cache=True)
+def complete_pairs(
+    margins: np.ndarray,
+    margin_starts: np.ndarray,
+    sizes: np.ndarray,
+    left: np.ndarray,
+    right: np.ndarray,
+    offsets: np.ndarray,
+    first: int,
+    last: int,
+    out: np.ndarray,
+) -> None:
+    """Fill in the last level of every attribute from the margins (G, D) int64, for the groups ``first:last``."""
+    for g in range(first, last):
+        for p in range(left.size):
+            i, j = left[p], right[p]
+            _fill_last(out[g], offsets[p], sizes[i], sizes[j], margins[g], margin_starts[i], margin_starts[j])
 
 
 @njit(nogil=True, cache=True)
