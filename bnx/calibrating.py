@@ -130,7 +130,7 @@ def slope(p: np.ndarray, truth: np.ndarray) -> float | None:
         low, high = (low, t) if first > 0 else (t, high)
         newton = t - first / second if second > 0 else np.inf
         following = newton if low < newton < high else (low + high) / 2
-        if abs(following - t) <= 1e-12 * max(t, 1e-3):
+        if abs(following - t) <= 1e-9 * max(t, 1e-3):
             break
         t = following
     return float(following)
@@ -163,7 +163,7 @@ def _minimum(rows: _Rows) -> np.ndarray:
     value = _value(rows, point)
     for _ in range(_STEPS):
         step, drop = _newton_step(_curve(rows, point))
-        if drop <= 1e-15 * (1.0 + value):
+        if drop <= 1e-11 * (1.0 + value):
             point = np.add(point, step)
             break
         point, value, moved = _damped(rows, point, value, step, drop)

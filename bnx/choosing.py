@@ -18,7 +18,7 @@ __all__ = ["Choice", "Trial", "choose", "inner_losses", "make_trial", "mean_loss
 
 Held = tuple[int, ...]
 
-_TEMPERATURES = np.array([1.0, 0.7, 0.45])
+_TEMPERATURES = 3  # 1, 3/4 and 1/2
 _ROWS = 512  # rows judged at a time, so that their evidence stays in the cache
 
 
@@ -74,7 +74,7 @@ def inner_losses(
     Returns:
         (held, fold) -> weighted sums of log losses in nats, (structures, V, temperatures).
     """
-    temperatures = _TEMPERATURES if tempered else _TEMPERATURES[:1]
+    temperatures = _TEMPERATURES if tempered else 1
 
     def judge(held: Held) -> list[tuple[tuple[Held, int], np.ndarray]]:
         learned = trial.learned[held]
@@ -88,17 +88,17 @@ def inner_losses(
 
 
 def _losses(
-    terms: Terms, log_prior: np.ndarray, sample: Sample, fold: int, options: int, temperatures: np.ndarray
+    terms: Terms, log_prior: np.ndarray, sample: Sample, fold: int, options: int, temperatures: int
 ) -> np.ndarray:
     """Sum the losses of one fold's rows, (structures, V, temperatures), a few rows at a time."""
     rows = sample.rows(fold)
-    sums = np.zeros((max(terms.holder) + 1, options, len(temperatures)))
+    sums = np.zeros((max(terms.holder) + 1, options, temperatures))
     for first in range(rows.start, rows.stop, _ROWS):
         part = slice(first, min(first + _ROWS, rows.stop))
         found = terms.empty(part.stop - part.start)
         terms.add(sample.codes, part.start, part.stop, found)
         for one, total in zip(found, sums, strict=True):
-            tempered_losses(one, log_prior, sample.target[part], sample.weights[part], temperatures, total)
+            tempered_losses(one, log_prior, sample.target[part], sample.weights[part], total)
     return np.asarray(sums[list(terms.holder)])
 
 

@@ -7,7 +7,7 @@ from typing import Any
 
 import numba
 import numpy as np
-import pandas as pd
+import pyarrow as pa
 import scipy
 
 from bnx import __version__
@@ -28,7 +28,7 @@ __all__ = [
     "dot_of",
     "pair_results",
     "picture_of",
-    "predictions_frame",
+    "predictions_table",
     "structure_document",
 ]
 
@@ -258,21 +258,26 @@ def dot_of(document: dict[str, Any]) -> str:
     return dot_source(picture_of(document))
 
 
-def predictions_frame(comparison: Comparison) -> pd.DataFrame:
+def predictions_table(comparison: Comparison) -> pa.Table:
     """List out-of-fold probabilities: one row per row of data, repeat and structure."""
-    frames = []
+    parts = []
     levels = comparison.classifiers[0].target.levels
+    names = comparison.recipe.structures
     for repeat, one in enumerate(comparison.evaluations):
-        fold = np.empty(len(one.engine.order), np.int64)
-        for number, rows in enumerate(one.fold_rows):
-            fold[rows] = number
+        rows = len(one.engine.order)
+        fold = np.empty(rows, np.int64)
+        for number, run in enumerate(one.fold_rows):
+            fold[run] = number
         back = np.argsort(one.engine.order)
-        for name, p in zip(comparison.recipe.structures, one.p, strict=True):
-            frame = pd.DataFrame(
-                {"row": comparison.line_of_row, "repeat": repeat, "fold": fold[back], "structure": name}
-            )
-            frame["truth"] = np.array(levels, dtype=object)[one.engine.target[back]]
-            for c, level in enumerate(levels):
-                frame[f"p:{level}"] = p[back, c]
-            frames.append(frame)
-    return pd.concat(frames, ignore_index=True)
+        truth = pa.DictionaryArray.from_arrays(one.engine.target[back].astype(np.int32), pa.array(levels))
+        for s, p in enumerate(one.p):
+            columns = {
+                "row": comparison.line_of_row,
+                "repeat": np.full(rows, repeat),
+                "fold": fold[back],
+                "structure": pa.DictionaryArray.from_arrays(np.full(rows, s, np.int32), pa.array(names)),
+                "truth": truth,
+            }
+            columns |= {f"p:{level}": p[back, c] for c, level in enumerate(levels)}
+            parts.append(pa.table(columns))
+    return pa.concat_tables(parts)

@@ -1,5 +1,6 @@
 """Write a run's results: a whole folder or nothing."""
 
+import csv
 import json
 import shutil
 import tempfile
@@ -9,7 +10,8 @@ from contextlib import contextmanager, suppress
 from pathlib import Path
 from typing import Any
 
-import pandas as pd
+import pyarrow as pa
+import pyarrow.parquet as pq
 
 from bnx.comparison import Comparison
 from bnx.documents import (
@@ -17,13 +19,14 @@ from bnx.documents import (
     comparison_document,
     dot_of,
     pair_results,
-    predictions_frame,
+    predictions_table,
     structure_document,
 )
 from bnx.drawing import find_engine, render
 from bnx.errors import DataError, EngineError, SettingError
 from bnx.report import report_html
 from bnx.text import quoted
+from bnx.verdicts import PAIR_KEYS
 
 __all__ = ["json_text", "new_folder", "write_results"]
 
@@ -123,8 +126,10 @@ def write_results(
     """
     document = comparison_document(comparison)
     write_json(folder / _OURS, document)
-    frame = pd.DataFrame(document["pairs"])
-    frame.to_csv(folder / "pairs.csv", index=False)
+    with (folder / "pairs.csv").open("w", newline="", encoding="utf-8") as file:
+        writer = csv.DictWriter(file, PAIR_KEYS, lineterminator="\n")
+        writer.writeheader()
+        writer.writerows(document["pairs"])
     structures = [structure_document(comparison, s) for s in range(len(comparison.classifiers))]
     drawings = {one["name"]: dot_of(one) for one in structures}
     for one in structures:
@@ -135,10 +140,10 @@ def write_results(
         (folder / f"{name}.svg").write_text(picture, encoding="utf-8")
     (folder / "report.html").write_text(report_html(document, pictures), encoding="utf-8")
     if all_pairs:
-        every = pd.DataFrame([result.to_dict() for result in pair_results(comparison, everything=True)])
-        every.to_parquet(folder / "pairs.parquet", index=False)
+        every = [result.to_dict() for result in pair_results(comparison, everything=True)]
+        pq.write_table(pa.Table.from_pylist(every), folder / "pairs.parquet")
     if predictions:
-        predictions_frame(comparison).to_parquet(folder / "predictions.parquet", index=False)
+        pq.write_table(predictions_table(comparison), folder / "predictions.parquet")
     return document, notes
 
 

@@ -8,7 +8,7 @@ import numpy as np
 from bnx.independence import METHODS, Statistics, Tested, bits_interval, bits_upper, detectable_bits
 from bnx.multiplicity import adjusted, threshold
 
-__all__ = ["VERDICTS", "Judgement", "TestResult", "judge", "results"]
+__all__ = ["PAIR_KEYS", "VERDICTS", "Judgement", "TestResult", "judge", "results"]
 
 VERDICTS = ("negligible", "detected, but negligible", "dependent", "not enough data")
 
@@ -92,6 +92,9 @@ class TestResult:
     def to_dict(self) -> dict[str, str | float | int | bool | None]:
         """Give the fields by name, None for NaN."""
         return {field.name: _plain(getattr(self, field.name)) for field in fields(self)}
+
+
+PAIR_KEYS = tuple(field.name for field in fields(TestResult))
 
 
 def results(

@@ -12,7 +12,7 @@ from opentables import led7_draw, load
 from published import CORRAL_ACROSS_NATS, CORRAL_WITHIN_G, CORRAL_WITHIN_NATS, MONK1_NATS
 
 from bnx.comparison import Comparison, compare
-from bnx.documents import comparison_document, predictions_frame, structure_document
+from bnx.documents import comparison_document, predictions_table, structure_document
 from bnx.errors import BnxError, DataError, SettingError, StructureError
 from bnx.reading import open_source
 
@@ -146,10 +146,10 @@ def test_documents_hold_the_promised_keys(table: str) -> None:
 
 def test_groups_stay_in_one_fold_and_given_folds_are_kept() -> None:
     frame = mixed()
-    grouped = predictions_frame(compared(frame, "kind", folds=4, group="site", ignore=("era",)))
+    grouped = predictions_table(compared(frame, "kind", folds=4, group="site", ignore=("era",))).to_pandas()
     assert grouped.groupby(frame["site"].to_numpy())["fold"].nunique().max() == 1
     found = compared(frame, "kind", fold_column="era", ignore=("site",))
-    given = predictions_frame(found)
+    given = predictions_table(found).to_pandas()
     assert found.folds == 5
     assert pd.crosstab(frame["era"].to_numpy(), given["fold"].to_numpy()).gt(0).sum().tolist() == [1] * 5
     assert "era" not in found.names
@@ -157,7 +157,7 @@ def test_groups_stay_in_one_fold_and_given_folds_are_kept() -> None:
 
 def test_repeats_deal_anew_and_every_row_is_predicted_once_in_each() -> None:
     found = compared(mixed(), "kind", folds=4, repeats=3, structures=("naive", "tan"), ignore=("site", "era"))
-    frame = predictions_frame(found)
+    frame = predictions_table(found).to_pandas()
     assert (frame.groupby(["repeat", "structure"])["row"].nunique() == 400).all()
     assert frame.groupby("repeat")["fold"].apply(tuple).nunique() == 3
     assert len(found.results[0].by_fold) == 12

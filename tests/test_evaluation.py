@@ -12,7 +12,7 @@ from sklearn.naive_bayes import CategoricalNB
 
 from bnx.choosing import Choice
 from bnx.comparison import Comparison
-from bnx.documents import predictions_frame
+from bnx.documents import predictions_table
 from bnx.structure import Structure
 
 
@@ -23,7 +23,7 @@ def test_naive_bayes_out_of_fold_equals_scikit_learn(name: str) -> None:
     frame, target = load(name), TABLES[name].target
     keep = tuple(column for column in frame if column != target)
     found = compared(frame, target, smoothing="laplace:1", temperature=False, keep=keep)
-    predictions = predictions_frame(found)
+    predictions = predictions_table(found).to_pandas()
     codes, truth, levels = rows_and_levels(frame, target)
     classes = sorted(frame[target].unique())
     assert predictions["row"].tolist() == list(range(len(frame)))

@@ -115,9 +115,9 @@ def test_tempered_losses_equal_numpy_and_skip_rows_of_a_class_left_out() -> None
     evidence = random.normal(size=(50, 6)) * 5
     prior = np.log(np.array([0.3, 0.0, 0.7]), where=[True, False, True], out=np.full(3, -np.inf))
     truth, weights = random.integers(0, 3, 50), random.random(50)
-    temperatures = np.array([1.0, 0.4])
-    out = np.zeros((2, 2))
-    tempered_losses(evidence, prior, truth, weights, temperatures, out)
+    temperatures = (1.0, 0.75, 0.5)
+    out = np.zeros((2, 3))
+    tempered_losses(evidence, prior, truth, weights, out)
     kept = truth != 1
     for v in range(2):
         for k, t in enumerate(temperatures):

@@ -34,7 +34,7 @@ class Kdb:
         bounds.check_room(self.depths, self.name)
         parents = [bounds.parents(child) for child in range(len(dependence.relevance))]
         for child, earlier in _earlier(dependence, bounds).items():
-            others = [a for a in _strongest(dependence, child, earlier) if a not in parents[child]]
+            others = [a for a in earlier if a not in parents[child]]
             parents[child] = (*parents[child], *others)[: self.depths]
         return settled(Structure(self.name, tuple(parents)))
 
@@ -63,10 +63,7 @@ class KdbTested:
         attributes = len(dependence.relevance)
         family = attributes * (attributes - 1) // 2
         parents = [bounds.parents(child) for child in range(attributes)]
-        open_ = {
-            child: _strongest(dependence, child, earlier)[:_CANDIDATES]
-            for child, earlier in _earlier(dependence, bounds).items()
-        }
+        open_ = {child: earlier[:_CANDIDATES] for child, earlier in _earlier(dependence, bounds).items()}
         for _ in range(self.depths):
             questions = [
                 Question(child, candidate, parents[child])
@@ -106,16 +103,14 @@ def relevance_order(relevance: np.ndarray, bounds: Bounds) -> list[int]:
 
 
 def _earlier(dependence: Dependence, bounds: Bounds) -> dict[int, list[int]]:
-    """List, for every attribute in order, the attributes before it that it may take."""
+    """List, for every attribute in order, the attributes before it that it may take, by bits given the class.
+
+    Most bits come first, ties by column order.
+    """
     order = relevance_order(dependence.relevance, bounds)
-    barred = bounds.forbidden != ()
-    return {
-        child: [parent for parent in order[:place] if not (barred and bounds.forbids(parent, child))]
-        for place, child in enumerate(order)
-    }
-
-
-def _strongest(dependence: Dependence, child: int, attributes: list[int]) -> list[int]:
-    """Sort attributes by bits given the class, most first, ties by column order."""
-    bits = dependence.strength[child].tolist()
-    return sorted(attributes, key=lambda other: (-bits[other], other))
+    rank = np.argsort(order)
+    allowed = rank[None, :] < rank[:, None]
+    for a, b in bounds.forbidden:
+        allowed[a, b] = allowed[b, a] = False
+    strongest = np.argsort(np.where(allowed, -dependence.strength, np.inf), axis=1, kind="stable")
+    return {child: strongest[child, : int(allowed[child].sum())].tolist() for child in order}
