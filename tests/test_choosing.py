@@ -7,7 +7,9 @@ from builders import compared, folds_of, predicted, rows_and_levels
 from scipy.optimize import minimize
 
 from bnx import sampling
+from bnx.choosing import choose
 from bnx.comparison import Comparison
+from bnx.parameters import Smoothing
 
 
 def tilted(
@@ -209,3 +211,12 @@ def test_a_sample_stands_for_all_rows_of_every_fold_and_class(monkeypatch: pytes
     assert whole.results[1].pooled == again.results[1].pooled == full.results[1].pooled
     gains = np.array([[edge.gain for edge in run.edges[1]] for run in (whole, full)])
     assert 0 < np.abs(gains[0] - gains[1]).max() < 0.1
+
+
+def test_a_smoothing_is_judged_at_its_best_temperature() -> None:
+    one = compared(tilted(200, (0.6, 0.25, 0.15), 0.85, 5), "kind", folds=4).evaluations[0]
+    options = (Smoothing("laplace", 1.0), Smoothing("backoff", 4.0))
+    sums = np.array([[[10.0, 5.0, 9.0], [8.0, 7.0, 8.0]]])  # the second is better at temperature 1 only
+    losses = {((fold,), fold): sums for fold in range(4)}
+    chosen = choose((), 4, [one.choices[()].trial], [losses], options, one.sample, True, True)
+    assert chosen.smoothings == (options[0],)
