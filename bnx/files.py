@@ -5,6 +5,7 @@ import tempfile
 from pathlib import Path
 
 from bnx.errors import DataError, SettingError
+from bnx.unfinished import unfinished
 
 __all__ = ["check_free", "write_bytes"]
 
@@ -31,16 +32,21 @@ def write_bytes(path: str, content: bytes, overwrite: bool) -> None:
     """
     check_free(path, overwrite)
     place = Path(path).resolve()
-    work = None
-    try:
-        handle, name = tempfile.mkstemp(prefix=f".{place.name[:80]}-", dir=place.parent)
-        work = Path(name)
-        with os.fdopen(handle, "wb") as file:
-            file.write(content)
-        work.chmod(0o644)
-        work.replace(place)
-    except OSError as error:
-        raise DataError(f"cannot write {path} ({error.strerror or error}); choose another place with -o") from None
-    finally:
-        if work:
+    made: list[Path] = []
+
+    def undo() -> None:
+        for work in made:
             work.unlink(missing_ok=True)
+
+    with unfinished(undo):
+        try:
+            handle, name = tempfile.mkstemp(prefix=f".{place.name[:80]}-", dir=place.parent)
+            made.append(Path(name))
+            with os.fdopen(handle, "wb") as file:
+                file.write(content)
+            made[0].chmod(0o644)
+            made[0].replace(place)
+        except OSError as error:
+            raise DataError(f"cannot write {path} ({error.strerror or error}); choose another place with -o") from None
+        finally:
+            undo()

@@ -26,6 +26,7 @@ from bnx.drawing import find_engine, render
 from bnx.errors import DataError, EngineError, SettingError
 from bnx.report import report_html
 from bnx.text import quoted
+from bnx.unfinished import unfinished
 from bnx.verdicts import PAIR_KEYS
 
 __all__ = ["json_text", "new_folder", "write_results"]
@@ -46,23 +47,28 @@ def new_folder(path: str, overwrite: bool) -> Iterator[Path]:
     place = Path(path).resolve()
     _check_place(place, path, overwrite)
     missing = [folder for folder in place.parents if not folder.exists()]
-    work = None
-    try:
-        place.parent.mkdir(parents=True, exist_ok=True)
-        work = Path(tempfile.mkdtemp(prefix=f".{place.name[:80]}-", dir=place.parent))
-        yield work
-        _check_place(place, path, overwrite)
-        _put_in_place(work, place)
-    except BrokenPipeError:
-        raise
-    except OSError as error:
-        raise DataError(f"cannot write {path} ({error.strerror or error}); choose another folder with -o") from None
-    finally:
-        if work:
-            shutil.rmtree(work, ignore_errors=True)
+    made: list[Path] = []
+
+    def undo() -> None:
+        for folder in made:
+            shutil.rmtree(folder, ignore_errors=True)
         for folder in missing:
             with suppress(OSError):  # it holds the results, or something of somebody else
                 folder.rmdir()
+
+    with unfinished(undo):
+        try:
+            place.parent.mkdir(parents=True, exist_ok=True)
+            made.append(Path(tempfile.mkdtemp(prefix=f".{place.name[:80]}-", dir=place.parent)))
+            yield made[0]
+            _check_place(place, path, overwrite)
+            _put_in_place(made[0], place)
+        except BrokenPipeError:
+            raise
+        except OSError as error:
+            raise DataError(f"cannot write {path} ({error.strerror or error}); choose another folder with -o") from None
+        finally:
+            undo()
 
 
 def _put_in_place(work: Path, place: Path) -> None:

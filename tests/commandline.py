@@ -33,7 +33,7 @@ def call(*arguments: str, stdin: str = "") -> Run:
     """Run the command line as ``main`` does, with streams of its own."""
     out, err = (io.TextIOWrapper(io.BytesIO(), encoding="utf-8", newline="") for _ in range(2))
     given = io.TextIOWrapper(io.BytesIO(stdin.encode()), encoding="utf-8")
-    before = {number: signal.getsignal(number) for number in (signal.SIGTERM, signal.SIGHUP)}
+    before = {number: signal.getsignal(number) for number in (signal.SIGINT, signal.SIGTERM, signal.SIGHUP)}
     with (
         mock.patch.object(sys, "argv", ["bnx", *arguments]),
         mock.patch.object(sys, "stdin", given),

@@ -12,6 +12,7 @@ from typer.core import TyperGroup
 from bnx import __version__
 from bnx.errors import BnxError
 from bnx.text import nearest, printable
+from bnx.unfinished import undo_all
 
 __all__ = ["app", "main"]
 
@@ -74,7 +75,7 @@ def bnx(
 
 def main() -> None:
     """Run the command line; a refusal becomes one sentence on standard error and exit code 1, or 2 for wrong usage."""
-    for number in (signal.SIGTERM, getattr(signal, "SIGHUP", signal.SIGTERM)):
+    for number in (signal.SIGINT, signal.SIGTERM, getattr(signal, "SIGHUP", signal.SIGTERM)):
         signal.signal(number, _leave)
     try:
         sys.exit(app(prog_name="bnx", standalone_mode=False))
@@ -92,8 +93,9 @@ def main() -> None:
 
 
 def _leave(number: int, _frame: Any) -> None:
-    """End by an exception, so that half-made folders are removed on the way out."""
-    sys.exit(128 + number)
+    """Undo what is unfinished and end at once: an exception raised here could be swallowed, with locks left taken."""
+    undo_all()
+    os._exit(128 + number)
 
 
 def _refuse(sentence: str, code: int = 1) -> None:

@@ -20,6 +20,7 @@ from bnx.multiplicity import METHODS as ADJUSTMENTS
 from bnx.reading import Source
 from bnx.recipe import Recipe
 from bnx.text import printable
+from bnx.unfinished import unfinished
 
 __all__ = [
     "Adjust",
@@ -168,7 +169,7 @@ def progress_bar(quiet: bool) -> Iterator[Callable[[str, int, int], None]]:
         yield lambda stage, done, total: None
         return
     columns = (TextColumn("{task.description:<20}"), BarColumn(), MofNCompleteColumn(), TimeElapsedColumn())
-    with Progress(*columns, console=Console(stderr=True), transient=True) as bar:
+    with Progress(*columns, console=Console(stderr=True), transient=True) as bar, unfinished(bar.stop):
         tasks: dict[str, Any] = {}
 
         def tell(stage: str, done: int, total: int) -> None:
