@@ -2,6 +2,7 @@
 
 import importlib.util
 import os
+import re
 import shutil
 import subprocess
 import sys
@@ -75,6 +76,8 @@ def render(dot: str, form: Form) -> bytes:
     if form not in get_args(Form):
         raise SettingError(f"a picture cannot be drawn as {form!r}; known: {', '.join(get_args(Form))}")
     drawn = _run(find_engine(), dot, form)
+    if form == "pdf":  # the date of drawing would make equal pictures unequal files
+        drawn = re.sub(rb"(/CreationDate \(D:)\d{14}", rb"\g<1>20000101000000", drawn)
     return themed(drawn) if form == "svg" else drawn
 
 

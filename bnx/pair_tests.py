@@ -1,5 +1,6 @@
 """Tests of chosen pairs, given the class and further attributes, on all rows of a table."""
 
+import textwrap
 from collections.abc import Sequence
 from dataclasses import dataclass
 from itertools import combinations
@@ -70,7 +71,10 @@ class PairTests:
             rows += _rows(verdict, [result for result in self.results if result.verdict == verdict], len(header))
         conditions = ", ".join((self.target, *self.given))
         head = f"{count_of(self.rows, 'row')}; bits, {statistic} and p given {conditions}"
-        return "\n".join([head, "", aligned(header, rows), "", self._strata()])
+        at = next((one.detectable_at for one in self.results if not np.isnan(one.detectable_at)), None)
+        level = "" if at is None else f"; detectable: with power .80 at p <= {at:.2g}, or more where method is no tail"
+        notes = f"bits are as counted, verdicts judge them less what chance alone would show{level}"
+        return "\n".join([head, "", aligned(header, rows), "", textwrap.fill(notes, 100), self._strata()])
 
     def _strata(self) -> str:
         low, high = min(self.informative), max(self.informative)

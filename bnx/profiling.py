@@ -104,7 +104,16 @@ class Profile:
         return "\n".join(lines).rstrip()
 
 
-HEADER = ("attribute", "type", "levels", "blank", "rare", "class bits", "share", "most frequent level, or range")
+HEADER = (
+    "attribute",
+    "type",
+    "levels",
+    "blank",
+    "rare",
+    "class bits",
+    "share",
+    "most frequent level, or outermost cuts",
+)
 
 
 def profile(coded: Coded) -> Profile:

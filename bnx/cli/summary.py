@@ -82,7 +82,8 @@ def _row(one: Mapping[str, Any], document: Mapping[str, Any]) -> tuple[str, ...]
 def _legend(document: Mapping[str, Any]) -> list[str]:
     """Say the names in words, and the short headings in full."""
     names = "; ".join(f"{one['name']}: {one['words']}" for one in _ranked(document) if one["words"] != one["name"])
-    columns = "interval 95 %; p adjusted over the structures; calib.: calibration error; temp.: temperature"
+    columns = "scores after calibration; interval 95 %; p adjusted over the structures; calib.: calibration error; "
+    columns += "temp.: temperature"
     return [_wrapped(part + ".") for part in (names, columns) if part]
 
 
