@@ -18,7 +18,7 @@ from bnx.evaluation import Evaluation, evaluate
 from bnx.folds import assign_blocks, assign_given, assign_grouped, sub_blocks
 from bnx.gains import edge_gains
 from bnx.gating import Bounds
-from bnx.independence import Statistics, p_values
+from bnx.independence import Statistics
 from bnx.judging import Against, Recommendation, StructureScore, against, recommend, score
 from bnx.learners import Learner, learner
 from bnx.learning import make_bounds
@@ -98,8 +98,7 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
     results = score(evaluations, first.engine)
     baseline = recipe.structures.index(recipe.baseline)
     statistics = Statistics.of(learned.pairs.statistics)
-    tested = p_values(statistics, recipe.test)
-    tested = refined(first.engine, [learned.training], learned.pairs.requests(0), statistics, tested, REPORTED)
+    tested = refined(first.engine, [learned.training], learned.pairs.requests(0), statistics, recipe.test, REPORTED)
     judged = judge(statistics, tested, adjust=recipe.adjust, alpha=recipe.alpha, negligible=recipe.negligible)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])

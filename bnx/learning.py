@@ -11,7 +11,7 @@ from bnx.engines import LocalEngine
 from bnx.errors import DataError
 from bnx.families import Request, for_each_family
 from bnx.gating import Answer, Bounds, Gate, Question, learn_together
-from bnx.independence import Statistics, p_values
+from bnx.independence import Statistics
 from bnx.learners import Learner
 from bnx.recipe import Recipe
 from bnx.refining import Doubt, refined
@@ -82,9 +82,7 @@ def learn(
     learnings, known = [], []
     for number, (dependence, pairs) in enumerate(measured):
         statistics = Statistics.of(pairs.statistics)
-        tested = refined(
-            engine, trainings, pairs.requests(number), statistics, p_values(statistics, recipe.test), unsure
-        )
+        tested = refined(engine, trainings, pairs.requests(number), statistics, recipe.test, unsure)
         gate = Gate(recipe.alpha, pairs.matrix(tested.p, attributes))
         p = np.where(np.isnan(gate.p), 1.0, gate.p)
         known.append((p.tolist(), pairs.matrix(statistics.bits_corrected, attributes).tolist()))
@@ -134,7 +132,7 @@ def ask_tests(
     rows = test_statistics(engine, trainings, requests)
     different = {request: place for place, request in enumerate(rows)}
     statistics = Statistics.of(np.array(list(rows.values())))
-    p = refined(engine, trainings, list(rows), statistics, p_values(statistics, test), unsure).p
+    p = refined(engine, trainings, list(rows), statistics, test, unsure).p
     p = np.where(np.isnan(p), 1.0, p)
     bits = statistics.bits_corrected
     return [Answer(float(p[different[request]]), float(bits[different[request]])) for request in requests]

@@ -13,7 +13,7 @@ from bnx.contingency import table_statistics
 from bnx.engines import LocalEngine, start_local
 from bnx.errors import DataError, SettingError
 from bnx.families import for_each_family
-from bnx.independence import Statistics, p_values
+from bnx.independence import Statistics
 from bnx.reading import Source
 from bnx.recipe import Recipe
 from bnx.refining import REPORTED, refined
@@ -139,7 +139,7 @@ def run_pair_tests(
     pairs = list(combinations(chosen, 2))
     table, marginal = _statistics(engine, training, pairs, others)
     requests = [(0, (*others, a, b)) for a, b in pairs]
-    tested = refined(engine, [training], requests, table, p_values(table, recipe.test), REPORTED)
+    tested = refined(engine, [training], requests, table, recipe.test, REPORTED)
     judged = judge(table, tested, adjust=recipe.adjust, alpha=recipe.alpha, negligible=recipe.negligible)
     found = results([(schema.names[a], schema.names[b]) for a, b in pairs], table, marginal, judged)
     order = np.argsort(-table.bits, kind="stable").tolist()

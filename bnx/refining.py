@@ -8,7 +8,7 @@ import numpy as np
 from bnx.engines import LocalEngine
 from bnx.exact import exact_tail
 from bnx.families import Request, for_each_family
-from bnx.independence import Statistics, Tested
+from bnx.independence import Statistics, Tested, p_values
 from bnx.trainings import Training
 
 __all__ = ["REPORTED", "Doubt", "refined"]
@@ -29,13 +29,14 @@ def refined(
     trainings: Sequence[Training],
     requests: Sequence[Request],
     stats: Statistics,
-    tested: Tested,
+    test: str,
     unsure: Doubt,
 ) -> Tested:
-    """Replace p by moments with the exact p wherever it is in doubt and all strata are 2 x 2.
+    """Test P pairs; replace p by moments with the exact p wherever it is in doubt and all strata are 2 x 2.
 
     requests: of each of the P pairs, its training set and members, the pair last.
     """
+    tested = p_values(stats, test)
     chosen = tested.in_doubt(stats, unsure.low, unsure.high)
     if not len(chosen):
         return tested

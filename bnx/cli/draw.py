@@ -2,13 +2,13 @@
 
 import math
 from pathlib import Path
-from typing import Annotated, Literal
+from typing import Annotated, Literal, cast
 
 import typer
 
 from bnx.cli.shared import Overwrite, StructureFile, opened, say
 from bnx.documents import picture_of
-from bnx.drawing import render
+from bnx.drawing import Form, render
 from bnx.errors import SettingError
 from bnx.files import check_free, write_bytes
 from bnx.formats.dot import dot_source
@@ -43,7 +43,7 @@ def run(
     check_free(output, overwrite)
     document, _ = opened(structure)
     dot = dot_source(picture_of(document), colours, least_bits, everything)
-    write_bytes(output, dot.encode() if form == "dot" else render(dot, form), overwrite)  # type: ignore[arg-type]
+    write_bytes(output, dot.encode() if form == "dot" else render(dot, cast(Form, form)), overwrite)
     say(f"{output} written")
 
 

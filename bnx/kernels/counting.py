@@ -16,6 +16,7 @@ _MOST_CELLS = 900  # of a pair counted by bit planes; measured: beyond, single i
 _ROWS = 2048  # rows whose cell numbers are computed at a time
 
 
+# Intrinsics take numba's own types, which have no annotations: hence the ignored errors.
 @intrinsic
 def _ones(typing_context, word):  # type: ignore[no-untyped-def]
     """Count the one bits of a word with the machine's own instruction."""

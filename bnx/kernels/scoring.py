@@ -14,6 +14,7 @@ _ROWS = 512  # rows that go through all families at a time, so that their eviden
 _JOINED = 32  # rows of one weight whose losses are taken together
 
 
+# Intrinsics take numba's own types, which have no annotations: hence the ignored errors.
 @intrinsic
 def _add_four(typing_context, out, i, terms, j):  # type: ignore[no-untyped-def]
     """Add ``terms[j:j + 4]`` to ``out[i:i + 4]``, one instruction where the machine has it."""
