@@ -1,10 +1,17 @@
 """See where the independence assumption of naive Bayes breaks, whether it matters, and what to model instead."""
 
+import hashlib
 import os
+from pathlib import Path
 
 __version__ = "0.1.0"
 
 # Compiled kernels are kept with the user, not in the package: files that pip does not know would outlive an uninstall.
 # The noqa: pathlib refuses a user without a home, os.path does not.
+# Each state of the sources has a folder of its own: a compiled kernel does not notice that one it calls has changed.
 _CACHE = os.environ.get("XDG_CACHE_HOME") or os.path.join(os.path.expanduser("~"), ".cache")  # noqa: PTH111, PTH118
-os.environ.setdefault("NUMBA_CACHE_DIR", os.path.join(_CACHE, "bnx", "kernels"))  # noqa: PTH118
+_SOURCES = sorted((Path(__file__).parent / "kernels").glob("*.py"))
+_STATE = hashlib.blake2b(
+    repr([(path.name, path.read_bytes()) for path in _SOURCES]).encode(), digest_size=8
+).hexdigest()
+os.environ.setdefault("NUMBA_CACHE_DIR", os.path.join(_CACHE, "bnx", f"kernels-{_STATE}"))  # noqa: PTH118

@@ -24,15 +24,15 @@ from bnx.learners import Learner, learner
 from bnx.learning import make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
+from bnx.pair_judging import JudgedPairs, judge_pairs
 from bnx.reading import Source
 from bnx.recipe import MOST_FOLDS, Recipe
-from bnx.refining import REPORTED, refined
+from bnx.refining import visit_families
 from bnx.resampling import stability
 from bnx.scoring import families
 from bnx.structure import Structure
 from bnx.tables import LeftOut
 from bnx.text import count_of
-from bnx.verdicts import Judgement, judge
 
 __all__ = ["Comparison", "compare"]
 
@@ -41,7 +41,7 @@ __all__ = ["Comparison", "compare"]
 class Comparison:
     """Everything that one run found out; per structure in the order asked for.
 
-    ``relevance`` (n,): bits each attribute shares with the class. ``pairs`` and ``judgement``: all pairs, on all rows.
+    ``relevance`` (n,): bits each attribute shares with the class. ``pairs`` and ``judged``: all pairs, on all rows.
     ``held_out``: scores on a table that took no part, empty without one.
     """
 
@@ -53,7 +53,7 @@ class Comparison:
     classifiers: tuple[Classifier, ...]
     relevance: np.ndarray
     pairs: Pairs
-    judgement: Judgement
+    judged: JudgedPairs
     results: tuple[StructureScore, ...]
     against: tuple[Against | None, ...]
     edges: tuple[tuple[EdgeEvidence, ...], ...]
@@ -97,9 +97,12 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
     stable = stability(first.engine, learned.training.view, folds, learners, bounds, recipe)
     results = score(evaluations, first.engine)
     baseline = recipe.structures.index(recipe.baseline)
-    statistics = Statistics.of(learned.pairs.statistics)
-    tested = refined(first.engine, [learned.training], learned.pairs.requests(0), statistics, recipe.test, REPORTED)
-    judged = judge(statistics, tested, adjust=recipe.adjust, alpha=recipe.alpha, negligible=recipe.negligible)
+    visit = visit_families(first.engine, [learned.training], learned.pairs.requests(0))
+    domains = learned.training.view.domains
+    ends = [(domains[i], domains[j]) for i, j in zip(learned.pairs.left, learned.pairs.right, strict=True)]
+    judged = judge_pairs(
+        visit, Statistics.of(learned.pairs.statistics), Statistics.of(learned.pairs.marginal), ends, recipe
+    )
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
     return Comparison(
@@ -111,14 +114,14 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
         classifiers=classifiers,
         relevance=learned.dependence.relevance,
         pairs=learned.pairs,
-        judgement=judged,
+        judged=judged,
         results=tuple(results),
         against=tuple(against(results, baseline, folds)),
         edges=tuple(edge_ledger(first, gains, stable, learners, bounds, recipe, folds)),
         recommendation=recommend(evaluations, results, recipe.structures, folds),
         held_out=held_out,
         left_out=coded.left_out,
-        warnings=(*coded.warnings, *_run_warnings(evaluations, coded, recipe, learners), *not_scored),
+        warnings=(*coded.warnings, *_run_warnings(evaluations, coded, recipe, learners), *judged.notes, *not_scored),
         evaluations=tuple(evaluations),
         line_of_row=coded.table.rows,
     )

@@ -5,9 +5,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from bnx.contingency import COLUMNS, NATS, ROWS, table_statistics
 from bnx.counts import PairCounts, PairLayout, sum_blocks
 from bnx.engines import LocalEngine
+from bnx.kernels.contingency import COLUMNS, NATS, ROWS, one_table, table_statistics
 from bnx.trainings import Training
 
 __all__ = ["Dependence", "Pairs", "measure", "relevance_of"]
@@ -50,8 +50,7 @@ def relevance_of(engine: LocalEngine, training: Training) -> np.ndarray:
     result = np.zeros(len(engine.margins))
     for i, margin in enumerate(engine.margins):
         counts = training.view.merge(i, margin[training.mask].sum(axis=0)).astype(np.int32)
-        shape = np.array(counts.shape, np.int64)
-        row = table_statistics(counts.reshape(1, -1), np.zeros(1, np.int64), shape[:1], shape[1:])[0]
+        row = one_table(counts.reshape(1, -1), *counts.shape)
         result[i] = row[NATS] / max(row[ROWS], 1.0) / np.log(2)
     return result
 

@@ -1,6 +1,5 @@
 """The machine-readable results: comparison, structures, pairs, predictions, as plain values ready to be written."""
 
-import math
 import platform
 from collections.abc import Sequence
 from typing import Any
@@ -14,12 +13,12 @@ from bnx import __version__
 from bnx.comparison import Comparison
 from bnx.formats.dot import dot_source
 from bnx.formats.structure_json import classifier_document
-from bnx.independence import Statistics
 from bnx.judging import Against, StructureScore
 from bnx.ledger import EdgeEvidence
 from bnx.picture import Arrow, Chip, Picture
+from bnx.plain import finite
 from bnx.structure import words
-from bnx.verdicts import VERDICTS, TestResult, results
+from bnx.verdicts import OUTCOMES, VERDICTS, TestResult
 
 __all__ = [
     "COMPARISON_FORMAT",
@@ -47,22 +46,11 @@ def versions() -> dict[str, str]:
     }
 
 
-def finite(value: Any) -> Any:
-    """Replace what JSON does not know (infinity, NaN) by None, inside lists and dicts too."""
-    if isinstance(value, float):
-        return value if math.isfinite(value) else None
-    if isinstance(value, dict):
-        return {key: finite(item) for key, item in value.items()}
-    if isinstance(value, list | tuple):
-        return [finite(item) for item in value]
-    return value
-
-
 def comparison_document(comparison: Comparison) -> dict[str, Any]:
     """Describe a whole run, ready for JSON."""
     advice = comparison.recommendation
     names = comparison.recipe.structures
-    judged = comparison.judgement
+    judged = comparison.judged.judgement
     document: dict[str, Any] = finite(
         {
             "format": COMPARISON_FORMAT,
@@ -97,6 +85,9 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
             "pairs_total": len(comparison.pairs.left),
             "pairs_rejected": int(judged.rejected.sum()),
             "pairs_verdicts": {word: int((judged.verdict == code).sum()) for code, word in enumerate(VERDICTS)},
+            "pairs_outcomes": {
+                word: int((comparison.judged.outcome == code).sum()) for code, word in enumerate(OUTCOMES)
+            },
             "left_out": [{"name": one.name, "reason": one.reason} for one in comparison.left_out],
             "warnings": list(comparison.warnings),
             "versions": versions(),
@@ -178,15 +169,13 @@ def against_entry(against: Against | None) -> dict[str, Any]:
 
 def pair_results(comparison: Comparison, everything: bool = False) -> list[TestResult]:
     """List tested pairs, most bits first: all up to 20,000, else the drawn, the rejected and the strongest."""
-    statistics = Statistics.of(comparison.pairs.statistics)
-    order = np.argsort(-statistics.bits, kind="stable")
+    order = np.argsort(-comparison.judged.statistics.bits, kind="stable")
     if len(order) > PAIRS_SHOWN and not everything:
         order = order[_first(comparison, order)]
     names = comparison.names
     left, right = comparison.pairs.left[order].tolist(), comparison.pairs.right[order].tolist()
     ends = [(names[i], names[j]) for i, j in zip(left, right, strict=True)]
-    marginal = Statistics.of(comparison.pairs.marginal).take(order)
-    return results(ends, statistics.take(order), marginal, comparison.judgement.take(order))
+    return comparison.judged.results(ends, order)
 
 
 def _first(comparison: Comparison, order: np.ndarray) -> np.ndarray:
@@ -194,7 +183,7 @@ def _first(comparison: Comparison, order: np.ndarray) -> np.ndarray:
     drawn = {frozenset((edge.parent, edge.child)) for edges in comparison.edges for edge in edges}
     left, right = comparison.pairs.left[order].tolist(), comparison.pairs.right[order].tolist()
     is_drawn = np.array([frozenset(ends) in drawn for ends in zip(left, right, strict=True)])
-    rank = np.where(is_drawn, 0, np.where(comparison.judgement.rejected[order], 1, 2))
+    rank = np.where(is_drawn, 0, np.where(comparison.judged.judgement.rejected[order], 1, 2))
     return np.sort(np.argsort(rank, kind="stable")[:PAIRS_SHOWN])
 
 

@@ -10,27 +10,34 @@ from bnx.unfinished import unfinished
 __all__ = ["check_free", "write_bytes"]
 
 
-def check_free(path: str, overwrite: bool) -> None:
+def check_free(path: str, overwrite: bool, option: str = "-o") -> None:
     """Refuse a path that is taken.
 
     Raises:
-        SettingError: there is a file and ``overwrite`` is off, or the path is empty or a folder.
+        SettingError: there is a file and ``overwrite`` is off, or the path is empty or a folder. DataError: there is no
+            such folder.
     """
     if not path:
-        raise SettingError("-o is empty; give the name of a file")
+        raise SettingError(f"{option} is empty; give the name of a file")
     if Path(path).is_dir():
-        raise SettingError(f"-o {path} is a folder, but a file is to be written; add a file name")
+        raise SettingError(f"{option} {path} is a folder, but a file is to be written; add a file name")
+    if not Path(path).resolve().parent.is_dir():
+        raise DataError(
+            f"cannot write {path}: there is no folder {Path(path).parent}; make it, or give another {option}"
+        )
     if Path(path).exists() and not overwrite:
-        raise SettingError(f"the file {path} exists already; give another one with -o, or --overwrite to replace it")
+        raise SettingError(
+            f"the file {path} exists already; give another one with {option}, or --overwrite to replace it"
+        )
 
 
-def write_bytes(path: str, content: bytes, overwrite: bool) -> None:
+def write_bytes(path: str, content: bytes, overwrite: bool, option: str = "-o") -> None:
     """Write a file through a temporary neighbour; a link is followed, so that what it points to is replaced.
 
     Raises:
         SettingError: the path is taken. DataError: it cannot be written.
     """
-    check_free(path, overwrite)
+    check_free(path, overwrite, option)
     place = Path(path).resolve()
     made: list[Path] = []
 
@@ -47,6 +54,8 @@ def write_bytes(path: str, content: bytes, overwrite: bool) -> None:
             made[0].chmod(0o644)
             made[0].replace(place)
         except OSError as error:
-            raise DataError(f"cannot write {path} ({error.strerror or error}); choose another place with -o") from None
+            raise DataError(
+                f"cannot write {path} ({error.strerror or error}); choose another place with {option}"
+            ) from None
         finally:
             undo()

@@ -1,37 +1,34 @@
-"""Conditional independence of two attributes: bits shared, tests, intervals and detectable effects."""
+"""Conditional independence of two attributes: bits shared, and the p-values of tests."""
 
 from dataclasses import dataclass, fields
 from typing import NamedTuple
 
 import numpy as np
-from scipy.special import chdtrc, chdtri, chndtrinc, gammaincc, ndtri
+from scipy.special import chdtrc, gammaincc
 
 from bnx.errors import SettingError
+from bnx.kernels.contingency import DF
 
 __all__ = [
     "METHODS",
     "TESTS",
     "Statistics",
     "Tested",
-    "bits_interval",
-    "bits_upper",
-    "detectable_bits",
     "p_values",
 ]
 
-TESTS = ("auto", "chi2", "g")
-METHODS = ("chi2-tail", "g-tail", "moments", "exact", "none")
+TESTS = ("auto", "chi2", "g", "monte-carlo")
+METHODS = ("chi2-tail", "g-tail", "moments", "exact", "monte-carlo", "none")
 
-_CHI2_TAIL, _G_TAIL, _MOMENTS, _EXACT, _NONE = range(5)
-_POWER = 0.8
-_SMALL_BITS = 0.05
-_LARGE_STATISTIC = 9000.0
-_TINY = 1e-300
+_CHI2_TAIL, _G_TAIL, _MOMENTS, _EXACT, _, _NONE = range(6)
+_LEAST_SKEWNESS = 1e-3
 
 
 @dataclass(frozen=True)
 class Statistics:
-    """Statistics of P pairs, each array float64 (P,); `bnx.contingency` defines the columns.
+    """Statistics of P pairs, each array float64 (P,); `bnx.kernels.contingency` defines the columns.
+
+    ``chance``: mean of the nats x records if the two are independent; to first order half the degrees of freedom.
 
     Bits are per record over all strata, those that carry nothing included.
     """
@@ -43,6 +40,7 @@ class Statistics:
     df: np.ndarray
     x2_mean: np.ndarray
     x2_variance: np.ndarray
+    x2_third: np.ndarray
     x2_ceiling: np.ndarray
     min_expected: np.ndarray
     below_5: np.ndarray
@@ -50,11 +48,12 @@ class Statistics:
     strata: np.ndarray
     informative: np.ndarray
     levels: np.ndarray
+    chance: np.ndarray
 
     @classmethod
     def of(cls, table: np.ndarray) -> "Statistics":
         """Take the columns that `contingency.table_statistics` returns, (P, COLUMNS)."""
-        return cls(*np.ascontiguousarray(table.T))
+        return cls(*np.vstack([table.T, table.T[DF] / 2.0]))
 
     def take(self, chosen: np.ndarray) -> "Statistics":
         """Keep the chosen pairs (indices or a mask)."""
@@ -72,18 +71,11 @@ class Statistics:
 
     @property
     def bits_corrected(self) -> np.ndarray:
-        """Bits less what independent attributes would show on average, df / (2 rows ln 2), (P,).
+        """Bits less what independent attributes would show on average, (P,): df / (2 rows ln 2) to first order.
 
         Source: Miller 1955.
         """
-        return _to_bits(self.nats - self.df / 2.0, self.rows)
-
-    @property
-    def bits_error(self) -> np.ndarray:
-        """Standard error of the bits by the delta method, (P,)."""
-        nats = _ratio(self.nats, self.rows)
-        variance = _ratio(self.nats_squared, self.rows) - nats * nats
-        return _to_bits(np.sqrt(np.maximum(0.0, variance)), np.sqrt(self.rows))
+        return _to_bits(self.nats - self.chance, self.rows)
 
     @property
     def share_below_5(self) -> np.ndarray:
@@ -125,26 +117,34 @@ class Tested(NamedTuple):
     method: np.ndarray
     carried: np.ndarray
 
-    def in_doubt(self, stats: Statistics, low: float, high: float) -> np.ndarray:
-        """Find the pairs, as indices, whose p by moments lies from ``low`` to ``high`` and could be made exact.
+    @property
+    def by_moments(self) -> np.ndarray:
+        """Whether p comes from the moments of X2, bool (P,)."""
+        return np.asarray(self.method == _MOMENTS)
 
-        Those are the pairs whose strata all use two rows and two columns. The tail by moments is too light there.
-        """
-        doubtful = (self.method == _MOMENTS) & (self.p >= low) & (self.p <= high) & (stats.levels == 2)
-        return np.flatnonzero(doubtful)
+    @property
+    def is_exact(self) -> np.ndarray:
+        """Whether p is exact, bool (P,)."""
+        return np.asarray(self.method == _EXACT)
 
-    def made_exact(self, chosen: np.ndarray, p: np.ndarray) -> "Tested":
-        """Put exact p-values in the places ``chosen``."""
-        new, method, carried = self.p.copy(), self.method.copy(), self.carried.copy()
-        new[chosen], method[chosen], carried[chosen] = p, _EXACT, True
-        return Tested(self.statistic, new, method, carried)
+    def replaced(self, chosen: np.ndarray, p: np.ndarray, method: str) -> "Tested":
+        """Put better p-values in the places ``chosen``, from a method that every sample carries."""
+        new, methods, carried = self.p.copy(), self.method.copy(), self.carried.copy()
+        new[chosen], methods[chosen], carried[chosen] = p, METHODS.index(method), True
+        return Tested(self.statistic, new, methods, carried)
+
+    def without(self, untestable: np.ndarray) -> "Tested":
+        """Take the marked pairs out of the family: no p, method ``none``; their statistic stays."""
+        p, method = np.where(untestable, np.nan, self.p), np.where(untestable, np.int8(_NONE), self.method)
+        return Tested(self.statistic, p, method, self.carried & ~untestable)
 
 
 def p_values(stats: Statistics, test: str = "auto") -> Tested:
     """Test every pair.
 
-    ``auto``: X2 by its chi-square tail where Cochran's rule holds, elsewhere by the gamma distribution that has X2's
-    exact mean and variance given the margins. ``chi2`` and ``g``: the chi-square tail of X2 or G everywhere.
+    ``auto`` and ``monte-carlo``: X2 by its chi-square tail where Cochran's rule holds, elsewhere by the shifted gamma
+    distribution that has X2's exact mean, variance and skewness given the margins (``refining`` replaces some of
+    these). ``chi2`` and ``g``: the chi-square tail of X2 or G everywhere.
 
     Returns:
         The statistic, its p-value (both NaN where nothing can be tested: no degree of freedom, or a statistic that
@@ -160,7 +160,7 @@ def p_values(stats: Statistics, test: str = "auto") -> Tested:
     p = chdtrc(np.maximum(1.0, stats.df), np.maximum(0.0, statistic))
     method = np.full(p.shape, _G_TAIL if test == "g" else _CHI2_TAIL, dtype=np.int8)
     carried = stats.min_expected >= 5.0 * stats.levels if test == "g" else stats.cochran
-    if test == "auto":
+    if test in ("auto", "monte-carlo"):
         method[~carried] = _MOMENTS
         p[~carried] = _moment_p(stats.take(~carried))
     untestable = ~stats.varies
@@ -170,56 +170,16 @@ def p_values(stats: Statistics, test: str = "auto") -> Tested:
 
 
 def _moment_p(stats: Statistics) -> np.ndarray:
-    """Compute the tail of the gamma distribution with X2's exact conditional mean and variance, (P,).
+    """Compute the tail of the shifted gamma distribution with X2's exact first three conditional moments, (P,).
 
-    Source: Haldane 1940; Dawson 1954, Biometrika 41.
+    Of one not skewed to the right, as X2 of a table of almost nothing but single records, the normal tail is taken.
+
+    Source: Haldane 1940; Dawson 1954, Biometrika 41; Mielke & Berry 1985 (Pearson's type III).
     """
-    rate = stats.x2_mean / np.where(stats.x2_variance > 0, stats.x2_variance, 1.0)
-    return np.asarray(gammaincc(np.maximum(rate * stats.x2_mean, 1e-9), rate * stats.x2))
-
-
-def bits_interval(stats: Statistics, level: float = 0.95) -> tuple[np.ndarray, np.ndarray]:
-    """Bound the bits from both sides; NaN where Cochran's rule fails. Two arrays, (P,)."""
-    tail = (1.0 - level) / 2.0
-    return _bound(stats, 1.0 - tail), _bound(stats, tail)
-
-
-def bits_upper(stats: Statistics, level: float = 0.95) -> np.ndarray:
-    """Bound the bits from above only; NaN where Cochran's rule fails. (P,)."""
-    return _bound(stats, 1.0 - level)
-
-
-def _bound(stats: Statistics, probability: float) -> np.ndarray:
-    """Find the bits at which a statistic as small as the observed one has this probability, (P,).
-
-    Below .05 (corrected) bit the non-central chi-square distribution of X2 is inverted, because G's runs high on tables
-    with many levels; above, or where X2 is so large that it is as good as normal, the delta method around those bits.
-    """
-    result = np.full(stats.rows.shape, np.nan)
-    carried = stats.cochran & stats.varies
-    small = carried & (stats.bits_corrected < _SMALL_BITS) & (stats.x2 < _LARGE_STATISTIC)
-    few = stats.take(small)
-    noncentrality = chndtrinc(np.maximum(few.x2, _TINY), few.df, probability)
-    result[small] = _to_bits(np.where(noncentrality > _TINY, noncentrality, 0.0), 2.0 * few.rows)
-    many = stats.take(carried & ~small)
-    bound = many.bits_corrected - ndtri(probability) * many.bits_error
-    result[carried & ~small] = np.maximum(0.0, bound)
-    return result
-
-
-def detectable_bits(at: float, df: np.ndarray, rows: np.ndarray) -> np.ndarray:
-    """Find the fewest bits that a test at the threshold ``at`` rejects with power .80, (P,); NaN without a df.
-
-    The statistic is then non-central chi-square with non-centrality 2 x rows x bits x ln 2.
-
-    Source: Cohen 1988, chapter 7 (power of chi-square tests).
-    """
-    kinds, which = np.unique(np.asarray(df, dtype=np.float64), return_inverse=True)
-    usable = np.maximum(1.0, kinds)
-    noncentrality = chndtrinc(chdtri(usable, at), usable, 1.0 - _POWER)
-    noncentrality[kinds <= 0] = np.nan
-    bits: np.ndarray = noncentrality[which] / (2.0 * rows * np.log(2))
-    return bits
+    spread = np.sqrt(np.where(stats.x2_variance > 0, stats.x2_variance, 1.0))
+    skewness = np.maximum(stats.x2_third / spread**3, _LEAST_SKEWNESS)
+    shape = 4.0 / skewness**2
+    return np.asarray(gammaincc(shape, np.maximum(0.0, shape + 2.0 * (stats.x2 - stats.x2_mean) / (spread * skewness))))
 
 
 def _ratio(above: np.ndarray, below: np.ndarray) -> np.ndarray:

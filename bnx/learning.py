@@ -5,21 +5,21 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from bnx.contingency import table_statistics
 from bnx.dependence import Dependence, Pairs, measure
 from bnx.engines import LocalEngine
 from bnx.errors import DataError
 from bnx.families import Request, for_each_family
 from bnx.gating import Answer, Bounds, Gate, Question, learn_together
 from bnx.independence import Statistics
+from bnx.kernels.contingency import one_table
 from bnx.learners import Learner
 from bnx.recipe import Recipe
-from bnx.refining import Doubt, refined
+from bnx.refining import Rigour, gated, visit_families
 from bnx.structure import Structure
 from bnx.text import nearest
 from bnx.trainings import Training
 
-__all__ = ["Learned", "ask_tests", "doubt", "learn", "make_bounds", "test_statistics"]
+__all__ = ["Learned", "ask_tests", "learn", "make_bounds", "rigour_of", "test_statistics"]
 
 
 @dataclass(frozen=True)
@@ -78,11 +78,11 @@ def learn(
     """
     measured = measure(engine, trainings, marginal_of_first)
     attributes = len(bounds.names)
-    unsure = doubt(learners, attributes, recipe.alpha)
+    rigour = rigour_of(learners, attributes, recipe)
     learnings, known = [], []
     for number, (dependence, pairs) in enumerate(measured):
         statistics = Statistics.of(pairs.statistics)
-        tested = refined(engine, trainings, pairs.requests(number), statistics, recipe.test, unsure)
+        tested = gated(visit_families(engine, trainings, pairs.requests(number)), statistics, rigour)
         gate = Gate(recipe.alpha, pairs.matrix(tested.p, attributes))
         p = np.where(np.isnan(gate.p), 1.0, gate.p)
         known.append((p.tolist(), pairs.matrix(statistics.bits_corrected, attributes).tolist()))
@@ -90,7 +90,7 @@ def learn(
 
     def ask(questions: Sequence[tuple[int, Question]]) -> list[Answer]:
         numbered = [(number // len(learners), question) for number, question in questions]
-        tested = iter(ask_tests(engine, trainings, [one for one in numbered if one[1].given], recipe.test, unsure))
+        tested = iter(ask_tests(engine, trainings, [one for one in numbered if one[1].given], rigour))
         return [next(tested) if question.given else _answer(*known[number], question) for number, question in numbered]
 
     structures = learn_together(learnings, ask)
@@ -100,17 +100,17 @@ def learn(
     ]
 
 
-def doubt(learners: Sequence[Learner], attributes: int, alpha: float) -> Doubt:
-    """Bound the p-values by moments that an exact test could move over a threshold of the tested structures.
+def rigour_of(learners: Sequence[Learner], attributes: int, recipe: Recipe) -> Rigour:
+    """Say how gates test: which p-values by moments an exact test could move over a threshold of these structures.
 
     The strictest threshold is alpha / depths / pairs, the mildest alpha x edges of a tree / pairs = 2 alpha /
-    attributes. p by moments is too small where it errs, so there is more room below than above.
+    attributes.
     """
     depths = [member.depths for member in learners if member.tested]
     if not depths or attributes < 2:
-        return Doubt(1.0, 0.0)
-    pairs = attributes * (attributes - 1) / 2
-    return Doubt(alpha / max(depths) / pairs / 1000, min(1.0, 5 * alpha * 2 / attributes))
+        return Rigour(recipe.test, 1.0, 0.0, recipe.seed)
+    strictest = recipe.alpha / max(depths) / (attributes * (attributes - 1) / 2)
+    return Rigour(recipe.test, strictest / 1000, min(1.0, 5 * recipe.alpha * 2 / attributes), recipe.seed)
 
 
 def _answer(p: list[list[float]], bits: list[list[float]], question: Question) -> Answer:
@@ -122,8 +122,7 @@ def ask_tests(
     engine: LocalEngine,
     trainings: Sequence[Training],
     questions: Sequence[tuple[int, Question]],
-    test: str,
-    unsure: Doubt,
+    rigour: Rigour,
 ) -> list[Answer]:
     """Answer (number of the training set, question) pairs by conditional-independence tests."""
     if not questions:
@@ -132,7 +131,7 @@ def ask_tests(
     rows = test_statistics(engine, trainings, requests)
     different = {request: place for place, request in enumerate(rows)}
     statistics = Statistics.of(np.array(list(rows.values())))
-    p = refined(engine, trainings, list(rows), statistics, test, unsure).p
+    p = gated(visit_families(engine, trainings, list(rows)), statistics, rigour).p
     p = np.where(np.isnan(p), 1.0, p)
     bits = statistics.bits_corrected
     return [Answer(float(p[different[request]]), float(bits[different[request]])) for request in requests]
@@ -144,9 +143,6 @@ def test_statistics(
     """Compute the statistics (COLUMNS,) of the last two members given the class and the members before them."""
 
     def use(counts: np.ndarray, sizes: tuple[int, ...]) -> np.ndarray:
-        strata = counts.reshape(-1, sizes[-2] * sizes[-1])
-        one = (np.array([sizes[-2]]), np.array([sizes[-1]]))
-        row: np.ndarray = table_statistics(strata, np.zeros(1, np.int64), *one)[0]
-        return row
+        return one_table(counts.reshape(-1, sizes[-2] * sizes[-1]), sizes[-2], sizes[-1])
 
     return for_each_family(engine, trainings, requests, use, "testing parents")

@@ -10,7 +10,7 @@ from bnx.evaluation import Evaluation
 from bnx.gains import Gains
 from bnx.gating import Bounds, Question
 from bnx.learners import Learner
-from bnx.learning import ask_tests, doubt
+from bnx.learning import ask_tests, rigour_of
 from bnx.paired import edge_verdict
 from bnx.recipe import Recipe
 from bnx.resampling import Stability
@@ -64,8 +64,7 @@ def edge_ledger(
             evaluation.engine,
             [learned.training],
             [(0, question) for question in gate],
-            recipe.test,
-            doubt(learners, len(bounds.names), recipe.alpha),
+            rigour_of(learners, len(bounds.names), recipe),
         )
         gate_p = {question: answer.p for question, answer in zip(gate, answers, strict=True)}
         rows = []

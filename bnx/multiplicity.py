@@ -6,7 +6,7 @@ import numpy as np
 
 from bnx.errors import SettingError
 
-__all__ = ["METHODS", "adjusted", "forest_threshold", "threshold"]
+__all__ = ["METHODS", "adjusted", "forest_threshold", "testable", "threshold"]
 
 METHODS = ("bh", "holm", "by", "none")
 
@@ -57,6 +57,33 @@ def threshold(p: np.ndarray, method: str, alpha: float) -> float:
     if method == "holm":
         return alpha / max(1, m - rejected)
     return alpha * max(1, rejected) / (m * _dependence_factor(m, method))
+
+
+def testable(least: np.ndarray, alpha: float, method: str) -> np.ndarray:
+    """Find the tests that could be rejected at all in a family of their own kind, bool (m,).
+
+    With K the smallest number for which at most K tests have a least p of at most alpha / K, those make the family; the
+    others could never be rejected there. With ``none`` a test need only reach alpha. The choice looks at margins alone,
+    so what follows keeps its level.
+
+    Args:
+        least: smallest p that each test could have given its margins, (m,); infinite where nothing can be tested.
+        alpha: level of the family.
+        method: as in ``adjusted``.
+
+    Raises:
+        SettingError: the method is not known.
+
+    Source: Tarone 1990.
+    """
+    _check(method)
+    if method == "none":
+        return least <= alpha
+    rising = np.sort(least)
+    sizes = np.arange(1, len(least) + 1)
+    fitting = np.searchsorted(rising, alpha / sizes, side="right") <= sizes
+    size = int(sizes[np.argmax(fitting)]) if len(sizes) else 1
+    return least <= alpha / size
 
 
 def forest_threshold(pairs: np.ndarray, p: np.ndarray, n: int, alpha: float) -> float:

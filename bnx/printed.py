@@ -26,7 +26,8 @@ _METHODS = {
     "g-tail": "G, tail of chi-square",
     "moments": "X², matched moments",
     "exact": "X², exact",
-    "none": "none: nothing to test",
+    "monte-carlo": "X², random tables",
+    "none": "none: these margins allow no rejection",
 }
 
 
@@ -79,6 +80,7 @@ class PairRow:
     bits: str
     interval: str
     marginal: str
+    outcome: str
     cramers_v: str
     statistic: str
     df: str
@@ -198,6 +200,7 @@ def pair_row(pair: Mapping[str, Any], drawn: frozenset[frozenset[str]]) -> PairR
         bits=fixed(pair["bits"], 4),
         interval=_range((pair["bits_low"], pair["bits_high"]), 3, sign=False) or _DASH,
         marginal=_number(pair["marginal_bits"], 4),
+        outcome=pair["outcome"],
         cramers_v=_number(pair["cramers_v"], 2),
         statistic=_number(pair["statistic"], 1),
         df=f"{pair['df']:,}",
@@ -207,7 +210,7 @@ def pair_row(pair: Mapping[str, Any], drawn: frozenset[frozenset[str]]) -> PairR
         min_expected=_number(pair["min_expected"], 1),
         detectable=_DASH
         if pair["detectable_bits"] is None
-        else ("" if pair["sample_carries_it"] else "at least ") + fixed(pair["detectable_bits"], 4),
+        else ("" if pair["bits_low"] is not None else "about ") + fixed(pair["detectable_bits"], 4),
         verdict=pair["verdict"],
         drawn=frozenset((pair["a"], pair["b"])) in drawn,
     )

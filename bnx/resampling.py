@@ -5,10 +5,10 @@ from collections.abc import Mapping, Sequence
 
 import numpy as np
 
-from bnx.contingency import COLUMNS
 from bnx.engines import LocalEngine
 from bnx.folds import halves
 from bnx.gating import Bounds
+from bnx.kernels.contingency import COLUMNS
 from bnx.learners import Learner
 from bnx.learning import learn
 from bnx.recipe import Recipe

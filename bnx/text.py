@@ -1,9 +1,13 @@
 """Words and numbers for people: aligned tables, number formats, the nearest name."""
 
 import difflib
+import math
 from collections.abc import Iterable, Sequence
 
-__all__ = ["aligned", "count_of", "fixed", "nearest", "printable", "quoted", "signed"]
+__all__ = ["aligned", "count_of", "cut_middle", "fixed", "nearest", "of_p", "printable", "quoted", "signed"]
+
+
+_LEAST = 8  # characters of a name that is cut
 
 
 def fixed(value: float | None, digits: int = 3) -> str:
@@ -14,6 +18,22 @@ def fixed(value: float | None, digits: int = 3) -> str:
 def signed(value: float | None, digits: int = 3) -> str:
     """Format a number with its sign; nothing for None."""
     return "" if value is None else f"{value:+.{digits}f}"
+
+
+def of_p(p: float) -> str:
+    """Write a p-value with two digits; nothing for NaN."""
+    if p == 0.0:
+        return "<1e-300"
+    return "" if math.isnan(p) else f"{p:.2g}"
+
+
+def cut_middle(text: str, most: int) -> str:
+    """Shorten a name to at most so many characters, keeping both its ends."""
+    shown = printable(text)
+    if len(shown) <= most:
+        return shown
+    front = (most - 1) * 2 // 3
+    return f"{shown[:front]}…{shown[len(shown) - (most - 1 - front) :]}"
 
 
 def count_of(number: int, noun: str, plural: str | None = None) -> str:
@@ -42,10 +62,16 @@ def printable(text: str) -> str:
     return "".join(one if one.isprintable() else one.encode("unicode_escape").decode() for one in text)
 
 
-def aligned(header: Sequence[str], rows: Iterable[Sequence[str]], left: int = 1) -> str:
-    """Lay out rows under a header; the first ``left`` columns flush left, the others right."""
+def aligned(header: Sequence[str], rows: Iterable[Sequence[str]], left: int = 1, most: int | None = None) -> str:
+    """Lay out rows under a header; the first ``left`` columns flush left, the others right.
+
+    With ``most``, the first column is cut so that no line is longer.
+    """
     lines = [[printable(cell) for cell in row] for row in (header, *rows)]
     widths = [max(len(line[k]) for line in lines) for k in range(len(header))]
+    if most is not None and sum(widths) + 2 * len(widths) - 2 > most:
+        widths[0] = max(_LEAST, most - sum(widths[1:]) - 2 * len(widths) + 2)
+        lines = [[cut_middle(line[0], widths[0]), *line[1:]] for line in lines]
     return "\n".join(
         "  ".join(
             cell.ljust(width) if k < left else cell.rjust(width)

@@ -1,18 +1,23 @@
 """Verdicts on pairs tested as one family: adjusted p, what could have been detected, and what it all says."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass, fields
+from dataclasses import asdict, dataclass, fields
 
 import numpy as np
 
-from bnx.independence import METHODS, Statistics, Tested, bits_interval, bits_upper, detectable_bits
+from bnx.independence import METHODS, Statistics, Tested
+from bnx.intervals import bits_interval, bits_upper, detectable_bits
 from bnx.multiplicity import adjusted, threshold
+from bnx.plain import finite
 
-__all__ = ["PAIR_KEYS", "VERDICTS", "Judgement", "TestResult", "judge", "results"]
+__all__ = ["OUTCOMES", "PAIR_KEYS", "VERDICTS", "Judgement", "TestResult", "judge", "outcomes", "results"]
 
 VERDICTS = ("negligible", "detected, but negligible", "dependent", "not enough data")
 
+OUTCOMES = ("explained", "remains", "strengthened", "appears only given the class", "not enough data")
+
 _NEGLIGIBLE, _DETECTED_NEGLIGIBLE, _DEPENDENT, _UNKNOWN = range(4)
+_EXPLAINED, _REMAINS, _STRENGTHENED, _APPEARS, _UNTOLD = range(5)
 
 
 @dataclass(frozen=True)
@@ -61,6 +66,22 @@ def judge(
     return Judgement(*tested, corrected, at, rejected, low, high, detectable, verdict.astype(np.int8))
 
 
+def outcomes(stats: Statistics, given: Judgement, marginal: Statistics, without: Judgement) -> np.ndarray:
+    """Say what the class explains of each of P pairs, as index into OUTCOMES, (P,).
+
+    *explained*: only the test without the class rejects, and what could remain is negligible; *remains*: both tests
+    reject; *strengthened*: both, and even the lower bound given the class lies above the bits without it; *appears only
+    given the class*: only the test given the class rejects; else *not enough data*.
+    """
+    small = (given.verdict == _NEGLIGIBLE) | (given.verdict == _DETECTED_NEGLIGIBLE)
+    both = given.rejected & without.rejected
+    stronger = both & (given.low > marginal.bits_corrected)
+    explained = without.rejected & ~given.rejected & small
+    return np.select(
+        [explained, stronger, both, given.rejected], [_EXPLAINED, _STRENGTHENED, _REMAINS, _APPEARS], _UNTOLD
+    ).astype(np.int8)
+
+
 @dataclass(frozen=True)
 class TestResult:
     """One pair, tested: bits per record, statistics, p-values and the verdict; NaN where there is nothing to say."""
@@ -74,6 +95,12 @@ class TestResult:
     bits_low: float
     bits_high: float
     marginal_bits: float
+    marginal_bits_corrected: float
+    marginal_p_value: float
+    marginal_adjusted_p: float
+    explained_bits: float
+    bits_without_blanks: float
+    outcome: str
     x2: float
     g: float
     statistic: float
@@ -82,6 +109,8 @@ class TestResult:
     adjusted_p: float
     method: str
     sample_carries_it: bool
+    strata: int
+    strata_informative: int
     min_expected: float
     share_expected_below_5: float
     cramers_v: float
@@ -91,26 +120,31 @@ class TestResult:
 
     def to_dict(self) -> dict[str, str | float | int | bool | None]:
         """Give the fields by name, None for NaN."""
-        return {field.name: _plain(getattr(self, field.name)) for field in fields(self)}
+        plain: dict[str, str | float | int | bool | None] = finite(asdict(self))
+        return plain
 
 
 PAIR_KEYS = tuple(field.name for field in fields(TestResult))
 
 
 def results(
-    names: Sequence[tuple[str, str]], stats: Statistics, marginal: Statistics, judgement: Judgement
+    names: Sequence[tuple[str, str]],
+    stats: Statistics,
+    judgement: Judgement,
+    marginal: Statistics,
+    without: Judgement,
+    outcome: np.ndarray,
+    without_blanks: np.ndarray,
 ) -> list[TestResult]:
-    """Write P judged pairs as one result each."""
-    method, verdict = (np.array(words, dtype=object) for words in (METHODS, VERDICTS))
+    """Write P judged pairs as one result each; ``without``: judged without the class."""
+    method, verdict, explained = (np.array(words, dtype=object) for words in (METHODS, VERDICTS, OUTCOMES))
     at = np.full(stats.rows.shape, judgement.at)
-    shared = (stats.bits, stats.bits_corrected, judgement.low, judgement.high, marginal.bits, stats.x2, stats.g)
+    shared = (stats.bits, stats.bits_corrected, judgement.low, judgement.high)
+    whole = (marginal.bits, marginal.bits_corrected, without.p, without.adjusted)
+    apart = (marginal.bits_corrected - stats.bits_corrected, without_blanks, explained[outcome], stats.x2, stats.g)
     tested = (judgement.statistic, stats.df.astype(np.int64), judgement.p, judgement.adjusted)
-    trust = (method[judgement.method], judgement.carried, stats.min_expected, stats.share_below_5)
+    strata = (stats.strata.astype(np.int64), stats.informative.astype(np.int64))
+    trust = (method[judgement.method], judgement.carried, *strata, stats.min_expected, stats.share_below_5)
     effect = (stats.cramers_v, judgement.detectable, at, verdict[judgement.verdict])
-    columns = [column.tolist() for column in (*shared, *tested, *trust, *effect)]
+    columns = [column.tolist() for column in (*shared, *whole, *apart, *tested, *trust, *effect)]
     return [TestResult(*pair, *row) for pair, *row in zip(names, *columns, strict=True)]
-
-
-def _plain(value: str | float | int | bool) -> str | float | int | bool | None:
-    """Replace NaN, which JSON does not know, by None."""
-    return None if isinstance(value, float) and np.isnan(value) else value

@@ -2,8 +2,8 @@
 
 import numpy as np
 
-from bnx.contingency import table_statistics
 from bnx.independence import Statistics
+from bnx.kernels.contingency import table_statistics
 
 
 def measured(tables: np.ndarray) -> Statistics:

@@ -12,59 +12,6 @@ from commandline import NAMES, call, small_results, small_table, write
 from bnx.formats.structure_json import classifier_of, read_structure
 
 
-def test_test_prints_pairs_by_verdict() -> None:
-    run = call("test", small_table(), "--class", "grade", "--all")
-    assert run.code == 0
-    lines = run.out.splitlines()
-    assert lines[0] == "240 rows; bits, X2 and p given grade"
-    assert lines[2].split() == ["bits", "X2", "df", "p", "adjusted", "detectable", "method"]
-    assert lines[3] == "dependent"
-    assert lines[4].startswith("  dock ~ alarm ")
-    assert sum(" ~ " in line for line in lines) == 15
-    assert max(map(len, lines)) <= 100
-    assert lines[-1] == "3 of 3 strata can show a dependence"
-
-
-def test_the_widest_rows_of_test_fit_100_columns() -> None:
-    demo = Path(__file__).parent.parent / "datasets" / "cold_chain.csv"
-    run = call("test", str(demo), "--class", "arrival", "--all", "--quiet")
-    assert sum(" ~ " in line for line in run.out.splitlines()) == 66
-    assert max(map(len, run.out.splitlines())) <= 100
-
-
-PAIR_KEYS = {
-    "a",
-    "b",
-    "bits",
-    "bits_corrected",
-    "marginal_bits",
-    "x2",
-    "g",
-    "statistic",
-    "df",
-    "p_value",
-    "adjusted_p",
-    "method",
-    "sample_carries_it",
-    "min_expected",
-    "share_expected_below_5",
-    "cramers_v",
-    "detectable_bits",
-    "detectable_at",
-    "verdict",
-}
-
-
-def test_test_gives_json_with_every_key_promised() -> None:
-    run = call("test", small_table(), "--class", "grade", "dock", "alarm", "lane", "--given", "shift", "--json")
-    tests = json.loads(run.out)["tests"]
-    assert (tests[0]["a"], tests[0]["b"], tests[0]["given"]) == ("dock", "alarm", ["shift"])
-    assert len(tests) == 3
-    for one in tests:
-        assert PAIR_KEYS | {"given", "strata", "strata_informative", "rows"} <= set(one)
-        assert (one["strata"], one["rows"]) == (12, 240)
-
-
 def test_profile_prints_a_table_or_json() -> None:
     run = call("profile", small_table(), "--class", "grade")
     assert run.code == 0

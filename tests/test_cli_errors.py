@@ -3,8 +3,9 @@
 import gzip
 from pathlib import Path
 
+import numpy as np
 import pytest
-from commandline import FAST, NAMES, refusal, small_rows, small_table, write
+from commandline import FAST, NAMES, call, refusal, small_rows, small_table, write
 
 LEARN = ("--class", "grade", "-o", "out", "--structures", "naive,tan", *FAST)
 HEADER = ",".join(NAMES) + "\n"
@@ -176,6 +177,116 @@ def test_holdout_tables_that_cannot_be_scored() -> None:
         "short.csv has no column 'grade'; known: dock, alarm, lane, shift, site, gap"
     )
     assert not Path("out").exists()
+
+
+PAIRS = {
+    "dock alrm": "small.csv has no column 'alrm'; did you mean alarm?",
+    "dock alarm --given sift": "small.csv has no column 'sift'; did you mean shift?",
+    "dock grade": "'grade' is the class, which is taken as given in every test; leave it out",
+    "dock alarm --given grade": "'grade' is the class, which is taken as given in every test; leave it out",
+    "dock dock": "'dock' is named twice; name each attribute once",
+    "dock alarm lane dock": "'dock' is named twice; name each attribute once",
+    "dock alarm --given dock": "'dock' is to be tested and also --given; it can be only one of them",
+    "dock alarm --given lane,lane": "'lane' is named twice; name each attribute once",
+    "dock alarm --given ,": "--given: ',' names nothing; give one or more names, or drop the option",
+    "dock": "only dock is named, but a pair needs two; name at least two, or give --all",
+    "": "no attribute is named, but a pair needs two; name at least two, or give --all",
+    "--all dock": "--all tests every pair, but dock is named too; give the names or --all",
+    "--all --given dock,alarm,lane,shift,site": "the table has only 1 attribute to test beside the class and --given, "
+    "but a pair needs two; give a table with more, or fewer --given",
+    "dock alarm --ordered lane": "--ordered lane: it is not among the attributes to be tested, so its order would "
+    "change nothing; name it, or drop it",
+    "--all --ordered docks": "small.csv has no column 'docks'; did you mean dock?",
+    "--all --ordered grade": "'grade' is the class, which is taken as given in every test; leave it out",
+    "dock alarm --given lane --ordered lane": "--ordered lane: it is not among the attributes to be tested, so its "
+    "order would change nothing; name it, or drop it",
+    "--all --close -1": "--close: -1 cannot be used; give 0 or a number of pairs",
+    "dock alarm --ordered dock=few<many": "--ordered dock: the order leaves out some; give every level its place",
+    "dock alarm --ordered dock=few<smoe<many": "--ordered dock: 'smoe' is not a level of it; did you mean some?",
+    "dock alarm --ordered dock=few<many<few": "--ordered dock=few<many<few: 'few<many<few' is no order of levels; "
+    "write dock=low<middle<high",
+    "dock alarm --ordered dock": "--ordered dock: its levels are no numbers, so their order must be given; write it as "
+    "--ordered 'dock=few<many<some', from low to high",
+    "dock alarm --ordered dock=few<some<many --ordered dock": "--ordered names 'dock' twice; name it once",
+    "dock alarm --plot p.bmp": "--plot p.bmp: the ending says nothing that can be drawn; use .svg, .png or .pdf",
+    "dock alarm --plot none/p.svg": "cannot write none/p.svg: there is no folder none; make it, or give another --plot",
+    "dock alarm -o none/p.csv": "cannot write none/p.csv: there is no folder none; make it, or give another -o",
+    "dock alarm -o p.txt": "-o p.txt: the tests are written as CSV; give a name that ends in .csv",
+    "dock alarm --theme dark": "--theme dark says how to draw, but no picture is asked for; give --plot, or drop it",
+    "dock alarm --test exact": "--test: 'exact' cannot be used; give one of auto, chi2, g, monte-carlo",
+    "dock alarm --alpha 1": "--alpha: 1 cannot be used; give a number above 0 and below 1",
+    "dock alarm --bins best": None,
+}
+
+
+@pytest.mark.parametrize("options", PAIRS)
+def test_pairs_that_cannot_be_tested(options: str) -> None:
+    message = refusal("test", small_table(), "--class", "grade", *options.split())
+    expected = PAIRS[options]
+    assert "bins" in message if expected is None else message == expected.replace("small.csv", small_table())
+    assert list(Path().iterdir()) == []
+
+
+def test_attributes_that_are_left_out_say_why() -> None:
+    rows = [[f"id {k}", "same", "", *row] for k, row in enumerate(small_rows(60))]
+    write(Path("t.csv"), ("number", "flat", "empty", *NAMES), rows)
+    for name, reason in (
+        ("number", "a different value in every row"),
+        ("flat", "the same value in every row"),
+        ("empty", "every cell is blank"),
+    ):
+        expected = f"{name!r} is left out of the table: {reason}; --keep {name} to use it"
+        assert refusal("test", "t.csv", "--class", "grade", "dock", name) == expected
+        assert refusal("test", "t.csv", "--class", "grade", "dock", "alarm", "--given", name) == expected
+
+
+def test_an_attribute_that_is_ignored_is_not_called_unknown() -> None:
+    message = refusal("test", small_table(), "--class", "grade", "dock", "lane", "--ignore", "lane")
+    assert message.startswith("'lane' is ")
+    assert "--ignore" in message
+
+
+def test_a_number_without_a_cut_point_cannot_be_tested() -> None:
+    rows = [[row[0], row[1], f"{k * 37 % 101}.{k}", "xy"[k % 2]] for k, row in enumerate(small_rows(100))]
+    write(Path("t.csv"), ("dock", "alarm", "noise", "kind"), rows)
+    expected = (
+        "'noise' is numeric, but mdl finds no cut point in it, so it has one level only; give other --bins, as "
+        "frequency:5, or --categorical noise"
+    )
+    for names in (("dock", "noise"), ("dock", "alarm", "--given", "noise")):
+        assert refusal("test", "t.csv", "--class", "kind", *names, "--bins", "mdl") == expected
+
+
+def many_levels(sizes: tuple[int, ...], rows: int = 200) -> str:
+    """Write a table of columns a, b, c, ... of so many levels each and a class of two."""
+    names = "abcdefgh"[: len(sizes)]
+    random = np.random.default_rng(1)
+    columns = [random.permutation(np.arange(rows) % size) for size in sizes]
+    cells = [[*(f"v{column[k]}" for column in columns), "xy"[k % 2]] for k in range(rows)]
+    return write(Path("t.csv"), (*names, "kind"), cells)
+
+
+def test_strata_too_many_to_count_are_refused_before_anything_is_counted() -> None:
+    """2 classes x 50 x 50 x 50 levels, 40 x 40 cells each: 400 million are allowed, and not one level more."""
+    table = many_levels((40, 40, 50, 50, 50))
+    options = ("--class", "kind", "a", "b", "--max-levels", "100", "--given")
+    assert refusal("test", many_levels((41, 40, 50, 50, 50)), *options, "c,d,e") == (
+        "--given makes 250,000 strata of up to 1,640 cells, more than can be counted; give a smaller --max-levels, "
+        "fewer --given, or no --explain"
+    )
+    assert refusal("test", many_levels((41, 40, 50, 50, 50)), *options, "c,d", "--explain") == (
+        "--given and --explain makes 250,000 strata of up to 1,640 cells, more than can be counted; give a smaller "
+        "--max-levels, fewer --given, or no --explain"
+    )
+    assert [path.name for path in Path().iterdir()] == ["t.csv"]
+    assert call("test", table, *options, "c,d").code == 0
+
+
+def test_a_table_of_one_row_has_one_class() -> None:
+    Path("t.csv").write_text("a,b,kind\nx,y,k\n")
+    assert refusal("test", "t.csv", "--class", "kind", "a", "b", "--keep", "all") == (
+        "the class 'kind' is 'k' in all 1 row used; it must have at least two levels"
+    )
 
 
 USAGE = {

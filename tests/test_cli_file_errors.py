@@ -28,7 +28,7 @@ TESTS = {
     "dock lane --given site,site": "'site' is named twice; name each attribute once",
     "dock lane --given shft": "small.csv has no column 'shft'; did you mean shift?",
     "dock lane --given ,": "--given: ',' names nothing; give one or more names, or drop the option",
-    "--all --given dock,alarm,lane,shift,site": "small.csv has only 1 attribute to test beside the class and --given, "
+    "--all --given dock,alarm,lane,shift,site": "the table has only 1 attribute to test beside the class and --given, "
     "but a pair needs two; give a table with more, or fewer --given",
 }
 
@@ -147,7 +147,7 @@ OUTPUTS = [
     ),
     (
         ("draw", "kdb2.json", "-o", "none/f.svg"),
-        "cannot write none/f.svg (No such file or directory); choose another place with -o",
+        "cannot write none/f.svg: there is no folder none; make it, or give another -o",
     ),
     (
         ("export", "", "--structure", "tan", "-o", "f.json", "--to", "xml"),
@@ -252,6 +252,6 @@ def test_too_little_memory_is_said_in_one_sentence(monkeypatch: pytest.MonkeyPat
 
     monkeypatch.setattr("bnx.cli.learn.compare", exhausted)
     assert refusal("learn", small_table(), *LEARN) == (
-        "the memory of this machine is not enough for this table; give fewer --structures or fewer columns"
+        "the memory of this machine is not enough for this table; give fewer columns, --structures or --given"
     )
     assert list(Path().iterdir()) == []

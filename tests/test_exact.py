@@ -1,14 +1,17 @@
 """The exact test of 2 x 2 x K tables against enumeration, scipy, and simulation."""
 
+from fractions import Fraction
 from itertools import product
+from math import comb
 
 import numpy as np
 import pytest
+from enumerated import distribution, summed, tail, x2_of
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy.stats import fisher_exact, hypergeom
 
-from bnx.exact import exact_tail
+from bnx.kernels.exact import exact_tail
 
 CELL = st.integers(0, 7)
 
@@ -66,3 +69,31 @@ def test_many_sums_gathered_in_steps_stay_within_monte_carlo_error() -> None:
         drawn += scale * (first * float(n) - down * across) ** 2
     share = float(np.mean(drawn >= observed - 1e-9 * (1 + observed)))
     assert exact_tail(tables, 2, 2) == pytest.approx(share, abs=4 * np.sqrt(share * (1 - share) / draws))
+
+
+def test_equals_enumeration_in_fractions_up_to_ties() -> None:
+    # Equal margins make many sums of X2 alike; in fractions they are ties, whatever the order of the strata.
+    strata = [[[4, 2], [1, 5]], [[3, 3], [3, 3]], [[0, 3], [3, 0]], [[5, 1], [2, 4]]]
+    chances = summed([distribution(tuple(map(sum, one)), tuple(map(sum, zip(*one, strict=True)))) for one in strata])
+    truth = tail(chances, sum(map(x2_of, strata), Fraction(0)))
+    assert len(chances) < 4 * 5 * 7 * 7 / 3
+    for order in ([0, 1, 2, 3], [3, 2, 1, 0], [2, 0, 3, 1]):
+        tables = np.array(strata, dtype=np.int32)[order].reshape(4, 4)
+        assert exact_tail(tables, 2, 2) == pytest.approx(truth, rel=1e-9)
+        assert exact_tail(tables[:, [2, 3, 0, 1]], 2, 2) == pytest.approx(truth, rel=1e-9)
+
+
+def test_twelve_strata_equal_enumeration_in_fractions() -> None:
+    strata = [[[k % 3, 1 + k % 2], [2, k % 4]] for k in range(12)]
+    parts = [one for one in strata if min(map(sum, [*one, *zip(*one, strict=True)])) > 0]
+    margins = [(tuple(map(sum, one)), tuple(map(sum, zip(*one, strict=True)))) for one in parts]
+    truth = tail(summed([distribution(*each) for each in margins]), sum(map(x2_of, parts), Fraction(0)))
+    assert len(parts) > 9
+    assert 0.01 < truth < 0.99
+    assert exact_tail(np.array(strata, dtype=np.int32).reshape(12, 4), 2, 2) == pytest.approx(truth, rel=1e-9)
+
+
+def test_what_cannot_vary_has_p_one_and_the_most_extreme_table_its_probability() -> None:
+    assert exact_tail(np.array([[3, 4, 0, 0], [0, 0, 0, 0], [2, 0, 5, 0]], dtype=np.int32), 2, 2) == 1.0
+    assert exact_tail(np.array([[1, 0, 0, 1]], dtype=np.int32), 2, 2) == 1.0  # X2 is 2 whatever happens
+    assert exact_tail(np.array([[20, 0, 0, 20]], dtype=np.int32), 2, 2) == pytest.approx(2 / comb(40, 20), rel=1e-12)

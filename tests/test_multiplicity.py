@@ -10,7 +10,9 @@ from scipy.stats import false_discovery_control
 from statsmodels.stats.multitest import multipletests
 
 from bnx.errors import SettingError
+from bnx.kernels.exact import exact_tail
 from bnx.multiplicity import METHODS, adjusted, forest_threshold, threshold
+from bnx.multiplicity import testable as reachable  # pytest would take it for a test by its name
 
 LIBRARY_NAMES = {"bh": "fdr_bh", "by": "fdr_by", "holm": "holm"}
 p_lists = st.lists(st.floats(0, 1), max_size=40)
@@ -127,6 +129,82 @@ def test_forest_of_nothing_but_chance_is_empty_at_the_promised_rate() -> None:
 
 
 def test_unknown_method_is_refused() -> None:
-    for function in (lambda: adjusted(np.ones(1), "bonf"), lambda: threshold(np.ones(1), "bonf", 0.05)):
+    one = np.ones(1)
+    for function in (
+        lambda: adjusted(one, "bonf"),
+        lambda: threshold(one, "bonf", 0.05),
+        lambda: reachable(one, 0.05, "bonf"),
+    ):
         with pytest.raises(SettingError, match=r"^adjust is 'bonf'; it must be one of bh, holm, by, none$"):
             function()
+
+
+def reachable_by_definition(least: np.ndarray, alpha: float) -> np.ndarray:
+    """Try family sizes one after the other: the smallest K such that at most K tests could reach alpha / K."""
+    size = 1
+    while sum(p <= alpha / size for p in least) > size:
+        size += 1
+    return np.array([p <= alpha / size for p in least], dtype=bool)
+
+
+@pytest.mark.parametrize("method", ["bh", "by", "holm"])
+@given(st.lists(st.sampled_from([0.0, 1e-6, 0.001, 0.005, 0.01, 0.0125, 0.016, 0.025, 0.05, 0.2, 1.0, np.inf])))
+def test_reachable_tests_equal_their_definition(method: str, values: list[float]) -> None:
+    least = np.array(values)
+    np.testing.assert_array_equal(reachable(least, 0.05, method), reachable_by_definition(least, 0.05))
+
+
+def test_reachable_tests_equal_their_definition_in_large_families() -> None:
+    random = np.random.default_rng(6)
+    shares = []
+    for _ in range(300):
+        least = random.random(random.integers(1, 200)) ** random.integers(1, 12)
+        alpha = random.choice([0.01, 0.05, 0.3])
+        found = reachable(least, alpha, "holm")
+        np.testing.assert_array_equal(found, reachable_by_definition(least, alpha))
+        shares.append(found.mean())
+    assert min(shares) == 0
+    assert max(shares) == 1
+
+
+def test_without_adjustment_a_test_need_only_reach_alpha() -> None:
+    least = np.array([0.0, 0.05, 0.0500001, 1.0, np.inf])
+    assert reachable(least, 0.05, "none").tolist() == [True, True, False, False, False]
+    assert reachable(np.full(3, 0.04), 0.05, "none").all()
+    assert not reachable(np.full(3, 0.04), 0.05, "holm").any()
+
+
+def test_tests_that_can_always_be_rejected_stay() -> None:
+    assert reachable(np.zeros(100_000), 0.05, "bh").all()
+    assert reachable(np.append(np.zeros(100), np.full(900, 0.3)), 0.05, "bh").sum() == 100
+
+
+def test_the_family_error_stays_below_alpha_and_rejections_are_gained() -> None:
+    # 30 exact tests of 2 x 2 tables, margins drawn with each family, half of them too few records to matter.
+    random = np.random.default_rng(7)
+    families, alpha, tails = 3000, 0.2, {}
+
+    def tail_of(first: int, down: int, across: int, total: int) -> float:
+        table = (first, down - first, across - first, total - down - across + first)
+        if table not in tails:
+            tails[table] = exact_tail(np.array([table], dtype=np.int32), 2, 2)
+        return tails[table]
+
+    false = {"reachable": 0, "all": 0, "chosen by p": 0}
+    gained = lost = 0
+    for _ in range(families):
+        margins = [(n // 2, n // 2, n) for n in random.choice([4, 6, 8, 30, 60], 30)]
+        p = np.array([tail_of(int(random.hypergeometric(c, n - c, r)), r, c, n) for r, c, n in margins])
+        least = np.array([tail_of(r, r, c, n) for r, c, n in margins])
+        kept = np.where(reachable(least, alpha, "holm"), p, np.nan)
+        chosen, every = adjusted(kept, "holm") <= alpha, adjusted(p, "holm") <= alpha
+        false["reachable"] += chosen.any()
+        false["all"] += every.any()
+        seen = np.where(reachable(p, alpha, "holm"), p, np.nan)  # what must not be done
+        false["chosen by p"] += (adjusted(seen, "holm") <= alpha).any()
+        gained += np.count_nonzero(chosen & ~every)
+        lost += np.count_nonzero(every & ~chosen)
+    most = alpha + 3 * np.sqrt(alpha * (1 - alpha) / families)
+    assert false["reachable"] / families <= most < false["chosen by p"] / families
+    assert false["reachable"] > 1.2 * false["all"] > 0
+    assert lost == 0

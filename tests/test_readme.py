@@ -11,24 +11,25 @@ README = (Path(__file__).parents[1] / "README.md").read_text(encoding="utf-8")
 ROOT = Path(__file__).parents[1]
 
 
-def session() -> tuple[str, str]:
-    """The command of the shown session, and the screen below it."""
-    found = re.search(r"```console\n\$ bnx (learn .*)\n((?:.*\n)*?)```", README)
+def session(name: str) -> tuple[str, str]:
+    """The first shown call of a command, and the screen below it."""
+    found = re.search(rf"```console\n\$ bnx ({name} .*)\n((?:.*\n)*?)```", README)
     assert found is not None
     return found[1], found[2]
 
 
-def test_the_session_is_real(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    command, screen = session()
+@pytest.mark.parametrize(
+    ("name", "picture"), [("learn", "results/kdb2-tested.svg"), ("test", "residuals.svg")], ids=["learn", "test"]
+)
+def test_the_session_is_real(name: str, picture: str, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    command, screen = session(name)
     monkeypatch.chdir(tmp_path)
     (tmp_path / "datasets").symlink_to(ROOT / "datasets")
     found = call(*shlex.split(command))
     assert found.code == 0
     assert found.out.rstrip() == screen.rstrip()
-    picture = tmp_path / "results" / "kdb2-tested.svg"
-    assert picture.read_text(encoding="utf-8") == (ROOT / "docs" / "pictures" / picture.name).read_text(
-        encoding="utf-8"
-    )
+    shown = ROOT / "docs" / "pictures" / Path(picture).name
+    assert (tmp_path / picture).read_text(encoding="utf-8") == shown.read_text(encoding="utf-8")
 
 
 def test_every_command_named_is_one() -> None:

@@ -229,5 +229,5 @@ def test_a_file_is_written_whole_or_not_at_all(tmp_path: Path, monkeypatch: pyte
     assert (files(tmp_path), place.read_bytes()) == (["f.csv"], b"two")
     with pytest.raises(SettingError, match=r"is a folder, but a file is to be written; add a file name$"):
         write_bytes(str(tmp_path), b"", True)
-    with pytest.raises(DataError, match=r"^cannot write .* \(No such file or directory\); choose another place"):
+    with pytest.raises(DataError, match=r"^cannot write .*: there is no folder .*; make it, or give another -o$"):
         write_bytes(str(tmp_path / "none" / "f.csv"), b"", True)

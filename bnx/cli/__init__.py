@@ -84,7 +84,7 @@ def main() -> None:
     except typer.TyperException as error:
         _refuse(_usage(error), error.exit_code)
     except MemoryError:
-        _refuse("the memory of this machine is not enough for this table; give fewer --structures or fewer columns")
+        _refuse("the memory of this machine is not enough for this table; give fewer columns, --structures or --given")
     except OSError as error:
         if not error.filename:
             _let_go_of_output()

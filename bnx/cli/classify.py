@@ -9,7 +9,7 @@ import pandas as pd
 import typer
 
 from bnx.classifier import Classifier
-from bnx.cli.shared import Overwrite, Quiet, StructureFile, opened, say
+from bnx.cli.shared import Overwrite, Quiet, StructureFile, check_spared, opened, say
 from bnx.encoding import encode
 from bnx.errors import SettingError
 from bnx.files import check_free, write_bytes
@@ -40,8 +40,10 @@ def run(
     to make it.
     """
     _check_output(output, overwrite)
+    source = open_source(data)
+    check_spared(output, source)
     _, classifier = opened(structure)
-    result, unknown = _classified(classifier, open_source(data))
+    result, unknown = _classified(classifier, source)
     if output == "-":
         typer.echo(result.to_csv(index=False), nl=False)
     else:

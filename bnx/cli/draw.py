@@ -2,11 +2,11 @@
 
 import math
 from pathlib import Path
-from typing import Annotated, Literal, cast
+from typing import Annotated, cast
 
 import typer
 
-from bnx.cli.shared import Overwrite, StructureFile, opened, say
+from bnx.cli.shared import Overwrite, StructureFile, Theme, colours, opened, say
 from bnx.documents import picture_of
 from bnx.drawing import Form, render
 from bnx.errors import SettingError
@@ -19,14 +19,7 @@ __all__ = ["run"]
 def run(
     structure: StructureFile,
     output: Annotated[str, typer.Option("-o", "--output", metavar="FILE", help="Picture: .svg, .png, .pdf or .dot.")],
-    theme: Annotated[
-        str | None,
-        typer.Option(
-            metavar="light|dark",
-            help="Colours; not for .svg, which follows the reader's own setting.",
-            show_default="light",
-        ),
-    ] = None,
+    theme: Theme = None,
     least_bits: Annotated[
         float, typer.Option(metavar="BITS", help="Leave out edges below so many bits given the class.")
     ] = 0.0,
@@ -39,19 +32,9 @@ def run(
         raise SettingError(f"-o {output}: the ending says nothing that can be drawn; use .svg, .png, .pdf or .dot")
     if not (math.isfinite(least_bits) and least_bits >= 0):
         raise SettingError(f"--least-bits: {least_bits:g} cannot be used; give 0 or a number above")
-    colours = _colours(theme, form)
+    shades = colours(theme, f".{form}")
     check_free(output, overwrite)
     document, _ = opened(structure)
-    dot = dot_source(picture_of(document), colours, least_bits, everything)
+    dot = dot_source(picture_of(document), shades, least_bits, everything)
     write_bytes(output, dot.encode() if form == "dot" else render(dot, cast(Form, form)), overwrite)
     say(f"{output} written")
-
-
-def _colours(theme: str | None, form: str) -> Literal["light", "dark"]:
-    if theme not in (None, "light", "dark"):
-        raise SettingError(f"--theme: {theme!r} cannot be used; give light or dark")
-    if theme and form == "svg":
-        raise SettingError(
-            f"--theme {theme} cannot be used for an .svg, which follows the reader's own setting; drop it"
-        )
-    return "dark" if theme == "dark" else "light"

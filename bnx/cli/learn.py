@@ -22,6 +22,7 @@ from bnx.cli.shared import (
     Numeric,
     Overwrite,
     Quiet,
+    Seed,
     Test,
     progress_bar,
     recipe_of,
@@ -72,7 +73,7 @@ def run(
     holdout: Annotated[
         str | None, typer.Option(metavar="FILE", help="A further table that takes no part and is scored at the end.")
     ] = None,
-    seed: Annotated[int, typer.Option(metavar="N", help="Seed of folds and halves.")] = Recipe.seed,
+    seed: Seed = Recipe.seed,
     bins: Bins = Recipe.bins,
     numeric: Numeric = None,
     categorical: Categorical = None,

@@ -5,7 +5,8 @@ import sys
 from collections.abc import Callable, Collection, Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import fields
-from typing import Annotated, Any
+from pathlib import Path
+from typing import Annotated, Any, Literal
 
 import typer
 from rich.console import Console
@@ -39,8 +40,12 @@ __all__ = [
     "Numeric",
     "Overwrite",
     "Quiet",
+    "Seed",
     "StructureFile",
     "Test",
+    "Theme",
+    "check_spared",
+    "colours",
     "listed",
     "opened",
     "progress_bar",
@@ -85,12 +90,47 @@ Alpha = Annotated[float, typer.Option("--alpha", metavar="P", help="Level of the
 Negligible = Annotated[
     float, typer.Option("--negligible", metavar="BITS", help="Bits given the class that do not matter.")
 ]
+Seed = Annotated[int, typer.Option("--seed", metavar="N", help="Seed of folds, halves and random tables.")]
 Jobs = Annotated[
     int, typer.Option("--jobs", metavar="N", help="Threads; 0 for one per processor. Results do not depend on it.")
 ]
 Quiet = Annotated[bool, typer.Option("--quiet", help="No progress and no notes on standard error.")]
 JsonOut = Annotated[bool, typer.Option("--json", help="Print JSON instead of a table.")]
+Theme = Annotated[
+    str | None,
+    typer.Option(
+        "--theme",
+        metavar="light|dark",
+        help="Colours; not for .svg, which follows the reader's own setting.",
+        show_default="light",
+    ),
+]
 Overwrite = Annotated[bool, typer.Option("--overwrite", help="Replace what an earlier run wrote.")]
+
+
+def check_spared(output: str, source: Source) -> None:
+    """Refuse to write over the table itself, whatever --overwrite says.
+
+    Raises:
+        SettingError: the output is a file of the table.
+    """
+    if Path(output).resolve() in {path.resolve() for path in source.files}:
+        raise SettingError(f"-o {output} is the table that is read; give another file")
+
+
+def colours(theme: str | None, ending: str) -> Literal["light", "dark"]:
+    """Take the colours of a picture.
+
+    Raises:
+        SettingError: there is no such theme, or the file follows its reader's.
+    """
+    if theme not in (None, "light", "dark"):
+        raise SettingError(f"--theme: {theme!r} cannot be used; give light or dark")
+    if theme and ending == ".svg":
+        raise SettingError(
+            f"--theme {theme} cannot be used for an .svg, which follows the reader's own setting; drop it"
+        )
+    return "dark" if theme == "dark" else "light"
 
 
 def listed(option: str, values: Sequence[str] | None, known: Collection[str] = ()) -> tuple[str, ...]:

@@ -1,6 +1,10 @@
 """bnx test: conditional independence of chosen pairs."""
 
+import csv
+import io
 import json
+from collections.abc import Sequence
+from pathlib import Path
 from typing import Annotated
 
 import typer
@@ -20,16 +24,29 @@ from bnx.cli.shared import (
     Missing,
     Negligible,
     Numeric,
+    Overwrite,
     Quiet,
+    Seed,
     Test,
+    Theme,
+    check_spared,
+    colours,
     listed,
+    progress_bar,
     recipe_of,
     say,
     threads,
 )
-from bnx.pair_tests import run_pair_tests
-from bnx.reading import open_source
+from bnx.errors import SettingError
+from bnx.files import check_free, write_bytes
+from bnx.level_order import parse_ordered
+from bnx.pair_table import CLOSE, Asked
+from bnx.pair_tests import PairTests, run_pair_tests
+from bnx.plain import finite
+from bnx.reading import Source, open_source
 from bnx.recipe import Recipe
+from bnx.tested_text import written
+from bnx.verdicts import PAIR_KEYS
 
 __all__ = ["run"]
 
@@ -42,7 +59,32 @@ def run(
     given: Annotated[
         list[str] | None, typer.Option(metavar="Z,...", help="Attributes to take as given, besides the class.")
     ] = None,
-    every: Annotated[bool, typer.Option("--all", help="Test every pair of attributes.")] = False,
+    every: Annotated[
+        bool, typer.Option("--all", help="Test every pair of attributes; look closely at those rejected.")
+    ] = False,
+    explain: Annotated[
+        bool, typer.Option("--explain", help="Try every other attribute as given too: which makes the rest vanish?")
+    ] = False,
+    ordered: Annotated[
+        list[str] | None,
+        typer.Option(metavar="COL", help="Levels have an order: COL if they are numbers, else 'COL=low<middle<high'."),
+    ] = None,
+    strata: Annotated[
+        bool, typer.Option("--strata", help="Show every stratum: observed, expected, adjusted residual.")
+    ] = False,
+    close: Annotated[
+        int | None,
+        typer.Option(
+            metavar="N", help="How many of the rejected pairs --all looks at closely.", show_default=str(CLOSE)
+        ),
+    ] = None,
+    plot: Annotated[
+        str | None, typer.Option("--plot", metavar="FILE", help="Picture of the residuals: .svg, .png or .pdf.")
+    ] = None,
+    output: Annotated[
+        str | None, typer.Option("-o", "--output", metavar="FILE.csv", help="Write all tests as a CSV file too.")
+    ] = None,
+    theme: Theme = None,
     test: Test = Recipe.test,
     adjust: Adjust = Recipe.adjust,
     alpha: Alpha = Recipe.alpha,
@@ -54,7 +96,9 @@ def run(
     keep: Keep = None,
     missing: Missing = Recipe.missing,
     max_levels: MaxLevels = Recipe.max_levels,
+    seed: Seed = Recipe.seed,
     jobs: Jobs = 0,
+    overwrite: Overwrite = False,
     json_out: JsonOut = False,
     quiet: Quiet = False,
 ) -> None:
@@ -64,8 +108,62 @@ def run(
     """
     number = threads(jobs)
     source = open_source(data)
-    conditions = listed("given", given, source.columns)
-    found = run_pair_tests(source, recipe_of(ctx, source), attributes or (), conditions, every, number)
-    typer.echo(json.dumps(found.to_dict(), ensure_ascii=False, allow_nan=False, indent=1) if json_out else str(found))
-    for note in found.warnings:
-        say(f"note: {note}", quiet)
+    _check_outputs(source, output, plot, theme, overwrite)
+    if plot and close == 0:
+        raise SettingError("--plot draws what is looked at closely, and --close 0 leaves none; drop one of them")
+    names = source.columns
+    orders = parse_ordered([one for value in ordered or () for one in _orders(value, names)], names)
+    asked = Asked(tuple(attributes or ()), listed("given", given, names), every, orders, explain, close)
+    with progress_bar(quiet) as tell:
+        found = run_pair_tests(source, recipe_of(ctx, source), asked, number, tell)
+    if json_out:
+        typer.echo(json.dumps(finite(found.to_dict(strata)), ensure_ascii=False, allow_nan=False, indent=1))
+    else:
+        typer.echo(written(found, strata))
+    notes = list(found.warnings)
+    if output:
+        write_bytes(output, _csv(found).encode(), overwrite)
+        notes.append(f"{output} written")
+    if plot and found.details:
+        from bnx.tested_picture import draw_tests  # noqa: PLC0415  loads matplotlib, which takes longer than most tests
+
+        draw_tests(found, plot, colours(theme, Path(plot).suffix.lower()), overwrite)
+        notes.append(f"{plot} written")
+    elif plot:
+        notes.append(f"no pair was rejected, so {plot} is not drawn; name two attributes to draw them")
+    for note in notes:
+        say(f"note: {note}" if note in found.warnings else note, quiet)
+
+
+def _check_outputs(source: Source, output: str | None, plot: str | None, theme: str | None, overwrite: bool) -> None:
+    """Refuse files that cannot be written, before anything is computed.
+
+    Raises:
+        SettingError, DataError: a file is taken, or its ending or folder is of no use.
+    """
+    if output is not None:
+        check_free(output, overwrite)
+        check_spared(output, source)
+        if Path(output).suffix.lower() != ".csv":
+            raise SettingError(f"-o {output}: the tests are written as CSV; give a name that ends in .csv")
+    if theme and plot is None:
+        raise SettingError(f"--theme {theme} says how to draw, but no picture is asked for; give --plot, or drop it")
+    if plot is not None:
+        from bnx.tested_picture import check_picture  # noqa: PLC0415  as above
+
+        colours(theme, Path(plot).suffix.lower())
+        check_picture(Path(plot), overwrite)
+
+
+def _orders(value: str, names: Sequence[str]) -> Sequence[str]:
+    """Take an order of levels whole, since levels may hold commas; split what only names columns."""
+    return (value,) if "<" in value else listed("ordered", [value], names)
+
+
+def _csv(tests: PairTests) -> str:
+    text = io.StringIO()
+    writer = csv.DictWriter(text, (*PAIR_KEYS, "given"), lineterminator="\n")
+    writer.writeheader()
+    given = ", ".join((tests.target, *tests.asked.given))
+    writer.writerows({**result.to_dict(), "given": given} for result in tests.results)
+    return text.getvalue()

@@ -7,6 +7,8 @@ column is not *informative*: its records count, but it adds nothing to a statist
 import numpy as np
 from numba import njit
 
+from bnx.kernels.skewness import third_moment
+
 __all__ = [
     "BELOW_5",
     "CELLS",
@@ -22,7 +24,9 @@ __all__ = [
     "X2",
     "X2_CEILING",
     "X2_MEAN",
+    "X2_THIRD",
     "X2_VARIANCE",
+    "one_table",
     "table_statistics",
 ]
 
@@ -33,14 +37,15 @@ X2 = 3  # Pearson's statistic, without a continuity correction
 DF = 4  # degrees of freedom
 X2_MEAN = 5  # exact mean of X2 when every stratum keeps its margins
 X2_VARIANCE = 6  # exact variance of X2 when every stratum keeps its margins
-X2_CEILING = 7  # sum of records x (fewer used levels - 1): no table of these sizes has a larger X2
-MIN_EXPECTED = 8  # smallest expected count of the informative strata, NaN without one
-BELOW_5 = 9  # expected counts below 5 in the informative strata
-CELLS = 10  # expected counts in the informative strata
-STRATA = 11  # strata that hold a record
-INFORMATIVE = 12  # strata with at least two used rows and two used columns
-LEVELS = 13  # most used rows or columns in an informative stratum
-COLUMNS = 14
+X2_THIRD = 7  # exact third central moment of X2 when every stratum keeps its margins
+X2_CEILING = 8  # sum of records x (fewer used levels - 1): no table of these sizes has a larger X2
+MIN_EXPECTED = 9  # smallest expected count of the informative strata, NaN without one
+BELOW_5 = 10  # expected counts below 5 in the informative strata
+CELLS = 11  # expected counts in the informative strata
+STRATA = 12  # strata that hold a record
+INFORMATIVE = 13  # strata with at least two used rows and two used columns
+LEVELS = 14  # most used rows or columns in an informative stratum
+COLUMNS = 15
 
 _ROUNDING = 1e-13
 
@@ -60,7 +65,8 @@ def table_statistics(counts: np.ndarray, offsets: np.ndarray, heights: np.ndarra
     Returns:
         float64 (P, COLUMNS); the constants of this module name its columns.
 
-    Source: Kullback 1959 (G is twice the information); Haldane 1940 and Dawson 1954 (mean and variance of X2).
+    Source: Kullback 1959 (G is twice the information); Haldane 1940 and Dawson 1954 (mean and variance of X2); Mielke
+        & Berry 1985 (its third moment).
     """
     tables = offsets.size
     result = np.zeros((tables, COLUMNS))
@@ -79,6 +85,12 @@ def table_statistics(counts: np.ndarray, offsets: np.ndarray, heights: np.ndarra
         if row[INFORMATIVE] == 0.0:
             row[MIN_EXPECTED] = np.nan
     return result
+
+
+def one_table(counts: np.ndarray, height: int, width: int) -> np.ndarray:
+    """Compute the statistics (COLUMNS,) of one table, counts int32 (S, height * width)."""
+    row: np.ndarray = table_statistics(counts, np.zeros(1, np.int64), np.array([height]), np.array([width]))[0]
+    return row
 
 
 @njit(nogil=True, cache=True, error_model="numpy")
@@ -123,6 +135,7 @@ def _add_stratum(
     row[DF] += (r - 1) * (c - 1)
     row[X2_MEAN] += total / (total - 1.0) * (r - 1) * (c - 1)
     row[X2_VARIANCE] += _variance(down, height, r, across, width, c, float(total))
+    row[X2_THIRD] += third_moment(down, height, across, width, float(total))
     row[X2_CEILING] += total * (min(r, c) - 1.0)
     row[CELLS] += r * c
     row[INFORMATIVE] += 1.0
