@@ -79,7 +79,8 @@ def homogeneity(counts: np.ndarray, groups: Groups | None = None, *, draws: int 
     shared, apart = fit_homogeneous(counts), _fitted_apart(counts, of_stratum)
     cells = shared.expected[shared.free]
     df = None if shared.df is None or apart.df is None else shared.df - apart.df
-    usable = shared.converged and apart.converged and cells.size > 0 and df != 0
+    fitted = df is None or (shared.converged and apart.converged)  # a rough fit costs a walk power, never size
+    usable = fitted and cells.size > 0 and df != 0
     x2, g = _statistics(apart.expected[shared.free], cells) if usable else (np.nan, np.nan)
     tail_p = float(chdtrc(df, x2)) if usable and df is not None else np.nan
     carried = usable and df is not None and _cochran(cells)

@@ -9,7 +9,7 @@ from bnx.domains import Domain
 from bnx.independence import Statistics
 from bnx.kernels.contingency import one_table
 from bnx.recipe import Recipe
-from bnx.refining import Visit, pooled, reported, with_chance
+from bnx.refining import Visit, pooled, reported, visit_arrays, with_chance
 from bnx.text import count_of, quoted
 from bnx.verdicts import Judgement, TestResult, judge, outcomes, results
 
@@ -80,7 +80,8 @@ def _without_blanks(visit: Visit, pairs: Sequence[tuple[Domain, Domain]], reject
         def use(counts: np.ndarray, height: int, width: int, cut: tuple[bool, bool] = (first, second)) -> float:
             left = counts.reshape(-1, height, width)[:, : height - cut[0], : width - cut[1]]
             flat = np.ascontiguousarray(left).reshape(len(left), -1)
-            return float(Statistics.of(one_table(flat, *left.shape[1:])[None]).bits_corrected[0])
+            stats = Statistics.of(one_table(flat, *left.shape[1:])[None])
+            return float(with_chance(visit_arrays([flat], *left.shape[1:]), stats).bits_corrected[0])
 
         result[chosen] = visit(chosen, use) if chosen else []
     return result

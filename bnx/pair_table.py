@@ -130,12 +130,14 @@ class PairTable:
         strata = len(self.coded.table.schema.target) * math.prod(sizes[number] for number in self.given)
         largest = sorted((sizes[number] for number in self.chosen), reverse=True)[:2]
         if self.asked.explain:
-            strata *= max((size for number, size in enumerate(sizes) if number not in self.given), default=1)
+            tested = self.chosen if len(self.chosen) == 2 else ()
+            others = [size for number, size in enumerate(sizes) if number not in (*self.given, *tested)]
+            strata *= max(others, default=1)
         if strata * math.prod(largest) > _MOST_CELLS:
             what = " and ".join([*(["--given"] if self.given else []), *(["--explain"] if self.asked.explain else [])])
             raise SettingError(
-                f"{what or 'the table'} makes {strata:,} strata of up to {math.prod(largest):,} cells, more than can "
-                "be counted; give a smaller --max-levels, fewer --given, or no --explain"
+                f"{what or 'the table'} would make {strata:,} strata of up to {math.prod(largest):,} cells, more than "
+                "can be counted; give a smaller --max-levels, fewer --given, or no --explain"
             )
 
     def without_cuts(self, number: int) -> bool:

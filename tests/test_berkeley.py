@@ -9,7 +9,7 @@ from scipy.stats import chi2_contingency
 from statsmodels.stats.contingency_tables import StratifiedTable
 
 from bnx.domains import Domain
-from bnx.pair_details import Pair, PairDetail, look_closely
+from bnx.pair_details import Pair, PairDetail, compare_classes, look_closely
 from tests.published import BERKELEY
 
 PAIR = Pair(
@@ -21,9 +21,14 @@ PAIR = Pair(
 )
 
 
+def looked_at(counts: np.ndarray) -> PairDetail:
+    """Look at one pair, the only one."""
+    return compare_classes([look_closely(PAIR, counts, np.arange(6), "auto", 0.05, 1)], "bh", 0.05)[0]
+
+
 @pytest.fixture(scope="module")
 def berkeley() -> PairDetail:
-    return look_closely(PAIR, np.asarray(BERKELEY, np.int32), np.arange(6), "auto", 0.05, 1)
+    return looked_at(np.asarray(BERKELEY, np.int32))
 
 
 def test_every_department_speaks_for_itself(berkeley: PairDetail) -> None:
@@ -50,6 +55,6 @@ def test_the_odds_ratio_is_that_of_a_second_library(berkeley: PairDetail) -> Non
 
 def test_no_other_class_is_named_when_all_are_alike() -> None:
     alike = np.tile(np.array([[[60, 20], [20, 60]]], np.int32), (6, 1, 1))
-    found = look_closely(PAIR, alike, np.arange(6), "auto", 0.05, 1)
+    found = looked_at(alike)
     assert not found.differs
     assert found.only_in == ""

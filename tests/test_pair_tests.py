@@ -255,3 +255,16 @@ def test_the_class_and_columns_left_out_are_no_attributes() -> None:
         probed(("route", "arrival"))
     with pytest.raises(DataError, match=r"^'shipment_id' is left out of the table: a different value in every row; "):
         probed(("route", "shipment_id"))
+
+
+def test_bits_without_blanks_are_corrected_as_the_bits_they_are_compared_with() -> None:
+    """Forty levels each, six blanks among 300: half the degrees of freedom would take off more than there is."""
+    random = np.random.default_rng(3)
+    a = random.integers(0, 40, 300)
+    b = np.where(random.random(300) < 0.5, a, random.integers(0, 40, 300))
+    frame = pd.DataFrame({"a": words(a, "a"), "b": words(b, "b"), "k": words(random.integers(0, 2, 300), "k")})
+    frame.loc[:5, "a"] = ""
+    found = frame_probed(frame, "k", ("a", "b"))
+    kept = tables_of(frame[frame["a"] != ""], "a", "b", ("k",))
+    assert found.results[0].bits_without_blanks == pytest.approx(corrected_bits(kept), rel=1e-6)
+    assert not any("no cell is blank" in note for note in found.warnings)
