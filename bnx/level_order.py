@@ -62,10 +62,9 @@ def _places(name: str, levels: Sequence[str], order: Sequence[str]) -> list[int]
         return [order.index(level) for level in levels]
     numbers = [_number(level) for level in levels]
     if not all(map(math.isfinite, numbers)):
-        example = "<".join(levels[:3])
         raise DataError(
-            f"--ordered {name}: its levels are no numbers, so their order must be given; write it as "
-            f"--ordered '{name}={example}{'<...' if len(levels) > 3 else ''}', from low to high"
+            f"--ordered {name}: its levels ({quoted(levels)}) are no numbers; give their order, from low to high, as "
+            f"in --ordered '{name}=LOWEST<...<HIGHEST', with quotation marks"
         )
     return [sorted(set(numbers)).index(number) for number in numbers]
 

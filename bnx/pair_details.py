@@ -18,8 +18,9 @@ from bnx.effects import (
 )
 from bnx.homogeneity import Homogeneity, homogeneity
 from bnx.independence import METHODS, Statistics
+from bnx.intervals import detectable_bits
 from bnx.kernels.contingency import one_table
-from bnx.multiplicity import adjusted
+from bnx.multiplicity import adjusted, threshold
 from bnx.ordered import OrderedTest, generalised_cmh
 from bnx.refining import reported, visit_arrays, with_chance
 
@@ -75,7 +76,9 @@ class Stratum:
 
 @dataclass(frozen=True)
 class ClassPart:
-    """The dependence within one class, over its strata; ``adjusted_p`` by Holm's steps over the classes."""
+    """The dependence within one class, over its strata; ``adjusted_p`` by Holm's steps over the classes;
+    ``detectable_bits`` with power .80 at the p that these come to.
+    """
 
     level: str
     rows: int
@@ -87,6 +90,7 @@ class ClassPart:
     adjusted_p: float
     method: str
     cramers_v: float
+    detectable_bits: float
 
 
 @dataclass(frozen=True)
@@ -218,6 +222,8 @@ def _class_parts(
     stats = with_chance(visit, stats)
     tested = reported(visit, stats, test, "holm", alpha, seed).tested
     corrected = adjusted(tested.p, "holm")
+    at = threshold(tested.p, "holm", alpha)
+    detectable = detectable_bits(at, np.where(stats.varies, stats.df, 0.0), stats.rows)
     return tuple(
         ClassPart(
             level,
@@ -230,6 +236,7 @@ def _class_parts(
             float(corrected[c]),
             METHODS[tested.method[c]],
             float(stats.cramers_v[c]),
+            float(detectable[c]),
         )
         for c, level in enumerate(levels)
     )

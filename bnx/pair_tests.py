@@ -18,7 +18,7 @@ from bnx.pair_judging import JudgedPairs, judge_pairs
 from bnx.pair_table import CLOSE, Asked, PairTable, bins_of
 from bnx.reading import Source
 from bnx.recipe import Recipe
-from bnx.refining import visit_families
+from bnx.refining import visit_families, with_chance
 from bnx.tables import LeftOut
 from bnx.text import count_of, quoted
 from bnx.verdicts import TestResult
@@ -36,7 +36,8 @@ class PairTests:
     """Tested pairs, most bits first, all given the class and ``asked.given``.
 
     ``details``: of pairs looked at closely, by (a, b): those named, or with --all the first of those rejected;
-    ``explained``: of those among them that are rejected, if asked for.
+    ``explained``: of those among them that are rejected, if asked for; ``given_class``: bits less chance given the
+    class alone, if more is given.
     """
 
     target: str
@@ -44,6 +45,7 @@ class PairTests:
     results: tuple[TestResult, ...]
     details: Mapping[tuple[str, str], PairDetail]
     explained: Mapping[tuple[str, str], tuple[Explanation, ...]]
+    given_class: Mapping[tuple[str, str], float]
     rows: int
     recipe: Recipe
     left_out: tuple[LeftOut, ...]
@@ -67,6 +69,8 @@ class PairTests:
         entry: dict[str, Any] = dict(result.to_dict())
         if ends in self.details:
             entry |= self.details[ends].to_dict(with_strata)
+        if ends in self.given_class:
+            entry["bits_given_class_corrected"] = self.given_class[ends]
         if ends in self.explained:
             entry["explained_by"] = [one.to_dict() for one in self.explained[ends]]
         return entry
@@ -102,6 +106,7 @@ def run_pair_tests(
         tuple(judged.results([names[k] for k in order], order)),
         _details(table, [pairs[k] for k in close], recipe),
         _explained(table, [pairs[k] for k in close if judged.judgement.rejected[k]], recipe) if asked.explain else {},
+        dict(zip(names, _given_class(table, pairs), strict=True)) if asked.given else {},
         len(coded.table.target),
         replace(recipe, bins=bins_of(recipe)),
         coded.left_out,
@@ -120,6 +125,17 @@ def _statistics(table: PairTable, requests: Sequence[tuple[int, tuple[int, ...]]
     found = for_each_family(table.engine, [table.training], requests, use)
     both = np.array([found[request] for request in requests])
     return Statistics.of(both[:, 0]), Statistics.of(both[:, 1])
+
+
+def _given_class(table: PairTable, pairs: Sequence[tuple[int, int]]) -> list[float]:
+    """Measure pairs given the class alone: bits less what chance alone would show."""
+    requests = [(0, pair) for pair in pairs]
+    rows = test_statistics(table.engine, [table.training], requests)
+    stats = Statistics.of(np.array([rows[request] for request in requests]))
+    found: list[float] = with_chance(
+        visit_families(table.engine, [table.training], requests), stats
+    ).bits_corrected.tolist()
+    return found
 
 
 def _details(table: PairTable, pairs: Sequence[tuple[int, int]], recipe: Recipe) -> dict[tuple[str, str], PairDetail]:
@@ -180,6 +196,8 @@ def _notes(table: PairTable, judged: JudgedPairs, close: int, rejected: int) -> 
             f"{close:,} of {count_of(rejected, 'rejected pair')} looked at closely, those with most bits; name others, "
             "or raise --close"
         )
+    if asked.ordered:
+        notes.append("trends over ordered levels stand beside the verdicts, take no part in them, and are not adjusted")
     if asked.explain and not rejected:
         notes.append("--explain: no pair is rejected, so there is nothing to explain")
     return notes

@@ -16,7 +16,7 @@ __all__ = ["headline", "strata_text", "written"]
 _WIDTH = 100
 _ORDER = [VERDICTS[code] for code in (2, 1, 0, 3)]
 _EXPLANATIONS = 5  # shown of every pair; --json holds all
-_LEVEL = 14
+_LEVEL = 20
 _FEW = 0.00005  # bits that four decimals would show as none
 
 
@@ -91,9 +91,9 @@ def _notes(tests: PairTests) -> str:
     at = next((one.detectable_at for one in tests.results if not np.isnan(one.detectable_at)), None)
     level = "" if at is None else f" detectable: what a test at p <= {at:.2g} finds with power .80."
     notes = (
-        f"bits: shared per record, less what chance alone would show; marginal: without the class.{level} Not enough "
-        "data is not independence. ~: the sample is too sparse for more than a rough figure, and for bounds of the "
-        "bits, so it is never called negligible."
+        f"bits: shared per record, less what chance alone would give; marginal: given nothing.{level} Negligible: at "
+        f"most {tests.recipe.negligible:g} bits, at 95 %. Not enough data is not independence. ~: the sample is too "
+        "sparse for more than a rough figure, and for bounds of the bits, so it is never called negligible."
     )
     informative = [result.strata_informative for result in tests.results]
     low, high, strata = min(informative), max(informative), max(result.strata for result in tests.results)
@@ -126,16 +126,18 @@ def _sentence(text: str) -> list[str]:
 
 
 def _shared(result: TestResult, tests: PairTests) -> str:
-    conditions, them = ", ".join((tests.target, *tests.asked.given)), "them" if tests.asked.given else "it"
+    conditions = ", ".join((tests.target, *tests.asked.given))
     neither = not result.adjusted_p <= tests.recipe.alpha and not result.marginal_adjusted_p <= tests.recipe.alpha
     interval = "" if np.isnan(result.bits_low) else f" (95 % {_bits(result.bits_low)} to {_bits(result.bits_high)})"
+    if result.verdict == VERDICTS[0]:
+        interval = f" (95 % at most {_bits(result.bits_at_most)})"
     share = result.bits_corrected / result.marginal_bits_corrected if result.marginal_bits_corrected > 0 else np.nan
     meaning = {
-        "explained": f"{conditions} explains it",
-        "remains": f"{share:.0%} of it is left given {conditions}",
-        "strengthened": f"it is stronger given {conditions}",
-        "appears only given the class": f"it appears only given {conditions}",
-        "not enough data": "rejected neither with nor without, so there is nothing to explain"
+        "explained": f"explained by {conditions}",
+        "remains": f"{min(1.0, share):.0%} of it is left",
+        "strengthened": "it is stronger there",
+        "appears only given the class": "it appears only there",
+        "not enough data": "not rejected either way, so there is nothing to explain"
         if neither
         else f"not enough data to say what {conditions} explains",
     }
@@ -145,9 +147,11 @@ def _shared(result: TestResult, tests: PairTests) -> str:
         else f" Where neither cell is blank: {_bits(result.bits_without_blanks)} bits."
     )
     alone, given = _bits(result.marginal_bits_corrected), _bits(result.bits_corrected)
+    known = tests.given_class.get((result.a, result.b))
+    between = "" if known is None else f"{_bits(known)} given {tests.target} alone, "
     return (
-        f"{alone} bits without {conditions}, {given}{interval} given {them}, both less what chance alone would show: "
-        f"{meaning[result.outcome]}.{blanks}"
+        f"{alone} bits given nothing, {between}{given}{interval} given {conditions}, less what chance alone would "
+        f"give: {meaning[result.outcome]}.{blanks}"
     )
 
 
@@ -162,8 +166,8 @@ def _pattern(detail: PairDetail, target: str) -> str:
     test = f"X2 {same.x2:.2f}, {df}p {at_most}{of_p(same.p)}, {same.method}{several}"
     if detail.only_in:
         return (
-            f"Only in {target} = {detail.only_in} is it rejected on its own, and the patterns differ ({test}): so "
-            "looks a dependence that lives in one class, where naive Bayes takes the two for independent."
+            f"Independence is rejected only in {target} = {detail.only_in}, and the patterns differ ({test}): a "
+            "dependence that lives in one class looks so, and naive Bayes takes the two for independent there too."
         )
     if detail.differs:
         return f"The pattern differs between levels of {target} ({test})."
@@ -173,7 +177,7 @@ def _pattern(detail: PairDetail, target: str) -> str:
 def _by_class(parts: Sequence[ClassPart], target: str) -> str:
     rows = [
         (
-            f"  {target} = {part.level}",
+            f"  {part.level}",
             f"{part.rows:,}",
             _bits(part.bits_corrected) if part.df else "",
             fixed(part.x2, 2),
@@ -181,12 +185,15 @@ def _by_class(parts: Sequence[ClassPart], target: str) -> str:
             _p(part.p_value, part.method),
             _p(part.adjusted_p, part.method),
             "" if np.isnan(part.cramers_v) else fixed(part.cramers_v),
+            "" if np.isnan(part.detectable_bits) else _bits(part.detectable_bits),
             part.method,
         )
         for part in parts
     ]
     return aligned(
-        ("  by class", "rows", "bits", "X2", "df", "p", "adjusted", "Cramer's V", "method"), rows, most=_WIDTH
+        (f"  {target}", "rows", "bits", "X2", "df", "p", "adjusted", "Cramer's V", "detectable", "method"),
+        rows,
+        most=_WIDTH,
     )
 
 
@@ -216,7 +223,7 @@ def _trend(detail: PairDetail) -> str:
         "mean scores": f"Mean {scored} by level of {other}",
         "general": "If all strata share one pattern",
     }[one.kind]
-    way = "" if np.isnan(one.correlation) else f", correlation {one.correlation:+.3f}"
+    way = "" if np.isnan(one.correlation) else f", correlation within strata {one.correlation:+.3f}"
     return f"{kind} (generalised CMH): {one.statistic:.2f}, df {one.df}, p {of_p(one.p)}{way}."
 
 

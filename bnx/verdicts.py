@@ -25,7 +25,7 @@ class Judgement:
     """What the tests of P pairs say, judged as one family; arrays (P,).
 
     ``method`` indexes METHODS, ``verdict`` indexes VERDICTS, ``at`` is the p-value the family was judged by,
-    ``low`` and ``high`` bound the bits at 95 %. NaN where there is nothing to say.
+    ``low`` and ``high`` bound the bits at 95 %, ``upper`` from above alone. NaN where there is nothing to say.
     """
 
     statistic: np.ndarray
@@ -37,6 +37,7 @@ class Judgement:
     rejected: np.ndarray
     low: np.ndarray
     high: np.ndarray
+    upper: np.ndarray
     detectable: np.ndarray
     verdict: np.ndarray
 
@@ -58,12 +59,13 @@ def judge(
     at = threshold(tested.p, adjust, alpha)
     rejected = corrected <= alpha
     low, high = bits_interval(stats)
-    small = bits_upper(stats) < negligible
+    upper = bits_upper(stats)
+    small = upper < negligible
     verdict = np.select(
         [small & ~rejected, small & rejected, rejected], [_NEGLIGIBLE, _DETECTED_NEGLIGIBLE, _DEPENDENT], _UNKNOWN
     )
     detectable = detectable_bits(at, np.where(stats.varies, stats.df, 0.0), stats.rows)
-    return Judgement(*tested, corrected, at, rejected, low, high, detectable, verdict.astype(np.int8))
+    return Judgement(*tested, corrected, at, rejected, low, high, upper, detectable, verdict.astype(np.int8))
 
 
 def outcomes(stats: Statistics, given: Judgement, marginal: Statistics, without: Judgement) -> np.ndarray:
@@ -94,6 +96,7 @@ class TestResult:
     bits_corrected: float
     bits_low: float
     bits_high: float
+    bits_at_most: float
     marginal_bits: float
     marginal_bits_corrected: float
     marginal_p_value: float
@@ -139,7 +142,7 @@ def results(
     """Write P judged pairs as one result each; ``without``: judged without the class."""
     method, verdict, explained = (np.array(words, dtype=object) for words in (METHODS, VERDICTS, OUTCOMES))
     at = np.full(stats.rows.shape, judgement.at)
-    shared = (stats.bits, stats.bits_corrected, judgement.low, judgement.high)
+    shared = (stats.bits, stats.bits_corrected, judgement.low, judgement.high, judgement.upper)
     whole = (marginal.bits, marginal.bits_corrected, without.p, without.adjusted)
     apart = (marginal.bits_corrected - stats.bits_corrected, without_blanks, explained[outcome], stats.x2, stats.g)
     tested = (judgement.statistic, stats.df.astype(np.int64), judgement.p, judgement.adjusted)

@@ -205,8 +205,8 @@ PAIRS = {
     "dock alarm --ordered dock=few<smoe<many": "--ordered dock: 'smoe' is not a level of it; did you mean some?",
     "dock alarm --ordered dock=few<many<few": "--ordered dock=few<many<few: 'few<many<few' is no order of levels; "
     "write dock=low<middle<high",
-    "dock alarm --ordered dock": "--ordered dock: its levels are no numbers, so their order must be given; write it as "
-    "--ordered 'dock=few<many<some', from low to high",
+    "dock alarm --ordered dock": "--ordered dock: its levels (few, many, some) are no numbers; give their order, "
+    "from low to high, as in --ordered 'dock=LOWEST<...<HIGHEST', with quotation marks",
     "dock alarm --ordered dock=few<some<many --ordered dock": "--ordered names 'dock' twice; name it once",
     "dock alarm --plot p.bmp": "--plot p.bmp: the ending says nothing that can be drawn; use .svg, .png or .pdf",
     "dock alarm --plot none/p.svg": "cannot write none/p.svg: there is no folder none; make it, or give another --plot",
@@ -271,12 +271,12 @@ def test_strata_too_many_to_count_are_refused_before_anything_is_counted() -> No
     table = many_levels((40, 40, 50, 50, 50))
     options = ("--class", "kind", "a", "b", "--max-levels", "100", "--given")
     assert refusal("test", many_levels((41, 40, 50, 50, 50)), *options, "c,d,e") == (
-        "--given makes 250,000 strata of up to 1,640 cells, more than can be counted; give a smaller --max-levels, "
-        "fewer --given, or no --explain"
+        "--given would make 250,000 strata of up to 1,640 cells, more than can be counted; give a smaller "
+        "--max-levels, fewer --given, or no --explain"
     )
     assert refusal("test", many_levels((41, 40, 50, 50, 50)), *options, "c,d", "--explain") == (
-        "--given and --explain makes 250,000 strata of up to 1,640 cells, more than can be counted; give a smaller "
-        "--max-levels, fewer --given, or no --explain"
+        "--given and --explain would make 250,000 strata of up to 1,640 cells, more than can be counted; give a "
+        "smaller --max-levels, fewer --given, or no --explain"
     )
     assert [path.name for path in Path().iterdir()] == ["t.csv"]
     assert call("test", table, *options, "c,d").code == 0

@@ -52,7 +52,7 @@ def test_numbers_are_ordered_by_value() -> None:
 
 
 def test_nan_is_no_number_that_has_a_place() -> None:
-    with pytest.raises(DataError, match="its levels are no numbers"):
+    with pytest.raises(DataError, match="are no numbers"):
         level_scores(Domain("n", ("3", "nan", "1", "2")), {"n": ()})
 
 
@@ -71,8 +71,8 @@ def test_intervals_are_ordered_by_themselves_and_blanks_and_pooled_levels_have_n
         (("small", "medum", "large"), "--ordered size: 'medum' is not a level of it; did you mean medium?"),
         (
             (),
-            "--ordered size: its levels are no numbers, so their order must be given; write it as --ordered "
-            "'size=large<medium<small', from low to high",
+            "--ordered size: its levels (large, medium, small) are no numbers; give their order, from low to high, as "
+            "in --ordered 'size=LOWEST<...<HIGHEST', with quotation marks",
         ),
     ],
 )

@@ -27,18 +27,18 @@ def crossed(rows: int, seed: int, first: float, second: float, lean: float = 0.0
 
 
 MEANINGS = {
-    "kind explains it": crossed(6000, 1, 0.0, 0.0, 0.6),
-    "{share:.0%} of it is left given kind": crossed(6000, 1, 0.5, 0.5),
-    "it is stronger given kind": crossed(6000, 1, 0.7, -0.4),
-    "it appears only given kind": crossed(6000, 1, 0.5, -0.5),
-    "rejected neither with nor without, so there is nothing to explain": crossed(200, 1, 0.0, 0.0),
+    "explained by kind": crossed(6000, 1, 0.0, 0.0, 0.6),
+    "{share:.0%} of it is left": crossed(6000, 1, 0.5, 0.5),
+    "it is stronger there": crossed(6000, 1, 0.7, -0.4),
+    "it appears only there": crossed(6000, 1, 0.5, -0.5),
+    "not rejected either way, so there is nothing to explain": crossed(200, 1, 0.0, 0.0),
     "not enough data to say what kind explains": crossed(150, 3, 0.0, 0.0, 0.6),
 }
 
 
 def words_of(meaning: str, one: TestResult) -> str:
     """Put the share of the bits that is left into the sentence that tells it."""
-    return meaning.format(share=one.bits_corrected / one.marginal_bits_corrected)
+    return meaning.format(share=min(1.0, one.bits_corrected / one.marginal_bits_corrected))
 
 
 @pytest.mark.parametrize("meaning", MEANINGS)
@@ -48,10 +48,13 @@ def test_what_the_class_explains_is_said_in_words(meaning: str, given: tuple[str
     one, conditions = tests.results[0], ", ".join(("kind", *given))
     text = section(written(tests), "left ~ right")
     interval = "" if np.isnan(one.bits_low) else f" (95 % {one.bits_low:.4f} to {one.bits_high:.4f})"
+    if one.verdict == "negligible":
+        interval = f" (95 % at most {one.bits_at_most:.4f})"
+    alone = f"{max(0.0, tests.given_class['left', 'right']):.4f} given kind alone, " if given else ""
     bits = [f"{max(0.0, value):.4f}" for value in (one.marginal_bits_corrected, one.bits_corrected)]
     assert (
-        f"{bits[0]} bits without {conditions}, {bits[1]}{interval} given {'them' if given else 'it'}, both less what "
-        f"chance alone would show: {words_of(meaning, one).replace('kind', conditions)}. "
+        f"{bits[0]} bits given nothing, {alone}{bits[1]}{interval} given {conditions}, less what chance alone would "
+        f"give: {words_of(meaning, one).replace('kind', conditions)}. "
     ) in text
 
 
@@ -118,4 +121,4 @@ def test_a_trend_of_both_is_named_linear_with_its_correlation() -> None:
     shown = f"Linear trend of both (generalised CMH): {trend.statistic:.2f}, df 1, p "
     text = section(written(tests), "left ~ right")
     assert shown in text
-    assert f", correlation {trend.correlation:+.3f}." in text
+    assert f", correlation within strata {trend.correlation:+.3f}." in text

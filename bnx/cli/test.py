@@ -67,7 +67,10 @@ def run(
     ] = False,
     ordered: Annotated[
         list[str] | None,
-        typer.Option(metavar="COL", help="Levels have an order: COL if they are numbers, else 'COL=low<middle<high'."),
+        typer.Option(
+            metavar="COL",
+            help="Levels have an order: COL if they are numbers, else 'COL=low<middle<high'; repeat for more.",
+        ),
     ] = None,
     strata: Annotated[
         bool, typer.Option("--strata", help="Show every stratum: observed, expected, adjusted residual.")
@@ -82,7 +85,8 @@ def run(
         str | None, typer.Option("--plot", metavar="FILE", help="Picture of the residuals: .svg, .png or .pdf.")
     ] = None,
     output: Annotated[
-        str | None, typer.Option("-o", "--output", metavar="FILE.csv", help="Write all tests as a CSV file too.")
+        str | None,
+        typer.Option("-o", "--output", metavar="FILE.csv", help="Write the table of pairs as a CSV file too."),
     ] = None,
     theme: Theme = None,
     test: Test = Recipe.test,
