@@ -5,12 +5,12 @@ Source: Bickel, Hammel & O'Connell 1975, Science 187; the figures of the tests b
 
 import numpy as np
 import pytest
+from published import BERKELEY
 from scipy.stats import chi2_contingency
 from statsmodels.stats.contingency_tables import StratifiedTable
 
 from bnx.domains import Domain
 from bnx.pair_details import Pair, PairDetail, compare_classes, look_closely
-from tests.published import BERKELEY
 
 PAIR = Pair(
     Domain("gender", ("men", "women")),
