@@ -7,11 +7,11 @@ from pathlib import Path
 __version__ = "0.1.0"
 
 # Compiled kernels are kept with the user, not in the package: files that pip does not know would outlive an uninstall.
-# The noqa: pathlib refuses a user without a home, os.path does not.
 # Each state of the sources has a folder of its own: a compiled kernel does not notice that one it calls has changed.
-_CACHE = os.environ.get("XDG_CACHE_HOME") or os.path.join(os.path.expanduser("~"), ".cache")  # noqa: PTH111, PTH118
+# The noqa: pathlib refuses a user without a home, os.path does not.
+_CACHE = Path(os.environ.get("XDG_CACHE_HOME") or Path(os.path.expanduser("~"), ".cache"))  # noqa: PTH111
 _SOURCES = sorted((Path(__file__).parent / "kernels").glob("*.py"))
 _STATE = hashlib.blake2b(
     repr([(path.name, path.read_bytes()) for path in _SOURCES]).encode(), digest_size=8
 ).hexdigest()
-os.environ.setdefault("NUMBA_CACHE_DIR", os.path.join(_CACHE, "bnx", f"kernels-{_STATE}"))  # noqa: PTH118
+os.environ.setdefault("NUMBA_CACHE_DIR", str(_CACHE / "bnx" / f"kernels-{_STATE}"))

@@ -11,7 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 from scipy.special import chdtrc
 
-__all__ = ["OrderedTest", "generalised_cmh", "integer_scores"]
+__all__ = ["OrderedTest", "generalised_cmh"]
 
 _SINGULAR = 1e-9  # eigenvalues of a correlation matrix below this share of the largest are zero
 _ROUNDING = 1e-24  # squared distances of scores below this share of the largest are zero
@@ -31,11 +31,6 @@ class OrderedTest:
     df: int
     p: float
     correlation: float
-
-
-def integer_scores(levels: int) -> np.ndarray:
-    """Score ordered levels 1 to ``levels``; only steps matter, so unused levels keep their place."""
-    return np.arange(1.0, levels + 1.0)
 
 
 def generalised_cmh(

@@ -126,8 +126,8 @@ def gated(visit: Visit, stats: Statistics, rigour: Rigour) -> Tested:
     near = (tested.p >= rigour.low) & (tested.p <= rigour.high)
     tested = _exact(visit, stats, tested, near)
     if rigour.test == "monte-carlo":
-        drawn = near & stats.varies & ~tested.is_exact
-        tested = _drawn(visit, stats, tested, drawn, float(np.sqrt(rigour.low * rigour.high)), rigour.seed)
+        chosen = np.flatnonzero(near & stats.varies & ~tested.is_exact)
+        tested = _drawn(visit, stats, tested, chosen, float(np.sqrt(rigour.low * rigour.high)), rigour.seed)
     return tested
 
 
@@ -155,15 +155,13 @@ def reported(visit: Visit, stats: Statistics, test: str, adjust: str, alpha: flo
     tested = tested.without(~testable(least, alpha, adjust))
     at = threshold(tested.p, adjust, alpha)
     tested = _exact(visit, stats, tested, tested.by_moments)
-    near = (tested.p <= _FAR_ABOVE * at) & (tested.p * _FAR_BELOW >= at)
-    drawn = tested.by_moments & near if test == "auto" else ~np.isnan(tested.p) & ~tested.is_exact
-    if test != "auto":
-        return Report(_drawn(visit, stats, tested, drawn, at, seed), 0)
-    chosen = _affordable(stats, tested, np.flatnonzero(drawn), at)
-    undrawn = int(drawn.sum()) - len(chosen)
-    drawn[:] = False
-    drawn[chosen] = True
-    return Report(_drawn(visit, stats, tested, drawn, at, seed), undrawn)
+    if test == "monte-carlo":
+        wanted = chosen = np.flatnonzero(~np.isnan(tested.p) & ~tested.is_exact)
+    else:
+        near = (tested.p <= _FAR_ABOVE * at) & (tested.p * _FAR_BELOW >= at)
+        wanted = np.flatnonzero(tested.by_moments & near)
+        chosen = np.sort(_affordable(stats, tested, wanted, at))
+    return Report(_drawn(visit, stats, tested, chosen, at, seed), len(wanted) - len(chosen))
 
 
 def _affordable(stats: Statistics, tested: Tested, wanted: np.ndarray, at: float) -> np.ndarray:
@@ -187,9 +185,8 @@ def _exact(visit: Visit, stats: Statistics, tested: Tested, near: np.ndarray) ->
     return tested.replaced(chosen, visit(chosen.tolist(), exact_tail), "exact") if len(chosen) else tested
 
 
-def _drawn(visit: Visit, stats: Statistics, tested: Tested, drawn: np.ndarray, at: float, seed: int) -> Tested:
+def _drawn(visit: Visit, stats: Statistics, tested: Tested, chosen: np.ndarray, at: float, seed: int) -> Tested:
     """Replace the chosen p by those from random tables, as many as a threshold needs."""
-    chosen = np.flatnonzero(drawn)
     if not len(chosen):
         return tested
     most = _most_tables(at)

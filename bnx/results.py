@@ -1,6 +1,5 @@
 """Write a run's results: a whole folder or nothing."""
 
-import csv
 import json
 import shutil
 import tempfile
@@ -27,7 +26,7 @@ from bnx.errors import DataError, EngineError, SettingError
 from bnx.report import report_html
 from bnx.text import quoted
 from bnx.unfinished import unfinished
-from bnx.verdicts import PAIR_KEYS
+from bnx.verdicts import pairs_csv
 
 __all__ = ["json_text", "new_folder", "write_results"]
 
@@ -132,10 +131,7 @@ def write_results(
     """
     document = comparison_document(comparison)
     write_json(folder / _OURS, document)
-    with (folder / "pairs.csv").open("w", newline="", encoding="utf-8") as file:
-        writer = csv.DictWriter(file, PAIR_KEYS, lineterminator="\n")
-        writer.writeheader()
-        writer.writerows(document["pairs"])
+    (folder / "pairs.csv").write_bytes(pairs_csv(document["pairs"]).encode())
     structures = [structure_document(comparison, s) for s in range(len(comparison.classifiers))]
     drawings = {one["name"]: dot_of(one) for one in structures}
     for one in structures:

@@ -74,7 +74,7 @@ def _p(p: float, method: str) -> str:
 
 
 def _cells(result: TestResult) -> tuple[TestResult, tuple[str, ...]]:
-    about = "" if result.min_expected >= 1.0 and result.share_expected_below_5 <= 0.2 else "~"
+    about = "~" if np.isnan(result.bits_at_most) else ""
     return result, (
         _bits(result.bits_corrected),
         _bits(result.marginal_bits_corrected),

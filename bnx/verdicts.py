@@ -1,7 +1,10 @@
 """Verdicts on pairs tested as one family: adjusted p, what could have been detected, and what it all says."""
 
-from collections.abc import Sequence
+import csv
+import io
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import asdict, dataclass, fields
+from typing import Any
 
 import numpy as np
 
@@ -10,7 +13,7 @@ from bnx.intervals import bits_interval, bits_upper, detectable_bits
 from bnx.multiplicity import adjusted, threshold
 from bnx.plain import finite
 
-__all__ = ["OUTCOMES", "PAIR_KEYS", "VERDICTS", "Judgement", "TestResult", "judge", "outcomes", "results"]
+__all__ = ["OUTCOMES", "PAIR_KEYS", "VERDICTS", "Judgement", "TestResult", "judge", "outcomes", "pairs_csv", "results"]
 
 VERDICTS = ("negligible", "detected, but negligible", "dependent", "not enough data")
 
@@ -128,6 +131,15 @@ class TestResult:
 
 
 PAIR_KEYS = tuple(field.name for field in fields(TestResult))
+
+
+def pairs_csv(pairs: Iterable[Mapping[str, Any]], *more: str) -> str:
+    """Write pairs, as mappings with all PAIR_KEYS and ``more``, as CSV with a header."""
+    text = io.StringIO()
+    writer = csv.DictWriter(text, (*PAIR_KEYS, *more), lineterminator="\n")
+    writer.writeheader()
+    writer.writerows(pairs)
+    return text.getvalue()
 
 
 def results(

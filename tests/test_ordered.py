@@ -11,10 +11,14 @@ from published import BERKELEY, HAIR_EYE, JOB_SATISFACTION
 from scipy.stats import chi2, chi2_contingency, friedmanchisquare, kruskal, rankdata
 from statsmodels.stats.contingency_tables import StratifiedTable, Table, cochrans_q
 
-from bnx.ordered import OrderedTest, generalised_cmh, integer_scores
+from bnx.ordered import OrderedTest, generalised_cmh
 
 SMALL = arrays(np.int64, st.tuples(st.integers(1, 3), st.integers(2, 3), st.integers(2, 4)), elements=st.integers(0, 4))
 TWO_BY_TWO = arrays(np.int64, st.tuples(st.integers(1, 5), st.just(2), st.just(2)), elements=st.integers(1, 30))
+
+
+def integer_scores(levels: int) -> np.ndarray:
+    return np.arange(1.0, levels + 1.0)
 
 
 def near(value: float) -> object:

@@ -1,7 +1,5 @@
 """bnx test: conditional independence of chosen pairs."""
 
-import csv
-import io
 import json
 from collections.abc import Sequence
 from pathlib import Path
@@ -46,7 +44,7 @@ from bnx.plain import finite
 from bnx.reading import Source, open_source
 from bnx.recipe import Recipe
 from bnx.tested_text import written
-from bnx.verdicts import PAIR_KEYS
+from bnx.verdicts import pairs_csv
 
 __all__ = ["run"]
 
@@ -124,19 +122,21 @@ def run(
         typer.echo(json.dumps(finite(found.to_dict(strata)), ensure_ascii=False, allow_nan=False, indent=1))
     else:
         typer.echo(written(found, strata))
-    notes = list(found.warnings)
+    done = []
     if output:
         write_bytes(output, _csv(found).encode(), overwrite)
-        notes.append(f"{output} written")
+        done.append(f"{output} written")
     if plot and found.details:
         from bnx.tested_picture import draw_tests  # noqa: PLC0415  loads matplotlib, which takes longer than most tests
 
         draw_tests(found, plot, colours(theme, Path(plot).suffix.lower()), overwrite)
-        notes.append(f"{plot} written")
+        done.append(f"{plot} written")
     elif plot:
-        notes.append(f"no pair was rejected, so {plot} is not drawn; name two attributes to draw them")
-    for note in notes:
-        say(f"note: {note}" if note in found.warnings else note, quiet)
+        done.append(f"no pair was rejected, so {plot} is not drawn; name two attributes to draw them")
+    for note in found.warnings:
+        say(f"note: {note}", quiet)
+    for line in done:
+        say(line, quiet)
 
 
 def _check_outputs(source: Source, output: str | None, plot: str | None, theme: str | None, overwrite: bool) -> None:
@@ -165,9 +165,5 @@ def _orders(value: str, names: Sequence[str]) -> Sequence[str]:
 
 
 def _csv(tests: PairTests) -> str:
-    text = io.StringIO()
-    writer = csv.DictWriter(text, (*PAIR_KEYS, "given"), lineterminator="\n")
-    writer.writeheader()
     given = ", ".join((tests.target, *tests.asked.given))
-    writer.writerows({**result.to_dict(), "given": given} for result in tests.results)
-    return text.getvalue()
+    return pairs_csv(({**result.to_dict(), "given": given} for result in tests.results), "given")
