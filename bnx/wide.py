@@ -98,7 +98,7 @@ class _Pass:
     @property
     def attributes(self) -> int:
         """Number of attributes."""
-        return self.planes.planes.shape[1]
+        return len(self.planes.planes)
 
 
 def grow_forests(engine: LocalEngine, trainings: Sequence[Training], asked: Asked, seeds: Edges | None = None) -> list[Grown]:
@@ -130,7 +130,8 @@ def _prepared(engine: LocalEngine, planes: Planes, trainings: Sequence[Training]
     tails = np.array([[0.0, *(chdtri(df, min(1.0, p)) * (1.0 - 1e-9))] for p in most])
     deviates = _deviates(min(1.0, max(asked.rigour.high, float(most.max()))))
     mean = (margins.records / np.maximum(margins.records - 1.0, 1.0)).sum(axis=1)
-    least = deviates[1].min() - 1e-3
+    attainable = deviates[0] <= 2.0 * np.sqrt(margins.records.max(initial=1.0))  # skewness of X2; see the tests
+    least = deviates[1, attainable].min() - 1e-3
     far = tails[:, 1] - mean if least > 0 else np.full(len(tails), -1e30)
     limits = np.stack([far, np.full(len(tails), least * least * (1.0 - 1e-3))], axis=1)
     counts = np.arange(int(margins.records.max(initial=1)) + 1, dtype=np.float64)

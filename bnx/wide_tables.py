@@ -17,7 +17,7 @@ __all__ = ["Margins", "Planes", "Sums", "joint_tables", "margins_of", "pack", "s
 class Planes:
     """One bit per record and attribute, set where it has its second level.
 
-    ``planes`` uint64 (words, n); ``words`` (G + 1,): first word of each group, group = block x C + class.
+    ``planes`` uint64 (n, words); ``words`` (G + 1,): first word of each group, group = block x C + class.
     """
 
     planes: np.ndarray
@@ -65,9 +65,9 @@ def pack(engine: LocalEngine) -> Planes:
         held = np.packbits(np.concatenate(rows, axis=1) if len(rows) > 1 else rows[0], axis=1, bitorder="little")
         padded = np.zeros((len(held), -(-held.shape[1] // 8) * 8), np.uint8)
         padded[:, : held.shape[1]] = held
-        parts.append(padded.view("<u8").T.astype(np.uint64))
-        words.append(words[-1] + len(parts[-1]))
-    return Planes(np.ascontiguousarray(np.concatenate(parts)), np.array(words, np.int64))
+        parts.append(padded.view("<u8").astype(np.uint64))
+        words.append(words[-1] + parts[-1].shape[1])
+    return Planes(np.concatenate(parts, axis=1), np.array(words, np.int64))
 
 
 def sums_of(masks: np.ndarray) -> Sums:

@@ -15,14 +15,14 @@ VARIES, EVEN, UNEQUAL = 1, 2, 4  # of a margin: both levels occur; the parts of 
 def common_ones(planes: np.ndarray, words: np.ndarray, left: np.ndarray, right: np.ndarray) -> np.ndarray:
     """Count the records that have both attributes of each pair, by group: int32 (P, G).
 
-    planes (words, n) uint64; words (G + 1,): first word of each group; left, right (P,).
+    planes (n, words) uint64; words (G + 1,): first word of each group; left, right (P,).
     """
     counts = np.zeros((left.size, words.size - 1), np.int32)
-    for g in range(words.size - 1):
-        for w in range(words[g], words[g + 1]):
-            plane = planes[w]
-            for p in range(left.size):
-                counts[p, g] += np.int32(_ones(plane[left[p]] & plane[right[p]]))
+    for p in range(left.size):
+        one, other = planes[left[p]], planes[right[p]]
+        for g in range(words.size - 1):
+            for w in range(words[g], words[g + 1]):
+                counts[p, g] += np.int32(_ones(one[w] & other[w]))
     return counts
 
 

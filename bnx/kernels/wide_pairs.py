@@ -31,32 +31,21 @@ _SLIGHT = np.float32(1e-4)
 
 
 @njit(nogil=True, cache=True)
-def _count_tile(
-    planes: np.ndarray, words: np.ndarray, own: np.ndarray, first: int, width: int, ones: np.ndarray, leaves: np.ndarray
-) -> None:
+def _count_tile(own: np.ndarray, planes: np.ndarray, words: np.ndarray, ones: np.ndarray, leaves: np.ndarray) -> None:
     """Count the records that one attribute and each of a tile have in common, by group.
 
-    planes (words, n) uint64: a bit per record; words (G + 1,): first word of each group; own (words,): the words of the
-    one attribute; ones (width,) uint64: scratch; leaves (G, width): counts.
+    own (words,) uint64: a bit per record of the one attribute; planes (words, tile): of the others; words (G + 1,):
+    first word of each group; ones (tile,) uint64: scratch; leaves (G, tile): counts.
     """
-    mine = ones[:width]
     for g in range(words.size - 1):
-        mine[:] = 0
-        w = words[g]
-        while w + 1 < words[g + 1]:
-            x, y = own[w], own[w + 1]
-            p, q = planes[w, first : first + width], planes[w + 1, first : first + width]
-            for k in range(mine.size):
-                mine[k] += _ones(p[k] & x) + _ones(q[k] & y)
-            w += 2
-        if w < words[g + 1]:
-            x = own[w]
-            p = planes[w, first : first + width]
-            for k in range(mine.size):
-                mine[k] += _ones(p[k] & x)
-        out = leaves[g, :width]
-        for k in range(mine.size):
-            out[k] = mine[k]
+        ones[:] = 0
+        for w in range(words[g], words[g + 1]):
+            x, plane = own[w], planes[w]
+            for k in range(ones.size):
+                ones[k] += _ones(plane[k] & x)
+        out = leaves[g]
+        for k in range(ones.size):
+            out[k] = ones[k]
 
 
 @njit(nogil=True, cache=True)
@@ -271,7 +260,7 @@ def scan_pairs(
     """Go through the pairs (i, j), i from start to stop and first <= j < first + width, i < j, in S training sets.
 
     Args:
-        planes: uint64 (words, n), bit r of word w: whether record r of that word has the attribute.
+        planes: uint64 (n, words), bit r of word w: whether record r of that word has the attribute.
         words: int64 (G + 1,), first word of each group; group = block x C + class.
         plan: int64 (K, 3), sums over blocks, see ``_add_up``.
         wanted: int64 (S,), the node that holds each set's sum.
@@ -294,9 +283,11 @@ def scan_pairs(
     Returns:
         The first i that was not done: stop, or less where no room was left.
     """
-    sets, classes, attributes = part.shape[0], part.shape[1], part.shape[3]
+    sets, classes = part.shape[:2]
     blocks = (words.size - 1) // classes
-    own = np.empty(planes.shape[0], np.uint64)
+    tile = np.zeros((planes.shape[1], nodes.shape[2]), np.uint64)
+    for k in range(width):
+        tile[:, k] = planes[first + k]
     ones = np.empty(nodes.shape[2], np.uint64)
     work = np.empty((3, nodes.shape[2]), np.float32)
     hits = np.empty(nodes.shape[2], np.uint8)
@@ -304,26 +295,23 @@ def scan_pairs(
     leaves = nodes[:blocks].reshape(blocks * classes, nodes.shape[2])
     flat = nodes.reshape(nodes.shape[0], classes * nodes.shape[2])
     for i in range(start, stop):
-        begin = max(first, i + 1)
-        wide = first + width - begin
-        if wide <= 0:
+        skip = max(0, i + 1 - first)
+        if skip >= width:
             return stop
-        if numbers.max() + wide > kept.shape[1]:
+        if numbers.max() + width > kept.shape[1]:
             return i
-        for w in range(own.size):
-            own[w] = planes[w, i]
-        _count_tile(planes, words, own, begin, wide, ones, leaves)
+        _count_tile(planes[i], tile, words, ones, leaves)
         _add_up(plan, flat)
         for s in range(sets):
             counts = nodes[wanted[s]]
             found = _screen(
-                counts, part[s], records[s], i, begin, wide, lows[0, s], lows[1, s], tested, limits[s], work, hits
+                counts, part[s], records[s], i, first, width, lows[0, s], lows[1, s], tested, limits[s], work, hits
             )
             if found == 0:
                 continue
-            for k in range(wide):
+            for k in range(skip, width):
                 if hits[k]:
-                    j = begin + k
+                    j = first + k
                     at = numbers[s]
                     joint = joints[s, at]
                     for c in range(classes):
