@@ -223,16 +223,16 @@ def _run_warnings(
     """Say what a reader of the figures must know about how they were made."""
     notes = []
     sample, engine = evaluations[0].sample, evaluations[0].engine
-    if len(sample.target) < len(engine.order):
+    if len(sample.target) < engine.rows:
         notes.append(
             f"choices inside training folds and gains of edges are judged on {len(sample.target):,} of "
-            f"{len(engine.order):,} rows, a seeded sample by fold and class; scores and tests use all rows"
+            f"{engine.rows:,} rows, a seeded sample by fold and class; scores and tests use all rows"
         )
     if recipe.group:
         notes.append(
             f"rows of one {recipe.group} may be alike, but the tests assume independent records: every p is descriptive"
         )
-    sizes = [rows.stop - rows.start for rows in evaluations[0].fold_rows]
+    sizes = [sum(run.stop - run.start for run in runs) for runs in evaluations[0].fold_rows]
     if max(sizes) > 1.2 * min(sizes):
         notes.append(
             f"folds hold {min(sizes):,} to {max(sizes):,} rows; differences to {recipe.baseline} are means over folds "

@@ -50,7 +50,7 @@ def _counts(
     """Yield (training set, its counts (C, cells)) of one family."""
     view = trainings[numbers[0]].view
     cells = int(np.prod(view.sizes_of(members))) * engine.blocks * engine.classes
-    if len(numbers) > 1 and view.all_plain(members) and cells <= _DENSE * len(engine.order):
+    if len(numbers) > 1 and view.all_plain(members) and cells <= _DENSE * engine.rows:
         counted = engine.family_counts(members, view).counts
         total = counted.sum(axis=0, dtype=np.int32)
         for number in numbers:

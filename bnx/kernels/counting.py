@@ -1,6 +1,7 @@
 """Counting loops.
 
-Rows come sorted into groups (one per block of rows and class): group g holds rows ``starts[g]:starts[g + 1]``.
+Rows come sorted into segments: segment s holds rows ``starts[s]:starts[s + 1]``, all of one block and class. There are
+G such groups, and segment s is a part of group s % G.
 """
 
 import numpy as np
@@ -207,16 +208,16 @@ def count_cells(
     """Count the joint levels of a few attributes, the last member fastest, in the groups that have a slot.
 
     codes (n, N); recode (n, R) int32: the code that each stored code stands for, read unless ``plain``;
-    members (m,), sizes (m,): attributes and their levels; starts (G + 1,); slots (G,): row of ``out`` that group g adds
-    to, negative to skip it; out (slots, cells) int32.
+    members (m,), sizes (m,): attributes and their levels; starts (S + 1,), S a multiple of G; slots (G,): row of
+    ``out`` that segment s adds to is slots[s % G], negative to skip it; out (slots, cells) int32.
     """
     cells = np.empty(_ROWS, np.int32)
-    for g in range(slots.size):
-        slot = slots[g]
+    for s in range(starts.size - 1):
+        slot = slots[s % slots.size]
         if slot < 0:
             continue
-        for low in range(starts[g], starts[g + 1], _ROWS):
-            number = min(_ROWS, starts[g + 1] - low)
+        for low in range(starts[s], starts[s + 1], _ROWS):
+            number = min(_ROWS, starts[s + 1] - low)
             number_cells(codes, recode, plain, members, sizes, low, number, cells)
             for k in range(number):
                 out[slot, cells[k]] += 1
