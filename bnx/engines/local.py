@@ -30,8 +30,8 @@ class LocalEngine:
 
     ``codes`` (n, N) as stored and ``target`` (N,), sorted; ``groups`` (N,): number block * C + class of each row in the
     table's own order; ``chunk``: rows of a chunk; ``starts`` (S + 1,): first sorted row of each segment, where segment
-    s holds the rows of group s % G, G = blocks * C, in chunk s // G. ``margins``: per attribute, counts (blocks, C, stored
-    levels) int64.
+    s holds the rows of group s % G, G = blocks * C, in chunk s // G. ``margins``: per attribute, counts (blocks, C,
+    stored levels) int64.
     """
 
     codes: np.ndarray
