@@ -9,12 +9,13 @@ import numpy as np
 from bnx.choosing import Choice
 from bnx.classifier import Classifier
 from bnx.coding import Coded
-from bnx.dependence import Pairs
+from bnx.dependence import Pairs, measure
 from bnx.encoding import encode
 from bnx.engines import start_local
 from bnx.engines.local import Progress
 from bnx.errors import DataError, SettingError
 from bnx.evaluation import Evaluation, evaluate
+from bnx.families import PairRequests
 from bnx.folds import assign_blocks, assign_given, assign_grouped, sub_blocks
 from bnx.gains import edge_gains
 from bnx.gating import Bounds
@@ -97,12 +98,11 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
     stable = stability(first.engine, learned.training.view, folds, learners, bounds, recipe)
     results = score(evaluations, first.engine)
     baseline = recipe.structures.index(recipe.baseline)
-    visit = visit_families(first.engine, [learned.training], learned.pairs.requests(0))
+    dependence, pairs = measure(first.engine, [learned.training], marginal_of_first=True)[0]
+    visit = visit_families(first.engine, [learned.training], PairRequests(0, pairs.left, pairs.right))
     domains = learned.training.view.domains
-    ends = [(domains[i], domains[j]) for i, j in zip(learned.pairs.left, learned.pairs.right, strict=True)]
-    judged = judge_pairs(
-        visit, Statistics.of(learned.pairs.statistics), Statistics.of(learned.pairs.marginal), ends, recipe
-    )
+    ends = [(domains[i], domains[j]) for i, j in zip(pairs.left, pairs.right, strict=True)]
+    judged = judge_pairs(visit, Statistics.of(pairs.statistics), Statistics.of(pairs.marginal), ends, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
     return Comparison(
@@ -112,12 +112,12 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
         rows=len(coded.table.target),
         folds=folds,
         classifiers=classifiers,
-        relevance=learned.dependence.relevance,
-        pairs=learned.pairs,
+        relevance=dependence.relevance,
+        pairs=pairs,
         judged=judged,
         results=tuple(results),
         against=tuple(against(results, baseline, folds)),
-        edges=tuple(edge_ledger(first, gains, stable, learners, bounds, recipe, folds)),
+        edges=tuple(edge_ledger(first, dependence.strength, gains, stable, learners, bounds, recipe, folds)),
         recommendation=recommend(evaluations, results, recipe.structures, folds),
         held_out=held_out,
         left_out=coded.left_out,
