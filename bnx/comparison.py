@@ -9,19 +9,20 @@ import numpy as np
 from bnx.choosing import Choice
 from bnx.classifier import Classifier
 from bnx.coding import Coded
-from bnx.dependence import Pairs
+from bnx.dependence import Pairs, measure
 from bnx.encoding import encode
 from bnx.engines import LocalEngine, start_local
 from bnx.engines.local import Progress
 from bnx.errors import DataError, SettingError
 from bnx.evaluation import Evaluation, evaluate
+from bnx.families import PairRequests
 from bnx.folds import assign_blocks, assign_given, assign_grouped, sub_blocks
 from bnx.gains import edge_gains
 from bnx.gating import Bounds
 from bnx.independence import Statistics
 from bnx.judging import Against, Recommendation, StructureScore, against, recommend, score
 from bnx.learners import Learner, learner
-from bnx.learning import Learned, make_bounds
+from bnx.learning import make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
 from bnx.pair_judging import JudgedPairs, judge_pairs
@@ -33,6 +34,7 @@ from bnx.scoring import families
 from bnx.structure import Structure
 from bnx.tables import LeftOut
 from bnx.text import count_of
+from bnx.trainings import Training
 
 __all__ = ["Comparison", "compare"]
 
@@ -98,14 +100,22 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
     results = score(evaluations, first.engine)
     baseline = recipe.structures.index(recipe.baseline)
     progress("judging pairs", 0, 0)
-    judged = _judged(first.engine, learned, recipe)
+    dependence, pairs = measure(first.engine, [learned.training], marginal_of_first=True)[0]
+    judged = _judged(first.engine, learned.training, pairs, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     progress("scoring", 0, 0)
     held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
     recommendation = recommend(evaluations, results, recipe.structures, folds)
     progress("edge ledger", 0, 0)
     ledgers = edge_ledger(
-        replace(first, engine=_under("edge ledger", first.engine)), gains, stable, learners, bounds, recipe, folds
+        replace(first, engine=_under("edge ledger", first.engine)),
+        dependence.strength,
+        gains,
+        stable,
+        learners,
+        bounds,
+        recipe,
+        folds,
     )
     progress("reading", 0, 0)
     return Comparison(
@@ -115,8 +125,8 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
         rows=len(coded.table.target),
         folds=folds,
         classifiers=classifiers,
-        relevance=learned.dependence.relevance,
-        pairs=learned.pairs,
+        relevance=dependence.relevance,
+        pairs=pairs,
         judged=judged,
         results=tuple(results),
         against=tuple(against(results, baseline, folds)),
@@ -130,10 +140,10 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
     )
 
 
-def _judged(engine: LocalEngine, learned: Learned, recipe: Recipe) -> JudgedPairs:
+def _judged(engine: LocalEngine, training: Training, pairs: Pairs, recipe: Recipe) -> JudgedPairs:
     """Test and judge all pairs on all rows."""
-    pairs, domains = learned.pairs, learned.training.view.domains
-    visit = visit_families(engine, [learned.training], pairs.requests(0))
+    domains = training.view.domains
+    visit = visit_families(engine, [training], PairRequests(0, pairs.left, pairs.right))
     ends = [(domains[i], domains[j]) for i, j in zip(pairs.left, pairs.right, strict=True)]
     return judge_pairs(visit, Statistics.of(pairs.statistics), Statistics.of(pairs.marginal), ends, recipe)
 
