@@ -253,10 +253,11 @@ def predictions_table(comparison: Comparison) -> pa.Table:
     levels = comparison.classifiers[0].target.levels
     names = comparison.recipe.structures
     for repeat, one in enumerate(comparison.evaluations):
-        rows = len(one.engine.order)
+        rows = one.engine.rows
         fold = np.empty(rows, np.int64)
-        for number, run in enumerate(one.fold_rows):
-            fold[run] = number
+        for number, runs in enumerate(one.fold_rows):
+            for run in runs:
+                fold[run] = number
         back = np.argsort(one.engine.order)
         truth = pa.DictionaryArray.from_arrays(one.engine.target[back].astype(np.int32), pa.array(levels))
         for s, p in enumerate(one.p):

@@ -26,14 +26,14 @@ class Evaluation:
     """One repeat of the folds.
 
     ``choices``: by what is held out, () for all rows; ``p``: per structure, out-of-fold probabilities (N, C) in the
-    engine's row order; ``fold_rows``: the engine's rows of each fold; ``sample``: the rows of inner choices.
+    engine's row order; ``fold_rows``: the engine's rows of each fold, in runs; ``sample``: the rows of inner choices.
     """
 
     engine: LocalEngine
     sample: Sample
     choices: Mapping[tuple[int, ...], Choice]
     p: tuple[np.ndarray, ...]
-    fold_rows: tuple[slice, ...]
+    fold_rows: tuple[list[slice], ...]
 
     def learned(self, held: tuple[int, ...]) -> Learned:
         """Look up what was learnt without the held-out folds, under the cut points chosen there."""
@@ -64,7 +64,7 @@ def evaluate(
     trials, losses = [], []
     for kind in kinds:
         trainings = make_trainings(engine, schema, masks, kind, recipe.max_levels)
-        trial = make_trial(engine, kind, learn(engine, trainings, learners, bounds, recipe, marginal_of_first=True))
+        trial = make_trial(engine, kind, learn(engine, trainings, learners, bounds, recipe))
         trials.append(trial)
         if choices_open:
             losses.append(inner_losses(engine, trial, sample, options, recipe.temperature))
@@ -75,16 +75,19 @@ def evaluate(
 
     choices = dict(zip(outer, engine.map(settle, outer, "calibrating"), strict=True))
     rows = tuple(engine.rows_of(fold * parts, (fold + 1) * parts) for fold in range(folds))
-    p = tuple(np.empty((len(engine.order), engine.classes)) for _ in learners)
+    p = tuple(np.empty((engine.rows, engine.classes)) for _ in learners)
     engine.map(lambda fold: _predict(engine, choices[(fold,)], (fold,), rows[fold], p), range(folds), "scoring folds")
     return Evaluation(engine, sample, choices, p, rows)
 
 
-def _predict(engine: LocalEngine, choice: Choice, held: tuple[int, ...], rows: slice, p: Sequence[np.ndarray]) -> None:
+def _predict(
+    engine: LocalEngine, choice: Choice, held: tuple[int, ...], rows: Sequence[slice], p: Sequence[np.ndarray]
+) -> None:
     """Fill in the probabilities of one fold's rows."""
     learned = choice.trial.learned[held]
     options = [(smoothing,) for smoothing in choice.smoothings]
     counts = choice.trial.counts[held]
-    found = evidence(engine.codes, rows, learned.training.view, learned.structures, options, counts)
-    for own, calibration, out in zip(found, choice.calibrations, p, strict=True):
-        out[rows] = apply(calibration, learned.training.log_prior, own)
+    for run in rows:
+        found = evidence(engine.codes, run, learned.training.view, learned.structures, options, counts)
+        for own, calibration, out in zip(found, choice.calibrations, p, strict=True):
+            out[run] = apply(calibration, learned.training.log_prior, own)

@@ -75,7 +75,7 @@ def score(evaluations: Sequence[Evaluation], engine: LocalEngine) -> list[Struct
         s, repeat, fold = cell
         one = evaluations[repeat]
         rows = one.fold_rows[fold]
-        p, truth = one.p[s][rows], one.engine.target[rows]
+        p, truth = _joined(one.p[s], rows), _joined(one.engine.target, rows)
         return FoldScore(repeat, fold, len(truth), scores(p, truth, one.engine.classes), slope(p, truth))
 
     def judge(s: int) -> tuple[Scores, float, float | None]:
@@ -95,7 +95,12 @@ def score(evaluations: Sequence[Evaluation], engine: LocalEngine) -> list[Struct
 
 def _filled(evaluation: Evaluation) -> list[int]:
     """List the folds that hold rows."""
-    return [fold for fold, rows in enumerate(evaluation.fold_rows) if rows.stop > rows.start]
+    return [fold for fold, runs in enumerate(evaluation.fold_rows) if any(run.stop > run.start for run in runs)]
+
+
+def _joined(values: np.ndarray, runs: Sequence[slice]) -> np.ndarray:
+    """Join the values of several runs of rows."""
+    return values[runs[0]] if len(runs) == 1 else np.concatenate([values[run] for run in runs])
 
 
 def pooled(evaluations: Sequence[Evaluation], s: int) -> tuple[np.ndarray, np.ndarray]:
@@ -180,8 +185,8 @@ def recommend(
             own = one.learned((fold,)).structures
             picked = pick(inner, own, inner.mean(axis=1).tolist(), inner.shape[1])[1] if len(own) > 1 else 0
             picks.append(picked)
-            p.append(one.p[picked][one.fold_rows[fold]])
-            truth.append(one.engine.target[one.fold_rows[fold]])
+            p += [one.p[picked][run] for run in one.fold_rows[fold]]
+            truth += [one.engine.target[run] for run in one.fold_rows[fold]]
     honest = scores(np.concatenate(p), np.concatenate(truth), evaluations[0].engine.classes)
     return Recommendation(best, chosen, _reason(names, structures, means, best, chosen, chances), honest, tuple(picks))
 

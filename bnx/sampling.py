@@ -33,19 +33,24 @@ class Sample:
 def draw_sample(engine: LocalEngine, folds: int) -> Sample:
     """Take at least 5,000 rows of every fold and class (all, if there are fewer) and 50,000 in all.
 
-    Rows are spread evenly over each fold and class; what lies in which fold was decided by the seed.
+    Rows are spread evenly over the blocks of each fold and class, in the order of the table within a block, so that the
+    engine's chunks make no difference; what lies in which fold was decided by the seed.
     """
     blocks = engine.blocks // folds
+    chunks = np.arange(0, len(engine.starts) - 1, engine.blocks * engine.classes)
     chosen, weights, starts = [], [], [0]
     for fold in range(folds):
         taken = 0
         for c in range(engine.classes):
             groups = (np.arange(fold * blocks, (fold + 1) * blocks)) * engine.classes + c
-            rows = np.concatenate([np.arange(engine.starts[g], engine.starts[g + 1]) for g in groups])
-            wanted = min(len(rows), max(_ROWS_PER_CLASS, -(-_ROWS * len(rows) // len(engine.order))))
-            places = (np.arange(wanted) * len(rows)) // max(wanted, 1)
-            chosen.append(rows[places])
-            weights.append(np.full(wanted, len(rows) / max(wanted, 1)))
+            segments = (groups[:, None] + chunks).ravel()
+            ends = np.cumsum(engine.starts[segments + 1] - engine.starts[segments])
+            rows = int(ends[-1])
+            wanted = min(rows, max(_ROWS_PER_CLASS, -(-_ROWS * rows // engine.rows)))
+            places = (np.arange(wanted) * rows) // max(wanted, 1)
+            held_by = np.searchsorted(ends, places, side="right")
+            chosen.append(engine.starts[segments + 1][held_by] - (ends[held_by] - places))
+            weights.append(np.full(wanted, rows / max(wanted, 1)))
             taken += wanted
         starts.append(starts[-1] + taken)
     index = np.concatenate(chosen)

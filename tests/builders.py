@@ -13,6 +13,7 @@ from bnx.comparison import Comparison, compare
 from bnx.dependence import Dependence
 from bnx.domains import Domain, Schema
 from bnx.engines import LocalEngine, start_local
+from bnx.engines.local import CHUNK
 from bnx.evaluation import Evaluation
 from bnx.gating import Answer, Bounds, Gate, Learning, learn_together
 from bnx.learners import learner
@@ -61,10 +62,16 @@ def coded_frame(frame: pd.DataFrame, target: str) -> CodedTable:
     return CodedTable(schema, np.array(codes[:-1], dtype=np.uint8), codes[-1].astype(np.uint8), np.arange(len(frame)))
 
 
-def started(table: CodedTable, blocks_of_rows: np.ndarray | None = None, blocks: int = 1, jobs: int = 1) -> LocalEngine:
+def started(
+    table: CodedTable,
+    blocks_of_rows: np.ndarray | None = None,
+    blocks: int = 1,
+    jobs: int = 1,
+    chunk: int = CHUNK,
+) -> LocalEngine:
     """Start a local engine; all rows in one block unless their blocks are given."""
     places = np.zeros(len(table.target), np.int64) if blocks_of_rows is None else blocks_of_rows
-    return start_local(table, places, blocks, jobs, silent)
+    return start_local(table, places, blocks, jobs, silent, chunk)
 
 
 def whole(engine: LocalEngine, table: CodedTable, bins: str = "mdl", max_levels: int = 50) -> Training:
@@ -136,9 +143,10 @@ def rows_and_levels(frame: pd.DataFrame, target: str) -> RowsAndLevels:
 
 def folds_of(evaluation: Evaluation) -> np.ndarray:
     """Tell the fold of each row of the table."""
-    fold = np.empty(len(evaluation.engine.order), np.int64)
-    for number, rows in enumerate(evaluation.fold_rows):
-        fold[evaluation.engine.order[rows]] = number
+    fold, order = np.empty(evaluation.engine.rows, np.int64), evaluation.engine.order
+    for number, runs in enumerate(evaluation.fold_rows):
+        for rows in runs:
+            fold[order[rows]] = number
     return fold
 
 

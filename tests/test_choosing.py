@@ -196,7 +196,7 @@ def test_a_sample_stands_for_all_rows_of_every_fold_and_class(monkeypatch: pytes
     one = found.evaluations[0]
     sample, engine = one.sample, one.engine
     assert any("a seeded sample by fold and class" in warning for warning in found.warnings)
-    for fold, rows in enumerate(one.fold_rows):
+    for fold, (rows,) in enumerate(one.fold_rows):
         for c in range(3):
             of_class = sample.target[sample.rows(fold)] == c
             there = int((engine.target[rows] == c).sum())

@@ -12,11 +12,11 @@ PACKAGE = ROOT / "bnx"
 # A module imports from lower floors, and on its own floor from modules to its left. A package counts as one module.
 FLOORS = (
     "bnx errors text palette plain unfinished",
-    "kernels calibrating counts discretising domains dot_text embedding files "
+    "kernels calibrating counts tiles discretising domains dot_text embedding files "
     "folds layers losses branching multiplicity paired picture structure svg effects ordered loglinear "
     "fibre homogeneity",
     "tables views columns columnar delimited malformed reading levelling screening level_order",
-    "coarsening coding encoding engines",
+    "coarsening coding encoding pair_counting engines",
     "parameters trainings dependence families profiling",
     "independence classifier intervals refining sampling scoring verdicts explaining pair_details",
     "gating drawing formats showing",

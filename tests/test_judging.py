@@ -103,7 +103,7 @@ def test_the_honest_score_makes_the_same_choice_inside_every_outer_fold(run: tup
     found = with_dependence(*run)
     one = found.evaluations[0]
     total, right = 0.0, 0
-    for fold, rows in enumerate(one.fold_rows):
+    for fold, (rows,) in enumerate(one.fold_rows):
         inner = one.choices[(fold,)].losses
         picked = by_the_rule(inner, inner.mean(axis=1), one.learned((fold,)).structures)[1]
         assert found.recommendation.picks[fold] == picked
