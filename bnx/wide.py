@@ -15,6 +15,7 @@ import numpy as np
 from scipy.special import chdtri, gammainccinv
 
 from bnx.engines import LocalEngine
+from bnx.folds import keyed_hash
 from bnx.independence import Statistics
 from bnx.kernels.contingency import NATS, ROWS, table_statistics
 from bnx.kernels.forests import bounds_to_root, grow, joins_in_order
@@ -93,7 +94,6 @@ class _Pass:
     tails: np.ndarray
     deviates: np.ndarray
     logs: np.ndarray
-    barred: np.ndarray
 
     @property
     def attributes(self) -> int:
@@ -123,7 +123,7 @@ def _first_seeds(planes: Planes, engine: LocalEngine, trainings: Sequence[Traini
 
 
 def _prepared(engine: LocalEngine, planes: Planes, trainings: Sequence[Training], asked: Asked) -> _Pass:
-    margins = margins_of(engine, trainings)
+    margins = margins_of(engine, trainings, asked.forbidden)
     attributes, classes = margins.ones.shape[2], engine.classes
     most = _most_p(asked.alpha, attributes, margins.testable)
     df = np.arange(1, classes + 1)
@@ -137,7 +137,7 @@ def _prepared(engine: LocalEngine, planes: Planes, trainings: Sequence[Training]
     counts = np.arange(int(margins.records.max(initial=1)) + 1, dtype=np.float64)
     logs = counts * np.log(np.maximum(counts, 1.0))
     sums = sums_of(np.stack([training.mask for training in trainings]))
-    return _Pass(planes, tuple(trainings), margins, sums, asked, limits, tails, deviates, logs, np.zeros(len(trainings), np.int64))
+    return _Pass(planes, tuple(trainings), margins, sums, asked, limits, tails, deviates, logs)
 
 
 def _most_p(alpha: float, attributes: int, testable: np.ndarray) -> np.ndarray:
@@ -228,7 +228,7 @@ def _work(attributes: int) -> list[tuple[int, int, int, int]]:
         for start in range(0, first + width, _RUN):
             stop = min(start + _RUN, first + width)
             work.append((first, start, stop, (stop - start) * width))
-    order = np.random.default_rng(0).permutation(len(work))
+    order = np.argsort(keyed_hash(0, np.arange(len(work))), kind="stable")
     return [work[place] for place in order]
 
 
@@ -329,7 +329,7 @@ def _grown(
     forest = _strongest(now.forest.joined(new.take((what & FOREST) > 0)), group.attributes)
     if not asked.tested:
         return Grown(forest, now.sure, now.open_)
-    testable = int(group.margins.testable[s]) - group.barred[s]
+    testable = int(group.margins.testable[s])
     may = new.p * testable <= asked.alpha * (group.attributes - 1)
     return Grown(forest, *_settled(now.sure.joined(now.open_).joined(new.take(may)), group.attributes, testable, asked))
 

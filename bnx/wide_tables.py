@@ -6,7 +6,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from bnx.engines import LocalEngine
-from bnx.kernels.wide_counts import EVEN, UNEQUAL, VARIES, common_ones, kinds_of_margins
+from bnx.kernels.wide_counts import EVEN, UNEQUAL, common_ones, kinds_of_margins
 from bnx.kernels.wide_pairs import PARTS, A, B, MARGIN, Q, UNEVEN
 from bnx.trainings import Training
 
@@ -91,8 +91,13 @@ def sums_of(masks: np.ndarray) -> Sums:
     return Sums(np.array(plan, np.int64).reshape(-1, 3), level[:, 0].astype(np.int64), blocks + len(plan))
 
 
-def margins_of(engine: LocalEngine, trainings: Sequence[Training]) -> Margins:
-    """Take the margins of every training set, and the parts of the quick bounds that are an attribute's own."""
+def margins_of(
+    engine: LocalEngine, trainings: Sequence[Training], forbidden: frozenset[tuple[int, int]] = frozenset()
+) -> Margins:
+    """Take the margins of every training set, and the parts of the quick bounds that are an attribute's own.
+
+    forbidden: pairs that are not to be counted as testable.
+    """
     by_block = np.stack([margin[:, :, 1] for margin in engine.margins], axis=2)  # (blocks, C, n)
     ones = np.stack([by_block[training.mask].sum(axis=0) for training in trainings])
     records = np.stack([training.class_counts for training in trainings]).astype(np.float64)
@@ -107,17 +112,23 @@ def margins_of(engine: LocalEngine, trainings: Sequence[Training]) -> Margins:
     part[:, :, B] = np.where(varies, first**-3 + second**-3, 0.0)
     gap = (first - second) ** 2 / (first * second * np.maximum(total - 2.0, 1.0))
     part[:, :, UNEVEN] = np.where(varies, gap, 0.0)
-    testable = [_testable_pairs(kinds_of_margins(own, of.astype(np.int64))) for own, of in zip(ones, records, strict=True)]
-    return Margins(ones, records, part, np.array(testable))
+    kinds = [kinds_of_margins(own, of.astype(np.int64)) for own, of in zip(ones, records, strict=True)]
+    return Margins(ones, records, part, np.array([_testable_pairs(one, forbidden) for one in kinds]))
 
 
-def _testable_pairs(kinds: np.ndarray) -> int:
+def _testable_pairs(kinds: np.ndarray, forbidden: frozenset[tuple[int, int]]) -> int:
     """Count the pairs whose X2 can vary, given the kinds of margins (C, n)."""
     different, numbers = np.unique(kinds, axis=1, return_counts=True)
-    one, other = different[:, :, None], different[:, None, :]
-    can = (((one & other) & VARIES) > 0).any(axis=0) & (((one & other) & (EVEN | UNEQUAL)) > 0).any(axis=0)
+    can = _can_vary(different[:, :, None], different[:, None, :])
     together = np.outer(numbers, numbers) * can
-    return int((together.sum() - (numbers * np.diag(can)).sum()) // 2)
+    left, right = np.array(sorted(forbidden), np.int64).reshape(-1, 2).T
+    barred = _can_vary(kinds[:, left], kinds[:, right]).sum()
+    return int((together.sum() - (numbers * np.diag(can)).sum()) // 2 - barred)
+
+
+def _can_vary(one: np.ndarray, other: np.ndarray) -> np.ndarray:
+    """Tell which pairs of kinds (C, ...) share a part of X2's variance in some class."""
+    return np.asarray(((one & other & (EVEN | UNEQUAL)) > 0).any(axis=0))
 
 
 def joint_tables(joint: np.ndarray, left: np.ndarray, right: np.ndarray, records: np.ndarray) -> np.ndarray:

@@ -62,7 +62,36 @@ def check(seed: int, rows: int, attributes: int, classes: int, jobs: int = 1, **
             assert edges_of(edges) == {(min(edge), max(edge)) for edge in structure.edges}, structure.name
 
 
-@settings(max_examples=150, deadline=None)
+@settings(max_examples=60, deadline=None)
 @given(st.integers(0, 2**32), st.integers(12, 400), st.integers(2, 40), st.integers(1, 3), st.sampled_from([0.01, 0.05, 0.3]))
 def test_the_same_trees_as_from_a_matrix_of_all_pairs(seed, rows, attributes, classes, alpha):
     check(seed, rows, attributes, min(classes + 1, rows), alpha=alpha)
+
+
+def test_threads_change_nothing_in_a_forest():
+    table = rare_table(5, 500, 200, 2)
+    places = np.random.default_rng(5).integers(0, BLOCKS, 500)
+    found = []
+    for jobs in (1, 2, 3):
+        engine = started(table, places, BLOCKS, jobs)
+        trainings = sets_of(engine, make_view(table.schema, {}), 5, 40)
+        asked = Asked(0.05, rigour_of(LEARNERS, 200, Recipe("class")), True, frozenset())
+        found.append(grow_forests(engine, trainings, asked))
+    for one, two, three in zip(*found, strict=True):
+        for edges in (lambda grown: grown.forest, lambda grown: grown.sure):
+            assert edges_of(edges(one)) == edges_of(edges(two)) == edges_of(edges(three))
+            assert np.array_equal(np.sort(edges(one).bits), np.sort(edges(two).bits))
+
+
+@settings(max_examples=30, deadline=None)
+@given(st.integers(0, 2**32), st.integers(2, 30), st.integers(0, 60))
+def test_forbidden_pairs_take_no_part(seed, attributes, forbidden):
+    random = np.random.default_rng(seed)
+    ends = {tuple(sorted(random.choice(attributes, 2, replace=False).tolist())) for _ in range(forbidden)}
+    check(seed, 150, attributes, 2, forbid=tuple(f"a{i}:a{j}" for i, j in ends))
+
+
+def test_buffers_that_overflow_change_nothing(monkeypatch):
+    monkeypatch.setattr("bnx.wide._CAPACITY", 130)
+    monkeypatch.setattr("bnx.wide._RUN", 16)
+    check(3, 300, 150, 2)

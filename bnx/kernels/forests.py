@@ -6,12 +6,13 @@ log2(n). The weakest link on the path between two attributes in the forest is th
 """
 
 import numpy as np
-from numba import njit
+
+from bnx.kernels.compiling import kernel, part
 
 __all__ = ["bottleneck", "bounds_to_root", "directed", "grow", "joins_in_order"]
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def grow(left: np.ndarray, right: np.ndarray, strength: np.ndarray, parent: np.ndarray, link: np.ndarray) -> np.ndarray:
     """Grow a forest from edges in order, strongest first; an edge that closes a cycle is left out.
 
@@ -50,7 +51,7 @@ def grow(left: np.ndarray, right: np.ndarray, strength: np.ndarray, parent: np.n
     return kept
 
 
-@njit(nogil=True, cache=True)
+@part
 def _root(parent: np.ndarray, x: int) -> int:
     """Walk up to the root."""
     while parent[x] != x:
@@ -58,7 +59,7 @@ def _root(parent: np.ndarray, x: int) -> int:
     return x
 
 
-@njit(nogil=True, cache=True)
+@part
 def bottleneck(parent: np.ndarray, link: np.ndarray, i: int, j: int) -> float:
     """Find the weakest link between two attributes in a forest; minus infinity where nothing joins them.
 
@@ -75,7 +76,7 @@ def bottleneck(parent: np.ndarray, link: np.ndarray, i: int, j: int) -> float:
     return weakest
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def bounds_to_root(parent: np.ndarray, link: np.ndarray) -> np.ndarray:
     """Find the weakest link between every attribute and the root of the largest tree, float64 (n,).
 
@@ -100,7 +101,7 @@ def bounds_to_root(parent: np.ndarray, link: np.ndarray) -> np.ndarray:
     return bound
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def joins_in_order(left: np.ndarray, right: np.ndarray, attributes: int) -> np.ndarray:
     """Count the edges of the forest grown from the first 1, 2, ... pairs, int64 (E,)."""
     parent = np.arange(attributes)
@@ -121,7 +122,7 @@ def joins_in_order(left: np.ndarray, right: np.ndarray, attributes: int) -> np.n
     return edges
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def directed(left: np.ndarray, right: np.ndarray, order: np.ndarray) -> np.ndarray:
     """Direct every tree of a forest away from the first of its attributes in ``order``: parents (n,), -1 without one.
 

@@ -1,17 +1,17 @@
 """What the scan of very many binary attributes needs to know beforehand: joint counts of a few pairs, and margins."""
 
 import numpy as np
-from numba import njit
 
+from bnx.kernels.bits import ones
+from bnx.kernels.compiling import kernel
 from bnx.kernels.contingency import _spread
-from bnx.kernels.counting import _ones
 
 __all__ = ["EVEN", "UNEQUAL", "VARIES", "common_ones", "kinds_of_margins"]
 
 VARIES, EVEN, UNEQUAL = 1, 2, 4  # of a margin: both levels occur; the parts of X2's variance that do not vanish
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def common_ones(planes: np.ndarray, words: np.ndarray, left: np.ndarray, right: np.ndarray) -> np.ndarray:
     """Count the records that have both attributes of each pair, by group: int32 (P, G).
 
@@ -22,11 +22,11 @@ def common_ones(planes: np.ndarray, words: np.ndarray, left: np.ndarray, right: 
         one, other = planes[left[p]], planes[right[p]]
         for g in range(words.size - 1):
             for w in range(words[g], words[g + 1]):
-                counts[p, g] += np.int32(_ones(one[w] & other[w]))
+                counts[p, g] += np.int32(ones(one[w] & other[w]))
     return counts
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def kinds_of_margins(margins: np.ndarray, records: np.ndarray) -> np.ndarray:
     """Say of each class and attribute what decides whether X2 can vary, int8 (C, n): a sum of VARIES, EVEN, UNEQUAL.
 

@@ -13,9 +13,9 @@ Source: Karger, Klein & Tarjan 1995 (an edge weaker than all links between its e
 """
 
 import numpy as np
-from numba import njit
 
-from bnx.kernels.counting import _ones
+from bnx.kernels.bits import ones
+from bnx.kernels.compiling import kernel, part
 from bnx.kernels.forests import bottleneck
 from bnx.kernels.skewness import third_moment
 
@@ -30,25 +30,25 @@ _ROUNDING = np.float32(1.0 + 1e-4)  # of single precision, many times over
 _SLIGHT = np.float32(1e-4)
 
 
-@njit(nogil=True, cache=True)
-def _count_tile(own: np.ndarray, planes: np.ndarray, words: np.ndarray, ones: np.ndarray, leaves: np.ndarray) -> None:
+@part
+def _count_tile(own: np.ndarray, planes: np.ndarray, words: np.ndarray, sums: np.ndarray, leaves: np.ndarray) -> None:
     """Count the records that one attribute and each of a tile have in common, by group.
 
     own (words,) uint64: a bit per record of the one attribute; planes (words, tile): of the others; words (G + 1,):
-    first word of each group; ones (tile,) uint64: scratch; leaves (G, tile): counts.
+    first word of each group; sums (tile,) uint64: scratch; leaves (G, tile): counts.
     """
     for g in range(words.size - 1):
-        ones[:] = 0
+        sums[:] = 0
         for w in range(words[g], words[g + 1]):
             x, plane = own[w], planes[w]
-            for k in range(ones.size):
-                ones[k] += _ones(plane[k] & x)
+            for k in range(sums.size):
+                sums[k] += ones(plane[k] & x)
         out = leaves[g]
-        for k in range(ones.size):
-            out[k] = ones[k]
+        for k in range(sums.size):
+            out[k] = sums[k]
 
 
-@njit(nogil=True, cache=True)
+@part
 def _add_up(plan: np.ndarray, nodes: np.ndarray) -> None:
     """Fill in the sums of a plan: node plan[k, 0] is the sum of two nodes filled in before; nodes (M, cells)."""
     for k in range(plan.shape[0]):
@@ -57,17 +57,17 @@ def _add_up(plan: np.ndarray, nodes: np.ndarray) -> None:
             out[cell] = one[cell] + other[cell]
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
-def _add_most(counts: np.ndarray, part: np.ndarray, first: int, records: float, i: int, most: np.ndarray) -> None:
-    """Add what the information of one class can be at most, nats x records; part (PARTS, n) of this class."""
-    margin, own = part[MARGIN, first : first + most.size], np.float64(part[MARGIN, i])
+@part
+def _add_most(counts: np.ndarray, known: np.ndarray, first: int, records: float, i: int, most: np.ndarray) -> None:
+    """Add what the information of one class can be at most, nats x records; known (PARTS, n) of this class."""
+    margin, own = known[MARGIN, first : first + most.size], np.float64(known[MARGIN, i])
     q, a, b = (
-        part[Q, first : first + most.size],
-        part[A, first : first + most.size],
-        part[B, first : first + most.size],
+        known[Q, first : first + most.size],
+        known[A, first : first + most.size],
+        known[B, first : first + most.size],
     )
     scale = np.float32(1.0 / records)
-    q_own, a_own, b_own = part[Q, i] * scale, part[A, i] * scale / np.float32(6.0), part[B, i] * scale / np.float32(3.0)
+    q_own, a_own, b_own = known[Q, i] * scale, known[A, i] * scale / np.float32(6.0), known[B, i] * scale / np.float32(3.0)
     half = np.float32(0.5)
     for k in range(most.size):
         d = np.float32(np.float64(counts[k]) * records - own * np.float64(margin[k]))
@@ -77,30 +77,30 @@ def _add_most(counts: np.ndarray, part: np.ndarray, first: int, records: float, 
         most[k] += min(x2, near)
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
-def _add_excess(counts: np.ndarray, part: np.ndarray, first: int, records: float, i: int, excess: np.ndarray) -> None:
+@part
+def _add_excess(counts: np.ndarray, known: np.ndarray, first: int, records: float, i: int, excess: np.ndarray) -> None:
     """Add X2 of one class less its mean under independence."""
-    margin, own = part[MARGIN, first : first + excess.size], np.float64(part[MARGIN, i])
-    q, q_own = part[Q, first : first + excess.size], part[Q, i] * np.float32(1.0 / records)
+    margin, own = known[MARGIN, first : first + excess.size], np.float64(known[MARGIN, i])
+    q, q_own = known[Q, first : first + excess.size], known[Q, i] * np.float32(1.0 / records)
     mean = np.float32(records / (records - 1.0)) if q_own > 0 else np.float32(0.0)
     for k in range(excess.size):
         d = np.float32(np.float64(counts[k]) * records - own * np.float64(margin[k]))
         excess[k] += d * d * (q[k] * q_own) - (mean if q[k] > 0 else np.float32(0.0))
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
-def _add_variance(part: np.ndarray, first: int, records: float, i: int, variance: np.ndarray) -> None:
+@part
+def _add_variance(known: np.ndarray, first: int, records: float, i: int, variance: np.ndarray) -> None:
     """Add the variance of X2 of one class under independence, which is linear in UNEVEN of the other attribute."""
-    if records < 3 or part[Q, i] == 0:
+    if records < 3 or known[Q, i] == 0:
         return
-    q, uneven = part[Q, first : first + variance.size], part[UNEVEN, first : first + variance.size]
-    flat, slope = _line(records, np.float64(part[UNEVEN, i]))
+    q, uneven = known[Q, first : first + variance.size], known[UNEVEN, first : first + variance.size]
+    flat, slope = _line(records, np.float64(known[UNEVEN, i]))
     start, rise = np.float32(flat - 1e-6 * (abs(flat) + abs(slope))), np.float32(slope)
     for k in range(variance.size):
         variance[k] += (start if q[k] > 0 else np.float32(0.0)) + rise * uneven[k]
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _line(records: float, uneven: float) -> tuple[float, float]:
     """Write the variance of X2 as flat + slope x UNEVEN of the other attribute.
 
@@ -111,10 +111,10 @@ def _line(records: float, uneven: float) -> tuple[float, float]:
     return even * both, records * records / (records - 1.0) * uneven - even
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _screen(
     counts: np.ndarray,
-    part: np.ndarray,
+    known: np.ndarray,
     records: np.ndarray,
     i: int,
     first: int,
@@ -128,15 +128,15 @@ def _screen(
 ) -> int:
     """Mark the pairs of a tile that the quick bounds cannot rule out, in ``hits`` (width,), and count them.
 
-    counts (C, cells): joint counts; part (C, PARTS, n); records (C,); low, low_tested (n,) float32: weakest links to
+    counts (C, cells): joint counts; known (C, PARTS, n); records (C,); low, low_tested (n,) float32: weakest links to
     the root, in both forests; limits: least excess of X2, and least square of it in variances, of a pair that could
     pass the test.
     """
     most, excess, variance, mark = work[0, :width], work[1, :width], work[2, :width], hits[:width]
     most[:] = 0
     for c in range(records.size):
-        if part[c, Q, i] > 0:
-            _add_most(counts[c], part[c], first, records[c], i, most)
+        if known[c, Q, i] > 0:
+            _add_most(counts[c], known[c], first, records[c], i, most)
     found = 0
     own, others = low[i], low[first : first + width]
     for k in range(width):
@@ -146,9 +146,9 @@ def _screen(
         excess[:] = 0
         variance[:] = 0
         for c in range(records.size):
-            if part[c, Q, i] > 0:
-                _add_excess(counts[c], part[c], first, records[c], i, excess)
-                _add_variance(part[c], first, records[c], i, variance)
+            if known[c, Q, i] > 0:
+                _add_excess(counts[c], known[c], first, records[c], i, excess)
+                _add_variance(known[c], first, records[c], i, variance)
         far, wide = np.float32(limits[0]), np.float32(limits[1])
         own, others = low_tested[i], low_tested[first : first + width]
         for k in range(width):
@@ -160,21 +160,21 @@ def _screen(
     return found
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
-def _nats(joint: np.ndarray, part: np.ndarray, records: np.ndarray, i: int, j: int, logs: np.ndarray) -> float:
+@part
+def _nats(joint: np.ndarray, known: np.ndarray, records: np.ndarray, i: int, j: int, logs: np.ndarray) -> float:
     """Compute nats x records of a pair from a table of n ln n."""
     total = 0.0
     for c in range(records.size):
-        rows, left, right, both = int(records[c]), int(part[c, MARGIN, i]), int(part[c, MARGIN, j]), joint[c]
+        rows, left, right, both = int(records[c]), int(known[c, MARGIN, i]), int(known[c, MARGIN, j]), joint[c]
         cells = logs[both] + logs[left - both] + logs[right - both] + logs[rows - left - right + both]
         total += cells - logs[left] - logs[rows - left] - logs[right] - logs[rows - right] + logs[rows]
     return total
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _may_pass(
     joint: np.ndarray,
-    part: np.ndarray,
+    known: np.ndarray,
     records: np.ndarray,
     i: int,
     j: int,
@@ -190,7 +190,7 @@ def _may_pass(
     """
     x2, df, mean, variance, third, below, least = 0.0, 0, 0.0, 0.0, 0.0, 0, np.inf
     for c in range(records.size):
-        rows, left, right = records[c], np.float64(part[c, MARGIN, i]), np.float64(part[c, MARGIN, j])
+        rows, left, right = records[c], np.float64(known[c, MARGIN, i]), np.float64(known[c, MARGIN, j])
         if min(left, rows - left) == 0.0 or min(right, rows - right) == 0.0:
             continue
         d = joint[c] * rows - left * right
@@ -224,21 +224,21 @@ def _may_pass(
     return bool(x2 - mean >= (deviate - 1e-3 * (1.0 + abs(deviate))) * spread)
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _uneven(margin: float, records: float) -> float:
     """Compute UNEVEN of an attribute with so many of the records."""
     gap = records - 2.0 * margin
     return gap * gap / (margin * (records - margin) * (records - 2.0))
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def scan_pairs(
     planes: np.ndarray,
     words: np.ndarray,
     plan: np.ndarray,
     wanted: np.ndarray,
     nodes: np.ndarray,
-    part: np.ndarray,
+    known: np.ndarray,
     records: np.ndarray,
     lows: np.ndarray,
     parents: np.ndarray,
@@ -265,7 +265,7 @@ def scan_pairs(
         plan: int64 (K, 3), sums over blocks, see ``_add_up``.
         wanted: int64 (S,), the node that holds each set's sum.
         nodes: unsigned (M, C, tile), scratch; the first nodes are the blocks.
-        part: float32 (S, C, PARTS, n).
+        known: float32 (S, C, PARTS, n).
         records: float64 (S, C).
         lows: float32 (2, S, n), weakest links to the root: in the forest of all pairs, in that of tested pairs.
         parents: int32 (2, S, n), trees of joins.
@@ -283,12 +283,12 @@ def scan_pairs(
     Returns:
         The first i that was not done: stop, or less where no room was left.
     """
-    sets, classes = part.shape[:2]
+    sets, classes = known.shape[:2]
     blocks = (words.size - 1) // classes
     tile = np.zeros((planes.shape[1], nodes.shape[2]), np.uint64)
     for k in range(width):
         tile[:, k] = planes[first + k]
-    ones = np.empty(nodes.shape[2], np.uint64)
+    sums = np.empty(nodes.shape[2], np.uint64)
     work = np.empty((3, nodes.shape[2]), np.float32)
     hits = np.empty(nodes.shape[2], np.uint8)
     margins = np.zeros((2, 2), np.int64)
@@ -300,12 +300,12 @@ def scan_pairs(
             return stop
         if numbers.max() + width > kept.shape[1]:
             return i
-        _count_tile(planes[i], tile, words, ones, leaves)
+        _count_tile(planes[i], tile, words, sums, leaves)
         _add_up(plan, flat)
         for s in range(sets):
             counts = nodes[wanted[s]]
             found = _screen(
-                counts, part[s], records[s], i, first, width, lows[0, s], lows[1, s], tested, limits[s], work, hits
+                counts, known[s], records[s], i, first, width, lows[0, s], lows[1, s], tested, limits[s], work, hits
             )
             if found == 0:
                 continue
@@ -316,14 +316,14 @@ def scan_pairs(
                     joint = joints[s, at]
                     for c in range(classes):
                         joint[c] = counts[c, k]
-                    nats = _nats(joint, part[s], records[s], i, j, logs) + slack
+                    nats = _nats(joint, known[s], records[s], i, j, logs) + slack
                     enters = 0
                     if nats >= min(lows[0, s, i], lows[0, s, j]) and nats >= bottleneck(parents[0, s], links[0, s], i, j):
                         enters = 1
                     if (
                         tested
                         and nats >= min(lows[1, s, i], lows[1, s, j])
-                        and _may_pass(joint, part[s], records[s], i, j, tails[s], deviates, margins)
+                        and _may_pass(joint, known[s], records[s], i, j, tails[s], deviates, margins)
                         and nats >= bottleneck(parents[1, s], links[1, s], i, j)
                     ):
                         enters |= 2
