@@ -47,9 +47,18 @@ class LocalEngine:
         """Rows of each block and class, int64 (blocks, C)."""
         return np.diff(self.starts).reshape(self.blocks, self.classes)
 
-    def rows_of(self, first_block: int, last_block: int) -> slice:
-        """Sorted rows of neighbouring blocks."""
-        return slice(int(self.starts[first_block * self.classes]), int(self.starts[last_block * self.classes]))
+    @property
+    def rows(self) -> int:
+        """Number of rows."""
+        return int(self.starts[-1])
+
+    def rows_of(self, first_block: int, last_block: int) -> list[slice]:
+        """Sorted rows of neighbouring blocks, a run for each time that the groups come round."""
+        groups = self.blocks * self.classes
+        return [
+            slice(int(self.starts[turn + first_block * self.classes]), int(self.starts[turn + last_block * self.classes]))
+            for turn in range(0, len(self.starts) - 1, groups)
+        ]
 
     def map(self, function: Callable[[Item], Result], items: Iterable[Item], stage: str = "") -> list[Result]:
         """Apply a function to items on this engine's threads; results keep the items' order.
