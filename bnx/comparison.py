@@ -135,7 +135,7 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
         recommendation=recommendation,
         held_out=held_out,
         left_out=coded.left_out,
-        warnings=(*coded.warnings, *_run_warnings(evaluations, coded, recipe, learners), *judged.notes, *not_scored),
+        warnings=(*_run_warnings(evaluations, coded, recipe, learners), *judged.notes, *not_scored, *coded.warnings),
         evaluations=tuple(evaluations),
         line_of_row=coded.table.rows,
     )

@@ -172,22 +172,39 @@ def against_entry(against: Against | None) -> dict[str, Any]:
 
 def pair_results(comparison: Comparison, everything: bool = False) -> list[TestResult]:
     """List tested pairs, most bits first: all up to 20,000, else the drawn, the rejected and the strongest."""
-    order = np.argsort(-comparison.judged.statistics.bits, kind="stable")
-    if len(order) > PAIRS_SHOWN and not everything:
-        order = order[_first(comparison, order)]
+    bits = comparison.judged.statistics.bits
+    chosen = np.arange(len(bits)) if everything or len(bits) <= PAIRS_SHOWN else _first(comparison)
+    order = chosen[np.argsort(-bits[chosen], kind="stable")]
     names = comparison.names
     left, right = comparison.pairs.left[order].tolist(), comparison.pairs.right[order].tolist()
     ends = [(names[i], names[j]) for i, j in zip(left, right, strict=True)]
     return comparison.judged.results(ends, order)
 
 
-def _first(comparison: Comparison, order: np.ndarray) -> np.ndarray:
-    """Choose places in ``order``: drawn pairs, then rejected ones, then the strongest, 20,000 in all."""
-    drawn = {frozenset((edge.parent, edge.child)) for edges in comparison.edges for edge in edges}
-    left, right = comparison.pairs.left[order].tolist(), comparison.pairs.right[order].tolist()
-    is_drawn = np.array([frozenset(ends) in drawn for ends in zip(left, right, strict=True)])
-    rank = np.where(is_drawn, 0, np.where(comparison.judged.judgement.rejected[order], 1, 2))
-    return np.sort(np.argsort(rank, kind="stable")[:PAIRS_SHOWN])
+def _first(comparison: Comparison) -> np.ndarray:
+    """Choose pairs: drawn ones, then rejected ones, then the strongest, 20,000 in all; in their own order."""
+    attributes, bits = len(comparison.names), comparison.judged.statistics.bits
+    left, right = comparison.pairs.left, comparison.pairs.right
+    ends = {tuple(sorted((edge.parent, edge.child))) for edges in comparison.edges for edge in edges}
+    number = np.array([a * attributes + b for a, b in ends], dtype=np.int64)
+    is_drawn = np.isin(np.minimum(left, right) * np.int64(attributes) + np.maximum(left, right), number)
+    rejected = comparison.judged.judgement.rejected
+    chosen = np.empty(0, np.int64)
+    for group in (is_drawn, rejected & ~is_drawn, ~rejected & ~is_drawn):
+        chosen = np.concatenate([chosen, _strongest(bits, np.flatnonzero(group), PAIRS_SHOWN - len(chosen))])
+    return np.sort(chosen)
+
+
+def _strongest(bits: np.ndarray, group: np.ndarray, most: int) -> np.ndarray:
+    """Take the members of a group with most bits, the first ones among equals, without sorting the others."""
+    if len(group) <= most:
+        return group
+    if not most:
+        return group[:0]
+    own = bits[group]
+    least = np.partition(own, -most)[-most]
+    above = group[own > least]
+    return np.concatenate([above, group[own == least][: most - len(above)]])
 
 
 def structure_document(comparison: Comparison, s: int) -> dict[str, Any]:
@@ -225,15 +242,15 @@ def structure_document(comparison: Comparison, s: int) -> dict[str, Any]:
 
 def picture_of(document: dict[str, Any]) -> Picture:
     """Turn a structure document into what a drawing shows."""
-    names = [attribute["name"] for attribute in document["attributes"]]
+    place = {attribute["name"]: number for number, attribute in enumerate(document["attributes"])}
     chips = tuple(
         Chip(one["name"], len(one["levels"]), document["bits_with_class"][one["name"]])
         for one in document["attributes"]
     )
     arrows = tuple(
         Arrow(
-            names.index(edge["parent"]),
-            names.index(edge["child"]),
+            place[edge["parent"]],
+            place[edge["child"]],
             edge["bits"],
             edge["verdict"],
             edge["gain"],

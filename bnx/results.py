@@ -3,7 +3,7 @@
 import json
 import shutil
 import tempfile
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from contextlib import contextmanager, suppress
 from itertools import chain
@@ -25,6 +25,7 @@ from bnx.documents import (
 from bnx.drawing import find_engine, render
 from bnx.engines.local import Progress
 from bnx.errors import DataError, EngineError, SettingError
+from bnx.picture import MANY_CHIPS
 from bnx.report import report_html
 from bnx.text import quoted
 from bnx.unfinished import unfinished
@@ -149,6 +150,7 @@ def write_results(
         (folder / f"{one['name']}.dot").write_text(drawings[one["name"]], encoding="utf-8")
     progress("drawings", 0, 0)
     pictures, notes = draw_all(drawings, jobs)
+    notes += _not_all_drawn(structures) if pictures else []
     progress("report", 0, 0)
     for name, picture in pictures.items():
         (folder / f"{name}.svg").write_text(picture, encoding="utf-8")
@@ -169,6 +171,17 @@ def write_predictions(comparison: Comparison, path: Path) -> None:
     with pq.ParquetWriter(path, first.schema) as writer:
         for part in chain([first], parts):
             writer.write_table(part)
+
+
+def _not_all_drawn(structures: Sequence[Mapping[str, Any]]) -> list[str]:
+    """Say what pictures of very many attributes leave out."""
+    names, attributes = [one["name"] for one in structures], len(structures[0]["attributes"])
+    if attributes <= MANY_CHIPS:
+        return []
+    return [
+        f"pictures show at most {MANY_CHIPS} of the {attributes:,} attributes, those that the strongest arrows join, "
+        f"and say how many; bnx draw {names[-1]}.json --everything draws all"
+    ]
 
 
 def draw_all(drawings: Mapping[str, str], jobs: int) -> tuple[dict[str, str], list[str]]:
