@@ -262,7 +262,7 @@ def predictions_table(comparison: Comparison) -> pa.Table:
         truth = pa.DictionaryArray.from_arrays(one.engine.target[back].astype(np.int32), pa.array(levels))
         for s, p in enumerate(one.p):
             columns = {
-                "row": comparison.line_of_row,
+                "row": comparison.lines.numbers(),
                 "repeat": np.full(rows, repeat),
                 "fold": fold[back],
                 "structure": pa.DictionaryArray.from_arrays(np.full(rows, s, np.int32), pa.array(names)),

@@ -23,10 +23,12 @@ from bnx.cli.shared import (
     Overwrite,
     Quiet,
     Seed,
+    SpillFolder,
     Test,
     progress_bar,
     recipe_of,
     say,
+    store_of,
     threads,
 )
 from bnx.cli.summary import summary
@@ -100,6 +102,7 @@ def run(
     predictions: Annotated[bool, typer.Option("--predictions", help="Also write out-of-fold probabilities.")] = False,
     all_pairs: Annotated[bool, typer.Option("--all-pairs", help="Also write every pair to pairs.parquet.")] = False,
     jobs: Jobs = 0,
+    spill: SpillFolder = None,
     overwrite: Overwrite = False,
     json_out: JsonOut = False,
     quiet: Quiet = False,
@@ -116,7 +119,7 @@ def run(
         source = open_source(data)
         recipe = recipe_of(ctx, source)
         held_out = None if holdout is None else open_source(holdout)
-        comparison = compare(source, recipe, number, progress, held_out)
+        comparison = compare(source, recipe, number, progress, held_out, store_of(spill))
         document, notes = write_results(comparison, folder, number, predictions, all_pairs)
     text = json.dumps(document, ensure_ascii=False, allow_nan=False) if json_out else summary(document, output)
     typer.echo(text)

@@ -25,6 +25,7 @@ from bnx.cli.shared import (
     Overwrite,
     Quiet,
     Seed,
+    SpillFolder,
     Test,
     Theme,
     check_spared,
@@ -33,6 +34,7 @@ from bnx.cli.shared import (
     progress_bar,
     recipe_of,
     say,
+    store_of,
     threads,
 )
 from bnx.errors import SettingError
@@ -100,6 +102,7 @@ def run(
     max_levels: MaxLevels = Recipe.max_levels,
     seed: Seed = Recipe.seed,
     jobs: Jobs = 0,
+    spill: SpillFolder = None,
     overwrite: Overwrite = False,
     json_out: JsonOut = False,
     quiet: Quiet = False,
@@ -117,7 +120,7 @@ def run(
     orders = parse_ordered([one for value in ordered or () for one in _orders(value, names)], names)
     asked = Asked(tuple(attributes or ()), listed("given", given, names), every, orders, explain, close)
     with progress_bar(quiet) as tell:
-        found = run_pair_tests(source, recipe_of(ctx, source), asked, number, tell)
+        found = run_pair_tests(source, recipe_of(ctx, source), asked, number, tell, store_of(spill))
     if json_out:
         typer.echo(json.dumps(finite(found.to_dict(strata)), ensure_ascii=False, allow_nan=False, indent=1))
     else:
