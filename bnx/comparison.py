@@ -1,7 +1,7 @@
 """The main job: one table in; structures learnt, tested, cross-validated on the same folds, and one recommended."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from hashlib import sha256
 from pathlib import PurePath
 
@@ -11,12 +11,13 @@ from bnx.choosing import Choice
 from bnx.classifier import Classifier
 from bnx.coding import Coded
 from bnx.dealing import deal
-from bnx.dependence import Pairs
+from bnx.dependence import Pairs, measure
 from bnx.encoding import encode
-from bnx.engines import start_local
+from bnx.engines import LocalEngine, start_local
 from bnx.engines.local import Progress
 from bnx.errors import DataError, SettingError
 from bnx.evaluation import Evaluation, evaluate
+from bnx.families import PairRequests
 from bnx.folds import sub_blocks
 from bnx.gains import edge_gains
 from bnx.gating import Bounds
@@ -36,6 +37,7 @@ from bnx.storing import MEMORY, Store
 from bnx.structure import Structure
 from bnx.tables import LeftOut, Lines
 from bnx.text import count_of
+from bnx.trainings import Training
 
 __all__ = ["Comparison", "compare"]
 
@@ -93,9 +95,8 @@ def compare(
     Raises:
         DataError, SettingError, StructureError: the table or a setting cannot be used.
     """
-    progress("reading", 0, 1)
+    progress("reading", 0, 0)
     coded = recipe.code(source, jobs, store)
-    progress("reading", 1, 1)
     if holdout:
         holdout.check([*coded.table.schema.names, recipe.target])
     bounds = make_bounds(recipe, coded.table.schema.names)
@@ -104,17 +105,29 @@ def compare(
     gains = [fold for one in evaluations for fold in edge_gains(one)]
     first = evaluations[0]
     learned = first.learned(())
-    stable = stability(first.engine, learned.training.view, folds, learners, bounds, recipe)
+    progress("stability", 0, 0)
+    stable = stability(_under("stability", first.engine), learned.training.view, folds, learners, bounds, recipe)
     results = score(evaluations, first.engine)
     baseline = recipe.structures.index(recipe.baseline)
-    visit = visit_families(first.engine, [learned.training], learned.pairs.requests(0))
-    domains = learned.training.view.domains
-    ends = [(domains[i], domains[j]) for i, j in zip(learned.pairs.left, learned.pairs.right, strict=True)]
-    judged = judge_pairs(
-        visit, Statistics.of(learned.pairs.statistics), Statistics.of(learned.pairs.marginal), ends, recipe
-    )
+    progress("judging pairs", 0, 0)
+    dependence, pairs = measure(first.engine, [learned.training], marginal_of_first=True)[0]
+    judged = _judged(first.engine, learned.training, pairs, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
+    progress("scoring", 0, 0)
     held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
+    recommendation = recommend(evaluations, results, recipe.structures, folds)
+    progress("edge ledger", 0, 0)
+    ledgers = edge_ledger(
+        replace(first, engine=_under("edge ledger", first.engine)),
+        dependence.strength,
+        gains,
+        stable,
+        learners,
+        bounds,
+        recipe,
+        folds,
+    )
+    progress("reading", 0, 0)
     return Comparison(
         recipe=recipe,
         source=PurePath(source.name).name,
@@ -122,19 +135,32 @@ def compare(
         rows=len(coded.table.target),
         folds=folds,
         classifiers=classifiers,
-        relevance=learned.dependence.relevance,
-        pairs=learned.pairs,
+        relevance=dependence.relevance,
+        pairs=pairs,
         judged=judged,
         results=tuple(results),
         against=tuple(against(results, baseline, folds)),
-        edges=tuple(edge_ledger(first, gains, stable, learners, bounds, recipe, folds)),
-        recommendation=recommend(evaluations, results, recipe.structures, folds),
+        edges=tuple(ledgers),
+        recommendation=recommendation,
         held_out=held_out,
         left_out=coded.left_out,
         warnings=(*coded.warnings, *_run_warnings(evaluations, coded, recipe, learners), *judged.notes, *not_scored),
         evaluations=tuple(evaluations),
         lines=coded.table.lines,
     )
+
+
+def _judged(engine: LocalEngine, training: Training, pairs: Pairs, recipe: Recipe) -> JudgedPairs:
+    """Test and judge all pairs on all rows."""
+    domains = training.view.domains
+    visit = visit_families(engine, [training], PairRequests(0, pairs.left, pairs.right))
+    ends = [(domains[i], domains[j]) for i, j in zip(pairs.left, pairs.right, strict=True)]
+    return judge_pairs(visit, Statistics.of(pairs.statistics), Statistics.of(pairs.marginal), ends, recipe)
+
+
+def _under(stage: str, engine: LocalEngine) -> LocalEngine:
+    """Let an engine tell of everything it does as one stage."""
+    return replace(engine, progress=lambda *_: engine.progress(stage, 0, 0))
 
 
 def _evaluations(
@@ -151,6 +177,7 @@ def _evaluations(
     dealt: list[bytes] = []
     folds = recipe.folds
     for repeat in range(recipe.repeats):
+        progress("dealing folds", 0, 0)
         blocks, folds = deal(coded, recipe, repeat, jobs, store)
         digest = sha256(blocks.data).digest() if recipe.repeats > 1 else b""
         if digest in dealt:
@@ -160,6 +187,7 @@ def _evaluations(
             )
         dealt.append(digest)
         number = folds * sub_blocks(folds)
+        progress("sorting rows", 0, 0)
         engine = start_local(coded.table, blocks, number, jobs, progress, store, in_place=recipe.repeats == 1)
         evaluations.append(evaluate(engine, coded.table.schema, folds, learners, bounds, recipe))
     return evaluations, folds

@@ -64,7 +64,7 @@ def evaluate(
     trials, losses = [], []
     for kind in kinds:
         trainings = make_trainings(engine, schema, masks, kind, recipe.max_levels)
-        trial = make_trial(engine, kind, learn(engine, trainings, learners, bounds, recipe, marginal_of_first=True))
+        trial = make_trial(engine, kind, learn(engine, trainings, learners, bounds, recipe))
         trials.append(trial)
         if choices_open:
             losses.append(inner_losses(engine, trial, sample, options, recipe.temperature))

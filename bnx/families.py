@@ -2,7 +2,8 @@
 
 from collections import defaultdict
 from collections.abc import Callable, Iterable, Sequence
-from typing import TypeVar
+from dataclasses import dataclass
+from typing import TypeVar, overload
 
 import numpy as np
 
@@ -10,12 +11,37 @@ from bnx.counts import sum_blocks
 from bnx.engines import LocalEngine
 from bnx.trainings import Training
 
-__all__ = ["Request", "for_each_family"]
+__all__ = ["PairRequests", "Request", "for_each_family"]
 
 Result = TypeVar("Result")
 Request = tuple[int, tuple[int, ...]]  # (number of the training set, members with the child last)
 
 _DENSE = 8  # a family is counted by block when its cells over all blocks and classes are at most this many per row
+
+
+@dataclass(frozen=True)
+class PairRequests(Sequence[Request]):
+    """Requests of all pairs of ``left``, ``right`` (P,) in one training set, made when they are looked at."""
+
+    training: int
+    left: np.ndarray
+    right: np.ndarray
+
+    def __len__(self) -> int:
+        """Count the pairs."""
+        return len(self.left)
+
+    @overload
+    def __getitem__(self, place: int) -> Request: ...
+
+    @overload
+    def __getitem__(self, place: slice) -> "PairRequests": ...
+
+    def __getitem__(self, place: int | slice) -> "Request | PairRequests":
+        """Name one pair as (number of the training set, members), or keep some."""
+        if isinstance(place, slice):
+            return PairRequests(self.training, self.left[place], self.right[place])
+        return self.training, (int(self.left[place]), int(self.right[place]))
 
 
 def for_each_family(

@@ -12,11 +12,11 @@ PACKAGE = ROOT / "bnx"
 # A module imports from lower floors, and on its own floor from modules to its left. A package counts as one module.
 FLOORS = (
     "bnx errors text palette plain unfinished",
-    "kernels calibrating counts discretising domains dot_text embedding files storing cells "
+    "kernels calibrating counts tiles discretising domains dot_text embedding files storing cells "
     "folds layers losses branching multiplicity paired picture structure svg effects ordered loglinear "
     "fibre homogeneity",
     "tables views blocks columns columnar delimited malformed reading levelling screening duplicates level_order",
-    "coarsening gathering passes coding encoding engines",
+    "coarsening gathering passes coding encoding pair_counting engines",
     "parameters trainings dependence families profiling",
     "independence classifier intervals refining sampling scoring verdicts explaining pair_details",
     "gating drawing formats showing",

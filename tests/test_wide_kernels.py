@@ -5,8 +5,9 @@ import pytest
 from builders import coded, started
 
 from bnx.counts import PairLayout
-from bnx.kernels import pack_planes, rank_sums, sort_whole
+from bnx.kernels import rank_sums, sort_whole
 from bnx.kernels.exponentials import exponentials
+from bnx.kernels.planes import pack_planes
 
 
 def test_exponentials_are_those_of_numpy() -> None:
@@ -47,12 +48,12 @@ def test_the_area_counts_pairs_and_halves_of_ties() -> None:
 def test_every_word_of_a_plane_is_written(kind: type, levels: int, rows: int) -> None:
     before = 7
     codes = np.random.default_rng(rows).integers(0, levels, before + rows).astype(kind)
-    planes = np.full((levels - 1, (rows + 63) // 64), 12345, np.uint64)
+    planes = np.full(((rows + 63) // 64, levels - 1), 12345, np.uint64)
     pack_planes(codes, before, rows, levels, planes)
     for level in range(levels - 1):
-        bits = np.zeros(planes.shape[1] * 64, np.uint8)
+        bits = np.zeros(planes.shape[0] * 64, np.uint8)
         bits[:rows] = codes[before:] == level
-        assert (planes[level] == np.packbits(bits, bitorder="little").view("<u8")).all()
+        assert (planes[:, level] == np.packbits(bits, bitorder="little").view("<u8")).all()
 
 
 @pytest.mark.parametrize("levels", [(32, 31), (31, 3), (40, 2), (60, 60)])

@@ -9,7 +9,8 @@ from typing import TypeVar
 import numpy as np
 
 from bnx.counts import FamilyCounts, PairCounts, PairLayout
-from bnx.kernels import complete_pairs, count_cells, count_pairs
+from bnx.kernels import count_cells
+from bnx.pair_counting import count_layout
 from bnx.storing import MEMORY, Store
 from bnx.tables import CodedTable
 from bnx.views import View
@@ -84,6 +85,8 @@ class LocalEngine:
         step = max(1, min(_RUN, len(work) // (8 * self.jobs)))
         runs = [work[start : start + step] for start in range(0, len(work), step)]
         results: list[Result] = []
+        if stage:
+            self.progress(stage, 0, len(work))
         with ThreadPoolExecutor(self.jobs) as pool:
             for found in pool.map(lambda run: [function(item) for item in run], runs):
                 results += found
@@ -108,31 +111,8 @@ class LocalEngine:
 
     def pair_counts(self, layout: PairLayout) -> PairCounts:
         """Count pairs of attributes, as stored, by block and class."""
-        starts, whole = self._parts()
-        found = np.zeros((len(starts) - 1, layout.offsets[-1]), np.int32)
-        pairs = (layout.left, layout.right, layout.offsets)
-        self.map(
-            lambda part: count_pairs(self.codes, starts, self.sizes, *pairs, *part, found),
-            _shares(len(starts) - 1, 4 * self.jobs),
-        )
-        out = found if len(whole) == len(starts) - 1 else np.add.reduceat(found, whole, axis=0, dtype=np.int32)
-        if len(whole) > self.blocks * self.classes:
-            out = out.reshape(-1, self.blocks * self.classes, out.shape[1]).sum(axis=0, dtype=np.int32)
-        flat = [margin.reshape(len(out), -1) for margin in self.margins]
-        margins = np.ascontiguousarray(np.concatenate(flat, axis=1))
-        margin_starts = np.concatenate([[0], np.cumsum(self.sizes)]).astype(np.int64)
-        self.map(
-            lambda part: complete_pairs(margins, margin_starts, self.sizes, *pairs, *part, out),
-            _shares(len(out), self.jobs),
-        )
-        return PairCounts(layout, out.reshape(self.blocks, self.classes, -1))
-
-    def _parts(self) -> tuple[np.ndarray, np.ndarray]:
-        """Cut large groups so that all threads have work: the starts of the parts, and each group's first part."""
-        most = max(1, self.rows // (8 * self.jobs)) if self.jobs > 1 else max(1, self.rows)
-        cuts = [np.arange(low, max(high, low + 1), most) for low, high in pairwise(self.starts.tolist())]
-        whole = np.concatenate([[0], np.cumsum([len(cut) for cut in cuts])[:-1]]).astype(np.int64)
-        return np.concatenate([*cuts, self.starts[-1:]]).astype(np.int64), whole
+        margins = np.concatenate(self.margins, axis=2)
+        return count_layout(self.codes, self.sizes, self.starts, margins, layout, self.jobs, self.map)
 
     def family_counts(self, members: Sequence[int], view: View) -> FamilyCounts:
         """Count a family of attributes that ``view`` leaves as stored, by block and class."""
@@ -152,12 +132,6 @@ class LocalEngine:
         plain = view.all_plain(members)
         count_cells(self.codes, view.recode, plain, np.array(members), sizes, self.starts, slots, out)
         return out
-
-
-def _shares(number: int, parts: int) -> list[tuple[int, int]]:
-    """Cut a run of numbers into even shares, as (first, last) each."""
-    bounds = np.linspace(0, number, min(parts, max(number, 1)) + 1).astype(int).tolist()
-    return list(pairwise(bounds))
 
 
 def _chunks(rows: int, chunk: int) -> list[slice]:

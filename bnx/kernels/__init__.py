@@ -3,18 +3,15 @@
 Every loop releases the interpreter lock, so callers may run several on threads; none reassociates float sums.
 """
 
-from bnx.kernels.counting import complete_pairs, count_cells, count_pairs, number_cells, pack_planes
+from bnx.kernels.counting import count_cells, number_cells
 from bnx.kernels.ranking import rank_sums, sort_whole
 from bnx.kernels.scoring import add_terms, calibrated_loss, smoothed_tables, tempered_losses
 
 __all__ = [
     "add_terms",
     "calibrated_loss",
-    "complete_pairs",
     "count_cells",
-    "count_pairs",
     "number_cells",
-    "pack_planes",
     "rank_sums",
     "smoothed_tables",
     "sort_whole",

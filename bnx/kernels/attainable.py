@@ -3,12 +3,14 @@
 import math
 
 import numpy as np
-from numba import njit
+
+from bnx.kernels.compiling import kernel, part
+from bnx.kernels.margins import margins
 
 __all__ = ["least_p"]
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def least_p(counts: np.ndarray, height: int, width: int) -> float:
     """Bound from below the probability of every table with these margins, hence the p of every exact test of them.
 
@@ -25,18 +27,28 @@ def least_p(counts: np.ndarray, height: int, width: int) -> float:
     Source: Tarone 1990 (the use of such a bound).
     """
     logarithm = 0.0
+    down, across = np.empty(height, np.int64), np.empty(width, np.int64)
     for s in range(counts.shape[0]):
-        table = counts[s].reshape(height, width).astype(np.int64)
-        down = -np.sort(-table.sum(axis=1))
-        across = -np.sort(-table.sum(axis=0))
+        total = margins(counts, s, 0, height, width, down, across)
+        _sort_falling(down)
+        _sort_falling(across)
         cells = min(_fullest(down, across), _fullest(across, down))
-        logarithm += (
-            _sum_of_log_factorials(down) + _sum_of_log_factorials(across) - math.lgamma(down.sum() + 1.0) - cells
-        )
+        logarithm += _sum_of_log_factorials(down) + _sum_of_log_factorials(across) - math.lgamma(total + 1.0) - cells
     return min(1.0, math.exp(logarithm))
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
+def _sort_falling(totals: np.ndarray) -> None:
+    """Sort a few totals in place, the largest first."""
+    for k in range(1, totals.size):
+        total, place = totals[k], k
+        while place > 0 and totals[place - 1] < total:
+            totals[place] = totals[place - 1]
+            place -= 1
+        totals[place] = total
+
+
+@part
 def _fullest(lines: np.ndarray, caps: np.ndarray) -> float:
     """Sum ln(n!) over lines that each fill the largest caps first; caps fall."""
     result = 0.0
@@ -50,7 +62,7 @@ def _fullest(lines: np.ndarray, caps: np.ndarray) -> float:
     return result
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _sum_of_log_factorials(totals: np.ndarray) -> float:
     """Sum ln(k!) over totals."""
     result = 0.0

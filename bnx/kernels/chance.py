@@ -3,14 +3,16 @@
 import math
 
 import numpy as np
-from numba import njit
+
+from bnx.kernels.compiling import kernel, part
+from bnx.kernels.margins import margins, used
 
 __all__ = ["expected_nats"]
 
 _NEGLIGIBLE = 1e-17  # chances that no longer matter
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def expected_nats(counts: np.ndarray, height: int, width: int) -> float:
     """Find the mean of the sum of n ln(n / E) over strata when rows and columns are independent, in nats x records.
 
@@ -25,27 +27,26 @@ def expected_nats(counts: np.ndarray, height: int, width: int) -> float:
     Source: Vinh, Epps & Bailey 2010 (the mean of mutual information given the margins).
     """
     result = 0.0
+    down, across = np.empty(height, np.int64), np.empty(width, np.int64)
     for s in range(counts.shape[0]):
-        table = counts[s].reshape(height, width).astype(np.int64)
-        down, across = table.sum(axis=1), table.sum(axis=0)
-        total = down.sum()
-        if np.count_nonzero(down) < 2 or np.count_nonzero(across) < 2:
+        total = margins(counts, s, 0, height, width, down, across)
+        if used(down, height) < 2 or used(across, width) < 2:
             continue
-        result += _weighed(total) - _all_weighed(down) - _all_weighed(across)
+        result += _weighed(float(total)) - _all_weighed(down) - _all_weighed(across)
         for row in down:
             for column in across:
                 if row > 0 and column > 0:
-                    result += _mean_weighed(row, column, total)
+                    result += _mean_weighed(int(row), int(column), total)
     return result
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _weighed(count: float) -> float:
     """Compute n ln n."""
     return count * math.log(count) if count > 0.0 else 0.0
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _all_weighed(totals: np.ndarray) -> float:
     """Sum n ln n over totals."""
     result = 0.0
@@ -54,7 +55,7 @@ def _all_weighed(totals: np.ndarray) -> float:
     return result
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _mean_weighed(row: int, column: int, total: int) -> float:
     """Find the mean of n ln n in a cell, outward from the mode so that no chance underflows early."""
     low, high = max(0, row + column - total), min(row, column)

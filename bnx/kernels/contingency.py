@@ -5,8 +5,9 @@ column is not *informative*: its records count, but it adds nothing to a statist
 """
 
 import numpy as np
-from numba import njit
 
+from bnx.kernels.compiling import kernel, part
+from bnx.kernels.margins import margins, used
 from bnx.kernels.skewness import third_moment
 
 __all__ = [
@@ -26,6 +27,7 @@ __all__ = [
     "X2_MEAN",
     "X2_THIRD",
     "X2_VARIANCE",
+    "add_table",
     "one_table",
     "table_statistics",
 ]
@@ -50,7 +52,7 @@ COLUMNS = 15
 _ROUNDING = 1e-13
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def table_statistics(counts: np.ndarray, offsets: np.ndarray, heights: np.ndarray, widths: np.ndarray) -> np.ndarray:
     """Compute the statistics of P tables, each over the same S strata.
 
@@ -70,21 +72,30 @@ def table_statistics(counts: np.ndarray, offsets: np.ndarray, heights: np.ndarra
     """
     tables = offsets.size
     result = np.zeros((tables, COLUMNS))
-    down = np.empty(max(1, heights.max()) if tables else 1, dtype=np.int64)
-    across = np.empty(max(1, widths.max()) if tables else 1, dtype=np.int64)
+    tallest, widest = 1, 1
     for p in range(tables):
-        row = result[p]
-        row[MIN_EXPECTED] = np.inf
-        for s in range(counts.shape[0]):
-            total = _margins(counts, s, offsets[p], heights[p], widths[p], down, across)
-            if total > 0:
-                row[ROWS] += total
-                row[STRATA] += 1.0
-                _add_stratum(counts, s, offsets[p], heights[p], widths[p], down, across, total, row)
-        row[NATS] = max(0.0, row[NATS])
-        if row[INFORMATIVE] == 0.0:
-            row[MIN_EXPECTED] = np.nan
+        tallest, widest = max(tallest, heights[p]), max(widest, widths[p])
+    down, across = np.empty(tallest, np.int64), np.empty(widest, np.int64)
+    for p in range(tables):
+        add_table(counts, offsets[p], heights[p], widths[p], down, across, result[p])
     return result
+
+
+@part
+def add_table(
+    counts: np.ndarray, offset: int, height: int, width: int, down: np.ndarray, across: np.ndarray, row: np.ndarray
+) -> None:
+    """Write the statistics of one table to a row (COLUMNS,) of zeros; down, across: room for its margins."""
+    row[MIN_EXPECTED] = np.inf
+    for s in range(counts.shape[0]):
+        total = margins(counts, s, offset, height, width, down, across)
+        if total > 0:
+            row[ROWS] += total
+            row[STRATA] += 1.0
+            _add_stratum(counts, s, offset, height, width, down, across, total, row)
+    row[NATS] = max(0.0, row[NATS])
+    if row[INFORMATIVE] == 0.0:
+        row[MIN_EXPECTED] = np.nan
 
 
 def one_table(counts: np.ndarray, height: int, width: int) -> np.ndarray:
@@ -93,28 +104,7 @@ def one_table(counts: np.ndarray, height: int, width: int) -> np.ndarray:
     return row
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
-def _margins(
-    counts: np.ndarray, s: int, offset: int, height: int, width: int, down: np.ndarray, across: np.ndarray
-) -> int:
-    """Fill the row and column totals of one stratum and return its records."""
-    for j in range(width):
-        across[j] = 0
-    total = 0
-    cell = offset
-    for i in range(height):
-        records = 0
-        for j in range(width):
-            count = counts[s, cell + j]
-            across[j] += count
-            records += count
-        down[i] = records
-        total += records
-        cell += width
-    return total
-
-
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _add_stratum(
     counts: np.ndarray,
     s: int,
@@ -127,8 +117,8 @@ def _add_stratum(
     row: np.ndarray,
 ) -> None:
     """Add one stratum that holds records to the statistics of its table."""
-    r = _used(down, height)
-    c = _used(across, width)
+    r = used(down, height)
+    c = used(across, width)
     if r < 2 or c < 2:
         return
     _add_cells(counts, s, offset, height, width, down, across, float(total), row)
@@ -142,16 +132,7 @@ def _add_stratum(
     row[LEVELS] = max(row[LEVELS], float(max(r, c)))
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
-def _used(totals: np.ndarray, size: int) -> int:
-    """Count the levels that hold a record."""
-    used = 0
-    for k in range(size):
-        used += totals[k] > 0
-    return used
-
-
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _add_cells(
     counts: np.ndarray,
     s: int,
@@ -190,7 +171,7 @@ def _add_cells(
     row[BELOW_5] += below
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _variance(down: np.ndarray, height: int, r: int, across: np.ndarray, width: int, c: int, total: float) -> float:
     """Compute the exact variance of X2 in one stratum whose margins are fixed.
 
@@ -209,7 +190,7 @@ def _variance(down: np.ndarray, height: int, r: int, across: np.ndarray, width: 
     return variance
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _spread(totals: np.ndarray, size: int, used: int, total: float) -> tuple[float, float]:
     """Split a margin into v - w and w of the variance formula; both exactly 0 where they vanish.
 

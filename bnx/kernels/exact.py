@@ -1,14 +1,16 @@
 """The exact distribution of X2 over strata of 2 x 2 tables whose margins are fixed: plain arrays in, numbers out."""
 
 import numpy as np
-from numba import njit
+
+from bnx.kernels.compiling import kernel, part
+from bnx.kernels.margins import used
 
 __all__ = ["exact_tail"]
 
 _SUMS = 4096  # sums of X2 kept apart
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def exact_tail(counts: np.ndarray, height: int, width: int) -> float:
     """Find the probability of an X2 at least as large as observed, given the margins of every stratum.
 
@@ -40,7 +42,7 @@ def exact_tail(counts: np.ndarray, height: int, width: int) -> float:
     return min(1.0, tail)
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _corner(counts: np.ndarray, height: int, width: int, table: np.ndarray) -> None:
     """Copy the two used rows and columns of a stratum; leave zeros where it uses fewer."""
     down, across = np.zeros(height, np.int64), np.zeros(width, np.int64)
@@ -48,20 +50,23 @@ def _corner(counts: np.ndarray, height: int, width: int, table: np.ndarray) -> N
         for j in range(width):
             down[i] += counts[i * width + j]
             across[j] += counts[i * width + j]
-    rows, columns = np.flatnonzero(down), np.flatnonzero(across)
-    if rows.size == 2 and columns.size == 2:
-        for k in range(4):
-            table[k] = counts[rows[k // 2] * width + columns[k % 2]]
+    if used(down, height) == 2 and used(across, width) == 2:
+        place = 0
+        for i in range(height):
+            for j in range(width):
+                if down[i] > 0 and across[j] > 0:
+                    table[place] = counts[i * width + j]
+                    place += 1
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _varies(table: np.ndarray) -> bool:
     """Tell whether another table has the same margins."""
-    down, across, total = table[0] + table[1], table[0] + table[2], table.sum()
+    down, across, total = table[0] + table[1], table[0] + table[2], table[0] + table[1] + table[2] + table[3]
     return bool(min(down, across, total - down, total - across) > 0)
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _distance(first: int, table: np.ndarray) -> float:
     """Take X2 of a 2 x 2 table with the margins of ``table`` and this first cell; 0 where it cannot vary."""
     total = float(table[0] + table[1] + table[2] + table[3])
@@ -73,7 +78,7 @@ def _distance(first: int, table: np.ndarray) -> float:
     return off * off * total / spread
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _convolved(
     values: np.ndarray, masses: np.ndarray, table: np.ndarray, most: float
 ) -> tuple[np.ndarray, np.ndarray, float]:
@@ -102,11 +107,15 @@ def _convolved(
             moments[place] += joint * value
             mass[place] += joint
             place += 1
-    used = mass > 0.0
-    return moments[used] / mass[used], mass[used], reached
+    kept = 0
+    for k in range(steps):
+        if mass[k] > 0.0:
+            moments[kept], mass[kept] = moments[k] / mass[k], mass[k]
+            kept += 1
+    return moments[:kept], mass[:kept], reached
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _hypergeometric(low: int, high: int, down: int, across: int, total: int) -> np.ndarray:
     """Tabulate the chances of first cells ``low`` to ``high``, outward from the mode so that none underflows early."""
     chances = np.zeros(high - low + 1)
@@ -118,4 +127,7 @@ def _hypergeometric(low: int, high: int, down: int, across: int, total: int) -> 
     for first in range(mode, low, -1):
         ratio = first * (total - down - across + first) / ((down - first + 1.0) * (across - first + 1.0))
         chances[first - 1 - low] = chances[first - low] * ratio
-    return np.asarray(chances / chances.sum())
+    total_chance = chances.sum()
+    for k in range(chances.size):
+        chances[k] /= total_chance
+    return chances

@@ -3,7 +3,8 @@
 import math
 
 import numpy as np
-from numba import njit
+
+from bnx.kernels.compiling import kernel, part
 
 __all__ = ["ENOUGH", "SHUFFLED", "log_factorials", "monte_carlo_tail"]
 
@@ -21,7 +22,7 @@ def log_factorials(most: int) -> np.ndarray:
     return np.concatenate([[0.0], np.cumsum(np.log(np.arange(1, min(most, _TABULATED) + 1)))])
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def monte_carlo_tail(
     counts: np.ndarray, height: int, width: int, log_factorial: np.ndarray, seed: int, most: int
 ) -> tuple[float, int]:
@@ -47,17 +48,20 @@ def monte_carlo_tail(
     down, across = np.zeros((strata, height), np.int64), np.zeros((strata, width), np.int64)
     shape, totals = np.zeros((strata, 2), np.int64), np.zeros(strata, np.int64)
     table = np.empty(height * width, np.int64)
-    observed = 0.0
+    observed, most_records, all_records = 0.0, 0, 0
     for s in range(strata):
-        r, c = _compact(counts[s], height, width, down[s], across[s], table)
+        r, c, total = _compact(counts[s], height, width, down[s], across[s], table)
         if r > 1 and c > 1:
-            shape[s, 0], shape[s, 1], totals[s] = r, c, down[s].sum()
-            observed += _statistic(table, down[s, :r], across[s, :c], totals[s])
-    if not totals.any():
+            shape[s, 0], shape[s, 1], totals[s] = r, c, total
+            observed += _statistic(table, down[s, :r], across[s, :c], total)
+            most_records = max(most_records, total)
+            all_records += total
+    if all_records == 0:
         return 1.0, 0
-    goal = observed - 1e-9 * (1.0 + observed) - 1e-15 * totals.sum()  # ties count, whatever their rounding
-    records = np.empty(max(1, totals.max()), np.int64)
-    state = np.array([seed], np.uint64)
+    goal = observed - 1e-9 * (1.0 + observed) - 1e-15 * all_records  # ties count, whatever their rounding
+    records = np.empty(most_records, np.int64)
+    state = np.empty(1, np.uint64)
+    state[0] = seed
     extreme = 0
     for drawn in range(1, most + 1):
         x2 = 0.0
@@ -78,30 +82,47 @@ def monte_carlo_tail(
     return (1.0 + extreme) / (most + 1.0), most
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _compact(
     counts: np.ndarray, height: int, width: int, down: np.ndarray, across: np.ndarray, table: np.ndarray
-) -> tuple[int, int]:
-    """Put the used rows and columns of a stratum first, with their totals, the fullest row last; count them."""
+) -> tuple[int, int, int]:
+    """Put the used rows and columns of a stratum first, with their totals, the fullest row last; count them all."""
+    total = 0
     for i in range(height):
         for j in range(width):
             down[i] += counts[i * width + j]
             across[j] += counts[i * width + j]
-    rows, columns = np.flatnonzero(down), np.flatnonzero(across)
-    if rows.size:
-        fullest = np.argmax(down[rows])
-        rows[fullest], rows[-1] = rows[-1], rows[fullest]
-    for i in range(rows.size):
-        for j in range(columns.size):
-            table[i * columns.size + j] = counts[rows[i] * width + columns[j]]
-    totals = down[rows]
-    down[: rows.size], down[rows.size :] = totals, 0
-    totals = across[columns]
-    across[: columns.size], across[columns.size :] = totals, 0
-    return rows.size, columns.size
+            total += counts[i * width + j]
+    rows, columns = np.empty(height, np.int64), np.empty(width, np.int64)
+    r, c = _used_first(down, rows), _used_first(across, columns)
+    fullest = 0
+    for i in range(r):
+        if down[i] > down[fullest]:
+            fullest = i
+    if r > 0:
+        rows[fullest], rows[r - 1] = rows[r - 1], rows[fullest]
+        down[fullest], down[r - 1] = down[r - 1], down[fullest]
+    for i in range(r):
+        for j in range(c):
+            table[i * c + j] = counts[rows[i] * width + columns[j]]
+    return r, c, total
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
+def _used_first(totals: np.ndarray, places: np.ndarray) -> int:
+    """Move the totals above 0 to the front, note where each stood, and count them; zeros follow."""
+    found = 0
+    for k in range(totals.size):
+        total = totals[k]
+        if total > 0:
+            totals[k] = 0
+            totals[found] = total
+            places[found] = k
+            found += 1
+    return found
+
+
+@part
 def _statistic(table: np.ndarray, down: np.ndarray, across: np.ndarray, total: int) -> float:
     """Compute X2 of one table without empty rows or columns."""
     share = 0.0
@@ -116,7 +137,7 @@ def _statistic(table: np.ndarray, down: np.ndarray, across: np.ndarray, total: i
     return total * (share - 1.0)
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def _shuffle(
     down: np.ndarray, across: np.ndarray, total: int, records: np.ndarray, table: np.ndarray, state: np.ndarray
 ) -> None:
@@ -128,8 +149,10 @@ def _shuffle(
             place += 1
     width = across.size
     last = (down.size - 1) * width
-    table[:last] = 0
-    table[last : last + width] = across
+    for cell in range(last):
+        table[cell] = 0
+    for j in range(width):
+        table[last + j] = across[j]
     place = 0
     for i in range(down.size - 1):
         for _ in range(down[i]):
@@ -141,7 +164,7 @@ def _shuffle(
             place += 1
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def _draw(
     down: np.ndarray,
     across: np.ndarray,
@@ -153,7 +176,8 @@ def _draw(
     """Draw a table cell by cell, each from its hypergeometric distribution given the cells before it."""
     width = across.size
     last = (down.size - 1) * width
-    table[last : last + width] = across
+    for j in range(width):
+        table[last + j] = across[j]
     remaining = total
     for i in range(down.size - 1):
         wanted, pool = down[i], remaining
@@ -169,7 +193,7 @@ def _draw(
         remaining -= down[i]
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _hypergeometric(draws: int, marked: int, total: int, log_factorial: np.ndarray, state: np.ndarray) -> int:
     """Draw how many of ``draws`` records out of ``total`` are marked, by inversion outward from the mode."""
     low, high = max(0, draws + marked - total), min(draws, marked)
@@ -200,13 +224,13 @@ def _hypergeometric(draws: int, marked: int, total: int, log_factorial: np.ndarr
     return mode
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _log(number: int, log_factorial: np.ndarray) -> float:
     """Look up ln(number!), or compute it beyond the table."""
     return float(log_factorial[number]) if number < log_factorial.size else math.lgamma(number + 1.0)
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _next(state: np.ndarray) -> np.uint64:
     """Give the next 64 random bits.
 
@@ -219,13 +243,13 @@ def _next(state: np.ndarray) -> np.uint64:
     return np.uint64(bits ^ (bits >> _S31))
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _uniform(state: np.ndarray) -> float:
     """Draw a number from 0 to 1, 0 included."""
     return np.float64(_next(state) >> _S11) * 2.0**-53
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _below(bound: int, state: np.ndarray) -> int:
     """Draw a whole number from 0 to ``bound`` - 1, for bounds far below 2^32."""
     return int(((_next(state) >> _S32) * np.uint64(bound)) >> _S32)

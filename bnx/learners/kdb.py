@@ -22,6 +22,7 @@ class Kdb:
     """
 
     depths: int
+    looks_at_pairs: bool = True
     tested: bool = False
 
     @property
@@ -50,6 +51,7 @@ class KdbTested:
     """
 
     depths: int
+    looks_at_pairs: bool = True
     tested: bool = True
 
     @property

@@ -28,6 +28,7 @@ class Tan:
 
     tested: bool
     depths: int = 1
+    looks_at_pairs: bool = True
 
     @property
     def name(self) -> str:
