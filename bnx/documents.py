@@ -299,11 +299,10 @@ def _predicted(comparison: Comparison, repeat: int, s: int, first: int, last: in
             fold[run.start - first : run.stop - first] = number
 
     one.engine.map(fill, range(len(one.fold_rows)))
-    order = one.engine.order[first:last]
-    back = np.argsort(order)
+    back = np.argsort(one.engine.order_of(slice(first, last)))
     names = pa.array(comparison.recipe.structures)
     columns = {
-        "row": comparison.line_of_row[order[back]],
+        "row": comparison.lines.of_rows(first, last),
         "repeat": np.full(last - first, repeat),
         "fold": fold[back],
         "structure": pa.DictionaryArray.from_arrays(np.full(last - first, s, np.int32), names),

@@ -15,6 +15,7 @@ from bnx.comparison import Comparison
 from bnx.folds import halves
 from bnx.judging import pick
 from bnx.structure import Structure
+from bnx.tables import Lines
 
 
 def worse_by(differences: np.ndarray, folds: int, region: float) -> float:
@@ -185,7 +186,7 @@ def test_stability_is_the_share_of_random_halves_that_learn_the_edge() -> None:
     for mask in halves(5, engine.blocks // 5, 30, found.recipe.seed):
         rows = mask[block_of_row]
         assert 250 <= rows.sum() <= 350
-        half = replace(table, codes=table.codes[:, rows].copy(), target=table.target[rows], rows=table.rows[rows])
+        half = replace(table, codes=table.codes[:, rows].copy(), target=table.target[rows], lines=Lines.marked(rows))
         for s, structure in enumerate(learnt(half, found.recipe.structures, test="chi2").structures):
             seen.update((s, frozenset(edge)) for edge in structure.edges)
     shares = []

@@ -24,10 +24,12 @@ from bnx.cli.shared import (
     Overwrite,
     Quiet,
     Seed,
+    SpillFolder,
     Test,
     Timings,
     recipe_of,
     say,
+    store_of,
     threads,
 )
 from bnx.cli.summary import summary
@@ -106,6 +108,7 @@ def run(
     predictions: Annotated[bool, typer.Option("--predictions", help="Also write out-of-fold probabilities.")] = False,
     all_pairs: Annotated[bool, typer.Option("--all-pairs", help="Also write every pair to pairs.parquet.")] = False,
     jobs: Jobs = 0,
+    spill: SpillFolder = None,
     overwrite: Overwrite = False,
     json_out: JsonOut = False,
     quiet: Quiet = False,
@@ -125,7 +128,7 @@ def run(
         source = open_source(data)
         recipe = recipe_of(ctx, source)
         held_out = None if holdout is None else open_source(holdout)
-        comparison = compare(source, recipe, number, clock.tell, held_out)
+        comparison = compare(source, recipe, number, clock.tell, held_out, store_of(spill))
         document, notes = write_results(comparison, folder, number, predictions, all_pairs, clock.tell)
     clock.tell("writing")
     text = json.dumps(document, ensure_ascii=False, allow_nan=False) if json_out else summary(document, output)
