@@ -19,6 +19,7 @@ from bnx.pair_table import CLOSE, Asked, PairTable, bins_of
 from bnx.reading import Source
 from bnx.recipe import Recipe
 from bnx.refining import visit_families, with_chance
+from bnx.storing import MEMORY, Store
 from bnx.tables import LeftOut
 from bnx.text import count_of, quoted
 from bnx.verdicts import TestResult
@@ -77,21 +78,26 @@ class PairTests:
 
 
 def run_pair_tests(
-    source: Source, recipe: Recipe, asked: Asked, jobs: int, progress: Progress = lambda *_: None
+    source: Source,
+    recipe: Recipe,
+    asked: Asked,
+    jobs: int,
+    progress: Progress = lambda *_: None,
+    store: Store = MEMORY,
 ) -> PairTests:
     """Test pairs as one family, and look closely at those named, or with ``everything`` at those rejected.
 
     Numeric columns are cut as ``recipe.bins`` says; ``auto`` means frequency:5 here, as nothing is chosen out of fold.
-    progress: called with (stage, done, of how many) while it runs.
+    progress: called with (stage, done, of how many) while it runs; store: keeps what has a value per row.
 
     Raises:
         DataError, SettingError: the table or a setting cannot be used.
     """
     progress("reading", 0, 0)
     source.check([*asked.attributes, *asked.given, *asked.ordered])
-    coded = recipe.code(source)
+    coded = recipe.code(source, jobs, store)
     progress("sorting rows", 0, 0)
-    table = PairTable.of(coded, recipe, asked, jobs, progress)
+    table = PairTable.of(coded, recipe, asked, jobs, progress, store)
     progress("judging pairs", 0, 0)
     pairs = list(combinations(table.chosen, 2))
     requests = [(0, (*table.given, a, b)) for a, b in pairs]

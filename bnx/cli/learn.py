@@ -24,10 +24,12 @@ from bnx.cli.shared import (
     Overwrite,
     Quiet,
     Seed,
+    SpillFolder,
     Test,
     Timings,
     recipe_of,
     say,
+    store_of,
     threads,
 )
 from bnx.cli.summary import summary
@@ -37,8 +39,12 @@ from bnx.errors import SettingError
 from bnx.reading import open_source
 from bnx.recipe import DEFAULT_STRUCTURES, Recipe
 from bnx.results import new_folder, write_results
+from bnx.text import count_of
 
-__all__ = ["run"]
+__all__ = ["MOST_NOTES", "run"]
+
+MOST_NOTES = 20
+"""Notes that are written to standard error; a table with thousands of columns may give cause for thousands."""
 
 
 def run(
@@ -102,6 +108,7 @@ def run(
     predictions: Annotated[bool, typer.Option("--predictions", help="Also write out-of-fold probabilities.")] = False,
     all_pairs: Annotated[bool, typer.Option("--all-pairs", help="Also write every pair to pairs.parquet.")] = False,
     jobs: Jobs = 0,
+    spill: SpillFolder = None,
     overwrite: Overwrite = False,
     json_out: JsonOut = False,
     quiet: Quiet = False,
@@ -121,12 +128,15 @@ def run(
         source = open_source(data)
         recipe = recipe_of(ctx, source)
         held_out = None if holdout is None else open_source(holdout)
-        comparison = compare(source, recipe, number, clock.tell, held_out)
+        comparison = compare(source, recipe, number, clock.tell, held_out, store_of(spill))
         document, notes = write_results(comparison, folder, number, predictions, all_pairs, clock.tell)
     clock.tell("writing")
     text = json.dumps(document, ensure_ascii=False, allow_nan=False) if json_out else summary(document, output)
     typer.echo(text)
-    for note in (*comparison.warnings, *notes):
+    told_of = [*notes, *comparison.warnings]
+    for note in told_of[:MOST_NOTES]:
         say(f"note: {note}", quiet)
+    if len(told_of) > MOST_NOTES:
+        say(f"note: {count_of(len(told_of) - MOST_NOTES, 'more note')} in comparison.json", quiet)
     if timings:
         typer.echo(clock, err=True)

@@ -3,6 +3,7 @@
 from collections.abc import Callable, Iterable, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, replace
+from itertools import pairwise
 from typing import TypeVar
 
 import numpy as np
@@ -10,6 +11,7 @@ import numpy as np
 from bnx.counts import FamilyCounts, PairCounts, PairLayout
 from bnx.kernels import count_cells
 from bnx.pair_counting import count_layout
+from bnx.storing import MEMORY, Store
 from bnx.tables import CodedTable
 from bnx.views import View
 
@@ -45,6 +47,7 @@ class LocalEngine:
     margins: tuple[np.ndarray, ...]
     jobs: int
     progress: Progress
+    store: Store
 
     @property
     def class_counts(self) -> np.ndarray:
@@ -59,11 +62,11 @@ class LocalEngine:
     @property
     def order(self) -> np.ndarray:
         """Row of the table behind each sorted row, int64 (N,), worked out anew."""
-        order = np.empty(self.rows, np.int64)
-        for part in _chunks(self.rows, self.chunk):
-            order[part] = np.argsort(self.groups[part], kind="stable")
-            order[part] += part.start
-        return order
+        return np.concatenate([self.order_of(part) + part.start for part in _chunks(self.rows, self.chunk)])
+
+    def order_of(self, chunk: slice) -> np.ndarray:
+        """Place in one chunk of the table of each of its sorted rows, int64."""
+        return np.asarray(np.argsort(self.groups[chunk], kind="stable"))
 
     def rows_of(self, first_block: int, last_block: int) -> list[slice]:
         """Sorted rows of neighbouring blocks, one run per chunk."""
@@ -95,9 +98,14 @@ class LocalEngine:
         """Store the rows as ``view`` sees them, so that every attribute can be used as stored."""
         if view.plain.all():
             return self
-        codes = self.codes.copy()
-        for i in np.flatnonzero(~view.plain):
-            np.take(view.recode[i].astype(codes.dtype), self.codes[i], out=codes[i])
+        codes = self.store.empty(self.codes.shape, self.codes.dtype)
+
+        def recode(i: int) -> None:
+            lookup = view.recode[i].astype(codes.dtype)
+            for part in _chunks(self.rows, self.chunk):
+                np.take(lookup, self.codes[i, part], out=codes[i, part], mode="clip")
+
+        self.map(recode, range(len(codes)))
         margins = tuple(view.merge(i, margin) for i, margin in enumerate(self.margins))
         return replace(self, codes=codes, sizes=view.sizes, margins=margins)
 
@@ -132,15 +140,23 @@ def _chunks(rows: int, chunk: int) -> list[slice]:
 
 
 def start_local(
-    table: CodedTable, blocks_of_rows: np.ndarray, blocks: int, jobs: int, progress: Progress, chunk: int = CHUNK
+    table: CodedTable,
+    blocks_of_rows: np.ndarray,
+    blocks: int,
+    jobs: int,
+    progress: Progress,
+    store: Store = MEMORY,
+    chunk: int = CHUNK,
+    in_place: bool = False,
 ) -> LocalEngine:
     """Sort each chunk of a coded table by (block, class, position) and count the levels of every attribute.
 
-    blocks_of_rows (N,): the block of each row; chunk: rows of a chunk.
+    blocks_of_rows (N,): the block of each row; chunk: rows of a chunk; in_place: sort the codes where they lie, so that
+    the table must not be used any more.
     """
     classes, sizes, rows = len(table.schema.target), table.schema.sizes, len(table.target)
-    groups = _groups(table, blocks_of_rows, blocks, chunk)
-    codes = np.empty_like(table.codes)
+    groups = _groups(table, blocks_of_rows, blocks, chunk, store)
+    codes = table.codes if in_place else store.empty(table.codes.shape, table.codes.dtype)
     counts = [np.zeros((blocks * classes, int(size)), np.int32) for size in sizes]
     slots, lengths = np.arange(blocks * classes), []
     with ThreadPoolExecutor(jobs) as pool:
@@ -150,21 +166,29 @@ def start_local(
             starts = part.start + np.concatenate([[0], np.cumsum(lengths[-1])])
 
             def sort(i: int, part: slice = part, order: np.ndarray = order, starts: np.ndarray = starts) -> None:
-                np.take(table.codes[i, part], order, out=codes[i, part], mode="clip")
+                codes[i, part] = table.codes[i, part][order]
                 count_cells(codes, _NO_RECODE, True, np.array([i]), sizes[i : i + 1], starts, slots, counts[i])
+                store.let_go(codes[i, part])
 
             list(pool.map(sort, range(len(sizes))))
     margins = tuple(one.astype(np.int64).reshape(blocks, classes, -1) for one in counts)
-    lengths_of_all = np.concatenate(lengths)
-    target = np.repeat(np.tile(np.arange(classes, dtype=np.uint8), blocks * len(lengths)), lengths_of_all)
-    starts = np.concatenate([[0], np.cumsum(lengths_of_all)]).astype(np.int64)
-    return LocalEngine(codes, target, groups, chunk, starts, blocks, classes, sizes, margins, jobs, progress)
+    starts = np.concatenate([[0], np.cumsum(np.concatenate(lengths))]).astype(np.int64)
+    target = _sorted_target(starts, blocks, classes, store)
+    return LocalEngine(codes, target, groups, chunk, starts, blocks, classes, sizes, margins, jobs, progress, store)
 
 
-def _groups(table: CodedTable, blocks_of_rows: np.ndarray, blocks: int, chunk: int) -> np.ndarray:
+def _groups(table: CodedTable, blocks_of_rows: np.ndarray, blocks: int, chunk: int, store: Store) -> np.ndarray:
     """Number the group of each row, (N,), in the narrowest type."""
     classes = len(table.schema.target)
-    groups = np.empty(len(table.target), np.min_scalar_type(blocks * classes))
+    groups = store.empty((len(table.target),), np.min_scalar_type(blocks * classes))
     for part in _chunks(len(groups), chunk):
         groups[part] = blocks_of_rows[part].astype(np.int64) * classes + table.target[part]
     return groups
+
+
+def _sorted_target(starts: np.ndarray, blocks: int, classes: int, store: Store) -> np.ndarray:
+    """Write the class of every sorted row, uint8 (N,)."""
+    target = store.empty((int(starts[-1]),), np.uint8)
+    for s, (first, last) in enumerate(pairwise(starts.tolist())):
+        target[first:last] = s % (blocks * classes) % classes
+    return target

@@ -19,7 +19,7 @@ from sklearn.naive_bayes import CategoricalNB
 from bnx.counts import PairLayout
 from bnx.domains import Domain, Schema
 from bnx.engines import LocalEngine, start_local
-from bnx.tables import CodedTable
+from bnx.tables import CodedTable, Lines
 
 FOLDS = 10
 LEARN = "from bnx.cli import main; main()"
@@ -64,7 +64,10 @@ def engine_of(table: BenchTable, jobs: int, blocks: int = 1) -> LocalEngine:
     domains = tuple(Domain(f"a{i}", tuple(map(str, range(size)))) for i, size in enumerate(table.sizes.tolist()))
     rows = np.arange(len(table.target))
     coded = CodedTable(
-        Schema(domains, Domain("arrival", CLASS_LEVELS)), table.codes.view(np.uint8), table.target.view(np.uint8), rows
+        Schema(domains, Domain("arrival", CLASS_LEVELS)),
+        table.codes.view(np.uint8),
+        table.target.view(np.uint8),
+        Lines.all(len(rows)),
     )
     return start_local(coded, (rows % blocks).astype(np.uint16), blocks, jobs, lambda *_: None)
 
