@@ -11,7 +11,7 @@ from bnx.choosing import Choice
 from bnx.classifier import Classifier
 from bnx.coding import Coded
 from bnx.dealing import deal
-from bnx.dependence import Pairs, measure
+from bnx.dependence import Pairs, measure, relevance_of
 from bnx.encoding import encode
 from bnx.engines import LocalEngine, start_local
 from bnx.engines.local import Progress
@@ -37,6 +37,8 @@ from bnx.storing import MEMORY, Store
 from bnx.structure import Structure
 from bnx.tables import LeftOut, Lines
 from bnx.text import count_of
+from bnx.wide_judging import judge_wide
+from bnx.wide_learning import takes_wide_road
 from bnx.trainings import Training
 
 __all__ = ["Comparison", "compare"]
@@ -111,8 +113,12 @@ def compare(
     results, honest = score(evaluations, picks)
     baseline = recipe.structures.index(recipe.baseline)
     progress("judging pairs", 0, 0)
-    dependence, pairs = measure(first.engine, [learned.training], marginal_of_first=True)[0]
-    judged = _judged(first.engine, learned.training, pairs, recipe)
+    drawn = [edge for structure in learned.structures for edge in structure.edges]
+    if takes_wide_road(first.engine, [learned.training], learners, bounds, recipe):
+        pairs, judged = judge_wide(first.engine, learned.training, drawn, recipe)
+    else:
+        pairs = measure(first.engine, [learned.training], marginal_of_first=True)[0][1]
+        judged = _judged(first.engine, learned.training, pairs, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     progress("scoring", 0, 0)
     held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
@@ -120,7 +126,7 @@ def compare(
     progress("edge ledger", 0, 0)
     ledgers = edge_ledger(
         replace(first, engine=_under("edge ledger", first.engine)),
-        dependence.strength,
+        pairs.strengths(drawn),
         gains,
         stable,
         learners,
@@ -136,7 +142,7 @@ def compare(
         rows=len(coded.table.target),
         folds=folds,
         classifiers=classifiers,
-        relevance=dependence.relevance,
+        relevance=relevance_of(first.engine, learned.training),
         pairs=pairs,
         judged=judged,
         results=tuple(results),

@@ -85,8 +85,9 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
                 "picks": [names[number] for number in advice.picks],
             },
             "pairs": [result.to_dict() for result in pair_results(comparison)],
-            "pairs_total": len(comparison.pairs.left),
-            "pairs_rejected": int(judged.rejected.sum()),
+            "pairs_total": comparison.judged.family,
+            "pairs_rejected": comparison.judged.rejected,
+            "pairs_judged": len(comparison.pairs.left),
             "pairs_verdicts": {word: int((judged.verdict == code).sum()) for code, word in enumerate(VERDICTS)},
             "pairs_outcomes": {
                 word: int((comparison.judged.outcome == code).sum()) for code, word in enumerate(OUTCOMES)
