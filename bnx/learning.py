@@ -8,10 +8,9 @@ import numpy as np
 from bnx.dependence import Dependence, measure, relevance_of, sets_at_a_time
 from bnx.engines import LocalEngine
 from bnx.errors import DataError
-from bnx.families import PairRequests, Request, for_each_family
+from bnx.families import PairRequests, family_statistics
 from bnx.gating import Answer, Bounds, Gate, Question, learn_together
 from bnx.independence import Statistics
-from bnx.kernels.contingency import one_table
 from bnx.learners import Learner
 from bnx.recipe import Recipe
 from bnx.refining import Rigour, gated, visit_families
@@ -19,7 +18,7 @@ from bnx.structure import Structure
 from bnx.text import nearest
 from bnx.trainings import Training
 
-__all__ = ["Learned", "ask_tests", "learn", "make_bounds", "rigour_of", "test_statistics"]
+__all__ = ["Learned", "ask_tests", "learn", "make_bounds", "rigour_of"]
 
 
 @dataclass(frozen=True)
@@ -156,21 +155,10 @@ def ask_tests(
     if not questions:
         return []
     requests = [(number, (*question.given, question.candidate, question.child)) for number, question in questions]
-    rows = test_statistics(engine, trainings, requests)
+    rows = family_statistics(engine, trainings, requests, "testing parents")
     different = {request: place for place, request in enumerate(rows)}
     statistics = Statistics.of(np.array(list(rows.values())))
     p = gated(visit_families(engine, trainings, list(rows)), statistics, rigour).p
     p = np.where(np.isnan(p), 1.0, p)
     bits = statistics.bits_corrected
     return [Answer(float(p[different[request]]), float(bits[different[request]])) for request in requests]
-
-
-def test_statistics(
-    engine: LocalEngine, trainings: Sequence[Training], requests: Sequence[Request]
-) -> dict[Request, np.ndarray]:
-    """Compute the statistics (COLUMNS,) of the last two members given the class and the members before them."""
-
-    def use(counts: np.ndarray, sizes: tuple[int, ...]) -> np.ndarray:
-        return one_table(counts.reshape(-1, sizes[-2] * sizes[-1]), sizes[-2], sizes[-1])
-
-    return for_each_family(engine, trainings, requests, use, "testing parents")
