@@ -2,6 +2,8 @@
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import groupby
+from operator import itemgetter
 
 import numpy as np
 
@@ -86,9 +88,14 @@ def _learn(
     learnings = [member.learn(one.dependence, one.gate, bounds) for one in seen for member in learners]
 
     def ask(questions: Sequence[tuple[int, Question]]) -> list[Answer]:
-        numbered = [(number // len(learners), question) for number, question in questions]
-        tested = iter(ask_tests(engine, trainings, [one for one in numbered if one[1].given], rigour))
-        return [next(tested) if question.given else seen[number].answer(question) for number, question in numbered]
+        further = [(number // len(learners), question) for number, question in questions if question.given]
+        tested = iter(ask_tests(engine, trainings, further, rigour))
+        answers: list[Answer] = []
+        for number, asked in groupby(questions, key=itemgetter(0)):
+            own = [question for _, question in asked]
+            known = iter(seen[number // len(learners)].answers([one for one in own if not one.given]))
+            answers += [next(tested if question.given else known) for question in own]
+        return answers
 
     structures = learn_together(learnings, ask)
     step = len(learners)
@@ -103,10 +110,14 @@ class _Seen:
     gate: Gate
     bits: np.ndarray
 
-    def answer(self, question: Question) -> Answer:
-        """Answer a question that only takes the class as given, from what was measured of all pairs."""
-        p = float(self.gate.p[question.child, question.candidate])
-        return Answer(1.0 if np.isnan(p) else p, float(self.bits[question.child, question.candidate]))
+    def answers(self, questions: Sequence[Question]) -> list[Answer]:
+        """Answer questions that only take the class as given, from what was measured of all pairs."""
+        if not questions:
+            return []
+        child, candidate = np.array([question[:2] for question in questions]).T
+        p = self.gate.p[child, candidate]
+        p = np.where(np.isnan(p), 1.0, p).tolist()
+        return [Answer(*answer) for answer in zip(p, self.bits[child, candidate].tolist(), strict=True)]
 
 
 def _look(
