@@ -24,7 +24,7 @@ from bnx.gating import Bounds
 from bnx.independence import Statistics
 from bnx.judging import Against, Recommendation, against, inner_picks, recommend
 from bnx.learners import Learner, learner
-from bnx.learning import make_bounds
+from bnx.learning import Learned, make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
 from bnx.pair_judging import JudgedPairs, judge_pairs
@@ -37,9 +37,9 @@ from bnx.storing import MEMORY, Store
 from bnx.structure import Structure
 from bnx.tables import LeftOut, Lines
 from bnx.text import count_of
+from bnx.trainings import Training
 from bnx.wide_judging import judge_wide
 from bnx.wide_learning import takes_wide_road
-from bnx.trainings import Training
 
 __all__ = ["Comparison", "compare"]
 
@@ -113,12 +113,7 @@ def compare(
     results, honest = score(evaluations, picks)
     baseline = recipe.structures.index(recipe.baseline)
     progress("judging pairs", 0, 0)
-    drawn = [edge for structure in learned.structures for edge in structure.edges]
-    if takes_wide_road(first.engine, [learned.training], learners, bounds, recipe):
-        pairs, judged = judge_wide(first.engine, learned.training, drawn, recipe)
-    else:
-        pairs = measure(first.engine, [learned.training], marginal_of_first=True)[0][1]
-        judged = _judged(first.engine, learned.training, pairs, recipe)
+    pairs, judged = _tested(first.engine, learned, learners, bounds, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     progress("scoring", 0, 0)
     held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
@@ -126,7 +121,7 @@ def compare(
     progress("edge ledger", 0, 0)
     ledgers = edge_ledger(
         replace(first, engine=_under("edge ledger", first.engine)),
-        pairs.strengths(drawn),
+        pairs.strengths(edge for structure in learned.structures for edge in structure.edges),
         gains,
         stable,
         learners,
@@ -155,6 +150,18 @@ def compare(
         evaluations=tuple(evaluations),
         lines=coded.table.lines,
     )
+
+
+def _tested(
+    engine: LocalEngine, learned: Learned, learners: Sequence[Learner], bounds: Bounds, recipe: Recipe
+) -> tuple[Pairs, JudgedPairs]:
+    """Test all pairs on all rows, and judge them; in very wide tables the strongest, and those that are drawn."""
+    training = learned.training
+    if takes_wide_road(engine, [training], learners, bounds, recipe):
+        drawn = [edge for structure in learned.structures for edge in structure.edges]
+        return judge_wide(engine, training, drawn, recipe)
+    pairs = measure(engine, [training], marginal_of_first=True)[0][1]
+    return pairs, _judged(engine, training, pairs, recipe)
 
 
 def _judged(engine: LocalEngine, training: Training, pairs: Pairs, recipe: Recipe) -> JudgedPairs:

@@ -13,7 +13,18 @@ from bnx.intervals import bits_interval, bits_upper, detectable_bits
 from bnx.multiplicity import adjusted, threshold
 from bnx.plain import finite
 
-__all__ = ["OUTCOMES", "PAIR_KEYS", "VERDICTS", "Judgement", "TestResult", "judge", "judged_by", "outcomes", "pairs_csv", "results"]
+__all__ = [
+    "OUTCOMES",
+    "PAIR_KEYS",
+    "VERDICTS",
+    "Judgement",
+    "TestResult",
+    "judge",
+    "judged_by",
+    "outcomes",
+    "pairs_csv",
+    "results",
+]
 
 VERDICTS = ("negligible", "detected, but negligible", "dependent", "not enough data")
 

@@ -12,7 +12,7 @@ import numpy as np
 from bnx.dependence import Pairs
 from bnx.domains import Domain
 from bnx.engines import LocalEngine
-from bnx.independence import Statistics, Tested, p_values
+from bnx.independence import Statistics, p_values
 from bnx.kernels.contingency import NATS, table_statistics
 from bnx.kernels.exact import exact_tail
 from bnx.kernels.wide_tests import class_tables, least_of_tables
@@ -106,7 +106,7 @@ def judge_wide(
 
 
 def _tested(table: _Table, most: int, alpha: float) -> tuple[_Family, _Family, np.ndarray]:
-    """Test all pairs given the class and without it; also find the places of the strongest given it, strongest first."""
+    """Test all pairs given the class and without it; also place the strongest given it, strongest first."""
     attributes, classes = table.attributes, table.engine.classes
     families = [(np.empty(table.pairs), np.zeros(table.pairs, np.bool_)) for _ in range(2)]
     firsts = [*_firsts(attributes).tolist(), table.pairs]
@@ -206,7 +206,9 @@ def _judgement(
     tested = first.replaced(np.flatnonzero(first.by_moments), p[chosen][first.by_moments], "exact")
     tested = tested.without(np.isnan(p[chosen]))
     return (
-        judged_by(stats, tested, tests.adjusted(p[chosen]), tests.threshold(recipe.alpha), recipe.alpha, recipe.negligible),
+        judged_by(
+            stats, tested, tests.adjusted(p[chosen]), tests.threshold(recipe.alpha), recipe.alpha, recipe.negligible
+        ),
         tests.rejected(recipe.alpha),
         left_over,
     )

@@ -13,7 +13,8 @@ from bnx.recipe import Recipe
 from bnx.refining import Rigour
 from bnx.structure import Structure
 from bnx.trainings import Training
-from bnx.wide import Asked, Edges, Grown, grow_forests
+from bnx.wide import grow_forests
+from bnx.wide_forests import Asked, Edges, Grown
 
 __all__ = ["MOST_IN_MATRIX", "learn_wide", "takes_wide_road"]
 

@@ -6,8 +6,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from bnx.engines import LocalEngine
+from bnx.kernels.wide_bounds import MARGIN, PARTS, UNEVEN, A, B, Q
 from bnx.kernels.wide_counts import EVEN, UNEQUAL, common_ones, kinds_of_margins
-from bnx.kernels.wide_pairs import PARTS, A, B, MARGIN, Q, UNEVEN
 from bnx.trainings import Training
 
 __all__ = ["Margins", "Planes", "Sums", "joint_tables", "margins_of", "pack", "sums_of"]
@@ -46,7 +46,7 @@ class Margins:
     """What S training sets know of single attributes.
 
     ``ones`` int64 (S, C, n): records with the second level; ``records`` float64 (S, C); ``part`` float32 (S, C, PARTS,
-    n): see `bnx.kernels.wide_pairs`; ``testable`` (S,): pairs whose X2 can vary.
+    n): see `bnx.kernels.wide_bounds`; ``testable`` (S,): pairs whose X2 can vary.
     """
 
     ones: np.ndarray

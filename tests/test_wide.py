@@ -1,20 +1,19 @@
 """Trees over binary attributes grown pair by pair: the same as from a matrix of all pairs."""
 
 import numpy as np
-import pytest
 from builders import coded, started
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from bnx.engines import LocalEngine
-from bnx.gating import Bounds
 from bnx.learners import learner
 from bnx.learning import learn, make_bounds, rigour_of
 from bnx.recipe import Recipe
+from bnx.tables import CodedTable
 from bnx.trainings import Training
 from bnx.views import View, make_view
-from bnx.tables import CodedTable
-from bnx.wide import Asked, Edges, grow_forests
+from bnx.wide import grow_forests
+from bnx.wide_forests import Asked, Edges
 
 BLOCKS = 6
 LEARNERS = [learner("tan"), learner("tan-tested")]
@@ -62,8 +61,14 @@ def check(seed: int, rows: int, attributes: int, classes: int, jobs: int = 1, **
             assert edges_of(edges) == {(min(edge), max(edge)) for edge in structure.edges}, structure.name
 
 
-@settings(max_examples=60, deadline=None)
-@given(st.integers(0, 2**32), st.integers(12, 400), st.integers(2, 40), st.integers(1, 3), st.sampled_from([0.01, 0.05, 0.3]))
+@settings(max_examples=25, deadline=None)
+@given(
+    st.integers(0, 2**32),
+    st.integers(12, 400),
+    st.integers(2, 40),
+    st.integers(1, 3),
+    st.sampled_from([0.01, 0.05, 0.3]),
+)
 def test_the_same_trees_as_from_a_matrix_of_all_pairs(seed, rows, attributes, classes, alpha):
     check(seed, rows, attributes, min(classes + 1, rows), alpha=alpha)
 
@@ -83,7 +88,7 @@ def test_threads_change_nothing_in_a_forest():
             assert np.array_equal(np.sort(edges(one).bits), np.sort(edges(two).bits))
 
 
-@settings(max_examples=30, deadline=None)
+@settings(max_examples=12, deadline=None)
 @given(st.integers(0, 2**32), st.integers(2, 30), st.integers(0, 60))
 def test_forbidden_pairs_take_no_part(seed, attributes, forbidden):
     random = np.random.default_rng(seed)

@@ -9,10 +9,10 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from test_wide import BLOCKS, rare_table
 
+from bnx import multiplicity
 from bnx.comparison import _judged
 from bnx.dependence import measure
 from bnx.many_tests import ManyTests, family_size
-from bnx import multiplicity
 from bnx.multiplicity import adjusted, threshold
 from bnx.recipe import Recipe
 from bnx.trainings import Training

@@ -1,4 +1,4 @@
-"""Forests over very many attributes: grown from edges in order, and the weakest link between two attributes in O(log n).
+"""Forests over very many attributes: grown from edges in order, and the weakest link between any two.
 
 A forest is kept as a *tree of joins*: whenever two trees are joined, the root of the smaller hangs on the root of the
 larger with the strength of the joining edge as its link. Links weaken towards the root, and no path is longer than

@@ -14,7 +14,13 @@ _TILE = 64  # attributes whose planes stay in the cache
 
 @kernel
 def class_tables(
-    planes: np.ndarray, words: np.ndarray, margins: np.ndarray, records: np.ndarray, start: int, stop: int, out: np.ndarray
+    planes: np.ndarray,
+    words: np.ndarray,
+    margins: np.ndarray,
+    records: np.ndarray,
+    start: int,
+    stop: int,
+    out: np.ndarray,
 ) -> None:
     """Write the 2 x 2 tables by class of the pairs (i, j), start <= i < stop, i < j < n, in this order.
 
