@@ -38,7 +38,7 @@ from bnx.structure import Structure
 from bnx.tables import LeftOut, Lines
 from bnx.text import count_of
 from bnx.trainings import Training
-from bnx.wide_judging import judge_wide
+from bnx.wide_judging import MOST_JUDGED, judge_wide
 from bnx.wide_learning import takes_wide_road
 
 __all__ = ["Comparison", "compare"]
@@ -159,7 +159,7 @@ def _tested(
     training = learned.training
     if takes_wide_road(engine, [training], learners, bounds, recipe):
         drawn = [edge for structure in learned.structures for edge in structure.edges]
-        return judge_wide(engine, training, drawn, recipe)
+        return judge_wide(engine, training, drawn, MOST_JUDGED, recipe)
     pairs = measure(engine, [training], marginal_of_first=True)[0][1]
     return pairs, _judged(engine, training, pairs, recipe)
 

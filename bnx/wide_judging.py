@@ -89,7 +89,7 @@ def _firsts(attributes: int) -> np.ndarray:
 
 
 def judge_wide(
-    engine: LocalEngine, training: Training, drawn: Iterable[tuple[int, int]], recipe: Recipe, most: int = MOST_JUDGED
+    engine: LocalEngine, training: Training, drawn: Iterable[tuple[int, int]], most: int, recipe: Recipe
 ) -> tuple[Pairs, JudgedPairs]:
     """Test all pairs, and judge those drawn and the strongest, ``most`` in all unless more are drawn.
 

@@ -35,7 +35,7 @@ def test_judged_pairs_are_the_same_as_when_all_are_measured_at_once(seed, adjust
     pairs = measure(engine, [training], marginal_of_first=True)[0][1]
     whole = _judged(engine, training, pairs, recipe)
     drawn = [(3, 1), (28, 29), (1, 3)]
-    some, judged = judge_wide(engine, training, drawn, recipe, most=100)
+    some, judged = judge_wide(engine, training, drawn, 100, recipe)
     places = {ends: place for place, ends in enumerate(zip(pairs.left.tolist(), pairs.right.tolist(), strict=True))}
     order = np.array([places[ends] for ends in zip(some.left.tolist(), some.right.tolist(), strict=True)])
     assert len(order) == 100
