@@ -33,7 +33,6 @@ STAGES = {
     "gains of edges": (comparison, "edge_gains"),
     "stability over halves": (comparison, "stability"),
     "scores": (comparison, "score"),
-    "judge all pairs": (comparison, "judge"),
     "edge ledger": (comparison, "edge_ledger"),
     "recommend": (comparison, "recommend"),
     "results as documents": (results, "structure_document"),
