@@ -1,7 +1,7 @@
 """The main job: one table in; structures learnt, tested, cross-validated on the same folds, and one recommended."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import PurePath
 
 import numpy as np
@@ -11,7 +11,7 @@ from bnx.classifier import Classifier
 from bnx.coding import Coded
 from bnx.dependence import Pairs
 from bnx.encoding import encode
-from bnx.engines import start_local
+from bnx.engines import LocalEngine, start_local
 from bnx.engines.local import Progress
 from bnx.errors import DataError, SettingError
 from bnx.evaluation import Evaluation, evaluate
@@ -21,7 +21,7 @@ from bnx.gating import Bounds
 from bnx.independence import Statistics
 from bnx.judging import Against, Recommendation, StructureScore, against, recommend, score
 from bnx.learners import Learner, learner
-from bnx.learning import make_bounds
+from bnx.learning import Learned, make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
 from bnx.pair_judging import JudgedPairs, judge_pairs
@@ -83,9 +83,8 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
     Raises:
         DataError, SettingError, StructureError: the table or a setting cannot be used.
     """
-    progress("reading", 0, 1)
+    progress("reading", 0, 0)
     coded = recipe.code(source)
-    progress("reading", 1, 1)
     if holdout:
         holdout.check([*coded.table.schema.names, recipe.target])
     bounds = make_bounds(recipe, coded.table.schema.names)
@@ -94,17 +93,21 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
     gains = [fold for one in evaluations for fold in edge_gains(one)]
     first = evaluations[0]
     learned = first.learned(())
-    stable = stability(first.engine, learned.training.view, folds, learners, bounds, recipe)
+    progress("stability", 0, 0)
+    stable = stability(_under("stability", first.engine), learned.training.view, folds, learners, bounds, recipe)
     results = score(evaluations, first.engine)
     baseline = recipe.structures.index(recipe.baseline)
-    visit = visit_families(first.engine, [learned.training], learned.pairs.requests(0))
-    domains = learned.training.view.domains
-    ends = [(domains[i], domains[j]) for i, j in zip(learned.pairs.left, learned.pairs.right, strict=True)]
-    judged = judge_pairs(
-        visit, Statistics.of(learned.pairs.statistics), Statistics.of(learned.pairs.marginal), ends, recipe
-    )
+    progress("judging pairs", 0, 0)
+    judged = _judged(first.engine, learned, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
+    progress("scoring", 0, 0)
     held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
+    recommendation = recommend(evaluations, results, recipe.structures, folds)
+    progress("edge ledger", 0, 0)
+    ledgers = edge_ledger(
+        replace(first, engine=_under("edge ledger", first.engine)), gains, stable, learners, bounds, recipe, folds
+    )
+    progress("reading", 0, 0)
     return Comparison(
         recipe=recipe,
         source=PurePath(source.name).name,
@@ -117,14 +120,27 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
         judged=judged,
         results=tuple(results),
         against=tuple(against(results, baseline, folds)),
-        edges=tuple(edge_ledger(first, gains, stable, learners, bounds, recipe, folds)),
-        recommendation=recommend(evaluations, results, recipe.structures, folds),
+        edges=tuple(ledgers),
+        recommendation=recommendation,
         held_out=held_out,
         left_out=coded.left_out,
         warnings=(*coded.warnings, *_run_warnings(evaluations, coded, recipe, learners), *judged.notes, *not_scored),
         evaluations=tuple(evaluations),
         line_of_row=coded.table.rows,
     )
+
+
+def _judged(engine: LocalEngine, learned: Learned, recipe: Recipe) -> JudgedPairs:
+    """Test and judge all pairs on all rows."""
+    pairs, domains = learned.pairs, learned.training.view.domains
+    visit = visit_families(engine, [learned.training], pairs.requests(0))
+    ends = [(domains[i], domains[j]) for i, j in zip(pairs.left, pairs.right, strict=True)]
+    return judge_pairs(visit, Statistics.of(pairs.statistics), Statistics.of(pairs.marginal), ends, recipe)
+
+
+def _under(stage: str, engine: LocalEngine) -> LocalEngine:
+    """Let an engine tell of everything it does as one stage."""
+    return replace(engine, progress=lambda *_: engine.progress(stage, 0, 0))
 
 
 def _evaluations(
@@ -135,6 +151,7 @@ def _evaluations(
     dealt: list[np.ndarray] = []
     folds = recipe.folds
     for repeat in range(recipe.repeats):
+        progress("dealing folds", 0, 0)
         blocks, folds = _fold_blocks(coded, recipe, repeat)
         if any(np.array_equal(blocks, other) for other in dealt):
             raise SettingError(
@@ -142,6 +159,7 @@ def _evaluations(
                 f"be no new evidence; give --repeats {len(dealt)} or fewer"
             )
         dealt.append(blocks)
+        progress("sorting rows", 0, 0)
         engine = start_local(coded.table, blocks, folds * sub_blocks(folds), jobs, progress)
         evaluations.append(evaluate(engine, coded.table.schema, folds, learners, bounds, recipe))
     return evaluations, folds

@@ -76,6 +76,7 @@ def learn(
 
     marginal_of_first: also measure the pairs without the class in the first training set.
     """
+    engine.progress("measuring pairs", 0, 0)
     measured = measure(engine, trainings, marginal_of_first)
     attributes = len(bounds.names)
     rigour = rigour_of(learners, attributes, recipe)
@@ -93,6 +94,7 @@ def learn(
         tested = iter(ask_tests(engine, trainings, [one for one in numbered if one[1].given], rigour))
         return [next(tested) if question.given else _answer(*known[number], question) for number, question in numbered]
 
+    engine.progress("choosing edges", 0, 0)
     structures = learn_together(learnings, ask)
     return [
         Learned(training, dependence, pairs, tuple(structures[k * len(learners) : (k + 1) * len(learners)]))

@@ -87,9 +87,12 @@ def run_pair_tests(
     Raises:
         DataError, SettingError: the table or a setting cannot be used.
     """
+    progress("reading", 0, 0)
     source.check([*asked.attributes, *asked.given, *asked.ordered])
     coded = recipe.code(source)
+    progress("sorting rows", 0, 0)
     table = PairTable.of(coded, recipe, asked, jobs, progress)
+    progress("judging pairs", 0, 0)
     pairs = list(combinations(table.chosen, 2))
     requests = [(0, (*table.given, a, b)) for a, b in pairs]
     visit = visit_families(table.engine, [table.training], requests)

@@ -22,6 +22,7 @@ from bnx.documents import (
     structure_document,
 )
 from bnx.drawing import find_engine, render
+from bnx.engines.local import Progress
 from bnx.errors import DataError, EngineError, SettingError
 from bnx.report import report_html
 from bnx.text import quoted
@@ -122,13 +123,21 @@ def _files_of_a_run(comparison: Path) -> set[str]:
 
 
 def write_results(
-    comparison: Comparison, folder: Path, jobs: int, predictions: bool = False, all_pairs: bool = False
+    comparison: Comparison,
+    folder: Path,
+    jobs: int,
+    predictions: bool = False,
+    all_pairs: bool = False,
+    progress: Progress = lambda *_: None,
 ) -> tuple[dict[str, Any], list[str]]:
     """Write every result file into a folder.
+
+    progress: called with (stage, 0, 0) while it runs.
 
     Returns:
         The comparison as written, and sentences about what could not be written.
     """
+    progress("documents", 0, 0)
     document = comparison_document(comparison)
     write_json(folder / _OURS, document)
     (folder / "pairs.csv").write_bytes(pairs_csv(document["pairs"]).encode())
@@ -137,10 +146,13 @@ def write_results(
     for one in structures:
         write_json(folder / f"{one['name']}.json", one)
         (folder / f"{one['name']}.dot").write_text(drawings[one["name"]], encoding="utf-8")
+    progress("drawings", 0, 0)
     pictures, notes = draw_all(drawings, jobs)
+    progress("report", 0, 0)
     for name, picture in pictures.items():
         (folder / f"{name}.svg").write_text(picture, encoding="utf-8")
     (folder / "report.html").write_text(report_html(document, pictures), encoding="utf-8")
+    progress("writing", 0, 0)
     if all_pairs:
         every = [result.to_dict() for result in pair_results(comparison, everything=True)]
         pq.write_table(pa.Table.from_pylist(every), folder / "pairs.parquet")

@@ -3,6 +3,7 @@
 import os
 import signal
 import sys
+import time
 from importlib import import_module
 from typing import Any
 
@@ -14,7 +15,11 @@ from bnx.errors import BnxError
 from bnx.text import nearest, printable
 from bnx.unfinished import undo_all
 
-__all__ = ["app", "main"]
+__all__ = ["BEGAN", "app", "main"]
+
+# What the processor has done until here, it has done alone and at once.
+BEGAN = time.perf_counter() - time.process_time()
+"""When this process began, by ``time.perf_counter``."""
 
 COMMANDS = {
     "learn": "Learn, test, cross-validate and compare structures on a table; the main job.",

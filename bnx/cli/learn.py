@@ -5,6 +5,7 @@ from typing import Annotated
 
 import typer
 
+from bnx.cli.progress import told
 from bnx.cli.shared import (
     Adjust,
     Alpha,
@@ -24,12 +25,13 @@ from bnx.cli.shared import (
     Quiet,
     Seed,
     Test,
-    progress_bar,
+    Timings,
     recipe_of,
     say,
     threads,
 )
 from bnx.cli.summary import summary
+from bnx.cli.timings import Clock
 from bnx.comparison import compare
 from bnx.errors import SettingError
 from bnx.reading import open_source
@@ -103,6 +105,7 @@ def run(
     overwrite: Overwrite = False,
     json_out: JsonOut = False,
     quiet: Quiet = False,
+    timings: Timings = False,
 ) -> None:
     """Learn, test, cross-validate and compare structures on a table, recommend one, and draw all.
 
@@ -112,13 +115,18 @@ def run(
     if fold_column and folds is not None:
         raise SettingError(f"--folds {folds} cannot be used with --fold-column, whose folds are given; drop one")
     number = threads(jobs)
-    with new_folder(output, overwrite) as folder, progress_bar(quiet) as progress:
+    with new_folder(output, overwrite) as folder, told(quiet) as news:
+        clock = Clock(news)
+        clock.tell("reading")
         source = open_source(data)
         recipe = recipe_of(ctx, source)
         held_out = None if holdout is None else open_source(holdout)
-        comparison = compare(source, recipe, number, progress, held_out)
-        document, notes = write_results(comparison, folder, number, predictions, all_pairs)
+        comparison = compare(source, recipe, number, clock.tell, held_out)
+        document, notes = write_results(comparison, folder, number, predictions, all_pairs, clock.tell)
+    clock.tell("writing")
     text = json.dumps(document, ensure_ascii=False, allow_nan=False) if json_out else summary(document, output)
     typer.echo(text)
     for note in (*comparison.warnings, *notes):
         say(f"note: {note}", quiet)
+    if timings:
+        typer.echo(clock, err=True)

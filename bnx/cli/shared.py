@@ -1,16 +1,12 @@
 """What several commands share: common options, settings from options, and what goes to standard error."""
 
 import os
-import sys
-from collections.abc import Callable, Collection, Iterator, Sequence
-from contextlib import contextmanager
+from collections.abc import Collection, Sequence
 from dataclasses import fields
 from pathlib import Path
 from typing import Annotated, Any, Literal
 
 import typer
-from rich.console import Console
-from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeElapsedColumn
 
 from bnx.classifier import Classifier
 from bnx.errors import SettingError
@@ -21,7 +17,6 @@ from bnx.multiplicity import METHODS as ADJUSTMENTS
 from bnx.reading import Source
 from bnx.recipe import Recipe
 from bnx.text import printable
-from bnx.unfinished import unfinished
 
 __all__ = [
     "Adjust",
@@ -44,11 +39,11 @@ __all__ = [
     "StructureFile",
     "Test",
     "Theme",
+    "Timings",
     "check_spared",
     "colours",
     "listed",
     "opened",
-    "progress_bar",
     "recipe_of",
     "say",
     "threads",
@@ -95,6 +90,7 @@ Jobs = Annotated[
     int, typer.Option("--jobs", metavar="N", help="Threads; 0 for one per processor. Results do not depend on it.")
 ]
 Quiet = Annotated[bool, typer.Option("--quiet", help="No progress and no notes on standard error.")]
+Timings = Annotated[bool, typer.Option("--timings", help="Say on standard error how long each stage took.")]
 JsonOut = Annotated[bool, typer.Option("--json", help="Print JSON instead of a table.")]
 Theme = Annotated[
     str | None,
@@ -200,21 +196,3 @@ def say(sentence: str, quiet: bool = False) -> None:
     """Write a note to standard error."""
     if not quiet:
         typer.echo(printable(sentence), err=True)
-
-
-@contextmanager
-def progress_bar(quiet: bool) -> Iterator[Callable[[str, int, int], None]]:
-    """Show one bar per stage on standard error while the block runs, if it is a terminal."""
-    if quiet or not sys.stderr.isatty():
-        yield lambda stage, done, total: None
-        return
-    columns = (TextColumn("{task.description:<20}"), BarColumn(), MofNCompleteColumn(), TimeElapsedColumn())
-    with Progress(*columns, console=Console(stderr=True), transient=True) as bar, unfinished(bar.stop):
-        tasks: dict[str, Any] = {}
-
-        def tell(stage: str, done: int, total: int) -> None:
-            if stage not in tasks:
-                tasks[stage] = bar.add_task(stage, total=total)
-            bar.update(tasks[stage], completed=done, total=total)
-
-        yield tell

@@ -7,6 +7,7 @@ from typing import Annotated
 
 import typer
 
+from bnx.cli.progress import told
 from bnx.cli.shared import (
     Adjust,
     Alpha,
@@ -27,14 +28,15 @@ from bnx.cli.shared import (
     Seed,
     Test,
     Theme,
+    Timings,
     check_spared,
     colours,
     listed,
-    progress_bar,
     recipe_of,
     say,
     threads,
 )
+from bnx.cli.timings import Clock
 from bnx.errors import SettingError
 from bnx.files import check_free, write_bytes
 from bnx.level_order import parse_ordered
@@ -103,6 +105,7 @@ def run(
     overwrite: Overwrite = False,
     json_out: JsonOut = False,
     quiet: Quiet = False,
+    timings: Timings = False,
 ) -> None:
     """Test pairs of attributes for independence given the class.
 
@@ -116,8 +119,10 @@ def run(
     names = source.columns
     orders = parse_ordered([one for value in ordered or () for one in _orders(value, names)], names)
     asked = Asked(tuple(attributes or ()), listed("given", given, names), every, orders, explain, close)
-    with progress_bar(quiet) as tell:
-        found = run_pair_tests(source, recipe_of(ctx, source), asked, number, tell)
+    with told(quiet) as news:
+        clock = Clock(news)
+        found = run_pair_tests(source, recipe_of(ctx, source), asked, number, clock.tell)
+    clock.tell("writing")
     if json_out:
         typer.echo(json.dumps(finite(found.to_dict(strata)), ensure_ascii=False, allow_nan=False, indent=1))
     else:
@@ -137,6 +142,8 @@ def run(
         say(f"note: {note}", quiet)
     for line in done:
         say(line, quiet)
+    if timings:
+        typer.echo(clock, err=True)
 
 
 def _check_outputs(source: Source, output: str | None, plot: str | None, theme: str | None, overwrite: bool) -> None:

@@ -61,6 +61,8 @@ class LocalEngine:
         step = max(1, min(_RUN, len(work) // (8 * self.jobs)))
         runs = [work[start : start + step] for start in range(0, len(work), step)]
         results: list[Result] = []
+        if stage:
+            self.progress(stage, 0, len(work))
         with ThreadPoolExecutor(self.jobs) as pool:
             for found in pool.map(lambda run: [function(item) for item in run], runs):
                 results += found
