@@ -1,6 +1,7 @@
 """Run a command as a process of its own and watch its memory."""
 
 import os
+import re
 import subprocess
 import sys
 import tempfile
@@ -14,6 +15,7 @@ from timing import Figures
 __all__ = ["Child", "ChildError", "learn", "python", "run_child"]
 
 LEARN = "from bnx.cli import main; main()"
+_STAGE = re.compile(r"^(\S.*?) {2,}([0-9]+\.[0-9]+) +([0-9]+\.[0-9]+)$", re.MULTILINE)
 _PAUSE = 0.01  # seconds between two looks at the memory
 
 
@@ -36,13 +38,18 @@ class Child:
     output: str
     errors: str
 
+    def stages(self) -> list[tuple[str, float, float]]:
+        """Read the table of ``--timings``: stage, seconds, processor seconds."""
+        return [(name, float(wall), float(processor)) for name, wall, processor in _STAGE.findall(self.errors)]
+
     def figures(self) -> Figures:
-        """Give all but the text."""
+        """Give all but the text, as they are stored."""
         return {
             "seconds": self.wall,
             "processor": self.processor,
             "resident": self.resident,
             "anonymous": self.anonymous,
+            "stages": self.stages(),
         }
 
 

@@ -54,6 +54,7 @@ def same_tables(ours: PairTables, layout: PairLayout, theirs: Iterable[tuple[int
     return bool(pairs) and all(pairs)
 
 
-def plane_words(layout: PairLayout, rows: int) -> float:
+def plane_words(sizes: np.ndarray, rows: int) -> float:
     """Words of 64 rows that must be ANDed and counted: planes of all levels but the last, pair by pair."""
-    return float(((layout.heights - 1) * (layout.widths - 1)).sum()) * rows / 64
+    planes = sizes.astype(np.float64) - 1
+    return float((planes.sum() ** 2 - (planes**2).sum()) / 2 * rows / 64)

@@ -1,12 +1,11 @@
 """The whole command against one cross-validation of scikit-learn: from Parquet, from CSV, and naive alone."""
 
-import sys
 from functools import partial
 from pathlib import Path
 
 import numpy as np
 import pyarrow.csv
-from child import learn, python, run_child
+from child import learn, python
 from joblib.externals.loky import get_reusable_executor
 from make_table import ROWS, BenchTable, make_table, write_table
 from setting import Setting
@@ -81,11 +80,9 @@ def naive(setting: Setting) -> Figures:
 
 
 def stages(setting: Setting) -> Figures:
-    """Profile the default command, stage by stage, in a process of its own."""
+    """Ask the default command how long its stages take."""
     _, parquet, _ = _files(setting)
-    command = [sys.executable, str(Path(__file__).with_name("stages.py")), str(parquet), "arrival"]
-    rows = [line.split("\t") for line in run_child(command).output.splitlines()]
-    return {"stages": [[name, float(wall), float(processor)] for name, wall, processor in rows]}
+    return {"stages": learn(parquet, setting.folder / "results", "--timings").stages()}
 
 
 def _files(setting: Setting) -> tuple[BenchTable, Path, Path]:
@@ -98,7 +95,8 @@ def _files(setting: Setting) -> tuple[BenchTable, Path, Path]:
             write_table(table, path)
     small = setting.folder / "small.parquet"
     write_table(make_table(3_000), small)
-    learn(small, setting.folder / "results")
+    for options in ((), ("--structures", "naive")):
+        learn(small, setting.folder / "results", *options)
     return table, parquet, csv
 
 

@@ -137,7 +137,7 @@ def limit(setting: Setting) -> Figures:
         "rows": len(table.target),
         "attributes": len(table.sizes),
         "planes": int((table.sizes - 1).sum()),
-        "plane_words": plane_words(layout, len(table.target)),
+        "plane_words": plane_words(table.sizes, len(table.target)),
         "code_bytes": table.codes.nbytes,
         "threads": threads,
         "cycles_per_second": clock_rate(),

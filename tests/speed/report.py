@@ -14,19 +14,28 @@ from pathlib import Path
 sys.path.insert(0, str(Path(__file__).parents[1]))
 
 import page_command
+import page_growth
+import page_large
 import page_pairs
 import part_command
+import part_growth
 import part_pairs
+import part_tall
+import part_wide
+from growth_plot import draw_growth
 from setting import Claim, Part, Setting, claim_table
 from timing import Figures, machine
 
-__all__ = ["PARTS", "main", "page"]
+__all__ = ["PARTS", "main", "page", "write"]
 
 HERE = Path(__file__).parent
 DOCS = HERE.parents[1] / "docs"
 PARTS = {
     "pairs": Part(part_pairs.STEPS, page_pairs.page, page_pairs.claims),
     "command": Part(part_command.STEPS, page_command.page, page_command.claims),
+    "wide": Part(part_wide.STEPS, page_large.wide_page, page_large.wide_claims),
+    "tall": Part(part_tall.STEPS, page_large.tall_page, page_large.tall_claims),
+    "growth": Part(part_growth.STEPS, page_growth.page, page_growth.claims),
 }
 HEAD = """# Speed
 
@@ -58,14 +67,22 @@ def load(path: Path) -> Figures:
     return dict(json.loads(path.read_text(encoding="utf-8"))) if path.exists() else {}
 
 
-def page(measured: Path) -> str:
-    """Write the page from the figures that are stored."""
+def write(measured: Path, folder: Path) -> None:
+    """Write the page and its picture from the figures that are stored."""
     figures = {name: load(measured / f"{name}.json") for name in PARTS}
+    (folder / "pictures").mkdir(exist_ok=True)
+    draw_growth(figures["growth"], folder / page_growth.PICTURE)
+    (folder / "speed.md").write_text(page(figures), encoding="utf-8")
+
+
+def page(figures: dict[str, Figures]) -> str:
+    """Write the page from the figures of every part."""
     lines: list[str] = []
     claims: list[Claim] = []
     for name, part in PARTS.items():
         claims += part.claims(figures[name])
         lines += part.page(figures[name])
+    lines += page_growth.limit_page(figures)
     return "\n".join([HEAD, *_machines(figures), "## What is required", "", *claim_table(claims), "", *lines])
 
 
@@ -98,7 +115,7 @@ def main() -> None:
     for name in chosen.parts or PARTS:
         if name != "page":
             measure(name, Setting(chosen.folder, chosen.scale, chosen.runs), measured, chosen.resume)
-    (written / "speed.md").write_text(page(measured), encoding="utf-8")
+    write(measured, written)
     print(f"written: {written / 'speed.md'}", file=sys.stderr)
 
 

@@ -41,7 +41,7 @@ class Claim:
         """Give the claim as a row of a table."""
         sign = "at least" if self.at_least else "at most"
         return (
-            f"| {self.text} | {sign} {self.bound:,.3g} {self.unit} | {number(self.measured)} {self.unit} | "
+            f"| {self.text} | {sign} {number(self.bound)} {self.unit} | {number(self.measured)} {self.unit} | "
             f"{'met' if self.holds else '**missed**'} |"
         )
 
@@ -61,7 +61,7 @@ class Part:
 
 def number(value: float) -> str:
     """Write three digits that count, without an exponent."""
-    if value >= 100:
+    if abs(value) >= 100:
         return f"{value:,.0f}"
     return f"{value:.3g}"
 
