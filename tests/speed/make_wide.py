@@ -1,7 +1,7 @@
 """The wide table of the benchmarks: notes on shipments as the words in them, present or absent, and two classes.
 
-``python tests/speed/make_wide.py TABLE.parquet [ROWS [WORDS]]`` writes it. Words occur in about 1 to 50 % of the notes. Each
-note has a topic, drawn given its class, which makes words dependent within a class; a share of the words copies an
+``python tests/speed/make_wide.py TABLE.parquet [ROWS [WORDS]]`` writes it. Words occur in about 1 to 50 % of the notes.
+Each note has a topic, drawn given its class, which makes words dependent within a class; a share of the words copies an
 earlier word in some notes, so that a forest of dependences is planted too.
 """
 
@@ -55,14 +55,15 @@ def _chances(rng: np.random.Generator, words: int) -> np.ndarray:
 
 def write_wide(table: BenchTable, path: Path) -> None:
     """Write the table with text levels, the class last; a file that is there was written whole."""
-    kinds = pa.array(["absent", "present"])
-    columns = {
-        f"w{i:05d}": pa.DictionaryArray.from_arrays(pa.array(codes), kinds) for i, codes in enumerate(table.codes)
-    }
-    columns["arrival"] = pa.DictionaryArray.from_arrays(pa.array(table.target), pa.array(list(CLASS_LEVELS)))
+    columns = {f"w{i:05d}": _texts(codes, ["absent", "present"]) for i, codes in enumerate(table.codes)}
+    columns["arrival"] = _texts(table.target, list(CLASS_LEVELS))
     unfinished = path.with_suffix(".unfinished")
     pa.parquet.write_table(pa.table(columns), unfinished)
     unfinished.replace(path)
+
+
+def _texts(codes: np.ndarray, levels: list[str]) -> pa.Array:
+    return pa.DictionaryArray.from_arrays(pa.array(codes), pa.array(levels))
 
 
 if __name__ == "__main__":

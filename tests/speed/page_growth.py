@@ -96,8 +96,8 @@ def limit_page(figures: dict[str, Figures]) -> list[str]:
         f"{most} threads at most {peaks[most] / 1e9:.1f}.",
         f"- One thread that only adds up numbers reads {limit['bytes_per_second'] / 1e9:.1f} GB a second from memory.",
         "",
-        "| rows x attributes | threads | 10^9 words | at the peak, s | codes, GB | reading them once, s | measured, s | "
-        "words a cycle and thread | of the peak |",
+        "| rows x attributes | threads | 10^9 words | at the peak, s | codes, GB | reading them once, s | measured, s "
+        "| words a cycle and thread | of the peak |",
         "|---|---|---|---|---|---|---|---|---|",
         *(_case(name, jobs, one, seconds, peaks[str(jobs)], limit) for name, jobs, one, seconds in cases),
         "",
@@ -139,8 +139,8 @@ def _commands(figures: dict[str, Figures], peak: float, rate: float) -> list[str
         "|---|---|---|---|---|---|---|",
         *rows,
         "",
-        "Counting is no longer what takes the time: the stages above show what does. Wide: a logarithm per cell of every "
-        "pair in every training set, and trees. Tall: decoding the Parquet files, and passes over all rows for every "
+        "Counting is no longer what takes the time: the stages above show what does. Wide: a logarithm per cell of "
+        "every pair in every training set, and trees. Tall: decoding the Parquet files, and passes over all rows for every "
         "structure's tables and predictions.",
         "",
     ]

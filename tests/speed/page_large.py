@@ -23,8 +23,8 @@ def wide_page(figures: Figures) -> list[str]:
         "",
         *_runs(found),
         "",
-        "One run each, two threads, every attribute binary. Words (`tests/speed/make_wide.py`): topics and copied words "
-        "make them dependent within a class. Pictures of 20 x 20: scikit-learn's digits of 8 x 8, enlarged by lines "
+        "One run each, two threads, every attribute binary. Words (`tests/speed/make_wide.py`): topics and copied "
+        "words make them dependent within a class. Pictures of 20 x 20: scikit-learn's digits of 8 x 8, enlarged by lines "
         "between pixels and cut at half; of 28 x 28: `mnist5k_binary`.",
         "",
         *_all_stages(found),
@@ -86,8 +86,8 @@ def _runs(found: dict[str, Figures]) -> list[str]:
         for name, one in found.items()
     ]
     heading = (
-        "| table | rows | attributes | command | seconds | processor seconds | anonymous GB, at most | all resident GB, "
-        "at most |"
+        "| table | rows | attributes | command | seconds | processor seconds | anonymous GB, at most "
+        "| all resident GB, at most |"
     )
     return [heading, "|---|---|---|---|---|---|---|---|", *rows]
 
