@@ -61,6 +61,10 @@ def _panel(panel: Axes, curves: dict[str, Points], label: str, power: int) -> No
     """Draw curves, and a dotted line along which time grows by a power of the size."""
     panel.set_facecolor(COLOURS["chip"])
     panel.set(xscale="log", yscale="log")
+    sizes = sorted({size for points in curves.values() for size, _ in points})
+    panel.set_xticks(sizes, [f"{size:,}" for size in sizes])
+    panel.set_xticks([], minor=True)
+    panel.yaxis.set_major_formatter(lambda seconds, _: f"{seconds:g}")
     panel.set_xlabel(label, color=COLOURS["text"])
     panel.tick_params(colors=COLOURS["small-text"], which="both")
     panel.grid(color=COLOURS["bar-track"], linewidth=0.8)

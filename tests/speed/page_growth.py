@@ -140,7 +140,7 @@ def _commands(figures: dict[str, Figures], peak: float, rate: float) -> list[str
         *rows,
         "",
         "Counting is no longer what takes the time: the stages above show what does. Wide: a logarithm per cell of "
-        "every pair in every training set, and trees. Tall: decoding the Parquet files, and passes over all rows for every "
-        "structure's tables and predictions.",
+        "every pair in every training set, and trees. Tall: decoding the Parquet files, and passes over all rows for "
+        "every structure's tables and predictions.",
         "",
     ]

@@ -4,7 +4,7 @@ from collections.abc import Callable
 from pathlib import Path
 
 import numpy as np
-from child import learn
+from child import learn_compiled
 from counting import engine_of, layout_of, plane_words
 from make_table import BenchTable
 from make_tall import BLOCK, make_tall, write_tall
@@ -81,10 +81,9 @@ def _commands(setting: Setting, tables: dict[int, Path], whole: Callable[[int], 
     """Run every command once on every table: these times are minutes, so noise is small beside them."""
     curves: dict[str, list[Figures]] = {name: [] for name in COMMANDS}
     for name, options in COMMANDS.items():
-        learn(tables[min(tables)], setting.folder / "results", *options)  # compiles what is timed
         for size, path in tables.items():
             if options or whole(size):
-                found = learn(path, setting.folder / "results", "--timings", *options)
+                found = learn_compiled(path, setting.folder / "results", "--timings", *options)
                 curves[name].append({"size": size, **found.figures()})
     return {"curves": curves}
 

@@ -1,6 +1,6 @@
 """Tall tables: a folder of Parquet files with 100 million rows, and one with a tenth of them."""
 
-from child import learn
+from child import learn_compiled
 from counting import plane_words
 from make_tall import BLOCK, ROWS, SIZES, write_tall
 from setting import Setting
@@ -26,7 +26,7 @@ def _learnt(setting: Setting, rows: int) -> Figures:
     size = write_tall(tables, rows, min(BLOCK, setting.rows(ROWS) // 10))
     spill.mkdir(exist_ok=True)
     options = ("--spill", str(spill), "--structures", STRUCTURES, "--timings")
-    found = learn(tables, setting.folder / "results", *options)
+    found = learn_compiled(tables, setting.folder / "results", *options)
     return {
         "rows": rows,
         "attributes": len(SIZES),

@@ -5,7 +5,7 @@ from pathlib import Path
 
 import numpy as np
 import pandas as pd
-from child import learn
+from child import learn_compiled
 from counting import plane_words
 from make_wide import NOTES, WORDS, make_wide, write_wide
 from opentables import load
@@ -67,7 +67,7 @@ def _size(rows: int, attributes: int) -> Figures:
 
 
 def _learnt(setting: Setting, path: Path, target: str, *options: str) -> Figures:
-    found = learn(path, setting.folder / "results", "--timings", *options, target=target)
+    found = learn_compiled(path, setting.folder / "results", "--timings", *options, target=target)
     return {"options": " ".join(options), **found.figures()}
 
 

@@ -22,12 +22,17 @@ import part_growth
 import part_pairs
 import part_tall
 import part_wide
+from child import ChildError
 from growth_plot import draw_growth
+from make_tall import SizeError
+from part_pairs import TablesDifferError
 from setting import Claim, Part, Setting, claim_table
+from tablestore import TableUnavailable
 from timing import Figures, machine
 
 __all__ = ["PARTS", "main", "page", "write"]
 
+FAILURES = (ChildError, SizeError, TablesDifferError, TableUnavailable)  # of one step, which others may outlive
 HERE = Path(__file__).parent
 DOCS = HERE.parents[1] / "docs"
 PARTS = {
@@ -49,17 +54,24 @@ hour, and on a machine that others share they vary by some tens of percent.
 """
 
 
-def measure(name: str, setting: Setting, measured: Path, resume: bool) -> None:
-    """Run the steps of a part and store each one's figures when it is done."""
-    path = measured / f"{name}.json"
+def measure(name: str, setting: Setting, measured: Path, resume: bool) -> list[str]:
+    """Run the steps of a part and store each one's figures when it is done; list the steps that failed."""
+    path, failed = measured / f"{name}.json", list[str]()
     for step, task in PARTS[name].steps.items():
         stored = load(path)
         if resume and step in stored:
             continue
         print(f"{name}: {step}", file=sys.stderr, flush=True)
-        stored[step] = {"machine": machine(), **task(setting)}
+        try:
+            found = task(setting)
+        except FAILURES as failure:
+            print(f"{name}: {step} failed: {failure}", file=sys.stderr, flush=True)
+            failed.append(step)
+            continue
+        stored[step] = {"machine": machine(), **found}
         path.parent.mkdir(parents=True, exist_ok=True)
         path.write_text(json.dumps(stored, indent=1) + "\n", encoding="utf-8")
+    return failed
 
 
 def load(path: Path) -> Figures:
@@ -112,11 +124,14 @@ def main() -> None:
     full = chosen.scale == 1
     measured, written = (HERE / "measured", DOCS) if full else (chosen.folder / "measured", chosen.folder)
     chosen.folder.mkdir(parents=True, exist_ok=True)
+    setting, failed = Setting(chosen.folder, chosen.scale, chosen.runs), list[str]()
     for name in chosen.parts or PARTS:
         if name != "page":
-            measure(name, Setting(chosen.folder, chosen.scale, chosen.runs), measured, chosen.resume)
+            failed += measure(name, setting, measured, chosen.resume)
     write(measured, written)
     print(f"written: {written / 'speed.md'}", file=sys.stderr)
+    if failed:
+        raise SystemExit(f"failed, so not renewed: {', '.join(failed)}")
 
 
 if __name__ == "__main__":
