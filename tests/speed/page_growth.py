@@ -3,10 +3,10 @@
 import math
 
 from growth_plot import Points, curves_of
-from setting import Claim, number
+from setting import number
 from timing import Figures
 
-__all__ = ["claims", "limit_page", "page"]
+__all__ = ["PICTURE", "limit_page", "page"]
 
 PICTURE = "pictures/growth.svg"
 
@@ -33,12 +33,6 @@ def page(figures: Figures) -> list[str]:
         "report) hides growth on the left. Pairs grow by the square of the attributes.",
         "",
     ]
-
-
-def claims(figures: Figures) -> list[Claim]:
-    """Require nothing: growth is shown, and required of the tall table."""
-    del figures
-    return []
 
 
 def _table(curves: dict[str, Points], heading: str) -> list[str]:

@@ -160,12 +160,8 @@ def test_a_process_is_watched() -> None:
 
 
 def test_stages_are_read_from_what_the_command_writes() -> None:
-    errors = (
-        "stage           seconds  processor seconds",
-        "reading a file     0.52               0.49",
-        "all  1.00  2.00",
-    )
-    child = Child(1.0, 1.0, 1, 1, "", "\n".join(errors))
+    lines = "stage  seconds  processor seconds", "reading a file     0.52             0.49", "all  1.00  2.00"
+    child = Child(1.0, 1.0, 1, 1, "", "\n".join(lines))
     assert child.stages() == [("reading a file", 0.52, 0.49), ("all", 1.0, 2.0)]
 
 
