@@ -40,21 +40,17 @@ def draw_growth(figures: Figures, path: Path) -> None:
         _panel(left, curves_of(figures, "rows"), "rows (20 attributes)", 1)
         _panel(right, curves_of(figures, "attributes"), "attributes (10,000 rows)", 2)
         left.set_ylabel("seconds", color=COLOURS["text"])
-        handles = {label: line for panel in (left, right) for line, label in zip(*_legend(panel), strict=True)}
+        legends = [panel.get_legend_handles_labels() for panel in (left, right)]
+        handles = {label: line for lines, labels in legends for line, label in zip(lines, labels, strict=True)}
         figure.legend(
-            handles.values(),
-            handles.keys(),
+            list(handles.values()),
+            list(handles),
             loc="outside lower center",
             ncols=2,
             frameon=False,
             labelcolor=COLOURS["text"],
         )
         figure.savefig(path, format="svg", metadata={"Date": None})
-
-
-def _legend(panel: Axes) -> tuple[list[object], list[str]]:
-    handles, labels = panel.get_legend_handles_labels()
-    return list(handles), list(labels)
 
 
 def _panel(panel: Axes, curves: dict[str, Points], label: str, power: int) -> None:

@@ -1,6 +1,7 @@
 """How time grows with rows and with attributes: counting pairs, and the whole command."""
 
 from collections.abc import Callable
+from functools import partial
 from pathlib import Path
 
 import numpy as np
@@ -70,7 +71,7 @@ def _counting(setting: Setting, tables: list[BenchTable]) -> Figures:
     for table in tables:
         engine, layout, rows = engine_of(table, 2), layout_of(table), len(table.target)
         engine.pair_counts(layout)
-        times = side_by_side({"": lambda engine=engine, layout=layout: engine.pair_counts(layout)}, setting.runs)[""]
+        times = side_by_side({"": partial(engine.pair_counts, layout)}, setting.runs)[""]
         size = {"rows": rows, "attributes": len(table.sizes), "classes": table.classes, "pairs": len(layout.left)}
         bytes_read = {"code_bytes": table.codes.nbytes, "plane_bytes": int((table.sizes - 1).sum()) * rows / 8}
         points.append({**size, **bytes_read, "plane_words": plane_words(table.sizes, rows), **times})

@@ -1,8 +1,10 @@
 """Pair tables and their tests: ours against each rival, in one run on the same rows."""
 
+from collections.abc import Callable, Sequence
 from functools import partial
 
 import numpy as np
+import pandas as pd
 from counting import engine_of, layout_of, plane_words, same_tables, statistics_of, tables_of
 from make_table import ROWS, make_table
 from peak import clock_rate, popcount_peak, read_rate
@@ -43,7 +45,7 @@ def counting(setting: Setting) -> Figures:
     ours = tables_of(two, layout)
     chosen = np.unique(np.linspace(0, len(layout.left) - 1, SAMPLED).round().astype(np.int64))
     names = [(f"a{layout.left[p]}", f"a{layout.right[p]}") for p in chosen]
-    sampled = {
+    sampled: dict[str, Callable[[], Sequence[pd.Series[int] | pd.DataFrame]]] = {
         "pandas groupby(...).size(), small integers": partial(groupby, frame_of(table, False), names),
         "pandas groupby(...).size(), categories": partial(groupby, frame_of(table, True), names),
         "pandas crosstab, small integers": partial(crosstab, frame_of(table, False), names),

@@ -51,7 +51,7 @@ def frame_of(table: BenchTable, categorical: bool) -> pd.DataFrame:
     if not categorical:
         return pd.DataFrame(columns)
     sizes = [*table.sizes.tolist(), table.classes]
-    kinds = {name: pd.CategoricalDtype(range(size)) for name, size in zip(columns, sizes, strict=True)}
+    kinds = {name: pd.CategoricalDtype(list(range(size))) for name, size in zip(columns, sizes, strict=True)}
     return pd.DataFrame({name: series.astype(kinds[name]) for name, series in columns.items()})
 
 
@@ -104,7 +104,7 @@ def products_of(planes: list[np.ndarray]) -> list[np.ndarray]:
 def sparse_one_hot(table: BenchTable) -> list[Callable[[], np.ndarray]]:
     """Do the same with sparse matrices of 32-bit integers: one product to run per class."""
     starts = np.concatenate([[0], np.cumsum(table.sizes)[:-1]])
-    tasks = []
+    tasks: list[Callable[[], np.ndarray]] = []
     for c in range(table.classes):
         chosen = np.flatnonzero(table.target == c)
         columns = (table.codes[:, chosen].T + starts).astype(np.int32)

@@ -27,11 +27,11 @@ def sized(rows: int, **more: Any) -> dict[str, Any]:
     return {"rows": rows, "attributes": 20, "code_bytes": 21 * rows, "plane_words": 2 * rows, **more}
 
 
-TALL = {
+TALL: dict[str, dict[str, Any]] = {
     "tenth": sized(10, file_bytes=50, **child(3.0, 1e9)),
     "whole": sized(100, file_bytes=500, **child(33.0, 2.5e9)),
 }
-GROWTH = {
+GROWTH: dict[str, dict[str, Any]] = {
     "rows_counting": {"points": [sized(10, **timed(0.5)), sized(100, **timed(5.0)), sized(1000, **timed(500.0))]},
     "rows_command": {"curves": {"bnx learn": [{"size": 10, **child(7.0, 0)}, {"size": 1000, **child(70.0, 0)}]}},
 }

@@ -25,7 +25,7 @@ def side_by_side(tasks: Mapping[str, Callable[[], object]], runs: int) -> dict[s
             wall, processor = time.perf_counter(), _processor()
             task()
             found[name].append((time.perf_counter() - wall, _processor() - processor))
-    return {name: spread(*zip(*rows, strict=True)) for name, rows in found.items()}
+    return {name: spread([row[0] for row in rows], [row[1] for row in rows]) for name, rows in found.items()}
 
 
 def spread(wall: Sequence[float], processor: Sequence[float], times: float = 1.0) -> Figures:
@@ -66,7 +66,8 @@ def memory() -> int:
 def _processor_name() -> str:
     information = Path("/proc/cpuinfo")
     lines = information.read_text(encoding="utf-8").splitlines() if information.exists() else []
-    fields = dict(map(str.strip, line.split(":", 1)) for line in lines if ":" in line)
+    parts = [line.partition(":") for line in lines]
+    fields = {name.strip(): value.strip() for name, _, value in parts}
     notable = ", ".join(words for flag, words in NOTABLE.items() if flag in fields.get("flags", "").split())
     name = fields.get("model name", platform.processor() or "unknown processor")
     return f"{name} {platform.machine()}" + (f" ({notable})" if notable else "")
