@@ -34,9 +34,7 @@ def claims(figures: Figures) -> list[Claim]:
         ]
     for jobs, one in figures.get("limit", {}).get("threads", {}).items():
         words = figures["limit"]["plane_words"] / one["ours"]["least"]
-        text = (
-            f"best burst of population counts against our best run, {jobs} thread{'s' if jobs != '1' else ''}"
-        )
+        text = f"best burst of population counts against our best run, {jobs} thread{'s' if jobs != '1' else ''}"
         found.append(Claim(text, max(one["peak"].values()) / words, 3, False))
     return found
 
