@@ -26,7 +26,7 @@ STAGES = {
     "digest of the file": (Source, "sha256"),
     "deal rows to folds": (comparison, "assign_blocks"),
     "sort rows, count levels": (comparison, "start_local"),
-    "draw the rows of inner choices": (evaluation, "draw_sample"),
+    "draw the rows of inner choices": (evaluation, "sample_for_choices"),
     "learn in every training set": (evaluation, "learn"),
     "count the families learnt": (evaluation, "make_trial"),
     "try smoothings": (evaluation, "inner_losses"),
@@ -40,7 +40,7 @@ STAGES = {
     "drawings": (results, "draw_all"),
     "report": (results, "report_html"),
 }
-MAPPED = {"calibrating": "choose and calibrate", "scoring folds": "predict every fold"}
+MAPPED = {"calibrating": "choose and calibrate"}
 
 
 class Clock:
