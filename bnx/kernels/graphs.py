@@ -32,14 +32,14 @@ def strongest_forest(strength: np.ndarray, allowed: np.ndarray) -> np.ndarray:
             inside[new] = True
             joined[new] = best[new]
             for node in range(n):
-                if not inside[node] and allowed[new, node]:
-                    if best[node] < 0 or _before(strength, new, node, best[node], node):
-                        best[node] = new
+                open_ = not inside[node] and allowed[new, node]
+                if open_ and (best[node] < 0 or _before(strength, new, node, best[node], node)):
+                    best[node] = new
             new = -1
             for node in range(n):
-                if not inside[node] and best[node] >= 0:
-                    if new < 0 or _before(strength, best[node], node, best[new], new):
-                        new = node
+                reached = not inside[node] and best[node] >= 0
+                if reached and (new < 0 or _before(strength, best[node], node, best[new], new)):
+                    new = node
     return joined
 
 
@@ -71,7 +71,7 @@ def forest_level(left: np.ndarray, right: np.ndarray, p: np.ndarray, n: int, tes
         if p[start] * tested <= alpha * edges:
             found = p[start]
         if edges == n - 1:
-            return p[p.size - 1]
+            return float(p[p.size - 1])
         start = stop
     return found
 

@@ -86,7 +86,7 @@ def reduce_tile(
     groups, classes, blocks = counts.shape[0], sets.margins.shape[1], sets.blocks
     heights = sets.starts[left[first:last] + 1] - sets.starts[left[first:last]]
     widths = sets.starts[right[first:last] + 1] - sets.starts[right[first:last]]
-    most = np.int64((heights * widths).max())
+    most = int((heights * widths).max())
     own = np.empty(groups * most, np.int32)
     total, some = np.empty((classes, most), np.int32), np.empty((classes, most), np.int32)
     rooms = _rooms(classes, most, max(heights.max(), widths.max()))
@@ -143,8 +143,9 @@ def reduce_family(
 ) -> None:
     """Compute the statistics of the last two members of a family given the class and the members before, in K sets.
 
-    counts (B * C, cells) int32 and total (C, cells): joint levels of ``sizes`` (m,), the last fastest; unless ``plain``,
-    set k takes level x of member m for ``levels[k, starts[m] + x]``, of ``seen`` (K, m); out (K, COLUMNS), of zeros.
+    counts (B * C, cells) int32 and total (C, cells): joint levels of ``sizes`` (m,), the last fastest; unless
+    ``plain``, set k takes level x of member m for ``levels[k, starts[m] + x]``, of ``seen`` (K, m); out (K, COLUMNS),
+    of zeros.
     """
     classes, cells = total.shape
     whole, merged = np.empty((classes, cells), np.int32), np.empty(classes * cells, np.int32)
