@@ -11,6 +11,7 @@ from bnx.storing import Store
 __all__ = ["STRETCH", "Cells", "stretches"]
 
 STRETCH = 1 << 16  # rows handled at a time
+_FILLED = 1 << 22  # cells that are filled in before their pages are let go
 _LONGEST = 1 << 25  # cells of a piece, at most, while nobody knows how many are to come
 
 
@@ -50,6 +51,8 @@ class Cells:
             self._rows += step
             yield slice(done, done + step), self._pieces[-1][place : place + step]
             done += step
+            if (place + step) // _FILLED > place // _FILLED:
+                self._store.let_go(self._pieces[-1][(place // _FILLED) * _FILLED : place + step])
 
     def part(self, rows: slice) -> np.ndarray:
         """Give the values of a stretch, or of rows inside one."""
@@ -69,6 +72,7 @@ class Cells:
 
     def clear(self) -> None:
         """Give all memory back."""
+        self.let_go()
         self._pieces, self._starts, self._rows, self._room = [], [], 0, 0
 
     def let_go(self) -> None:

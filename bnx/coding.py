@@ -156,7 +156,9 @@ def _gathered(
 
 def _with_class(raw: _Raw) -> tuple[_Raw, list[str]]:
     """Drop the rows whose class is blank."""
-    kept = np.concatenate([~raw.target.blanks(rows) for rows in raw.lines.stretches()] or [np.zeros(0, np.bool_)])
+    kept = np.empty(raw.lines.read, np.bool_)
+    for rows in raw.lines.stretches():
+        np.logical_not(raw.target.blanks(rows), out=kept[rows])
     lines = Lines.marked(kept)
     if lines.count == lines.read:
         return raw, []
@@ -192,6 +194,7 @@ def _screened(
 
     def look(name: str) -> tuple[str, Tally, str | None]:
         found = tally(raw.attributes[name], raw.lines, raw.store)
+        raw.attributes[name].cells.let_go()
         return name, found, reason_to_leave_out(raw.attributes[name], found, raw.target, levels, raw.lines, drops)
 
     with ThreadPoolExecutor(raw.jobs) as pool:
@@ -276,6 +279,7 @@ def _coded(raw: _Raw, used: Mapping[str, Tally]) -> tuple[CodedTable, list[str]]
         cells = raw.attributes[name].cells
         _write(levelled[number], cells, raw.lines, codes[number])
         cells.clear()
+        raw.store.let_go(codes[number])
         return levelled[number].domain
 
     with ThreadPoolExecutor(raw.jobs) as pool:

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-__all__ = ["FamilyCounts", "PairCounts", "PairLayout", "sum_blocks"]
+__all__ = ["FamilyCounts", "PairCounts", "PairLayout"]
 
 
 @dataclass(frozen=True)
@@ -63,27 +63,3 @@ class FamilyCounts:
     def __sub__(self, other: "FamilyCounts") -> "FamilyCounts":
         """Take rows away again."""
         return FamilyCounts(self.members, self.sizes, self.counts - other.counts)
-
-
-_GATHERED = 1 << 16  # cells that are gathered and summed at once; more of them are added block by block
-
-
-def _sum(counts: np.ndarray, blocks: np.ndarray) -> np.ndarray:
-    """Sum some blocks of counts (blocks, C, cells), as (C, cells) int32."""
-    if len(blocks) * counts[0].size <= _GATHERED:
-        return np.asarray(counts[blocks].sum(axis=0, dtype=np.int32))
-    result = np.zeros(counts.shape[1:], np.int32)
-    for block in blocks:
-        result += counts[block]
-    return result
-
-
-def sum_blocks(counts: np.ndarray, total: np.ndarray, mask: np.ndarray) -> np.ndarray:
-    """Sum counts (blocks, C, cells) over the blocks of ``mask`` (blocks,) bool, as (C, cells) int32.
-
-    A training set leaves few blocks out, so it is the ``total`` minus those.
-    """
-    chosen, missing = np.flatnonzero(mask), np.flatnonzero(~mask)
-    if len(missing) < len(chosen):
-        return np.asarray(total - _sum(counts, missing))
-    return _sum(counts, chosen)

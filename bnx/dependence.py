@@ -2,6 +2,8 @@
 
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
+from functools import partial
+from typing import Any
 
 import numpy as np
 
@@ -119,17 +121,12 @@ def _measure(
     for tile in tiles_of(fine.sizes, by_planes, _CELLS // len(groups)):
         counts = count_tile(engine.codes, recode, fine.plain, tile, groups, engine.jobs, engine.map)
         pairs = (tile.places, tile.left_ends, tile.right_ends, number[tile.left_ends, tile.right_ends])
-        into = (out, marginal)
-        engine.map(
-            lambda share, counts=counts, stride=tile.stride, pairs=pairs: reduce_tile(
-                counts, stride, *pairs, sets, *share, *into
-            ),
-            shares(len(tile.places), 16 * engine.jobs),
-        )
+        reduce = partial(_reduce, (counts, tile.stride, *pairs, sets), (out, marginal))
+        engine.map(reduce, shares(len(tile.places), 16 * engine.jobs))
         done += len(tile.places)
         engine.progress(_STAGE, done, out.shape[1])
 
-    def large(pair: tuple[int, int]) -> None:
+    def large(pair: list[int]) -> None:
         i, j = pair
         place = number[i, j]
         if by_block_pays(engine, int(fine.sizes[i] * fine.sizes[j])):
@@ -138,9 +135,15 @@ def _measure(
         else:
             _anew(engine, trainings, i, j, out[:, place], marginal[place : place + 1])
 
-    engine.map(large, zip(*(ends.tolist() for ends in np.nonzero(above & ~by_planes)), strict=True), "")
+    engine.map(large, np.argwhere(above & ~by_planes).tolist())
     if done < out.shape[1]:
         engine.progress(_STAGE, out.shape[1], out.shape[1])
+
+
+def _reduce(given: tuple[Any, ...], into: tuple[np.ndarray, np.ndarray], share: tuple[int, int]) -> None:
+    """Reduce a share of a tile's pairs."""
+    arguments = (*given, *share, *into)
+    reduce_tile(*arguments)
 
 
 def by_block_pays(engine: LocalEngine, cells: int) -> bool:
@@ -155,7 +158,8 @@ def _sets(engine: LocalEngine, trainings: Sequence[Training], fine: Refinement) 
     margins = np.zeros((len(trainings), engine.classes, int(fine.starts[-1])), np.int32)
     for i, margin in enumerate(engine.margins):
         merged = np.zeros((engine.blocks, engine.classes, fine.sizes[i]), np.int64)
-        np.add.at(merged, (slice(None), slice(None), fine.recode[i, : margin.shape[2]]), margin)
+        for stored, level in enumerate(fine.recode[i, : margin.shape[2]].tolist()):
+            merged[:, :, level] += margin[:, :, stored]
         margins[:, :, fine.starts[i] : fine.starts[i + 1]] = np.tensordot(masks.astype(np.int64), merged, 1)
     return Sets(blocks_of_masks(masks), fine.starts, margins, fine.levels, fine.view_sizes, fine.plain)
 

@@ -1,6 +1,7 @@
 """Count the pairs of a tile by block and class, on several threads."""
 
 from collections.abc import Callable, Iterable
+from functools import partial
 from itertools import pairwise
 from typing import Any
 
@@ -119,5 +120,11 @@ def count_layout(
         found = count_tile(codes, recode, plain, tile, groups, jobs, run)
         offsets = layout.offsets[number[tile.left_ends, tile.right_ends]]
         pairs = (found, tile.stride, tile.places, tile.left_ends, tile.right_ends, level_starts, flat, offsets)
-        run(lambda share, pairs=pairs: complete_tables(*pairs, *share, out), shares(len(flat), 4 * jobs))
+        run(partial(_complete, pairs, out), shares(len(flat), 4 * jobs))
     return PairCounts(layout, out.reshape(blocks, classes, -1))
+
+
+def _complete(pairs: tuple[Any, ...], out: np.ndarray, share: tuple[int, int]) -> None:
+    """Write out whole tables of a share of the groups."""
+    arguments = (*pairs, *share, out)
+    complete_tables(*arguments)

@@ -16,7 +16,7 @@ from bnx.storing import Store
 __all__ = ["gather"]
 
 _COLUMNS = 256  # read at a time, at most, so that a block of a wide table stays small
-_BYTES = 1 << 24  # of text that is coded at a time: distinct texts are looked up once for all of it
+_BYTES, _ROWS = 1 << 24, 1 << 16  # of text that is coded at a time: distinct texts are looked up once for all of it
 
 Failure = tuple[int, int, DataError]  # rows read before, place of the column (-1: the block itself), why
 
@@ -86,12 +86,12 @@ def _gather_blocks(source: Source, gatherers: Sequence[Gatherer], jobs: int) -> 
 def _larger(parts: Iterable[pa.RecordBatch]) -> Iterator[list[pa.RecordBatch]]:
     """Put neighbouring blocks together."""
     held: list[pa.RecordBatch] = []
-    size = 0
+    size = rows = 0
     for part in parts:
         held.append(part)
-        size += part.nbytes
-        if size >= _BYTES:
+        size, rows = size + part.nbytes, rows + part.num_rows
+        if size >= _BYTES or rows >= _ROWS:
             yield held
-            held, size = [], 0
+            held, size, rows = [], 0, 0
     if held:
         yield held

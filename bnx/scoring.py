@@ -53,8 +53,8 @@ class Counted:
 class Terms:
     """What the tables of some families say for each class against the first, nats.
 
-    ``which`` (K,): the families; ``starts`` (K,): first cell of each in ``table`` (cells, T), whose first columns are
-    in use, C - 1 for each smoothing.
+    ``which`` (K,): the families; ``starts`` (K,): first cell of each in ``table`` (1 + cells, T), whose first row says
+    nothing and whose first columns are in use, C - 1 for each smoothing.
     """
 
     families: Families
@@ -119,9 +119,9 @@ def terms_of(counted: Counted, which: np.ndarray, smoothings: Sequence[Smoothing
     """Smooth some families (K,) in several ways."""
     one = counted.families
     ends = np.cumsum(one.starts[which + 1] - one.starts[which])
-    starts = np.concatenate([[0], ends[:-1]]).astype(np.int64)
+    starts = 1 + np.concatenate([[0], ends[:-1]]).astype(np.int64)
     columns = len(smoothings) * (len(counted.counts) - 1)
-    table = np.zeros((int(ends[-1]), padded(columns)))
+    table = np.zeros((1 + int(ends[-1]), padded(columns)))
     amounts = np.array([smoothing.amount for smoothing in smoothings])
     laplace = np.array([smoothing.kind == "laplace" for smoothing in smoothings])
     ratio_tables(counted.counts, one.starts, one.sizes, one.depths, which, amounts, laplace, starts, table)

@@ -30,7 +30,7 @@ class Structure:
             raise StructureError(f"the parents in {self.name} form a cycle; no attribute may be an ancestor of itself")
 
     def _has_cycle(self) -> bool:
-        """Take attributes away whose parents are gone, as long as there are any; what stays lies on a cycle or below."""
+        """Take away attributes whose parents are gone, as long as there are any; what stays is on a cycle or below."""
         missing = [len(parents) for parents in self.parents]
         children: list[list[int]] = [[] for _ in self.parents]
         for parent, child in self.edges:

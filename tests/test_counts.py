@@ -8,11 +8,12 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from bnx.coarsening import coarsen
-from bnx.counts import FamilyCounts, PairCounts, PairLayout, sum_blocks
+from bnx.counts import FamilyCounts, PairCounts, PairLayout
 from bnx.dependence import measure
 from bnx.domains import Domain
 from bnx.engines import LocalEngine
 from bnx.families import for_each_family
+from bnx.kernels.reducing import blocks_of_masks, sum_all, sum_set
 from bnx.trainings import Training, held_sets, mask_without
 from bnx.views import View, make_view
 
@@ -64,8 +65,11 @@ def test_blocks_of_a_mask_are_the_rows_of_those_blocks(
     by_block = counted(started(coded(codes, target, SIZES, 2), part, 4))
     alone = counted(started(coded(codes[:, chosen], target[chosen], SIZES, 2)))
     for blocks, expected in zip(by_block, alone, strict=True):
-        total = blocks.counts.sum(axis=0, dtype=np.int32)
-        found = sum_blocks(blocks.counts, total, np.array(mask))
+        flat = blocks.counts.reshape(8, -1)
+        total, found = np.empty((2, 2, flat.shape[1]), np.int32)
+        sum_all(flat, 2, total)
+        sum_set(flat, 2, *blocks_of_masks(np.array([mask])).of(0), total, found)
+        assert np.array_equal(total, blocks.counts.sum(axis=0))
         assert np.array_equal(found, expected.counts[0])
 
 

@@ -166,7 +166,7 @@ def start_local(
             starts = part.start + np.concatenate([[0], np.cumsum(lengths[-1])])
 
             def sort(i: int, part: slice = part, order: np.ndarray = order, starts: np.ndarray = starts) -> None:
-                codes[i, part] = table.codes[i, part][order]
+                codes[i, part] = np.take(table.codes[i, part], order, mode="clip")
                 count_cells(codes, _NO_RECODE, True, np.array([i]), sizes[i : i + 1], starts, slots, counts[i])
                 store.let_go(codes[i, part])
 

@@ -16,11 +16,11 @@ _ROOT_HALF = 0x3FE6A09E667F3BCD  # the pattern of the root of 1/2
 
 @njit(nogil=True, cache=True)
 def exponentials(x: np.ndarray, work: np.ndarray) -> None:
-    """Replace ``x`` (n,), at most 700, by e ** x; what lies below -708 counts as -708. work (3, n) float64.
+    """Replace ``x`` (n,), at most 700, by e ** x; what lies below -708 counts as -708. work (at least 3 n,) float64.
 
     2 ** k times the Taylor polynomial of degree 13 of the rest, which is at most half of ln 2: within 1e-15, relative.
     """
-    shifted, rest, scale = work[0], work[1], work[2]
+    shifted, rest, scale = work[: x.size], work[x.size : 2 * x.size], work[2 * x.size : 3 * x.size]
     low_bits, exponent = shifted.view(np.int64), scale.view(np.int64)
     for i in range(x.size):
         whole = max(x[i], _LOWEST)
@@ -50,13 +50,13 @@ def exponentials(x: np.ndarray, work: np.ndarray) -> None:
 
 @njit(nogil=True, cache=True)
 def logarithms(x: np.ndarray, work: np.ndarray) -> None:
-    """Replace ``x`` (n,), normal numbers above 0, by ln x. work (2, n) float64.
+    """Replace ``x`` (n,), normal numbers above 0, by ln x. work (at least 2 n,) float64.
 
     x = 2 ** k m with m around 1, and ln m = 2 artanh((m - 1) / (m + 1)) by its power series: within 4e-16 of ln x and
     of 4e-16, relative.
     """
-    bits, whole = x.view(np.int64), work[0].view(np.int64)
-    power, ratio = work[0], work[1]
+    power, ratio = work[: x.size], work[x.size : 2 * x.size]
+    bits, whole = x.view(np.int64), power.view(np.int64)
     for i in range(x.size):
         k = (bits[i] - _ROOT_HALF) >> 52
         bits[i] -= k << 52

@@ -6,7 +6,7 @@ from numba import njit
 __all__ = ["forest_level", "strongest_few", "strongest_forest"]
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def strongest_forest(strength: np.ndarray, allowed: np.ndarray) -> np.ndarray:
     """Find the strongest forest of allowed edges, whatever their strengths: as many edges as can be.
 
@@ -32,18 +32,18 @@ def strongest_forest(strength: np.ndarray, allowed: np.ndarray) -> np.ndarray:
             inside[new] = True
             joined[new] = best[new]
             for node in range(n):
-                if not inside[node] and allowed[new, node]:
-                    if best[node] < 0 or _before(strength, new, node, best[node], node):
-                        best[node] = new
+                open_ = not inside[node] and allowed[new, node]
+                if open_ and (best[node] < 0 or _before(strength, new, node, best[node], node)):
+                    best[node] = new
             new = -1
             for node in range(n):
-                if not inside[node] and best[node] >= 0:
-                    if new < 0 or _before(strength, best[node], node, best[new], new):
-                        new = node
+                reached = not inside[node] and best[node] >= 0
+                if reached and (new < 0 or _before(strength, best[node], node, best[new], new)):
+                    new = node
     return joined
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def _before(strength: np.ndarray, a: int, b: int, c: int, d: int) -> bool:
     """Tell whether edge a - b comes before edge c - d."""
     if strength[a, b] != strength[c, d]:
@@ -52,7 +52,7 @@ def _before(strength: np.ndarray, a: int, b: int, c: int, d: int) -> bool:
     return low < other or (low == other and max(a, b) < max(c, d))
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def forest_level(left: np.ndarray, right: np.ndarray, p: np.ndarray, n: int, tested: int, alpha: float) -> float:
     """Find the largest p with p x tested / edges <= alpha, edges being those of the forest of pairs up to p.
 
@@ -71,12 +71,12 @@ def forest_level(left: np.ndarray, right: np.ndarray, p: np.ndarray, n: int, tes
         if p[start] * tested <= alpha * edges:
             found = p[start]
         if edges == n - 1:
-            return p[p.size - 1]
+            return float(p[p.size - 1])
         start = stop
     return found
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def _root(root: np.ndarray, node: int) -> int:
     """Find the root of a tree, halving the path on the way."""
     while root[node] != node:
@@ -85,7 +85,7 @@ def _root(root: np.ndarray, node: int) -> int:
     return node
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def strongest_few(strength: np.ndarray, rank: np.ndarray, barred: np.ndarray, most: int) -> np.ndarray:
     """List, for every attribute, the strongest of those of a lower rank, strongest first, ties by number.
 

@@ -4,7 +4,6 @@ Bits lie word by word, ``planes[word, plane]``: bit k of a word is row k of its 
 level with eight others, and counts come out side by side, whatever the number of rows.
 """
 
-from collections.abc import Callable
 from typing import Any
 
 import numpy as np
@@ -20,6 +19,7 @@ DOWN = 4  # planes of a tile on the left; sides are padded to whole tiles
 ACROSS = 8  # planes of a vector on the right
 _VECTORS = 4  # vectors of a tile: 4 x 4 sums stay in registers
 _WORDS = 256  # words of 64 rows that are packed at a time; measured
+_build: Any = cgutils  # it has no annotations
 
 
 # Intrinsics take numba's own types, which have no annotations: hence the ignored errors.
@@ -48,7 +48,7 @@ def _spread(builder: Any, value: Any, lanes: int) -> Any:
     return builder.shuffle_vector(alone, ir.Constant(vector, ir.Undefined), everywhere)
 
 
-def _tile_of(vectors: int) -> Callable[..., Any]:
+def _tile_of(vectors: int) -> Any:
     """Make the counting of DOWN planes with ``vectors`` * ACROSS others, all sums in registers."""
     lanes = ir.VectorType(ir.IntType(64), ACROSS)
     cells = ir.VectorType(ir.IntType(32), ACROSS)
@@ -57,16 +57,16 @@ def _tile_of(vectors: int) -> Callable[..., Any]:
         planes, width, a, b, words, out, place, stride = arguments
         bits = context.make_array(signature.args[0])(context, builder, planes).data
         into = context.make_array(signature.args[5])(context, builder, out).data
-        ones = cgutils.get_or_insert_function(builder.module, ir.FunctionType(lanes, [lanes]), "llvm.ctpop.v8i64")
+        ones = _build.get_or_insert_function(builder.module, ir.FunctionType(lanes, [lanes]), "llvm.ctpop.v8i64")
 
         def vector(pointer: Any, at: Any, number: int, kind: Any) -> Any:
             place = builder.gep(pointer, [builder.add(at, ir.Constant(at.type, number * ACROSS))])
             return builder.bitcast(place, kind.as_pointer())
 
-        sums = [[cgutils.alloca_once(builder, lanes) for _ in range(vectors)] for _ in range(DOWN)]
+        sums = [[_build.alloca_once(builder, lanes) for _ in range(vectors)] for _ in range(DOWN)]
         for place_of_sum in (one for row in sums for one in row):
             builder.store(ir.Constant(lanes, [0] * ACROSS), place_of_sum)
-        with cgutils.for_range(builder, words) as loop:
+        with _build.for_range(builder, words) as loop:
             base = builder.mul(loop.index, width)
             right = [builder.load(vector(bits, builder.add(base, b), v, lanes), align=8) for v in range(vectors)]
             left = builder.gep(bits, [builder.add(base, a)])
@@ -89,14 +89,13 @@ def _tile_of(vectors: int) -> Callable[..., Any]:
         whole = types.int64
         return types.void(planes, whole, whole, whole, whole, out, whole, whole), generate
 
-    made: Callable[..., Any] = tile
-    return made
+    return tile
 
 
 _one, _two, _three, _four = (_tile_of(vectors) for vectors in range(1, _VECTORS + 1))
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def pack_planes(codes: np.ndarray, first: int, rows: int, size: int, planes: np.ndarray) -> None:
     """Write one bit per row and level for ``rows`` codes from ``first`` on; the last level has no plane.
 
@@ -114,7 +113,7 @@ def pack_planes(codes: np.ndarray, first: int, rows: int, size: int, planes: np.
             planes[whole, level] = _equals(tail, 0, level)
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def count_planes(
     codes: np.ndarray,
     recode: np.ndarray,
@@ -133,7 +132,8 @@ def count_planes(
 
     Args:
         codes: unsigned integers (n, N).
-        recode: of the same kind (n, R): what each stored code stands for, read where not ``plain`` (n,) bool.
+        recode: of the same kind (n, R): what each stored code stands for.
+        plain: bool (n,): attributes whose codes stand for themselves.
         members: attributes to pack, (m,).
         sizes: their levels, (m,).
         columns: the first plane of each, (m,); the left side starts at plane 0.
@@ -169,7 +169,7 @@ def count_planes(
         _multiply(planes.reshape(-1), filled, width, right, needed, out)
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def _multiply(planes: np.ndarray, words: int, width: int, right: int, needed: np.ndarray, out: np.ndarray) -> None:
     """Add the common ones of the first words of all planes that are needed."""
     stride = needed.shape[1] * ACROSS

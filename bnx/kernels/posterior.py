@@ -63,14 +63,14 @@ def posteriors(
     shares (C,).
     """
     classes = bias.shape[1]
-    room, work = np.empty(classes * _ROWS), np.empty((3, classes * _ROWS))
+    room, work = np.empty(classes * _ROWS), np.empty(3 * classes * _ROWS)
     top = np.empty(_ROWS)
     for first in range(0, out.shape[0], _ROWS):
         rows = min(_ROWS, out.shape[0] - first)
         flat = room[: classes * rows]
         power = flat.reshape(classes, rows)
         _power(evidence, first, bias, temperature, power, top)
-        _exponentials(flat, work[:, : flat.size])
+        _exponentials(flat, work)
         for k in range(rows):
             top[k] = 0.0
         for c in range(classes):
@@ -93,7 +93,7 @@ def calibrated_loss(
 ) -> float:
     """Sum the weighted log losses (nats) of rows under a calibration, as in ``posteriors``; truth, weights (N,)."""
     classes = bias.shape[1]
-    room, work = np.empty(classes * _ROWS), np.empty((3, classes * _ROWS))
+    room, work = np.empty(classes * _ROWS), np.empty(3 * classes * _ROWS)
     top, own = np.empty(_ROWS), np.empty(_ROWS)
     total = 0.0
     for first in range(0, truth.size, _ROWS):
@@ -119,7 +119,7 @@ def block_loss(
 ) -> float:
     """Sum the weighted log losses (nats) of a block of log weights ``power`` (C, rows), ``flat`` being the same."""
     classes, rows = power.shape
-    _exponentials(flat, work[:, : flat.size])
+    _exponentials(flat, work)
     least = 1.0
     for k in range(rows):
         whole = 0.0
@@ -128,7 +128,7 @@ def block_loss(
         own[k] = (1.0 - floor) * (power[truth[k], k] / whole) + floor * shares[truth[k]]
         least = min(least, own[k])
     if least > 1e-300:
-        logarithms(own[:rows], work[:2, :rows])
+        logarithms(own[:rows], work)
     else:
         for k in range(rows):
             own[k] = np.log(own[k])
@@ -154,7 +154,7 @@ def calibration_sums(
     """
     classes = offsets.size
     room, slopes = np.empty(classes * _ROWS), np.zeros((classes, _ROWS))
-    work, top, own, centre = np.empty((3, classes * _ROWS)), np.empty(_ROWS), np.empty(_ROWS), np.empty(_ROWS)
+    work, top, own, centre = np.empty(3 * classes * _ROWS), np.empty(_ROWS), np.empty(_ROWS), np.empty(_ROWS)
     value = 0.0
     for first in range(0, truth.size, _ROWS):
         rows = min(_ROWS, truth.size - first)
@@ -164,7 +164,7 @@ def calibration_sums(
         _tilted(evidence, prior, first, temperature, offsets, slopes, p, top)
         for k in range(rows):
             own[k] = p[truth_[k], k]
-        _exponentials(flat, work[:, : flat.size])
+        _exponentials(flat, work)
         for k in range(rows):
             top[k] = 0.0
         for c in range(classes):
@@ -173,7 +173,7 @@ def calibration_sums(
         for c in range(classes):
             for k in range(rows):
                 p[c, k] /= top[k]
-        logarithms(top[:rows], work[:2, :rows])
+        logarithms(top[:rows], work)
         for k in range(rows):
             own[k] = weights_[k] * (top[k] - own[k])
         value += total_of(own[:rows])
@@ -262,7 +262,7 @@ def slope_sums(p: np.ndarray, first: int, last: int, truth: np.ndarray, power: f
     """
     classes = p.shape[1]
     room, room_logs = np.empty(classes * _ROWS), np.empty(classes * _ROWS)
-    work, top = np.empty((3, classes * _ROWS)), np.empty(_ROWS)
+    work, top = np.empty(3 * classes * _ROWS), np.empty(_ROWS)
     centre, square = np.empty(_ROWS), np.empty(_ROWS)
     for low in range(first, last, _ROWS):
         rows = min(_ROWS, last - low)
@@ -271,7 +271,7 @@ def slope_sums(p: np.ndarray, first: int, last: int, truth: np.ndarray, power: f
         for c in range(classes):
             for k in range(rows):
                 logs[c, k] = max(p[low + k, c], 2.2250738585072014e-308)
-        logarithms(flat_logs, work[:2, : flat.size])
+        logarithms(flat_logs, work)
         for k in range(rows):
             top[k] = logs[0, k]
         for c in range(1, classes):
@@ -280,7 +280,7 @@ def slope_sums(p: np.ndarray, first: int, last: int, truth: np.ndarray, power: f
         for c in range(classes):
             for k in range(rows):
                 weight[c, k] = power * (logs[c, k] - top[k])
-        exponentials(flat, work[:, : flat.size])
+        exponentials(flat, work)
         for k in range(rows):
             top[k] = centre[k] = square[k] = 0.0
         for c in range(classes):

@@ -5,9 +5,10 @@ from numba import njit
 
 __all__ = ["HISTOGRAM_BINS", "add_to_histograms", "pack_scores", "rank_sums", "sort_whole"]
 
-_BITS = 11  # of a number are sorted by at a time
-_LOW, _HIGH = 33, 66  # bits below the first are only looked at where the upper ones, up to the second, are equal
-_FEW = 24  # numbers that are sorted by insertion
+_LOW, _HIGH = 33, 63  # numbers are sorted by these bits first, the lower ones then only need mending
+_DIGIT, _LOW_DIGIT = 10, 11  # bits sorted by at a time, above and below
+_PATIENCE = 4  # moves per number that mending may take before runs are sorted by their lower bits
+_FEW = 24  # numbers that are always sorted by insertion
 
 _FINE = 8  # leading binary digits of a score, and of what it lacks to 1, that tell its bin in a histogram
 _OCTAVES = 32  # halvings of 1/2 that are told apart
@@ -18,60 +19,67 @@ _SMALLEST = (1023 - 1 - _OCTAVES) << _FINE  # the leading digits of the smallest
 
 @njit(nogil=True, cache=True)
 def sort_whole(numbers: np.ndarray) -> np.ndarray:
-    """Sort whole numbers (N,) int64, none negative: by 11 bits at a time from bit 33 up, then runs of equal upper bits.
+    """Sort whole numbers (N,) int64 from 0 to below 2 ** 63, best those that differ above bit 33.
 
-    The input is overwritten.
+    By digits of 10 bits from bit 33 up; the order is then mended by insertion or, where that takes long, by sorting
+    runs of equal upper bits by the lower ones. The input is overwritten.
 
     Source: Knuth 1998, section 5.2.5 (radix sorting; from memory).
     """
-    room = np.empty_like(numbers)
-    here = _sort_by_bits(numbers, room, _LOW, _HIGH)
+    here = _sort_by_bits(numbers, np.empty_like(numbers), _LOW, _HIGH, _DIGIT)
+    if _insert(here, 0, here.size, _PATIENCE * here.size):
+        return here
     start = 0
     while start < here.size:
         end = start + 1
         while end < here.size and here[end] >> _LOW == here[start] >> _LOW:
             end += 1
         if end - start <= _FEW:
-            _insert(here, start, end)
+            _insert(here, start, end, _FEW * _FEW)
         else:
             run = here[start:end].copy()
-            here[start:end] = _sort_by_bits(run, np.empty_like(run), 0, _LOW)
+            here[start:end] = _sort_by_bits(run, np.empty_like(run), 0, _LOW, _LOW_DIGIT)
         start = end
     return here
 
 
 @njit(nogil=True, cache=True)
-def _insert(numbers: np.ndarray, start: int, end: int) -> None:
-    """Sort a few numbers in place."""
+def _insert(numbers: np.ndarray, start: int, end: int, moves: int) -> bool:
+    """Sort in place by insertion; give up after so many moves, each number being there once."""
     for k in range(start + 1, end):
         one, at = numbers[k], k
         while at > start and numbers[at - 1] > one:
             numbers[at] = numbers[at - 1]
             at -= 1
         numbers[at] = one
+        moves -= k - at
+        if moves < 0:
+            return False
+    return True
 
 
 @njit(nogil=True, cache=True)
-def _sort_by_bits(here: np.ndarray, there: np.ndarray, low: int, high: int) -> np.ndarray:
-    """Sort by the bits ``low:high``, from the lowest up; both arrays are overwritten, and one of them is returned."""
-    passes = (high - low) // _BITS
-    counts = np.zeros((passes, 1 << _BITS), np.int64)
-    mask = (1 << _BITS) - 1
+def _sort_by_bits(here: np.ndarray, there: np.ndarray, low: int, high: int, digit: int) -> np.ndarray:
+    """Sort by the bits ``low:high``, a digit at a time; both arrays are overwritten, and one of them is returned."""
+    passes = (high - low) // digit
+    counts = np.zeros((passes, 1 << digit), np.int64)
+    mask = (1 << digit) - 1
     for number in here:
         for k in range(passes):
-            counts[k, (number >> (low + k * _BITS)) & mask] += 1
+            counts[k, (number >> (low + k * digit)) & mask] += 1
     for k in range(passes):
-        if counts[k].max() == here.size:
+        own = counts[k]
+        if own.max() == here.size:
             continue
         at = 0
-        for digit in range(mask + 1):
-            held = counts[k, digit]
-            counts[k, digit] = at
+        for d in range(own.size):
+            held = own[d]
+            own[d] = at
             at += held
         for number in here:
-            digit = (number >> (low + k * _BITS)) & mask
-            there[counts[k, digit]] = number
-            counts[k, digit] += 1
+            d = (number >> (low + k * digit)) & mask
+            there[own[d]] = number
+            own[d] += 1
         here, there = there, here
     return here
 
@@ -92,11 +100,12 @@ def pack_scores(p: np.ndarray, first: int, last: int, truth: np.ndarray, column:
             out[row - first] = truth[row] == column
     else:
         for row in range(first, last):
-            label = 0
+            label, largest = 0, p[row, 0]
             for c in range(1, classes):
-                if p[row, c] > p[row, label]:
-                    label = c
-            scores[row - first] = p[row, label] + 0.0
+                better = p[row, c] > largest
+                label = c if better else label
+                largest = p[row, c] if better else largest
+            scores[row - first] = largest + 0.0
             out[row - first] = truth[row] == label
     patterns = scores.view(np.int64)
     for k in range(out.size):

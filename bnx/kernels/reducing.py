@@ -63,7 +63,7 @@ def blocks_of_masks(masks: np.ndarray) -> Blocks:
     return Blocks(np.argsort(~named, axis=1, kind="stable"), named.sum(axis=1), missing)
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def reduce_tile(
     counts: np.ndarray,
     stride: int,
@@ -84,14 +84,17 @@ def reduce_tile(
     (K, pairs, COLUMNS), zero on entry, and in ``marginal`` (pairs or 0, COLUMNS): the first set without the class.
     """
     groups, classes, blocks = counts.shape[0], sets.margins.shape[1], sets.blocks
-    heights = sets.starts[left[first:last] + 1] - sets.starts[left[first:last]]
-    widths = sets.starts[right[first:last] + 1] - sets.starts[right[first:last]]
-    most = np.int64((heights * widths).max())
+    most, levels = 1, 1
+    for p in range(first, last):
+        h = sets.starts[left[p] + 1] - sets.starts[left[p]]
+        w = sets.starts[right[p] + 1] - sets.starts[right[p]]
+        most, levels = max(most, h * w), max(levels, h, w)
     own = np.empty(groups * most, np.int32)
     total, some = np.empty((classes, most), np.int32), np.empty((classes, most), np.int32)
-    rooms = _rooms(classes, most, max(heights.max(), widths.max()))
+    rooms = _rooms(classes, most, levels)
     for p in range(first, last):
-        h, w = heights[p - first] - 1, widths[p - first] - 1
+        i, j = left[p], right[p]
+        h, w = sets.starts[i + 1] - sets.starts[i] - 1, sets.starts[j + 1] - sets.starts[j] - 1
         cells = h * w
         mine = own[: groups * cells].reshape(groups, cells)
         for g in range(groups):
@@ -99,7 +102,6 @@ def reduce_tile(
                 for b in range(w):
                     mine[g, a * w + b] = counts[g, places[p] + a * stride + b]
         sum_all(mine, classes, total)
-        i, j = left[p], right[p]
         for k in range(blocks.numbers.size):
             sum_set(mine, classes, blocks.blocks[k], blocks.numbers[k], blocks.missing[k], total, some)
             for c in range(classes):
@@ -111,7 +113,7 @@ def reduce_tile(
                 _marginal(sets, i, j, rooms, marginal[numbers[p]])
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def reduce_table(counts: np.ndarray, i: int, j: int, sets: Sets, out: np.ndarray, marginal: np.ndarray) -> None:
     """Compute the statistics of one pair of attributes in every set from whole tables (B * C, cells) int32.
 
@@ -129,7 +131,7 @@ def reduce_table(counts: np.ndarray, i: int, j: int, sets: Sets, out: np.ndarray
             _marginal(sets, i, j, rooms, marginal[0])
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def reduce_family(
     counts: np.ndarray,
     total: np.ndarray,
@@ -143,8 +145,9 @@ def reduce_family(
 ) -> None:
     """Compute the statistics of the last two members of a family given the class and the members before, in K sets.
 
-    counts (B * C, cells) int32 and total (C, cells): joint levels of ``sizes`` (m,), the last fastest; unless ``plain``,
-    set k takes level x of member m for ``levels[k, starts[m] + x]``, of ``seen`` (K, m); out (K, COLUMNS), of zeros.
+    counts (B * C, cells) int32 and total (C, cells): joint levels of ``sizes`` (m,), the last fastest; unless
+    ``plain``, set k takes level x of member m for ``levels[k, starts[m] + x]``, of ``seen`` (K, m); out (K, COLUMNS),
+    of zeros.
     """
     classes, cells = total.shape
     whole, merged = np.empty((classes, cells), np.int32), np.empty(classes * cells, np.int32)
@@ -166,7 +169,7 @@ def reduce_family(
         add_table(tables, 0, height, width, down, across, out[k])
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def merge_cells(
     counts: np.ndarray, sizes: np.ndarray, starts: np.ndarray, levels: np.ndarray, seen: np.ndarray, out: np.ndarray
 ) -> None:
@@ -184,7 +187,7 @@ def merge_cells(
             out[c, place] += counts[c, cell]
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def complete_tables(
     counts: np.ndarray,
     stride: int,
@@ -217,7 +220,7 @@ def complete_tables(
             _complete(compact, h + 1, w + 1, down, across, out[g, offsets[p] :])
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def _rooms(classes: int, cells: int, levels: int) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
     """Make room for whole tables, merged tables, a pooled table and two margins."""
     whole, merged = np.empty((classes, cells), np.int32), np.empty((classes, cells), np.int32)
@@ -225,7 +228,7 @@ def _rooms(classes: int, cells: int, levels: int) -> tuple[np.ndarray, np.ndarra
     return whole, merged, pooled, np.empty(levels, np.int64), np.empty(levels, np.int64)
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def sum_all(counts: np.ndarray, classes: int, total: np.ndarray) -> None:
     """Add up all blocks by class."""
     cells = counts.shape[1]
@@ -238,7 +241,7 @@ def sum_all(counts: np.ndarray, classes: int, total: np.ndarray) -> None:
                 mine[x] += more[x]
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def sum_set(
     counts: np.ndarray, classes: int, blocks: np.ndarray, number: int, missing: bool, total: np.ndarray, out: np.ndarray
 ) -> None:
@@ -256,7 +259,7 @@ def sum_set(
                 mine[x] = total[c, x] - mine[x]
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def _complete(
     compact: np.ndarray, height: int, width: int, down: np.ndarray, across: np.ndarray, out: np.ndarray
 ) -> None:
@@ -276,7 +279,7 @@ def _complete(
         out[(height - 1) * width + b] = across[b] - seen
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def _finish(
     sets: Sets,
     k: int,
@@ -302,7 +305,7 @@ def _finish(
     add_table(merged, 0, height, width, down, across, row)
 
 
-@njit(nogil=True, cache=True)
+@njit(nogil=True, cache=True, error_model="numpy")
 def _marginal(
     sets: Sets,
     i: int,

@@ -35,7 +35,7 @@ def changed_losses(
     shares, truth, weights as in ``calibrated_loss``; out (K,), zeros.
     """
     classes = bias.shape[1]
-    room, work = np.empty(classes * _ROWS), np.empty((3, classes * _ROWS))
+    room, work = np.empty(classes * _ROWS), np.empty(3 * classes * _ROWS)
     base, own = np.empty((classes, _ROWS)), np.empty(_ROWS)
     going, coming = np.empty(_ROWS, np.int32), np.empty(_ROWS, np.int32)
     for low in range(0, truth.size, _ROWS):

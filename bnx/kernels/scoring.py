@@ -8,35 +8,44 @@ from llvmlite import ir
 from numba import njit, types
 from numba.extending import intrinsic
 
-from bnx.kernels.counting import number_cells
 from bnx.kernels.exponentials import exponentials
 
 __all__ = ["add_terms", "tempered_losses"]
 
 _ROOM = 4096  # evidence that rows gather at a time: 32 KiB, so that it stays in the first cache
 _MOST_ROWS = 1024
-_LANES = 8
+_TOGETHER = 4  # families whose terms are added at a time, which saves reading and writing the evidence
 _JOINED = 32  # rows of one weight whose losses are taken together
 
 
 # Intrinsics take numba's own types, which have no annotations: hence the ignored errors.
-@intrinsic
-def _add_eight(typing_context, out, i, terms, j):  # type: ignore[no-untyped-def]
-    """Add ``terms[j:j + 8]`` to ``out[i:i + 8]``, one instruction where the machine has it."""
+def _adder(lanes):  # type: ignore[no-untyped-def]
+    """Make a function that adds four runs of so many numbers to one, an instruction each where the machine has it."""
 
-    def generate(context, builder, signature, arguments):  # type: ignore[no-untyped-def]
-        eight = ir.VectorType(ir.DoubleType(), 8)
+    @intrinsic
+    def add_four(typing_context, out, i, terms, a, b, c, d):  # type: ignore[no-untyped-def]
+        """Add ``terms`` from a, b, c and d on to ``out`` from i on, in this order."""
 
-        places = []
-        for k in (0, 2):
-            array = context.make_array(signature.args[k])(context, builder, arguments[k])
-            places.append(builder.bitcast(builder.gep(array.data, [arguments[k + 1]]), eight.as_pointer()))
-        into, added = places
-        total = builder.fadd(builder.load(into, align=8), builder.load(added, align=8))
-        builder.store(total, into, align=8)
-        return context.get_dummy_value()
+        def generate(context, builder, signature, arguments):  # type: ignore[no-untyped-def]
+            vector = ir.VectorType(ir.DoubleType(), lanes)
+            arrays = [context.make_array(signature.args[k])(context, builder, arguments[k]) for k in (0, 2)]
 
-    return types.void(out, types.int64, terms, types.int64), generate
+            def place(array, number):  # type: ignore[no-untyped-def]
+                return builder.bitcast(builder.gep(array.data, [number]), vector.as_pointer())
+
+            into = place(arrays[0], arguments[1])
+            total = builder.load(into, align=8)
+            for number in arguments[3:]:
+                total = builder.fadd(total, builder.load(place(arrays[1], number), align=8))
+            builder.store(total, into, align=8)
+            return context.get_dummy_value()
+
+        return types.void(out, types.int64, terms, *[types.int64] * 4), generate
+
+    return add_four
+
+
+_add_two_wide, _add_four_wide, _add_eight_wide = _adder(2), _adder(4), _adder(8)
 
 
 @njit(nogil=True, cache=True)
@@ -58,57 +67,75 @@ def add_terms(
 
     members, sizes (F, M): parents in the order taken, then the child, of which the first ``depths`` (F,) count; plain
     (F,) bool: used as stored; which (K,): the families wanted; starts (K,): where the cells of each begin in terms
-    (cells, T) float64; out (last - first, T).
+    (cells, T) float64, T 1, 2, 4 or a multiple of 8; row 0 of terms is zeros; out (last - first, T).
     """
     width = terms.shape[1]
     most = min(_MOST_ROWS, max(64, _ROOM // width))
-    cells = np.empty(most, np.int32)
+    cells = np.zeros((_TOGETHER, most), np.int64)
     flat, into = terms.reshape(-1), out.reshape(-1)
     for low in range(first, last, most):
         rows = min(most, last - low)
-        for k in range(which.size):
-            f = which[k]
-            own = depths[f]
-            number_cells(codes, recode, plain[f], members[f, :own], sizes[f, :own], low, rows, cells)
-            at = (low - first) * width
-            if width % _LANES == 0:
-                _add_wide(into, at, flat, starts[k] * width, cells[:rows], width)
-            else:
-                _add_narrow(into[at : at + rows * width], flat[starts[k] * width :], cells[:rows], width)
+        for k in range(0, which.size, _TOGETHER):
+            for j in range(_TOGETHER):
+                mine = cells[j, :rows]
+                if k + j < which.size:
+                    f = which[k + j]
+                    own = depths[f]
+                    _number(codes, recode, plain[f], members[f, :own], sizes[f, :own], low, starts[k + j], width, mine)
+                else:
+                    mine[:] = 0
+            _add(into, (low - first) * width, flat, cells[:, :rows], width)
 
 
 @njit(nogil=True, cache=True)
-def _add_wide(into: np.ndarray, at: int, flat: np.ndarray, start: int, cells: np.ndarray, width: int) -> None:
-    """Add the terms of cells to rows of evidence, eight columns at a time."""
-    if width == _LANES:
-        for k in range(cells.size):
-            _add_eight(into, at + k * _LANES, flat, start + cells[k] * _LANES)
-    elif width == 2 * _LANES:
-        for k in range(cells.size):
-            to, term = at + k * 2 * _LANES, start + cells[k] * 2 * _LANES
-            _add_eight(into, to, flat, term)
-            _add_eight(into, to + _LANES, flat, term + _LANES)
-    else:
-        for k in range(cells.size):
-            to, term = at + k * width, start + cells[k] * width
-            for t in range(0, width, _LANES):
-                _add_eight(into, to + t, flat, term + t)
+def _number(
+    codes: np.ndarray,
+    recode: np.ndarray,
+    plain: bool,
+    members: np.ndarray,
+    sizes: np.ndarray,
+    low: int,
+    start: int,
+    width: int,
+    places: np.ndarray,
+) -> None:
+    """Find where in a table of so many columns the joint level of each row from ``low`` on begins."""
+    for m in range(members.size):
+        i, size = members[m], sizes[m]
+        row = codes[i, low : low + places.size]
+        if m == 0:
+            for k in range(places.size):
+                places[k] = row[k] if plain else recode[i, row[k]]
+        elif plain:
+            for k in range(places.size):
+                places[k] = places[k] * size + row[k]
+        else:
+            for k in range(places.size):
+                places[k] = places[k] * size + recode[i, row[k]]
+    for k in range(places.size):
+        places[k] = (places[k] + start) * width
 
 
 @njit(nogil=True, cache=True)
-def _add_narrow(into: np.ndarray, terms: np.ndarray, cells: np.ndarray, width: int) -> None:
-    """Add the terms of cells to rows of evidence of one, two or four columns."""
+def _add(into: np.ndarray, at: int, flat: np.ndarray, places: np.ndarray, width: int) -> None:
+    """Add the terms of four families to rows of evidence from ``at`` on."""
+    a, b, c, d = places[0], places[1], places[2], places[3]
     if width == 1:
-        for k in range(cells.size):
-            into[k] += terms[cells[k]]
+        for k in range(a.size):
+            into[at + k] = into[at + k] + flat[a[k]] + flat[b[k]] + flat[c[k]] + flat[d[k]]
     elif width == 2:
-        for k in range(cells.size):
-            into[2 * k] += terms[2 * cells[k]]
-            into[2 * k + 1] += terms[2 * cells[k] + 1]
+        for k in range(a.size):
+            _add_two_wide(into, at + 2 * k, flat, a[k], b[k], c[k], d[k])
+    elif width == 4:
+        for k in range(a.size):
+            _add_four_wide(into, at + 4 * k, flat, a[k], b[k], c[k], d[k])
+    elif width == 8:
+        for k in range(a.size):
+            _add_eight_wide(into, at + 8 * k, flat, a[k], b[k], c[k], d[k])
     else:
-        for k in range(cells.size):
-            for t in range(4):
-                into[4 * k + t] += terms[4 * cells[k] + t]
+        for k in range(a.size):
+            for t in range(0, width, 8):
+                _add_eight_wide(into, at + k * width + t, flat, a[k] + t, b[k] + t, c[k] + t, d[k] + t)
 
 
 @njit(nogil=True, cache=True)
@@ -125,7 +152,7 @@ def tempered_losses(
     rows = np.empty(_JOINED, np.int64)
     columns = out.shape[0] * log_prior.size
     powers = np.zeros((columns, _JOINED))
-    work = np.empty((3, columns * _JOINED))
+    work = np.empty(3 * columns * _JOINED)
     joined, weight = 0, 0.0
     for row in range(truth.size):
         if log_prior[truth[row]] == -np.inf:

@@ -52,7 +52,7 @@ def ratio_tables(
     columns = strengths.size * classes
     room = np.empty(columns * most)
     sums, work = np.empty(sizes.shape[1] * most), np.empty(sizes.shape[1] * most)
-    logs = np.empty((2, columns * most))
+    logs = np.empty(2 * columns * most)
     for k in range(which.size):
         f = which[k]
         cells = starts[f + 1] - starts[f]
@@ -61,7 +61,7 @@ def ratio_tables(
         _shares(own, sizes[f, : depths[f]], strengths, laplace, sums, work, shares)
         _to_ratios(room, strengths.size, classes, cells)
         wanted = strengths.size * (classes - 1)
-        logarithms(room[: wanted * cells], logs[:, : wanted * cells])
+        logarithms(room[: wanted * cells], logs)
         table = out[out_starts[k] : out_starts[k] + cells]
         for column in range(wanted):
             for cell in range(cells):

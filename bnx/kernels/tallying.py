@@ -22,17 +22,17 @@ def tally(p: np.ndarray, first: int, last: int, truth: np.ndarray, confusion: np
     """
     classes = p.shape[1]
     own, square = np.empty(_ROWS), np.empty(_ROWS)
-    work = np.empty((2, _ROWS))
+    work = np.empty(2 * _ROWS)
     for low in range(first, last, _ROWS):
         rows = min(_ROWS, last - low)
         least = 1.0
         for k in range(rows):
             label, true = 0, truth[low + k]
-            distance = 0.0
+            distance, largest = 0.0, -1.0
             for c in range(classes):
                 one = p[low + k, c]
-                if one > p[low + k, label]:
-                    label = c
+                label = c if one > largest else label
+                largest = max(one, largest)
                 apart = one - 1.0 if c == true else one
                 distance += apart * apart
             confusion[true, label] += 1
@@ -41,7 +41,7 @@ def tally(p: np.ndarray, first: int, last: int, truth: np.ndarray, confusion: np
             least = min(least, own[k])
         sums[3] += total_of(square[:rows])
         if least > 1e-300:
-            logarithms(own[:rows], work[:, :rows])
+            logarithms(own[:rows], work)
         else:
             for k in range(rows):
                 own[k] = np.log(own[k]) if own[k] > 0.0 else -np.inf
