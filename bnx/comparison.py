@@ -119,16 +119,9 @@ def compare(
     held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
     recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
     progress("edge ledger", 0, 0)
-    ledgers = edge_ledger(
-        replace(first, engine=_under("edge ledger", first.engine)),
-        pairs.strengths(edge for structure in learned.structures for edge in structure.edges),
-        gains,
-        stable,
-        learners,
-        bounds,
-        recipe,
-        folds,
-    )
+    told = replace(first, engine=_under("edge ledger", first.engine))
+    strengths = pairs.strengths(edge for structure in learned.structures for edge in structure.edges)
+    ledgers = edge_ledger(told, strengths, gains, stable, learners, bounds, recipe, folds)
     progress("reading", 0, 0)
     return Comparison(
         recipe=recipe,
