@@ -136,7 +136,8 @@ def _through(engine: LocalEngine, group: _Pass, seeds: Edges, stage: str) -> lis
             chosen.append(work.pop())
             quota -= chosen[-1][-1]
         work += _scan(engine, group, _state(group, grown), chosen, threads)
-        grown = engine.map(lambda s, grown=grown: _absorbed(group, s, grown[s], threads), range(len(grown)))
+        before = list(enumerate(grown))
+        grown = engine.map(lambda one: _absorbed(group, *one, threads), before)
         for thread in threads:
             thread.numbers[:] = 0
         share = min(2.0 * share, _LAST)
@@ -162,9 +163,9 @@ def _begun(engine: LocalEngine, group: _Pass, seeds: Edges) -> list[Grown]:
 def _absorbed(group: _Pass, s: int, now: Grown, threads: Sequence[Kept]) -> Grown:
     """Let what the threads kept for a set into its forests."""
     for own in threads:
-        found = own.kept[s, : own.numbers[s]].astype(np.int64)
+        left, right, what = own.kept[s, : own.numbers[s]].T.astype(np.int64)
         joint = own.joints[s, : own.numbers[s]]
-        now = admitted(group.margins, s, group.asked, now, *found.T, joint)
+        now = admitted(group.margins, s, group.asked, now, left, right, what, joint)
     return now
 
 

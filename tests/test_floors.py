@@ -18,7 +18,8 @@ FLOORS = (
     "tables views blocks columns columnar delimited malformed reading levelling screening duplicates level_order",
     "coarsening gathering passes coding encoding pair_counting engines",
     "parameters trainings dependence families profiling",
-    "wide_tables independence classifier intervals refining sampling scoring tabulating verdicts explaining pair_details",
+    "wide_tables independence classifier intervals refining sampling scoring tabulating verdicts explaining "
+    "pair_details",
     "gating drawing formats showing",
     "learners",
     "recipe wide_forests wide wide_learning learning pair_judging many_tests wide_judging pair_table",

@@ -40,7 +40,7 @@ def class_tables(
                     for g in range(c, words.size - 1, classes):
                         one, other = planes[i, words[g] : words[g + 1]], planes[j, words[g] : words[g + 1]]
                         for w in range(one.size):
-                            both += np.int64(ones(one[w] & other[w]))
+                            both += int(ones(one[w] & other[w]))
                     cells = out[c, place]
                     cells[0] = records[c] - margins[c, i] - margins[c, j] + both
                     cells[1] = margins[c, j] - both
