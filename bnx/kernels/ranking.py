@@ -22,7 +22,7 @@ def sort_whole(numbers: np.ndarray) -> np.ndarray:
             counts[k, (number >> (k * _BITS)) & mask] += 1
     here, there = numbers, np.empty_like(numbers)
     for k in range(_PASSES):
-        if counts[k].max() == numbers.size:
+        if counts[k, (numbers[0] >> (k * _BITS)) & mask] == numbers.size:
             continue
         at = 0
         for digit in range(mask + 1):
