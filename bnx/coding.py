@@ -2,26 +2,29 @@
 
 import math
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
 
-from bnx.columns import Gatherer, NumberColumn, Tally, TextColumn, tally
-from bnx.domains import Schema
+from bnx.cells import Cells
+from bnx.columns import Column, Tally, TextColumn, tally
+from bnx.domains import Domain, Schema
+from bnx.duplicates import count_duplicates
 from bnx.errors import DataError, SettingError
-from bnx.levelling import level
+from bnx.levelling import Levelled, level
+from bnx.passes import gather
 from bnx.reading import Source
-from bnx.screening import column_warnings, count_duplicates, few_rows, reason_to_leave_out
-from bnx.tables import CodedTable, LeftOut
+from bnx.screening import column_warnings, few_rows, reason_to_leave_out
+from bnx.storing import MEMORY, Store
+from bnx.tables import CodedTable, LeftOut, Lines
 from bnx.text import count_of, quoted
 
 __all__ = ["Coded", "SideColumn", "code_table"]
 
 CLASS_LEVELS = 100
 _FEW_KINDS = 10  # times the rows: repeats are then a matter of course
-
-Column = TextColumn | NumberColumn
 
 
 @dataclass(frozen=True)
@@ -51,21 +54,14 @@ class Coded:
 
 @dataclass(frozen=True)
 class _Raw:
-    """The columns of some rows of the source; ``rows`` (N,) int64 are their 0-based lines."""
+    """The columns of a source, and which of its lines are used so far."""
 
     attributes: dict[str, Column]
     target: TextColumn
     side: dict[str, TextColumn]
-    rows: np.ndarray
-
-    def take(self, rows: np.ndarray) -> "_Raw":
-        """Keep some rows."""
-        return _Raw(
-            {name: column.take(rows) for name, column in self.attributes.items()},
-            self.target.take(rows),
-            {name: column.take(rows) for name, column in self.side.items()},
-            self.rows[rows],
-        )
+    lines: Lines
+    jobs: int
+    store: Store
 
 
 def code_table(
@@ -79,8 +75,10 @@ def code_table(
     missing: Literal["level", "drop"] = "level",
     max_levels: int = 50,
     extra: Sequence[str] = (),
+    jobs: int = 1,
+    store: Store = MEMORY,
 ) -> Coded:
-    """Code a whole source.
+    """Code a whole source on ``jobs`` threads, keeping what has a value per row in ``store``.
 
     Rows with a blank class are dropped. A blank cell of an attribute becomes the level ``(blank)``, or with
     ``missing="drop"`` its row is dropped. A column is numeric if ``numeric`` names it, or if every value is a plain
@@ -98,8 +96,7 @@ def code_table(
     )
     wishes |= dict.fromkeys((name for name in categorical if name in wishes), False)
     wishes |= dict.fromkeys((name for name in numeric if name in wishes), True)
-    raw = _gathered(source, target, wishes, extra)
-    read = len(raw.rows)
+    raw = _gathered(source, target, wishes, extra, jobs, store)
     raw, warnings = _with_class(raw)
     used, left_out = _screened(raw, raw.attributes, keep, drops=missing == "drop")
     if missing == "drop":
@@ -107,11 +104,14 @@ def code_table(
         warnings += dropped
         used, again = _screened(raw, used, keep, drops=True) if dropped else (used, [])
         left_out = sorted(left_out + again, key=lambda item: source.columns.index(item.name))
-    duplicates = count_duplicates([*(raw.attributes[name] for name in used), raw.target])
+    for name in raw.attributes.keys() - used:
+        raw.attributes[name].cells.clear()
+    duplicates = count_duplicates([*(raw.attributes[name] for name in used), raw.target], raw.lines, jobs)
+    warnings += _table_warnings(raw, used, max_levels)
+    side = {name: _side(column, raw) for name, column in raw.side.items()}
     table, pooled = _coded(raw, used)
-    warnings += _table_warnings(raw, used, max_levels) + _duplicate_warning(duplicates, len(raw.rows), table.schema)
-    side = {name: _side(column) for name, column in raw.side.items()}
-    return Coded(table, tuple(left_out), tuple(warnings + pooled), side, read, duplicates)
+    warnings += _duplicate_warning(duplicates, raw.lines.count, table.schema)
+    return Coded(table, tuple(left_out), tuple(warnings + pooled), side, raw.lines.read, duplicates)
 
 
 def _check(
@@ -137,43 +137,47 @@ def _check(
             raise SettingError(f"column {both[0]!r} is given as {one} and also as {other}; it can be only one of them")
 
 
-def _gathered(source: Source, target: str, wishes: Mapping[str, bool | None], extra: Sequence[str]) -> _Raw:
+def _gathered(
+    source: Source, target: str, wishes: Mapping[str, bool | None], extra: Sequence[str], jobs: int, store: Store
+) -> _Raw:
     """Read attributes as ``wishes`` say (None: as they look), class and extra columns as text; in one pass.
 
     Attributes that turn out to be text after a thousand distinct numbers take a second pass.
     """
-    attributes = {name: Gatherer(name, wish) for name, wish in wishes.items()}
-    texts = {name: Gatherer(name, False) for name in (target, *extra)}
-    gatherers = attributes | texts
-    for batch in source.blocks(list(gatherers)):
-        for gatherer, array in zip(gatherers.values(), batch.columns, strict=True):
-            gatherer.add(array)
-    spoilt = {name: Gatherer(name, False) for name, gatherer in attributes.items() if gatherer.spoilt}
-    for batch in source.blocks(list(spoilt)) if spoilt else ():
-        for gatherer, array in zip(spoilt.values(), batch.columns, strict=True):
-            gatherer.add(array)
-    side = {name: gatherer.finish_texts() for name, gatherer in texts.items()}
-    columns = {name: gatherer.finish() for name, gatherer in (attributes | spoilt).items()}
+    texts = dict.fromkeys((target, *extra), False)
+    gathered = gather(source, {**wishes, **texts}, jobs, store)
+    spoilt = dict.fromkeys((name for name, gatherer in gathered.items() if gatherer.spoilt), False)
+    gathered |= gather(source, spoilt, jobs, store)
+    side = {name: gathered[name].finish_texts() for name in texts}
+    columns = {name: gathered[name].finish() for name in wishes}
     classes = side.pop(target)
-    return _Raw(columns, classes, side, np.arange(len(classes.codes), dtype=np.int64))
+    return _Raw(columns, classes, side, Lines.all(len(classes.cells)), jobs, store)
 
 
 def _with_class(raw: _Raw) -> tuple[_Raw, list[str]]:
     """Drop the rows whose class is blank."""
-    rows, read = np.flatnonzero(~raw.target.blanks), len(raw.rows)
-    if len(rows) == read:
+    kept = np.empty(raw.lines.read, np.bool_)
+    for rows in raw.lines.stretches():
+        np.logical_not(raw.target.blanks(rows), out=kept[rows])
+    lines = Lines.marked(kept)
+    if lines.count == lines.read:
         return raw, []
-    dropped = count_of(read - len(rows), "row")
-    return raw.take(rows), [f"{dropped} of {read:,} dropped because the class {raw.target.name} is blank"]
+    dropped = count_of(lines.read - lines.count, "row")
+    sentence = f"{dropped} of {lines.read:,} dropped because the class {raw.target.name} is blank"
+    return replace(raw, lines=lines), [sentence]
 
 
 def _without_blanks(raw: _Raw, used: Iterable[str]) -> tuple[_Raw, list[str]]:
     """Drop the rows with a blank cell in an attribute that takes part."""
-    rows = np.flatnonzero(~np.logical_or.reduce([raw.attributes[name].blanks for name in used]))
-    if len(rows) == len(raw.rows):
+    kept = raw.lines.kept.copy() if len(raw.lines.kept) else np.ones(raw.lines.read, np.bool_)
+    for name in used:
+        for rows in raw.lines.stretches():
+            kept[rows] &= ~raw.attributes[name].blanks(rows)
+    lines = Lines.marked(kept)
+    if lines.count == raw.lines.count:
         return raw, []
-    dropped = count_of(len(raw.rows) - len(rows), "row")
-    return raw.take(rows), [f"{dropped} of {len(raw.rows):,} dropped because a cell is blank"]
+    dropped = count_of(raw.lines.count - lines.count, "row")
+    return replace(raw, lines=lines), [f"{dropped} of {raw.lines.count:,} dropped because a cell is blank"]
 
 
 def _screened(
@@ -184,12 +188,18 @@ def _screened(
     Raises:
         DataError: the class cannot be used, or no attribute is left.
     """
-    levels = _class_levels(raw.target)
+    levels = _class_levels(raw)
     used: dict[str, Tally] = {}
     left_out = []
-    for name in attributes:
-        found = tally(raw.attributes[name])
-        reason = reason_to_leave_out(raw.attributes[name], found, raw.target, levels, drops)
+
+    def look(name: str) -> tuple[str, Tally, str | None]:
+        found = tally(raw.attributes[name], raw.lines, raw.store)
+        raw.attributes[name].cells.let_go()
+        return name, found, reason_to_leave_out(raw.attributes[name], found, raw.target, levels, raw.lines, drops)
+
+    with ThreadPoolExecutor(raw.jobs) as pool:
+        looked = list(pool.map(look, attributes))
+    for name, found, reason in looked:
         if reason and name not in keep:
             left_out.append(LeftOut(name, f"{reason}; --keep {name} to use it"))
         else:
@@ -200,19 +210,20 @@ def _screened(
     return used, left_out
 
 
-def _class_levels(column: TextColumn) -> int:
+def _class_levels(raw: _Raw) -> int:
     """Count the levels of the class.
 
     Raises:
         DataError: there are too few or too many.
     """
-    found = tally(column)
-    levels = len(found.values)
+    column = raw.target
+    found = tally(column, raw.lines, raw.store)
+    levels = found.distinct
     if not levels:
         raise DataError(f"no row is left: in every row the class {column.name!r} or another cell is blank")
     if levels == 1:
         only = column.texts[int(found.values[0]) - 1]
-        rows = count_of(len(column.codes), "row")
+        rows = count_of(raw.lines.count, "row")
         raise DataError(f"the class {column.name!r} is {only!r} in all {rows} used; it must have at least two levels")
     if levels > CLASS_LEVELS:
         raise DataError(
@@ -221,19 +232,23 @@ def _class_levels(column: TextColumn) -> int:
     return levels
 
 
-def _side(column: TextColumn) -> SideColumn:
+def _side(column: TextColumn, raw: _Raw) -> SideColumn:
     """Code a column that is no attribute."""
-    levelled = level(column, tally(column))
-    return SideColumn(column.name, levelled.domain.levels, levelled.codes.astype(np.int32))
+    levelled = level(column, tally(column, raw.lines, raw.store))
+    codes = raw.store.empty((raw.lines.count,), np.int32)
+    _write(levelled, column.cells, raw.lines, codes)
+    return SideColumn(column.name, levelled.domain.levels, codes)
 
 
 def _table_warnings(raw: _Raw, used: Mapping[str, Tally], max_levels: int) -> list[str]:
     """Collect what looks odd in the class and the attributes used."""
-    classes = level(raw.target, tally(raw.target))
-    counts = np.bincount(classes.codes, minlength=len(classes.domain))
-    warnings = few_rows(raw.target.name, classes.domain.levels, counts)
-    for name, found in used.items():
-        warnings += column_warnings(raw.attributes[name], found, len(raw.rows), max_levels)
+    found = tally(raw.target, raw.lines, raw.store)
+    levelled = level(raw.target, found)
+    counts = np.zeros(len(levelled.domain), np.int64)
+    counts[levelled.lookup[found.values]] = found.counts
+    warnings = few_rows(raw.target.name, levelled.domain.levels, counts)
+    for name, own in used.items():
+        warnings += column_warnings(raw.attributes[name], own, raw.lines.count, max_levels)
     return warnings
 
 
@@ -252,19 +267,35 @@ def _duplicate_warning(duplicates: int, rows: int, schema: Schema) -> list[str]:
 
 
 def _coded(raw: _Raw, used: Mapping[str, Tally]) -> tuple[CodedTable, list[str]]:
-    """Code the attributes used and the class, and warn of levels pooled at once."""
-    classes = level(raw.target, tally(raw.target))
-    texts = [found for name, found in used.items() if isinstance(raw.attributes[name], TextColumn)]
-    wide = any(len(found.values) + (found.blanks > 0) > 1 << 8 for found in texts)
-    codes = np.empty((len(used), len(raw.rows)), dtype=np.uint16 if wide else np.uint8)
-    domains, warnings = [], []
-    for row, (name, found) in enumerate(used.items()):
-        levelled = level(raw.attributes[name], found)
-        codes[row] = levelled.codes
-        domains.append(levelled.domain)
-        if levelled.pooled:
-            warnings.append(
-                f"{name} has too many levels to tell apart; its {levelled.pooled:,} rarest are pooled at once"
-            )
-    table = CodedTable(Schema(tuple(domains), classes.domain), codes, classes.codes.astype(np.uint8), raw.rows)
-    return table, warnings
+    """Code the attributes used and the class, using up the raw columns, and warn of levels pooled at once."""
+    target = raw.store.empty((raw.lines.count,), np.uint8)
+    classes = level(raw.target, tally(raw.target, raw.lines, raw.store))
+    _write(classes, raw.target.cells, raw.lines, target)
+    levelled = [level(raw.attributes[name], found) for name, found in used.items()]
+    wide = any(one.lookup.dtype.itemsize > 1 for one in levelled)
+    codes = raw.store.empty((len(used), raw.lines.count), np.uint16 if wide else np.uint8)
+
+    def write(number: int, name: str) -> Domain:
+        cells = raw.attributes[name].cells
+        _write(levelled[number], cells, raw.lines, codes[number])
+        cells.clear()
+        raw.store.let_go(codes[number])
+        return levelled[number].domain
+
+    with ThreadPoolExecutor(raw.jobs) as pool:
+        domains = tuple(pool.map(write, range(len(used)), used))
+    warnings = [
+        f"{one.domain.name} has too many levels to tell apart; its {one.pooled:,} rarest are pooled at once"
+        for one in levelled
+        if one.pooled
+    ]
+    return CodedTable(Schema(domains, classes.domain), codes, target, raw.lines), warnings
+
+
+def _write(levelled: Levelled, cells: Cells, lines: Lines, codes: np.ndarray) -> None:
+    """Code the rows used of one column."""
+    done = 0
+    for rows in lines.stretches():
+        raw = lines.pick(rows, cells.part(rows))
+        levelled.write(raw, codes[done : done + len(raw)])
+        done += len(raw)

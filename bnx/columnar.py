@@ -21,11 +21,18 @@ class ParquetFiles:
 
     paths: tuple[Path, ...]
     names: tuple[str, ...]
+    contents: tuple[pa.parquet.FileMetaData, ...]
+
+    @property
+    def rows(self) -> int:
+        """Count the rows."""
+        return sum(content.num_rows for content in self.contents)
 
     def blocks(self, columns: Sequence[str]) -> Iterator[pa.RecordBatch]:
         """Read batches of up to 65,536 rows; text columns as dictionaries."""
-        for path in self.paths:
-            with pa.parquet.ParquetFile(path, read_dictionary=_texts(path, columns)) as file:
+        for path, content in zip(self.paths, self.contents, strict=True):
+            texts = _texts(content.schema.to_arrow_schema(), columns)
+            with pa.parquet.ParquetFile(path, metadata=content, read_dictionary=texts) as file:
                 for batch in file.iter_batches(ROWS, columns=list(columns), use_threads=False):
                     yield batch.select(list(columns))
 
@@ -36,6 +43,7 @@ class ArrowFile:
 
     path: Path
     names: tuple[str, ...]
+    rows: int
 
     def blocks(self, columns: Sequence[str]) -> Iterator[pa.RecordBatch]:
         """Read batches of up to 65,536 rows, each column of the type that the file gives it."""
@@ -54,12 +62,14 @@ def open_parquet(paths: Sequence[Path], name: str) -> ParquetFiles:
         DataError: the files differ in their columns or hold no row.
         pyarrow.ArrowInvalid, OSError: a file is no Parquet file.
     """
-    schemas = [pa.parquet.read_schema(path) for path in paths]
+    contents = tuple(pa.parquet.read_metadata(path) for path in paths)
+    schemas = [content.schema.to_arrow_schema() for content in contents]
     for path, schema in zip(paths[1:], schemas[1:], strict=True):
         _same_columns(schemas[0], schema, paths[0].name, path.name)
-    if not sum(pa.parquet.read_metadata(path).num_rows for path in paths):
+    files = ParquetFiles(tuple(paths), tuple(schemas[0].names), contents)
+    if not files.rows:
         raise DataError(f"{name} holds columns but no row; it must hold at least one row")
-    return ParquetFiles(tuple(paths), tuple(schemas[0].names))
+    return files
 
 
 def open_arrow(path: Path, name: str) -> ArrowFile:
@@ -71,14 +81,14 @@ def open_arrow(path: Path, name: str) -> ArrowFile:
     """
     with pa.memory_map(str(path)) as file:
         reader = pa.ipc.open_file(file)
-        if not sum(reader.get_batch(number).num_rows for number in range(reader.num_record_batches)):
+        rows = sum(reader.get_batch(number).num_rows for number in range(reader.num_record_batches))
+        if not rows:
             raise DataError(f"{name} holds columns but no row; it must hold at least one row")
-        return ArrowFile(path, tuple(reader.schema.names))
+        return ArrowFile(path, tuple(reader.schema.names), rows)
 
 
-def _texts(path: Path, columns: Sequence[str]) -> list[str]:
+def _texts(schema: pa.Schema, columns: Sequence[str]) -> list[str]:
     """Choose the text columns, which are read as dictionaries."""
-    schema = pa.parquet.read_schema(path)
     kinds = {name: schema.field(name).type for name in columns}
     return [name for name, kind in kinds.items() if pa.types.is_string(kind) or pa.types.is_large_string(kind)]
 

@@ -2,6 +2,7 @@
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from hashlib import sha256
 from pathlib import PurePath
 
 import numpy as np
@@ -9,30 +10,34 @@ import numpy as np
 from bnx.choosing import Choice
 from bnx.classifier import Classifier
 from bnx.coding import Coded
-from bnx.dependence import Pairs
+from bnx.dealing import deal
+from bnx.dependence import Pairs, measure
 from bnx.encoding import encode
 from bnx.engines import LocalEngine, start_local
 from bnx.engines.local import Progress
 from bnx.errors import DataError, SettingError
 from bnx.evaluation import Evaluation, evaluate
-from bnx.folds import assign_blocks, assign_given, assign_grouped, sub_blocks
+from bnx.families import PairRequests
+from bnx.folds import sub_blocks
 from bnx.gains import edge_gains
 from bnx.gating import Bounds
 from bnx.independence import Statistics
-from bnx.judging import Against, Recommendation, StructureScore, against, recommend, score
+from bnx.judging import Against, Recommendation, against, inner_picks, recommend
 from bnx.learners import Learner, learner
-from bnx.learning import Learned, make_bounds
+from bnx.learning import make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
 from bnx.pair_judging import JudgedPairs, judge_pairs
+from bnx.rating import StructureScore, score
 from bnx.reading import Source
-from bnx.recipe import MOST_FOLDS, Recipe
+from bnx.recipe import Recipe
 from bnx.refining import visit_families
 from bnx.resampling import stability
-from bnx.scoring import families
+from bnx.storing import MEMORY, Store
 from bnx.structure import Structure
-from bnx.tables import LeftOut
+from bnx.tables import LeftOut, Lines
 from bnx.text import count_of
+from bnx.trainings import Training
 
 __all__ = ["Comparison", "compare"]
 
@@ -62,7 +67,7 @@ class Comparison:
     left_out: tuple[LeftOut, ...]
     warnings: tuple[str, ...]
     evaluations: tuple[Evaluation, ...]
-    line_of_row: np.ndarray
+    lines: Lines
 
     @property
     def structures(self) -> tuple[Structure, ...]:
@@ -75,37 +80,53 @@ class Comparison:
         return tuple(domain.name for domain in self.classifiers[0].domains)
 
 
-def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdout: Source | None = None) -> Comparison:
+def compare(
+    source: Source,
+    recipe: Recipe,
+    jobs: int,
+    progress: Progress,
+    holdout: Source | None = None,
+    store: Store = MEMORY,
+) -> Comparison:
     """Run the main job on one table.
 
-    progress: called with (stage, done, of how many) while it runs.
+    progress: called with (stage, done, of how many) while it runs; store: keeps what has a value per row.
 
     Raises:
         DataError, SettingError, StructureError: the table or a setting cannot be used.
     """
     progress("reading", 0, 0)
-    coded = recipe.code(source)
+    coded = recipe.code(source, jobs, store)
     if holdout:
         holdout.check([*coded.table.schema.names, recipe.target])
     bounds = make_bounds(recipe, coded.table.schema.names)
     learners = [learner(name) for name in recipe.structures]
-    evaluations, folds = _evaluations(coded, recipe, learners, bounds, jobs, progress)
+    evaluations, folds = _evaluations(coded, recipe, learners, bounds, jobs, progress, store)
     gains = [fold for one in evaluations for fold in edge_gains(one)]
     first = evaluations[0]
     learned = first.learned(())
     progress("stability", 0, 0)
     stable = stability(_under("stability", first.engine), learned.training.view, folds, learners, bounds, recipe)
-    results = score(evaluations, first.engine)
+    picks = inner_picks(evaluations)
+    results, honest = score(evaluations, picks)
     baseline = recipe.structures.index(recipe.baseline)
     progress("judging pairs", 0, 0)
-    judged = _judged(first.engine, learned, recipe)
+    dependence, pairs = measure(first.engine, [learned.training], marginal_of_first=True)[0]
+    judged = _judged(first.engine, learned.training, pairs, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     progress("scoring", 0, 0)
     held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
-    recommendation = recommend(evaluations, results, recipe.structures, folds)
+    recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
     progress("edge ledger", 0, 0)
     ledgers = edge_ledger(
-        replace(first, engine=_under("edge ledger", first.engine)), gains, stable, learners, bounds, recipe, folds
+        replace(first, engine=_under("edge ledger", first.engine)),
+        dependence.strength,
+        gains,
+        stable,
+        learners,
+        bounds,
+        recipe,
+        folds,
     )
     progress("reading", 0, 0)
     return Comparison(
@@ -115,8 +136,8 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
         rows=len(coded.table.target),
         folds=folds,
         classifiers=classifiers,
-        relevance=learned.dependence.relevance,
-        pairs=learned.pairs,
+        relevance=dependence.relevance,
+        pairs=pairs,
         judged=judged,
         results=tuple(results),
         against=tuple(against(results, baseline, folds)),
@@ -126,14 +147,14 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
         left_out=coded.left_out,
         warnings=(*_run_warnings(evaluations, coded, recipe, learners), *judged.notes, *not_scored, *coded.warnings),
         evaluations=tuple(evaluations),
-        line_of_row=coded.table.rows,
+        lines=coded.table.lines,
     )
 
 
-def _judged(engine: LocalEngine, learned: Learned, recipe: Recipe) -> JudgedPairs:
+def _judged(engine: LocalEngine, training: Training, pairs: Pairs, recipe: Recipe) -> JudgedPairs:
     """Test and judge all pairs on all rows."""
-    pairs, domains = learned.pairs, learned.training.view.domains
-    visit = visit_families(engine, [learned.training], pairs.requests(0))
+    domains = training.view.domains
+    visit = visit_families(engine, [training], PairRequests(0, pairs.left, pairs.right))
     ends = [(domains[i], domains[j]) for i, j in zip(pairs.left, pairs.right, strict=True)]
     return judge_pairs(visit, Statistics.of(pairs.statistics), Statistics.of(pairs.marginal), ends, recipe)
 
@@ -144,51 +165,33 @@ def _under(stage: str, engine: LocalEngine) -> LocalEngine:
 
 
 def _evaluations(
-    coded: Coded, recipe: Recipe, learners: Sequence[Learner], bounds: Bounds, jobs: int, progress: Progress
+    coded: Coded,
+    recipe: Recipe,
+    learners: Sequence[Learner],
+    bounds: Bounds,
+    jobs: int,
+    progress: Progress,
+    store: Store,
 ) -> tuple[list[Evaluation], int]:
-    """Evaluate every repeat; give the evaluations and the number of folds."""
+    """Evaluate every repeat; give the evaluations and the number of folds. A single repeat sorts the table in place."""
     evaluations: list[Evaluation] = []
-    dealt: list[np.ndarray] = []
+    dealt: list[bytes] = []
     folds = recipe.folds
     for repeat in range(recipe.repeats):
         progress("dealing folds", 0, 0)
-        blocks, folds = _fold_blocks(coded, recipe, repeat)
-        if any(np.array_equal(blocks, other) for other in dealt):
+        blocks, folds = deal(coded, recipe, repeat, jobs, store)
+        digest = sha256(blocks.data).digest() if recipe.repeats > 1 else b""
+        if digest in dealt:
             raise SettingError(
                 f"--repeats {recipe.repeats}: repeat {repeat + 1} deals the folds just as an earlier one did and would "
                 f"be no new evidence; give --repeats {len(dealt)} or fewer"
             )
-        dealt.append(blocks)
+        dealt.append(digest)
+        number = folds * sub_blocks(folds)
         progress("sorting rows", 0, 0)
-        engine = start_local(coded.table, blocks, folds * sub_blocks(folds), jobs, progress)
+        engine = start_local(coded.table, blocks, number, jobs, progress, store, in_place=recipe.repeats == 1)
         evaluations.append(evaluate(engine, coded.table.schema, folds, learners, bounds, recipe))
     return evaluations, folds
-
-
-def _fold_blocks(coded: Coded, recipe: Recipe, repeat: int) -> tuple[np.ndarray, int]:
-    """Deal the rows to folds and blocks; give the block of each row and the number of folds."""
-    target, rows = coded.table.target, coded.table.rows
-    if recipe.fold_column:
-        column = coded.extra[recipe.fold_column]
-        used, codes = np.unique(column.codes, return_inverse=True)
-        if len(used) < 3:
-            raise DataError(
-                f"--fold-column {column.name} holds {count_of(len(used), 'different value')}, but at least 3 folds are "
-                "needed to choose inside each training fold; take a column with more values or drop the option"
-            )
-        if len(used) > MOST_FOLDS:
-            raise DataError(
-                f"--fold-column {column.name} holds {len(used):,} different values, but nested choices take at most "
-                f"{MOST_FOLDS} folds; take a coarser column, or --group {column.name} to keep its rows together"
-            )
-        return assign_given(codes, target, rows, recipe.seed), len(used)
-    if len(rows) < recipe.folds:
-        raise DataError(
-            f"the table has {count_of(len(rows), 'usable row')} for {recipe.folds} folds; give fewer --folds"
-        )
-    if recipe.group:
-        return assign_grouped(coded.extra[recipe.group].codes, target, recipe.seed, recipe.folds, repeat), recipe.folds
-    return assign_blocks(target, rows, recipe.seed, recipe.folds, repeat), recipe.folds
 
 
 def _classifier(evaluation: Evaluation, s: int, coded: Coded) -> Classifier:
@@ -196,9 +199,8 @@ def _classifier(evaluation: Evaluation, s: int, coded: Coded) -> Classifier:
     choice: Choice = evaluation.choices[()]
     learned = choice.trial.learned[()]
     structure, view = learned.structures[s], learned.training.view
-    counts = tuple(
-        choice.trial.counts[()][members].reshape(-1, *view.sizes_of(members)) for members in families(structure)
-    )
+    counted = choice.trial.counts[()]
+    counts = tuple(counted.table(s, child) for child in range(len(structure.parents)))
     return Classifier(
         view.domains,
         coded.table.schema.target,
@@ -241,16 +243,16 @@ def _run_warnings(
     """Say what a reader of the figures must know about how they were made."""
     notes = []
     sample, engine = evaluations[0].sample, evaluations[0].engine
-    if len(sample.target) < len(engine.order):
+    if len(sample.target) < engine.rows:
         notes.append(
             f"choices inside training folds and gains of edges are judged on {len(sample.target):,} of "
-            f"{len(engine.order):,} rows, a seeded sample by fold and class; scores and tests use all rows"
+            f"{engine.rows:,} rows, a seeded sample by fold and class; scores and tests use all rows"
         )
     if recipe.group:
         notes.append(
             f"rows of one {recipe.group} may be alike, but the tests assume independent records: every p is descriptive"
         )
-    sizes = [rows.stop - rows.start for rows in evaluations[0].fold_rows]
+    sizes = evaluations[0].rows_by_fold
     if max(sizes) > 1.2 * min(sizes):
         notes.append(
             f"folds hold {min(sizes):,} to {max(sizes):,} rows; differences to {recipe.baseline} are means over folds "

@@ -39,13 +39,12 @@ class Delimited:
         return max(BLOCK, min(256 * self.header_bytes, 64 * BLOCK), 2 * self.header_bytes)
 
     def blocks(self, columns: Sequence[str]) -> Iterator[pa.RecordBatch]:
-        """Read batches of a megabyte or more; columns are dictionaries of text, an empty cell is empty text.
+        """Read batches of a megabyte or more; columns are text, an empty cell is empty text.
 
         Raises:
             pyarrow.ArrowInvalid, OSError, UnicodeDecodeError: the text is malformed; `bnx.malformed` says how.
             OddQuotesError: after the last batch, if a quote may have been left open.
         """
-        text = pa.dictionary(pa.int32(), pa.string())
         with open_bytes(self.path) as raw:
             counting = _QuoteCounting(raw)
             reader = pa.csv.open_csv(
@@ -60,7 +59,9 @@ class Delimited:
                 ),
                 pa.csv.ParseOptions(delimiter=self.delimiter, newlines_in_values=True),
                 pa.csv.ConvertOptions(
-                    include_columns=list(columns), column_types=dict.fromkeys(columns, text), strings_can_be_null=False
+                    include_columns=list(columns),
+                    column_types=dict.fromkeys(columns, pa.string()),
+                    strings_can_be_null=False,
                 ),
             )
             yield from reader

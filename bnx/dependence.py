@@ -5,12 +5,22 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from bnx.counts import PairCounts, PairLayout, sum_blocks
 from bnx.engines import LocalEngine
 from bnx.kernels.contingency import COLUMNS, NATS, ROWS, one_table, table_statistics
+from bnx.kernels.reducing import Sets, blocks_of_masks, reduce_table, reduce_tile
+from bnx.pair_counting import count_pair, count_tile, rows_of_groups, shares
+from bnx.tiles import tiles_of
 from bnx.trainings import Training
+from bnx.views import Refinement, refine
 
-__all__ = ["Dependence", "Pairs", "measure", "relevance_of"]
+__all__ = ["Dependence", "Pairs", "measure", "relevance_of", "sets_at_a_time"]
+
+_STAGE = "measuring pairs"
+_FLOATS_AT_A_TIME = 50_000_000  # statistics of pairs: 400 MB
+_CELLS = 32_000_000  # counts that are held at a time: 128 MB
+_MOST_CELLS = 900  # of a pair counted by bit planes; beyond, single increments win (measured)
+_DENSE = 8  # a pair is counted by block when its cells over all blocks and classes are at most this many per row
+_SMALL = 1_000_000  # ... or at most this many
 
 
 @dataclass(frozen=True)
@@ -34,10 +44,6 @@ class Pairs:
     statistics: np.ndarray
     marginal: np.ndarray
 
-    def requests(self, training: int) -> list[tuple[int, tuple[int, ...]]]:
-        """Name every pair as (number of the training set, members), as counts of families are asked for."""
-        return [(training, pair) for pair in zip(self.left.tolist(), self.right.tolist(), strict=True)]
-
     def matrix(self, values: np.ndarray, attributes: int) -> np.ndarray:
         """Spread one value per pair over a symmetric (n, n) matrix with a zero diagonal."""
         square = np.zeros((attributes, attributes))
@@ -47,12 +53,23 @@ class Pairs:
 
 def relevance_of(engine: LocalEngine, training: Training) -> np.ndarray:
     """Bits that each attribute shares with the class, (n,)."""
-    result = np.zeros(len(engine.margins))
-    for i, margin in enumerate(engine.margins):
-        counts = training.view.merge(i, margin[training.mask].sum(axis=0)).astype(np.int32)
-        row = one_table(counts.reshape(1, -1), *counts.shape)
-        result[i] = row[NATS] / max(row[ROWS], 1.0) / np.log(2)
-    return result
+    view = training.view
+    tables = [view.merge(i, margin[training.mask].sum(axis=0)) for i, margin in enumerate(engine.margins)]
+    line = np.concatenate([table.astype(np.int32).ravel() for table in tables])[None]
+    offsets = np.cumsum([0, *(table.size for table in tables[:-1])])
+    heights = np.full(len(tables), engine.classes, np.int64)
+    return _bits(table_statistics(line, offsets.astype(np.int64), heights, view.sizes))
+
+
+def _bits(statistics: np.ndarray) -> np.ndarray:
+    """Bits per record of statistics (P, COLUMNS), (P,)."""
+    return np.asarray(statistics[:, NATS] / np.maximum(statistics[:, ROWS], 1.0) / np.log(2))
+
+
+def sets_at_a_time(attributes: int) -> int:
+    """Say how many training sets may be measured together."""
+    pairs = attributes * (attributes - 1) // 2
+    return max(1, _FLOATS_AT_A_TIME // max(1, (COLUMNS + 6) * pairs))
 
 
 def measure(
@@ -60,47 +77,87 @@ def measure(
 ) -> list[tuple[Dependence, Pairs]]:
     """Measure every pair in every training set; on request also without the class in the first.
 
-    Pairs whose attributes are used as stored are counted once, by block, for all sets; the others in each set anew.
+    Pairs are counted by block in the coarsest levels that all sets can be made of, and go from there to the statistics
+    of every set; nothing else is kept.
     """
     attributes = len(engine.margins)
     left, right = (index.astype(np.int64) for index in np.triu_indices(attributes, 1))
-    plain = trainings[0].view.plain
-    shared = plain[left] & plain[right]
-    layout = PairLayout.of(engine.sizes, left[shared], right[shared])
-    counted = engine.pair_counts(layout)
-    total = counted.counts.sum(axis=0, dtype=np.int32)
+    statistics = np.zeros((len(trainings), len(left), COLUMNS))
+    marginal = np.zeros((len(left) if marginal_of_first else 0, COLUMNS))
+    fine = refine([training.view for training in trainings], engine.sizes)
+    if len(left):
+        _measure(engine, trainings, fine, statistics, marginal)
 
     def one(number: int) -> tuple[Dependence, Pairs]:
-        training, marginal = trainings[number], marginal_of_first and number == 0
-        statistics = np.zeros((len(left), COLUMNS))
-        without = np.zeros((len(left) if marginal else 0, COLUMNS))
-        for chosen, part, counts in _parts(engine, training, counted, total, shared, left, right):
-            tables = (part.offsets[:-1], part.heights, part.widths)
-            statistics[chosen] = table_statistics(counts, *tables)
-            if marginal:
-                without[chosen] = table_statistics(counts.sum(axis=0, dtype=np.int32)[None], *tables)
-        pairs = Pairs(left, right, statistics, without)
-        bits = statistics[:, NATS] / np.maximum(statistics[:, ROWS], 1.0) / np.log(2)
-        return Dependence(relevance_of(engine, training), pairs.matrix(bits, attributes)), pairs
+        pairs = Pairs(left, right, statistics[number], marginal if number == 0 else marginal[:0])
+        strength = pairs.matrix(_bits(statistics[number]), attributes)
+        return Dependence(relevance_of(engine, trainings[number]), strength), pairs
 
-    return engine.map(one, range(len(trainings)), "measuring pairs")
+    return engine.map(one, range(len(trainings)))
 
 
-def _parts(
-    engine: LocalEngine,
-    training: Training,
-    counted: PairCounts,
-    total: np.ndarray,
-    shared: np.ndarray,
-    left: np.ndarray,
-    right: np.ndarray,
-) -> list[tuple[np.ndarray, PairLayout, np.ndarray]]:
-    """List (which pairs, their layout, their counts (C, cells)) of one training set."""
-    parts = []
-    if shared.any():
-        parts.append((np.flatnonzero(shared), counted.layout, sum_blocks(counted.counts, total, training.mask)))
-    for p in np.flatnonzero(~shared):
-        i, j = left[p : p + 1], right[p : p + 1]
-        counts = engine.training_counts((int(i[0]), int(j[0])), training.view, training.mask)
-        parts.append((np.array([p]), PairLayout.of(training.view.sizes, i, j), counts))
-    return parts
+def _measure(
+    engine: LocalEngine, trainings: Sequence[Training], fine: Refinement, out: np.ndarray, marginal: np.ndarray
+) -> None:
+    """Fill in the statistics (K, P, COLUMNS) of all pairs, and without the class (P or 0, COLUMNS)."""
+    groups = rows_of_groups(engine.starts, engine.blocks * engine.classes)
+    sets = _sets(engine, trainings, fine)
+    cells = (fine.sizes[:, None] - 1) * (fine.sizes - 1)
+    above = np.triu(np.ones(cells.shape, np.bool_), 1)
+    by_planes = above & (cells <= _MOST_CELLS)
+    number = np.zeros(cells.shape, np.int64)
+    number[above] = np.arange(out.shape[1])
+    recode, done = fine.recode.astype(engine.codes.dtype), 0
+    for tile in tiles_of(fine.sizes, by_planes, _CELLS // len(groups)):
+        counts = count_tile(engine.codes, recode, fine.plain, tile, groups, engine.jobs, engine.map)
+        pairs = (tile.places, tile.left_ends, tile.right_ends, number[tile.left_ends, tile.right_ends])
+        into = (out, marginal)
+        engine.map(
+            lambda share, counts=counts, stride=tile.stride, pairs=pairs: reduce_tile(
+                counts, stride, *pairs, sets, *share, *into
+            ),
+            shares(len(tile.places), 16 * engine.jobs),
+        )
+        done += len(tile.places)
+        engine.progress(_STAGE, done, out.shape[1])
+
+    def large(pair: tuple[int, int]) -> None:
+        i, j = pair
+        place = number[i, j]
+        if by_block_pays(engine, int(fine.sizes[i] * fine.sizes[j])):
+            counts = count_pair(engine.codes, recode, fine, i, j, groups)
+            reduce_table(counts, i, j, sets, out[:, place], marginal[place : place + 1])
+        else:
+            _anew(engine, trainings, i, j, out[:, place], marginal[place : place + 1])
+
+    engine.map(large, zip(*(ends.tolist() for ends in np.nonzero(above & ~by_planes)), strict=True), "")
+    if done < out.shape[1]:
+        engine.progress(_STAGE, out.shape[1], out.shape[1])
+
+
+def by_block_pays(engine: LocalEngine, cells: int) -> bool:
+    """Tell whether a table is counted by block once, rather than in every training set anew."""
+    groups = engine.blocks * engine.classes
+    return cells * groups <= min(_CELLS, max(_SMALL, _DENSE * int(engine.starts[-1])))
+
+
+def _sets(engine: LocalEngine, trainings: Sequence[Training], fine: Refinement) -> Sets:
+    """Write training sets down as kernels read them."""
+    masks = np.array([training.mask for training in trainings])
+    margins = np.zeros((len(trainings), engine.classes, int(fine.starts[-1])), np.int32)
+    for i, margin in enumerate(engine.margins):
+        merged = np.zeros((engine.blocks, engine.classes, fine.sizes[i]), np.int64)
+        np.add.at(merged, (slice(None), slice(None), fine.recode[i, : margin.shape[2]]), margin)
+        margins[:, :, fine.starts[i] : fine.starts[i + 1]] = np.tensordot(masks.astype(np.int64), merged, 1)
+    return Sets(blocks_of_masks(masks), fine.starts, margins, fine.levels, fine.view_sizes, fine.plain)
+
+
+def _anew(
+    engine: LocalEngine, trainings: Sequence[Training], i: int, j: int, out: np.ndarray, marginal: np.ndarray
+) -> None:
+    """Measure one pair in every training set from its own rows."""
+    for k, training in enumerate(trainings):
+        counts = engine.training_counts((i, j), training.view, training.mask)
+        out[k] = one_table(counts, *training.view.sizes_of((i, j)))
+        if k == 0 and len(marginal):
+            marginal[0] = one_table(counts.sum(axis=0, dtype=np.int32)[None], *training.view.sizes_of((i, j)))

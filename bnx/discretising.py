@@ -39,8 +39,9 @@ def fine_cuts(values: np.ndarray, weights: np.ndarray, limit: int) -> np.ndarray
     Returns cuts (bins - 1,), halfway between neighbours.
     """
     m = len(values)
-    starts = np.arange(m + 1)
-    if m > limit:
+    if m <= limit:
+        starts = np.arange(m + 1)
+    else:
         totals = np.concatenate([[0], np.cumsum(weights)])
         low, high = 1, int(totals[-1])
         while low < high:

@@ -1,7 +1,8 @@
 """The machine-readable results: comparison, structures, pairs, predictions, as plain values ready to be written."""
 
 import platform
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
+from itertools import pairwise
 from typing import Any
 
 import numba
@@ -13,10 +14,11 @@ from bnx import __version__
 from bnx.comparison import Comparison
 from bnx.formats.dot import dot_source
 from bnx.formats.structure_json import classifier_document
-from bnx.judging import Against, StructureScore
+from bnx.judging import Against
 from bnx.ledger import EdgeEvidence
 from bnx.picture import Arrow, Chip, Picture
 from bnx.plain import finite
+from bnx.rating import StructureScore
 from bnx.structure import words
 from bnx.verdicts import OUTCOMES, VERDICTS, TestResult
 
@@ -27,6 +29,7 @@ __all__ = [
     "dot_of",
     "pair_results",
     "picture_of",
+    "predictions",
     "predictions_table",
     "structure_document",
 ]
@@ -266,24 +269,43 @@ def dot_of(document: dict[str, Any]) -> str:
 
 def predictions_table(comparison: Comparison) -> pa.Table:
     """List out-of-fold probabilities: one row per row of data, repeat and structure."""
-    parts = []
-    levels = comparison.classifiers[0].target.levels
-    names = comparison.recipe.structures
+    return pa.concat_tables(predictions(comparison))
+
+
+def predictions(comparison: Comparison) -> Iterator[pa.Table]:
+    """Predict all rows out of fold once more, and list the probabilities a part at a time.
+
+    In order of repeat, structure and row; a part is what the engine keeps together, and no more is held at once.
+    """
     for repeat, one in enumerate(comparison.evaluations):
-        rows = len(one.engine.order)
-        fold = np.empty(rows, np.int64)
-        for number, run in enumerate(one.fold_rows):
-            fold[run] = number
-        back = np.argsort(one.engine.order)
-        truth = pa.DictionaryArray.from_arrays(one.engine.target[back].astype(np.int32), pa.array(levels))
-        for s, p in enumerate(one.p):
-            columns = {
-                "row": comparison.line_of_row,
-                "repeat": np.full(rows, repeat),
-                "fold": fold[back],
-                "structure": pa.DictionaryArray.from_arrays(np.full(rows, s, np.int32), pa.array(names)),
-                "truth": truth,
-            }
-            columns |= {f"p:{level}": p[back, c] for c, level in enumerate(levels)}
-            parts.append(pa.table(columns))
-    return pa.concat_tables(parts)
+        engine = one.engine
+        groups = engine.blocks * engine.classes
+        bounds = engine.starts[np.arange(0, len(engine.starts), groups)].tolist()
+        for s in range(len(comparison.recipe.structures)):
+            for first, last in pairwise(bounds):
+                yield _predicted(comparison, repeat, s, first, last)
+
+
+def _predicted(comparison: Comparison, repeat: int, s: int, first: int, last: int) -> pa.Table:
+    """Predict the engine's rows ``first:last`` by one structure, in the order of the table."""
+    one, levels = comparison.evaluations[repeat], comparison.classifiers[0].target.levels
+    p, fold = np.empty((last - first, len(levels))), np.empty(last - first, np.int64)
+
+    def fill(number: int) -> None:
+        inside = [run for run in one.fold_rows[number] if first <= run.start < run.stop <= last]
+        predictor = one.predictor(number, s)
+        for run in inside:
+            p[run.start - first : run.stop - first] = predictor.probabilities(run.start, run.stop)
+            fold[run.start - first : run.stop - first] = number
+
+    one.engine.map(fill, range(len(one.fold_rows)))
+    back = np.argsort(one.engine.order_of(slice(first, last)))
+    names = pa.array(comparison.recipe.structures)
+    columns = {
+        "row": comparison.lines.of_rows(first, last),
+        "repeat": np.full(last - first, repeat),
+        "fold": fold[back],
+        "structure": pa.DictionaryArray.from_arrays(np.full(last - first, s, np.int32), names),
+        "truth": pa.DictionaryArray.from_arrays(one.engine.target[first:last][back].astype(np.int32), pa.array(levels)),
+    }
+    return pa.table(columns | {f"p:{level}": p[back, c] for c, level in enumerate(levels)})

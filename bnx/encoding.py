@@ -5,7 +5,7 @@ from collections.abc import Callable, Iterator, Sequence
 import numpy as np
 import pyarrow as pa
 
-from bnx.columns import array_numbers, array_texts, typed_number
+from bnx.blocks import array_numbers, array_texts, typed_number
 from bnx.domains import Domain
 from bnx.reading import Source
 

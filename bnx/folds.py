@@ -7,7 +7,9 @@ import numpy as np
 
 from bnx.errors import DataError, SettingError
 
-__all__ = ["assign_blocks", "assign_given", "assign_grouped", "halves", "keyed_hash", "sub_blocks"]
+__all__ = ["STRETCH_ROWS", "assign_blocks", "assign_given", "assign_grouped", "halves", "keyed_hash", "sub_blocks"]
+
+STRETCH_ROWS = 2**16  # lines of the source that are dealt together
 
 _MASK = 2**64 - 1
 _WEYL = 0x9E3779B97F4A7C15
@@ -30,7 +32,7 @@ def keyed_hash(seed: int, numbers: np.ndarray) -> np.ndarray:
 
 
 def assign_blocks(
-    target: np.ndarray, rows: np.ndarray, seed: int, folds: int, repeat: int, block_rows: int = 2**16
+    target: np.ndarray, rows: np.ndarray, seed: int, folds: int, repeat: int, block_rows: int = STRETCH_ROWS
 ) -> np.ndarray:
     """Give each row its block number fold * S + sub-block, uint16 (N,), without a pass over all rows.
 
@@ -131,8 +133,8 @@ def _key(*parts: int) -> int:
 
 def _dealt(stratum: np.ndarray, rows: np.ndarray, key: int, places: int) -> np.ndarray:
     """Deal the rows of each stratum (N,) in keyed order, one place after the other from a keyed start; places (N,)."""
-    strata, of_row = np.unique(stratum, return_inverse=True)
-    order = np.argsort(keyed_hash(_key(key, _ROW_ORDER), rows), kind="stable")
+    strata, of_row = _numbered(stratum)
+    order = np.argsort(keyed_hash(_key(key, _ROW_ORDER), rows))  # no two are the same
     order = order[np.argsort(of_row[order].astype(np.min_scalar_type(len(strata))), kind="stable")]
     sizes = np.bincount(of_row, minlength=len(strata))
     rank = np.arange(len(rows)) - np.repeat(np.cumsum(sizes) - sizes, sizes)
@@ -140,6 +142,18 @@ def _dealt(stratum: np.ndarray, rows: np.ndarray, key: int, places: int) -> np.n
     place = np.empty(len(rows), dtype=np.int64)
     place[order] = (rank + np.repeat(start.astype(np.int64), sizes)) % places
     return place
+
+
+def _numbered(stratum: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """List the different strata in order, and number each row's; strata that lie near one another are not sorted."""
+    low, high = (int(stratum.min()), int(stratum.max())) if len(stratum) else (0, 0)
+    if high - low >= _CLASSES:
+        return np.unique(stratum, return_inverse=True)
+    near = stratum - low
+    used = np.flatnonzero(np.bincount(near))
+    number = np.zeros(high - low + 1, np.int64)
+    number[used] = np.arange(len(used))
+    return used + low, number[near]
 
 
 def _class_counts(of_row: np.ndarray, target: np.ndarray, groups: int) -> np.ndarray:

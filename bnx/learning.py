@@ -2,16 +2,17 @@
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import groupby
+from operator import itemgetter
 
 import numpy as np
 
-from bnx.dependence import Dependence, Pairs, measure
+from bnx.dependence import Dependence, measure, relevance_of, sets_at_a_time
 from bnx.engines import LocalEngine
 from bnx.errors import DataError
-from bnx.families import Request, for_each_family
+from bnx.families import PairRequests, family_statistics
 from bnx.gating import Answer, Bounds, Gate, Question, learn_together
 from bnx.independence import Statistics
-from bnx.kernels.contingency import one_table
 from bnx.learners import Learner
 from bnx.recipe import Recipe
 from bnx.refining import Rigour, gated, visit_families
@@ -19,7 +20,7 @@ from bnx.structure import Structure
 from bnx.text import nearest
 from bnx.trainings import Training
 
-__all__ = ["Learned", "ask_tests", "learn", "make_bounds", "rigour_of", "test_statistics"]
+__all__ = ["Learned", "ask_tests", "learn", "make_bounds", "rigour_of"]
 
 
 @dataclass(frozen=True)
@@ -27,8 +28,6 @@ class Learned:
     """What was learnt in one training set: ``structures`` in the order of the learners."""
 
     training: Training
-    dependence: Dependence
-    pairs: Pairs
     structures: tuple[Structure, ...]
 
 
@@ -65,41 +64,84 @@ def _ends(pair: str, names: Sequence[str]) -> tuple[str, str]:
 
 
 def learn(
-    engine: LocalEngine,
-    trainings: Sequence[Training],
-    learners: Sequence[Learner],
-    bounds: Bounds,
-    recipe: Recipe,
-    marginal_of_first: bool = False,
+    engine: LocalEngine, trainings: Sequence[Training], learners: Sequence[Learner], bounds: Bounds, recipe: Recipe
 ) -> list[Learned]:
-    """Measure all pairs and learn every structure in each training set.
+    """Learn every structure in each training set.
 
-    marginal_of_first: also measure the pairs without the class in the first training set.
+    Pairs are measured if some structure looks at them, and tested if some structure tests; as many training sets at a
+    time as a fixed amount of memory takes.
     """
-    engine.progress("measuring pairs", 0, 0)
-    measured = measure(engine, trainings, marginal_of_first)
-    attributes = len(bounds.names)
-    rigour = rigour_of(learners, attributes, recipe)
-    learnings, known = [], []
-    for number, (dependence, pairs) in enumerate(measured):
-        statistics = Statistics.of(pairs.statistics)
-        tested = gated(visit_families(engine, trainings, pairs.requests(number)), statistics, rigour)
-        gate = Gate(recipe.alpha, pairs.matrix(tested.p, attributes))
-        p = np.where(np.isnan(gate.p), 1.0, gate.p)
-        known.append((p.tolist(), pairs.matrix(statistics.bits_corrected, attributes).tolist()))
-        learnings += [member.learn(dependence, gate, bounds) for member in learners]
+    step = sets_at_a_time(len(bounds.names)) if any(member.looks_at_pairs for member in learners) else len(trainings)
+    return [
+        learned
+        for start in range(0, len(trainings), step)
+        for learned in _learn(engine, trainings[start : start + step], learners, bounds, recipe)
+    ]
+
+
+def _learn(
+    engine: LocalEngine, trainings: Sequence[Training], learners: Sequence[Learner], bounds: Bounds, recipe: Recipe
+) -> list[Learned]:
+    """Learn in training sets that are measured together."""
+    rigour = rigour_of(learners, len(bounds.names), recipe)
+    seen = _look(engine, trainings, learners, recipe, rigour)
+    learnings = [member.learn(one.dependence, one.gate, bounds) for one in seen for member in learners]
 
     def ask(questions: Sequence[tuple[int, Question]]) -> list[Answer]:
-        numbered = [(number // len(learners), question) for number, question in questions]
-        tested = iter(ask_tests(engine, trainings, [one for one in numbered if one[1].given], rigour))
-        return [next(tested) if question.given else _answer(*known[number], question) for number, question in numbered]
+        further = [(number // len(learners), question) for number, question in questions if question.given]
+        tested = iter(ask_tests(engine, trainings, further, rigour))
+        answers: list[Answer] = []
+        for number, asked in groupby(questions, key=itemgetter(0)):
+            own = [question for _, question in asked]
+            known = iter(seen[number // len(learners)].answers([one for one in own if not one.given]))
+            answers += [next(tested if question.given else known) for question in own]
+        return answers
 
     engine.progress("choosing edges", 0, 0)
     structures = learn_together(learnings, ask)
-    return [
-        Learned(training, dependence, pairs, tuple(structures[k * len(learners) : (k + 1) * len(learners)]))
-        for k, (training, (dependence, pairs)) in enumerate(zip(trainings, measured, strict=True))
-    ]
+    step = len(learners)
+    return [Learned(training, tuple(structures[k * step : (k + 1) * step])) for k, training in enumerate(trainings)]
+
+
+@dataclass(frozen=True)
+class _Seen:
+    """What learners see of one training set; ``bits`` (n, n): as strength, less what chance alone gives."""
+
+    dependence: Dependence
+    gate: Gate
+    bits: np.ndarray
+
+    def answers(self, questions: Sequence[Question]) -> list[Answer]:
+        """Answer questions that only take the class as given, from what was measured of all pairs."""
+        if not questions:
+            return []
+        child, candidate = np.array([question[:2] for question in questions]).T
+        p = self.gate.p[child, candidate]
+        p = np.where(np.isnan(p), 1.0, p).tolist()
+        return [Answer(*answer) for answer in zip(p, self.bits[child, candidate].tolist(), strict=True)]
+
+
+def _look(
+    engine: LocalEngine, trainings: Sequence[Training], learners: Sequence[Learner], recipe: Recipe, rigour: Rigour
+) -> list[_Seen]:
+    """Measure and test what the learners look at."""
+    attributes = len(engine.margins)
+    nothing = np.zeros((attributes, attributes))
+    untested = Gate(recipe.alpha, np.broadcast_to(np.nan, nothing.shape))
+    if not any(member.looks_at_pairs for member in learners):
+        return [_Seen(Dependence(relevance_of(engine, one), nothing), untested, nothing) for one in trainings]
+    seen = []
+    tested = any(member.tested for member in learners)
+    for number, (dependence, pairs) in enumerate(measure(engine, trainings)):
+        if not tested:
+            seen.append(_Seen(dependence, untested, nothing))
+            continue
+        statistics = Statistics.of(pairs.statistics)
+        visit = visit_families(engine, trainings, PairRequests(number, pairs.left, pairs.right))
+        p = gated(visit, statistics, rigour).p
+        gate = Gate(recipe.alpha, pairs.matrix(p, attributes))
+        seen.append(_Seen(dependence, gate, pairs.matrix(statistics.bits_corrected, attributes)))
+    return seen
 
 
 def rigour_of(learners: Sequence[Learner], attributes: int, recipe: Recipe) -> Rigour:
@@ -115,11 +157,6 @@ def rigour_of(learners: Sequence[Learner], attributes: int, recipe: Recipe) -> R
     return Rigour(recipe.test, strictest / 1000, min(1.0, 5 * recipe.alpha * 2 / attributes), recipe.seed)
 
 
-def _answer(p: list[list[float]], bits: list[list[float]], question: Question) -> Answer:
-    """Answer a question that only takes the class as given, from what was measured of all pairs."""
-    return Answer(p[question.child][question.candidate], bits[question.child][question.candidate])
-
-
 def ask_tests(
     engine: LocalEngine,
     trainings: Sequence[Training],
@@ -130,21 +167,10 @@ def ask_tests(
     if not questions:
         return []
     requests = [(number, (*question.given, question.candidate, question.child)) for number, question in questions]
-    rows = test_statistics(engine, trainings, requests)
+    rows = family_statistics(engine, trainings, requests, "testing parents")
     different = {request: place for place, request in enumerate(rows)}
     statistics = Statistics.of(np.array(list(rows.values())))
     p = gated(visit_families(engine, trainings, list(rows)), statistics, rigour).p
     p = np.where(np.isnan(p), 1.0, p)
     bits = statistics.bits_corrected
     return [Answer(float(p[different[request]]), float(bits[different[request]])) for request in requests]
-
-
-def test_statistics(
-    engine: LocalEngine, trainings: Sequence[Training], requests: Sequence[Request]
-) -> dict[Request, np.ndarray]:
-    """Compute the statistics (COLUMNS,) of the last two members given the class and the members before them."""
-
-    def use(counts: np.ndarray, sizes: tuple[int, ...]) -> np.ndarray:
-        return one_table(counts.reshape(-1, sizes[-2] * sizes[-1]), sizes[-2], sizes[-1])
-
-    return for_each_family(engine, trainings, requests, use, "testing parents")

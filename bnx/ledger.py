@@ -43,6 +43,7 @@ class EdgeEvidence:
 
 def edge_ledger(
     evaluation: Evaluation,
+    strength: np.ndarray,
     gains: Sequence[Gains],
     stable: Stability,
     learners: Sequence[Learner],
@@ -50,7 +51,10 @@ def edge_ledger(
     recipe: Recipe,
     folds: int,
 ) -> list[tuple[EdgeEvidence, ...]]:
-    """Gather the evidence on every edge of every final structure; gains: one mapping per fold of every repeat."""
+    """Gather the evidence on every edge of every final structure.
+
+    strength (n, n): bits shared given the class; gains: one mapping per fold of every repeat.
+    """
     learned = evaluation.learned(())
     ledger = []
     for s, structure in enumerate(learned.structures):
@@ -78,7 +82,7 @@ def edge_ledger(
                 EdgeEvidence(
                     parent=question.candidate,
                     child=question.child,
-                    bits=float(learned.dependence.strength[question.candidate, question.child]),
+                    bits=float(strength[question.candidate, question.child]),
                     gain=float(by_fold.mean()),
                     gain_se=float(spread),
                     chosen_in=chosen,

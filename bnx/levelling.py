@@ -5,26 +5,38 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from bnx.columns import NumberColumn, Tally, TextColumn, plain_numbers
-from bnx.discretising import fine_cuts
+from bnx.blocks import plain_numbers
+from bnx.columns import Column, NumberColumn, Tally, TextColumn
 from bnx.domains import Domain, interval_names
 
 __all__ = ["Levelled", "level", "natural_order", "spare_name"]
 
-FINE_LEVELS = 256
 TEXT_LEVELS = 65_000
 
 
 @dataclass(frozen=True)
 class Levelled:
-    """A column with its domain: ``codes`` (N,) uint8 or uint16; ``pooled`` levels were too many to keep."""
+    """How a column becomes codes of a domain; ``pooled`` levels were too many to keep.
+
+    ``lookup``: the code of every raw code, uint8 or uint16; of no length if cells are numbers, which ``cuts`` part.
+    """
 
     domain: Domain
-    codes: np.ndarray
     pooled: int
+    lookup: np.ndarray
+    cuts: np.ndarray
+
+    def write(self, raw: np.ndarray, codes: np.ndarray) -> None:
+        """Fill in the codes of raw cells, uint8 or uint16."""
+        if len(self.lookup):
+            np.take(self.lookup.astype(codes.dtype, copy=False), raw, out=codes, mode="clip")
+            return
+        codes[:] = np.searchsorted(self.cuts, raw, side="left")
+        if self.domain.blank:
+            codes[np.isnan(raw)] = len(self.domain) - 1
 
 
-def level(column: TextColumn | NumberColumn, found: Tally) -> Levelled:
+def level(column: Column, found: Tally) -> Levelled:
     """Give every cell the code of its level; numeric columns at most 256 levels, text columns at most 65,002."""
     if isinstance(column, NumberColumn):
         return _number_levels(column, found)
@@ -32,19 +44,13 @@ def level(column: TextColumn | NumberColumn, found: Tally) -> Levelled:
 
 
 def _number_levels(column: NumberColumn, found: Tally) -> Levelled:
-    cuts = fine_cuts(found.values, found.counts, FINE_LEVELS - (found.blanks > 0))
-    names = interval_names([float(cut) for cut in cuts])
-    codes = np.searchsorted(cuts, column.values, side="left").astype(np.uint8)
-    if found.blanks:
-        codes[column.blanks] = len(names)
-    domain = Domain(
-        column.name,
-        names + (("(blank)",) if found.blanks else ()),
-        numeric=True,
-        cuts=tuple(float(cut) for cut in cuts),
-        blank=found.blanks > 0,
-    )
-    return Levelled(domain, codes, 0)
+    cuts = tuple(found.cuts.tolist())
+    names = interval_names(cuts) + (("(blank)",) if found.blanks else ())
+    domain = Domain(column.name, names, numeric=True, cuts=cuts, blank=found.blanks > 0)
+    plain = Levelled(domain, 0, np.zeros(0, np.uint8), found.cuts)
+    lookup = np.zeros(len(column.values), np.uint8)
+    plain.write(column.values, lookup)
+    return Levelled(domain, 0, lookup, found.cuts)
 
 
 def _text_levels(column: TextColumn, found: Tally) -> Levelled:
@@ -57,16 +63,12 @@ def _text_levels(column: TextColumn, found: Tally) -> Levelled:
     kept = [texts[k] for k in order]
     extra = [spare_name("(other)", texts)] if pooled else []
     extra += [spare_name("(blank)", texts)] if found.blanks else []
-    codes_of = np.full(len(column.texts) + 1, len(kept), dtype=np.uint16)
-    codes_of[found.values[order]] = np.arange(len(kept))
-    codes_of[0] = len(kept) + bool(pooled)
     size = len(kept) + len(extra)
-    codes = codes_of.astype(np.uint8 if size <= 1 << 8 else np.uint16)[column.codes]
-    return Levelled(
-        Domain(column.name, (*kept, *extra), pooled=bool(pooled), blank=found.blanks > 0),
-        codes,
-        pooled,
-    )
+    lookup = np.full(len(column.texts) + 1, len(kept), dtype=np.uint16)
+    lookup[found.values[order]] = np.arange(len(kept))
+    lookup[0] = len(kept) + bool(pooled)
+    domain = Domain(column.name, (*kept, *extra), pooled=bool(pooled), blank=found.blanks > 0)
+    return Levelled(domain, pooled, lookup.astype(np.uint8) if size <= 1 << 8 else lookup, np.zeros(0))
 
 
 def natural_order(texts: list[str]) -> list[int]:

@@ -13,6 +13,7 @@ from bnx.engines.local import Progress
 from bnx.errors import DataError, SettingError
 from bnx.level_order import level_scores
 from bnx.recipe import Recipe
+from bnx.storing import Store
 from bnx.text import count_of
 from bnx.trainings import Training, make_trainings
 
@@ -88,8 +89,8 @@ class PairTable:
     scores: tuple[np.ndarray | None, ...]
 
     @classmethod
-    def of(cls, coded: Coded, recipe: Recipe, asked: Asked, jobs: int, progress: Progress) -> "PairTable":
-        """Cut numeric columns, find the attributes.
+    def of(cls, coded: Coded, recipe: Recipe, asked: Asked, jobs: int, progress: Progress, store: Store) -> "PairTable":
+        """Cut numeric columns, find the attributes. The rows are sorted in place.
 
         Raises:
             DataError: an attribute cannot be tested.
@@ -103,7 +104,8 @@ class PairTable:
                 f"the table has only {count_of(len(chosen), 'attribute')} to test beside the class and --given, "
                 "but a pair needs two; give a table with more, or fewer --given"
             )
-        engine = start_local(coded.table, np.zeros(len(coded.table.target), np.int64), 1, jobs, progress)
+        blocks = np.zeros(coded.table.lines.count, np.uint8)
+        engine = start_local(coded.table, blocks, 1, jobs, progress, store, in_place=True)
         bins = bins_of(recipe)
         training = make_trainings(engine, schema, {(): np.ones(1, bool)}, bins, recipe.max_levels)[0]
         for name in asked.ordered:

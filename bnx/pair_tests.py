@@ -9,16 +9,16 @@ import numpy as np
 
 from bnx.engines.local import Progress
 from bnx.explaining import Explanation, explanations
-from bnx.families import for_each_family
+from bnx.families import family_statistics, for_each_family
 from bnx.independence import Statistics
 from bnx.kernels.contingency import one_table
-from bnx.learning import test_statistics
 from bnx.pair_details import Pair, PairDetail, compare_classes, look_closely
 from bnx.pair_judging import JudgedPairs, judge_pairs
 from bnx.pair_table import CLOSE, Asked, PairTable, bins_of
 from bnx.reading import Source
 from bnx.recipe import Recipe
 from bnx.refining import visit_families, with_chance
+from bnx.storing import MEMORY, Store
 from bnx.tables import LeftOut
 from bnx.text import count_of, quoted
 from bnx.verdicts import TestResult
@@ -77,21 +77,26 @@ class PairTests:
 
 
 def run_pair_tests(
-    source: Source, recipe: Recipe, asked: Asked, jobs: int, progress: Progress = lambda *_: None
+    source: Source,
+    recipe: Recipe,
+    asked: Asked,
+    jobs: int,
+    progress: Progress = lambda *_: None,
+    store: Store = MEMORY,
 ) -> PairTests:
     """Test pairs as one family, and look closely at those named, or with ``everything`` at those rejected.
 
     Numeric columns are cut as ``recipe.bins`` says; ``auto`` means frequency:5 here, as nothing is chosen out of fold.
-    progress: called with (stage, done, of how many) while it runs.
+    progress: called with (stage, done, of how many) while it runs; store: keeps what has a value per row.
 
     Raises:
         DataError, SettingError: the table or a setting cannot be used.
     """
     progress("reading", 0, 0)
     source.check([*asked.attributes, *asked.given, *asked.ordered])
-    coded = recipe.code(source)
+    coded = recipe.code(source, jobs, store)
     progress("sorting rows", 0, 0)
-    table = PairTable.of(coded, recipe, asked, jobs, progress)
+    table = PairTable.of(coded, recipe, asked, jobs, progress, store)
     progress("judging pairs", 0, 0)
     pairs = list(combinations(table.chosen, 2))
     requests = [(0, (*table.given, a, b)) for a, b in pairs]
@@ -133,7 +138,7 @@ def _statistics(table: PairTable, requests: Sequence[tuple[int, tuple[int, ...]]
 def _given_class(table: PairTable, pairs: Sequence[tuple[int, int]]) -> list[float]:
     """Measure pairs given the class alone: bits less what chance alone would show."""
     requests = [(0, pair) for pair in pairs]
-    rows = test_statistics(table.engine, [table.training], requests)
+    rows = family_statistics(table.engine, [table.training], requests)
     stats = Statistics.of(np.array([rows[request] for request in requests]))
     found: list[float] = with_chance(
         visit_families(table.engine, [table.training], requests), stats
@@ -168,7 +173,7 @@ def _explained(
         if not others:
             continue
         requests = [(0, (*table.given, other, a, b)) for other in others]
-        rows = test_statistics(table.engine, [table.training], requests)
+        rows = family_statistics(table.engine, [table.training], requests)
         found[table.names[a], table.names[b]] = explanations(
             [table.names[other] for other in others],
             Statistics.of(np.array([rows[request] for request in requests])),

@@ -5,6 +5,7 @@ from typing import Any
 
 import numpy as np
 
+from bnx.cells import stretches
 from bnx.coding import Coded
 from bnx.domains import Domain
 from bnx.text import aligned, count_of, fixed, quoted
@@ -164,8 +165,10 @@ def _column(domain: Domain, counts: np.ndarray, target_bits: float) -> ColumnPro
 
 def _crosstab(codes: np.ndarray, target: np.ndarray, levels: int, classes: int) -> np.ndarray:
     """Count rows per level and class, int64 (levels, C)."""
-    cells = codes.astype(np.int64) * classes + target
-    return np.bincount(cells, minlength=levels * classes).reshape(levels, classes)
+    counts = np.zeros(levels * classes, np.int64)
+    for rows in stretches(len(codes)):
+        counts += np.bincount(codes[rows].astype(np.int64) * classes + target[rows], minlength=len(counts))
+    return counts.reshape(levels, classes)
 
 
 def _shared_bits(counts: np.ndarray) -> float:

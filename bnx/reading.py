@@ -36,6 +36,11 @@ class Source:
     files: tuple[Path, ...]
     form: Delimited | ParquetFiles | ArrowFile
 
+    @property
+    def rows(self) -> int:
+        """Count the rows, if the form of the table tells; 0 if only reading it would."""
+        return 0 if isinstance(self.form, Delimited) else self.form.rows
+
     def blocks(self, columns: Sequence[str]) -> Iterator[pa.RecordBatch]:
         """Read batches of rows in file order, holding ``columns`` in the order given.
 

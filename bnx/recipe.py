@@ -12,6 +12,7 @@ from bnx.learners import learner
 from bnx.multiplicity import METHODS as ADJUSTMENTS
 from bnx.parameters import candidates
 from bnx.reading import Source
+from bnx.storing import MEMORY, Store
 from bnx.text import quoted
 
 __all__ = ["DEFAULT_STRUCTURES", "MOST_FOLDS", "Recipe"]
@@ -90,8 +91,10 @@ class Recipe:
                 if not all(pair.partition(":")):
                     raise SettingError(f"--{option}: {pair!r} is not a pair of attributes; write PARENT:CHILD")
 
-    def code(self, source: Source) -> Coded:
+    def code(self, source: Source, jobs: int = 1, store: Store = MEMORY) -> Coded:
         """Code a table as these settings say; ``keep`` = all keeps every column that could be left out.
+
+        What has a value per row is kept in ``store``.
 
         Raises:
             DataError, SettingError: the table or a setting cannot be used.
@@ -110,6 +113,8 @@ class Recipe:
             missing="drop" if self.missing == "drop" else "level",
             max_levels=self.max_levels,
             extra=extra,
+            jobs=jobs,
+            store=store,
         )
 
     def to_dict(self) -> dict[str, Any]:

@@ -8,7 +8,6 @@ import numpy as np
 from bnx.engines import LocalEngine
 from bnx.folds import halves
 from bnx.gating import Bounds
-from bnx.kernels.contingency import COLUMNS
 from bnx.learners import Learner
 from bnx.learning import learn
 from bnx.recipe import Recipe
@@ -18,8 +17,6 @@ from bnx.views import View
 __all__ = ["Stability", "stability"]
 
 Stability = Mapping[tuple[int, frozenset[int]], float]  # (structure, the two ends) -> share of the halves
-
-_FLOATS_AT_A_TIME = 50_000_000
 
 
 def stability(
@@ -37,15 +34,10 @@ def stability(
     plain = _plain(view)
     found: Counter[tuple[int, frozenset[int]]] = Counter()
     masks = halves(folds, engine.blocks // folds, recipe.resamples, recipe.seed)
-    pairs = len(view.domains) * (len(view.domains) - 1) // 2
-    together = max(1, _FLOATS_AT_A_TIME // (COLUMNS * max(pairs, 1)))
-    for start in range(0, recipe.resamples, together):
-        trainings = [
-            Training((), mask, plain, engine.class_counts[mask].sum(axis=0)) for mask in masks[start : start + together]
-        ]
-        for learned in learn(rows, trainings, learners, bounds, recipe):
-            for s, structure in enumerate(learned.structures):
-                found.update((s, frozenset(edge)) for edge in structure.edges)
+    trainings = [Training((), mask, plain, engine.class_counts[mask].sum(axis=0)) for mask in masks]
+    for learned in learn(rows, trainings, learners, bounds, recipe):
+        for s, structure in enumerate(learned.structures):
+            found.update((s, frozenset(edge)) for edge in structure.edges)
     return {key: number / recipe.resamples for key, number in found.items()}
 
 

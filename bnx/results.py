@@ -6,6 +6,7 @@ import tempfile
 from collections.abc import Iterator, Mapping, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from contextlib import contextmanager, suppress
+from itertools import chain
 from pathlib import Path
 from typing import Any
 
@@ -18,7 +19,7 @@ from bnx.documents import (
     comparison_document,
     dot_of,
     pair_results,
-    predictions_table,
+    predictions,
     structure_document,
 )
 from bnx.drawing import find_engine, render
@@ -159,8 +160,17 @@ def write_results(
         every = [result.to_dict() for result in pair_results(comparison, everything=True)]
         pq.write_table(pa.Table.from_pylist(every), folder / "pairs.parquet")
     if predictions:
-        pq.write_table(predictions_table(comparison), folder / "predictions.parquet")
+        write_predictions(comparison, folder / "predictions.parquet")
     return document, notes
+
+
+def write_predictions(comparison: Comparison, path: Path) -> None:
+    """Write out-of-fold probabilities, a part at a time."""
+    parts = predictions(comparison)
+    first = next(parts)
+    with pq.ParquetWriter(path, first.schema) as writer:
+        for part in chain([first], parts):
+            writer.write_table(part)
 
 
 def _not_all_drawn(structures: Sequence[Mapping[str, Any]]) -> list[str]:

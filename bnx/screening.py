@@ -4,11 +4,12 @@ from collections.abc import Sequence
 
 import numpy as np
 
-from bnx.columns import NumberColumn, Tally, TextColumn, part_numbers
-from bnx.folds import keyed_hash
+from bnx.blocks import part_numbers
+from bnx.columns import Column, NumberColumn, Tally, TextColumn
+from bnx.tables import Lines
 from bnx.text import count_of, quoted
 
-__all__ = ["column_warnings", "count_duplicates", "few_rows", "reason_to_leave_out"]
+__all__ = ["column_warnings", "few_rows", "reason_to_leave_out"]
 
 IDENTIFIER_LEVELS = 50
 IDENTIFIER_SHARE = 0.9
@@ -18,14 +19,14 @@ MOSTLY_NUMBERS = 0.9
 
 
 def reason_to_leave_out(
-    column: TextColumn | NumberColumn, found: Tally, target: TextColumn, levels: int, drops_blanks: bool
+    column: Column, found: Tally, target: TextColumn, levels: int, lines: Lines, drops_blanks: bool
 ) -> str | None:
     """Say why a column can or must tell nothing: all blank, constant, an identifier, or the class itself; else None.
 
-    ``target`` is the class with ``levels`` levels among the same rows. Identifiers are sought among texts and whole
+    ``target`` is the class with ``levels`` levels in the same rows. Identifiers are sought among texts and whole
     numbers only: measurements may well differ in every row.
     """
-    distinct, filled = len(found.counts), int(found.counts.sum())
+    distinct, filled = found.distinct, found.filled
     if not distinct:
         return "every cell is blank"
     if distinct == 1 and (drops_blanks or not found.blanks):
@@ -33,25 +34,37 @@ def reason_to_leave_out(
     if distinct > IDENTIFIER_LEVELS and distinct > IDENTIFIER_SHARE * filled and _names_things(column, found):
         some = f"{distinct:,} different values in {filled:,} rows"
         return "a different value in every row" if distinct == filled else some
-    if distinct + (found.blanks > 0) == levels and _one_to_one(column, found, target):
+    if distinct + (found.blanks > 0) == levels and _one_to_one(column, found, target, lines):
         return "it is the class under other names"
     return None
 
 
-def _names_things(column: TextColumn | NumberColumn, found: Tally) -> bool:
+def _names_things(column: Column, found: Tally) -> bool:
     """Tell a column that could be an identifier: texts, or whole numbers."""
-    return isinstance(column, TextColumn) or bool(np.all(found.values == np.floor(found.values)))
+    return isinstance(column, TextColumn) or found.whole
 
 
-def _one_to_one(column: TextColumn | NumberColumn, found: Tally, target: TextColumn) -> bool:
+def _one_to_one(column: Column, found: Tally, target: TextColumn, lines: Lines) -> bool:
     """Tell whether every value goes with one class level and every class level with one value."""
+    width = len(target.texts) + 1
+    seen = np.zeros((found.distinct + 1) * width, np.bool_)
+    for rows in lines.stretches():
+        classes = lines.pick(rows, target.cells.part(rows))
+        cells = lines.pick(rows, _places(column, found, rows)) * width + classes
+        seen |= np.bincount(cells, minlength=len(seen)) > 0
+        together = seen.reshape(-1, width)
+        if max(together.sum(axis=0).max(), together.sum(axis=1).max()) > 1:
+            return False
+    return True
+
+
+def _places(column: Column, found: Tally, rows: slice) -> np.ndarray:
+    """Number the values of a stretch by their place among those found; blank is one of them."""
     if isinstance(column, NumberColumn):
-        codes = np.searchsorted(found.values, column.values)
-    else:
-        codes = column.codes.astype(np.int64)
-    width = int(target.codes.max()) + 1
-    cells = np.flatnonzero(np.bincount(codes * width + target.codes))
-    return len(np.unique(cells // width)) == len(cells) == len(np.unique(cells % width))
+        return np.searchsorted(found.values, column.numbers(rows))
+    place = np.full(len(column.texts) + 1, found.distinct)
+    place[found.values] = np.arange(found.distinct)
+    return np.asarray(place[column.cells.part(rows)])
 
 
 def few_rows(name: str, levels: Sequence[str], counts: np.ndarray) -> list[str]:
@@ -63,7 +76,7 @@ def few_rows(name: str, levels: Sequence[str], counts: np.ndarray) -> list[str]:
     ]
 
 
-def column_warnings(column: TextColumn | NumberColumn, found: Tally, rows: int, max_levels: int) -> list[str]:
+def column_warnings(column: Column, found: Tally, rows: int, max_levels: int) -> list[str]:
     """Warn of a column that is mostly blank, has many levels, is nearly numeric, or spells a level in several ways."""
     warnings = []
     if found.blanks > MOSTLY_BLANK * rows:
@@ -100,20 +113,3 @@ def _spellings(name: str, texts: list[str]) -> list[str]:
     if not pairs:
         return []
     return [f"{name} has levels that differ only in capitals or in spaces around them: {quoted(pairs, 3)}"]
-
-
-def count_duplicates(columns: Sequence[TextColumn | NumberColumn]) -> int:
-    """Count the rows that repeat an earlier row in all columns, by sums of 64-bit hashes.
-
-    Among a million rows a chance match turns up in about one table of 37 million.
-
-    Source: the mixing function of SplitMix64, Steele, Lea & Flood 2014 (constants from memory).
-    """
-    total = np.zeros(len(columns[0].blanks), dtype=np.uint64)
-    for position, column in enumerate(columns):
-        if isinstance(column, NumberColumn):
-            total += keyed_hash(position, np.where(column.blanks, np.nan, column.values).view(np.uint64))
-        else:
-            total += keyed_hash(position, np.arange(len(column.texts) + 1, dtype=np.uint64))[column.codes]
-    total.sort()
-    return int(np.count_nonzero(total[1:] == total[:-1]))

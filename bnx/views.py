@@ -1,13 +1,13 @@
 """How one training set sees the coded table: its own cut points and pooled levels."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from bnx.domains import Coarsening, Domain, Schema
 
-__all__ = ["View", "make_view"]
+__all__ = ["Refinement", "View", "make_view", "refine"]
 
 
 @dataclass(frozen=True)
@@ -51,3 +51,47 @@ def make_view(schema: Schema, coarsenings: dict[int, Coarsening]) -> View:
         domains[attribute] = coarsening.domain
     plain = np.array([attribute not in coarsenings for attribute in range(len(domains))])
     return View(tuple(domains), recode, plain, np.array([len(domain) for domain in domains], dtype=np.int64))
+
+
+@dataclass(frozen=True)
+class Refinement:
+    """The coarsest levels that K views all can be made of by merging.
+
+    ``recode`` (n, R) int32: the fine level that each stored code stands for, itself where ``plain`` (n,) bool;
+    ``sizes`` (n,): fine levels; ``starts`` (n + 1,): first fine level of each attribute in ``levels`` (K, fine levels)
+    int32: the level that a view takes it for, of ``view_sizes`` (K, n).
+    """
+
+    recode: np.ndarray
+    plain: np.ndarray
+    sizes: np.ndarray
+    starts: np.ndarray
+    levels: np.ndarray
+    view_sizes: np.ndarray
+
+    def part(self, first: int, last: int) -> "Refinement":
+        """Keep the views ``first:last``."""
+        return replace(self, levels=self.levels[first:last], view_sizes=self.view_sizes[first:last])
+
+
+def refine(views: Sequence[View], stored: np.ndarray) -> Refinement:
+    """Find the fine levels of some views; stored (n,): levels as stored."""
+    plain = np.all([view.plain for view in views], axis=0)
+    recode = np.tile(np.arange(int(stored.max(initial=1)), dtype=np.int32), (len(stored), 1))
+    levels, sizes = [], stored.astype(np.int64)
+    for i, size in enumerate(sizes.tolist()):
+        if plain[i]:
+            levels.append(np.broadcast_to(np.arange(size), (len(views), size)))
+        else:
+            fine, recode[i, :size] = np.unique([view.recode[i, :size] for view in views], axis=1, return_inverse=True)
+            levels.append(fine)
+            sizes[i] = fine.shape[1]
+    starts = np.concatenate([[0], np.cumsum(sizes)]).astype(np.int64)
+    return Refinement(
+        recode,
+        plain,
+        sizes,
+        starts,
+        np.ascontiguousarray(np.concatenate(levels, axis=1), dtype=np.int32),
+        np.array([view.sizes for view in views], dtype=np.int64),
+    )

@@ -13,14 +13,15 @@ from bnx.comparison import Comparison, compare
 from bnx.dependence import Dependence
 from bnx.domains import Domain, Schema
 from bnx.engines import LocalEngine, start_local
-from bnx.evaluation import Evaluation
+from bnx.engines.local import CHUNK
+from bnx.evaluation import Evaluation, predict
 from bnx.gating import Answer, Bounds, Gate, Learning, learn_together
 from bnx.learners import learner
 from bnx.learning import Learned, learn, make_bounds
 from bnx.reading import open_source
 from bnx.recipe import Recipe
 from bnx.structure import Structure
-from bnx.tables import CodedTable
+from bnx.tables import CodedTable, Lines
 from bnx.trainings import Training, make_trainings
 from bnx.views import View
 
@@ -46,7 +47,7 @@ def coded(
     attributes = tuple(domain(f"a{i}", size) for i, size in enumerate(found))
     schema = Schema(attributes, domain("class", classes or int(target.max(initial=0)) + 1))
     stored = np.ascontiguousarray(codes, dtype=kind)
-    return CodedTable(schema, stored, target.astype(np.uint8), np.arange(len(target)))
+    return CodedTable(schema, stored, target.astype(np.uint8), Lines.all(len(target)))
 
 
 def coded_frame(frame: pd.DataFrame, target: str) -> CodedTable:
@@ -58,13 +59,19 @@ def coded_frame(frame: pd.DataFrame, target: str) -> CodedTable:
         domains.append(Domain(name, tuple(levels.tolist())))
         codes.append(column)
     schema = Schema(tuple(domains[:-1]), domains[-1])
-    return CodedTable(schema, np.array(codes[:-1], dtype=np.uint8), codes[-1].astype(np.uint8), np.arange(len(frame)))
+    return CodedTable(schema, np.array(codes[:-1], dtype=np.uint8), codes[-1].astype(np.uint8), Lines.all(len(frame)))
 
 
-def started(table: CodedTable, blocks_of_rows: np.ndarray | None = None, blocks: int = 1, jobs: int = 1) -> LocalEngine:
+def started(
+    table: CodedTable,
+    blocks_of_rows: np.ndarray | None = None,
+    blocks: int = 1,
+    jobs: int = 1,
+    chunk: int = CHUNK,
+) -> LocalEngine:
     """Start a local engine; all rows in one block unless their blocks are given."""
     places = np.zeros(len(table.target), np.int64) if blocks_of_rows is None else blocks_of_rows
-    return start_local(table, places, blocks, jobs, silent)
+    return start_local(table, places, blocks, jobs, silent, chunk=chunk)
 
 
 def whole(engine: LocalEngine, table: CodedTable, bins: str = "mdl", max_levels: int = 50) -> Training:
@@ -136,17 +143,21 @@ def rows_and_levels(frame: pd.DataFrame, target: str) -> RowsAndLevels:
 
 def folds_of(evaluation: Evaluation) -> np.ndarray:
     """Tell the fold of each row of the table."""
-    fold = np.empty(len(evaluation.engine.order), np.int64)
-    for number, rows in enumerate(evaluation.fold_rows):
-        fold[evaluation.engine.order[rows]] = number
+    fold, order = np.empty(evaluation.engine.rows, np.int64), evaluation.engine.order
+    for number, runs in enumerate(evaluation.fold_rows):
+        for rows in runs:
+            fold[order[rows]] = number
     return fold
 
 
 def predicted(comparison: Comparison, s: int) -> np.ndarray:
     """Give one structure's out-of-fold probabilities (N, C) in the table's order."""
     one = comparison.evaluations[0]
-    back = np.empty_like(one.p[s])
-    back[one.engine.order] = one.p[s]
+    p = np.empty((one.engine.rows, one.engine.classes))
+    for fold, runs in enumerate(one.fold_rows):
+        predict(one, fold, s, runs, p)
+    back = np.empty_like(p)
+    back[one.engine.order] = p
     return back
 
 

@@ -252,6 +252,7 @@ def test_too_little_memory_is_said_in_one_sentence(monkeypatch: pytest.MonkeyPat
 
     monkeypatch.setattr("bnx.cli.learn.compare", exhausted)
     assert refusal("learn", small_table(), *LEARN) == (
-        "the memory of this machine is not enough for this table; give fewer columns, --structures or --given"
+        "the memory of this machine is not enough for this table; "
+        "give fewer columns, --structures or --given, or --spill DIR"
     )
     assert list(Path().iterdir()) == []

@@ -139,12 +139,12 @@ def test_blanks_are_a_level_or_their_rows_are_dropped(tmp_path):
     coded = code_table(source, "arrival", keep=["a", "b"])
     assert domain(coded, "a") == Domain("a", ("x", "y", "(blank)"), blank=True)
     assert texts(coded, "a") == ["x", "(blank)", "y", "(blank)", "x"]
-    assert coded.table.rows.tolist() == [0, 1, 2, 3, 4]
+    assert coded.table.lines.numbers().tolist() == [0, 1, 2, 3, 4]
     assert coded.rows_read == 6
     assert coded.warnings[0] == "1 row of 6 dropped because the class arrival is blank"
     columns["arrival"][:] = ["sound", "rejected", "rejected", "sound", "sound", "sound"]
     dropped = code_table(source_of(tmp_path, columns), "arrival", missing="drop", keep=["a", "b"])
-    assert dropped.table.rows.tolist() == [0, 2, 5]
+    assert dropped.table.lines.numbers().tolist() == [0, 2, 5]
     assert not domain(dropped, "a").blank
     assert dropped.warnings[0] == "3 rows of 6 dropped because a cell is blank"
 
@@ -152,7 +152,7 @@ def test_blanks_are_a_level_or_their_rows_are_dropped(tmp_path):
 def test_blanks_of_a_column_left_out_drop_no_row(tmp_path):
     columns = with_class({"a": ["x", "y", "y", "x"], "nothing": ["", "", "", ""], "one": ["k", "", "k", "k"]})
     coded = code_table(source_of(tmp_path, columns), "arrival", missing="drop")
-    assert coded.table.rows.tolist() == [0, 1, 2, 3]
+    assert coded.table.lines.numbers().tolist() == [0, 1, 2, 3]
     assert reasons(coded) == {
         "nothing": "every cell is blank; --keep nothing to use it",
         "one": "the same value in every cell that is not blank; --keep one to use it",

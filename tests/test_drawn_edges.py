@@ -5,10 +5,11 @@ from functools import cache
 import networkx as nx
 import numpy as np
 import pytest
-from builders import coded, learnt
+from builders import coded, started, whole
 from simulations.drawn_edges import PROCESSES, STRUCTURES, Rates, draw_many, draw_one, false_edges, rates, share
 from simulations.planted import CLASS, CLIQUE, DESIGNS, HIDDEN, LEVELS, TREE, Planted, graph_of
 
+from bnx.dependence import measure
 from bnx.independence import Statistics, p_values
 from bnx.multiplicity import adjusted
 from bnx.structure import Structure
@@ -48,7 +49,9 @@ def test_a_higher_level_breaks_the_promise() -> None:
 
 def false_share_by_plain_bh(planted: Planted) -> float:
     """Take the strongest forest of the pairs that pass Benjamini & Hochberg's steps, as a gate must not."""
-    pairs = learnt(coded(planted.codes, planted.target, LEVELS, 3), ("tan",)).pairs
+    table = coded(planted.codes, planted.target, LEVELS, 3)
+    engine = started(table)
+    pairs = measure(engine, [whole(engine, table)])[0][1]
     stats = Statistics.of(pairs.statistics)
     passed = adjusted(p_values(stats).p, "bh") <= 0.05
     ends = zip(pairs.left[passed].tolist(), pairs.right[passed].tolist(), stats.bits[passed].tolist(), strict=True)

@@ -12,18 +12,18 @@ PACKAGE = ROOT / "bnx"
 # A module imports from lower floors, and on its own floor from modules to its left. A package counts as one module.
 FLOORS = (
     "bnx errors text palette plain unfinished",
-    "kernels calibrating counts discretising domains dot_text embedding files "
+    "kernels calibrating counts tiles discretising domains dot_text embedding files storing cells "
     "folds layers losses branching multiplicity paired picture structure svg effects ordered loglinear "
     "fibre homogeneity",
-    "tables views columns columnar delimited malformed reading levelling screening level_order",
-    "coarsening coding encoding engines",
+    "tables views blocks columns columnar delimited malformed reading levelling screening duplicates level_order",
+    "coarsening gathering passes coding encoding pair_counting engines",
     "parameters trainings dependence families profiling",
-    "independence classifier intervals refining sampling scoring verdicts explaining pair_details",
+    "independence classifier intervals refining sampling scoring tabulating verdicts explaining pair_details",
     "gating drawing formats showing",
     "learners",
     "recipe learning pair_judging pair_table",
-    "choosing evaluation gains resampling pair_tests",
-    "judging ledger comparison",
+    "choosing evaluation gains rating resampling pair_tests",
+    "dealing judging ledger comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
     "documents charts findings printed report results tested_text tested_picture",
     "cli",

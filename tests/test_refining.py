@@ -10,6 +10,7 @@ from enumerated import distribution, tables_with, tail, x2_of
 from simulated import measured
 
 from bnx.dependence import measure
+from bnx.families import PairRequests
 from bnx.independence import METHODS, Statistics, p_values
 from bnx.independence import Tested as PairTests  # pytest would take it for tests by its name
 from bnx.kernels.attainable import least_p
@@ -217,7 +218,7 @@ def test_threads_and_sources_of_counts_do_not_matter() -> None:
         engine = started(table, jobs=jobs)
         training = whole(engine, table)
         (_, pairs), *_ = measure(engine, [training])
-        visit = visit_families(engine, [training], pairs.requests(0))
+        visit = visit_families(engine, [training], PairRequests(0, pairs.left, pairs.right))
         found.append(reported(visit, Statistics.of(pairs.statistics), "auto", "none", 0.05, 1).tested)
     assert equal(*found)
     assert methods(found[0]).count("monte-carlo") > 3

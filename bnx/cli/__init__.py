@@ -89,7 +89,9 @@ def main() -> None:
     except typer.TyperException as error:
         _refuse(_usage(error), error.exit_code)
     except MemoryError:
-        _refuse("the memory of this machine is not enough for this table; give fewer columns, --structures or --given")
+        _refuse(
+            "the memory of this machine is not enough for this table; give fewer columns, --structures or --given, or --spill DIR"
+        )
     except OSError as error:
         if not error.filename:
             _let_go_of_output()

@@ -25,10 +25,12 @@ from bnx.cli.shared import (
     Overwrite,
     Quiet,
     Seed,
+    SpillFolder,
     Test,
     Timings,
     recipe_of,
     say,
+    store_of,
     threads,
 )
 from bnx.cli.summary import summary
@@ -107,6 +109,7 @@ def run(
     predictions: Annotated[bool, typer.Option("--predictions", help="Also write out-of-fold probabilities.")] = False,
     all_pairs: Annotated[bool, typer.Option("--all-pairs", help="Also write every pair to pairs.parquet.")] = False,
     jobs: Jobs = 0,
+    spill: SpillFolder = None,
     overwrite: Overwrite = False,
     json_out: JsonOut = False,
     quiet: Quiet = False,
@@ -126,7 +129,7 @@ def run(
         source = open_source(data)
         recipe = recipe_of(ctx, source)
         held_out = None if holdout is None else open_source(holdout)
-        comparison = compare(source, recipe, number, clock.tell, held_out)
+        comparison = compare(source, recipe, number, clock.tell, held_out, store_of(spill))
         document, notes = write_results(comparison, folder, number, predictions, all_pairs, clock.tell)
         if ahead:
             clock.tell("compiling ahead")

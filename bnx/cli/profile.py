@@ -14,7 +14,10 @@ from bnx.cli.shared import (
     MaxLevels,
     Missing,
     Numeric,
+    SpillFolder,
     recipe_of,
+    store_of,
+    threads,
 )
 from bnx.profiling import profile
 from bnx.reading import open_source
@@ -33,9 +36,10 @@ def run(
     keep: Keep = None,
     missing: Missing = Recipe.missing,
     max_levels: MaxLevels = Recipe.max_levels,
+    spill: SpillFolder = None,
     json_out: JsonOut = False,
 ) -> None:
     """Say what is in a table: types, levels, blanks, rare levels, duplicates, columns that give the class away."""
     source = open_source(data)
-    found = profile(recipe_of(ctx, source).code(source))
+    found = profile(recipe_of(ctx, source).code(source, threads(0), store_of(spill)))
     typer.echo(json.dumps(found.to_dict(), ensure_ascii=False, allow_nan=False, indent=1) if json_out else str(found))

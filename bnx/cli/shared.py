@@ -16,6 +16,7 @@ from bnx.independence import TESTS
 from bnx.multiplicity import METHODS as ADJUSTMENTS
 from bnx.reading import Source
 from bnx.recipe import Recipe
+from bnx.storing import MEMORY, Spill, Store
 from bnx.text import printable
 
 __all__ = [
@@ -36,6 +37,7 @@ __all__ = [
     "Overwrite",
     "Quiet",
     "Seed",
+    "SpillFolder",
     "StructureFile",
     "Test",
     "Theme",
@@ -46,6 +48,7 @@ __all__ = [
     "opened",
     "recipe_of",
     "say",
+    "store_of",
     "threads",
 ]
 
@@ -88,6 +91,14 @@ Negligible = Annotated[
 Seed = Annotated[int, typer.Option("--seed", metavar="N", help="Seed of folds, halves and random tables.")]
 Jobs = Annotated[
     int, typer.Option("--jobs", metavar="N", help="Threads; 0 for one per processor. Results do not depend on it.")
+]
+SpillFolder = Annotated[
+    str | None,
+    typer.Option(
+        "--spill",
+        metavar="DIR",
+        help="Keep the rows on the disk of DIR, for tables larger than memory. Results do not depend on it.",
+    ),
 ]
 Quiet = Annotated[bool, typer.Option("--quiet", help="No progress and no notes on standard error.")]
 Timings = Annotated[bool, typer.Option("--timings", help="Say on standard error how long each stage took.")]
@@ -190,6 +201,15 @@ def threads(jobs: int) -> int:
         raise SettingError(f"--jobs: {jobs} cannot be used; give a number of threads, or 0 for one per processor")
     usable = len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count()
     return jobs or usable or 1
+
+
+def store_of(spill: str | None) -> Store:
+    """Choose where what has a value per row is kept.
+
+    Raises:
+        DataError: nothing can be kept there.
+    """
+    return MEMORY if spill is None else Spill(spill)
 
 
 def say(sentence: str, quiet: bool = False) -> None:

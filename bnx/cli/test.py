@@ -26,6 +26,7 @@ from bnx.cli.shared import (
     Overwrite,
     Quiet,
     Seed,
+    SpillFolder,
     Test,
     Theme,
     Timings,
@@ -34,6 +35,7 @@ from bnx.cli.shared import (
     listed,
     recipe_of,
     say,
+    store_of,
     threads,
 )
 from bnx.cli.timings import Clock
@@ -102,6 +104,7 @@ def run(
     max_levels: MaxLevels = Recipe.max_levels,
     seed: Seed = Recipe.seed,
     jobs: Jobs = 0,
+    spill: SpillFolder = None,
     overwrite: Overwrite = False,
     json_out: JsonOut = False,
     quiet: Quiet = False,
@@ -121,7 +124,7 @@ def run(
     asked = Asked(tuple(attributes or ()), listed("given", given, names), every, orders, explain, close)
     with told(quiet) as news:
         clock = Clock(news)
-        found = run_pair_tests(source, recipe_of(ctx, source), asked, number, clock.tell)
+        found = run_pair_tests(source, recipe_of(ctx, source), asked, number, clock.tell, store_of(spill))
     clock.tell("writing")
     if json_out:
         typer.echo(json.dumps(finite(found.to_dict(strata)), ensure_ascii=False, allow_nan=False, indent=1))

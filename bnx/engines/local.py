@@ -9,7 +9,9 @@ from typing import TypeVar
 import numpy as np
 
 from bnx.counts import FamilyCounts, PairCounts, PairLayout
-from bnx.kernels import complete_pairs, count_cells, count_pairs
+from bnx.kernels import count_cells
+from bnx.pair_counting import count_layout
+from bnx.storing import MEMORY, Store
 from bnx.tables import CodedTable
 from bnx.views import View
 
@@ -19,21 +21,25 @@ Progress = Callable[[str, int, int], None]  # stage, done, of how many
 Item = TypeVar("Item")
 Result = TypeVar("Result")
 
+CHUNK = 1 << 20  # rows that are sorted at a time
+_NO_RECODE = np.zeros((1, 1), np.int32)
 _RUN = 32  # items that a thread takes at a time, at most
 
 
 @dataclass(frozen=True)
 class LocalEngine:
-    """Rows sorted by (block, class) in memory, and the counting of them.
+    """Rows sorted by (block, class) within chunks of the table, and the counting of them.
 
-    ``codes`` (n, N) as stored; ``target`` (N,); ``order`` (N,): row of the table behind each sorted row;
-    ``starts`` (blocks * C + 1,): first sorted row of each group; ``margins``: per attribute, counts (blocks, C, stored
-    levels) int64.
+    ``codes`` (n, N) as stored and ``target`` (N,), sorted; ``groups`` (N,): number block * C + class of each row in the
+    table's own order; ``chunk``: rows of a chunk; ``starts`` (S + 1,): first sorted row of each segment, where segment
+    s holds the rows of group s % G, G = blocks * C, in chunk s // G. ``margins``: per attribute, counts (blocks, C,
+    stored levels) int64.
     """
 
     codes: np.ndarray
     target: np.ndarray
-    order: np.ndarray
+    groups: np.ndarray
+    chunk: int
     starts: np.ndarray
     blocks: int
     classes: int
@@ -41,15 +47,33 @@ class LocalEngine:
     margins: tuple[np.ndarray, ...]
     jobs: int
     progress: Progress
+    store: Store
 
     @property
     def class_counts(self) -> np.ndarray:
         """Rows of each block and class, int64 (blocks, C)."""
-        return np.diff(self.starts).reshape(self.blocks, self.classes)
+        return np.asarray(np.diff(self.starts).reshape(-1, self.blocks, self.classes).sum(axis=0))
 
-    def rows_of(self, first_block: int, last_block: int) -> slice:
-        """Sorted rows of neighbouring blocks."""
-        return slice(int(self.starts[first_block * self.classes]), int(self.starts[last_block * self.classes]))
+    @property
+    def rows(self) -> int:
+        """Rows of the table."""
+        return len(self.target)
+
+    @property
+    def order(self) -> np.ndarray:
+        """Row of the table behind each sorted row, int64 (N,), worked out anew."""
+        return np.concatenate([self.order_of(part) + part.start for part in _chunks(self.rows, self.chunk)])
+
+    def order_of(self, chunk: slice) -> np.ndarray:
+        """Place in one chunk of the table of each of its sorted rows, int64."""
+        return np.asarray(np.argsort(self.groups[chunk], kind="stable"))
+
+    def rows_of(self, first_block: int, last_block: int) -> list[slice]:
+        """Sorted rows of neighbouring blocks, one run per chunk."""
+        groups = self.blocks * self.classes
+        chunks = range(0, len(self.starts) - 1, groups)
+        first, last = first_block * self.classes, last_block * self.classes
+        return [slice(int(self.starts[one + first]), int(self.starts[one + last])) for one in chunks]
 
     def map(self, function: Callable[[Item], Result], items: Iterable[Item], stage: str = "") -> list[Result]:
         """Apply a function to items on this engine's threads; results keep the items' order.
@@ -74,37 +98,21 @@ class LocalEngine:
         """Store the rows as ``view`` sees them, so that every attribute can be used as stored."""
         if view.plain.all():
             return self
-        codes = self.codes.copy()
-        for i in np.flatnonzero(~view.plain):
-            np.take(view.recode[i].astype(codes.dtype), self.codes[i], out=codes[i])
+        codes = self.store.empty(self.codes.shape, self.codes.dtype)
+
+        def recode(i: int) -> None:
+            lookup = view.recode[i].astype(codes.dtype)
+            for part in _chunks(self.rows, self.chunk):
+                np.take(lookup, self.codes[i, part], out=codes[i, part], mode="clip")
+
+        self.map(recode, range(len(codes)))
         margins = tuple(view.merge(i, margin) for i, margin in enumerate(self.margins))
         return replace(self, codes=codes, sizes=view.sizes, margins=margins)
 
     def pair_counts(self, layout: PairLayout) -> PairCounts:
         """Count pairs of attributes, as stored, by block and class."""
-        starts, whole = self._parts()
-        found = np.zeros((len(starts) - 1, layout.offsets[-1]), np.int32)
-        pairs = (layout.left, layout.right, layout.offsets)
-        self.map(
-            lambda part: count_pairs(self.codes, starts, self.sizes, *pairs, *part, found),
-            _shares(len(starts) - 1, 4 * self.jobs),
-        )
-        out = found if len(whole) == len(starts) - 1 else np.add.reduceat(found, whole, axis=0, dtype=np.int32)
-        flat = [margin.reshape(len(whole), -1) for margin in self.margins]
-        margins = np.ascontiguousarray(np.concatenate(flat, axis=1))
-        margin_starts = np.concatenate([[0], np.cumsum(self.sizes)]).astype(np.int64)
-        self.map(
-            lambda part: complete_pairs(margins, margin_starts, self.sizes, *pairs, *part, out),
-            _shares(len(whole), self.jobs),
-        )
-        return PairCounts(layout, out.reshape(self.blocks, self.classes, -1))
-
-    def _parts(self) -> tuple[np.ndarray, np.ndarray]:
-        """Cut large groups so that all threads have work: the starts of the parts, and each group's first part."""
-        most = max(1, len(self.order) // (8 * self.jobs)) if self.jobs > 1 else max(1, len(self.order))
-        cuts = [np.arange(low, max(high, low + 1), most) for low, high in pairwise(self.starts.tolist())]
-        whole = np.concatenate([[0], np.cumsum([len(cut) for cut in cuts])[:-1]]).astype(np.int64)
-        return np.concatenate([*cuts, self.starts[-1:]]).astype(np.int64), whole
+        margins = np.concatenate(self.margins, axis=2)
+        return count_layout(self.codes, self.sizes, self.starts, margins, layout, self.jobs, self.map)
 
     def family_counts(self, members: Sequence[int], view: View) -> FamilyCounts:
         """Count a family of attributes that ``view`` leaves as stored, by block and class."""
@@ -126,36 +134,61 @@ class LocalEngine:
         return out
 
 
-def _shares(number: int, parts: int) -> list[tuple[int, int]]:
-    """Cut a run of numbers into even shares, as (first, last) each."""
-    bounds = np.linspace(0, number, min(parts, max(number, 1)) + 1).astype(int).tolist()
-    return list(pairwise(bounds))
+def _chunks(rows: int, chunk: int) -> list[slice]:
+    """Cut rows into chunks; a table without rows is one chunk of none."""
+    return [slice(first, min(first + chunk, rows)) for first in range(0, max(rows, 1), chunk)]
 
 
 def start_local(
-    table: CodedTable, blocks_of_rows: np.ndarray, blocks: int, jobs: int, progress: Progress
+    table: CodedTable,
+    blocks_of_rows: np.ndarray,
+    blocks: int,
+    jobs: int,
+    progress: Progress,
+    store: Store = MEMORY,
+    chunk: int = CHUNK,
+    in_place: bool = False,
 ) -> LocalEngine:
-    """Sort a coded table by (block, class, position) and count the levels of every attribute.
+    """Sort each chunk of a coded table by (block, class, position) and count the levels of every attribute.
 
-    blocks_of_rows (N,): the block of each row.
+    blocks_of_rows (N,): the block of each row; chunk: rows of a chunk; in_place: sort the codes where they lie, so that
+    the table must not be used any more.
     """
-    classes = len(table.schema.target)
-    group = blocks_of_rows.astype(np.int64) * classes + table.target
-    order = np.argsort(group, kind="stable")
-    starts = np.searchsorted(group[order], np.arange(blocks * classes + 1)).astype(np.int64)
-    sizes = table.schema.sizes
-    codes = np.empty_like(table.codes)
-    margins: list[np.ndarray] = [np.empty(0)] * len(sizes)
-    group = group[order]
-
-    def sort(i: int) -> None:
-        np.take(table.codes[i], order, out=codes[i])
-        size = int(sizes[i])
-        cells = np.bincount(group * size + codes[i], minlength=blocks * classes * size)
-        margins[i] = cells.reshape(blocks, classes, size)
-
+    classes, sizes, rows = len(table.schema.target), table.schema.sizes, len(table.target)
+    groups = _groups(table, blocks_of_rows, blocks, chunk, store)
+    codes = table.codes if in_place else store.empty(table.codes.shape, table.codes.dtype)
+    counts = [np.zeros((blocks * classes, int(size)), np.int32) for size in sizes]
+    slots, lengths = np.arange(blocks * classes), []
     with ThreadPoolExecutor(jobs) as pool:
-        list(pool.map(sort, range(len(sizes))))
-    return LocalEngine(
-        codes, table.target[order], order, starts, blocks, classes, sizes, tuple(margins), jobs, progress
-    )
+        for part in _chunks(rows, chunk):
+            order = np.argsort(groups[part], kind="stable")
+            lengths.append(np.bincount(groups[part], minlength=len(slots)))
+            starts = part.start + np.concatenate([[0], np.cumsum(lengths[-1])])
+
+            def sort(i: int, part: slice = part, order: np.ndarray = order, starts: np.ndarray = starts) -> None:
+                codes[i, part] = np.take(table.codes[i, part], order, mode="clip")
+                count_cells(codes, _NO_RECODE, True, np.array([i]), sizes[i : i + 1], starts, slots, counts[i])
+                store.let_go(codes[i, part])
+
+            list(pool.map(sort, range(len(sizes))))
+    margins = tuple(one.astype(np.int64).reshape(blocks, classes, -1) for one in counts)
+    starts = np.concatenate([[0], np.cumsum(np.concatenate(lengths))]).astype(np.int64)
+    target = _sorted_target(starts, blocks, classes, store)
+    return LocalEngine(codes, target, groups, chunk, starts, blocks, classes, sizes, margins, jobs, progress, store)
+
+
+def _groups(table: CodedTable, blocks_of_rows: np.ndarray, blocks: int, chunk: int, store: Store) -> np.ndarray:
+    """Number the group of each row, (N,), in the narrowest type."""
+    classes = len(table.schema.target)
+    groups = store.empty((len(table.target),), np.min_scalar_type(blocks * classes))
+    for part in _chunks(len(groups), chunk):
+        groups[part] = blocks_of_rows[part].astype(np.int64) * classes + table.target[part]
+    return groups
+
+
+def _sorted_target(starts: np.ndarray, blocks: int, classes: int, store: Store) -> np.ndarray:
+    """Write the class of every sorted row, uint8 (N,)."""
+    target = store.empty((int(starts[-1]),), np.uint8)
+    for s, (first, last) in enumerate(pairwise(starts.tolist())):
+        target[first:last] = s % (blocks * classes) % classes
+    return target

@@ -27,6 +27,7 @@ __all__ = [
     "X2_MEAN",
     "X2_THIRD",
     "X2_VARIANCE",
+    "add_table",
     "one_table",
     "table_statistics",
 ]
@@ -76,18 +77,25 @@ def table_statistics(counts: np.ndarray, offsets: np.ndarray, heights: np.ndarra
         tallest, widest = max(tallest, heights[p]), max(widest, widths[p])
     down, across = np.empty(tallest, np.int64), np.empty(widest, np.int64)
     for p in range(tables):
-        row = result[p]
-        row[MIN_EXPECTED] = np.inf
-        for s in range(counts.shape[0]):
-            total = margins(counts, s, offsets[p], heights[p], widths[p], down, across)
-            if total > 0:
-                row[ROWS] += total
-                row[STRATA] += 1.0
-                _add_stratum(counts, s, offsets[p], heights[p], widths[p], down, across, total, row)
-        row[NATS] = max(0.0, row[NATS])
-        if row[INFORMATIVE] == 0.0:
-            row[MIN_EXPECTED] = np.nan
+        add_table(counts, offsets[p], heights[p], widths[p], down, across, result[p])
     return result
+
+
+@part
+def add_table(
+    counts: np.ndarray, offset: int, height: int, width: int, down: np.ndarray, across: np.ndarray, row: np.ndarray
+) -> None:
+    """Write the statistics of one table to a row (COLUMNS,) of zeros; down, across: room for its margins."""
+    row[MIN_EXPECTED] = np.inf
+    for s in range(counts.shape[0]):
+        total = margins(counts, s, offset, height, width, down, across)
+        if total > 0:
+            row[ROWS] += total
+            row[STRATA] += 1.0
+            _add_stratum(counts, s, offset, height, width, down, across, total, row)
+    row[NATS] = max(0.0, row[NATS])
+    if row[INFORMATIVE] == 0.0:
+        row[MIN_EXPECTED] = np.nan
 
 
 def one_table(counts: np.ndarray, height: int, width: int) -> np.ndarray:

@@ -14,37 +14,40 @@ from numba import boolean, float64, int32, int64, uint8
 
 from bnx import KERNELS
 from bnx.kernels.chance import expected_nats
-from bnx.kernels.counting import count_cells
 from bnx.kernels.montecarlo import monte_carlo_tail
-from bnx.kernels.ranking import rank_sums, sort_whole
-from bnx.kernels.scoring import add_terms, calibrated_loss, smoothed_tables, tempered_losses
+from bnx.kernels.posterior import calibrated_loss, calibration_sums, posteriors, slope_sums
+from bnx.kernels.ranking import pack_scores, rank_sums, sort_whole
+from bnx.kernels.scoring import add_terms, tempered_losses
+from bnx.kernels.smoothing import drop_parent, ratio_tables, smoothed_tables
+from bnx.kernels.tallying import tally
 
 __all__ = ["DONE", "LATE", "compile_late"]
 
 DONE = Path(os.environ["NUMBA_CACHE_DIR"], f"late-{KERNELS}-{numba.__version__}")
 """A file that says that all is compiled."""
 
-_WHOLE, _REAL, _TRUE = int64[::1], float64[::1], boolean[::1]
-_CODES, _COUNTS, _REALS = uint8[:, ::1], int32[:, ::1], float64[:, ::1]
-_SCORED = (_REAL, float64, float64, _REAL, uint8[::1], _REAL)
+_WHOLE, _REAL, _TRUE, _CLASSES = int64[::1], float64[::1], boolean[::1], uint8[::1]
+_CODES, _COUNTS, _WHOLES, _REALS = uint8[:, ::1], int32[:, ::1], int64[:, ::1], float64[:, ::1]
 
 LATE: tuple[tuple[Callable[..., Any], tuple[Any, ...]], ...] = (
-    (smoothed_tables, (_COUNTS, _WHOLE, _REAL, _TRUE, _REALS)),
-    (tempered_losses, (_REALS, _REAL, uint8[::1], _REAL, _REALS)),
+    (ratio_tables, (_COUNTS, _WHOLE, _WHOLES, _WHOLE, _WHOLE, _REAL, _TRUE, _WHOLE, _REALS)),
     (
         add_terms,
-        (
-            *(_CODES, _COUNTS, _TRUE, int64[:, ::1], int64[:, ::1], _WHOLE, _WHOLE),
-            *(_REALS, _WHOLE, _WHOLE, int64, int64, float64[:, :, ::1]),
-        ),
+        (_CODES, _COUNTS, _TRUE, _WHOLES, _WHOLES, _WHOLE, _WHOLE, _WHOLE, _REALS, int64, int64, _REALS),
     ),
-    (count_cells, (_CODES, _COUNTS, boolean, _WHOLE, _WHOLE, _WHOLE, _WHOLE, _COUNTS)),
-    (calibrated_loss, (_REALS, *_SCORED)),
-    (calibrated_loss, (float64[:, :], *_SCORED)),
+    (tempered_losses, (_REALS, _REAL, _CLASSES, _REAL, _REALS)),
+    (calibration_sums, (_REALS, _REALS, _CLASSES, _REAL, float64, _REAL, _REALS)),
+    (calibrated_loss, (_REALS, _REALS, float64, float64, _REAL, _CLASSES, _REAL)),
+    (drop_parent, (_COUNTS, _WHOLE, _WHOLES, _WHOLE, _WHOLE, _WHOLE, _WHOLE, _COUNTS)),
+    (posteriors, (_REALS, _REALS, float64, float64, _REAL, _REALS)),
+    (tally, (_REALS, int64, int64, _CLASSES, _WHOLES, _REAL)),
+    (slope_sums, (_REALS, int64, int64, _CLASSES, float64, _REAL)),
+    (pack_scores, (_REALS, int64, int64, _CLASSES, int64, _WHOLE)),
     (sort_whole, (_WHOLE,)),
-    (rank_sums, (_WHOLE, _REAL, _REAL, _REAL)),
+    (rank_sums, (_WHOLE, _REAL, _REAL)),
     (expected_nats, (_COUNTS, int64, int64)),
     (monte_carlo_tail, (_COUNTS, int64, int64, _REAL, int64, int64)),
+    (smoothed_tables, (_COUNTS, _WHOLE, _REAL, _TRUE, _REALS)),
 )
 """Loops and the types that a run on up to 256 levels calls them with, in the order to compile them in."""
 

@@ -25,6 +25,10 @@ class Learner(Protocol):
         """Most parents of an attribute, besides the class."""
 
     @property
+    def looks_at_pairs(self) -> bool:
+        """Whether it reads what two attributes share; ``strength`` is zero if no learner at work does."""
+
+    @property
     def tested(self) -> bool:
         """Whether an edge has to pass a test."""
 

@@ -15,6 +15,7 @@ class Naive:
 
     name: str = "naive"
     depths: int = 0
+    looks_at_pairs: bool = False
     tested: bool = False
 
     def learn(self, dependence: Dependence, gate: Gate, bounds: Bounds) -> Learning:
