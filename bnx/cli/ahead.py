@@ -1,16 +1,20 @@
 """A first run compiles its loops: half of them in a process of its own, so that two processors share the work."""
 
+import os
 import subprocess
 import sys
 from collections.abc import Iterator
 from contextlib import contextmanager
+from pathlib import Path
 
-from bnx.kernels.warming import DONE
+from bnx import __kernels__
 from bnx.unfinished import unfinished
 
-__all__ = ["COMMAND", "compiling_ahead"]
+__all__ = ["COMMAND", "DONE", "compiling_ahead"]
 
-COMMAND = (sys.executable, "-P", "-m", "bnx.kernels.warming")
+DONE = Path(os.environ["NUMBA_CACHE_DIR"], f"late-{__kernels__}")
+"""A file that says that all is compiled."""
+COMMAND = (sys.executable, "-P", "-m", "bnx.kernels.warming", str(DONE))
 
 
 @contextmanager

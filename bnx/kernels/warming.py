@@ -1,18 +1,16 @@
 """Loops that a first run needs late, compiled ahead by a process of its own while the run begins.
 
 A compiler of loops works on one at a time in a process. What another process has compiled is found on disk.
-``python -m bnx.kernels.warming`` compiles; it ends at once where everything is on disk already.
+``python -m bnx.kernels.warming DONE`` compiles what is not on disk yet, and then makes the file DONE.
 """
 
-import os
+import sys
 from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
-import numba
 from numba import boolean, float64, int32, int64, uint8
 
-from bnx import KERNELS
 from bnx.kernels.chance import expected_nats
 from bnx.kernels.montecarlo import monte_carlo_tail
 from bnx.kernels.posterior import calibrated_loss, calibration_sums, posteriors, slope_sums
@@ -21,10 +19,7 @@ from bnx.kernels.scoring import add_terms, tempered_losses
 from bnx.kernels.smoothing import drop_parent, ratio_tables, smoothed_tables
 from bnx.kernels.tallying import tally
 
-__all__ = ["DONE", "LATE", "compile_late"]
-
-DONE = Path(os.environ["NUMBA_CACHE_DIR"], f"late-{KERNELS}-{numba.__version__}")
-"""A file that says that all is compiled."""
+__all__ = ["LATE", "compile_late"]
 
 _WHOLE, _REAL, _TRUE, _CLASSES = int64[::1], float64[::1], boolean[::1], uint8[::1]
 _CODES, _COUNTS, _WHOLES, _REALS = uint8[:, ::1], int32[:, ::1], int64[:, ::1], float64[:, ::1]
@@ -52,12 +47,12 @@ LATE: tuple[tuple[Callable[..., Any], tuple[Any, ...]], ...] = (
 """Loops and the types that a run on up to 256 levels calls them with, in the order to compile them in."""
 
 
-def compile_late() -> None:
-    """Compile everything that is not on disk, and note that it is."""
+def compile_late(done: Path) -> None:
+    """Compile everything that is not on disk, and note in the file ``done`` that it is."""
     for loop, types in LATE:
         loop.compile(types)  # type: ignore[attr-defined]  # a compiled loop, not a plain function
-    DONE.touch()
+    done.touch()
 
 
 if __name__ == "__main__":
-    compile_late()
+    compile_late(Path(sys.argv[1]))
