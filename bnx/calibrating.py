@@ -1,21 +1,32 @@
 """Calibration of the posterior: one temperature for the evidence, an offset per class, and a floor."""
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 
 from bnx.errors import DataError
+from bnx.kernels import calibration_sums, posteriors, slope_sums
 
-__all__ = ["Calibration", "apply", "fit", "identity", "slope"]
+__all__ = [
+    "FEWEST_ERRORS",
+    "Calibration",
+    "apply",
+    "fit",
+    "fit_against_first",
+    "identity",
+    "probabilities",
+    "slope",
+    "steepness",
+]
 
 _TEMPERATURE_PENALTY = 4.0
 _OFFSET_PENALTY = 2.0
 _FLOORS = (0.5, 1.0, 3.0)
-_BLOCK = 8192
 _STEPS = 200
 _LONGEST_STEP = 2.0
 _STEEPEST_SLOPE = 100.0
-_FEWEST_ERRORS = 10
+FEWEST_ERRORS = 10
 
 
 @dataclass(frozen=True)
@@ -34,13 +45,13 @@ class Calibration:
 
 @dataclass(frozen=True)
 class _Rows:
-    """Rows to fit on: ``prior`` and ``evidence`` (C, N) in nats, ``truth`` (N,), a class that the prior allows.
+    """Rows to fit on: ``evidence`` (N, at least C - 1) for each class against the first, ``prior`` (N, C), both nats.
 
-    ``weights`` (N,): how many rows each stands for; ``mass``: their sum.
+    ``truth`` (N,): a class that the prior allows; ``weights`` (N,): how many rows each stands for; ``mass``: their sum.
     """
 
-    prior: np.ndarray
     evidence: np.ndarray
+    prior: np.ndarray
     truth: np.ndarray
     weights: np.ndarray
     mass: float
@@ -50,10 +61,11 @@ class _Rows:
 class _Curve:
     """The penalised loss at one point, in nats per row.
 
-    ``gradient`` (C + 1,) and ``hessian`` by (ln t, offsets); ``fisher`` is the part of the Hessian that is always
+    ``value`` itself; ``gradient`` (C + 1,) and ``hessian`` by (ln t, offsets); ``fisher`` is the part of the Hessian that is always
     positive definite, with no pivot below ``least``.
     """
 
+    value: float
     gradient: np.ndarray
     hessian: np.ndarray
     fisher: np.ndarray
@@ -85,17 +97,33 @@ def fit(
 
     Source: Guo, Pleiss, Sun & Weinberger 2017, section 4 (temperature).
     """
+    prior = np.broadcast_to(log_prior, evidence.shape)
+    mass = np.ones(len(truth)) if weights is None else weights
+    return fit_against_first(_against_first(evidence, prior), prior, truth, shares, mass)
+
+
+def fit_against_first(
+    evidence: np.ndarray, log_prior: np.ndarray, truth: np.ndarray, shares: np.ndarray, weights: np.ndarray
+) -> Calibration:
+    """Fit as ``fit`` does, to evidence (N, at least C - 1) for each class against the first.
+
+    log_prior (N, C).
+
+    Raises:
+        DataError: there are no rows.
+    """
     if len(truth) == 0:
         raise DataError("there are 0 rows to calibrate on; at least 1 is needed")
-    prior = np.broadcast_to(log_prior, evidence.shape)
+    prior = np.ascontiguousarray(log_prior)
     known = np.isfinite(prior[np.arange(len(truth)), truth])
-    mass = np.ones(len(truth)) if weights is None else weights
-    rows = _Rows(*_columns(evidence[known], prior[known]), truth[known], mass[known], float(mass[known].sum()))
-    point = _minimum(rows) if len(rows.truth) else np.zeros(evidence.shape[1] + 1)
+    rows = _Rows(evidence, prior, truth, weights, float(weights.sum()))
+    if not known.all():
+        rows = _Rows(evidence[known], prior[known], truth[known], weights[known], float(weights[known].sum()))
+    point = _minimum(rows) if len(rows.truth) else np.zeros(prior.shape[1] + 1)
     bare = Calibration(float(np.exp(point[0])), point[1:], 0.0, shares)
-    own = apply(bare, log_prior, evidence)[np.arange(len(truth)), truth]
-    floors = [min(rows_share / float(mass.sum()), 1.0) for rows_share in _FLOORS]
-    losses = [_floored_loss(own, shares[truth], floor, mass) for floor in floors]
+    own = probabilities(bare, prior, evidence)[np.arange(len(truth)), truth]
+    floors = [min(rows_share / float(weights.sum()), 1.0) for rows_share in _FLOORS]
+    losses = [_floored_loss(own, shares[truth], floor, weights) for floor in floors]
     return Calibration(bare.temperature, bare.offsets, floors[int(np.argmin(losses))], shares)
 
 
@@ -104,13 +132,18 @@ def apply(calibration: Calibration, log_prior: np.ndarray, evidence: np.ndarray)
 
     ``log_prior`` (N, C) or (C,) and ``evidence`` (N, C) in nats. A class with prior -inf gets the floor's share only.
     """
-    prior, terms = _columns(evidence, np.broadcast_to(log_prior, evidence.shape))
-    p = np.empty(evidence.shape)
-    for start in range(0, evidence.shape[0], _BLOCK):
-        part = slice(start, start + _BLOCK)
-        power = prior[:, part] + calibration.temperature * terms[:, part] + calibration.offsets[:, None]
-        p[part] = _softmax(power).T
-    return p if calibration.floor == 0 else (1 - calibration.floor) * p + calibration.floor * calibration.shares
+    return probabilities(calibration, log_prior, _against_first(evidence, log_prior))
+
+
+def probabilities(calibration: Calibration, log_prior: np.ndarray, evidence: np.ndarray) -> np.ndarray:
+    """Give calibrated probabilities (N, C) as ``apply`` does, from evidence for each class against the first.
+
+    evidence (N, at least C - 1), C-contiguous.
+    """
+    bias = np.ascontiguousarray(np.atleast_2d(log_prior) + calibration.offsets)
+    out = np.empty((len(evidence), bias.shape[1]))
+    posteriors(evidence, bias, calibration.temperature, calibration.floor, calibration.shares, out)
+    return out
 
 
 def slope(p: np.ndarray, truth: np.ndarray) -> float | None:
@@ -121,34 +154,39 @@ def slope(p: np.ndarray, truth: np.ndarray) -> float | None:
 
     Source: Cox 1958 (slope of the log odds), without the intercept.
     """
-    if int((np.argmax(p, axis=1) != truth).sum()) < _FEWEST_ERRORS:
+    if int((np.argmax(p, axis=1) != truth).sum()) < FEWEST_ERRORS:
         return None
-    logs = np.log(np.maximum(np.ascontiguousarray(p.T), np.finfo(np.float64).tiny))
-    low, high, t = 0.0, _STEEPEST_SLOPE, 1.0
+
+    def derivatives(t: float) -> np.ndarray:
+        sums = np.zeros(2)
+        slope_sums(p, 0, len(truth), truth, t, sums)
+        return sums
+
+    return steepness(derivatives)
+
+
+def steepness(derivatives: Callable[[float], np.ndarray], start: float = 1.0) -> float:
+    """Find the power of least log loss from the first and second derivative (2,) of the loss by it.
+
+    Newton's steps within a shrinking interval. A step of one ten-thousandth squares the error.
+    """
+    low, high, t = 0.0, _STEEPEST_SLOPE, start
     for _ in range(_STEPS):
-        first, second = _slope_derivatives(logs, truth, t)
+        first, second = derivatives(t).tolist()
         low, high = (low, t) if first > 0 else (t, high)
         newton = t - first / second if second > 0 else np.inf
         following = newton if low < newton < high else (low + high) / 2
-        if abs(following - t) <= 1e-9 * max(t, 1e-3):
-            break
+        apart = abs(following - t) / max(t, 1e-3)
         t = following
-    return float(following)
+        if apart <= (1e-4 if following == newton else 1e-9):
+            break
+    return float(t)
 
 
-def _columns(evidence: np.ndarray, prior: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-    """Lay out prior and evidence class by class, (C, N) each; evidence for a class that cannot be is 0."""
-    columns = np.array(prior.T, order="C")
-    terms = np.array(evidence.T, order="C")
-    terms[np.isneginf(columns)] = 0.0
-    return columns, terms
-
-
-def _softmax(power: np.ndarray) -> np.ndarray:
-    """Turn log weights (C, n) into probabilities that sum to 1 over the classes."""
-    weight: np.ndarray = np.exp(power - power.max(axis=0))
-    weight /= weight.sum(axis=0)
-    return weight
+def _against_first(evidence: np.ndarray, log_prior: np.ndarray) -> np.ndarray:
+    """Subtract the evidence (N, C) for the first class; evidence for a class that cannot be is 0."""
+    terms = np.where(np.isneginf(log_prior), 0.0, evidence)
+    return np.ascontiguousarray(terms[:, 1:] - terms[:, :1])
 
 
 def _floored_loss(own: np.ndarray, share: np.ndarray, floor: float, weights: np.ndarray) -> float:
@@ -159,14 +197,14 @@ def _floored_loss(own: np.ndarray, share: np.ndarray, floor: float, weights: np.
 
 def _minimum(rows: _Rows) -> np.ndarray:
     """Find (ln t, offsets) of least penalised loss by damped Newton steps from t = 1, no offsets."""
-    point = np.zeros(len(rows.prior) + 1)
-    value = _value(rows, point)
+    point = np.zeros(rows.prior.shape[1] + 1)
+    curve = _curve(rows, point)
     for _ in range(_STEPS):
-        step, drop = _newton_step(_curve(rows, point))
-        if drop <= 1e-11 * (1.0 + value):
+        step, drop = _newton_step(curve)
+        if drop <= 1e-11 * (1.0 + curve.value):
             point = np.add(point, step)
             break
-        point, value, moved = _damped(rows, point, value, step, drop)
+        point, curve, moved = _damped(rows, point, curve, step, drop)
         if not moved:
             break
     return point
@@ -200,17 +238,19 @@ def _solved(matrix: np.ndarray, right: np.ndarray, least: float) -> tuple[np.nda
 
 
 def _damped(
-    rows: _Rows, point: np.ndarray, value: float, step: np.ndarray, drop: float
-) -> tuple[np.ndarray, float, bool]:
+    rows: _Rows, point: np.ndarray, curve: _Curve, step: np.ndarray, drop: float
+) -> tuple[np.ndarray, _Curve, bool]:
     """Halve the step until the loss falls by a fair part of what it promises; False if none does."""
     share = 1.0
+    value = curve.value
     for _ in range(60):
         reached = point + share * step
-        loss = _value(rows, reached)
-        if loss <= value - 1e-4 * share * drop or (share == 1.0 and drop < 1e-11 and loss <= value * (1 + 1e-13)):
-            return reached, loss, True
+        there = _curve(rows, reached)
+        fair = there.value <= value - 1e-4 * share * drop
+        if fair or (share == 1.0 and drop < 1e-11 and there.value <= value * (1 + 1e-13)):
+            return reached, there, True
         share /= 2
-    return point, value, False
+    return point, curve, False
 
 
 def _penalty(rows: _Rows, point: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
@@ -220,53 +260,16 @@ def _penalty(rows: _Rows, point: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
     return weights, weights * point
 
 
-def _value(rows: _Rows, point: np.ndarray) -> float:
-    """Take the penalised loss at (ln t, offsets), nats per row."""
-    total = 0.0
-    for start in range(0, len(rows.truth), _BLOCK):
-        part = slice(start, start + _BLOCK)
-        truth = rows.truth[part]
-        power = rows.prior[:, part] + np.exp(point[0]) * rows.evidence[:, part] + point[1:, None]
-        power -= power.max(axis=0)
-        own = power[truth, np.arange(len(truth))]
-        total += float((rows.weights[part] * (np.log(np.exp(power).sum(axis=0)) - own)).sum())
-    return total / rows.mass + float((_penalty(rows, point)[1] * point).sum())
-
-
 def _curve(rows: _Rows, point: np.ndarray) -> _Curve:
-    """Take gradient and Hessian of the penalised loss at (ln t, offsets), nats per row."""
-    size = len(point)
-    gradient, fisher = np.zeros(size), np.zeros((size, size))
-    t = np.exp(point[0])
-    for start in range(0, len(rows.truth), _BLOCK):
-        part = slice(start, start + _BLOCK)
-        slopes = t * rows.evidence[:, part]
-        p = _softmax(rows.prior[:, part] + slopes + point[1:, None])
-        by_slope = p * slopes
-        centre = by_slope.sum(axis=0)
-        truth, weights = rows.truth[part], rows.weights[part]
-        weighed = weights * p
-        gradient[0] += (weights * (centre - slopes[truth, np.arange(len(truth))])).sum()
-        gradient[1:] += weighed.sum(axis=1) - np.bincount(truth, weights, size - 1)
-        fisher[0, 0] += (weights * by_slope * (slopes - centre)).sum()
-        fisher[0, 1:] += (weights * by_slope - weighed * centre).sum(axis=1)
-        fisher[1:, 1:] += np.diag(weighed.sum(axis=1)) - np.einsum("in,jn->ij", weighed, p)
-    fisher[1:, 0] = fisher[0, 1:]
+    """Take the penalised loss at (ln t, offsets) with gradient and Hessian, nats per row."""
+    sums = np.zeros((len(point) + 1, len(point)))
+    loss = calibration_sums(
+        rows.evidence, rows.prior, rows.truth, rows.weights, float(np.exp(point[0])), point[1:], sums
+    )
+    sums /= rows.mass
     penalty, pull = _penalty(rows, point)
-    fisher = fisher / rows.mass + 2 * np.diag(penalty)
+    fisher = sums[1:] + 2 * np.diag(penalty)
     hessian = fisher.copy()
-    hessian[0, 0] += gradient[0] / rows.mass
-    return _Curve(gradient / rows.mass + 2 * pull, hessian, fisher, 2 * float(penalty.min()))
-
-
-def _slope_derivatives(logs: np.ndarray, truth: np.ndarray, t: float) -> tuple[float, float]:
-    """Take first and second derivative by ``t`` of the log loss of probabilities with logs (C, N), nats in all."""
-    first = second = 0.0
-    for start in range(0, len(truth), _BLOCK):
-        part = logs[:, start : start + _BLOCK]
-        own = truth[start : start + _BLOCK]
-        p = _softmax(t * part)
-        centre = (p * part).sum(axis=0)
-        first += float((centre - part[own, np.arange(len(own))]).sum())
-        second += float((p * np.square(part - centre)).sum())
-    return first, second
+    hessian[0, 0] += sums[0, 0]
+    value = loss / rows.mass + float((pull * point).sum())
+    return _Curve(value, sums[0] + 2 * pull, hessian, fisher, 2 * float(penalty.min()))

@@ -5,21 +5,21 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from bnx.calibrating import Calibration, fit, identity
+from bnx.calibrating import Calibration, fit_against_first, identity
 from bnx.engines import LocalEngine
-from bnx.families import for_each_family
 from bnx.kernels import calibrated_loss, tempered_losses
 from bnx.learning import Learned
 from bnx.parameters import Smoothing
 from bnx.sampling import Sample
-from bnx.scoring import Members, Terms, evidence, families, terms_of
+from bnx.scoring import Counted, Terms, families_of, terms_of
+from bnx.tabulating import tabulate
 
 __all__ = ["Choice", "Trial", "choose", "inner_losses", "make_trial", "mean_loss"]
 
 Held = tuple[int, ...]
 
 _TEMPERATURES = 3  # 1, 3/4 and 1/2
-_ROWS = 512  # rows judged at a time, so that their evidence stays in the cache
+_ROWS = 4096  # rows judged at a time
 
 
 @dataclass(frozen=True)
@@ -28,7 +28,7 @@ class Trial:
 
     bins: str
     learned: Mapping[Held, Learned]
-    counts: Mapping[Held, Mapping[Members, np.ndarray]]
+    counts: Mapping[Held, Counted]
 
 
 @dataclass(frozen=True)
@@ -45,20 +45,27 @@ class Choice:
     losses: np.ndarray
 
 
+@dataclass(frozen=True)
+class _Inner:
+    """The rows of the inner folds, one after the other.
+
+    ``prior`` (rows, C) nats: that of the training set each fold is judged by; ``starts`` (folds + 1,); ``shares`` (C,)
+    of the classes.
+    """
+
+    truth: np.ndarray
+    weights: np.ndarray
+    prior: np.ndarray
+    starts: np.ndarray
+    shares: np.ndarray
+
+
 def make_trial(engine: LocalEngine, bins: str, learned: Sequence[Learned]) -> Trial:
     """Count every family that was learnt in any training set."""
-    trainings = [one.training for one in learned]
-    requests = [
-        (number, members)
-        for number, one in enumerate(learned)
-        for structure in one.structures
-        for members in families(structure)
-    ]
-    found = for_each_family(engine, trainings, requests, lambda counts, sizes: counts, "counting families")
-    counts: dict[Held, dict[Members, np.ndarray]] = {training.held: {} for training in trainings}
-    for (number, members), table in found.items():
-        counts[trainings[number].held][members] = table
-    return Trial(bins, {one.training.held: one for one in learned}, counts)
+    families = engine.map(lambda one: families_of(one.structures, one.training.view), learned)
+    counted = tabulate(engine, [one.training for one in learned], families)
+    held = [one.training.held for one in learned]
+    return Trial(bins, dict(zip(held, learned, strict=True)), dict(zip(held, counted, strict=True)))
 
 
 def inner_sets(held: Held, folds: int) -> list[tuple[Held, int]]:
@@ -77,29 +84,28 @@ def inner_losses(
     temperatures = _TEMPERATURES if tempered else 1
 
     def judge(held: Held) -> list[tuple[tuple[Held, int], np.ndarray]]:
-        learned = trial.learned[held]
-        every = [options] * len(learned.structures)
-        terms = terms_of(learned.training.view, learned.structures, every, trial.counts[held])
-        prior = learned.training.log_prior
-        return [((held, fold), _losses(terms, prior, sample, fold, len(options), temperatures)) for fold in held]
+        counted = trial.counts[held]
+        holder = counted.families.holder
+        terms = terms_of(counted, np.arange(len(counted.families.depths)), options)
+        prior = trial.learned[held].training.log_prior
+        sums = np.zeros((len(held), len(holder), len(options), temperatures))
+        for s in sorted(set(holder)):
+            own = terms.of(s)
+            for place, fold in enumerate(held):
+                _add_losses(own, prior, sample, fold, sums[place, s])
+        return [((held, fold), sums[place, list(holder)]) for place, fold in enumerate(held)]
 
     sets = [held for held in trial.learned if held]
     return {key: sums for results in engine.map(judge, sets, "trying smoothings") for key, sums in results}
 
 
-def _losses(
-    terms: Terms, log_prior: np.ndarray, sample: Sample, fold: int, options: int, temperatures: int
-) -> np.ndarray:
-    """Sum the losses of one fold's rows, (structures, V, temperatures), a few rows at a time."""
+def _add_losses(terms: Terms, log_prior: np.ndarray, sample: Sample, fold: int, out: np.ndarray) -> None:
+    """Add the losses of one fold's rows to out (V, temperatures), a few rows at a time."""
     rows = sample.rows(fold)
-    sums = np.zeros((max(terms.holder) + 1, options, temperatures))
     for first in range(rows.start, rows.stop, _ROWS):
         part = slice(first, min(first + _ROWS, rows.stop))
-        found = terms.empty(part.stop - part.start)
-        terms.add(sample.codes, part.start, part.stop, found)
-        for one, total in zip(found, sums, strict=True):
-            tempered_losses(one, log_prior, sample.target[part], sample.weights[part], total)
-    return np.asarray(sums[list(terms.holder)])
+        evidence = terms.evidence(sample.codes, part.start, part.stop)
+        tempered_losses(evidence, log_prior, sample.target[part], sample.weights[part], out)
 
 
 def choose(
@@ -134,44 +140,54 @@ def _calibrated(
     trial: Trial, chosen: tuple[Smoothing, ...], inner: Sequence[tuple[Held, int]], sample: Sample, calibrate: bool
 ) -> Choice:
     """Fit the calibration of each structure on out-of-fold evidence, and judge it fold by fold."""
-    scores = []
-    options = [(smoothing,) for smoothing in chosen]
-    for held, fold in inner:
-        learned = trial.learned[held]
-        view, structures = learned.training.view, learned.structures
-        scores.append(evidence(sample.codes, sample.rows(fold), view, structures, options, trial.counts[held]))
-    priors = [trial.learned[held].training.log_prior for held, _ in inner]
-    truths = [sample.target[sample.rows(fold)] for _, fold in inner]
-    weights = [sample.weights[sample.rows(fold)] for _, fold in inner]
-    rows = np.bincount(np.concatenate(truths), np.concatenate(weights), len(priors[0]))
-    shares = (rows + 1 / len(rows)) / (rows.sum() + 1)  # a class without a row here may still turn up elsewhere
-    prior_rows = np.concatenate([np.tile(prior, (len(truth), 1)) for prior, truth in zip(priors, truths, strict=True)])
+    rows = _inner_rows(trial, inner, sample)
     calibrations: list[Calibration] = []
     losses = np.zeros((len(chosen), len(inner)))
-    done: dict[tuple[int, ...], int] = {}
-    for s in range(len(chosen)):
-        same = done.setdefault(tuple(id(one[s]) for one in scores), s)
+    done: dict[tuple[object, ...], int] = {}
+    for s, smoothing in enumerate(chosen):
+        same = done.setdefault((smoothing, *(trial.counts[held].families.holder[s] for held, _ in inner)), s)
         if same < s:
             calibrations.append(calibrations[same])
             losses[s] = losses[same]
             continue
-        own = np.concatenate([one[s] for one in scores])
-        calibration = identity(len(shares))
+        own = np.concatenate([_evidence(trial, held, s, smoothing, sample, fold) for held, fold in inner])
+        calibration = identity(len(rows.shares))
         if calibrate:
-            calibration = fit(own, prior_rows, np.concatenate(truths), shares, np.concatenate(weights))
+            calibration = fit_against_first(own, rows.prior, rows.truth, rows.shares, rows.weights)
         calibrations.append(calibration)
-        for k, (one, prior, truth, weight) in enumerate(zip(scores, priors, truths, weights, strict=True)):
-            losses[s, k] = mean_loss(one[s], prior, calibration, truth, weight)
+        for k, (held, _) in enumerate(inner):
+            part = slice(rows.starts[k], rows.starts[k + 1])
+            prior = trial.learned[held].training.log_prior
+            losses[s, k] = mean_loss(own[part], prior, calibration, rows.truth[part], rows.weights[part])
     return Choice(trial, chosen, tuple(calibrations), losses)
 
 
+def _inner_rows(trial: Trial, inner: Sequence[tuple[Held, int]], sample: Sample) -> _Inner:
+    """Lay the rows of the inner folds one after the other."""
+    parts = [sample.rows(fold) for _, fold in inner]
+    priors = [trial.learned[held].training.log_prior for held, _ in inner]
+    truth = np.concatenate([sample.target[part] for part in parts])
+    weights = np.concatenate([sample.weights[part] for part in parts])
+    sizes = [part.stop - part.start for part in parts]
+    rows = np.bincount(truth, weights, len(priors[0]))
+    shares = (rows + 1 / len(rows)) / (rows.sum() + 1)  # a class without a row here may still turn up elsewhere
+    starts = np.concatenate([[0], np.cumsum(sizes)])
+    return _Inner(truth, weights, np.repeat(np.array(priors), sizes, axis=0), starts, shares)
+
+
+def _evidence(trial: Trial, held: Held, s: int, smoothing: Smoothing, sample: Sample, fold: int) -> np.ndarray:
+    """Sum up the evidence of one fold's rows under a structure learnt without them."""
+    counted, rows = trial.counts[held], sample.rows(fold)
+    return terms_of(counted, counted.families.of[s], [smoothing]).evidence(sample.codes, rows.start, rows.stop)
+
+
 def mean_loss(
-    own: np.ndarray, log_prior: np.ndarray, calibration: Calibration, truth: np.ndarray, weights: np.ndarray
+    evidence: np.ndarray, log_prior: np.ndarray, calibration: Calibration, truth: np.ndarray, weights: np.ndarray
 ) -> float:
-    """Take the weighted mean log loss in bits of evidence (rows, C) under a calibration."""
+    """Take the weighted mean log loss in bits under a calibration, of evidence for each class against the first."""
     total = calibrated_loss(
-        own,
-        log_prior + calibration.offsets,
+        evidence,
+        np.atleast_2d(log_prior + calibration.offsets),
         calibration.temperature,
         calibration.floor,
         calibration.shares,

@@ -22,17 +22,17 @@ from bnx.folds import sub_blocks
 from bnx.gains import edge_gains
 from bnx.gating import Bounds
 from bnx.independence import Statistics
-from bnx.judging import Against, Recommendation, StructureScore, against, recommend, score
+from bnx.judging import Against, Recommendation, against, inner_picks, recommend
 from bnx.learners import Learner, learner
 from bnx.learning import make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
 from bnx.pair_judging import JudgedPairs, judge_pairs
+from bnx.rating import StructureScore, score
 from bnx.reading import Source
 from bnx.recipe import Recipe
 from bnx.refining import visit_families
 from bnx.resampling import stability
-from bnx.scoring import families
 from bnx.storing import MEMORY, Store
 from bnx.structure import Structure
 from bnx.tables import LeftOut, Lines
@@ -107,7 +107,8 @@ def compare(
     learned = first.learned(())
     progress("stability", 0, 0)
     stable = stability(_under("stability", first.engine), learned.training.view, folds, learners, bounds, recipe)
-    results = score(evaluations, first.engine)
+    picks = inner_picks(evaluations)
+    results, honest = score(evaluations, picks)
     baseline = recipe.structures.index(recipe.baseline)
     progress("judging pairs", 0, 0)
     dependence, pairs = measure(first.engine, [learned.training], marginal_of_first=True)[0]
@@ -115,7 +116,7 @@ def compare(
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     progress("scoring", 0, 0)
     held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
-    recommendation = recommend(evaluations, results, recipe.structures, folds)
+    recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
     progress("edge ledger", 0, 0)
     ledgers = edge_ledger(
         replace(first, engine=_under("edge ledger", first.engine)),
@@ -144,7 +145,7 @@ def compare(
         recommendation=recommendation,
         held_out=held_out,
         left_out=coded.left_out,
-        warnings=(*coded.warnings, *_run_warnings(evaluations, coded, recipe, learners), *judged.notes, *not_scored),
+        warnings=(*_run_warnings(evaluations, coded, recipe, learners), *judged.notes, *not_scored, *coded.warnings),
         evaluations=tuple(evaluations),
         lines=coded.table.lines,
     )
@@ -198,9 +199,8 @@ def _classifier(evaluation: Evaluation, s: int, coded: Coded) -> Classifier:
     choice: Choice = evaluation.choices[()]
     learned = choice.trial.learned[()]
     structure, view = learned.structures[s], learned.training.view
-    counts = tuple(
-        choice.trial.counts[()][members].reshape(-1, *view.sizes_of(members)) for members in families(structure)
-    )
+    counted = choice.trial.counts[()]
+    counts = tuple(counted.table(s, child) for child in range(len(structure.parents)))
     return Classifier(
         view.domains,
         coded.table.schema.target,
@@ -252,7 +252,7 @@ def _run_warnings(
         notes.append(
             f"rows of one {recipe.group} may be alike, but the tests assume independent records: every p is descriptive"
         )
-    sizes = [sum(run.stop - run.start for run in runs) for runs in evaluations[0].fold_rows]
+    sizes = evaluations[0].rows_by_fold
     if max(sizes) > 1.2 * min(sizes):
         notes.append(
             f"folds hold {min(sizes):,} to {max(sizes):,} rows; differences to {recipe.baseline} are means over folds "

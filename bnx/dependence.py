@@ -7,7 +7,7 @@ import numpy as np
 
 from bnx.engines import LocalEngine
 from bnx.kernels.contingency import COLUMNS, NATS, ROWS, one_table, table_statistics
-from bnx.kernels.reducing import Sets, reduce_table, reduce_tile
+from bnx.kernels.reducing import Sets, blocks_of_masks, reduce_table, reduce_tile
 from bnx.pair_counting import count_pair, count_tile, rows_of_groups, shares
 from bnx.tiles import tiles_of
 from bnx.trainings import Training
@@ -144,15 +144,12 @@ def by_block_pays(engine: LocalEngine, cells: int) -> bool:
 def _sets(engine: LocalEngine, trainings: Sequence[Training], fine: Refinement) -> Sets:
     """Write training sets down as kernels read them."""
     masks = np.array([training.mask for training in trainings])
-    missing = 2 * masks.sum(axis=1) > engine.blocks
-    blocks = np.argsort(masks == missing[:, None], axis=1, kind="stable")
-    numbers = (masks != missing[:, None]).sum(axis=1)
     margins = np.zeros((len(trainings), engine.classes, int(fine.starts[-1])), np.int32)
     for i, margin in enumerate(engine.margins):
         merged = np.zeros((engine.blocks, engine.classes, fine.sizes[i]), np.int64)
         np.add.at(merged, (slice(None), slice(None), fine.recode[i, : margin.shape[2]]), margin)
         margins[:, :, fine.starts[i] : fine.starts[i + 1]] = np.tensordot(masks.astype(np.int64), merged, 1)
-    return Sets(blocks, numbers, missing, fine.starts, margins, fine.levels, fine.view_sizes, fine.plain)
+    return Sets(blocks_of_masks(masks), fine.starts, margins, fine.levels, fine.view_sizes, fine.plain)
 
 
 def _anew(

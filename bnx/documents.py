@@ -1,7 +1,8 @@
 """The machine-readable results: comparison, structures, pairs, predictions, as plain values ready to be written."""
 
 import platform
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
+from itertools import pairwise
 from typing import Any
 
 import numba
@@ -13,10 +14,11 @@ from bnx import __version__
 from bnx.comparison import Comparison
 from bnx.formats.dot import dot_source
 from bnx.formats.structure_json import classifier_document
-from bnx.judging import Against, StructureScore
+from bnx.judging import Against
 from bnx.ledger import EdgeEvidence
 from bnx.picture import Arrow, Chip, Picture
 from bnx.plain import finite
+from bnx.rating import StructureScore
 from bnx.structure import words
 from bnx.verdicts import OUTCOMES, VERDICTS, TestResult
 
@@ -27,6 +29,7 @@ __all__ = [
     "dot_of",
     "pair_results",
     "picture_of",
+    "predictions",
     "predictions_table",
     "structure_document",
 ]
@@ -169,22 +172,39 @@ def against_entry(against: Against | None) -> dict[str, Any]:
 
 def pair_results(comparison: Comparison, everything: bool = False) -> list[TestResult]:
     """List tested pairs, most bits first: all up to 20,000, else the drawn, the rejected and the strongest."""
-    order = np.argsort(-comparison.judged.statistics.bits, kind="stable")
-    if len(order) > PAIRS_SHOWN and not everything:
-        order = order[_first(comparison, order)]
+    bits = comparison.judged.statistics.bits
+    chosen = np.arange(len(bits)) if everything or len(bits) <= PAIRS_SHOWN else _first(comparison)
+    order = chosen[np.argsort(-bits[chosen], kind="stable")]
     names = comparison.names
     left, right = comparison.pairs.left[order].tolist(), comparison.pairs.right[order].tolist()
     ends = [(names[i], names[j]) for i, j in zip(left, right, strict=True)]
     return comparison.judged.results(ends, order)
 
 
-def _first(comparison: Comparison, order: np.ndarray) -> np.ndarray:
-    """Choose places in ``order``: drawn pairs, then rejected ones, then the strongest, 20,000 in all."""
-    drawn = {frozenset((edge.parent, edge.child)) for edges in comparison.edges for edge in edges}
-    left, right = comparison.pairs.left[order].tolist(), comparison.pairs.right[order].tolist()
-    is_drawn = np.array([frozenset(ends) in drawn for ends in zip(left, right, strict=True)])
-    rank = np.where(is_drawn, 0, np.where(comparison.judged.judgement.rejected[order], 1, 2))
-    return np.sort(np.argsort(rank, kind="stable")[:PAIRS_SHOWN])
+def _first(comparison: Comparison) -> np.ndarray:
+    """Choose pairs: drawn ones, then rejected ones, then the strongest, 20,000 in all; in their own order."""
+    attributes, bits = len(comparison.names), comparison.judged.statistics.bits
+    left, right = comparison.pairs.left, comparison.pairs.right
+    ends = {tuple(sorted((edge.parent, edge.child))) for edges in comparison.edges for edge in edges}
+    number = np.array([a * attributes + b for a, b in ends], dtype=np.int64)
+    is_drawn = np.isin(np.minimum(left, right) * np.int64(attributes) + np.maximum(left, right), number)
+    rejected = comparison.judged.judgement.rejected
+    chosen = np.empty(0, np.int64)
+    for group in (is_drawn, rejected & ~is_drawn, ~rejected & ~is_drawn):
+        chosen = np.concatenate([chosen, _strongest(bits, np.flatnonzero(group), PAIRS_SHOWN - len(chosen))])
+    return np.sort(chosen)
+
+
+def _strongest(bits: np.ndarray, group: np.ndarray, most: int) -> np.ndarray:
+    """Take the members of a group with most bits, the first ones among equals, without sorting the others."""
+    if len(group) <= most:
+        return group
+    if not most:
+        return group[:0]
+    own = bits[group]
+    least = np.partition(own, -most)[-most]
+    above = group[own > least]
+    return np.concatenate([above, group[own == least][: most - len(above)]])
 
 
 def structure_document(comparison: Comparison, s: int) -> dict[str, Any]:
@@ -222,15 +242,15 @@ def structure_document(comparison: Comparison, s: int) -> dict[str, Any]:
 
 def picture_of(document: dict[str, Any]) -> Picture:
     """Turn a structure document into what a drawing shows."""
-    names = [attribute["name"] for attribute in document["attributes"]]
+    place = {attribute["name"]: number for number, attribute in enumerate(document["attributes"])}
     chips = tuple(
         Chip(one["name"], len(one["levels"]), document["bits_with_class"][one["name"]])
         for one in document["attributes"]
     )
     arrows = tuple(
         Arrow(
-            names.index(edge["parent"]),
-            names.index(edge["child"]),
+            place[edge["parent"]],
+            place[edge["child"]],
             edge["bits"],
             edge["verdict"],
             edge["gain"],
@@ -249,25 +269,43 @@ def dot_of(document: dict[str, Any]) -> str:
 
 def predictions_table(comparison: Comparison) -> pa.Table:
     """List out-of-fold probabilities: one row per row of data, repeat and structure."""
-    parts = []
-    levels = comparison.classifiers[0].target.levels
-    names = comparison.recipe.structures
+    return pa.concat_tables(predictions(comparison))
+
+
+def predictions(comparison: Comparison) -> Iterator[pa.Table]:
+    """Predict all rows out of fold once more, and list the probabilities a part at a time.
+
+    In order of repeat, structure and row; a part is what the engine keeps together, and no more is held at once.
+    """
     for repeat, one in enumerate(comparison.evaluations):
-        rows = one.engine.rows
-        fold = np.empty(rows, np.int64)
-        for number, runs in enumerate(one.fold_rows):
-            for run in runs:
-                fold[run] = number
-        back = np.argsort(one.engine.order)
-        truth = pa.DictionaryArray.from_arrays(one.engine.target[back].astype(np.int32), pa.array(levels))
-        for s, p in enumerate(one.p):
-            columns = {
-                "row": comparison.lines.numbers(),
-                "repeat": np.full(rows, repeat),
-                "fold": fold[back],
-                "structure": pa.DictionaryArray.from_arrays(np.full(rows, s, np.int32), pa.array(names)),
-                "truth": truth,
-            }
-            columns |= {f"p:{level}": p[back, c] for c, level in enumerate(levels)}
-            parts.append(pa.table(columns))
-    return pa.concat_tables(parts)
+        engine = one.engine
+        groups = engine.blocks * engine.classes
+        bounds = engine.starts[np.arange(0, len(engine.starts), groups)].tolist()
+        for s in range(len(comparison.recipe.structures)):
+            for first, last in pairwise(bounds):
+                yield _predicted(comparison, repeat, s, first, last)
+
+
+def _predicted(comparison: Comparison, repeat: int, s: int, first: int, last: int) -> pa.Table:
+    """Predict the engine's rows ``first:last`` by one structure, in the order of the table."""
+    one, levels = comparison.evaluations[repeat], comparison.classifiers[0].target.levels
+    p, fold = np.empty((last - first, len(levels))), np.empty(last - first, np.int64)
+
+    def fill(number: int) -> None:
+        inside = [run for run in one.fold_rows[number] if first <= run.start < run.stop <= last]
+        predictor = one.predictor(number, s)
+        for run in inside:
+            p[run.start - first : run.stop - first] = predictor.probabilities(run.start, run.stop)
+            fold[run.start - first : run.stop - first] = number
+
+    one.engine.map(fill, range(len(one.fold_rows)))
+    back = np.argsort(one.engine.order_of(slice(first, last)))
+    names = pa.array(comparison.recipe.structures)
+    columns = {
+        "row": comparison.lines.of_rows(first, last),
+        "repeat": np.full(last - first, repeat),
+        "fold": fold[back],
+        "structure": pa.DictionaryArray.from_arrays(np.full(last - first, s, np.int32), names),
+        "truth": pa.DictionaryArray.from_arrays(one.engine.target[first:last][back].astype(np.int32), pa.array(levels)),
+    }
+    return pa.table(columns | {f"p:{level}": p[back, c] for c, level in enumerate(levels)})

@@ -5,7 +5,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from bnx.calibrating import apply
+from bnx.calibrating import Calibration, probabilities
 from bnx.choosing import Choice, choose, inner_losses, make_trial
 from bnx.domains import Schema
 from bnx.engines import LocalEngine
@@ -14,30 +14,58 @@ from bnx.learners import Learner
 from bnx.learning import Learned, learn
 from bnx.parameters import candidates
 from bnx.recipe import Recipe
-from bnx.sampling import Sample, draw_sample
-from bnx.scoring import evidence
+from bnx.sampling import Sample, sample_for_choices
+from bnx.scoring import Terms, terms_of
 from bnx.trainings import held_sets, make_trainings, mask_without
 
-__all__ = ["Evaluation", "evaluate"]
+__all__ = ["Evaluation", "Predictor", "evaluate", "predict"]
+
+_ROWS = 16_384  # predicted at a time
+
+
+@dataclass(frozen=True)
+class Predictor:
+    """What gives one fold's rows their probabilities under one structure learnt without them."""
+
+    codes: np.ndarray
+    terms: Terms
+    log_prior: np.ndarray
+    calibration: Calibration
+
+    def probabilities(self, first: int, last: int) -> np.ndarray:
+        """Predict rows ``first:last`` of the engine, (last - first, C)."""
+        return probabilities(self.calibration, self.log_prior, self.terms.evidence(self.codes, first, last))
 
 
 @dataclass(frozen=True)
 class Evaluation:
     """One repeat of the folds.
 
-    ``choices``: by what is held out, () for all rows; ``p``: per structure, out-of-fold probabilities (N, C) in the
-    engine's row order; ``fold_rows``: the engine's rows of each fold, in runs; ``sample``: the rows of inner choices.
+    ``choices``: by what is held out, () for all rows; ``fold_rows``: the engine's rows of each fold, as runs;
+    ``sample``: the rows of inner choices.
     """
 
     engine: LocalEngine
     sample: Sample
     choices: Mapping[tuple[int, ...], Choice]
-    p: tuple[np.ndarray, ...]
     fold_rows: tuple[list[slice], ...]
+
+    @property
+    def rows_by_fold(self) -> list[int]:
+        """Rows of each fold."""
+        return [sum(run.stop - run.start for run in runs) for runs in self.fold_rows]
 
     def learned(self, held: tuple[int, ...]) -> Learned:
         """Look up what was learnt without the held-out folds, under the cut points chosen there."""
         return self.choices[held].trial.learned[held]
+
+    def predictor(self, fold: int, structure: int) -> Predictor:
+        """Make the tables that predict a fold."""
+        choice, held = self.choices[(fold,)], (fold,)
+        counted = choice.trial.counts[held]
+        terms = terms_of(counted, counted.families.of[structure], [choice.smoothings[structure]])
+        prior = self.learned(held).training.log_prior
+        return Predictor(self.engine.codes, terms, prior, choice.calibrations[structure])
 
 
 def bins_to_try(schema: Schema, bins: str) -> tuple[str, ...]:
@@ -50,7 +78,7 @@ def bins_to_try(schema: Schema, bins: str) -> tuple[str, ...]:
 def evaluate(
     engine: LocalEngine, schema: Schema, folds: int, learners: Sequence[Learner], bounds: Bounds, recipe: Recipe
 ) -> Evaluation:
-    """Learn, choose, calibrate and predict in every training fold, and on all rows.
+    """Learn, choose and calibrate in every training fold, and on all rows.
 
     engine: its blocks are ``folds`` runs of equal length.
     """
@@ -60,7 +88,7 @@ def evaluate(
     nested = choices_open or recipe.temperature or len(learners) > 1
     parts = engine.blocks // folds
     masks = {held: mask_without(held, folds, parts) for held in held_sets(folds, nested)}
-    sample = draw_sample(engine, folds)
+    sample = sample_for_choices(engine, folds)
     trials, losses = [], []
     for kind in kinds:
         trainings = make_trainings(engine, schema, masks, kind, recipe.max_levels)
@@ -75,19 +103,13 @@ def evaluate(
 
     choices = dict(zip(outer, engine.map(settle, outer, "calibrating"), strict=True))
     rows = tuple(engine.rows_of(fold * parts, (fold + 1) * parts) for fold in range(folds))
-    p = tuple(np.empty((engine.rows, engine.classes)) for _ in learners)
-    engine.map(lambda fold: _predict(engine, choices[(fold,)], (fold,), rows[fold], p), range(folds), "scoring folds")
-    return Evaluation(engine, sample, choices, p, rows)
+    return Evaluation(engine, sample, choices, rows)
 
 
-def _predict(
-    engine: LocalEngine, choice: Choice, held: tuple[int, ...], rows: Sequence[slice], p: Sequence[np.ndarray]
-) -> None:
-    """Fill in the probabilities of one fold's rows."""
-    learned = choice.trial.learned[held]
-    options = [(smoothing,) for smoothing in choice.smoothings]
-    counts = choice.trial.counts[held]
-    for run in rows:
-        found = evidence(engine.codes, run, learned.training.view, learned.structures, options, counts)
-        for own, calibration, out in zip(found, choice.calibrations, p, strict=True):
-            out[run] = apply(calibration, learned.training.log_prior, own)
+def predict(evaluation: Evaluation, fold: int, structure: int, runs: Sequence[slice], out: np.ndarray) -> None:
+    """Write the probabilities of some of a fold's rows, given as runs of the engine's rows, to the same rows of out."""
+    predictor = evaluation.predictor(fold, structure)
+    for run in runs:
+        for first in range(run.start, run.stop, _ROWS):
+            last = min(first + _ROWS, run.stop)
+            out[first:last] = predictor.probabilities(first, last)

@@ -1,14 +1,14 @@
 """The held-out gain of every edge: the loss without it minus the loss with it, in folds that did not learn it."""
 
 from collections.abc import Mapping
+from dataclasses import replace
 
 import numpy as np
 
-from bnx.choosing import mean_loss
 from bnx.evaluation import Evaluation
-from bnx.families import for_each_family
-from bnx.parameters import log_tables
-from bnx.scoring import Members, family_terms, terms_of
+from bnx.kernels import changed_losses, drop_parent
+from bnx.sampling import Sample, sample_for_gains
+from bnx.scoring import Counted, terms_of
 
 __all__ = ["Gains", "edge_gains"]
 
@@ -19,59 +19,71 @@ Gains = Mapping[tuple[int, Edge], float]  # (structure, (parent, child)) -> bits
 def edge_gains(evaluation: Evaluation) -> list[Gains]:
     """Judge every edge of every fold's own structures on the rows that the fold held out; one mapping per fold."""
     folds = range(len(evaluation.fold_rows))
-    learned = [evaluation.learned((fold,)) for fold in folds]
-    requests = [
-        (fold, _without(structure.parents[child], parent, child))
-        for fold in folds
-        for structure in learned[fold].structures
-        for parent, child in structure.edges
-    ]
-    trainings = [one.training for one in learned]
-    reduced = for_each_family(evaluation.engine, trainings, requests, lambda counts, sizes: counts, "counting families")
-    work = [(fold, s) for fold in folds for s in range(len(learned[0].structures))]
-    found = evaluation.engine.map(lambda item: _gains(evaluation, *item, reduced), work, "judging edges")
-    return [
-        {
-            (s, edge): gain
-            for (other, s), gains in zip(work, found, strict=True)
-            if other == fold
-            for edge, gain in gains
-        }
-        for fold in folds
-    ]
+    sample = sample_for_gains(evaluation.engine, len(folds))
+    structures = range(len(evaluation.choices[()].smoothings))
+    work = [(fold, s) for fold in folds for s in structures]
+    found = evaluation.engine.map(lambda item: _gains(evaluation, sample, *item), work, "judging edges")
+    by_work = dict(zip(work, found, strict=True))
+    return [{(s, edge): gain for s in structures for edge, gain in by_work[(fold, s)]} for fold in folds]
 
 
-def _without(parents: tuple[int, ...], parent: int, child: int) -> Members:
-    return (*(other for other in parents if other != parent), child)
-
-
-def _gains(
-    evaluation: Evaluation, fold: int, s: int, reduced: Mapping[tuple[int, Members], np.ndarray]
-) -> list[tuple[Edge, float]]:
+def _gains(evaluation: Evaluation, sample: Sample, fold: int, s: int) -> list[tuple[Edge, float]]:
     """Take the edges out of one structure, one at a time."""
-    choice, sample = evaluation.choices[(fold,)], evaluation.sample
-    learned = choice.trial.learned[(fold,)]
-    structure, view = learned.structures[s], learned.training.view
-    rows = sample.rows(fold)
+    predictor, rows = evaluation.predictor(fold, s), sample.rows(fold)
+    structure = evaluation.learned((fold,)).structures[s]
     truth, weights = sample.target[rows], sample.weights[rows]
     if not structure.edges or not len(truth):
         return [(edge, 0.0) for edge in structure.edges]
-    counts = choice.trial.counts[(fold,)]
-    terms = terms_of(view, [structure], [(choice.smoothings[s],)], counts)
-    whole = terms.empty(len(truth))
-    terms.add(sample.codes, rows.start, rows.stop, whole)
-    prior, calibration = learned.training.log_prior, choice.calibrations[s]
-    before = mean_loss(whole[0], prior, calibration, truth, weights)
-    gains = []
-    for parent, child in structure.edges:
-        full = (*structure.parents[child], child)
-        less = _without(structure.parents[child], parent, child)
-        tables = [
-            sign * log_tables(table, view.sizes_of(members), [choice.smoothings[s]])
-            for members, table, sign in ((full, counts[full], -1.0), (less, reduced[(fold, less)], 1.0))
-        ]
-        changed = whole.copy()
-        change = family_terms(view, (full, less), tables, ((0,), (0,)), (0,))
-        change.add(sample.codes, rows.start, rows.stop, changed)
-        gains.append(((parent, child), mean_loss(changed[0], prior, calibration, truth, weights) - before))
-    return gains
+    choice, terms = evaluation.choices[(fold,)], predictor.terms
+    counted = choice.trial.counts[(fold,)]
+    children, places = _edges(counted, s)
+    less = _without(counted, counted.families.of[s][children], places)
+    fewer = terms_of(less, np.arange(len(children)), [choice.smoothings[s]])
+    own, calibration = counted.families, predictor.calibration
+    changes = np.zeros(len(children))
+    changed_losses(
+        sample.codes,
+        own.recode,
+        (own.plain, own.members, own.sizes, own.depths, terms.which[children], terms.starts[children], terms.table),
+        (
+            less.families.plain,
+            less.families.members,
+            less.families.sizes,
+            less.families.depths,
+            fewer.starts,
+            fewer.table,
+        ),
+        rows.start,
+        terms.evidence(sample.codes, rows.start, rows.stop),
+        np.atleast_2d(predictor.log_prior + calibration.offsets),
+        calibration.temperature,
+        calibration.floor,
+        calibration.shares,
+        truth,
+        weights,
+        changes,
+    )
+    bits = changes / max(weights.sum(), 1e-300) / np.log(2)
+    return list(zip(structure.edges, bits.tolist(), strict=True))
+
+
+def _edges(counted: Counted, s: int) -> tuple[np.ndarray, np.ndarray]:
+    """List the edges of a structure by child, then in the order taken: the children, and the places of the parents."""
+    parents = counted.families.depths[counted.families.of[s]] - 1
+    children = np.repeat(np.arange(len(parents)), parents)
+    return children, np.arange(len(children)) - np.repeat(np.cumsum(parents) - parents, parents)
+
+
+def _without(counted: Counted, which: np.ndarray, places: np.ndarray) -> Counted:
+    """Take one parent each, by its place, out of some families (K,), and sum their counts over its levels."""
+    one = counted.families
+    kept = np.arange(one.members.shape[1] - 1) + (np.arange(one.members.shape[1] - 1) >= places[:, None])
+    members = np.take_along_axis(one.members[which], kept, axis=1)
+    sizes = np.take_along_axis(one.sizes[which], kept, axis=1)
+    starts = np.concatenate([[0], np.cumsum(sizes.prod(axis=1))])
+    less = replace(
+        one, members=members, sizes=sizes, depths=one.depths[which] - 1, plain=one.plain[which], starts=starts
+    )
+    counts = np.zeros((len(counted.counts), int(starts[-1])), np.int32)
+    drop_parent(counted.counts, one.starts, one.sizes, one.depths, which, places, starts, counts)
+    return Counted(less, counts)

@@ -1,45 +1,18 @@
-"""Scores of each structure, differences to the baseline, and which structure to recommend."""
+"""Differences of each structure to the baseline, and which structure to recommend."""
 
 from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
-from bnx.calibrating import slope
-from bnx.engines import LocalEngine
 from bnx.evaluation import Evaluation
-from bnx.losses import Scores, log_losses, scores
+from bnx.losses import Scores
 from bnx.multiplicity import adjusted
 from bnx.paired import Chances, Difference, bayesian_t, corrected_t
+from bnx.rating import StructureScore, cells_of
 from bnx.structure import Structure
 
-__all__ = ["Against", "FoldScore", "Recommendation", "StructureScore", "against", "recommend", "region_of", "score"]
-
-
-@dataclass(frozen=True)
-class FoldScore:
-    """Scores of one structure on the rows of one fold."""
-
-    repeat: int
-    fold: int
-    rows: int
-    scores: Scores
-    slope: float | None
-
-
-@dataclass(frozen=True)
-class StructureScore:
-    """Out-of-fold scores of one structure: pooled, and fold by fold; ``error``: standard error of the log loss."""
-
-    pooled: Scores
-    error: float
-    slope: float | None
-    by_fold: tuple[FoldScore, ...]
-
-    @property
-    def fold_losses(self) -> np.ndarray:
-        """Mean log loss of each fold of each repeat, bits."""
-        return np.array([fold.scores.log_loss for fold in self.by_fold])
+__all__ = ["Against", "Recommendation", "against", "inner_picks", "recommend", "region_of"]
 
 
 @dataclass(frozen=True)
@@ -64,53 +37,6 @@ class Recommendation:
     reason: str
     honest: Scores
     picks: tuple[int, ...]
-
-
-def score(evaluations: Sequence[Evaluation], engine: LocalEngine) -> list[StructureScore]:
-    """Score every structure on all out-of-fold rows."""
-    structures = range(len(evaluations[0].p))
-    cells = [(s, repeat, fold) for s in structures for repeat, one in enumerate(evaluations) for fold in _filled(one)]
-
-    def judge_fold(cell: tuple[int, int, int]) -> FoldScore:
-        s, repeat, fold = cell
-        one = evaluations[repeat]
-        rows = one.fold_rows[fold]
-        p, truth = _joined(one.p[s], rows), _joined(one.engine.target, rows)
-        return FoldScore(repeat, fold, len(truth), scores(p, truth, one.engine.classes), slope(p, truth))
-
-    def judge(s: int) -> tuple[Scores, float, float | None]:
-        p, truth = pooled(evaluations, s)
-        rows = log_losses(p, truth)
-        with np.errstate(invalid="ignore"):
-            error = float(rows.std() / np.sqrt(len(rows) / len(evaluations)))
-        return scores(p, truth, engine.classes), error, slope(p, truth)
-
-    by_fold = engine.map(judge_fold, cells, "scoring")
-    overall = engine.map(judge, structures, "scoring")
-    return [
-        StructureScore(*overall[s], tuple(one for cell, one in zip(cells, by_fold, strict=True) if cell[0] == s))
-        for s in structures
-    ]
-
-
-def _filled(evaluation: Evaluation) -> list[int]:
-    """List the folds that hold rows."""
-    return [fold for fold, runs in enumerate(evaluation.fold_rows) if any(run.stop > run.start for run in runs)]
-
-
-def _joined(values: np.ndarray, runs: Sequence[slice]) -> np.ndarray:
-    """Join the values of several runs of rows."""
-    return values[runs[0]] if len(runs) == 1 else np.concatenate([values[run] for run in runs])
-
-
-def pooled(evaluations: Sequence[Evaluation], s: int) -> tuple[np.ndarray, np.ndarray]:
-    """Join one structure's out-of-fold probabilities (rows, C) and the truth (rows,) over repeats."""
-    if len(evaluations) == 1:
-        return evaluations[0].p[s], evaluations[0].engine.target
-    return (
-        np.concatenate([one.p[s] for one in evaluations]),
-        np.concatenate([one.engine.target for one in evaluations]),
-    )
 
 
 def region_of(losses: Sequence[float]) -> float:
@@ -170,24 +96,33 @@ def _chances(losses: np.ndarray, best: np.ndarray, folds: int, region: float) ->
     return bayesian_t(differences, folds, region)
 
 
+def inner_picks(evaluations: Sequence[Evaluation]) -> list[int]:
+    """Pick by the same rule inside every outer fold that holds rows, from what its own inner folds say."""
+    picks = []
+    for cell in cells_of(evaluations):
+        one = evaluations[cell.repeat]
+        inner = one.choices[(cell.fold,)].losses
+        own = one.learned((cell.fold,)).structures
+        picks.append(pick(inner, own, inner.mean(axis=1).tolist(), inner.shape[1])[1] if len(own) > 1 else 0)
+    return picks
+
+
 def recommend(
-    evaluations: Sequence[Evaluation], results: Sequence[StructureScore], names: Sequence[str], folds: int
+    evaluations: Sequence[Evaluation],
+    results: Sequence[StructureScore],
+    picks: Sequence[int],
+    honest: Scores,
+    names: Sequence[str],
+    folds: int,
 ) -> Recommendation:
-    """Recommend a structure, and score the same rule applied inside every outer fold to rows that it never saw."""
+    """Recommend a structure.
+
+    picks, honest: what the same rule picks inside every outer fold, and how it scores on rows that it never saw.
+    """
     losses = np.array([result.fold_losses for result in results])
     structures = evaluations[0].learned(()).structures
     means = [result.pooled.log_loss for result in results]
     best, chosen, chances = pick(losses, structures, means, folds)
-    p, truth, picks = [], [], []
-    for one in evaluations:
-        for fold in _filled(one):
-            inner = one.choices[(fold,)].losses
-            own = one.learned((fold,)).structures
-            picked = pick(inner, own, inner.mean(axis=1).tolist(), inner.shape[1])[1] if len(own) > 1 else 0
-            picks.append(picked)
-            p += [one.p[picked][run] for run in one.fold_rows[fold]]
-            truth += [one.engine.target[run] for run in one.fold_rows[fold]]
-    honest = scores(np.concatenate(p), np.concatenate(truth), evaluations[0].engine.classes)
     return Recommendation(best, chosen, _reason(names, structures, means, best, chosen, chances), honest, tuple(picks))
 
 

@@ -2,6 +2,7 @@
 
 import math
 from collections.abc import Mapping, Sequence
+from heapq import heappop, heappush
 
 from bnx.errors import StructureError
 
@@ -39,12 +40,22 @@ def parents_first(parents: Mapping[int, Sequence[int]], members: Sequence[int]) 
     Raises:
         StructureError: there is no such order.
     """
-    placed: dict[int, None] = {}
-    waiting = list(members)
-    while waiting:
-        free = next((one for one in waiting if all(parent in placed for parent in parents.get(one, ()))), None)
-        if free is None:
-            raise StructureError(f"the arrows form a cycle through attributes {sorted(waiting)}; none may lead back")
-        placed[free] = None
-        waiting.remove(free)
-    return list(placed)
+    place = {one: number for number, one in enumerate(members)}
+    missing = {one: len(set(parents.get(one, ()))) for one in members}
+    children: dict[int, list[int]] = {}
+    for one in members:
+        for parent in set(parents.get(one, ())):
+            children.setdefault(parent, []).append(one)
+    free = [place[one] for one in members if not missing[one]]  # a heap, as it rises
+    found = []
+    while free:
+        one = members[heappop(free)]
+        found.append(one)
+        for child in children.get(one, ()):
+            missing[child] -= 1
+            if not missing[child]:
+                heappush(free, place[child])
+    if len(found) < len(members):
+        rest = sorted(set(members) - set(found))
+        raise StructureError(f"the arrows form a cycle through attributes {rest}; none may lead back")
+    return found

@@ -2,16 +2,17 @@
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import groupby
+from operator import itemgetter
 
 import numpy as np
 
 from bnx.dependence import Dependence, measure, relevance_of, sets_at_a_time
 from bnx.engines import LocalEngine
 from bnx.errors import DataError
-from bnx.families import PairRequests, Request, for_each_family
+from bnx.families import PairRequests, family_statistics
 from bnx.gating import Answer, Bounds, Gate, Question, learn_together
 from bnx.independence import Statistics
-from bnx.kernels.contingency import one_table
 from bnx.learners import Learner
 from bnx.recipe import Recipe
 from bnx.refining import Rigour, gated, visit_families
@@ -19,7 +20,7 @@ from bnx.structure import Structure
 from bnx.text import nearest
 from bnx.trainings import Training
 
-__all__ = ["Learned", "ask_tests", "learn", "make_bounds", "rigour_of", "test_statistics"]
+__all__ = ["Learned", "ask_tests", "learn", "make_bounds", "rigour_of"]
 
 
 @dataclass(frozen=True)
@@ -87,9 +88,14 @@ def _learn(
     learnings = [member.learn(one.dependence, one.gate, bounds) for one in seen for member in learners]
 
     def ask(questions: Sequence[tuple[int, Question]]) -> list[Answer]:
-        numbered = [(number // len(learners), question) for number, question in questions]
-        tested = iter(ask_tests(engine, trainings, [one for one in numbered if one[1].given], rigour))
-        return [next(tested) if question.given else seen[number].answer(question) for number, question in numbered]
+        further = [(number // len(learners), question) for number, question in questions if question.given]
+        tested = iter(ask_tests(engine, trainings, further, rigour))
+        answers: list[Answer] = []
+        for number, asked in groupby(questions, key=itemgetter(0)):
+            own = [question for _, question in asked]
+            known = iter(seen[number // len(learners)].answers([one for one in own if not one.given]))
+            answers += [next(tested if question.given else known) for question in own]
+        return answers
 
     engine.progress("choosing edges", 0, 0)
     structures = learn_together(learnings, ask)
@@ -105,10 +111,14 @@ class _Seen:
     gate: Gate
     bits: np.ndarray
 
-    def answer(self, question: Question) -> Answer:
-        """Answer a question that only takes the class as given, from what was measured of all pairs."""
-        p = float(self.gate.p[question.child, question.candidate])
-        return Answer(1.0 if np.isnan(p) else p, float(self.bits[question.child, question.candidate]))
+    def answers(self, questions: Sequence[Question]) -> list[Answer]:
+        """Answer questions that only take the class as given, from what was measured of all pairs."""
+        if not questions:
+            return []
+        child, candidate = np.array([question[:2] for question in questions]).T
+        p = self.gate.p[child, candidate]
+        p = np.where(np.isnan(p), 1.0, p).tolist()
+        return [Answer(*answer) for answer in zip(p, self.bits[child, candidate].tolist(), strict=True)]
 
 
 def _look(
@@ -157,21 +167,10 @@ def ask_tests(
     if not questions:
         return []
     requests = [(number, (*question.given, question.candidate, question.child)) for number, question in questions]
-    rows = test_statistics(engine, trainings, requests)
+    rows = family_statistics(engine, trainings, requests, "testing parents")
     different = {request: place for place, request in enumerate(rows)}
     statistics = Statistics.of(np.array(list(rows.values())))
     p = gated(visit_families(engine, trainings, list(rows)), statistics, rigour).p
     p = np.where(np.isnan(p), 1.0, p)
     bits = statistics.bits_corrected
     return [Answer(float(p[different[request]]), float(bits[different[request]])) for request in requests]
-
-
-def test_statistics(
-    engine: LocalEngine, trainings: Sequence[Training], requests: Sequence[Request]
-) -> dict[Request, np.ndarray]:
-    """Compute the statistics (COLUMNS,) of the last two members given the class and the members before them."""
-
-    def use(counts: np.ndarray, sizes: tuple[int, ...]) -> np.ndarray:
-        return one_table(counts.reshape(-1, sizes[-2] * sizes[-1]), sizes[-2], sizes[-1])
-
-    return for_each_family(engine, trainings, requests, use, "testing parents")

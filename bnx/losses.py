@@ -6,9 +6,9 @@ from dataclasses import dataclass
 import numpy as np
 
 from bnx.errors import DataError
-from bnx.kernels import rank_sums, sort_whole
+from bnx.kernels import HISTOGRAM_BINS, add_to_histograms, pack_scores, rank_sums, sort_whole, tally
 
-__all__ = ["Scores", "log_losses", "scores"]
+__all__ = ["Histograms", "Ranking", "Scores", "Tally", "log_losses", "ranking", "scores", "scores_of"]
 
 _BINS = 15
 _ROWS_PER_BIN = 20
@@ -21,7 +21,8 @@ class Scores:
     ``log_loss`` is in bits, mean over rows; it is infinite where a row's own class had probability exactly 0.
     ``brier`` is summed over classes, mean over rows. ``recall`` holds None for a class without rows, and
     ``balanced_accuracy`` is the mean over the others. ``auc`` (one class against the rest, mean over the classes that
-    have both) is None where every row has one class. ``confusion`` has a row per true class.
+    have both) is None where every row has one class. ``confusion`` has a row per true class. ``auc_within`` and
+    ``calibration_within``: how far areas and calibration errors may lie from those of the rows themselves.
     """
 
     log_loss: float
@@ -33,6 +34,8 @@ class Scores:
     confusion: tuple[tuple[int, ...], ...]
     calibration_error: float
     classwise_calibration_error: float
+    auc_within: float = 0.0
+    calibration_within: float = 0.0
 
     def to_dict(self, levels: Sequence[str] | None = None) -> dict[str, object]:
         """Give plain values for JSON, recalls under the names of the class levels (their codes if not given).
@@ -54,17 +57,126 @@ class Scores:
 
 
 @dataclass(frozen=True)
-class _Ranking:
+class Tally:
+    """Sums over rows that can be merged.
+
+    ``confusion`` (C, C) int64, a row per true class; ``sums`` (4,): rows, log losses in bits, their squared distances
+    from their mean, squared distances of the probabilities from the truth.
+    """
+
+    confusion: np.ndarray
+    sums: np.ndarray
+
+    @classmethod
+    def empty(cls, classes: int) -> "Tally":
+        """Start with no rows."""
+        return cls(np.zeros((classes, classes), np.int64), np.zeros(4))
+
+    def add(self, p: np.ndarray, rows: slice, truth: np.ndarray) -> None:
+        """Add some rows of probabilities p (N, C)."""
+        tally(p, rows.start, rows.stop, truth, self.confusion, self.sums)
+
+    @property
+    def rows(self) -> int:
+        """Rows added."""
+        return int(self.sums[0])
+
+    @property
+    def errors(self) -> int:
+        """Rows whose label is wrong."""
+        return int(self.confusion.sum() - np.trace(self.confusion))
+
+    @property
+    def loss_deviation(self) -> float:
+        """Standard deviation of the log losses in bits, over the rows themselves; not a number if one is infinite."""
+        return float(np.sqrt(self.sums[2] / self.sums[0]))
+
+    @classmethod
+    def merged(cls, parts: Sequence["Tally"]) -> "Tally":
+        """Join the sums of different rows, in the order given."""
+        confusion, sums = parts[0].confusion.copy(), parts[0].sums.copy()
+        for part in parts[1:]:
+            confusion += part.confusion
+            rows = sums[0] + part.sums[0]
+            with np.errstate(invalid="ignore"):
+                apart = part.sums[1] / part.sums[0] - sums[1] / sums[0]
+                between = np.square(apart) * sums[0] * part.sums[0] / rows
+            sums += part.sums
+            sums[2] += between
+        return cls(confusion, sums)
+
+
+@dataclass(frozen=True)
+class Ranking:
     """What ranking rows by a score tells: the ``area`` under the curve and the ``error`` of calibration.
 
     ``area``: share of (hit, miss) pairs in which the hit scores higher, equal scores counting one half; None without
     pairs. ``error``: mean over rows of | mean score - share of hits | in their bin, up to 15 bins of equal count, fewer
     so that each holds 20 rows. Rows of equal score stay together: a group falls into the bin that holds its middle row,
-    so no order among equals matters and a bin may stay empty.
+    so no order among equals matters and a bin may stay empty. ``area_within``, ``error_within``: bounds of what the two
+    may be off by.
     """
 
     area: float | None
     error: float
+    area_within: float = 0.0
+    error_within: float = 0.0
+
+
+@dataclass(frozen=True)
+class Histograms:
+    """Rows by score, for every class and, last, for the largest probability: what rankings need, to a stated error.
+
+    ``counts`` (C + 1, bins, 2) int64: misses and hits; ``sums`` (C + 1, bins): of the scores.
+    """
+
+    counts: np.ndarray
+    sums: np.ndarray
+
+    @classmethod
+    def empty(cls, classes: int) -> "Histograms":
+        """Start with no rows."""
+        return cls(np.zeros((classes + 1, HISTOGRAM_BINS, 2), np.int64), np.zeros((classes + 1, HISTOGRAM_BINS)))
+
+    def add(self, p: np.ndarray, truth: np.ndarray) -> None:
+        """Add rows of probabilities p (N, C)."""
+        add_to_histograms(p, truth, self.counts, self.sums)
+
+    def merge(self, other: "Histograms") -> None:
+        """Take other rows in."""
+        np.add(self.counts, other.counts, out=self.counts)
+        np.add(self.sums, other.sums, out=self.sums)
+
+    def rankings(self) -> list[Ranking]:
+        """Rank by every class and by the largest probability, the scores of a bin counting as equal.
+
+        Pairs within a bin are counted one half each, so an area is off by at most half of them. Rows are in another bin
+        of calibration than by their own score only where a bin here reaches over the border of two there, and a row
+        that moves changes what it leaves and what it enters by at most 1.
+        """
+        return [_binned_ranking(*one) for one in zip(self.counts, self.sums, strict=True)]
+
+
+def _binned_ranking(counts: np.ndarray, sums: np.ndarray) -> Ranking:
+    used = np.flatnonzero(counts.sum(axis=1))
+    misses, hits, scores_ = counts[used, 0], counts[used, 1], sums[used]
+    ends = np.cumsum(misses + hits)
+    starts, rows = ends - misses - hits, int(ends[-1])
+    bins = _bins_for(rows)
+    place = (starts + ends) * bins // (2 * rows)
+    apart = np.bincount(place, scores_ - hits, bins)
+    moving = starts * bins // rows != (2 * ends - 1) * bins // (2 * rows)
+    pairs = int(hits.sum()) * int(misses.sum())
+    below = np.cumsum(misses) - misses
+    doubled = sum(int(h) * (2 * int(b) + int(m)) for h, b, m in zip(hits, below, misses, strict=True))
+    within = sum(int(h) * int(m) for h, m in zip(hits, misses, strict=True)) / (2 * pairs) if pairs else 0.0
+    area = doubled / (2 * pairs) if pairs else None
+    moved = float(2 * (misses + hits)[moving].sum() / rows)
+    return Ranking(area, float(np.abs(apart).sum() / rows), within, moved)
+
+
+def _bins_for(rows: int) -> int:
+    return min(_BINS, max(1, rows // _ROWS_PER_BIN))
 
 
 def log_losses(p: np.ndarray, truth: np.ndarray) -> np.ndarray:
@@ -90,50 +202,55 @@ def scores(p: np.ndarray, truth: np.ndarray, classes: int) -> Scores:
     """
     if len(truth) == 0:
         raise DataError("there are 0 rows to score; at least 1 is needed")
-    columns = np.ascontiguousarray(p.T)
-    label = np.argmax(p, axis=1)
-    confusion = np.bincount(truth * np.int64(classes) + label, minlength=classes * classes).reshape(classes, classes)
-    totals = confusion.sum(axis=1)
-    recall = [int(confusion[k, k]) / int(totals[k]) if totals[k] else None for k in range(classes)]
+    whole, every = Tally.empty(classes), [slice(0, len(truth))]
+    p = np.ascontiguousarray(p)
+    whole.add(p, every[0], truth)
+    return scores_of(whole, [ranking(p, every, truth, column) for column in range(classes + 1)])
+
+
+def scores_of(whole: Tally, rankings: Sequence[Ranking]) -> Scores:
+    """Make the scores of some rows from their sums and their rankings by every class and by the largest probability."""
+    classes = len(whole.confusion)
+    totals = whole.confusion.sum(axis=1)
+    recall = [int(whole.confusion[k, k]) / int(totals[k]) if totals[k] else None for k in range(classes)]
     known = [value for value in recall if value is not None]
-    rankings = [_ranking(columns[k], truth == k) for k in range(classes)]
-    top = _ranking(columns.max(axis=0), label == truth)
+    by_class, top = rankings[:-1], rankings[-1]
+    auc, auc_within = _macro_auc(by_class)
     return Scores(
-        log_loss=float(log_losses(p, truth).mean()),
-        brier=_brier(columns, truth),
-        accuracy=int(np.trace(confusion)) / len(truth),
+        log_loss=float(whole.sums[1] / whole.sums[0]),
+        brier=float(whole.sums[3] / whole.sums[0]),
+        accuracy=int(np.trace(whole.confusion)) / whole.rows,
         balanced_accuracy=sum(known) / len(known),
-        auc=_macro_auc(rankings),
+        auc=auc,
         recall=tuple(recall),
-        confusion=tuple(tuple(int(count) for count in row) for row in confusion),
+        confusion=tuple(tuple(int(count) for count in row) for row in whole.confusion),
         calibration_error=top.error,
-        classwise_calibration_error=sum(one.error for one in rankings) / classes,
+        classwise_calibration_error=sum(one.error for one in by_class) / classes,
+        auc_within=auc_within,
+        calibration_within=max(top.error_within, sum(one.error_within for one in by_class) / classes),
     )
 
 
-def _brier(columns: np.ndarray, truth: np.ndarray) -> float:
-    """Sum the squared distances of ``columns`` (C, N) to the true classes; mean over rows."""
-    return float(sum(np.square(column - (truth == k)).sum() for k, column in enumerate(columns)) / len(truth))
-
-
-def _ranking(score: np.ndarray, right: np.ndarray) -> _Ranking:
-    """Rank rows by ``score`` (N,), 0 to 1; ``right`` (N,) says which rows are hits.
-
-    Bit patterns of numbers from 0 to below 2 order as the numbers do and leave two bits free, so one sort carries the
-    hits along.
-    """
-    rows, bins = len(score), min(_BINS, max(1, len(score) // _ROWS_PER_BIN))
-    packed = (score + 0.0).view(np.int64) << 1
-    packed |= right
-    packed = sort_whole(packed)
+def ranking(p: np.ndarray, parts: Sequence[slice], truth: np.ndarray, column: int) -> Ranking:
+    """Rank the rows of some parts of p (N, C) by the probability of a class or, for column C, by the largest."""
+    packed = np.empty(sum(part.stop - part.start for part in parts), np.int64)
+    at = 0
+    for part in parts:
+        size = part.stop - part.start
+        pack_scores(p, part.start, part.stop, truth, column, packed[at : at + size])
+        at += size
+    rows, hits, bins = len(packed), int((packed & 1).sum()), _bins_for(len(packed))
     score_sums, hit_sums = np.zeros(bins), np.zeros(bins)
-    doubled = int(rank_sums(packed, (packed >> 1).view(np.float64), score_sums, hit_sums))
-    hits = int(right.sum())
+    doubled = int(rank_sums(sort_whole(packed), score_sums, hit_sums))
     pairs = hits * (rows - hits)
-    return _Ranking(doubled / (2 * pairs) if pairs else None, float(np.abs(score_sums - hit_sums).sum() / rows))
+    return Ranking(doubled / (2 * pairs) if pairs else None, float(np.abs(score_sums - hit_sums).sum() / rows))
 
 
-def _macro_auc(rankings: Sequence[_Ranking]) -> float | None:
-    """Average the areas of the classes that have one; with two classes take the second, as both are the same area."""
-    areas = [one.area for one in (rankings[1:] if len(rankings) == 2 else rankings) if one.area is not None]
-    return sum(areas) / len(areas) if areas else None
+def _macro_auc(rankings: Sequence[Ranking]) -> tuple[float | None, float]:
+    """Average the areas of the classes that have one, and their bounds.
+
+    With two classes take the second, as both are the same area.
+    """
+    known = [one for one in (rankings[1:] if len(rankings) == 2 else rankings) if one.area is not None]
+    areas = [one.area for one in known if one.area is not None]
+    return (sum(areas) / len(areas), sum(one.area_within for one in known) / len(known)) if areas else (None, 0.0)

@@ -1,10 +1,9 @@
 """Many tests at once: adjusted p-values, the threshold they amount to, and the gate of a forest."""
 
-from itertools import pairwise
-
 import numpy as np
 
 from bnx.errors import SettingError
+from bnx.kernels.graphs import forest_level
 
 __all__ = ["METHODS", "adjusted", "forest_threshold", "testable", "threshold"]
 
@@ -103,35 +102,9 @@ def forest_threshold(pairs: np.ndarray, p: np.ndarray, n: int, alpha: float) -> 
     m = int(np.count_nonzero(~np.isnan(p)))
     candidates = np.flatnonzero(p * m <= alpha * (n - 1))
     order = candidates[np.argsort(p[candidates], kind="stable")]
-    values = p[order]
-    root = list(range(n))
-    edges, found = 0, float("nan")
-    for start, stop in pairwise([0, *np.flatnonzero(np.diff(values)) + 1, values.size] if values.size else [0]):
-        edges += _join(root, pairs[order[start:stop]])
-        if values[start] * m <= alpha * edges:
-            found = float(values[start])
-        if edges == n - 1:
-            return float(values[-1])
-    return found
-
-
-def _join(root: list[int], pairs: np.ndarray) -> int:
-    """Join the trees of each pair's attributes and count the joins."""
-    joins = 0
-    for first, second in pairs.tolist():
-        tree, other = _find(root, first), _find(root, second)
-        if tree != other:
-            root[tree] = other
-            joins += 1
-    return joins
-
-
-def _find(root: list[int], node: int) -> int:
-    """Find the root of a tree, halving the path on the way."""
-    while root[node] != node:
-        root[node] = root[root[node]]
-        node = root[node]
-    return node
+    ends = pairs[order].astype(np.int64)
+    first, second = np.ascontiguousarray(ends[:, 0]), np.ascontiguousarray(ends[:, 1])
+    return float(forest_level(first, second, p[order], n, m, alpha))
 
 
 def _dependence_factor(m: int, method: str) -> float:

@@ -9,10 +9,9 @@ import numpy as np
 
 from bnx.engines.local import Progress
 from bnx.explaining import Explanation, explanations
-from bnx.families import for_each_family
+from bnx.families import family_statistics, for_each_family
 from bnx.independence import Statistics
 from bnx.kernels.contingency import one_table
-from bnx.learning import test_statistics
 from bnx.pair_details import Pair, PairDetail, compare_classes, look_closely
 from bnx.pair_judging import JudgedPairs, judge_pairs
 from bnx.pair_table import CLOSE, Asked, PairTable, bins_of
@@ -139,7 +138,7 @@ def _statistics(table: PairTable, requests: Sequence[tuple[int, tuple[int, ...]]
 def _given_class(table: PairTable, pairs: Sequence[tuple[int, int]]) -> list[float]:
     """Measure pairs given the class alone: bits less what chance alone would show."""
     requests = [(0, pair) for pair in pairs]
-    rows = test_statistics(table.engine, [table.training], requests)
+    rows = family_statistics(table.engine, [table.training], requests)
     stats = Statistics.of(np.array([rows[request] for request in requests]))
     found: list[float] = with_chance(
         visit_families(table.engine, [table.training], requests), stats
@@ -174,7 +173,7 @@ def _explained(
         if not others:
             continue
         requests = [(0, (*table.given, other, a, b)) for other in others]
-        rows = test_statistics(table.engine, [table.training], requests)
+        rows = family_statistics(table.engine, [table.training], requests)
         found[table.names[a], table.names[b]] = explanations(
             [table.names[other] for other in others],
             Statistics.of(np.array([rows[request] for request in requests])),

@@ -1,12 +1,13 @@
 """What a drawing shows of a structure: chips for attributes, arrows between them, and the evidence on each."""
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Literal, get_args
 
 from bnx.errors import StructureError
 
-__all__ = ["MANY_ARROWS", "Arrow", "Chip", "Picture", "Showing", "Verdict", "showing"]
+__all__ = ["MANY_ARROWS", "MANY_CHIPS", "Arrow", "Chip", "Picture", "Showing", "Verdict", "showing"]
 
 Verdict = Literal["gains", "undecided", "loses", "not judged"]
 
@@ -89,23 +90,72 @@ class Picture:
 
 MANY_ARROWS = 40
 """Above so many arrows only the clear gains are drawn, unless everything is asked for."""
+MANY_CHIPS = 150
+"""Of more attributes than this only those of the strongest arrows are drawn, unless everything is asked for."""
 
 
 @dataclass(frozen=True)
 class Showing:
-    """Which arrows of a picture are drawn, and a sentence on those that are not (empty when none is left out)."""
+    """Which arrows and chips of a picture are drawn, and sentences on those that are not (empty when all are)."""
 
     arrows: tuple[Arrow, ...]
+    chips: tuple[int, ...]
     left_out: str
+    chips_left_out: str
 
 
 def showing(picture: Picture, least_bits: float = 0.0, everything: bool = False) -> Showing:
-    """Choose the arrows to draw: those of at least ``least_bits`` bits and, among very many, only the clear gains."""
+    """Choose what to draw: arrows of at least ``least_bits`` bits and, among very many, only the clear gains.
+
+    Among very many attributes those are drawn that the strongest arrows join, clear gains before others; without
+    arrows, those that share most bits with the class.
+    """
     strong = tuple(arrow for arrow in picture.arrows if arrow.bits >= least_bits)
-    thin = not everything and len(strong) > MANY_ARROWS
-    drawn = tuple(arrow for arrow in strong if arrow.verdict == "gains") if thin else strong
     reasons = [f"those under {least_bits:g} bits"] if len(strong) < len(picture.arrows) else []
-    reasons += ["those that are not a clear gain"] if len(drawn) < len(strong) else []
-    if not reasons:
-        return Showing(drawn, "")
-    return Showing(drawn, f"{len(drawn):,} of {len(picture.arrows):,} arrows drawn; left out: {' and '.join(reasons)}")
+    crowded = not everything and len(picture.chips) > MANY_CHIPS
+    drawn = strong
+    if crowded:
+        drawn = _strongest(strong)
+        reasons += ["weaker ones"] if len(drawn) < len(strong) else []
+    elif not everything and len(strong) > MANY_ARROWS:
+        drawn = tuple(arrow for arrow in strong if arrow.verdict == "gains")
+        reasons += ["those that are not a clear gain"] if len(drawn) < len(strong) else []
+    chips = _joined(picture, drawn) if crowded else tuple(range(len(picture.chips)))
+    number = f"{len(drawn):,} of {len(picture.arrows):,} arrows drawn"
+    return Showing(
+        drawn,
+        chips,
+        f"{number}; left out: {' and '.join(reasons)}" if reasons else "",
+        _sentence(picture, drawn, chips) if crowded else "",
+    )
+
+
+def _strongest(arrows: Sequence[Arrow]) -> tuple[Arrow, ...]:
+    """Take all clear gains, filled up with others to 40 arrows, while they join few enough attributes; keep the order.
+
+    Clear gains go first, then arrows of most bits.
+    """
+    ranked = sorted(range(len(arrows)), key=lambda number: (arrows[number].verdict != "gains", -arrows[number].bits))
+    most = max(MANY_ARROWS, sum(arrow.verdict == "gains" for arrow in arrows))
+    ends: set[int] = set()
+    taken = set()
+    for number in ranked[:most]:
+        more = ends | {arrows[number].parent, arrows[number].child}
+        if len(more) > MANY_CHIPS:
+            break
+        ends = more
+        taken.add(number)
+    return tuple(arrow for number, arrow in enumerate(arrows) if number in taken)
+
+
+def _joined(picture: Picture, arrows: Sequence[Arrow]) -> tuple[int, ...]:
+    """List the chips that arrows join; without arrows those that share most bits with the class."""
+    if arrows:
+        return tuple(sorted({end for arrow in arrows for end in (arrow.parent, arrow.child)}))
+    strongest = sorted(range(len(picture.chips)), key=lambda place: -picture.chips[place].bits)
+    return tuple(sorted(strongest[:MANY_CHIPS]))
+
+
+def _sentence(picture: Picture, arrows: Sequence[Arrow], chips: Sequence[int]) -> str:
+    which = "those that these arrows join" if arrows else f"those that share most bits with {picture.target}"
+    return f"{len(chips):,} of {len(picture.chips):,} attributes drawn: {which}"

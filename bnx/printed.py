@@ -216,8 +216,8 @@ def pair_row(pair: Mapping[str, Any], drawn: frozenset[frozenset[str]]) -> PairR
     )
 
 
-def attribute_rows(schema: Sequence[Mapping[str, Any]]) -> tuple[AttributeRow, ...]:
-    """List the attributes, most bits with the class first."""
+def attribute_rows(schema: Sequence[Mapping[str, Any]], most_rows: int) -> tuple[AttributeRow, ...]:
+    """List at most so many attributes, most bits with the class first."""
     most = max((one["bits_with_class"] for one in schema), default=0.0) or 1.0
     return tuple(
         AttributeRow(
@@ -228,7 +228,7 @@ def attribute_rows(schema: Sequence[Mapping[str, Any]]) -> tuple[AttributeRow, .
             bits=fixed(one["bits_with_class"]),
             bar=round(100 * one["bits_with_class"] / most, 1),
         )
-        for one in sorted(schema, key=lambda one: -one["bits_with_class"])
+        for one in sorted(schema, key=lambda one: -one["bits_with_class"])[:most_rows]
     )
 
 

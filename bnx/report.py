@@ -27,10 +27,24 @@ from bnx.printed import (
     setting,
 )
 
-__all__ = ["PAIRS_ON_PAGE", "Report", "report_html", "summarise"]
+__all__ = [
+    "ATTRIBUTES_ON_PAGE",
+    "EDGES_ON_PAGE",
+    "LINES_ON_PAGE",
+    "PAIRS_ON_PAGE",
+    "Report",
+    "report_html",
+    "summarise",
+]
 
 PAIRS_ON_PAGE = 300
 """Rows of the ledger of pairs that the page shows, strongest first."""
+EDGES_ON_PAGE = 300
+"""Rows of the ledger of each structure that the page shows, strongest first."""
+ATTRIBUTES_ON_PAGE = 300
+"""Attributes that the page lists, those with most bits first."""
+LINES_ON_PAGE = 100
+"""Warnings, and columns left out, that the page lists."""
 
 _ADJUSTMENTS = {
     "bh": "after adjustment for the number of pairs (Benjamini and Hochberg)",
@@ -43,18 +57,22 @@ _UNPRINTABLE = {code: "�" for code in (*range(32), *range(127, 160)) if chr(co
 
 @dataclass(frozen=True)
 class Drawn:
-    """One structure: its drawing (empty without a drawing engine), its ledger, its confusion table and recalls."""
+    """One structure: its drawing (empty without a drawing engine), its ledger, its confusion table and recalls.
+
+    ``edges`` are the strongest of ``edges_total``.
+    """
 
     score: ScoreRow
     picture: Markup
     edges: tuple[EdgeRow, ...]
+    edges_total: int
     confusion: tuple[tuple[str, tuple[tuple[str, str, int], ...], str], ...]
     is_open: bool
 
 
 @dataclass(frozen=True)
 class Report:
-    """The whole page in finished words and numbers."""
+    """The whole page in finished words and numbers; long lists hold what comes first, the page says of how many."""
 
     target: str
     class_levels: tuple[str, ...]
@@ -75,9 +93,11 @@ class Report:
     heat: HeatMap | None
     attributes: tuple[AttributeRow, ...]
     left_out: tuple[tuple[str, str], ...]
+    left_out_total: int
     settings: tuple[tuple[str, str], ...]
     versions: tuple[tuple[str, str], ...]
     warnings: tuple[str, ...]
+    warnings_total: int
     alpha: str
     adjust: str
     negligible: str
@@ -135,11 +155,13 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         pairs_total=f"{document['pairs_total']:,}",
         pairs_rejected=f"{document['pairs_rejected']:,}",
         heat=heat_map(document, drawn),
-        attributes=attribute_rows(document["schema"]),
-        left_out=tuple((one["name"], one["reason"]) for one in document["left_out"]),
+        attributes=attribute_rows(document["schema"], ATTRIBUTES_ON_PAGE),
+        left_out=tuple((one["name"], one["reason"]) for one in document["left_out"][:LINES_ON_PAGE]),
+        left_out_total=len(document["left_out"]),
         settings=tuple((key, setting(value)) for key, value in settings.items()),
         versions=tuple(document["versions"].items()),
-        warnings=tuple(document["warnings"]),
+        warnings=tuple(document["warnings"][:LINES_ON_PAGE]),
+        warnings_total=len(document["warnings"]),
         alpha=f"{settings['alpha']:g}",
         adjust=_ADJUSTMENTS[settings["adjust"]],
         negligible=f"{settings['negligible']:g}",
@@ -156,10 +178,12 @@ def _drawn(
 ) -> tuple[Drawn, tuple[str, ...]]:
     picture = embed(svg, prefix) if svg else None
     tries = document["folds"] * document["settings"]["repeats"]
+    strongest = sorted(entry["edges"], key=lambda one: -one["bits"])
     one = Drawn(
         score=score_row(document, entry),
         picture=Markup(picture.markup) if picture else Markup(),
-        edges=tuple(edge_row(edge, tries) for edge in sorted(entry["edges"], key=lambda one: -one["bits"])),
+        edges=tuple(edge_row(edge, tries) for edge in strongest[:EDGES_ON_PAGE]),
+        edges_total=len(strongest),
         confusion=confusion_rows(entry, document["class_levels"]),
         is_open=entry["name"] == document["recommended"]["name"],
     )

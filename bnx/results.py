@@ -3,9 +3,10 @@
 import json
 import shutil
 import tempfile
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from contextlib import contextmanager, suppress
+from itertools import chain
 from pathlib import Path
 from typing import Any
 
@@ -18,12 +19,13 @@ from bnx.documents import (
     comparison_document,
     dot_of,
     pair_results,
-    predictions_table,
+    predictions,
     structure_document,
 )
 from bnx.drawing import find_engine, render
 from bnx.engines.local import Progress
 from bnx.errors import DataError, EngineError, SettingError
+from bnx.picture import MANY_CHIPS
 from bnx.report import report_html
 from bnx.text import quoted
 from bnx.unfinished import unfinished
@@ -148,6 +150,7 @@ def write_results(
         (folder / f"{one['name']}.dot").write_text(drawings[one["name"]], encoding="utf-8")
     progress("drawings", 0, 0)
     pictures, notes = draw_all(drawings, jobs)
+    notes += _not_all_drawn(structures) if pictures else []
     progress("report", 0, 0)
     for name, picture in pictures.items():
         (folder / f"{name}.svg").write_text(picture, encoding="utf-8")
@@ -157,8 +160,28 @@ def write_results(
         every = [result.to_dict() for result in pair_results(comparison, everything=True)]
         pq.write_table(pa.Table.from_pylist(every), folder / "pairs.parquet")
     if predictions:
-        pq.write_table(predictions_table(comparison), folder / "predictions.parquet")
+        write_predictions(comparison, folder / "predictions.parquet")
     return document, notes
+
+
+def write_predictions(comparison: Comparison, path: Path) -> None:
+    """Write out-of-fold probabilities, a part at a time."""
+    parts = predictions(comparison)
+    first = next(parts)
+    with pq.ParquetWriter(path, first.schema) as writer:
+        for part in chain([first], parts):
+            writer.write_table(part)
+
+
+def _not_all_drawn(structures: Sequence[Mapping[str, Any]]) -> list[str]:
+    """Say what pictures of very many attributes leave out."""
+    names, attributes = [one["name"] for one in structures], len(structures[0]["attributes"])
+    if attributes <= MANY_CHIPS:
+        return []
+    return [
+        f"pictures show at most {MANY_CHIPS} of the {attributes:,} attributes, those that the strongest arrows join, "
+        f"and say how many; bnx draw {names[-1]}.json --everything draws all"
+    ]
 
 
 def draw_all(drawings: Mapping[str, str], jobs: int) -> tuple[dict[str, str], list[str]]:

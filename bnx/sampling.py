@@ -6,10 +6,11 @@ import numpy as np
 
 from bnx.engines import LocalEngine
 
-__all__ = ["Sample", "draw_sample"]
+__all__ = ["Sample", "sample_for_choices", "sample_for_gains"]
 
-_ROWS_PER_CLASS = 5_000
 _ROWS = 50_000
+_ROWS_PER_CLASS_FOR_CHOICES = 500
+_ROWS_PER_CLASS_FOR_GAINS = 5_000
 
 
 @dataclass(frozen=True)
@@ -30,28 +31,43 @@ class Sample:
         return slice(int(self.starts[fold]), int(self.starts[fold + 1]))
 
 
-def draw_sample(engine: LocalEngine, folds: int) -> Sample:
-    """Take at least 5,000 rows of every fold and class (all, if there are fewer) and 50,000 in all.
+def sample_for_choices(engine: LocalEngine, folds: int) -> Sample:
+    """Take 50,000 rows in all, but at least 500 of every fold and class (all, if there are fewer).
 
-    Rows are spread evenly over the blocks of each fold and class, in the order of the table within a block, so that the
-    engine's chunks make no difference; what lies in which fold was decided by the seed.
+    Choosing one of a few smoothings and fitting 1 + C numbers needs no more: see docs/methods.md for what it costs.
     """
-    blocks = engine.blocks // folds
-    chunks = np.arange(0, len(engine.starts) - 1, engine.blocks * engine.classes)
+    return _sample(engine, folds, _ROWS_PER_CLASS_FOR_CHOICES)
+
+
+def sample_for_gains(engine: LocalEngine, folds: int) -> Sample:
+    """Take 50,000 rows in all, but at least 5,000 of every fold and class (all, if there are fewer).
+
+    Gains of single edges are small, and whether one is credible depends on how well every fold measures it.
+    """
+    return _sample(engine, folds, _ROWS_PER_CLASS_FOR_GAINS)
+
+
+def _sample(engine: LocalEngine, folds: int, per_class: int) -> Sample:
+    """Spread the rows evenly over each fold and class; what lies in which fold was decided by the seed."""
+    groups = np.arange(engine.blocks * engine.classes).reshape(folds, -1, engine.classes)
+    chunks = (len(engine.starts) - 1) // groups.size
+    everything = int(engine.starts[-1])
     chosen, weights, starts = [], [], [0]
     for fold in range(folds):
         taken = 0
         for c in range(engine.classes):
-            groups = (np.arange(fold * blocks, (fold + 1) * blocks)) * engine.classes + c
-            segments = (groups[:, None] + chunks).ravel()
+            segments = (groups[fold, :, c][:, None] + np.arange(chunks) * groups.size).ravel()
             ends = np.cumsum(engine.starts[segments + 1] - engine.starts[segments])
             rows = int(ends[-1])
-            wanted = min(rows, max(_ROWS_PER_CLASS, -(-_ROWS * rows // engine.rows)))
+            wanted = min(rows, max(per_class, -(-_ROWS * rows // everything)))
             places = (np.arange(wanted) * rows) // max(wanted, 1)
-            held_by = np.searchsorted(ends, places, side="right")
-            chosen.append(engine.starts[segments + 1][held_by] - (ends[held_by] - places))
+            held = np.searchsorted(ends, places, side="right")
+            chosen.append(engine.starts[segments[held] + 1] - ends[held] + places)
             weights.append(np.full(wanted, rows / max(wanted, 1)))
             taken += wanted
         starts.append(starts[-1] + taken)
+    if starts[-1] == everything and chunks == 1:  # all rows, which lie fold by fold already
+        first = engine.starts[groups[:, 0, 0]]
+        return Sample(engine.codes, engine.target, np.ones(everything), np.append(first, everything))
     index = np.concatenate(chosen)
     return Sample(np.take(engine.codes, index, axis=1), engine.target[index], np.concatenate(weights), np.array(starts))

@@ -1,29 +1,27 @@
 """Evidence of rows for each class: the sum of the log table terms of all families."""
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
+from itertools import chain
 
 import numpy as np
 
-from bnx.kernels import add_terms
-from bnx.parameters import Smoothing, log_tables
+from bnx.kernels import add_terms, ratio_tables
+from bnx.parameters import Smoothing
 from bnx.structure import Structure
 from bnx.views import View
 
-__all__ = ["Members", "Terms", "evidence", "families", "family_terms", "terms_of"]
-
-Members = tuple[int, ...]  # parents in the order taken, then the child
-_LANES = 4  # terms are added four at a time
+__all__ = ["Counted", "Families", "Terms", "families_of", "padded", "terms_of"]
 
 
 @dataclass(frozen=True)
-class Terms:
-    """The log table terms of families, and who holds them.
+class Families:
+    """The different families of one training set's structures.
 
-    ``members``, ``sizes`` (F, M), of which the first ``depths`` (F,) count; ``plain`` (F,) bool: attributes used as
-    stored; ``starts`` (F,): first cell of each family in ``table`` (cells, T) nats; ``users``, from ``user_starts``
-    (F + 1,) on: the holders of each family, numbered; ``holder`` (structures,): the number of each structure, the same
-    for structures that differ only in name; ``width``: columns in use, the rest of T is padding.
+    ``members``, ``sizes`` (F, M): parents in the order taken, then the child, and their levels, of which the first
+    ``depths`` (F,) count; ``plain`` (F,) bool: attributes used as stored; ``starts`` (F + 1,): first cell of each
+    family when their tables lie side by side; ``recode``: of the view; ``of`` (structures, n): the family of each
+    attribute in each structure; ``holder`` (structures,): the first structure with the same parents.
     """
 
     members: np.ndarray
@@ -31,110 +29,100 @@ class Terms:
     depths: np.ndarray
     plain: np.ndarray
     starts: np.ndarray
-    table: np.ndarray
-    user_starts: np.ndarray
-    users: np.ndarray
-    holder: tuple[int, ...]
     recode: np.ndarray
-    width: int
-
-    def add(self, codes: np.ndarray, first: int, last: int, out: np.ndarray) -> None:
-        """Add the terms of rows ``first:last`` of codes (n, N) to out (holders, last - first, T)."""
-        add_terms(
-            codes,
-            self.recode,
-            self.plain,
-            self.members,
-            self.sizes,
-            self.depths,
-            self.starts,
-            self.table,
-            self.user_starts,
-            self.users,
-            first,
-            last,
-            out,
-        )
-
-    def empty(self, rows: int) -> np.ndarray:
-        """Make evidence of nothing, (holders, rows, T) zeros."""
-        return np.zeros((max(self.holder) + 1, rows, self.table.shape[1]))
+    of: np.ndarray
+    holder: tuple[int, ...]
 
 
-def families(structure: Structure) -> tuple[Members, ...]:
-    """List the members of every family of a structure, child by child."""
-    return tuple((*parents, child) for child, parents in enumerate(structure.parents))
+@dataclass(frozen=True)
+class Counted:
+    """Families with their counts in the training set, ``counts`` (C, cells) int32."""
+
+    families: Families
+    counts: np.ndarray
+
+    def table(self, structure: int, child: int) -> np.ndarray:
+        """Counts of one family, (C, levels of its parents in the order taken..., levels of the child)."""
+        f = self.families.of[structure, child]
+        first, last = self.families.starts[f], self.families.starts[f + 1]
+        sizes = self.families.sizes[f, : self.families.depths[f]].tolist()
+        return np.ascontiguousarray(self.counts[:, first:last]).reshape(-1, *sizes)
 
 
-def terms_of(
-    view: View,
-    structures: Sequence[Structure],
-    smoothings: Sequence[Sequence[Smoothing]],
-    counts: Mapping[Members, np.ndarray],
-) -> Terms:
-    """Smooth every family of the structures, each structure's under each of its smoothings.
+@dataclass(frozen=True)
+class Terms:
+    """What the tables of some families say for each class against the first, nats.
 
-    counts: of every family, (C, cells) int32. A family that several structures share is smoothed once.
+    ``which`` (K,): the families; ``starts`` (K,): first cell of each in ``table`` (1 + cells, T), whose first row says
+    nothing and whose first columns are in use, C - 1 for each smoothing.
     """
-    wanted = [(structure.parents, tuple(options)) for structure, options in zip(structures, smoothings, strict=True)]
-    number = {key: k for k, key in enumerate(dict.fromkeys(wanted))}
-    sharing: dict[tuple[Members, tuple[Smoothing, ...]], list[int]] = {}
-    for child in range(len(structures[0].parents)):
-        for (parents, options), k in number.items():
-            sharing.setdefault(((*parents[child], child), options), []).append(k)
-    tables = [log_tables(counts[members], view.sizes_of(members), options) for members, options in sharing]
-    return family_terms(
-        view, [members for members, _ in sharing], tables, list(sharing.values()), tuple(number[key] for key in wanted)
-    )
+
+    families: Families
+    which: np.ndarray
+    starts: np.ndarray
+    table: np.ndarray
+
+    def of(self, structure: int) -> "Terms":
+        """Narrow the terms of all families down to one structure's."""
+        which = self.families.of[structure]
+        return Terms(self.families, which, self.starts[which], self.table)
+
+    def evidence(self, codes: np.ndarray, first: int, last: int) -> np.ndarray:
+        """Sum the terms of rows ``first:last`` of codes (n, N) family by family: (last - first, T)."""
+        out = np.zeros((last - first, self.table.shape[1]))
+        one = self.families
+        fixed = (one.recode, one.plain, one.members, one.sizes, one.depths)
+        add_terms(codes, *fixed, self.which, self.starts, self.table, first, last, out)
+        return out
 
 
-def family_terms(
-    view: View,
-    families_: Sequence[Members],
-    tables: Sequence[np.ndarray],
-    users: Sequence[Sequence[int]],
-    holder: tuple[int, ...],
-) -> Terms:
-    """Lay out tables (cells, T) of families for a pass over rows; users: the holders of each family."""
-    most = max(map(len, families_))
-    sizes = [view.sizes_of(members) for members in families_]
-    width = tables[0].shape[1]
-    ends = np.cumsum([len(table) for table in tables])
-    laid = np.zeros((int(ends[-1]), -(-width // _LANES) * _LANES))
-    np.concatenate(tables, out=laid[:, :width])
-    return Terms(
-        np.array([(*members, *(0,) * (most - len(members))) for members in families_]),
-        np.array([(*own, *(1,) * (most - len(own))) for own in sizes]),
-        np.array([len(members) for members in families_]),
-        np.array([view.all_plain(members) for members in families_]),
-        np.concatenate([[0], ends[:-1]]),
-        laid,
-        np.concatenate([[0], np.cumsum([len(own) for own in users])]),
-        np.concatenate([np.array(own) for own in users]),
-        holder,
-        view.recode,
-        width,
-    )
+def padded(columns: int) -> int:
+    """Columns of evidence that are kept for so many in use: 1, 2, 4, or a multiple of 8."""
+    return next((width for width in (1, 2, 4) if columns <= width), -(-columns // 8) * 8)
 
 
-def evidence(
-    codes: np.ndarray,
-    rows: slice,
-    view: View,
-    structures: Sequence[Structure],
-    smoothings: Sequence[Sequence[Smoothing]],
-    counts: Mapping[Members, np.ndarray],
-) -> list[np.ndarray]:
-    """Sum the log table terms (nats) of a run of rows, for each structure under each of its smoothings.
+def parents_of(structures: Iterable[Structure]) -> np.ndarray:
+    """Lay parents out side by side: int64 (structures, n, most parents), padded with -1."""
+    depths = [np.fromiter(map(len, one.parents), np.int64, len(one.parents)) for one in structures]
+    most = max((int(own.max(initial=0)) for own in depths), default=0)
+    out = np.full((len(depths), len(depths[0]), most), -1)
+    for k, (one, own) in enumerate(zip(structures, depths, strict=True)):
+        out[k][np.arange(most) < own[:, None]] = np.fromiter(chain.from_iterable(one.parents), np.int64, int(own.sum()))
+    return out
 
-    codes: (n, N) as stored; every structure has as many smoothings, V. Structures that are the same but for their name
-    share one array.
 
-    Returns:
-        For each structure (rows, V * C), column ``v * C + c``; terms are added child by child.
-    """
-    terms = terms_of(view, structures, smoothings, counts)
-    out = terms.empty(rows.stop - rows.start)
-    terms.add(codes, rows.start, rows.stop, out)
-    shared = [one[:, : terms.width] for one in out]
-    return [shared[k] for k in terms.holder]
+def families_of(structures: Sequence[Structure], view: View) -> Families:
+    """List the different families of structures, child by child, each where a structure first has it."""
+    parents = parents_of(structures)
+    first = np.tile(np.arange(len(parents))[:, None], parents.shape[1])  # (structures, n): who has this family first
+    for s in range(1, len(parents)):
+        for earlier in reversed(range(s)):
+            first[s][(parents[s] == parents[earlier]).all(axis=1)] = earlier
+    new = first == np.arange(len(parents))[:, None]
+    child, structure = np.nonzero(new.T)
+    number = np.zeros_like(first)
+    number[structure, child] = np.arange(len(child))
+    of = np.take_along_axis(number, first, axis=0)
+    own = parents[structure, child]
+    depths = (own >= 0).sum(axis=1)
+    members = np.concatenate([own, np.full((len(own), 1), -1)], axis=1)
+    members[np.arange(len(own)), depths] = child
+    sizes = np.where(members >= 0, view.sizes[members], 1)
+    plain = (view.plain[members] | (members < 0)).all(axis=1)
+    starts = np.concatenate([[0], np.cumsum(sizes.prod(axis=1))])
+    parts = [tuple(row) for row in of.tolist()]
+    holder = tuple(parts.index(row) for row in parts)
+    return Families(np.maximum(members, 0), sizes, depths + 1, plain, starts, view.recode, of, holder)
+
+
+def terms_of(counted: Counted, which: np.ndarray, smoothings: Sequence[Smoothing]) -> Terms:
+    """Smooth some families (K,) in several ways."""
+    one = counted.families
+    ends = np.cumsum(one.starts[which + 1] - one.starts[which])
+    starts = 1 + np.concatenate([[0], ends[:-1]]).astype(np.int64)
+    columns = len(smoothings) * (len(counted.counts) - 1)
+    table = np.zeros((1 + int(ends[-1]), padded(columns)))
+    amounts = np.array([smoothing.amount for smoothing in smoothings])
+    laplace = np.array([smoothing.kind == "laplace" for smoothing in smoothings])
+    ratio_tables(counted.counts, one.starts, one.sizes, one.depths, which, amounts, laplace, starts, table)
+    return Terms(one, which, starts, table)

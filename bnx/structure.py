@@ -3,8 +3,6 @@
 import re
 from dataclasses import dataclass
 
-import networkx as nx
-
 from bnx.errors import StructureError
 
 __all__ = ["Structure", "words"]
@@ -28,8 +26,22 @@ class Structure:
                 raise StructureError(
                     f"attribute {child} of {self.name} has itself or one parent twice among its parents"
                 )
-        if not nx.is_directed_acyclic_graph(nx.DiGraph(self.edges)):
+        if self._has_cycle():
             raise StructureError(f"the parents in {self.name} form a cycle; no attribute may be an ancestor of itself")
+
+    def _has_cycle(self) -> bool:
+        """Take attributes away whose parents are gone, as long as there are any; what stays lies on a cycle or below."""
+        missing = [len(parents) for parents in self.parents]
+        children: list[list[int]] = [[] for _ in self.parents]
+        for parent, child in self.edges:
+            children[parent].append(child)
+        free = [attribute for attribute, number in enumerate(missing) if not number]
+        for attribute in free:
+            for child in children[attribute]:
+                missing[child] -= 1
+                if not missing[child]:
+                    free.append(child)
+        return len(free) < len(missing)
 
     @property
     def edges(self) -> tuple[tuple[int, int], ...]:

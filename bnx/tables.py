@@ -59,6 +59,10 @@ class Lines:
             yield lines, slice(done, done + rows)
             done += rows
 
+    def of_rows(self, first: int, last: int) -> np.ndarray:
+        """List the lines of the rows ``first:last``, int64."""
+        return np.flatnonzero(self.kept)[first:last] if len(self.kept) else np.arange(first, last)
+
     def numbers(self, lines: slice | None = None) -> np.ndarray:
         """List the lines of rows, int64, within a run of lines or all."""
         run = lines or slice(0, self.read)

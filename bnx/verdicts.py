@@ -3,7 +3,7 @@
 import csv
 import io
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import asdict, dataclass, fields
+from dataclasses import dataclass, fields
 from typing import Any
 
 import numpy as np
@@ -126,7 +126,7 @@ class TestResult:
 
     def to_dict(self) -> dict[str, str | float | int | bool | None]:
         """Give the fields by name, None for NaN."""
-        plain: dict[str, str | float | int | bool | None] = finite(asdict(self))
+        plain: dict[str, str | float | int | bool | None] = finite(vars(self))
         return plain
 
 

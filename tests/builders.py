@@ -14,7 +14,7 @@ from bnx.dependence import Dependence
 from bnx.domains import Domain, Schema
 from bnx.engines import LocalEngine, start_local
 from bnx.engines.local import CHUNK
-from bnx.evaluation import Evaluation
+from bnx.evaluation import Evaluation, predict
 from bnx.gating import Answer, Bounds, Gate, Learning, learn_together
 from bnx.learners import learner
 from bnx.learning import Learned, learn, make_bounds
@@ -153,8 +153,11 @@ def folds_of(evaluation: Evaluation) -> np.ndarray:
 def predicted(comparison: Comparison, s: int) -> np.ndarray:
     """Give one structure's out-of-fold probabilities (N, C) in the table's order."""
     one = comparison.evaluations[0]
-    back = np.empty_like(one.p[s])
-    back[one.engine.order] = one.p[s]
+    p = np.empty((one.engine.rows, one.engine.classes))
+    for fold, runs in enumerate(one.fold_rows):
+        predict(one, fold, s, runs, p)
+    back = np.empty_like(p)
+    back[one.engine.order] = p
     return back
 
 

@@ -143,7 +143,10 @@ def model_without(comparison: Comparison, fold: int) -> tuple[object, ...]:
     """Everything that was learnt without a fold, as plain values."""
     choice = comparison.evaluations[0].choices[(fold,)]
     learned = choice.trial.learned[(fold,)]
-    counts = {members: table.tolist() for members, table in choice.trial.counts[(fold,)].items()}
+    counts = [
+        [choice.trial.counts[(fold,)].table(s, child).tolist() for child in range(len(structure.parents))]
+        for s, structure in enumerate(learned.structures)
+    ]
     fits = [(one.temperature, one.offsets.tolist(), one.floor, one.shares.tolist()) for one in choice.calibrations]
     return (
         choice.trial.bins,
@@ -189,19 +192,21 @@ def test_every_level_and_interval_comes_from_training_rows() -> None:
 
 def test_a_sample_stands_for_all_rows_of_every_fold_and_class(monkeypatch: pytest.MonkeyPatch) -> None:
     """At least so many rows of each fold and class, no row twice, and weights that add up to the rows stood for."""
-    monkeypatch.setattr(sampling, "_ROWS_PER_CLASS", 20)
+    monkeypatch.setattr(sampling, "_ROWS_PER_CLASS_FOR_CHOICES", 20)
+    monkeypatch.setattr(sampling, "_ROWS_PER_CLASS_FOR_GAINS", 30)
     monkeypatch.setattr(sampling, "_ROWS", 150)
     frame = tilted(1500)
     found = compared(frame, "kind", folds=5, structures=("naive", "tan"))
     one = found.evaluations[0]
     sample, engine = one.sample, one.engine
     assert any("a seeded sample by fold and class" in warning for warning in found.warnings)
-    for fold, (rows,) in enumerate(one.fold_rows):
-        for c in range(3):
-            of_class = sample.target[sample.rows(fold)] == c
-            there = int((engine.target[rows] == c).sum())
-            assert of_class.sum() == max(20, -(-150 * there // 1500))
-            assert sample.weights[sample.rows(fold)][of_class].sum() == pytest.approx(there)
+    for least, drawn in ((20, sample), (30, sampling.sample_for_gains(engine, 5))):
+        for fold, (rows,) in enumerate(one.fold_rows):
+            for c in range(3):
+                of_class = drawn.target[drawn.rows(fold)] == c
+                there = int((engine.target[rows] == c).sum())
+                assert of_class.sum() == max(least, -(-150 * there // 1500))
+                assert drawn.weights[drawn.rows(fold)][of_class].sum() == pytest.approx(there)
     cells = {tuple(record) for record in np.vstack([engine.codes, engine.target]).T.tolist()}
     assert {tuple(record) for record in np.vstack([sample.codes, sample.target]).T.tolist()} <= cells
     whole = compared(frame, "kind", folds=5, structures=("naive", "tan"), smoothing="laplace:1", temperature=False)

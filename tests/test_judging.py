@@ -7,7 +7,7 @@ from functools import cache
 import numpy as np
 import pandas as pd
 import pytest
-from builders import coded_frame, compared, learnt
+from builders import coded_frame, compared, folds_of, learnt, predicted
 from scipy.stats import chi2, chi2_contingency
 from scipy.stats import t as student
 
@@ -103,14 +103,17 @@ def test_structures_that_are_the_same_stand_under_their_first_name() -> None:
 def test_the_honest_score_makes_the_same_choice_inside_every_outer_fold(run: tuple[int, int, float]) -> None:
     found = with_dependence(*run)
     one = found.evaluations[0]
+    fold_of, truth = folds_of(one), np.empty(found.rows, np.int64)
+    truth[one.engine.order] = one.engine.target
+    by_structure = [predicted(found, s) for s in range(len(found.structures))]
     total, right = 0.0, 0
-    for fold, (rows,) in enumerate(one.fold_rows):
+    for fold in range(5):
         inner = one.choices[(fold,)].losses
         picked = by_the_rule(inner, inner.mean(axis=1), one.learned((fold,)).structures)[1]
         assert found.recommendation.picks[fold] == picked
-        p, truth = one.p[picked][rows], one.engine.target[rows]
-        total -= np.log2(p[np.arange(len(truth)), truth]).sum()
-        right += int((p.argmax(axis=1) == truth).sum())
+        p, own = by_structure[picked][fold_of == fold], truth[fold_of == fold]
+        total -= np.log2(p[np.arange(len(own)), own]).sum()
+        right += int((p.argmax(axis=1) == own).sum())
     assert found.recommendation.honest.log_loss == pytest.approx(total / found.rows, abs=1e-12)
     assert found.recommendation.honest.accuracy == right / found.rows
 

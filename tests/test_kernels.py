@@ -117,7 +117,8 @@ def test_tempered_losses_equal_numpy_and_skip_rows_of_a_class_left_out() -> None
     truth, weights = random.integers(0, 3, 50), random.random(50)
     temperatures = (1.0, 0.75, 0.5)
     out = np.zeros((2, 3))
-    tempered_losses(evidence, prior, truth, weights, out)
+    relative = np.hstack([evidence[:, 3 * v + 1 : 3 * v + 3] - evidence[:, 3 * v : 3 * v + 1] for v in range(2)])
+    tempered_losses(relative, prior, truth, weights, out)
     kept = truth != 1
     for v in range(2):
         for k, t in enumerate(temperatures):
@@ -133,4 +134,6 @@ def test_calibrated_loss_equals_numpy() -> None:
     truth, weights, shares = random.integers(0, 3, 40), random.random(40), np.array([0.25, 0.25, 0.5])
     p = 0.98 * softmax(bias + 0.7 * evidence) + 0.02 * shares
     expected = -(weights * np.log(p[np.arange(40), truth])).sum()
-    assert calibrated_loss(evidence, bias, 0.7, 0.02, shares, truth, weights) == pytest.approx(expected, rel=1e-12)
+    relative = evidence[:, 1:] - evidence[:, :1]
+    found = calibrated_loss(relative, bias[None], 0.7, 0.02, shares, truth, weights)
+    assert found == pytest.approx(expected, rel=1e-12)

@@ -9,7 +9,7 @@ from hypothesis import strategies as st
 from bnx import sampling
 from bnx.counts import PairLayout
 from bnx.engines import LocalEngine
-from bnx.sampling import draw_sample
+from bnx.sampling import sample_for_gains
 
 SIZES = (3, 2, 5)
 BLOCKS, CLASSES = 6, 3
@@ -71,8 +71,8 @@ def test_the_sample_does_not_depend_on_chunks(chunk: int, monkeypatch: pytest.Mo
     random = np.random.default_rng(3)
     codes = np.array([random.integers(0, size, 2000) for size in SIZES])
     table, part = coded(codes, random.integers(0, CLASSES, 2000), SIZES, CLASSES), random.integers(0, BLOCKS, 2000)
-    first = draw_sample(started(table, part, BLOCKS), 3)
-    other = draw_sample(started(table, part, BLOCKS, 1, chunk), 3)
+    first = sample_for_gains(started(table, part, BLOCKS), 3)
+    other = sample_for_gains(started(table, part, BLOCKS, 1, chunk), 3)
     assert 300 <= len(first.target) < 2000
     for name in ("codes", "target", "weights", "starts"):
         assert np.array_equal(getattr(first, name), getattr(other, name))

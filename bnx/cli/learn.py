@@ -39,8 +39,12 @@ from bnx.errors import SettingError
 from bnx.reading import open_source
 from bnx.recipe import DEFAULT_STRUCTURES, Recipe
 from bnx.results import new_folder, write_results
+from bnx.text import count_of
 
-__all__ = ["run"]
+__all__ = ["MOST_NOTES", "run"]
+
+MOST_NOTES = 20
+"""Notes that are written to standard error; a table with thousands of columns may give cause for thousands."""
 
 
 def run(
@@ -129,7 +133,10 @@ def run(
     clock.tell("writing")
     text = json.dumps(document, ensure_ascii=False, allow_nan=False) if json_out else summary(document, output)
     typer.echo(text)
-    for note in (*comparison.warnings, *notes):
+    told_of = [*notes, *comparison.warnings]
+    for note in told_of[:MOST_NOTES]:
         say(f"note: {note}", quiet)
+    if len(told_of) > MOST_NOTES:
+        say(f"note: {count_of(len(told_of) - MOST_NOTES, 'more note')} in comparison.json", quiet)
     if timings:
         typer.echo(clock, err=True)

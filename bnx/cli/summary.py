@@ -1,7 +1,7 @@
 """The one screen that ``bnx learn`` prints."""
 
 import textwrap
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 from bnx.text import aligned, count_of, fixed, quoted, signed
@@ -10,6 +10,7 @@ __all__ = ["summary"]
 
 
 WIDTH = 120
+_FEW = 8
 
 
 def summary(document: Mapping[str, Any], output: str) -> str:
@@ -33,7 +34,21 @@ def _head(document: Mapping[str, Any]) -> list[str]:
         f"{document['source']}   {count_of(document['rows'], 'row')}   class {document['class']}: {shares}   "
         f"{count_of(len(document['attributes']), 'attribute')} ({numeric} numeric)"
     )
-    return [line, *(_wrapped(f"left out: {one['name']} ({one['reason']})") for one in document["left_out"])]
+    return [line, *map(_wrapped, _left_out(document["left_out"]))]
+
+
+def _left_out(columns: Sequence[Mapping[str, Any]]) -> list[str]:
+    """Name the columns that are left out, one a line; where they are many, a line a reason."""
+    if len(columns) <= _FEW:
+        return [f"left out: {one['name']} ({one['reason']})" for one in columns]
+    by_reason: dict[str, list[str]] = {}
+    for one in columns:
+        by_reason.setdefault(one["reason"], []).append(one["name"])
+    lines = [f"left out: {quoted(names)} ({reason})" for reason, names in by_reason.items()]
+    if len(lines) <= _FEW:
+        return lines
+    more = count_of(len(lines) - _FEW, "more reason")
+    return [*lines[:_FEW], f"left out for {more}: see comparison.json"]
 
 
 def _ranked(document: Mapping[str, Any]) -> list[Mapping[str, Any]]:
@@ -69,7 +84,7 @@ def _row(one: Mapping[str, Any], document: Mapping[str, Any]) -> tuple[str, ...]
     mark = "*" if one["name"] == document["recommended"]["name"] else " "
     return (
         f"{mark} {one['name']}",
-        str(len(one["edges"])),
+        f"{len(one['edges']):,}",
         f"{one['free_parameters']:,}",
         _bits(one["log_loss"]) + error,
         difference,
@@ -125,9 +140,9 @@ def _pairs(document: Mapping[str, Any]) -> list[str]:
     rate = {"bh": "false-discovery rate", "by": "false-discovery rate", "holm": "family-wise rate", "none": "level"}
     small = verdicts["negligible"] + verdicts["detected, but negligible"]
     line = (
-        f"{verdicts['dependent']} of {count_of(document['pairs_total'], 'pair')} depend given {document['class']} "
-        f"({rate[settings['adjust']]} {settings['alpha']:g}); {small} are negligible; "
-        f"{verdicts['not enough data']} cannot be told at this sample size"
+        f"{verdicts['dependent']:,} of {count_of(document['pairs_total'], 'pair')} depend given {document['class']} "
+        f"({rate[settings['adjust']]} {settings['alpha']:g}); {small:,} are negligible; "
+        f"{verdicts['not enough data']:,} cannot be told at this sample size"
     )
     dependent = [pair for pair in document["pairs"] if pair["verdict"] == "dependent"][:3]
     if not dependent:

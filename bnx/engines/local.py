@@ -62,11 +62,11 @@ class LocalEngine:
     @property
     def order(self) -> np.ndarray:
         """Row of the table behind each sorted row, int64 (N,), worked out anew."""
-        order = np.empty(self.rows, np.int64)
-        for part in _chunks(self.rows, self.chunk):
-            order[part] = np.argsort(self.groups[part], kind="stable")
-            order[part] += part.start
-        return order
+        return np.concatenate([self.order_of(part) + part.start for part in _chunks(self.rows, self.chunk)])
+
+    def order_of(self, chunk: slice) -> np.ndarray:
+        """Place in one chunk of the table of each of its sorted rows, int64."""
+        return np.asarray(np.argsort(self.groups[chunk], kind="stable"))
 
     def rows_of(self, first_block: int, last_block: int) -> list[slice]:
         """Sorted rows of neighbouring blocks, one run per chunk."""

@@ -34,12 +34,16 @@ _WORDS: Mapping[Verdict, str] = {
 
 @dataclass(frozen=True)
 class _Sheet:
-    """What every part of one drawing needs to know: the picture, its colours, and the sizes of its chips in points."""
+    """What every part of one drawing needs to know: the picture, its colours, and the chips that are drawn.
+
+    ``chip_width`` in points; ``most_bits``: of any chip drawn; ``chips``: how many are.
+    """
 
     picture: Picture
     colours: Mapping[str, str]
     chip_width: int
     most_bits: float
+    chips: int
 
     @property
     def target(self) -> str:
@@ -50,13 +54,14 @@ class _Sheet:
 def dot_source(picture: Picture, theme: Theme = "light", least_bits: float = 0.0, everything: bool = False) -> str:
     """Write a picture as DOT.
 
-    Arrows under ``least_bits`` bits are left out; among more than 40, all but the clear gains are too, unless
-    ``everything`` is asked for. What is left out is said under the title.
+    Arrows under ``least_bits`` bits are left out; among more than 40, all but the clear gains are too, and of more than
+    150 attributes all but those of the strongest arrows, unless ``everything`` is asked for. What is left out is said
+    under the title.
     """
-    chips = picture.chips
-    widest = max(width_of(cut(chip.name), 12) for chip in chips)
-    sheet = _Sheet(picture, PALETTES[theme], max(96, widest), max(chip.bits for chip in chips))
     shown = showing(picture, least_bits, everything)
+    chips = [picture.chips[place] for place in shown.chips]
+    widest = max(width_of(cut(chip.name), 12) for chip in chips)
+    sheet = _Sheet(picture, PALETTES[theme], max(96, widest), max(chip.bits for chip in chips), len(chips))
     few = not picture.arrows and len(chips) <= LARGEST_FAN
     body = _fan(sheet) if few else _plug_and_frame(sheet, shown)
     return "\n".join(["digraph bnx {", *_defaults(sheet, shown), *body, "}", ""])
@@ -82,7 +87,8 @@ def _defaults(sheet: _Sheet, shown: Showing) -> list[str]:
 def _heading(sheet: _Sheet, shown: Showing) -> str:
     picture, text = sheet.picture, sheet.colours["text"]
     lines: list[tuple[float, list[tuple[str, str]]]] = [(15, [(cut(picture.title, 72), text)])]
-    lines += [(11, [(cut(words, 96), text)]) for words in (picture.subtitle, shown.left_out) if words]
+    said = (picture.subtitle, shown.left_out, shown.chips_left_out)
+    lines += [(11, [(cut(words, 120), text)]) for words in said if words]
     lines += [(10, phrases) for phrases in lines_of(_legend(sheet, shown))]
     widths = [
         [width_of(words, points, 0.66 if points > 12 else 0.56) + round(points) for words, _ in phrases]
@@ -207,7 +213,7 @@ def _fan(sheet: _Sheet) -> list[str]:
 def _plug_and_frame(sheet: _Sheet, shown: Showing) -> list[str]:
     chips = sheet.picture.chips
     joined = {end for arrow in shown.arrows for end in (arrow.parent, arrow.child)}
-    lone = sorted(set(range(len(chips))) - joined, key=lambda place: (-chips[place].bits, place))
+    lone = sorted(set(shown.chips) - joined, key=lambda place: (-chips[place].bits, place))
     standing = _standing(chips, shown.arrows, joined)
     grid = rows(lone, max((len(layer) for layer in standing), default=1))
     numbered = len(shown.arrows) <= MOST_NUMBERED
@@ -246,7 +252,8 @@ def _by_column(arrows: Sequence[Arrow], standing: list[list[int]]) -> list[Arrow
 def _everyone(sheet: _Sheet) -> str:
     count = len(sheet.picture.chips)
     those = "the one attribute" if count == 1 else f"all {count:,} attributes"
-    return f"{sheet.target}: parent of {those} in the frame"
+    shown = f", of which {sheet.chips:,} are" if sheet.chips < count else ""
+    return f"{sheet.target}: parent of {those}{shown} in the frame"
 
 
 def _socket(sheet: _Sheet) -> str:

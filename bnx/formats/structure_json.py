@@ -120,7 +120,8 @@ def _classifier(document: Mapping[str, Any]) -> Classifier:
         for one in attributes
     )
     names = [domain.name for domain in domains]
-    parents = tuple(tuple(names.index(parent) for parent in one["parents"]) for one in attributes)
+    place = {name: number for number, name in enumerate(names)}
+    parents = tuple(tuple(place[parent] for parent in one["parents"]) for one in attributes)
     target = Domain(document["class"]["name"], tuple(document["class"]["levels"]))
     if len({target.name, *names}) <= len(names):
         raise ValueError("two columns have the same name")

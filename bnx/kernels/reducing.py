@@ -7,26 +7,60 @@ from numba import njit
 
 from bnx.kernels.contingency import add_table
 
-__all__ = ["Sets", "complete_tables", "reduce_table", "reduce_tile"]
+__all__ = [
+    "Blocks",
+    "Sets",
+    "blocks_of_masks",
+    "complete_tables",
+    "merge_cells",
+    "reduce_family",
+    "reduce_table",
+    "reduce_tile",
+    "sum_all",
+    "sum_set",
+]
 
 
-class Sets(NamedTuple):
-    """K training sets, as kernels read them, over B blocks and C classes.
+class Blocks(NamedTuple):
+    """What K training sets hold of B blocks.
 
     ``blocks`` (K, B), of which the first ``numbers`` (K,) count: the blocks to be added up, or, where ``missing`` (K,)
-    bool, those to be taken off all; ``starts`` (n + 1,): first level of each attribute in ``margins`` (K, C, levels)
-    int32 rows, and in ``levels`` (K, levels) int32: what a set takes it for, of ``sizes`` (K, n); ``plain`` (n,) bool:
-    in every set for itself.
+    bool, those to be taken off all.
     """
 
     blocks: np.ndarray
     numbers: np.ndarray
     missing: np.ndarray
+
+    def of(self, number: int) -> tuple[np.ndarray, int, bool]:
+        """Look up one set."""
+        return self.blocks[number], int(self.numbers[number]), bool(self.missing[number])
+
+    def take(self, chosen: np.ndarray) -> "Blocks":
+        """Keep some sets, in this order."""
+        return Blocks(self.blocks[chosen], self.numbers[chosen], self.missing[chosen])
+
+
+class Sets(NamedTuple):
+    """K training sets over C classes, as the reduction of pairs reads them.
+
+    ``starts`` (n + 1,): first level of each attribute in ``margins`` (K, C, levels) int32 rows, and in ``levels``
+    (K, levels) int32: what a set takes it for, of ``sizes`` (K, n); ``plain`` (n,) bool: in every set for itself.
+    """
+
+    blocks: Blocks
     starts: np.ndarray
     margins: np.ndarray
     levels: np.ndarray
     sizes: np.ndarray
     plain: np.ndarray
+
+
+def blocks_of_masks(masks: np.ndarray) -> Blocks:
+    """Say which blocks to add up, or to take off all where those are fewer; masks (K, B) bool: blocks of each set."""
+    missing = 2 * masks.sum(axis=1) > masks.shape[1]
+    named = masks != missing[:, None]
+    return Blocks(np.argsort(~named, axis=1, kind="stable"), named.sum(axis=1), missing)
 
 
 @njit(nogil=True, cache=True)
@@ -49,7 +83,7 @@ def reduce_tile(
     pair, the next row ``stride`` further on; left, right (P,): its attributes; numbers (P,): its place in ``out``
     (K, pairs, COLUMNS), zero on entry, and in ``marginal`` (pairs or 0, COLUMNS): the first set without the class.
     """
-    groups, classes = counts.shape[0], sets.margins.shape[1]
+    groups, classes, blocks = counts.shape[0], sets.margins.shape[1], sets.blocks
     heights = sets.starts[left[first:last] + 1] - sets.starts[left[first:last]]
     widths = sets.starts[right[first:last] + 1] - sets.starts[right[first:last]]
     most = np.int64((heights * widths).max())
@@ -64,10 +98,10 @@ def reduce_tile(
             for a in range(h):
                 for b in range(w):
                     mine[g, a * w + b] = counts[g, places[p] + a * stride + b]
-        _sum_all(mine, classes, total)
+        sum_all(mine, classes, total)
         i, j = left[p], right[p]
-        for k in range(sets.numbers.size):
-            _sum_set(mine, classes, sets.blocks[k], sets.numbers[k], sets.missing[k], total, some)
+        for k in range(blocks.numbers.size):
+            sum_set(mine, classes, blocks.blocks[k], blocks.numbers[k], blocks.missing[k], total, some)
             for c in range(classes):
                 down = sets.margins[k, c, sets.starts[i] : sets.starts[i + 1]]
                 across = sets.margins[k, c, sets.starts[j] : sets.starts[j + 1]]
@@ -83,16 +117,71 @@ def reduce_table(counts: np.ndarray, i: int, j: int, sets: Sets, out: np.ndarray
 
     out (K, COLUMNS), zero on entry; marginal (1 or 0, COLUMNS): the first set without the class.
     """
-    classes, cells = sets.margins.shape[1], counts.shape[1]
+    classes, cells, blocks = sets.margins.shape[1], counts.shape[1], sets.blocks
     height, width = sets.starts[i + 1] - sets.starts[i], sets.starts[j + 1] - sets.starts[j]
     total = np.empty((classes, cells), np.int32)
     rooms = _rooms(classes, cells, max(height, width))
-    _sum_all(counts, classes, total)
-    for k in range(sets.numbers.size):
-        _sum_set(counts, classes, sets.blocks[k], sets.numbers[k], sets.missing[k], total, rooms[0])
+    sum_all(counts, classes, total)
+    for k in range(blocks.numbers.size):
+        sum_set(counts, classes, blocks.blocks[k], blocks.numbers[k], blocks.missing[k], total, rooms[0])
         _finish(sets, k, i, j, rooms, out[k])
         if k == 0 and marginal.shape[0]:
             _marginal(sets, i, j, rooms, marginal[0])
+
+
+@njit(nogil=True, cache=True)
+def reduce_family(
+    counts: np.ndarray,
+    total: np.ndarray,
+    blocks: Blocks,
+    sizes: np.ndarray,
+    starts: np.ndarray,
+    levels: np.ndarray,
+    seen: np.ndarray,
+    plain: bool,
+    out: np.ndarray,
+) -> None:
+    """Compute the statistics of the last two members of a family given the class and the members before, in K sets.
+
+    counts (B * C, cells) int32 and total (C, cells): joint levels of ``sizes`` (m,), the last fastest; unless ``plain``,
+    set k takes level x of member m for ``levels[k, starts[m] + x]``, of ``seen`` (K, m); out (K, COLUMNS), of zeros.
+    """
+    classes, cells = total.shape
+    whole, merged = np.empty((classes, cells), np.int32), np.empty(classes * cells, np.int32)
+    members = sizes.size
+    down, across = np.empty(sizes[members - 2], np.int64), np.empty(sizes[members - 1], np.int64)
+    for k in range(blocks.numbers.size):
+        sum_set(counts, classes, blocks.blocks[k], blocks.numbers[k], blocks.missing[k], total, whole)
+        height, width = seen[k, members - 2], seen[k, members - 1]
+        if plain:
+            tables = whole.reshape(classes * cells // (height * width), height * width)
+        else:
+            own = 1
+            for size in seen[k]:
+                own *= size
+            flat = merged[: classes * own]
+            flat[:] = 0
+            merge_cells(whole, sizes, starts, levels[k], seen[k], flat.reshape(classes, own))
+            tables = flat.reshape(classes * own // (height * width), height * width)
+        add_table(tables, 0, height, width, down, across, out[k])
+
+
+@njit(nogil=True, cache=True)
+def merge_cells(
+    counts: np.ndarray, sizes: np.ndarray, starts: np.ndarray, levels: np.ndarray, seen: np.ndarray, out: np.ndarray
+) -> None:
+    """Add joint levels of ``sizes`` (m,), counts (C, cells), up to those of ``seen`` (m,), out (C, cells).
+
+    Level x of member m becomes ``levels[starts[m] + x]``.
+    """
+    for cell in range(counts.shape[1]):
+        rest, place, step = cell, 0, 1
+        for m in range(sizes.size - 1, -1, -1):
+            place += step * levels[starts[m] + rest % sizes[m]]
+            step *= seen[m]
+            rest //= sizes[m]
+        for c in range(counts.shape[0]):
+            out[c, place] += counts[c, cell]
 
 
 @njit(nogil=True, cache=True)
@@ -137,7 +226,7 @@ def _rooms(classes: int, cells: int, levels: int) -> tuple[np.ndarray, np.ndarra
 
 
 @njit(nogil=True, cache=True)
-def _sum_all(counts: np.ndarray, classes: int, total: np.ndarray) -> None:
+def sum_all(counts: np.ndarray, classes: int, total: np.ndarray) -> None:
     """Add up all blocks by class."""
     cells = counts.shape[1]
     for c in range(classes):
@@ -150,7 +239,7 @@ def _sum_all(counts: np.ndarray, classes: int, total: np.ndarray) -> None:
 
 
 @njit(nogil=True, cache=True)
-def _sum_set(
+def sum_set(
     counts: np.ndarray, classes: int, blocks: np.ndarray, number: int, missing: bool, total: np.ndarray, out: np.ndarray
 ) -> None:
     """Add up the blocks of one set by class; where fewer are left out, take those off all."""

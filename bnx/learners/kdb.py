@@ -7,6 +7,7 @@ import numpy as np
 
 from bnx.dependence import Dependence
 from bnx.gating import Bounds, Gate, Learning, Question, fixed_family_steps, settled
+from bnx.kernels.graphs import strongest_few
 from bnx.structure import Structure
 
 __all__ = ["Kdb", "relevance_order"]
@@ -34,7 +35,7 @@ class Kdb:
         """Return K parents for every attribute that has so many before it."""
         bounds.check_room(self.depths, self.name)
         parents = [bounds.parents(child) for child in range(len(dependence.relevance))]
-        for child, earlier in _earlier(dependence, bounds).items():
+        for child, earlier in _earlier(dependence, bounds, 2 * self.depths).items():
             others = [a for a in earlier if a not in parents[child]]
             parents[child] = (*parents[child], *others)[: self.depths]
         return settled(Structure(self.name, tuple(parents)))
@@ -65,7 +66,7 @@ class KdbTested:
         attributes = len(dependence.relevance)
         family = attributes * (attributes - 1) // 2
         parents = [bounds.parents(child) for child in range(attributes)]
-        open_ = {child: earlier[:_CANDIDATES] for child, earlier in _earlier(dependence, bounds).items()}
+        open_ = _earlier(dependence, bounds, _CANDIDATES)
         for _ in range(self.depths):
             questions = [
                 Question(child, candidate, parents[child])
@@ -104,15 +105,14 @@ def relevance_order(relevance: np.ndarray, bounds: Bounds) -> list[int]:
     return order
 
 
-def _earlier(dependence: Dependence, bounds: Bounds) -> dict[int, list[int]]:
-    """List, for every attribute in order, the attributes before it that it may take, by bits given the class.
+def _earlier(dependence: Dependence, bounds: Bounds, most: int) -> dict[int, list[int]]:
+    """List, for every attribute in order, the ``most`` strongest before it that it may take, by bits given the class.
 
     Most bits come first, ties by column order.
     """
     order = relevance_order(dependence.relevance, bounds)
-    rank = np.argsort(order)
-    allowed = rank[None, :] < rank[:, None]
+    barred = np.zeros(dependence.strength.shape, np.bool_)
     for a, b in bounds.forbidden:
-        allowed[a, b] = allowed[b, a] = False
-    strongest = np.argsort(np.where(allowed, -dependence.strength, np.inf), axis=1, kind="stable")
-    return {child: strongest[child, : int(allowed[child].sum())].tolist() for child in order}
+        barred[a, b] = barred[b, a] = True
+    strongest = strongest_few(dependence.strength, np.argsort(order), barred, most).tolist()
+    return {child: [other for other in strongest[child] if other >= 0] for child in order}

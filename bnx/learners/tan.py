@@ -1,6 +1,5 @@
 """Tree-augmented naive Bayes: the strongest tree over the attributes, or the strongest forest of tested pairs."""
 
-from collections.abc import Sequence
 from dataclasses import dataclass
 
 import networkx as nx
@@ -9,12 +8,11 @@ import numpy as np
 from bnx.branching import best_branching
 from bnx.dependence import Dependence
 from bnx.gating import Bounds, Gate, Learning, settled
+from bnx.kernels.graphs import strongest_forest
 from bnx.multiplicity import forest_threshold
 from bnx.structure import Structure
 
 __all__ = ["Tan"]
-
-Edge = tuple[int, int]
 
 
 @dataclass(frozen=True)
@@ -38,26 +36,21 @@ class Tan:
     def learn(self, dependence: Dependence, gate: Gate, bounds: Bounds) -> Learning:
         """Return the tree, directed away from the attribute that shares most with the class."""
         bounds.check_room(1, self.name)
-        attributes = len(dependence.relevance)
-        left, right = np.triu_indices(attributes, 1)
-        barred = np.zeros((attributes, attributes), np.bool_)
+        allowed = np.ones(dependence.strength.shape, np.bool_)
+        np.fill_diagonal(allowed, False)
         for a, b in bounds.forbidden:
-            barred[a, b] = barred[b, a] = True
-        allowed = np.asarray(~barred[left, right])
+            allowed[a, b] = allowed[b, a] = False
         if self.tested:
-            allowed = allowed & (gate.p[left, right] <= _threshold(left[allowed], right[allowed], gate, bounds))
-        left, right = left[allowed], right[allowed]
-        strongest = np.argsort(-dependence.strength[left, right], kind="stable")
-        edges = list(zip(left[strongest].tolist(), right[strongest].tolist(), strict=True))
+            allowed &= gate.p <= _threshold(allowed, gate, bounds)
         parents = (
-            _branching(edges, dependence.strength, bounds)
+            _branching(allowed, dependence.strength, bounds)
             if bounds.required
-            else _directed(_forest(edges, attributes), dependence.relevance)
+            else _directed(strongest_forest(dependence.strength, allowed), dependence.relevance)
         )
         return settled(Structure(self.name, tuple(parents)))
 
 
-def _threshold(left: np.ndarray, right: np.ndarray, gate: Gate, bounds: Bounds) -> float:
+def _threshold(allowed: np.ndarray, gate: Gate, bounds: Bounds) -> float:
     """Find the largest p that may enter among the pairs that an edge is neither forbidden to join nor sure to.
 
     Attributes that required edges join are one tree from the start, so the forest grows between such trees.
@@ -66,43 +59,36 @@ def _threshold(left: np.ndarray, right: np.ndarray, gate: Gate, bounds: Bounds) 
     for parent, child in bounds.required:
         joined.union(parent, child)
     tree = np.array([joined[attribute] for attribute in range(len(gate.p))])
+    left, right = np.nonzero(np.triu(allowed & (tree[:, None] != tree)))
     pairs = np.stack([tree[left], tree[right]], axis=1)
-    open_ = pairs[:, 0] != pairs[:, 1]
-    return forest_threshold(pairs[open_], gate.p[left, right][open_], len(gate.p), gate.alpha)
+    return forest_threshold(pairs, gate.p[left, right], len(gate.p), gate.alpha)
 
 
-def _forest(edges: Sequence[Edge], attributes: int) -> list[Edge]:
-    """Keep the edges, taken in order, that close no cycle."""
-    joined = nx.utils.UnionFind(range(attributes))
-    kept = []
-    for a, b in edges:
-        if joined[a] != joined[b]:
-            joined.union(a, b)
-            kept.append((a, b))
-            if len(kept) == attributes - 1:
-                break
-    return kept
-
-
-def _directed(forest: Sequence[Edge], relevance: np.ndarray) -> list[tuple[int, ...]]:
-    """Direct every tree away from its most relevant attribute."""
-    graph = nx.Graph(forest)
+def _directed(joined: np.ndarray, relevance: np.ndarray) -> list[tuple[int, ...]]:
+    """Direct every tree away from its most relevant attribute; joined (n,): a neighbour of each, -1 for none."""
+    neighbours: list[list[int]] = [[] for _ in relevance]
+    for node, other in enumerate(joined.tolist()):
+        if other >= 0:
+            neighbours[node].append(other)
+            neighbours[other].append(node)
     parents: list[tuple[int, ...]] = [()] * len(relevance)
     placed: set[int] = set()
     for root in np.argsort(-relevance, kind="stable").tolist():
-        if root in graph and root not in placed:
-            placed.add(root)
-            for parent, child in nx.bfs_edges(graph, root):
-                parents[child] = (parent,)
-                placed.add(child)
+        waiting = [] if root in placed else [root]
+        placed.add(root)
+        while waiting:
+            parent = waiting.pop()
+            for child in neighbours[parent]:
+                if child not in placed:
+                    placed.add(child)
+                    parents[child] = (parent,)
+                    waiting.append(child)
     return parents
 
 
-def _branching(edges: Sequence[Edge], strength: np.ndarray, bounds: Bounds) -> list[tuple[int, ...]]:
+def _branching(allowed: np.ndarray, strength: np.ndarray, bounds: Bounds) -> list[tuple[int, ...]]:
     """Find the strongest forest that holds the required edges in their direction."""
-    weights = np.full(strength.shape, -np.inf)
-    for a, b in edges:
-        weights[a, b] = weights[b, a] = strength[a, b] + 1e-12  # a pair without a single bit may still be joined
+    weights = np.where(allowed, strength + 1e-12, -np.inf)  # a pair without a single bit may still be joined
     for parent, child in bounds.required:
         weights[:, child] = -np.inf
         weights[parent, child] = 1.0 + len(strength) * float(strength.max(initial=0.0))

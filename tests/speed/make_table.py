@@ -1,6 +1,7 @@
 """The table of the benchmarks: many rows, 50 attributes of 2 to 12 levels, 3 classes, dependences planted.
 
-``python tests/speed/make_table.py TABLE.parquet [ROWS]`` writes it with text levels.
+``python tests/speed/make_table.py TABLE [ROWS]`` writes it with text levels: a CSV file where TABLE ends in ``.csv``,
+else Parquet.
 """
 
 import sys
@@ -9,7 +10,8 @@ from pathlib import Path
 
 import numpy as np
 import pyarrow as pa
-import pyarrow.parquet as pq
+import pyarrow.csv
+import pyarrow.parquet
 
 ROWS = 1_000_000
 ATTRIBUTES = 50
@@ -23,11 +25,12 @@ COPIED = 0.3
 
 @dataclass(frozen=True)
 class BenchTable:
-    """Codes (n, N) int8 of attributes with ``sizes`` (n,) levels, and the class (N,) int8."""
+    """Codes (n, N) int8 of attributes with ``sizes`` (n,) levels, and the class (N,) int8 with ``classes`` levels."""
 
     codes: np.ndarray
     sizes: np.ndarray
     target: np.ndarray
+    classes: int = len(CLASS_LEVELS)
 
 
 def make_table(rows: int = ROWS, seed: int = 20) -> BenchTable:
@@ -61,14 +64,19 @@ def _levels(rng: np.random.Generator, size: int, target: np.ndarray) -> np.ndarr
     return codes
 
 
-def write_parquet(table: BenchTable, path: Path) -> None:
-    """Write a table with text levels, the class last."""
+def write_table(table: BenchTable, path: Path) -> None:
+    """Write a table with text levels, the class last; a file that is there was written whole."""
     columns = {
         f"a{i:02d}": _texts(codes, [f"level {k}" for k in range(size)])
         for i, (codes, size) in enumerate(zip(table.codes, table.sizes.tolist(), strict=True))
     }
     columns["arrival"] = _texts(table.target, list(CLASS_LEVELS))
-    pq.write_table(pa.table(columns), path)
+    unfinished = path.with_suffix(".unfinished")
+    if path.suffix == ".csv":
+        pa.csv.write_csv(pa.table(columns), unfinished, pa.csv.WriteOptions(quoting_style="none"))
+    else:
+        pa.parquet.write_table(pa.table(columns), unfinished)
+    unfinished.replace(path)
 
 
 def _texts(codes: np.ndarray, levels: list[str]) -> pa.Array:
@@ -76,4 +84,4 @@ def _texts(codes: np.ndarray, levels: list[str]) -> pa.Array:
 
 
 if __name__ == "__main__":
-    write_parquet(make_table(int(sys.argv[2]) if len(sys.argv) > 2 else ROWS), Path(sys.argv[1]))
+    write_table(make_table(int(sys.argv[2]) if len(sys.argv) > 2 else ROWS), Path(sys.argv[1]))

@@ -1,134 +1,138 @@
-"""Run the benchmarks and write docs/speed.md: ``python tests/speed/report.py [RUNS]``."""
+"""Run the benchmarks and write docs/speed.md.
 
-import platform
+``python tests/speed/report.py`` runs all parts, ``report.py pairs command`` some of them, ``report.py page`` none: it
+writes the page from what is there. Every step stores its figures as soon as it is done, in tests/speed/measured, so
+that a run that was cut goes on with ``--resume``, which leaves out the steps that are stored.
+"""
+
+import argparse
+import json
 import sys
 import tempfile
-from collections.abc import Mapping
-from importlib.metadata import version
 from pathlib import Path
 
-from make_table import ROWS, make_table, write_parquet
-from measuring import (
-    Times,
-    bincounts,
-    cross_validations,
-    engine_of,
-    learn,
-    pair_tasks,
-    processors,
-    same_tables,
-    side_by_side,
-    staged,
-)
+sys.path.insert(0, str(Path(__file__).parents[1]))
 
-PAGE = Path(__file__).parents[2] / "docs" / "speed.md"
-PACKAGES = ("numpy", "numba", "pyarrow", "scipy", "pandas", "scikit-learn")
-BINCOUNT = "one np.bincount per pair"
-LEARN = "bnx learn, the whole command, two threads"
+import page_command
+import page_growth
+import page_large
+import page_pairs
+import part_command
+import part_growth
+import part_pairs
+import part_tall
+import part_wide
+from child import ChildError
+from growth_plot import draw_growth
+from make_tall import SizeError
+from part_pairs import TablesDifferError
+from setting import Claim, Part, Setting, claim_table
+from tablestore import TableUnavailable
+from timing import Figures, machine
 
+__all__ = ["PARTS", "main", "page", "write"]
 
-def page(runs: int) -> str:
-    """Measure everything and write the page."""
-    table = make_table()
-    if not same_tables(table, engine_of(table, 2), bincounts(table)):  # also compiles what is timed
-        raise SystemExit("the pair tables differ from those of np.bincount; nothing was written")
-    pairs = side_by_side(pair_tasks(table), runs)
-    with tempfile.TemporaryDirectory() as folder:
-        path, output = Path(folder) / "table.parquet", Path(folder) / "results"
-        write_parquet(make_table(3_000), path)
-        learn(path, output)
-        write_parquet(table, path)
-        whole = side_by_side(cross_validations(table, path, output), runs)
-        stages = staged(path)
-    return "\n".join([*_head(runs), *_pairs(pairs), *_whole(whole), *_stages(stages)])
+FAILURES = (ChildError, SizeError, TablesDifferError, TableUnavailable)  # of one step, which others may outlive
+HERE = Path(__file__).parent
+DOCS = HERE.parents[1] / "docs"
+PARTS = {
+    "pairs": Part(part_pairs.STEPS, page_pairs.page, page_pairs.claims),
+    "command": Part(part_command.STEPS, page_command.page, page_command.claims),
+    "wide": Part(part_wide.STEPS, page_large.wide_page, page_large.wide_claims),
+    "tall": Part(part_tall.STEPS, page_large.tall_page, page_large.tall_claims),
+    "growth": Part(part_growth.STEPS, page_growth.page, lambda _: []),
+}
+HEAD = """# Speed
 
+Written by `python tests/speed/report.py`, which can run part by part (`report.py pairs`); `pytest -m speed tests/speed`
+measures anew and asserts the requirements. All tables are seeded, so anyone can draw them again.
 
-def _head(runs: int) -> list[str]:
-    packages = ", ".join(f"{name} {version(name)}" for name in PACKAGES)
-    return [
-        "# Speed",
-        "",
-        "Written by `python tests/speed/report.py`; `pytest -m speed tests/speed -s` asserts the ratios.",
-        "",
-        f"Table: {ROWS:,} rows, 50 attributes of 2 to 12 levels, 3 classes, dependences planted; seeded, so anyone can "
-        "draw it again (`tests/speed/make_table.py`).",
-        f"Machine: {_processor_name()}, {processors()} processors, {platform.system()}, Python "
-        f"{platform.python_version()}, {packages}.",
-        f"Every figure is the median of {runs} runs, with the least and the most in brackets. Each round runs every "
-        "line once, one after the other, so other work on the machine falls on all of them. Compilation, which happens "
-        "once per machine, is not counted. Compare ratios; seconds belong to this machine and this hour.",
-        "",
-    ]
+Where several things are timed, each round runs every one of them once, one after the other, so that other work on the
+machine falls on all of them alike. Figures are medians over the rounds, with the least and the most in brackets.
+Compilation, which happens once per machine, is not counted. Compare ratios; seconds belong to this machine and this
+hour, and on a machine that others share they vary by some tens of percent.
+"""
 
 
-def _processor_name() -> str:
-    names = Path("/proc/cpuinfo")
-    lines = names.read_text(encoding="utf-8").splitlines() if names.exists() else []
-    found = [line.partition(":")[2].strip() for line in lines if line.startswith("model name")]
-    flags = {flag for line in lines if line.startswith("flags") for flag in line.split()}
-    known = [
-        name
-        for flag, name in (("avx2", "AVX2"), ("avx512_vpopcntdq", "AVX-512 with population count"))
-        if flag in flags
-    ]
-    return f"{(found or [platform.machine()])[0]} {platform.machine()} ({', '.join(known) or 'no wide vectors known'})"
+def measure(name: str, setting: Setting, measured: Path, resume: bool) -> list[str]:
+    """Run the steps of a part and store each one's figures when it is done; list the steps that failed."""
+    path, failed = measured / f"{name}.json", list[str]()
+    for step, task in PARTS[name].steps.items():
+        stored = load(path)
+        if resume and step in stored:
+            continue
+        print(f"{name}: {step}", file=sys.stderr, flush=True)
+        try:
+            found = task(setting)
+        except FAILURES as failure:
+            print(f"{name}: {step} failed: {failure}", file=sys.stderr, flush=True)
+            failed.append(step)
+            continue
+        stored[step] = {"machine": machine(), **found}
+        path.parent.mkdir(parents=True, exist_ok=True)
+        path.write_text(json.dumps(stored, indent=1) + "\n", encoding="utf-8")
+    return failed
 
 
-def _pairs(times: Mapping[str, Times]) -> list[str]:
-    theirs = times[BINCOUNT]
-    return [
-        "## All 1,225 pair tables given the class",
-        "",
-        *_table(times, theirs),
-        "",
-        "The tables are checked to be equal, cell by cell, before anything is timed. The rows lie in memory as small "
-        "integers for both sides; the bincounts reuse their work array and half of every cell number. bnx's time "
-        "includes making the bit planes, and in the last line also sorting the rows by class. The 40 blocks are what "
-        "`bnx learn` counts: from them it gets every fold, pair of folds and random half by addition.",
-        "",
-    ]
+def load(path: Path) -> Figures:
+    """Read the figures of a part, none where it was not measured."""
+    return dict(json.loads(path.read_text(encoding="utf-8"))) if path.exists() else {}
 
 
-def _whole(times: Mapping[str, Times]) -> list[str]:
-    return [
-        "## The whole command against one cross-validation",
-        "",
-        *_table(times, times[LEARN]),
-        "",
-        "Times as fast: against the first line. `bnx learn` starts from the Parquet file with text levels in a new "
-        "process: it reads and codes, tests all pairs, learns seven structures in 56 training sets, chooses smoothing "
-        "and calibration inside each, predicts and scores ten folds, judges every edge, draws and writes the report. "
-        "scikit-learn gets the coded integers in memory, of 8 bits, which it is faster with than with 64, and does 10 "
-        "fits of one model, 10 predictions and the log loss.",
-        "",
-    ]
+def write(measured: Path, folder: Path) -> None:
+    """Write the page and its picture from the figures that are stored."""
+    figures = {name: load(measured / f"{name}.json") for name in PARTS}
+    (folder / "pictures").mkdir(exist_ok=True)
+    draw_growth(figures["growth"], folder / page_growth.PICTURE)
+    (folder / "speed.md").write_text(page(figures), encoding="utf-8")
 
 
-def _table(times: Mapping[str, Times], against: Times) -> list[str]:
-    rows = [
-        f"| {name} | {one.seconds:.3g} [{min(one.wall):.3g}, {max(one.wall):.3g}] | {one.processor_seconds:.3g} | "
-        f"{against.seconds / one.seconds:.3g} |"
-        for name, one in times.items()
-    ]
-    return ["| what | seconds | processor seconds | times as fast |", "|---|---|---|---|", *rows]
+def page(figures: dict[str, Figures]) -> str:
+    """Write the page from the figures of every part."""
+    lines: list[str] = []
+    claims: list[Claim] = []
+    for name, part in PARTS.items():
+        claims += part.claims(figures[name])
+        lines += part.page(figures[name])
+    lines += page_growth.limit_page(figures)
+    return "\n".join([HEAD, *_machines(figures), "## What is required", "", *claim_table(claims), "", *lines])
 
 
-def _stages(stages: list[tuple[str, float, float]]) -> list[str]:
-    return [
-        "## Where the time of `bnx learn` goes",
-        "",
-        "| stage | seconds | processor seconds |",
-        "|---|---|---|",
-        *(f"| {name} | {wall:.2f} | {processor:.2f} |" for name, wall, processor in stages),
-        "",
-        "One run with a clock around each stage (`tests/speed/stages.py`), two threads; a stage's processor seconds "
-        "are those of all its threads.",
-        "",
-    ]
+def _machines(figures: dict[str, Figures]) -> list[str]:
+    """Name the machine of all steps; where it changed, which steps ran on which."""
+    names: dict[str, list[str]] = {}
+    for part, steps in figures.items():
+        for step, found in steps.items():
+            names.setdefault(found["machine"], []).append(f"{part} {step}")
+    if len(names) < 2:
+        return [*(f"Machine: {name}.\n" for name in names)]
+    return [*(f"Machine of {', '.join(steps)}: {name}.\n" for name, steps in names.items())]
+
+
+def main() -> None:
+    """Read the command line, measure and write the page."""
+    parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
+    parser.add_argument("parts", nargs="*", metavar="PART", help=f"{', '.join(PARTS)} or page; all without one")
+    parser.add_argument("--runs", type=int, default=5, help="rounds of everything that is compared")
+    parser.add_argument("--scale", type=float, default=1.0, help="share of the full number of rows")
+    parser.add_argument("--resume", action="store_true", help="leave out steps whose figures are stored")
+    parser.add_argument("--folder", type=Path, default=Path(tempfile.gettempdir()) / "bnx-speed", help="for tables")
+    chosen = parser.parse_args()
+    unknown = [name for name in chosen.parts if name not in (*PARTS, "page")]
+    if unknown:
+        parser.error(f"no part is called {unknown[0]!r}; choose from {', '.join(PARTS)}, page")
+    full = chosen.scale == 1
+    measured, written = (HERE / "measured", DOCS) if full else (chosen.folder / "measured", chosen.folder)
+    chosen.folder.mkdir(parents=True, exist_ok=True)
+    setting, failed = Setting(chosen.folder, chosen.scale, chosen.runs), list[str]()
+    for name in chosen.parts or PARTS:
+        if name != "page":
+            failed += measure(name, setting, measured, chosen.resume)
+    write(measured, written)
+    print(f"written: {written / 'speed.md'}", file=sys.stderr)
+    if failed:
+        raise SystemExit(f"failed, so not renewed: {', '.join(failed)}")
 
 
 if __name__ == "__main__":
-    text = page(int(sys.argv[1]) if len(sys.argv) > 1 else 5)
-    PAGE.parent.mkdir(exist_ok=True)
-    PAGE.write_text(text, encoding="utf-8")
-    print(text)
+    main()

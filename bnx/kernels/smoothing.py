@@ -1,0 +1,217 @@
+"""Loops from counts of families to tables of log probabilities, and to what a table says between classes."""
+
+import numpy as np
+from numba import njit
+
+from bnx.kernels.exponentials import logarithms
+
+__all__ = ["drop_parent", "ratio_tables", "smoothed_tables"]
+
+
+@njit(nogil=True, cache=True)
+def smoothed_tables(
+    counts: np.ndarray, sizes: np.ndarray, strengths: np.ndarray, laplace: np.ndarray, out: np.ndarray
+) -> None:
+    """Write the log table terms (nats) of one family under several smoothings.
+
+    counts (C, cells) int32, cells numbered by ``sizes`` = (parents in the order taken..., child);
+    strengths (V,), laplace (V,) bool: smoothing v is laplace with pseudo-count ``strengths[v]``, else back-off with
+    that many records; out (cells, V * C): column ``v * C + c``.
+    """
+    classes, cells = counts.shape
+    shares = np.empty((strengths.size * classes, cells))
+    sums, work = np.empty(sizes.size * cells), np.empty(sizes.size * cells)
+    _shares(counts, sizes, strengths, laplace, sums, work, shares)
+    for column in range(shares.shape[0]):
+        for cell in range(cells):
+            out[cell, column] = np.log(shares[column, cell])
+
+
+@njit(nogil=True, cache=True)
+def ratio_tables(
+    counts: np.ndarray,
+    starts: np.ndarray,
+    sizes: np.ndarray,
+    depths: np.ndarray,
+    which: np.ndarray,
+    strengths: np.ndarray,
+    laplace: np.ndarray,
+    out_starts: np.ndarray,
+    out: np.ndarray,
+) -> None:
+    """Write what every cell of some families says for each class against the first: ln of the ratio of probabilities.
+
+    counts (C, cells of all families) int32, family f from ``starts[f]`` on; sizes (F, M), of which the first ``depths``
+    (F,) count; which (K,): the families wanted; strengths, laplace (V,) as in ``smoothed_tables``; out (rows, at least
+    V * (C - 1)): wanted family k from row ``out_starts[k]`` on, column ``v * (C - 1) + c - 1`` for class c.
+    """
+    classes = counts.shape[0]
+    most = 0
+    for f in which:
+        most = max(most, starts[f + 1] - starts[f])
+    columns = strengths.size * classes
+    room = np.empty(columns * most)
+    sums, work = np.empty(sizes.shape[1] * most), np.empty(sizes.shape[1] * most)
+    logs = np.empty(2 * columns * most)
+    for k in range(which.size):
+        f = which[k]
+        cells = starts[f + 1] - starts[f]
+        shares = room[: columns * cells].reshape(columns, cells)
+        own = counts[:, starts[f] : starts[f + 1]]
+        _shares(own, sizes[f, : depths[f]], strengths, laplace, sums, work, shares)
+        _to_ratios(room, strengths.size, classes, cells)
+        wanted = strengths.size * (classes - 1)
+        logarithms(room[: wanted * cells], logs)
+        table = out[out_starts[k] : out_starts[k] + cells]
+        for column in range(wanted):
+            for cell in range(cells):
+                table[cell, column] = room[column * cells + cell]
+
+
+@njit(nogil=True, cache=True)
+def _to_ratios(room: np.ndarray, options: int, classes: int, cells: int) -> None:
+    """Replace the shares of each smoothing's classes by those of all but the first, each divided by the first."""
+    for v in range(options):
+        first = v * classes * cells
+        to = v * (classes - 1) * cells
+        # what is written never lies beyond what is read, and the first class of a smoothing is read before it goes
+        for cell in range(cells):
+            below = room[first + cell]
+            for c in range(1, classes):
+                room[first + c * cells + cell] /= below
+        for k in range((classes - 1) * cells):
+            room[to + k] = room[first + cells + k]
+
+
+@njit(nogil=True, cache=True)
+def _shares(
+    counts: np.ndarray,
+    sizes: np.ndarray,
+    strengths: np.ndarray,
+    laplace: np.ndarray,
+    sums: np.ndarray,
+    work: np.ndarray,
+    out: np.ndarray,
+) -> None:
+    """Smooth one family: probabilities (V * C, cells). sums, work: room for the cells once a member."""
+    classes, cells = counts.shape
+    depth = sizes.size - 1
+    levels = sizes[depth]
+    marginal = np.zeros(levels)
+    for c in range(classes):
+        x = 0
+        for cell in range(cells):
+            marginal[x] += counts[c, cell]
+            x = x + 1 if x + 1 < levels else 0
+    total = marginal.sum()
+    for x in range(levels):
+        marginal[x] = (marginal[x] + 1.0) / (total + levels)
+    plain = not laplace.all()
+    for c in range(classes):
+        first = _sum_up(counts[c], sizes, plain, sums)
+        for v in range(strengths.size):
+            shares = out[v * classes + c]
+            if laplace[v]:
+                _laplace(sums[first : first + cells], levels, strengths[v], shares)
+            else:
+                _back_off(sums, first, sizes, marginal, strengths[v], work, shares)
+
+
+@njit(nogil=True, cache=True)
+def _sum_up(counts: np.ndarray, sizes: np.ndarray, upwards: bool, sums: np.ndarray) -> int:
+    """Lay the counts (cells,) of one class out behind their sums over the last parents, fewest parents first.
+
+    Returns:
+        Where the counts themselves begin. The sums are only made ``upwards`` if somebody needs them.
+    """
+    depth = sizes.size - 1
+    levels = sizes[depth]
+    first, contexts = 0, 1
+    for d in range(depth):
+        first += contexts * levels
+        contexts *= sizes[d]
+    for cell in range(counts.size):
+        sums[first + cell] = counts[cell]
+    at = first
+    for d in range(depth if upwards else 0, 0, -1):
+        fewer = contexts // sizes[d - 1]
+        below = at - fewer * levels
+        for k in range(fewer):
+            for x in range(levels):
+                together = 0.0
+                for j in range(sizes[d - 1]):
+                    together += sums[at + (k * sizes[d - 1] + j) * levels + x]
+                sums[below + k * levels + x] = together
+        at, contexts = below, fewer
+    return first
+
+
+@njit(nogil=True, cache=True)
+def _laplace(counts: np.ndarray, levels: int, amount: float, out: np.ndarray) -> None:
+    """Add ``amount`` records to every cell and divide by the records of its context."""
+    for at in range(0, counts.size, levels):
+        rows = 0.0
+        for x in range(levels):
+            rows += counts[at + x]
+        for x in range(levels):
+            out[at + x] = (counts[at + x] + amount) / (rows + amount * levels)
+
+
+@njit(nogil=True, cache=True)
+def _back_off(
+    sums: np.ndarray,
+    first: int,
+    sizes: np.ndarray,
+    marginal: np.ndarray,
+    amount: float,
+    work: np.ndarray,
+    out: np.ndarray,
+) -> None:
+    """Add ``amount`` records spread like the table with one parent less, from the fewest parents on."""
+    depth = sizes.size - 1
+    levels = sizes[depth]
+    at, before, contexts = 0, 0, 1
+    for d in range(depth + 1):
+        siblings = sizes[d - 1] if d else 1
+        for k in range(contexts):
+            here = at + k * levels
+            above = before + (k // siblings) * levels
+            rows = 0.0
+            for x in range(levels):
+                rows += sums[here + x]
+            for x in range(levels):
+                less = work[above + x] if d else marginal[x]
+                work[here + x] = (sums[here + x] + amount * less) / (rows + amount)
+        before = at
+        at += contexts * levels
+        contexts *= sizes[d] if d < depth else 1
+    for cell in range(out.size):
+        out[cell] = work[first + cell]
+
+
+@njit(nogil=True, cache=True)
+def drop_parent(
+    counts: np.ndarray,
+    starts: np.ndarray,
+    sizes: np.ndarray,
+    depths: np.ndarray,
+    which: np.ndarray,
+    places: np.ndarray,
+    out_starts: np.ndarray,
+    out: np.ndarray,
+) -> None:
+    """Sum the counts of families over the levels of one parent each.
+
+    counts, starts, sizes, depths as in ``ratio_tables``; of family ``which[k]``, the parent in place ``places[k]`` goes;
+    out (C, cells) int32, zeros: the sums from ``out_starts[k]`` on.
+    """
+    for k in range(which.size):
+        f, place = which[k], places[k]
+        after = 1
+        for m in range(place + 1, depths[f]):
+            after *= sizes[f, m]
+        step = after * sizes[f, place]
+        for c in range(counts.shape[0]):
+            for cell in range(starts[f + 1] - starts[f]):
+                to = out_starts[k] + (cell // step) * after + cell % after
+                out[c, to] += counts[c, starts[f] + cell]

@@ -1,0 +1,253 @@
+"""Out-of-fold scores of every structure: predicted, summed up fold by fold, and joined."""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from functools import partial
+
+import numpy as np
+
+from bnx.calibrating import FEWEST_ERRORS, steepness
+from bnx.engines import LocalEngine
+from bnx.evaluation import Evaluation, predict
+from bnx.kernels import slope_sums
+from bnx.losses import Histograms, Ranking, Scores, Tally, ranking, scores_of
+
+__all__ = ["EXACT_ROWS", "SLOPE_ROWS", "Cell", "FoldScore", "StructureScore", "cells_of", "score"]
+
+EXACT_ROWS = 5_000_000  # beyond, rankings come from histograms and slopes from some rows
+SLOPE_ROWS = 200_000
+_BLOCK = 65_536  # rows predicted at a time where they are not kept
+
+
+@dataclass(frozen=True)
+class FoldScore:
+    """Scores of one structure on the rows of one fold."""
+
+    repeat: int
+    fold: int
+    rows: int
+    scores: Scores
+    slope: float | None
+
+
+@dataclass(frozen=True)
+class StructureScore:
+    """Out-of-fold scores of one structure: pooled, and fold by fold; ``error``: standard error of the log loss."""
+
+    pooled: Scores
+    error: float
+    slope: float | None
+    by_fold: tuple[FoldScore, ...]
+
+    @property
+    def fold_losses(self) -> np.ndarray:
+        """Mean log loss of each fold of each repeat, bits."""
+        return np.array([fold.scores.log_loss for fold in self.by_fold])
+
+
+@dataclass(frozen=True)
+class Cell:
+    """One fold of one repeat that holds rows.
+
+    ``runs``: its rows where those of all repeats lie one after the other, from ``shift`` on those of its own.
+    """
+
+    repeat: int
+    fold: int
+    rows: int
+    runs: tuple[slice, ...]
+    shift: int
+
+
+@dataclass(frozen=True)
+class _Run:
+    """All that is scored: ``truth`` (rows,) of all repeats; ``exact``: whether rows are kept and ranked one by one."""
+
+    evaluations: Sequence[Evaluation]
+    cells: Sequence[Cell]
+    truth: np.ndarray
+    exact: bool
+
+    @property
+    def engine(self) -> LocalEngine:
+        """The engine whose threads work."""
+        return self.evaluations[0].engine
+
+    @property
+    def classes(self) -> int:
+        """Number of classes."""
+        return self.engine.classes
+
+
+@dataclass(frozen=True)
+class _Part:
+    """What one fold adds: its sums, its rankings, and rows for the calibration slope (``p`` (rows, C), ``truth``).
+
+    ``histograms`` are empty where rows are ranked one by one.
+    """
+
+    whole: Tally
+    rankings: Sequence[Ranking]
+    histograms: Sequence[Histograms]
+    p: np.ndarray
+    truth: np.ndarray
+    runs: tuple[slice, ...]
+
+
+def cells_of(evaluations: Sequence[Evaluation]) -> list[Cell]:
+    """List the folds that hold rows, repeat by repeat."""
+    cells, shift = [], 0
+    for repeat, one in enumerate(evaluations):
+        for fold, (runs, rows) in enumerate(zip(one.fold_rows, one.rows_by_fold, strict=True)):
+            if rows:
+                moved = tuple(slice(run.start + shift, run.stop + shift) for run in runs)
+                cells.append(Cell(repeat, fold, rows, moved, shift))
+        shift += one.engine.rows
+    return cells
+
+
+def score(evaluations: Sequence[Evaluation], picks: Sequence[int]) -> tuple[list[StructureScore], Scores]:
+    """Score every structure on all out-of-fold rows, and one that changes from fold to fold.
+
+    picks: of each of ``cells_of``, the structure whose predictions count in the last. Up to 5 million rows are ranked
+    one by one; of more, areas and calibration errors come from histograms of the scores and calibration slopes from
+    200,000 rows, evenly spread, so that memory does not grow with the rows. Structures that predict alike are scored
+    once.
+    """
+    rows = sum(one.engine.rows for one in evaluations)
+    truth = [one.engine.target for one in evaluations]
+    cells = cells_of(evaluations)
+    run = _Run(evaluations, cells, truth[0] if len(truth) == 1 else np.concatenate(truth), rows <= EXACT_ROWS)
+    alike = _alike(run)
+    wanted = [alike[pick] for pick in picks]
+    several = len(set(wanted)) > 1
+    room = (rows if run.exact else 0, run.classes)
+    p, mixed = np.empty(room), np.empty(room if several else (0, 0))
+    mixed_histograms = [] if run.exact else [Histograms.empty(run.classes)]
+    wholes: dict[int, Tally] = {}
+    found: dict[int, StructureScore] = {}
+    for s in sorted(set(alike)):
+        histograms = [] if run.exact else [Histograms.empty(run.classes)]
+        parts = run.engine.map(partial(_part, run, s, p), range(len(cells)), "scoring folds")
+        found[s] = _joined(run, parts, p, histograms)
+        for k in [k for k, want in enumerate(wanted) if want == s and several]:
+            wholes[k] = parts[k].whole
+            _merge(mixed_histograms, parts[k].histograms)
+            for rows_ in cells[k].runs if run.exact else ():
+                mixed[rows_] = p[rows_]
+    if not several:
+        return [found[s] for s in alike], found[wanted[0]].pooled
+    honest = Tally.merged([wholes[k] for k in range(len(cells))])
+    return [found[s] for s in alike], scores_of(honest, _rankings(run, mixed, mixed_histograms))
+
+
+def _alike(run: _Run) -> list[int]:
+    """Find for every structure the first that has the same parents, smoothing and calibration in every fold."""
+    choices = [(run.evaluations[cell.repeat].choices[(cell.fold,)], cell.fold) for cell in run.cells]
+    first: dict[tuple[object, ...], int] = {}
+    found = []
+    for s in range(len(choices[0][0].smoothings)):
+        key = tuple(
+            (one.trial.counts[(fold,)].families.holder[s], one.smoothings[s], id(one.calibrations[s]))
+            for one, fold in choices
+        )
+        found.append(first.setdefault(key, s))
+    return found
+
+
+def _part(run: _Run, s: int, p: np.ndarray, k: int) -> _Part:
+    """Predict one fold's rows and sum them up; p (all rows, C) takes the probabilities where they are kept."""
+    cell = run.cells[k]
+    if not run.exact:
+        return _streamed(run, s, cell)
+    evaluation, whole = run.evaluations[cell.repeat], Tally.empty(run.classes)
+    own = evaluation.fold_rows[cell.fold]
+    predict(evaluation, cell.fold, s, own, p[cell.shift : cell.shift + evaluation.engine.rows])
+    for rows in cell.runs:
+        whole.add(p, rows, run.truth)
+    rankings = [ranking(p, cell.runs, run.truth, column) for column in range(run.classes + 1)]
+    return _Part(whole, rankings, [], p, run.truth, cell.runs)
+
+
+def _streamed(run: _Run, s: int, cell: Cell) -> _Part:
+    """Predict one fold's rows a few at a time, keeping nothing but sums and every so manieth row."""
+    evaluation, whole, histograms = (
+        run.evaluations[cell.repeat],
+        Tally.empty(run.classes),
+        Histograms.empty(run.classes),
+    )
+    predictor = evaluation.predictor(cell.fold, s)
+    every, seen = -(-len(run.truth) // SLOPE_ROWS), 0
+    kept, truths = [], []
+    for rows in evaluation.fold_rows[cell.fold]:
+        for first in range(rows.start, rows.stop, _BLOCK):
+            last = min(first + _BLOCK, rows.stop)
+            p, truth = predictor.probabilities(first, last), evaluation.engine.target[first:last]
+            whole.add(p, slice(0, len(p)), truth)
+            histograms.add(p, truth)
+            kept.append(p[-seen % every :: every])
+            truths.append(truth[-seen % every :: every])
+            seen += len(p)
+    sampled = np.concatenate(kept)
+    return _Part(whole, histograms.rankings(), [histograms], sampled, np.concatenate(truths), (slice(0, len(sampled)),))
+
+
+def _joined(run: _Run, parts: Sequence[_Part], p: np.ndarray, histograms: list[Histograms]) -> StructureScore:
+    """Join the folds of one structure; p (all rows, C) where they are kept, else ``histograms`` to be filled."""
+    for part in parts:
+        _merge(histograms, part.histograms)
+    whole = Tally.merged([part.whole for part in parts])
+    slopes = run.engine.map(_slope, parts)
+    by_fold = tuple(
+        FoldScore(cell.repeat, cell.fold, cell.rows, scores_of(part.whole, part.rankings), slope)
+        for cell, part, slope in zip(run.cells, parts, slopes, strict=True)
+    )
+    with np.errstate(invalid="ignore"):
+        error = whole.loss_deviation / np.sqrt(whole.rows / len(run.evaluations))
+    known = [slope for slope in slopes if slope is not None]
+    return StructureScore(
+        scores_of(whole, _rankings(run, p, histograms)), float(error), _pooled_slope(run, parts, known), by_fold
+    )
+
+
+def _merge(into: Sequence[Histograms], others: Sequence[Histograms]) -> None:
+    for one, other in zip(into, others, strict=True):
+        one.merge(other)
+
+
+def _rankings(run: _Run, p: np.ndarray, histograms: Sequence[Histograms]) -> list[Ranking]:
+    """Rank all rows, one by one or from their histograms."""
+    if histograms:
+        return histograms[0].rankings()
+    every = [slice(0, len(p))]
+    return run.engine.map(lambda column: ranking(p, every, run.truth, column), range(run.classes + 1))
+
+
+def _derivatives(part: _Part, t: float) -> np.ndarray:
+    sums = np.zeros(2)
+    for rows in part.runs:
+        slope_sums(part.p, rows.start, rows.stop, part.truth, t, sums)
+    return sums
+
+
+def _errors(part: _Part) -> int:
+    """Count the wrong labels among the rows that the slope is found from."""
+    if not part.histograms:
+        return part.whole.errors
+    return int((np.argmax(part.p, axis=1) != part.truth).sum())
+
+
+def _slope(part: _Part) -> float | None:
+    """Find the calibration slope of one fold."""
+    return None if _errors(part) < FEWEST_ERRORS else steepness(partial(_derivatives, part))
+
+
+def _pooled_slope(run: _Run, parts: Sequence[_Part], by_fold: Sequence[float]) -> float | None:
+    """Find the calibration slope of all folds, from the mean of theirs on."""
+    if sum(_errors(part) for part in parts) < FEWEST_ERRORS:
+        return None
+
+    def derivatives(t: float) -> np.ndarray:
+        return np.sum(run.engine.map(lambda part: _derivatives(part, t), parts), axis=0)
+
+    return steepness(derivatives, sum(by_fold) / len(by_fold) if by_fold else 1.0)
