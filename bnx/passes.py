@@ -61,8 +61,8 @@ def _gather_columns(source: Source, gatherers: Sequence[Gatherer], jobs: int) ->
 
 
 def _gather_blocks(source: Source, gatherers: Sequence[Gatherer], jobs: int) -> None:
-    """Read blocks of all columns ahead on one thread while others code them."""
-    bounds = np.linspace(0, len(gatherers), max(1, jobs - 1) + 1).astype(int).tolist()
+    """Read blocks of all columns ahead on one thread while others code them; coding takes longer than reading."""
+    bounds = np.linspace(0, len(gatherers), jobs + 1).astype(int).tolist()
 
     def code(block: Sequence[pa.RecordBatch], bound: tuple[int, int]) -> None:
         for place in range(*bound):
@@ -70,7 +70,7 @@ def _gather_blocks(source: Source, gatherers: Sequence[Gatherer], jobs: int) -> 
 
     with (
         ThreadPoolExecutor(1) as reader,
-        ThreadPoolExecutor(max(1, jobs - 1)) as coders,
+        ThreadPoolExecutor(jobs) as coders,
     ):
         blocks = _larger(source.blocks([gatherer.name for gatherer in gatherers]))
         ahead = reader.submit(next, blocks, None)
