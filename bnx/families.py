@@ -83,8 +83,7 @@ def family_statistics(
     def answer(item: tuple[Members, list[int]]) -> list[tuple[Request, np.ndarray]]:
         members, numbers = item
         return [
-            ((number, members), row)
-            for number, row in zip(numbers, reader.statistics(members, numbers), strict=True)
+            ((number, members), row) for number, row in zip(numbers, reader.statistics(members, numbers), strict=True)
         ]
 
     found = engine.map(answer, _askers(requests).items(), stage)
