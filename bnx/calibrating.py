@@ -61,8 +61,8 @@ class _Rows:
 class _Curve:
     """The penalised loss at one point, in nats per row.
 
-    ``value`` itself; ``gradient`` (C + 1,) and ``hessian`` by (ln t, offsets); ``fisher`` is the part of the Hessian that is always
-    positive definite, with no pivot below ``least``.
+    ``value`` itself; ``gradient`` (C + 1,) and ``hessian`` by (ln t, offsets); ``fisher`` is the part of the Hessian
+    that is always positive definite, with no pivot below ``least``.
     """
 
     value: float

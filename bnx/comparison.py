@@ -30,6 +30,7 @@ from bnx.reading import Source
 from bnx.recipe import MOST_FOLDS, Recipe
 from bnx.refining import visit_families
 from bnx.resampling import stability
+from bnx.sampling import rows_for_gains
 from bnx.structure import Structure
 from bnx.tables import LeftOut
 from bnx.text import count_of
@@ -122,7 +123,13 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
         recommendation=recommend(evaluations, results, picks, honest, recipe.structures, folds),
         held_out=held_out,
         left_out=coded.left_out,
-        warnings=(*coded.warnings, *_run_warnings(evaluations, coded, recipe, learners), *judged.notes, *not_scored),
+        warnings=(
+            *coded.warnings,
+            *_run_warnings(evaluations, coded, recipe, learners),
+            *_rating_notes(results),
+            *judged.notes,
+            *not_scored,
+        ),
         evaluations=tuple(evaluations),
         line_of_row=coded.table.rows,
     )
@@ -217,16 +224,30 @@ def _held_out(
     return tuple(scores(np.concatenate(part), rows, len(target)) for part in parts), notes
 
 
+def _rating_notes(results: Sequence[StructureScore]) -> list[str]:
+    """Say how far rankings may be off where rows are too many to be ranked one by one."""
+    rows = sum(fold.rows for fold in results[0].by_fold)
+    if rows <= EXACT_ROWS:
+        return []
+    every = [one for result in results for one in (result.pooled, *(fold.scores for fold in result.by_fold))]
+    area, error = (max(getattr(one, name) for one in every) for name in ("auc_within", "calibration_within"))
+    return [
+        f"{rows:,} rows are too many to rank one by one: areas under the curve come from histograms and are within "
+        f"{area:.1g}, calibration errors within {error:.1g}; calibration slopes are found from {SLOPE_ROWS:,} rows"
+    ]
+
+
 def _run_warnings(
     evaluations: Sequence[Evaluation], coded: Coded, recipe: Recipe, learners: Sequence[Learner]
 ) -> list[str]:
     """Say what a reader of the figures must know about how they were made."""
     notes = []
     sample, engine = evaluations[0].sample, evaluations[0].engine
-    if len(sample.target) < len(engine.order):
+    if len(sample.target) < engine.rows:
+        gained = rows_for_gains(engine, len(evaluations[0].fold_rows))
         notes.append(
-            f"choices inside training folds and gains of edges are judged on {len(sample.target):,} of "
-            f"{len(engine.order):,} rows, a seeded sample by fold and class; scores and tests use all rows"
+            f"choices inside training folds are made on {len(sample.target):,} of {engine.rows:,} rows, gains of edges "
+            f"are judged on {gained:,}, a seeded sample by fold and class; scores and tests use all rows"
         )
     if recipe.group:
         notes.append(

@@ -45,7 +45,7 @@ class LocalEngine:
     @property
     def class_counts(self) -> np.ndarray:
         """Rows of each block and class, int64 (blocks, C)."""
-        return np.diff(self.starts).reshape(self.blocks, self.classes)
+        return np.diff(self.starts).reshape(-1, self.blocks, self.classes).sum(axis=0)
 
     @property
     def rows(self) -> int:
@@ -54,11 +54,9 @@ class LocalEngine:
 
     def rows_of(self, first_block: int, last_block: int) -> list[slice]:
         """Sorted rows of neighbouring blocks, a run for each time that the groups come round."""
-        groups = self.blocks * self.classes
-        return [
-            slice(int(self.starts[turn + first_block * self.classes]), int(self.starts[turn + last_block * self.classes]))
-            for turn in range(0, len(self.starts) - 1, groups)
-        ]
+        turns = np.arange(0, len(self.starts) - 1, self.blocks * self.classes)
+        first, last = (self.starts[turns + block * self.classes].tolist() for block in (first_block, last_block))
+        return [slice(start, stop) for start, stop in zip(first, last, strict=True)]
 
     def map(self, function: Callable[[Item], Result], items: Iterable[Item], stage: str = "") -> list[Result]:
         """Apply a function to items on this engine's threads; results keep the items' order.
