@@ -123,13 +123,7 @@ def compare(source: Source, recipe: Recipe, jobs: int, progress: Progress, holdo
         recommendation=recommend(evaluations, results, picks, honest, recipe.structures, folds),
         held_out=held_out,
         left_out=coded.left_out,
-        warnings=(
-            *coded.warnings,
-            *_run_warnings(evaluations, coded, recipe, learners),
-            *_rating_notes(results),
-            *judged.notes,
-            *not_scored,
-        ),
+        warnings=(*_run_warnings(evaluations, coded, recipe, learners, results), *judged.notes, *not_scored),
         evaluations=tuple(evaluations),
         line_of_row=coded.table.rows,
     )
@@ -238,10 +232,14 @@ def _rating_notes(results: Sequence[StructureScore]) -> list[str]:
 
 
 def _run_warnings(
-    evaluations: Sequence[Evaluation], coded: Coded, recipe: Recipe, learners: Sequence[Learner]
+    evaluations: Sequence[Evaluation],
+    coded: Coded,
+    recipe: Recipe,
+    learners: Sequence[Learner],
+    results: Sequence[StructureScore],
 ) -> list[str]:
     """Say what a reader of the figures must know about how they were made."""
-    notes = []
+    notes = list(coded.warnings)
     sample, engine = evaluations[0].sample, evaluations[0].engine
     if len(sample.target) < engine.rows:
         gained = rows_for_gains(engine, len(evaluations[0].fold_rows))
@@ -266,4 +264,4 @@ def _run_warnings(
             )
     if any(member.tested for member in learners) and recipe.alpha > 0.1:
         notes.append(f"edges are tested at {recipe.alpha:g}: that share of the drawn edges may be false")
-    return notes
+    return notes + _rating_notes(results)

@@ -34,7 +34,9 @@ class Sample:
 def sample_for_choices(engine: LocalEngine, folds: int) -> Sample:
     """Take 50,000 rows in all, but at least 500 of every fold and class (all, if there are fewer).
 
-    Choosing one of a few smoothings and fitting 1 + C numbers needs no more: see docs/methods.md for what it costs.
+    Choosing one of a few smoothings and fitting 1 + C numbers needs no more. Measured on 1,000,000 and on 400,000 rows:
+    the final log loss of four structures rises by at most .00016 bit over that with eight times as many rows, a part of
+    its standard error (docs/methods.md).
     """
     return _sample(engine, folds, _ROWS_PER_CLASS_FOR_CHOICES)
 
