@@ -11,7 +11,7 @@ from bnx.choosing import Choice
 from bnx.classifier import Classifier
 from bnx.coding import Coded
 from bnx.dealing import deal
-from bnx.dependence import Pairs, measure
+from bnx.dependence import Pairs, measure, relevance_of
 from bnx.encoding import encode
 from bnx.engines import LocalEngine, start_local
 from bnx.engines.local import Progress
@@ -24,7 +24,7 @@ from bnx.gating import Bounds
 from bnx.independence import Statistics
 from bnx.judging import Against, Recommendation, against, inner_picks, recommend
 from bnx.learners import Learner, learner
-from bnx.learning import make_bounds
+from bnx.learning import Learned, make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
 from bnx.pair_judging import JudgedPairs, judge_pairs
@@ -39,6 +39,8 @@ from bnx.structure import Structure
 from bnx.tables import LeftOut, Lines
 from bnx.text import count_of
 from bnx.trainings import Training
+from bnx.wide_judging import MOST_JUDGED, judge_wide
+from bnx.wide_learning import takes_wide_road
 
 __all__ = ["Comparison", "compare"]
 
@@ -112,23 +114,15 @@ def compare(
     results, honest = score(evaluations, picks)
     baseline = recipe.structures.index(recipe.baseline)
     progress("judging pairs", 0, 0)
-    dependence, pairs = measure(first.engine, [learned.training], marginal_of_first=True)[0]
-    judged = _judged(first.engine, learned.training, pairs, recipe)
+    pairs, judged = _tested(first.engine, learned, learners, bounds, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     progress("scoring", 0, 0)
     held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
     recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
     progress("edge ledger", 0, 0)
-    ledgers = edge_ledger(
-        replace(first, engine=_under("edge ledger", first.engine)),
-        dependence.strength,
-        gains,
-        stable,
-        learners,
-        bounds,
-        recipe,
-        folds,
-    )
+    told = replace(first, engine=_under("edge ledger", first.engine))
+    strengths = pairs.strengths(edge for structure in learned.structures for edge in structure.edges)
+    ledgers = edge_ledger(told, strengths, gains, stable, learners, bounds, recipe, folds)
     progress("reading", 0, 0)
     return Comparison(
         recipe=recipe,
@@ -137,7 +131,7 @@ def compare(
         rows=len(coded.table.target),
         folds=folds,
         classifiers=classifiers,
-        relevance=dependence.relevance,
+        relevance=relevance_of(first.engine, learned.training),
         pairs=pairs,
         judged=judged,
         results=tuple(results),
@@ -155,6 +149,18 @@ def compare(
         evaluations=tuple(evaluations),
         lines=coded.table.lines,
     )
+
+
+def _tested(
+    engine: LocalEngine, learned: Learned, learners: Sequence[Learner], bounds: Bounds, recipe: Recipe
+) -> tuple[Pairs, JudgedPairs]:
+    """Test all pairs on all rows, and judge them; in very wide tables the strongest, and those that are drawn."""
+    training = learned.training
+    if takes_wide_road(engine, [training], learners, bounds, recipe):
+        drawn = [edge for structure in learned.structures for edge in structure.edges]
+        return judge_wide(engine, training, drawn, MOST_JUDGED, recipe)
+    pairs = measure(engine, [training], marginal_of_first=True)[0][1]
+    return pairs, _judged(engine, training, pairs, recipe)
 
 
 def _judged(engine: LocalEngine, training: Training, pairs: Pairs, recipe: Recipe) -> JudgedPairs:

@@ -1,6 +1,6 @@
 """How much attributes share with the class, and with each other given the class, in every training set."""
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from functools import partial
 from typing import Any
@@ -51,6 +51,14 @@ class Pairs:
         square = np.zeros((attributes, attributes))
         square[self.left, self.right] = square[self.right, self.left] = values
         return square
+
+    def strengths(self, edges: Iterable[tuple[int, int]]) -> dict[tuple[int, int], float]:
+        """Look up the bits per record of some of these pairs, either end first."""
+        wanted = sorted(set(edges))
+        ends = np.array(wanted, np.int64).reshape(-1, 2)
+        number = (self.left << 32) | self.right
+        places = np.searchsorted(number, (ends.min(axis=1, initial=2**31) << 32) | ends.max(axis=1, initial=0))
+        return dict(zip(wanted, _bits(self.statistics[places]).tolist(), strict=True))
 
 
 def relevance_of(engine: LocalEngine, training: Training) -> np.ndarray:

@@ -85,8 +85,9 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
                 "picks": [names[number] for number in advice.picks],
             },
             "pairs": [result.to_dict() for result in pair_results(comparison)],
-            "pairs_total": len(comparison.pairs.left),
-            "pairs_rejected": int(judged.rejected.sum()),
+            "pairs_total": comparison.judged.family,
+            "pairs_rejected": comparison.judged.rejected,
+            "pairs_judged": len(comparison.pairs.left),
             "pairs_verdicts": {word: int((judged.verdict == code).sum()) for code, word in enumerate(VERDICTS)},
             "pairs_outcomes": {
                 word: int((comparison.judged.outcome == code).sum()) for code, word in enumerate(OUTCOMES)
@@ -101,13 +102,13 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
 
 def structure_entry(comparison: Comparison, s: int) -> dict[str, Any]:
     """Describe one structure and its scores."""
-    classifier, result = comparison.classifiers[s], comparison.results[s]
+    classifier, result, names = comparison.classifiers[s], comparison.results[s], comparison.names
     levels = classifier.target.levels
     calibration = classifier.calibration
     entry = {
         "name": classifier.structure.name,
         "words": words(classifier.structure.name),
-        "edges": [edge_entry(comparison.names, edge) for edge in comparison.edges[s]],
+        "edges": [edge_entry(names, edge) for edge in comparison.edges[s]],
         "free_parameters": classifier.free_parameters,
         **result.pooled.to_dict(levels),
         "log_loss_se": result.error,

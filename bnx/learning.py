@@ -19,6 +19,7 @@ from bnx.refining import Rigour, gated, visit_families
 from bnx.structure import Structure
 from bnx.text import nearest
 from bnx.trainings import Training
+from bnx.wide_learning import learn_wide, takes_wide_road
 
 __all__ = ["Learned", "ask_tests", "learn", "make_bounds", "rigour_of"]
 
@@ -71,6 +72,10 @@ def learn(
     Pairs are measured if some structure looks at them, and tested if some structure tests; as many training sets at a
     time as a fixed amount of memory takes.
     """
+    if takes_wide_road(engine, trainings, learners, bounds, recipe):
+        rigour = rigour_of(learners, len(bounds.names), recipe)
+        found = learn_wide(engine, trainings, learners, bounds, recipe, rigour)
+        return [Learned(training, structures) for training, structures in zip(trainings, found, strict=True)]
     step = sets_at_a_time(len(bounds.names)) if any(member.looks_at_pairs for member in learners) else len(trainings)
     return [
         learned

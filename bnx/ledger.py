@@ -1,7 +1,7 @@
 """The edge ledger: the evidence on every edge that a structure draws."""
 
 import math
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -43,7 +43,7 @@ class EdgeEvidence:
 
 def edge_ledger(
     evaluation: Evaluation,
-    strength: np.ndarray,
+    strength: Mapping[tuple[int, int], float],
     gains: Sequence[Gains],
     stable: Stability,
     learners: Sequence[Learner],
@@ -53,7 +53,7 @@ def edge_ledger(
 ) -> list[tuple[EdgeEvidence, ...]]:
     """Gather the evidence on every edge of every final structure.
 
-    strength (n, n): bits shared given the class; gains: one mapping per fold of every repeat.
+    strength: (parent, child) -> bits shared given the class; gains: one mapping per fold of every repeat.
     """
     learned = evaluation.learned(())
     ledger = []
@@ -82,7 +82,7 @@ def edge_ledger(
                 EdgeEvidence(
                     parent=question.candidate,
                     child=question.child,
-                    bits=float(strength[question.candidate, question.child]),
+                    bits=strength[question.candidate, question.child],
                     gain=float(by_fold.mean()),
                     gain_se=float(spread),
                     chosen_in=chosen,

@@ -31,7 +31,7 @@ def adjusted(p: np.ndarray, method: str) -> np.ndarray:
     if method == "holm":
         rising = np.maximum.accumulate(rising * (m - np.arange(m)))
     elif method != "none":
-        steps = rising * (m * _dependence_factor(m, method)) / np.arange(1, m + 1)
+        steps = rising * (m * dependence_factor(m, method)) / np.arange(1, m + 1)
         rising = np.minimum.accumulate(steps[::-1])[::-1]
     result[order] = np.minimum(rising, 1.0)
     return result
@@ -55,7 +55,7 @@ def threshold(p: np.ndarray, method: str, alpha: float) -> float:
     rejected = int(np.count_nonzero(adjusted(p, method) <= alpha))
     if method == "holm":
         return alpha / max(1, m - rejected)
-    return alpha * max(1, rejected) / (m * _dependence_factor(m, method))
+    return alpha * max(1, rejected) / (m * dependence_factor(m, method))
 
 
 def testable(least: np.ndarray, alpha: float, method: str) -> np.ndarray:
@@ -107,7 +107,7 @@ def forest_threshold(pairs: np.ndarray, p: np.ndarray, n: int, alpha: float) -> 
     return float(forest_level(first, second, p[order], n, m, alpha))
 
 
-def _dependence_factor(m: int, method: str) -> float:
+def dependence_factor(m: int, method: str) -> float:
     """Return the sum of 1/k up to m for ``by``, 1 otherwise."""
     return float(np.sum(1.0 / np.arange(1, m + 1))) if method == "by" else 1.0
 

@@ -13,14 +13,16 @@ from bnx.refining import Visit, pooled, reported, visit_arrays, with_chance
 from bnx.text import count_of, quoted
 from bnx.verdicts import Judgement, TestResult, judge, outcomes, results
 
-__all__ = ["JudgedPairs", "judge_pairs"]
+__all__ = ["JudgedPairs", "judge_pairs", "judged_pairs"]
 
 
 @dataclass(frozen=True)
 class JudgedPairs:
     """P judged pairs: statistics and what the tests say, given the class and without it, and ``outcome`` (P,), which
     indexes OUTCOMES; ``without_blanks`` (P,): bits of the records in which neither cell is blank, less what chance
-    alone would show, of rejected pairs that have blank cells, else NaN. ``notes``: what a reader must know.
+    alone would show, of rejected pairs that have blank cells, else NaN. ``family``: how many pairs were tested as one
+    family given the class, and ``rejected``: how many of them; more than are judged in very wide tables. ``notes``:
+    what a reader must know.
     """
 
     statistics: Statistics
@@ -29,6 +31,8 @@ class JudgedPairs:
     without: Judgement
     outcome: np.ndarray
     without_blanks: np.ndarray
+    family: int
+    rejected: int
     notes: tuple[str, ...]
 
     def results(self, names: Sequence[tuple[str, str]], order: np.ndarray) -> list[TestResult]:
@@ -57,16 +61,30 @@ def judge_pairs(
 
     given, undrawn = judged(visit, statistics)
     without, undrawn_without = judged(pooled(visit), marginal)
+    return judged_pairs(visit, statistics, given, marginal, without, pairs, recipe.test, undrawn + undrawn_without)
+
+
+def judged_pairs(
+    visit: Visit,
+    statistics: Statistics,
+    given: Judgement,
+    marginal: Statistics,
+    without: Judgement,
+    pairs: Sequence[tuple[Domain, Domain]],
+    test: str,
+    undrawn: int,
+) -> JudgedPairs:
+    """Put together what both families say of P pairs; undrawn: tests near a threshold that keep p by moments."""
     seen = _without_blanks(visit, pairs, given.rejected)
     carried = np.flatnonzero(seen < statistics.bits_corrected / 2)
     notes = (
-        *_forced(given, recipe.test),
-        *_undrawn(undrawn + undrawn_without),
+        *_forced(given, test),
+        *_undrawn(undrawn),
         *_carried([(pairs[k][0].name, pairs[k][1].name) for k in carried.tolist()]),
     )
-    return JudgedPairs(
-        statistics, given, marginal, without, outcomes(statistics, given, marginal, without), seen, notes
-    )
+    outcome = outcomes(statistics, given, marginal, without)
+    rejected = int(given.rejected.sum())
+    return JudgedPairs(statistics, given, marginal, without, outcome, seen, len(pairs), rejected, notes)
 
 
 def _without_blanks(visit: Visit, pairs: Sequence[tuple[Domain, Domain]], rejected: np.ndarray) -> np.ndarray:

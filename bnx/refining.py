@@ -21,6 +21,8 @@ from bnx.multiplicity import testable, threshold
 from bnx.trainings import Training
 
 __all__ = [
+    "FAR_ABOVE",
+    "FAR_BELOW",
     "MOST_DRAWN",
     "Report",
     "Rigour",
@@ -38,7 +40,7 @@ MOST_DRAWN = 2000  # pairs whose p is drawn at random; those nearest the thresho
 # p by moments is in doubt from a thirtieth of the threshold to a hundred times as much. On tables of some hundred
 # records it is within a factor of 3 even at 1e-5; on tables of a dozen it can be some thirty times too small, or, where
 # a margin holds one or two records, hundreds of times too large. Far above the threshold a few draws suffice.
-_FAR_BELOW, _FAR_ABOVE = 30.0, 100.0
+FAR_BELOW, FAR_ABOVE = 30.0, 100.0
 _DRAWS = 200.0  # tables drawn at most, times the threshold
 _MOST_TABLES = 2_000_000
 _EFFORT = 1.5e10  # records dealt and cells filled, some nanoseconds each
@@ -158,7 +160,7 @@ def reported(visit: Visit, stats: Statistics, test: str, adjust: str, alpha: flo
     if test == "monte-carlo":
         wanted = chosen = np.flatnonzero(~np.isnan(tested.p) & ~tested.is_exact)
     else:
-        near = (tested.p <= _FAR_ABOVE * at) & (tested.p * _FAR_BELOW >= at)
+        near = (tested.p <= FAR_ABOVE * at) & (tested.p * FAR_BELOW >= at)
         wanted = np.flatnonzero(tested.by_moments & near)
         chosen = np.sort(_affordable(stats, tested, wanted, at))
     return Report(_drawn(visit, stats, tested, chosen, at, seed), len(wanted) - len(chosen))

@@ -90,6 +90,7 @@ class Report:
     pairs: tuple[PairRow, ...]
     pairs_total: str
     pairs_rejected: str
+    pairs_judged: str
     heat: HeatMap | None
     attributes: tuple[AttributeRow, ...]
     left_out: tuple[tuple[str, str], ...]
@@ -154,6 +155,7 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         pairs=tuple(pair_row(pair, drawn) for pair in _strongest_pairs(document)),
         pairs_total=f"{document['pairs_total']:,}",
         pairs_rejected=f"{document['pairs_rejected']:,}",
+        pairs_judged=f"{document['pairs_judged']:,}",
         heat=heat_map(document, drawn),
         attributes=attribute_rows(document["schema"], ATTRIBUTES_ON_PAGE),
         left_out=tuple((one["name"], one["reason"]) for one in document["left_out"][:LINES_ON_PAGE]),

@@ -159,6 +159,7 @@ def write_results(
     if all_pairs:
         every = [result.to_dict() for result in pair_results(comparison, everything=True)]
         pq.write_table(pa.Table.from_pylist(every), folder / "pairs.parquet")
+        notes += _not_all_written(document)
     if predictions:
         write_predictions(comparison, folder / "predictions.parquet")
     return document, notes
@@ -215,3 +216,9 @@ def json_text(document: Mapping[str, Any]) -> str:
         for key, value in document.items()
     ]
     return "{\n" + ",\n".join(lines) + "\n}\n"
+
+
+def _not_all_written(document: dict[str, Any]) -> list[str]:
+    """Say which pairs are not among all pairs."""
+    judged, total = document["pairs_judged"], document["pairs_total"]
+    return [f"--all-pairs: pairs.parquet holds the {judged:,} pairs judged of {total:,}"] if judged < total else []

@@ -13,7 +13,18 @@ from bnx.intervals import bits_interval, bits_upper, detectable_bits
 from bnx.multiplicity import adjusted, threshold
 from bnx.plain import finite
 
-__all__ = ["OUTCOMES", "PAIR_KEYS", "VERDICTS", "Judgement", "TestResult", "judge", "outcomes", "pairs_csv", "results"]
+__all__ = [
+    "OUTCOMES",
+    "PAIR_KEYS",
+    "VERDICTS",
+    "Judgement",
+    "TestResult",
+    "judge",
+    "judged_by",
+    "outcomes",
+    "pairs_csv",
+    "results",
+]
 
 VERDICTS = ("negligible", "detected, but negligible", "dependent", "not enough data")
 
@@ -58,8 +69,13 @@ def judge(
     Raises:
         SettingError: the adjustment is not known.
     """
-    corrected = adjusted(tested.p, adjust)
-    at = threshold(tested.p, adjust, alpha)
+    return judged_by(stats, tested, adjusted(tested.p, adjust), threshold(tested.p, adjust, alpha), alpha, negligible)
+
+
+def judged_by(
+    stats: Statistics, tested: Tested, corrected: np.ndarray, at: float, alpha: float, negligible: float
+) -> Judgement:
+    """Give P tested pairs verdicts, whatever family they are from: adjusted p (P,), and the p it was judged by."""
     rejected = corrected <= alpha
     low, high = bits_interval(stats)
     upper = bits_upper(stats)

@@ -139,8 +139,10 @@ def _pairs(document: Mapping[str, Any]) -> list[str]:
     settings = document["settings"]
     rate = {"bh": "false-discovery rate", "by": "false-discovery rate", "holm": "family-wise rate", "none": "level"}
     small = verdicts["negligible"] + verdicts["detected, but negligible"]
+    judged, total = document["pairs_judged"], document["pairs_total"]
+    which = count_of(judged, "pair") + (f" judged ({total:,} tested)" if judged < total else "")
     line = (
-        f"{verdicts['dependent']:,} of {count_of(document['pairs_total'], 'pair')} depend given {document['class']} "
+        f"{verdicts['dependent']:,} of {which} depend given {document['class']} "
         f"({rate[settings['adjust']]} {settings['alpha']:g}); {small:,} are negligible; "
         f"{verdicts['not enough data']:,} cannot be told at this sample size"
     )

@@ -1,0 +1,133 @@
+"""What the information and the test of a pair of binary attributes can be at most, for many pairs at once.
+
+With D = records x excess of the joint count over its expectation, X2 of a 2 x 2 table is D^2 q q', and its information
+in nats x records is at most X2, and at most X2 / 2 - D^3 a a' + D^4 b b', where q, a, b belong to one attribute each:
+for f(x) = (1 + x) ln(1 + x) - x <= x^2 / 2 - x^3 / 6 + x^4 / 3 when x >= -1 (the series), summed over cells with
+x = +-D / (records E) and weight E. All in single precision, with room for its rounding.
+"""
+
+import numpy as np
+
+from bnx.kernels.compiling import part
+
+__all__ = ["MARGIN", "PARTS", "UNEVEN", "A", "B", "Q", "screen", "uneven_of", "variance_line"]
+
+MARGIN, Q, A, B, UNEVEN = range(5)  # parts of an attribute: records, and what the formulas above take of them
+PARTS = 5
+
+_ROUNDING = np.float32(1.0 + 1e-4)  # of single precision, many times over
+_SLIGHT = np.float32(1e-4)
+
+
+@part
+def screen(
+    counts: np.ndarray,
+    known: np.ndarray,
+    records: np.ndarray,
+    i: int,
+    first: int,
+    width: int,
+    low: np.ndarray,
+    low_tested: np.ndarray,
+    tested: bool,
+    limits: np.ndarray,
+    work: np.ndarray,
+    hits: np.ndarray,
+) -> int:
+    """Mark the pairs of a tile that the quick bounds cannot rule out, in ``hits`` (width,), and count them.
+
+    counts (C, cells): joint counts; known (C, PARTS, n); records (C,); low, low_tested (n,) float32: weakest links to
+    the root, in both forests; limits: least excess of X2, and least square of it in variances, of a pair that could
+    pass the test.
+    """
+    most, excess, variance, mark = work[0, :width], work[1, :width], work[2, :width], hits[:width]
+    most[:] = 0
+    for c in range(records.size):
+        if known[c, Q, i] > 0:
+            _add_most(counts[c], known[c], first, records[c], i, most)
+    found = 0
+    own, others = low[i], low[first : first + width]
+    for k in range(width):
+        bound = most[k] * _ROUNDING
+        mark[k] = (bound > 0) & (bound >= min(own, others[k]))
+    if tested:
+        excess[:] = 0
+        variance[:] = 0
+        for c in range(records.size):
+            if known[c, Q, i] > 0:
+                _add_excess(counts[c], known[c], first, records[c], i, excess)
+                _add_variance(known[c], first, records[c], i, variance)
+        far, wide = np.float32(limits[0]), np.float32(limits[1])
+        own, others = low_tested[i], low_tested[first : first + width]
+        for k in range(width):
+            over = excess[k] * _ROUNDING + _SLIGHT
+            far_out = (over >= far) | ((over > 0) & (over * over >= wide * variance[k]))
+            mark[k] |= far_out & (most[k] * _ROUNDING >= min(own, others[k]))
+    for k in range(width):
+        found += mark[k]
+    return found
+
+
+@part
+def _add_most(counts: np.ndarray, known: np.ndarray, first: int, records: float, i: int, most: np.ndarray) -> None:
+    """Add what the information of one class can be at most, nats x records; known (PARTS, n) of this class."""
+    margin, own = known[MARGIN, first : first + most.size], np.float64(known[MARGIN, i])
+    q, a, b = (
+        known[Q, first : first + most.size],
+        known[A, first : first + most.size],
+        known[B, first : first + most.size],
+    )
+    scale = np.float32(1.0 / records)
+    q_own, a_own, b_own = (
+        known[Q, i] * scale,
+        known[A, i] * scale / np.float32(6.0),
+        known[B, i] * scale / np.float32(3.0),
+    )
+    half = np.float32(0.5)
+    for k in range(most.size):
+        d = np.float32(np.float64(counts[k]) * records - own * np.float64(margin[k]))
+        square = d * d
+        x2 = square * (q[k] * q_own)
+        near = half * x2 - (square * d) * (a[k] * a_own) + (square * square) * (b[k] * b_own)
+        most[k] += min(x2, near)
+
+
+@part
+def _add_excess(counts: np.ndarray, known: np.ndarray, first: int, records: float, i: int, excess: np.ndarray) -> None:
+    """Add X2 of one class less its mean under independence."""
+    margin, own = known[MARGIN, first : first + excess.size], np.float64(known[MARGIN, i])
+    q, q_own = known[Q, first : first + excess.size], known[Q, i] * np.float32(1.0 / records)
+    mean = np.float32(records / (records - 1.0)) if q_own > 0 else np.float32(0.0)
+    for k in range(excess.size):
+        d = np.float32(np.float64(counts[k]) * records - own * np.float64(margin[k]))
+        excess[k] += d * d * (q[k] * q_own) - (mean if q[k] > 0 else np.float32(0.0))
+
+
+@part
+def _add_variance(known: np.ndarray, first: int, records: float, i: int, variance: np.ndarray) -> None:
+    """Add the variance of X2 of one class under independence, which is linear in UNEVEN of the other attribute."""
+    if records < 3 or known[Q, i] == 0:
+        return
+    q, uneven = known[Q, first : first + variance.size], known[UNEVEN, first : first + variance.size]
+    flat, slope = variance_line(records, np.float64(known[UNEVEN, i]))
+    start, rise = np.float32(flat - 1e-6 * (abs(flat) + abs(slope))), np.float32(slope)
+    for k in range(variance.size):
+        variance[k] += (start if q[k] > 0 else np.float32(0.0)) + rise * uneven[k]
+
+
+@part
+def variance_line(records: float, uneven: float) -> tuple[float, float]:
+    """Write the variance of X2 as flat + slope x UNEVEN of the other attribute.
+
+    Source: Dawson 1954, as in ``contingency``.
+    """
+    both = (records - 2.0) / (records - 1.0)
+    even = 2.0 * records / (records - 3.0) * (both - uneven) if records > 3 else 0.0
+    return even * both, records * records / (records - 1.0) * uneven - even
+
+
+@part
+def uneven_of(margin: float, records: float) -> float:
+    """Compute UNEVEN of an attribute with so many of the records."""
+    gap = records - 2.0 * margin
+    return gap * gap / (margin * (records - margin) * (records - 2.0))
