@@ -33,8 +33,8 @@ from bnx.reading import Source
 from bnx.recipe import Recipe
 from bnx.refining import visit_families
 from bnx.resampling import stability
-from bnx.storing import MEMORY, Store
 from bnx.sampling import rows_for_gains
+from bnx.storing import MEMORY, Store
 from bnx.structure import Structure
 from bnx.tables import LeftOut, Lines
 from bnx.text import count_of
