@@ -45,7 +45,7 @@ class LocalEngine:
     @property
     def class_counts(self) -> np.ndarray:
         """Rows of each block and class, int64 (blocks, C)."""
-        return np.diff(self.starts).reshape(-1, self.blocks, self.classes).sum(axis=0)
+        return np.asarray(np.diff(self.starts).reshape(-1, self.blocks, self.classes).sum(axis=0))
 
     @property
     def rows(self) -> int:
