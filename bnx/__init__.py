@@ -11,7 +11,8 @@ __version__ = "0.1.0"
 # The noqa: pathlib refuses a user without a home, os.path does not.
 _CACHE = Path(os.environ.get("XDG_CACHE_HOME") or Path(os.path.expanduser("~"), ".cache"))  # noqa: PTH111
 _SOURCES = sorted((Path(__file__).parent / "kernels").glob("*.py"))
-_STATE = hashlib.blake2b(
+__kernels__ = hashlib.blake2b(
     repr([(path.name, path.read_bytes()) for path in _SOURCES]).encode(), digest_size=8
 ).hexdigest()
-os.environ.setdefault("NUMBA_CACHE_DIR", str(_CACHE / "bnx" / f"kernels-{_STATE}"))
+"""Which state of the compiled loops' sources this is."""
+os.environ.setdefault("NUMBA_CACHE_DIR", str(_CACHE / "bnx" / f"kernels-{__kernels__}"))

@@ -61,8 +61,8 @@ class _Rows:
 class _Curve:
     """The penalised loss at one point, in nats per row.
 
-    ``value`` itself; ``gradient`` (C + 1,) and ``hessian`` by (ln t, offsets); ``fisher`` is the part of the Hessian that is always
-    positive definite, with no pivot below ``least``.
+    ``value`` itself; ``gradient`` (C + 1,) and ``hessian`` by (ln t, offsets); ``fisher`` is the part of the Hessian
+    that is always positive definite, with no pivot below ``least``.
     """
 
     value: float
@@ -168,7 +168,7 @@ def slope(p: np.ndarray, truth: np.ndarray) -> float | None:
 def steepness(derivatives: Callable[[float], np.ndarray], start: float = 1.0) -> float:
     """Find the power of least log loss from the first and second derivative (2,) of the loss by it.
 
-    Newton's steps within a shrinking interval. A step of one ten-thousandth squares the error.
+    Newton's steps within a shrinking interval. What is left after a step of Newton's is about its square.
     """
     low, high, t = 0.0, _STEEPEST_SLOPE, start
     for _ in range(_STEPS):
@@ -178,7 +178,7 @@ def steepness(derivatives: Callable[[float], np.ndarray], start: float = 1.0) ->
         following = newton if low < newton < high else (low + high) / 2
         apart = abs(following - t) / max(t, 1e-3)
         t = following
-        if apart <= (1e-4 if following == newton else 1e-9):
+        if apart <= (1e-5 if following == newton else 1e-9):
             break
     return float(t)
 

@@ -4,8 +4,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from bnx.cells import Cells
-from bnx.discretising import fine_cuts
+from bnx.cells import Cells, stretches
+from bnx.discretising import fine_cuts, ordered_cuts
 from bnx.kernels import count_cells
 from bnx.storing import Store
 from bnx.tables import Lines
@@ -60,8 +60,8 @@ class Tally:
     """What a column holds: distinct values with their rows, and the count of blank cells.
 
     ``values`` (m,) float64 ascending, or for a text column the raw codes (m,) that occur; ``counts`` (m,) int64 rows.
-    Of a numeric column of more than 256 values, only ``distinct`` (how many), ``whole`` (whether all are whole numbers)
-    and the fine ``cuts`` are kept.
+    Of measurements of more than 256 values, only ``distinct`` (how many), ``whole`` (whether all are whole numbers) and
+    the fine ``cuts`` are kept.
     """
 
     values: np.ndarray
@@ -105,16 +105,27 @@ def _tally_numbers(column: NumberColumn, lines: Lines, store: Store) -> Tally:
         values, place = np.unique(column.values[used], return_inverse=True)
         counts = np.zeros(len(values), np.int64)
         np.add.at(counts, place, rows[used])
-        blanks = int(rows[0])
-    else:
-        ordered = _in_order(column.cells, lines, store)
-        blanks = lines.count - len(ordered)
-        starts = np.flatnonzero(np.concatenate([[True], ordered[1:] != ordered[:-1]])[: len(ordered)])
-        values = ordered[starts]
-        counts = np.diff(starts, append=len(ordered))
-    cuts = fine_cuts(values, counts, FINE_LEVELS - (blanks > 0))
-    whole, few = bool(np.all(values == np.floor(values))), slice(len(values) if len(values) <= FINE_LEVELS else 0)
-    return Tally(values[few], counts[few], blanks, len(values), int(counts.sum()), whole, cuts)
+        cuts = fine_cuts(values, counts, FINE_LEVELS - (rows[0] > 0))
+        whole = bool(np.all(values == np.floor(values)))
+        return Tally(values, counts, int(rows[0]), len(values), int(counts.sum()), whole, cuts)
+    ordered = _in_order(column.cells, lines, store)
+    blanks = lines.count - len(ordered)
+    distinct, whole = _described(ordered)
+    cuts = ordered_cuts(ordered, distinct, FINE_LEVELS - (blanks > 0))
+    few = ordered[: len(ordered) if distinct <= FINE_LEVELS else 0]
+    values, counts = np.unique(few, return_counts=True)
+    return Tally(values, counts, blanks, distinct, len(ordered), whole, cuts)
+
+
+def _described(ordered: np.ndarray) -> tuple[int, bool]:
+    """Count the different numbers among sorted ones, and tell whether all are whole."""
+    distinct, whole = int(len(ordered) > 0), True
+    for rows in stretches(len(ordered)):
+        own = ordered[rows]
+        distinct += int(np.count_nonzero(own[1:] != own[:-1]))
+        distinct += int(rows.start > 0 and own[0] != ordered[rows.start - 1])
+        whole = whole and bool(np.all(own == np.floor(own)))
+    return distinct, whole
 
 
 def _in_order(cells: Cells, lines: Lines, store: Store) -> np.ndarray:

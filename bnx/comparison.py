@@ -28,11 +28,12 @@ from bnx.learning import Learned, make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
 from bnx.pair_judging import JudgedPairs, judge_pairs
-from bnx.rating import StructureScore, score
+from bnx.rating import EXACT_ROWS, SLOPE_ROWS, StructureScore, score
 from bnx.reading import Source
 from bnx.recipe import Recipe
 from bnx.refining import visit_families
 from bnx.resampling import stability
+from bnx.sampling import rows_for_gains
 from bnx.storing import MEMORY, Store
 from bnx.structure import Structure
 from bnx.tables import LeftOut, Lines
@@ -139,7 +140,12 @@ def compare(
         recommendation=recommendation,
         held_out=held_out,
         left_out=coded.left_out,
-        warnings=(*_run_warnings(evaluations, coded, recipe, learners), *judged.notes, *not_scored, *coded.warnings),
+        warnings=(
+            *_run_warnings(evaluations, coded, recipe, learners, results),
+            *judged.notes,
+            *not_scored,
+            *coded.warnings,
+        ),
         evaluations=tuple(evaluations),
         lines=coded.table.lines,
     )
@@ -243,16 +249,34 @@ def _held_out(
     return tuple(scores(np.concatenate(part), rows, len(target)) for part in parts), notes
 
 
+def _rating_notes(results: Sequence[StructureScore]) -> list[str]:
+    """Say how far rankings may be off where rows are too many to be ranked one by one."""
+    rows = sum(fold.rows for fold in results[0].by_fold)
+    if rows <= EXACT_ROWS:
+        return []
+    every = [one for result in results for one in (result.pooled, *(fold.scores for fold in result.by_fold))]
+    area, error = (max(getattr(one, name) for one in every) for name in ("auc_within", "calibration_within"))
+    return [
+        f"{rows:,} rows are too many to rank one by one: areas under the curve come from histograms and are within "
+        f"{area:.1g}, calibration errors within {error:.1g}; calibration slopes are found from {SLOPE_ROWS:,} rows"
+    ]
+
+
 def _run_warnings(
-    evaluations: Sequence[Evaluation], coded: Coded, recipe: Recipe, learners: Sequence[Learner]
+    evaluations: Sequence[Evaluation],
+    coded: Coded,
+    recipe: Recipe,
+    learners: Sequence[Learner],
+    results: Sequence[StructureScore],
 ) -> list[str]:
     """Say what a reader of the figures must know about how they were made."""
-    notes = []
+    notes: list[str] = []
     sample, engine = evaluations[0].sample, evaluations[0].engine
     if len(sample.target) < engine.rows:
+        gained = rows_for_gains(engine, len(evaluations[0].fold_rows))
         notes.append(
-            f"choices inside training folds and gains of edges are judged on {len(sample.target):,} of "
-            f"{engine.rows:,} rows, a seeded sample by fold and class; scores and tests use all rows"
+            f"choices inside training folds are made on {len(sample.target):,} of {engine.rows:,} rows, gains of edges "
+            f"are judged on {gained:,}, a seeded sample by fold and class; scores and tests use all rows"
         )
     if recipe.group:
         notes.append(
@@ -271,4 +295,4 @@ def _run_warnings(
             )
     if any(member.tested for member in learners) and recipe.alpha > 0.1:
         notes.append(f"edges are tested at {recipe.alpha:g}: that share of the drawn edges may be false")
-    return notes
+    return notes + _rating_notes(results)

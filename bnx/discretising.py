@@ -4,12 +4,14 @@ A cut is a position: position k cuts after bin k, so bins 0 to k fall on its lef
 """
 
 import re
+from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 
 from bnx.errors import SettingError
 
-__all__ = ["fine_cuts", "frequency_cuts", "mdl_cuts", "parse_bins", "width_cuts"]
+__all__ = ["fine_cuts", "frequency_cuts", "mdl_cuts", "ordered_cuts", "parse_bins", "width_cuts"]
 
 TIE = 1e-12  # bits; entropies nearer than this are equal, and the lowest cut wins on every machine
 
@@ -30,6 +32,56 @@ def parse_bins(text: str) -> tuple[str, int]:
     return found[1], int(found[2])
 
 
+@dataclass(frozen=True)
+class _Weighted:
+    """Distinct sorted values; ``totals`` (m + 1,): how many rows come before each, and all rows."""
+
+    values: np.ndarray
+    totals: np.ndarray
+
+    @property
+    def rows(self) -> int:
+        return int(self.totals[-1])
+
+    def at(self, rows: np.ndarray) -> np.ndarray:
+        return np.asarray(self.values[np.searchsorted(self.totals, rows, side="right") - 1])
+
+    def first(self, row: int) -> int:
+        return int(self.totals[np.searchsorted(self.totals, row, side="right") - 1])
+
+    def after(self, row: int) -> int:
+        return int(self.totals[np.searchsorted(self.totals, row, side="right")])
+
+    def inside(self, first: int, last: int) -> np.ndarray:
+        return self.totals[(self.totals > first) & (self.totals < last)]
+
+
+@dataclass(frozen=True)
+class _Ordered:
+    """Sorted values, one per row (N,)."""
+
+    values: np.ndarray
+
+    @property
+    def rows(self) -> int:
+        return len(self.values)
+
+    def at(self, rows: np.ndarray) -> np.ndarray:
+        return np.asarray(self.values[rows])
+
+    def first(self, row: int) -> int:
+        return int(np.searchsorted(self.values, self.values[row], side="left")) if row < self.rows else self.rows
+
+    def after(self, row: int) -> int:
+        return int(np.searchsorted(self.values, self.values[row], side="right"))
+
+    def inside(self, first: int, last: int) -> np.ndarray:
+        return np.flatnonzero(self.values[first + 1 : last] != self.values[first : last - 1]) + first + 1
+
+
+_Runs = _Weighted | _Ordered  # runs of rows of one value: rows from ``first`` to ``after``, their edges ``inside``
+
+
 def fine_cuts(values: np.ndarray, weights: np.ndarray, limit: int) -> np.ndarray:
     """Cut distinct sorted values (m,), carried by ``weights`` (m,) rows each, into min(m, ``limit``) bins.
 
@@ -38,40 +90,54 @@ def fine_cuts(values: np.ndarray, weights: np.ndarray, limit: int) -> np.ndarray
     has a bin of its own and does not cost the others theirs; bins still free then halve the heaviest of several values.
     Returns cuts (bins - 1,), halfway between neighbours.
     """
-    m = len(values)
-    if m <= limit:
-        starts = np.arange(m + 1)
+    totals = np.concatenate([[0], np.cumsum(weights, dtype=np.int64)])
+    return _cut(_Weighted(values, totals), len(values), limit)
+
+
+def ordered_cuts(ordered: np.ndarray, distinct: int, limit: int) -> np.ndarray:
+    """Cut sorted values, one per row (N,), as ``fine_cuts`` does, without listing the ``distinct`` ones."""
+    return _cut(_Ordered(ordered), distinct, limit)
+
+
+def _cut(runs: _Runs, distinct: int, limit: int) -> np.ndarray:
+    """Choose the first row of every bin, and cut before it."""
+    if distinct <= limit:
+        starts = runs.inside(0, runs.rows)
     else:
-        totals = np.concatenate([[0], np.cumsum(weights)])
-        low, high = 1, int(totals[-1])
+        low, high = 1, runs.rows
         while low < high:
             middle = (low + high) // 2
-            if len(_filled(totals, middle, limit)) > limit:
+            if len(_filled(runs, middle, limit)) > limit:
                 low = middle + 1
             else:
                 high = middle
-        starts = _halved(totals, np.append(_filled(totals, low, limit), m), limit)
-    return _halfway(values[starts[1:-1] - 1], values[starts[1:-1]])
+        starts = _halved(runs, [*_filled(runs, low, limit), runs.rows], limit)[1:-1]
+    return _halfway(runs.at(starts - 1), runs.at(starts))
 
 
-def _filled(totals: np.ndarray, most: int, limit: int) -> np.ndarray:
-    """Fill bins from the left with up to ``most`` rows; the first value of each, given up after ``limit`` + 1 bins."""
+def _filled(runs: _Runs, most: int, limit: int) -> list[int]:
+    """Fill bins from the left with up to ``most`` rows; the first row of each, given up after ``limit`` + 1 bins."""
     starts: list[int] = []
     start = 0
-    while start < len(totals) - 1 and len(starts) <= limit:
+    while start < runs.rows and len(starts) <= limit:
         starts.append(start)
-        start = max(int(np.searchsorted(totals, totals[start] + most, side="right")) - 1, start + 1)
-    return np.array(starts, dtype=np.int64)
+        following = runs.first(min(start + most, runs.rows))
+        start = following if following > start else runs.after(start)
+    return starts
 
 
-def _halved(totals: np.ndarray, starts: np.ndarray, limit: int) -> np.ndarray:
+def _halved(runs: _Runs, bounds: list[int], limit: int) -> np.ndarray:
     """Halve the heaviest bin of several values again and again until there are ``limit`` bins."""
+    starts = np.array(bounds, dtype=np.int64)
+    several = np.array([runs.after(start) < stop for start, stop in pairwise(bounds)])
     while len(starts) <= limit:
-        rows = np.where(np.diff(starts) > 1, np.diff(totals[starts]), 0)
-        heaviest = int(rows.argmax())
-        inside = np.arange(starts[heaviest] + 1, starts[heaviest + 1])
-        uneven = np.abs(2 * totals[inside] - totals[starts[heaviest]] - totals[starts[heaviest + 1]])
-        starts = np.insert(starts, heaviest + 1, inside[uneven.argmin()])
+        heaviest = int(np.where(several, np.diff(starts), 0).argmax())
+        first, last = int(starts[heaviest]), int(starts[heaviest + 1])
+        inside = runs.inside(first, last)
+        middle = int(inside[np.abs(2 * inside - first - last).argmin()])
+        starts = np.insert(starts, heaviest + 1, middle)
+        parts = [runs.after(first) < middle, runs.after(middle) < last]
+        several = np.concatenate([several[:heaviest], parts, several[heaviest + 1 :]])
     return starts
 
 

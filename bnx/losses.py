@@ -6,7 +6,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from bnx.errors import DataError
-from bnx.kernels import HISTOGRAM_BINS, add_to_histograms, pack_scores, rank_sums, sort_whole, tally
+from bnx.kernels import add_to_histograms, pack_scores, rank_sums, sort_whole, tally
+from bnx.kernels.ranking import HISTOGRAM_BINS, HISTOGRAM_END, HISTOGRAM_WIDTH
 
 __all__ = ["Histograms", "Ranking", "Scores", "Tally", "log_losses", "ranking", "scores", "scores_of"]
 
@@ -151,8 +152,8 @@ class Histograms:
         """Rank by every class and by the largest probability, the scores of a bin counting as equal.
 
         Pairs within a bin are counted one half each, so an area is off by at most half of them. Rows are in another bin
-        of calibration than by their own score only where a bin here reaches over the border of two there, and a row
-        that moves changes what it leaves and what it enters by at most 1.
+        of calibration than by their own score only where a bin here reaches over the border of two there; a row that
+        moves changes what it leaves and what it enters by its score if it is a miss, else by what that lacks to 1.
         """
         return [_binned_ranking(*one) for one in zip(self.counts, self.sums, strict=True)]
 
@@ -171,7 +172,11 @@ def _binned_ranking(counts: np.ndarray, sums: np.ndarray) -> Ranking:
     doubled = sum(int(h) * (2 * int(b) + int(m)) for h, b, m in zip(hits, below, misses, strict=True))
     within = sum(int(h) * int(m) for h, m in zip(hits, misses, strict=True)) / (2 * pairs) if pairs else 0.0
     area = doubled / (2 * pairs) if pairs else None
-    moved = float(2 * (misses + hits)[moving].sum() / rows)
+    mean = scores_ / (misses + hits)
+    low, wide = mean < 0.5, 1 + HISTOGRAM_WIDTH
+    highest = np.where(low, mean * wide, 1 - (1 - mean) / wide) + HISTOGRAM_END
+    lack = np.where(low, 1 - mean / wide, (1 - mean) * wide) + HISTOGRAM_END
+    moved = float(2 * (misses * highest + hits * lack)[moving].sum() / rows)
     return Ranking(area, float(np.abs(apart).sum() / rows), within, moved)
 
 

@@ -42,27 +42,30 @@ def _gather_columns(source: Source, gatherers: Sequence[Gatherer], jobs: int) ->
     groups = max(min(jobs, len(gatherers)), -(-len(gatherers) // _COLUMNS))
     bounds = np.linspace(0, len(gatherers), groups + 1).astype(int).tolist()
 
-    def read(bound: tuple[int, int]) -> Failure | None:
+    failures: list[Failure] = []
+
+    def read(bound: tuple[int, int]) -> None:
         first, last = bound
         rows, place = 0, -1
         try:
             for block in source.blocks([gatherer.name for gatherer in gatherers[first:last]]):
+                if any(failure[0] < rows for failure in failures):
+                    return
                 for place, array in enumerate(block.columns, start=first):
                     gatherers[place].add(array)
                 rows, place = rows + block.num_rows, -1
         except DataError as error:
-            return rows, place, error
-        return None
+            failures.append((rows, place, error))
 
     with ThreadPoolExecutor(jobs) as pool:
-        failures = [failure for failure in pool.map(read, pairwise(bounds)) if failure]
+        list(pool.map(read, pairwise(bounds)))
     if failures:
         raise min(failures, key=lambda failure: failure[:2])[2]
 
 
 def _gather_blocks(source: Source, gatherers: Sequence[Gatherer], jobs: int) -> None:
-    """Read blocks of all columns ahead on one thread while others code them."""
-    bounds = np.linspace(0, len(gatherers), max(1, jobs - 1) + 1).astype(int).tolist()
+    """Read blocks of all columns ahead on one thread while others code them; coding takes longer than reading."""
+    bounds = np.linspace(0, len(gatherers), jobs + 1).astype(int).tolist()
 
     def code(block: Sequence[pa.RecordBatch], bound: tuple[int, int]) -> None:
         for place in range(*bound):
@@ -70,7 +73,7 @@ def _gather_blocks(source: Source, gatherers: Sequence[Gatherer], jobs: int) -> 
 
     with (
         ThreadPoolExecutor(1) as reader,
-        ThreadPoolExecutor(max(1, jobs - 1)) as coders,
+        ThreadPoolExecutor(jobs) as coders,
     ):
         blocks = _larger(source.blocks([gatherer.name for gatherer in gatherers]))
         ahead = reader.submit(next, blocks, None)

@@ -121,13 +121,14 @@ def profile(coded: Coded) -> Profile:
     """Describe a coded table."""
     table = coded.table
     target = table.schema.target
-    classes = np.bincount(table.target, minlength=len(target))
+    counts = [
+        _crosstab(codes, table.target, len(domain), len(target))
+        for domain, codes in zip(table.schema.attributes, table.codes, strict=True)
+    ]
+    classes = counts[0].sum(axis=0)
     rows = len(table.target)
     bits = _entropy(classes)
-    columns = tuple(
-        _column(domain, _crosstab(codes, table.target, len(domain), len(target)), bits)
-        for domain, codes in zip(table.schema.attributes, table.codes, strict=True)
-    )
+    columns = tuple(_column(domain, own, bits) for domain, own in zip(table.schema.attributes, counts, strict=True))
     return Profile(
         rows,
         coded.rows_read,

@@ -248,6 +248,6 @@ def _pooled_slope(run: _Run, parts: Sequence[_Part], by_fold: Sequence[float]) -
         return None
 
     def derivatives(t: float) -> np.ndarray:
-        return np.sum(run.engine.map(lambda part: _derivatives(part, t), parts), axis=0)
+        return np.asarray(np.sum(run.engine.map(lambda part: _derivatives(part, t), parts), axis=0))
 
     return steepness(derivatives, sum(by_fold) / len(by_fold) if by_fold else 1.0)

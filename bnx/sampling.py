@@ -6,7 +6,7 @@ import numpy as np
 
 from bnx.engines import LocalEngine
 
-__all__ = ["Sample", "sample_for_choices", "sample_for_gains"]
+__all__ = ["Sample", "rows_for_gains", "sample_for_choices", "sample_for_gains"]
 
 _ROWS = 50_000
 _ROWS_PER_CLASS_FOR_CHOICES = 500
@@ -34,7 +34,9 @@ class Sample:
 def sample_for_choices(engine: LocalEngine, folds: int) -> Sample:
     """Take 50,000 rows in all, but at least 500 of every fold and class (all, if there are fewer).
 
-    Choosing one of a few smoothings and fitting 1 + C numbers needs no more: see docs/methods.md for what it costs.
+    Choosing one of a few smoothings and fitting 1 + C numbers needs no more. Measured on 1,000,000 and on 400,000 rows:
+    the final log loss of four structures rises by at most .00016 bit over that with eight times as many rows, a part of
+    its standard error (docs/methods.md).
     """
     return _sample(engine, folds, _ROWS_PER_CLASS_FOR_CHOICES)
 
@@ -47,11 +49,22 @@ def sample_for_gains(engine: LocalEngine, folds: int) -> Sample:
     return _sample(engine, folds, _ROWS_PER_CLASS_FOR_GAINS)
 
 
+def rows_for_gains(engine: LocalEngine, folds: int) -> int:
+    """Count the rows that gains are judged on."""
+    return int(_wanted(engine, folds, _ROWS_PER_CLASS_FOR_GAINS).sum())
+
+
+def _wanted(engine: LocalEngine, folds: int, per_class: int) -> np.ndarray:
+    """Rows to take of each fold and class, (folds, C)."""
+    rows = engine.class_counts.reshape(folds, -1, engine.classes).sum(axis=1)
+    return np.asarray(np.minimum(rows, np.maximum(per_class, -(-_ROWS * rows // engine.rows))))
+
+
 def _sample(engine: LocalEngine, folds: int, per_class: int) -> Sample:
     """Spread the rows evenly over each fold and class; what lies in which fold was decided by the seed."""
     groups = np.arange(engine.blocks * engine.classes).reshape(folds, -1, engine.classes)
     chunks = (len(engine.starts) - 1) // groups.size
-    everything = int(engine.starts[-1])
+    every_wanted = _wanted(engine, folds, per_class)
     chosen, weights, starts = [], [], [0]
     for fold in range(folds):
         taken = 0
@@ -59,15 +72,15 @@ def _sample(engine: LocalEngine, folds: int, per_class: int) -> Sample:
             segments = (groups[fold, :, c][:, None] + np.arange(chunks) * groups.size).ravel()
             ends = np.cumsum(engine.starts[segments + 1] - engine.starts[segments])
             rows = int(ends[-1])
-            wanted = min(rows, max(per_class, -(-_ROWS * rows // everything)))
+            wanted = int(every_wanted[fold, c])
             places = (np.arange(wanted) * rows) // max(wanted, 1)
             held = np.searchsorted(ends, places, side="right")
             chosen.append(engine.starts[segments[held] + 1] - ends[held] + places)
             weights.append(np.full(wanted, rows / max(wanted, 1)))
             taken += wanted
         starts.append(starts[-1] + taken)
-    if starts[-1] == everything and chunks == 1:  # all rows, which lie fold by fold already
+    if starts[-1] == engine.rows and chunks == 1:  # all rows, which lie fold by fold already
         first = engine.starts[groups[:, 0, 0]]
-        return Sample(engine.codes, engine.target, np.ones(everything), np.append(first, everything))
+        return Sample(engine.codes, engine.target, np.ones(engine.rows), np.append(first, engine.rows))
     index = np.concatenate(chosen)
     return Sample(np.take(engine.codes, index, axis=1), engine.target[index], np.concatenate(weights), np.array(starts))

@@ -1,5 +1,6 @@
 """Where arrays with a value per row live: in memory, or in files that are mapped into it."""
 
+import errno
 import mmap
 import os
 import shutil
@@ -19,6 +20,8 @@ __all__ = ["MEMORY", "Memory", "Spill", "Store"]
 
 _PAGE = mmap.PAGESIZE
 _FIRST, _LONGEST = 1 << 24, 1 << 30  # bytes of a file: each is twice as long as the one before, up to a limit
+
+_NO_ROOM = {errno.ENOSPC, errno.EDQUOT, errno.EFBIG}
 
 
 class Memory:
@@ -93,13 +96,20 @@ class Spill:
                     file.truncate(size)
                 one = mmap.mmap(file.fileno(), size)
         except OSError as error:
-            free = shutil.disk_usage(self._folder).free
-            raise DataError(
-                f"--spill {self._folder}: a file of {size:,} bytes cannot be made there, where {free:,} are free "
-                f"({error.strerror or error}); give a folder with more room"
-            ) from None
+            raise self._refusal(error, size) from None
         self._maps[np.frombuffer(one, np.uint8).__array_interface__["data"][0]] = one
         return one
+
+    def _refusal(self, error: OSError, size: int) -> DataError:
+        """Say why no file can be made."""
+        why = error.strerror or str(error)
+        if error.errno not in _NO_ROOM:
+            return DataError(f"--spill {self._folder}: no file can be made there ({why}); give another folder")
+        free = shutil.disk_usage(self._folder).free
+        return DataError(
+            f"--spill {self._folder}: a file of {size:,} bytes cannot be made there, where {free:,} are free ({why}); "
+            "give a folder with more room"
+        )
 
 
 Store = Memory | Spill

@@ -2,6 +2,7 @@
 
 import tempfile
 from collections.abc import Sequence
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -72,6 +73,17 @@ def started(
     """Start a local engine; all rows in one block unless their blocks are given."""
     places = np.zeros(len(table.target), np.int64) if blocks_of_rows is None else blocks_of_rows
     return start_local(table, places, blocks, jobs, silent, chunk=chunk)
+
+
+def in_turns(engine: LocalEngine, turns: int) -> LocalEngine:
+    """Sort the rows of an engine by group only within so many stretches of the table, as large tables are."""
+    groups = engine.blocks * engine.classes
+    group = np.repeat(np.arange(len(engine.starts) - 1) % groups, np.diff(engine.starts))
+    stretch = engine.order * turns // max(engine.rows, 1)
+    new = np.lexsort((engine.order, group, stretch))
+    starts = np.searchsorted(stretch[new] * groups + group[new], np.arange(turns * groups + 1))
+    codes = np.ascontiguousarray(engine.codes[:, new])
+    return replace(engine, codes=codes, target=engine.target[new], order=engine.order[new], starts=starts)
 
 
 def whole(engine: LocalEngine, table: CodedTable, bins: str = "mdl", max_levels: int = 50) -> Training:

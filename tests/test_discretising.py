@@ -7,7 +7,7 @@ from hypothesis import strategies as st
 from hypothesis.extra import numpy as hnp
 from sklearn.datasets import load_iris
 
-from bnx.discretising import fine_cuts, frequency_cuts, mdl_cuts, parse_bins, width_cuts
+from bnx.discretising import fine_cuts, frequency_cuts, mdl_cuts, ordered_cuts, parse_bins, width_cuts
 from bnx.errors import SettingError
 
 
@@ -185,3 +185,11 @@ def test_parse_bins_refuses(text):
     assert str(caught.value) == (
         f"--bins: {text!r} cannot be used; give auto, mdl, frequency:K or width:K with K from 2 to 255"
     )
+
+
+@settings(deadline=None, max_examples=150)
+@given(hnp.arrays(np.int64, st.integers(0, 60), elements=st.integers(1, 40)), st.integers(1, 20))
+def test_sorted_rows_are_cut_like_distinct_values_with_weights(weights, limit):
+    values = np.arange(len(weights)) ** 2 / 3
+    cuts = ordered_cuts(np.repeat(values, weights), len(values), limit)
+    assert cuts.tolist() == fine_cuts(values, weights, limit).tolist()

@@ -66,7 +66,7 @@ def test_segments_hold_the_rows_of_one_group_in_one_chunk(
 
 @pytest.mark.parametrize("chunk", [1, 7, 64, 999, 5000])
 def test_the_sample_does_not_depend_on_chunks(chunk: int, monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(sampling, "_ROWS_PER_CLASS", 20)
+    monkeypatch.setattr(sampling, "_ROWS_PER_CLASS_FOR_GAINS", 20)
     monkeypatch.setattr(sampling, "_ROWS", 300)
     random = np.random.default_rng(3)
     codes = np.array([random.integers(0, size, 2000) for size in SIZES])

@@ -104,6 +104,18 @@ def test_too_little_room_is_one_sentence(tmp_path: Path, monkeypatch: pytest.Mon
         store.empty((1 << 27,), np.uint8)
 
 
+def test_a_folder_that_takes_no_files_is_refused(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    def closed(**_: object) -> None:
+        raise PermissionError(errno.EACCES, os.strerror(errno.EACCES))
+
+    monkeypatch.setattr(storing.tempfile, "TemporaryFile", closed)
+    with pytest.raises(DataError) as caught:
+        Spill(str(tmp_path))
+    assert (
+        str(caught.value) == f"--spill {tmp_path}: no file can be made there (Permission denied); give another folder"
+    )
+
+
 @st.composite
 def batches(draw: st.DrawFn) -> list[np.ndarray]:
     """Draw blocks of values of any length."""

@@ -1,10 +1,12 @@
 """Tall tables are read, coded, dealt and sorted a stretch at a time: stretches, threads and files change nothing."""
 
+import tracemalloc
 from collections import Counter
 from pathlib import Path
 
 import numpy as np
 import pytest
+from builders import coded as coded_rows
 from builders import silent
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
@@ -134,6 +136,25 @@ def test_sorting_in_place_gives_the_same_engine(tmp_path: Path, spill: bool, chu
         for name in ("codes", "target", "order", "starts", "class_counts"):
             assert np.array_equal(getattr(plain, name), getattr(one, name)), name
         assert all(np.array_equal(a, b) for a, b in zip(plain.margins, one.margins, strict=True))
+
+
+def test_dealing_and_sorting_in_place_need_little_memory() -> None:
+    """Blocks, groups and classes are a byte a row each; everything else is a chunk or a stretch."""
+    random = np.random.default_rng(4)
+    rows, chunk = 1_000_000, 1 << 14
+    table = coded_rows(random.integers(0, 5, (16, rows)), random.integers(0, 3, rows))
+    coded = Coded(table, (), (), {}, rows, 0)
+    deal(coded, Recipe("class"), 0, 1, MEMORY)  # compiles, or loads what is compiled
+    tracemalloc.start()
+    try:
+        blocks, _ = deal(coded, Recipe("class"), 0, 1, MEMORY)
+        engine = start_local(table, blocks, 40, 1, silent, chunk=chunk, in_place=True)
+        peak = tracemalloc.get_traced_memory()[1]
+    finally:
+        tracemalloc.stop()
+    assert engine.rows == rows
+    assert 3 * rows <= peak < 3 * rows + 7_000_000
+    assert peak < table.codes.nbytes / 1.5
 
 
 @pytest.mark.parametrize("jobs", [1, 2, 3, 5])

@@ -90,7 +90,8 @@ def main() -> None:
         _refuse(_usage(error), error.exit_code)
     except MemoryError:
         _refuse(
-            "the memory of this machine is not enough for this table; give fewer columns, --structures or --given, or --spill DIR"
+            "the memory of this machine is not enough for this table; "
+            "give fewer columns, --structures or --given, or --spill DIR"
         )
     except OSError as error:
         if not error.filename:

@@ -5,6 +5,7 @@ from typing import Annotated
 
 import typer
 
+from bnx.cli.ahead import compiling_ahead
 from bnx.cli.progress import told
 from bnx.cli.shared import (
     Adjust,
@@ -122,7 +123,7 @@ def run(
     if fold_column and folds is not None:
         raise SettingError(f"--folds {folds} cannot be used with --fold-column, whose folds are given; drop one")
     number = threads(jobs)
-    with new_folder(output, overwrite) as folder, told(quiet) as news:
+    with new_folder(output, overwrite) as folder, compiling_ahead(number) as ahead, told(quiet) as news:
         clock = Clock(news)
         clock.tell("reading")
         source = open_source(data)
@@ -130,6 +131,8 @@ def run(
         held_out = None if holdout is None else open_source(holdout)
         comparison = compare(source, recipe, number, clock.tell, held_out, store_of(spill))
         document, notes = write_results(comparison, folder, number, predictions, all_pairs, clock.tell)
+        if ahead:
+            clock.tell("compiling ahead")
     clock.tell("writing")
     text = json.dumps(document, ensure_ascii=False, allow_nan=False) if json_out else summary(document, output)
     typer.echo(text)

@@ -69,11 +69,10 @@ class LocalEngine:
         return np.asarray(np.argsort(self.groups[chunk], kind="stable"))
 
     def rows_of(self, first_block: int, last_block: int) -> list[slice]:
-        """Sorted rows of neighbouring blocks, one run per chunk."""
-        groups = self.blocks * self.classes
-        chunks = range(0, len(self.starts) - 1, groups)
-        first, last = first_block * self.classes, last_block * self.classes
-        return [slice(int(self.starts[one + first]), int(self.starts[one + last])) for one in chunks]
+        """Sorted rows of neighbouring blocks, a run for each time that the groups come round."""
+        turns = np.arange(0, len(self.starts) - 1, self.blocks * self.classes)
+        first, last = (self.starts[turns + block * self.classes].tolist() for block in (first_block, last_block))
+        return [slice(start, stop) for start, stop in zip(first, last, strict=True)]
 
     def map(self, function: Callable[[Item], Result], items: Iterable[Item], stage: str = "") -> list[Result]:
         """Apply a function to items on this engine's threads; results keep the items' order.

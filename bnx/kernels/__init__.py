@@ -6,14 +6,13 @@ Every loop releases the interpreter lock, so callers may run several on threads;
 from bnx.kernels.batches import count_families, take_margins, take_training
 from bnx.kernels.counting import count_cells, number_cells
 from bnx.kernels.posterior import calibrated_loss, calibration_sums, posteriors, slope_sums
-from bnx.kernels.ranking import HISTOGRAM_BINS, add_to_histograms, pack_scores, rank_sums, sort_whole
+from bnx.kernels.ranking import add_to_histograms, pack_scores, rank_sums, sort_whole
 from bnx.kernels.removing import changed_losses
 from bnx.kernels.scoring import add_terms, tempered_losses
 from bnx.kernels.smoothing import drop_parent, ratio_tables, smoothed_tables
 from bnx.kernels.tallying import tally
 
 __all__ = [
-    "HISTOGRAM_BINS",
     "add_terms",
     "add_to_histograms",
     "calibrated_loss",

@@ -12,7 +12,22 @@ from bnx.kernels.exponentials import exponentials, logarithms, total_of
 __all__ = ["calibrated_loss", "calibration_sums", "posteriors", "slope_sums"]
 
 _ROWS = 256  # of a block
+_TINIEST = 2.2250738585072014e-308  # the smallest normal number
 _LOWEST = -708.0  # exponents below are taken one by one: the fast exponential stops there
+
+
+@njit(nogil=True, cache=True)
+def below_top(power: np.ndarray, top: np.ndarray) -> None:
+    """Subtract from log weights (C, rows) the largest of their row, which goes to top."""
+    classes, rows = power.shape
+    for k in range(rows):
+        top[k] = power[0, k]
+    for c in range(1, classes):
+        for k in range(rows):
+            top[k] = max(top[k], power[c, k])
+    for c in range(classes):
+        for k in range(rows):
+            power[c, k] -= top[k]
 
 
 @njit(nogil=True, cache=True)
@@ -22,17 +37,10 @@ def _power(
     """Write log weights (C, rows) below the largest of their row, which goes to top (rows,)."""
     classes, rows = power.shape
     step = 1 if bias.shape[0] > 1 else 0
-    for k in range(rows):
-        power[0, k] = bias[step * (first + k), 0]
-        top[k] = power[0, k]
-    for c in range(1, classes):
-        for k in range(rows):
-            one = bias[step * (first + k), c] + temperature * evidence[first + k, c - 1]
-            power[c, k] = one
-            top[k] = max(top[k], one)
     for c in range(classes):
         for k in range(rows):
-            power[c, k] -= top[k]
+            power[c, k] = bias[step * (first + k), c] + (temperature * evidence[first + k, c - 1] if c else 0.0)
+    below_top(power, top)
 
 
 @njit(nogil=True, cache=True)
@@ -199,14 +207,7 @@ def _tilted(
             if c:
                 slopes[c, k] = temperature * evidence[first + k, c - 1]
             power[c, k] = prior[first + k, c] + slopes[c, k] + offsets[c]
-    for k in range(rows):
-        top[k] = power[0, k]
-    for c in range(1, classes):
-        for k in range(rows):
-            top[k] = max(top[k], power[c, k])
-    for c in range(classes):
-        for k in range(rows):
-            power[c, k] -= top[k]
+    below_top(power, top)
 
 
 @njit(nogil=True, cache=True)
@@ -270,16 +271,12 @@ def slope_sums(p: np.ndarray, first: int, last: int, truth: np.ndarray, power: f
         weight, logs = flat.reshape(classes, rows), flat_logs.reshape(classes, rows)
         for c in range(classes):
             for k in range(rows):
-                logs[c, k] = max(p[low + k, c], 2.2250738585072014e-308)
+                logs[c, k] = max(p[low + k, c], _TINIEST)
         logarithms(flat_logs, work)
-        for k in range(rows):
-            top[k] = logs[0, k]
-        for c in range(1, classes):
-            for k in range(rows):
-                top[k] = max(top[k], logs[c, k])
         for c in range(classes):
             for k in range(rows):
-                weight[c, k] = power * (logs[c, k] - top[k])
+                weight[c, k] = power * logs[c, k]
+        below_top(weight, top)
         exponentials(flat, work)
         for k in range(rows):
             top[k] = centre[k] = square[k] = 0.0

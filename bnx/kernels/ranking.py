@@ -3,7 +3,15 @@
 import numpy as np
 from numba import njit
 
-__all__ = ["HISTOGRAM_BINS", "add_to_histograms", "pack_scores", "rank_sums", "sort_whole"]
+__all__ = [
+    "HISTOGRAM_BINS",
+    "HISTOGRAM_END",
+    "HISTOGRAM_WIDTH",
+    "add_to_histograms",
+    "pack_scores",
+    "rank_sums",
+    "sort_whole",
+]
 
 _LOW, _HIGH = 33, 63  # numbers are sorted by these bits first, the lower ones then only need mending
 _DIGIT, _LOW_DIGIT = 10, 11  # bits sorted by at a time, above and below
@@ -14,6 +22,8 @@ _FINE = 8  # leading binary digits of a score, and of what it lacks to 1, that t
 _OCTAVES = 32  # halvings of 1/2 that are told apart
 _HALF = _OCTAVES << _FINE
 HISTOGRAM_BINS = 2 * _HALF + 1
+HISTOGRAM_WIDTH = 2.0**-_FINE  # of a bin, relative to the score or to what it lacks to 1
+HISTOGRAM_END = 2.0 ** -(_OCTAVES + 1)  # width of the first bin and of the last
 _SMALLEST = (1023 - 1 - _OCTAVES) << _FINE  # the leading digits of the smallest score with a bin of its own
 
 

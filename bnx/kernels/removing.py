@@ -4,7 +4,7 @@ import numpy as np
 from numba import njit
 
 from bnx.kernels.counting import number_cells
-from bnx.kernels.posterior import block_loss
+from bnx.kernels.posterior import below_top, block_loss
 
 __all__ = ["changed_losses"]
 
@@ -47,7 +47,7 @@ def changed_losses(
             for k in range(rows):
                 base[c, k] = bias[0, c] + (temperature * evidence[low + k, c - 1] if c else 0.0)
         power[:, :] = base[:, :rows]
-        _below_top(power, own)
+        below_top(power, own)
         before = block_loss(power, flat, work, own, floor, shares, truth[part], weights[part])
         for e in range(out.size):
             _number(codes, recode, old[0], old[1], old[2], old[3], old[4][e], first + low, going[:rows])
@@ -58,7 +58,7 @@ def changed_losses(
                 for k in range(rows):
                     change = come[coming[k], c - 1] - gone[going[k], c - 1]
                     power[c, k] = base[c, k] + temperature * change
-            _below_top(power, own)
+            below_top(power, own)
             out[e] += block_loss(power, flat, work, own, floor, shares, truth[part], weights[part]) - before
 
 
@@ -77,17 +77,3 @@ def _number(
     """Number the joint level of one family in as many rows as there are cells."""
     own = depths[f]
     number_cells(codes, recode, plain[f], members[f, :own], sizes[f, :own], low, cells.size, cells)
-
-
-@njit(nogil=True, cache=True)
-def _below_top(power: np.ndarray, top: np.ndarray) -> None:
-    """Subtract from log weights (C, rows) the largest of their row."""
-    classes, rows = power.shape
-    for k in range(rows):
-        top[k] = power[0, k]
-    for c in range(1, classes):
-        for k in range(rows):
-            top[k] = max(top[k], power[c, k])
-    for c in range(classes):
-        for k in range(rows):
-            power[c, k] -= top[k]

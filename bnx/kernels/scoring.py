@@ -3,6 +3,8 @@
 Evidence is that for each class against the first: C - 1 columns for each smoothing.
 """
 
+from collections.abc import Callable
+
 import numpy as np
 from llvmlite import ir
 from numba import njit, types
@@ -19,7 +21,7 @@ _JOINED = 32  # rows of one weight whose losses are taken together
 
 
 # Intrinsics take numba's own types, which have no annotations: hence the ignored errors.
-def _adder(lanes):  # type: ignore[no-untyped-def]
+def _adder(lanes: int) -> Callable[..., None]:
     """Make a function that adds four runs of so many numbers to one, an instruction each where the machine has it."""
 
     @intrinsic
@@ -30,13 +32,13 @@ def _adder(lanes):  # type: ignore[no-untyped-def]
             vector = ir.VectorType(ir.DoubleType(), lanes)
             arrays = [context.make_array(signature.args[k])(context, builder, arguments[k]) for k in (0, 2)]
 
-            def place(array, number):  # type: ignore[no-untyped-def]
-                return builder.bitcast(builder.gep(array.data, [number]), vector.as_pointer())
-
-            into = place(arrays[0], arguments[1])
+            into, *added = (
+                builder.bitcast(builder.gep(array.data, [number]), vector.as_pointer())
+                for array, number in zip([arrays[0], *[arrays[1]] * 4], [arguments[1], *arguments[3:]], strict=True)
+            )
             total = builder.load(into, align=8)
-            for number in arguments[3:]:
-                total = builder.fadd(total, builder.load(place(arrays[1], number), align=8))
+            for one in added:
+                total = builder.fadd(total, builder.load(one, align=8))
             builder.store(total, into, align=8)
             return context.get_dummy_value()
 
@@ -184,19 +186,7 @@ def _add_joined(
     top = np.empty(_JOINED)
     for v in range(out.shape[0]):
         part = powers[v * classes : (v + 1) * classes]
-        for k in range(rows.size):
-            part[0, k] = 0.0
-            for c in range(1, classes):
-                part[c, k] = evidence[rows[k], v * (classes - 1) + c - 1]
-        for k in range(_JOINED):
-            top[k] = -np.inf
-        for c in range(classes):
-            if log_prior[c] > -np.inf:
-                for k in range(_JOINED):
-                    top[k] = max(top[k], part[c, k])
-        for c in range(classes):
-            for k in range(_JOINED):
-                part[c, k] = min(part[c, k] - top[k], 0.0)
+        _below_likeliest(evidence, v * (classes - 1), log_prior, rows, top, part)
         for k in range(rows.size):
             own = truth[rows[k]]
             for t in range(out.shape[1]):
@@ -204,6 +194,26 @@ def _add_joined(
     exponentials(powers.reshape(-1), work)
     for v in range(out.shape[0]):
         _add_totals(powers[v * classes : (v + 1) * classes], prior, rows.size, weight, out[v])
+
+
+@njit(nogil=True, cache=True)
+def _below_likeliest(
+    evidence: np.ndarray, column: int, log_prior: np.ndarray, rows: np.ndarray, top: np.ndarray, out: np.ndarray
+) -> None:
+    """Write the evidence of a few rows, from a column on, below that of their likeliest class: out (C, 32)."""
+    for k in range(rows.size):
+        out[0, k] = 0.0
+        for c in range(1, log_prior.size):
+            out[c, k] = evidence[rows[k], column + c - 1]
+    for k in range(_JOINED):
+        top[k] = -np.inf
+    for c in range(log_prior.size):
+        if log_prior[c] > -np.inf:
+            for k in range(_JOINED):
+                top[k] = max(top[k], out[c, k])
+    for c in range(log_prior.size):
+        for k in range(_JOINED):
+            out[c, k] = min(out[c, k] - top[k], 0.0)
 
 
 @njit(nogil=True, cache=True)

@@ -202,7 +202,7 @@ def drop_parent(
 ) -> None:
     """Sum the counts of families over the levels of one parent each.
 
-    counts, starts, sizes, depths as in ``ratio_tables``; of family ``which[k]``, the parent in place ``places[k]`` goes;
+    counts, starts, sizes, depths as in ``ratio_tables``; family ``which[k]`` loses the parent in place ``places[k]``;
     out (C, cells) int32, zeros: the sums from ``out_starts[k]`` on.
     """
     for k in range(which.size):
