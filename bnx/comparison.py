@@ -1,6 +1,6 @@
 """The main job: one table in; structures learnt, tested, cross-validated on the same folds, and one recommended."""
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from hashlib import sha256
 from pathlib import PurePath
@@ -112,7 +112,6 @@ def compare(
     stable = stability(_under("stability", first.engine), learned.training.view, folds, learners, bounds, recipe)
     picks = inner_picks(evaluations)
     results, honest = score(evaluations, picks)
-    baseline = recipe.structures.index(recipe.baseline)
     progress("judging pairs", 0, 0)
     pairs, judged = _tested(first.engine, learned, learners, bounds, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
@@ -120,9 +119,8 @@ def compare(
     held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
     recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
     progress("edge ledger", 0, 0)
-    told = replace(first, engine=_under("edge ledger", first.engine))
-    strengths = pairs.strengths(edge for structure in learned.structures for edge in structure.edges)
-    ledgers = edge_ledger(told, strengths, gains, stable, learners, bounds, recipe, folds)
+    edges = edge_ledger(_told(first), _strengths(learned, pairs), gains, stable, learners, bounds, recipe, folds)
+    notes = _run_warnings(evaluations, coded, recipe, learners, results)
     progress("reading", 0, 0)
     return Comparison(
         recipe=recipe,
@@ -135,17 +133,12 @@ def compare(
         pairs=pairs,
         judged=judged,
         results=tuple(results),
-        against=tuple(against(results, baseline, folds)),
-        edges=tuple(ledgers),
+        against=tuple(against(results, recipe.structures.index(recipe.baseline), folds)),
+        edges=tuple(edges),
         recommendation=recommendation,
         held_out=held_out,
         left_out=coded.left_out,
-        warnings=(
-            *_run_warnings(evaluations, coded, recipe, learners, results),
-            *judged.notes,
-            *not_scored,
-            *coded.warnings,
-        ),
+        warnings=(*notes, *judged.notes, *not_scored, *coded.warnings),
         evaluations=tuple(evaluations),
         lines=coded.table.lines,
     )
@@ -174,6 +167,16 @@ def _judged(engine: LocalEngine, training: Training, pairs: Pairs, recipe: Recip
 def _under(stage: str, engine: LocalEngine) -> LocalEngine:
     """Let an engine tell of everything it does as one stage."""
     return replace(engine, progress=lambda *_: engine.progress(stage, 0, 0))
+
+
+def _told(evaluation: Evaluation) -> Evaluation:
+    """Let the tests of the ledger be told as one stage."""
+    return replace(evaluation, engine=_under("edge ledger", evaluation.engine))
+
+
+def _strengths(learned: Learned, pairs: Pairs) -> Mapping[tuple[int, int], float]:
+    """Look up the bits of every pair that a structure joins."""
+    return pairs.strengths(edge for structure in learned.structures for edge in structure.edges)
 
 
 def _evaluations(
