@@ -96,7 +96,7 @@ def judge_wide(
     Returns:
         The pairs judged, in the order of attributes, and what is said of them.
     """
-    table = _Table(engine, pack(engine), margins_of(engine, [training]))
+    table = _Table(engine, pack(engine, by_block=False), margins_of(engine, [training]))
     given, without, strongest = _tested(table, most, recipe.alpha)
     ends = np.array(sorted({(min(pair), max(pair)) for pair in drawn}), np.int64).reshape(-1, 2)
     edges = table.places(ends[:, 0], ends[:, 1])

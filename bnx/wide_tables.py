@@ -55,9 +55,9 @@ class Margins:
     testable: np.ndarray
 
 
-def pack(engine: LocalEngine) -> Planes:
-    """Write the codes of binary attributes, 0 or 1, as bit planes by block and class."""
-    groups = engine.blocks * engine.classes
+def pack(engine: LocalEngine, by_block: bool = True) -> Planes:
+    """Write the codes of binary attributes, 0 or 1, as bit planes by block and class, or by class alone."""
+    groups = engine.blocks * engine.classes if by_block else engine.classes
     parts, words = [], [0]
     for g in range(groups):
         segments = range(g, len(engine.starts) - 1, groups)
