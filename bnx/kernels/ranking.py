@@ -1,7 +1,8 @@
 """Rows in the order of a score: sorting, and the sums that areas and calibration bins need, in one pass."""
 
 import numpy as np
-from numba import njit
+
+from bnx.kernels.compiling import kernel, part
 
 __all__ = [
     "HISTOGRAM_BINS",
@@ -27,7 +28,7 @@ HISTOGRAM_END = 2.0 ** -(_OCTAVES + 1)  # width of the first bin and of the last
 _SMALLEST = (1023 - 1 - _OCTAVES) << _FINE  # the leading digits of the smallest score with a bin of its own
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def sort_whole(numbers: np.ndarray) -> np.ndarray:
     """Sort whole numbers (N,) int64 from 0 to below 2 ** 63, best those that differ above bit 33.
 
@@ -53,7 +54,7 @@ def sort_whole(numbers: np.ndarray) -> np.ndarray:
     return here
 
 
-@njit(nogil=True, cache=True)
+@part
 def _insert(numbers: np.ndarray, start: int, end: int, moves: int) -> bool:
     """Sort in place by insertion; give up after so many moves, each number being there once."""
     for k in range(start + 1, end):
@@ -68,7 +69,7 @@ def _insert(numbers: np.ndarray, start: int, end: int, moves: int) -> bool:
     return True
 
 
-@njit(nogil=True, cache=True)
+@part
 def _sort_by_bits(here: np.ndarray, there: np.ndarray, low: int, high: int, digit: int) -> np.ndarray:
     """Sort by the bits ``low:high``, a digit at a time; both arrays are overwritten, and one of them is returned."""
     passes = (high - low) // digit
@@ -94,7 +95,7 @@ def _sort_by_bits(here: np.ndarray, there: np.ndarray, low: int, high: int, digi
     return here
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def pack_scores(p: np.ndarray, first: int, last: int, truth: np.ndarray, column: int, out: np.ndarray) -> None:
     """Pack the scores of rows ``first:last``, twice the bit pattern and 1 more for a hit, into out (last - first,).
 
@@ -122,7 +123,7 @@ def pack_scores(p: np.ndarray, first: int, last: int, truth: np.ndarray, column:
         out[k] |= patterns[k] << 1
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def rank_sums(packed: np.ndarray, score_sums: np.ndarray, hit_sums: np.ndarray) -> int:
     """Go through rows in ascending order of a score, rows of equal score as one group.
 
@@ -150,7 +151,7 @@ def rank_sums(packed: np.ndarray, score_sums: np.ndarray, hit_sums: np.ndarray) 
     return area
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def add_to_histograms(p: np.ndarray, truth: np.ndarray, counts: np.ndarray, sums: np.ndarray) -> None:
     """Add rows to the histograms of their scores.
 

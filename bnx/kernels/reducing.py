@@ -3,8 +3,8 @@
 from typing import NamedTuple
 
 import numpy as np
-from numba import njit
 
+from bnx.kernels.compiling import kernel, part
 from bnx.kernels.contingency import add_table
 
 __all__ = [
@@ -63,7 +63,7 @@ def blocks_of_masks(masks: np.ndarray) -> Blocks:
     return Blocks(np.argsort(~named, axis=1, kind="stable"), named.sum(axis=1), missing)
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def reduce_tile(
     counts: np.ndarray,
     stride: int,
@@ -113,7 +113,7 @@ def reduce_tile(
                 _marginal(sets, i, j, rooms, marginal[numbers[p]])
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def reduce_table(counts: np.ndarray, i: int, j: int, sets: Sets, out: np.ndarray, marginal: np.ndarray) -> None:
     """Compute the statistics of one pair of attributes in every set from whole tables (B * C, cells) int32.
 
@@ -131,7 +131,7 @@ def reduce_table(counts: np.ndarray, i: int, j: int, sets: Sets, out: np.ndarray
             _marginal(sets, i, j, rooms, marginal[0])
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def reduce_family(
     counts: np.ndarray,
     total: np.ndarray,
@@ -169,7 +169,7 @@ def reduce_family(
         add_table(tables, 0, height, width, down, across, out[k])
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def merge_cells(
     counts: np.ndarray, sizes: np.ndarray, starts: np.ndarray, levels: np.ndarray, seen: np.ndarray, out: np.ndarray
 ) -> None:
@@ -187,7 +187,7 @@ def merge_cells(
             out[c, place] += counts[c, cell]
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def complete_tables(
     counts: np.ndarray,
     stride: int,
@@ -220,7 +220,7 @@ def complete_tables(
             _complete(compact, h + 1, w + 1, down, across, out[g, offsets[p] :])
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _rooms(classes: int, cells: int, levels: int) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
     """Make room for whole tables, merged tables, a pooled table and two margins."""
     whole, merged = np.empty((classes, cells), np.int32), np.empty((classes, cells), np.int32)
@@ -228,7 +228,7 @@ def _rooms(classes: int, cells: int, levels: int) -> tuple[np.ndarray, np.ndarra
     return whole, merged, pooled, np.empty(levels, np.int64), np.empty(levels, np.int64)
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def sum_all(counts: np.ndarray, classes: int, total: np.ndarray) -> None:
     """Add up all blocks by class."""
     cells = counts.shape[1]
@@ -241,7 +241,7 @@ def sum_all(counts: np.ndarray, classes: int, total: np.ndarray) -> None:
                 mine[x] += more[x]
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def sum_set(
     counts: np.ndarray, classes: int, blocks: np.ndarray, number: int, missing: bool, total: np.ndarray, out: np.ndarray
 ) -> None:
@@ -259,7 +259,7 @@ def sum_set(
                 mine[x] = total[c, x] - mine[x]
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _complete(
     compact: np.ndarray, height: int, width: int, down: np.ndarray, across: np.ndarray, out: np.ndarray
 ) -> None:
@@ -279,7 +279,7 @@ def _complete(
         out[(height - 1) * width + b] = across[b] - seen
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _finish(
     sets: Sets,
     k: int,
@@ -305,7 +305,7 @@ def _finish(
     add_table(merged, 0, height, width, down, across, row)
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _marginal(
     sets: Sets,
     i: int,

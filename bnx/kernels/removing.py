@@ -1,8 +1,8 @@
 """What losses become when single families give way to smaller ones."""
 
 import numpy as np
-from numba import njit
 
+from bnx.kernels.compiling import kernel, part
 from bnx.kernels.counting import number_cells
 from bnx.kernels.posterior import below_top, block_loss
 
@@ -11,7 +11,7 @@ __all__ = ["changed_losses"]
 _ROWS = 256  # of a block
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def changed_losses(
     codes: np.ndarray,
     recode: np.ndarray,
@@ -62,7 +62,7 @@ def changed_losses(
             out[e] += block_loss(power, flat, work, own, floor, shares, truth[part], weights[part]) - before
 
 
-@njit(nogil=True, cache=True)
+@part
 def _number(
     codes: np.ndarray,
     recode: np.ndarray,

@@ -1,14 +1,14 @@
 """Loops from counts of families to tables of log probabilities, and to what a table says between classes."""
 
 import numpy as np
-from numba import njit
 
+from bnx.kernels.compiling import kernel, part
 from bnx.kernels.exponentials import logarithms
 
 __all__ = ["drop_parent", "ratio_tables", "smoothed_tables"]
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def smoothed_tables(
     counts: np.ndarray, sizes: np.ndarray, strengths: np.ndarray, laplace: np.ndarray, out: np.ndarray
 ) -> None:
@@ -27,7 +27,7 @@ def smoothed_tables(
             out[cell, column] = np.log(shares[column, cell])
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def ratio_tables(
     counts: np.ndarray,
     starts: np.ndarray,
@@ -68,7 +68,7 @@ def ratio_tables(
                 table[cell, column] = room[column * cells + cell]
 
 
-@njit(nogil=True, cache=True)
+@part
 def _to_ratios(room: np.ndarray, options: int, classes: int, cells: int) -> None:
     """Replace the shares of each smoothing's classes by those of all but the first, each divided by the first."""
     for v in range(options):
@@ -83,7 +83,7 @@ def _to_ratios(room: np.ndarray, options: int, classes: int, cells: int) -> None
             room[to + k] = room[first + cells + k]
 
 
-@njit(nogil=True, cache=True)
+@part
 def _shares(
     counts: np.ndarray,
     sizes: np.ndarray,
@@ -117,7 +117,7 @@ def _shares(
                 _back_off(sums, first, sizes, marginal, strengths[v], work, shares)
 
 
-@njit(nogil=True, cache=True)
+@part
 def _sum_up(counts: np.ndarray, sizes: np.ndarray, upwards: bool, sums: np.ndarray) -> int:
     """Lay the counts (cells,) of one class out behind their sums over the last parents, fewest parents first.
 
@@ -146,7 +146,7 @@ def _sum_up(counts: np.ndarray, sizes: np.ndarray, upwards: bool, sums: np.ndarr
     return first
 
 
-@njit(nogil=True, cache=True)
+@part
 def _laplace(counts: np.ndarray, levels: int, amount: float, out: np.ndarray) -> None:
     """Add ``amount`` records to every cell and divide by the records of its context."""
     for at in range(0, counts.size, levels):
@@ -157,7 +157,7 @@ def _laplace(counts: np.ndarray, levels: int, amount: float, out: np.ndarray) ->
             out[at + x] = (counts[at + x] + amount) / (rows + amount * levels)
 
 
-@njit(nogil=True, cache=True)
+@part
 def _back_off(
     sums: np.ndarray,
     first: int,
@@ -189,7 +189,7 @@ def _back_off(
         out[cell] = work[first + cell]
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def drop_parent(
     counts: np.ndarray,
     starts: np.ndarray,
