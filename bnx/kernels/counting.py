@@ -87,7 +87,8 @@ def number_cells(
     cells int32: a table of more cells than that would not fit anywhere.
     """
     mine = cells[:number]
-    mine[:] = 0
+    for k in range(number):
+        mine[k] = 0
     for m in range(members.size):
         i, size = members[m], np.int32(sizes[m])
         row = codes[i, low : low + number]

@@ -37,19 +37,23 @@ def sort_whole(numbers: np.ndarray) -> np.ndarray:
 
     Source: Knuth 1998, section 5.2.5 (radix sorting; from memory).
     """
-    here = _sort_by_bits(numbers, np.empty_like(numbers), _LOW, _HIGH, _DIGIT)
-    if _insert(here, 0, here.size, _PATIENCE * here.size):
+    here = _sort_by_bits(numbers, np.empty(numbers.size, np.int64), np.int64(_LOW), np.int64(_HIGH), np.int64(_DIGIT))
+    if _insert(here, np.int64(0), here.size, _PATIENCE * here.size):
         return here
-    start = 0
+    start = np.int64(0)
     while start < here.size:
         end = start + 1
         while end < here.size and here[end] >> _LOW == here[start] >> _LOW:
             end += 1
         if end - start <= _FEW:
-            _insert(here, start, end, _FEW * _FEW)
+            _insert(here, start, end, np.int64(_FEW * _FEW))
         else:
-            run = here[start:end].copy()
-            here[start:end] = _sort_by_bits(run, np.empty_like(run), 0, _LOW, _LOW_DIGIT)
+            run, room = np.empty(end - start, np.int64), np.empty(end - start, np.int64)
+            for k in range(run.size):
+                run[k] = here[start + k]
+            run = _sort_by_bits(run, room, np.int64(0), np.int64(_LOW), np.int64(_LOW_DIGIT))
+            for k in range(run.size):
+                here[start + k] = run[k]
         start = end
     return here
 
@@ -73,20 +77,21 @@ def _insert(numbers: np.ndarray, start: int, end: int, moves: int) -> bool:
 def _sort_by_bits(here: np.ndarray, there: np.ndarray, low: int, high: int, digit: int) -> np.ndarray:
     """Sort by the bits ``low:high``, a digit at a time; both arrays are overwritten, and one of them is returned."""
     passes = (high - low) // digit
-    counts = np.zeros((passes, 1 << digit), np.int64)
-    mask = (1 << digit) - 1
+    width = 1 << digit
+    counts, mask = np.zeros(passes * width, np.int64), width - 1
     for number in here:
         for k in range(passes):
-            counts[k, (number >> (low + k * digit)) & mask] += 1
+            counts[k * width + ((number >> (low + k * digit)) & mask)] += 1
     for k in range(passes):
-        own = counts[k]
-        if own.max() == here.size:
-            continue
-        at = 0
-        for d in range(own.size):
+        own = counts[k * width : (k + 1) * width]
+        at, most = 0, 0
+        for d in range(width):
             held = own[d]
             own[d] = at
             at += held
+            most = max(most, held)
+        if most == here.size:
+            continue
         for number in here:
             d = (number >> (low + k * digit)) & mask
             there[own[d]] = number

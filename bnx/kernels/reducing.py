@@ -84,7 +84,7 @@ def reduce_tile(
     (K, pairs, COLUMNS), zero on entry, and in ``marginal`` (pairs or 0, COLUMNS): the first set without the class.
     """
     groups, classes, blocks = counts.shape[0], sets.margins.shape[1], sets.blocks
-    most, levels = 1, 1
+    most, levels = np.int64(1), np.int64(1)  # numba compiles a part anew for a literal
     for p in range(first, last):
         h = sets.starts[left[p] + 1] - sets.starts[left[p]]
         w = sets.starts[right[p] + 1] - sets.starts[right[p]]
@@ -163,10 +163,11 @@ def reduce_family(
             for size in seen[k]:
                 own *= size
             flat = merged[: classes * own]
-            flat[:] = 0
+            for x in range(flat.size):
+                flat[x] = 0
             merge_cells(whole, sizes, starts, levels[k], seen[k], flat.reshape(classes, own))
             tables = flat.reshape(classes * own // (height * width), height * width)
-        add_table(tables, 0, height, width, down, across, out[k])
+        add_table(tables, np.int64(0), height, width, down, across, out[k])
 
 
 @kernel
@@ -234,7 +235,8 @@ def sum_all(counts: np.ndarray, classes: int, total: np.ndarray) -> None:
     cells = counts.shape[1]
     for c in range(classes):
         mine = total[c, :cells]
-        mine[:] = 0
+        for x in range(cells):
+            mine[x] = 0
         for g in range(c, counts.shape[0], classes):
             more = counts[g]
             for x in range(cells):
@@ -249,7 +251,8 @@ def sum_set(
     cells = counts.shape[1]
     for c in range(classes):
         mine = out[c, :cells]
-        mine[:] = 0
+        for x in range(cells):
+            mine[x] = 0
         for at in range(number):
             more = counts[blocks[at] * classes + c]
             for x in range(cells):
@@ -292,17 +295,18 @@ def _finish(
     whole, merged, _, down, across = rooms
     height, width = sets.sizes[k, i], sets.sizes[k, j]
     if sets.plain[i] and sets.plain[j]:
-        add_table(whole, 0, height, width, down, across, row)
+        add_table(whole, np.int64(0), height, width, down, across, row)
         return
     first, second = sets.starts[i], sets.starts[j]
     rows, columns = sets.starts[i + 1] - first, sets.starts[j + 1] - second
     for c in range(whole.shape[0]):
-        merged[c, : height * width] = 0
+        for x in range(height * width):
+            merged[c, x] = 0
         for a in range(rows):
             place = sets.levels[k, first + a] * width
             for b in range(columns):
                 merged[c, place + sets.levels[k, second + b]] += whole[c, a * columns + b]
-    add_table(merged, 0, height, width, down, across, row)
+    add_table(merged, np.int64(0), height, width, down, across, row)
 
 
 @part
@@ -317,8 +321,9 @@ def _marginal(
     whole, merged, pooled, down, across = rooms
     height, width = sets.sizes[0, i], sets.sizes[0, j]
     tables = whole if sets.plain[i] and sets.plain[j] else merged
-    pooled[0, : height * width] = 0
+    for x in range(height * width):
+        pooled[0, x] = 0
     for c in range(tables.shape[0]):
         for x in range(height * width):
             pooled[0, x] += tables[c, x]
-    add_table(pooled, 0, height, width, down, across, row)
+    add_table(pooled, np.int64(0), height, width, down, across, row)

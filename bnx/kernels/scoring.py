@@ -86,7 +86,8 @@ def add_terms(
                     own = depths[f]
                     _number(codes, recode, plain[f], members[f, :own], sizes[f, :own], low, starts[k + j], width, mine)
                 else:
-                    mine[:] = 0
+                    for row in range(rows):
+                        mine[row] = 0
             _add(into, (low - first) * width, flat, cells[:, :rows], width)
 
 
@@ -151,7 +152,9 @@ def tempered_losses(
     skipped; truth, weights (N,); out (V, K) float64, added to: the first K temperatures. Powers of 3/4 and 1/2 are made
     of square roots, so that one exponential serves all.
     """
-    prior = np.exp(log_prior)
+    prior = np.empty(log_prior.size)
+    for c in range(prior.size):
+        prior[c] = np.exp(log_prior[c])
     rows = np.empty(_JOINED, np.int64)
     columns = out.shape[0] * log_prior.size
     powers = np.zeros((columns, _JOINED))
