@@ -1,8 +1,8 @@
 """Counts of many families in one call."""
 
 import numpy as np
-from numba import njit
 
+from bnx.kernels.compiling import kernel
 from bnx.kernels.counting import number_cells
 
 __all__ = ["count_families", "take_margins", "take_training"]
@@ -10,7 +10,7 @@ __all__ = ["count_families", "take_margins", "take_training"]
 _ROWS = 2048  # rows whose cell numbers are computed at a time
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def count_families(
     codes: np.ndarray,
     recode: np.ndarray,
@@ -46,7 +46,7 @@ def count_families(
                     into[cells[row]] += 1
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def take_training(
     total: np.ndarray,
     parts: np.ndarray,
@@ -70,7 +70,7 @@ def take_training(
                 out[c, tos[k] + cell] = count
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def take_margins(
     margins: np.ndarray,
     offsets: np.ndarray,

@@ -72,7 +72,7 @@ def table_statistics(counts: np.ndarray, offsets: np.ndarray, heights: np.ndarra
     """
     tables = offsets.size
     result = np.zeros((tables, COLUMNS))
-    tallest, widest = 1, 1
+    tallest, widest = np.int64(1), np.int64(1)
     for p in range(tables):
         tallest, widest = max(tallest, heights[p]), max(widest, widths[p])
     down, across = np.empty(tallest, np.int64), np.empty(widest, np.int64)

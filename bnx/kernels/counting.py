@@ -5,14 +5,15 @@ G such groups, and segment s is a part of group s % G.
 """
 
 import numpy as np
-from numba import njit
+
+from bnx.kernels.compiling import kernel
 
 __all__ = ["count_cells", "count_joint", "number_cells"]
 
 _ROWS = 2048  # rows whose cell numbers are computed at a time
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def count_joint(
     codes: np.ndarray,
     recode: np.ndarray,
@@ -41,7 +42,7 @@ def count_joint(
                 out[np.int64(a) * width + b] += 1
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def count_cells(
     codes: np.ndarray,
     recode: np.ndarray,
@@ -70,7 +71,7 @@ def count_cells(
                 out[slot, cells[k]] += 1
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def number_cells(
     codes: np.ndarray,
     recode: np.ndarray,
@@ -86,7 +87,8 @@ def number_cells(
     cells int32: a table of more cells than that would not fit anywhere.
     """
     mine = cells[:number]
-    mine[:] = 0
+    for k in range(number):
+        mine[k] = 0
     for m in range(members.size):
         i, size = members[m], np.int32(sizes[m])
         row = codes[i, low : low + number]

@@ -1,7 +1,8 @@
 """Exponentials, logarithms and sums of many numbers at once, by plain arithmetic that is the same on every machine."""
 
 import numpy as np
-from numba import njit
+
+from bnx.kernels.compiling import kernel
 
 __all__ = ["exponentials", "logarithms", "total_of"]
 
@@ -14,7 +15,7 @@ _ROUND_BITS = 0x4338000000000000  # its pattern
 _ROOT_HALF = 0x3FE6A09E667F3BCD  # the pattern of the root of 1/2
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def exponentials(x: np.ndarray, work: np.ndarray) -> None:
     """Replace ``x`` (n,), at most 700, by e ** x; what lies below -708 counts as -708. work (at least 3 n,) float64.
 
@@ -48,7 +49,7 @@ def exponentials(x: np.ndarray, work: np.ndarray) -> None:
         x[i] = p * scale[i]
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def logarithms(x: np.ndarray, work: np.ndarray) -> None:
     """Replace ``x`` (n,), normal numbers above 0, by ln x. work (at least 2 n,) float64.
 
@@ -80,7 +81,7 @@ def logarithms(x: np.ndarray, work: np.ndarray) -> None:
         x[i] = k * _LN2_HIGH + (2.0 * r + (r * s * p + k * _LN2_LOW))
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def total_of(x: np.ndarray) -> float:
     """Sum numbers (n,) in an order that leaves eight sums to be made side by side, the same on every machine."""
     a = b = c = d = e = f = g = h = 0.0

@@ -1,12 +1,13 @@
 """Forests and nearest neighbours in dense matrices: plain arrays in, plain arrays out."""
 
 import numpy as np
-from numba import njit
+
+from bnx.kernels.compiling import kernel, part
 
 __all__ = ["forest_level", "strongest_few", "strongest_forest"]
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def strongest_forest(strength: np.ndarray, allowed: np.ndarray) -> np.ndarray:
     """Find the strongest forest of allowed edges, whatever their strengths: as many edges as can be.
 
@@ -43,7 +44,7 @@ def strongest_forest(strength: np.ndarray, allowed: np.ndarray) -> np.ndarray:
     return joined
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _before(strength: np.ndarray, a: int, b: int, c: int, d: int) -> bool:
     """Tell whether edge a - b comes before edge c - d."""
     if strength[a, b] != strength[c, d]:
@@ -52,7 +53,7 @@ def _before(strength: np.ndarray, a: int, b: int, c: int, d: int) -> bool:
     return low < other or (low == other and max(a, b) < max(c, d))
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def forest_level(left: np.ndarray, right: np.ndarray, p: np.ndarray, n: int, tested: int, alpha: float) -> float:
     """Find the largest p with p x tested / edges <= alpha, edges being those of the forest of pairs up to p.
 
@@ -76,7 +77,7 @@ def forest_level(left: np.ndarray, right: np.ndarray, p: np.ndarray, n: int, tes
     return found
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _root(root: np.ndarray, node: int) -> int:
     """Find the root of a tree, halving the path on the way."""
     while root[node] != node:
@@ -85,7 +86,7 @@ def _root(root: np.ndarray, node: int) -> int:
     return node
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def strongest_few(strength: np.ndarray, rank: np.ndarray, barred: np.ndarray, most: int) -> np.ndarray:
     """List, for every attribute, the strongest of those of a lower rank, strongest first, ties by number.
 

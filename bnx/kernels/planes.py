@@ -8,10 +8,12 @@ from typing import Any
 
 import numpy as np
 from llvmlite import ir
-from numba import njit, types
+from numba import types
 from numba.core import cgutils
 from numba.core.errors import TypingError
 from numba.extending import intrinsic
+
+from bnx.kernels.compiling import kernel, part
 
 __all__ = ["ACROSS", "DOWN", "count_planes", "pack_planes"]
 
@@ -95,7 +97,7 @@ def _tile_of(vectors: int) -> Any:
 _one, _two, _three, _four = (_tile_of(vectors) for vectors in range(1, _VECTORS + 1))
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def pack_planes(codes: np.ndarray, first: int, rows: int, size: int, planes: np.ndarray) -> None:
     """Write one bit per row and level for ``rows`` codes from ``first`` on; the last level has no plane.
 
@@ -113,7 +115,7 @@ def pack_planes(codes: np.ndarray, first: int, rows: int, size: int, planes: np.
             planes[whole, level] = _equals(tail, 0, level)
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def count_planes(
     codes: np.ndarray,
     recode: np.ndarray,
@@ -146,7 +148,7 @@ def count_planes(
     """
     planes = np.zeros((_WORDS, width), np.uint64)
     seen = np.empty(64 * _WORDS, codes.dtype)
-    filled = 0
+    filled = np.int64(0)
     for run in range(lows.size):
         low = lows[run]
         while low < highs[run]:
@@ -159,17 +161,17 @@ def count_planes(
                 else:
                     for k in range(rows):
                         seen[k] = recode[i, codes[i, low + k]]
-                    pack_planes(seen, 0, rows, sizes[m], own)
+                    pack_planes(seen, np.int64(0), rows, sizes[m], own)
             low += rows
             filled += (rows + 63) // 64
             if filled == _WORDS:
                 _multiply(planes.reshape(-1), filled, width, right, needed, out)
-                filled = 0
+                filled = np.int64(0)
     if filled:
         _multiply(planes.reshape(-1), filled, width, right, needed, out)
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _multiply(planes: np.ndarray, words: int, width: int, right: int, needed: np.ndarray, out: np.ndarray) -> None:
     """Add the common ones of the first words of all planes that are needed."""
     stride = needed.shape[1] * ACROSS

@@ -5,8 +5,8 @@ through in blocks laid out class by class, so that one instruction serves severa
 """
 
 import numpy as np
-from numba import njit
 
+from bnx.kernels.compiling import kernel, part
 from bnx.kernels.exponentials import exponentials, logarithms, total_of
 
 __all__ = ["calibrated_loss", "calibration_sums", "posteriors", "slope_sums"]
@@ -16,7 +16,7 @@ _TINIEST = 2.2250738585072014e-308  # the smallest normal number
 _LOWEST = -708.0  # exponents below are taken one by one: the fast exponential stops there
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def below_top(power: np.ndarray, top: np.ndarray) -> None:
     """Subtract from log weights (C, rows) the largest of their row, which goes to top."""
     classes, rows = power.shape
@@ -30,7 +30,7 @@ def below_top(power: np.ndarray, top: np.ndarray) -> None:
             power[c, k] -= top[k]
 
 
-@njit(nogil=True, cache=True)
+@part
 def _power(
     evidence: np.ndarray, first: int, bias: np.ndarray, temperature: float, power: np.ndarray, top: np.ndarray
 ) -> None:
@@ -43,7 +43,7 @@ def _power(
     below_top(power, top)
 
 
-@njit(nogil=True, cache=True)
+@part
 def _exponentials(power: np.ndarray, work: np.ndarray) -> None:
     """Replace log weights (n,), none above 0, by weights; what lies too low for the fast way goes the slow one."""
     lowest = 0.0
@@ -56,7 +56,7 @@ def _exponentials(power: np.ndarray, work: np.ndarray) -> None:
         power[k] = np.exp(power[k])
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def posteriors(
     evidence: np.ndarray,
     bias: np.ndarray,
@@ -89,7 +89,7 @@ def posteriors(
                 out[first + k, c] = (1.0 - floor) * (power[c, k] / top[k]) + floor * shares[c]
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def calibrated_loss(
     evidence: np.ndarray,
     bias: np.ndarray,
@@ -114,7 +114,7 @@ def calibrated_loss(
     return total
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def block_loss(
     power: np.ndarray,
     flat: np.ndarray,
@@ -145,7 +145,7 @@ def block_loss(
     return -total_of(own[:rows])
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def calibration_sums(
     evidence: np.ndarray,
     prior: np.ndarray,
@@ -189,7 +189,7 @@ def calibration_sums(
     return value
 
 
-@njit(nogil=True, cache=True)
+@part
 def _tilted(
     evidence: np.ndarray,
     prior: np.ndarray,
@@ -210,7 +210,7 @@ def _tilted(
     below_top(power, top)
 
 
-@njit(nogil=True, cache=True)
+@part
 def _derivatives(
     p: np.ndarray,
     slopes: np.ndarray,
@@ -255,7 +255,7 @@ def _derivatives(
                 curve[2 + d, 1 + c] -= product
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def slope_sums(p: np.ndarray, first: int, last: int, truth: np.ndarray, power: float, out: np.ndarray) -> None:
     """Add the first and second derivative by t of the log losses (nats) of p ** t, made to sum to 1, at t = ``power``.
 

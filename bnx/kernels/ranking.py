@@ -1,7 +1,8 @@
 """Rows in the order of a score: sorting, and the sums that areas and calibration bins need, in one pass."""
 
 import numpy as np
-from numba import njit
+
+from bnx.kernels.compiling import kernel, part
 
 __all__ = [
     "HISTOGRAM_BINS",
@@ -27,7 +28,7 @@ HISTOGRAM_END = 2.0 ** -(_OCTAVES + 1)  # width of the first bin and of the last
 _SMALLEST = (1023 - 1 - _OCTAVES) << _FINE  # the leading digits of the smallest score with a bin of its own
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def sort_whole(numbers: np.ndarray) -> np.ndarray:
     """Sort whole numbers (N,) int64 from 0 to below 2 ** 63, best those that differ above bit 33.
 
@@ -36,24 +37,28 @@ def sort_whole(numbers: np.ndarray) -> np.ndarray:
 
     Source: Knuth 1998, section 5.2.5 (radix sorting; from memory).
     """
-    here = _sort_by_bits(numbers, np.empty_like(numbers), _LOW, _HIGH, _DIGIT)
-    if _insert(here, 0, here.size, _PATIENCE * here.size):
+    here = _sort_by_bits(numbers, np.empty(numbers.size, np.int64), np.int64(_LOW), np.int64(_HIGH), np.int64(_DIGIT))
+    if _insert(here, np.int64(0), here.size, _PATIENCE * here.size):
         return here
-    start = 0
+    start = np.int64(0)
     while start < here.size:
         end = start + 1
         while end < here.size and here[end] >> _LOW == here[start] >> _LOW:
             end += 1
         if end - start <= _FEW:
-            _insert(here, start, end, _FEW * _FEW)
+            _insert(here, start, end, np.int64(_FEW * _FEW))
         else:
-            run = here[start:end].copy()
-            here[start:end] = _sort_by_bits(run, np.empty_like(run), 0, _LOW, _LOW_DIGIT)
+            run, room = np.empty(end - start, np.int64), np.empty(end - start, np.int64)
+            for k in range(run.size):
+                run[k] = here[start + k]
+            run = _sort_by_bits(run, room, np.int64(0), np.int64(_LOW), np.int64(_LOW_DIGIT))
+            for k in range(run.size):
+                here[start + k] = run[k]
         start = end
     return here
 
 
-@njit(nogil=True, cache=True)
+@part
 def _insert(numbers: np.ndarray, start: int, end: int, moves: int) -> bool:
     """Sort in place by insertion; give up after so many moves, each number being there once."""
     for k in range(start + 1, end):
@@ -68,24 +73,25 @@ def _insert(numbers: np.ndarray, start: int, end: int, moves: int) -> bool:
     return True
 
 
-@njit(nogil=True, cache=True)
+@part
 def _sort_by_bits(here: np.ndarray, there: np.ndarray, low: int, high: int, digit: int) -> np.ndarray:
     """Sort by the bits ``low:high``, a digit at a time; both arrays are overwritten, and one of them is returned."""
     passes = (high - low) // digit
-    counts = np.zeros((passes, 1 << digit), np.int64)
-    mask = (1 << digit) - 1
+    width = 1 << digit
+    counts, mask = np.zeros(passes * width, np.int64), width - 1
     for number in here:
         for k in range(passes):
-            counts[k, (number >> (low + k * digit)) & mask] += 1
+            counts[k * width + ((number >> (low + k * digit)) & mask)] += 1
     for k in range(passes):
-        own = counts[k]
-        if own.max() == here.size:
-            continue
-        at = 0
-        for d in range(own.size):
+        own = counts[k * width : (k + 1) * width]
+        at, most = 0, 0
+        for d in range(width):
             held = own[d]
             own[d] = at
             at += held
+            most = max(most, held)
+        if most == here.size:
+            continue
         for number in here:
             d = (number >> (low + k * digit)) & mask
             there[own[d]] = number
@@ -94,7 +100,7 @@ def _sort_by_bits(here: np.ndarray, there: np.ndarray, low: int, high: int, digi
     return here
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def pack_scores(p: np.ndarray, first: int, last: int, truth: np.ndarray, column: int, out: np.ndarray) -> None:
     """Pack the scores of rows ``first:last``, twice the bit pattern and 1 more for a hit, into out (last - first,).
 
@@ -122,7 +128,7 @@ def pack_scores(p: np.ndarray, first: int, last: int, truth: np.ndarray, column:
         out[k] |= patterns[k] << 1
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def rank_sums(packed: np.ndarray, score_sums: np.ndarray, hit_sums: np.ndarray) -> int:
     """Go through rows in ascending order of a score, rows of equal score as one group.
 
@@ -150,7 +156,7 @@ def rank_sums(packed: np.ndarray, score_sums: np.ndarray, hit_sums: np.ndarray) 
     return area
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def add_to_histograms(p: np.ndarray, truth: np.ndarray, counts: np.ndarray, sums: np.ndarray) -> None:
     """Add rows to the histograms of their scores.
 

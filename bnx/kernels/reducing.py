@@ -3,8 +3,8 @@
 from typing import NamedTuple
 
 import numpy as np
-from numba import njit
 
+from bnx.kernels.compiling import kernel, part
 from bnx.kernels.contingency import add_table
 
 __all__ = [
@@ -63,7 +63,7 @@ def blocks_of_masks(masks: np.ndarray) -> Blocks:
     return Blocks(np.argsort(~named, axis=1, kind="stable"), named.sum(axis=1), missing)
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def reduce_tile(
     counts: np.ndarray,
     stride: int,
@@ -84,7 +84,7 @@ def reduce_tile(
     (K, pairs, COLUMNS), zero on entry, and in ``marginal`` (pairs or 0, COLUMNS): the first set without the class.
     """
     groups, classes, blocks = counts.shape[0], sets.margins.shape[1], sets.blocks
-    most, levels = 1, 1
+    most, levels = np.int64(1), np.int64(1)  # numba compiles a part anew for a literal
     for p in range(first, last):
         h = sets.starts[left[p] + 1] - sets.starts[left[p]]
         w = sets.starts[right[p] + 1] - sets.starts[right[p]]
@@ -113,7 +113,7 @@ def reduce_tile(
                 _marginal(sets, i, j, rooms, marginal[numbers[p]])
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def reduce_table(counts: np.ndarray, i: int, j: int, sets: Sets, out: np.ndarray, marginal: np.ndarray) -> None:
     """Compute the statistics of one pair of attributes in every set from whole tables (B * C, cells) int32.
 
@@ -131,7 +131,7 @@ def reduce_table(counts: np.ndarray, i: int, j: int, sets: Sets, out: np.ndarray
             _marginal(sets, i, j, rooms, marginal[0])
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def reduce_family(
     counts: np.ndarray,
     total: np.ndarray,
@@ -163,13 +163,14 @@ def reduce_family(
             for size in seen[k]:
                 own *= size
             flat = merged[: classes * own]
-            flat[:] = 0
+            for x in range(flat.size):
+                flat[x] = 0
             merge_cells(whole, sizes, starts, levels[k], seen[k], flat.reshape(classes, own))
             tables = flat.reshape(classes * own // (height * width), height * width)
-        add_table(tables, 0, height, width, down, across, out[k])
+        add_table(tables, np.int64(0), height, width, down, across, out[k])
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def merge_cells(
     counts: np.ndarray, sizes: np.ndarray, starts: np.ndarray, levels: np.ndarray, seen: np.ndarray, out: np.ndarray
 ) -> None:
@@ -187,7 +188,7 @@ def merge_cells(
             out[c, place] += counts[c, cell]
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def complete_tables(
     counts: np.ndarray,
     stride: int,
@@ -220,7 +221,7 @@ def complete_tables(
             _complete(compact, h + 1, w + 1, down, across, out[g, offsets[p] :])
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _rooms(classes: int, cells: int, levels: int) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
     """Make room for whole tables, merged tables, a pooled table and two margins."""
     whole, merged = np.empty((classes, cells), np.int32), np.empty((classes, cells), np.int32)
@@ -228,20 +229,21 @@ def _rooms(classes: int, cells: int, levels: int) -> tuple[np.ndarray, np.ndarra
     return whole, merged, pooled, np.empty(levels, np.int64), np.empty(levels, np.int64)
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def sum_all(counts: np.ndarray, classes: int, total: np.ndarray) -> None:
     """Add up all blocks by class."""
     cells = counts.shape[1]
     for c in range(classes):
         mine = total[c, :cells]
-        mine[:] = 0
+        for x in range(cells):
+            mine[x] = 0
         for g in range(c, counts.shape[0], classes):
             more = counts[g]
             for x in range(cells):
                 mine[x] += more[x]
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@kernel
 def sum_set(
     counts: np.ndarray, classes: int, blocks: np.ndarray, number: int, missing: bool, total: np.ndarray, out: np.ndarray
 ) -> None:
@@ -249,7 +251,8 @@ def sum_set(
     cells = counts.shape[1]
     for c in range(classes):
         mine = out[c, :cells]
-        mine[:] = 0
+        for x in range(cells):
+            mine[x] = 0
         for at in range(number):
             more = counts[blocks[at] * classes + c]
             for x in range(cells):
@@ -259,7 +262,7 @@ def sum_set(
                 mine[x] = total[c, x] - mine[x]
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _complete(
     compact: np.ndarray, height: int, width: int, down: np.ndarray, across: np.ndarray, out: np.ndarray
 ) -> None:
@@ -279,7 +282,7 @@ def _complete(
         out[(height - 1) * width + b] = across[b] - seen
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _finish(
     sets: Sets,
     k: int,
@@ -292,20 +295,21 @@ def _finish(
     whole, merged, _, down, across = rooms
     height, width = sets.sizes[k, i], sets.sizes[k, j]
     if sets.plain[i] and sets.plain[j]:
-        add_table(whole, 0, height, width, down, across, row)
+        add_table(whole, np.int64(0), height, width, down, across, row)
         return
     first, second = sets.starts[i], sets.starts[j]
     rows, columns = sets.starts[i + 1] - first, sets.starts[j + 1] - second
     for c in range(whole.shape[0]):
-        merged[c, : height * width] = 0
+        for x in range(height * width):
+            merged[c, x] = 0
         for a in range(rows):
             place = sets.levels[k, first + a] * width
             for b in range(columns):
                 merged[c, place + sets.levels[k, second + b]] += whole[c, a * columns + b]
-    add_table(merged, 0, height, width, down, across, row)
+    add_table(merged, np.int64(0), height, width, down, across, row)
 
 
-@njit(nogil=True, cache=True, error_model="numpy")
+@part
 def _marginal(
     sets: Sets,
     i: int,
@@ -317,8 +321,9 @@ def _marginal(
     whole, merged, pooled, down, across = rooms
     height, width = sets.sizes[0, i], sets.sizes[0, j]
     tables = whole if sets.plain[i] and sets.plain[j] else merged
-    pooled[0, : height * width] = 0
+    for x in range(height * width):
+        pooled[0, x] = 0
     for c in range(tables.shape[0]):
         for x in range(height * width):
             pooled[0, x] += tables[c, x]
-    add_table(pooled, 0, height, width, down, across, row)
+    add_table(pooled, np.int64(0), height, width, down, across, row)

@@ -1,8 +1,8 @@
 """What losses become when single families give way to smaller ones."""
 
 import numpy as np
-from numba import njit
 
+from bnx.kernels.compiling import kernel, part
 from bnx.kernels.counting import number_cells
 from bnx.kernels.posterior import below_top, block_loss
 
@@ -11,7 +11,7 @@ __all__ = ["changed_losses"]
 _ROWS = 256  # of a block
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def changed_losses(
     codes: np.ndarray,
     recode: np.ndarray,
@@ -46,14 +46,17 @@ def changed_losses(
         for c in range(classes):
             for k in range(rows):
                 base[c, k] = bias[0, c] + (temperature * evidence[low + k, c - 1] if c else 0.0)
-        power[:, :] = base[:, :rows]
+        for c in range(classes):
+            for k in range(rows):
+                power[c, k] = base[c, k]
         below_top(power, own)
         before = block_loss(power, flat, work, own, floor, shares, truth[part], weights[part])
         for e in range(out.size):
             _number(codes, recode, old[0], old[1], old[2], old[3], old[4][e], first + low, going[:rows])
             _number(codes, recode, new[0], new[1], new[2], new[3], e, first + low, coming[:rows])
             gone, come = old[6][old[5][e] :], new[5][new[4][e] :]
-            power[0] = base[0, :rows]
+            for k in range(rows):
+                power[0, k] = base[0, k]
             for c in range(1, classes):
                 for k in range(rows):
                     change = come[coming[k], c - 1] - gone[going[k], c - 1]
@@ -62,7 +65,7 @@ def changed_losses(
             out[e] += block_loss(power, flat, work, own, floor, shares, truth[part], weights[part]) - before
 
 
-@njit(nogil=True, cache=True)
+@part
 def _number(
     codes: np.ndarray,
     recode: np.ndarray,

@@ -7,9 +7,10 @@ from collections.abc import Callable
 
 import numpy as np
 from llvmlite import ir
-from numba import njit, types
+from numba import types
 from numba.extending import intrinsic
 
+from bnx.kernels.compiling import kernel, part
 from bnx.kernels.exponentials import exponentials
 
 __all__ = ["add_terms", "tempered_losses"]
@@ -50,7 +51,7 @@ def _adder(lanes: int) -> Callable[..., None]:
 _add_two_wide, _add_four_wide, _add_eight_wide = _adder(2), _adder(4), _adder(8)
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def add_terms(
     codes: np.ndarray,
     recode: np.ndarray,
@@ -85,11 +86,12 @@ def add_terms(
                     own = depths[f]
                     _number(codes, recode, plain[f], members[f, :own], sizes[f, :own], low, starts[k + j], width, mine)
                 else:
-                    mine[:] = 0
+                    for row in range(rows):
+                        mine[row] = 0
             _add(into, (low - first) * width, flat, cells[:, :rows], width)
 
 
-@njit(nogil=True, cache=True)
+@part
 def _number(
     codes: np.ndarray,
     recode: np.ndarray,
@@ -118,7 +120,7 @@ def _number(
         places[k] = (places[k] + start) * width
 
 
-@njit(nogil=True, cache=True)
+@part
 def _add(into: np.ndarray, at: int, flat: np.ndarray, places: np.ndarray, width: int) -> None:
     """Add the terms of four families to rows of evidence from ``at`` on."""
     a, b, c, d = places[0], places[1], places[2], places[3]
@@ -140,7 +142,7 @@ def _add(into: np.ndarray, at: int, flat: np.ndarray, places: np.ndarray, width:
                 _add_eight_wide(into, at + k * width + t, flat, a[k] + t, b[k] + t, c[k] + t, d[k] + t)
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def tempered_losses(
     evidence: np.ndarray, log_prior: np.ndarray, truth: np.ndarray, weights: np.ndarray, out: np.ndarray
 ) -> None:
@@ -150,7 +152,9 @@ def tempered_losses(
     skipped; truth, weights (N,); out (V, K) float64, added to: the first K temperatures. Powers of 3/4 and 1/2 are made
     of square roots, so that one exponential serves all.
     """
-    prior = np.exp(log_prior)
+    prior = np.empty(log_prior.size)
+    for c in range(prior.size):
+        prior[c] = np.exp(log_prior[c])
     rows = np.empty(_JOINED, np.int64)
     columns = out.shape[0] * log_prior.size
     powers = np.zeros((columns, _JOINED))
@@ -167,7 +171,7 @@ def tempered_losses(
     _add_joined(evidence, log_prior, prior, truth, rows[:joined], weight, powers, work, out)
 
 
-@njit(nogil=True, cache=True)
+@part
 def _add_joined(
     evidence: np.ndarray,
     log_prior: np.ndarray,
@@ -196,7 +200,7 @@ def _add_joined(
         _add_totals(powers[v * classes : (v + 1) * classes], prior, rows.size, weight, out[v])
 
 
-@njit(nogil=True, cache=True)
+@part
 def _below_likeliest(
     evidence: np.ndarray, column: int, log_prior: np.ndarray, rows: np.ndarray, top: np.ndarray, out: np.ndarray
 ) -> None:
@@ -216,7 +220,7 @@ def _below_likeliest(
             out[c, k] = min(out[c, k] - top[k], 0.0)
 
 
-@njit(nogil=True, cache=True)
+@part
 def _add_totals(powers: np.ndarray, prior: np.ndarray, rows: int, weight: float, out: np.ndarray) -> None:
     """Add the logs of rows' sums over classes (C, 32) to out (K,); one logarithm for the product over rows.
 

@@ -1,14 +1,14 @@
 """Loops from counts of families to tables of log probabilities, and to what a table says between classes."""
 
 import numpy as np
-from numba import njit
 
+from bnx.kernels.compiling import kernel, part
 from bnx.kernels.exponentials import logarithms
 
 __all__ = ["drop_parent", "ratio_tables", "smoothed_tables"]
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def smoothed_tables(
     counts: np.ndarray, sizes: np.ndarray, strengths: np.ndarray, laplace: np.ndarray, out: np.ndarray
 ) -> None:
@@ -21,13 +21,13 @@ def smoothed_tables(
     classes, cells = counts.shape
     shares = np.empty((strengths.size * classes, cells))
     sums, work = np.empty(sizes.size * cells), np.empty(sizes.size * cells)
-    _shares(counts, sizes, strengths, laplace, sums, work, shares)
+    _shares(counts, np.int64(0), sizes, strengths, laplace, sums, work, shares)
     for column in range(shares.shape[0]):
         for cell in range(cells):
             out[cell, column] = np.log(shares[column, cell])
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def ratio_tables(
     counts: np.ndarray,
     starts: np.ndarray,
@@ -57,8 +57,7 @@ def ratio_tables(
         f = which[k]
         cells = starts[f + 1] - starts[f]
         shares = room[: columns * cells].reshape(columns, cells)
-        own = counts[:, starts[f] : starts[f + 1]]
-        _shares(own, sizes[f, : depths[f]], strengths, laplace, sums, work, shares)
+        _shares(counts, starts[f], sizes[f, : depths[f]], strengths, laplace, sums, work, shares)
         _to_ratios(room, strengths.size, classes, cells)
         wanted = strengths.size * (classes - 1)
         logarithms(room[: wanted * cells], logs)
@@ -68,7 +67,7 @@ def ratio_tables(
                 table[cell, column] = room[column * cells + cell]
 
 
-@njit(nogil=True, cache=True)
+@part
 def _to_ratios(room: np.ndarray, options: int, classes: int, cells: int) -> None:
     """Replace the shares of each smoothing's classes by those of all but the first, each divided by the first."""
     for v in range(options):
@@ -83,9 +82,10 @@ def _to_ratios(room: np.ndarray, options: int, classes: int, cells: int) -> None
             room[to + k] = room[first + cells + k]
 
 
-@njit(nogil=True, cache=True)
+@part
 def _shares(
     counts: np.ndarray,
+    start: int,
     sizes: np.ndarray,
     strengths: np.ndarray,
     laplace: np.ndarray,
@@ -93,22 +93,26 @@ def _shares(
     work: np.ndarray,
     out: np.ndarray,
 ) -> None:
-    """Smooth one family: probabilities (V * C, cells). sums, work: room for the cells once a member."""
-    classes, cells = counts.shape
+    """Smooth the family whose cells begin at ``start``: probabilities (V * C, cells). sums, work: room for the cells once a member."""
+    (classes, _), cells = counts.shape, out.shape[1]
     depth = sizes.size - 1
     levels = sizes[depth]
     marginal = np.zeros(levels)
     for c in range(classes):
         x = 0
         for cell in range(cells):
-            marginal[x] += counts[c, cell]
+            marginal[x] += counts[c, start + cell]
             x = x + 1 if x + 1 < levels else 0
-    total = marginal.sum()
+    total = 0.0
+    for x in range(levels):
+        total += marginal[x]
     for x in range(levels):
         marginal[x] = (marginal[x] + 1.0) / (total + levels)
-    plain = not laplace.all()
+    upwards = 0
+    for v in range(laplace.size):
+        upwards += not laplace[v]
     for c in range(classes):
-        first = _sum_up(counts[c], sizes, plain, sums)
+        first = _sum_up(counts[c], start, cells, sizes, upwards > 0, sums)
         for v in range(strengths.size):
             shares = out[v * classes + c]
             if laplace[v]:
@@ -117,8 +121,8 @@ def _shares(
                 _back_off(sums, first, sizes, marginal, strengths[v], work, shares)
 
 
-@njit(nogil=True, cache=True)
-def _sum_up(counts: np.ndarray, sizes: np.ndarray, upwards: bool, sums: np.ndarray) -> int:
+@part
+def _sum_up(counts: np.ndarray, start: int, cells: int, sizes: np.ndarray, upwards: bool, sums: np.ndarray) -> int:
     """Lay the counts (cells,) of one class out behind their sums over the last parents, fewest parents first.
 
     Returns:
@@ -130,8 +134,8 @@ def _sum_up(counts: np.ndarray, sizes: np.ndarray, upwards: bool, sums: np.ndarr
     for d in range(depth):
         first += contexts * levels
         contexts *= sizes[d]
-    for cell in range(counts.size):
-        sums[first + cell] = counts[cell]
+    for cell in range(cells):
+        sums[first + cell] = counts[start + cell]
     at = first
     for d in range(depth if upwards else 0, 0, -1):
         fewer = contexts // sizes[d - 1]
@@ -146,7 +150,7 @@ def _sum_up(counts: np.ndarray, sizes: np.ndarray, upwards: bool, sums: np.ndarr
     return first
 
 
-@njit(nogil=True, cache=True)
+@part
 def _laplace(counts: np.ndarray, levels: int, amount: float, out: np.ndarray) -> None:
     """Add ``amount`` records to every cell and divide by the records of its context."""
     for at in range(0, counts.size, levels):
@@ -157,7 +161,7 @@ def _laplace(counts: np.ndarray, levels: int, amount: float, out: np.ndarray) ->
             out[at + x] = (counts[at + x] + amount) / (rows + amount * levels)
 
 
-@njit(nogil=True, cache=True)
+@part
 def _back_off(
     sums: np.ndarray,
     first: int,
@@ -189,7 +193,7 @@ def _back_off(
         out[cell] = work[first + cell]
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def drop_parent(
     counts: np.ndarray,
     starts: np.ndarray,

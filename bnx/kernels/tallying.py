@@ -1,8 +1,8 @@
 """Sums over rows that scores are made of."""
 
 import numpy as np
-from numba import njit
 
+from bnx.kernels.compiling import kernel
 from bnx.kernels.exponentials import logarithms, total_of
 
 __all__ = ["tally"]
@@ -11,7 +11,7 @@ _ROWS = 256  # of a block
 _PER_BIT = 1.4426950408889634  # bits of one nat
 
 
-@njit(nogil=True, cache=True)
+@kernel
 def tally(p: np.ndarray, first: int, last: int, truth: np.ndarray, confusion: np.ndarray, sums: np.ndarray) -> None:
     """Add rows ``first:last`` of probabilities p (N, C) to a confusion table (C, C) int64 and to sums (4,).
 
