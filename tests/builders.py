@@ -79,11 +79,12 @@ def in_turns(engine: LocalEngine, turns: int) -> LocalEngine:
     """Sort the rows of an engine by group only within so many stretches of the table, as large tables are."""
     groups = engine.blocks * engine.classes
     group = np.repeat(np.arange(len(engine.starts) - 1) % groups, np.diff(engine.starts))
-    stretch = engine.order * turns // max(engine.rows, 1)
+    chunk = max(1, -(-engine.rows // turns))
+    stretch = engine.order // chunk
     new = np.lexsort((engine.order, group, stretch))
     starts = np.searchsorted(stretch[new] * groups + group[new], np.arange(turns * groups + 1))
     codes = np.ascontiguousarray(engine.codes[:, new])
-    return replace(engine, codes=codes, target=engine.target[new], order=engine.order[new], starts=starts)
+    return replace(engine, codes=codes, target=engine.target[new], chunk=chunk, starts=starts)
 
 
 def whole(engine: LocalEngine, table: CodedTable, bins: str = "mdl", max_levels: int = 50) -> Training:

@@ -29,7 +29,7 @@ def least_p(counts: np.ndarray, height: int, width: int) -> float:
     logarithm = 0.0
     down, across = np.empty(height, np.int64), np.empty(width, np.int64)
     for s in range(counts.shape[0]):
-        total = margins(counts, s, np.int64(0), height, width, down, across)
+        total = margins(counts, s, int(np.int64(0)), height, width, down, across)
         _sort_falling(down)
         _sort_falling(across)
         cells = min(_fullest(down, across), _fullest(across, down))

@@ -29,7 +29,7 @@ def expected_nats(counts: np.ndarray, height: int, width: int) -> float:
     result = 0.0
     down, across = np.empty(height, np.int64), np.empty(width, np.int64)
     for s in range(counts.shape[0]):
-        total = margins(counts, s, np.int64(0), height, width, down, across)
+        total = margins(counts, s, int(np.int64(0)), height, width, down, across)
         if used(down, height) < 2 or used(across, width) < 2:
             continue
         result += _weighed(float(total)) - _all_weighed(down) - _all_weighed(across)

@@ -148,7 +148,7 @@ def count_planes(
     """
     planes = np.zeros((_WORDS, width), np.uint64)
     seen = np.empty(64 * _WORDS, codes.dtype)
-    filled = np.int64(0)
+    filled = int(np.int64(0))
     for run in range(lows.size):
         low = lows[run]
         while low < highs[run]:
@@ -161,12 +161,12 @@ def count_planes(
                 else:
                     for k in range(rows):
                         seen[k] = recode[i, codes[i, low + k]]
-                    pack_planes(seen, np.int64(0), rows, sizes[m], own)
+                    pack_planes(seen, int(np.int64(0)), rows, sizes[m], own)
             low += rows
             filled += (rows + 63) // 64
             if filled == _WORDS:
                 _multiply(planes.reshape(-1), filled, width, right, needed, out)
-                filled = np.int64(0)
+                filled = int(np.int64(0))
     if filled:
         _multiply(planes.reshape(-1), filled, width, right, needed, out)
 

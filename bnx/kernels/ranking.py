@@ -37,21 +37,23 @@ def sort_whole(numbers: np.ndarray) -> np.ndarray:
 
     Source: Knuth 1998, section 5.2.5 (radix sorting; from memory).
     """
-    here = _sort_by_bits(numbers, np.empty(numbers.size, np.int64), np.int64(_LOW), np.int64(_HIGH), np.int64(_DIGIT))
-    if _insert(here, np.int64(0), here.size, _PATIENCE * here.size):
+    here = _sort_by_bits(
+        numbers, np.empty(numbers.size, np.int64), int(np.int64(_LOW)), int(np.int64(_HIGH)), int(np.int64(_DIGIT))
+    )
+    if _insert(here, int(np.int64(0)), here.size, _PATIENCE * here.size):
         return here
-    start = np.int64(0)
+    start = int(np.int64(0))
     while start < here.size:
         end = start + 1
         while end < here.size and here[end] >> _LOW == here[start] >> _LOW:
             end += 1
         if end - start <= _FEW:
-            _insert(here, start, end, np.int64(_FEW * _FEW))
+            _insert(here, start, end, int(np.int64(_FEW * _FEW)))
         else:
             run, room = np.empty(end - start, np.int64), np.empty(end - start, np.int64)
             for k in range(run.size):
                 run[k] = here[start + k]
-            run = _sort_by_bits(run, room, np.int64(0), np.int64(_LOW), np.int64(_LOW_DIGIT))
+            run = _sort_by_bits(run, room, int(np.int64(0)), int(np.int64(_LOW)), int(np.int64(_LOW_DIGIT)))
             for k in range(run.size):
                 here[start + k] = run[k]
         start = end

@@ -84,7 +84,7 @@ def reduce_tile(
     (K, pairs, COLUMNS), zero on entry, and in ``marginal`` (pairs or 0, COLUMNS): the first set without the class.
     """
     groups, classes, blocks = counts.shape[0], sets.margins.shape[1], sets.blocks
-    most, levels = np.int64(1), np.int64(1)  # numba compiles a part anew for a literal
+    most, levels = int(np.int64(1)), int(np.int64(1))  # numba compiles a part anew for a literal
     for p in range(first, last):
         h = sets.starts[left[p] + 1] - sets.starts[left[p]]
         w = sets.starts[right[p] + 1] - sets.starts[right[p]]
@@ -167,7 +167,7 @@ def reduce_family(
                 flat[x] = 0
             merge_cells(whole, sizes, starts, levels[k], seen[k], flat.reshape(classes, own))
             tables = flat.reshape(classes * own // (height * width), height * width)
-        add_table(tables, np.int64(0), height, width, down, across, out[k])
+        add_table(tables, int(np.int64(0)), height, width, down, across, out[k])
 
 
 @kernel
@@ -295,7 +295,7 @@ def _finish(
     whole, merged, _, down, across = rooms
     height, width = sets.sizes[k, i], sets.sizes[k, j]
     if sets.plain[i] and sets.plain[j]:
-        add_table(whole, np.int64(0), height, width, down, across, row)
+        add_table(whole, int(np.int64(0)), height, width, down, across, row)
         return
     first, second = sets.starts[i], sets.starts[j]
     rows, columns = sets.starts[i + 1] - first, sets.starts[j + 1] - second
@@ -306,7 +306,7 @@ def _finish(
             place = sets.levels[k, first + a] * width
             for b in range(columns):
                 merged[c, place + sets.levels[k, second + b]] += whole[c, a * columns + b]
-    add_table(merged, np.int64(0), height, width, down, across, row)
+    add_table(merged, int(np.int64(0)), height, width, down, across, row)
 
 
 @part
@@ -326,4 +326,4 @@ def _marginal(
     for c in range(tables.shape[0]):
         for x in range(height * width):
             pooled[0, x] += tables[c, x]
-    add_table(pooled, np.int64(0), height, width, down, across, row)
+    add_table(pooled, int(np.int64(0)), height, width, down, across, row)

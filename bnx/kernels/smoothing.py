@@ -21,7 +21,7 @@ def smoothed_tables(
     classes, cells = counts.shape
     shares = np.empty((strengths.size * classes, cells))
     sums, work = np.empty(sizes.size * cells), np.empty(sizes.size * cells)
-    _shares(counts, np.int64(0), sizes, strengths, laplace, sums, work, shares)
+    _shares(counts, int(np.int64(0)), sizes, strengths, laplace, sums, work, shares)
     for column in range(shares.shape[0]):
         for cell in range(cells):
             out[cell, column] = np.log(shares[column, cell])
@@ -93,7 +93,10 @@ def _shares(
     work: np.ndarray,
     out: np.ndarray,
 ) -> None:
-    """Smooth the family whose cells begin at ``start``: probabilities (V * C, cells). sums, work: room for the cells once a member."""
+    """Smooth the family whose cells begin at ``start``: probabilities (V * C, cells).
+
+    sums, work: room for the cells once a member.
+    """
     (classes, _), cells = counts.shape, out.shape[1]
     depth = sizes.size - 1
     levels = sizes[depth]
