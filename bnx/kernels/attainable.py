@@ -4,7 +4,7 @@ import math
 
 import numpy as np
 
-from bnx.kernels.compiling import kernel, part
+from bnx.kernels.compiling import inlined, kernel
 from bnx.kernels.margins import margins
 
 __all__ = ["least_p"]
@@ -37,7 +37,7 @@ def least_p(counts: np.ndarray, height: int, width: int) -> float:
     return min(1.0, math.exp(logarithm))
 
 
-@part
+@inlined
 def _sort_falling(totals: np.ndarray) -> None:
     """Sort a few totals in place, the largest first."""
     for k in range(1, totals.size):
@@ -48,7 +48,7 @@ def _sort_falling(totals: np.ndarray) -> None:
         totals[place] = total
 
 
-@part
+@inlined
 def _fullest(lines: np.ndarray, caps: np.ndarray) -> float:
     """Sum ln(n!) over lines that each fill the largest caps first; caps fall."""
     result = 0.0
@@ -62,7 +62,7 @@ def _fullest(lines: np.ndarray, caps: np.ndarray) -> float:
     return result
 
 
-@part
+@inlined
 def _sum_of_log_factorials(totals: np.ndarray) -> float:
     """Sum ln(k!) over totals."""
     result = 0.0

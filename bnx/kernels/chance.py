@@ -4,7 +4,7 @@ import math
 
 import numpy as np
 
-from bnx.kernels.compiling import kernel, part
+from bnx.kernels.compiling import inlined, kernel, part
 from bnx.kernels.margins import margins, used
 
 __all__ = ["expected_nats"]
@@ -40,13 +40,13 @@ def expected_nats(counts: np.ndarray, height: int, width: int) -> float:
     return result
 
 
-@part
+@inlined
 def _weighed(count: float) -> float:
     """Compute n ln n."""
     return count * math.log(count) if count > 0.0 else 0.0
 
 
-@part
+@inlined
 def _all_weighed(totals: np.ndarray) -> float:
     """Sum n ln n over totals."""
     result = 0.0

@@ -9,7 +9,7 @@ from typing import Any, TypeVar
 
 from numba import njit
 
-__all__ = ["kernel", "part"]
+__all__ = ["inlined", "kernel", "part"]
 
 Loop = TypeVar("Loop", bound=Callable[..., Any])
 
@@ -24,6 +24,11 @@ def kernel(loop: Loop) -> Loop:
 def part(loop: Loop) -> Loop:
     """Compile what only kernels call: it becomes part of each of them, and Python cannot reach it."""
     return _compiled(loop, {**_BOTH, "no_cpython_wrapper": True})
+
+
+def inlined(loop: Loop) -> Loop:
+    """Compile a part anew wherever it is called, which is quicker for a few lines in a small kernel."""
+    return _compiled(loop, {**_BOTH, "inline": "always"})
 
 
 def _compiled(loop: Loop, options: Mapping[str, Any]) -> Loop:

@@ -6,7 +6,7 @@ column is not *informative*: its records count, but it adds nothing to a statist
 
 import numpy as np
 
-from bnx.kernels.compiling import kernel, part
+from bnx.kernels.compiling import inlined, kernel, part
 from bnx.kernels.margins import margins, used
 from bnx.kernels.skewness import third_moment
 
@@ -190,7 +190,7 @@ def _variance(down: np.ndarray, height: int, r: int, across: np.ndarray, width: 
     return variance
 
 
-@part
+@inlined
 def _spread(totals: np.ndarray, size: int, used: int, total: float) -> tuple[float, float]:
     """Split a margin into v - w and w of the variance formula; both exactly 0 where they vanish.
 

@@ -2,7 +2,7 @@
 
 import numpy as np
 
-from bnx.kernels.compiling import kernel, part
+from bnx.kernels.compiling import inlined, kernel, part
 
 __all__ = ["forest_level", "strongest_few", "strongest_forest"]
 
@@ -77,7 +77,7 @@ def forest_level(left: np.ndarray, right: np.ndarray, p: np.ndarray, n: int, tes
     return found
 
 
-@part
+@inlined
 def _root(root: np.ndarray, node: int) -> int:
     """Find the root of a tree, halving the path on the way."""
     while root[node] != node:

@@ -4,7 +4,7 @@ import math
 
 import numpy as np
 
-from bnx.kernels.compiling import kernel, part
+from bnx.kernels.compiling import inlined, kernel, part
 
 __all__ = ["ENOUGH", "SHUFFLED", "log_factorials", "monte_carlo_tail"]
 
@@ -108,7 +108,7 @@ def _compact(
     return r, c, total
 
 
-@part
+@inlined
 def _used_first(totals: np.ndarray, places: np.ndarray) -> int:
     """Move the totals above 0 to the front, note where each stood, and count them; zeros follow."""
     found = 0
@@ -122,7 +122,7 @@ def _used_first(totals: np.ndarray, places: np.ndarray) -> int:
     return found
 
 
-@part
+@inlined
 def _statistic(table: np.ndarray, down: np.ndarray, across: np.ndarray, total: int) -> float:
     """Compute X2 of one table without empty rows or columns."""
     share = 0.0
@@ -224,13 +224,13 @@ def _hypergeometric(draws: int, marked: int, total: int, log_factorial: np.ndarr
     return mode
 
 
-@part
+@inlined
 def _log(number: int, log_factorial: np.ndarray) -> float:
     """Look up ln(number!), or compute it beyond the table."""
     return float(log_factorial[number]) if number < log_factorial.size else math.lgamma(number + 1.0)
 
 
-@part
+@inlined
 def _next(state: np.ndarray) -> np.uint64:
     """Give the next 64 random bits.
 
@@ -243,13 +243,13 @@ def _next(state: np.ndarray) -> np.uint64:
     return np.uint64(bits ^ (bits >> _S31))
 
 
-@part
+@inlined
 def _uniform(state: np.ndarray) -> float:
     """Draw a number from 0 to 1, 0 included."""
     return np.float64(_next(state) >> _S11) * 2.0**-53
 
 
-@part
+@inlined
 def _below(bound: int, state: np.ndarray) -> int:
     """Draw a whole number from 0 to ``bound`` - 1, for bounds far below 2^32."""
     return int(((_next(state) >> _S32) * np.uint64(bound)) >> _S32)

@@ -6,7 +6,7 @@ through in blocks laid out class by class, so that one instruction serves severa
 
 import numpy as np
 
-from bnx.kernels.compiling import kernel, part
+from bnx.kernels.compiling import inlined, kernel, part
 from bnx.kernels.exponentials import exponentials, logarithms, total_of
 
 __all__ = ["calibrated_loss", "calibration_sums", "posteriors", "slope_sums"]
@@ -30,7 +30,7 @@ def below_top(power: np.ndarray, top: np.ndarray) -> None:
             power[c, k] -= top[k]
 
 
-@part
+@inlined
 def _power(
     evidence: np.ndarray, first: int, bias: np.ndarray, temperature: float, power: np.ndarray, top: np.ndarray
 ) -> None:
@@ -189,7 +189,7 @@ def calibration_sums(
     return value
 
 
-@part
+@inlined
 def _tilted(
     evidence: np.ndarray,
     prior: np.ndarray,
@@ -210,7 +210,7 @@ def _tilted(
     below_top(power, top)
 
 
-@part
+@inlined
 def _derivatives(
     p: np.ndarray,
     slopes: np.ndarray,

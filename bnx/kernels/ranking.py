@@ -2,7 +2,7 @@
 
 import numpy as np
 
-from bnx.kernels.compiling import kernel, part
+from bnx.kernels.compiling import inlined, kernel, part
 
 __all__ = [
     "HISTOGRAM_BINS",
@@ -60,7 +60,7 @@ def sort_whole(numbers: np.ndarray) -> np.ndarray:
     return here
 
 
-@part
+@inlined
 def _insert(numbers: np.ndarray, start: int, end: int, moves: int) -> bool:
     """Sort in place by insertion; give up after so many moves, each number being there once."""
     for k in range(start + 1, end):

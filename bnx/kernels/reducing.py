@@ -4,7 +4,7 @@ from typing import NamedTuple
 
 import numpy as np
 
-from bnx.kernels.compiling import kernel, part
+from bnx.kernels.compiling import inlined, kernel, part
 from bnx.kernels.contingency import add_table
 
 __all__ = [
@@ -221,7 +221,7 @@ def complete_tables(
             _complete(compact, h + 1, w + 1, down, across, out[g, offsets[p] :])
 
 
-@part
+@inlined
 def _rooms(classes: int, cells: int, levels: int) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
     """Make room for whole tables, merged tables, a pooled table and two margins."""
     whole, merged = np.empty((classes, cells), np.int32), np.empty((classes, cells), np.int32)
@@ -262,7 +262,7 @@ def sum_set(
                 mine[x] = total[c, x] - mine[x]
 
 
-@part
+@inlined
 def _complete(
     compact: np.ndarray, height: int, width: int, down: np.ndarray, across: np.ndarray, out: np.ndarray
 ) -> None:

@@ -2,7 +2,7 @@
 
 import numpy as np
 
-from bnx.kernels.compiling import kernel, part
+from bnx.kernels.compiling import inlined, kernel
 from bnx.kernels.counting import number_cells
 from bnx.kernels.posterior import below_top, block_loss
 
@@ -65,7 +65,7 @@ def changed_losses(
             out[e] += block_loss(power, flat, work, own, floor, shares, truth[part], weights[part]) - before
 
 
-@part
+@inlined
 def _number(
     codes: np.ndarray,
     recode: np.ndarray,

@@ -10,7 +10,7 @@ from llvmlite import ir
 from numba import types
 from numba.extending import intrinsic
 
-from bnx.kernels.compiling import kernel, part
+from bnx.kernels.compiling import inlined, kernel, part
 from bnx.kernels.exponentials import exponentials
 
 __all__ = ["add_terms", "tempered_losses"]
@@ -91,7 +91,7 @@ def add_terms(
             _add(into, (low - first) * width, flat, cells[:, :rows], width)
 
 
-@part
+@inlined
 def _number(
     codes: np.ndarray,
     recode: np.ndarray,
@@ -120,7 +120,7 @@ def _number(
         places[k] = (places[k] + start) * width
 
 
-@part
+@inlined
 def _add(into: np.ndarray, at: int, flat: np.ndarray, places: np.ndarray, width: int) -> None:
     """Add the terms of four families to rows of evidence from ``at`` on."""
     a, b, c, d = places[0], places[1], places[2], places[3]
@@ -200,7 +200,7 @@ def _add_joined(
         _add_totals(powers[v * classes : (v + 1) * classes], prior, rows.size, weight, out[v])
 
 
-@part
+@inlined
 def _below_likeliest(
     evidence: np.ndarray, column: int, log_prior: np.ndarray, rows: np.ndarray, top: np.ndarray, out: np.ndarray
 ) -> None:
@@ -220,7 +220,7 @@ def _below_likeliest(
             out[c, k] = min(out[c, k] - top[k], 0.0)
 
 
-@part
+@inlined
 def _add_totals(powers: np.ndarray, prior: np.ndarray, rows: int, weight: float, out: np.ndarray) -> None:
     """Add the logs of rows' sums over classes (C, 32) to out (K,); one logarithm for the product over rows.
 

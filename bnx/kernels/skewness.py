@@ -8,7 +8,7 @@ over the N records. Both are 0 for equal totals.
 
 import numpy as np
 
-from bnx.kernels.compiling import part
+from bnx.kernels.compiling import inlined, part
 
 __all__ = ["third_moment"]
 
@@ -46,7 +46,7 @@ def third_moment(down: np.ndarray, height: int, across: np.ndarray, width: int, 
     return _general(total, a, u, v, b, s, t)
 
 
-@part
+@inlined
 def _margin(totals: np.ndarray, size: int, total: float) -> tuple[float, float, float, int]:
     """Summarise a margin: a, U, V, and the sum of squared totals."""
     used, squares = 0, 0
@@ -78,30 +78,30 @@ def _general(n: float, a: float, u: float, v: float, b: float, s: float, t: floa
     return ((levels / n1 + squares) / n1 + cubes) / (n1 * (n - 2.0) * (n - 3.0) * (n - 4.0) * (n - 5.0))
 
 
-@part
+@inlined
 def _mixed(n: float, b: float) -> float:
     return ((-11.0 * n + 21.0 * b - 2.0) * n + 27.0 * b + 17.0) * n - 4.0 * (3.0 * b + 1.0)
 
 
-@part
+@inlined
 def _even(n: float, b: float) -> float:
     return ((b - 5.0) * n + 9.0 * (b + 1.0)) * n - 4.0 * (b + 1.0)
 
 
-@part
+@inlined
 def _both(n: float, a: float, b: float) -> float:
     high = (11.0 * n - 21.0 * (a + b) - 9.0) * n + 45.0 * a * b - 12.0 * (a + b) - 45.0
     low = (high * n + 45.0 * a * b + 123.0 * (a + b) + 89.0) * n - 198.0 * a * b - 114.0 * (a + b) - 54.0
     return low * n + 8.0 * (3.0 * a + 1.0) * (3.0 * b + 1.0)
 
 
-@part
+@inlined
 def _single(n: float, a: float, b: float) -> float:
     high = ((7.0 - b) * n + 3.0 * a * b - 15.0 * a - 12.0 * b - 32.0) * n + 21.0 * a * b + 57.0 * a + 43.0 * b + 55.0
     return (high * n - 2.0 * (33.0 * a + 19.0) * (b + 1.0)) * n + 8.0 * (3.0 * a + 1.0) * (b + 1.0)
 
 
-@part
+@inlined
 def _levels(n: float, a: float, b: float) -> float:
     high = ((2.0 * n + a * b - 5.0 * (a + b) - 17.0) * n + 4.0 * (a * b + 8.0 * (a + b) + 14.0)) * n
     low = (high - 37.0 * a * b - 71.0 * (a + b) - 85.0) * n + 60.0 * (a + 1.0) * (b + 1.0)

@@ -2,7 +2,7 @@
 
 import numpy as np
 
-from bnx.kernels.compiling import kernel, part
+from bnx.kernels.compiling import inlined, kernel, part
 from bnx.kernels.exponentials import logarithms
 
 __all__ = ["drop_parent", "ratio_tables", "smoothed_tables"]
@@ -67,7 +67,7 @@ def ratio_tables(
                 table[cell, column] = room[column * cells + cell]
 
 
-@part
+@inlined
 def _to_ratios(room: np.ndarray, options: int, classes: int, cells: int) -> None:
     """Replace the shares of each smoothing's classes by those of all but the first, each divided by the first."""
     for v in range(options):
@@ -124,7 +124,7 @@ def _shares(
                 _back_off(sums, first, sizes, marginal, strengths[v], work, shares)
 
 
-@part
+@inlined
 def _sum_up(counts: np.ndarray, start: int, cells: int, sizes: np.ndarray, upwards: bool, sums: np.ndarray) -> int:
     """Lay the counts (cells,) of one class out behind their sums over the last parents, fewest parents first.
 
@@ -153,7 +153,7 @@ def _sum_up(counts: np.ndarray, start: int, cells: int, sizes: np.ndarray, upwar
     return first
 
 
-@part
+@inlined
 def _laplace(counts: np.ndarray, levels: int, amount: float, out: np.ndarray) -> None:
     """Add ``amount`` records to every cell and divide by the records of its context."""
     for at in range(0, counts.size, levels):
@@ -164,7 +164,7 @@ def _laplace(counts: np.ndarray, levels: int, amount: float, out: np.ndarray) ->
             out[at + x] = (counts[at + x] + amount) / (rows + amount * levels)
 
 
-@part
+@inlined
 def _back_off(
     sums: np.ndarray,
     first: int,

@@ -4,6 +4,7 @@ A compiler of loops works on one at a time in a process. What another process ha
 ``python -m bnx.kernels.warming DONE`` compiles what is not on disk yet, and then makes the file DONE.
 """
 
+import gc
 import sys
 from collections.abc import Callable
 from pathlib import Path
@@ -55,4 +56,5 @@ def compile_late(done: Path) -> None:
 
 
 if __name__ == "__main__":
+    gc.disable()  # a process this short leaves nothing worth looking for
     compile_late(Path(sys.argv[1]))
