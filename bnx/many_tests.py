@@ -4,9 +4,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from bnx.multiplicity import dependence_factor
+from bnx.multiplicity import dependence_factor, judged_at
 
-__all__ = ["ManyTests", "family_size"]
+__all__ = ["ManyTests"]
 
 _STEP = 1 << 20
 
@@ -71,23 +71,4 @@ class ManyTests:
             return float("nan")
         if self.method == "none":
             return alpha
-        rejected = self.rejected(alpha)
-        if self.method == "holm":
-            return alpha / max(1, m - rejected)
-        return alpha * max(1, rejected) / (m * dependence_factor(m, self.method))
-
-
-def family_size(least: np.ndarray, small: int, alpha: float) -> int:
-    """Find K as `multiplicity.testable` does, from the least p-values (k,) above alpha / m and the number of others.
-
-    Source: Tarone 1990.
-    """
-    rising = np.sort(least)
-    low, high = 1, max(1, small + len(least))
-    while low < high:
-        middle = (low + high) // 2
-        if small + int(np.searchsorted(rising, alpha / middle, side="right")) <= middle:
-            high = middle
-        else:
-            low = middle + 1
-    return low
+        return judged_at(m, self.rejected(alpha), self.method, alpha)

@@ -5,7 +5,7 @@ import numpy as np
 from bnx.errors import SettingError
 from bnx.kernels.graphs import forest_level
 
-__all__ = ["METHODS", "adjusted", "forest_threshold", "testable", "threshold"]
+__all__ = ["METHODS", "adjusted", "family_size", "forest_threshold", "judged_at", "testable", "threshold"]
 
 METHODS = ("bh", "holm", "by", "none")
 
@@ -52,7 +52,11 @@ def threshold(p: np.ndarray, method: str, alpha: float) -> float:
         return float("nan")
     if method == "none":
         return alpha
-    rejected = int(np.count_nonzero(adjusted(p, method) <= alpha))
+    return judged_at(m, int(np.count_nonzero(adjusted(p, method) <= alpha)), method, alpha)
+
+
+def judged_at(m: int, rejected: int, method: str, alpha: float) -> float:
+    """Compute what ``threshold`` says of m tests, but for ``none``, from the number rejected."""
     if method == "holm":
         return alpha / max(1, m - rejected)
     return alpha * max(1, rejected) / (m * dependence_factor(m, method))
@@ -78,11 +82,23 @@ def testable(least: np.ndarray, alpha: float, method: str) -> np.ndarray:
     _check(method)
     if method == "none":
         return least <= alpha
+    return least <= alpha / family_size(least, 0, alpha)
+
+
+def family_size(least: np.ndarray, small: int, alpha: float) -> int:
+    """Find the K of ``testable``, from the least p-values (k,) that may lie above alpha / K and the number of others.
+
+    Source: Tarone 1990.
+    """
     rising = np.sort(least)
-    sizes = np.arange(1, len(least) + 1)
-    fitting = np.searchsorted(rising, alpha / sizes, side="right") <= sizes
-    size = int(sizes[np.argmax(fitting)]) if len(sizes) else 1
-    return least <= alpha / size
+    low, high = 1, max(1, small + len(least))
+    while low < high:
+        middle = (low + high) // 2
+        if small + int(np.searchsorted(rising, alpha / middle, side="right")) <= middle:
+            high = middle
+        else:
+            low = middle + 1
+    return low
 
 
 def forest_threshold(pairs: np.ndarray, p: np.ndarray, n: int, alpha: float) -> float:

@@ -16,7 +16,8 @@ from bnx.independence import Statistics, p_values
 from bnx.kernels.contingency import NATS, table_statistics
 from bnx.kernels.exact import exact_tail
 from bnx.kernels.wide_tests import class_tables, least_of_tables
-from bnx.many_tests import ManyTests, family_size
+from bnx.many_tests import ManyTests
+from bnx.multiplicity import family_size
 from bnx.pair_judging import JudgedPairs, judged_pairs
 from bnx.recipe import Recipe
 from bnx.refining import FAR_ABOVE, FAR_BELOW, Visit, pooled, with_chance

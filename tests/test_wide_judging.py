@@ -12,8 +12,8 @@ from test_wide import BLOCKS, rare_table
 from bnx import multiplicity
 from bnx.comparison import _judged
 from bnx.dependence import measure
-from bnx.many_tests import ManyTests, family_size
-from bnx.multiplicity import adjusted, threshold
+from bnx.many_tests import ManyTests
+from bnx.multiplicity import adjusted, family_size, threshold
 from bnx.recipe import Recipe
 from bnx.trainings import Training
 from bnx.verdicts import Judgement
