@@ -109,7 +109,7 @@ def compare(
     first = evaluations[0]
     learned = first.learned(())
     progress("stability", 0, 0)
-    stable = stability(_under("stability", first.engine), learned.training.view, folds, learners, bounds, recipe)
+    stable = stability(_under("stability", first.engine), learned, folds, learners, bounds, recipe)
     picks = inner_picks(evaluations)
     results, honest = score(evaluations, picks)
     progress("judging pairs", 0, 0)

@@ -65,16 +65,23 @@ def _ends(pair: str, names: Sequence[str]) -> tuple[str, str]:
 
 
 def learn(
-    engine: LocalEngine, trainings: Sequence[Training], learners: Sequence[Learner], bounds: Bounds, recipe: Recipe
+    engine: LocalEngine,
+    trainings: Sequence[Training],
+    learners: Sequence[Learner],
+    bounds: Bounds,
+    recipe: Recipe,
+    known: Sequence[Structure] = (),
 ) -> list[Learned]:
     """Learn every structure in each training set.
 
     Pairs are measured if some structure looks at them, and tested if some structure tests; as many training sets at a
     time as a fixed amount of memory takes.
+
+    known: structures of similar rows, where the search in very wide tables begins; they change no answer.
     """
     if takes_wide_road(engine, trainings, learners, bounds, recipe):
         rigour = rigour_of(learners, len(bounds.names), recipe)
-        found = learn_wide(engine, trainings, learners, bounds, recipe, rigour)
+        found = learn_wide(engine, trainings, learners, bounds, recipe, rigour, known)
         return [Learned(training, structures) for training, structures in zip(trainings, found, strict=True)]
     step = sets_at_a_time(len(bounds.names)) if any(member.looks_at_pairs for member in learners) else len(trainings)
     return [

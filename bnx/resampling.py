@@ -9,7 +9,7 @@ from bnx.engines import LocalEngine
 from bnx.folds import halves
 from bnx.gating import Bounds
 from bnx.learners import Learner
-from bnx.learning import learn
+from bnx.learning import Learned, learn
 from bnx.recipe import Recipe
 from bnx.trainings import Training
 from bnx.views import View
@@ -20,23 +20,24 @@ Stability = Mapping[tuple[int, frozenset[int]], float]  # (structure, the two en
 
 
 def stability(
-    engine: LocalEngine, view: View, folds: int, learners: Sequence[Learner], bounds: Bounds, recipe: Recipe
+    engine: LocalEngine, learned: Learned, folds: int, learners: Sequence[Learner], bounds: Bounds, recipe: Recipe
 ) -> Stability:
     """Learn every structure from random halves, each half of the blocks of every fold.
 
-    view: cut points and pooled levels of all rows, which the halves share. An edge counts in either direction.
+    learned: from all rows, whose cut points and pooled levels the halves share. An edge counts in either direction.
 
     Source: Meinshausen & Buhlmann 2010 (halves without replacement).
     """
     if not recipe.resamples:
         return {}
+    view = learned.training.view
     rows = engine.recoded(view)
     plain = _plain(view)
     found: Counter[tuple[int, frozenset[int]]] = Counter()
     masks = halves(folds, engine.blocks // folds, recipe.resamples, recipe.seed)
     trainings = [Training((), mask, plain, engine.class_counts[mask].sum(axis=0)) for mask in masks]
-    for learned in learn(rows, trainings, learners, bounds, recipe):
-        for s, structure in enumerate(learned.structures):
+    for half in learn(rows, trainings, learners, bounds, recipe, learned.structures):
+        for s, structure in enumerate(half.structures):
             found.update((s, frozenset(edge)) for edge in structure.edges)
     return {key: number / recipe.resamples for key, number in found.items()}
 

@@ -6,9 +6,11 @@ kept is measured and tested exactly as in a table of few attributes, and the for
 same, whatever the order.
 """
 
+from collections import Counter
 from collections.abc import Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
+from itertools import pairwise
 from threading import Lock
 
 import numpy as np
@@ -24,12 +26,16 @@ from bnx.wide_tables import Margins, Planes, margins_of, pack, sums_of
 
 __all__ = ["grow_forests"]
 
-_TOGETHER = 32  # training sets that go through the pairs side by side: their margins and sums stay in the cache
+_TOGETHER = (
+    48  # training sets that go through the pairs side by side, at most: their margins and sums stay in the cache
+)
+_FEW = 8  # training sets that go first, and find pairs that the others hold too
 _TILE = 128  # attributes j at a time
 _RUN = 512  # attributes i at a time
 _CAPACITY = 1 << 16  # pairs kept by a thread for a set between two rebuildings
 _FIRST = 256  # the first round goes through a 256th of the pairs, every other through twice as many as before it,
 _LAST = 0.25  # at most a quarter
+_SEEDS = 4  # pairs that the next group begins with, for each attribute
 _ROUNDING = 256 * 2.0**-52
 
 
@@ -56,20 +62,45 @@ def grow_forests(
 ) -> list[Grown]:
     """Find the strongest forest, and the strongest forest of tested pairs, in every training set.
 
-    seeds: pairs to begin with, as from another set.
+    seeds: pairs to begin with, such as forests of similar rows hold; they make it faster, and no other answer.
     """
     planes = pack(engine)
-    start = seeds or _first_seeds(planes, engine, trainings, asked)
+    common = _Common(_SEEDS * len(planes.planes))
+    common.add(seeds or _first_seeds(planes, engine, trainings, asked))
     found: list[Grown] = []
-    for first in range(0, len(trainings), _TOGETHER):
-        group = _prepared(engine, planes, trainings[first : first + _TOGETHER], asked)
-        found += _through(
-            engine,
-            group,
-            start,
-            f"growing trees of sets {first + 1} to {first + len(group.trainings)} of {len(trainings)}",
-        )
+    for first, stop in _groups(len(trainings)):
+        group = _prepared(engine, planes, trainings[first:stop], asked)
+        stage = f"growing trees of sets {first + 1} to {stop} of {len(trainings)}"
+        grown = _through(engine, group, common.best(), stage)
+        for one in grown:
+            common.add(one.forest.joined(one.sure))
+        found += grown
     return found
+
+
+def _groups(sets: int) -> list[tuple[int, int]]:
+    """Cut the sets into groups of one size, after a small one that finds the pairs to begin with."""
+    first = min(_FEW, sets)
+    groups = max(1, -(-(sets - first) // _TOGETHER))
+    stops = [first + (sets - first) * k // groups for k in range(groups + 1)]
+    return [(0, first), *((one, other) for one, other in pairwise(stops) if one < other)]
+
+
+class _Common:
+    """Pairs that forests hold, with how many hold each: what the forests of similar rows are likely to hold."""
+
+    def __init__(self, most: int) -> None:
+        self._most = most
+        self._times: Counter[int] = Counter()
+
+    def add(self, edges: Edges) -> None:
+        """Count the pairs of one more set."""
+        self._times.update(((edges.left << 32) | edges.right).tolist())
+
+    def best(self) -> Edges:
+        """Give the pairs that most sets hold."""
+        keys = np.array([key for key, _ in self._times.most_common(self._most)], np.int64)
+        return Edges.of(keys >> 32, keys & 0xFFFFFFFF)
 
 
 def _first_seeds(planes: Planes, engine: LocalEngine, trainings: Sequence[Training], asked: Asked) -> Edges:
@@ -105,7 +136,17 @@ def _tests(margins: Margins, asked: Asked) -> Tests:
     least = deviates[1, attainable].min() - 1e-3
     far = tails[:, 1] - mean if least > 0 else np.full(len(tails), -1e30)
     limits = np.stack([far, np.full(len(tails), least * least * (1.0 - 1e-3))], axis=1)
-    return Tests(asked.tested, limits, tails, deviates)
+    return Tests(asked.tested, limits, _ample(margins), tails, deviates)
+
+
+def _ample(margins: Margins) -> np.ndarray:
+    """Scale the rarer level of every attribute, (S, n): two of these multiply to a pair's least expected count or less.
+
+    Classes in which an attribute does not vary do not count.
+    """
+    rare = np.minimum(margins.ones, margins.records[:, :, None] - margins.ones)
+    scaled = rare / np.sqrt(np.maximum(margins.records, 1.0))[:, :, None]
+    return np.asarray(np.where(rare > 0, scaled, np.inf).min(axis=1).astype(np.float32))
 
 
 def _most_p(alpha: float, attributes: int, testable: np.ndarray) -> np.ndarray:
@@ -162,11 +203,10 @@ def _begun(engine: LocalEngine, group: _Pass, seeds: Edges) -> list[Grown]:
 
 def _absorbed(group: _Pass, s: int, now: Grown, threads: Sequence[Kept]) -> Grown:
     """Let what the threads kept for a set into its forests."""
-    for own in threads:
-        left, right, what = own.kept[s, : own.numbers[s]].T.astype(np.int64)
-        joint = own.joints[s, : own.numbers[s]]
-        now = admitted(group.margins, s, group.asked, now, left, right, what, joint)
-    return now
+    kept = np.concatenate([own.kept[s, : own.numbers[s]] for own in threads]).astype(np.int64)
+    joint = np.concatenate([own.joints[s, : own.numbers[s]] for own in threads])
+    left, right, what = kept.T
+    return admitted(group.margins, s, group.asked, now, left, right, what, joint)
 
 
 def _room(group: _Pass, classes: int) -> Kept:

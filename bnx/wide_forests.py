@@ -39,7 +39,12 @@ class Edges:
     @classmethod
     def none(cls) -> "Edges":
         """Hold no pair."""
-        return cls(np.zeros(0, np.int64), np.zeros(0, np.int64), np.zeros(0), np.zeros(0))
+        return cls.of(np.zeros(0, np.int64), np.zeros(0, np.int64))
+
+    @classmethod
+    def of(cls, left: np.ndarray, right: np.ndarray) -> "Edges":
+        """Hold pairs that are not measured, their bits and p NaN."""
+        return cls(left, right, np.full(len(left), np.nan), np.full(len(left), np.nan))
 
     def take(self, chosen: np.ndarray) -> "Edges":
         """Keep the chosen pairs."""

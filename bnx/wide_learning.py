@@ -46,14 +46,17 @@ def learn_wide(
     bounds: Bounds,
     recipe: Recipe,
     rigour: Rigour,
+    known: Sequence[Structure] = (),
 ) -> list[tuple[Structure, ...]]:
-    """Learn naive, tan and tan-tested in every training set, in the order of the learners."""
+    """Learn naive, tan and tan-tested in every training set, in the order of the learners; known: see `learning`."""
     nothing = Structure("naive", ((),) * len(bounds.names))
     if all(member.name == "naive" for member in learners):
         return [(nothing,) * len(learners) for _ in trainings]
     forbidden = frozenset((min(pair), max(pair)) for pair in bounds.forbidden)
     tested = any(member.tested for member in learners)
-    grown = grow_forests(engine, trainings, Asked(recipe.alpha, rigour, tested, forbidden))
+    seeds = np.array([sorted(edge) for one in known for edge in one.edges], np.int64).reshape(-1, 2)
+    asked = Asked(recipe.alpha, rigour, tested, forbidden)
+    grown = grow_forests(engine, trainings, asked, Edges.of(*seeds.T) if len(seeds) else None)
 
     def structures(number: int) -> tuple[Structure, ...]:
         order = np.argsort(-relevance_of(engine, trainings[number]), kind="stable")

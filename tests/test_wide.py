@@ -1,6 +1,7 @@
 """Trees over binary attributes grown pair by pair: the same as from a matrix of all pairs."""
 
 import numpy as np
+import pytest
 from builders import coded, started
 from hypothesis import given, settings
 from hypothesis import strategies as st
@@ -86,6 +87,22 @@ def test_threads_change_nothing_in_a_forest():
         for edges in (lambda grown: grown.forest, lambda grown: grown.sure):
             assert edges_of(edges(one)) == edges_of(edges(two)) == edges_of(edges(three))
             assert np.array_equal(np.sort(edges(one).bits), np.sort(edges(two).bits))
+
+
+@pytest.mark.parametrize("sets", [1, 8, 9, 57, 70])
+def test_groups_of_sets_and_pairs_to_begin_with_change_nothing(sets):
+    table = rare_table(7, 400, 60, 2)
+    engine = started(table, np.random.default_rng(7).integers(0, BLOCKS, 400), BLOCKS, 2)
+    trainings = (sets_of(engine, make_view(table.schema, {}), 7, 100) * 2)[:sets]
+    recipe = Recipe("class")
+    bounds = make_bounds(recipe, table.schema.names)
+    asked = Asked(0.05, rigour_of(LEARNERS, 60, recipe), True, frozenset())
+    known = Edges.of(*np.triu_indices(60, 40))
+    for seeds in (None, known, Edges.none()):
+        grown = grow_forests(engine, trainings, asked, seeds)
+        for one, learned in zip(grown, learn(engine, trainings, LEARNERS, bounds, recipe), strict=True):
+            for edges, structure in zip((one.forest, one.sure), learned.structures, strict=True):
+                assert edges_of(edges) == {(min(edge), max(edge)) for edge in structure.edges}
 
 
 @settings(max_examples=12, deadline=None)

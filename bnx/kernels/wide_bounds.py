@@ -17,6 +17,7 @@ PARTS = 5
 
 _ROUNDING = np.float32(1.0 + 1e-4)  # of single precision, many times over
 _SLIGHT = np.float32(1e-4)
+_AMPLE = np.float32(5.0 * (1.0 + 1e-5))  # expected count from which Cochran's rule asks nothing more, and rounding
 
 
 @part
@@ -31,6 +32,7 @@ def screen(
     low_tested: np.ndarray,
     tested: bool,
     limits: np.ndarray,
+    ample: np.ndarray,
     work: np.ndarray,
     hits: np.ndarray,
 ) -> int:
@@ -38,12 +40,15 @@ def screen(
 
     counts (C, cells): joint counts; known (C, PARTS, n); records (C,); low, low_tested (n,) float32: weakest links to
     the root, in both forests; limits: least excess of X2, and least square of it in variances, of a pair that could
-    pass the test.
+    pass the test, the latter only by its moments; ample (n,) float32: a pair whose product of these is at least 5 is
+    tested by the chi-square tail.
     """
     most, excess, variance, mark = work[0, :width], work[1, :width], work[2, :width], hits[:width]
-    most[:] = 0
+    work[:] = 0
     for c in range(records.size):
-        if known[c, Q, i] > 0:
+        if known[c, Q, i] > 0 and tested:
+            _add_all(counts[c], known[c], first, records[c], i, most, excess, variance)
+        elif known[c, Q, i] > 0:
             _add_most(counts[c], known[c], first, records[c], i, most)
     found = 0
     own, others = low[i], low[first : first + width]
@@ -51,18 +56,13 @@ def screen(
         bound = most[k] * _ROUNDING
         mark[k] = (bound > 0) & (bound >= min(own, others[k]))
     if tested:
-        excess[:] = 0
-        variance[:] = 0
-        for c in range(records.size):
-            if known[c, Q, i] > 0:
-                _add_excess(counts[c], known[c], first, records[c], i, excess)
-                _add_variance(known[c], first, records[c], i, variance)
         far, wide = np.float32(limits[0]), np.float32(limits[1])
         own, others = low_tested[i], low_tested[first : first + width]
+        enough, plenty = ample[i], ample[first : first + width]
         for k in range(width):
             over = excess[k] * _ROUNDING + _SLIGHT
-            far_out = (over >= far) | ((over > 0) & (over * over >= wide * variance[k]))
-            mark[k] |= far_out & (most[k] * _ROUNDING >= min(own, others[k]))
+            unusual = (over > 0) & (over * over >= wide * variance[k]) & (enough * plenty[k] < _AMPLE)
+            mark[k] |= ((over >= far) | unusual) & (most[k] * _ROUNDING >= min(own, others[k]))
     for k in range(width):
         found += mark[k]
     return found
@@ -71,48 +71,67 @@ def screen(
 @part
 def _add_most(counts: np.ndarray, known: np.ndarray, first: int, records: float, i: int, most: np.ndarray) -> None:
     """Add what the information of one class can be at most, nats x records; known (PARTS, n) of this class."""
-    margin, own = known[MARGIN, first : first + most.size], np.float64(known[MARGIN, i])
-    q, a, b = (
-        known[Q, first : first + most.size],
-        known[A, first : first + most.size],
-        known[B, first : first + most.size],
-    )
-    scale = np.float32(1.0 / records)
-    q_own, a_own, b_own = (
-        known[Q, i] * scale,
-        known[A, i] * scale / np.float32(6.0),
-        known[B, i] * scale / np.float32(3.0),
-    )
-    half = np.float32(0.5)
+    margin, q, a, b = _of_tile(known, first, most.size)
+    own, q_own, a_own, b_own = _of_one(known, records, i)
+    for k in range(most.size):
+        d = np.float32(np.float64(counts[k]) * records - own * np.float64(margin[k]))
+        square = d * d
+        most[k] += _most(d, square, square * (q[k] * q_own), a[k] * a_own, b[k] * b_own)
+
+
+@part
+def _add_all(
+    counts: np.ndarray,
+    known: np.ndarray,
+    first: int,
+    records: float,
+    i: int,
+    most: np.ndarray,
+    excess: np.ndarray,
+    variance: np.ndarray,
+) -> None:
+    """Add the same, and X2 of one class less its mean under independence, and its variance there.
+
+    The variance is linear in UNEVEN of the other attribute.
+    """
+    margin, q, a, b = _of_tile(known, first, most.size)
+    uneven = known[UNEVEN, first : first + most.size]
+    own, q_own, a_own, b_own = _of_one(known, records, i)
+    mean = np.float32(records / (records - 1.0)) if q_own > 0 else np.float32(0.0)
+    start, rise = np.float32(0.0), np.float32(0.0)
+    if records >= 3 and known[Q, i] > 0:
+        flat, slope = variance_line(records, np.float64(known[UNEVEN, i]))
+        start, rise = np.float32(flat - 1e-6 * (abs(flat) + abs(slope))), np.float32(slope)
     for k in range(most.size):
         d = np.float32(np.float64(counts[k]) * records - own * np.float64(margin[k]))
         square = d * d
         x2 = square * (q[k] * q_own)
-        near = half * x2 - (square * d) * (a[k] * a_own) + (square * square) * (b[k] * b_own)
-        most[k] += min(x2, near)
+        most[k] += _most(d, square, x2, a[k] * a_own, b[k] * b_own)
+        varies = q[k] > 0
+        excess[k] += x2 - (mean if varies else np.float32(0.0))
+        variance[k] += (start if varies else np.float32(0.0)) + rise * uneven[k]
 
 
 @part
-def _add_excess(counts: np.ndarray, known: np.ndarray, first: int, records: float, i: int, excess: np.ndarray) -> None:
-    """Add X2 of one class less its mean under independence."""
-    margin, own = known[MARGIN, first : first + excess.size], np.float64(known[MARGIN, i])
-    q, q_own = known[Q, first : first + excess.size], known[Q, i] * np.float32(1.0 / records)
-    mean = np.float32(records / (records - 1.0)) if q_own > 0 else np.float32(0.0)
-    for k in range(excess.size):
-        d = np.float32(np.float64(counts[k]) * records - own * np.float64(margin[k]))
-        excess[k] += d * d * (q[k] * q_own) - (mean if q[k] > 0 else np.float32(0.0))
+def _of_tile(known: np.ndarray, first: int, width: int) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
+    """Look at the parts of a tile of attributes."""
+    stop = first + width
+    return known[MARGIN, first:stop], known[Q, first:stop], known[A, first:stop], known[B, first:stop]
 
 
 @part
-def _add_variance(known: np.ndarray, first: int, records: float, i: int, variance: np.ndarray) -> None:
-    """Add the variance of X2 of one class under independence, which is linear in UNEVEN of the other attribute."""
-    if records < 3 or known[Q, i] == 0:
-        return
-    q, uneven = known[Q, first : first + variance.size], known[UNEVEN, first : first + variance.size]
-    flat, slope = variance_line(records, np.float64(known[UNEVEN, i]))
-    start, rise = np.float32(flat - 1e-6 * (abs(flat) + abs(slope))), np.float32(slope)
-    for k in range(variance.size):
-        variance[k] += (start if q[k] > 0 else np.float32(0.0)) + rise * uneven[k]
+def _of_one(known: np.ndarray, records: float, i: int) -> tuple[np.float64, np.float32, np.float32, np.float32]:
+    """Scale the parts of the one attribute."""
+    scale = np.float32(1.0 / records)
+    thirds = (known[A, i] * scale / np.float32(6.0), known[B, i] * scale / np.float32(3.0))
+    return np.float64(known[MARGIN, i]), known[Q, i] * scale, *thirds
+
+
+@part
+def _most(d: np.float32, square: np.float32, x2: np.float32, a: np.float32, b: np.float32) -> np.float32:
+    """Bound the information of one class from above."""
+    near = np.float32(0.5) * x2 - (square * d) * a + (square * square) * b
+    return x2 if x2 < near else near
 
 
 @part

@@ -54,13 +54,15 @@ class Forests(NamedTuple):
 
 
 class Tests(NamedTuple):
-    """What a pair must reach to pass: ``limits`` (S, 2), see ``screen``; ``tails``, ``deviates``, see ``_may_pass``.
+    """What a pair must reach to pass: ``limits`` (S, 2), ``ample`` (S, n), see ``screen``; ``tails``, ``deviates``, see
+    ``_may_pass``.
 
     ``wanted``: whether forests of tested pairs are grown at all.
     """
 
     wanted: bool
     limits: np.ndarray
+    ample: np.ndarray
     tails: np.ndarray
     deviates: np.ndarray
 
@@ -108,8 +110,9 @@ def scan_pairs(
         for s in range(table.records.shape[0]):
             lows = (forests.lows[0, s], forests.lows[1, s])
             counts = out.nodes[table.wanted[s]]
-            known, records, limits = table.part[s], table.records[s], tests.limits[s]
-            if screen(counts, known, records, i, first, width, *lows, tests.wanted, limits, work, hits):
+            known, records = table.part[s], table.records[s]
+            must = (tests.limits[s], tests.ample[s])
+            if screen(counts, known, records, i, first, width, *lows, tests.wanted, *must, work, hits):
                 for k in range(skip, width):
                     if hits[k]:
                         _keep(table, forests, tests, out, s, i, first + k, counts[:, k], margins)
