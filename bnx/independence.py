@@ -4,10 +4,10 @@ from dataclasses import dataclass, fields
 from typing import NamedTuple
 
 import numpy as np
-from scipy.special import chdtrc, gammaincc
 
 from bnx.errors import SettingError
 from bnx.kernels.contingency import DF
+from bnx.tails import chi_square_tail, moment_tail
 
 __all__ = [
     "METHODS",
@@ -21,7 +21,6 @@ TESTS = ("auto", "chi2", "g", "monte-carlo")
 METHODS = ("chi2-tail", "g-tail", "moments", "exact", "monte-carlo", "none")
 
 _CHI2_TAIL, _G_TAIL, _MOMENTS, _EXACT, _, _NONE = range(6)
-_LEAST_SKEWNESS = 1e-3
 
 
 @dataclass(frozen=True)
@@ -157,29 +156,18 @@ def p_values(stats: Statistics, test: str = "auto") -> Tested:
     if test not in TESTS:
         raise SettingError(f"test is {test!r}; it must be one of {', '.join(TESTS)}")
     statistic = stats.g if test == "g" else stats.x2.copy()
-    p = chdtrc(np.maximum(1.0, stats.df), np.maximum(0.0, statistic))
-    method = np.full(p.shape, _G_TAIL if test == "g" else _CHI2_TAIL, dtype=np.int8)
+    method = np.full(statistic.shape, _G_TAIL if test == "g" else _CHI2_TAIL, dtype=np.int8)
     carried = stats.min_expected >= 5.0 * stats.levels if test == "g" else stats.cochran
     if test in ("auto", "monte-carlo"):
         method[~carried] = _MOMENTS
-        p[~carried] = _moment_p(stats.take(~carried))
+    p = np.empty(statistic.shape)
+    tail, moments = method != _MOMENTS, method == _MOMENTS
+    p[tail] = chi_square_tail(np.maximum(1.0, stats.df[tail]), np.maximum(0.0, statistic[tail]))
+    p[moments] = moment_tail(*(one[moments] for one in (stats.x2, stats.x2_mean, stats.x2_variance, stats.x2_third)))
     untestable = ~stats.varies
     statistic[untestable] = p[untestable] = np.nan
     method[untestable] = _NONE
     return Tested(statistic, p, method, carried & ~untestable)
-
-
-def _moment_p(stats: Statistics) -> np.ndarray:
-    """Compute the tail of the shifted gamma distribution with X2's exact first three conditional moments, (P,).
-
-    Of one not skewed to the right, as X2 of a table of almost nothing but single records, the normal tail is taken.
-
-    Source: Haldane 1940; Dawson 1954, Biometrika 41; Mielke & Berry 1985 (Pearson's type III).
-    """
-    spread = np.sqrt(np.where(stats.x2_variance > 0, stats.x2_variance, 1.0))
-    skewness = np.maximum(stats.x2_third / spread**3, _LEAST_SKEWNESS)
-    shape = 4.0 / skewness**2
-    return np.asarray(gammaincc(shape, np.maximum(0.0, shape + 2.0 * (stats.x2 - stats.x2_mean) / (spread * skewness))))
 
 
 def _ratio(above: np.ndarray, below: np.ndarray) -> np.ndarray:

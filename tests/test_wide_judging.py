@@ -26,7 +26,7 @@ METHODS = ("bh", "by", "holm", "none")
 @pytest.mark.parametrize("adjust", METHODS)
 @pytest.mark.parametrize("seed", range(4))
 def test_judged_pairs_are_the_same_as_when_all_are_measured_at_once(seed, adjust, monkeypatch):
-    monkeypatch.setattr("bnx.wide_judging._PAIRS", 50)
+    monkeypatch.setattr("bnx.wide_testing._PAIRS", 50)
     table = rare_table(seed, (60, 200, 700, 1500)[seed], 30, 2 + seed % 2)
     engine = started(table, np.random.default_rng(seed).integers(0, BLOCKS, len(table.target)), BLOCKS, 2)
     mask = np.ones(BLOCKS, bool)
