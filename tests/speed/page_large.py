@@ -46,9 +46,9 @@ def tall_page(figures: Figures) -> list[str]:
         *_runs(found),
         "",
         f"One run each, two threads, codes kept in a file (`--spill`). {sizes}. Anonymous memory belongs to no file: "
-        "what the system cannot drop and read again. It is looked at a hundred times a second. The command takes a few "
-        "seconds however few the rows are (imports, choices on samples, drawings), which hides growth: linear growth is "
-        "required of the rest.",
+        "what the system cannot drop and read again. It is looked at a hundred times a second. The command takes some "
+        "seconds however few the rows are (imports, choices on samples, drawings), which hides growth: it is asked of "
+        "the rest.",
         "",
         *_all_stages(found),
     ]
