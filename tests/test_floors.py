@@ -20,7 +20,7 @@ FLOORS = (
     "parameters trainings dependence families profiling",
     "wide_tables independence classifier intervals refining sampling scoring tabulating verdicts explaining "
     "pair_details",
-    "gating drawing formats showing",
+    "gating doubts drawing formats showing",
     "learners",
     "recipe wide_forests wide wide_learning learning pair_judging many_tests wide_judging pair_table",
     "choosing evaluation gains rating resampling pair_tests",
