@@ -1,6 +1,6 @@
 """The main job: one table in; structures learnt, tested, cross-validated on the same folds, and one recommended."""
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from hashlib import sha256
 from pathlib import PurePath
@@ -27,6 +27,7 @@ from bnx.learners import Learner, learner
 from bnx.learning import Learned, make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
+from bnx.matrix_memory import matrix_notes
 from bnx.pair_judging import JudgedPairs, judge_pairs
 from bnx.rating import EXACT_ROWS, SLOPE_ROWS, StructureScore, score
 from bnx.reading import Source
@@ -90,10 +91,12 @@ def compare(
     progress: Progress,
     holdout: Source | None = None,
     store: Store = MEMORY,
+    warn: Callable[[str], None] = lambda _: None,
 ) -> Comparison:
     """Run the main job on one table.
 
-    progress: called with (stage, done, of how many) while it runs; store: keeps what has a value per row.
+    progress: called with (stage, done, of how many) while it runs; store: keeps what has a value per row; warn: called
+    with a sentence that is worth knowing before the long part begins, and is among the warnings too.
 
     Raises:
         DataError, SettingError, StructureError: the table or a setting cannot be used.
@@ -104,6 +107,8 @@ def compare(
         holdout.check([*coded.table.schema.names, recipe.target])
     bounds = make_bounds(recipe, coded.table.schema.names)
     learners = [learner(name) for name in recipe.structures]
+    for note in (early := matrix_notes(coded.table.schema, learners, bounds, recipe)):
+        warn(note)
     evaluations, folds = _evaluations(coded, recipe, learners, bounds, jobs, progress, store)
     gains = [fold for one in evaluations for fold in edge_gains(one)]
     first = evaluations[0]
@@ -138,7 +143,7 @@ def compare(
         recommendation=recommendation,
         held_out=held_out,
         left_out=coded.left_out,
-        warnings=(*notes, *judged.notes, *not_scored, *coded.warnings),
+        warnings=(*early, *notes, *judged.notes, *not_scored, *coded.warnings),
         evaluations=tuple(evaluations),
         lines=coded.table.lines,
     )

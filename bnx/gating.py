@@ -43,10 +43,15 @@ Ask = Callable[[Sequence[tuple[int, Question]]], Sequence[Answer]]
 
 @dataclass(frozen=True)
 class Gate:
-    """The level at which edges are tested, and the p of every pair given the class, (n, n); NaN where untestable."""
+    """The level at which edges are tested, and the p of every pair given the class, (n, n); NaN where untestable.
+
+    ``doubtful`` bool (n, n): p that are near a threshold and not exact; a question about such a pair is answered
+    exactly. None: there are none.
+    """
 
     alpha: float
     p: np.ndarray
+    doubtful: np.ndarray | None = None
 
 
 @dataclass(frozen=True)

@@ -1,6 +1,6 @@
 """Learn every structure in every training set."""
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from itertools import groupby
 from operator import itemgetter
@@ -10,12 +10,12 @@ import numpy as np
 from bnx.dependence import Dependence, measure, relevance_of, sets_at_a_time
 from bnx.engines import LocalEngine
 from bnx.errors import DataError
-from bnx.families import PairRequests, family_statistics
+from bnx.families import family_statistics
 from bnx.gating import Answer, Bounds, Gate, Question, learn_together
 from bnx.independence import Statistics
 from bnx.learners import Learner
 from bnx.recipe import Recipe
-from bnx.refining import Rigour, gated, visit_families
+from bnx.refining import Rigour, gated, in_doubt, visit_families
 from bnx.structure import Structure
 from bnx.text import nearest
 from bnx.trainings import Training
@@ -103,9 +103,11 @@ def _learn(
         further = [(number // len(learners), question) for number, question in questions if question.given]
         tested = iter(ask_tests(engine, trainings, further, rigour))
         answers: list[Answer] = []
+        exact = _exact(engine, trainings, seen, [(n // len(learners), one) for n, one in questions], rigour)
         for number, asked in groupby(questions, key=itemgetter(0)):
             own = [question for _, question in asked]
-            known = iter(seen[number // len(learners)].answers([one for one in own if not one.given]))
+            one = number // len(learners)
+            known = iter(seen[one].answers([question for question in own if not question.given], exact[one]))
             answers += [next(tested if question.given else known) for question in own]
         return answers
 
@@ -117,20 +119,58 @@ def _learn(
 
 @dataclass(frozen=True)
 class _Seen:
-    """What learners see of one training set; ``bits`` (n, n): as strength, less what chance alone gives."""
+    """What learners see of one training set; ``bits`` (n, n): as strength, less what chance alone gives.
+
+    ``statistics`` (P, COLUMNS): of all pairs, if some p is doubtful.
+    """
 
     dependence: Dependence
     gate: Gate
     bits: np.ndarray
+    statistics: np.ndarray
 
-    def answers(self, questions: Sequence[Question]) -> list[Answer]:
-        """Answer questions that only take the class as given, from what was measured of all pairs."""
+    def doubts(self, i: int, j: int) -> bool:
+        """Tell whether the p of a pair is doubtful."""
+        return self.gate.doubtful is not None and bool(self.gate.doubtful[i, j])
+
+    def statistics_of(self, i: int, j: int) -> np.ndarray:
+        """Look up the statistics (COLUMNS,) of a pair, i < j."""
+        row: np.ndarray = self.statistics[i * len(self.bits) - i * (i + 1) // 2 + j - i - 1]
+        return row
+
+    def answers(self, questions: Sequence[Question], exact: Mapping[tuple[int, int], float]) -> list[Answer]:
+        """Answer questions that only take the class as given, from what was measured of all pairs.
+
+        exact: p of (lower, higher attribute) to be taken instead.
+        """
         if not questions:
             return []
         child, candidate = np.array([question[:2] for question in questions]).T
         p = self.gate.p[child, candidate]
+        if exact:
+            ends = zip(np.minimum(child, candidate).tolist(), np.maximum(child, candidate).tolist(), strict=True)
+            p = np.array([exact.get(pair, one) for pair, one in zip(ends, p.tolist(), strict=True)])
         p = np.where(np.isnan(p), 1.0, p).tolist()
         return [Answer(*answer) for answer in zip(p, self.bits[child, candidate].tolist(), strict=True)]
+
+
+def _exact(
+    engine: LocalEngine,
+    trainings: Sequence[Training],
+    seen: Sequence[_Seen],
+    questions: Sequence[tuple[int, Question]],
+    rigour: Rigour,
+) -> list[dict[tuple[int, int], float]]:
+    """Make doubtful p-values exact that are asked for without anything given: by attributes, for every training set."""
+    asked = {(number, (min(q[:2]), max(q[:2]))): None for number, q in questions if not q.given}
+    requests = [(number, ends) for number, ends in asked if seen[number].doubts(*ends)]
+    found: list[dict[tuple[int, int], float]] = [{} for _ in seen]
+    if requests:
+        statistics = Statistics.of(np.array([seen[number].statistics_of(*ends) for number, ends in requests]))
+        p = gated(visit_families(engine, trainings, requests, "making tests exact"), statistics, rigour).p
+        for (number, ends), one in zip(requests, p.tolist(), strict=True):
+            found[number][ends] = one
+    return found
 
 
 def _look(
@@ -141,18 +181,18 @@ def _look(
     nothing = np.zeros((attributes, attributes))
     untested = Gate(recipe.alpha, np.broadcast_to(np.nan, nothing.shape))
     if not any(member.looks_at_pairs for member in learners):
-        return [_Seen(Dependence(relevance_of(engine, one), nothing), untested, nothing) for one in trainings]
+        return [_Seen(Dependence(relevance_of(engine, one), nothing), untested, nothing, nothing) for one in trainings]
     seen = []
     tested = any(member.tested for member in learners)
-    for number, (dependence, pairs) in enumerate(measure(engine, trainings)):
+    for dependence, pairs in measure(engine, trainings):
         if not tested:
-            seen.append(_Seen(dependence, untested, nothing))
+            seen.append(_Seen(dependence, untested, nothing, nothing))
             continue
         statistics = Statistics.of(pairs.statistics)
-        visit = visit_families(engine, trainings, PairRequests(number, pairs.left, pairs.right))
-        p = gated(visit, statistics, rigour).p
-        gate = Gate(recipe.alpha, pairs.matrix(p, attributes))
-        seen.append(_Seen(dependence, gate, pairs.matrix(statistics.bits_corrected, attributes)))
+        found, doubtful = in_doubt(statistics, rigour)
+        p, doubts = (pairs.matrix(one, attributes) for one in (found.p, doubtful))
+        gate = Gate(recipe.alpha, p, doubts > 0 if doubtful.any() else None)
+        seen.append(_Seen(dependence, gate, pairs.matrix(statistics.bits_corrected, attributes), pairs.statistics))
     return seen
 
 

@@ -28,6 +28,7 @@ __all__ = [
     "Rigour",
     "Visit",
     "gated",
+    "in_doubt",
     "pooled",
     "reported",
     "visit_arrays",
@@ -67,8 +68,12 @@ class Report(NamedTuple):
     undrawn: int
 
 
-def visit_families(engine: LocalEngine, trainings: Sequence[Training], requests: Sequence[Request]) -> Visit:
+def visit_families(
+    engine: LocalEngine, trainings: Sequence[Training], requests: Sequence[Request], stage: str = ""
+) -> Visit:
     """Fetch counts from the rows; requests: of each pair, its training set and members, the pair last.
+
+    stage: what to tell the engine's progress callback as pairs are done; nothing is told without it.
 
     Counts are kept, up to 200 MB of them, since a report visits the same sparse pairs several times.
     """
@@ -87,6 +92,8 @@ def visit_families(engine: LocalEngine, trainings: Sequence[Training], requests:
         found = dict(zip(known, engine.map(lambda request: use(*kept[request]), known), strict=True))
         fresh = [request for request in wanted if request not in found]
         for start in range(0, len(fresh), _TOGETHER):
+            if stage:
+                engine.progress(stage, start, len(fresh))
             counted = for_each_family(engine, trainings, fresh[start : start + _TOGETHER], take)
             for request, (value, table) in counted.items():
                 found[request] = value
@@ -118,17 +125,23 @@ def with_chance(visit: Visit, stats: Statistics) -> Statistics:
     return replace(stats, chance=chance)
 
 
+def in_doubt(stats: Statistics, rigour: Rigour) -> tuple[Tested, np.ndarray]:
+    """Test P pairs without their tables; also find those whose p ``gated`` would replace, bool (P,)."""
+    tested = p_values(stats, rigour.test)
+    replaced = stats.varies if rigour.test == "monte-carlo" else tested.by_moments & (stats.levels == 2)
+    return tested, replaced & (tested.p >= rigour.low) & (tested.p <= rigour.high)
+
+
 def gated(visit: Visit, stats: Statistics, rigour: Rigour) -> Tested:
     """Test P pairs for a gate whose thresholds lie well inside the p-values in doubt.
 
     There the exact p replaces p by moments where all strata are 2 x 2, and with ``monte-carlo`` one from random tables
     every other p.
     """
-    tested = p_values(stats, rigour.test)
-    near = (tested.p >= rigour.low) & (tested.p <= rigour.high)
+    tested, near = in_doubt(stats, rigour)
     tested = _exact(visit, stats, tested, near)
     if rigour.test == "monte-carlo":
-        chosen = np.flatnonzero(near & stats.varies & ~tested.is_exact)
+        chosen = np.flatnonzero(near & ~tested.is_exact)
         tested = _drawn(visit, stats, tested, chosen, float(np.sqrt(rigour.low * rigour.high)), rigour.seed)
     return tested
 

@@ -16,12 +16,12 @@ from bnx.trainings import Training
 from bnx.wide import grow_forests
 from bnx.wide_forests import Asked, Edges, Grown
 
-__all__ = ["MOST_IN_MATRIX", "learn_wide", "takes_wide_road"]
+__all__ = ["MOST_IN_MATRIX", "TESTS", "TREES", "learn_wide", "takes_wide_road"]
 
 MOST_IN_MATRIX = 2_000_000  # pairs; more are gone through one by one where that is possible: 2,001 attributes
 
-_TREES = {"naive", "tan", "tan-tested"}
-_TESTS = {"auto"}
+TREES = {"naive", "tan", "tan-tested"}
+TESTS = {"auto"}
 
 
 def takes_wide_road(
@@ -33,8 +33,8 @@ def takes_wide_road(
         attributes * (attributes - 1) // 2 > MOST_IN_MATRIX
         and bool((engine.sizes == 2).all())
         and all(bool(training.view.plain.all()) for training in trainings)
-        and {member.name for member in learners} <= _TREES
-        and recipe.test in _TESTS
+        and {member.name for member in learners} <= TREES
+        and recipe.test in TESTS
         and not bounds.required
     )
 

@@ -20,9 +20,10 @@ FLOORS = (
     "parameters trainings dependence families profiling",
     "tails wide_tables independence classifier intervals refining sampling scoring tabulating verdicts explaining "
     "pair_details",
-    "gating drawing formats showing",
+    "gating doubts drawing formats showing",
     "learners",
-    "recipe wide_forests wide wide_learning learning pair_judging many_tests wide_testing wide_judging pair_table",
+    "recipe wide_forests wide wide_learning matrix_memory learning pair_judging many_tests wide_testing wide_judging "
+    "pair_table",
     "choosing evaluation gains rating resampling pair_tests",
     "dealing judging ledger comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",

@@ -129,7 +129,9 @@ def run(
         source = open_source(data)
         recipe = recipe_of(ctx, source)
         held_out = None if holdout is None else open_source(holdout)
-        comparison = compare(source, recipe, number, clock.tell, held_out, store_of(spill))
+        comparison = compare(
+            source, recipe, number, clock.tell, held_out, store_of(spill), lambda note: say(f"note: {note}", quiet)
+        )
         document, notes = write_results(comparison, folder, number, predictions, all_pairs, clock.tell)
         if ahead:
             clock.tell("compiling ahead")

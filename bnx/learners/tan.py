@@ -1,5 +1,6 @@
 """Tree-augmented naive Bayes: the strongest tree over the attributes, or the strongest forest of tested pairs."""
 
+from collections.abc import Generator, Sequence
 from dataclasses import dataclass
 
 import networkx as nx
@@ -7,7 +8,8 @@ import numpy as np
 
 from bnx.branching import best_branching
 from bnx.dependence import Dependence
-from bnx.gating import Bounds, Gate, Learning, settled
+from bnx.doubts import doubts_that_matter
+from bnx.gating import Answer, Bounds, Gate, Learning, Question
 from bnx.kernels.graphs import strongest_forest
 from bnx.multiplicity import forest_threshold
 from bnx.structure import Structure
@@ -41,27 +43,50 @@ class Tan:
         for a, b in bounds.forbidden:
             allowed[a, b] = allowed[b, a] = False
         if self.tested:
-            allowed &= gate.p <= _threshold(allowed, gate, bounds)
+            p = yield from _certain(allowed, dependence.strength, gate, bounds)
+            allowed &= p <= _threshold(allowed, p, gate.alpha, bounds)
         parents = (
             _branching(allowed, dependence.strength, bounds)
             if bounds.required
             else _directed(strongest_forest(dependence.strength, allowed), dependence.relevance)
         )
-        return settled(Structure(self.name, tuple(parents)))
+        return Structure(self.name, tuple(parents))
 
 
-def _threshold(allowed: np.ndarray, gate: Gate, bounds: Bounds) -> float:
+def _certain(
+    allowed: np.ndarray, strength: np.ndarray, gate: Gate, bounds: Bounds
+) -> Generator[Sequence[Question], Sequence[Answer], np.ndarray]:
+    """Ask for exact p-values of the doubtful pairs that matter, and return the p of all, (n, n).
+
+    Required edges are no forest of the strongest pairs, so that with them every doubtful pair may matter.
+    """
+    if gate.doubtful is None:
+        return gate.p
+    if bounds.required:
+        asked = np.triu(allowed & gate.doubtful)
+    else:
+        asked = doubts_that_matter(strength, allowed, gate.p, gate.doubtful, gate.alpha)
+    left, right = np.nonzero(asked)
+    p = gate.p.copy()
+    if not len(left):
+        return p
+    answers = yield [Question(b, a, ()) for a, b in zip(left.tolist(), right.tolist(), strict=True)]
+    p[left, right] = p[right, left] = [answer.p for answer in answers]
+    return p
+
+
+def _threshold(allowed: np.ndarray, p: np.ndarray, alpha: float, bounds: Bounds) -> float:
     """Find the largest p that may enter among the pairs that an edge is neither forbidden to join nor sure to.
 
     Attributes that required edges join are one tree from the start, so the forest grows between such trees.
     """
-    joined = nx.utils.UnionFind(range(len(gate.p)))
+    joined = nx.utils.UnionFind(range(len(p)))
     for parent, child in bounds.required:
         joined.union(parent, child)
-    tree = np.array([joined[attribute] for attribute in range(len(gate.p))])
+    tree = np.array([joined[attribute] for attribute in range(len(p))])
     left, right = np.nonzero(np.triu(allowed & (tree[:, None] != tree)))
     pairs = np.stack([tree[left], tree[right]], axis=1)
-    return forest_threshold(pairs, gate.p[left, right], len(gate.p), gate.alpha)
+    return forest_threshold(pairs, p[left, right], len(p), alpha)
 
 
 def _directed(joined: np.ndarray, relevance: np.ndarray) -> list[tuple[int, ...]]:
