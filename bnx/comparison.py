@@ -164,7 +164,8 @@ def _tested(
 def _judged(engine: LocalEngine, training: Training, pairs: Pairs, recipe: Recipe) -> JudgedPairs:
     """Test and judge all pairs on all rows."""
     domains = training.view.domains
-    visit = visit_families(engine, [training], PairRequests(0, pairs.left, pairs.right))
+    engine.progress("judging pairs", 0, 0)
+    visit = visit_families(engine, [training], PairRequests(0, pairs.left, pairs.right), "judging pairs")
     ends = [(domains[i], domains[j]) for i, j in zip(pairs.left, pairs.right, strict=True)]
     return judge_pairs(visit, Statistics.of(pairs.statistics), Statistics.of(pairs.marginal), ends, recipe)
 
