@@ -1,6 +1,5 @@
 """Loops compiled ahead of their use, in a process of its own."""
 
-import gc
 import os
 import subprocess
 import sys
@@ -74,16 +73,3 @@ def test_nothing_is_started_without_a_processor_to_spare_or_work_to_do(
         assert not ahead
         time.sleep(0.2)
     assert not ran.exists()
-
-
-def test_unused_objects_are_looked_for_less_often_only_while_loops_may_be_compiled(
-    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
-) -> None:
-    helper(tmp_path, monkeypatch)
-    usual = gc.get_threshold()
-    with compiling_ahead(1):
-        assert gc.get_threshold()[0] > usual[0]
-    assert gc.get_threshold() == usual
-    (tmp_path / "done").touch()
-    with compiling_ahead(2):
-        assert gc.get_threshold() == usual

@@ -1,6 +1,5 @@
 """A first run compiles its loops: half of them in a process of its own, so that two processors share the work."""
 
-import gc
 import os
 import subprocess
 import sys
@@ -15,7 +14,6 @@ __all__ = ["COMMAND", "DONE", "compiling_ahead"]
 
 DONE = Path(os.environ["NUMBA_CACHE_DIR"], f"late-{__kernels__}")
 """A file that says that all is compiled."""
-_RARELY = 100_000  # objects made between two searches for unused ones, which take a sixth of the time of compiling
 COMMAND = (sys.executable, "-P", "-m", "bnx.kernels.warming", str(DONE))
 
 
@@ -26,26 +24,11 @@ def compiling_ahead(jobs: int) -> Iterator[bool]:
     Yields:
         Whether anything is compiled. It is stopped when the block ends; the next run goes on with what is left.
     """
-    if DONE.exists():
+    if DONE.exists() or jobs < 2:
         yield False
         return
-    with _collecting_rarely():
-        if jobs < 2:
-            yield False
-            return
-        with _another_process():
-            yield True
-
-
-@contextmanager
-def _collecting_rarely() -> Iterator[None]:
-    """Look for unused objects less often while the block runs."""
-    usual = gc.get_threshold()
-    gc.set_threshold(max(usual[0], _RARELY), *usual[1:])
-    try:
-        yield
-    finally:
-        gc.set_threshold(*usual)
+    with _another_process():
+        yield True
 
 
 @contextmanager
