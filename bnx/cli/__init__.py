@@ -22,8 +22,8 @@ __all__ = ["BEGAN", "app", "main"]
 BEGAN = time.perf_counter() - time.process_time()
 """When this process began, by ``time.perf_counter``."""
 
-# Objects made between two searches for unused rings of them. Compiling and very wide tables make millions of objects and
-# hardly a ring, and looking for them took a sixth of the time.
+# Objects made between two searches for unused rings of them. Compiling and very wide tables make millions and hardly a
+# ring, and looking for them took a quarter of the time.
 _RARELY = 1_000_000
 
 COMMANDS = {
