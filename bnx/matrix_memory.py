@@ -14,7 +14,7 @@ from bnx.wide_learning import MOST_IN_MATRIX, TESTS, TREES
 
 __all__ = ["matrix_notes"]
 
-_BYTES = 1_000  # per pair at the peak: its statistics, the tests given the class and without it, what is said of them
+_BYTES = 1_250  # per pair at the peak, as measured: statistics, tests given the class and without it, what they say
 
 
 def matrix_notes(schema: Schema, learners: Sequence[Learner], bounds: Bounds, recipe: Recipe) -> list[str]:
