@@ -12,6 +12,7 @@ from test_wide import BLOCKS, rare_table
 from bnx import multiplicity
 from bnx.comparison import _judged
 from bnx.dependence import measure
+from bnx.kernels.grouping import group_by_size
 from bnx.many_tests import ManyTests
 from bnx.multiplicity import adjusted, family_size, threshold
 from bnx.recipe import Recipe
@@ -52,18 +53,39 @@ def test_judged_pairs_are_the_same_as_when_all_are_measured_at_once(seed, adjust
 
 
 @settings(max_examples=200, deadline=None)
-@given(st.integers(0, 2**32), st.integers(0, 60), st.sampled_from(METHODS), st.integers(1, 70))
-def test_a_family_kept_as_sorted_p_says_what_all_its_tests_say(seed, tests, method, step):
+@given(
+    st.integers(0, 2**32),
+    st.integers(0, 60) | st.sampled_from([1000, 20_000]),
+    st.sampled_from(METHODS),
+    st.sampled_from([0.2, 1, 4, 40]),
+)
+def test_a_family_brought_together_by_size_says_what_all_its_tests_say(seed, tests, method, power):
     random = np.random.default_rng(seed)
-    p = np.round(random.random(tests) ** 4, 2 + seed % 3)
-    p[random.random(tests) < 0.2] = np.nan
-    with pytest.MonkeyPatch.context() as patch:
-        patch.setattr("bnx.many_tests._STEP", step)
-        family = ManyTests.of(p, method)
-        some = random.permutation(tests)[: tests // 2]
-        assert np.array_equal(family.adjusted(p[some]), adjusted(p, method)[some], equal_nan=True)
-        assert np.array_equal(family.threshold(0.05), threshold(p, method, 0.05), equal_nan=True)
-        assert family.rejected(0.05) == np.count_nonzero(adjusted(p, method) <= 0.05)
+    p = random.random(tests) ** np.where(random.random(tests) < random.random() ** 3, power, 1)
+    if seed % 2:
+        p = np.round(p, 2 + seed % 3)
+    p[random.random(tests) < 0.2 * (seed % 5)] = np.nan
+    family = ManyTests.of(p, method)
+    some = random.permutation(tests)[: random.choice([tests // 2, min(tests, 3)])]
+    assert np.array_equal(family.adjusted(p[some]), adjusted(p, method)[some], equal_nan=True)
+    assert np.array_equal(family.threshold(0.05), threshold(p, method, 0.05), equal_nan=True)
+    assert family.rejected(0.05) == np.count_nonzero(adjusted(p, method) <= 0.05)
+
+
+def test_numbers_are_grouped_by_size_whatever_they_are():
+    random = np.random.default_rng(1)
+    numbers = np.concatenate(
+        [10.0 ** random.uniform(-320, 0, 5000), [0.0, -0.0, 1.0, 5e-324, np.nan, -np.nan], random.random(5000)]
+    )
+    numbers = random.permutation(numbers)
+    grouped = np.full(len(numbers), -1.0)
+    counts = group_by_size(numbers, numbers.view(np.int64), grouped)
+    held = np.sort(numbers)[:-2]
+    assert counts.sum() == len(held)
+    assert np.array_equal(grouped[len(held) :], [-1.0, -1.0])
+    ends = np.cumsum(counts[counts > 0])
+    for start, end in zip([0, *ends[:-1]], ends, strict=True):
+        assert np.array_equal(np.sort(grouped[start:end]), held[start:end])
 
 
 @settings(max_examples=200, deadline=None)

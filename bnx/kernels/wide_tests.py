@@ -69,13 +69,13 @@ def x2_of_pairs(
     attributes, classes = rows.planes.shape[0], rows.words.size - 1
     tile, joint = np.zeros((rows.planes.shape[1], _TILE), np.uint64), np.zeros((classes + 1, _TILE))
     sums, work, varies = np.zeros(_TILE, np.uint64), np.zeros((4, _TILE)), np.zeros(_TILE, np.int8)
-    first, found = np.int64(0), np.int64(0)
+    first, found = int(np.int64(0)), int(np.int64(0))
     for low in range(start + 1, attributes, _TILE):
         width = min(_TILE, attributes - low)
         for w in range(tile.shape[0]):
             for k in range(width):
                 tile[w, k] = rows.planes[low + k, w]
-        first = np.int64(0)
+        first = int(np.int64(0))
         for i in range(start, min(stop, low + width - 1)):
             skip, place = max(0, i + 1 - low), first + low - i - 1
             first += attributes - i - 1
