@@ -1,13 +1,12 @@
 """Write one file: whole or not at all, and never over another unless told to."""
 
-import os
-import tempfile
 from pathlib import Path
+from secrets import token_hex
 
 from bnx.errors import DataError, SettingError
 from bnx.unfinished import unfinished
 
-__all__ = ["check_free", "write_bytes"]
+__all__ = ["check_free", "hidden_beside", "write_bytes"]
 
 
 def check_free(path: str, overwrite: bool, option: str = "-o") -> None:
@@ -31,6 +30,11 @@ def check_free(path: str, overwrite: bool, option: str = "-o") -> None:
         )
 
 
+def hidden_beside(place: Path) -> Path:
+    """Name what is to take a place once it is finished: known before it is made, so that a signal can undo it."""
+    return place.parent / f".{place.name[:80]}-{token_hex(8)}"
+
+
 def write_bytes(path: str, content: bytes, overwrite: bool, option: str = "-o") -> None:
     """Write a file through a temporary neighbour; a link is followed, so that what it points to is replaced.
 
@@ -39,20 +43,16 @@ def write_bytes(path: str, content: bytes, overwrite: bool, option: str = "-o") 
     """
     check_free(path, overwrite, option)
     place = Path(path).resolve()
-    made: list[Path] = []
+    work = hidden_beside(place)
 
     def undo() -> None:
-        for work in made:
-            work.unlink(missing_ok=True)
+        work.unlink(missing_ok=True)
 
     with unfinished(undo):
         try:
-            handle, name = tempfile.mkstemp(prefix=f".{place.name[:80]}-", dir=place.parent)
-            made.append(Path(name))
-            with os.fdopen(handle, "wb") as file:
-                file.write(content)
-            made[0].chmod(0o644)
-            made[0].replace(place)
+            work.write_bytes(content)
+            work.chmod(0o644)
+            work.replace(place)
         except OSError as error:
             raise DataError(
                 f"cannot write {path} ({error.strerror or error}); choose another place with {option}"

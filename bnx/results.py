@@ -2,7 +2,6 @@
 
 import json
 import shutil
-import tempfile
 from collections.abc import Iterator, Mapping, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from contextlib import contextmanager, suppress
@@ -25,6 +24,7 @@ from bnx.documents import (
 from bnx.drawing import find_engine, render
 from bnx.engines.local import Progress
 from bnx.errors import DataError, EngineError, SettingError
+from bnx.files import hidden_beside
 from bnx.picture import MANY_CHIPS
 from bnx.report import report_html
 from bnx.text import quoted
@@ -49,11 +49,10 @@ def new_folder(path: str, overwrite: bool) -> Iterator[Path]:
     place = Path(path).resolve()
     _check_place(place, path, overwrite)
     missing = [folder for folder in place.parents if not folder.exists()]
-    made: list[Path] = []
+    work = hidden_beside(place)
 
     def undo() -> None:
-        for folder in made:
-            shutil.rmtree(folder, ignore_errors=True)
+        shutil.rmtree(work, ignore_errors=True)
         for folder in missing:
             with suppress(OSError):  # it holds the results, or something of somebody else
                 folder.rmdir()
@@ -61,10 +60,10 @@ def new_folder(path: str, overwrite: bool) -> Iterator[Path]:
     with unfinished(undo):
         try:
             place.parent.mkdir(parents=True, exist_ok=True)
-            made.append(Path(tempfile.mkdtemp(prefix=f".{place.name[:80]}-", dir=place.parent)))
-            yield made[0]
+            work.mkdir(mode=0o700)
+            yield work
             _check_place(place, path, overwrite)
-            _put_in_place(made[0], place)
+            _put_in_place(work, place)
         except BrokenPipeError:
             raise
         except OSError as error:
@@ -79,16 +78,20 @@ def _put_in_place(work: Path, place: Path) -> None:
     if not place.exists():
         work.rename(place)
         return
-    old = Path(tempfile.mkdtemp(prefix=f".{place.name[:80]}-old-", dir=place.parent))
-    try:
-        place.rename(old / "old")
-        try:
-            work.rename(place)
-        except OSError:
+    old = hidden_beside(place)
+
+    def settle() -> None:
+        if (old / "old").exists() and not place.exists():
             (old / "old").rename(place)
-            raise
-    finally:
         shutil.rmtree(old, ignore_errors=True)
+
+    with unfinished(settle):
+        try:
+            old.mkdir(mode=0o700)
+            place.rename(old / "old")
+            work.rename(place)
+        finally:
+            settle()
 
 
 def _check_place(place: Path, path: str, overwrite: bool) -> None:
