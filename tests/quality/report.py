@@ -29,7 +29,6 @@ __all__ = ["NAMES", "main", "measure", "measure_ways", "stored", "write"]
 
 HERE = Path(__file__).parent
 WAYS = "smoothing"
-SEEDS, FEW_ROWS = (1, 2, 3), 2000  # on tables of fewer rows one row can decide, so folds are dealt three times over
 DOCS = HERE.parents[1] / "docs"
 LEFT_OUT = {
     "corral": "a rule that is known",
@@ -60,9 +59,8 @@ def measure_ways(name: str, measured: Path, resume: bool) -> None:
     if not missing:
         return
     frame = load(name)
-    seeds = SEEDS if len(frame) < FEW_ROWS else SEEDS[:1]
     with tempfile.TemporaryDirectory(prefix="bnx-quality-") as folder:
-        found = before | compare_ways(frame, TABLES[name].target, Path(folder), missing, seeds)
+        found = before | compare_ways(frame, TABLES[name].target, Path(folder), missing)
     path.parent.mkdir(parents=True, exist_ok=True)
     path.write_text(json.dumps({way: found[way] for way in SCHEMES}, indent=1) + "\n", encoding="utf-8")
 

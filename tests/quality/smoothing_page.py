@@ -9,7 +9,7 @@ import matplotlib as mpl
 from matplotlib.backends.backend_svg import FigureCanvasSVG
 from matplotlib.figure import Figure
 from quality.requirements import ratio
-from quality.smoothing_schemes import ONE_STRENGTH, PROGRAM, SCHEMES
+from quality.smoothing_schemes import FEW_PAIRS, ONE_STRENGTH, PROGRAM, SCHEMES
 
 from bnx.palette import PALETTES
 
@@ -32,12 +32,13 @@ SOURCES = {
     "strength by evidence, scaled": "the same, times .25 to 4, chosen out of fold",
     "back-off, strength by depth": "20 pairs: .5 to 32 records given the class, .5 to 128 given parents too",
     "back-off, strength by levels": "records in proportion to the levels of the child",
-    PROGRAM: "8 candidates; to leave Laplace 1 takes 2 nats in all, to leave MDL cut points 5",
+    FEW_PAIRS: "Laplace 1; .5, 2, 8; 2 given the class and 32 or 256 given parents too, 16 and 64 or 512",
+    PROGRAM: "the same; to leave Laplace 1 takes 2 nats in all, to leave MDL cut points 5",
 }
 
 
 def means(figures: Mapping[str, Figures]) -> dict[str, dict[str, float]]:
-    """Compare every way with one strength, structure by structure: geometric means over the tables."""
+    """Compare every way that all tables have with one strength, by structure: geometric means over the tables."""
     return {
         name: {
             structure: geometric_mean(
@@ -47,6 +48,7 @@ def means(figures: Mapping[str, Figures]) -> dict[str, dict[str, float]]:
             for structure in MARKS
         }
         for name in SCHEMES
+        if all(name in one for one in figures.values())
     }
 
 
@@ -62,8 +64,8 @@ def smoothing_page(figures: Mapping[str, Figures]) -> list[str]:
         *("## Ways to smooth", ""),
         f"The same structures, folds, cut points to choose from and calibration on {len(figures)} tables; amounts are",
         "chosen out of fold inside every training fold. Geometric mean of (loss + .01) as a ratio to the same",
-        f"structure under *{ONE_STRENGTH}*; below 1 is better. Tables of less than 2,000 rows are dealt to folds three",
-        "times over, as one row can decide there.",
+        f"structure under *{ONE_STRENGTH}*; below 1 is better. One row can decide on tables of a few hundred, so a",
+        "percent or two between single figures means little; the sign over four structures means more.",
         *("", f"| way | what | {' | '.join(MARKS)} |", "|---|---|" + "--:|" * len(MARKS), *rows),
         *("", f"![Ways to smooth, as ratios to one strength]({PICTURE})", ""),
         "Where an edge does not pay, only a strength given parents of hundreds of records saves its structure from",

@@ -11,7 +11,7 @@ from itertools import product
 import numpy as np
 from scipy.special import gammaln
 
-__all__ = ["ONE_STRENGTH", "PROGRAM", "SCHEMES", "Way", "contexts", "marginal"]
+__all__ = ["FEW_PAIRS", "ONE_STRENGTH", "PROGRAM", "SCHEMES", "Way", "contexts", "marginal"]
 
 Step = Callable[[np.ndarray, np.ndarray, int], np.ndarray]
 STRENGTHS = (0.5, 1.0, 2.0, 4.0, 8.0, 16.0)
@@ -162,7 +162,13 @@ _LAPLACE = Way("laplace 1", lambda counts: laplace(counts, 1.0))
 _DISCOUNTS: tuple[float | None, ...] = (None, 0.1, 0.25, 0.5, 0.75, 0.95)
 
 ONE_STRENGTH = "back-off, one strength"
+FEW_PAIRS = "back-off, few pairs of strengths"
 PROGRAM = "back-off, the program's few pairs of strengths, chosen with a lead"
+_OWN = (
+    _LAPLACE,
+    *(_backed(s) for s in (0.5, 2.0, 8.0)),
+    *(_backed(*pair) for pair in ((2.0, 32.0), (2.0, 256.0), (16.0, 64.0), (16.0, 512.0))),
+)
 SCHEMES: dict[str, tuple[Way, ...]] = {
     "Laplace, 1": (_LAPLACE,),
     ONE_STRENGTH: (_LAPLACE, *(_backed(s) for s in STRENGTHS)),
@@ -184,9 +190,6 @@ SCHEMES: dict[str, tuple[Way, ...]] = {
         _LAPLACE,
         *(Way(f"by levels {a:g}", lambda counts, a=a: by_levels(counts, a)) for a in (0.125, 0.25, 0.5, 1, 2, 4, 8)),
     ),
-    PROGRAM: (
-        _LAPLACE,
-        *(_backed(s) for s in (0.5, 2.0, 8.0)),
-        *(_backed(*pair) for pair in ((2.0, 32.0), (2.0, 256.0), (16.0, 64.0), (16.0, 512.0))),
-    ),
+    FEW_PAIRS: _OWN,
+    PROGRAM: _OWN,
 }

@@ -16,6 +16,7 @@ pytestmark = [pytest.mark.quality, pytest.mark.tables, pytest.mark.timeout(14_40
 
 MET = (
     "tables worse than naive by more than 2 paired standard errors + .005",
+    "calibration slope on tables with at least 50 errors",
     "probabilities of 0 or 1, in any structure, so an infinite loss",
 )
 
