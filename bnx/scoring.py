@@ -7,7 +7,7 @@ from itertools import chain
 import numpy as np
 
 from bnx.kernels import add_terms, ratio_tables
-from bnx.parameters import Smoothing
+from bnx.parameters import Smoothing, amounts_of
 from bnx.structure import Structure
 from bnx.views import View
 
@@ -122,7 +122,6 @@ def terms_of(counted: Counted, which: np.ndarray, smoothings: Sequence[Smoothing
     starts = 1 + np.concatenate([[0], ends[:-1]]).astype(np.int64)
     columns = len(smoothings) * (len(counted.counts) - 1)
     table = np.zeros((1 + int(ends[-1]), padded(columns)))
-    amounts = np.array([smoothing.amount for smoothing in smoothings])
-    laplace = np.array([smoothing.kind == "laplace" for smoothing in smoothings])
+    amounts, laplace = amounts_of(smoothings)
     ratio_tables(counted.counts, one.starts, one.sizes, one.depths, which, amounts, laplace, starts, table)
     return Terms(one, which, starts, table)

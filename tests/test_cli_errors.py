@@ -126,8 +126,8 @@ SETTINGS = {
     "--max-levels 1": "--max-levels: 1 cannot be used; give a whole number from 2 to 60000",
     "--resamples -1": "--resamples: -1 cannot be used; give a whole number from 0 to 100000",
     "--jobs -1": "--jobs: -1 cannot be used; give a number of threads, or 0 for one per processor",
-    "--smoothing laplace:0": "--smoothing: 'laplace:0' cannot be used; give auto, laplace:A or backoff:S with a number "
-    "above 0",
+    "--smoothing laplace:0": "--smoothing: 'laplace:0' cannot be used; give auto, laplace:A, backoff:S or "
+    "backoff:S,D with numbers above 0",
     "--group grade": "column 'grade' is given as the class and also as the group or fold column; it can be only one "
     "of them",
     "--group sites": "small.csv has no column 'sites'; did you mean site?",

@@ -26,7 +26,7 @@ _WHOLE, _REAL, _TRUE, _CLASSES = int64[::1], float64[::1], boolean[::1], uint8[:
 _CODES, _COUNTS, _WHOLES, _REALS = uint8[:, ::1], int32[:, ::1], int64[:, ::1], float64[:, ::1]
 
 LATE: tuple[tuple[Callable[..., Any], tuple[Any, ...]], ...] = (
-    (ratio_tables, (_COUNTS, _WHOLE, _WHOLES, _WHOLE, _WHOLE, _REAL, _TRUE, _WHOLE, _REALS)),
+    (ratio_tables, (_COUNTS, _WHOLE, _WHOLES, _WHOLE, _WHOLE, _REALS, _TRUE, _WHOLE, _REALS)),
     (
         add_terms,
         (_CODES, _COUNTS, _TRUE, _WHOLES, _WHOLES, _WHOLE, _WHOLE, _WHOLE, _REALS, int64, int64, _REALS),
@@ -43,7 +43,7 @@ LATE: tuple[tuple[Callable[..., Any], tuple[Any, ...]], ...] = (
     (rank_sums, (_WHOLE, _REAL, _REAL)),
     (expected_nats, (_COUNTS, int64, int64)),
     (monte_carlo_tail, (_COUNTS, int64, int64, _REAL, int64, int64)),
-    (smoothed_tables, (_COUNTS, _WHOLE, _REAL, _TRUE, _REALS)),
+    (smoothed_tables, (_COUNTS, _WHOLE, _REALS, _TRUE, _REALS)),
 )
 """Loops and the types that a run on up to 256 levels calls them with, in the order to compile them in."""
 
