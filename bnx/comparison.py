@@ -36,6 +36,7 @@ from bnx.resampling import stability
 from bnx.sampling import rows_for_gains
 from bnx.storing import MEMORY, Store
 from bnx.structure import Structure
+from bnx.summing_out import summing_notes
 from bnx.tables import LeftOut, Lines
 from bnx.text import count_of
 from bnx.trainings import Training
@@ -233,13 +234,17 @@ def _held_out(
     """Score the final classifiers on a table that took no part in anything; say which rows could not be scored."""
     target = classifiers[0].target
     parts: list[list[np.ndarray]] = [[] for _ in classifiers]
-    truth, dropped = [], 0
+    truth, dropped, unknown, rough = [], 0, np.zeros(len(classifiers[0].domains), np.int64), 0
     for codes, _ in encode(source, [*classifiers[0].domains, target]):
         known = codes[-1] >= 0
         truth.append(codes[-1][known])
         dropped += int((~known).sum())
-        for part, classifier in zip(parts, classifiers, strict=True):
-            part.append(classifier.probabilities(codes[:-1][:, known]))
+        own = codes[:-1][:, known]
+        unknown += (own < 0).sum(axis=1)
+        found = [classifier.classified(own) for classifier in classifiers]
+        rough += int(np.any([approximate for _, approximate in found], axis=0).sum())
+        for part, (p, _) in zip(parts, found, strict=True):
+            part.append(p)
     rows = np.concatenate(truth) if truth else np.zeros(0, np.int32)
     if not len(rows):
         raise DataError(
@@ -249,6 +254,8 @@ def _held_out(
     if dropped:
         why = f"{recipe.target} is blank there or was never seen"
         notes.append(f"{count_of(dropped, 'row')} of {source.name} (--holdout) left out: {why}")
+    names = [domain.name for domain in classifiers[0].domains]
+    notes += [f"{source.name} (--holdout): {note}" for note in summing_notes(names, unknown, rough)]
     return tuple(scores(np.concatenate(part), rows, len(target)) for part in parts), notes
 
 

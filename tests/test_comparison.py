@@ -182,6 +182,8 @@ def test_a_table_that_took_no_part_is_scored_by_the_final_structures(tmp_path: P
     assert all(np.isfinite(one.log_loss) for one in found.held_out)
     assert sum(map(sum, found.held_out[0].confusion)) == 100
     assert "holdout" in entries(found)["tan"]
+    note = f"{tmp_path / 'new.csv'} (--holdout): cells that are blank or hold a value not known from training were "
+    assert f"{note}summed out: d (100 records)" in found.warnings
 
 
 def test_required_and_forbidden_edges_reach_every_fold() -> None:

@@ -14,7 +14,7 @@ FLOORS = (
     "bnx errors text palette plain unfinished",
     "kernels calibrating counts tiles discretising domains dot_text embedding files storing cells "
     "folds layers losses branching multiplicity paired picture structure svg effects ordered loglinear "
-    "fibre homogeneity",
+    "fibre homogeneity unobserved summing_out",
     "tables views blocks columns columnar delimited malformed reading levelling screening duplicates level_order",
     "coarsening gathering passes coding encoding pair_counting engines",
     "parameters trainings dependence families profiling",

@@ -14,7 +14,8 @@ from bnx.encoding import encode
 from bnx.errors import SettingError
 from bnx.files import check_free, write_bytes
 from bnx.reading import Source, open_source
-from bnx.text import count_of, quoted
+from bnx.summing_out import summing_notes
+from bnx.text import count_of
 
 __all__ = ["run"]
 
@@ -32,7 +33,7 @@ def run(
     """Give every class's probability for each record, and the most probable class.
 
     The result has the columns row (0-based line of data), most_probable, and p:LEVEL for each level of the class.
-    Values that the structure does not know are left out of the evidence, with a note.
+    Blank cells and values that the structure does not know are summed out along the structure, with a note.
 
     A probability is not a decision. The structure shows dependences, not causes; the table that it was learnt from may
     carry bias in who was recorded and how; rare classes make every figure soft. Where a decision touches health,
@@ -43,18 +44,14 @@ def run(
     source = open_source(data)
     check_spared(output, source)
     _, classifier = opened(structure)
-    result, unknown = _classified(classifier, source)
+    result, notes = _classified(classifier, source)
     if output == "-":
         typer.echo(result.to_csv(index=False), nl=False)
     else:
         write_bytes(output, _content(result, output), overwrite)
         say(f"{count_of(len(result), 'record')} classified into {output}", quiet)
-    if unknown:
-        say(
-            "note: cells that are blank or hold a value not known from training were left out of the evidence: "
-            f"{quoted(unknown)}",
-            quiet,
-        )
+    for note in notes:
+        say(f"note: {note}", quiet)
 
 
 def _check_output(output: str, overwrite: bool) -> None:
@@ -70,15 +67,17 @@ def _check_output(output: str, overwrite: bool) -> None:
 
 def _classified(classifier: Classifier, source: Source) -> tuple[pd.DataFrame, list[str]]:
     """Classify every record; also say, attribute by attribute, how many records hold something unknown."""
-    parts, unknown = [], np.zeros(len(classifier.domains), np.int64)
+    parts, unknown, rough = [], np.zeros(len(classifier.domains), np.int64), 0
     for codes, _ in encode(source, classifier.domains):
-        parts.append(classifier.probabilities(codes))
+        p, approximate = classifier.classified(codes)
+        parts.append(p)
         unknown += (codes < 0).sum(axis=1)
+        rough += int(approximate.sum())
     p = np.concatenate(parts)
     columns = {"row": np.arange(len(p)), "most_probable": classifier.labels(p)}
     columns |= {f"p:{level}": p[:, c] for c, level in enumerate(classifier.target.levels)}
-    counts = zip(classifier.domains, unknown.tolist(), strict=True)
-    return pd.DataFrame(columns), [f"{domain.name} ({count_of(n, 'record')})" for domain, n in counts if n]
+    notes = summing_notes([domain.name for domain in classifier.domains], unknown, rough)
+    return pd.DataFrame(columns), notes
 
 
 def _content(result: pd.DataFrame, output: str) -> bytes:
