@@ -18,6 +18,7 @@ __all__ = [
     "probabilities",
     "slope",
     "steepness",
+    "without_evidence",
 ]
 
 _TEMPERATURE_PENALTY = 4.0
@@ -144,6 +145,17 @@ def probabilities(calibration: Calibration, log_prior: np.ndarray, evidence: np.
     out = np.empty((len(evidence), bias.shape[1]))
     posteriors(evidence, bias, calibration.temperature, calibration.floor, calibration.shares, out)
     return out
+
+
+def without_evidence(calibration: Calibration, log_prior: np.ndarray) -> np.ndarray:
+    """Give the probabilities (C,) of a record of which nothing was observed: the prior (C,), nats, as it is.
+
+    Calibration is of evidence, and there is none. Only where the prior rules a class out does the floor come in.
+    """
+    prior = np.exp(log_prior)
+    if (prior > 0).all():
+        return np.asarray(prior / prior.sum())
+    return np.asarray((1 - calibration.floor) * prior / prior.sum() + calibration.floor * calibration.shares)
 
 
 def slope(p: np.ndarray, truth: np.ndarray) -> float | None:

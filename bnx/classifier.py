@@ -6,7 +6,7 @@ from functools import cached_property
 
 import numpy as np
 
-from bnx.calibrating import Calibration, apply
+from bnx.calibrating import Calibration, apply, without_evidence
 from bnx.domains import Domain
 from bnx.parameters import Smoothing, log_tables
 from bnx.structure import Structure
@@ -32,15 +32,10 @@ class Classifier:
     calibration: Calibration
 
     @property
-    def prior(self) -> np.ndarray:
-        """Share of each class, (C,)."""
-        return np.asarray(self.class_counts / self.class_counts.sum())
-
-    @property
     def log_prior(self) -> np.ndarray:
         """Log share of each class (nats), (C,)."""
         with np.errstate(divide="ignore"):
-            return np.asarray(np.log(self.prior))
+            return np.asarray(np.log(self.class_counts / self.class_counts.sum()))
 
     @property
     def free_parameters(self) -> int:
@@ -81,7 +76,8 @@ class Classifier:
 
         What was not observed is summed out. Second, the records (N,) bool for which that is an approximation.
         """
-        evidence, rough = observed_terms(codes, self.structure, self.log_table, len(self.class_counts))
+        parents, sizes = dict(enumerate(self.structure.parents)), [len(domain) for domain in self.domains]
+        evidence, rough = observed_terms(codes, parents, sizes, self.log_table, len(self.class_counts))
         for child in range(len(self.domains)):
             evidence += self.terms(codes, child)
         return evidence, rough
@@ -97,7 +93,7 @@ class Classifier:
         """Class probabilities as ``probabilities`` gives them, and the records (N,) bool where they are approximate."""
         evidence, rough = self.evidence(codes)
         p = apply(self.calibration, self.log_prior, evidence)
-        p[(codes < 0).all(axis=0)] = self.prior
+        p[(codes < 0).all(axis=0)] = without_evidence(self.calibration, self.log_prior)
         return p, rough
 
     def labels(self, p: np.ndarray) -> Sequence[str]:

@@ -27,6 +27,7 @@ from bnx.learners import Learner, learner
 from bnx.learning import Learned, make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
+from bnx.observing import unobserved_notes
 from bnx.pair_judging import JudgedPairs, judge_pairs
 from bnx.rating import EXACT_ROWS, SLOPE_ROWS, StructureScore, score
 from bnx.reading import Source
@@ -288,6 +289,7 @@ def _run_warnings(
             f"choices inside training folds are made on {len(sample.target):,} of {engine.rows:,} rows, gains of edges "
             f"are judged on {gained:,}, a seeded sample by fold and class; scores and tests use all rows"
         )
+    notes += unobserved_notes(evaluations[0], coded.table.schema.names)
     if recipe.group:
         notes.append(
             f"rows of one {recipe.group} may be alike, but the tests assume independent records: every p is descriptive"

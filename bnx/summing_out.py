@@ -1,17 +1,16 @@
 """The probability of what was observed of a record: unobserved attributes summed out exactly along the structure."""
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from itertools import chain
 from math import prod
 
 import numpy as np
 
-from bnx.structure import Structure
 from bnx.text import count_of, quoted
-from bnx.unobserved import Group, groups_of
+from bnx.unobserved import Group, Parents, groups_of
 
-__all__ = ["MOST_CELLS", "observed_terms", "summing_notes"]
+__all__ = ["MOST_CELLS", "approximate", "observed_terms", "summing_notes"]
 
 MOST_CELLS = 1 << 20  # of a table that is made on the way, for one record and one column
 _FLOATS = 1 << 22  # made at a time: 32 MB
@@ -53,15 +52,16 @@ class _Plan:
 
 def observed_terms(
     codes: np.ndarray,
-    structure: Structure,
+    parents: Parents,
+    sizes: Sequence[int],
     log_table: Callable[[int], np.ndarray],
     columns: int,
     most: int = MOST_CELLS,
 ) -> tuple[np.ndarray, np.ndarray]:
     """Sum the unobserved attributes of N records out.
 
-    codes (n, N), -1 for what was not observed; log_table: of a child, log probabilities (levels of its parents in the
-    order taken..., its own levels, T) in so many columns T.
+    codes (n, N), -1 for what was not observed; sizes: levels of all n attributes; log_table: of a child, log
+    probabilities (levels of its parents in the order taken..., its own levels, T) in so many columns T.
 
     Returns:
         What the families that hold an unobserved attribute add to the log probability (nats) of what was observed,
@@ -72,24 +72,39 @@ def observed_terms(
     """
     out = np.zeros((codes.shape[1], columns))
     rough = np.zeros(codes.shape[1], np.bool_)
-    for group in groups_of(codes < 0, structure):
-        members = {child: (*structure.parents[child], child) for child in group.families}
-        tables = {child: log_table(child) for child in group.families}
-        sizes = {
-            one: size for child in members for one, size in zip(members[child], tables[child].shape[:-1], strict=True)
-        }
-        plan = _plan([_scope(own, group) for own in members.values()], sizes, most)
+    for group, members, plan in _planned(codes, parents, sizes, most):
         around = sorted(set(chain(*members.values())) - set(group.members))
         seen, of_row = _different(codes[around][:, group.rows], [sizes[one] for one in around])
         step = max(1, _FLOATS // (plan.widest * columns))
         parts = []
         for first in range(0, seen.shape[1], step):
             levels = dict(zip(around, seen[:, first : first + step], strict=True))
-            cut = [_factor(tables[child], members[child], group, levels) for child in members]
+            cut = [_factor(log_table(child), members[child], group, levels) for child in members]
             parts.append(_summed(cut, plan))
         out[group.rows] += np.concatenate(parts)[of_row]
         rough[group.rows] |= not plan.exact
     return out, rough
+
+
+def approximate(codes: np.ndarray, parents: Parents, sizes: Sequence[int], most: int = MOST_CELLS) -> np.ndarray:
+    """Tell for which records (N,) ``observed_terms`` gives an approximation."""
+    rough = np.zeros(codes.shape[1], np.bool_)
+    for group, _, plan in _planned(codes, parents, sizes, most):
+        rough[group.rows] |= not plan.exact
+    return rough
+
+
+def _planned(
+    codes: np.ndarray, parents: Parents, sizes: Sequence[int], most: int
+) -> Iterator[tuple[Group, dict[int, Scope], _Plan]]:
+    """Find what is to be summed out together, the members of the families in which it stands, and in which order."""
+    plans: dict[tuple[Scope, ...], _Plan] = {}
+    for group in groups_of(codes < 0, parents):
+        members = {child: (*parents[child], child) for child in group.families}
+        scopes = tuple(_scope(own, group) for own in members.values())
+        if scopes not in plans:
+            plans[scopes] = _plan(scopes, sizes, most)
+        yield group, members, plans[scopes]
 
 
 def _scope(members: Scope, group: Group) -> Scope:
@@ -121,7 +136,7 @@ def _factor(table: np.ndarray, members: Scope, group: Group, levels: Mapping[int
     return _Factor(scope, flat[np.ravel_multi_index(tuple(levels[members[place]] for place in known), sizes)])
 
 
-def _plan(scopes: Sequence[Scope], sizes: Mapping[int, int], most: int) -> _Plan:
+def _plan(scopes: Sequence[Scope], sizes: Sequence[int], most: int) -> _Plan:
     """Choose the order, always the attribute next whose product has the fewest cells (the first of these)."""
     left = dict(enumerate(map(frozenset, scopes)))
     steps: list[_Step] = []
@@ -150,7 +165,7 @@ def _plan(scopes: Sequence[Scope], sizes: Mapping[int, int], most: int) -> _Plan
     return _Plan(tuple(steps), widest)
 
 
-def _cells(scope: frozenset[int], sizes: Mapping[int, int]) -> int:
+def _cells(scope: frozenset[int], sizes: Sequence[int]) -> int:
     return prod(sizes[one] for one in scope)
 
 

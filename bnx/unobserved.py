@@ -4,14 +4,14 @@ An unobserved attribute without a child that is observed, or that matters itself
 those that meet in a family must be summed out together: they form a group.
 """
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 
 import numpy as np
 
-from bnx.structure import Structure
+__all__ = ["Group", "Parents", "groups_of"]
 
-__all__ = ["Group", "groups_of"]
+Parents = Mapping[int, tuple[int, ...]]  # child -> its parents; families without an unobserved member may be missing
 
 
 @dataclass(frozen=True)
@@ -38,16 +38,17 @@ class _Matter:
     matters: np.ndarray
 
 
-def groups_of(unknown: np.ndarray, structure: Structure) -> Iterator[Group]:
+def groups_of(unknown: np.ndarray, parents: Parents) -> Iterator[Group]:
     """Find the groups of unobserved attributes, unknown (n, N) bool, in all of N records."""
     children: dict[int, list[int]] = {}
-    for parent, child in structure.edges:
-        children.setdefault(parent, []).append(child)
-    matter = _matter(unknown, structure)
+    for child, own_parents in parents.items():
+        for parent in own_parents:
+            children.setdefault(parent, []).append(child)
+    matter = _matter(unknown, parents)
     if not matter.matters.any():
         return
     place = {attribute: k for k, attribute in enumerate(matter.own.tolist())}
-    labels = _labels(matter, place, structure)
+    labels = _labels(matter, place, parents)
     for first in range(len(matter.own)):
         rows = np.flatnonzero(labels[first] == first)
         for together, chosen in _alike(labels[:, rows] == first):
@@ -62,41 +63,41 @@ def groups_of(unknown: np.ndarray, structure: Structure) -> Iterator[Group]:
                 yield Group(tuple(members), tuple(sorted(families)), own[same])
 
 
-def _matter(unknown: np.ndarray, structure: Structure) -> _Matter:
+def _matter(unknown: np.ndarray, parents: Parents) -> _Matter:
     """Tell which unobserved attributes matter, children before their parents."""
     own = np.flatnonzero(unknown.any(axis=1))
     place = {attribute: k for k, attribute in enumerate(own.tolist())}
     here = unknown[own]
     matters = np.zeros(here.shape, np.bool_)
-    for child in _children_first(structure):
-        parents = [place[parent] for parent in structure.parents[child] if parent in place]
-        if parents:
+    for child in _children_first(parents):
+        above = [place[parent] for parent in parents[child] if parent in place]
+        if above:
             in_play = ~here[place[child]] | matters[place[child]] if child in place else np.ones(here.shape[1], bool)
-            matters[parents] |= here[parents] & in_play
+            matters[above] |= here[above] & in_play
     return _Matter(own, here, matters)
 
 
-def _children_first(structure: Structure) -> list[int]:
-    """Order the attributes so that each comes before its parents."""
-    waiting = [0] * len(structure.parents)
-    for parent, _ in structure.edges:
+def _children_first(parents: Parents) -> list[int]:
+    """Order the children of all families so that each comes before its parents."""
+    waiting = dict.fromkeys(parents, 0)
+    for parent in (one for own in parents.values() for one in own if one in waiting):
         waiting[parent] += 1
-    order = [attribute for attribute, children in enumerate(waiting) if not children]
+    order = [child for child, children in waiting.items() if not children]
     for child in order:
-        for parent in structure.parents[child]:
+        for parent in (one for one in parents[child] if one in waiting):
             waiting[parent] -= 1
             if not waiting[parent]:
                 order.append(parent)
     return order
 
 
-def _labels(matter: _Matter, place: dict[int, int], structure: Structure) -> np.ndarray:
+def _labels(matter: _Matter, place: dict[int, int], parents: Parents) -> np.ndarray:
     """Label every attribute that matters with the first one of its group, (m, N); -1 for others."""
     m = len(matter.own)
     labels = np.where(matter.matters, np.arange(m)[:, None], m)
     families = []
-    for child, parents in enumerate(structure.parents):
-        meeting = np.array([place[member] for member in (*parents, child) if member in place])
+    for child, own_parents in parents.items():
+        meeting = np.array([place[member] for member in (*own_parents, child) if member in place])
         if len(meeting) > 1:
             in_play = ~matter.unknown[place[child]] | matter.matters[place[child]] if child in place else True
             joined = matter.matters[meeting] & in_play

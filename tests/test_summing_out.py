@@ -14,7 +14,7 @@ from bnx.calibrating import identity
 from bnx.classifier import Classifier
 from bnx.parameters import Smoothing
 from bnx.structure import Structure
-from bnx.summing_out import observed_terms
+from bnx.summing_out import approximate, observed_terms
 from bnx.unobserved import groups_of
 
 ATTRIBUTES = 6
@@ -109,7 +109,7 @@ def test_what_is_left_to_sum_are_the_unobserved_ancestors_of_what_was_observed(s
     structure = random_structure(random, most=2)
     unknown = random.random((ATTRIBUTES, 20)) < 0.5
     found: list[set[frozenset[int]]] = [set() for _ in range(20)]
-    for group in groups_of(unknown, structure):
+    for group in groups_of(unknown, dict(enumerate(structure.parents))):
         for row in group.rows:
             assert not found[row] & {frozenset(group.members)}
             found[row].add(frozenset(group.members))
@@ -132,7 +132,8 @@ def test_many_children_do_not_underflow() -> None:
     codes = np.zeros((children + 1, 1), int)
     codes[0] = -1
     codes[1 : children // 2] = 1
-    found, _ = observed_terms(codes, structure, lambda child: tables if child else own, 1)
+    parents = dict(enumerate(structure.parents))
+    found, _ = observed_terms(codes, parents, [2] * (children + 1), lambda child: tables if child else own, 1)
     logs = [float(own[x, 0]) + sum(float(tables[x, codes[k, 0], 0]) for k in range(1, children + 1)) for x in (0, 1)]
     assert max(logs) < -1000
     assert found[0, 0] == pytest.approx(np.logaddexp(*logs), rel=1e-12)
@@ -147,8 +148,10 @@ def test_beyond_the_largest_table_the_answer_is_an_approximation_and_says_so() -
     codes[4:] = 0
     codes[:4, 1] = 0
     columns = len(classifier.class_counts)
-    exact, fine = observed_terms(codes, structure, classifier.log_table, columns)
-    close, rough = observed_terms(codes, structure, classifier.log_table, columns, most=8)
+    parents, sizes = dict(enumerate(structure.parents)), [len(domain) for domain in classifier.domains]
+    assert approximate(codes, parents, sizes, most=8).tolist() == [True, False]
+    exact, fine = observed_terms(codes, parents, sizes, classifier.log_table, columns)
+    close, rough = observed_terms(codes, parents, sizes, classifier.log_table, columns, most=8)
     assert fine.tolist() == [False, False]
     assert rough.tolist() == [True, False]
     assert np.isfinite(close).all()
