@@ -20,7 +20,8 @@ class Classifier:
     """Everything needed to score a record.
 
     ``counts``: per attribute, training rows (C, levels of parents in the order taken..., levels of the child) int32;
-    ``class_counts`` (C,) int64.
+    ``class_counts`` (C,) int64; ``other_prior`` (C,): shares of the classes where new records come from, None if they
+    are those of the training rows.
     """
 
     domains: tuple[Domain, ...]
@@ -30,12 +31,14 @@ class Classifier:
     class_counts: np.ndarray
     smoothing: Smoothing
     calibration: Calibration
+    other_prior: np.ndarray | None = None
 
     @property
     def log_prior(self) -> np.ndarray:
         """Log share of each class (nats), (C,)."""
+        shares = self.class_counts / self.class_counts.sum() if self.other_prior is None else self.other_prior
         with np.errstate(divide="ignore"):
-            return np.asarray(np.log(self.class_counts / self.class_counts.sum()))
+            return np.asarray(np.log(shares))
 
     @property
     def free_parameters(self) -> int:

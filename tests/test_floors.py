@@ -18,7 +18,7 @@ FLOORS = (
     "tables views blocks columns columnar delimited malformed reading levelling screening duplicates level_order",
     "coarsening gathering passes coding encoding pair_counting engines",
     "parameters trainings dependence families profiling",
-    "wide_tables independence classifier intervals refining sampling scoring tabulating verdicts explaining "
+    "wide_tables independence classifier rebasing intervals refining sampling scoring tabulating verdicts explaining "
     "pair_details",
     "gating drawing formats showing",
     "learners",
