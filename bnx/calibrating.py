@@ -1,7 +1,7 @@
 """Calibration of the posterior: one temperature for the evidence, an offset per class, and a floor."""
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -18,6 +18,7 @@ __all__ = [
     "probabilities",
     "slope",
     "steepness",
+    "uncalibrated",
     "without_evidence",
 ]
 
@@ -76,6 +77,18 @@ class _Curve:
 def identity(classes: int) -> Calibration:
     """Leave probabilities as they are: temperature 1, no offsets, no floor."""
     return Calibration(1.0, np.zeros(classes), 0.0, np.full(classes, 1 / classes))
+
+
+def uncalibrated(class_counts: np.ndarray) -> Calibration:
+    """Leave probabilities as they are, unless the training rows (C,) lack a class: then a floor of half a record.
+
+    Otherwise such a class would have the probability 0, and a single record of it an infinite loss.
+    """
+    if class_counts.all():
+        return identity(len(class_counts))
+    rows = int(class_counts.sum())
+    shares = (class_counts + 1 / len(class_counts)) / (rows + 1)
+    return replace(identity(len(class_counts)), floor=min(_FLOORS[0] / rows, 1.0), shares=shares)
 
 
 def fit(

@@ -260,6 +260,25 @@ def _held_out(
     return tuple(scores(np.concatenate(part), rows, len(target)) for part in parts), notes
 
 
+def _rare_classes(evaluations: Sequence[Evaluation], levels: Sequence[str]) -> list[str]:
+    """Say which folds hold no row of a class, and which are predicted from training rows without one."""
+    notes = []
+    every = [one.engine.class_counts.reshape(len(one.fold_rows), -1, len(levels)).sum(axis=1) for one in evaluations]
+    for level, counts in zip(levels, np.concatenate(every).T, strict=True):
+        without, folds = int((counts == 0).sum()), len(counts)
+        rows = int(counts.sum()) // len(evaluations)
+        if without:
+            notes.append(
+                f"class {level} has {count_of(rows, 'row')} for {count_of(folds // len(evaluations), 'fold')}: in "
+                f"{without} of {folds} it has none to predict, so it counts in the other scores only"
+            )
+        if (counts == rows).any():
+            notes.append(
+                f"class {level} is predicted from rows that hold none of it, as all of its rows lie in one fold"
+            )
+    return notes
+
+
 def _rating_notes(results: Sequence[StructureScore]) -> list[str]:
     """Say how far rankings may be off where rows are too many to be ranked one by one."""
     rows = sum(fold.rows for fold in results[0].by_fold)
@@ -300,11 +319,7 @@ def _run_warnings(
             f"folds hold {min(sizes):,} to {max(sizes):,} rows; differences to {recipe.baseline} are means over folds "
             "and may differ from those of the log losses, which are means over rows"
         )
-    for level, rows in zip(coded.table.schema.target.levels, engine.class_counts.sum(axis=0).tolist(), strict=True):
-        if rows < len(evaluations[0].fold_rows):
-            notes.append(
-                f"class {level} has {count_of(rows, 'row')} for {len(evaluations[0].fold_rows)} folds: some hold none"
-            )
+    notes += _rare_classes(evaluations, coded.table.schema.target.levels)
     if any(member.tested for member in learners) and recipe.alpha > 0.1:
         notes.append(f"edges are tested at {recipe.alpha:g}: that share of the drawn edges may be false")
     return notes + _rating_notes(results)

@@ -64,8 +64,7 @@ def _share(level: str, text: str) -> float:
     share = float(text)
     if not math.isfinite(share) or not 0 < share < 1:
         raise SettingError(
-            f"--prior: the share of {level!r} is {text.strip()}; give a number above 0 and below 1, for no class is "
-            "certain or impossible"
+            f"--prior: the share of {level!r} is {text.strip()}; give a number above 0 and below 1: none is certain"
         )
     return share
 
@@ -83,6 +82,6 @@ def rebased(classifier: Classifier, prior: np.ndarray) -> Classifier:
     empty = [level for level, rows in zip(classifier.target.levels, classifier.class_counts, strict=True) if not rows]
     if empty:
         raise SettingError(
-            f"--prior: training held no record of {quoted(empty)}, so nothing is known of it; drop --prior"
+            f"--prior: training held no record of {quoted(empty)}; nothing is known of it, so drop --prior"
         )
     return replace(classifier, other_prior=prior, calibration=replace(classifier.calibration, shares=prior))

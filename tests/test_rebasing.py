@@ -79,11 +79,11 @@ def test_levels_may_hold_signs() -> None:
         ("", "--prior: '' cannot be used; write LEVEL=P,... with P a number"),
         (
             "few=0,many=.5,some=.5",
-            "--prior: the share of 'few' is 0; give a number above 0 and below 1, for no class is certain or impossible",
+            "--prior: the share of 'few' is 0; give a number above 0 and below 1: none is certain",
         ),
         (
             "few=nan,many=.5,some=.5",
-            "--prior: the share of 'few' is nan; give a number above 0 and below 1, for no class is certain or impossible",
+            "--prior: the share of 'few' is nan; give a number above 0 and below 1: none is certain",
         ),
     ],
 )
@@ -94,7 +94,7 @@ def test_what_is_no_prior(text: str, sentence: str) -> None:
 
 def test_a_class_without_training_rows_cannot_be_given_a_share() -> None:
     classifier, _ = learnt(identity(3))
-    with pytest.raises(SettingError, match="training held no record of 2, so nothing is known of it"):
+    with pytest.raises(SettingError, match="training held no record of 2; nothing is known of it"):
         rebased(replace(classifier, class_counts=np.array([5, 5, 0])), NEW)
 
 
