@@ -27,7 +27,7 @@ from bnx.learners import Learner, learner
 from bnx.learning import Learned, make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
-from bnx.observing import unobserved_notes
+from bnx.observing import rare_classes, unobserved_notes
 from bnx.pair_judging import JudgedPairs, judge_pairs
 from bnx.rating import EXACT_ROWS, SLOPE_ROWS, StructureScore, score
 from bnx.reading import Source
@@ -121,7 +121,8 @@ def compare(
     held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
     recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
     progress("edge ledger", 0, 0)
-    edges = edge_ledger(_told(first), _strengths(learned, pairs), gains, stable, learners, bounds, recipe, folds)
+    told, by_blanks = _told(first), judged.by_blanks(pairs.left, pairs.right)
+    edges = edge_ledger(told, _strengths(learned, pairs), gains, stable, learners, bounds, recipe, folds, by_blanks)
     notes = _run_warnings(evaluations, coded, recipe, learners, results)
     progress("reading", 0, 0)
     return Comparison(
@@ -260,25 +261,6 @@ def _held_out(
     return tuple(scores(np.concatenate(part), rows, len(target)) for part in parts), notes
 
 
-def _rare_classes(evaluations: Sequence[Evaluation], levels: Sequence[str]) -> list[str]:
-    """Say which folds hold no row of a class, and which are predicted from training rows without one."""
-    notes = []
-    every = [one.engine.class_counts.reshape(len(one.fold_rows), -1, len(levels)).sum(axis=1) for one in evaluations]
-    for level, counts in zip(levels, np.concatenate(every).T, strict=True):
-        without, folds = int((counts == 0).sum()), len(counts)
-        rows = int(counts.sum()) // len(evaluations)
-        if without:
-            notes.append(
-                f"class {level} has {count_of(rows, 'row')} for {count_of(folds // len(evaluations), 'fold')}: in "
-                f"{without} of {folds} it has none to predict, so it counts in the other scores only"
-            )
-        if (counts == rows).any():
-            notes.append(
-                f"class {level} is predicted from rows that hold none of it, as all of its rows lie in one fold"
-            )
-    return notes
-
-
 def _rating_notes(results: Sequence[StructureScore]) -> list[str]:
     """Say how far rankings may be off where rows are too many to be ranked one by one."""
     rows = sum(fold.rows for fold in results[0].by_fold)
@@ -319,7 +301,7 @@ def _run_warnings(
             f"folds hold {min(sizes):,} to {max(sizes):,} rows; differences to {recipe.baseline} are means over folds "
             "and may differ from those of the log losses, which are means over rows"
         )
-    notes += _rare_classes(evaluations, coded.table.schema.target.levels)
+    notes += rare_classes(evaluations, coded.table.schema.target.levels)
     if any(member.tested for member in learners) and recipe.alpha > 0.1:
         notes.append(f"edges are tested at {recipe.alpha:g}: that share of the drawn edges may be false")
     return notes + _rating_notes(results)

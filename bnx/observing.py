@@ -1,4 +1,4 @@
-"""What a run says about cells that were not observed: blanks that are no level, and levels that a fold never saw."""
+"""What a run says of what was not there: blanks that are no level, levels and classes that a fold never saw."""
 
 from collections.abc import Sequence
 
@@ -8,7 +8,7 @@ from bnx.evaluation import Evaluation
 from bnx.summing_out import MOST_CELLS
 from bnx.text import count_of, quoted
 
-__all__ = ["unobserved_notes"]
+__all__ = ["rare_classes", "unobserved_notes"]
 
 
 def unobserved_notes(evaluation: Evaluation, names: Sequence[str]) -> list[str]:
@@ -64,3 +64,22 @@ def _approximated(evaluation: Evaluation) -> int:
 
     items = [(fold, s) for fold in range(len(evaluation.fold_rows)) for s in structures]
     return sum(evaluation.engine.map(count, items))
+
+
+def rare_classes(evaluations: Sequence[Evaluation], levels: Sequence[str]) -> list[str]:
+    """Say which folds hold no row of a class, and which are predicted from training rows without one."""
+    notes = []
+    every = [one.engine.class_counts.reshape(len(one.fold_rows), -1, len(levels)).sum(axis=1) for one in evaluations]
+    for level, counts in zip(levels, np.concatenate(every).T, strict=True):
+        without, folds = int((counts == 0).sum()), len(counts)
+        rows = int(counts.sum()) // len(evaluations)
+        if without:
+            notes.append(
+                f"class {level} has {count_of(rows, 'row')} for {count_of(folds // len(evaluations), 'fold')}: in "
+                f"{without} of {folds} it has none to predict, so it counts in the other scores only"
+            )
+        if (counts == rows).any():
+            notes.append(
+                f"class {level} is predicted from rows that hold none of it, as all of its rows lie in one fold"
+            )
+    return notes
