@@ -5,7 +5,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from bnx.calibrating import Calibration, fit_against_first, identity
+from bnx.calibrating import Calibration, fit_against_first, uncalibrated
 from bnx.engines import LocalEngine
 from bnx.kernels import calibrated_loss, tempered_losses
 from bnx.learning import Learned
@@ -128,8 +128,8 @@ def choose(
     """
     if not nested:
         structures = len(trials[0].learned[held].structures)
-        plain = identity(len(trials[0].learned[held].training.class_counts))
-        return Choice(trials[0], (options[0],) * structures, (plain,) * structures, np.zeros((structures, 0)))
+        bare = uncalibrated(trials[0].learned[held].training.class_counts)
+        return Choice(trials[0], (options[0],) * structures, (bare,) * structures, np.zeros((structures, 0)))
     inner = inner_sets(held, folds)
     trial, chosen = trials[0], [options[0]] * len(trials[0].learned[held].structures)
     if losses:
@@ -140,13 +140,18 @@ def choose(
         ]
         best = int(np.argmin([total.min() for total in totals]))
         trial, chosen = trials[best], [options[k] for k in totals[best].argmin(axis=1)]
-    return _calibrated(trial, tuple(chosen), inner, sample, calibrate)
+    plain = None if calibrate else uncalibrated(trial.learned[held].training.class_counts)
+    return _calibrated(trial, tuple(chosen), inner, sample, plain)
 
 
 def _calibrated(
-    trial: Trial, chosen: tuple[Smoothing, ...], inner: Sequence[tuple[Held, int]], sample: Sample, calibrate: bool
+    trial: Trial,
+    chosen: tuple[Smoothing, ...],
+    inner: Sequence[tuple[Held, int]],
+    sample: Sample,
+    plain: Calibration | None,
 ) -> Choice:
-    """Fit the calibration of each structure on out-of-fold evidence, and judge it fold by fold."""
+    """Fit the calibration of each structure on out-of-fold evidence, unless it is ``plain``; judge it fold by fold."""
     rows = _inner_rows(trial, inner, sample)
     calibrations: list[Calibration] = []
     losses = np.zeros((len(chosen), len(inner)))
@@ -158,14 +163,13 @@ def _calibrated(
             losses[s] = losses[same]
             continue
         own = np.concatenate([_evidence(trial, held, s, smoothing, sample, fold) for held, fold in inner])
-        calibration = identity(len(rows.shares))
-        if calibrate:
-            calibration = fit_against_first(own, rows.prior, rows.truth, rows.shares, rows.weights)
-        calibrations.append(calibration)
+        fitted = plain or fit_against_first(own, rows.prior, rows.truth, rows.shares, rows.weights)
+        calibrations.append(fitted)
         for k, (held, _) in enumerate(inner):
             part = slice(rows.starts[k], rows.starts[k + 1])
-            prior = trial.learned[held].training.log_prior
-            losses[s, k] = mean_loss(own[part], prior, calibration, rows.truth[part], rows.weights[part])
+            training = trial.learned[held].training
+            used = uncalibrated(training.class_counts) if plain else fitted
+            losses[s, k] = mean_loss(own[part], training.log_prior, used, rows.truth[part], rows.weights[part])
     return Choice(trial, chosen, tuple(calibrations), losses)
 
 

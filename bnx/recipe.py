@@ -4,7 +4,7 @@ from collections.abc import Sequence
 from dataclasses import asdict, dataclass
 from typing import Any
 
-from bnx.coding import Coded, code_table
+from bnx.coding import MISSING, Coded, code_table
 from bnx.discretising import parse_bins
 from bnx.errors import SettingError
 from bnx.independence import TESTS
@@ -61,7 +61,7 @@ class Recipe:
         """Check every setting that can be checked without the table."""
         _one_of("test", self.test, TESTS)
         _one_of("adjust", self.adjust, ADJUSTMENTS)
-        _one_of("missing", self.missing, ("level", "drop"))
+        _one_of("missing", self.missing, MISSING)
         _between("alpha", self.alpha, 0, 1)
         _between("negligible", self.negligible, 0, 10)
         _whole("folds", self.folds, 3, MOST_FOLDS)
@@ -110,7 +110,7 @@ class Recipe:
             categorical=self.categorical,
             ignore=self.ignore,
             keep=keep,
-            missing="drop" if self.missing == "drop" else "level",
+            missing=next(one for one in MISSING if one == self.missing),
             max_levels=self.max_levels,
             extra=extra,
             jobs=jobs,

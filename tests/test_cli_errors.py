@@ -117,7 +117,7 @@ SETTINGS = {
     "--baseline kdb2": "--baseline kdb2 is not among the structures; add it to --structures, or choose one of naive, "
     "tan with --baseline",
     "--adjust bonferroni": "--adjust: 'bonferroni' cannot be used; give one of bh, holm, by, none",
-    "--missing zero": "--missing: 'zero' cannot be used; give one of level, drop",
+    "--missing zero": "--missing: 'zero' cannot be used; give one of level, drop, sum-out",
     "--alpha 0": "--alpha: 0 cannot be used; give a number above 0 and below 1",
     "--alpha nan": "--alpha: nan cannot be used; give a number above 0 and below 1",
     "--negligible -1": "--negligible: -1 cannot be used; give a number above 0 and below 10",
