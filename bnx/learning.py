@@ -12,8 +12,9 @@ from bnx.engines import LocalEngine
 from bnx.errors import DataError
 from bnx.families import PairRequests, family_statistics
 from bnx.gating import Answer, Bounds, Gate, Question, learn_together
+from bnx.heldout import RowJudge, inner_rows
 from bnx.independence import Statistics
-from bnx.learners import Learner
+from bnx.learners import Heldout, Learner
 from bnx.recipe import Recipe
 from bnx.refining import Rigour, gated, visit_families
 from bnx.structure import Structure
@@ -90,22 +91,44 @@ def _learn(
     """Learn in training sets that are measured together."""
     rigour = rigour_of(learners, len(bounds.names), recipe)
     seen = _look(engine, trainings, learners, recipe, rigour)
-    learnings = [member.learn(one.dependence, one.gate, bounds) for one in seen for member in learners]
+    from_pairs = [member for member in learners if not isinstance(member, Heldout)]
+    learnings = [member.learn(one.dependence, one.gate, bounds) for one in seen for member in from_pairs]
 
     def ask(questions: Sequence[tuple[int, Question]]) -> list[Answer]:
-        further = [(number // len(learners), question) for number, question in questions if question.given]
+        further = [(number // len(from_pairs), question) for number, question in questions if question.given]
         tested = iter(ask_tests(engine, trainings, further, rigour))
         answers: list[Answer] = []
         for number, asked in groupby(questions, key=itemgetter(0)):
             own = [question for _, question in asked]
-            known = iter(seen[number // len(learners)].answers([one for one in own if not one.given]))
+            known = iter(seen[number // len(from_pairs)].answers([one for one in own if not one.given]))
             answers += [next(tested if question.given else known) for question in own]
         return answers
 
     engine.progress("choosing edges", 0, 0)
-    structures = learn_together(learnings, ask)
-    step = len(learners)
-    return [Learned(training, tuple(structures[k * step : (k + 1) * step])) for k, training in enumerate(trainings)]
+    structures = iter(learn_together(learnings, ask))
+    climbed = iter(_climb(engine, trainings, learners, seen, bounds))
+    return [
+        Learned(training, tuple(next(climbed if isinstance(member, Heldout) else structures) for member in learners))
+        for training in trainings
+    ]
+
+
+def _climb(
+    engine: LocalEngine,
+    trainings: Sequence[Training],
+    learners: Sequence[Learner],
+    seen: Sequence["_Seen"],
+    bounds: Bounds,
+) -> list[Structure]:
+    """Learn the structures whose parents are judged on rows, training set by training set."""
+    work = [(k, member) for k in range(len(trainings)) for member in learners if isinstance(member, Heldout)]
+
+    def climb(item: tuple[int, Heldout]) -> Structure:
+        number, member = item
+        judge = RowJudge(inner_rows(engine, trainings[number]), [bounds.parents(i) for i in range(len(bounds.names))])
+        return member.climb(judge, seen[number].dependence.strength, bounds)
+
+    return engine.map(climb, work, "judging parents") if work else []
 
 
 @dataclass(frozen=True)
