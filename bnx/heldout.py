@@ -1,7 +1,8 @@
-"""The rows of one training set, cut into inner folds, and what held-out log loss every choice of parents gives there."""
+"""The rows of one training set in inner folds, and the held-out class log loss that a choice of parents has there."""
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import chain
 
 import numpy as np
 
@@ -9,122 +10,120 @@ from bnx.engines import LocalEngine
 from bnx.kernels.replacing import add_held_terms, class_weights, replaced_losses
 from bnx.trainings import Training
 
-__all__ = ["InnerRows", "RowJudge", "inner_rows"]
+__all__ = ["MOST_ROWS", "MOST_ROWS_FOR_PAIRS", "InnerRows", "RowJudge", "inner_rows"]
 
-INNER_FOLDS = 3
 MOST_ROWS = 10_000
-STRENGTH = 2.0
-_CELLS_PER_ROW = 4
-QUARTERS = (4, 3, 2, 1)
-FLOOR = 1.0
+MOST_ROWS_FOR_PAIRS = 1_000
+INNER_FOLDS = 3
+STRENGTH = 2.0  # records that tables with one parent less stand for
+_CELLS_PER_ROW = 4  # most cells of a family that is tried
+_FEWEST_CELLS = 1024
 
 
 @dataclass(frozen=True)
 class InnerRows:
-    """Rows sorted by inner fold and class.
+    """Rows of one training set, sorted by inner fold and class.
 
-    ``codes`` (n, N) as the training set sees them; ``starts`` (folds * C + 1,); ``sizes`` (n,); ``log_prior``
-    (folds, C) of the rows outside each fold; ``shares`` (C,) of all.
+    ``codes`` (n, N) as the training set sees them, of ``sizes`` (n,) levels; ``starts`` (folds * C + 1,): first row of
+    each fold and class; ``log_prior`` (folds, C) nats: share of each class outside each fold, minus infinity for none;
+    ``floor`` (C,): added to every chance.
     """
 
     codes: np.ndarray
-    starts: np.ndarray
     sizes: np.ndarray
+    starts: np.ndarray
     log_prior: np.ndarray
-    shares: np.ndarray
+    floor: np.ndarray
 
 
-def inner_rows(engine: LocalEngine, training: Training) -> InnerRows:
-    """Cut the blocks of a training set into three runs of neighbours, and take at most 10,000 rows."""
-    blocks = np.flatnonzero(training.mask)
-    folds = min(INNER_FOLDS, len(blocks))
-    parts = np.array_split(blocks, folds)
-    total = int(training.class_counts.sum())
-    groups = engine.blocks * engine.classes
-    turns = np.arange((len(engine.starts) - 1) // groups) * groups
-    chosen = []
-    for part in parts:
-        for c in range(engine.classes):
-            segments = (part[None, :] * engine.classes + c + turns[:, None]).ravel()
-            ends = np.cumsum(engine.starts[segments + 1] - engine.starts[segments])
-            rows = int(ends[-1])
-            wanted = min(rows, -(-MOST_ROWS * rows // max(total, MOST_ROWS)))
-            places = np.arange(wanted) * rows // max(wanted, 1)
-            held = np.searchsorted(ends, places, side="right")
-            chosen.append(engine.starts[segments[held] + 1] - ends[held] + places)
-    index = np.concatenate(chosen)
-    lengths = np.array([len(one) for one in chosen])
+def inner_rows(engine: LocalEngine, training: Training, most: int) -> InnerRows:
+    """Cut the blocks of a training set into three runs of neighbours; take ``most`` rows, spread evenly, or all."""
+    parts = np.array_split(np.flatnonzero(training.mask), INNER_FOLDS)
+    taken = [
+        _spread(engine, part, c, most / training.class_counts.sum()) for part in parts for c in range(engine.classes)
+    ]
+    index = np.concatenate(taken)
     codes = np.take(engine.codes, index, axis=1)
     view = training.view
-    for i in np.flatnonzero(~view.plain):
+    for i in np.flatnonzero(~view.plain).tolist():
         codes[i] = view.recode[i][codes[i]]
-    counts = lengths.reshape(folds, -1)
-    others = counts.sum(axis=0) - counts
+    rows = np.array([len(one) for one in taken])
+    by_fold = rows.reshape(INNER_FOLDS, -1)
+    others = by_fold.sum(axis=0) - by_fold
     with np.errstate(divide="ignore"):
         log_prior = np.log(others / np.maximum(others.sum(axis=1, keepdims=True), 1))
-    starts = np.concatenate([[0], np.cumsum(lengths)]).astype(np.int64)
-    return InnerRows(codes, starts, view.sizes, log_prior, counts.sum(axis=0) / max(1, counts.sum()))
+    starts = np.concatenate([[0], np.cumsum(rows)]).astype(np.int64)
+    return InnerRows(codes, view.sizes, starts, log_prior, by_fold.sum(axis=0) / max(len(index), 1) ** 2)
+
+
+def _spread(engine: LocalEngine, blocks: np.ndarray, c: int, share: float) -> np.ndarray:
+    """Take a share of the rows of one class in some blocks, spread evenly; what lies where was decided by the seed."""
+    groups = engine.blocks * engine.classes
+    turns = np.arange((len(engine.starts) - 1) // groups) * groups
+    segments = (blocks * engine.classes + c + turns[:, None]).ravel()
+    ends = np.cumsum(engine.starts[segments + 1] - engine.starts[segments])
+    rows = int(ends[-1]) if len(ends) else 0
+    wanted = min(rows, int(np.ceil(share * rows)))
+    places = np.arange(wanted) * rows // max(wanted, 1)
+    held = np.searchsorted(ends, places, side="right")
+    return np.asarray(engine.starts[segments[held] + 1] - ends[held] + places)
 
 
 class RowJudge:
-    """Keeps the summed log terms of the structure so far; judges what one family's replacement changes."""
+    """Judges other parents of one attribute by the held-out log loss of all rows; holds the structure so far.
+
+    The tables are smoothed by back-off with 2 records and counted without the fold that is judged. As in the final
+    model no class is ruled out: every chance is mixed with the classes' shares, which count for one row in all.
+    """
 
     def __init__(self, rows: InnerRows, parents: Sequence[tuple[int, ...]]) -> None:
+        """Start from a structure."""
         self.rows = rows
         self.parents = list(parents)
-        n_rows = rows.codes.shape[1]
-        self.terms = np.zeros((n_rows, len(rows.shares)))
-        self.floor = FLOOR / max(n_rows, 1) * rows.shares
-        self.most_cells = max(1024, _CELLS_PER_ROW * n_rows)
-        self.work = 0
+        self._terms = np.zeros((len(rows.floor), rows.codes.shape[1]))
+        self._weights = np.empty(self._terms.shape)
         for child, own in enumerate(self.parents):
-            self._add(child, own, 1.0)
-        self._refit()
-
-    def _add(self, child: int, parents: tuple[int, ...], sign: float) -> None:
-        members = np.array([*parents, child], np.int64)
-        add_held_terms(self.rows.codes, self.rows.starts, members, self.rows.sizes[members], STRENGTH, sign, self.terms)
-
-    def _refit(self) -> None:
-        found = []
-        for quarters in QUARTERS:
-            self.quarters = quarters
-            found.append(self._judge(self.terms, [()])[0])
-        best = int(np.argmin(found))
-        self.quarters, self._loss = QUARTERS[best], float(found[best])
-
-    def _judge(self, terms: np.ndarray, families: Sequence[tuple[int, ...]]) -> np.ndarray:
-        rest = np.empty(terms.shape)
-        class_weights(terms, self.rows.starts, self.rows.log_prior, self.quarters / 4, rest)
-        width = max(len(one) for one in families)
-        members = np.zeros((len(families), max(width, 1)), np.int64)
-        for k, one in enumerate(families):
-            members[k, : len(one)] = one
-        depths = np.array([len(one) for one in families])
-        sizes = np.where(np.arange(members.shape[1]) < depths[:, None], self.rows.sizes[members], 1)
-        out = np.empty(len(families))
-        self.work += len(families)
-        replaced_losses(
-            self.rows.codes, self.rows.starts, members, sizes, depths, STRENGTH, self.quarters, rest, self.floor, out
-        )
-        return out
+            self._add((*own, child), 1.0)
+        self._settle()
 
     def loss(self) -> float:
+        """Tell the loss of the structure so far (nats)."""
         return self._loss
 
-    def losses(self, child: int, families: Sequence[tuple[int, ...]]) -> np.ndarray:
-        members = np.array([*self.parents[child], child], np.int64)
-        terms = self.terms.copy()
-        add_held_terms(self.rows.codes, self.rows.starts, members, self.rows.sizes[members], STRENGTH, -1.0, terms)
-        found = np.full(len(families), np.inf)
-        sizes = self.rows.sizes
-        fit = [k for k, one in enumerate(families) if np.prod(sizes[[*one, child]]) <= self.most_cells]
-        if fit:
-            found[fit] = self._judge(terms, [(*families[k], child) for k in fit])
-        return found
+    def losses(self, child: int, choices: Sequence[tuple[int, ...]]) -> np.ndarray:
+        """Tell the loss (nats) with each of K choices of parents, (K,).
+
+        It is infinite for a family of more than 4 cells a row (of more than 1,024, where rows are few).
+        """
+        old, new = (*self.parents[child], child), [(*parents, child) for parents in choices]
+        return self._replaced(old, new)
 
     def take(self, child: int, parents: tuple[int, ...]) -> None:
-        self._add(child, self.parents[child], -1.0)
+        """Give an attribute other parents."""
+        self._add((*self.parents[child], child), -1.0)
+        self._add((*parents, child), 1.0)
         self.parents[child] = parents
-        self._add(child, parents, 1.0)
-        self._refit()
+        self._settle()
+
+    def _add(self, family: tuple[int, ...], sign: float) -> None:
+        rows, members = self.rows, np.array(family)
+        add_held_terms(rows.codes, rows.starts, members, rows.sizes[members], STRENGTH, sign, self._terms)
+
+    def _settle(self) -> None:
+        """Find the weights of the classes and the loss of the structure so far."""
+        class_weights(self._terms, self.rows.starts, self.rows.log_prior, self._weights)
+        self._loss = float(self._replaced((), [()])[0])
+
+    def _replaced(self, old: tuple[int, ...], new: Sequence[tuple[int, ...]]) -> np.ndarray:
+        rows, depths = self.rows, np.array([len(old), *map(len, new)])
+        used = np.arange(max(1, int(depths.max()))) < depths[:, None]
+        members = np.zeros(used.shape, np.int64)
+        members[used] = [*old, *chain.from_iterable(new)]
+        sizes = np.where(used, rows.sizes[members], 1)
+        able = sizes.prod(axis=1, dtype=np.float64) <= max(_FEWEST_CELLS, _CELLS_PER_ROW * rows.codes.shape[1])
+        able[0] = True
+        losses, found = np.empty(int(able.sum()) - 1), np.full(len(new), np.inf)
+        fixed = (members[able], sizes[able], depths[able], STRENGTH)
+        replaced_losses(rows.codes, rows.starts, *fixed, self._weights, rows.floor, losses)
+        found[able[1:]] = losses
+        return found

@@ -58,7 +58,7 @@ def words(name: str) -> str:
     if base == "tan":
         return "tree" + ending
     if base == "heldout":
-        return "up to 3 parents, by held-out log loss"
+        return "up to 3 parents, chosen by held-out log loss"
     found = re.fullmatch(r"kdb(\d+)", base)
     if found:
         number = int(found[1])

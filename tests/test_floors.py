@@ -22,7 +22,7 @@ FLOORS = (
     "pair_details",
     "gating drawing formats showing",
     "learners",
-    "recipe wide_forests wide wide_learning learning pair_judging many_tests wide_judging pair_table",
+    "recipe wide_forests wide wide_learning heldout learning pair_judging many_tests wide_judging pair_table",
     "choosing evaluation gains rating resampling pair_tests",
     "dealing judging ledger comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
