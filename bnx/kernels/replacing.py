@@ -95,16 +95,16 @@ def _block_loss(
     own: np.ndarray,
 ) -> float:
     """Sum the losses of a block of rows of one fold and class, whose tables begin at ``first``."""
-    rows = high - low
-    at = first + truth * size
+    rows, mine = high - low, cells[low:high]
+    shares, weights = table[first + truth * size : first + (truth + 1) * size], rest[truth, low:high]
     for k in range(rows):
-        own[k] = rest[truth, low + k] * table[at + cells[low + k]]
+        own[k] = weights[k] * shares[mine[k]]
         whole[k] = own[k]
     for c in range(rest.shape[0]):
         if c != truth:
-            at = first + c * size
+            others, lighter = table[first + c * size : first + (c + 1) * size], rest[c, low:high]
             for k in range(rows):
-                whole[k] += rest[c, low + k] * table[at + cells[low + k]]
+                whole[k] += lighter[k] * others[mine[k]]
     for k in range(rows):
         own[k] = scale * (own[k] / whole[k]) + floor
     even = rows - rows % _LANES
@@ -159,7 +159,9 @@ def class_weights(terms: np.ndarray, starts: np.ndarray, log_prior: np.ndarray, 
     without one, whose weight is 0.
     """
     classes, rows = terms.shape
-    top = np.full(rows, -np.inf)
+    top = np.empty(rows)
+    for row in range(rows):
+        top[row] = -np.inf
     for s in range(starts.size - 1):
         for c in range(classes):
             prior = log_prior[s // classes, c]
@@ -194,7 +196,7 @@ def _most_cells(sizes: np.ndarray, depths: np.ndarray) -> int:
 @inlined
 def _room(rows: int, folds: int, classes: int, most: int) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     """Make room for the cells of rows, for counts by fold, in all and without a fold, and for what smoothing needs."""
-    return np.empty(rows, np.int32), np.empty((folds + 2) * classes * most, np.int32), np.empty(10 * most)
+    return np.empty(rows, np.uint32), np.empty((folds + 2) * classes * most, np.int32), np.empty(10 * most)
 
 
 @part
@@ -252,8 +254,8 @@ def _number_all(codes: np.ndarray, members: np.ndarray, sizes: np.ndarray, cells
     for row in range(cells.size):
         cells[row] = 0
     for m in range(members.size):
-        size, own = np.int32(sizes[m]), codes[members[m]]
+        size, own = np.uint32(sizes[m]), codes[members[m]]
         for row in range(cells.size):
-            cells[row] = cells[row] * size + np.int32(own[row])
+            cells[row] = cells[row] * size + np.uint32(own[row])
         total *= sizes[m]
     return total
