@@ -21,9 +21,10 @@ from bnx.families import PairRequests
 from bnx.folds import sub_blocks
 from bnx.gains import edge_gains
 from bnx.gating import Bounds
+from bnx.heldout import MOST_ROWS
 from bnx.independence import Statistics
 from bnx.judging import Against, Recommendation, against, inner_picks, recommend
-from bnx.learners import Learner, learner
+from bnx.learners import Heldout, Learner, learner
 from bnx.learning import Learned, make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
@@ -105,6 +106,7 @@ def compare(
     """
     progress("reading", 0, 0)
     coded = recipe.code(source, jobs, store)
+    recipe, notes_on_structures = recipe.for_table(len(coded.table.target), len(coded.table.schema.attributes))
     if holdout:
         holdout.check([*coded.table.schema.names, recipe.target])
     bounds = make_bounds(recipe, coded.table.schema.names)
@@ -146,7 +148,7 @@ def compare(
         recommendation=recommendation,
         held_out=held_out,
         left_out=coded.left_out,
-        warnings=(*early, *notes, *judged.notes, *not_scored, *coded.warnings),
+        warnings=(*early, *notes, *notes_on_structures, *judged.notes, *not_scored, *coded.warnings),
         evaluations=tuple(evaluations),
         lines=coded.table.lines,
     )
@@ -297,6 +299,11 @@ def _run_warnings(
             f"are judged on {gained:,}, a seeded sample by fold and class; scores and tests use all rows"
         )
     notes += unobserved_notes(evaluations[0], coded.table.schema.names)
+    if any(isinstance(member, Heldout) for member in learners) and engine.rows > MOST_ROWS:
+        notes.append(
+            f"parents of heldout are chosen on at most {MOST_ROWS:,} rows of every training set, spread evenly by fold "
+            "and class"
+        )
     if recipe.group:
         notes.append(
             f"rows of one {recipe.group} may be alike, but the tests assume independent records: every p is descriptive"

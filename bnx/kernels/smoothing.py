@@ -5,7 +5,7 @@ import numpy as np
 from bnx.kernels.compiling import inlined, kernel, part
 from bnx.kernels.exponentials import logarithms
 
-__all__ = ["drop_parent", "ratio_tables", "smoothed_tables"]
+__all__ = ["drop_parent", "ratio_tables", "smoothed_shares", "smoothed_tables"]
 
 
 @kernel
@@ -22,7 +22,7 @@ def smoothed_tables(
     classes, cells = counts.shape
     shares = np.empty((laplace.size * classes, cells))
     sums, work = np.empty(sizes.size * cells), np.empty(sizes.size * cells)
-    _shares(counts, int(np.int64(0)), sizes, strengths, laplace, sums, work, shares)
+    smoothed_shares(counts, int(np.int64(0)), sizes, strengths, laplace, sums, work, shares)
     for column in range(shares.shape[0]):
         for cell in range(cells):
             out[cell, column] = np.log(shares[column, cell])
@@ -58,7 +58,7 @@ def ratio_tables(
         f = which[k]
         cells = starts[f + 1] - starts[f]
         shares = room[: columns * cells].reshape(columns, cells)
-        _shares(counts, starts[f], sizes[f, : depths[f]], strengths, laplace, sums, work, shares)
+        smoothed_shares(counts, starts[f], sizes[f, : depths[f]], strengths, laplace, sums, work, shares)
         _to_ratios(room, laplace.size, classes, cells)
         wanted = laplace.size * (classes - 1)
         logarithms(room[: wanted * cells], logs)
@@ -84,7 +84,7 @@ def _to_ratios(room: np.ndarray, options: int, classes: int, cells: int) -> None
 
 
 @part
-def _shares(
+def smoothed_shares(
     counts: np.ndarray,
     start: int,
     sizes: np.ndarray,
