@@ -83,6 +83,8 @@ def _each(figures: Mapping[str, Figures]) -> list[str]:
     head = [f"{structure}, {which}" for structure in MARKS for which in ("one", "program")]
     rows = []
     for table, one in figures.items():
+        if PROGRAM not in one:
+            continue
         cells = [f"{one[name][structure]['log_loss']:.4f}" for structure in MARKS for name in (ONE_STRENGTH, PROGRAM)]
         rows.append(f"| {table} | {' | '.join(cells)} |")
     return [f"| log loss | {' | '.join(head)} |", "|---|" + "--:|" * len(head), *rows]
