@@ -111,8 +111,7 @@ def compare(
         holdout.check([*coded.table.schema.names, recipe.target])
     bounds = make_bounds(recipe, coded.table.schema.names)
     learners = [learner(name) for name in recipe.structures]
-    for note in (early := matrix_notes(coded.table.schema, learners, bounds, recipe)):
-        warn(note)
+    early = _forewarned(matrix_notes(coded.table.schema, learners, bounds, recipe), warn)
     evaluations, folds = _evaluations(coded, recipe, learners, bounds, jobs, progress, store)
     gains = [fold for one in evaluations for fold in edge_gains(one)]
     first = evaluations[0]
@@ -152,6 +151,13 @@ def compare(
         evaluations=tuple(evaluations),
         lines=coded.table.lines,
     )
+
+
+def _forewarned(notes: list[str], warn: Callable[[str], None]) -> list[str]:
+    """Tell notes at once, and give them back."""
+    for note in notes:
+        warn(note)
+    return notes
 
 
 def _tested(

@@ -46,7 +46,7 @@ def terms_of(counted: Counted, which: np.ndarray, ways: Sequence[Way]) -> Terms:
         for v, way in enumerate(ways):
             logs = np.log(way.smooth(counts)).reshape(classes, -1)
             table[first:last, v * (classes - 1) : (v + 1) * (classes - 1)] = (logs[1:] - logs[0]).T
-    return Terms(one, which, starts[:-1], table)
+    return Terms(counted, (), which, starts[:-1], table)
 
 
 @contextmanager
