@@ -1,7 +1,7 @@
 """Calibration of the posterior: one temperature for the evidence, an offset per class, and a floor."""
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -18,6 +18,8 @@ __all__ = [
     "probabilities",
     "slope",
     "steepness",
+    "uncalibrated",
+    "without_evidence",
 ]
 
 _TEMPERATURE_PENALTY = 4.0
@@ -75,6 +77,18 @@ class _Curve:
 def identity(classes: int) -> Calibration:
     """Leave probabilities as they are: temperature 1, no offsets, no floor."""
     return Calibration(1.0, np.zeros(classes), 0.0, np.full(classes, 1 / classes))
+
+
+def uncalibrated(class_counts: np.ndarray) -> Calibration:
+    """Leave probabilities as they are, unless the training rows (C,) lack a class: then a floor of half a record.
+
+    Otherwise such a class would have the probability 0, and a single record of it an infinite loss.
+    """
+    if class_counts.all():
+        return identity(len(class_counts))
+    rows = int(class_counts.sum())
+    shares = (class_counts + 1 / len(class_counts)) / (rows + 1)
+    return replace(identity(len(class_counts)), floor=min(_FLOORS[0] / rows, 1.0), shares=shares)
 
 
 def fit(
@@ -144,6 +158,17 @@ def probabilities(calibration: Calibration, log_prior: np.ndarray, evidence: np.
     out = np.empty((len(evidence), bias.shape[1]))
     posteriors(evidence, bias, calibration.temperature, calibration.floor, calibration.shares, out)
     return out
+
+
+def without_evidence(calibration: Calibration, log_prior: np.ndarray) -> np.ndarray:
+    """Give the probabilities (C,) of a record of which nothing was observed: the prior (C,), nats, as it is.
+
+    Calibration is of evidence, and there is none. Only where the prior rules a class out does the floor come in.
+    """
+    prior = np.exp(log_prior)
+    if (prior > 0).all():
+        return np.asarray(prior / prior.sum())
+    return np.asarray((1 - calibration.floor) * prior / prior.sum() + calibration.floor * calibration.shares)
 
 
 def slope(p: np.ndarray, truth: np.ndarray) -> float | None:

@@ -5,7 +5,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from bnx.calibrating import Calibration, fit_against_first, identity
+from bnx.calibrating import Calibration, fit_against_first, uncalibrated
 from bnx.engines import LocalEngine
 from bnx.kernels import calibrated_loss, tempered_losses
 from bnx.learning import Learned
@@ -19,6 +19,8 @@ __all__ = ["Choice", "Trial", "choose", "inner_losses", "make_trial", "mean_loss
 Held = tuple[int, ...]
 
 _TEMPERATURES = 3  # 1, 3/4 and 1/2
+_SMOOTHING_LEAD = 2.0  # nats in all by which a smoothing must be ahead of the first one
+_CUTS_LEAD = 5.0  # nats in all by which cut points must be ahead of the first kind
 _ROWS = 4096  # rows judged at a time
 
 
@@ -121,25 +123,35 @@ def choose(
     """Choose for the training set without ``held``, on its own rows only.
 
     losses: of each trial, from ``inner_losses``; empty when there is one trial and one smoothing. Without ``nested``
-    there is nothing to choose or to calibrate at all.
+    there is nothing to choose or to calibrate at all. The first kind of cut points and the first smoothing stay unless
+    another is ahead by some nats: what leads by less in a training fold tends to fall behind in the fold left out.
     """
     if not nested:
         structures = len(trials[0].learned[held].structures)
-        plain = identity(len(trials[0].learned[held].training.class_counts))
-        return Choice(trials[0], (options[0],) * structures, (plain,) * structures, np.zeros((structures, 0)))
+        bare = uncalibrated(trials[0].learned[held].training.class_counts)
+        return Choice(trials[0], (options[0],) * structures, (bare,) * structures, np.zeros((structures, 0)))
     inner = inner_sets(held, folds)
     trial, chosen = trials[0], [options[0]] * len(trials[0].learned[held].structures)
     if losses:
-        totals = [np.sum([table[key] for key in inner], axis=0).min(axis=2) for table in losses]
+        lead = _SMOOTHING_LEAD * (np.arange(len(options)) > 0)
+        totals = [
+            np.sum([table[key] for key in inner], axis=0).min(axis=2) + lead + (_CUTS_LEAD if k else 0.0)
+            for k, table in enumerate(losses)
+        ]
         best = int(np.argmin([total.min() for total in totals]))
         trial, chosen = trials[best], [options[k] for k in totals[best].argmin(axis=1)]
-    return _calibrated(trial, tuple(chosen), inner, sample, calibrate)
+    plain = None if calibrate else uncalibrated(trial.learned[held].training.class_counts)
+    return _calibrated(trial, tuple(chosen), inner, sample, plain)
 
 
 def _calibrated(
-    trial: Trial, chosen: tuple[Smoothing, ...], inner: Sequence[tuple[Held, int]], sample: Sample, calibrate: bool
+    trial: Trial,
+    chosen: tuple[Smoothing, ...],
+    inner: Sequence[tuple[Held, int]],
+    sample: Sample,
+    plain: Calibration | None,
 ) -> Choice:
-    """Fit the calibration of each structure on out-of-fold evidence, and judge it fold by fold."""
+    """Fit the calibration of each structure on out-of-fold evidence, unless it is ``plain``; judge it fold by fold."""
     rows = _inner_rows(trial, inner, sample)
     calibrations: list[Calibration] = []
     losses = np.zeros((len(chosen), len(inner)))
@@ -151,14 +163,13 @@ def _calibrated(
             losses[s] = losses[same]
             continue
         own = np.concatenate([_evidence(trial, held, s, smoothing, sample, fold) for held, fold in inner])
-        calibration = identity(len(rows.shares))
-        if calibrate:
-            calibration = fit_against_first(own, rows.prior, rows.truth, rows.shares, rows.weights)
-        calibrations.append(calibration)
+        fitted = plain or fit_against_first(own, rows.prior, rows.truth, rows.shares, rows.weights)
+        calibrations.append(fitted)
         for k, (held, _) in enumerate(inner):
             part = slice(rows.starts[k], rows.starts[k + 1])
-            prior = trial.learned[held].training.log_prior
-            losses[s, k] = mean_loss(own[part], prior, calibration, rows.truth[part], rows.weights[part])
+            training = trial.learned[held].training
+            used = uncalibrated(training.class_counts) if plain else fitted
+            losses[s, k] = mean_loss(own[part], training.log_prior, used, rows.truth[part], rows.weights[part])
     return Choice(trial, chosen, tuple(calibrations), losses)
 
 

@@ -6,10 +6,11 @@ from functools import cached_property
 
 import numpy as np
 
-from bnx.calibrating import Calibration, apply
+from bnx.calibrating import Calibration, apply, without_evidence
 from bnx.domains import Domain
 from bnx.parameters import Smoothing, log_tables
 from bnx.structure import Structure
+from bnx.summing_out import observed_terms
 
 __all__ = ["Classifier"]
 
@@ -19,7 +20,8 @@ class Classifier:
     """Everything needed to score a record.
 
     ``counts``: per attribute, training rows (C, levels of parents in the order taken..., levels of the child) int32;
-    ``class_counts`` (C,) int64.
+    ``class_counts`` (C,) int64; ``other_prior`` (C,): shares of the classes where new records come from, None if they
+    are those of the training rows.
     """
 
     domains: tuple[Domain, ...]
@@ -29,12 +31,14 @@ class Classifier:
     class_counts: np.ndarray
     smoothing: Smoothing
     calibration: Calibration
+    other_prior: np.ndarray | None = None
 
     @property
     def log_prior(self) -> np.ndarray:
         """Log share of each class (nats), (C,)."""
+        shares = self.class_counts / self.class_counts.sum() if self.other_prior is None else self.other_prior
         with np.errstate(divide="ignore"):
-            return np.asarray(np.log(self.class_counts / self.class_counts.sum()))
+            return np.asarray(np.log(shares))
 
     @property
     def free_parameters(self) -> int:
@@ -44,48 +48,56 @@ class Classifier:
 
     def table(self, child: int) -> np.ndarray:
         """Smoothed probabilities of one attribute, shaped like its counts."""
-        counts = self.counts[child]
-        logs = log_tables(counts.reshape(len(counts), -1), counts.shape[1:], [self.smoothing])
-        return np.asarray(np.exp(logs.T).reshape(counts.shape))
+        return np.asarray(np.exp(np.moveaxis(self.log_table(child), -1, 0)))
 
     @cached_property
-    def _log_tables(self) -> dict[tuple[int, tuple[int, ...]], np.ndarray]:
-        """Log tables made so far, by attribute and the parents left out."""
+    def _log_tables(self) -> dict[int, np.ndarray]:
+        """Log tables made so far, by attribute."""
         return {}
 
-    def _log_table(self, child: int, left_out: tuple[int, ...]) -> np.ndarray:
-        """Smooth the family of an attribute without some of its parents (their axes in the counts), (cells, C)."""
-        key = (child, left_out)
-        if key not in self._log_tables:
-            counts = self.counts[child].sum(axis=left_out, dtype=np.int32)
-            self._log_tables[key] = log_tables(counts.reshape(len(counts), -1), counts.shape[1:], [self.smoothing])
-        return self._log_tables[key]
+    def log_table(self, child: int) -> np.ndarray:
+        """Log of the smoothed probabilities of one attribute, (levels of its parents..., its own levels, C)."""
+        if child not in self._log_tables:
+            counts = self.counts[child]
+            logs = log_tables(counts.reshape(len(counts), -1), counts.shape[1:], [self.smoothing])
+            self._log_tables[child] = logs.reshape(*counts.shape[1:], len(counts))
+        return self._log_tables[child]
 
     def terms(self, codes: np.ndarray, child: int) -> np.ndarray:
-        """Log table terms (nats) of one attribute, (N, C), for codes (n, N) with -1 for what was never seen.
+        """Log table terms (nats) of one attribute, (N, C), for codes (n, N) with -1 for what was not observed.
 
-        A record whose own level is unknown gets no term. A parent whose level is unknown is left out of the family.
+        A record in which the attribute or one of its parents was not observed has none here.
         """
-        parents = np.array(self.structure.parents[child], dtype=np.int64)
+        members = [*self.structure.parents[child], child]
         terms = np.zeros((codes.shape[1], len(self.class_counts)))
-        known = codes[child] >= 0
-        patterns = (codes[parents] >= 0).T @ (1 << np.arange(len(parents))) if len(parents) else np.zeros(len(known))
-        for pattern in np.unique(patterns[known]).astype(np.int64).tolist():
-            rows = np.flatnonzero(known & (patterns == pattern))
-            seen = [k for k in range(len(parents)) if pattern >> k & 1]
-            unseen = tuple(k + 1 for k in range(len(parents)) if not pattern >> k & 1)
-            members = [*parents[seen].tolist(), child]
-            sizes = tuple(len(self.domains[member]) for member in members)
-            table = self._log_table(child, unseen)
-            terms[rows] = table[np.ravel_multi_index(tuple(codes[members][:, rows]), sizes)]
+        known = np.flatnonzero((codes[members] >= 0).all(axis=0))
+        terms[known] = self.log_table(child)[tuple(codes[members][:, known])]
         return terms
 
-    def probabilities(self, codes: np.ndarray) -> np.ndarray:
-        """Class probabilities (N, C) of records with codes (n, N), -1 for what was never seen."""
-        evidence = np.zeros((codes.shape[1], len(self.class_counts)))
+    def evidence(self, codes: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+        """Log probability (nats) of what was observed of records with codes (n, N), -1 for what was not, (N, C).
+
+        What was not observed is summed out. Second, the records (N,) bool for which that is an approximation.
+        """
+        parents, sizes = dict(enumerate(self.structure.parents)), [len(domain) for domain in self.domains]
+        evidence, rough = observed_terms(codes, parents, sizes, self.log_table, len(self.class_counts))
         for child in range(len(self.domains)):
             evidence += self.terms(codes, child)
-        return apply(self.calibration, self.log_prior, evidence)
+        return evidence, rough
+
+    def probabilities(self, codes: np.ndarray) -> np.ndarray:
+        """Class probabilities (N, C) of records with codes (n, N), -1 for what was not observed.
+
+        Calibration is of evidence. A record of which nothing was observed gets the class prior as it is.
+        """
+        return self.classified(codes)[0]
+
+    def classified(self, codes: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+        """Class probabilities as ``probabilities`` gives them, and the records (N,) bool where they are approximate."""
+        evidence, rough = self.evidence(codes)
+        p = apply(self.calibration, self.log_prior, evidence)
+        p[(codes < 0).all(axis=0)] = without_evidence(self.calibration, self.log_prior)
+        return p, rough
 
     def labels(self, p: np.ndarray) -> Sequence[str]:
         """Name the most probable class of each row of p (N, C)."""

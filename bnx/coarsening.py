@@ -21,7 +21,7 @@ def coarsen(domain: Domain, counts: np.ndarray, bins: str, max_levels: int) -> C
     ``counts`` (levels of ``domain``, C) int64 training rows per fine level and class; ``bins`` is ``mdl``,
     ``frequency:K`` or ``width:K`` and rules numeric columns. A text column keeps its ``max_levels`` most frequent
     levels (ties: in order of the domain) and pools the others. Every fine level gets a coarse one, also without
-    training rows; blank stays apart.
+    training rows; blank stays apart, and so do cells not observed.
 
     Raises:
         SettingError: ``bins`` does not name one way to cut.
@@ -43,7 +43,9 @@ def _cut(domain: Domain, counts: np.ndarray, bins: str) -> Coarsening:
     if domain.blank:
         codes = np.append(codes, len(names))
         names = (*names, domain.levels[-1])
-    coarse = Domain(domain.name, names, numeric=True, cuts=cuts, blank=domain.blank)
+    if domain.veiled:
+        codes = np.append(codes, len(names))
+    coarse = Domain(domain.name, names, numeric=True, cuts=cuts, blank=domain.blank, veiled=domain.veiled)
     return Coarsening(coarse, codes.astype(np.uint16))
 
 
@@ -62,14 +64,15 @@ def _positions(cuts: np.ndarray, counts: np.ndarray, bins: str) -> np.ndarray:
 def _pool(domain: Domain, counts: np.ndarray, max_levels: int) -> Coarsening:
     size = _regular(domain)
     if size <= max_levels:
-        return Coarsening(domain, np.arange(len(domain), dtype=np.uint16))
+        return Coarsening(domain, np.arange(domain.codes, dtype=np.uint16))
     frequent = np.argsort(-counts[:size].sum(axis=1), kind="stable")[:max_levels]
     kept = np.sort(frequent)
     names = [domain.levels[k] for k in kept]
-    codes = np.full(len(domain), len(names), dtype=np.uint16)
+    codes = np.full(domain.codes, len(names), dtype=np.uint16)
     codes[kept] = np.arange(len(names))
     pooled = domain.levels[size] if domain.pooled else spare_name("(other)", domain.levels)
     blank = (domain.levels[-1],) if domain.blank else ()
-    if domain.blank:
+    if domain.blank or domain.veiled:
         codes[-1] = len(names) + 1
-    return Coarsening(Domain(domain.name, (*names, pooled, *blank), pooled=True, blank=domain.blank), codes)
+    coarse = Domain(domain.name, (*names, pooled, *blank), pooled=True, blank=domain.blank, veiled=domain.veiled)
+    return Coarsening(coarse, codes)

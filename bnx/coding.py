@@ -21,8 +21,11 @@ from bnx.storing import MEMORY, Store
 from bnx.tables import CodedTable, LeftOut, Lines
 from bnx.text import count_of, quoted
 
-__all__ = ["Coded", "SideColumn", "code_table"]
+__all__ = ["MISSING", "Coded", "SideColumn", "code_table"]
 
+Missing = Literal["level", "drop", "sum-out"]
+
+MISSING: tuple[Missing, ...] = ("level", "drop", "sum-out")
 CLASS_LEVELS = 100
 _FEW_KINDS = 10  # times the rows: repeats are then a matter of course
 
@@ -72,7 +75,7 @@ def code_table(
     categorical: Sequence[str] = (),
     ignore: Sequence[str] = (),
     keep: Sequence[str] = (),
-    missing: Literal["level", "drop"] = "level",
+    missing: Missing = "level",
     max_levels: int = 50,
     extra: Sequence[str] = (),
     jobs: int = 1,
@@ -80,10 +83,11 @@ def code_table(
 ) -> Coded:
     """Code a whole source on ``jobs`` threads, keeping what has a value per row in ``store``.
 
-    Rows with a blank class are dropped. A blank cell of an attribute becomes the level ``(blank)``, or with
-    ``missing="drop"`` its row is dropped. A column is numeric if ``numeric`` names it, or if every value is a plain
-    number and more than 20 are distinct; it is stored as at most 256 fine bins. Columns that tell nothing are left out
-    unless ``keep`` names them. ``max_levels`` only serves to announce the columns whose rare levels are pooled later.
+    Rows with a blank class are dropped. A blank cell of an attribute becomes the level ``(blank)``; with
+    ``missing="drop"`` its row is dropped, with ``"sum-out"`` the cell is one that was not observed. A column is numeric
+    if ``numeric`` names it, or if every value is a plain number and more than 20 are distinct; it is stored as at most
+    256 fine bins. Columns that tell nothing are left out unless ``keep`` names them. ``max_levels`` only serves to
+    announce the columns whose rare levels are pooled later.
 
     Raises:
         DataError: a column is unknown, the class has fewer than 2 or more than 100 levels, no attribute or no row is
@@ -98,7 +102,7 @@ def code_table(
     wishes |= dict.fromkeys((name for name in numeric if name in wishes), True)
     raw = _gathered(source, target, wishes, extra, jobs, store)
     raw, warnings = _with_class(raw)
-    used, left_out = _screened(raw, raw.attributes, keep, drops=missing == "drop")
+    used, left_out = _screened(raw, raw.attributes, keep, drops=missing != "level")
     if missing == "drop":
         raw, dropped = _without_blanks(raw, used)
         warnings += dropped
@@ -109,7 +113,7 @@ def code_table(
     duplicates = count_duplicates([*(raw.attributes[name] for name in used), raw.target], raw.lines, jobs)
     warnings += _table_warnings(raw, used, max_levels)
     side = {name: _side(column, raw) for name, column in raw.side.items()}
-    table, pooled = _coded(raw, used)
+    table, pooled = _coded(raw, used, veiled=missing == "sum-out")
     warnings += _duplicate_warning(duplicates, raw.lines.count, table.schema)
     return Coded(table, tuple(left_out), tuple(warnings + pooled), side, raw.lines.read, duplicates)
 
@@ -266,12 +270,16 @@ def _duplicate_warning(duplicates: int, rows: int, schema: Schema) -> list[str]:
     return [f"{sentence}; if they are copies of one record, every figure is too sure of itself"]
 
 
-def _coded(raw: _Raw, used: Mapping[str, Tally]) -> tuple[CodedTable, list[str]]:
-    """Code the attributes used and the class, using up the raw columns, and warn of levels pooled at once."""
+def _coded(raw: _Raw, used: Mapping[str, Tally], veiled: bool) -> tuple[CodedTable, list[str]]:
+    """Code the attributes used and the class, using up the raw columns, and warn of levels pooled at once.
+
+    veiled: whether blank cells are cells not observed, and no level.
+    """
     target = raw.store.empty((raw.lines.count,), np.uint8)
     classes = level(raw.target, tally(raw.target, raw.lines, raw.store))
     _write(classes, raw.target.cells, raw.lines, target)
     levelled = [level(raw.attributes[name], found) for name, found in used.items()]
+    levelled = [one.veiled() for one in levelled] if veiled else levelled
     wide = any(one.lookup.dtype.itemsize > 1 for one in levelled)
     codes = raw.store.empty((len(used), raw.lines.count), np.uint16 if wide else np.uint8)
 

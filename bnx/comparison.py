@@ -21,13 +21,15 @@ from bnx.families import PairRequests
 from bnx.folds import sub_blocks
 from bnx.gains import edge_gains
 from bnx.gating import Bounds
+from bnx.heldout import MOST_ROWS
 from bnx.independence import Statistics
 from bnx.judging import Against, Recommendation, against, inner_picks, recommend
-from bnx.learners import Learner, learner
+from bnx.learners import Heldout, Learner, learner
 from bnx.learning import Learned, make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
 from bnx.matrix_memory import matrix_notes
+from bnx.observing import rare_classes, unobserved_notes
 from bnx.pair_judging import JudgedPairs, judge_pairs
 from bnx.rating import EXACT_ROWS, SLOPE_ROWS, StructureScore, score
 from bnx.reading import Source
@@ -37,6 +39,7 @@ from bnx.resampling import stability
 from bnx.sampling import rows_for_gains
 from bnx.storing import MEMORY, Store
 from bnx.structure import Structure
+from bnx.summing_out import summing_notes
 from bnx.tables import LeftOut, Lines
 from bnx.text import count_of
 from bnx.trainings import Training
@@ -103,12 +106,12 @@ def compare(
     """
     progress("reading", 0, 0)
     coded = recipe.code(source, jobs, store)
+    recipe, notes_on_structures = recipe.for_table(len(coded.table.target), len(coded.table.schema.attributes))
     if holdout:
         holdout.check([*coded.table.schema.names, recipe.target])
     bounds = make_bounds(recipe, coded.table.schema.names)
     learners = [learner(name) for name in recipe.structures]
-    for note in (early := matrix_notes(coded.table.schema, learners, bounds, recipe)):
-        warn(note)
+    early = _forewarned(matrix_notes(coded.table.schema, learners, bounds, recipe), warn)
     evaluations, folds = _evaluations(coded, recipe, learners, bounds, jobs, progress, store)
     gains = [fold for one in evaluations for fold in edge_gains(one)]
     first = evaluations[0]
@@ -124,7 +127,8 @@ def compare(
     held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
     recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
     progress("edge ledger", 0, 0)
-    edges = edge_ledger(_told(first), _strengths(learned, pairs), gains, stable, learners, bounds, recipe, folds)
+    told, by_blanks = _told(first), judged.by_blanks(pairs.left, pairs.right)
+    edges = edge_ledger(told, _strengths(learned, pairs), gains, stable, learners, bounds, recipe, folds, by_blanks)
     notes = _run_warnings(evaluations, coded, recipe, learners, results)
     progress("reading", 0, 0)
     return Comparison(
@@ -143,10 +147,17 @@ def compare(
         recommendation=recommendation,
         held_out=held_out,
         left_out=coded.left_out,
-        warnings=(*early, *notes, *judged.notes, *not_scored, *coded.warnings),
+        warnings=(*early, *notes, *notes_on_structures, *judged.notes, *not_scored, *coded.warnings),
         evaluations=tuple(evaluations),
         lines=coded.table.lines,
     )
+
+
+def _forewarned(notes: list[str], warn: Callable[[str], None]) -> list[str]:
+    """Tell notes at once, and give them back."""
+    for note in notes:
+        warn(note)
+    return notes
 
 
 def _tested(
@@ -239,13 +250,17 @@ def _held_out(
     """Score the final classifiers on a table that took no part in anything; say which rows could not be scored."""
     target = classifiers[0].target
     parts: list[list[np.ndarray]] = [[] for _ in classifiers]
-    truth, dropped = [], 0
+    truth, dropped, unknown, rough = [], 0, np.zeros(len(classifiers[0].domains), np.int64), 0
     for codes, _ in encode(source, [*classifiers[0].domains, target]):
         known = codes[-1] >= 0
         truth.append(codes[-1][known])
         dropped += int((~known).sum())
-        for part, classifier in zip(parts, classifiers, strict=True):
-            part.append(classifier.probabilities(codes[:-1][:, known]))
+        own = codes[:-1][:, known]
+        unknown += (own < 0).sum(axis=1)
+        found = [classifier.classified(own) for classifier in classifiers]
+        rough += int(np.any([approximate for _, approximate in found], axis=0).sum())
+        for part, (p, _) in zip(parts, found, strict=True):
+            part.append(p)
     rows = np.concatenate(truth) if truth else np.zeros(0, np.int32)
     if not len(rows):
         raise DataError(
@@ -255,6 +270,8 @@ def _held_out(
     if dropped:
         why = f"{recipe.target} is blank there or was never seen"
         notes.append(f"{count_of(dropped, 'row')} of {source.name} (--holdout) left out: {why}")
+    names = [domain.name for domain in classifiers[0].domains]
+    notes += [f"{source.name} (--holdout): {note}" for note in summing_notes(names, unknown, rough)]
     return tuple(scores(np.concatenate(part), rows, len(target)) for part in parts), notes
 
 
@@ -287,6 +304,12 @@ def _run_warnings(
             f"choices inside training folds are made on {len(sample.target):,} of {engine.rows:,} rows, gains of edges "
             f"are judged on {gained:,}, a seeded sample by fold and class; scores and tests use all rows"
         )
+    notes += unobserved_notes(evaluations[0], coded.table.schema.names)
+    if any(isinstance(member, Heldout) for member in learners) and engine.rows > MOST_ROWS:
+        notes.append(
+            f"parents of heldout are chosen on at most {MOST_ROWS:,} rows of every training set, spread evenly by fold "
+            "and class"
+        )
     if recipe.group:
         notes.append(
             f"rows of one {recipe.group} may be alike, but the tests assume independent records: every p is descriptive"
@@ -297,11 +320,7 @@ def _run_warnings(
             f"folds hold {min(sizes):,} to {max(sizes):,} rows; differences to {recipe.baseline} are means over folds "
             "and may differ from those of the log losses, which are means over rows"
         )
-    for level, rows in zip(coded.table.schema.target.levels, engine.class_counts.sum(axis=0).tolist(), strict=True):
-        if rows < len(evaluations[0].fold_rows):
-            notes.append(
-                f"class {level} has {count_of(rows, 'row')} for {len(evaluations[0].fold_rows)} folds: some hold none"
-            )
+    notes += rare_classes(evaluations, coded.table.schema.target.levels)
     if any(member.tested for member in learners) and recipe.alpha > 0.1:
         notes.append(f"edges are tested at {recipe.alpha:g}: that share of the drawn edges may be false")
     return notes + _rating_notes(results)

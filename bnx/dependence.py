@@ -65,6 +65,8 @@ def relevance_of(engine: LocalEngine, training: Training) -> np.ndarray:
     """Bits that each attribute shares with the class, (n,)."""
     view = training.view
     tables = [view.merge(i, margin[training.mask].sum(axis=0)) for i, margin in enumerate(engine.margins)]
+    for i in view.veiled:
+        tables[i] = tables[i][:, :-1]
     line = np.concatenate([table.astype(np.int32).ravel() for table in tables])[None]
     offsets = np.cumsum([0, *(table.size for table in tables[:-1])])
     heights = np.full(len(tables), engine.classes, np.int64)

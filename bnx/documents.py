@@ -137,6 +137,7 @@ def edge_entry(names: Sequence[str], edge: EdgeEvidence) -> dict[str, Any]:
         "stability": edge.stability,
         "gate_p": edge.gate_p,
         "gate_given": [names[parent] for parent in edge.gate_given],
+        "carried_by_blanks": edge.carried_by_blanks,
         "verdict": edge.verdict,
     }
 
@@ -256,6 +257,7 @@ def picture_of(document: dict[str, Any]) -> Picture:
             edge["verdict"],
             edge["gain"],
             edge["gain_se"],
+            edge.get("carried_by_blanks", False),
         )
         for edge in document["edges"]
     )

@@ -17,7 +17,8 @@ class Domain:
     """The levels of one column; code k stands for ``levels[k]``.
 
     A numeric column has ``len(cuts) + 1`` interval levels: level k holds values above ``cuts[k-1]``, up to ``cuts[k]``.
-    Regular levels come first, then the pooled one if ``pooled``, then the one for blank cells if ``blank``.
+    Regular levels come first, then the pooled one if ``pooled``, then the one for blank cells if ``blank``. If
+    ``veiled``, blank cells are no level but cells not observed: their code comes after those of all levels.
     """
 
     name: str
@@ -26,10 +27,16 @@ class Domain:
     cuts: tuple[float, ...] = ()
     pooled: bool = False
     blank: bool = False
+    veiled: bool = False
 
     def __len__(self) -> int:
         """Count the levels."""
         return len(self.levels)
+
+    @property
+    def codes(self) -> int:
+        """Count the codes that are in use: those of the levels, and that of cells not observed."""
+        return len(self.levels) + self.veiled
 
 
 @dataclass(frozen=True)
@@ -46,8 +53,8 @@ class Schema:
 
     @property
     def sizes(self) -> np.ndarray:
-        """Levels per attribute, int64 (n,)."""
-        return np.array([len(domain) for domain in self.attributes], dtype=np.int64)
+        """Codes per attribute, int64 (n,)."""
+        return np.array([domain.codes for domain in self.attributes], dtype=np.int64)
 
     def index(self, name: str) -> int:
         """Find an attribute by name.
@@ -64,7 +71,7 @@ class Schema:
 class Coarsening:
     """How the codes of a fine domain (all levels, or up to 256 fine bins) fall into those of a coarser one.
 
-    ``codes`` (levels of the fine domain,) uint16: the coarse code of every fine code.
+    ``codes`` (codes of the fine domain,) uint16: the coarse code of every fine code.
     """
 
     domain: Domain

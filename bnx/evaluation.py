@@ -5,7 +5,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from bnx.calibrating import Calibration, probabilities
+from bnx.calibrating import Calibration, probabilities, without_evidence
 from bnx.choosing import Choice, choose, inner_losses, make_trial
 from bnx.domains import Schema
 from bnx.engines import LocalEngine
@@ -34,7 +34,11 @@ class Predictor:
 
     def probabilities(self, first: int, last: int) -> np.ndarray:
         """Predict rows ``first:last`` of the engine, (last - first, C)."""
-        return probabilities(self.calibration, self.log_prior, self.terms.evidence(self.codes, first, last))
+        p = probabilities(self.calibration, self.log_prior, self.terms.evidence(self.codes, first, last))
+        p[self.terms.rows_of_nothing(self.codes, first, last) - first] = without_evidence(
+            self.calibration, self.log_prior
+        )
+        return p
 
 
 @dataclass(frozen=True)

@@ -10,7 +10,8 @@ import numpy as np
 from bnx.engines import LocalEngine
 from bnx.kernels import count_cells
 from bnx.kernels.contingency import COLUMNS, one_table
-from bnx.kernels.reducing import blocks_of_masks, merge_cells, reduce_family, sum_all, sum_set
+from bnx.kernels.merging import merge_cells
+from bnx.kernels.reducing import blocks_of_masks, reduce_family, sum_all, sum_set
 from bnx.trainings import Training
 from bnx.views import refine
 

@@ -5,12 +5,16 @@ from dataclasses import replace
 
 import numpy as np
 
-from bnx.evaluation import Evaluation
+from bnx.calibrating import probabilities
+from bnx.evaluation import Evaluation, Predictor
 from bnx.kernels import changed_losses, drop_parent
+from bnx.masked import rows_with_unknown, view_codes
 from bnx.sampling import Sample, sample_for_gains
-from bnx.scoring import Counted, terms_of
+from bnx.scoring import Counted, Terms, terms_of
 
 __all__ = ["Gains", "edge_gains"]
+
+_PAIRS = 100_000  # of an edge and a row, looked at together
 
 Edge = tuple[int, int]
 Gains = Mapping[tuple[int, Edge], float]  # (structure, (parent, child)) -> bits per row
@@ -63,8 +67,49 @@ def _gains(evaluation: Evaluation, sample: Sample, fold: int, s: int) -> list[tu
         weights,
         changes,
     )
+    if own.unknown is not None:
+        changes -= _of_unknown_parents(predictor, sample, rows, children, places, fewer)
     bits = changes / max(weights.sum(), 1e-300) / np.log(2)
     return list(zip(structure.edges, bits.tolist(), strict=True))
+
+
+def _of_unknown_parents(
+    predictor: Predictor, sample: Sample, rows: slice, children: np.ndarray, places: np.ndarray, fewer: Terms
+) -> np.ndarray:
+    """Find what the edges' changes (E,) owe to rows in which the parent that goes is not known: there, none is counted.
+
+    children, places (E,): of the edges; fewer: the families without that parent.
+    """
+    terms, less = predictor.terms, fewer.families
+    own = terms.families
+    parents = own.members[terms.which[children], places]
+    unknown = np.zeros((len(sample.codes), 1), np.bool_) if own.unknown is None else own.unknown
+    found = rows_with_unknown(sample.codes, unknown, np.unique(parents), rows.start, rows.stop)
+    seen = view_codes(sample.codes, found, own.recode, unknown)
+    edge, row = np.nonzero(seen[parents] < 0)
+    codes = seen[less.members[edge], row[:, None]]
+    counts = np.arange(codes.shape[1]) < less.depths[edge, None]
+    complete = ((codes >= 0) | ~counts).all(axis=1)
+    edge, row = edge[complete], found[row[complete]]
+    codes, sizes = np.where(counts, codes, 0)[complete], less.sizes[edge]
+    cell = np.zeros(len(edge), np.int64)
+    for m in range(codes.shape[1]):
+        cell = cell * sizes[:, m] + codes[:, m]
+    change = np.zeros(len(children))
+    for first in range(0, len(edge), _PAIRS):
+        part = slice(first, first + _PAIRS)
+        chosen, back = np.unique(row[part], return_inverse=True)
+        with_edge = terms.evidence(np.take(sample.codes, chosen, axis=1), 0, len(chosen))[back.ravel()]
+        without = with_edge + fewer.table[fewer.starts[edge[part]] + cell[part]]
+        truth = sample.target[row[part]]
+        own_p = [
+            probabilities(predictor.calibration, predictor.log_prior, one)[np.arange(len(truth)), truth]
+            for one in (with_edge, without)
+        ]
+        with np.errstate(divide="ignore", invalid="ignore"):
+            grown = np.log(own_p[0]) - np.log(own_p[1])
+        change += np.bincount(edge[part], sample.weights[row[part]] * grown, len(change))
+    return change
 
 
 def _edges(counted: Counted, s: int) -> tuple[np.ndarray, np.ndarray]:

@@ -12,8 +12,9 @@ from bnx.engines import LocalEngine
 from bnx.errors import DataError
 from bnx.families import family_statistics
 from bnx.gating import Answer, Bounds, Gate, Question, learn_together
+from bnx.heldout import MOST_ROWS, MOST_ROWS_FOR_PAIRS, RowJudge, inner_rows
 from bnx.independence import Statistics
-from bnx.learners import Learner
+from bnx.learners import Heldout, Learner
 from bnx.recipe import Recipe
 from bnx.refining import Rigour, gated, in_doubt, visit_families
 from bnx.structure import Structure
@@ -97,24 +98,51 @@ def _learn(
     """Learn in training sets that are measured together."""
     rigour = rigour_of(learners, len(bounds.names), recipe)
     seen = _look(engine, trainings, learners, recipe, rigour)
-    learnings = [member.learn(one.dependence, one.gate, bounds) for one in seen for member in learners]
+    from_pairs = [member for member in learners if not isinstance(member, Heldout)]
+    learnings = [member.learn(one.dependence, one.gate, bounds) for one in seen for member in from_pairs]
 
     def ask(questions: Sequence[tuple[int, Question]]) -> list[Answer]:
-        further = [(number // len(learners), question) for number, question in questions if question.given]
+        further = [(number // len(from_pairs), question) for number, question in questions if question.given]
         tested = iter(ask_tests(engine, trainings, further, rigour))
         answers: list[Answer] = []
-        exact = _exact(engine, trainings, seen, [(n // len(learners), one) for n, one in questions], rigour)
+        exact = _exact(engine, trainings, seen, [(n // len(from_pairs), one) for n, one in questions], rigour)
         for number, asked in groupby(questions, key=itemgetter(0)):
             own = [question for _, question in asked]
-            one = number // len(learners)
+            one = number // len(from_pairs)
             known = iter(seen[one].answers([question for question in own if not question.given], exact[one]))
             answers += [next(tested if question.given else known) for question in own]
         return answers
 
     engine.progress("choosing edges", 0, 0)
-    structures = learn_together(learnings, ask)
-    step = len(learners)
-    return [Learned(training, tuple(structures[k * step : (k + 1) * step])) for k, training in enumerate(trainings)]
+    structures = iter(learn_together(learnings, ask))
+    climbed = iter(_climb(engine, trainings, learners, seen, bounds))
+    return [
+        Learned(training, tuple(next(climbed if isinstance(member, Heldout) else structures) for member in learners))
+        for training in trainings
+    ]
+
+
+def _climb(
+    engine: LocalEngine,
+    trainings: Sequence[Training],
+    learners: Sequence[Learner],
+    seen: Sequence["_Seen"],
+    bounds: Bounds,
+) -> list[Structure]:
+    """Learn the structures whose parents are judged on rows, training set by training set."""
+    work = [(k, member) for k in range(len(trainings)) for member in learners if isinstance(member, Heldout)]
+
+    start = [bounds.parents(child) for child in range(len(bounds.names))]
+
+    def climb(item: tuple[int, Heldout]) -> Structure:
+        number, member = item
+        training = trainings[number]
+        judge = rough = RowJudge(inner_rows(engine, training, MOST_ROWS), start)
+        if training.class_counts.sum() > MOST_ROWS_FOR_PAIRS:
+            rough = RowJudge(inner_rows(engine, training, MOST_ROWS_FOR_PAIRS), start)
+        return member.climb(judge, rough, seen[number].dependence.strength, bounds)
+
+    return engine.map(climb, work, "judging parents") if work else []
 
 
 @dataclass(frozen=True)

@@ -1,7 +1,7 @@
 """The edge ledger: the evidence on every edge that a structure draws."""
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -25,7 +25,8 @@ class EdgeEvidence:
     ``bits``: shared given the class; ``gain``: held-out bits per row, mean over folds, with its standard error;
     ``chosen_in``: how many folds' own structures join the two, in either direction; ``stability``: share of random
     halves that do, None if none were drawn; ``gate_p``: p of the test that let it in given the class and
-    ``gate_given``, None if the structure does not test or the edge was required. A fold whose loss is infinite with and
+    ``gate_given``, None if the structure does not test or the edge was required; ``carried_by_blanks``: the pair is
+    dependent, but less than half its bits is left where neither cell is blank. A fold whose loss is infinite with and
     without the edge counts as no gain.
     """
 
@@ -38,6 +39,7 @@ class EdgeEvidence:
     stability: float | None
     gate_p: float | None
     gate_given: tuple[int, ...]
+    carried_by_blanks: bool
     verdict: str
 
 
@@ -50,10 +52,12 @@ def edge_ledger(
     bounds: Bounds,
     recipe: Recipe,
     folds: int,
+    by_blanks: Collection[frozenset[int]],
 ) -> list[tuple[EdgeEvidence, ...]]:
     """Gather the evidence on every edge of every final structure.
 
-    strength: (parent, child) -> bits shared given the class; gains: one mapping per fold of every repeat.
+    strength: (parent, child) -> bits shared given the class; gains: one mapping per fold of every repeat; by_blanks:
+    the pairs whose dependence is carried by blank cells.
     """
     learned = evaluation.learned(())
     ledger = []
@@ -89,6 +93,7 @@ def edge_ledger(
                     stability=stable.get((s, ends), 0.0) if recipe.resamples else None,
                     gate_p=gate_p.get(question),
                     gate_given=question.given if question in gate_p else (),
+                    carried_by_blanks=ends in by_blanks,
                     verdict=edge_verdict(by_fold, chosen, folds),
                 )
             )

@@ -1,7 +1,7 @@
 """From a raw column to a domain and codes: all levels of a text column, fine bins of a numeric one."""
 
 from collections.abc import Collection
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -32,8 +32,14 @@ class Levelled:
             np.take(self.lookup.astype(codes.dtype, copy=False), raw, out=codes, mode="clip")
             return
         codes[:] = np.searchsorted(self.cuts, raw, side="left")
-        if self.domain.blank:
-            codes[np.isnan(raw)] = len(self.domain) - 1
+        if self.domain.blank or self.domain.veiled:
+            codes[np.isnan(raw)] = self.domain.codes - 1
+
+    def veiled(self) -> "Levelled":
+        """Take blank cells for cells not observed rather than for a level; their code stays."""
+        if not self.domain.blank:
+            return self
+        return replace(self, domain=replace(self.domain, levels=self.domain.levels[:-1], blank=False, veiled=True))
 
 
 def level(column: Column, found: Tally) -> Levelled:

@@ -35,6 +35,11 @@ class JudgedPairs:
     rejected: int
     notes: tuple[str, ...]
 
+    def by_blanks(self, left: np.ndarray, right: np.ndarray) -> set[frozenset[int]]:
+        """List rejected pairs of which less than half the bits is left where no cell is blank; left, right (P,)."""
+        chosen = self.without_blanks < self.statistics.bits_corrected / 2
+        return set(map(frozenset, zip(left[chosen].tolist(), right[chosen].tolist(), strict=True)))
+
     def results(self, names: Sequence[tuple[str, str]], order: np.ndarray) -> list[TestResult]:
         """Write the pairs in this order; names: of the two attributes of every pair written."""
         return results(

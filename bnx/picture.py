@@ -37,7 +37,7 @@ class Arrow:
     """One dependence between attributes, given by their places among the chips.
 
     ``bits``: shared by the two given the class. ``gain``, ``gain_se``: held-out bits per row this one edge is worth,
-    with its standard error; None where no folds were scored.
+    with its standard error; None where no folds were scored. ``by_blanks``: most of the bits come from blank cells.
 
     Raises:
         StructureError: the bits are not a finite number, or the verdict is unknown.
@@ -49,6 +49,7 @@ class Arrow:
     verdict: Verdict = "not judged"
     gain: float | None = None
     gain_se: float | None = None
+    by_blanks: bool = False
 
     def __post_init__(self) -> None:
         """Refuse what cannot be drawn."""

@@ -68,6 +68,7 @@ class EdgeRow:
     stability: str
     gate_p: str
     given: tuple[str, ...]
+    by_blanks: bool
     verdict: str
 
 
@@ -172,6 +173,7 @@ def edge_row(edge: Mapping[str, Any], tries: int) -> EdgeRow:
         stability=percent(edge["stability"], 0),
         gate_p=_p(edge["gate_p"]),
         given=tuple(edge["gate_given"]),
+        by_blanks=edge["carried_by_blanks"],
         verdict=edge["verdict"],
     )
 

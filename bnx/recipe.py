@@ -1,10 +1,10 @@
 """Every setting of a run, with its default and its check."""
 
 from collections.abc import Sequence
-from dataclasses import asdict, dataclass
+from dataclasses import asdict, dataclass, replace
 from typing import Any
 
-from bnx.coding import Coded, code_table
+from bnx.coding import MISSING, Coded, code_table
 from bnx.discretising import parse_bins
 from bnx.errors import SettingError
 from bnx.independence import TESTS
@@ -17,8 +17,9 @@ from bnx.text import quoted
 
 __all__ = ["DEFAULT_STRUCTURES", "MOST_FOLDS", "Recipe"]
 
-DEFAULT_STRUCTURES = ("naive", "tan", "tan-tested", "kdb1-tested", "kdb2", "kdb2-tested", "kdb3-tested")
-
+DEFAULT_STRUCTURES = ("naive", "tan", "tan-tested", "kdb1-tested", "kdb2", "kdb2-tested", "kdb3-tested", "heldout")
+_ON_REQUEST = "heldout"  # ... on tables of more rows or attributes than these
+MOST_ROWS, MOST_ATTRIBUTES = 50_000, 60
 
 MOST_FOLDS = 50  # every pair of folds is a training set of its own, so the work grows with their square
 
@@ -27,12 +28,14 @@ MOST_FOLDS = 50  # every pair of folds is a training set of its own, so the work
 class Recipe:
     """The settings of ``bnx learn``; an option of the command line, a field here and a key in the JSON share a name.
 
+    ``structures``: none stands for the default ones, which the size of the table decides (``for_table``).
+
     Raises:
         SettingError: a setting cannot be used.
     """
 
     target: str
-    structures: tuple[str, ...] = DEFAULT_STRUCTURES
+    structures: tuple[str, ...] = ()
     baseline: str = "naive"
     test: str = "auto"
     adjust: str = "bh"
@@ -61,7 +64,7 @@ class Recipe:
         """Check every setting that can be checked without the table."""
         _one_of("test", self.test, TESTS)
         _one_of("adjust", self.adjust, ADJUSTMENTS)
-        _one_of("missing", self.missing, ("level", "drop"))
+        _one_of("missing", self.missing, MISSING)
         _between("alpha", self.alpha, 0, 1)
         _between("negligible", self.negligible, 0, 10)
         _whole("folds", self.folds, 3, MOST_FOLDS)
@@ -75,10 +78,11 @@ class Recipe:
             raise SettingError(f"--structures names one structure twice ({quoted(self.structures)}); name each once")
         for name in self.structures:
             learner(name)
-        if self.baseline not in self.structures:
+        structures = self.structures or DEFAULT_STRUCTURES
+        if self.baseline not in structures:
             raise SettingError(
                 f"--baseline {self.baseline} is not among the structures; add it to --structures, or choose one of "
-                f"{quoted(self.structures)} with --baseline"
+                f"{quoted(structures)} with --baseline"
             )
         if self.group and self.fold_column:
             raise SettingError("--group and --fold-column both decide the folds; give one of them")
@@ -90,6 +94,23 @@ class Recipe:
             for pair in pairs:
                 if not all(pair.partition(":")):
                     raise SettingError(f"--{option}: {pair!r} is not a pair of attributes; write PARENT:CHILD")
+
+    def for_table(self, rows: int, attributes: int) -> tuple["Recipe", list[str]]:
+        """Settle which structures are compared unless they are named; say what a large table leaves out.
+
+        Raises:
+            SettingError: the baseline is left out.
+        """
+        if self.structures:
+            return self, []
+        if rows <= MOST_ROWS and attributes <= MOST_ATTRIBUTES:
+            return replace(self, structures=DEFAULT_STRUCTURES), []
+        fewer = tuple(name for name in DEFAULT_STRUCTURES if name != _ON_REQUEST)
+        note = (
+            f"{_ON_REQUEST} is not compared on tables of more than {MOST_ROWS:,} rows or {MOST_ATTRIBUTES} attributes "
+            f"unless it is named: --structures {','.join(DEFAULT_STRUCTURES)}"
+        )
+        return replace(self, structures=fewer), [note]
 
     def code(self, source: Source, jobs: int = 1, store: Store = MEMORY) -> Coded:
         """Code a table as these settings say; ``keep`` = all keeps every column that could be left out.
@@ -110,7 +131,7 @@ class Recipe:
             categorical=self.categorical,
             ignore=self.ignore,
             keep=keep,
-            missing="drop" if self.missing == "drop" else "level",
+            missing=next(one for one in MISSING if one == self.missing),
             max_levels=self.max_levels,
             extra=extra,
             jobs=jobs,

@@ -103,6 +103,11 @@ class Report:
     adjust: str
     negligible: str
 
+    @property
+    def by_blanks(self) -> bool:
+        """Tell whether an edge listed is carried by blank cells."""
+        return any(edge.by_blanks for one in self.structures for edge in one.edges)
+
 
 def report_html(comparison: Mapping[str, Any], pictures: Mapping[str, str]) -> str:
     """Write the page.

@@ -44,5 +44,5 @@ def stability(
 
 def _plain(view: View) -> View:
     """See already recoded rows as they are."""
-    recode = np.tile(np.arange(view.sizes.max(), dtype=np.int32), (len(view.domains), 1))
-    return View(view.domains, recode, np.ones(len(view.domains), bool), view.sizes)
+    recode = np.tile(np.arange(view.codes.max(), dtype=np.int32), (len(view.domains), 1))
+    return View(view.domains, recode, np.ones(len(view.domains), bool), view.sizes, view.veiled)

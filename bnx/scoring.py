@@ -1,14 +1,17 @@
 """Evidence of rows for each class: the sum of the log table terms of all families."""
 
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from functools import cached_property
 from itertools import chain
 
 import numpy as np
 
 from bnx.kernels import add_terms, ratio_tables
-from bnx.parameters import Smoothing
+from bnx.masked import levels_unknown, masked_cells, rows_with_unknown, view_codes
+from bnx.parameters import Smoothing, amounts_of, log_tables
 from bnx.structure import Structure
+from bnx.summing_out import approximate, observed_terms
 from bnx.views import View
 
 __all__ = ["Counted", "Families", "Terms", "families_of", "padded", "terms_of"]
@@ -21,7 +24,8 @@ class Families:
     ``members``, ``sizes`` (F, M): parents in the order taken, then the child, and their levels, of which the first
     ``depths`` (F,) count; ``plain`` (F,) bool: attributes used as stored; ``starts`` (F + 1,): first cell of each
     family when their tables lie side by side; ``recode``: of the view; ``of`` (structures, n): the family of each
-    attribute in each structure; ``holder`` (structures,): the first structure with the same parents.
+    attribute in each structure; ``holder`` (structures,): the first structure with the same parents; ``veiled``,
+    ``unknown``: of the view.
     """
 
     members: np.ndarray
@@ -32,21 +36,34 @@ class Families:
     recode: np.ndarray
     of: np.ndarray
     holder: tuple[int, ...]
+    veiled: tuple[int, ...] = ()
+    unknown: np.ndarray | None = None
+
+    def levels_of(self, f: int) -> tuple[int, ...]:
+        """Levels of the members of one family."""
+        depth = self.depths[f]
+        own = zip(self.sizes[f, :depth].tolist(), self.members[f, :depth].tolist(), strict=True)
+        return tuple(size - (member in self.veiled) for size, member in own)
 
 
 @dataclass(frozen=True)
 class Counted:
-    """Families with their counts in the training set, ``counts`` (C, cells) int32."""
+    """Families with their counts in the training set, ``counts`` (C, cells) int32, cells not observed included."""
 
     families: Families
     counts: np.ndarray
 
     def table(self, structure: int, child: int) -> np.ndarray:
         """Counts of one family, (C, levels of its parents in the order taken..., levels of the child)."""
-        f = self.families.of[structure, child]
+        return self.of_family(int(self.families.of[structure, child]))
+
+    def of_family(self, f: int) -> np.ndarray:
+        """Counts of a family by its number, where all members are observed."""
         first, last = self.families.starts[f], self.families.starts[f + 1]
         sizes = self.families.sizes[f, : self.families.depths[f]].tolist()
-        return np.ascontiguousarray(self.counts[:, first:last]).reshape(-1, *sizes)
+        whole = self.counts[:, first:last].reshape(-1, *sizes)
+        levels = tuple(slice(size) for size in self.families.levels_of(f))
+        return np.ascontiguousarray(whole[(slice(None), *levels)])
 
 
 @dataclass(frozen=True)
@@ -54,18 +71,25 @@ class Terms:
     """What the tables of some families say for each class against the first, nats.
 
     ``which`` (K,): the families; ``starts`` (K,): first cell of each in ``table`` (1 + cells, T), whose first row says
-    nothing and whose first columns are in use, C - 1 for each smoothing.
+    nothing and whose first columns are in use, C - 1 for each smoothing. Cells in which a member is not observed, or of
+    a level that the training set does not hold, say nothing; rows with such a member are summed out.
     """
 
-    families: Families
+    counted: Counted
+    smoothings: tuple[Smoothing, ...]
     which: np.ndarray
     starts: np.ndarray
     table: np.ndarray
 
+    @property
+    def families(self) -> Families:
+        """The families that all of them belong to."""
+        return self.counted.families
+
     def of(self, structure: int) -> "Terms":
         """Narrow the terms of all families down to one structure's."""
         which = self.families.of[structure]
-        return Terms(self.families, which, self.starts[which], self.table)
+        return replace(self, which=which, starts=self.starts[which])
 
     def evidence(self, codes: np.ndarray, first: int, last: int) -> np.ndarray:
         """Sum the terms of rows ``first:last`` of codes (n, N) family by family: (last - first, T)."""
@@ -73,7 +97,80 @@ class Terms:
         one = self.families
         fixed = (one.recode, one.plain, one.members, one.sizes, one.depths)
         add_terms(codes, *fixed, self.which, self.starts, self.table, first, last, out)
+        if one.unknown is not None:
+            self._add_unobserved(codes, first, last, out)
         return out
+
+    def rows_of_nothing(self, codes: np.ndarray, first: int, last: int) -> np.ndarray:
+        """Find the rows of ``first:last`` of which nothing is known."""
+        unknown = self.families.unknown
+        rows = np.arange(first, last)
+        if unknown is None or not unknown.any(axis=1).all():
+            return rows[:0]
+        for own, stored in zip(unknown, codes, strict=True):
+            rows = rows[own[stored[rows]]]
+        return rows
+
+    @cached_property
+    def _may_matter(self) -> np.ndarray:
+        """Attributes that can be unknown and are parents: those without children sum to 1."""
+        one = self.families
+        parents = one.members[self.which][np.arange(one.members.shape[1]) < one.depths[self.which, None] - 1]
+        return np.unique(parents[self._unknown[parents].any(axis=1)])
+
+    @property
+    def _unknown(self) -> np.ndarray:
+        """The stored codes that are unknown, (n, R) bool."""
+        return np.zeros((len(self.which), 1), np.bool_) if self.families.unknown is None else self.families.unknown
+
+    @property
+    def _levels(self) -> list[int]:
+        """Levels of every attribute."""
+        one = self.families
+        codes = np.take_along_axis(one.sizes[self.which], one.depths[self.which, None] - 1, axis=1).ravel()
+        codes[list(one.veiled)] -= 1
+        return [int(size) for size in codes]
+
+    def rows_approximated(self, codes: np.ndarray, first: int, last: int) -> int:
+        """Count the rows of ``first:last`` in which so much is unknown that it is summed out approximately."""
+        rows = rows_with_unknown(codes, self._unknown, self._may_matter, first, last)
+        seen = view_codes(codes, rows, self.families.recode, self._unknown)
+        return int(approximate(seen, self._parents(seen), self._levels).sum())
+
+    def _add_unobserved(self, codes: np.ndarray, first: int, last: int, out: np.ndarray) -> None:
+        """Add what the families say that hold something unknown, summed out, to the evidence of rows ``first:last``."""
+        rows = rows_with_unknown(codes, self._unknown, self._may_matter, first, last)
+        if not len(rows):
+            return
+        classes = len(self.counted.counts)
+        seen = view_codes(codes, rows, self.families.recode, self._unknown)
+        columns = len(self.smoothings) * classes
+        terms, _ = observed_terms(seen, self._parents(seen), self._levels, self._log_table, columns)
+        by_class = terms.reshape(len(rows), -1, classes)
+        against = (by_class[:, :, 1:] - by_class[:, :, :1]).reshape(len(rows), -1)
+        out[rows - first, : against.shape[1]] += against
+
+    def _parents(self, seen: np.ndarray) -> dict[int, tuple[int, ...]]:
+        """List the families that hold something unknown in one of the rows seen (n, rows): child -> parents."""
+        one = self.families
+        members, depths = one.members[self.which], one.depths[self.which]
+        counts = np.arange(members.shape[1]) < depths[:, None]
+        unknown = np.asarray((seen < 0).any(axis=1))
+        some = (counts & unknown[members]).any(axis=1)
+        return {child: tuple(members[child, : depths[child] - 1].tolist()) for child in np.flatnonzero(some).tolist()}
+
+    @cached_property
+    def _log_tables(self) -> dict[int, np.ndarray]:
+        """Log tables made so far, by attribute."""
+        return {}
+
+    def _log_table(self, child: int) -> np.ndarray:
+        """Log probabilities of an attribute's family, (levels of its parents..., its own, V * C)."""
+        if child not in self._log_tables:
+            counts = self.counted.of_family(int(self.which[child]))
+            logs = log_tables(counts.reshape(len(counts), -1), counts.shape[1:], self.smoothings)
+            self._log_tables[child] = logs.reshape(*counts.shape[1:], -1)
+        return self._log_tables[child]
 
 
 def padded(columns: int) -> int:
@@ -107,12 +204,13 @@ def families_of(structures: Sequence[Structure], view: View) -> Families:
     depths = (own >= 0).sum(axis=1)
     members = np.concatenate([own, np.full((len(own), 1), -1)], axis=1)
     members[np.arange(len(own)), depths] = child
-    sizes = np.where(members >= 0, view.sizes[members], 1)
+    sizes = np.where(members >= 0, view.codes[members], 1)
     plain = (view.plain[members] | (members < 0)).all(axis=1)
     starts = np.concatenate([[0], np.cumsum(sizes.prod(axis=1))])
     parts = [tuple(row) for row in of.tolist()]
     holder = tuple(parts.index(row) for row in parts)
-    return Families(np.maximum(members, 0), sizes, depths + 1, plain, starts, view.recode, of, holder)
+    seen = (view.recode, of, holder, view.veiled, view.unknown)
+    return Families(np.maximum(members, 0), sizes, depths + 1, plain, starts, *seen)
 
 
 def terms_of(counted: Counted, which: np.ndarray, smoothings: Sequence[Smoothing]) -> Terms:
@@ -122,7 +220,33 @@ def terms_of(counted: Counted, which: np.ndarray, smoothings: Sequence[Smoothing
     starts = 1 + np.concatenate([[0], ends[:-1]]).astype(np.int64)
     columns = len(smoothings) * (len(counted.counts) - 1)
     table = np.zeros((1 + int(ends[-1]), padded(columns)))
-    amounts = np.array([smoothing.amount for smoothing in smoothings])
-    laplace = np.array([smoothing.kind == "laplace" for smoothing in smoothings])
-    ratio_tables(counted.counts, one.starts, one.sizes, one.depths, which, amounts, laplace, starts, table)
-    return Terms(one, which, starts, table)
+    amounts, laplace = amounts_of(smoothings)
+    if one.unknown is None:
+        ratio_tables(counted.counts, one.starts, one.sizes, one.depths, which, amounts, laplace, starts, table)
+    else:
+        _masked_tables(counted, which, one.unknown, amounts, laplace, table[1:])
+    return Terms(counted, tuple(smoothings), which, starts, table)
+
+
+def _masked_tables(
+    counted: Counted, which: np.ndarray, unknown: np.ndarray, amounts: np.ndarray, laplace: np.ndarray, out: np.ndarray
+) -> None:
+    """Write the tables of some families, side by side, from the records in which all members are observed.
+
+    Cells with a member that is not observed or unknown stay zero.
+    """
+    one = counted.families
+    members, sizes, depths = one.members[which], one.sizes[which], one.depths[which]
+    veiled = np.zeros(len(one.recode), np.bool_)
+    veiled[list(one.veiled)] = True
+    blank, hidden = masked_cells(members, sizes, depths, veiled, levels_unknown(unknown, one.recode))
+    levels = sizes - (veiled[members] & (np.arange(sizes.shape[1]) < depths[:, None]))
+    starts = np.concatenate([[0], np.cumsum(levels.prod(axis=1))])
+    lengths = sizes.prod(axis=1)
+    cells = np.repeat(one.starts[which] - np.cumsum(lengths) + lengths, lengths) + np.arange(len(blank))
+    counts = np.ascontiguousarray(counted.counts[:, cells[~blank]])
+    table = np.zeros((len(counts.T), out.shape[1]))
+    every = np.arange(len(which))
+    ratio_tables(counts, starts, levels, depths, every, amounts, laplace, starts[:-1], table)
+    out[~blank] = table
+    out[hidden] = 0.0

@@ -14,6 +14,9 @@ from bnx.text import aligned, count_of, fixed, nearest, signed
 __all__ = ["Separation", "separation", "structure_text", "table_text"]
 
 
+_BY_BLANKS = "o carried by blank cells: less than half of the bits are left where neither is blank"
+
+
 @dataclass(frozen=True)
 class Separation:
     """Whether a structure makes two attributes independent given others."""
@@ -97,7 +100,7 @@ def _edges(document: Mapping[str, Any]) -> str:
     rows = [
         (
             f"{edge['parent']} -> {edge['child']}",
-            edge["verdict"],
+            edge["verdict"] + (" o" if edge.get("carried_by_blanks", False) else ""),
             fixed(edge["bits"]),
             f"{signed(edge['gain'], 4)} +- {fixed(edge['gain_se'], 4)}",
             f"{edge['chosen_in']}{folds}",
@@ -107,7 +110,8 @@ def _edges(document: Mapping[str, Any]) -> str:
         for edge in sorted(document["edges"], key=lambda edge: -edge["bits"])
     ]
     header = ("edge", "verdict", "bits given class", "held-out gain, bits", "folds", "stability", "gate p")
-    return aligned(header, rows, left=2)
+    blanks = any(edge.get("carried_by_blanks", False) for edge in document["edges"])
+    return aligned(header, rows, left=2) + (f"\n{_BY_BLANKS}" if blanks else "")
 
 
 def table_text(classifier: Classifier, name: str) -> str:

@@ -57,6 +57,8 @@ def words(name: str) -> str:
         return "no edges"
     if base == "tan":
         return "tree" + ending
+    if base == "heldout":
+        return "up to 3 parents, chosen by held-out log loss"
     found = re.fullmatch(r"kdb(\d+)", base)
     if found:
         number = int(found[1])

@@ -1,7 +1,7 @@
 """Training sets: which blocks of rows they hold, and how each sees the table."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -56,12 +56,41 @@ def make_trainings(
     coarse = [i for i, domain in enumerate(schema.attributes) if needs_coarsening(domain, max_levels)]
     common = make_view(schema, {})
 
+    rows = _rows_of_codes(engine, list(masks.values()))
+    number = {held: k for k, held in enumerate(masks)}
+
     def make(held: tuple[int, ...]) -> Training:
         mask = masks[held]
         view = common
         if coarse:
             counts = {i: engine.margins[i][mask].sum(axis=0).T for i in coarse}
             view = make_view(schema, {i: coarsen(schema.attributes[i], counts[i], bins, max_levels) for i in coarse})
+        view = replace(view, unknown=_unknown(engine.sizes, rows[number[held]], rows[-1], view))
         return Training(held, mask, view, engine.class_counts[mask].sum(axis=0))
 
     return engine.map(make, masks)
+
+
+def _rows_of_codes(engine: LocalEngine, masks: Sequence[np.ndarray]) -> np.ndarray:
+    """Count the rows of every stored code, attribute by attribute, in each training set and last in all rows."""
+    by_block = np.concatenate([margin.sum(axis=1) for margin in engine.margins], axis=1)
+    held = np.array([*masks, np.ones(engine.blocks, np.bool_)])
+    return np.asarray(held.astype(np.float64) @ by_block.astype(np.float64))
+
+
+def _unknown(sizes: np.ndarray, rows: np.ndarray, of_all: np.ndarray, view: View) -> np.ndarray | None:
+    """Mark stored codes, of ``sizes`` (n,), whose level has no row in the training set, and those of no level."""
+    ends = np.cumsum(sizes)
+    starts = ends - sizes
+    none = rows == 0
+    for i in np.flatnonzero(~view.plain).tolist():
+        own = slice(starts[i], ends[i])
+        level = view.recode[i, : sizes[i]]
+        none[own] = np.bincount(level, rows[own])[level] == 0
+    none[ends[list(view.veiled)] - 1] = True
+    none &= of_all > 0
+    if not none.any():
+        return None
+    unknown = np.zeros((len(sizes), int(sizes.max())), np.bool_)
+    unknown[np.arange(unknown.shape[1]) < sizes[:, None]] = none
+    return unknown

@@ -15,13 +15,24 @@ class View:
     """The attributes as one training set sees them.
 
     ``recode`` (n, R) int32: the code that each stored code stands for; ``plain`` (n,) bool: stored codes are used as
-    they are; ``sizes`` (n,) int64: levels.
+    they are; ``sizes`` (n,) int64: levels; ``veiled``: the attributes that have one code more, for cells not observed;
+    ``unknown`` (n, R) bool: the stored codes of cells not observed and of levels that training rows do not hold, None
+    if there are none.
     """
 
     domains: tuple[Domain, ...]
     recode: np.ndarray
     plain: np.ndarray
     sizes: np.ndarray
+    veiled: tuple[int, ...] = ()
+    unknown: np.ndarray | None = None
+
+    @property
+    def codes(self) -> np.ndarray:
+        """Codes that are in use, (n,) int64: those of levels, and that of cells not observed."""
+        codes = self.sizes.copy()
+        codes[list(self.veiled)] += 1
+        return codes
 
     def all_plain(self, members: Sequence[int]) -> bool:
         """Tell whether stored codes of all these attributes can be used as they are."""
@@ -32,13 +43,21 @@ class View:
         return tuple(int(self.sizes[member]) for member in members)
 
     def merge(self, attribute: int, counts: np.ndarray) -> np.ndarray:
-        """Add counts (..., stored levels) of one attribute up to those of its levels in this view."""
+        """Add counts (..., stored codes) of one attribute up to those of its codes in this view."""
         if self.plain[attribute]:
             return counts
-        merged = np.zeros((*counts.shape[:-1], self.sizes[attribute]), counts.dtype)
+        merged = np.zeros((*counts.shape[:-1], self.sizes[attribute] + (attribute in self.veiled)), counts.dtype)
         for code, level in enumerate(self.recode[attribute, : counts.shape[-1]].tolist()):
             merged[..., level] += counts[..., code]
         return merged
+
+    def observed(self, members: Sequence[int], counts: np.ndarray) -> np.ndarray:
+        """Keep the cells of a family in which all members are observed; counts (C, joint codes, last fastest)."""
+        if not set(members) & set(self.veiled):
+            return counts
+        table = counts.reshape(-1, *(int(self.sizes[one]) + (one in self.veiled) for one in members))
+        levels = table[(slice(None), *(slice(int(self.sizes[one])) for one in members))]
+        return np.ascontiguousarray(levels).reshape(len(counts), -1)
 
 
 def make_view(schema: Schema, coarsenings: dict[int, Coarsening]) -> View:
@@ -50,7 +69,8 @@ def make_view(schema: Schema, coarsenings: dict[int, Coarsening]) -> View:
         recode[attribute, : len(coarsening.codes)] = coarsening.codes
         domains[attribute] = coarsening.domain
     plain = np.array([attribute not in coarsenings for attribute in range(len(domains))])
-    return View(tuple(domains), recode, plain, np.array([len(domain) for domain in domains], dtype=np.int64))
+    sizes = np.array([len(domain) for domain in domains], dtype=np.int64)
+    return View(tuple(domains), recode, plain, sizes, tuple(i for i, one in enumerate(domains) if one.veiled))
 
 
 @dataclass(frozen=True)
@@ -59,7 +79,7 @@ class Refinement:
 
     ``recode`` (n, R) int32: the fine level that each stored code stands for, itself where ``plain`` (n,) bool;
     ``sizes`` (n,): fine levels; ``starts`` (n + 1,): first fine level of each attribute in ``levels`` (K, fine levels)
-    int32: the level that a view takes it for, of ``view_sizes`` (K, n).
+    int32: the level that a view takes it for, of ``view_sizes`` (K, n), -1 for cells not observed.
     """
 
     recode: np.ndarray
@@ -75,17 +95,20 @@ class Refinement:
 
 
 def refine(views: Sequence[View], stored: np.ndarray) -> Refinement:
-    """Find the fine levels of some views; stored (n,): levels as stored."""
+    """Find the fine levels of some views, which veil the same attributes; stored (n,): codes as stored."""
     plain = np.all([view.plain for view in views], axis=0)
     recode = np.tile(np.arange(int(stored.max(initial=1)), dtype=np.int32), (len(stored), 1))
-    levels, sizes = [], stored.astype(np.int64)
+    levels, sizes, veiled = [], stored.astype(np.int64), set(views[0].veiled)
     for i, size in enumerate(sizes.tolist()):
         if plain[i]:
-            levels.append(np.broadcast_to(np.arange(size), (len(views), size)))
+            levels.append(np.tile(np.arange(size), (len(views), 1)))
         else:
             fine, recode[i, :size] = np.unique([view.recode[i, :size] for view in views], axis=1, return_inverse=True)
             levels.append(fine)
             sizes[i] = fine.shape[1]
+        if i in veiled:
+            levels[-1][levels[-1] == [[view.sizes[i]] for view in views]] = -1
+    plain[list(veiled)] = False
     starts = np.concatenate([[0], np.cumsum(sizes)]).astype(np.int64)
     return Refinement(
         recode,

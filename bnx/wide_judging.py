@@ -74,8 +74,8 @@ def _judged(
     ends = [(domains[i], domains[j]) for i, j in zip(left.tolist(), right.tolist(), strict=True)]
     judged = judged_pairs(visit, stats, one, whole, other, ends, recipe.test, left_over + left_over_whole)
     note = (
-        f"all {table.pairs:,} pairs are tested as one family, but only the {count_of(len(chosen), 'pair')} drawn or "
-        "with most bits are judged further: pairs_verdicts and pairs_outcomes count those"
+        f"all {table.pairs:,} pairs are tested as one family, less those whose margins allow no small p; only the "
+        f"{count_of(len(chosen), 'pair')} drawn or with most bits are judged further, listed in pairs.csv and counted"
     )
     judged = replace(judged, family=table.pairs, rejected=rejected, notes=(note, *judged.notes))
     return Pairs(left, right, statistics, marginal), judged

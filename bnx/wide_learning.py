@@ -32,6 +32,7 @@ def takes_wide_road(
     return (
         attributes * (attributes - 1) // 2 > MOST_IN_MATRIX
         and bool((engine.sizes == 2).all())
+        and not trainings[0].view.veiled
         and all(bool(training.view.plain.all()) for training in trainings)
         and {member.name for member in learners} <= TREES
         and recipe.test in TESTS

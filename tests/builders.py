@@ -134,7 +134,7 @@ def compared(frame: pd.DataFrame, target: str, jobs: int = 1, **settings: Any) -
 def recipe_of(target: str, **settings: Any) -> Recipe:
     """Make a recipe; the baseline is the first structure unless naive is among them."""
     structures = settings.get("structures", ("naive",))
-    baseline = "naive" if "naive" in structures else structures[0]
+    baseline = structures[0] if structures and "naive" not in structures else "naive"
     return Recipe(target, **{"structures": structures, "baseline": baseline, "resamples": 0} | settings)
 
 

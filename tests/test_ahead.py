@@ -25,7 +25,8 @@ def test_a_run_calls_every_loop_with_the_types_that_are_compiled_ahead(tmp_path:
         "unused = [(loop.__name__, str(types)) for loop, types in LATE if types not in loop.signatures]\n"
         "print(unused, file=sys.stderr)\n"
     )
-    options = ["--folds", "3", "--resamples", "0", "--quiet", "--jobs", "1", "--structures", "naive,kdb2-tested"]
+    options = ["--folds", "3", "--resamples", "0", "--quiet", "--jobs", "1"]
+    options += ["--structures", "naive,kdb2-tested,heldout"]
     run = ["learn", str(DEMO), "--class", "arrival", "-o", str(tmp_path / "out"), *options]
     done = subprocess.run([sys.executable, "-c", script, *run], capture_output=True, text=True, check=True)
     assert done.stderr == "[]\n"

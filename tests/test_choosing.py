@@ -63,21 +63,24 @@ def inner_evidence(frame: pd.DataFrame, fold: np.ndarray, outer: int, s: float) 
 @pytest.mark.parametrize(
     ("shape", "kinds"),
     [
-        ((300, (0.6, 0.25, 0.15), 0.85, 5), {"backoff:16"}),
-        ((300, (0.9, 0.06, 0.04), 0.97, 1), {"backoff:4", "laplace:1"}),
-        ((300, (1.0, 0.0, 0.0), 0.9, 3), {"laplace:1", "backoff:2"}),
+        ((300, (0.6, 0.25, 0.15), 0.85, 5), {"backoff:16,64"}),
+        ((300, (0.9, 0.06, 0.04), 0.97, 1), {"laplace:1"}),
+        ((300, (1.0, 0.0, 0.0), 0.9, 3), {"laplace:1"}),
     ],
     ids=str,
 )
 def test_smoothing_is_the_one_with_the_least_inner_loss(
     shape: tuple[int, tuple[float, float, float], float, int], kinds: set[str]
 ) -> None:
-    """Every candidate is judged at its best of three temperatures, on folds inside the training fold only."""
+    """Every candidate is judged at its best of three temperatures, on folds inside the training fold only.
+
+    Back-off must be ahead by 2 nats. Without edges, the strength given parents decides nothing.
+    """
     frame = tilted(*shape)
     found = compared(frame, "kind", folds=5, structures=("naive", "tan"))
     one = found.evaluations[0]
     fold = folds_of(one)
-    strengths = {"laplace:1": 0.0} | {f"backoff:{s:g}": s for s in (0.5, 1, 2, 4, 8, 16)}
+    strengths = {"laplace:1": 0.0} | {"backoff:0.5": 0.5, "backoff:2": 2, "backoff:8": 8, "backoff:16,64": 16}
     chosen = []
     for outer in range(5):
         losses = {}
@@ -85,7 +88,7 @@ def test_smoothing_is_the_one_with_the_least_inner_loss(
             parts = inner_evidence(frame, fold, outer, s)
             losses[name] = min(
                 sum(nats(prior + t * terms, right) for terms, prior, right in parts) for t in (1, 0.75, 0.5)
-            )
+            ) + (2 if s else 0)
         chosen.append(str(one.choices[(outer,)].smoothings[0]))
         assert chosen[-1] == min(losses, key=lambda name: losses[name])
     assert set(chosen) == kinds

@@ -5,8 +5,6 @@ from itertools import product
 import numpy as np
 import pytest
 from builders import classifier_from
-from hypothesis import given, settings
-from hypothesis import strategies as st
 from sklearn.naive_bayes import CategoricalNB
 
 from bnx.calibrating import Calibration, identity
@@ -85,31 +83,16 @@ def test_temperature_offsets_and_floor_follow_their_definition(structure: Struct
     assert tempered.probabilities(every_record()) == pytest.approx(expected, abs=1e-12)
 
 
-@given(st.integers(0, 10_000), st.sampled_from(STRUCTURES), st.integers(0, 15))
-@settings(deadline=None, max_examples=60)
-def test_an_unknown_level_is_as_if_its_column_were_not_there(seed: int, structure: Structure, hidden: int) -> None:
-    """An unknown own level gives no term; an unknown parent is left out of the family."""
-    codes, target = drawn(60, seed)
-    gone = [i for i in range(4) if hidden >> i & 1]
-    smoothing = Smoothing("backoff", 1.5)
-    classifier = classifier_from(codes, target, structure, smoothing, identity(3), sizes=SIZES, classes=3)
-    kept = tuple(tuple(p for p in parents if p not in gone) for parents in structure.parents)
-    smaller = Structure("smaller", kept)
-    reduced = classifier_from(codes, target, smaller, smoothing, identity(3), sizes=SIZES, classes=3)
-    records = every_record()
-    blanked = records.copy()
-    blanked[gone] = -1
-    for child in range(4):
-        expected = np.zeros((36, 3)) if child in gone else reduced.terms(records, child)
-        assert np.array_equal(classifier.terms(blanked, child), expected)
-    assert np.isfinite(classifier.probabilities(blanked)).all()
-
-
 def test_a_record_of_unknown_levels_gets_the_class_shares() -> None:
+    """Whatever the calibration: temperature, offsets and floor are of evidence, and there is none."""
     codes, target = drawn(50, seed=5)
-    classifier = classifier_from(codes, target, STRUCTURES[2], Smoothing("laplace", 1.0), identity(3), sizes=SIZES)
-    unknown = np.full((4, 1), -1)
-    assert classifier.probabilities(unknown)[0] == pytest.approx(np.bincount(target) / 50, rel=1e-12)
+    calibration = Calibration(0.6, np.array([0.2, -0.3, 0.1]), 0.03, np.array([0.2, 0.3, 0.5]))
+    classifier = classifier_from(codes, target, STRUCTURES[2], Smoothing("laplace", 1.0), calibration, sizes=SIZES)
+    unknown = np.full((4, 2), -1)
+    unknown[3, 1] = 0
+    p = classifier.probabilities(unknown)
+    assert p[0] == pytest.approx(np.bincount(target) / 50, abs=1e-15)
+    assert not np.allclose(p[1], p[0])
 
 
 def test_naive_bayes_equals_scikit_learn() -> None:

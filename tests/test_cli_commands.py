@@ -106,7 +106,7 @@ def test_classify_takes_what_it_has_never_seen(tmp_path: Path) -> None:
     assert run.code == 0
     assert run.out.count("\n") == 4
     assert run.err == (
-        "note: cells that are blank or hold a value not known from training were left out of the evidence: "
+        "note: cells that are blank or hold a value not known from training were summed out: "
         "dock (2 records), alarm (1 record), lane (2 records), site (2 records), gap (2 records)\n"
     )
     assert call("classify", f"{small_results()}/kdb2.json", table, "-o", "-", "--quiet").err == ""

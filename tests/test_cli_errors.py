@@ -109,15 +109,15 @@ def test_files_that_are_no_table() -> None:
 
 SETTINGS = {
     "--structures bayes": "--structures: 'bayes' is not a structure; known: naive, tan, tan-tested, kdbK, kdbK-tested "
-    "(K = 1, 2, ...)",
+    "(K = 1, 2, ...), heldout",
     "--structures kdb0": "--structures: 'kdb0' is not a structure; known: naive, tan, tan-tested, kdbK, kdbK-tested "
-    "(K = 1, 2, ...)",
+    "(K = 1, 2, ...), heldout",
     "--structures tan": "--structures names one structure twice (naive, tan, tan); name each once",
     "--structures ,": "--structures: ',' names nothing; give one or more names, or drop the option",
     "--baseline kdb2": "--baseline kdb2 is not among the structures; add it to --structures, or choose one of naive, "
     "tan with --baseline",
     "--adjust bonferroni": "--adjust: 'bonferroni' cannot be used; give one of bh, holm, by, none",
-    "--missing zero": "--missing: 'zero' cannot be used; give one of level, drop",
+    "--missing zero": "--missing: 'zero' cannot be used; give one of level, drop, sum-out",
     "--alpha 0": "--alpha: 0 cannot be used; give a number above 0 and below 1",
     "--alpha nan": "--alpha: nan cannot be used; give a number above 0 and below 1",
     "--negligible -1": "--negligible: -1 cannot be used; give a number above 0 and below 10",
@@ -126,8 +126,8 @@ SETTINGS = {
     "--max-levels 1": "--max-levels: 1 cannot be used; give a whole number from 2 to 60000",
     "--resamples -1": "--resamples: -1 cannot be used; give a whole number from 0 to 100000",
     "--jobs -1": "--jobs: -1 cannot be used; give a number of threads, or 0 for one per processor",
-    "--smoothing laplace:0": "--smoothing: 'laplace:0' cannot be used; give auto, laplace:A or backoff:S with a number "
-    "above 0",
+    "--smoothing laplace:0": "--smoothing: 'laplace:0' cannot be used; give auto, laplace:A, backoff:S or "
+    "backoff:S,D with numbers above 0",
     "--group grade": "column 'grade' is given as the class and also as the group or fold column; it can be only one "
     "of them",
     "--group sites": "small.csv has no column 'sites'; did you mean site?",

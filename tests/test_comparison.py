@@ -108,7 +108,7 @@ def test_documents_are_the_same_byte_for_byte_twice_and_with_any_number_of_jobs(
 
 def test_another_seed_deals_other_folds(table: str) -> None:
     ignored = ("site", "era")
-    runs = [json.loads(documents(table, 1, ignore=ignored, folds=4, seed=seed)[0]) for seed in (1, 2)]
+    runs = [json.loads(documents(table, 1, ignore=ignored, folds=4, seed=seed, bins="mdl")[0]) for seed in (1, 2)]
     losses = [run["structures"][0]["log_loss"] for run in runs]
     assert losses[0] != losses[1]
     assert abs(losses[0] - losses[1]) < 0.1
@@ -126,7 +126,7 @@ STRUCTURE = (
     "name words edges free_parameters log_loss log_loss_se brier accuracy balanced_accuracy auc recall confusion "
     "calibration_error calibration_slope temperature class_offsets floor smoothing by_fold against_baseline"
 )
-EDGE = "parent child bits gain gain_se chosen_in stability gate_p gate_given verdict"
+EDGE = "parent child bits gain gain_se chosen_in stability gate_p gate_given carried_by_blanks verdict"
 AGAINST = "difference interval p_value region_bits probability_better probability_equivalent"
 PAIR = (
     "a b bits bits_corrected marginal_bits x2 g statistic df p_value adjusted_p method sample_carries_it min_expected "
@@ -182,6 +182,8 @@ def test_a_table_that_took_no_part_is_scored_by_the_final_structures(tmp_path: P
     assert all(np.isfinite(one.log_loss) for one in found.held_out)
     assert sum(map(sum, found.held_out[0].confusion)) == 100
     assert "holdout" in entries(found)["tan"]
+    note = f"{tmp_path / 'new.csv'} (--holdout): cells that are blank or hold a value not known from training were "
+    assert f"{note}summed out: d (100 records)" in found.warnings
 
 
 def test_required_and_forbidden_edges_reach_every_fold() -> None:
@@ -214,7 +216,7 @@ def test_a_class_with_one_row_and_one_attribute_do_not_crash() -> None:
     assert any("lonely" in warning for warning in document["warnings"])
     assert all(np.isfinite(result.pooled.log_loss) for result in found.results)
     bare = compared(frame, "kind", folds=3, temperature=False, smoothing="laplace:1", structures=("naive", "tan"))
-    assert comparison_document(bare)["structures"][0]["log_loss"] is None
+    assert comparison_document(bare)["structures"][0]["log_loss"] < 2
 
 
 REFUSED = [

@@ -30,9 +30,13 @@ TESTED = ("tan-tested", "kdb1-tested", "kdb2-tested", "kdb3-tested")
 
 @cache
 def run(seed: int = 1) -> Comparison:
-    """Run the main job on the shipped table with the default structures; random halves only under the first seed."""
+    """Run the main job on the shipped table with the default structures whose parents come from pairs.
+
+    Those of heldout depend on inner folds, which the seed deals. Random halves only under the first seed.
+    """
     source = open_source(str(DATASETS / "cold_chain.csv"))
-    recipe = recipe_of("arrival", structures=DEFAULT_STRUCTURES, seed=seed, resamples=100 if seed == 1 else 0)
+    structures = tuple(name for name in DEFAULT_STRUCTURES if name != "heldout")
+    recipe = recipe_of("arrival", structures=structures, seed=seed, resamples=100 if seed == 1 else 0)
     return compare(source, recipe, 2, silent)
 
 

@@ -97,3 +97,19 @@ def test_what_cannot_vary_has_p_one_and_the_most_extreme_table_its_probability()
     assert exact_tail(np.array([[3, 4, 0, 0], [0, 0, 0, 0], [2, 0, 5, 0]], dtype=np.int32), 2, 2) == 1.0
     assert exact_tail(np.array([[1, 0, 0, 1]], dtype=np.int32), 2, 2) == 1.0  # X2 is 2 whatever happens
     assert exact_tail(np.array([[20, 0, 0, 20]], dtype=np.int32), 2, 2) == pytest.approx(2 / comb(40, 20), rel=1e-12)
+
+
+@pytest.mark.parametrize(
+    ("ones", "rows", "strata"), [(20, 400, 2), (16, 300, 2), (12, 200, 3), (60, 900, 1), (5, 90, 2)]
+)
+def test_two_equal_columns_have_the_probability_of_that_one_table(ones: int, rows: int, strata: int) -> None:
+    # every other table with these margins has a smaller X2, so p is the product of 1 / C(rows, ones)
+    table = np.array([[rows - ones, 0, 0, ones]] * strata, dtype=np.int32)
+    assert exact_tail(table, 2, 2) == pytest.approx(float(Fraction(1, comb(rows, ones)) ** strata), rel=1e-9, abs=0)
+
+
+def test_a_small_p_is_as_exact_as_a_large_one() -> None:
+    # enumeration in floating point of all combinations; the strata are those of two rare and alike columns
+    table = np.array([[468, 2, 10, 40], [336, 0, 5, 39]], dtype=np.int32)
+    assert exact_tail(table, 2, 2) == pytest.approx(enumerated(table), rel=1e-9, abs=0)
+    assert 1e-95 < exact_tail(table, 2, 2) < 1e-93

@@ -14,18 +14,18 @@ FLOORS = (
     "bnx errors text palette plain unfinished",
     "kernels calibrating counts tiles discretising domains dot_text embedding files storing cells "
     "folds layers losses branching multiplicity paired picture structure svg effects ordered loglinear "
-    "fibre homogeneity",
+    "fibre homogeneity masked unobserved summing_out",
     "tables views blocks columns columnar delimited malformed reading levelling screening duplicates level_order",
     "coarsening gathering passes coding encoding pair_counting engines",
     "parameters trainings dependence families profiling",
-    "tails wide_tables independence classifier intervals refining sampling scoring tabulating verdicts explaining "
-    "pair_details",
+    "tails wide_tables independence classifier rebasing intervals refining sampling scoring tabulating verdicts "
+    "explaining pair_details",
     "gating doubts drawing formats showing",
     "learners",
-    "recipe wide_forests wide wide_learning matrix_memory learning pair_judging many_tests wide_testing wide_judging "
-    "pair_table",
+    "recipe wide_forests wide wide_learning matrix_memory heldout learning pair_judging many_tests wide_testing "
+    "wide_judging pair_table",
     "choosing evaluation gains rating resampling pair_tests",
-    "dealing judging ledger comparison",
+    "dealing judging ledger observing comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
     "documents charts findings printed report results tested_text tested_picture",
     "cli",

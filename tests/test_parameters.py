@@ -26,16 +26,18 @@ def tables(counts: Counts, smoothing: Smoothing) -> np.ndarray:
     return np.exp(logs.T).reshape(counts.shape)
 
 
-def backed_off(counts: Counts, s: float, c: int, context: tuple[int, ...], level: int) -> float:
+def backed_off(counts: Counts, s: float, c: int, context: tuple[int, ...], level: int, deeper: float = 0) -> float:
     """Friedman, Geiger & Goldszmidt 1997, section 5, one parent after the other, by recursion.
 
     q_d = (N_d + s q_(d-1)) / (N_d(context) + s); q_0 mixes in the marginal, itself smoothed by one record per level.
+    Contexts that hold parents take ``deeper`` for s, if it is given.
     """
     if context == ():
         marginal = counts.reshape(-1, counts.shape[-1]).sum(axis=0)
         before = (marginal[level] + 1) / (marginal.sum() + counts.shape[-1])
     else:
-        before = backed_off(counts, s, c, context[:-1], level)
+        before = backed_off(counts, s, c, context[:-1], level, deeper)
+        s = deeper or s
     free = counts[(c, *context)].reshape(-1, counts.shape[-1]).sum(axis=0)
     return float((free[level] + s * before) / (free.sum() + s))
 
@@ -46,6 +48,15 @@ def test_back_off_equals_its_recursion(counts: Counts, s: float) -> None:
     found = tables(counts, Smoothing("backoff", s))
     for cell in np.ndindex(counts.shape):
         expected = backed_off(counts, s, cell[0], cell[1:-1], cell[-1])
+        assert found[cell] == pytest.approx(expected, rel=1e-12)
+
+
+@given(families(), st.sampled_from([(0.5, 8.0), (2.0, 256.0), (16.0, 0.25)]))
+@settings(deadline=None, max_examples=60)
+def test_two_strengths_equal_their_recursion(counts: Counts, strengths: tuple[float, float]) -> None:
+    found = tables(counts, Smoothing("backoff", *strengths))
+    for cell in np.ndindex(counts.shape):
+        expected = backed_off(counts, strengths[0], cell[0], cell[1:-1], cell[-1], strengths[1])
         assert found[cell] == pytest.approx(expected, rel=1e-12)
 
 
@@ -92,19 +103,23 @@ def test_strength_pulls_towards_the_general_table() -> None:
     assert strong[0, 0, 0] == pytest.approx(0.5, abs=1e-4)
 
 
-@pytest.mark.parametrize("text", ["laplace:1", "laplace:.5", "backoff:16", "backoff:0.25"])
+@pytest.mark.parametrize("text", ["laplace:1", "laplace:.5", "backoff:16", "backoff:0.25", "backoff:2,256"])
 def test_smoothings_are_read_as_they_are_written(text: str) -> None:
     smoothing = parse_smoothing(text)
     assert parse_smoothing(str(smoothing)) == smoothing
     assert candidates(text) == (smoothing,)
 
 
-@pytest.mark.parametrize("text", ["laplace", "laplace:0", "backoff:-1", "backoff:nan", "kneser:1", "", "laplace:1:2"])
+@pytest.mark.parametrize(
+    "text",
+    ["laplace", "laplace:0", "backoff:-1", "backoff:nan", "kneser:1", "", "laplace:1:2", "laplace:1,2", "backoff:1,0"],
+)
 def test_other_smoothings_are_refused(text: str) -> None:
-    with pytest.raises(SettingError, match="give auto, laplace:A or backoff:S with a number above 0"):
+    with pytest.raises(SettingError, match="give auto, laplace:A, backoff:S or backoff:S,D with numbers above 0"):
         parse_smoothing(text)
 
 
-def test_auto_tries_one_record_and_six_strengths() -> None:
+def test_auto_tries_one_record_three_strengths_and_four_pairs() -> None:
     written = [str(smoothing) for smoothing in candidates("auto")]
-    assert written == ["laplace:1", *(f"backoff:{s}" for s in ("0.5", "1", "2", "4", "8", "16"))]
+    assert written[:4] == ["laplace:1", "backoff:0.5", "backoff:2", "backoff:8"]
+    assert written[4:] == ["backoff:2,32", "backoff:2,256", "backoff:16,64", "backoff:16,512"]

@@ -1,6 +1,7 @@
 """bnx classify: class probabilities for new records."""
 
 import io
+from collections.abc import Mapping
 from pathlib import Path
 from typing import Annotated
 
@@ -14,6 +15,8 @@ from bnx.encoding import encode
 from bnx.errors import SettingError
 from bnx.files import check_free, write_bytes
 from bnx.reading import Source, open_source
+from bnx.rebasing import parse_prior, rebased
+from bnx.summing_out import summing_notes
 from bnx.text import count_of, quoted
 
 __all__ = ["run"]
@@ -26,13 +29,21 @@ def run(
         str,
         typer.Option("-o", "--output", metavar="FILE", help="Result: .csv or .parquet; - for CSV on standard output."),
     ],
+    prior: Annotated[
+        list[str] | None,
+        typer.Option(
+            metavar="LEVEL=P,...",
+            help="Shares of the classes where these records come from, if they differ from those in training.",
+        ),
+    ] = None,
     overwrite: Overwrite = False,
     quiet: Quiet = False,
 ) -> None:
     """Give every class's probability for each record, and the most probable class.
 
     The result has the columns row (0-based line of data), most_probable, and p:LEVEL for each level of the class.
-    Values that the structure does not know are left out of the evidence, with a note.
+    Blank cells and values that the structure does not know are summed out along the structure, with a note. With
+    --prior, columns prior:LEVEL repeat the shares that the probabilities are based on.
 
     A probability is not a decision. The structure shows dependences, not causes; the table that it was learnt from may
     carry bias in who was recorded and how; rare classes make every figure soft. Where a decision touches health,
@@ -43,18 +54,16 @@ def run(
     source = open_source(data)
     check_spared(output, source)
     _, classifier = opened(structure)
-    result, unknown = _classified(classifier, source)
+    if prior is not None:
+        classifier = rebased(classifier, parse_prior(prior, classifier.target.levels))
+    result, notes = _classified(classifier, source)
     if output == "-":
         typer.echo(result.to_csv(index=False), nl=False)
     else:
         write_bytes(output, _content(result, output), overwrite)
         say(f"{count_of(len(result), 'record')} classified into {output}", quiet)
-    if unknown:
-        say(
-            "note: cells that are blank or hold a value not known from training were left out of the evidence: "
-            f"{quoted(unknown)}",
-            quiet,
-        )
+    for note in notes:
+        say(f"note: {note}", quiet)
 
 
 def _check_output(output: str, overwrite: bool) -> None:
@@ -70,15 +79,28 @@ def _check_output(output: str, overwrite: bool) -> None:
 
 def _classified(classifier: Classifier, source: Source) -> tuple[pd.DataFrame, list[str]]:
     """Classify every record; also say, attribute by attribute, how many records hold something unknown."""
-    parts, unknown = [], np.zeros(len(classifier.domains), np.int64)
+    parts, unknown, rough = [], np.zeros(len(classifier.domains), np.int64), 0
     for codes, _ in encode(source, classifier.domains):
-        parts.append(classifier.probabilities(codes))
+        p, approximate = classifier.classified(codes)
+        parts.append(p)
         unknown += (codes < 0).sum(axis=1)
+        rough += int(approximate.sum())
     p = np.concatenate(parts)
     columns = {"row": np.arange(len(p)), "most_probable": classifier.labels(p)}
     columns |= {f"p:{level}": p[:, c] for c, level in enumerate(classifier.target.levels)}
-    counts = zip(classifier.domains, unknown.tolist(), strict=True)
-    return pd.DataFrame(columns), [f"{domain.name} ({count_of(n, 'record')})" for domain, n in counts if n]
+    notes = summing_notes([domain.name for domain in classifier.domains], unknown, rough)
+    if classifier.other_prior is not None:
+        shares = dict(zip(classifier.target.levels, classifier.other_prior.tolist(), strict=True))
+        columns |= {f"prior:{level}": np.full(len(p), share) for level, share in shares.items()}
+        notes.append(_moved(classifier, shares))
+    return pd.DataFrame(columns), notes
+
+
+def _moved(classifier: Classifier, shares: Mapping[str, float]) -> str:
+    """Say from where to where the class prior moved."""
+    before = (classifier.class_counts / classifier.class_counts.sum()).tolist()
+    told = [f"{level} {old:.4g} to {share:.4g}" for old, (level, share) in zip(before, shares.items(), strict=True)]
+    return f"probabilities are based on another class prior than that of training: {quoted(told)}"
 
 
 def _content(result: pd.DataFrame, output: str) -> bytes:

@@ -57,7 +57,7 @@ def run(
         list[str] | None,
         typer.Option(
             metavar="NAME,...",
-            help="Structures to compare: naive, tan, tan-tested, kdbK, kdbK-tested.",
+            help="Structures to compare: naive, tan, tan-tested, kdbK, kdbK-tested, heldout.",
             show_default=",".join(DEFAULT_STRUCTURES),
         ),
     ] = None,
@@ -91,7 +91,7 @@ def run(
     missing: Missing = Recipe.missing,
     max_levels: MaxLevels = Recipe.max_levels,
     smoothing: Annotated[
-        str, typer.Option(metavar="RULE", help="Smoothing of the tables: auto, laplace:A or backoff:S.")
+        str, typer.Option(metavar="RULE", help="Smoothing of the tables: auto, laplace:A, backoff:S or S,D.")
     ] = Recipe.smoothing,
     temperature: Annotated[
         bool, typer.Option("--temperature/--no-temperature", help="Calibrate temperature, class offsets and floor.")

@@ -73,7 +73,11 @@ Keep = Annotated[
 ]
 Missing = Annotated[
     str,
-    typer.Option("--missing", metavar="level|drop", help="Blank cells: make them a level, or drop their records."),
+    typer.Option(
+        "--missing",
+        metavar="level|drop|sum-out",
+        help="Blank cells: make them a level, drop their records, or sum them out as not observed.",
+    ),
 ]
 MaxLevels = Annotated[
     int, typer.Option("--max-levels", metavar="N", help="Levels kept per column; rarer ones are pooled.")

@@ -106,7 +106,7 @@ class LocalEngine:
 
         self.map(recode, range(len(codes)))
         margins = tuple(view.merge(i, margin) for i, margin in enumerate(self.margins))
-        return replace(self, codes=codes, sizes=view.sizes, margins=margins)
+        return replace(self, codes=codes, sizes=view.codes, margins=margins)
 
     def pair_counts(self, layout: PairLayout) -> PairCounts:
         """Count pairs of attributes, as stored, by block and class."""
@@ -120,17 +120,17 @@ class LocalEngine:
         return FamilyCounts(tuple(members), view.sizes_of(members), counts.reshape(self.blocks, self.classes, -1))
 
     def training_counts(self, members: Sequence[int], view: View, mask: np.ndarray) -> np.ndarray:
-        """Count a family over the blocks of ``mask`` (blocks,) bool, by class: (C, cells) int32."""
+        """Count a family over the blocks of ``mask`` (blocks,) bool by class: (C, cells) int32, what is observed."""
         by_class = np.arange(self.classes, dtype=np.int64)
         slots = np.where(mask[:, None], by_class, -1).ravel()
         return self._count(members, view, slots)
 
     def _count(self, members: Sequence[int], view: View, slots: np.ndarray) -> np.ndarray:
-        sizes = np.array(view.sizes_of(members), dtype=np.int64)
+        sizes = view.codes[list(members)]
         out = np.zeros((int(slots.max()) + 1, int(sizes.prod())), np.int32)
         plain = view.all_plain(members)
         count_cells(self.codes, view.recode, plain, np.array(members), sizes, self.starts, slots, out)
-        return out
+        return view.observed(members, out)
 
 
 def _chunks(rows: int, chunk: int) -> list[slice]:

@@ -121,6 +121,8 @@ def _legend(sheet: _Sheet, shown: Showing) -> Iterable[tuple[str, str]]:
         for verdict, words in _WORDS.items():
             if any(arrow.verdict == verdict for arrow in shown.arrows):
                 yield words, sheet.colours[_STYLES[verdict][2]]
+        if any(arrow.by_blanks for arrow in shown.arrows):
+            yield "ring at the tail: carried by blank cells", small
     elif not sheet.picture.arrows:
         yield f"no attribute depends on another once {sheet.target} is known", small
     yield f"bar: bits shared with {sheet.target}", small
@@ -167,10 +169,11 @@ def _arrow_edge(sheet: _Sheet, arrow: Arrow, numbered: bool) -> str:
     dash, line, words = (sheet.colours.get(style, style) for style in _STYLES[arrow.verdict])
     width = pen_width(arrow.bits)
     label = f", label={_number(sheet, arrow, words)}" if numbered else ""
+    ring = ", dir=both, arrowtail=odot" if arrow.by_blanks else ""
     return (
         f'n{arrow.parent} -> n{arrow.child} [id="e{arrow.parent}-{arrow.child}",'
         f' class="arrow {arrow.verdict.replace(" ", "-")}", style={dash}, color="{line}", penwidth={width:.2f},'
-        f" arrowsize={0.5 + 0.025 * width:.2f}, minlen=2, tooltip={hint(_evidence(sheet, arrow))}{label}]"
+        f" arrowsize={0.5 + 0.025 * width:.2f}, minlen=2, tooltip={hint(_evidence(sheet, arrow))}{ring}{label}]"
     )
 
 
@@ -192,9 +195,8 @@ def _evidence(sheet: _Sheet, arrow: Arrow) -> str:
     gain = "" if arrow.gain is None else f", held-out gain {arrow.gain:+.3f}"
     error = "" if arrow.gain is None or arrow.gain_se is None else f" ± {arrow.gain_se:.3f}"
     unit = " bits per row" if gain else ""
-    return (
-        f"{parent} to {child}: {arrow.bits:.3f} bits given {sheet.picture.target}{gain}{error}{unit}; {arrow.verdict}"
-    )
+    verdict = f"{arrow.verdict}; carried by blank cells" if arrow.by_blanks else arrow.verdict
+    return f"{parent} to {child}: {arrow.bits:.3f} bits given {sheet.picture.target}{gain}{error}{unit}; {verdict}"
 
 
 def _fan(sheet: _Sheet) -> list[str]:

@@ -8,6 +8,8 @@ from bnx.kernels.margins import used
 __all__ = ["exact_tail"]
 
 _SUMS = 4096  # sums of X2 kept apart
+_FLOOR = 1e-22  # less likely tables of a stratum are left out where p is at least
+_SMALL = 1e-9  # and in proportion where it is smaller
 
 
 @kernel
@@ -33,13 +35,22 @@ def exact_tail(counts: np.ndarray, height: int, width: int) -> float:
     most = observed - 1e-9 * (1.0 + observed)
     if most < 0.0:
         return 1.0
+    tail = _tail(tables, most, _FLOOR)
+    if tail < _SMALL:
+        tail = _tail(tables, most, tail * _FLOOR / _SMALL)
+    return min(1.0, tail)
+
+
+@part
+def _tail(tables: np.ndarray, most: float, floor: float) -> float:
+    """Sum up the chances of reaching ``most``, but for tables that are less likely in their stratum than ``floor``."""
     values, masses = np.zeros(1), np.ones(1)
     tail = 0.0
-    for s in range(counts.shape[0]):
+    for s in range(tables.shape[0]):
         if _varies(tables[s]):
-            values, masses, reached = _convolved(values, masses, tables[s], most)
+            values, masses, reached = _convolved(values, masses, tables[s], most, floor)
             tail += reached
-    return min(1.0, tail)
+    return tail
 
 
 @part
@@ -80,7 +91,7 @@ def _distance(first: int, table: np.ndarray) -> float:
 
 @part
 def _convolved(
-    values: np.ndarray, masses: np.ndarray, table: np.ndarray, most: float
+    values: np.ndarray, masses: np.ndarray, table: np.ndarray, most: float, floor: float
 ) -> tuple[np.ndarray, np.ndarray, float]:
     """Add one stratum to sums below ``most``; give the new sums, their masses, and the mass that reached ``most``."""
     total = table[0] + table[1] + table[2] + table[3]
@@ -93,7 +104,7 @@ def _convolved(
     reached = 0.0
     place = 0
     for k in range(chances.size):
-        if chances[k] < 1e-18:
+        if chances[k] <= floor:
             continue
         more = _distance(low + k, table)
         for m in range(values.size):

@@ -6,13 +6,13 @@ import numpy as np
 
 from bnx.kernels.compiling import inlined, kernel, part
 from bnx.kernels.contingency import add_table
+from bnx.kernels.merging import merge_cells
 
 __all__ = [
     "Blocks",
     "Sets",
     "blocks_of_masks",
     "complete_tables",
-    "merge_cells",
     "reduce_family",
     "reduce_table",
     "reduce_tile",
@@ -45,7 +45,8 @@ class Sets(NamedTuple):
     """K training sets over C classes, as the reduction of pairs reads them.
 
     ``starts`` (n + 1,): first level of each attribute in ``margins`` (K, C, levels) int32 rows, and in ``levels``
-    (K, levels) int32: what a set takes it for, of ``sizes`` (K, n); ``plain`` (n,) bool: in every set for itself.
+    (K, levels) int32: what a set takes it for, of ``sizes`` (K, n), -1 if its rows do not count; ``plain`` (n,) bool:
+    in every set for itself.
     """
 
     blocks: Blocks
@@ -171,24 +172,6 @@ def reduce_family(
 
 
 @kernel
-def merge_cells(
-    counts: np.ndarray, sizes: np.ndarray, starts: np.ndarray, levels: np.ndarray, seen: np.ndarray, out: np.ndarray
-) -> None:
-    """Add joint levels of ``sizes`` (m,), counts (C, cells), up to those of ``seen`` (m,), out (C, cells).
-
-    Level x of member m becomes ``levels[starts[m] + x]``.
-    """
-    for cell in range(counts.shape[1]):
-        rest, place, step = cell, 0, 1
-        for m in range(sizes.size - 1, -1, -1):
-            place += step * levels[starts[m] + rest % sizes[m]]
-            step *= seen[m]
-            rest //= sizes[m]
-        for c in range(counts.shape[0]):
-            out[c, place] += counts[c, cell]
-
-
-@kernel
 def complete_tables(
     counts: np.ndarray,
     stride: int,
@@ -303,9 +286,11 @@ def _finish(
         for x in range(height * width):
             merged[c, x] = 0
         for a in range(rows):
-            place = sets.levels[k, first + a] * width
+            x = sets.levels[k, first + a]
             for b in range(columns):
-                merged[c, place + sets.levels[k, second + b]] += whole[c, a * columns + b]
+                y = sets.levels[k, second + b]
+                if x >= 0 and y >= 0:
+                    merged[c, x * width + y] += whole[c, a * columns + b]
     add_table(merged, int(np.int64(0)), height, width, down, across, row)
 
 

@@ -5,7 +5,7 @@ import numpy as np
 from bnx.kernels.compiling import inlined, kernel, part
 from bnx.kernels.exponentials import logarithms
 
-__all__ = ["drop_parent", "ratio_tables", "smoothed_tables"]
+__all__ = ["drop_parent", "ratio_tables", "smoothed_shares", "smoothed_tables"]
 
 
 @kernel
@@ -15,13 +15,14 @@ def smoothed_tables(
     """Write the log table terms (nats) of one family under several smoothings.
 
     counts (C, cells) int32, cells numbered by ``sizes`` = (parents in the order taken..., child);
-    strengths (V,), laplace (V,) bool: smoothing v is laplace with pseudo-count ``strengths[v]``, else back-off with
-    that many records; out (cells, V * C): column ``v * C + c``.
+    strengths (V, 2), laplace (V,) bool: smoothing v is laplace with pseudo-count ``strengths[v, 0]``, else back-off
+    with that many records given the class and ``strengths[v, 1]`` given parents too; out (cells, V * C): column
+    ``v * C + c``.
     """
     classes, cells = counts.shape
-    shares = np.empty((strengths.size * classes, cells))
+    shares = np.empty((laplace.size * classes, cells))
     sums, work = np.empty(sizes.size * cells), np.empty(sizes.size * cells)
-    _shares(counts, int(np.int64(0)), sizes, strengths, laplace, sums, work, shares)
+    smoothed_shares(counts, int(np.int64(0)), sizes, strengths, laplace, sums, work, shares)
     for column in range(shares.shape[0]):
         for cell in range(cells):
             out[cell, column] = np.log(shares[column, cell])
@@ -42,14 +43,14 @@ def ratio_tables(
     """Write what every cell of some families says for each class against the first: ln of the ratio of probabilities.
 
     counts (C, cells of all families) int32, family f from ``starts[f]`` on; sizes (F, M), of which the first ``depths``
-    (F,) count; which (K,): the families wanted; strengths, laplace (V,) as in ``smoothed_tables``; out (rows, at least
+    (F,) count; which (K,): the families wanted; strengths, laplace as in ``smoothed_tables``; out (rows, at least
     V * (C - 1)): wanted family k from row ``out_starts[k]`` on, column ``v * (C - 1) + c - 1`` for class c.
     """
     classes = counts.shape[0]
     most = 0
     for f in which:
         most = max(most, starts[f + 1] - starts[f])
-    columns = strengths.size * classes
+    columns = laplace.size * classes
     room = np.empty(columns * most)
     sums, work = np.empty(sizes.shape[1] * most), np.empty(sizes.shape[1] * most)
     logs = np.empty(2 * columns * most)
@@ -57,9 +58,9 @@ def ratio_tables(
         f = which[k]
         cells = starts[f + 1] - starts[f]
         shares = room[: columns * cells].reshape(columns, cells)
-        _shares(counts, starts[f], sizes[f, : depths[f]], strengths, laplace, sums, work, shares)
-        _to_ratios(room, strengths.size, classes, cells)
-        wanted = strengths.size * (classes - 1)
+        smoothed_shares(counts, starts[f], sizes[f, : depths[f]], strengths, laplace, sums, work, shares)
+        _to_ratios(room, laplace.size, classes, cells)
+        wanted = laplace.size * (classes - 1)
         logarithms(room[: wanted * cells], logs)
         table = out[out_starts[k] : out_starts[k] + cells]
         for column in range(wanted):
@@ -83,7 +84,7 @@ def _to_ratios(room: np.ndarray, options: int, classes: int, cells: int) -> None
 
 
 @part
-def _shares(
+def smoothed_shares(
     counts: np.ndarray,
     start: int,
     sizes: np.ndarray,
@@ -116,12 +117,12 @@ def _shares(
         upwards += not laplace[v]
     for c in range(classes):
         first = _sum_up(counts[c], start, cells, sizes, upwards > 0, sums)
-        for v in range(strengths.size):
+        for v in range(laplace.size):
             shares = out[v * classes + c]
             if laplace[v]:
-                _laplace(sums[first : first + cells], levels, strengths[v], shares)
+                _laplace(sums[first : first + cells], levels, strengths[v, 0], shares)
             else:
-                _back_off(sums, first, sizes, marginal, strengths[v], work, shares)
+                _back_off(sums, first, sizes, marginal, strengths[v, 0], strengths[v, 1], work, shares)
 
 
 @inlined
@@ -171,15 +172,20 @@ def _back_off(
     sizes: np.ndarray,
     marginal: np.ndarray,
     amount: float,
+    deeper: float,
     work: np.ndarray,
     out: np.ndarray,
 ) -> None:
-    """Add ``amount`` records spread like the table with one parent less, from the fewest parents on."""
+    """Add records spread like the table with one parent less, from the fewest parents on.
+
+    ``amount`` of them given the class, ``deeper`` given parents too.
+    """
     depth = sizes.size - 1
     levels = sizes[depth]
     at, before, contexts = 0, 0, 1
     for d in range(depth + 1):
         siblings = sizes[d - 1] if d else 1
+        added = deeper if d else amount
         for k in range(contexts):
             here = at + k * levels
             above = before + (k // siblings) * levels
@@ -188,7 +194,7 @@ def _back_off(
                 rows += sums[here + x]
             for x in range(levels):
                 less = work[above + x] if d else marginal[x]
-                work[here + x] = (sums[here + x] + amount * less) / (rows + amount)
+                work[here + x] = (sums[here + x] + added * less) / (rows + added)
         before = at
         at += contexts * levels
         contexts *= sizes[d] if d < depth else 1

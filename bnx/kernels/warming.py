@@ -16,6 +16,7 @@ from bnx.kernels.chance import expected_nats
 from bnx.kernels.montecarlo import monte_carlo_tail
 from bnx.kernels.posterior import calibrated_loss, calibration_sums, posteriors, slope_sums
 from bnx.kernels.ranking import pack_scores, rank_sums, sort_whole
+from bnx.kernels.replacing import add_held_terms, class_weights, replaced_losses
 from bnx.kernels.scoring import add_terms, tempered_losses
 from bnx.kernels.smoothing import drop_parent, ratio_tables, smoothed_tables
 from bnx.kernels.tallying import tally
@@ -26,7 +27,10 @@ _WHOLE, _REAL, _TRUE, _CLASSES = int64[::1], float64[::1], boolean[::1], uint8[:
 _CODES, _COUNTS, _WHOLES, _REALS = uint8[:, ::1], int32[:, ::1], int64[:, ::1], float64[:, ::1]
 
 LATE: tuple[tuple[Callable[..., Any], tuple[Any, ...]], ...] = (
-    (ratio_tables, (_COUNTS, _WHOLE, _WHOLES, _WHOLE, _WHOLE, _REAL, _TRUE, _WHOLE, _REALS)),
+    (add_held_terms, (_CODES, _WHOLE, _WHOLE, _WHOLE, float64, float64, _REALS)),
+    (class_weights, (_REALS, _WHOLE, _REALS, _REALS)),
+    (replaced_losses, (_CODES, _WHOLE, _WHOLES, _WHOLES, _WHOLE, float64, _REALS, _REAL, _REAL)),
+    (ratio_tables, (_COUNTS, _WHOLE, _WHOLES, _WHOLE, _WHOLE, _REALS, _TRUE, _WHOLE, _REALS)),
     (
         add_terms,
         (_CODES, _COUNTS, _TRUE, _WHOLES, _WHOLES, _WHOLE, _WHOLE, _WHOLE, _REALS, int64, int64, _REALS),
@@ -43,7 +47,7 @@ LATE: tuple[tuple[Callable[..., Any], tuple[Any, ...]], ...] = (
     (rank_sums, (_WHOLE, _REAL, _REAL)),
     (expected_nats, (_COUNTS, int64, int64)),
     (monte_carlo_tail, (_COUNTS, int64, int64, _REAL, int64, int64)),
-    (smoothed_tables, (_COUNTS, _WHOLE, _REAL, _TRUE, _REALS)),
+    (smoothed_tables, (_COUNTS, _WHOLE, _REALS, _TRUE, _REALS)),
 )
 """Loops and the types that a run on up to 256 levels calls them with, in the order to compile them in."""
 

@@ -6,15 +6,16 @@ from typing import Protocol
 from bnx.dependence import Dependence
 from bnx.errors import SettingError
 from bnx.gating import Bounds, Gate, Learning
+from bnx.learners.heldout import Heldout, Judge
 from bnx.learners.kdb import Kdb, KdbTested
 from bnx.learners.naive import Naive
 from bnx.learners.tan import Tan
 
-__all__ = ["Learner", "learner"]
+__all__ = ["Heldout", "Judge", "Learner", "PairLearner", "learner"]
 
 
-class Learner(Protocol):
-    """What every member offers: a name, the most parents an attribute can have, and the learning itself."""
+class PairLearner(Protocol):
+    """What a member that learns from pairs offers: a name, the most parents of an attribute, the learning itself."""
 
     @property
     def name(self) -> str:
@@ -36,18 +37,27 @@ class Learner(Protocol):
         """Start learning; questions are yielded, the structure is returned."""
 
 
+Learner = PairLearner | Heldout
+
+
 def learner(name: str) -> Learner:
     """Find the learner of a structure by its name.
 
     Raises:
         SettingError: no structure has this name.
     """
-    fixed: dict[str, Learner] = {"naive": Naive(), "tan": Tan(tested=False), "tan-tested": Tan(tested=True)}
+    fixed: dict[str, Learner] = {
+        "naive": Naive(),
+        "tan": Tan(tested=False),
+        "tan-tested": Tan(tested=True),
+        "heldout": Heldout(),
+    }
     if name in fixed:
         return fixed[name]
     found = re.fullmatch(r"kdb([1-9]\d?)(-tested)?", name)
     if found:
         return KdbTested(int(found[1])) if found[2] else Kdb(int(found[1]))
     raise SettingError(
-        f"--structures: {name!r} is not a structure; known: naive, tan, tan-tested, kdbK, kdbK-tested (K = 1, 2, ...)"
+        f"--structures: {name!r} is not a structure; known: naive, tan, tan-tested, kdbK, kdbK-tested (K = 1, 2, ...), "
+        "heldout"
     )
