@@ -83,7 +83,8 @@ def write(measured: Path, folder: Path) -> None:
     """Write the page and its picture from the figures that are stored."""
     figures = {name: load(measured / f"{name}.json") for name in PARTS}
     (folder / "pictures").mkdir(exist_ok=True)
-    draw_growth(figures["growth"], folder / page_growth.PICTURE)
+    if figures["growth"]:
+        draw_growth(figures["growth"], folder / page_growth.PICTURE)
     (folder / "speed.md").write_text(page(figures), encoding="utf-8")
 
 
