@@ -5,11 +5,13 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from bnx.calibrating import Calibration, fit_against_first, identity
+from bnx.calibrating import Calibration, fit_against_first, identity, probabilities
 from bnx.engines import LocalEngine
 from bnx.kernels import calibrated_loss, tempered_losses
 from bnx.learning import Learned
+from bnx.mixing import Mix, fit_mix, members_of
 from bnx.parameters import Smoothing
+from bnx.picking import pick
 from bnx.sampling import Sample
 from bnx.scoring import Counted, Terms, families_of, terms_of
 from bnx.tabulating import tabulate
@@ -36,13 +38,16 @@ class Choice:
     """What one training set settled on, out of fold.
 
     ``trial``: which kind of cut points; per structure its ``smoothings`` and ``calibrations``; ``losses``
-    (structures, inner folds): mean held-out log loss in bits.
+    (structures, inner folds): mean held-out log loss in bits. ``single``: the structure that these recommend; ``mix``:
+    what all of them are mixed by, None where nothing is.
     """
 
     trial: Trial
     smoothings: tuple[Smoothing, ...]
     calibrations: tuple[Calibration, ...]
     losses: np.ndarray
+    single: int
+    mix: Mix | None
 
 
 @dataclass(frozen=True)
@@ -117,38 +122,48 @@ def choose(
     sample: Sample,
     calibrate: bool,
     nested: bool,
+    mix: bool,
 ) -> Choice:
     """Choose for the training set without ``held``, on its own rows only.
 
     losses: of each trial, from ``inner_losses``; empty when there is one trial and one smoothing. Without ``nested``
-    there is nothing to choose or to calibrate at all.
+    there is nothing to choose or to calibrate at all. With ``mix`` different structures are mixed.
     """
     if not nested:
         structures = len(trials[0].learned[held].structures)
         plain = identity(len(trials[0].learned[held].training.class_counts))
-        return Choice(trials[0], (options[0],) * structures, (plain,) * structures, np.zeros((structures, 0)))
+        return Choice(trials[0], (options[0],) * structures, (plain,) * structures, np.zeros((structures, 0)), 0, None)
     inner = inner_sets(held, folds)
     trial, chosen = trials[0], [options[0]] * len(trials[0].learned[held].structures)
     if losses:
         totals = [np.sum([table[key] for key in inner], axis=0).min(axis=2) for table in losses]
         best = int(np.argmin([total.min() for total in totals]))
         trial, chosen = trials[best], [options[k] for k in totals[best].argmin(axis=1)]
-    return _calibrated(trial, tuple(chosen), inner, sample, calibrate)
+    return _calibrated(held, trial, tuple(chosen), inner, sample, calibrate, mix)
 
 
 def _calibrated(
-    trial: Trial, chosen: tuple[Smoothing, ...], inner: Sequence[tuple[Held, int]], sample: Sample, calibrate: bool
+    without: Held,
+    trial: Trial,
+    chosen: tuple[Smoothing, ...],
+    inner: Sequence[tuple[Held, int]],
+    sample: Sample,
+    calibrate: bool,
+    mix: bool,
 ) -> Choice:
-    """Fit the calibration of each structure on out-of-fold evidence, and judge it fold by fold."""
+    """Fit the calibration of each structure on out-of-fold evidence, judge it fold by fold, and mix."""
     rows = _inner_rows(trial, inner, sample)
     calibrations: list[Calibration] = []
     losses = np.zeros((len(chosen), len(inner)))
     done: dict[tuple[object, ...], int] = {}
+    predicted: dict[int, np.ndarray] = {}
     for s, smoothing in enumerate(chosen):
         same = done.setdefault((smoothing, *(trial.counts[held].families.holder[s] for held, _ in inner)), s)
         if same < s:
             calibrations.append(calibrations[same])
             losses[s] = losses[same]
+            if mix:
+                predicted[s] = predicted[same]
             continue
         own = np.concatenate([_evidence(trial, held, s, smoothing, sample, fold) for held, fold in inner])
         calibration = identity(len(rows.shares))
@@ -159,7 +174,22 @@ def _calibrated(
             part = slice(rows.starts[k], rows.starts[k + 1])
             prior = trial.learned[held].training.log_prior
             losses[s, k] = mean_loss(own[part], prior, calibration, rows.truth[part], rows.weights[part])
-    return Choice(trial, chosen, tuple(calibrations), losses)
+        if mix:
+            predicted[s] = probabilities(calibration, rows.prior, own)
+    structures = trial.learned[without].structures
+    single = pick(losses, structures, losses.mean(axis=1).tolist(), len(inner))[1] if len(chosen) > 1 else 0
+    found = _mixed(predicted, members_of(structures, single), single, losses, rows) if mix else None
+    return Choice(trial, chosen, tuple(calibrations), losses, single, found)
+
+
+def _mixed(
+    predicted: Mapping[int, np.ndarray], members: Sequence[int], single: int, losses: np.ndarray, rows: _Inner
+) -> Mix | None:
+    """Fit the weights of the members; there is nothing to mix in fewer than two structures."""
+    if len(losses) < 2:
+        return None
+    own = [predicted[s] for s in members]
+    return fit_mix(own, members, single, len(losses), rows.truth, rows.weights, rows.starts, losses[single])
 
 
 def _inner_rows(trial: Trial, inner: Sequence[tuple[Held, int]], sample: Sample) -> _Inner:

@@ -22,12 +22,14 @@ from bnx.folds import sub_blocks
 from bnx.gains import edge_gains
 from bnx.gating import Bounds
 from bnx.independence import Statistics
-from bnx.judging import Against, Recommendation, against, inner_picks, recommend
+from bnx.judging import Against, Recommendation, against, inner_picks, mixed_picks, recommend
 from bnx.learners import Learner, learner
 from bnx.learning import Learned, make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
 from bnx.matrix_memory import matrix_notes
+from bnx.mix_judging import JudgedMix, judge_mix
+from bnx.mixed_classifier import MixedClassifier
 from bnx.pair_judging import JudgedPairs, judge_pairs
 from bnx.rating import EXACT_ROWS, SLOPE_ROWS, StructureScore, score
 from bnx.reading import Source
@@ -51,7 +53,8 @@ class Comparison:
     """Everything that one run found out; per structure in the order asked for.
 
     ``relevance`` (n,): bits each attribute shares with the class. ``pairs`` and ``judged``: all pairs, on all rows.
-    ``held_out``: scores on a table that took no part, empty without one.
+    ``mix``: of the structures, None where nothing is mixed; ``held_out``: scores on a table that took no part, of the
+    structures and last of the mix, empty without one.
     """
 
     recipe: Recipe
@@ -67,6 +70,7 @@ class Comparison:
     against: tuple[Against | None, ...]
     edges: tuple[tuple[EdgeEvidence, ...], ...]
     recommendation: Recommendation
+    mix: JudgedMix | None
     held_out: tuple[Scores, ...]
     left_out: tuple[LeftOut, ...]
     warnings: tuple[str, ...]
@@ -116,12 +120,15 @@ def compare(
     progress("stability", 0, 0)
     stable = stability(_under("stability", first.engine), learned, folds, learners, bounds, recipe)
     picks = inner_picks(evaluations)
-    results, honest = score(evaluations, picks)
+    with_mix = mixed_picks(evaluations)
+    results, (honest, mixed) = score(evaluations, (picks, with_mix))
+    mix = judge_mix(evaluations, results, picks, (with_mix, mixed), recipe.structures.index(recipe.baseline), folds)
+    results = results[: len(learners)]
     progress("judging pairs", 0, 0)
     pairs, judged = _tested(first.engine, learned, learners, bounds, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     progress("scoring", 0, 0)
-    held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
+    held_out, not_scored = _held_out(_scored(classifiers, mix), holdout, recipe) if holdout else ((), [])
     recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
     progress("edge ledger", 0, 0)
     edges = edge_ledger(_told(first), _strengths(learned, pairs), gains, stable, learners, bounds, recipe, folds)
@@ -141,6 +148,7 @@ def compare(
         against=tuple(against(results, recipe.structures.index(recipe.baseline), folds)),
         edges=tuple(edges),
         recommendation=recommendation,
+        mix=mix,
         held_out=held_out,
         left_out=coded.left_out,
         warnings=(*early, *notes, *judged.notes, *not_scored, *coded.warnings),
@@ -233,8 +241,16 @@ def _classifier(evaluation: Evaluation, s: int, coded: Coded) -> Classifier:
     )
 
 
+def _scored(classifiers: Sequence[Classifier], mix: JudgedMix | None) -> list[Classifier | MixedClassifier]:
+    """List what is scored on a table that took no part."""
+    if mix is None:
+        return list(classifiers)
+    members = tuple(classifiers[s] for s in mix.members)
+    return [*classifiers, MixedClassifier(members, tuple(mix.members.values()))]
+
+
 def _held_out(
-    classifiers: Sequence[Classifier], source: Source, recipe: Recipe
+    classifiers: Sequence[Classifier | MixedClassifier], source: Source, recipe: Recipe
 ) -> tuple[tuple[Scores, ...], list[str]]:
     """Score the final classifiers on a table that took no part in anything; say which rows could not be scored."""
     target = classifiers[0].target

@@ -1,0 +1,200 @@
+"""A mix of structures: their calibrated log posteriors, weighed and added up."""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from bnx.picking import chances_of
+from bnx.simplex import least_on_simplex
+from bnx.structure import Structure
+
+__all__ = ["LIKELY", "Mix", "fit_mix", "members_of", "mixed"]
+
+LIKELY = 0.5
+_PENALTY = 2.0
+_LEAST = 0.01
+_STEPS = 50
+_TINIEST = 2.2250738585072014e-308  # the smallest normal number
+
+
+@dataclass(frozen=True)
+class Mix:
+    """What a training set mixes.
+
+    ``weights`` (structures,), none below 0, sum 1; ``losses`` (inner folds,): mean log loss in bits of each, mixed by
+    weights fitted without it; ``taken``: whether the mix is taken there instead of the single structure.
+    """
+
+    weights: np.ndarray
+    losses: np.ndarray
+    taken: bool
+
+    @property
+    def members(self) -> dict[int, float]:
+        """Weights of the structures that have one, by number."""
+        return {s: float(weight) for s, weight in enumerate(self.weights) if weight}
+
+
+@dataclass(frozen=True)
+class _Rows:
+    """Rows to fit on.
+
+    ``ratios`` (members, C, N) nats: log posterior of each class less that of the row's own; ``weights`` (N,): how many
+    rows each stands for; ``starts``: the first row of each fold; ``towards`` (members,): the weights of no change.
+    """
+
+    ratios: np.ndarray
+    weights: np.ndarray
+    starts: np.ndarray
+    towards: np.ndarray
+
+
+@dataclass(frozen=True)
+class _Sums:
+    """Losses of each fold, nats, with ``gradient`` (folds, members) and ``hessian`` (folds, members, members)."""
+
+    losses: np.ndarray
+    gradient: np.ndarray
+    hessian: np.ndarray
+
+
+def mixed(posteriors: Sequence[np.ndarray], weights: Sequence[float]) -> np.ndarray:
+    """Mix probabilities (N, C) of several structures: their weighed geometric mean, made to sum to 1.
+
+    A probability of 0 counts as the smallest normal number.
+
+    Source: Genest & Zidek 1986 (logarithmic opinion pool).
+    """
+    power = np.zeros(posteriors[0].shape)
+    for p, weight in zip(posteriors, weights, strict=True):
+        power += weight * np.log(np.maximum(p, _TINIEST))
+    power -= power.max(axis=1, keepdims=True)
+    np.exp(power, out=power)
+    power /= power.sum(axis=1, keepdims=True)
+    return power
+
+
+def members_of(structures: Sequence[Structure], single: int) -> list[int]:
+    """List the structures that differ in more than their name, the one that is taken alone standing for its like."""
+    first = {structure.parents: s for s, structure in reversed(list(enumerate(structures)))}
+    first[structures[single].parents] = single
+    return sorted(first.values())
+
+
+def fit_mix(
+    posteriors: Sequence[np.ndarray],
+    members: Sequence[int],
+    single: int,
+    structures: int,
+    truth: np.ndarray,
+    weights: np.ndarray,
+    starts: np.ndarray,
+    single_losses: np.ndarray,
+) -> Mix:
+    """Fit the weights of some structures on out-of-fold predictions.
+
+    posteriors: of each of ``members``, (N, C); single: the one of them that is taken where none is mixed, with its mean
+    losses by fold in bits; structures: how many there are in all; truth (N,); weights (N,): how many rows each stands
+    for; starts (folds + 1,): the first row of each fold. Minimises total log loss (nats) + 2 sum (w - u)^2 over the
+    simplex, where u is all on the single one; weights below .01 are dropped. The loss of a fold is that by weights
+    without it, from one step of Newton's off the weights of all. The mix is taken if it is likely better than the
+    single one.
+
+    Source: Genest & Zidek 1986 (logarithmic opinion pool).
+    """
+    towards = np.array([float(member == single) for member in members])
+    rows = _Rows(_ratios(posteriors, truth), weights, starts[:-1], towards)
+    point, sums = _minimum(rows)
+    whole = np.zeros(structures)
+    whole[list(members)] = np.where(point >= _LEAST, point, 0.0)
+    whole /= whole.sum()
+    if whole[single] == 1.0:
+        return Mix(whole, single_losses, False)
+    losses = _losses_without(rows, point, sums, np.diff(starts))
+    folds = len(losses)
+    return Mix(whole, losses, chances_of(losses, single_losses, folds, 0.0).better > LIKELY)
+
+
+def _ratios(posteriors: Sequence[np.ndarray], truth: np.ndarray) -> np.ndarray:
+    """Take logs, class by class, and subtract those of each row's own class."""
+    out = np.empty((len(posteriors), posteriors[0].shape[1], len(truth)))
+    every = np.arange(len(truth))
+    for k, p in enumerate(posteriors):
+        np.log(np.maximum(p.T, _TINIEST), out=out[k])
+        out[k] -= out[k][truth, every]
+    return out
+
+
+def _minimum(rows: _Rows) -> tuple[np.ndarray, _Sums]:
+    """Find the weights of least penalised loss by damped Newton steps within the simplex, from equal weights."""
+    point = np.full(len(rows.towards), 1 / len(rows.towards))
+    sums = _sums(rows, point)
+    for _ in range(_STEPS):
+        value = _value(rows, point, sums)
+        gradient, hessian = sums.gradient.sum(axis=0), sums.hessian.sum(axis=0)
+        reached = _stepped(rows, point, gradient, hessian)
+        drop = -float(((gradient + 2 * _PENALTY * (point - rows.towards)) * (reached - point)).sum())
+        if drop <= 1e-9 * (1.0 + value):
+            break
+        there = _sums(rows, reached)
+        while _value(rows, reached, there) > value - 1e-4 * drop:
+            drop /= 2
+            reached = (point + reached) / 2
+            there = _sums(rows, reached)
+        point, sums = reached, there
+    return point, sums
+
+
+def _value(rows: _Rows, point: np.ndarray, sums: _Sums) -> float:
+    return float(sums.losses.sum() + _PENALTY * np.square(point - rows.towards).sum())
+
+
+def _stepped(rows: _Rows, point: np.ndarray, gradient: np.ndarray, hessian: np.ndarray) -> np.ndarray:
+    """Minimise the penalised loss over the simplex as its first two derivatives at the point say."""
+    curve = hessian + 2 * _PENALTY * np.eye(len(point))
+    pull = (hessian * point).sum(axis=1) - gradient + 2 * _PENALTY * rows.towards
+    return least_on_simplex(curve, pull, point)
+
+
+def _sums(rows: _Rows, point: np.ndarray) -> _Sums:
+    """Sum losses and their derivatives by the weights fold by fold."""
+    power = _powers(rows.ratios, point)
+    top = power.max(axis=0)
+    p = np.exp(power - top)
+    whole = p.sum(axis=0)
+    p /= whole
+    losses = rows.weights * (np.log(whole) + top)
+    slopes = [(p * own).sum(axis=0) for own in rows.ratios]
+    p *= rows.weights
+    size = len(point)
+    curves = np.empty((size, size, len(rows.starts)))
+    for a in range(size):
+        weighed = p * (rows.ratios[a] - slopes[a])
+        for b in range(a + 1):
+            curves[a, b] = curves[b, a] = np.add.reduceat((weighed * rows.ratios[b]).sum(axis=0), rows.starts)
+    gradient = np.array([np.add.reduceat(rows.weights * slope, rows.starts) for slope in slopes])
+    return _Sums(np.add.reduceat(losses, rows.starts), gradient.T, curves.T)
+
+
+def _powers(ratios: np.ndarray, point: np.ndarray) -> np.ndarray:
+    """Add up weighed log ratios, (C, N)."""
+    power = np.zeros(ratios.shape[1:])
+    for own, weight in zip(ratios, point.tolist(), strict=True):
+        if weight:
+            power += weight * own
+    return power
+
+
+def _losses_without(rows: _Rows, point: np.ndarray, sums: _Sums, sizes: np.ndarray) -> np.ndarray:
+    """Take the mean loss of each fold in bits, mixed by weights that its rows had no part in."""
+    gradient, hessian = sums.gradient.sum(axis=0), sums.hessian.sum(axis=0)
+    losses = np.empty(len(sizes))
+    for k, size in enumerate(sizes.tolist()):
+        part = slice(int(rows.starts[k]), int(rows.starts[k]) + size)
+        own = _stepped(rows, point, gradient - sums.gradient[k], hessian - sums.hessian[k])
+        power = _powers(rows.ratios[:, :, part], own)
+        top = power.max(axis=0)
+        nats = np.log(np.exp(power - top).sum(axis=0)) + top
+        losses[k] = (rows.weights[part] * nats).sum() / max(rows.weights[part].sum(), 1e-300)
+    return np.asarray(losses / np.log(2))
