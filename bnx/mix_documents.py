@@ -1,15 +1,17 @@
 """The mix of structures as plain values ready to be written."""
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 from bnx.comparison import Comparison
+from bnx.formats.mix_json import mixed_document
 from bnx.mix_judging import JudgedMix
 from bnx.mixed_classifier import mix_words
+from bnx.plain import finite
 from bnx.score_entries import against_entry, fold_entries, score_entry
 from bnx.text import signed
 
-__all__ = ["mix_entry"]
+__all__ = ["mix_document", "mix_entry"]
 
 
 def mix_entry(comparison: Comparison) -> dict[str, Any] | None:
@@ -41,6 +43,23 @@ def mix_entry(comparison: Comparison) -> dict[str, Any] | None:
     if comparison.held_out:
         entry["holdout"] = comparison.held_out[-1].to_dict(levels)
     return entry
+
+
+def mix_document(comparison: Comparison, structures: Sequence[Mapping[str, Any]]) -> dict[str, Any]:
+    """Describe the mix with the documents of its members, ready for JSON; structures: documents of all."""
+    mix, entry = comparison.mix, mix_entry(comparison)
+    if mix is None or entry is None:
+        raise ValueError("there is no mix to describe")
+    given = {"words", "members", "by_fold", "honest_if_allowed", "offered", "reason"}
+    document: dict[str, Any] = finite(
+        {
+            **mixed_document([structures[s] for s in mix.members], list(mix.members.values())),
+            "scores": {key: value for key, value in entry.items() if key not in given},
+            "offered": entry["offered"],
+            "reason": entry["reason"],
+        }
+    )
+    return document
 
 
 def mix_reason(mix: JudgedMix, names: Sequence[str], recommended: str) -> str:

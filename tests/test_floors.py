@@ -18,8 +18,8 @@ FLOORS = (
     "tables views blocks columns columnar delimited malformed reading levelling screening duplicates level_order",
     "coarsening gathering passes coding encoding pair_counting engines",
     "parameters trainings dependence families profiling",
-    "tails wide_tables independence classifier mixed_classifier intervals refining sampling scoring tabulating verdicts "
-    "explaining pair_details",
+    "tails wide_tables independence classifier mixed_classifier intervals refining sampling scoring tabulating "
+    "verdicts explaining pair_details",
     "gating doubts drawing formats showing",
     "learners",
     "recipe wide_forests wide wide_learning matrix_memory learning pair_judging many_tests wide_testing wide_judging "

@@ -9,10 +9,11 @@ import pandas as pd
 import typer
 
 from bnx.classifier import Classifier
-from bnx.cli.shared import Overwrite, Quiet, StructureFile, check_spared, opened, say
+from bnx.cli.shared import Overwrite, Quiet, StructureFile, check_spared, opened, opened_mix, say
 from bnx.encoding import encode
 from bnx.errors import SettingError
 from bnx.files import check_free, write_bytes
+from bnx.mixed_classifier import MixedClassifier
 from bnx.reading import Source, open_source
 from bnx.text import count_of, quoted
 
@@ -29,7 +30,7 @@ def run(
     overwrite: Overwrite = False,
     quiet: Quiet = False,
 ) -> None:
-    """Give every class's probability for each record, and the most probable class.
+    """Give every class's probability for each record, and the most probable class, by a structure or a mix.
 
     The result has the columns row (0-based line of data), most_probable, and p:LEVEL for each level of the class.
     Values that the structure does not know are left out of the evidence, with a note.
@@ -42,7 +43,7 @@ def run(
     _check_output(output, overwrite)
     source = open_source(data)
     check_spared(output, source)
-    _, classifier = opened(structure)
+    _, classifier = opened_mix(structure) or opened(structure)
     result, unknown = _classified(classifier, source)
     if output == "-":
         typer.echo(result.to_csv(index=False), nl=False)
@@ -68,7 +69,7 @@ def _check_output(output: str, overwrite: bool) -> None:
     check_free(output, overwrite)
 
 
-def _classified(classifier: Classifier, source: Source) -> tuple[pd.DataFrame, list[str]]:
+def _classified(classifier: Classifier | MixedClassifier, source: Source) -> tuple[pd.DataFrame, list[str]]:
     """Classify every record; also say, attribute by attribute, how many records hold something unknown."""
     parts, unknown = [], np.zeros(len(classifier.domains), np.int64)
     for codes, _ in encode(source, classifier.domains):
