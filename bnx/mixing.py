@@ -42,7 +42,7 @@ class _Rows:
     """Rows to fit on.
 
     ``ratios`` (members, C, N) nats: log posterior of each class less that of the row's own; ``weights`` (N,): how many
-    rows each stands for; ``starts``: the first row of each fold; ``towards`` (members,): the weights of no change.
+    rows each stands for; ``starts``: the first row of each fold that has any; ``towards`` (members,): the weights of no change.
     """
 
     ratios: np.ndarray
@@ -105,15 +105,18 @@ def fit_mix(
     Source: Genest & Zidek 1986 (logarithmic opinion pool).
     """
     towards = np.array([float(member == single) for member in members])
-    rows = _Rows(_ratios(posteriors, truth), weights, starts[:-1], towards)
+    sizes = np.diff(starts)
+    filled = np.flatnonzero(sizes)
+    rows = _Rows(_ratios(posteriors, truth), weights, starts[filled], towards)
     point, sums = _minimum(rows, _guess(rows))
     whole = np.zeros(structures)
     whole[list(members)] = np.where(point >= _LEAST, point, 0.0)
     whole /= whole.sum()
     if whole[single] == 1.0:
         return Mix(whole, single_losses, False)
-    losses = _losses_without(rows, point, sums, np.diff(starts))
-    folds = len(losses)
+    folds = len(sizes)
+    losses = np.zeros(folds)
+    losses[filled] = _losses_without(rows, point, sums, sizes[filled])
     return Mix(whole, losses, chances_of(losses, single_losses, folds, 0.0).better > LIKELY)
 
 

@@ -13,7 +13,7 @@ from jsonschema import Draft202012Validator
 from scipy.optimize import minimize
 from test_schemas import DOCS
 
-from bnx import rating
+from bnx import mixing, rating
 from bnx.choosing import choose
 from bnx.comparison import Comparison
 from bnx.documents import comparison_document, predictions_table, structure_document
@@ -124,6 +124,22 @@ def test_losses_of_a_fold_come_from_weights_without_it() -> None:
         assert found.losses[k] == pytest.approx(
             log_losses(mixed([one[part] for one in p], own), truth[part]).mean(), abs=2e-3
         ), "one step of Newton's is within a few thousandths of a bit of the whole way"
+
+
+def test_folds_without_rows_change_nothing() -> None:
+    p, truth = experts(3, 6)
+    usual, own = fitted(p, truth), fold_losses(p[0], truth)
+    starts = np.array([0, 0, 60, 120, 200, 200])
+    other = fit_mix(p, [0, 1, 2], 0, 3, truth, np.ones(200), starts, np.array([0, *own, 0]))
+    assert other.weights.tolist() == usual.weights.tolist()
+    assert other.losses.tolist() == [0, *usual.losses.tolist(), 0]
+
+
+def test_many_rows_begin_with_a_guess_and_end_at_the_same_place(monkeypatch: pytest.MonkeyPatch) -> None:
+    p, truth = experts(4, 7)
+    usual = fitted(p, truth).weights
+    monkeypatch.setattr(mixing, "_FEW", 20)
+    assert fitted(p, truth).weights == pytest.approx(usual, abs=1e-4)
 
 
 def test_the_best_point_of_a_quadratic_is_found_whatever_is_bound() -> None:
