@@ -42,7 +42,8 @@ class _Rows:
     """Rows to fit on.
 
     ``ratios`` (members, C, N) nats: log posterior of each class less that of the row's own; ``weights`` (N,): how many
-    rows each stands for; ``starts``: the first row of each fold that has any; ``towards`` (members,): the weights of no change.
+    rows each stands for; ``starts``: the first row of each fold that has any; ``towards`` (members,): the weights of no
+    change.
     """
 
     ratios: np.ndarray

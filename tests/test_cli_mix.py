@@ -25,9 +25,8 @@ def results() -> Path:
     with (folder / "table.csv").open("w", newline="", encoding="utf-8") as out:
         writer = csv.writer(out)
         writer.writerow([*(f"a{i}" for i in range(len(columns))), "kind"])
-        writer.writerows(
-            [*(f"v{cell}" for cell in row[:-1]), "pq"[row[-1]]] for row in zip(*columns, target, strict=True)
-        )
+        rows = zip(*columns, target, strict=True)
+        writer.writerows([*(f"v{cell}" for cell in row[:-1]), "pq"[row[-1]]] for row in rows)
     run = call(
         "learn", str(folder / "table.csv"), "--class", "kind", "--structures", "naive,tan,kdb2", *FAST,
         "-o", str(folder / "out"),
@@ -92,9 +91,8 @@ def test_a_mix_is_exported_whole(tmp_path: Path) -> None:
     out = tmp_path / "handed.json"
     assert call("export", str(results() / "out"), "--structure", "mix", "-o", str(out)).code == 0
     assert out.read_text(encoding="utf-8") == (results() / "out/mix.json").read_text(encoding="utf-8")
-    sentence = refusal(
-        "export", str(results() / "out"), "--structure", "mix", "--to", "dot", "-o", str(tmp_path / "x.dot")
-    )
+    given = ("--structure", "mix", "--to", "dot", "-o", str(tmp_path / "x.dot"))
+    sentence = refusal("export", str(results() / "out"), *given)
     assert sentence == "a mix has no edges of its own to draw; export its members, or give --to json"
 
 

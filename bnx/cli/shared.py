@@ -63,7 +63,9 @@ Data = Annotated[
         metavar="DATA", help="CSV or TSV (also .gz, .zst), Parquet file or folder, Arrow file; - for standard input."
     ),
 ]
-StructureFile = Annotated[str, typer.Argument(metavar="NAME.json", help="A structure file of bnx learn or bnx export.")]
+StructureFile = Annotated[
+    str, typer.Argument(metavar="NAME.json", help="A structure file, or a mix, of bnx learn or bnx export.")
+]
 ClassColumn = Annotated[str, typer.Option("--class", metavar="COL", help="The column to classify by.")]
 Numeric = Annotated[Columns, typer.Option("--numeric", metavar="COL,...", help="Treat columns as numeric.")]
 Categorical = Annotated[
