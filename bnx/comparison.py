@@ -119,11 +119,7 @@ def compare(
     learned = first.learned(())
     progress("stability", 0, 0)
     stable = stability(_under("stability", first.engine), learned, folds, learners, bounds, recipe)
-    picks = inner_picks(evaluations)
-    with_mix = mixed_picks(evaluations)
-    results, (honest, mixed) = score(evaluations, (picks, with_mix))
-    mix = judge_mix(evaluations, results, picks, (with_mix, mixed), recipe.structures.index(recipe.baseline), folds)
-    results = results[: len(learners)]
+    picks, results, honest, mix = _scores(evaluations, recipe, folds)
     progress("judging pairs", 0, 0)
     pairs, judged = _tested(first.engine, learned, learners, bounds, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
@@ -239,6 +235,16 @@ def _classifier(evaluation: Evaluation, s: int, coded: Coded) -> Classifier:
         choice.smoothings[s],
         choice.calibrations[s],
     )
+
+
+def _scores(
+    evaluations: Sequence[Evaluation], recipe: Recipe, folds: int
+) -> tuple[list[int], list[StructureScore], Scores, JudgedMix | None]:
+    """Score every structure, what is picked inside every outer fold, which comes first, and the mix."""
+    picks, with_mix = inner_picks(evaluations), mixed_picks(evaluations)
+    results, (honest, mixed) = score(evaluations, (picks, with_mix))
+    mix = judge_mix(evaluations, results, picks, (with_mix, mixed), recipe.structures.index(recipe.baseline), folds)
+    return picks, results[: len(recipe.structures)], honest, mix
 
 
 def _scored(classifiers: Sequence[Classifier], mix: JudgedMix | None) -> list[Classifier | MixedClassifier]:
