@@ -13,29 +13,39 @@ from bnx.structure import Structure
 
 __all__ = ["Heldout", "Judge"]
 
-_LEAST = 1.0  # nats that a move must save, all rows together
+_LEAST = 1.0  # nats that a move must save, all rows together ...
+_ERRORS = 0.0  # ... and standard errors of what it saves
 _CANDIDATES = 12  # the strongest candidates of a child
 _PAIRS = 3  # pairs of candidates of a child that all rows judge
+_AGAIN = 4  # moves of a child that are looked at again after a move elsewhere
 
 Parents = tuple[int, ...]
+Move = tuple[float, Parents]  # what it is worth beyond what it must save (nats), and a child's new parents
+
+_NONE: Move = (-math.inf, ())
 
 
 class Judge(Protocol):
-    """What the search sees of the rows: losses in nats, summed over all rows, each held out once."""
+    """What the search sees of the rows: savings in nats, summed over all rows, each held out once."""
 
-    def loss(self) -> float:
-        """Tell the loss of the structure so far."""
+    def savings(
+        self, child: int, choices: Sequence[Parents], least: float, errors: float
+    ) -> tuple[np.ndarray, np.ndarray]:
+        """Tell what each of K choices of one attribute's parents saves, and its standard error, (K,) each.
 
-    def losses(self, child: int, choices: Sequence[Parents]) -> np.ndarray:
-        """Tell the loss with each of K choices of one attribute's parents, (K,); infinite for one not to be made."""
+        Rough where it is clearly below ``least`` + ``errors`` standard errors; minus infinity for one not to be made.
+        """
 
     def take(self, child: int, parents: Parents) -> None:
         """Give an attribute other parents."""
 
+    def rough(self) -> "Judge":
+        """Judge on fewer rows, from the structure so far; the same where rows are few."""
+
 
 @dataclass(frozen=True)
 class Heldout:
-    """Add, swap or drop parents as long as a move saves more than 1 nat of held-out class log loss, all rows together.
+    """Add, swap or drop parents as long as a move saves held-out class log loss for sure: 1 nat and 1.5 standard errors.
 
     Where no single move does, two parents of one attribute may enter at once, so that interactions are found of which
     neither part is worth anything alone.
@@ -49,86 +59,100 @@ class Heldout:
     looks_at_pairs: bool = True
     tested: bool = False
 
-    def climb(self, judge: Judge, rough: Judge, strength: np.ndarray, bounds: Bounds) -> Structure:
+    def climb(self, judge: Judge, strength: np.ndarray, bounds: Bounds) -> Structure:
         """Search from no edges but the required ones.
 
-        judge: all rows; rough: fewer, by which pairs of parents are sifted, or the same; strength (n, n): bits shared
-        given the class, by which an attribute's 12 candidates are chosen.
+        strength (n, n): bits shared given the class, by which an attribute's 12 candidates are chosen.
         """
         bounds.check_room(self.depths, self.name)
-        search = _Search(judge, rough, self.depths, strength, bounds)
+        search = _Search(judge, self.depths, strength, bounds)
         while search.moves():
             pass
         return Structure(self.name, tuple(search.parents))
 
 
 class _Search:
-    """A search under way: the parents so far, and the best move of every child when it was last looked at.
+    """A search under way: the parents so far, and what every child's moves were worth when last looked at.
 
-    A move changes what all others are worth, mostly by little: the child whose move seemed best is looked at again,
-    until the best is one that was looked at since; before singles are given up, all are looked at again.
+    A move changes what all others are worth, mostly by little: the few best moves of the child whose move seemed best
+    are looked at again, until the best is one that was looked at since; before singles are given up, all are.
     """
 
-    def __init__(self, judge: Judge, rough: Judge, depths: int, strength: np.ndarray, bounds: Bounds) -> None:
+    def __init__(self, judge: Judge, depths: int, strength: np.ndarray, bounds: Bounds) -> None:
         """Begin with the required parents."""
         attributes = range(len(strength))
-        self.judge, self.rough, self.depths, self.bounds = judge, rough, depths, bounds
+        self.judge, self.depths, self.bounds = judge, depths, bounds
         self.parents = [bounds.parents(child) for child in attributes]
         self.candidates = [_candidates(child, strength, bounds) for child in attributes]
-        self.best: list[tuple[float, Parents]] = [
-            (math.inf, ()) for _ in attributes
-        ]  # nats saved, and by which parents
-        self.fresh = [False for _ in attributes]
+        self.known: list[list[Move]] = [[(math.inf, ())] for _ in attributes]  # moves of each child, best first
+        self.fresh = [False for _ in attributes]  # the best one was looked at since the last move
+        self.full = [False for _ in attributes]  # all were
 
     def moves(self) -> bool:
-        """Make the best move, if one saves enough."""
+        """Make the best move, if one is worth it."""
         child = self._single()
         if child is None:
             child = self._pair()
         if child is None:
             return False
-        parents = self.best[child][1]
+        parents = self.known[child][0][1]
         self.judge.take(child, parents)
-        if self.rough is not self.judge:
-            self.rough.take(child, parents)
         self.parents[child] = parents
-        self.best[child] = (math.inf, ())
+        self.known[child] = [(math.inf, ())]
         self.fresh = [False for _ in self.fresh]
+        self.full = [False for _ in self.full]
         return True
 
     def _single(self) -> int | None:
-        """Find the child with the best single move, first in column order among equals; None if none saves enough."""
+        """Find the child with the best single move, first in column order among equals; None if none is worth it."""
         while True:
-            child = max(range(len(self.best)), key=lambda one: (self.best[one][0], -one))
-            if self.best[child][0] > _LEAST and self.fresh[child]:
+            child = max(range(len(self.known)), key=lambda one: (self.known[one][0][0], -one))
+            worth = self.known[child][0][0]
+            if worth > 0 and self.fresh[child]:
                 return child
-            stale = [one for one, fresh in enumerate(self.fresh) if not fresh]
-            if not stale:
-                return None
-            for one in [child] if self.best[child][0] > _LEAST else stale:
-                self.best[one] = self._judged(self.judge, one, self._singles(one))[0]
-                self.fresh[one] = True
+            if math.isinf(worth) and worth > 0:
+                self._look(child)
+            elif worth > 0:
+                self._look_again(child)
+            else:
+                stale = [one for one, full in enumerate(self.full) if not full]
+                if not stale:
+                    return None
+                for one in stale:
+                    self._look(one)
+
+    def _look(self, child: int) -> None:
+        """Look at all single moves of a child."""
+        self.known[child] = self._judged(self.judge, child, self._singles(child), _LEAST, _ERRORS) or [_NONE]
+        self.fresh[child] = self.full[child] = True
+
+    def _look_again(self, child: int) -> None:
+        """Look again at the few moves of a child that seemed best, but for those that would make a cycle by now."""
+        below = self._descendants(child)
+        known = [move for move in self.known[child] if below.isdisjoint(move[1])] or [_NONE]
+        again = self._judged(self.judge, child, [parents for _, parents in known[:_AGAIN]], _LEAST, _ERRORS)
+        self.known[child] = sorted([*again, *known[_AGAIN:]], key=lambda move: -move[0])
+        self.fresh[child] = self.known[child][0] in again
 
     def _pair(self) -> int | None:
         """Find the child that gains most by two more parents at once; None if none gains enough."""
-        found = None
+        found, rough = None, self.judge.rough()
         for child, own in enumerate(self.parents):
             able = self._able(child) if len(own) + 2 <= self.depths else []
             pairs = [(*own, *two) for two in combinations(able, 2)]
-            promising = [pair for saved, pair in self._judged(self.rough, child, pairs)[:_PAIRS] if saved > 0]
-            best = self._judged(self.judge, child, promising)[0]
-            if best[0] > (_LEAST if found is None else self.best[found][0]):
-                found, self.best[child] = child, best
+            promising = [pair for worth, pair in self._judged(rough, child, pairs, 0.0, 0.0)[:_PAIRS] if worth > 0]
+            moves = self._judged(self.judge, child, promising, _LEAST, _ERRORS)
+            if moves and moves[0][0] > (0.0 if found is None else self.known[found][0][0]):
+                found, self.known[child] = child, moves
         return found
 
-    def _judged(self, judge: Judge, child: int, choices: Sequence[Parents]) -> list[tuple[float, Parents]]:
-        """List what each choice of parents saves (nats), most first; at the end that staying as it is saves none."""
-        stay = (0.0, self.parents[child])
+    def _judged(self, judge: Judge, child: int, choices: Sequence[Parents], least: float, errors: float) -> list[Move]:
+        """List what each choice of parents is worth beyond what a move must save, best first."""
         if not choices:
-            return [stay]
-        saved = judge.loss() - judge.losses(child, choices)
-        order = np.argsort(-saved, kind="stable").tolist()
-        return [*((float(saved[k]), choices[k]) for k in order), stay]
+            return []
+        saved, error = judge.savings(child, choices, least, errors)
+        worth = saved - errors * error - least
+        return [(float(worth[k]), choices[k]) for k in np.argsort(-worth, kind="stable").tolist()]
 
     def _able(self, child: int) -> list[int]:
         """List the candidates that are no parents of a child yet, and that it is no ancestor of."""
