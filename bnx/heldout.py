@@ -1,5 +1,6 @@
 """The rows of one training set in inner folds, and the held-out class log loss that a choice of parents has there."""
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from itertools import chain
@@ -20,6 +21,8 @@ STRENGTH = 2.0  # records that tables with one parent less stand for
 _CELLS_PER_ROW = 4  # most cells of a family that is tried
 _FEWEST_CELLS = 1024
 _ROOM = 2**20  # probabilities that are kept for when they are asked for again
+_FAMILIES = 4096  # of which tables are kept
+_MEMBERS = 4  # of a family, as a rule
 _AT_ONCE = 500  # rows that say enough to give up a choice
 _EIGHTHS = 8
 
@@ -91,74 +94,88 @@ def _spread(engine: LocalEngine, blocks: np.ndarray, c: int, share: float) -> np
     return np.asarray(engine.starts[segments[held] + 1] - ends[held] + places)
 
 
-@dataclass(frozen=True)
-class _Families:
-    """Some families as the loops take them: members, codes and levels (K, M), of which ``depths`` (K,) count."""
-
-    members: np.ndarray
-    sizes: np.ndarray
-    levels: np.ndarray
-    depths: np.ndarray
-    cells: np.ndarray
-
-
 class _Tables:
-    """Tables of families, kept for when they are asked for again; those of all parents but the last come first."""
+    """Tables of families, kept for when they are asked for again; those of all parents but the last come first.
 
-    def __init__(self, rows: InnerRows) -> None:
-        """Begin with none."""
-        self._rows = rows
-        self._per_cell = len(rows.starts) - 1
-        self._pool = np.empty(_ROOM)
-        self._places: dict[Family, int] = {}
+    ``pool``: all tables, one after the other; ``members``, ``sizes``, ``levels`` (F, M), ``depths``, ``places`` (F,):
+    of every family, by its number, as ``held_tables`` takes them.
+    """
+
+    def __init__(self, rows: InnerRows, widest: int) -> None:
+        """Begin with none; families have at most ``widest`` members."""
+        self._rows, self._sizes, self._each = rows, rows.sizes.tolist(), len(rows.starts) - 1
+        self.pool = np.empty(_ROOM)
+        self.members, self.sizes, self.levels = (np.empty((_FAMILIES, widest), np.int64) for _ in range(3))
+        self.depths, self.places = np.empty(_FAMILIES, np.int64), np.empty(_FAMILIES, np.int64)
+        self._numbers: dict[Family, int] = {}
         self._used = 0
 
-    def arranged(self, families: Sequence[Family]) -> _Families:
-        """Lay families out side by side."""
-        depths = np.array([len(one) for one in families])
-        used = np.arange(int(depths.max())) < depths[:, None]
-        members = np.zeros(used.shape, np.int64)
-        members[used] = list(chain.from_iterable(families))
-        sizes, levels = (np.where(used, one[members], 1) for one in (self._rows.sizes, self._rows.levels))
-        return _Families(members, sizes, levels, depths, sizes.prod(axis=1, dtype=np.float64))
+    def room_of(self, family: Family) -> int:
+        """Count the probabilities that the table of a family holds."""
+        return self._each * math.prod([self._sizes[member] for member in family])
 
-    def of(self, families: Sequence[Family]) -> tuple[np.ndarray, np.ndarray]:
-        """Give the array that holds the tables of families, and where each begins."""
+    def cells_of(self, family: Family) -> int:
+        """Count the cells of a family, without the class."""
+        return self.room_of(family) // self._each
+
+    def numbers_of(self, families: Sequence[Family]) -> np.ndarray:
+        """Number families whose tables are in the pool from now on, until others are asked for."""
         missing = self._missing(families)
         if missing:
-            wanted = self.arranged(missing)
-            room = (wanted.cells * self._per_cell).astype(np.int64)
-            if self._used + room.sum() > len(self._pool):
-                self._places, self._used = {}, 0
-                missing = self._missing(families)
-                wanted = self.arranged(missing)
-                room = (wanted.cells * self._per_cell).astype(np.int64)
-                if room.sum() > len(self._pool):
-                    self._pool = np.empty(int(room.sum()))
-            self._make(missing, wanted, room)
-        return self._pool, np.array([self._places[one] for one in families])
+            self._make(missing if self._fits(missing) else self._forget(families))
+        known = self._numbers
+        return np.array([known[one] for one in families])
+
+    def fixed(self, families: Sequence[Family]) -> tuple[np.ndarray, ...]:
+        """Give what loops take of families: their numbers, and of all members, sizes, depths, places, and the pool."""
+        which = self.numbers_of(families)
+        return which, self.members, self.sizes, self.depths, self.places, self.pool
 
     def _missing(self, families: Sequence[Family]) -> list[Family]:
         """List the families without a table, and those that their tables are made from, these first."""
-        found: dict[Family, None] = {}
+        known, found = self._numbers, dict[Family, None]()
         for family in families:
-            if family not in self._places:
+            if family not in known:
                 parents, child = family[:-1], family[-1]
                 for depth in range(len(parents)):
-                    if (*parents[:depth], child) not in self._places:
+                    if (*parents[:depth], child) not in known:
                         found[(*parents[:depth], child)] = None
                 found[family] = None
         return list(found)
 
-    def _make(self, families: Sequence[Family], wanted: _Families, room: np.ndarray) -> None:
-        rows = self._rows
-        ends = self._used + np.cumsum(room)
-        places = ends - room
-        self._places.update(zip(families, places.tolist(), strict=True))
+    def _fits(self, missing: Sequence[Family]) -> bool:
+        room = self._used + sum(map(self.room_of, missing))
+        return room <= len(self.pool) and len(self._numbers) + len(missing) <= len(self.depths)
+
+    def _forget(self, families: Sequence[Family]) -> list[Family]:
+        """Forget all tables, and make room for those of some families, which are listed with what they are made from."""
+        self._numbers, self._used = {}, 0
+        missing = self._missing(families)
+        if not self._fits(missing):
+            wide = np.empty((2 * len(missing), self.members.shape[1]), np.int64)
+            self.members, self.sizes, self.levels = wide, wide.copy(), wide.copy()
+            self.depths, self.places = np.empty(len(wide), np.int64), np.empty(len(wide), np.int64)
+            self.pool = np.empty(max(len(self.pool), sum(map(self.room_of, missing))))
+        return missing
+
+    def _make(self, families: Sequence[Family]) -> None:
+        """Make the tables of families that follow what they are made from."""
+        rows, first = self._rows, len(self._numbers)
+        part = slice(first, first + len(families))
+        self._numbers.update(zip(families, range(part.start, part.stop), strict=True))
+        self.depths[part] = [len(one) for one in families]
+        used = np.arange(self.members.shape[1]) < self.depths[part, None]
+        members = np.zeros(used.shape, np.int64)
+        members[used] = list(chain.from_iterable(families))
+        self.members[part] = members
+        self.sizes[part], self.levels[part] = (np.where(used, one[members], 1) for one in (rows.sizes, rows.levels))
+        ends = self._used + np.cumsum([self.room_of(one) for one in families])
+        self.places[part] = [self._used, *ends[:-1]]
         self._used = int(ends[-1])
-        above = np.array([self._places[(*one[:-2], one[-1])] if len(one) > 1 else 0 for one in families])
-        fixed = (wanted.members, wanted.sizes, wanted.levels, wanted.depths, STRENGTH)
-        held_tables(rows.codes, rows.starts, len(rows.floor), *fixed, above, places, self._pool)
+        numbers = [self._numbers[(*one[:-2], one[-1])] if len(one) > 1 else 0 for one in families]
+        laid = (self.members[part], self.sizes[part], self.levels[part], self.depths[part], STRENGTH)
+        places = (self.places[numbers], self.places[part])
+        held_tables(rows.codes, rows.starts, len(rows.floor), *laid, *places, self.pool)
 
 
 class RowJudge:
@@ -173,15 +190,13 @@ class RowJudge:
         """Start from a structure."""
         self.rows = rows
         self.parents = list(parents)
-        self._tables = _Tables(rows)
+        self._tables = _Tables(rows, max(_MEMBERS, 1 + max(map(len, self.parents))))
         self._weights = np.empty((len(rows.floor), rows.codes.shape[1]))
         self._present = np.ones(rows.codes.shape[1])
-        families = [(*own, child) for child, own in enumerate(self.parents)]
-        pool, places = self._tables.of(families)
-        laid = self._tables.arranged(families)
-        fixed = (laid.members, laid.sizes, laid.depths, places, pool, rows.log_prior)
-        held_weights(rows.codes, rows.starts, *fixed, self._weights)
+        fixed = self._tables.fixed([(*own, child) for child, own in enumerate(self.parents)])
+        held_weights(rows.codes, rows.starts, *fixed, rows.log_prior, self._weights)
         self._settle()
+        self._first = self._present.copy()
         first = np.array([1, 2, 4, 8])
         n = rows.codes.shape[1]
         self._stages = first[np.append(first[:-1] * n >= _EIGHTHS * _AT_ONCE, True)]
@@ -204,33 +219,42 @@ class RowJudge:
         What some of the rows show not to save ``least`` and ``errors`` standard errors is estimated from these. It is
         minus infinity for a family of more than 4 cells a row (of more than 1,024, where rows are few).
         """
-        own = (*self.parents[child], child)
-        laid = self._tables.arranged([own, *((*parents, child) for parents in choices)])
-        able = np.flatnonzero(laid.cells[1:] <= max(_FEWEST_CELLS, _CELLS_PER_ROW * self.rows.codes.shape[1]))
+        rows, own = self.rows, (*self.parents[child], child)
+        most = max(_FEWEST_CELLS, _CELLS_PER_ROW * rows.codes.shape[1])
         found = np.full((2, len(choices)), [[-np.inf], [0.0]])
-        batch = (laid.cells[1:][able].cumsum() * len(self.rows.starts) // _ROOM).astype(np.int64)
-        for number in np.unique(batch).tolist():
-            some = able[batch == number]
-            found[:, some] = self._replaced([own, *((*choices[k], child) for k in some.tolist())], least, errors)
-        return found[0], found[1]
+        families = [(*parents, child) for parents in choices]
+        able = [k for k, family in enumerate(families) if self._tables.cells_of(family) <= most]
+        for some in self._batches(able, families):
+            out = np.empty((2, len(some)))
+            fixed = self._tables.fixed([own, *(families[k] for k in some)])
+            state = (self._weights, rows.floor, self._present, self._stages, least, errors)
+            replaced_savings(rows.codes, rows.starts, *fixed, *state, out)
+            found[:, some] = out
+        found[1] -= np.where(np.isinf(found[0]), 0.0, found[0]) ** 2 / max(1, rows.codes.shape[1])
+        return found[0], np.sqrt(np.maximum(found[1], 0.0))
 
-    def _replaced(self, families: Sequence[Family], least: float, errors: float) -> np.ndarray:
-        """Tell savings and standard errors (2, K) of all families but the first, which is that of now."""
-        rows, laid = self.rows, self._tables.arranged(families)
-        pool, places = self._tables.of(families)
-        out = np.empty((2, len(families) - 1))
-        fixed = (laid.members, laid.sizes, laid.depths, places, pool, self._weights, rows.floor, self._present)
-        replaced_savings(rows.codes, rows.starts, *fixed, self._stages, least, errors, out)
-        out[1] = np.sqrt(np.maximum(out[1] - out[0] ** 2 / max(1, rows.codes.shape[1]), 0.0))
-        return out
+    def _batches(self, able: Sequence[int], families: Sequence[Family]) -> list[list[int]]:
+        """Cut what is to be judged into as much as there is room for."""
+        batches: list[list[int]] = []
+        room = _ROOM
+        for k in able:
+            wanted = self._tables.room_of(families[k])
+            if not batches or room < wanted:
+                batches.append([])
+                room = _ROOM
+            batches[-1].append(k)
+            room -= wanted
+        return batches
+
+    def path(self) -> tuple[float, float]:
+        """Tell what all moves so far have saved together (nats, all rows), and its standard error."""
+        saved = np.log(self._first / self._present)
+        return float(saved.sum()), float(saved.std() * np.sqrt(len(saved)))
 
     def take(self, child: int, parents: Family) -> None:
         """Give an attribute other parents."""
-        families = [(*self.parents[child], child), (*parents, child)]
-        pool, places = self._tables.of(families)
-        laid = self._tables.arranged(families)
-        fixed = (laid.members, laid.sizes, laid.depths, places, pool, self._weights)
-        replace_family(self.rows.codes, self.rows.starts, *fixed)
+        fixed = self._tables.fixed([(*self.parents[child], child), (*parents, child)])
+        replace_family(self.rows.codes, self.rows.starts, *fixed, self._weights)
         self.parents[child] = parents
         self._settle()
 

@@ -1,6 +1,6 @@
 """Loops that say what held-out class log loss becomes when one family is replaced by others, one at a time.
 
-Rows come sorted by inner fold and class, codes as the training set sees them, and any first part of a fold's rows of one
+Rows come sorted by inner fold and class, codes as the training set sees them; any first part of a fold's rows of one
 class is a fair sample of them. Tables are those of ``held_tables``: each fold's are learnt from the others.
 """
 
@@ -21,6 +21,7 @@ _SURE = 2.0  # standard errors that what a part of the rows says may be off
 def replaced_savings(
     codes: np.ndarray,
     starts: np.ndarray,
+    which: np.ndarray,
     members: np.ndarray,
     sizes: np.ndarray,
     depths: np.ndarray,
@@ -36,10 +37,11 @@ def replaced_savings(
 ) -> None:
     """Sum what each of K families in the place of another saves of the held-out log losses (nats) of all rows.
 
-    codes (n, N); starts (folds * C + 1,): first row of each fold and class; members, sizes (1 + K, M), depths, places
-    (1 + K,) as in ``held_tables``, first the family that is replaced; weights (C, N): of each class with the family
-    that is replaced, 0 for a class without a row in the other folds, whose rows are skipped; floor (C,): added to each
-    chance, which is scaled down so that all sum to 1; present (N,): 1 / chance of the true class so far.
+    codes (n, N); starts (folds * C + 1,): first row of each fold and class; which (1 + K,): numbers of families among
+    those of members, sizes (F, M), depths, places (F,), as in ``held_tables``, first the family that is replaced;
+    weights (C, N): of each class with this family, 0 for a class without a row in the other folds, whose rows are
+    skipped; floor (C,): added to each chance, which is scaled down so that all sum to 1; present (N,): 1 / chance of
+    the true class so far.
 
     stages: rising numbers, the last one the number of parts that all rows are cut into: after so many parts a family is
     given up whose saving is then below ``least`` + ``errors`` standard errors, and by two more of what the part is off.
@@ -47,7 +49,7 @@ def replaced_savings(
     """
     classes, rows = weights.shape
     rest = np.empty((classes, rows))
-    _take_away(codes, starts, members, sizes, depths[0], places[0], pool, weights, rest)
+    _take_away(codes, starts, members, sizes, which[0], depths[which[0]], places[which[0]], pool, weights, rest)
     cells, whole, own = np.empty(_ROWS, np.uint32), np.empty(_ROWS), np.empty(_ROWS)
     scale = _scale(floor)
     sums = np.empty(2)
@@ -56,8 +58,9 @@ def replaced_savings(
         if starts[s] < starts[s + 1] and weights[s % classes, starts[s]] > 0.0:
             used += starts[s + 1] - starts[s]
     parts = stages[stages.size - 1]
-    for k in range(1, depths.size):
-        size = _cells_of(sizes, k, depths[k])
+    for k in range(1, which.size):
+        f = which[k]
+        size = _cells_of(sizes, f, depths[f])
         sums[0] = sums[1] = 0.0
         seen = 0
         for stage in range(stages.size):
@@ -66,12 +69,12 @@ def replaced_savings(
                 y, length = s % classes, starts[s + 1] - starts[s]
                 if length == 0 or rest[y, starts[s]] == 0.0:
                     continue
-                first = places[k] + (s - y) * size
+                first = places[f] + (s - y) * size
                 start, end = starts[s] + length * begin // parts, starts[s] + length * stages[stage] // parts
                 seen += end - start
                 for low in range(start, end, _ROWS):
                     high = min(low + _ROWS, end)
-                    _number(codes, members, sizes, k, depths[k], low, high, cells)
+                    _number(codes, members, sizes, f, depths[f], low, high, cells)
                     _add_block(rest, cells, pool, first, size, y, low, high, scale, floor[y], present, whole, own, sums)
             if seen < used and seen > 0:
                 mean = sums[0] / seen
@@ -146,6 +149,7 @@ def _sum_of_logs(x: np.ndarray, rows: int) -> float:
 def replace_family(
     codes: np.ndarray,
     starts: np.ndarray,
+    which: np.ndarray,
     members: np.ndarray,
     sizes: np.ndarray,
     depths: np.ndarray,
@@ -156,14 +160,15 @@ def replace_family(
     """Give weights (C, N) the second of two families in the place of the first; the heaviest is 1 again."""
     classes, rows = weights.shape
     rest = np.empty((classes, rows))
-    _take_away(codes, starts, members, sizes, depths[0], places[0], pool, weights, rest)
+    _take_away(codes, starts, members, sizes, which[0], depths[which[0]], places[which[0]], pool, weights, rest)
     cells, top = np.empty(_ROWS, np.uint32), np.empty(_ROWS)
-    size, lowest = _cells_of(sizes, 1, depths[1]), np.exp(_LOWEST)
+    f = which[1]
+    size, lowest = _cells_of(sizes, f, depths[f]), np.exp(_LOWEST)
     for s in range(starts.size - 1):
-        first = places[1] + (s - s % classes) * size
+        first = places[f] + (s - s % classes) * size
         for low in range(starts[s], starts[s + 1], _ROWS):
             high = min(low + _ROWS, starts[s + 1])
-            _number(codes, members, sizes, 1, depths[1], low, high, cells)
+            _number(codes, members, sizes, f, depths[f], low, high, cells)
             for k in range(high - low):
                 top[k] = 0.0
             for c in range(classes):
@@ -204,6 +209,7 @@ def present_loss(starts: np.ndarray, weights: np.ndarray, floor: np.ndarray, pre
 def held_weights(
     codes: np.ndarray,
     starts: np.ndarray,
+    which: np.ndarray,
     members: np.ndarray,
     sizes: np.ndarray,
     depths: np.ndarray,
@@ -222,15 +228,15 @@ def held_weights(
         for c in range(classes):
             for row in range(starts[s], starts[s + 1]):
                 out[c, row] = log_prior[s // classes, c]
-        for k in range(depths.size):
-            size = _cells_of(sizes, k, depths[k])
-            first = places[k] + (s - s % classes) * size
+        for f in which:
+            size = _cells_of(sizes, f, depths[f])
+            first = places[f] + (s - s % classes) * size
             logs = np.empty(classes * size)
             for cell in range(logs.size):
                 logs[cell] = np.log(pool[first + cell])
             for low in range(starts[s], starts[s + 1], _ROWS):
                 high = min(low + _ROWS, starts[s + 1])
-                _number(codes, members, sizes, k, depths[k], low, high, cells)
+                _number(codes, members, sizes, f, depths[f], low, high, cells)
                 for c in range(classes):
                     for row in range(high - low):
                         out[c, low + row] += logs[c * size + cells[row]]
@@ -256,6 +262,7 @@ def _take_away(
     starts: np.ndarray,
     members: np.ndarray,
     sizes: np.ndarray,
+    f: int,
     depth: int,
     place: int,
     pool: np.ndarray,
@@ -264,13 +271,13 @@ def _take_away(
 ) -> None:
     """Write the weights of classes (C, N) without what the table of the first family says."""
     classes = weights.shape[0]
-    size = _cells_of(sizes, 0, depth)
+    size = _cells_of(sizes, f, depth)
     cells = np.empty(_ROWS, np.uint32)
     for s in range(starts.size - 1):
         first = place + (s - s % classes) * size
         for low in range(starts[s], starts[s + 1], _ROWS):
             high = min(low + _ROWS, starts[s + 1])
-            _number(codes, members, sizes, 0, depth, low, high, cells)
+            _number(codes, members, sizes, f, depth, low, high, cells)
             for c in range(classes):
                 table = pool[first + c * size : first + (c + 1) * size]
                 for k in range(high - low):
@@ -278,11 +285,11 @@ def _take_away(
 
 
 @inlined
-def _cells_of(sizes: np.ndarray, k: int, depth: int) -> int:
+def _cells_of(sizes: np.ndarray, f: int, depth: int) -> int:
     """Count the cells of a family."""
     cells = 1
     for m in range(depth):
-        cells *= sizes[k, m]
+        cells *= sizes[f, m]
     return cells
 
 
@@ -300,16 +307,16 @@ def _number(
     codes: np.ndarray,
     members: np.ndarray,
     sizes: np.ndarray,
-    k: int,
+    f: int,
     depth: int,
     low: int,
     high: int,
     cells: np.ndarray,
 ) -> None:
-    """Number the joint level of some rows in family k, the last member fastest."""
+    """Number the joint level of some rows in family f, the last member fastest."""
     for row in range(high - low):
         cells[row] = 0
     for m in range(depth):
-        size, own = np.uint32(sizes[k, m]), codes[members[k, m], low:high]
+        size, own = np.uint32(sizes[f, m]), codes[members[f, m], low:high]
         for row in range(high - low):
             cells[row] = cells[row] * size + np.uint32(own[row])

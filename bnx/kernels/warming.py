@@ -32,12 +32,13 @@ LATE: tuple[tuple[Callable[..., Any], tuple[Any, ...]], ...] = (
         held_tables,
         (_CODES, _WHOLE, int64, _WHOLES, _WHOLES, _WHOLES, _WHOLE, float64, _WHOLE, _WHOLE, _REAL),
     ),
-    (held_weights, (_CODES, _WHOLE, _WHOLES, _WHOLES, _WHOLE, _WHOLE, _REAL, _REALS, _REALS)),
+    (held_weights, (_CODES, _WHOLE, _WHOLE, _WHOLES, _WHOLES, _WHOLE, _WHOLE, _REAL, _REALS, _REALS)),
     (present_loss, (_WHOLE, _REALS, _REAL, _REAL)),
     (
         replaced_savings,
         (
             _CODES,
+            _WHOLE,
             _WHOLE,
             _WHOLES,
             _WHOLES,
@@ -53,7 +54,7 @@ LATE: tuple[tuple[Callable[..., Any], tuple[Any, ...]], ...] = (
             _REALS,
         ),
     ),
-    (replace_family, (_CODES, _WHOLE, _WHOLES, _WHOLES, _WHOLE, _WHOLE, _REAL, _REALS)),
+    (replace_family, (_CODES, _WHOLE, _WHOLE, _WHOLES, _WHOLES, _WHOLE, _WHOLE, _REAL, _REALS)),
     (ratio_tables, (_COUNTS, _WHOLE, _WHOLES, _WHOLE, _WHOLE, _REALS, _TRUE, _WHOLE, _REALS)),
     (
         add_terms,

@@ -14,7 +14,8 @@ from bnx.structure import Structure
 __all__ = ["Heldout", "Judge"]
 
 _LEAST = 1.0  # nats that a move must save, all rows together ...
-_ERRORS = 0.0  # ... and standard errors of what it saves
+_ERRORS = 1.0  # ... and standard errors of what it saves
+_PATH_ERRORS = 2.0  # standard errors by which all moves together must save
 _CANDIDATES = 12  # the strongest candidates of a child
 _PAIRS = 3  # pairs of candidates of a child that all rows judge
 _AGAIN = 4  # moves of a child that are looked at again after a move elsewhere
@@ -38,6 +39,9 @@ class Judge(Protocol):
 
     def take(self, child: int, parents: Parents) -> None:
         """Give an attribute other parents."""
+
+    def path(self) -> tuple[float, float]:
+        """Tell what all moves so far have saved together, and its standard error."""
 
     def rough(self) -> "Judge":
         """Judge on fewer rows, from the structure so far; the same where rows are few."""
@@ -66,9 +70,12 @@ class Heldout:
         """
         bounds.check_room(self.depths, self.name)
         search = _Search(judge, self.depths, strength, bounds)
+        best, found = 0.0, tuple(search.parents)
         while search.moves():
-            pass
-        return Structure(self.name, tuple(search.parents))
+            saved, error = judge.path()
+            if saved - _PATH_ERRORS * error >= best:
+                best, found = saved - _PATH_ERRORS * error, tuple(search.parents)
+        return Structure(self.name, found)
 
 
 class _Search:
@@ -86,7 +93,8 @@ class _Search:
         self.candidates = [_candidates(child, strength, bounds) for child in attributes]
         self.known: list[list[Move]] = [[(math.inf, ())] for _ in attributes]  # moves of each child, best first
         self.fresh = [False for _ in attributes]  # the best one was looked at since the last move
-        self.full = [False for _ in attributes]  # all were
+        self.saved = 0.0  # nats, by all moves so far
+        self.looked = [-math.inf for _ in attributes]  # what was saved when all moves of each child were last seen
 
     def moves(self) -> bool:
         """Make the best move, if one is worth it."""
@@ -96,11 +104,11 @@ class _Search:
         if child is None:
             return False
         parents = self.known[child][0][1]
+        self.saved += self.known[child][0][0]
         self.judge.take(child, parents)
         self.parents[child] = parents
-        self.known[child] = [(math.inf, ())]
+        self.known[child], self.looked[child] = [(math.inf, ())], -math.inf
         self.fresh = [False for _ in self.fresh]
-        self.full = [False for _ in self.full]
         return True
 
     def _single(self) -> int | None:
@@ -110,21 +118,29 @@ class _Search:
             worth = self.known[child][0][0]
             if worth > 0 and self.fresh[child]:
                 return child
-            if math.isinf(worth) and worth > 0:
-                self._look(child)
-            elif worth > 0:
-                self._look_again(child)
-            else:
-                stale = [one for one, full in enumerate(self.full) if not full]
-                if not stale:
-                    return None
-                for one in stale:
-                    self._look(one)
+            if worth > 0:
+                self._look(child) if math.isinf(worth) else self._look_again(child)
+                continue
+            stale = [one for one, saved in enumerate(self.looked) if saved < self.saved]
+            if not stale:
+                return None
+            for one in stale:
+                self._look(one)
 
     def _look(self, child: int) -> None:
-        """Look at all single moves of a child."""
-        self.known[child] = self._judged(self.judge, child, self._singles(child), _LEAST, _ERRORS) or [_NONE]
-        self.fresh[child] = self.full[child] = True
+        """Look at all single moves of a child that may be worth it by now.
+
+        Those that were not are left out if what was saved since would not make up for it: a move seldom raises what
+        another saves by more than it saves itself.
+        """
+        since = self.saved - self.looked[child]
+        before = {parents: worth for worth, parents in self.known[child]}
+        singles = self._singles(child)
+        out = [(before[one], one) for one in singles if before.get(one, math.inf) + since <= 0]
+        left = {parents for _, parents in out}
+        found = self._judged(self.judge, child, [one for one in singles if one not in left], _LEAST, _ERRORS)
+        self.known[child] = [*found, *sorted(out, key=lambda move: -move[0])] or [_NONE]
+        self.fresh[child], self.looked[child] = True, self.saved
 
     def _look_again(self, child: int) -> None:
         """Look again at the few moves of a child that seemed best, but for those that would make a cycle by now."""
@@ -151,7 +167,8 @@ class _Search:
         if not choices:
             return []
         saved, error = judge.savings(child, choices, least, errors)
-        worth = saved - errors * error - least
+        short = saved - errors * error - least
+        worth = np.where(short > 0, saved, short)
         return [(float(worth[k]), choices[k]) for k in np.argsort(-worth, kind="stable").tolist()]
 
     def _able(self, child: int) -> list[int]:
