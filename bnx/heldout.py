@@ -2,17 +2,17 @@
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
-from itertools import chain
+from dataclasses import dataclass
 
 import numpy as np
 
 from bnx.engines import LocalEngine
 from bnx.kernels.held_tables import held_tables
+from bnx.kernels.misfits import misfits
 from bnx.kernels.replacing import held_weights, present_loss, replace_family, replaced_savings
 from bnx.trainings import Training
 
-__all__ = ["MOST_ROWS", "MOST_ROWS_FOR_PAIRS", "InnerRows", "RowJudge", "fewer_rows", "inner_rows"]
+__all__ = ["MOST_ROWS", "MOST_ROWS_FOR_PAIRS", "InnerRows", "RowJudge", "inner_rows"]
 
 MOST_ROWS = 10_000
 MOST_ROWS_FOR_PAIRS = 1_000
@@ -60,16 +60,6 @@ def inner_rows(engine: LocalEngine, training: Training, most: int) -> InnerRows:
     return InnerRows(codes, view.codes, view.sizes, *_classes_of(rows))
 
 
-def fewer_rows(rows: InnerRows, most: int) -> InnerRows:
-    """Keep about ``most`` rows, the first of every fold and class."""
-    lengths = np.diff(rows.starts)
-    kept = np.ceil(lengths * min(1.0, most / max(int(lengths.sum()), 1))).astype(np.int64)
-    index = np.concatenate([start + np.arange(n) for start, n in zip(rows.starts[:-1].tolist(), kept, strict=True)])
-    starts, log_prior, floor = _classes_of(kept)
-    codes = np.take(rows.codes, index, axis=1)
-    return replace(rows, codes=codes, starts=starts, log_prior=log_prior, floor=floor)
-
-
 def _classes_of(rows: np.ndarray) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     """Give starts, log prior and floor of so many rows (folds * C,) of each fold and class."""
     by_fold = rows.reshape(INNER_FOLDS, -1)
@@ -103,7 +93,8 @@ class _Tables:
 
     def __init__(self, rows: InnerRows, widest: int) -> None:
         """Begin with none; families have at most ``widest`` members."""
-        self._rows, self._sizes, self._each = rows, rows.sizes.tolist(), len(rows.starts) - 1
+        self._rows, self._each = rows, len(rows.starts) - 1
+        self._sizes, self._levels = rows.sizes.tolist(), rows.levels.tolist()
         self.pool = np.empty(_ROOM)
         self.members, self.sizes, self.levels = (np.empty((_FAMILIES, widest), np.int64) for _ in range(3))
         self.depths, self.places = np.empty(_FAMILIES, np.int64), np.empty(_FAMILIES, np.int64)
@@ -164,18 +155,18 @@ class _Tables:
         part = slice(first, first + len(families))
         self._numbers.update(zip(families, range(part.start, part.stop), strict=True))
         self.depths[part] = [len(one) for one in families]
-        used = np.arange(self.members.shape[1]) < self.depths[part, None]
-        members = np.zeros(used.shape, np.int64)
-        members[used] = list(chain.from_iterable(families))
-        self.members[part] = members
-        self.sizes[part], self.levels[part] = (np.where(used, one[members], 1) for one in (rows.sizes, rows.levels))
+        rest = [(0,) * (self.members.shape[1] - len(one)) for one in families]
+        self.members[part] = [one + more for one, more in zip(families, rest, strict=True)]
+        ones = [(1,) * len(more) for more in rest]
+        for laid, known in ((self.sizes, self._sizes), (self.levels, self._levels)):
+            laid[part] = [(*(known[i] for i in one), *more) for one, more in zip(families, ones, strict=True)]
         ends = self._used + np.cumsum([self.room_of(one) for one in families])
         self.places[part] = [self._used, *ends[:-1]]
         self._used = int(ends[-1])
         numbers = [self._numbers[(*one[:-2], one[-1])] if len(one) > 1 else 0 for one in families]
-        laid = (self.members[part], self.sizes[part], self.levels[part], self.depths[part], STRENGTH)
+        fixed = (self.members[part], self.sizes[part], self.levels[part], self.depths[part], STRENGTH)
         places = (self.places[numbers], self.places[part])
-        held_tables(rows.codes, rows.starts, len(rows.floor), *laid, *places, self.pool)
+        held_tables(rows.codes, rows.starts, len(rows.floor), *fixed, *places, self.pool)
 
 
 class RowJudge:
@@ -197,15 +188,24 @@ class RowJudge:
         held_weights(rows.codes, rows.starts, *fixed, rows.log_prior, self._weights)
         self._settle()
         self._first = self._present.copy()
-        first = np.array([1, 2, 4, 8])
-        n = rows.codes.shape[1]
+        n, first = rows.codes.shape[1], np.array([1, 2, 4, 8])
+        self._most = max(_FEWEST_CELLS, _CELLS_PER_ROW * n)
         self._stages = first[np.append(first[:-1] * n >= _EIGHTHS * _AT_ONCE, True)]
 
-    def rough(self) -> "RowJudge":
-        """Judge on fewer rows what a sieve can do with: from the structure so far."""
-        if self.rows.codes.shape[1] <= MOST_ROWS_FOR_PAIRS:
-            return self
-        return RowJudge(fewer_rows(self.rows, MOST_ROWS_FOR_PAIRS), self.parents)
+    def misfits(self, families: Sequence[Family]) -> np.ndarray:
+        """Tell how far the classes in the cells of families of one size are from their chances so far, (K,).
+
+        In standard deviations, on at most 1,000 rows; minus infinity for a family that is not to be tried.
+        """
+        lengths, found = np.diff(self.rows.starts), np.full(len(families), -np.inf)
+        taken = np.ceil(lengths * min(1.0, MOST_ROWS_FOR_PAIRS / max(1, int(lengths.sum())))).astype(np.int64)
+        able = [k for k, family in enumerate(families) if self._tables.cells_of(family) <= self._most]
+        if able:
+            members = np.array([families[k] for k in able])
+            out = np.empty(len(able))
+            misfits(self.rows.codes, self.rows.starts, taken, self._weights, members, self.rows.sizes[members], out)
+            found[able] = out
+        return found
 
     def loss(self) -> float:
         """Tell the loss of the structure so far (nats)."""
@@ -220,10 +220,9 @@ class RowJudge:
         minus infinity for a family of more than 4 cells a row (of more than 1,024, where rows are few).
         """
         rows, own = self.rows, (*self.parents[child], child)
-        most = max(_FEWEST_CELLS, _CELLS_PER_ROW * rows.codes.shape[1])
         found = np.full((2, len(choices)), [[-np.inf], [0.0]])
         families = [(*parents, child) for parents in choices]
-        able = [k for k, family in enumerate(families) if self._tables.cells_of(family) <= most]
+        able = [k for k, family in enumerate(families) if self._tables.cells_of(family) <= self._most]
         for some in self._batches(able, families):
             out = np.empty((2, len(some)))
             fixed = self._tables.fixed([own, *(families[k] for k in some)])

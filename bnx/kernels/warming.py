@@ -14,6 +14,7 @@ from numba import boolean, float64, int32, int64, uint8
 
 from bnx.kernels.chance import expected_nats
 from bnx.kernels.held_tables import held_tables
+from bnx.kernels.misfits import misfits
 from bnx.kernels.montecarlo import monte_carlo_tail
 from bnx.kernels.posterior import calibrated_loss, calibration_sums, posteriors, slope_sums
 from bnx.kernels.ranking import pack_scores, rank_sums, sort_whole
@@ -55,6 +56,7 @@ LATE: tuple[tuple[Callable[..., Any], tuple[Any, ...]], ...] = (
         ),
     ),
     (replace_family, (_CODES, _WHOLE, _WHOLE, _WHOLES, _WHOLES, _WHOLE, _WHOLE, _REAL, _REALS)),
+    (misfits, (_CODES, _WHOLE, _WHOLE, _REALS, _WHOLES, _WHOLES, _REAL)),
     (ratio_tables, (_COUNTS, _WHOLE, _WHOLES, _WHOLE, _WHOLE, _REALS, _TRUE, _WHOLE, _REALS)),
     (
         add_terms,

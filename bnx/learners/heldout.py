@@ -3,7 +3,8 @@
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
-from itertools import combinations
+from itertools import combinations, groupby
+from operator import itemgetter
 from typing import Protocol
 
 import numpy as np
@@ -17,6 +18,7 @@ _LEAST = 1.0  # nats that a move must save, all rows together ...
 _ERRORS = 1.0  # ... and standard errors of what it saves
 _PATH_ERRORS = 2.0  # standard errors by which all moves together must save
 _CANDIDATES = 12  # the strongest candidates of a child
+_MISFIT = 0.0  # standard deviations by which classes must be off in the cells of three attributes
 _PAIRS = 3  # pairs of candidates of a child that all rows judge
 _AGAIN = 4  # moves of a child that are looked at again after a move elsewhere
 
@@ -43,8 +45,8 @@ class Judge(Protocol):
     def path(self) -> tuple[float, float]:
         """Tell what all moves so far have saved together, and its standard error."""
 
-    def rough(self) -> "Judge":
-        """Judge on fewer rows, from the structure so far; the same where rows are few."""
+    def misfits(self, families: Sequence[Parents]) -> np.ndarray:
+        """Tell how far the classes in the cells of K families are from their chances so far, in standard deviations."""
 
 
 @dataclass(frozen=True)
@@ -138,7 +140,7 @@ class _Search:
         singles = self._singles(child)
         out = [(before[one], one) for one in singles if before.get(one, math.inf) + since <= 0]
         left = {parents for _, parents in out}
-        found = self._judged(self.judge, child, [one for one in singles if one not in left], _LEAST, _ERRORS)
+        found = self._judged(child, [one for one in singles if one not in left])
         self.known[child] = [*found, *sorted(out, key=lambda move: -move[0])] or [_NONE]
         self.fresh[child], self.looked[child] = True, self.saved
 
@@ -146,28 +148,31 @@ class _Search:
         """Look again at the few moves of a child that seemed best, but for those that would make a cycle by now."""
         below = self._descendants(child)
         known = [move for move in self.known[child] if below.isdisjoint(move[1])] or [_NONE]
-        again = self._judged(self.judge, child, [parents for _, parents in known[:_AGAIN]], _LEAST, _ERRORS)
+        again = self._judged(child, [parents for _, parents in known[:_AGAIN]])
         self.known[child] = sorted([*again, *known[_AGAIN:]], key=lambda move: -move[0])
         self.fresh[child] = self.known[child][0] in again
 
     def _pair(self) -> int | None:
         """Find the child that gains most by two more parents at once; None if none gains enough."""
-        found, rough = None, self.judge.rough()
-        for child, own in enumerate(self.parents):
-            able = self._able(child) if len(own) + 2 <= self.depths else []
-            pairs = [(*own, *two) for two in combinations(able, 2)]
-            promising = [pair for worth, pair in self._judged(rough, child, pairs, 0.0, 0.0)[:_PAIRS] if worth > 0]
-            moves = self._judged(self.judge, child, promising, _LEAST, _ERRORS)
+        able = [self._able(child) if len(own) + 2 <= self.depths else [] for child, own in enumerate(self.parents)]
+        pairs = [(child, two) for child, some in enumerate(able) for two in combinations(some, 2)]
+        triples = list(dict.fromkeys(tuple(sorted((child, *two))) for child, two in pairs))
+        misfit = dict(zip(triples, self.judge.misfits(triples).tolist(), strict=True))
+        found = None
+        for child, some in groupby(pairs, key=itemgetter(0)):
+            promising = sorted((-misfit[tuple(sorted((child, *two)))], two) for _, two in some)[:_PAIRS]
+            choices = [(*self.parents[child], *two) for less, two in promising if -less > _MISFIT]
+            moves = self._judged(child, choices)
             if moves and moves[0][0] > (0.0 if found is None else self.known[found][0][0]):
                 found, self.known[child] = child, moves
         return found
 
-    def _judged(self, judge: Judge, child: int, choices: Sequence[Parents], least: float, errors: float) -> list[Move]:
+    def _judged(self, child: int, choices: Sequence[Parents]) -> list[Move]:
         """List what each choice of parents is worth beyond what a move must save, best first."""
         if not choices:
             return []
-        saved, error = judge.savings(child, choices, least, errors)
-        short = saved - errors * error - least
+        saved, error = self.judge.savings(child, choices, _LEAST, _ERRORS)
+        short = saved - _ERRORS * error - _LEAST
         worth = np.where(short > 0, saved, short)
         return [(float(worth[k]), choices[k]) for k in np.argsort(-worth, kind="stable").tolist()]
 
