@@ -99,15 +99,15 @@ class _Tables:
         self.members, self.sizes, self.levels = (np.empty((_FAMILIES, widest), np.int64) for _ in range(3))
         self.depths, self.places = np.empty(_FAMILIES, np.int64), np.empty(_FAMILIES, np.int64)
         self._numbers: dict[Family, int] = {}
+        self._cells: dict[Family, int] = {}
         self._used = 0
-
-    def room_of(self, family: Family) -> int:
-        """Count the probabilities that the table of a family holds."""
-        return self._each * math.prod([self._sizes[member] for member in family])
 
     def cells_of(self, family: Family) -> int:
         """Count the cells of a family, without the class."""
-        return self.room_of(family) // self._each
+        cells = self._cells.get(family)
+        if cells is None:
+            cells = self._cells[family] = math.prod([self._sizes[member] for member in family])
+        return cells
 
     def numbers_of(self, families: Sequence[Family]) -> np.ndarray:
         """Number families whose tables are in the pool from now on, until others are asked for."""
@@ -134,8 +134,12 @@ class _Tables:
                 found[family] = None
         return list(found)
 
+    def _room_of(self, families: Sequence[Family]) -> int:
+        """Count the probabilities that tables of families hold."""
+        return self._each * sum([self.cells_of(one) for one in families])
+
     def _fits(self, missing: Sequence[Family]) -> bool:
-        room = self._used + sum(map(self.room_of, missing))
+        room = self._used + self._room_of(missing)
         return room <= len(self.pool) and len(self._numbers) + len(missing) <= len(self.depths)
 
     def _forget(self, families: Sequence[Family]) -> list[Family]:
@@ -146,7 +150,7 @@ class _Tables:
             wide = np.empty((2 * len(missing), self.members.shape[1]), np.int64)
             self.members, self.sizes, self.levels = wide, wide.copy(), wide.copy()
             self.depths, self.places = np.empty(len(wide), np.int64), np.empty(len(wide), np.int64)
-            self.pool = np.empty(max(len(self.pool), sum(map(self.room_of, missing))))
+            self.pool = np.empty(max(len(self.pool), self._room_of(missing)))
         return missing
 
     def _make(self, families: Sequence[Family]) -> None:
@@ -160,7 +164,7 @@ class _Tables:
         ones = [(1,) * len(more) for more in rest]
         for laid, known in ((self.sizes, self._sizes), (self.levels, self._levels)):
             laid[part] = [(*(known[i] for i in one), *more) for one, more in zip(families, ones, strict=True)]
-        ends = self._used + np.cumsum([self.room_of(one) for one in families])
+        ends = self._used + self._each * np.cumsum([self.cells_of(one) for one in families])
         self.places[part] = [self._used, *ends[:-1]]
         self._used = int(ends[-1])
         numbers = [self._numbers[(*one[:-2], one[-1])] if len(one) > 1 else 0 for one in families]
@@ -219,30 +223,35 @@ class RowJudge:
         What some of the rows show not to save ``least`` and ``errors`` standard errors is estimated from these. It is
         minus infinity for a family of more than 4 cells a row (of more than 1,024, where rows are few).
         """
-        rows, own = self.rows, (*self.parents[child], child)
-        found = np.full((2, len(choices)), [[-np.inf], [0.0]])
-        families = [(*parents, child) for parents in choices]
-        able = [k for k, family in enumerate(families) if self._tables.cells_of(family) <= self._most]
-        for some in self._batches(able, families):
-            out = np.empty((2, len(some)))
-            fixed = self._tables.fixed([own, *(families[k] for k in some)])
-            state = (self._weights, rows.floor, self._present, self._stages, least, errors)
-            replaced_savings(rows.codes, rows.starts, *fixed, *state, out)
-            found[:, some] = out
-        found[1] -= np.where(np.isinf(found[0]), 0.0, found[0]) ** 2 / max(1, rows.codes.shape[1])
-        return found[0], np.sqrt(np.maximum(found[1], 0.0))
+        own, families = (*self.parents[child], child), [(*parents, child) for parents in choices]
+        batches = self._batches(families)
+        if len(batches) == 1 and len(batches[0]) == len(families):
+            saved, variance = self._replaced([own, *families], least, errors)
+        else:
+            saved, variance = np.full(len(families), -np.inf), np.zeros(len(families))
+            for some in batches:
+                saved[some], variance[some] = self._replaced([own, *(families[k] for k in some)], least, errors)
+        return saved, np.sqrt(variance)
 
-    def _batches(self, able: Sequence[int], families: Sequence[Family]) -> list[list[int]]:
-        """Cut what is to be judged into as much as there is room for."""
+    def _replaced(self, families: Sequence[Family], least: float, errors: float) -> np.ndarray:
+        """Tell what each family but the first, which is that of now, saves, and its variance, (2, K)."""
+        out = np.empty((2, len(families) - 1))
+        state = (self._weights, self.rows.floor, self._present, self._stages, least, errors)
+        replaced_savings(self.rows.codes, self.rows.starts, *self._tables.fixed(families), *state, out)
+        return out
+
+    def _batches(self, families: Sequence[Family]) -> list[list[int]]:
+        """Cut those that may be judged into as many as there is room for."""
         batches: list[list[int]] = []
-        room = _ROOM
-        for k in able:
-            wanted = self._tables.room_of(families[k])
-            if not batches or room < wanted:
-                batches.append([])
-                room = _ROOM
-            batches[-1].append(k)
-            room -= wanted
+        room = 0
+        for k, family in enumerate(families):
+            cells = self._tables.cells_of(family)
+            if cells <= self._most:
+                if not batches or room < cells:
+                    batches.append([])
+                    room = _ROOM // len(self.rows.starts)
+                batches[-1].append(k)
+                room -= cells
         return batches
 
     def path(self) -> tuple[float, float]:

@@ -45,7 +45,7 @@ def replaced_savings(
 
     stages: rising numbers, the last one the number of parts that all rows are cut into: after so many parts a family is
     given up whose saving is then below ``least`` + ``errors`` standard errors, and by two more of what the part is off.
-    out (2, K): saved, and the sum of squares of what each row saves, of all rows or, if given up, scaled up to all.
+    out (2, K): saved, and its variance over records, of all rows or, if given up, scaled up to all.
     """
     classes, rows = weights.shape
     rest = np.empty((classes, rows))
@@ -77,10 +77,9 @@ def replaced_savings(
                     _number(codes, members, sizes, f, depths[f], low, high, cells)
                     _add_block(rest, cells, pool, first, size, y, low, high, scale, floor[y], present, whole, own, sums)
             if seen < used and seen > 0:
-                mean = sums[0] / seen
-                spread = max(sums[1] / seen - mean * mean, 0.0) * used
-                doubt = _SURE * np.sqrt(spread * (used / seen - 1.0))
-                if mean * used + doubt < least + errors * np.sqrt(spread):
+                scaled = used / seen
+                error = np.sqrt(sums[1] * scaled)
+                if sums[0] * scaled + _SURE * error * np.sqrt(scaled - 1.0) < least + errors * error:
                     break
         scaled = used / max(seen, 1)
         out[0, k - 1], out[1, k - 1] = sums[0] * scaled, sums[1] * scaled
@@ -103,10 +102,9 @@ def _add_block(
     own: np.ndarray,
     sums: np.ndarray,
 ) -> None:
-    """Add what a block of rows of one fold and class saves, and its squares; the fold's tables begin at ``first``.
+    """Add what a block of rows of one fold and class saves, and squares; the fold's tables begin at ``first``.
 
-    The square of a logarithm is that of the first two terms of 2 artanh((r - 1) / (r + 1)), which keeps rows that
-    change beyond measure from outweighing all others.
+    Squared are sums over 16 or fewer rows, whose cross products are as often positive as negative.
     """
     rows = high - low
     shares, weights = pool[first + truth * size : first + (truth + 1) * size], rest[truth, low:high]
@@ -121,28 +119,22 @@ def _add_block(
     inverse = present[low:high]
     for k in range(rows):
         own[k] = (scale * (own[k] / whole[k]) + floor) * inverse[k]
-        ratio = (own[k] - 1.0) / (own[k] + 1.0)
-        whole[k] = ratio * (2.0 + ratio * ratio * (2.0 / 3.0))
-    square = 0.0
-    for k in range(rows):
-        square += whole[k] * whole[k]
-    sums[0] += _sum_of_logs(own, rows)
-    sums[1] += square
+    for lane in range(_multiplied(own, rows)):
+        saved = np.log(own[lane])
+        sums[0] += saved
+        sums[1] += saved * saved
 
 
 @inlined
-def _sum_of_logs(x: np.ndarray, rows: int) -> float:
-    """Sum the logarithms of the first numbers of x, which is worked in."""
+def _multiplied(x: np.ndarray, rows: int) -> int:
+    """Multiply the first numbers of x into at most 16 products, which take their place; give how many."""
     even = rows - rows % _LANES
     for k in range(_LANES, even, _LANES):
         for lane in range(_LANES):
             x[lane] *= x[k + lane]
     for k in range(max(even, _LANES), rows):
         x[k - even] *= x[k]
-    total = 0.0
-    for k in range(min(_LANES, rows)):
-        total += np.log(x[k])
-    return total
+    return min(_LANES, rows)
 
 
 @kernel
@@ -201,7 +193,8 @@ def present_loss(starts: np.ndarray, weights: np.ndarray, floor: np.ndarray, pre
             for k in range(rows):
                 chances[k] = scale * (weights[y, low + k] / chances[k]) + floor[y]
                 present[low + k] = 1.0 / chances[k]
-            loss -= _sum_of_logs(chances, rows)
+            for lane in range(_multiplied(chances, rows)):
+                loss -= np.log(chances[lane])
     return loss
 
 

@@ -25,6 +25,7 @@ _AGAIN = 4  # moves of a child that are looked at again after a move elsewhere
 Parents = tuple[int, ...]
 Move = tuple[float, Parents]  # what it is worth beyond what it must save (nats), and a child's new parents
 
+_UNSEEN: Move = (math.inf, ())
 _NONE: Move = (-math.inf, ())
 
 
@@ -93,7 +94,7 @@ class _Search:
         self.judge, self.depths, self.bounds = judge, depths, bounds
         self.parents = [bounds.parents(child) for child in attributes]
         self.candidates = [_candidates(child, strength, bounds) for child in attributes]
-        self.known: list[list[Move]] = [[(math.inf, ())] for _ in attributes]  # moves of each child, best first
+        self.known: list[list[Move]] = [[_UNSEEN] for _ in attributes]  # moves of each child, best first
         self.fresh = [False for _ in attributes]  # the best one was looked at since the last move
         self.saved = 0.0  # nats, by all moves so far
         self.looked = [-math.inf for _ in attributes]  # what was saved when all moves of each child were last seen
@@ -109,7 +110,7 @@ class _Search:
         self.saved += self.known[child][0][0]
         self.judge.take(child, parents)
         self.parents[child] = parents
-        self.known[child], self.looked[child] = [(math.inf, ())], -math.inf
+        self.known[child], self.looked[child] = [_UNSEEN], -math.inf
         self.fresh = [False for _ in self.fresh]
         return True
 
@@ -121,7 +122,8 @@ class _Search:
             if worth > 0 and self.fresh[child]:
                 return child
             if worth > 0:
-                self._look(child) if math.isinf(worth) else self._look_again(child)
+                look = self._look if self.known[child][0] is _UNSEEN else self._look_again
+                look(child)
                 continue
             stale = [one for one, saved in enumerate(self.looked) if saved < self.saved]
             if not stale:
@@ -136,7 +138,7 @@ class _Search:
         another saves by more than it saves itself.
         """
         since = self.saved - self.looked[child]
-        before = {parents: worth for worth, parents in self.known[child]}
+        before = {parents: worth for worth, parents in self.known[child] if math.isfinite(worth)}
         singles = self._singles(child)
         out = [(before[one], one) for one in singles if before.get(one, math.inf) + since <= 0]
         left = {parents for _, parents in out}
@@ -147,9 +149,9 @@ class _Search:
     def _look_again(self, child: int) -> None:
         """Look again at the few moves of a child that seemed best, but for those that would make a cycle by now."""
         below = self._descendants(child)
-        known = [move for move in self.known[child] if below.isdisjoint(move[1])] or [_NONE]
+        known = [move for move in self.known[child] if below.isdisjoint(move[1])]
         again = self._judged(child, [parents for _, parents in known[:_AGAIN]])
-        self.known[child] = sorted([*again, *known[_AGAIN:]], key=lambda move: -move[0])
+        self.known[child] = sorted([*again, *known[_AGAIN:]], key=lambda move: -move[0]) or [_NONE]
         self.fresh[child] = self.known[child][0] in again
 
     def _pair(self) -> int | None:
