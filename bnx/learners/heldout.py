@@ -20,6 +20,7 @@ _PATH_ERRORS = 2.0  # standard errors by which all moves together must save
 _CANDIDATES = 12  # the strongest candidates of a child
 _MISFIT = 0.0  # standard deviations by which classes must be off in the cells of three attributes
 _PAIRS = 3  # pairs of candidates of a child that all rows judge
+_SWAPS = 3  # candidates of a child that are tried in the place of a parent
 _AGAIN = 4  # moves of a child that are looked at again after a move elsewhere
 
 Parents = tuple[int, ...]
@@ -139,11 +140,12 @@ class _Search:
         """
         since = self.saved - self.looked[child]
         before = {parents: worth for worth, parents in self.known[child] if math.isfinite(worth)}
-        singles = self._singles(child)
-        out = [(before[one], one) for one in singles if before.get(one, math.inf) + since <= 0]
-        left = {parents for _, parents in out}
-        found = self._judged(child, [one for one in singles if one not in left])
-        self.known[child] = [*found, *sorted(out, key=lambda move: -move[0])] or [_NONE]
+        found: list[Move] = []
+        for kind in (self._added_or_dropped, self._swapped):
+            choices = kind(child, found)
+            again = [one for one in choices if before.get(one, math.inf) + since > 0]
+            found += [*self._judged(child, again), *((before[one], one) for one in choices if one not in set(again))]
+        self.known[child] = sorted(found, key=lambda move: -move[0]) or [_NONE]
         self.fresh[child], self.looked[child] = True, self.saved
 
     def _look_again(self, child: int) -> None:
@@ -183,15 +185,22 @@ class _Search:
         below = self._descendants(child)
         return [one for one in self.candidates[child] if one not in self.parents[child] and one not in below]
 
-    def _singles(self, child: int) -> list[Parents]:
-        """List what one added, dropped or swapped parent makes of a child's parents."""
-        own, able = self.parents[child], self._able(child)
-        found = [(*own, one) for one in able] if len(own) < self.depths else []
-        for gone in own:
-            if gone not in self.bounds.parents(child):
-                left = tuple(one for one in own if one != gone)
-                found += [left, *((*left, one) for one in able)]
-        return found
+    def _added_or_dropped(self, child: int, _: Sequence[Move]) -> list[Parents]:
+        """List what one added or dropped parent makes of a child's parents."""
+        own = self.parents[child]
+        added = [(*own, one) for one in self._able(child)] if len(own) < self.depths else []
+        return [*added, *self._dropped(child)]
+
+    def _swapped(self, child: int, seen: Sequence[Move]) -> list[Parents]:
+        """List what swaps make of a child's parents: for those that do best when added, for any where none can be."""
+        own = self.parents[child]
+        added = [parents[-1] for _, parents in sorted(seen, key=lambda move: -move[0]) if len(parents) > len(own)]
+        able = added[:_SWAPS] if len(own) < self.depths else self._able(child)
+        return [(*left, one) for left in self._dropped(child) for one in able]
+
+    def _dropped(self, child: int) -> list[Parents]:
+        own, kept = self.parents[child], self.bounds.parents(child)
+        return [tuple(one for one in own if one != gone) for gone in own if gone not in kept]
 
     def _descendants(self, start: int) -> set[int]:
         """Find every attribute that stands below one."""
