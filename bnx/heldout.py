@@ -143,7 +143,7 @@ class _Tables:
         return room <= len(self.pool) and len(self._numbers) + len(missing) <= len(self.depths)
 
     def _forget(self, families: Sequence[Family]) -> list[Family]:
-        """Forget all tables, and make room for those of some families, which are listed with what they are made from."""
+        """Forget all tables, and make room for those of some families, listed with what they are made from."""
         self._numbers, self._used = {}, 0
         missing = self._missing(families)
         if not self._fits(missing):
@@ -215,30 +215,21 @@ class RowJudge:
         """Tell the loss of the structure so far (nats)."""
         return self._loss
 
-    def savings(
-        self, child: int, choices: Sequence[Family], least: float, errors: float
-    ) -> tuple[np.ndarray, np.ndarray]:
-        """Tell what each of K choices of parents saves (nats, all rows together), and its standard error, (K,) each.
+    def savings(self, child: int, choices: Sequence[Family], least: float) -> np.ndarray:
+        """Tell what each of K choices of parents saves (nats, all rows together), (K,).
 
-        What some of the rows show not to save ``least`` and ``errors`` standard errors is estimated from these. It is
-        minus infinity for a family of more than 4 cells a row (of more than 1,024, where rows are few).
+        What some of the rows show not to save ``least`` is estimated from these. It is minus infinity for a family of
+        more than 4 cells a row (of more than 1,024, where rows are few).
         """
         own, families = (*self.parents[child], child), [(*parents, child) for parents in choices]
-        batches = self._batches(families)
-        if len(batches) == 1 and len(batches[0]) == len(families):
-            saved, variance = self._replaced([own, *families], least, errors)
-        else:
-            saved, variance = np.full(len(families), -np.inf), np.zeros(len(families))
-            for some in batches:
-                saved[some], variance[some] = self._replaced([own, *(families[k] for k in some)], least, errors)
-        return saved, np.sqrt(variance)
-
-    def _replaced(self, families: Sequence[Family], least: float, errors: float) -> np.ndarray:
-        """Tell what each family but the first, which is that of now, saves, and its variance, (2, K)."""
-        out = np.empty((2, len(families) - 1))
-        state = (self._weights, self.rows.floor, self._present, self._stages, least, errors)
-        replaced_savings(self.rows.codes, self.rows.starts, *self._tables.fixed(families), *state, out)
-        return out
+        saved = np.full(len(families), -np.inf)
+        for some in self._batches(families):
+            fixed = self._tables.fixed([own, *(families[k] for k in some)])
+            out = np.empty(len(some))
+            state = (self._weights, self.rows.floor, self._present, self._stages, least)
+            replaced_savings(self.rows.codes, self.rows.starts, *fixed, *state, out)
+            saved[some] = out
+        return saved
 
     def _batches(self, families: Sequence[Family]) -> list[list[int]]:
         """Cut those that may be judged into as many as there is room for."""

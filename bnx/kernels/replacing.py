@@ -14,7 +14,7 @@ __all__ = ["held_weights", "present_loss", "replace_family", "replaced_savings"]
 _ROWS = 256  # of a block
 _LANES = 16  # chances of a block that are multiplied side by side before a logarithm is taken of each product
 _LOWEST = -600.0  # log weight below which a class counts as this heavy
-_SURE = 2.0  # standard errors that what a part of the rows says may be off
+_SURE = 2.0  # standard errors by which what a part of the rows says may be off
 
 
 @kernel
@@ -32,7 +32,6 @@ def replaced_savings(
     present: np.ndarray,
     stages: np.ndarray,
     least: float,
-    errors: float,
     out: np.ndarray,
 ) -> None:
     """Sum what each of K families in the place of another saves of the held-out log losses (nats) of all rows.
@@ -44,8 +43,8 @@ def replaced_savings(
     the true class so far.
 
     stages: rising numbers, the last one the number of parts that all rows are cut into: after so many parts a family is
-    given up whose saving is then below ``least`` + ``errors`` standard errors, and by two more of what the part is off.
-    out (2, K): saved, and its variance over records, of all rows or, if given up, scaled up to all.
+    given up whose saving is then below ``least`` by two standard errors of what the other rows may change.
+    out (K,): saved; of a family given up what the rows seen make of it, scaled up to all.
     """
     classes, rows = weights.shape
     rest = np.empty((classes, rows))
@@ -78,11 +77,9 @@ def replaced_savings(
                     _add_block(rest, cells, pool, first, size, y, low, high, scale, floor[y], present, whole, own, sums)
             if seen < used and seen > 0:
                 scaled = used / seen
-                error = np.sqrt(sums[1] * scaled)
-                if sums[0] * scaled + _SURE * error * np.sqrt(scaled - 1.0) < least + errors * error:
+                if sums[0] * scaled + _SURE * np.sqrt(sums[1] * scaled * (scaled - 1.0)) < least:
                     break
-        scaled = used / max(seen, 1)
-        out[0, k - 1], out[1, k - 1] = sums[0] * scaled, sums[1] * scaled
+        out[k - 1] = sums[0] * used / max(seen, 1)
 
 
 @part

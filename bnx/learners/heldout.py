@@ -14,13 +14,13 @@ from bnx.structure import Structure
 
 __all__ = ["Heldout", "Judge"]
 
-_LEAST = 1.0  # nats that a move must save, all rows together ...
-_ERRORS = 1.0  # ... and standard errors of what it saves
-_PATH_ERRORS = 2.0  # standard errors by which all moves together must save
+_LEAST = 1.0  # nats that a move must save, all rows together
+_ERRORS = 3.0  # standard errors by which all moves together must save
 _CANDIDATES = 12  # the strongest candidates of a child
 _MISFIT = 0.0  # standard deviations by which classes must be off in the cells of three attributes
 _PAIRS = 3  # pairs of candidates of a child that all rows judge
 _SWAPS = 3  # candidates of a child that are tried in the place of a parent
+_CARRIED = 0.5  # of what moves saved since a move was judged, by how much its own saving may have risen
 _AGAIN = 4  # moves of a child that are looked at again after a move elsewhere
 
 Parents = tuple[int, ...]
@@ -33,12 +33,10 @@ _NONE: Move = (-math.inf, ())
 class Judge(Protocol):
     """What the search sees of the rows: savings in nats, summed over all rows, each held out once."""
 
-    def savings(
-        self, child: int, choices: Sequence[Parents], least: float, errors: float
-    ) -> tuple[np.ndarray, np.ndarray]:
-        """Tell what each of K choices of one attribute's parents saves, and its standard error, (K,) each.
+    def savings(self, child: int, choices: Sequence[Parents], least: float) -> np.ndarray:
+        """Tell what each of K choices of one attribute's parents saves, (K,).
 
-        Rough where it is clearly below ``least`` + ``errors`` standard errors; minus infinity for one not to be made.
+        Rough where it is clearly below ``least``; minus infinity for one not to be made.
         """
 
     def take(self, child: int, parents: Parents) -> None:
@@ -53,9 +51,10 @@ class Judge(Protocol):
 
 @dataclass(frozen=True)
 class Heldout:
-    """Add, swap or drop parents as long as a move saves held-out class log loss for sure: 1 nat and 1.5 standard errors.
+    """Add, swap or drop parents as long as a move saves more than 1 nat of held-out class log loss, all rows together.
 
-    Where no single move does, two parents of one attribute may enter at once, so that interactions are found of which
+    Of the structures on the way the one is kept whose saving less three standard errors is largest, so that of a small
+    table, where many moves that save by chance are on offer, only what holds by far is believed. Where no single move does, two parents of one attribute may enter at once, so that interactions are found of which
     neither part is worth anything alone.
 
     Source: Keogh & Pazzani 1999 (hill-climbing on what classification gains, from naive Bayes); Grossman & Domingos
@@ -77,8 +76,8 @@ class Heldout:
         best, found = 0.0, tuple(search.parents)
         while search.moves():
             saved, error = judge.path()
-            if saved - _PATH_ERRORS * error >= best:
-                best, found = saved - _PATH_ERRORS * error, tuple(search.parents)
+            if saved - _ERRORS * error >= best:
+                best, found = saved - _ERRORS * error, tuple(search.parents)
         return Structure(self.name, found)
 
 
@@ -108,7 +107,7 @@ class _Search:
         if child is None:
             return False
         parents = self.known[child][0][1]
-        self.saved += self.known[child][0][0]
+        self.saved += self.known[child][0][0] + _LEAST
         self.judge.take(child, parents)
         self.parents[child] = parents
         self.known[child], self.looked[child] = [_UNSEEN], -math.inf
@@ -135,15 +134,15 @@ class _Search:
     def _look(self, child: int) -> None:
         """Look at all single moves of a child that may be worth it by now.
 
-        Those that were not are left out if what was saved since would not make up for it: a move seldom raises what
-        another saves by more than it saves itself.
+        Those that were not are left out if half of what was saved since would not make up for it: a move seldom raises
+        what another saves by as much as it saves itself.
         """
         since = self.saved - self.looked[child]
         before = {parents: worth for worth, parents in self.known[child] if math.isfinite(worth)}
         found: list[Move] = []
         for kind in (self._added_or_dropped, self._swapped):
             choices = kind(child, found)
-            again = [one for one in choices if before.get(one, math.inf) + since > 0]
+            again = [one for one in choices if before.get(one, math.inf) + _CARRIED * since > 0]
             found += [*self._judged(child, again), *((before[one], one) for one in choices if one not in set(again))]
         self.known[child] = sorted(found, key=lambda move: -move[0]) or [_NONE]
         self.fresh[child], self.looked[child] = True, self.saved
@@ -175,9 +174,7 @@ class _Search:
         """List what each choice of parents is worth beyond what a move must save, best first."""
         if not choices:
             return []
-        saved, error = self.judge.savings(child, choices, _LEAST, _ERRORS)
-        short = saved - _ERRORS * error - _LEAST
-        worth = np.where(short > 0, saved, short)
+        worth = self.judge.savings(child, choices, _LEAST) - _LEAST
         return [(float(worth[k]), choices[k]) for k in np.argsort(-worth, kind="stable").tolist()]
 
     def _able(self, child: int) -> list[int]:
