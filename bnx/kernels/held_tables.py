@@ -6,7 +6,7 @@ less its own.
 
 import numpy as np
 
-from bnx.kernels.compiling import inlined, kernel
+from bnx.kernels.compiling import inlined, kernel, part
 
 __all__ = ["held_tables"]
 
@@ -43,12 +43,7 @@ def held_tables(
     for k in range(depths.size):
         depth = depths[k]
         size, parents = _cells_of(sizes, k, depth), depth - 1
-        for row in range(cells.size):
-            cells[row] = 0
-        for m in range(depth):
-            step, own = np.uint32(sizes[k, m]), codes[members[k, m]]
-            for row in range(cells.size):
-                cells[row] = cells[row] * step + np.uint32(own[row])
+        _number(codes, members, sizes, k, depth, cells)
         _count(cells, starts, size, counts)
         for m in range(depth):
             if levels[k, m] < sizes[k, m]:
@@ -59,25 +54,43 @@ def held_tables(
                 whole[at] += counts[first + at]
         child, known = sizes[k, parents], levels[k, parents]
         siblings = sizes[k, parents - 1] if parents else 1
-        upper = size // siblings
         for s in range(segments):
-            mine, all_rows, table = s * size, s % classes * size, places[k] + s * size
-            less = above[k] + s * upper
+            table = places[k] + s * size
             if parents == 0:
                 _marginal(counts, whole, s, classes, size, known, table, pool)
-                less = table
-            for context in range(size // child):
-                here = context * child
-                before = less + context // siblings * child
-                rows = 0
-                for x in range(known):
-                    rows += whole[all_rows + here + x] - counts[mine + here + x]
-                share = 1.0 / (rows + strength)
-                for x in range(known):
-                    own_rows = whole[all_rows + here + x] - counts[mine + here + x]
-                    pool[table + here + x] = (own_rows + strength * pool[before + x]) * share
-                for x in range(known, child):
-                    pool[table + here + x] = 1.0
+            less = above[k] + s * (size // siblings) if parents else table
+            _back_off(counts, whole, s, classes, size, child, known, siblings, strength, less, table, pool)
+
+
+@part
+def _back_off(
+    counts: np.ndarray,
+    whole: np.ndarray,
+    s: int,
+    classes: int,
+    size: int,
+    child: int,
+    known: int,
+    siblings: int,
+    strength: float,
+    less: int,
+    table: int,
+    pool: np.ndarray,
+) -> None:
+    """Smooth the table of one fold and class; that of one parent less begins at ``less``."""
+    mine, everywhere = s * size, s % classes * size
+    for context in range(size // child):
+        here = context * child
+        before = less + context // siblings * child
+        rows = 0
+        for x in range(known):
+            rows += whole[everywhere + here + x] - counts[mine + here + x]
+        share = 1.0 / (rows + strength)
+        for x in range(known):
+            own = whole[everywhere + here + x] - counts[mine + here + x]
+            pool[table + here + x] = (own + strength * pool[before + x]) * share
+        for x in range(known, child):
+            pool[table + here + x] = 1.0
 
 
 @inlined
@@ -87,6 +100,17 @@ def _cells_of(sizes: np.ndarray, k: int, depth: int) -> int:
     for m in range(depth):
         cells *= sizes[k, m]
     return cells
+
+
+@inlined
+def _number(codes: np.ndarray, members: np.ndarray, sizes: np.ndarray, k: int, depth: int, cells: np.ndarray) -> None:
+    """Number the joint level of every row, the last member fastest."""
+    for row in range(cells.size):
+        cells[row] = 0
+    for m in range(depth):
+        step, own = np.uint32(sizes[k, m]), codes[members[k, m]]
+        for row in range(cells.size):
+            cells[row] = cells[row] * step + np.uint32(own[row])
 
 
 @inlined

@@ -2,7 +2,7 @@
 
 import numpy as np
 
-from bnx.kernels.compiling import kernel
+from bnx.kernels.compiling import inlined, kernel
 
 __all__ = ["misfits"]
 
@@ -30,16 +30,7 @@ def misfits(
     for s in range(taken.size):
         rows += taken[s]
     chances, index, truth = np.empty((classes, rows)), np.empty(rows, np.int64), np.empty(rows, np.int64)
-    row = 0
-    for s in range(taken.size):
-        for at in range(starts[s], starts[s] + taken[s]):
-            total = 0.0
-            for c in range(classes):
-                total += weights[c, at]
-            for c in range(classes):
-                chances[c, row] = weights[c, at] / total
-            index[row], truth[row] = at, s % classes
-            row += 1
+    _gather(starts, taken, weights, chances, index, truth)
     most = 1
     for k in range(members.shape[0]):
         cells = 1
@@ -48,14 +39,7 @@ def misfits(
         most = max(most, cells)
     own, residual, variance = np.empty(rows, np.int64), np.empty(most), np.empty(most)
     for k in range(members.shape[0]):
-        cells = 1
-        for row in range(rows):
-            own[row] = 0
-        for m in range(members.shape[1]):
-            size, column = sizes[k, m], codes[members[k, m]]
-            for row in range(rows):
-                own[row] = own[row] * size + np.int64(column[index[row]])
-            cells *= size
+        cells = _number(codes, members, sizes, k, index, own)
         found, mean, spread = 0.0, 0.0, 0.0
         for c in range(classes):
             for cell in range(cells):
@@ -70,3 +54,41 @@ def misfits(
                 mean += variance[cell] * share
                 spread += variance[cell] * share * variance[cell] * share
         out[k] = (found - mean) / np.sqrt(2.0 * spread + 1.0)
+
+
+@inlined
+def _gather(
+    starts: np.ndarray,
+    taken: np.ndarray,
+    weights: np.ndarray,
+    chances: np.ndarray,
+    index: np.ndarray,
+    truth: np.ndarray,
+) -> None:
+    """Write chances (C, rows), places and classes of the rows that count."""
+    row = 0
+    for s in range(taken.size):
+        for at in range(starts[s], starts[s] + taken[s]):
+            total = 0.0
+            for c in range(weights.shape[0]):
+                total += weights[c, at]
+            for c in range(weights.shape[0]):
+                chances[c, row] = weights[c, at] / total
+            index[row], truth[row] = at, s % weights.shape[0]
+            row += 1
+
+
+@inlined
+def _number(
+    codes: np.ndarray, members: np.ndarray, sizes: np.ndarray, k: int, index: np.ndarray, own: np.ndarray
+) -> int:
+    """Number the joint level of every row that counts in family k; give how many there are."""
+    cells = 1
+    for row in range(own.size):
+        own[row] = 0
+    for m in range(members.shape[1]):
+        size, column = sizes[k, m], codes[members[k, m]]
+        for row in range(own.size):
+            own[row] = own[row] * size + np.int64(column[index[row]])
+        cells *= size
+    return cells

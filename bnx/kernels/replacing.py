@@ -230,20 +230,26 @@ def held_weights(
                 for c in range(classes):
                     for row in range(high - low):
                         out[c, low + row] += logs[c * size + cells[row]]
-    for row in range(rows):
-        top[row] = -np.inf
-    for c in range(classes):
-        for row in range(rows):
-            top[row] = max(top[row], out[c, row])
-    for c in range(classes):
-        for row in range(rows):
-            out[c, row] = max(out[c, row] - top[row], _LOWEST)
-        exponentials(out[c], work)
+    _to_weights(out, top, work)
     for s in range(starts.size - 1):
         for c in range(classes):
             if log_prior[s // classes, c] == -np.inf:
                 for row in range(starts[s], starts[s + 1]):
                     out[c, row] = 0.0
+
+
+@inlined
+def _to_weights(out: np.ndarray, top: np.ndarray, work: np.ndarray) -> None:
+    """Turn log weights (C, N) into weights, the heaviest of each row 1."""
+    for row in range(top.size):
+        top[row] = -np.inf
+    for c in range(out.shape[0]):
+        for row in range(top.size):
+            top[row] = max(top[row], out[c, row])
+    for c in range(out.shape[0]):
+        for row in range(top.size):
+            out[c, row] = max(out[c, row] - top[row], _LOWEST)
+        exponentials(out[c], work)
 
 
 @part

@@ -17,7 +17,6 @@ __all__ = ["Heldout", "Judge"]
 _LEAST = 1.0  # nats that a move must save, all rows together
 _ERRORS = 3.0  # standard errors by which all moves together must save
 _CANDIDATES = 12  # the strongest candidates of a child
-_MISFIT = 0.0  # standard deviations by which classes must be off in the cells of three attributes
 _PAIRS = 3  # pairs of candidates of a child that all rows judge
 _SWAPS = 3  # candidates of a child that are tried in the place of a parent
 _CARRIED = 0.5  # of what moves saved since a move was judged, by how much its own saving may have risen
@@ -53,9 +52,9 @@ class Judge(Protocol):
 class Heldout:
     """Add, swap or drop parents as long as a move saves more than 1 nat of held-out class log loss, all rows together.
 
-    Of the structures on the way the one is kept whose saving less three standard errors is largest, so that of a small
-    table, where many moves that save by chance are on offer, only what holds by far is believed. Where no single move does, two parents of one attribute may enter at once, so that interactions are found of which
-    neither part is worth anything alone.
+    Where no single move does, two parents of one attribute may enter at once, so that interactions are found of which
+    neither part is worth anything alone. Of the structures on the way the one is kept whose saving less three standard
+    errors is largest: on a small table many moves are on offer that save by chance.
 
     Source: Keogh & Pazzani 1999 (hill-climbing on what classification gains, from naive Bayes); Grossman & Domingos
     2004 (the log loss of the class in the place of errors); both from memory.
@@ -97,6 +96,7 @@ class _Search:
         self.known: list[list[Move]] = [[_UNSEEN] for _ in attributes]  # moves of each child, best first
         self.fresh = [False for _ in attributes]  # the best one was looked at since the last move
         self.saved = 0.0  # nats, by all moves so far
+        self._below: dict[int, set[int]] = {}
         self.looked = [-math.inf for _ in attributes]  # what was saved when all moves of each child were last seen
 
     def moves(self) -> bool:
@@ -112,6 +112,7 @@ class _Search:
         self.parents[child] = parents
         self.known[child], self.looked[child] = [_UNSEEN], -math.inf
         self.fresh = [False for _ in self.fresh]
+        self._below = {}
         return True
 
     def _single(self) -> int | None:
@@ -158,13 +159,17 @@ class _Search:
     def _pair(self) -> int | None:
         """Find the child that gains most by two more parents at once; None if none gains enough."""
         able = [self._able(child) if len(own) + 2 <= self.depths else [] for child, own in enumerate(self.parents)]
-        pairs = [(child, two) for child, some in enumerate(able) for two in combinations(some, 2)]
-        triples = list(dict.fromkeys(tuple(sorted((child, *two))) for child, two in pairs))
+        pairs = [
+            (child, two, tuple(sorted((child, *two))))
+            for child, some in enumerate(able)
+            for two in combinations(some, 2)
+        ]
+        triples = list({triple: None for _, _, triple in pairs})
         misfit = dict(zip(triples, self.judge.misfits(triples).tolist(), strict=True))
         found = None
         for child, some in groupby(pairs, key=itemgetter(0)):
-            promising = sorted((-misfit[tuple(sorted((child, *two)))], two) for _, two in some)[:_PAIRS]
-            choices = [(*self.parents[child], *two) for less, two in promising if -less > _MISFIT]
+            promising = sorted((-misfit[triple], two) for _, two, triple in some)[:_PAIRS]
+            choices = [(*self.parents[child], *two) for less, two in promising if less < 0]
             moves = self._judged(child, choices)
             if moves and moves[0][0] > (0.0 if found is None else self.known[found][0][0]):
                 found, self.known[child] = child, moves
@@ -201,12 +206,14 @@ class _Search:
 
     def _descendants(self, start: int) -> set[int]:
         """Find every attribute that stands below one."""
-        below, grown = {start}, True
-        while grown:
-            more = {child for child, parents in enumerate(self.parents) if child not in below and below & set(parents)}
-            grown = bool(more)
-            below |= more
-        return below
+        if start not in self._below:
+            below, grown = {start}, True
+            while grown:
+                more = {one for one, own in enumerate(self.parents) if one not in below and below & set(own)}
+                grown = bool(more)
+                below |= more
+            self._below[start] = below
+        return self._below[start]
 
 
 def _candidates(child: int, strength: np.ndarray, bounds: Bounds) -> list[int]:
