@@ -27,6 +27,7 @@ _AT_ONCE = 500  # rows that say enough to give up a choice
 _EIGHTHS = 8
 
 Family = tuple[int, ...]
+Laid = tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray, np.ndarray, np.ndarray]
 
 
 @dataclass(frozen=True)
@@ -117,7 +118,7 @@ class _Tables:
         known = self._numbers
         return np.array([known[one] for one in families])
 
-    def fixed(self, families: Sequence[Family]) -> tuple[np.ndarray, ...]:
+    def fixed(self, families: Sequence[Family]) -> Laid:
         """Give what loops take of families: their numbers, and of all members, sizes, depths, places, and the pool."""
         which = self.numbers_of(families)
         return which, self.members, self.sizes, self.depths, self.places, self.pool

@@ -1,6 +1,8 @@
 """Parents chosen by held-out class log loss: the judge against the definition, the search, and what it must not see."""
 
+from collections import Counter
 from collections.abc import Sequence
+from dataclasses import replace
 from itertools import permutations, product
 
 import numpy as np
@@ -13,11 +15,13 @@ from published import monk1
 from bnx.comparison import Comparison
 from bnx.engines import LocalEngine
 from bnx.errors import SettingError, StructureError
+from bnx.folds import halves
 from bnx.gating import Bounds
 from bnx.heldout import MOST_ROWS, InnerRows, RowJudge, inner_rows
 from bnx.learners import Heldout, learner
 from bnx.learning import learn
 from bnx.recipe import DEFAULT_STRUCTURES, Recipe
+from bnx.resampling import stability
 from bnx.structure import Structure
 from bnx.tables import CodedTable
 from bnx.trainings import make_trainings, mask_without
@@ -400,3 +404,22 @@ def test_rows_by_rule_are_those_of_the_publication() -> None:
     """The table that the target is set on: 432 rows, 142 of the class (Thrun et al. 1991)."""
     rows, _ = monk1()
     assert ((rows == 0).sum(axis=1) == 2).sum() == 142
+
+
+def test_its_stability_is_the_share_of_the_first_25_halves() -> None:
+    table = table_of()
+    engine = engine_of(table)
+    bounds, names = Bounds(table.schema.names), ("heldout", "tan")
+    recipe = recipe_of("class", structures=names, resamples=30)
+    learners = [learner(name) for name in names]
+    training = make_trainings(engine, table.schema, {(): np.ones(20, bool)}, "mdl", 50)[0]
+    learned = learn(engine, [training], learners, bounds, recipe)[0]
+    found = stability(engine, learned, 5, learners, bounds, recipe)
+    masks = halves(5, 4, 30, recipe.seed)
+    for s, (name, number) in enumerate(zip(names, (25, 30), strict=True)):
+        some = [replace(training, mask=one, class_counts=engine.class_counts[one].sum(axis=0)) for one in masks]
+        learnt = learn(engine, some[:number], [learner(name)], bounds, recipe)
+        seen = Counter(frozenset(edge) for half in learnt for edge in half.structures[0].edges)
+        assert {ends: share for (k, ends), share in found.items() if k == s} == {
+            ends: times / number for ends, times in seen.items()
+        }
