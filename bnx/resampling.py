@@ -8,7 +8,7 @@ import numpy as np
 from bnx.engines import LocalEngine
 from bnx.folds import halves
 from bnx.gating import Bounds
-from bnx.learners import Learner
+from bnx.learners import KdbChosen, Learner
 from bnx.learning import Learned, learn
 from bnx.recipe import Recipe
 from bnx.trainings import Training
@@ -24,7 +24,8 @@ def stability(
 ) -> Stability:
     """Learn every structure from random halves, each half of the blocks of every fold.
 
-    learned: from all rows, whose cut points and pooled levels the halves share. An edge counts in either direction.
+    learned: from all rows, whose cut points and pooled levels the halves share, and the number of parents that was
+    chosen out of fold. An edge counts in either direction.
 
     Source: Meinshausen & Buhlmann 2010 (halves without replacement).
     """
@@ -36,7 +37,11 @@ def stability(
     found: Counter[tuple[int, frozenset[int]]] = Counter()
     masks = halves(folds, engine.blocks // folds, recipe.resamples, recipe.seed)
     trainings = [Training((), mask, plain, engine.class_counts[mask].sum(axis=0)) for mask in masks]
-    for half in learn(rows, trainings, learners, bounds, recipe, learned.structures):
+    settled = [
+        one.of(structure.depth) if isinstance(one, KdbChosen) else one
+        for one, structure in zip(learners, learned.structures, strict=True)
+    ]
+    for half in learn(rows, trainings, settled, bounds, recipe, learned.structures):
         for s, structure in enumerate(half.structures):
             found.update((s, frozenset(edge)) for edge in structure.edges)
     return {key: number / recipe.resamples for key, number in found.items()}

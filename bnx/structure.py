@@ -12,12 +12,18 @@ __all__ = ["Structure", "words"]
 class Structure:
     """Parents per attribute, in the order they were taken; the class is a parent of all and is not listed.
 
+    ``depth``: most parents of an attribute, where that was chosen, else None; ``dropped``: attributes that are left
+    out, so that the class is no parent of theirs and they take no part in classifying.
+
     Raises:
-        StructureError: the parents form a cycle, or an attribute is its own parent or names a parent twice.
+        StructureError: the parents form a cycle, an attribute is its own parent or names a parent twice, or one that
+            is left out has an edge.
     """
 
     name: str
     parents: tuple[tuple[int, ...], ...]
+    depth: int | None = None
+    dropped: tuple[int, ...] = ()
 
     def __post_init__(self) -> None:
         """Refuse parents that contradict each other."""
@@ -26,6 +32,9 @@ class Structure:
                 raise StructureError(
                     f"attribute {child} of {self.name} has itself or one parent twice among its parents"
                 )
+        out = set(self.dropped)
+        if out and any(out & {child, *parents} for child, parents in enumerate(self.parents) if parents):
+            raise StructureError(f"an attribute that {self.name} leaves out has a parent or a child")
         if self._has_cycle():
             raise StructureError(f"the parents in {self.name} form a cycle; no attribute may be an ancestor of itself")
 
@@ -49,12 +58,22 @@ class Structure:
         return tuple((parent, child) for child, parents in enumerate(self.parents) for parent in parents)
 
 
+    @property
+    def what_it_says(self) -> tuple[tuple[tuple[int, ...], ...], tuple[int, ...]]:
+        """All but its name: two structures that agree in this are the same model."""
+        return self.parents, self.dropped
+
+
 def words(name: str) -> str:
     """Say a structure's name in words: ``up to 2 parents, tested``."""
     base, _, tested = name.partition("-")
     ending = ", tested" if tested == "tested" else ""
     if base == "naive":
         return "no edges"
+    if name == "kdb":
+        return "up to 5 parents, as many as pay out of fold"
+    if name == "kdb-trimmed":
+        return "up to 5 parents, those parents and attributes that pay by leave-one-out"
     if base == "tan":
         return "tree" + ending
     if base == "heldout":

@@ -17,12 +17,12 @@ FLOORS = (
     "fibre homogeneity masked unobserved summing_out",
     "tables views blocks columns columnar delimited malformed reading levelling screening duplicates level_order",
     "coarsening gathering passes coding encoding pair_counting engines",
-    "parameters trainings dependence families profiling",
+    "parameters trainings room dependence families profiling",
     "tails wide_tables independence classifier rebasing intervals refining sampling scoring tabulating verdicts "
     "explaining pair_details",
     "gating doubts drawing formats showing",
     "learners",
-    "recipe wide_forests wide wide_learning matrix_memory heldout learning pair_judging many_tests wide_testing "
+    "recipe wide_forests wide wide_learning matrix_memory heldout leaving_out learning pair_judging many_tests wide_testing "
     "wide_judging pair_table",
     "choosing evaluation gains rating resampling pair_tests",
     "dealing judging ledger observing comparison",

@@ -1,0 +1,219 @@
+"""Loops that judge models of growing depth by rows left out of their own tables, one attribute more at a time.
+
+A table without a row is that of all rows less 1 where the row lies, so nothing is counted again. Model k of an
+attribute takes the first k of its parents; all models read the counts of the family with all of them.
+"""
+
+import numpy as np
+
+from bnx.kernels.compiling import kernel, part
+from bnx.kernels.exponentials import exponentials
+
+__all__ = ["add_left_out", "start_left_out"]
+
+_ROWS = 256  # of a block
+_LANES = 16  # chances of a block that are multiplied side by side before a logarithm is taken of each product
+_NEVER = -1e9  # log prior of a class without another row
+_MOST = 700.0  # log odds beyond which a class counts as this much heavier
+
+
+@kernel
+def start_left_out(class_counts: np.ndarray, starts: np.ndarray, terms: np.ndarray) -> None:
+    """Write the log class prior (nats) of every row, counted without it, into terms (M, C, N).
+
+    class_counts (C,): rows that the prior is counted in; starts (S + 1,): first row of each run of one class, which is
+    s % C of run s.
+    """
+    models, classes, _ = terms.shape
+    rows = 0
+    for c in range(classes):
+        rows += class_counts[c]
+    for s in range(starts.size - 1):
+        for c in range(classes):
+            others = class_counts[c] - (c == s % classes)
+            prior = np.log(others / (rows - 1.0)) if others > 0 else _NEVER
+            for k in range(models):
+                for row in range(starts[s], starts[s + 1]):
+                    terms[k, c, row] = prior
+
+
+@kernel
+def add_left_out(
+    codes: np.ndarray,
+    starts: np.ndarray,
+    members: np.ndarray,
+    sizes: np.ndarray,
+    observed: np.ndarray,
+    least: int,
+    counts: np.ndarray,
+    strength: float,
+    weights: np.ndarray,
+    floor: np.ndarray,
+    terms: np.ndarray,
+    out: np.ndarray,
+) -> None:
+    """Add what one attribute says to the log terms of every model, each row left out, and sum the losses (nats).
+
+    codes (n, N) of the rows judged, in runs of one class as in ``start_left_out``; members, sizes, observed (D + 1,):
+    parents in the order taken, then the child, or none; their codes, and how many of these are levels; the codes after
+    them are of cells not observed, of which only the tables with fewer parents are read; least: parents that every
+    model takes; counts (C, cells) int32 of all rows, the child fastest; strength: records of the back-off, whose first
+    table is the attribute's share in all classes with 1 record a level; weights (C,): rows that each judged row of a
+    class stands for; floor (C,): added to each chance, which is scaled down so that all sum to 1; terms (M, C, N): of
+    each of M models, the parents of which number 0 to M - 1, or as many as there are; out (M,): sums of losses.
+
+    Source: Martinez, Webb, Chen & Zaidi 2016 (all depths and all numbers of attributes judged by leaving rows out of
+    counts made once).
+    """
+    models, classes, _ = terms.shape
+    depth = sizes.size - 1
+    first = np.zeros(depth + 2, np.int64)  # of the tables of each depth, class after class
+    cells = np.zeros(depth + 2, np.int64)
+    if depth >= 0:
+        size = sizes[depth]
+        for d in range(depth + 1):
+            size *= sizes[d - 1] if d > 0 else 1
+            cells[d] = size
+            first[d + 1] = first[d] + classes * size
+    whole, own = np.zeros(first[depth + 1]), np.zeros(first[depth + 1])
+    if depth >= 0:
+        _write_tables(counts, sizes, observed, strength, cells, first, whole, own)
+    place = np.empty((depth + 1, _ROWS), np.int64)
+    known = np.empty(_ROWS, np.int64)  # depth of the deepest table that can be read
+    odds, chances, work = np.empty(_ROWS), np.empty(_ROWS), np.empty(3 * _ROWS)
+    scale = 1.0
+    for c in range(classes):
+        scale -= floor[c]
+    for k in range(models):
+        out[k] = 0.0
+    for s in range(starts.size - 1):
+        y = s % classes
+        for low in range(starts[s], starts[s + 1], _ROWS):
+            rows = min(_ROWS, starts[s + 1] - low)
+            if depth >= 0:
+                _find_cells(codes, members, sizes, observed, low, rows, place, known)
+            for k in range(models):
+                if depth >= 0:
+                    deep = min(max(k, least), depth)
+                    for c in range(classes):
+                        for row in range(rows):
+                            d = min(deep, known[row])
+                            if d >= 0:
+                                at = first[d] + c * cells[d] + place[d, row]
+                                terms[k, c, low + row] += own[at] if c == y else whole[at]
+                loss = _block_loss(terms, k, y, low, rows, scale, floor[y], odds, chances, work)
+                out[k] += weights[y] * loss
+
+
+@part
+def _find_cells(
+    codes: np.ndarray,
+    members: np.ndarray,
+    sizes: np.ndarray,
+    observed: np.ndarray,
+    low: int,
+    rows: int,
+    place: np.ndarray,
+    known: np.ndarray,
+) -> None:
+    """Number the cell of each row at every depth, and find the deepest one whose members are all observed."""
+    depth = sizes.size - 1
+    size = sizes[depth]
+    for row in range(rows):
+        level = np.int64(codes[members[depth], low + row])
+        context = np.int64(0)
+        place[0, row] = level
+        known[row] = 0 if level < observed[depth] else -1
+        for d in range(1, depth + 1):
+            parent = np.int64(codes[members[d - 1], low + row])
+            context = context * sizes[d - 1] + parent
+            place[d, row] = context * size + level
+            if known[row] == d - 1 and parent < observed[d - 1]:
+                known[row] = d
+
+
+@part
+def _block_loss(
+    terms: np.ndarray,
+    k: int,
+    y: int,
+    low: int,
+    rows: int,
+    scale: float,
+    floor: float,
+    odds: np.ndarray,
+    chances: np.ndarray,
+    work: np.ndarray,
+) -> float:
+    """Sum the losses of a block of rows of class ``y`` under model ``k``."""
+    for row in range(rows):
+        chances[row] = 1.0
+    for c in range(terms.shape[1]):
+        if c != y:
+            for row in range(rows):
+                odds[row] = min(terms[k, c, low + row] - terms[k, y, low + row], _MOST)
+            exponentials(odds[:rows], work)
+            for row in range(rows):
+                chances[row] += odds[row]
+    for row in range(rows):
+        chances[row] = scale / chances[row] + floor
+    for row in range(_LANES, rows):
+        chances[row % _LANES] *= chances[row]
+    loss = 0.0
+    for lane in range(min(_LANES, rows)):
+        loss -= np.log(chances[lane])
+    return loss
+
+
+@part
+def _write_tables(
+    counts: np.ndarray,
+    sizes: np.ndarray,
+    observed: np.ndarray,
+    strength: float,
+    cells: np.ndarray,
+    first: np.ndarray,
+    whole: np.ndarray,
+    own: np.ndarray,
+) -> None:
+    """Write the log shares of every cell at every depth as a row of that cell sees them when it is left out.
+
+    whole: those of the other classes; own: of the row's own. Cells that no row lies in stay 0.
+    """
+    classes, depth = counts.shape[0], sizes.size - 1
+    size, levels = sizes[depth], observed[depth]
+    rows = np.zeros(first[depth + 1])
+    for c in range(classes):
+        at = first[depth] + c * cells[depth]
+        for cell in range(cells[depth]):
+            rows[at + cell] = counts[c, cell]
+    for d in range(depth, 0, -1):
+        for c in range(classes):
+            at, to = first[d] + c * cells[d], first[d - 1] + c * cells[d - 1]
+            for cell in range(cells[d]):
+                rows[to + cell // size // sizes[d - 1] * size + cell % size] += rows[at + cell]
+    total = 0.0
+    marginal = np.zeros(size)
+    for x in range(levels):
+        for c in range(classes):
+            marginal[x] += rows[c * size + x]
+        total += marginal[x]
+    for d in range(depth + 1):
+        for c in range(classes):
+            at, below = first[d] + c * cells[d], first[d - 1] + c * cells[d - 1] if d > 0 else 0
+            for context in range(cells[d] // size):
+                here = at + context * size
+                wider = below + context // sizes[d - 1] * size if d > 0 else 0
+                n = 0.0
+                for x in range(levels):
+                    n += rows[here + x]
+                for x in range(levels):
+                    general = marginal[x] / (total - 1.0 + levels)  # 1 record a level, the row itself taken out
+                    mine = rows[here + x]
+                    whole[here + x] = (mine + strength * (whole[wider + x] if d > 0 else general)) / (n + strength)
+                    if mine > 0:
+                        lower = own[wider + x] if d > 0 else general
+                        own[here + x] = (mine - 1.0 + strength * lower) / (n - 1.0 + strength)
+    for k in range(whole.size):
+        whole[k] = np.log(whole[k]) if whole[k] > 0.0 else 0.0
+        own[k] = np.log(own[k]) if own[k] > 0.0 else 0.0
