@@ -8,7 +8,7 @@ import numpy as np
 
 from bnx.engines import LocalEngine
 from bnx.heldout import InnerRows, inner_rows
-from bnx.kernels.leaving_out import add_left_out, start_left_out
+from bnx.kernels.leaving_out import add_left_out
 from bnx.scoring import Counted, families_of
 from bnx.structure import Structure
 from bnx.tabulating import tabulate
@@ -19,7 +19,8 @@ __all__ = ["MOST_JUDGED", "LeftOut", "leave_out"]
 Result = TypeVar("Result")
 
 MOST_JUDGED = 50_000
-STRENGTH = 2.0  # records that a table with one parent less stands for
+STRENGTH, DEEPER = 2.0, 32.0  # records that the next wider table stands for, given the class and given parents
+TEMPERATURES = np.array([1.0, 0.75, 0.5])  # each model is judged at its best one
 _CELLS = 64_000_000  # counts of training sets that are held together
 
 
@@ -38,23 +39,25 @@ class LeftOut:
     def losses(self, order: Sequence[int], least: Sequence[int], models: int) -> np.ndarray:
         """Sum the class log losses (nats) of all rows, each judged by counts without it: (models, n + 1).
 
+        As calibration will do, the evidence is tempered: every model is judged at the best of three temperatures.
+
         Model k keeps the first k parents of every attribute, but at least ``least`` (n,) of them. Column s is of the
         first s attributes of ``order``.
         """
         rows, floor = self.rows, self.class_counts / self.class_counts.sum() ** 2
         judged = np.diff(rows.starts).reshape(-1, len(floor)).sum(axis=0)
         weights = self.class_counts / np.maximum(judged, 1)
-        terms = np.empty((models, len(floor), rows.codes.shape[1]))
-        start_left_out(self.class_counts, rows.starts, terms)
-        out = np.empty((1 + len(order), models))
+        terms = np.zeros((models, len(floor), rows.codes.shape[1]))
+        out = np.empty((1 + len(order), len(TEMPERATURES), models))
         nothing = np.zeros(0, np.int64)
         families = [
             (nothing, nothing, nothing, 0, np.zeros((len(floor), 0), np.int32)),
             *((*self._family(child), least[child], self._counts(child)) for child in order),
         ]
+        fixed = (self.class_counts, STRENGTH, DEEPER, TEMPERATURES, weights, floor)
         for own, losses in zip(families, out, strict=True):
-            add_left_out(rows.codes, rows.starts, *own, STRENGTH, weights, floor, terms, losses)
-        return out.T
+            add_left_out(rows.codes, rows.starts, *own, *fixed, terms, losses)
+        return out.min(axis=1).T
 
     def _family(self, child: int) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
         """Give the members of an attribute's family, the attribute last, their codes, and how many are of levels."""

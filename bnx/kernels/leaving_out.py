@@ -9,32 +9,12 @@ import numpy as np
 from bnx.kernels.compiling import kernel, part
 from bnx.kernels.exponentials import exponentials
 
-__all__ = ["add_left_out", "start_left_out"]
+__all__ = ["add_left_out"]
 
 _ROWS = 256  # of a block
 _LANES = 16  # chances of a block that are multiplied side by side before a logarithm is taken of each product
 _NEVER = -1e9  # log prior of a class without another row
 _MOST = 700.0  # log odds beyond which a class counts as this much heavier
-
-
-@kernel
-def start_left_out(class_counts: np.ndarray, starts: np.ndarray, terms: np.ndarray) -> None:
-    """Write the log class prior (nats) of every row, counted without it, into terms (M, C, N).
-
-    class_counts (C,): rows that the prior is counted in; starts (S + 1,): first row of each run of one class, which is
-    s % C of run s.
-    """
-    models, classes, _ = terms.shape
-    rows = 0
-    for c in range(classes):
-        rows += class_counts[c]
-    for s in range(starts.size - 1):
-        for c in range(classes):
-            others = class_counts[c] - (c == s % classes)
-            prior = np.log(others / (rows - 1.0)) if others > 0 else _NEVER
-            for k in range(models):
-                for row in range(starts[s], starts[s + 1]):
-                    terms[k, c, row] = prior
 
 
 @kernel
@@ -46,7 +26,10 @@ def add_left_out(
     observed: np.ndarray,
     least: int,
     counts: np.ndarray,
+    class_counts: np.ndarray,
     strength: float,
+    deeper: float,
+    temperatures: np.ndarray,
     weights: np.ndarray,
     floor: np.ndarray,
     terms: np.ndarray,
@@ -54,13 +37,15 @@ def add_left_out(
 ) -> None:
     """Add what one attribute says to the log terms of every model, each row left out, and sum the losses (nats).
 
-    codes (n, N) of the rows judged, in runs of one class as in ``start_left_out``; members, sizes, observed (D + 1,):
+    codes (n, N) of the rows judged; starts (S + 1,): first row of each run of one class, which is s % C of run s;
+    members, sizes, observed (D + 1,):
     parents in the order taken, then the child, or none; their codes, and how many of these are levels; the codes after
     them are of cells not observed, of which only the tables with fewer parents are read; least: parents that every
-    model takes; counts (C, cells) int32 of all rows, the child fastest; strength: records of the back-off, whose first
-    table is the attribute's share in all classes with 1 record a level; weights (C,): rows that each judged row of a
+    model takes; counts (C, cells) int32 of all rows, the child fastest, and class_counts (C,); strength, deeper: records of the back-off
+    given the class and given parents too, whose first table is the attribute's share in all classes with 1 record a
+    level; temperatures (T,): what the terms are multiplied by; weights (C,): rows that each judged row of a
     class stands for; floor (C,): added to each chance, which is scaled down so that all sum to 1; terms (M, C, N): of
-    each of M models, the parents of which number 0 to M - 1, or as many as there are; out (M,): sums of losses.
+    each of M models, the parents of which number 0 to M - 1, or as many as there are; out (T, M): sums of losses.
 
     Source: Martinez, Webb, Chen & Zaidi 2016 (all depths and all numbers of attributes judged by leaving rows out of
     counts made once).
@@ -77,17 +62,22 @@ def add_left_out(
             first[d + 1] = first[d] + classes * size
     whole, own = np.zeros(first[depth + 1]), np.zeros(first[depth + 1])
     if depth >= 0:
-        _write_tables(counts, sizes, observed, strength, cells, first, whole, own)
+        _write_tables(counts, sizes, observed, strength, deeper, cells, first, whole, own)
     place = np.empty((depth + 1, _ROWS), np.int64)
     known = np.empty(_ROWS, np.int64)  # depth of the deepest table that can be read
     odds, chances, work = np.empty(_ROWS), np.empty(_ROWS), np.empty(3 * _ROWS)
     scale = 1.0
     for c in range(classes):
         scale -= floor[c]
-    for k in range(models):
-        out[k] = 0.0
+    for t in range(temperatures.size):
+        for k in range(models):
+            out[t, k] = 0.0
+    prior = np.empty(classes)
     for s in range(starts.size - 1):
         y = s % classes
+        for c in range(classes):
+            others = class_counts[c] - (c == y)
+            prior[c] = np.log(others) if others > 0 else _NEVER
         for low in range(starts[s], starts[s + 1], _ROWS):
             rows = min(_ROWS, starts[s + 1] - low)
             if depth >= 0:
@@ -101,8 +91,11 @@ def add_left_out(
                             if d >= 0:
                                 at = first[d] + c * cells[d] + place[d, row]
                                 terms[k, c, low + row] += own[at] if c == y else whole[at]
-                loss = _block_loss(terms, k, y, low, rows, scale, floor[y], odds, chances, work)
-                out[k] += weights[y] * loss
+                for t in range(temperatures.size):
+                    loss = _block_loss(
+                        terms, prior, temperatures[t], k, y, low, rows, scale, floor[y], odds, chances, work
+                    )
+                    out[t, k] += weights[y] * loss
 
 
 @part
@@ -135,6 +128,8 @@ def _find_cells(
 @part
 def _block_loss(
     terms: np.ndarray,
+    prior: np.ndarray,
+    temperature: float,
     k: int,
     y: int,
     low: int,
@@ -150,8 +145,9 @@ def _block_loss(
         chances[row] = 1.0
     for c in range(terms.shape[1]):
         if c != y:
+            before = prior[c] - prior[y]
             for row in range(rows):
-                odds[row] = min(terms[k, c, low + row] - terms[k, y, low + row], _MOST)
+                odds[row] = min(before + temperature * (terms[k, c, low + row] - terms[k, y, low + row]), _MOST)
             exponentials(odds[:rows], work)
             for row in range(rows):
                 chances[row] += odds[row]
@@ -171,6 +167,7 @@ def _write_tables(
     sizes: np.ndarray,
     observed: np.ndarray,
     strength: float,
+    deeper: float,
     cells: np.ndarray,
     first: np.ndarray,
     whole: np.ndarray,
@@ -199,6 +196,7 @@ def _write_tables(
             marginal[x] += rows[c * size + x]
         total += marginal[x]
     for d in range(depth + 1):
+        s = deeper if d > 0 else strength
         for c in range(classes):
             at, below = first[d] + c * cells[d], first[d - 1] + c * cells[d - 1] if d > 0 else 0
             for context in range(cells[d] // size):
@@ -210,10 +208,10 @@ def _write_tables(
                 for x in range(levels):
                     general = marginal[x] / (total - 1.0 + levels)  # 1 record a level, the row itself taken out
                     mine = rows[here + x]
-                    whole[here + x] = (mine + strength * (whole[wider + x] if d > 0 else general)) / (n + strength)
+                    whole[here + x] = (mine + s * (whole[wider + x] if d > 0 else general)) / (n + s)
                     if mine > 0:
                         lower = own[wider + x] if d > 0 else general
-                        own[here + x] = (mine - 1.0 + strength * lower) / (n - 1.0 + strength)
+                        own[here + x] = (mine - 1.0 + s * lower) / (n - 1.0 + s)
     for k in range(whole.size):
         whole[k] = np.log(whole[k]) if whole[k] > 0.0 else 0.0
         own[k] = np.log(own[k]) if own[k] > 0.0 else 0.0
