@@ -50,14 +50,14 @@ class LeftOut:
         terms = np.zeros((models, len(floor), rows.codes.shape[1]))
         out = np.empty((1 + len(order), len(TEMPERATURES), models))
         nothing = np.zeros(0, np.int64)
-        families = [
-            (nothing, nothing, nothing, 0, np.zeros((len(floor), 0), np.int32)),
-            *((*self._family(child), least[child], self._counts(child)) for child in order),
-        ]
-        fixed = (self.class_counts, STRENGTH, DEEPER, TEMPERATURES, weights, floor)
-        for own, losses in zip(families, out, strict=True):
-            add_left_out(rows.codes, rows.starts, *own, *fixed, terms, losses)
-        return out.min(axis=1).T
+        families = [(nothing, nothing, nothing), *map(self._family, order)]
+        counts = [np.zeros((len(floor), 0), np.int32), *map(self._counts, order)]
+        few = [0, *(least[one] for one in order)]
+        given = (TEMPERATURES, weights, floor, terms)
+        for k, family in enumerate(families):
+            counted = (counts[k], self.class_counts)
+            add_left_out(rows.codes, rows.starts, *family, few[k], *counted, STRENGTH, DEEPER, *given, out[k])
+        return np.ascontiguousarray(out.min(axis=1).T)
 
     def _family(self, child: int) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
         """Give the members of an attribute's family, the attribute last, their codes, and how many are of levels."""
@@ -79,9 +79,10 @@ def leave_out(
     structures: Sequence[Structure],
     use: Callable[[int, LeftOut], Result],
 ) -> list[Result]:
-    """Call ``use(k, ...)`` for each training set k, whose structure is counted in all its rows; at most 50,000 are judged.
+    """Call ``use(k, ...)`` for each training set k, whose structure is counted in all its rows.
 
-    As many training sets are counted at a time as a fixed amount of memory takes.
+    At most 50,000 rows of it are judged, spread evenly by block and class, and stand for all. As many training sets are
+    counted at a time as a fixed amount of memory takes.
     """
     families = [families_of([one], training.view) for one, training in zip(structures, trainings, strict=True)]
     cells = [int(own.starts[-1]) * engine.classes for own in families]

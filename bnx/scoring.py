@@ -202,8 +202,8 @@ def families_of(structures: Sequence[Structure], view: View) -> Families:
     """List the different families of structures, child by child, each where a structure first has it."""
     parents = parents_of(structures)
     out = np.zeros(parents.shape[:2], np.bool_)
-    for s, structure in enumerate(structures):
-        out[s, list(structure.dropped)] = True
+    for s, one in enumerate(structures):
+        out[s, list(one.dropped)] = True
     first = np.tile(np.arange(len(parents))[:, None], parents.shape[1])  # (structures, n): who has this family first
     for s in range(1, len(parents)):
         for earlier in reversed(range(s)):

@@ -7,6 +7,15 @@ from bnx.errors import StructureError
 
 __all__ = ["Structure", "words"]
 
+_WORDS = {
+    "naive": "no edges",
+    "tan": "tree",
+    "tan-tested": "tree, tested",
+    "heldout": "up to 3 parents, chosen by held-out log loss",
+    "kdb": "up to 5 parents, their number chosen out of fold",
+    "kdb-trimmed": "up to 5 parents, their number and that of attributes chosen by leave-one-out",
+}
+
 
 @dataclass(frozen=True)
 class Structure:
@@ -57,7 +66,6 @@ class Structure:
         """(parent, child) of every edge, by child, then in the order taken."""
         return tuple((parent, child) for child, parents in enumerate(self.parents) for parent in parents)
 
-
     @property
     def what_it_says(self) -> tuple[tuple[tuple[int, ...], ...], tuple[int, ...]]:
         """All but its name: two structures that agree in this are the same model."""
@@ -66,18 +74,10 @@ class Structure:
 
 def words(name: str) -> str:
     """Say a structure's name in words: ``up to 2 parents, tested``."""
+    if name in _WORDS:
+        return _WORDS[name]
     base, _, tested = name.partition("-")
     ending = ", tested" if tested == "tested" else ""
-    if base == "naive":
-        return "no edges"
-    if name == "kdb":
-        return "up to 5 parents, as many as pay out of fold"
-    if name == "kdb-trimmed":
-        return "up to 5 parents, those parents and attributes that pay by leave-one-out"
-    if base == "tan":
-        return "tree" + ending
-    if base == "heldout":
-        return "up to 3 parents, chosen by held-out log loss"
     found = re.fullmatch(r"kdb(\d+)", base)
     if found:
         number = int(found[1])

@@ -22,8 +22,8 @@ FLOORS = (
     "explaining pair_details",
     "gating doubts drawing formats showing",
     "learners",
-    "recipe wide_forests wide wide_learning matrix_memory heldout leaving_out learning pair_judging many_tests wide_testing "
-    "wide_judging pair_table",
+    "recipe wide_forests wide wide_learning matrix_memory heldout leaving_out learning pair_judging many_tests "
+    "wide_testing wide_judging pair_table",
     "choosing evaluation gains rating resampling pair_tests",
     "dealing judging ledger observing comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",

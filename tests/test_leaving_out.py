@@ -10,10 +10,8 @@ from hypothesis import strategies as st
 
 from bnx import leaving_out
 from bnx.engines import LocalEngine
-from bnx.gating import Bounds
 from bnx.leaving_out import DEEPER, STRENGTH, TEMPERATURES, LeftOut, leave_out
 from bnx.structure import Structure
-from bnx.tables import CodedTable
 from bnx.trainings import Training
 
 Parents = tuple[int, ...]

@@ -6,7 +6,7 @@ attribute takes the first k of its parents; all models read the counts of the fa
 
 import numpy as np
 
-from bnx.kernels.compiling import kernel, part
+from bnx.kernels.compiling import inlined, kernel, part
 from bnx.kernels.exponentials import exponentials
 
 __all__ = ["add_left_out"]
@@ -38,28 +38,22 @@ def add_left_out(
     """Add what one attribute says to the log terms of every model, each row left out, and sum the losses (nats).
 
     codes (n, N) of the rows judged; starts (S + 1,): first row of each run of one class, which is s % C of run s;
-    members, sizes, observed (D + 1,):
-    parents in the order taken, then the child, or none; their codes, and how many of these are levels; the codes after
-    them are of cells not observed, of which only the tables with fewer parents are read; least: parents that every
-    model takes; counts (C, cells) int32 of all rows, the child fastest, and class_counts (C,); strength, deeper: records of the back-off
-    given the class and given parents too, whose first table is the attribute's share in all classes with 1 record a
-    level; temperatures (T,): what the terms are multiplied by; weights (C,): rows that each judged row of a
-    class stands for; floor (C,): added to each chance, which is scaled down so that all sum to 1; terms (M, C, N): of
-    each of M models, the parents of which number 0 to M - 1, or as many as there are; out (T, M): sums of losses.
+    members, sizes, observed (D + 1,): parents in the order taken, then the child, or none; their codes, and how many of
+    these are levels; the codes after them are of cells not observed, for which tables with fewer parents are read;
+    least: parents that every model takes; counts (C, cells) int32 of all rows, the child fastest, and class_counts
+    (C,); strength, deeper: records of the back-off given the class and given parents too, whose first table is the
+    attribute's share in all classes with 1 record a level; temperatures (T,): what the terms are multiplied by; weights
+    (C,): rows that each judged row of a class stands for; floor (C,): added to each chance, which is scaled down so
+    that all sum to 1; terms (M, C, N): of each of M models, whose parents number 0 to M - 1, or as many as there are;
+    out (T, M): sums of losses.
 
     Source: Martinez, Webb, Chen & Zaidi 2016 (all depths and all numbers of attributes judged by leaving rows out of
     counts made once).
     """
     models, classes, _ = terms.shape
     depth = sizes.size - 1
-    first = np.zeros(depth + 2, np.int64)  # of the tables of each depth, class after class
-    cells = np.zeros(depth + 2, np.int64)
-    if depth >= 0:
-        size = sizes[depth]
-        for d in range(depth + 1):
-            size *= sizes[d - 1] if d > 0 else 1
-            cells[d] = size
-            first[d + 1] = first[d] + classes * size
+    first, cells = np.zeros(depth + 2, np.int64), np.zeros(depth + 2, np.int64)
+    _lay_out(sizes, classes, first, cells)
     whole, own = np.zeros(first[depth + 1]), np.zeros(first[depth + 1])
     if depth >= 0:
         _write_tables(counts, sizes, observed, strength, deeper, cells, first, whole, own)
@@ -85,17 +79,46 @@ def add_left_out(
             for k in range(models):
                 if depth >= 0:
                     deep = min(max(k, least), depth)
-                    for c in range(classes):
-                        for row in range(rows):
-                            d = min(deep, known[row])
-                            if d >= 0:
-                                at = first[d] + c * cells[d] + place[d, row]
-                                terms[k, c, low + row] += own[at] if c == y else whole[at]
+                    _add_terms(terms, k, y, low, rows, deep, known, place, first, cells, whole, own)
                 for t in range(temperatures.size):
                     loss = _block_loss(
                         terms, prior, temperatures[t], k, y, low, rows, scale, floor[y], odds, chances, work
                     )
                     out[t, k] += weights[y] * loss
+
+
+@inlined
+def _lay_out(sizes: np.ndarray, classes: int, first: np.ndarray, cells: np.ndarray) -> None:
+    """Say how many cells the table of each depth has, and where its classes begin, one after the other."""
+    size = 1
+    for d in range(sizes.size):
+        size = size * sizes[d - 1] if d > 0 else sizes[sizes.size - 1]
+        cells[d] = size
+        first[d + 1] = first[d] + classes * size
+
+
+@part
+def _add_terms(
+    terms: np.ndarray,
+    k: int,
+    y: int,
+    low: int,
+    rows: int,
+    deep: int,
+    known: np.ndarray,
+    place: np.ndarray,
+    first: np.ndarray,
+    cells: np.ndarray,
+    whole: np.ndarray,
+    own: np.ndarray,
+) -> None:
+    """Add what the tables of depth ``deep``, or the deepest that can be read, say to a block of rows of class ``y``."""
+    for c in range(terms.shape[1]):
+        for row in range(rows):
+            d = min(deep, known[row])
+            if d >= 0:
+                at = first[d] + c * cells[d] + place[d, row]
+                terms[k, c, low + row] += own[at] if c == y else whole[at]
 
 
 @part
@@ -180,38 +203,42 @@ def _write_tables(
     classes, depth = counts.shape[0], sizes.size - 1
     size, levels = sizes[depth], observed[depth]
     rows = np.zeros(first[depth + 1])
+    _sum_up(counts, sizes, cells, first, rows)
+    total = 0.0
+    general = np.zeros(size)
+    for x in range(levels):
+        for c in range(classes):
+            general[x] += rows[c * size + x]
+        total += general[x]
+    for x in range(levels):
+        general[x] /= total - 1.0 + levels  # 1 record a level, and the row itself taken out
+    for d in range(depth + 1):
+        s = deeper if d > 0 else strength
+        for context in range(classes * (cells[d] // size)):
+            here = first[d] + context * size
+            wider = first[d - 1] + context // sizes[d - 1] * size if d > 0 else 0
+            n = 0.0
+            for x in range(levels):
+                n += rows[here + x]
+            for x in range(levels):
+                mine = rows[here + x]
+                whole[here + x] = (mine + s * (whole[wider + x] if d > 0 else general[x])) / (n + s)
+                if mine > 0.0:
+                    own[here + x] = (mine - 1.0 + s * (own[wider + x] if d > 0 else general[x])) / (n - 1.0 + s)
+    for k in range(whole.size):
+        whole[k] = np.log(whole[k]) if whole[k] > 0.0 else 0.0
+        own[k] = np.log(own[k]) if own[k] > 0.0 else 0.0
+
+
+@inlined
+def _sum_up(counts: np.ndarray, sizes: np.ndarray, cells: np.ndarray, first: np.ndarray, rows: np.ndarray) -> None:
+    """Count the tables of every depth: each is the next deeper one, summed over its last parent."""
+    classes, depth = counts.shape[0], sizes.size - 1
+    size = sizes[depth]
     for c in range(classes):
         at = first[depth] + c * cells[depth]
         for cell in range(cells[depth]):
             rows[at + cell] = counts[c, cell]
     for d in range(depth, 0, -1):
-        for c in range(classes):
-            at, to = first[d] + c * cells[d], first[d - 1] + c * cells[d - 1]
-            for cell in range(cells[d]):
-                rows[to + cell // size // sizes[d - 1] * size + cell % size] += rows[at + cell]
-    total = 0.0
-    marginal = np.zeros(size)
-    for x in range(levels):
-        for c in range(classes):
-            marginal[x] += rows[c * size + x]
-        total += marginal[x]
-    for d in range(depth + 1):
-        s = deeper if d > 0 else strength
-        for c in range(classes):
-            at, below = first[d] + c * cells[d], first[d - 1] + c * cells[d - 1] if d > 0 else 0
-            for context in range(cells[d] // size):
-                here = at + context * size
-                wider = below + context // sizes[d - 1] * size if d > 0 else 0
-                n = 0.0
-                for x in range(levels):
-                    n += rows[here + x]
-                for x in range(levels):
-                    general = marginal[x] / (total - 1.0 + levels)  # 1 record a level, the row itself taken out
-                    mine = rows[here + x]
-                    whole[here + x] = (mine + s * (whole[wider + x] if d > 0 else general)) / (n + s)
-                    if mine > 0:
-                        lower = own[wider + x] if d > 0 else general
-                        own[here + x] = (mine - 1.0 + s * lower) / (n - 1.0 + s)
-    for k in range(whole.size):
-        whole[k] = np.log(whole[k]) if whole[k] > 0.0 else 0.0
-        own[k] = np.log(own[k]) if own[k] > 0.0 else 0.0
+        for cell in range(classes * cells[d]):
+            rows[first[d - 1] + cell // size // sizes[d - 1] * size + cell % size] += rows[first[d] + cell]

@@ -44,7 +44,7 @@ Learner = Single | KdbChosen
 
 
 def singles(learners: Sequence[Learner], bounds: Bounds) -> tuple[list[Single], list[range]]:
-    """List the learners behind those asked for, and which of these are each one's to choose from, simpler ones first."""
+    """List the learners behind those asked for, and which of these each is chosen from, simpler ones first."""
     found: list[Single] = []
     own = []
     for member in learners:
