@@ -12,6 +12,7 @@ from bnx.classifier import Classifier
 from bnx.coding import Coded
 from bnx.dealing import deal
 from bnx.dependence import Pairs, measure, relevance_of
+from bnx.domains import Domain
 from bnx.encoding import encode
 from bnx.engines import LocalEngine, start_local
 from bnx.engines.local import Progress
@@ -79,12 +80,17 @@ class Comparison:
     @property
     def structures(self) -> tuple[Structure, ...]:
         """The structures learnt from all rows."""
-        return tuple(classifier.structure for classifier in self.classifiers)
+        return self.evaluations[0].learned(()).structures
+
+    @property
+    def domains(self) -> tuple[Domain, ...]:
+        """The attributes as all rows see them."""
+        return self.evaluations[0].learned(()).training.view.domains
 
     @property
     def names(self) -> tuple[str, ...]:
         """Names of the attributes."""
-        return tuple(domain.name for domain in self.classifiers[0].domains)
+        return tuple(domain.name for domain in self.domains)
 
 
 def compare(
@@ -124,7 +130,7 @@ def compare(
     pairs, judged = _tested(first.engine, learned, learners, bounds, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     progress("scoring", 0, 0)
-    held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
+    held_out, not_scored = _held_out(classifiers, learned.training.view.domains, holdout, recipe) if holdout else ((), [])
     recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
     progress("edge ledger", 0, 0)
     told, by_blanks = _told(first), judged.by_blanks(pairs.left, pairs.right)
@@ -230,34 +236,35 @@ def _classifier(evaluation: Evaluation, s: int, coded: Coded) -> Classifier:
     """Build the classifier of one structure from all rows."""
     choice: Choice = evaluation.choices[()]
     learned = choice.trial.learned[()]
-    structure, view = learned.structures[s], learned.training.view
+    structure, domains = learned.structures[s], learned.training.view.domains
     counted = choice.trial.counts[()]
-    counts = tuple(counted.table(s, child) for child in range(len(structure.parents)))
+    kept, own = structure.kept()
     return Classifier(
-        view.domains,
+        tuple(domains[child] for child in kept),
         coded.table.schema.target,
-        structure,
-        counts,
+        own,
+        tuple(counted.table(s, child) for child in kept),
         learned.training.class_counts,
         choice.smoothings[s],
         choice.calibrations[s],
+        dropped=tuple(domains[child].name for child in structure.dropped),
     )
 
 
 def _held_out(
-    classifiers: Sequence[Classifier], source: Source, recipe: Recipe
+    classifiers: Sequence[Classifier], domains: Sequence[Domain], source: Source, recipe: Recipe
 ) -> tuple[tuple[Scores, ...], list[str]]:
     """Score the final classifiers on a table that took no part in anything; say which rows could not be scored."""
     target = classifiers[0].target
     parts: list[list[np.ndarray]] = [[] for _ in classifiers]
-    truth, dropped, unknown, rough = [], 0, np.zeros(len(classifiers[0].domains), np.int64), 0
-    for codes, _ in encode(source, [*classifiers[0].domains, target]):
+    truth, dropped, unknown, rough = [], 0, np.zeros(len(domains), np.int64), 0
+    for codes, _ in encode(source, [*domains, target]):
         known = codes[-1] >= 0
         truth.append(codes[-1][known])
         dropped += int((~known).sum())
         own = codes[:-1][:, known]
         unknown += (own < 0).sum(axis=1)
-        found = [classifier.classified(own) for classifier in classifiers]
+        found = [classifier.classified(classifier.of(own, domains)) for classifier in classifiers]
         rough += int(np.any([approximate for _, approximate in found], axis=0).sum())
         for part, (p, _) in zip(parts, found, strict=True):
             part.append(p)
@@ -270,7 +277,7 @@ def _held_out(
     if dropped:
         why = f"{recipe.target} is blank there or was never seen"
         notes.append(f"{count_of(dropped, 'row')} of {source.name} (--holdout) left out: {why}")
-    names = [domain.name for domain in classifiers[0].domains]
+    names = [domain.name for domain in domains]
     notes += [f"{source.name} (--holdout): {note}" for note in summing_notes(names, unknown, rough)]
     return tuple(scores(np.concatenate(part), rows, len(target)) for part in parts), notes
 

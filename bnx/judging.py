@@ -84,7 +84,7 @@ def pick(
     region = region_of(means)
     chances = [_chances(row, losses[best], folds, region) for row in losses]
     able = [s for s in range(len(structures)) if s == best or chances[s].worse < 0.5]
-    first = {structures[s].parents: s for s in reversed(able)}
+    first = {structures[s].what_it_says: s for s in reversed(able)}
     chosen = min(first.values(), key=lambda s: (len(structures[s].edges), means[s], s))
     return best, chosen, chances[chosen]
 
@@ -144,7 +144,7 @@ def _reason(
         return "It has the lowest log loss and no edges: no dependence pays here."
     if chosen == best:
         return f"It has the lowest log loss, and {fewer}."
-    if structures[chosen].parents == structures[best].parents:
+    if structures[chosen].what_it_says == structures[best].what_it_says:
         return f"From all rows it learnt the same edges as {names[best]}, which has the lowest log loss; {fewer}."
     return (
         f"It has the fewest edges of all structures that are not credibly worse than the best, {names[best]}: the "

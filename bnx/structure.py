@@ -1,12 +1,14 @@
 """A structure: which attributes each attribute takes as parents, besides the class."""
 
 import re
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 from bnx.errors import StructureError
 
 __all__ = ["Structure", "words"]
 
+_TOLD = 5  # attributes left out that are named
 _WORDS = {
     "naive": "no edges",
     "tan": "tree",
@@ -65,6 +67,13 @@ class Structure:
     def edges(self) -> tuple[tuple[int, int], ...]:
         """(parent, child) of every edge, by child, then in the order taken."""
         return tuple((parent, child) for child, parents in enumerate(self.parents) for parent in parents)
+    def kept(self) -> tuple[tuple[int, ...], "Structure"]:
+        """List the attributes that take part, and number them anew in a structure of these alone."""
+        out = set(self.dropped)
+        kept = tuple(one for one in range(len(self.parents)) if one not in out)
+        place = {attribute: number for number, attribute in enumerate(kept)}
+        parents = tuple(tuple(place[parent] for parent in self.parents[child]) for child in kept)
+        return kept, Structure(self.name, parents, self.depth)
 
     @property
     def what_it_says(self) -> tuple[tuple[tuple[int, ...], ...], tuple[int, ...]]:
@@ -72,14 +81,31 @@ class Structure:
         return self.parents, self.dropped
 
 
-def words(name: str) -> str:
-    """Say a structure's name in words: ``up to 2 parents, tested``."""
+def words(name: str, depth: int | None = None, dropped: Sequence[str] = ()) -> str:
+    """Say a structure's name in words: ``up to 2 parents, tested``.
+
+    depth, dropped: what was chosen, of a structure with something to choose: most parents, names of attributes left out.
+    """
+    if depth is not None:
+        how = "a number chosen out of fold" if name == "kdb" else "chosen by leave-one-out"
+        return ", ".join([_up_to(depth), *_without(dropped), how])
     if name in _WORDS:
         return _WORDS[name]
     base, _, tested = name.partition("-")
     ending = ", tested" if tested == "tested" else ""
     found = re.fullmatch(r"kdb(\d+)", base)
     if found:
-        number = int(found[1])
-        return f"up to {number} parent{'' if number == 1 else 's'}{ending}"
+        return _up_to(int(found[1])) + ending
     return name
+
+
+def _up_to(number: int) -> str:
+    return f"up to {number} parent{'' if number == 1 else 's'}"
+
+
+def _without(dropped: Sequence[str]) -> list[str]:
+    """Say which attributes are left out, the first few by name."""
+    if not dropped:
+        return []
+    more = f" and {len(dropped) - _TOLD} more" if len(dropped) > _TOLD else ""
+    return [f"without {', '.join(dropped[:_TOLD])}{more}"]

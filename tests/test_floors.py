@@ -27,7 +27,7 @@ FLOORS = (
     "choosing evaluation gains rating resampling pair_tests",
     "dealing judging ledger observing comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
-    "documents charts findings printed report results tested_text tested_picture",
+    "chosen documents charts findings printed report results tested_text tested_picture",
     "cli",
 )
 PLACES = {name: (floor, place) for floor, names in enumerate(FLOORS) for place, name in enumerate(names.split())}

@@ -87,12 +87,12 @@ class KdbTrimmed:
     def trim(self, judge: LeaveOneOut, widest: Structure, order: Sequence[int], bounds: Bounds) -> Structure:
         """Keep the K and the first attributes of least loss; of equally good ones fewer parents, then attributes.
 
-        Attributes of required edges stay, and so do the edges.
+        At least the first attribute stays. Attributes of required edges stay, and so do the edges.
         """
         least = [len(bounds.parents(child)) for child in range(len(order))]
         losses = judge.losses(order, least, self.depths + 1)
         bound = {end for edge in bounds.required for end in edge}
-        fewest = max((place + 1 for place, attribute in enumerate(order) if attribute in bound), default=0)
+        fewest = max((place + 1 for place, attribute in enumerate(order) if attribute in bound), default=1)
         able = losses[:, fewest:]
         k, more = np.argwhere(able <= able.min() + _EQUAL)[0].tolist()
         dropped = set(order[fewest + more :])
