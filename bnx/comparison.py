@@ -130,7 +130,9 @@ def compare(
     pairs, judged = _tested(first.engine, learned, learners, bounds, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     progress("scoring", 0, 0)
-    held_out, not_scored = _held_out(classifiers, learned.training.view.domains, holdout, recipe) if holdout else ((), [])
+    held_out, not_scored = (
+        _held_out(classifiers, learned.training.view.domains, holdout, recipe) if holdout else ((), [])
+    )
     recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
     progress("edge ledger", 0, 0)
     told, by_blanks = _told(first), judged.by_blanks(pairs.left, pairs.right)

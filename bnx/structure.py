@@ -67,6 +67,7 @@ class Structure:
     def edges(self) -> tuple[tuple[int, int], ...]:
         """(parent, child) of every edge, by child, then in the order taken."""
         return tuple((parent, child) for child, parents in enumerate(self.parents) for parent in parents)
+
     def kept(self) -> tuple[tuple[int, ...], "Structure"]:
         """List the attributes that take part, and number them anew in a structure of these alone."""
         out = set(self.dropped)
@@ -84,7 +85,7 @@ class Structure:
 def words(name: str, depth: int | None = None, dropped: Sequence[str] = ()) -> str:
     """Say a structure's name in words: ``up to 2 parents, tested``.
 
-    depth, dropped: what was chosen, of a structure with something to choose: most parents, names of attributes left out.
+    depth, dropped: most parents and names of attributes left out, of a structure where that was chosen.
     """
     if depth is not None:
         how = "a number chosen out of fold" if name == "kdb" else "chosen by leave-one-out"

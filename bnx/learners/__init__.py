@@ -8,12 +8,23 @@ from bnx.dependence import Dependence
 from bnx.errors import SettingError
 from bnx.gating import Bounds, Gate, Learning
 from bnx.learners.heldout import Heldout, Judge
-from bnx.learners.kdb import Kdb, KdbTested
+from bnx.learners.kdb import Kdb, KdbTested, relevance_order
 from bnx.learners.kdb_chosen import KdbChosen, KdbTrimmed
 from bnx.learners.naive import Naive
 from bnx.learners.tan import Tan
 
-__all__ = ["Heldout", "Judge", "KdbChosen", "KdbTrimmed", "Learner", "PairLearner", "Single", "learner", "singles"]
+__all__ = [
+    "Heldout",
+    "Judge",
+    "KdbChosen",
+    "KdbTrimmed",
+    "Learner",
+    "PairLearner",
+    "Single",
+    "learner",
+    "relevance_order",
+    "singles",
+]
 
 
 class PairLearner(Protocol):
