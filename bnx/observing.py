@@ -74,9 +74,7 @@ def short_of_room(evaluation: Evaluation, bounds: Bounds) -> list[str]:
     """Say where attributes got fewer parents than the number chosen, since their tables would have become too large."""
     learned, notes = evaluation.learned(()), []
     order = relevance_order(relevance_of(evaluation.engine, learned.training), bounds)
-    able = {
-        child: sum(not bounds.forbids(one, child) for one in order[:place]) for place, child in enumerate(order)
-    }
+    able = {child: sum(not bounds.forbids(one, child) for one in order[:place]) for place, child in enumerate(order)}
     for structure in learned.structures:
         if structure.depth is not None:
             kept = set(order) - set(structure.dropped)
