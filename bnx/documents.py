@@ -20,6 +20,8 @@ from bnx.ledger import EdgeEvidence
 from bnx.picture import Arrow, Chip, Picture
 from bnx.plain import finite
 from bnx.rating import StructureScore
+from bnx.structure import words
+from bnx.text import count_of
 from bnx.verdicts import OUTCOMES, VERDICTS, TestResult
 
 __all__ = [
@@ -263,8 +265,15 @@ def picture_of(document: dict[str, Any]) -> Picture:
         )
         for edge in document["edges"]
     )
-    subtitle = document["words"] if document["words"] != document["name"] else ""
-    return Picture(document["name"], document["class"]["name"], chips, arrows, subtitle)
+    return Picture(document["name"], document["class"]["name"], chips, arrows, _subtitle(document))
+
+
+def _subtitle(document: dict[str, Any]) -> str:
+    """Say the name in words, and how many attributes are left out; nothing where words would only repeat the name."""
+    told = words(document["name"], document.get("most_parents"))
+    parts = [told] if told != document["name"] else []
+    dropped = len(document.get("dropped", []))
+    return ", ".join([*parts, f"{count_of(dropped, 'attribute')} left out"] if dropped else parts)
 
 
 def dot_of(document: dict[str, Any]) -> str:
