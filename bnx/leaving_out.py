@@ -20,7 +20,7 @@ Result = TypeVar("Result")
 
 MOST_JUDGED = 50_000
 STRENGTH, DEEPER = 2.0, 32.0  # records that the next wider table stands for, given the class and given parents
-TEMPERATURES = np.array([1.0, 0.75, 0.5])  # each model is judged at its best one
+
 _CELLS = 64_000_000  # counts of training sets that are held together
 
 
@@ -48,12 +48,12 @@ class LeftOut:
         judged = np.diff(rows.starts).reshape(-1, len(floor)).sum(axis=0)
         weights = self.class_counts / np.maximum(judged, 1)
         terms = np.zeros((models, len(floor), rows.codes.shape[1]))
-        out = np.empty((1 + len(order), len(TEMPERATURES), models))
+        out = np.empty((1 + len(order), 3, models))
         nothing = np.zeros(0, np.int64)
         families = [(nothing, nothing, nothing), *map(self._family, order)]
         counts = [np.zeros((len(floor), 0), np.int32), *map(self._counts, order)]
         few = [0, *(least[one] for one in order)]
-        given = (TEMPERATURES, weights, floor, terms)
+        given = (weights, floor, terms)
         for k, family in enumerate(families):
             counted = (counts[k], self.class_counts)
             add_left_out(rows.codes, rows.starts, *family, few[k], *counted, STRENGTH, DEEPER, *given, out[k])

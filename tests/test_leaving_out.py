@@ -10,7 +10,7 @@ from hypothesis import strategies as st
 
 from bnx import leaving_out
 from bnx.engines import LocalEngine
-from bnx.leaving_out import DEEPER, STRENGTH, TEMPERATURES, LeftOut, leave_out
+from bnx.leaving_out import DEEPER, STRENGTH, LeftOut, leave_out
 from bnx.structure import Structure
 from bnx.trainings import Training
 
@@ -67,6 +67,7 @@ def loss_of_refits(records: np.ndarray, sizes: Sequence[int], families: Sequence
     return float(losses.min())
 
 
+TEMPERATURES = (1.0, 0.75, 0.5)
 PARENTS: tuple[Parents, ...] = ((1,), (), (1, 0), (2, 1, 0))
 ORDER = [1, 0, 2, 3]
 

@@ -13,8 +13,8 @@ __all__ = ["add_left_out"]
 
 _ROWS = 256  # of a block
 _LANES = 16  # chances of a block that are multiplied side by side before a logarithm is taken of each product
-_NEVER = -1e9  # log prior of a class without another row
-_MOST = 700.0  # log odds beyond which a class counts as this much heavier
+_ALWAYS = 1e300  # prior odds against a class without another row
+_MOST = 170.0  # a quarter of the log odds beyond which a class counts as this much heavier
 
 
 @kernel
@@ -29,7 +29,6 @@ def add_left_out(
     class_counts: np.ndarray,
     strength: float,
     deeper: float,
-    temperatures: np.ndarray,
     weights: np.ndarray,
     floor: np.ndarray,
     terms: np.ndarray,
@@ -42,10 +41,10 @@ def add_left_out(
     these are levels; the codes after them are of cells not observed, for which tables with fewer parents are read;
     least: parents that every model takes; counts (C, cells) int32 of all rows, the child fastest, and class_counts
     (C,); strength, deeper: records of the back-off given the class and given parents too, whose first table is the
-    attribute's share in all classes with 1 record a level; temperatures (T,): what the terms are multiplied by; weights
-    (C,): rows that each judged row of a class stands for; floor (C,): added to each chance, which is scaled down so
-    that all sum to 1; terms (M, C, N): of each of M models, whose parents number 0 to M - 1, or as many as there are;
-    out (T, M): sums of losses.
+    attribute's share in all classes with 1 record a level; weights (C,): rows that each judged row of a class stands
+    for; floor (C,): added to each chance, which is scaled down so that all sum to 1; terms (M, C, N): of each of M
+    models, whose parents number 0 to M - 1, or as many as there are; out (3, M): sums of losses, the terms multiplied
+    by 1, 3/4 and 1/2.
 
     Source: Martinez, Webb, Chen & Zaidi 2016 (all depths and all numbers of attributes judged by leaving rows out of
     counts made once).
@@ -59,32 +58,31 @@ def add_left_out(
         _write_tables(counts, sizes, observed, strength, deeper, cells, first, whole, own)
     place = np.empty((depth + 1, _ROWS), np.int64)
     known = np.empty(_ROWS, np.int64)  # depth of the deepest table that can be read
-    odds, chances, work = np.empty(_ROWS), np.empty(_ROWS), np.empty(3 * _ROWS)
+    odds, chances, work = np.empty(_ROWS), np.empty((3, _ROWS)), np.empty(3 * _ROWS)
     scale = 1.0
     for c in range(classes):
         scale -= floor[c]
-    for t in range(temperatures.size):
-        for k in range(models):
+    for k in range(models):
+        for t in range(3):
             out[t, k] = 0.0
     prior = np.empty(classes)
     for s in range(starts.size - 1):
         y = s % classes
         for c in range(classes):
-            others = class_counts[c] - (c == y)
-            prior[c] = np.log(others) if others > 0 else _NEVER
+            prior[c] = class_counts[c] - (c == y)
         for low in range(starts[s], starts[s + 1], _ROWS):
             rows = min(_ROWS, starts[s + 1] - low)
             if depth >= 0:
-                _find_cells(codes, members, sizes, observed, low, rows, place, known)
+                shallowest = _find_cells(codes, members, sizes, observed, low, rows, place, known)
             for k in range(models):
                 if depth >= 0:
                     deep = min(max(k, least), depth)
-                    _add_terms(terms, k, y, low, rows, deep, known, place, first, cells, whole, own)
-                for t in range(temperatures.size):
-                    loss = _block_loss(
-                        terms, prior, temperatures[t], k, y, low, rows, scale, floor[y], odds, chances, work
-                    )
-                    out[t, k] += weights[y] * loss
+                    at, size = first[deep], cells[deep]
+                    if shallowest >= deep:
+                        _add_terms(terms, k, y, low, rows, place[deep], whole[at:], own[at:], size)
+                    else:
+                        _add_known(terms, k, y, low, rows, deep, known, place, first, cells, whole, own)
+                _add_losses(terms, prior, k, y, low, rows, scale, floor[y], weights[y], odds, chances, work, out)
 
 
 @inlined
@@ -99,6 +97,29 @@ def _lay_out(sizes: np.ndarray, classes: int, first: np.ndarray, cells: np.ndarr
 
 @part
 def _add_terms(
+    terms: np.ndarray,
+    k: int,
+    y: int,
+    low: int,
+    rows: int,
+    place: np.ndarray,
+    whole: np.ndarray,
+    own: np.ndarray,
+    size: int,
+) -> None:
+    """Add what the tables of one depth, ``size`` cells a class, say to a block of rows of class ``y``."""
+    for c in range(terms.shape[1]):
+        line, at = terms[k, c], c * size
+        if c == y:
+            for row in range(rows):
+                line[low + row] += own[at + place[row]]
+        else:
+            for row in range(rows):
+                line[low + row] += whole[at + place[row]]
+
+
+@part
+def _add_known(
     terms: np.ndarray,
     k: int,
     y: int,
@@ -131,9 +152,14 @@ def _find_cells(
     rows: int,
     place: np.ndarray,
     known: np.ndarray,
-) -> None:
-    """Number the cell of each row at every depth, and find the deepest one whose members are all observed."""
+) -> int:
+    """Number the cell of each row at every depth, and find the deepest one whose members are all observed.
+
+    Returns:
+        The least of these depths.
+    """
     depth = sizes.size - 1
+    least = depth
     size = sizes[depth]
     for row in range(rows):
         level = np.int64(codes[members[depth], low + row])
@@ -146,42 +172,52 @@ def _find_cells(
             place[d, row] = context * size + level
             if known[row] == d - 1 and parent < observed[d - 1]:
                 known[row] = d
+        least = min(least, known[row])
+    return least
 
 
 @part
-def _block_loss(
+def _add_losses(
     terms: np.ndarray,
     prior: np.ndarray,
-    temperature: float,
     k: int,
     y: int,
     low: int,
     rows: int,
     scale: float,
     floor: float,
+    weight: float,
     odds: np.ndarray,
     chances: np.ndarray,
     work: np.ndarray,
-) -> float:
-    """Sum the losses of a block of rows of class ``y`` under model ``k``."""
-    for row in range(rows):
-        chances[row] = 1.0
+    out: np.ndarray,
+) -> None:
+    """Add the losses of a block of rows of class ``y`` under model ``k`` at each temperature.
+
+    prior (C,): rows of each class, none for a class without another row.
+    """
+    for t in range(3):
+        for row in range(rows):
+            chances[t, row] = 1.0
     for c in range(terms.shape[1]):
-        if c != y:
-            before = prior[c] - prior[y]
+        if c != y and prior[c] > 0.0:
+            before = prior[c] / prior[y] if prior[y] > 0.0 else _ALWAYS
             for row in range(rows):
-                odds[row] = min(before + temperature * (terms[k, c, low + row] - terms[k, y, low + row]), _MOST)
+                odds[row] = min(0.25 * (terms[k, c, low + row] - terms[k, y, low + row]), _MOST)
             exponentials(odds[:rows], work)
             for row in range(rows):
-                chances[row] += odds[row]
-    for row in range(rows):
-        chances[row] = scale / chances[row] + floor
-    for row in range(_LANES, rows):
-        chances[row % _LANES] *= chances[row]
-    loss = 0.0
-    for lane in range(min(_LANES, rows)):
-        loss -= np.log(chances[lane])
-    return loss
+                root = odds[row]
+                square = root * root
+                chances[0, row] += before * (square * square)
+                chances[1, row] += before * (square * root)
+                chances[2, row] += before * square
+    for t in range(3):
+        for row in range(rows):
+            chances[t, row] = scale / chances[t, row] + floor
+        for row in range(_LANES, rows):
+            chances[t, row % _LANES] *= chances[t, row]
+        for lane in range(min(_LANES, rows)):
+            out[t, k] -= weight * np.log(chances[t, lane])
 
 
 @part
