@@ -1,6 +1,7 @@
 """Leave-one-out in one pass, against models that are fitted anew without every single row."""
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -9,6 +10,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from bnx import leaving_out
+from bnx.domains import Domain
 from bnx.engines import LocalEngine
 from bnx.leaving_out import DEEPER, STRENGTH, LeftOut, leave_out
 from bnx.structure import Structure
@@ -38,12 +40,19 @@ def judged_of(engine: LocalEngine, training: Training, structure: Structure) -> 
 
 
 def share(records: np.ndarray, sizes: Sequence[int], row: np.ndarray, family: Parents, c: int) -> float:
-    """Back off from class and parents to less, counting records (rows, n + 1), the class last."""
+    """Back off from class and parents to less, counting records (rows, n + 1), the class last, where all is observed.
+
+    Codes of -1 are of cells not observed: from the first such parent on nothing is backed off to.
+    """
     child, parents = family[-1], family[:-1]
-    same = records[:, child] == row[child]
-    found = (same.sum() + 1) / (len(records) + sizes[child])
+    if row[child] < 0:
+        return 1.0
+    same, known = records[:, child] == row[child], records[:, child] >= 0
+    found = (same.sum() + 1) / (known.sum() + sizes[child])
     for depth in range(len(parents) + 1):
-        context = records[:, -1] == c
+        if depth and row[parents[depth - 1]] < 0:
+            break
+        context = known & (records[:, -1] == c)
         for parent in parents[:depth]:
             context &= records[:, parent] == row[parent]
         strength = DEEPER if depth else STRENGTH
@@ -96,6 +105,21 @@ def test_tiny_tables_and_lone_rows_of_a_class_are_judged_as_by_refits(rows: int,
     for k, s in ((0, 0), (3, 4), (2, 3)):
         families = [(*PARENTS[child][:k], child) for child in ORDER[:s]]
         assert found[k, s] == pytest.approx(loss_of_refits(records, sizes, families, classes), rel=1e-9)
+
+
+def test_rows_with_cells_not_observed_are_judged_by_the_tables_before_them() -> None:
+    codes, target = drawn(40, 3, seed=9)
+    sizes = [2, 3, 2, 3]
+    blank = np.random.default_rng(2).random(codes.shape) < 0.2
+    table = coded(np.where(blank, np.array(sizes)[:, None], codes), target)
+    domains = tuple(Domain(f"a{i}", tuple(map(str, range(size))), veiled=True) for i, size in enumerate(sizes))
+    table = replace(table, schema=replace(table.schema, attributes=domains))
+    engine = started(table, np.arange(40) % 6, 6)
+    found = judged_of(engine, whole(engine, table), Structure("x", PARENTS)).losses(ORDER, [0] * 4, 4)
+    records = np.column_stack([np.where(blank, -1, codes).T, target])
+    for k, s in ((0, 1), (0, 4), (1, 4), (2, 3), (3, 4)):
+        families = [(*PARENTS[child][:k], child) for child in ORDER[:s]]
+        assert found[k, s] == pytest.approx(loss_of_refits(records, sizes, families, 3), rel=1e-9)
 
 
 def test_required_parents_are_in_every_model() -> None:
