@@ -34,11 +34,6 @@ class Classifier:
     other_prior: np.ndarray | None = None
     dropped: tuple[str, ...] = ()
 
-    def of(self, codes: np.ndarray, domains: Sequence[Domain]) -> np.ndarray:
-        """Keep the attributes of this structure, (n, N), of codes under domains that hold them all."""
-        place = {domain.name: number for number, domain in enumerate(domains)}
-        return codes[[place[domain.name] for domain in self.domains]]
-
     @property
     def log_prior(self) -> np.ndarray:
         """Log share of each class (nats), (C,)."""

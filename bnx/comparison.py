@@ -12,7 +12,7 @@ from bnx.classifier import Classifier
 from bnx.coding import Coded
 from bnx.dealing import deal
 from bnx.dependence import Pairs, measure, relevance_of
-from bnx.domains import Domain
+from bnx.domains import Domain, codes_of
 from bnx.encoding import encode
 from bnx.engines import LocalEngine, start_local
 from bnx.engines.local import Progress
@@ -266,7 +266,7 @@ def _held_out(
         dropped += int((~known).sum())
         own = codes[:-1][:, known]
         unknown += (own < 0).sum(axis=1)
-        found = [classifier.classified(classifier.of(own, domains)) for classifier in classifiers]
+        found = [classifier.classified(codes_of(classifier.domains, own, domains)) for classifier in classifiers]
         rough += int(np.any([approximate for _, approximate in found], axis=0).sum())
         for part, (p, _) in zip(parts, found, strict=True):
             part.append(p)

@@ -13,6 +13,7 @@ from bnx.choosing import inner_losses
 from bnx.comparison import Comparison
 from bnx.dependence import Dependence
 from bnx.documents import comparison_document, structure_document
+from bnx.domains import codes_of
 from bnx.errors import FormatError, StructureError
 from bnx.formats.structure_json import classifier_document, classifier_of
 from bnx.gating import Bounds
@@ -135,7 +136,7 @@ def test_unobserved_cells_of_kept_attributes_are_summed_out_and_of_others_ignore
     from_rows = terms.evidence(one.engine.codes, 0, 600)
     codes = one.engine.codes.astype(np.int64)
     codes[codes >= np.array([len(domain) for domain in found.domains])[:, None]] = -1
-    whole, rough = classifier.evidence(classifier.of(codes, found.domains))
+    whole, rough = classifier.evidence(codes_of(classifier.domains, codes, found.domains))
     assert not rough.any()
     assert from_rows[:, 0] == pytest.approx(whole[:, 1] - whole[:, 0], abs=1e-10)
 
