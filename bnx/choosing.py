@@ -127,19 +127,20 @@ def choose(
     folds: int,
     trials: Sequence[Trial],
     losses: Sequence[Mapping[tuple[Held, int], np.ndarray]],
-    members: Sequence[range],
     options: Sequence[Smoothing],
     sample: Sample,
     calibrate: bool,
     nested: bool,
+    members: Sequence[range] | None = None,
 ) -> Choice:
     """Choose for the training set without ``held``, on its own rows only.
 
     losses: of each trial, from ``inner_losses``; empty when there is one trial and one smoothing. members: the learnt
-    structures that each one wanted is chosen from, together with its smoothing. Without ``nested`` there is nothing to
+    structures that each one wanted is chosen from, together with its smoothing; by itself unless given. Without ``nested`` there is nothing to
     choose or to calibrate at all. The first kind of cut points, smoothing and member stay unless another is ahead by
     some nats: what leads by less in a training fold tends to fall behind in the fold left out.
     """
+    members = [range(s, s + 1) for s in range(len(trials[0].learned[held].structures))] if members is None else members
     structures = len(members)
     if not nested:
         bare = uncalibrated(trials[0].learned[held].training.class_counts)

@@ -12,7 +12,7 @@ from bnx.classifier import Classifier
 from bnx.coding import Coded
 from bnx.dealing import deal
 from bnx.dependence import Pairs, measure, relevance_of
-from bnx.domains import Domain, codes_of
+from bnx.domains import Domain, codes_of, together
 from bnx.encoding import encode
 from bnx.engines import LocalEngine, start_local
 from bnx.engines.local import Progress
@@ -130,9 +130,7 @@ def compare(
     pairs, judged = _tested(first.engine, learned, learners, bounds, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     progress("scoring", 0, 0)
-    held_out, not_scored = (
-        _held_out(classifiers, learned.training.view.domains, holdout, recipe) if holdout else ((), [])
-    )
+    held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
     recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
     progress("edge ledger", 0, 0)
     told, by_blanks = _told(first), judged.by_blanks(pairs.left, pairs.right)
@@ -254,10 +252,10 @@ def _classifier(evaluation: Evaluation, s: int, coded: Coded) -> Classifier:
 
 
 def _held_out(
-    classifiers: Sequence[Classifier], domains: Sequence[Domain], source: Source, recipe: Recipe
+    classifiers: Sequence[Classifier], source: Source, recipe: Recipe
 ) -> tuple[tuple[Scores, ...], list[str]]:
     """Score the final classifiers on a table that took no part in anything; say which rows could not be scored."""
-    target = classifiers[0].target
+    target, domains = classifiers[0].target, together(one.domains for one in classifiers)
     parts: list[list[np.ndarray]] = [[] for _ in classifiers]
     truth, dropped, unknown, rough = [], 0, np.zeros(len(domains), np.int64), 0
     for codes, _ in encode(source, [*domains, target]):

@@ -1,6 +1,6 @@
 """What a column can hold: the levels behind its codes, and the cut points behind numeric levels."""
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from itertools import pairwise
 
@@ -9,7 +9,7 @@ import numpy as np
 from bnx.errors import DataError
 from bnx.text import nearest
 
-__all__ = ["Coarsening", "Domain", "Schema", "codes_of", "interval_names"]
+__all__ = ["Coarsening", "Domain", "Schema", "codes_of", "interval_names", "together"]
 
 
 @dataclass(frozen=True)
@@ -93,3 +93,8 @@ def codes_of(wanted: Sequence[Domain], codes: np.ndarray, domains: Sequence[Doma
     """Keep the codes of some columns, of codes (n, N) under domains that hold them all."""
     place = {domain.name: number for number, domain in enumerate(domains)}
     return codes[[place[domain.name] for domain in wanted]]
+
+
+def together(parts: Iterable[Sequence[Domain]]) -> tuple[Domain, ...]:
+    """List the domains of all parts, each once."""
+    return tuple({domain.name: domain for part in parts for domain in part}.values())

@@ -104,7 +104,7 @@ def evaluate(
     outer: list[tuple[int, ...]] = [(), *((fold,) for fold in range(folds))]
 
     def settle(held: tuple[int, ...]) -> Choice:
-        return choose(held, folds, trials, losses, own, options, sample, recipe.temperature, nested)
+        return choose(held, folds, trials, losses, options, sample, recipe.temperature, nested, own)
 
     choices = dict(zip(outer, engine.map(settle, outer, "calibrating"), strict=True))
     rows = tuple(engine.rows_of(fold * parts, (fold + 1) * parts) for fold in range(folds))
