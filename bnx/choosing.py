@@ -136,9 +136,10 @@ def choose(
     """Choose for the training set without ``held``, on its own rows only.
 
     losses: of each trial, from ``inner_losses``; empty when there is one trial and one smoothing. members: the learnt
-    structures that each one wanted is chosen from, together with its smoothing; by itself unless given. Without ``nested`` there is nothing to
-    choose or to calibrate at all. The first kind of cut points, smoothing and member stay unless another is ahead by
-    some nats: what leads by less in a training fold tends to fall behind in the fold left out.
+    structures that each one wanted is chosen from, together with its smoothing; itself alone if None. Without
+    ``nested`` there is nothing to choose or to calibrate at all. The first kind of cut points, smoothing and member
+    stay unless another is ahead by some nats: what leads by less in a training fold tends to fall behind in the fold
+    left out.
     """
     members = [range(s, s + 1) for s in range(len(trials[0].learned[held].structures))] if members is None else members
     structures = len(members)
