@@ -1,7 +1,7 @@
 """What is chosen inside a training set, out of fold: cut points, smoothing, calibration."""
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -23,6 +23,7 @@ Held = tuple[int, ...]
 
 _TEMPERATURES = 3  # 1, 3/4 and 1/2
 _SMOOTHING_LEAD = 2.0  # nats in all by which a smoothing must be ahead of the first one
+_PARENT_LEAD = 2.0  # nats in all that each further parent must save where their number is chosen
 _CUTS_LEAD = 5.0  # nats in all by which cut points must be ahead of the first kind
 _ROWS = 4096  # rows judged at a time
 
@@ -34,6 +35,17 @@ class Trial:
     bins: str
     learned: Mapping[Held, Learned]
     counts: Mapping[Held, Counted]
+
+    def narrowed(self, sets: Sequence[Held], structures: Sequence[int]) -> "Trial":
+        """Keep some structures of some training sets."""
+        if list(structures) == list(range(len(self.learned[sets[0]].structures))):
+            return self
+        learned, counts = {}, {}
+        for held in sets:
+            one, counted = self.learned[held], self.counts[held]
+            learned[held] = replace(one, structures=tuple(one.structures[s] for s in structures))
+            counts[held] = replace(counted, families=counted.families.narrowed(structures))
+        return Trial(self.bins, learned, counts)
 
 
 @dataclass(frozen=True)
@@ -126,28 +138,36 @@ def choose(
     calibrate: bool,
     nested: bool,
     mix: bool,
+    members: Sequence[range] | None = None,
 ) -> Choice:
     """Choose for the training set without ``held``, on its own rows only.
 
-    losses: of each trial, from ``inner_losses``; empty when there is one trial and one smoothing. Without ``nested``
-    there is nothing to choose or to calibrate at all. The first kind of cut points and the first smoothing stay unless
-    another is ahead by some nats: what leads by less in a training fold tends to fall behind in the fold left out.
-    With ``mix`` different structures are mixed.
+    losses: of each trial, from ``inner_losses``; empty when there is one trial and one smoothing. members: the learnt
+    structures that each one wanted is chosen from, together with its smoothing; itself alone if None. Without
+    ``nested`` there is nothing to choose or to calibrate at all. The first kind of cut points, smoothing and member
+    stay unless another is ahead by some nats: what leads by less in a training fold tends to fall behind in the fold
+    left out. With ``mix`` different structures are mixed.
     """
+    members = [range(s, s + 1) for s in range(len(trials[0].learned[held].structures))] if members is None else members
+    structures = len(members)
     if not nested:
-        structures = len(trials[0].learned[held].structures)
         bare = uncalibrated(trials[0].learned[held].training.class_counts)
         return Choice(trials[0], (options[0],) * structures, (bare,) * structures, np.zeros((structures, 0)), 0, None)
     inner = inner_sets(held, folds)
-    trial, chosen = trials[0], [options[0]] * len(trials[0].learned[held].structures)
+    trial, chosen = trials[0], [options[0]] * structures
     if losses:
         lead = _SMOOTHING_LEAD * (np.arange(len(options)) > 0)
+        place = np.concatenate([np.arange(len(own)) for own in members])
+        lead = lead + _PARENT_LEAD * place[:, None]
         totals = [
             np.sum([table[key] for key in inner], axis=0).min(axis=2) + lead + (_CUTS_LEAD if k else 0.0)
             for k, table in enumerate(losses)
         ]
         best = int(np.argmin([total.min() for total in totals]))
-        trial, chosen = trials[best], [options[k] for k in totals[best].argmin(axis=1)]
+        least = [np.argwhere(totals[best][own] == totals[best][own].min())[0] for own in members]
+        chosen = [options[v] for _, v in least]
+        picked = [own[m] for own, (m, _) in zip(members, least, strict=True)]
+        trial = trials[best].narrowed([held, *(one for one, _ in inner)], picked)
     plain = None if calibrate else uncalibrated(trial.learned[held].training.class_counts)
     return _calibrated(held, trial, tuple(chosen), inner, sample, plain, mix)
 

@@ -21,7 +21,7 @@ class Classifier:
 
     ``counts``: per attribute, training rows (C, levels of parents in the order taken..., levels of the child) int32;
     ``class_counts`` (C,) int64; ``other_prior`` (C,): shares of the classes where new records come from, None if they
-    are those of the training rows.
+    are those of the training rows; ``dropped``: names of attributes that were left out, which are none of ``domains``.
     """
 
     domains: tuple[Domain, ...]
@@ -32,6 +32,7 @@ class Classifier:
     smoothing: Smoothing
     calibration: Calibration
     other_prior: np.ndarray | None = None
+    dropped: tuple[str, ...] = ()
 
     @property
     def log_prior(self) -> np.ndarray:

@@ -12,6 +12,7 @@ from bnx.classifier import Classifier
 from bnx.coding import Coded
 from bnx.dealing import deal
 from bnx.dependence import Pairs, measure, relevance_of
+from bnx.domains import Domain
 from bnx.engines import LocalEngine, start_local
 from bnx.engines.local import Progress
 from bnx.errors import SettingError
@@ -78,12 +79,17 @@ class Comparison:
     @property
     def structures(self) -> tuple[Structure, ...]:
         """The structures learnt from all rows."""
-        return tuple(classifier.structure for classifier in self.classifiers)
+        return self.evaluations[0].learned(()).structures
+
+    @property
+    def domains(self) -> tuple[Domain, ...]:
+        """The attributes as all rows see them."""
+        return self.evaluations[0].learned(()).training.view.domains
 
     @property
     def names(self) -> tuple[str, ...]:
         """Names of the attributes."""
-        return tuple(domain.name for domain in self.classifiers[0].domains)
+        return tuple(domain.name for domain in self.domains)
 
 
 def compare(
@@ -229,17 +235,18 @@ def _classifier(evaluation: Evaluation, s: int, coded: Coded) -> Classifier:
     """Build the classifier of one structure from all rows."""
     choice: Choice = evaluation.choices[()]
     learned = choice.trial.learned[()]
-    structure, view = learned.structures[s], learned.training.view
+    structure, domains = learned.structures[s], learned.training.view.domains
     counted = choice.trial.counts[()]
-    counts = tuple(counted.table(s, child) for child in range(len(structure.parents)))
+    kept, own = structure.kept()
     return Classifier(
-        view.domains,
+        tuple(domains[child] for child in kept),
         coded.table.schema.target,
-        structure,
-        counts,
+        own,
+        tuple(counted.table(s, child) for child in kept),
         learned.training.class_counts,
         choice.smoothings[s],
         choice.calibrations[s],
+        dropped=tuple(domains[child].name for child in structure.dropped),
     )
 
 

@@ -11,6 +11,7 @@ from bnx.engines import LocalEngine
 from bnx.kernels.contingency import COLUMNS, NATS, ROWS, one_table, table_statistics
 from bnx.kernels.reducing import Sets, blocks_of_masks, reduce_table, reduce_tile
 from bnx.pair_counting import count_pair, count_tile, rows_of_groups, shares
+from bnx.room import Room, room_of
 from bnx.tiles import tiles_of
 from bnx.trainings import Training
 from bnx.views import Refinement, refine
@@ -27,10 +28,14 @@ _SMALL = 1_000_000  # ... or at most this many
 
 @dataclass(frozen=True)
 class Dependence:
-    """What learners see, in bits: ``relevance`` (n,) shared with the class, ``strength`` (n, n) shared given it."""
+    """What learners see, in bits: ``relevance`` (n,) shared with the class, ``strength`` (n, n) shared given it.
+
+    ``room``: for tables of many parents; None: without end.
+    """
 
     relevance: np.ndarray
     strength: np.ndarray
+    room: Room | None = None
 
 
 @dataclass(frozen=True)
@@ -103,7 +108,8 @@ def measure(
     def one(number: int) -> tuple[Dependence, Pairs]:
         pairs = Pairs(left, right, statistics[number], marginal if number == 0 else marginal[:0])
         strength = pairs.matrix(_bits(statistics[number]), attributes)
-        return Dependence(relevance_of(engine, trainings[number]), strength), pairs
+        training = trainings[number]
+        return Dependence(relevance_of(engine, training), strength, room_of(training)), pairs
 
     return engine.map(one, range(len(trainings)))
 

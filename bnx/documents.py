@@ -11,6 +11,7 @@ import pyarrow as pa
 import scipy
 
 from bnx import __version__
+from bnx.chosen import chosen_entry, words_of
 from bnx.comparison import Comparison
 from bnx.formats.dot import dot_source
 from bnx.formats.structure_json import classifier_document
@@ -20,6 +21,7 @@ from bnx.picture import Arrow, Chip, Picture
 from bnx.plain import finite
 from bnx.score_entries import against_entry, fold_entries, score_entry
 from bnx.structure import words
+from bnx.text import count_of
 from bnx.verdicts import OUTCOMES, VERDICTS, TestResult
 
 __all__ = [
@@ -72,7 +74,7 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
                     "cuts": list(domain.cuts),
                     "bits_with_class": float(bits),
                 }
-                for domain, bits in zip(comparison.classifiers[0].domains, comparison.relevance, strict=True)
+                for domain, bits in zip(comparison.domains, comparison.relevance, strict=True)
             ],
             "settings": comparison.recipe.to_dict(),
             "structures": [structure_entry(comparison, s) for s in range(len(names))],
@@ -105,10 +107,11 @@ def structure_entry(comparison: Comparison, s: int) -> dict[str, Any]:
     """Describe one structure and its scores."""
     classifier, result, names = comparison.classifiers[s], comparison.results[s], comparison.names
     levels = classifier.target.levels
-    calibration = classifier.calibration
+    calibration, chosen = classifier.calibration, chosen_entry(comparison, s)
     entry = {
         "name": classifier.structure.name,
-        "words": words(classifier.structure.name),
+        "words": words_of(classifier.structure.name, chosen),
+        "chosen": chosen,
         "edges": [edge_entry(names, edge) for edge in comparison.edges[s]],
         "free_parameters": classifier.free_parameters,
         **score_entry(result, levels),
@@ -184,6 +187,7 @@ def structure_document(comparison: Comparison, s: int) -> dict[str, Any]:
     given = {
         "name",
         "words",
+        "chosen",
         "edges",
         "free_parameters",
         "temperature",
@@ -230,8 +234,15 @@ def picture_of(document: dict[str, Any]) -> Picture:
         )
         for edge in document["edges"]
     )
-    subtitle = words(document["name"]) if words(document["name"]) != document["name"] else ""
-    return Picture(document["name"], document["class"]["name"], chips, arrows, subtitle)
+    return Picture(document["name"], document["class"]["name"], chips, arrows, _subtitle(document))
+
+
+def _subtitle(document: dict[str, Any]) -> str:
+    """Say the name in words, and how many attributes are left out; nothing where words would only repeat the name."""
+    told = words(document["name"], document.get("most_parents"))
+    parts = [told] if told != document["name"] else []
+    dropped = len(document.get("dropped", []))
+    return ", ".join([*parts, f"{count_of(dropped, 'attribute')} left out"] if dropped else parts)
 
 
 def dot_of(document: dict[str, Any]) -> str:

@@ -1,6 +1,6 @@
 """What a column can hold: the levels behind its codes, and the cut points behind numeric levels."""
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from itertools import pairwise
 
@@ -9,7 +9,7 @@ import numpy as np
 from bnx.errors import DataError
 from bnx.text import nearest
 
-__all__ = ["Coarsening", "Domain", "Schema", "interval_names"]
+__all__ = ["Coarsening", "Domain", "Schema", "codes_of", "interval_names", "together"]
 
 
 @dataclass(frozen=True)
@@ -87,3 +87,14 @@ def interval_names(cuts: Sequence[float]) -> tuple[str, ...]:
         texts = [repr(float(cut)) for cut in cuts]
     inner = [f"{low} to {high}" for low, high in pairwise(texts)]
     return (f"<= {texts[0]}", *inner, f"> {texts[-1]}")
+
+
+def codes_of(wanted: Sequence[Domain], codes: np.ndarray, domains: Sequence[Domain]) -> np.ndarray:
+    """Keep the codes of some columns, of codes (n, N) under domains that hold them all."""
+    place = {domain.name: number for number, domain in enumerate(domains)}
+    return codes[[place[domain.name] for domain in wanted]]
+
+
+def together(parts: Iterable[Sequence[Domain]]) -> tuple[Domain, ...]:
+    """List the domains of all parts, each once."""
+    return tuple({domain.name: domain for part in parts for domain in part}.values())

@@ -10,7 +10,7 @@ from bnx.choosing import Choice, choose, inner_losses, make_trial
 from bnx.domains import Schema
 from bnx.engines import LocalEngine
 from bnx.gating import Bounds
-from bnx.learners import Learner
+from bnx.learners import Learner, singles
 from bnx.learning import Learned, learn
 from bnx.mixing import mixed
 from bnx.parameters import candidates
@@ -119,7 +119,8 @@ def evaluate(
     """
     options = candidates(recipe.smoothing)
     kinds = bins_to_try(schema, recipe.bins)
-    choices_open = len(options) > 1 or len(kinds) > 1
+    members, own = singles(learners, bounds)
+    choices_open = len(options) > 1 or len(kinds) > 1 or len(members) > len(own)
     nested = choices_open or recipe.temperature or len(learners) > 1
     parts = engine.blocks // folds
     masks = {held: mask_without(held, folds, parts) for held in held_sets(folds, nested)}
@@ -127,14 +128,14 @@ def evaluate(
     trials, losses = [], []
     for kind in kinds:
         trainings = make_trainings(engine, schema, masks, kind, recipe.max_levels)
-        trial = make_trial(engine, kind, learn(engine, trainings, learners, bounds, recipe))
+        trial = make_trial(engine, kind, learn(engine, trainings, members, bounds, recipe))
         trials.append(trial)
         if choices_open:
             losses.append(inner_losses(engine, trial, sample, options, recipe.temperature))
     outer: list[tuple[int, ...]] = [(), *((fold,) for fold in range(folds))]
 
     def settle(held: tuple[int, ...]) -> Choice:
-        return choose(held, folds, trials, losses, options, sample, recipe.temperature, nested, recipe.mix)
+        return choose(held, folds, trials, losses, options, sample, recipe.temperature, nested, recipe.mix, own)
 
     choices = dict(zip(outer, engine.map(settle, outer, "calibrating"), strict=True))
     rows = tuple(engine.rows_of(fold * parts, (fold + 1) * parts) for fold in range(folds))

@@ -5,6 +5,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from bnx.classifier import Classifier
+from bnx.domains import codes_of, together
 from bnx.encoding import encode
 from bnx.errors import DataError
 from bnx.losses import Scores, scores
@@ -28,16 +29,16 @@ def score_on_fresh_rows(
     if source is None:
         return (), []
     classifiers = _scored_on_them(members, mix)
-    target = classifiers[0].target
+    target, domains = classifiers[0].target, together(one.domains for one in classifiers)
     parts: list[list[np.ndarray]] = [[] for _ in classifiers]
-    truth, dropped, unknown, rough = [], 0, np.zeros(len(classifiers[0].domains), np.int64), 0
-    for codes, _ in encode(source, [*classifiers[0].domains, target]):
+    truth, dropped, unknown, rough = [], 0, np.zeros(len(domains), np.int64), 0
+    for codes, _ in encode(source, [*domains, target]):
         known = codes[-1] >= 0
         truth.append(codes[-1][known])
         dropped += int((~known).sum())
         own = codes[:-1][:, known]
         unknown += (own < 0).sum(axis=1)
-        found = [classifier.classified(own) for classifier in classifiers]
+        found = [classifier.classified(codes_of(classifier.domains, own, domains)) for classifier in classifiers]
         rough += int(np.any([approximate for _, approximate in found], axis=0).sum())
         for part, (p, _) in zip(parts, found, strict=True):
             part.append(p)
@@ -48,7 +49,7 @@ def score_on_fresh_rows(
     if dropped:
         why = f"{class_name} is blank there or was never seen"
         notes.append(f"{count_of(dropped, 'row')} of {source.name} (--holdout) left out: {why}")
-    names = [domain.name for domain in classifiers[0].domains]
+    names = [domain.name for domain in domains]
     notes += [f"{source.name} (--holdout): {note}" for note in summing_notes(names, unknown, rough)]
     return tuple(scores(np.concatenate(part), rows, len(target)) for part in parts), notes
 

@@ -127,7 +127,13 @@ def _without(counted: Counted, which: np.ndarray, places: np.ndarray) -> Counted
     sizes = np.take_along_axis(one.sizes[which], kept, axis=1)
     starts = np.concatenate([[0], np.cumsum(sizes.prod(axis=1))])
     less = replace(
-        one, members=members, sizes=sizes, depths=one.depths[which] - 1, plain=one.plain[which], starts=starts
+        one,
+        members=members,
+        sizes=sizes,
+        depths=one.depths[which] - 1,
+        plain=one.plain[which],
+        starts=starts,
+        silent=None,
     )
     counts = np.zeros((len(counted.counts), int(starts[-1])), np.int32)
     drop_parent(counted.counts, one.starts, one.sizes, one.depths, which, places, starts, counts)

@@ -107,7 +107,7 @@ def _reason(
         return "It has the lowest log loss and no edges: no dependence pays here."
     if chosen == best:
         return f"It has the lowest log loss, and {fewer}."
-    if structures[chosen].parents == structures[best].parents:
+    if structures[chosen].what_it_says == structures[best].what_it_says:
         return f"From all rows it learnt the same edges as {names[best]}, which has the lowest log loss; {fewer}."
     return (
         f"It has the fewest edges of all structures that are not credibly worse than the best, {names[best]}: the "

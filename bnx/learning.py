@@ -14,7 +14,8 @@ from bnx.families import family_statistics
 from bnx.gating import Answer, Bounds, Gate, Question, learn_together
 from bnx.heldout import MOST_ROWS, RowJudge, inner_rows
 from bnx.independence import Statistics
-from bnx.learners import Heldout, Learner
+from bnx.learners import Heldout, KdbTrimmed, Learner, Single
+from bnx.leaving_out import LeftOut, leave_out
 from bnx.recipe import Recipe
 from bnx.refining import Rigour, gated, in_doubt, visit_families
 from bnx.structure import Structure
@@ -68,7 +69,7 @@ def _ends(pair: str, names: Sequence[str]) -> tuple[str, str]:
 def learn(
     engine: LocalEngine,
     trainings: Sequence[Training],
-    learners: Sequence[Learner],
+    learners: Sequence[Single],
     bounds: Bounds,
     recipe: Recipe,
     known: Sequence[Structure] = (),
@@ -93,12 +94,12 @@ def learn(
 
 
 def _learn(
-    engine: LocalEngine, trainings: Sequence[Training], learners: Sequence[Learner], bounds: Bounds, recipe: Recipe
+    engine: LocalEngine, trainings: Sequence[Training], learners: Sequence[Single], bounds: Bounds, recipe: Recipe
 ) -> list[Learned]:
     """Learn in training sets that are measured together."""
     rigour = rigour_of(learners, len(bounds.names), recipe)
     seen = _look(engine, trainings, learners, recipe, rigour)
-    from_pairs = [member for member in learners if not isinstance(member, Heldout)]
+    from_pairs = [member for member in learners if not isinstance(member, Heldout | KdbTrimmed)]
     learnings = [member.learn(one.dependence, one.gate, bounds) for one in seen for member in from_pairs]
 
     def ask(questions: Sequence[tuple[int, Question]]) -> list[Answer]:
@@ -116,16 +117,40 @@ def _learn(
     engine.progress("choosing edges", 0, 0)
     structures = iter(learn_together(learnings, ask))
     climbed = iter(_climb(engine, trainings, learners, seen, bounds))
-    return [
-        Learned(training, tuple(next(climbed if isinstance(member, Heldout) else structures) for member in learners))
-        for training in trainings
-    ]
+    trimmed = iter(_trim(engine, trainings, learners, seen, bounds))
+
+    def found(member: Single) -> Structure:
+        return next(
+            climbed if isinstance(member, Heldout) else trimmed if isinstance(member, KdbTrimmed) else structures
+        )
+
+    return [Learned(training, tuple(found(member) for member in learners)) for training in trainings]
+
+
+def _trim(
+    engine: LocalEngine,
+    trainings: Sequence[Training],
+    learners: Sequence[Single],
+    seen: Sequence["_Seen"],
+    bounds: Bounds,
+) -> list[Structure]:
+    """Learn the structures whose parents and attributes are judged by leaving rows out."""
+    members = [member for member in learners if isinstance(member, KdbTrimmed)]
+    if not members:
+        return []
+    member = members[0]
+    widest = [member.widest(one.dependence, bounds) for one in seen]
+
+    def trim(number: int, judge: LeftOut) -> Structure:
+        return member.trim(judge, *widest[number], bounds)
+
+    return leave_out(engine, trainings, [structure for structure, _ in widest], trim)
 
 
 def _climb(
     engine: LocalEngine,
     trainings: Sequence[Training],
-    learners: Sequence[Learner],
+    learners: Sequence[Single],
     seen: Sequence["_Seen"],
     bounds: Bounds,
 ) -> list[Structure]:
@@ -198,7 +223,7 @@ def _exact(
 
 
 def _look(
-    engine: LocalEngine, trainings: Sequence[Training], learners: Sequence[Learner], recipe: Recipe, rigour: Rigour
+    engine: LocalEngine, trainings: Sequence[Training], learners: Sequence[Single], recipe: Recipe, rigour: Rigour
 ) -> list[_Seen]:
     """Measure and test what the learners look at."""
     attributes = len(engine.margins)

@@ -6,7 +6,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from bnx.classifier import Classifier
-from bnx.domains import Domain
+from bnx.domains import Domain, codes_of, together
 from bnx.mixing import mixed
 from bnx.rebasing import rebased
 
@@ -22,8 +22,8 @@ class MixedClassifier:
 
     @property
     def domains(self) -> tuple[Domain, ...]:
-        """The attributes of all members."""
-        return self.members[0].domains
+        """The attributes of all members, each once."""
+        return together(member.domains for member in self.members)
 
     @property
     def target(self) -> Domain:
@@ -53,7 +53,8 @@ class MixedClassifier:
 
         A row is rough (N,) if what it lacks could be summed out only approximately in any member.
         """
-        found = [member.classified(codes) for member in self.members]
+        domains = self.domains
+        found = [member.classified(codes_of(member.domains, codes, domains)) for member in self.members]
         return mixed([p for p, _ in found], self.weights), np.any([rough for _, rough in found], axis=0)
 
     def probabilities(self, codes: np.ndarray) -> np.ndarray:

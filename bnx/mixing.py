@@ -82,8 +82,8 @@ def mixed(posteriors: Sequence[np.ndarray], weights: Sequence[float]) -> np.ndar
 
 def members_of(structures: Sequence[Structure], single: int) -> list[int]:
     """List the structures that differ in more than their name, the one that is taken alone standing for its like."""
-    first = {structure.parents: s for s, structure in reversed(list(enumerate(structures)))}
-    first[structures[single].parents] = single
+    first = {structure.what_it_says: s for s, structure in reversed(list(enumerate(structures)))}
+    first[structures[single].what_it_says] = single
     return sorted(first.values())
 
 

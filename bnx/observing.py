@@ -4,11 +4,15 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from bnx.dependence import relevance_of
 from bnx.evaluation import Evaluation
+from bnx.gating import Bounds
+from bnx.learners import relevance_order
+from bnx.room import room_of
 from bnx.summing_out import MOST_CELLS
 from bnx.text import count_of, quoted
 
-__all__ = ["rare_classes", "unobserved_notes"]
+__all__ = ["rare_classes", "short_of_room", "unobserved_notes"]
 
 
 def unobserved_notes(evaluation: Evaluation, names: Sequence[str]) -> list[str]:
@@ -64,6 +68,24 @@ def _approximated(evaluation: Evaluation) -> int:
 
     items = [(fold, s) for fold in range(len(evaluation.fold_rows)) for s in structures]
     return sum(evaluation.engine.map(count, items))
+
+
+def short_of_room(evaluation: Evaluation, bounds: Bounds) -> list[str]:
+    """Say where attributes got fewer parents than the number chosen, since their tables would have become too large."""
+    learned, notes = evaluation.learned(()), []
+    order = relevance_order(relevance_of(evaluation.engine, learned.training), bounds)
+    able = {child: sum(not bounds.forbids(one, child) for one in order[:place]) for place, child in enumerate(order)}
+    for structure in learned.structures:
+        if structure.depth is not None:
+            kept = set(order) - set(structure.dropped)
+            short = [i for i in sorted(kept) if len(structure.parents[i]) < min(structure.depth, able[i])]
+            if short:
+                most = room_of(learned.training).most
+                notes.append(
+                    f"{structure.name} has no room for {count_of(structure.depth, 'parent')} of "
+                    f"{quoted(bounds.names[i] for i in short)}: the table of an attribute may have {most:,} cells here"
+                )
+    return notes
 
 
 def rare_classes(evaluations: Sequence[Evaluation], levels: Sequence[str]) -> list[str]:

@@ -36,7 +36,7 @@ def pick(
     region = region_of(means)
     chances = [chances_of(row, losses[best], folds, region) for row in losses]
     able = [s for s in range(len(structures)) if s == best or chances[s].worse < 0.5]
-    first = {structures[s].parents: s for s in reversed(able)}
+    first = {structures[s].what_it_says: s for s in reversed(able)}
     chosen = min(first.values(), key=lambda s: (len(structures[s].edges), means[s], s))
     return best, chosen, chances[chosen]
 

@@ -8,9 +8,10 @@ import numpy as np
 from bnx.engines import LocalEngine
 from bnx.folds import halves
 from bnx.gating import Bounds
-from bnx.learners import Heldout, Learner
+from bnx.learners import Heldout, KdbChosen, Learner, Single
 from bnx.learning import Learned, learn
 from bnx.recipe import Recipe
+from bnx.structure import Structure
 from bnx.trainings import Training
 from bnx.views import View
 
@@ -26,8 +27,8 @@ def stability(
 ) -> Stability:
     """Learn every structure from random halves, each half of the blocks of every fold.
 
-    learned: from all rows, whose cut points and pooled levels the halves share. An edge counts in either direction.
-    ``heldout`` learns from the first 25 halves.
+    learned: from all rows, whose cut points and pooled levels the halves share, and the number of parents that was
+    chosen out of fold. An edge counts in either direction. ``heldout`` learns from the first 25 halves.
 
     Source: Meinshausen & Buhlmann 2010 (halves without replacement).
     """
@@ -42,11 +43,17 @@ def stability(
     for own, some in _shared_out(learners, trainings):
         known = [learned.structures[s] for s in own]
         counts: Counter[tuple[int, frozenset[int]]] = Counter()
-        for half in learn(rows, some, [learners[s] for s in own], bounds, recipe, known):
+        settled = [_settled(learners[s], learned.structures[s]) for s in own]
+        for half in learn(rows, some, settled, bounds, recipe, known):
             for s, structure in zip(own, half.structures, strict=True):
                 counts.update((s, frozenset(edge)) for edge in structure.edges)
         found |= {key: number / len(some) for key, number in counts.items()}
     return found
+
+
+def _settled(learner: Learner, structure: Structure) -> Single:
+    """Keep the number of parents that was chosen out of fold."""
+    return learner.of(structure.depth) if isinstance(learner, KdbChosen) else learner
 
 
 def _shared_out(

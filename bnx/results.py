@@ -183,7 +183,7 @@ def write_predictions(comparison: Comparison, path: Path) -> None:
 
 def _not_all_drawn(structures: Sequence[Mapping[str, Any]]) -> list[str]:
     """Say what pictures of very many attributes leave out."""
-    names, attributes = [one["name"] for one in structures], len(structures[0]["attributes"])
+    names, attributes = [one["name"] for one in structures], max(len(one["attributes"]) for one in structures)
     if attributes <= MANY_CHIPS:
         return []
     return [

@@ -25,7 +25,8 @@ class Families:
     ``depths`` (F,) count; ``plain`` (F,) bool: attributes used as stored; ``starts`` (F + 1,): first cell of each
     family when their tables lie side by side; ``recode``: of the view; ``of`` (structures, n): the family of each
     attribute in each structure; ``holder`` (structures,): the first structure with the same parents; ``veiled``,
-    ``unknown``: of the view.
+    ``unknown``: of the view; ``silent`` (F,) bool: those of attributes that a structure leaves out, which say nothing,
+    None if there are none.
     """
 
     members: np.ndarray
@@ -38,6 +39,12 @@ class Families:
     holder: tuple[int, ...]
     veiled: tuple[int, ...] = ()
     unknown: np.ndarray | None = None
+    silent: np.ndarray | None = None
+
+    def narrowed(self, structures: Sequence[int]) -> "Families":
+        """Keep some structures, in this order."""
+        of = self.of[list(structures)]
+        return replace(self, of=of, holder=_holder(of))
 
     def levels_of(self, f: int) -> tuple[int, ...]:
         """Levels of the members of one family."""
@@ -103,12 +110,15 @@ class Terms:
 
     def rows_of_nothing(self, codes: np.ndarray, first: int, last: int) -> np.ndarray:
         """Find the rows of ``first:last`` of which nothing is known."""
-        unknown = self.families.unknown
+        unknown, silent = self.families.unknown, self.families.silent
         rows = np.arange(first, last)
-        if unknown is None or not unknown.any(axis=1).all():
+        speaking = np.arange(len(codes)) if silent is None else np.flatnonzero(~silent[self.which])
+        if not len(speaking):
+            return rows
+        if unknown is None or not unknown[speaking].any(axis=1).all():
             return rows[:0]
-        for own, stored in zip(unknown, codes, strict=True):
-            rows = rows[own[stored[rows]]]
+        for attribute in speaking.tolist():
+            rows = rows[unknown[attribute][codes[attribute, rows]]]
         return rows
 
     @cached_property
@@ -191,10 +201,13 @@ def parents_of(structures: Iterable[Structure]) -> np.ndarray:
 def families_of(structures: Sequence[Structure], view: View) -> Families:
     """List the different families of structures, child by child, each where a structure first has it."""
     parents = parents_of(structures)
+    out = np.zeros(parents.shape[:2], np.bool_)
+    for s, one in enumerate(structures):
+        out[s, list(one.dropped)] = True
     first = np.tile(np.arange(len(parents))[:, None], parents.shape[1])  # (structures, n): who has this family first
     for s in range(1, len(parents)):
         for earlier in reversed(range(s)):
-            first[s][(parents[s] == parents[earlier]).all(axis=1)] = earlier
+            first[s][(parents[s] == parents[earlier]).all(axis=1) & (out[s] == out[earlier])] = earlier
     new = first == np.arange(len(parents))[:, None]
     child, structure = np.nonzero(new.T)
     number = np.zeros_like(first)
@@ -207,10 +220,15 @@ def families_of(structures: Sequence[Structure], view: View) -> Families:
     sizes = np.where(members >= 0, view.codes[members], 1)
     plain = (view.plain[members] | (members < 0)).all(axis=1)
     starts = np.concatenate([[0], np.cumsum(sizes.prod(axis=1))])
-    parts = [tuple(row) for row in of.tolist()]
-    holder = tuple(parts.index(row) for row in parts)
-    seen = (view.recode, of, holder, view.veiled, view.unknown)
+    silent = out[structure, child] if out.any() else None
+    seen = (view.recode, of, _holder(of), view.veiled, view.unknown, silent)
     return Families(np.maximum(members, 0), sizes, depths + 1, plain, starts, *seen)
+
+
+def _holder(of: np.ndarray) -> tuple[int, ...]:
+    """Find for every structure the first with the same families."""
+    parts = [tuple(row) for row in of.tolist()]
+    return tuple(parts.index(row) for row in parts)
 
 
 def terms_of(counted: Counted, which: np.ndarray, smoothings: Sequence[Smoothing]) -> Terms:
@@ -225,6 +243,8 @@ def terms_of(counted: Counted, which: np.ndarray, smoothings: Sequence[Smoothing
         ratio_tables(counted.counts, one.starts, one.sizes, one.depths, which, amounts, laplace, starts, table)
     else:
         _masked_tables(counted, which, one.unknown, amounts, laplace, table[1:])
+    for k in np.flatnonzero(one.silent[which]).tolist() if one.silent is not None else ():
+        table[starts[k] : 1 + ends[k]] = 0.0
     return Terms(counted, tuple(smoothings), which, starts, table)
 
 

@@ -17,17 +17,17 @@ FLOORS = (
     "fibre homogeneity masked unobserved summing_out",
     "tables views blocks columns columnar delimited malformed reading levelling screening duplicates level_order",
     "coarsening gathering passes coding encoding pair_counting engines",
-    "parameters trainings dependence families profiling",
+    "parameters trainings room dependence families profiling",
     "tails wide_tables independence classifier rebasing mixed_classifier intervals refining sampling scoring "
     "tabulating verdicts explaining pair_details",
     "gating doubts drawing formats showing",
     "learners",
-    "recipe wide_forests wide wide_learning matrix_memory heldout learning pair_judging many_tests wide_testing "
-    "wide_judging pair_table",
+    "recipe wide_forests wide wide_learning matrix_memory heldout leaving_out learning pair_judging many_tests "
+    "wide_testing wide_judging pair_table",
     "choosing evaluation gains rating resampling pair_tests",
     "dealing judging mix_judging ledger observing fresh_rows run_notes comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
-    "score_entries mix_documents documents charts findings printed report results tested_text tested_picture",
+    "chosen score_entries mix_documents documents charts findings printed report results tested_text tested_picture",
     "cli",
 )
 PLACES = {name: (floor, place) for floor, names in enumerate(FLOORS) for place, name in enumerate(names.split())}

@@ -223,7 +223,7 @@ def test_two_required_parents_do_not_fit_into_a_tree() -> None:
     assert structure_of("kdb2", [0.1] * 3, np.zeros((3, 3)), bounds).parents[2] == (0, 1)
 
 
-@pytest.mark.parametrize("name", ["kdb", "kdb0", "tan2", "kdb2-teste", "Naive", "kdb100", ""])
+@pytest.mark.parametrize("name", ["kdb-", "kdb-tested", "kdb0", "tan2", "kdb2-teste", "Naive", "kdb100", ""])
 def test_an_unknown_structure_is_refused(name: str) -> None:
     with pytest.raises(SettingError, match="is not a structure; known: naive, tan"):
         learner(name)

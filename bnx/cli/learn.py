@@ -57,7 +57,7 @@ def run(
         list[str] | None,
         typer.Option(
             metavar="NAME,...",
-            help="Structures to compare: naive, tan, tan-tested, kdbK, kdbK-tested, heldout.",
+            help="Structures to compare: naive, tan, tan-tested, kdbK, kdbK-tested, kdb, kdb-trimmed, heldout.",
             show_default=",".join(DEFAULT_STRUCTURES),
         ),
     ] = None,

@@ -31,7 +31,9 @@ def classifier_document(classifier: Classifier) -> dict[str, Any]:
     return {
         "format": STRUCTURE_FORMAT,
         "name": classifier.structure.name,
-        "words": words(classifier.structure.name),
+        "words": words(classifier.structure.name, classifier.structure.depth, classifier.dropped),
+        "most_parents": classifier.structure.depth,
+        "dropped": list(classifier.dropped),
         "class": {
             "name": classifier.target.name,
             "levels": list(levels),
@@ -137,12 +139,30 @@ def _classifier(document: Mapping[str, Any]) -> Classifier:
     return Classifier(
         domains,
         target,
-        Structure(document["name"], parents),
+        Structure(document["name"], parents, _depth(document.get("most_parents"), parents)),
         counts,
         rows,
         parse_smoothing(document["smoothing"]),
         _calibration(document, target.levels),
+        dropped=_dropped(document.get("dropped", []), names),
     )
+
+
+def _depth(number: Any, parents: Sequence[Sequence[int]]) -> int | None:
+    """Refuse a number of parents that some attribute exceeds."""
+    if number is None:
+        return None
+    most = max(map(len, parents), default=0)
+    if isinstance(number, bool) or not isinstance(number, int) or number < most:
+        raise ValueError(f"most_parents is {number}, but an attribute has {most}")
+    return number
+
+
+def _dropped(found: Any, names: Sequence[str]) -> tuple[str, ...]:
+    """Refuse attributes left out that are no texts, or that take part."""
+    if not isinstance(found, list) or not all(isinstance(name, str) for name in found) or set(found) & set(names):
+        raise ValueError(f"dropped is {found}, not a list of names that are no attributes")
+    return tuple(found)
 
 
 def _check_domain(domain: Domain) -> None:

@@ -1,17 +1,30 @@
 """Learners: from a ``Dependence`` to a ``Structure``. A member never sees a row."""
 
 import re
+from collections.abc import Sequence
 from typing import Protocol
 
 from bnx.dependence import Dependence
 from bnx.errors import SettingError
 from bnx.gating import Bounds, Gate, Learning
 from bnx.learners.heldout import Heldout, Judge
-from bnx.learners.kdb import Kdb, KdbTested
+from bnx.learners.kdb import Kdb, KdbTested, relevance_order
+from bnx.learners.kdb_chosen import KdbChosen, KdbTrimmed
 from bnx.learners.naive import Naive
 from bnx.learners.tan import Tan
 
-__all__ = ["Heldout", "Judge", "Learner", "PairLearner", "learner"]
+__all__ = [
+    "Heldout",
+    "Judge",
+    "KdbChosen",
+    "KdbTrimmed",
+    "Learner",
+    "PairLearner",
+    "Single",
+    "learner",
+    "relevance_order",
+    "singles",
+]
 
 
 class PairLearner(Protocol):
@@ -37,7 +50,19 @@ class PairLearner(Protocol):
         """Start learning; questions are yielded, the structure is returned."""
 
 
-Learner = PairLearner | Heldout
+Single = PairLearner | Heldout | KdbTrimmed
+Learner = Single | KdbChosen
+
+
+def singles(learners: Sequence[Learner], bounds: Bounds) -> tuple[list[Single], list[range]]:
+    """List the learners behind those asked for, and which of these each is chosen from, simpler ones first."""
+    found: list[Single] = []
+    own = []
+    for member in learners:
+        before = len(found)
+        found += member.members(bounds) if isinstance(member, KdbChosen) else [member]
+        own.append(range(before, len(found)))
+    return found, own
 
 
 def learner(name: str) -> Learner:
@@ -51,6 +76,8 @@ def learner(name: str) -> Learner:
         "tan": Tan(tested=False),
         "tan-tested": Tan(tested=True),
         "heldout": Heldout(),
+        "kdb": KdbChosen(),
+        "kdb-trimmed": KdbTrimmed(),
     }
     if name in fixed:
         return fixed[name]
@@ -59,5 +86,5 @@ def learner(name: str) -> Learner:
         return KdbTested(int(found[1])) if found[2] else Kdb(int(found[1]))
     raise SettingError(
         f"--structures: {name!r} is not a structure; known: naive, tan, tan-tested, kdbK, kdbK-tested (K = 1, 2, ...), "
-        "heldout"
+        "kdb, kdb-trimmed, heldout"
     )

@@ -10,7 +10,7 @@ from bnx.gating import Bounds, Gate, Learning, Question, fixed_family_steps, set
 from bnx.kernels.graphs import strongest_few
 from bnx.structure import Structure
 
-__all__ = ["Kdb", "relevance_order"]
+__all__ = ["Kdb", "KdbTested", "relevance_order", "strongest_before"]
 
 _CANDIDATES = 8
 
@@ -35,7 +35,7 @@ class Kdb:
         """Return K parents for every attribute that has so many before it."""
         bounds.check_room(self.depths, self.name)
         parents = [bounds.parents(child) for child in range(len(dependence.relevance))]
-        for child, earlier in _earlier(dependence, bounds, 2 * self.depths).items():
+        for child, earlier in strongest_before(dependence, bounds, 2 * self.depths).items():
             others = [a for a in earlier if a not in parents[child]]
             parents[child] = (*parents[child], *others)[: self.depths]
         return settled(Structure(self.name, tuple(parents)))
@@ -66,7 +66,7 @@ class KdbTested:
         attributes = len(dependence.relevance)
         family = attributes * (attributes - 1) // 2
         parents = [bounds.parents(child) for child in range(attributes)]
-        open_ = _earlier(dependence, bounds, _CANDIDATES)
+        open_ = strongest_before(dependence, bounds, _CANDIDATES)
         for _ in range(self.depths):
             questions = [
                 Question(child, candidate, parents[child])
@@ -105,7 +105,7 @@ def relevance_order(relevance: np.ndarray, bounds: Bounds) -> list[int]:
     return order
 
 
-def _earlier(dependence: Dependence, bounds: Bounds, most: int) -> dict[int, list[int]]:
+def strongest_before(dependence: Dependence, bounds: Bounds, most: int) -> dict[int, list[int]]:
     """List, for every attribute in order, the ``most`` strongest before it that it may take, by bits given the class.
 
     Most bits come first, ties by column order.
