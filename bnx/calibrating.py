@@ -17,6 +17,7 @@ __all__ = [
     "identity",
     "probabilities",
     "slope",
+    "solved",
     "steepness",
     "uncalibrated",
     "without_evidence",
@@ -237,14 +238,14 @@ def _minimum(rows: _Rows) -> np.ndarray:
 
 def _newton_step(curve: _Curve) -> tuple[np.ndarray, float]:
     """Give the step and the drop that it promises, by the exact Hessian where that leads down, else its safe part."""
-    step, lowest = _solved(curve.hessian, -curve.gradient, curve.least)
+    step, lowest = solved(curve.hessian, -curve.gradient, curve.least)
     if lowest < curve.least:
-        step, _ = _solved(curve.fisher, -curve.gradient, curve.least)
+        step, _ = solved(curve.fisher, -curve.gradient, curve.least)
     step *= _LONGEST_STEP / max(abs(float(step[0])), _LONGEST_STEP)
     return step, float(-(curve.gradient * step).sum())
 
 
-def _solved(matrix: np.ndarray, right: np.ndarray, least: float) -> tuple[np.ndarray, float]:
+def solved(matrix: np.ndarray, right: np.ndarray, least: float) -> tuple[np.ndarray, float]:
     """Solve a small symmetric system by elimination in a fixed order; pivots below ``least`` are raised to it.
 
     Gives the solution and the lowest pivot as it was.

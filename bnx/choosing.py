@@ -5,13 +5,16 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from bnx.calibrating import Calibration, fit_against_first, uncalibrated
+from bnx.calibrating import Calibration, fit_against_first, probabilities, uncalibrated
 from bnx.engines import LocalEngine
 from bnx.kernels import calibrated_loss, tempered_losses
 from bnx.learning import Learned
+from bnx.mixing import Mix, fit_mix, members_of
 from bnx.parameters import Smoothing
+from bnx.picking import pick
 from bnx.sampling import Sample
 from bnx.scoring import Counted, Terms, families_of, terms_of
+from bnx.structure import Structure
 from bnx.tabulating import tabulate
 
 __all__ = ["Choice", "Trial", "choose", "inner_losses", "make_trial", "mean_loss"]
@@ -50,13 +53,16 @@ class Choice:
     """What one training set settled on, out of fold.
 
     ``trial``: which kind of cut points; per structure its ``smoothings`` and ``calibrations``; ``losses``
-    (structures, inner folds): mean held-out log loss in bits.
+    (structures, inner folds): mean held-out log loss in bits. ``single``: the structure that these recommend; ``mix``:
+    what all of them are mixed by, None where nothing is.
     """
 
     trial: Trial
     smoothings: tuple[Smoothing, ...]
     calibrations: tuple[Calibration, ...]
     losses: np.ndarray
+    single: int
+    mix: Mix | None
 
 
 @dataclass(frozen=True)
@@ -131,6 +137,7 @@ def choose(
     sample: Sample,
     calibrate: bool,
     nested: bool,
+    mix: bool,
     members: Sequence[range] | None = None,
 ) -> Choice:
     """Choose for the training set without ``held``, on its own rows only.
@@ -139,13 +146,13 @@ def choose(
     structures that each one wanted is chosen from, together with its smoothing; itself alone if None. Without
     ``nested`` there is nothing to choose or to calibrate at all. The first kind of cut points, smoothing and member
     stay unless another is ahead by some nats: what leads by less in a training fold tends to fall behind in the fold
-    left out.
+    left out. With ``mix`` different structures are mixed.
     """
     members = [range(s, s + 1) for s in range(len(trials[0].learned[held].structures))] if members is None else members
     structures = len(members)
     if not nested:
         bare = uncalibrated(trials[0].learned[held].training.class_counts)
-        return Choice(trials[0], (options[0],) * structures, (bare,) * structures, np.zeros((structures, 0)))
+        return Choice(trials[0], (options[0],) * structures, (bare,) * structures, np.zeros((structures, 0)), 0, None)
     inner = inner_sets(held, folds)
     trial, chosen = trials[0], [options[0]] * structures
     if losses:
@@ -162,36 +169,57 @@ def choose(
         picked = [own[m] for own, (m, _) in zip(members, least, strict=True)]
         trial = trials[best].narrowed([held, *(one for one, _ in inner)], picked)
     plain = None if calibrate else uncalibrated(trial.learned[held].training.class_counts)
-    return _calibrated(trial, tuple(chosen), inner, sample, plain)
+    return _calibrated(held, trial, tuple(chosen), inner, sample, plain, mix)
 
 
 def _calibrated(
+    without: Held,
     trial: Trial,
     chosen: tuple[Smoothing, ...],
     inner: Sequence[tuple[Held, int]],
     sample: Sample,
     plain: Calibration | None,
+    mix: bool,
 ) -> Choice:
-    """Fit the calibration of each structure on out-of-fold evidence, unless it is ``plain``; judge it fold by fold."""
+    """Fit each structure's calibration on out-of-fold evidence, unless ``plain``; judge it fold by fold, and mix."""
     rows = _inner_rows(trial, inner, sample)
     calibrations: list[Calibration] = []
     losses = np.zeros((len(chosen), len(inner)))
     done: dict[tuple[object, ...], int] = {}
+    predicted: list[np.ndarray] = []
     for s, smoothing in enumerate(chosen):
         same = done.setdefault((smoothing, *(trial.counts[held].families.holder[s] for held, _ in inner)), s)
         if same < s:
             calibrations.append(calibrations[same])
             losses[s] = losses[same]
+            predicted.append(predicted[same])
             continue
         own = np.concatenate([_evidence(trial, held, s, smoothing, sample, fold) for held, fold in inner])
         fitted = plain or fit_against_first(own, rows.prior, rows.truth, rows.shares, rows.weights)
         calibrations.append(fitted)
+        parts = []
         for k, (held, _) in enumerate(inner):
             part = slice(rows.starts[k], rows.starts[k + 1])
             training = trial.learned[held].training
             used = uncalibrated(training.class_counts) if plain else fitted
             losses[s, k] = mean_loss(own[part], training.log_prior, used, rows.truth[part], rows.weights[part])
-    return Choice(trial, chosen, tuple(calibrations), losses)
+            parts.append(probabilities(used, training.log_prior, own[part]) if mix else own[:0])
+        predicted.append(np.concatenate(parts))
+    structures = trial.learned[without].structures
+    single = pick(losses, structures, losses.mean(axis=1).tolist(), len(inner))[1] if len(chosen) > 1 else 0
+    found = _mixed(predicted, structures, single, losses, rows) if mix else None
+    return Choice(trial, chosen, tuple(calibrations), losses, single, found)
+
+
+def _mixed(
+    predicted: Sequence[np.ndarray], structures: Sequence[Structure], single: int, losses: np.ndarray, rows: _Inner
+) -> Mix | None:
+    """Fit the weights of different structures; there is nothing to mix in fewer than two."""
+    if len(structures) < 2:
+        return None
+    members = members_of(structures, single)
+    own = [predicted[s] for s in members]
+    return fit_mix(own, members, structures, single, rows.truth, rows.weights, rows.starts, losses[single])
 
 
 def _inner_rows(trial: Trial, inner: Sequence[tuple[Held, int]], sample: Sample) -> _Inner:

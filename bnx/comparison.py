@@ -12,37 +12,34 @@ from bnx.classifier import Classifier
 from bnx.coding import Coded
 from bnx.dealing import deal
 from bnx.dependence import Pairs, measure, relevance_of
-from bnx.domains import Domain, codes_of, together
-from bnx.encoding import encode
+from bnx.domains import Domain
 from bnx.engines import LocalEngine, start_local
 from bnx.engines.local import Progress
-from bnx.errors import DataError, SettingError
+from bnx.errors import SettingError
 from bnx.evaluation import Evaluation, evaluate
 from bnx.families import PairRequests
 from bnx.folds import sub_blocks
+from bnx.fresh_rows import score_on_fresh_rows
 from bnx.gains import edge_gains
 from bnx.gating import Bounds
-from bnx.heldout import MOST_ROWS
 from bnx.independence import Statistics
-from bnx.judging import Against, Recommendation, against, inner_picks, recommend
-from bnx.learners import Heldout, Learner, learner
+from bnx.judging import Against, Recommendation, against, inner_picks, mixed_picks, recommend
+from bnx.learners import Learner, learner
 from bnx.learning import Learned, make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
-from bnx.losses import Scores, scores
+from bnx.losses import Scores
 from bnx.matrix_memory import matrix_notes
-from bnx.observing import rare_classes, unobserved_notes
+from bnx.mix_judging import JudgedMix, judge_mix
 from bnx.pair_judging import JudgedPairs, judge_pairs
-from bnx.rating import EXACT_ROWS, SLOPE_ROWS, StructureScore, score
+from bnx.rating import StructureScore, score
 from bnx.reading import Source
 from bnx.recipe import Recipe
 from bnx.refining import visit_families
 from bnx.resampling import stability
-from bnx.sampling import rows_for_gains
+from bnx.run_notes import run_notes
 from bnx.storing import MEMORY, Store
 from bnx.structure import Structure
-from bnx.summing_out import summing_notes
 from bnx.tables import LeftOut, Lines
-from bnx.text import count_of
 from bnx.trainings import Training
 from bnx.wide_judging import MOST_JUDGED, judge_wide
 from bnx.wide_learning import takes_wide_road
@@ -55,7 +52,8 @@ class Comparison:
     """Everything that one run found out; per structure in the order asked for.
 
     ``relevance`` (n,): bits each attribute shares with the class. ``pairs`` and ``judged``: all pairs, on all rows.
-    ``held_out``: scores on a table that took no part, empty without one.
+    ``mix``: of the structures, None where nothing is mixed; ``held_out``: scores on a table that took no part, of the
+    structures and last of the mix, empty without one.
     """
 
     recipe: Recipe
@@ -71,6 +69,7 @@ class Comparison:
     against: tuple[Against | None, ...]
     edges: tuple[tuple[EdgeEvidence, ...], ...]
     recommendation: Recommendation
+    mix: JudgedMix | None
     held_out: tuple[Scores, ...]
     left_out: tuple[LeftOut, ...]
     warnings: tuple[str, ...]
@@ -124,18 +123,17 @@ def compare(
     learned = first.learned(())
     progress("stability", 0, 0)
     stable = stability(_under("stability", first.engine), learned, folds, learners, bounds, recipe)
-    picks = inner_picks(evaluations)
-    results, honest = score(evaluations, picks)
+    picks, results, honest, mix = _scores(evaluations, recipe, folds)
     progress("judging pairs", 0, 0)
     pairs, judged = _tested(first.engine, learned, learners, bounds, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     progress("scoring", 0, 0)
-    held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
+    held_out, not_scored = score_on_fresh_rows(classifiers, mix, holdout, recipe.target)
     recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
     progress("edge ledger", 0, 0)
     told, by_blanks = _told(first), judged.by_blanks(pairs.left, pairs.right)
     edges = edge_ledger(told, _strengths(learned, pairs), gains, stable, learners, bounds, recipe, folds, by_blanks)
-    notes = _run_warnings(evaluations, coded, recipe, learners, results)
+    notes = run_notes(evaluations, coded, recipe, learners, results)
     progress("reading", 0, 0)
     return Comparison(
         recipe=recipe,
@@ -151,6 +149,7 @@ def compare(
         against=tuple(against(results, recipe.structures.index(recipe.baseline), folds)),
         edges=tuple(edges),
         recommendation=recommendation,
+        mix=mix,
         held_out=held_out,
         left_out=coded.left_out,
         warnings=(*early, *notes, *notes_on_structures, *judged.notes, *not_scored, *coded.warnings),
@@ -251,83 +250,11 @@ def _classifier(evaluation: Evaluation, s: int, coded: Coded) -> Classifier:
     )
 
 
-def _held_out(
-    classifiers: Sequence[Classifier], source: Source, recipe: Recipe
-) -> tuple[tuple[Scores, ...], list[str]]:
-    """Score the final classifiers on a table that took no part in anything; say which rows could not be scored."""
-    target, domains = classifiers[0].target, together(one.domains for one in classifiers)
-    parts: list[list[np.ndarray]] = [[] for _ in classifiers]
-    truth, dropped, unknown, rough = [], 0, np.zeros(len(domains), np.int64), 0
-    for codes, _ in encode(source, [*domains, target]):
-        known = codes[-1] >= 0
-        truth.append(codes[-1][known])
-        dropped += int((~known).sum())
-        own = codes[:-1][:, known]
-        unknown += (own < 0).sum(axis=1)
-        found = [classifier.classified(codes_of(classifier.domains, own, domains)) for classifier in classifiers]
-        rough += int(np.any([approximate for _, approximate in found], axis=0).sum())
-        for part, (p, _) in zip(parts, found, strict=True):
-            part.append(p)
-    rows = np.concatenate(truth) if truth else np.zeros(0, np.int32)
-    if not len(rows):
-        raise DataError(
-            f"{source.name} (--holdout) has no row whose {recipe.target} is one of {', '.join(target.levels)}"
-        )
-    notes = []
-    if dropped:
-        why = f"{recipe.target} is blank there or was never seen"
-        notes.append(f"{count_of(dropped, 'row')} of {source.name} (--holdout) left out: {why}")
-    names = [domain.name for domain in domains]
-    notes += [f"{source.name} (--holdout): {note}" for note in summing_notes(names, unknown, rough)]
-    return tuple(scores(np.concatenate(part), rows, len(target)) for part in parts), notes
-
-
-def _rating_notes(results: Sequence[StructureScore]) -> list[str]:
-    """Say how far rankings may be off where rows are too many to be ranked one by one."""
-    rows = sum(fold.rows for fold in results[0].by_fold)
-    if rows <= EXACT_ROWS:
-        return []
-    every = [one for result in results for one in (result.pooled, *(fold.scores for fold in result.by_fold))]
-    area, error = (max(getattr(one, name) for one in every) for name in ("auc_within", "calibration_within"))
-    return [
-        f"{rows:,} rows are too many to rank one by one: areas under the curve come from histograms and are within "
-        f"{area:.1g}, calibration errors within {error:.1g}; calibration slopes are found from {SLOPE_ROWS:,} rows"
-    ]
-
-
-def _run_warnings(
-    evaluations: Sequence[Evaluation],
-    coded: Coded,
-    recipe: Recipe,
-    learners: Sequence[Learner],
-    results: Sequence[StructureScore],
-) -> list[str]:
-    """Say what a reader of the figures must know about how they were made."""
-    notes: list[str] = []
-    sample, engine = evaluations[0].sample, evaluations[0].engine
-    if len(sample.target) < engine.rows:
-        gained = rows_for_gains(engine, len(evaluations[0].fold_rows))
-        notes.append(
-            f"choices inside training folds are made on {len(sample.target):,} of {engine.rows:,} rows, gains of edges "
-            f"are judged on {gained:,}, a seeded sample by fold and class; scores and tests use all rows"
-        )
-    notes += unobserved_notes(evaluations[0], coded.table.schema.names)
-    if any(isinstance(member, Heldout) for member in learners) and engine.rows > MOST_ROWS:
-        notes.append(
-            f"parents of heldout are chosen on at most {MOST_ROWS:,} rows of every training set, spread evenly by fold "
-            "and class"
-        )
-    if recipe.group:
-        notes.append(
-            f"rows of one {recipe.group} may be alike, but the tests assume independent records: every p is descriptive"
-        )
-    sizes = evaluations[0].rows_by_fold
-    if max(sizes) > 1.2 * min(sizes):
-        notes.append(
-            f"folds hold {min(sizes):,} to {max(sizes):,} rows; differences to {recipe.baseline} are means over folds "
-            "and may differ from those of the log losses, which are means over rows"
-        )
-    notes += rare_classes(evaluations, coded.table.schema.target.levels)
-    if any(member.tested for member in learners) and recipe.alpha > 0.1:
-        notes.append(f"edges are tested at {recipe.alpha:g}: that share of the drawn edges may be false")
-    return notes + _rating_notes(results)
+def _scores(
+    evaluations: Sequence[Evaluation], recipe: Recipe, folds: int
+) -> tuple[list[int], list[StructureScore], Scores, JudgedMix | None]:
+    """Score every structure, what is picked inside every outer fold, which comes first, and the mix."""
+    picks, with_mix = inner_picks(evaluations), mixed_picks(evaluations)
+    results, (honest, mixed) = score(evaluations, (picks, with_mix))
+    mix = judge_mix(evaluations, results, picks, (with_mix, mixed), recipe.structures.index(recipe.baseline), folds)
+    return picks, results[: len(recipe.structures)], honest, mix

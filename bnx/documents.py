@@ -15,11 +15,11 @@ from bnx.chosen import chosen_entry, words_of
 from bnx.comparison import Comparison
 from bnx.formats.dot import dot_source
 from bnx.formats.structure_json import classifier_document
-from bnx.judging import Against
 from bnx.ledger import EdgeEvidence
+from bnx.mix_documents import mix_entry
 from bnx.picture import Arrow, Chip, Picture
 from bnx.plain import finite
-from bnx.rating import StructureScore
+from bnx.score_entries import against_entry, fold_entries, score_entry
 from bnx.structure import words
 from bnx.text import count_of
 from bnx.verdicts import OUTCOMES, VERDICTS, TestResult
@@ -86,6 +86,7 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
                 "honest_accuracy": advice.honest.accuracy,
                 "picks": [names[number] for number in advice.picks],
             },
+            "mix": mix_entry(comparison),
             "pairs": [result.to_dict() for result in pair_results(comparison)],
             "pairs_total": comparison.judged.family,
             "pairs_rejected": comparison.judged.rejected,
@@ -113,9 +114,7 @@ def structure_entry(comparison: Comparison, s: int) -> dict[str, Any]:
         "chosen": chosen,
         "edges": [edge_entry(names, edge) for edge in comparison.edges[s]],
         "free_parameters": classifier.free_parameters,
-        **result.pooled.to_dict(levels),
-        "log_loss_se": result.error,
-        "calibration_slope": result.slope,
+        **score_entry(result, levels),
         "temperature": calibration.temperature,
         "class_offsets": dict(zip(levels, calibration.offsets.tolist(), strict=True)),
         "floor": calibration.floor,
@@ -142,36 +141,6 @@ def edge_entry(names: Sequence[str], edge: EdgeEvidence) -> dict[str, Any]:
         "gate_given": [names[parent] for parent in edge.gate_given],
         "carried_by_blanks": edge.carried_by_blanks,
         "verdict": edge.verdict,
-    }
-
-
-def fold_entries(result: StructureScore, levels: Sequence[str]) -> list[dict[str, Any]]:
-    """Describe the scores of every fold."""
-    return [
-        {
-            "repeat": fold.repeat,
-            "fold": fold.fold,
-            "rows": fold.rows,
-            **fold.scores.to_dict(levels),
-            "calibration_slope": fold.slope,
-        }
-        for fold in result.by_fold
-    ]
-
-
-def against_entry(against: Against | None) -> dict[str, Any]:
-    """Describe the difference to the baseline; nulls for the baseline itself."""
-    if against is None:
-        keys = ("difference", "interval", "p_value", "region_bits", "probability_better", "probability_equivalent")
-        return dict.fromkeys(keys)
-    return {
-        "difference": against.difference.mean,
-        "interval": [against.difference.low, against.difference.high],
-        "p_value": against.adjusted_p,
-        "p_value_alone": against.difference.p_value,
-        "region_bits": against.region,
-        "probability_better": against.chances.better,
-        "probability_equivalent": against.chances.equivalent,
     }
 
 
@@ -295,7 +264,7 @@ def predictions(comparison: Comparison) -> Iterator[pa.Table]:
         engine = one.engine
         groups = engine.blocks * engine.classes
         bounds = engine.starts[np.arange(0, len(engine.starts), groups)].tolist()
-        for s in range(len(comparison.recipe.structures)):
+        for s in range(len(comparison.recipe.structures) + (comparison.mix is not None)):
             for first, last in pairwise(bounds):
                 yield _predicted(comparison, repeat, s, first, last)
 
@@ -307,14 +276,14 @@ def _predicted(comparison: Comparison, repeat: int, s: int, first: int, last: in
 
     def fill(number: int) -> None:
         inside = [run for run in one.fold_rows[number] if first <= run.start < run.stop <= last]
-        predictor = one.predictor(number, s)
+        predictor = one.predictor_of(number, s)
         for run in inside:
             p[run.start - first : run.stop - first] = predictor.probabilities(run.start, run.stop)
             fold[run.start - first : run.stop - first] = number
 
     one.engine.map(fill, range(len(one.fold_rows)))
     back = np.argsort(one.engine.order_of(slice(first, last)))
-    names = pa.array(comparison.recipe.structures)
+    names = pa.array([*comparison.recipe.structures, *(["mix"] if comparison.mix else [])])
     columns = {
         "row": comparison.lines.of_rows(first, last),
         "repeat": np.full(last - first, repeat),

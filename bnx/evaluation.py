@@ -12,13 +12,14 @@ from bnx.engines import LocalEngine
 from bnx.gating import Bounds
 from bnx.learners import Learner, singles
 from bnx.learning import Learned, learn
+from bnx.mixing import mixed
 from bnx.parameters import candidates
 from bnx.recipe import Recipe
 from bnx.sampling import Sample, sample_for_choices
 from bnx.scoring import Terms, terms_of
 from bnx.trainings import held_sets, make_trainings, mask_without
 
-__all__ = ["Evaluation", "Predictor", "evaluate", "predict"]
+__all__ = ["Evaluation", "MixedPredictor", "Predictor", "evaluate", "predict"]
 
 _ROWS = 16_384  # predicted at a time
 
@@ -39,6 +40,18 @@ class Predictor:
             self.calibration, self.log_prior
         )
         return p
+
+
+@dataclass(frozen=True)
+class MixedPredictor:
+    """What gives one fold's rows the mixed probabilities of several structures learnt without them."""
+
+    members: tuple[Predictor, ...]
+    weights: tuple[float, ...]
+
+    def probabilities(self, first: int, last: int) -> np.ndarray:
+        """Predict rows ``first:last`` of the engine, (last - first, C)."""
+        return mixed([member.probabilities(first, last) for member in self.members], self.weights)
 
 
 @dataclass(frozen=True)
@@ -63,6 +76,16 @@ class Evaluation:
         """Look up what was learnt without the held-out folds, under the cut points chosen there."""
         return self.choices[held].trial.learned[held]
 
+    @property
+    def structures(self) -> int:
+        """Number of structures; what is numbered by it is their mix."""
+        return len(self.choices[()].smoothings)
+
+    @property
+    def mixes(self) -> bool:
+        """Whether several structures are mixed in any training set."""
+        return any(one.mix is not None and len(one.mix.members) > 1 for one in self.choices.values())
+
     def predictor(self, fold: int, structure: int) -> Predictor:
         """Make the tables that predict a fold."""
         choice, held = self.choices[(fold,)], (fold,)
@@ -70,6 +93,14 @@ class Evaluation:
         terms = terms_of(counted, counted.families.of[structure], [choice.smoothings[structure]])
         prior = self.learned(held).training.log_prior
         return Predictor(self.engine.codes, terms, prior, choice.calibrations[structure])
+
+    def predictor_of(self, fold: int, number: int) -> Predictor | MixedPredictor:
+        """Make what predicts a fold: the tables of a structure or, for the number after the last, those of the mix."""
+        mix = self.choices[(fold,)].mix
+        if mix is None or number < self.structures:
+            return self.predictor(fold, number)
+        members = tuple(self.predictor(fold, s) for s in mix.members)
+        return MixedPredictor(members, tuple(mix.members.values()))
 
 
 def bins_to_try(schema: Schema, bins: str) -> tuple[str, ...]:
@@ -104,7 +135,7 @@ def evaluate(
     outer: list[tuple[int, ...]] = [(), *((fold,) for fold in range(folds))]
 
     def settle(held: tuple[int, ...]) -> Choice:
-        return choose(held, folds, trials, losses, options, sample, recipe.temperature, nested, own)
+        return choose(held, folds, trials, losses, options, sample, recipe.temperature, nested, recipe.mix, own)
 
     choices = dict(zip(outer, engine.map(settle, outer, "calibrating"), strict=True))
     rows = tuple(engine.rows_of(fold * parts, (fold + 1) * parts) for fold in range(folds))
@@ -113,7 +144,7 @@ def evaluate(
 
 def predict(evaluation: Evaluation, fold: int, structure: int, runs: Sequence[slice], out: np.ndarray) -> None:
     """Write the probabilities of some of a fold's rows, given as runs of the engine's rows, to the same rows of out."""
-    predictor = evaluation.predictor(fold, structure)
+    predictor = evaluation.predictor_of(fold, structure)
     for run in runs:
         for first in range(run.start, run.stop, _ROWS):
             last = min(first + _ROWS, run.stop)

@@ -9,10 +9,11 @@ from bnx.evaluation import Evaluation
 from bnx.losses import Scores
 from bnx.multiplicity import adjusted
 from bnx.paired import Chances, Difference, bayesian_t, corrected_t
+from bnx.picking import apart, pick, region_of
 from bnx.rating import StructureScore, cells_of
 from bnx.structure import Structure
 
-__all__ = ["Against", "Recommendation", "against", "inner_picks", "recommend", "region_of"]
+__all__ = ["Against", "Recommendation", "against", "inner_picks", "mixed_picks", "recommend"]
 
 
 @dataclass(frozen=True)
@@ -39,11 +40,6 @@ class Recommendation:
     picks: tuple[int, ...]
 
 
-def region_of(losses: Sequence[float]) -> float:
-    """Width in bits of the region of practical equivalence: .01, or 5 % of the best log loss if that is less."""
-    return min(0.01, 0.05 * min(losses))
-
-
 def against(results: Sequence[StructureScore], baseline: int, folds: int) -> list[Against | None]:
     """Compare every structure with the baseline; None for the baseline, and where a log loss is infinite.
 
@@ -53,7 +49,7 @@ def against(results: Sequence[StructureScore], baseline: int, folds: int) -> lis
     others = [s for s in range(len(results)) if s != baseline]
     found: dict[int, tuple[Difference, Chances]] = {}
     for s in others:
-        differences = _differences(results[s].fold_losses, results[baseline].fold_losses)
+        differences = apart(results[s].fold_losses, results[baseline].fold_losses)
         if np.isfinite(differences).all():
             found[s] = corrected_t(differences, folds), bayesian_t(differences, folds, region)
     p = adjusted(np.array([found[s][0].p_value for s in found]), "holm")
@@ -63,48 +59,15 @@ def against(results: Sequence[StructureScore], baseline: int, folds: int) -> lis
     ]
 
 
-def _differences(losses: np.ndarray, others: np.ndarray) -> np.ndarray:
-    """Subtract fold means; infinite minus infinite is no difference that could be judged."""
-    with np.errstate(invalid="ignore"):
-        return np.asarray(losses - others)
-
-
-def pick(
-    losses: np.ndarray, structures: Sequence[Structure], means: Sequence[float], folds: int
-) -> tuple[int, int, Chances]:
-    """Pick the structure with fewest edges whose chance of being worse than the best by the region is below .5.
-
-    Of structures that are the same but for their name, the first one asked for stands for all.
-    losses: (structures, folds) mean log losses in bits; means: of each structure.
-
-    Returns:
-        The best, the pick, and the chances of the pick against the best.
-    """
-    best = int(np.argmin(means))
-    region = region_of(means)
-    chances = [_chances(row, losses[best], folds, region) for row in losses]
-    able = [s for s in range(len(structures)) if s == best or chances[s].worse < 0.5]
-    first = {structures[s].what_it_says: s for s in reversed(able)}
-    chosen = min(first.values(), key=lambda s: (len(structures[s].edges), means[s], s))
-    return best, chosen, chances[chosen]
-
-
-def _chances(losses: np.ndarray, best: np.ndarray, folds: int, region: float) -> Chances:
-    differences = _differences(losses, best)
-    if not np.isfinite(differences).all():
-        return Chances(0.0, 0.0, 1.0)
-    return bayesian_t(differences, folds, region)
-
-
 def inner_picks(evaluations: Sequence[Evaluation]) -> list[int]:
     """Pick by the same rule inside every outer fold that holds rows, from what its own inner folds say."""
-    picks = []
-    for cell in cells_of(evaluations):
-        one = evaluations[cell.repeat]
-        inner = one.choices[(cell.fold,)].losses
-        own = one.learned((cell.fold,)).structures
-        picks.append(pick(inner, own, inner.mean(axis=1).tolist(), inner.shape[1])[1] if len(own) > 1 else 0)
-    return picks
+    return [evaluations[cell.repeat].choices[(cell.fold,)].single for cell in cells_of(evaluations)]
+
+
+def mixed_picks(evaluations: Sequence[Evaluation]) -> list[int]:
+    """Pick where the mix, numbered after the last structure, may be taken instead of a structure."""
+    choices = [evaluations[cell.repeat].choices[(cell.fold,)] for cell in cells_of(evaluations)]
+    return [len(one.smoothings) if one.mix and one.mix.taken else one.single for one in choices]
 
 
 def recommend(

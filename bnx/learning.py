@@ -12,7 +12,7 @@ from bnx.engines import LocalEngine
 from bnx.errors import DataError
 from bnx.families import family_statistics
 from bnx.gating import Answer, Bounds, Gate, Question, learn_together
-from bnx.heldout import MOST_ROWS, MOST_ROWS_FOR_PAIRS, RowJudge, inner_rows
+from bnx.heldout import MOST_ROWS, RowJudge, inner_rows
 from bnx.independence import Statistics
 from bnx.learners import Heldout, KdbTrimmed, Learner, Single
 from bnx.leaving_out import LeftOut, leave_out
@@ -156,16 +156,12 @@ def _climb(
 ) -> list[Structure]:
     """Learn the structures whose parents are judged on rows, training set by training set."""
     work = [(k, member) for k in range(len(trainings)) for member in learners if isinstance(member, Heldout)]
-
     start = [bounds.parents(child) for child in range(len(bounds.names))]
 
     def climb(item: tuple[int, Heldout]) -> Structure:
         number, member = item
-        training = trainings[number]
-        judge = rough = RowJudge(inner_rows(engine, training, MOST_ROWS), start)
-        if training.class_counts.sum() > MOST_ROWS_FOR_PAIRS:
-            rough = RowJudge(inner_rows(engine, training, MOST_ROWS_FOR_PAIRS), start)
-        return member.climb(judge, rough, seen[number].dependence.strength, bounds)
+        judge = RowJudge(inner_rows(engine, trainings[number], MOST_ROWS), start)
+        return member.climb(judge, seen[number].dependence.strength, bounds)
 
     return engine.map(climb, work, "judging parents") if work else []
 

@@ -1,7 +1,7 @@
 """Rows of the page's tables, every figure as it is printed."""
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 from bnx.findings import percent
@@ -15,6 +15,7 @@ __all__ = [
     "attribute_rows",
     "confusion_rows",
     "edge_row",
+    "mix_row",
     "pair_row",
     "score_row",
     "setting",
@@ -159,6 +160,14 @@ def score_row(document: Mapping[str, Any], entry: Mapping[str, Any]) -> ScoreRow
         smoothing=entry["smoothing"],
         holdout=_loss(entry["holdout"]["log_loss"]) if "holdout" in entry else "",
     )
+
+
+def mix_row(entry: Mapping[str, Any]) -> ScoreRow:
+    """Write the scores of the mix, which has no edges, tables and temperature of its own."""
+    own = {"name": "mix", "edges": [], "free_parameters": 0, "temperature": None, "smoothing": "", **entry}
+    nobody = {"recommended": {"name": ""}, "best": "", "settings": {"baseline": ""}}
+    row = score_row(nobody, own)
+    return replace(row, role="offered" if entry["offered"] else "not offered", edges=_DASH, parameters=_DASH)
 
 
 def edge_row(edge: Mapping[str, Any], tries: int) -> EdgeRow:

@@ -106,39 +106,72 @@ def cells_of(evaluations: Sequence[Evaluation]) -> list[Cell]:
     return cells
 
 
-def score(evaluations: Sequence[Evaluation], picks: Sequence[int]) -> tuple[list[StructureScore], Scores]:
-    """Score every structure on all out-of-fold rows, and one that changes from fold to fold.
+def score(
+    evaluations: Sequence[Evaluation], choices: Sequence[Sequence[int]]
+) -> tuple[list[StructureScore], list[Scores]]:
+    """Score every structure, and last their mix if there is one, on all out-of-fold rows, and what changes by fold.
 
-    picks: of each of ``cells_of``, the structure whose predictions count in the last. Up to 5 million rows are ranked
-    one by one; of more, areas and calibration errors come from histograms of the scores and calibration slopes from
-    200,000 rows, evenly spread, so that memory does not grow with the rows. Structures that predict alike are scored
-    once.
+    choices: each says, for each of ``cells_of``, what predicts its rows. Up to 5 million rows are ranked one by one; of
+    more, areas and calibration errors come from histograms of the scores and calibration slopes from 200,000 rows,
+    evenly spread, so that memory does not grow with the rows. Structures that predict alike are scored once.
+
+    Returns:
+        The scores of every structure and of the mix, and those of every choice.
     """
     rows = sum(one.engine.rows for one in evaluations)
     truth = [one.engine.target for one in evaluations]
     cells = cells_of(evaluations)
     run = _Run(evaluations, cells, truth[0] if len(truth) == 1 else np.concatenate(truth), rows <= EXACT_ROWS)
     alike = _alike(run)
-    wanted = [alike[pick] for pick in picks]
-    several = len(set(wanted)) > 1
-    room = (rows if run.exact else 0, run.classes)
-    p, mixed = np.empty(room), np.empty(room if several else (0, 0))
-    mixed_histograms = [] if run.exact else [Histograms.empty(run.classes)]
-    wholes: dict[int, Tally] = {}
+    rooms = [_Changing.empty(run, [alike[pick] for pick in picks]) for picks in choices]
+    p = np.empty((rows if run.exact else 0, run.classes))
     found: dict[int, StructureScore] = {}
     for s in sorted(set(alike)):
         histograms = [] if run.exact else [Histograms.empty(run.classes)]
         parts = run.engine.map(partial(_part, run, s, p), range(len(cells)), "scoring folds")
         found[s] = _joined(run, parts, p, histograms)
-        for k in [k for k, want in enumerate(wanted) if want == s and several]:
-            wholes[k] = parts[k].whole
-            _merge(mixed_histograms, parts[k].histograms)
-            for rows_ in cells[k].runs if run.exact else ():
-                mixed[rows_] = p[rows_]
-    if not several:
-        return [found[s] for s in alike], found[wanted[0]].pooled
-    honest = Tally.merged([wholes[k] for k in range(len(cells))])
-    return [found[s] for s in alike], scores_of(honest, _rankings(run, mixed, mixed_histograms))
+        for room in rooms:
+            room.take(run, s, parts, p)
+    every = [found[s] for s in alike]
+    return every, [every[room.wanted[0]].pooled if room.same else room.joined(run) for room in rooms]
+
+
+@dataclass(frozen=True)
+class _Changing:
+    """A choice that may change from fold to fold: ``wanted`` by cell, and its sums as they come in.
+
+    ``p`` (rows, C) where rows are ranked one by one, else ``histograms``; both empty where nothing changes.
+    """
+
+    wanted: Sequence[int]
+    p: np.ndarray
+    histograms: Sequence[Histograms]
+    wholes: dict[int, Tally]
+
+    @classmethod
+    def empty(cls, run: _Run, wanted: Sequence[int]) -> "_Changing":
+        """Start with no rows."""
+        changes = len(set(wanted)) > 1
+        room = np.empty((len(run.truth) if run.exact and changes else 0, run.classes))
+        return cls(wanted, room, [] if run.exact else [Histograms.empty(run.classes)], {})
+
+    @property
+    def same(self) -> bool:
+        """Whether it is the same in every fold."""
+        return len(set(self.wanted)) == 1
+
+    def take(self, run: _Run, s: int, parts: Sequence[_Part], p: np.ndarray) -> None:
+        """Take the cells that structure ``s`` is wanted for."""
+        for k in [k for k, want in enumerate(self.wanted) if want == s and not self.same]:
+            self.wholes[k] = parts[k].whole
+            _merge(self.histograms, parts[k].histograms)
+            for rows in run.cells[k].runs if run.exact else ():
+                self.p[rows] = p[rows]
+
+    def joined(self, run: _Run) -> Scores:
+        """Join the cells."""
+        whole = Tally.merged([self.wholes[k] for k in range(len(run.cells))])
+        return scores_of(whole, _rankings(run, self.p, self.histograms))
 
 
 def _alike(run: _Run) -> list[int]:
@@ -152,7 +185,7 @@ def _alike(run: _Run) -> list[int]:
             for one, fold in choices
         )
         found.append(first.setdefault(key, s))
-    return found
+    return [*found, len(found)] if any(one.mixes for one in run.evaluations) else found
 
 
 def _part(run: _Run, s: int, p: np.ndarray, k: int) -> _Part:
@@ -176,7 +209,7 @@ def _streamed(run: _Run, s: int, cell: Cell) -> _Part:
         Tally.empty(run.classes),
         Histograms.empty(run.classes),
     )
-    predictor = evaluation.predictor(cell.fold, s)
+    predictor = evaluation.predictor_of(cell.fold, s)
     every, seen = -(-len(run.truth) // SLOPE_ROWS), 0
     kept, truths = [], []
     for rows in evaluation.fold_rows[cell.fold]:

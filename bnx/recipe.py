@@ -56,6 +56,7 @@ class Recipe:
     max_levels: int = 50
     smoothing: str = "auto"
     temperature: bool = True
+    mix: bool = True
     require: tuple[str, ...] = ()
     forbid: tuple[str, ...] = ()
     resamples: int = 100

@@ -22,6 +22,7 @@ from bnx.printed import (
     attribute_rows,
     confusion_rows,
     edge_row,
+    mix_row,
     pair_row,
     score_row,
     setting,
@@ -84,6 +85,8 @@ class Report:
     repeats: int
     findings: Findings
     scores: tuple[ScoreRow, ...]
+    mix: ScoreRow | None
+    mix_reason: str
     has_holdout: bool
     structures: tuple[Drawn, ...]
     folds_chart: FoldChart | None
@@ -154,6 +157,8 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         repeats=settings["repeats"],
         findings=findings(document),
         scores=tuple(one.score for one in structures),
+        mix=mix_row(document["mix"]) if document["mix"] else None,
+        mix_reason=document["mix"]["reason"] if document["mix"] else "",
         has_holdout=any("holdout" in one for one in ranked),
         structures=tuple(structures),
         folds_chart=fold_chart(document),

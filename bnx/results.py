@@ -25,6 +25,7 @@ from bnx.drawing import find_engine, render
 from bnx.engines.local import Progress
 from bnx.errors import DataError, EngineError, SettingError
 from bnx.files import hidden_beside
+from bnx.mix_documents import mix_document
 from bnx.picture import MANY_CHIPS
 from bnx.report import report_html
 from bnx.text import quoted
@@ -34,6 +35,7 @@ from bnx.verdicts import pairs_csv
 __all__ = ["json_text", "new_folder", "write_results"]
 
 _OURS = "comparison.json"
+MIX_FILE = "mix.json"
 
 
 @contextmanager
@@ -124,7 +126,7 @@ def _files_of_a_run(comparison: Path) -> set[str]:
     except (OSError, ValueError, TypeError, KeyError):
         return set()
     drawn = {f"{name}.{form}" for name in names for form in ("json", "dot", "svg")}
-    return drawn | {_OURS, "pairs.csv", "pairs.parquet", "predictions.parquet", "report.html"}
+    return drawn | {_OURS, MIX_FILE, "pairs.csv", "pairs.parquet", "predictions.parquet", "report.html"}
 
 
 def write_results(
@@ -151,6 +153,8 @@ def write_results(
     for one in structures:
         write_json(folder / f"{one['name']}.json", one)
         (folder / f"{one['name']}.dot").write_text(drawings[one["name"]], encoding="utf-8")
+    if comparison.mix and comparison.mix.offered:
+        write_json(folder / MIX_FILE, mix_document(comparison, structures))
     progress("drawings", 0, 0)
     pictures, notes = draw_all(drawings, jobs)
     notes += _not_all_drawn(structures) if pictures else []

@@ -226,5 +226,5 @@ def test_a_smoothing_is_judged_at_its_best_temperature() -> None:
     options = (Smoothing("laplace", 1.0), Smoothing("backoff", 4.0))
     sums = np.array([[[10.0, 5.0, 9.0], [8.0, 7.0, 8.0]]])  # the second is better at temperature 1 only
     losses = {((fold,), fold): sums for fold in range(4)}
-    chosen = choose((), 4, [one.choices[()].trial], [losses], options, one.sample, True, True)
+    chosen = choose((), 4, [one.choices[()].trial], [losses], options, one.sample, True, True, True)
     assert chosen.smoothings == (options[0],)

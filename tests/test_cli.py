@@ -114,6 +114,7 @@ def test_learn_prints_one_screen_and_writes_a_folder(tmp_path: Path, monkeypatch
             "comparison.json",
             "pairs.csv",
             "report.html",
+            *(["mix.json"] if document["mix"]["offered"] else []),
             *(f"{name}.{form}" for name in names for form in ("json", "svg", "dot")),
         ]
     )
@@ -141,11 +142,11 @@ def test_learn_scores_a_holdout_table_and_writes_predictions_and_all_pairs(tmp_p
     table = run.out.partition("On the --holdout table, by the structures learnt from all rows of this one:\n")[2]
     assert table.startswith("structure  ")
     document = json.loads((out / "comparison.json").read_text(encoding="utf-8"))
-    for one in document["structures"]:
+    for one in (*document["structures"], document["mix"] | {"name": "mix"}):
         assert re.search(rf"^  {one['name']} +{one['holdout']['log_loss']:.3f} ", table, re.M)
     predictions = pd.read_parquet(out / "predictions.parquet")
     assert list(predictions) == ["row", "repeat", "fold", "structure", "truth", "p:few", "p:many", "p:some"]
-    assert len(predictions) == 240 * 2 * 2
+    assert len(predictions) == 240 * 2 * 3, "two structures and their mix"
     assert len(pd.read_parquet(out / "pairs.parquet")) == 15
 
 

@@ -12,22 +12,22 @@ PACKAGE = ROOT / "bnx"
 # A module imports from lower floors, and on its own floor from modules to its left. A package counts as one module.
 FLOORS = (
     "bnx errors text palette plain unfinished",
-    "kernels calibrating counts tiles discretising domains dot_text embedding files storing cells "
-    "folds layers losses branching multiplicity paired picture structure svg effects ordered loglinear "
+    "kernels calibrating simplex counts tiles discretising domains dot_text embedding files storing cells "
+    "folds layers losses branching multiplicity paired picture structure picking mixing svg effects ordered loglinear "
     "fibre homogeneity masked unobserved summing_out",
     "tables views blocks columns columnar delimited malformed reading levelling screening duplicates level_order",
     "coarsening gathering passes coding encoding pair_counting engines",
     "parameters trainings room dependence families profiling",
-    "tails wide_tables independence classifier rebasing intervals refining sampling scoring tabulating verdicts "
-    "explaining pair_details",
+    "tails wide_tables independence classifier rebasing mixed_classifier intervals refining sampling scoring "
+    "tabulating verdicts explaining pair_details",
     "gating doubts drawing formats showing",
     "learners",
     "recipe wide_forests wide wide_learning matrix_memory heldout leaving_out learning pair_judging many_tests "
     "wide_testing wide_judging pair_table",
     "choosing evaluation gains rating resampling pair_tests",
-    "dealing judging ledger observing comparison",
+    "dealing judging mix_judging ledger observing fresh_rows run_notes comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
-    "chosen documents charts findings printed report results tested_text tested_picture",
+    "score_entries mix_documents chosen documents charts findings printed report results tested_text tested_picture",
     "cli",
 )
 PLACES = {name: (floor, place) for floor, names in enumerate(FLOORS) for place, name in enumerate(names.split())}

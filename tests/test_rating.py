@@ -1,5 +1,6 @@
 """Scores joined from folds, ranked one by one or from histograms, against scores of all rows at once."""
 
+from collections.abc import Sequence
 from dataclasses import replace
 from functools import cache
 
@@ -8,13 +9,14 @@ import pandas as pd
 import pytest
 from builders import compared, folds_of, in_turns, predicted
 
-from bnx import comparison as main
-from bnx import rating
+from bnx import rating, run_notes
 from bnx.calibrating import slope
 from bnx.comparison import Comparison
 from bnx.documents import predictions_table
+from bnx.evaluation import Evaluation
 from bnx.judging import inner_picks
-from bnx.losses import Histograms, Tally, log_losses, ranking, scores, scores_of
+from bnx.losses import Histograms, Scores, Tally, log_losses, ranking, scores, scores_of
+from bnx.rating import StructureScore
 
 
 @cache
@@ -28,7 +30,12 @@ def run(repeats: int = 1) -> Comparison:
     frame = pd.DataFrame({f"x{i}": [f"v{level}" for level in column] for i, column in enumerate(columns)})
     frame["kind"] = np.array(["p", "q", "r"])[target]
     names = ("naive", "tan", "tan-tested", "kdb1", "kdb2")
-    return compared(frame, "kind", folds=5, repeats=repeats, structures=names, require=("x1:x2",))
+    return compared(frame, "kind", folds=5, repeats=repeats, structures=names, mix=False, require=("x1:x2",))
+
+
+def scored(evaluations: Sequence[Evaluation], picks: Sequence[int]) -> tuple[list[StructureScore], Scores]:
+    results, (honest,) = rating.score(evaluations, [picks])
+    return results, honest
 
 
 def whole_truth(found: Comparison) -> np.ndarray:
@@ -66,13 +73,13 @@ def test_the_mixture_takes_each_fold_from_its_pick() -> None:
     found, truth = run(), whole_truth(run())
     fold = folds_of(found.evaluations[0])
     picks = [0, 4, 1, 0, 2]
-    _, mixed = rating.score(found.evaluations, picks)
+    _, mixed = scored(found.evaluations, picks)
     p = np.stack([predicted(found, s) for s in range(5)])[np.array(picks)[fold], np.arange(900)]
     expected = scores(p, truth, 3)
     assert mixed.confusion == expected.confusion
     assert mixed.log_loss == pytest.approx(expected.log_loss, rel=1e-13)
     assert mixed.auc == pytest.approx(expected.auc, abs=1e-15)
-    _, same = rating.score(found.evaluations, [1] * 5)
+    _, same = scored(found.evaluations, [1] * 5)
     assert same == found.results[1].pooled
 
 
@@ -80,10 +87,10 @@ def test_the_mixture_takes_each_fold_from_its_pick() -> None:
 def test_histograms_bound_what_they_leave_open(repeats: int, monkeypatch: pytest.MonkeyPatch) -> None:
     found = run(repeats)
     picks = [k % 5 for k in range(5 * repeats)]
-    exact, mixed = rating.score(found.evaluations, picks)
+    exact, mixed = scored(found.evaluations, picks)
     monkeypatch.setattr(rating, "EXACT_ROWS", 100)
     monkeypatch.setattr(rating, "_BLOCK", 50)
-    binned, binned_mixed = rating.score(found.evaluations, picks)
+    binned, binned_mixed = scored(found.evaluations, picks)
     pairs = [(one.pooled, other.pooled) for one, other in zip(exact, binned, strict=True)]
     for one, other in [*pairs, (mixed, binned_mixed)]:
         assert other.confusion == one.confusion
@@ -101,17 +108,17 @@ def test_histograms_bound_what_they_leave_open(repeats: int, monkeypatch: pytest
         assert other.error == pytest.approx(one.error, rel=1e-12)
         assert [fold.scores.confusion for fold in one.by_fold] == [fold.scores.confusion for fold in other.by_fold]
     monkeypatch.setattr(rating, "SLOPE_ROWS", 450 * repeats)
-    some, _ = rating.score(found.evaluations, picks)
+    some, _ = scored(found.evaluations, picks)
     assert 0 < abs(some[0].slope - exact[0].slope) < 0.3
 
 
 def test_the_note_names_the_bounds(monkeypatch: pytest.MonkeyPatch) -> None:
     found = run()
-    assert main._rating_notes(found.results) == []
+    assert run_notes._rating_notes(found.results) == []
     monkeypatch.setattr(rating, "EXACT_ROWS", 100)
-    monkeypatch.setattr(main, "EXACT_ROWS", 100)
-    results, _ = rating.score(found.evaluations, inner_picks(found.evaluations))
-    note = main._rating_notes(results)[0]
+    monkeypatch.setattr(run_notes, "EXACT_ROWS", 100)
+    results, _ = scored(found.evaluations, inner_picks(found.evaluations))
+    note = run_notes._rating_notes(results)[0]
     assert note.startswith("900 rows are too many to rank one by one: areas under the curve come from histograms")
     assert note.endswith("calibration slopes are found from 200,000 rows")
 
@@ -123,16 +130,16 @@ def test_rows_that_come_round_in_turns_and_threads_change_nothing(exact: bool, m
     if not exact:
         monkeypatch.setattr(rating, "EXACT_ROWS", 100)
     picks = inner_picks([one])
-    expected, honest = rating.score([one], picks)
+    expected, honest = scored([one], picks)
     two = replace(one, engine=replace(one.engine, jobs=2))
-    assert rating.score([two], picks) == (expected, honest)
+    assert scored([two], picks) == (expected, honest)
     engine = in_turns(one.engine, 3)
     parts = engine.blocks // 5
     turned = replace(
         one, engine=engine, fold_rows=tuple(engine.rows_of(fold * parts, (fold + 1) * parts) for fold in range(5))
     )
     assert turned.rows_by_fold == one.rows_by_fold
-    other, honest_too = rating.score([turned], picks)
+    other, honest_too = scored([turned], picks)
     for a, b in zip([*(r.pooled for r in expected), honest], [*(r.pooled for r in other), honest_too], strict=True):
         assert a.confusion == b.confusion
         assert a.auc == pytest.approx(b.auc, abs=1e-15)

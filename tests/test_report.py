@@ -143,6 +143,11 @@ def test_every_structure_stands_with_its_picture_and_every_edge(plain: SmallRun)
 
 def test_score_table_shows_the_figures_of_the_document(plain: SmallRun) -> None:
     rows = page_of(plain).tables["score-table"][1:]
+    mix = plain.comparison["mix"]
+    assert rows[-1][0] == f"mix{mix['words']}{'offered' if mix['offered'] else 'not offered'}"
+    assert rows[-1][3] == f"{mix['log_loss']:.3f} ± {mix['log_loss_se']:.3f}"
+    assert f"{mix['words']}: {mix['reason']}" in " ".join(page_of(plain).text.split())
+    rows = rows[:-1]
     assert len(rows) == len(plain.comparison["structures"])
     losses = [one["log_loss"] for one in plain.comparison["structures"]]
     assert [row[3].split()[0] for row in rows] == [f"{loss:.3f}" for loss in sorted(losses)]
@@ -295,7 +300,7 @@ def test_settings_warnings_versions_and_cautions_stand_on_the_page(document: dic
 
 def test_a_second_table_is_shown_where_there_is_one(document: dict[str, Any]) -> None:
     assert "separate table" not in Page(report_html(document, {})).text
-    for one in document["structures"]:
+    for one in (*document["structures"], document["mix"]):
         one["holdout"] = {"log_loss": 0.4375}
     assert all(row[-1] == "0.438" for row in Page(report_html(document, {})).tables["score-table"][1:])
 

@@ -10,10 +10,11 @@ import pandas as pd
 import typer
 
 from bnx.classifier import Classifier
-from bnx.cli.shared import Overwrite, Quiet, StructureFile, check_spared, opened, say
+from bnx.cli.shared import Overwrite, Quiet, StructureFile, check_spared, opened, opened_mix, say
 from bnx.encoding import encode
 from bnx.errors import SettingError
 from bnx.files import check_free, write_bytes
+from bnx.mixed_classifier import MixedClassifier
 from bnx.reading import Source, open_source
 from bnx.rebasing import parse_prior, rebased
 from bnx.summing_out import summing_notes
@@ -39,7 +40,7 @@ def run(
     overwrite: Overwrite = False,
     quiet: Quiet = False,
 ) -> None:
-    """Give every class's probability for each record, and the most probable class.
+    """Give every class's probability for each record, and the most probable class, by a structure or a mix.
 
     The result has the columns row (0-based line of data), most_probable, and p:LEVEL for each level of the class.
     Blank cells and values that the structure does not know are summed out along the structure, with a note. With
@@ -53,9 +54,12 @@ def run(
     _check_output(output, overwrite)
     source = open_source(data)
     check_spared(output, source)
-    _, classifier = opened(structure)
+    _, classifier = opened_mix(structure) or opened(structure)
     if prior is not None:
-        classifier = rebased(classifier, parse_prior(prior, classifier.target.levels))
+        shares = parse_prior(prior, classifier.target.levels)
+        classifier = (
+            classifier.rebased(shares) if isinstance(classifier, MixedClassifier) else rebased(classifier, shares)
+        )
     result, notes = _classified(classifier, source)
     if output == "-":
         typer.echo(result.to_csv(index=False), nl=False)
@@ -77,7 +81,7 @@ def _check_output(output: str, overwrite: bool) -> None:
     check_free(output, overwrite)
 
 
-def _classified(classifier: Classifier, source: Source) -> tuple[pd.DataFrame, list[str]]:
+def _classified(classifier: Classifier | MixedClassifier, source: Source) -> tuple[pd.DataFrame, list[str]]:
     """Classify every record; also say, attribute by attribute, how many records hold something unknown."""
     parts, unknown, rough = [], np.zeros(len(classifier.domains), np.int64), 0
     for codes, _ in encode(source, classifier.domains):
@@ -96,7 +100,7 @@ def _classified(classifier: Classifier, source: Source) -> tuple[pd.DataFrame, l
     return pd.DataFrame(columns), notes
 
 
-def _moved(classifier: Classifier, shares: Mapping[str, float]) -> str:
+def _moved(classifier: Classifier | MixedClassifier, shares: Mapping[str, float]) -> str:
     """Say from where to where the class prior moved."""
     before = (classifier.class_counts / classifier.class_counts.sum()).tolist()
     told = [f"{level} {old:.4g} to {share:.4g}" for old, (level, share) in zip(before, shares.items(), strict=True)]

@@ -1,17 +1,19 @@
 """bnx draw: one structure as a picture."""
 
 import math
+from dataclasses import replace
 from pathlib import Path
 from typing import Annotated, cast
 
 import typer
 
-from bnx.cli.shared import Overwrite, StructureFile, Theme, colours, opened, say
+from bnx.cli.shared import Overwrite, StructureFile, Theme, colours, opened, opened_mix, say
 from bnx.documents import picture_of
 from bnx.drawing import Form, render
 from bnx.errors import SettingError
 from bnx.files import check_free, write_bytes
 from bnx.formats.dot import dot_source
+from bnx.picture import Picture
 
 __all__ = ["run"]
 
@@ -26,15 +28,29 @@ def run(
     everything: Annotated[bool, typer.Option("--everything", help="Draw all edges, however many.")] = False,
     overwrite: Overwrite = False,
 ) -> None:
-    """Draw a structure as SVG, PNG, PDF or DOT."""
+    """Draw a structure as SVG, PNG, PDF or DOT; of a mix every member, into a file of its own."""
     form = Path(output).suffix.lower().removeprefix(".")
     if form not in ("svg", "png", "pdf", "dot"):
         raise SettingError(f"-o {output}: the ending says nothing that can be drawn; use .svg, .png, .pdf or .dot")
     if not (math.isfinite(least_bits) and least_bits >= 0):
         raise SettingError(f"--least-bits: {least_bits:g} cannot be used; give 0 or a number above")
     shades = colours(theme, f".{form}")
-    check_free(output, overwrite)
-    document, _ = opened(structure)
-    dot = dot_source(picture_of(document), shades, least_bits, everything)
-    write_bytes(output, dot.encode() if form == "dot" else render(dot, cast(Form, form)), overwrite)
-    say(f"{output} written")
+    for place, picture in _pictures(structure, Path(output)):
+        check_free(place, overwrite)
+        dot = dot_source(picture, shades, least_bits, everything)
+        write_bytes(place, dot.encode() if form == "dot" else render(dot, cast(Form, form)), overwrite)
+        say(f"{place} written")
+
+
+def _pictures(structure: str, output: Path) -> list[tuple[str, Picture]]:
+    """List what is drawn into which file: a structure, or the members of a mix with their weights."""
+    mix = opened_mix(structure)
+    if mix is None:
+        return [(str(output), picture_of(opened(structure)[0]))]
+    found = []
+    for one in mix[0]["members"]:
+        picture = picture_of(one["structure"])
+        subtitle = ", ".join(part for part in (picture.subtitle, f"weight {one['weight']:.2f} of a mix") if part)
+        place = output.with_name(f"{output.stem}-{one['name']}{output.suffix}")
+        found.append((str(place), replace(picture, subtitle=subtitle)))
+    return found

@@ -5,7 +5,7 @@ from typing import Annotated
 
 import typer
 
-from bnx.cli.shared import Overwrite, opened, say
+from bnx.cli.shared import Overwrite, opened, opened_mix, say
 from bnx.documents import dot_of
 from bnx.errors import DataError, SettingError
 from bnx.files import check_free, write_bytes
@@ -27,7 +27,11 @@ def run(
     """Hand over one structure as one self-contained file, with its tables and the evidence that chose it."""
     _check_form(to, output)
     check_free(output, overwrite)
-    document, _ = opened(str(_file_of(structure, folder)))
+    path = str(_file_of(structure, folder))
+    mix = opened_mix(path)
+    if mix and to == "dot":
+        raise SettingError("a mix has no edges of its own to draw; export its members, or give --to json")
+    document, _ = mix or opened(path)
     write_bytes(output, (json_text(document) if to == "json" else dot_of(document)).encode(), overwrite)
     say(f"{output} written")
 

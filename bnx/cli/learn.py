@@ -96,6 +96,9 @@ def run(
     temperature: Annotated[
         bool, typer.Option("--temperature/--no-temperature", help="Calibrate temperature, class offsets and floor.")
     ] = Recipe.temperature,
+    mix: Annotated[
+        bool, typer.Option("--mix/--no-mix", help="Also try a weighted mix of the structures.")
+    ] = Recipe.mix,
     require: Annotated[
         list[str] | None,
         typer.Option(metavar="PARENT:CHILD", help="An edge that every structure but naive must have."),

@@ -11,8 +11,10 @@ import typer
 from bnx.classifier import Classifier
 from bnx.errors import SettingError
 from bnx.formats.evidence import check_evidence
+from bnx.formats.mix_json import is_mix, members_of_mix, mixed_of, read_mix
 from bnx.formats.structure_json import classifier_of, read_structure
 from bnx.independence import TESTS
+from bnx.mixed_classifier import MixedClassifier
 from bnx.multiplicity import METHODS as ADJUSTMENTS
 from bnx.reading import Source
 from bnx.recipe import Recipe
@@ -46,6 +48,7 @@ __all__ = [
     "colours",
     "listed",
     "opened",
+    "opened_mix",
     "recipe_of",
     "say",
     "store_of",
@@ -60,7 +63,9 @@ Data = Annotated[
         metavar="DATA", help="CSV or TSV (also .gz, .zst), Parquet file or folder, Arrow file; - for standard input."
     ),
 ]
-StructureFile = Annotated[str, typer.Argument(metavar="NAME.json", help="A structure file of bnx learn or bnx export.")]
+StructureFile = Annotated[
+    str, typer.Argument(metavar="NAME.json", help="A structure file, or a mix, of bnx learn or bnx export.")
+]
 ClassColumn = Annotated[str, typer.Option("--class", metavar="COL", help="The column to classify by.")]
 Numeric = Annotated[Columns, typer.Option("--numeric", metavar="COL,...", help="Treat columns as numeric.")]
 Categorical = Annotated[
@@ -192,6 +197,21 @@ def opened(path: str) -> tuple[dict[str, Any], Classifier]:
     document = read_structure(path)
     classifier = classifier_of(document, path)
     check_evidence(document, path)
+    return document, classifier
+
+
+def opened_mix(path: str) -> tuple[dict[str, Any], MixedClassifier] | None:
+    """Read a mix file and everything in it that a command may show; None for a file that is no mix.
+
+    Raises:
+        FormatError: it is not what it claims to be.
+    """
+    if not is_mix(path):
+        return None
+    document = read_mix(path)
+    classifier = mixed_of(document, path)
+    for one, _ in members_of_mix(document, path):
+        check_evidence(one, f"{path}, member {one['name']}")
     return document, classifier
 
 

@@ -51,14 +51,16 @@ def _left_out(columns: Sequence[Mapping[str, Any]]) -> list[str]:
     return [*lines[:_FEW], f"left out for {more}: see comparison.json"]
 
 
-def _ranked(document: Mapping[str, Any]) -> list[Mapping[str, Any]]:
-    return sorted(document["structures"], key=lambda one: (one["log_loss"] is None, one["log_loss"]))
+def _ranked(document: Mapping[str, Any], mix: Mapping[str, Any] | None = None) -> list[Mapping[str, Any]]:
+    """List structures by log loss, and the mix among them if it is given."""
+    every = [*document["structures"], *([{"name": "mix"} | dict(mix)] if mix else [])]
+    return sorted(every, key=lambda one: (one["log_loss"] is None, one["log_loss"]))
 
 
 def _table(document: Mapping[str, Any]) -> str:
     against = f"against {document['settings']['baseline']}, bits"
     header = ("structure", "edges", "params", "log loss, bits", against, "p", *_SCORES, "temp.")
-    return aligned(header, [_row(one, document) for one in _ranked(document)])
+    return aligned(header, [_row(one, document) for one in _ranked(document, document["mix"])])
 
 
 _SCORES = ("Brier", "accuracy", "AUC", "calib.")
@@ -84,19 +86,20 @@ def _row(one: Mapping[str, Any], document: Mapping[str, Any]) -> tuple[str, ...]
     mark = "*" if one["name"] == document["recommended"]["name"] else " "
     return (
         f"{mark} {one['name']}",
-        f"{len(one['edges']):,}",
-        f"{one['free_parameters']:,}",
+        f"{len(one['edges']):,}" if "edges" in one else "",
+        f"{one['free_parameters']:,}" if "edges" in one else "",
         _bits(one["log_loss"]) + error,
         difference,
         p,
         *_scores(one),
-        fixed(one["temperature"], 2),
+        fixed(one["temperature"], 2) if "edges" in one else "",
     )
 
 
 def _legend(document: Mapping[str, Any]) -> list[str]:
     """Say the names in words, and the short headings in full."""
-    names = "; ".join(f"{one['name']}: {one['words']}" for one in _ranked(document) if one["words"] != one["name"])
+    ranked = _ranked(document, document["mix"])
+    names = "; ".join(f"{one['name']}: {one['words']}" for one in ranked if one["words"] != one["name"])
     columns = "scores after calibration; interval 95 %; p adjusted over the structures; calib.: calibration error; "
     columns += "temp.: temperature"
     return [_wrapped(part + ".") for part in (names, columns) if part]
@@ -104,7 +107,7 @@ def _legend(document: Mapping[str, Any]) -> list[str]:
 
 def _held_out(document: Mapping[str, Any]) -> list[str]:
     """Lay out the scores on a table that took no part, if there is one."""
-    scored = [one for one in _ranked(document) if "holdout" in one]
+    scored = [one for one in _ranked(document, document["mix"]) if "holdout" in one]
     if not scored:
         return []
     rows = [(f"  {one['name']}", _bits(one["holdout"]["log_loss"]), *_scores(one["holdout"])) for one in scored]
@@ -120,6 +123,8 @@ def _advice(document: Mapping[str, Any]) -> list[str]:
         f"Its honest score, from folds that took no part in choosing: "
         f"{_bits(honest)} bits, accuracy {fixed(advice['honest_accuracy'])}.",
     ]
+    if document["mix"]:
+        lines.append(f"mix of {document['mix']['words']}. {document['mix']['reason']}")
     naive = next((one for one in document["structures"] if one["name"] == "naive"), None)
     if naive and naive["temperature"] < 0.95:
         lines.append(
@@ -155,4 +160,6 @@ def _pairs(document: Mapping[str, Any]) -> list[str]:
 
 def _files(document: Mapping[str, Any], output: str) -> str:
     structures = count_of(len(document["structures"]), "structure")
-    return f"{output.rstrip('/') or '/'}/: report.html, comparison.json, pairs.csv, {structures} as .json .svg .dot"
+    mix = "mix.json, " if document["mix"] and document["mix"]["offered"] else ""
+    place = f"{output.rstrip('/') or '/'}/"
+    return f"{place}: report.html, comparison.json, pairs.csv, {mix}{structures} as .json .svg .dot"

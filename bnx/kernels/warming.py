@@ -13,10 +13,12 @@ from typing import Any
 from numba import boolean, float64, int32, int64, uint8
 
 from bnx.kernels.chance import expected_nats
+from bnx.kernels.held_tables import held_tables
+from bnx.kernels.misfits import misfits
 from bnx.kernels.montecarlo import monte_carlo_tail
 from bnx.kernels.posterior import calibrated_loss, calibration_sums, posteriors, slope_sums
 from bnx.kernels.ranking import pack_scores, rank_sums, sort_whole
-from bnx.kernels.replacing import add_held_terms, class_weights, replaced_losses
+from bnx.kernels.replacing import held_weights, present_loss, replace_family, replaced_savings
 from bnx.kernels.scoring import add_terms, tempered_losses
 from bnx.kernels.smoothing import drop_parent, ratio_tables, smoothed_tables
 from bnx.kernels.tallying import tally
@@ -27,9 +29,18 @@ _WHOLE, _REAL, _TRUE, _CLASSES = int64[::1], float64[::1], boolean[::1], uint8[:
 _CODES, _COUNTS, _WHOLES, _REALS = uint8[:, ::1], int32[:, ::1], int64[:, ::1], float64[:, ::1]
 
 LATE: tuple[tuple[Callable[..., Any], tuple[Any, ...]], ...] = (
-    (add_held_terms, (_CODES, _WHOLE, _WHOLE, _WHOLE, float64, float64, _REALS)),
-    (class_weights, (_REALS, _WHOLE, _REALS, _REALS)),
-    (replaced_losses, (_CODES, _WHOLE, _WHOLES, _WHOLES, _WHOLE, float64, _REALS, _REAL, _REAL)),
+    (
+        held_tables,
+        (_CODES, _WHOLE, int64, _WHOLES, _WHOLES, _WHOLES, _WHOLE, float64, _WHOLE, _WHOLE, _REAL),
+    ),
+    (held_weights, (_CODES, _WHOLE, _WHOLE, _WHOLES, _WHOLES, _WHOLE, _WHOLE, _REAL, _REALS, _REALS)),
+    (present_loss, (_WHOLE, _REALS, _REAL, _REAL)),
+    (
+        replaced_savings,
+        (_CODES, _WHOLE, _WHOLE, _WHOLES, _WHOLES, _WHOLE, _WHOLE, _REAL, _REALS, _REAL, _REAL, _WHOLE, float64, _REAL),
+    ),
+    (replace_family, (_CODES, _WHOLE, _WHOLE, _WHOLES, _WHOLES, _WHOLE, _WHOLE, _REAL, _REALS)),
+    (misfits, (_CODES, _WHOLE, _WHOLE, _REALS, _WHOLES, _WHOLES, _REAL)),
     (ratio_tables, (_COUNTS, _WHOLE, _WHOLES, _WHOLE, _WHOLE, _REALS, _TRUE, _WHOLE, _REALS)),
     (
         add_terms,

@@ -1,0 +1,85 @@
+"""The mix file: structures with their weights in one self-contained JSON."""
+
+import json
+from collections.abc import Mapping, Sequence
+from pathlib import Path
+from typing import Any
+
+from bnx.errors import DataError, FormatError
+from bnx.formats.structure_json import STRUCTURE_FORMAT, classifier_of
+from bnx.mixed_classifier import MixedClassifier, mix_words
+
+__all__ = ["MIX_FORMAT", "is_mix", "members_of_mix", "mixed_document", "mixed_of", "read_mix"]
+
+MIX_FORMAT = "bnx-mix/1"
+
+
+def mixed_document(members: Sequence[Mapping[str, Any]], weights: Sequence[float]) -> dict[str, Any]:
+    """Put structure documents together with their weights, which sum to 1."""
+    first = members[0]["class"]
+    return {
+        "format": MIX_FORMAT,
+        "name": "mix",
+        "words": mix_words([member["name"] for member in members], weights),
+        "class": {"name": first["name"], "levels": first["levels"]},
+        "members": [
+            {"name": member["name"], "weight": weight, "structure": member}
+            for member, weight in zip(members, weights, strict=True)
+        ],
+    }
+
+
+def is_mix(path: str) -> bool:
+    """Tell whether a file claims to be a mix; one that cannot be read is left to those who read it."""
+    try:
+        document = json.loads(Path(path).read_text(encoding="utf-8"))
+    except (OSError, ValueError):
+        return False
+    return isinstance(document, dict) and document.get("format") == MIX_FORMAT
+
+
+def read_mix(path: str) -> dict[str, Any]:
+    """Read a mix file.
+
+    Raises:
+        DataError, FormatError: there is no such file, or it is not a mix file of this version.
+    """
+    if not Path(path).is_file():
+        raise DataError(f"there is no file {path}; give the mix.json that bnx learn or bnx export wrote")
+    if not is_mix(path):
+        raise FormatError(f"{path} is not a mix file of the format {MIX_FORMAT!r}; give a mix.json of bnx learn")
+    return dict(json.loads(Path(path).read_text(encoding="utf-8")))
+
+
+def members_of_mix(document: Mapping[str, Any], path: str) -> list[tuple[dict[str, Any], float]]:
+    """List the structure documents of a mix with their weights.
+
+    Raises:
+        FormatError: there are none, or the weights are none.
+    """
+    try:
+        found = [(dict(one["structure"]), float(one["weight"])) for one in document["members"]]
+        formats = {one.get("format") for one, _ in found}
+    except (KeyError, TypeError, ValueError, AttributeError):
+        raise FormatError(f"{path}: the members are no structures with weights; write it anew with bnx learn") from None
+    if formats != {STRUCTURE_FORMAT}:
+        raise FormatError(f"{path}: its members are not all {STRUCTURE_FORMAT!r}; write it anew with bnx learn")
+    weights = [weight for _, weight in found]
+    if min(weights) < 0 or not abs(sum(weights) - 1) <= 1e-9:
+        raise FormatError(f"{path}: the weights {weights} are not shares of 1; write it anew with bnx learn")
+    return found
+
+
+def mixed_of(document: Mapping[str, Any], path: str) -> MixedClassifier:
+    """Rebuild the classifier of a mix document.
+
+    Raises:
+        FormatError: a part is missing or contradicts another.
+    """
+    found = members_of_mix(document, path)
+    members = tuple(classifier_of(one, f"{path}, member {one.get('name')}") for one, _ in found)
+    known = {domain.name: domain for one in members for domain in one.domains}
+    alike = all(known[domain.name] == domain for one in members for domain in one.domains)
+    if not alike or any(one.target != members[0].target for one in members):
+        raise FormatError(f"{path}: its members differ in attributes or class; write it anew with bnx learn")
+    return MixedClassifier(members, tuple(weight for _, weight in found))

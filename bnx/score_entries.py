@@ -1,0 +1,48 @@
+"""Scores as plain values ready to be written."""
+
+from collections.abc import Sequence
+from typing import Any
+
+from bnx.judging import Against
+from bnx.rating import StructureScore
+
+__all__ = ["against_entry", "fold_entries", "score_entry"]
+
+
+def score_entry(result: StructureScore, levels: Sequence[str]) -> dict[str, Any]:
+    """Describe the pooled scores."""
+    return {
+        **result.pooled.to_dict(levels),
+        "log_loss_se": result.error,
+        "calibration_slope": result.slope,
+    }
+
+
+def fold_entries(result: StructureScore, levels: Sequence[str]) -> list[dict[str, Any]]:
+    """Describe the scores of every fold."""
+    return [
+        {
+            "repeat": fold.repeat,
+            "fold": fold.fold,
+            "rows": fold.rows,
+            **fold.scores.to_dict(levels),
+            "calibration_slope": fold.slope,
+        }
+        for fold in result.by_fold
+    ]
+
+
+def against_entry(against: Against | None) -> dict[str, Any]:
+    """Describe the difference to the baseline; nulls for the baseline itself."""
+    if against is None:
+        keys = ("difference", "interval", "p_value", "region_bits", "probability_better", "probability_equivalent")
+        return dict.fromkeys(keys)
+    return {
+        "difference": against.difference.mean,
+        "interval": [against.difference.low, against.difference.high],
+        "p_value": against.adjusted_p,
+        "p_value_alone": against.difference.p_value,
+        "region_bits": against.region,
+        "probability_better": against.chances.better,
+        "probability_equivalent": against.chances.equivalent,
+    }
