@@ -6,7 +6,8 @@ from bnx.coding import Coded
 from bnx.evaluation import Evaluation
 from bnx.heldout import MOST_ROWS
 from bnx.learners import Heldout, Learner
-from bnx.observing import rare_classes, unobserved_notes
+from bnx.learning import make_bounds
+from bnx.observing import rare_classes, short_of_room, unobserved_notes
 from bnx.rating import EXACT_ROWS, SLOPE_ROWS, StructureScore
 from bnx.recipe import Recipe
 from bnx.sampling import rows_for_gains
@@ -36,6 +37,7 @@ def run_notes(
             f"parents of heldout are chosen on at most {MOST_ROWS:,} rows of every training set, spread evenly by fold "
             "and class"
         )
+    notes += short_of_room(evaluations[0], make_bounds(recipe, coded.table.schema.names))
     if recipe.group:
         notes.append(
             f"rows of one {recipe.group} may be alike, but the tests assume independent records: every p is descriptive"

@@ -78,6 +78,8 @@ def mixed_of(document: Mapping[str, Any], path: str) -> MixedClassifier:
     """
     found = members_of_mix(document, path)
     members = tuple(classifier_of(one, f"{path}, member {one.get('name')}") for one, _ in found)
-    if any(one.domains != members[0].domains or one.target != members[0].target for one in members):
+    known = {domain.name: domain for one in members for domain in one.domains}
+    alike = all(known[domain.name] == domain for one in members for domain in one.domains)
+    if not alike or any(one.target != members[0].target for one in members):
         raise FormatError(f"{path}: its members differ in attributes or class; write it anew with bnx learn")
     return MixedClassifier(members, tuple(weight for _, weight in found))
