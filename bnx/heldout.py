@@ -23,7 +23,7 @@ _FEWEST_CELLS = 1024
 _ROOM = 2**20  # probabilities that are kept for when they are asked for again
 _FAMILIES = 4096  # of which tables are kept
 _MEMBERS = 4  # of a family, as a rule
-_AT_ONCE = 500  # rows that say enough to give up a choice
+_AT_ONCE = 1000  # rows that say enough to give up a choice
 _EIGHTHS = 8
 
 Family = tuple[int, ...]

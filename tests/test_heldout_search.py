@@ -233,3 +233,16 @@ def test_its_stability_is_the_share_of_the_first_25_halves() -> None:
         assert {ends: share for (k, ends), share in found.items() if k == s} == {
             ends: times / number for ends, times in seen.items()
         }
+
+
+def test_blanks_that_are_not_observed_do_not_hide_an_interaction() -> None:
+    """The class says whether two attributes agree; a fifth of all cells is blank."""
+    rng = np.random.default_rng(8)
+    cells = rng.integers(0, 2, (4, 900))
+    kind = np.where(cells[0] == cells[1], "same", "other")
+    blank = rng.random(cells.shape) < 0.2
+    columns = {f"a{i}": np.where(blank[i], "", cells[i].astype(str)) for i in range(4)}
+    frame = pd.DataFrame(columns).assign(kind=kind)
+    found = compared(frame, "kind", structures=("naive", "heldout"), missing="sum-out", folds=4)
+    assert frozenset((0, 1)) in {frozenset(edge) for edge in found.structures[1].edges}
+    assert found.results[1].pooled.log_loss < found.results[0].pooled.log_loss - 0.3
