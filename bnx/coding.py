@@ -20,6 +20,7 @@ from bnx.screening import column_warnings, few_rows, reason_to_leave_out
 from bnx.storing import MEMORY, Store
 from bnx.tables import CodedTable, LeftOut, Lines
 from bnx.text import count_of, quoted
+from bnx.weighing import RowWeights
 
 __all__ = ["MISSING", "Coded", "SideColumn", "code_table"]
 
@@ -44,7 +45,8 @@ class Coded:
     """A coded table with all that was noticed on the way.
 
     ``warnings`` are sentences; ``extra`` holds the columns asked for beside the attributes, by name; ``rows_read``
-    counts the rows of the source, ``duplicates`` those that repeat an earlier one in all attributes used and the class.
+    counts the rows of the source, ``duplicates`` those that repeat an earlier one in all attributes used and the class;
+    ``weighing``: the column of weights, if there is one, whose counts the rows follow already.
     """
 
     table: CodedTable
@@ -53,6 +55,7 @@ class Coded:
     extra: Mapping[str, SideColumn]
     rows_read: int
     duplicates: int
+    weighing: RowWeights | None = None
 
 
 @dataclass(frozen=True)
@@ -80,8 +83,11 @@ def code_table(
     extra: Sequence[str] = (),
     jobs: int = 1,
     store: Store = MEMORY,
+    weights: RowWeights | None = None,
 ) -> Coded:
     """Code a whole source on ``jobs`` threads, keeping what has a value per row in ``store``.
+
+    weights: of the rows, whose counts the source follows already.
 
     Rows with a blank class are dropped. A blank cell of an attribute becomes the level ``(blank)``; with
     ``missing="drop"`` its row is dropped, with ``"sum-out"`` the cell is one that was not observed. A column is numeric
@@ -115,7 +121,8 @@ def code_table(
     side = {name: _side(column, raw) for name, column in raw.side.items()}
     table, pooled = _coded(raw, used, veiled=missing == "sum-out")
     warnings += _duplicate_warning(duplicates, raw.lines.count, table.schema)
-    return Coded(table, tuple(left_out), tuple(warnings + pooled), side, raw.lines.read, duplicates)
+    noted = tuple([*(weights.notes if weights else []), *warnings, *pooled])
+    return Coded(table, tuple(left_out), noted, side, raw.lines.read, duplicates, weights)
 
 
 def _check(

@@ -4,6 +4,7 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from hashlib import sha256
 from pathlib import PurePath
+from typing import Any
 
 import numpy as np
 
@@ -54,7 +55,7 @@ class Comparison:
     """Everything that one run found out; per structure in the order asked for.
 
     ``relevance`` (n,): bits each attribute shares with the class. ``pairs`` and ``judged``: all pairs, on all rows.
-    ``held_out``: scores on a table that took no part, empty without one.
+    ``held_out``: scores on a table that took no part, empty without one. ``weights``: of rows, in plain values.
     """
 
     recipe: Recipe
@@ -75,6 +76,7 @@ class Comparison:
     warnings: tuple[str, ...]
     evaluations: tuple[Evaluation, ...]
     lines: Lines
+    weights: dict[str, Any] | None
 
     @property
     def structures(self) -> tuple[Structure, ...]:
@@ -150,6 +152,7 @@ def compare(
         warnings=(*early, *notes, *notes_on_structures, *judged.notes, *not_scored, *coded.warnings),
         evaluations=tuple(evaluations),
         lines=coded.table.lines,
+        weights=None if coded.weighing is None else coded.weighing.to_dict(),
     )
 
 

@@ -27,7 +27,7 @@ __all__ = ["PairTests", "run_pair_tests"]
 
 _SETTINGS = (
     *("test", "adjust", "alpha", "negligible", "seed", "bins", "numeric", "categorical", "ignore", "keep", "missing"),
-    "max_levels",
+    *("max_levels", "weight"),
 )
 
 

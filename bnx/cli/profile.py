@@ -15,6 +15,7 @@ from bnx.cli.shared import (
     Missing,
     Numeric,
     SpillFolder,
+    Weight,
     recipe_of,
     store_of,
     threads,
@@ -36,6 +37,7 @@ def run(
     keep: Keep = None,
     missing: Missing = Recipe.missing,
     max_levels: MaxLevels = Recipe.max_levels,
+    weight: Weight = Recipe.weight,
     spill: SpillFolder = None,
     json_out: JsonOut = False,
 ) -> None:

@@ -1,0 +1,127 @@
+"""A column of weights: how many records each row stands for, or how much it weighs."""
+
+import math
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import pyarrow as pa
+
+from bnx.blocks import array_numbers
+from bnx.cells import Cells, stretches
+from bnx.errors import DataError
+from bnx.reading import Source, repeated
+from bnx.storing import Store
+from bnx.text import count_of
+
+__all__ = ["RowWeights", "read_weights", "records_of"]
+
+_MOST = 1e15  # up to here and beyond, whole numbers are exact
+_ROW_BYTES = 12  # of a row beside its codes: class, block, place
+
+
+@dataclass(frozen=True)
+class RowWeights:
+    """The weights of a source, row by row.
+
+    ``counts``: whether all are whole numbers, so that a row stands for so many records; ``total``: their sum; ``zeros``:
+    rows of weight 0; ``values``: (rows read,) float64.
+    """
+
+    column: str
+    counts: bool
+    total: float
+    zeros: int
+    values: Cells
+
+    @property
+    def effective_rows(self) -> float:
+        """Rows of equal weight that would be worth as much; of counts, the records.
+
+        Source: Kish 1965 (effective sample size; from memory).
+        """
+        if self.counts:
+            return self.total
+        squares = sum(math.fsum((self.values.part(rows) / self.total) ** 2) for rows in stretches(len(self.values)))
+        return 1 / squares
+
+    @property
+    def notes(self) -> list[str]:
+        """Say what a reader must know about counts, and which rows are left out."""
+        notes = []
+        if self.zeros:
+            was = "its" if self.zeros == 1 else "their"
+            rows = count_of(self.zeros, "row")
+            notes.append(f"{rows} of {len(self.values):,} left out because {was} weight in {self.column} is 0")
+        if self.counts:
+            notes.append(
+                f"{count_of(len(self.values) - self.zeros, 'row')} stand for {count_of(int(self.total), 'record')}, as "
+                f"{self.column} counts; the tests take each of these as an independent record, and are descriptive "
+                "where they are not"
+            )
+        return notes
+
+    def to_dict(self) -> dict[str, Any]:
+        """Give plain values for JSON."""
+        return {
+            "column": self.column,
+            "kind": "counts" if self.counts else "real",
+            "rows": len(self.values),
+            "left_out": self.zeros,
+            "total": int(self.total) if self.counts else self.total,
+            "effective_rows": self.effective_rows,
+        }
+
+
+def read_weights(source: Source, column: str, store: Store) -> RowWeights:
+    """Read the weights of all rows.
+
+    Raises:
+        DataError: there is no such column, a weight is blank, no finite number or below 0, or all are 0.
+    """
+    values = Cells(store, np.float64, source.rows)
+    whole, zeros = True, 0
+    for batch in source.blocks([column]):
+        numbers = _checked(batch.column(0), column, len(values))
+        for part, room in values.add(len(numbers)):
+            room[:] = numbers[part]
+        whole = whole and bool((numbers == np.floor(numbers)).all())
+        zeros += int(np.count_nonzero(numbers == 0))
+    if zeros == len(values):
+        raise DataError(f"the weight column {column!r} is 0 in every row; at least one row must have a weight above 0")
+    total = sum(math.fsum(values.part(rows).tolist()) for rows in stretches(len(values)))
+    return RowWeights(column, whole, total, zeros, values)
+
+
+def _checked(array: pa.Array, column: str, before: int) -> np.ndarray:
+    """Turn a block into weights; ``before``: rows that came before it.
+
+    Raises:
+        DataError: one cannot be used.
+    """
+    numbers, wrong = array_numbers(array, column, padded=True)
+    faults = np.flatnonzero(wrong | ~((numbers >= 0) & (numbers <= _MOST)))
+    if not len(faults):
+        return numbers
+    row = int(faults[0])
+    blank = math.isnan(numbers[row]) and not wrong[row]
+    what = "is blank" if blank else f"has {str(array[row].as_py())!r}"
+    raise DataError(f"row {before + row + 1:,} {what} in the weight column {column!r}; a weight must be a number from 0 to {_MOST:g}")
+
+
+def records_of(source: Source, weights: RowWeights, attributes: int, store: Store) -> Source:
+    """Take every row as often as its weight, which counts records.
+
+    attributes: how many there are at most, each of which takes a byte a record at least.
+
+    Raises:
+        DataError: there is no room for so many records.
+    """
+    needed, room = weights.total * (attributes + _ROW_BYTES), store.room()
+    if room is not None and needed > room:
+        raise DataError(
+            f"the whole numbers of the weight column {weights.column!r} count {weights.total:,.0f} records, which take "
+            f"about {needed / 1e9:,.1f} GB, but there is room for {room / 1e9:,.1f} GB; --spill takes a folder with "
+            "more room, and weights that count nothing should be divided by their mean"
+        )
+    return repeated(source, weights.column, int(weights.total))
