@@ -30,9 +30,9 @@ from bnx.learning import Learned, make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores, scores
 from bnx.matrix_memory import matrix_notes
-from bnx.observing import rare_classes, unobserved_notes
+from bnx.observing import rare_classes, rating_notes, unobserved_notes
 from bnx.pair_judging import JudgedPairs, judge_pairs
-from bnx.rating import EXACT_ROWS, SLOPE_ROWS, StructureScore, score
+from bnx.rating import StructureScore, score
 from bnx.reading import Source
 from bnx.recipe import Recipe
 from bnx.refining import visit_families
@@ -44,6 +44,7 @@ from bnx.summing_out import summing_notes
 from bnx.tables import LeftOut, Lines
 from bnx.text import count_of
 from bnx.trainings import Training
+from bnx.weighing import as_records
 from bnx.wide_judging import MOST_JUDGED, judge_wide
 from bnx.wide_learning import takes_wide_road
 
@@ -111,6 +112,7 @@ def compare(
     recipe, notes_on_structures = recipe.for_table(len(coded.table.target), len(coded.table.schema.attributes))
     if holdout:
         holdout.check([*coded.table.schema.names, recipe.target])
+        holdout = as_records(holdout, coded.weighing, len(coded.table.schema.attributes), store)
     bounds = make_bounds(recipe, coded.table.schema.names)
     learners = [learner(name) for name in recipe.structures]
     early = _forewarned(matrix_notes(coded.table.schema, learners, bounds, recipe), warn)
@@ -278,19 +280,6 @@ def _held_out(
     return tuple(scores(np.concatenate(part), rows, len(target)) for part in parts), notes
 
 
-def _rating_notes(results: Sequence[StructureScore]) -> list[str]:
-    """Say how far rankings may be off where rows are too many to be ranked one by one."""
-    rows = sum(fold.rows for fold in results[0].by_fold)
-    if rows <= EXACT_ROWS:
-        return []
-    every = [one for result in results for one in (result.pooled, *(fold.scores for fold in result.by_fold))]
-    area, error = (max(getattr(one, name) for one in every) for name in ("auc_within", "calibration_within"))
-    return [
-        f"{rows:,} rows are too many to rank one by one: areas under the curve come from histograms and are within "
-        f"{area:.1g}, calibration errors within {error:.1g}; calibration slopes are found from {SLOPE_ROWS:,} rows"
-    ]
-
-
 def _run_warnings(
     evaluations: Sequence[Evaluation],
     coded: Coded,
@@ -326,4 +315,4 @@ def _run_warnings(
     notes += rare_classes(evaluations, coded.table.schema.target.levels)
     if any(member.tested for member in learners) and recipe.alpha > 0.1:
         notes.append(f"edges are tested at {recipe.alpha:g}: that share of the drawn edges may be false")
-    return notes + _rating_notes(results)
+    return notes + rating_notes(results)

@@ -1,14 +1,15 @@
-"""What a run says of what was not there: blanks that are no level, levels and classes that a fold never saw."""
+"""What a run says of what was not there: blanks that are no level, levels and classes unseen, rows not ranked."""
 
 from collections.abc import Sequence
 
 import numpy as np
 
 from bnx.evaluation import Evaluation
+from bnx.rating import EXACT_ROWS, SLOPE_ROWS, StructureScore
 from bnx.summing_out import MOST_CELLS
 from bnx.text import count_of, quoted
 
-__all__ = ["rare_classes", "unobserved_notes"]
+__all__ = ["rare_classes", "rating_notes", "unobserved_notes"]
 
 
 def unobserved_notes(evaluation: Evaluation, names: Sequence[str]) -> list[str]:
@@ -83,3 +84,16 @@ def rare_classes(evaluations: Sequence[Evaluation], levels: Sequence[str]) -> li
                 f"class {level} is predicted from rows that hold none of it, as all of its rows lie in one fold"
             )
     return notes
+
+
+def rating_notes(results: Sequence[StructureScore]) -> list[str]:
+    """Say how far rankings may be off where rows are too many to be ranked one by one."""
+    rows = sum(fold.rows for fold in results[0].by_fold)
+    if rows <= EXACT_ROWS:
+        return []
+    every = [one for result in results for one in (result.pooled, *(fold.scores for fold in result.by_fold))]
+    area, error = (max(getattr(one, name) for one in every) for name in ("auc_within", "calibration_within"))
+    return [
+        f"{rows:,} rows are too many to rank one by one: areas under the curve come from histograms and are within "
+        f"{area:.1g}, calibration errors within {error:.1g}; calibration slopes are found from {SLOPE_ROWS:,} rows"
+    ]

@@ -14,7 +14,7 @@ from bnx.reading import Source, repeated
 from bnx.storing import Store
 from bnx.text import count_of
 
-__all__ = ["RowWeights", "read_weights", "records_of"]
+__all__ = ["RowWeights", "as_records", "read_weights", "records_of"]
 
 _MOST = 1e15  # up to here and beyond, whole numbers are exact
 _ROW_BYTES = 12  # of a row beside its codes: class, block, place
@@ -125,3 +125,20 @@ def records_of(source: Source, weights: RowWeights, attributes: int, store: Stor
             "more room, and weights that count nothing should be divided by their mean"
         )
     return repeated(source, weights.column, int(weights.total))
+
+
+def as_records(source: Source, like: RowWeights | None, attributes: int, store: Store) -> Source:
+    """Take a further table as the first one was: by the counts in its column of the same name, if those were counts.
+
+    Raises:
+        DataError: there is no such column, or it holds something else.
+    """
+    if like is None or not like.counts:
+        return source
+    weights = read_weights(source, like.column, store)
+    if not weights.counts:
+        raise DataError(
+            f"the weight column {like.column!r} of {source.name} holds numbers that are not whole, but it counts records "
+            "in the first table; it must count them here too"
+        )
+    return records_of(source, weights, attributes, store)
