@@ -128,7 +128,7 @@ def choose(
     """
     if not nested:
         structures = len(trials[0].learned[held].structures)
-        bare = uncalibrated(trials[0].learned[held].training.class_counts)
+        bare = uncalibrated(trials[0].learned[held].training.class_mass)
         return Choice(trials[0], (options[0],) * structures, (bare,) * structures, np.zeros((structures, 0)))
     inner = inner_sets(held, folds)
     trial, chosen = trials[0], [options[0]] * len(trials[0].learned[held].structures)
@@ -140,7 +140,7 @@ def choose(
         ]
         best = int(np.argmin([total.min() for total in totals]))
         trial, chosen = trials[best], [options[k] for k in totals[best].argmin(axis=1)]
-    plain = None if calibrate else uncalibrated(trial.learned[held].training.class_counts)
+    plain = None if calibrate else uncalibrated(trial.learned[held].training.class_mass)
     return _calibrated(trial, tuple(chosen), inner, sample, plain)
 
 
@@ -168,7 +168,7 @@ def _calibrated(
         for k, (held, _) in enumerate(inner):
             part = slice(rows.starts[k], rows.starts[k + 1])
             training = trial.learned[held].training
-            used = uncalibrated(training.class_counts) if plain else fitted
+            used = uncalibrated(training.class_mass) if plain else fitted
             losses[s, k] = mean_loss(own[part], training.log_prior, used, rows.truth[part], rows.weights[part])
     return Choice(trial, chosen, tuple(calibrations), losses)
 

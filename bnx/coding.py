@@ -20,7 +20,7 @@ from bnx.screening import column_warnings, few_rows, reason_to_leave_out
 from bnx.storing import MEMORY, Store
 from bnx.tables import CodedTable, LeftOut, Lines
 from bnx.text import count_of, quoted
-from bnx.weighing import RowWeights
+from bnx.weighing import RowWeights, scaled, with_weight
 
 __all__ = ["MISSING", "Coded", "SideColumn", "code_table"]
 
@@ -108,6 +108,8 @@ def code_table(
     wishes |= dict.fromkeys((name for name in numeric if name in wishes), True)
     raw = _gathered(source, target, wishes, extra, jobs, store)
     raw, warnings = _with_class(raw)
+    if weights and not weights.counts:
+        raw = replace(raw, lines=with_weight(weights, raw.lines))
     used, left_out = _screened(raw, raw.attributes, keep, drops=missing != "level")
     if missing == "drop":
         raw, dropped = _without_blanks(raw, used)
@@ -120,6 +122,8 @@ def code_table(
     warnings += _table_warnings(raw, used, max_levels)
     side = {name: _side(column, raw) for name, column in raw.side.items()}
     table, pooled = _coded(raw, used, veiled=missing == "sum-out")
+    if weights and not weights.counts:
+        table = replace(table, weights=scaled(weights, raw.lines, store))
     warnings += _duplicate_warning(duplicates, raw.lines.count, table.schema)
     noted = tuple([*(weights.notes if weights else []), *warnings, *pooled])
     return Coded(table, tuple(left_out), noted, side, raw.lines.read, duplicates, weights)

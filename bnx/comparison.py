@@ -243,7 +243,7 @@ def _classifier(evaluation: Evaluation, s: int, coded: Coded) -> Classifier:
         coded.table.schema.target,
         structure,
         counts,
-        learned.training.class_counts,
+        learned.training.class_mass,
         choice.smoothings[s],
         choice.calibrations[s],
     )

@@ -12,11 +12,13 @@ from bnx.cells import Cells, stretches
 from bnx.errors import DataError
 from bnx.reading import Source, repeated
 from bnx.storing import Store
+from bnx.tables import Lines
 from bnx.text import count_of
 
-__all__ = ["RowWeights", "as_records", "read_weights", "records_of"]
+__all__ = ["RowWeights", "as_records", "read_weights", "records_of", "scaled", "with_weight"]
 
 _MOST = 1e15  # up to here and beyond, whole numbers are exact
+_EXACT_BITS = 50  # of a sum of weights, which is at most twice the rows
 _ROW_BYTES = 12  # of a row beside its codes: class, block, place
 
 
@@ -58,6 +60,12 @@ class RowWeights:
                 f"{count_of(len(self.values) - self.zeros, 'row')} stand for {count_of(int(self.total), 'record')}, as "
                 f"{self.column} counts; the tests take each of these as an independent record, and are descriptive "
                 "where they are not"
+            )
+        else:
+            notes.append(
+                f"rows carry the weights of {self.column}, worth {self.effective_rows:,.0f} rows of equal weight: tables, "
+                "smoothing, calibration and scores use them; structures, cut points, bits and tests are from rows "
+                "counted once, so the tests are descriptive"
             )
         return notes
 
@@ -107,6 +115,40 @@ def _checked(array: pa.Array, column: str, before: int) -> np.ndarray:
     blank = math.isnan(numbers[row]) and not wrong[row]
     what = "is blank" if blank else f"has {str(array[row].as_py())!r}"
     raise DataError(f"row {before + row + 1:,} {what} in the weight column {column!r}; a weight must be a number from 0 to {_MOST:g}")
+
+
+def with_weight(weights: RowWeights, lines: Lines) -> Lines:
+    """Leave out the rows of weight 0.
+
+    Raises:
+        DataError: no other row is left.
+    """
+    kept = lines.kept.copy() if len(lines.kept) else np.ones(lines.read, np.bool_)
+    for rows in lines.stretches():
+        kept[rows] &= weights.values.part(rows) > 0
+    if not kept.any():
+        raise DataError(f"no row is left: the weight in {weights.column} is 0 wherever the class is not blank")
+    return Lines.marked(kept)
+
+
+def scaled(weights: RowWeights, lines: Lines, store: Store) -> np.ndarray:
+    """Scale the weights of the rows used to the mean 1, (N,) float64, so that amounts of smoothing keep their meaning.
+
+    All are multiples of one power of 2, at least one of it and so many that every sum of some of them is exact: sums
+    depend neither on an order nor on threads, and those of parts can be subtracted. With a billion rows a weight is
+    rounded by less than a millionth.
+    """
+    rows = lines.count
+    largest = max(float(weights.values.part(run).max()) for run in lines.stretches())
+    parts = (lines.pick(run, weights.values.part(run)) / largest for run in lines.stretches())
+    factor = rows / math.fsum(math.fsum(part.tolist()) for part in parts) / largest
+    steps = 2.0 ** (_EXACT_BITS - rows.bit_length())
+    out, done = store.empty((rows,), np.float64), 0
+    for run in lines.stretches():
+        own = lines.pick(run, weights.values.part(run))
+        out[done : done + len(own)] = np.maximum(np.rint(own * factor * steps), 1.0) / steps
+        done += len(own)
+    return out
 
 
 def records_of(source: Source, weights: RowWeights, attributes: int, store: Store) -> Source:
