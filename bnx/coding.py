@@ -101,9 +101,8 @@ def code_table(
         SettingError: two settings contradict each other.
     """
     _check(source, target, numeric, categorical, ignore, keep, extra)
-    wishes: dict[str, bool | None] = dict.fromkeys(
-        name for name in source.columns if name not in {target, *ignore, *extra}
-    )
+    apart = {target, *ignore, *extra, *([weights.column] if weights else [])}
+    wishes: dict[str, bool | None] = dict.fromkeys(name for name in source.columns if name not in apart)
     wishes |= dict.fromkeys((name for name in categorical if name in wishes), False)
     wishes |= dict.fromkeys((name for name in numeric if name in wishes), True)
     raw = _gathered(source, target, wishes, extra, jobs, store)
@@ -125,7 +124,7 @@ def code_table(
     if weights and not weights.counts:
         table = replace(table, weights=scaled(weights, raw.lines, store))
     warnings += _duplicate_warning(duplicates, raw.lines.count, table.schema)
-    noted = tuple([*(weights.notes if weights else []), *warnings, *pooled])
+    noted = (*(weights.notes if weights else []), *warnings, *pooled)
     return Coded(table, tuple(left_out), noted, side, raw.lines.read, duplicates, weights)
 
 

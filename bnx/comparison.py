@@ -13,22 +13,22 @@ from bnx.classifier import Classifier
 from bnx.coding import Coded
 from bnx.dealing import deal
 from bnx.dependence import Pairs, measure, relevance_of
-from bnx.encoding import encode
 from bnx.engines import LocalEngine, start_local
 from bnx.engines.local import Progress
-from bnx.errors import DataError, SettingError
+from bnx.errors import SettingError
 from bnx.evaluation import Evaluation, evaluate
 from bnx.families import PairRequests
 from bnx.folds import sub_blocks
 from bnx.gains import edge_gains
 from bnx.gating import Bounds
+from bnx.held_out import score_held_out
 from bnx.heldout import MOST_ROWS
 from bnx.independence import Statistics
 from bnx.judging import Against, Recommendation, against, inner_picks, recommend
 from bnx.learners import Heldout, Learner, learner
 from bnx.learning import Learned, make_bounds
 from bnx.ledger import EdgeEvidence, edge_ledger
-from bnx.losses import Scores, scores
+from bnx.losses import Scores
 from bnx.matrix_memory import matrix_notes
 from bnx.observing import rare_classes, rating_notes, unobserved_notes
 from bnx.pair_judging import JudgedPairs, judge_pairs
@@ -40,9 +40,7 @@ from bnx.resampling import stability
 from bnx.sampling import rows_for_gains
 from bnx.storing import MEMORY, Store
 from bnx.structure import Structure
-from bnx.summing_out import summing_notes
 from bnx.tables import LeftOut, Lines
-from bnx.text import count_of
 from bnx.trainings import Training
 from bnx.weighing import as_records
 from bnx.wide_judging import MOST_JUDGED, judge_wide
@@ -128,7 +126,8 @@ def compare(
     pairs, judged = _tested(first.engine, learned, learners, bounds, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     progress("scoring", 0, 0)
-    held_out, not_scored = _held_out(classifiers, holdout, recipe) if holdout else ((), [])
+    weight = "" if coded.table.weights is None else recipe.weight
+    held_out, not_scored = score_held_out(classifiers, holdout, recipe, weight) if holdout else ((), [])
     recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
     progress("edge ledger", 0, 0)
     told, by_blanks = _told(first), judged.by_blanks(pairs.left, pairs.right)
@@ -247,37 +246,6 @@ def _classifier(evaluation: Evaluation, s: int, coded: Coded) -> Classifier:
         choice.smoothings[s],
         choice.calibrations[s],
     )
-
-
-def _held_out(
-    classifiers: Sequence[Classifier], source: Source, recipe: Recipe
-) -> tuple[tuple[Scores, ...], list[str]]:
-    """Score the final classifiers on a table that took no part in anything; say which rows could not be scored."""
-    target = classifiers[0].target
-    parts: list[list[np.ndarray]] = [[] for _ in classifiers]
-    truth, dropped, unknown, rough = [], 0, np.zeros(len(classifiers[0].domains), np.int64), 0
-    for codes, _ in encode(source, [*classifiers[0].domains, target]):
-        known = codes[-1] >= 0
-        truth.append(codes[-1][known])
-        dropped += int((~known).sum())
-        own = codes[:-1][:, known]
-        unknown += (own < 0).sum(axis=1)
-        found = [classifier.classified(own) for classifier in classifiers]
-        rough += int(np.any([approximate for _, approximate in found], axis=0).sum())
-        for part, (p, _) in zip(parts, found, strict=True):
-            part.append(p)
-    rows = np.concatenate(truth) if truth else np.zeros(0, np.int32)
-    if not len(rows):
-        raise DataError(
-            f"{source.name} (--holdout) has no row whose {recipe.target} is one of {', '.join(target.levels)}"
-        )
-    notes = []
-    if dropped:
-        why = f"{recipe.target} is blank there or was never seen"
-        notes.append(f"{count_of(dropped, 'row')} of {source.name} (--holdout) left out: {why}")
-    names = [domain.name for domain in classifiers[0].domains]
-    notes += [f"{source.name} (--holdout): {note}" for note in summing_notes(names, unknown, rough)]
-    return tuple(scores(np.concatenate(part), rows, len(target)) for part in parts), notes
 
 
 def _run_warnings(

@@ -134,8 +134,9 @@ class Gatherer:
             self._cells.clear()
         else:
             value = array[int(rows[0])].as_py()
+            row = self._row_of(len(self._cells) + int(rows[0])) + 1
             raise DataError(
-                f"row {self._row_of(len(self._cells) + int(rows[0])) + 1:,} has {str(value)!r} in the numeric column {self.name!r}; "
+                f"row {row:,} has {str(value)!r} in the numeric column {self.name!r}; "
                 "every cell of it must hold a finite number or be blank"
             )
 

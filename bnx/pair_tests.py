@@ -94,7 +94,7 @@ def run_pair_tests(
     """
     progress("reading", 0, 0)
     source.check([*asked.attributes, *asked.given, *asked.ordered])
-    coded = recipe.code(source, jobs, store)
+    coded = recipe.code(source, jobs, store, only_counts=True)
     progress("sorting rows", 0, 0)
     table = PairTable.of(coded, recipe, asked, jobs, progress, store)
     progress("judging pairs", 0, 0)

@@ -6,7 +6,7 @@ from typing import Any
 
 from bnx.coding import MISSING, Coded, code_table
 from bnx.discretising import parse_bins
-from bnx.errors import SettingError
+from bnx.errors import DataError, SettingError
 from bnx.independence import TESTS
 from bnx.learners import learner
 from bnx.multiplicity import METHODS as ADJUSTMENTS
@@ -130,10 +130,10 @@ class Recipe:
         )
         return replace(self, structures=fewer), [note]
 
-    def code(self, source: Source, jobs: int = 1, store: Store = MEMORY) -> Coded:
+    def code(self, source: Source, jobs: int = 1, store: Store = MEMORY, only_counts: bool = False) -> Coded:
         """Code a table as these settings say; ``keep`` = all keeps every column that could be left out.
 
-        What has a value per row is kept in ``store``.
+        What has a value per row is kept in ``store``. ``only_counts``: refuse weights that are no whole numbers.
 
         Raises:
             DataError, SettingError: the table or a setting cannot be used.
@@ -141,6 +141,11 @@ class Recipe:
         extra = [name for name in (self.group, self.fold_column) if name]
         weights = read_weights(source, self.weight, store) if self.weight else None
         if weights is not None:
+            if only_counts and not weights.counts:
+                raise DataError(
+                    f"the weight column {self.weight!r} of {source.name} holds numbers that are not whole, but only "
+                    "records can be counted here; give a column of counts, or bnx learn, which takes any weights"
+                )
             attributes = len(source.columns) - len({self.target, self.weight, *self.ignore, *extra})
             source = records_of(source, weights, attributes, store) if weights.counts else source
         keep: Sequence[str] = self.keep

@@ -1,4 +1,4 @@
-"""How good probabilities are where rows have weights: the sums, rankings and slopes of `losses`, rows by their weight."""
+"""How good probabilities are where rows have weights: sums, rankings and slopes, rows by their weight."""
 
 from collections.abc import Sequence
 

@@ -15,7 +15,7 @@ from bnx.storing import Store
 from bnx.tables import Lines
 from bnx.text import count_of
 
-__all__ = ["RowWeights", "as_records", "read_weights", "records_of", "scaled", "with_weight"]
+__all__ = ["RowWeights", "as_records", "checked_weights", "read_weights", "records_of", "scaled", "with_weight"]
 
 _MOST = 1e15  # up to here and beyond, whole numbers are exact
 _EXACT_BITS = 50  # of a sum of weights, which is at most twice the rows
@@ -90,7 +90,7 @@ def read_weights(source: Source, column: str, store: Store) -> RowWeights:
     values = Cells(store, np.float64, source.rows)
     whole, zeros = True, 0
     for batch in source.blocks([column]):
-        numbers = _checked(batch.column(0), column, len(values))
+        numbers = checked_weights(batch.column(0), column, len(values))
         for part, room in values.add(len(numbers)):
             room[:] = numbers[part]
         whole = whole and bool((numbers == np.floor(numbers)).all())
@@ -101,7 +101,7 @@ def read_weights(source: Source, column: str, store: Store) -> RowWeights:
     return RowWeights(column, whole, total, zeros, values)
 
 
-def _checked(array: pa.Array, column: str, before: int) -> np.ndarray:
+def checked_weights(array: pa.Array, column: str, before: int) -> np.ndarray:
     """Turn a block into weights; ``before``: rows that came before it.
 
     Raises:
@@ -114,7 +114,9 @@ def _checked(array: pa.Array, column: str, before: int) -> np.ndarray:
     row = int(faults[0])
     blank = math.isnan(numbers[row]) and not wrong[row]
     what = "is blank" if blank else f"has {str(array[row].as_py())!r}"
-    raise DataError(f"row {before + row + 1:,} {what} in the weight column {column!r}; a weight must be a number from 0 to {_MOST:g}")
+    raise DataError(
+        f"row {before + row + 1:,} {what} in the weight column {column!r}; a weight must be a number from 0 to {_MOST:g}"
+    )
 
 
 def with_weight(weights: RowWeights, lines: Lines) -> Lines:
@@ -173,11 +175,13 @@ def as_records(source: Source, like: RowWeights | None, attributes: int, store: 
     """Take a further table as the first one was: by the counts in its column of the same name, if those were counts.
 
     Raises:
-        DataError: there is no such column, or it holds something else.
+        DataError: there is no such column, or it holds something that cannot be used.
     """
-    if like is None or not like.counts:
+    if like is None:
         return source
     weights = read_weights(source, like.column, store)
+    if not like.counts:
+        return source
     if not weights.counts:
         raise DataError(
             f"the weight column {like.column!r} of {source.name} holds numbers that are not whole, but it counts records "

@@ -75,7 +75,12 @@ def test_counts_give_the_bytes_of_the_table_by_record(
     assert results(tmp_path / "a") == results(tmp_path / "b")
     weights = json.loads((tmp_path / "a" / "comparison.json").read_text())["weights"]
     records = int(table["persons"].sum())
-    expected = {"column": "persons", "kind": "counts", "rows": len(table), "left_out": int((table["persons"] == 0).sum())}
+    expected = {
+        "column": "persons",
+        "kind": "counts",
+        "rows": len(table),
+        "left_out": int((table["persons"] == 0).sum()),
+    }
     assert weights == {**expected, "total": records, "effective_rows": records}
 
 
@@ -104,9 +109,7 @@ def test_a_further_table_is_taken_by_its_counts_too(tmp_path: Path) -> None:
     table = titanic()
     counted, whole = written(table, tmp_path / "c.csv"), written(by_record(table), tmp_path / "w.csv")
     further = (*FAST, "--class", "saved")
-    first = call(
-        "learn", counted, "--weight", "persons", "--holdout", counted, "-o", f"{tmp_path}/a", *further
-    )
+    first = call("learn", counted, "--weight", "persons", "--holdout", counted, "-o", f"{tmp_path}/a", *further)
     second = call("learn", whole, "--holdout", whole, "-o", f"{tmp_path}/b", *further)
     assert (first.code, second.code) == (0, 0), first
     assert results(tmp_path / "a") == results(tmp_path / "b")
@@ -117,7 +120,9 @@ def test_a_further_table_is_taken_by_its_counts_too(tmp_path: Path) -> None:
 
 
 CELLS = st.lists(
-    st.tuples(st.sampled_from("xyz"), st.sampled_from(["", "low", "7", "8.50"]), st.sampled_from("ab"), st.integers(0, 4)),
+    st.tuples(
+        st.sampled_from("xyz"), st.sampled_from(["", "low", "7", "8.50"]), st.sampled_from("ab"), st.integers(0, 4)
+    ),
     min_size=1,
     max_size=40,
 )

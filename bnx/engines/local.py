@@ -30,8 +30,8 @@ _RUN = 32  # items that a thread takes at a time, at most
 class RowsWeighed:
     """The weights of rows that do not count alike, whose sums are exact in any order.
 
-    ``of_rows`` (N,) float64, in the order of the rows; ``by_class`` (blocks, C): their sums; ``margins``: per attribute,
-    sums (blocks, C, stored levels).
+    ``of_rows`` (N,) float64, in the order of the rows; ``by_class`` (blocks, C): their sums; ``margins``: per
+    attribute, sums (blocks, C, stored levels).
     """
 
     of_rows: np.ndarray

@@ -1,0 +1,62 @@
+"""Scores of the final classifiers on a table that took no part in anything (``--holdout``)."""
+
+from collections.abc import Sequence
+
+import numpy as np
+
+from bnx.classifier import Classifier
+from bnx.encoding import encode
+from bnx.errors import DataError
+from bnx.losses import Scores, scores
+from bnx.reading import Source
+from bnx.recipe import Recipe
+from bnx.summing_out import summing_notes
+from bnx.text import count_of
+from bnx.weighed_losses import weighed_scores
+from bnx.weighing import checked_weights
+
+__all__ = ["score_held_out"]
+
+
+def score_held_out(
+    classifiers: Sequence[Classifier], source: Source, recipe: Recipe, weight: str
+) -> tuple[tuple[Scores, ...], list[str]]:
+    """Score the final classifiers on a table that took no part in anything; say which rows could not be scored.
+
+    weight: the column of weights that are no counts, if there is one.
+    """
+    target = classifiers[0].target
+    parts: list[list[np.ndarray]] = [[] for _ in classifiers]
+    truth, dropped, unknown, rough = [], 0, np.zeros(len(classifiers[0].domains), np.int64), 0
+    masses, read = [], 0
+    for codes, batch in encode(source, [*classifiers[0].domains, target], [weight] if weight else []):
+        known = codes[-1] >= 0
+        mass = checked_weights(batch.column(weight), weight, read) if weight else np.ones(len(known))
+        masses.append(mass[known])
+        read += len(known)
+        truth.append(codes[-1][known])
+        dropped += int((~known).sum())
+        own = codes[:-1][:, known]
+        unknown += (own < 0).sum(axis=1)
+        found = [classifier.classified(own) for classifier in classifiers]
+        rough += int(np.any([approximate for _, approximate in found], axis=0).sum())
+        for part, (p, _) in zip(parts, found, strict=True):
+            part.append(p)
+    rows = np.concatenate(truth) if truth else np.zeros(0, np.int32)
+    if not len(rows):
+        raise DataError(
+            f"{source.name} (--holdout) has no row whose {recipe.target} is one of {', '.join(target.levels)}"
+        )
+    notes = []
+    if dropped:
+        why = f"{recipe.target} is blank there or was never seen"
+        notes.append(f"{count_of(dropped, 'row')} of {source.name} (--holdout) left out: {why}")
+    names = [domain.name for domain in classifiers[0].domains]
+    notes += [f"{source.name} (--holdout): {note}" for note in summing_notes(names, unknown, rough)]
+    mass = np.concatenate(masses)
+    if not mass.any():
+        raise DataError(f"the weight in {weight} is 0 in every row of {source.name} (--holdout) that could be scored")
+    every = [np.concatenate(part) for part in parts]
+    if not weight:
+        return tuple(scores(p, rows, len(target)) for p in every), notes
+    return tuple(weighed_scores(p, rows, mass / mass.mean()) for p in every), notes
