@@ -26,8 +26,8 @@ _ROW_BYTES = 12  # of a row beside its codes: class, block, place
 class RowWeights:
     """The weights of a source, row by row.
 
-    ``counts``: whether all are whole numbers, so that a row stands for so many records; ``total``: their sum; ``zeros``:
-    rows of weight 0; ``values``: (rows read,) float64.
+    ``counts``: whether all are whole numbers, so that a row stands for so many records; ``total``: their sum;
+    ``zeros``: rows of weight 0; ``values``: (rows read,) float64.
     """
 
     column: str
@@ -63,8 +63,8 @@ class RowWeights:
             )
         else:
             notes.append(
-                f"rows carry the weights of {self.column}, worth {self.effective_rows:,.0f} rows of equal weight: tables, "
-                "smoothing, calibration and scores use them; structures, cut points, bits and tests are from rows "
+                f"rows carry the weights of {self.column}, worth {self.effective_rows:,.0f} rows of equal weight: "
+                "tables, smoothing, calibration and scores use them; structures, cut points, bits and tests are from rows "
                 "counted once, so the tests are descriptive"
             )
         return notes
@@ -115,7 +115,8 @@ def checked_weights(array: pa.Array, column: str, before: int) -> np.ndarray:
     blank = math.isnan(numbers[row]) and not wrong[row]
     what = "is blank" if blank else f"has {str(array[row].as_py())!r}"
     raise DataError(
-        f"row {before + row + 1:,} {what} in the weight column {column!r}; a weight must be a number from 0 to {_MOST:g}"
+        f"row {before + row + 1:,} {what} in the weight column {column!r}; "
+        f"a weight must be a number from 0 to {_MOST:g}"
     )
 
 
@@ -184,7 +185,7 @@ def as_records(source: Source, like: RowWeights | None, attributes: int, store: 
         return source
     if not weights.counts:
         raise DataError(
-            f"the weight column {like.column!r} of {source.name} holds numbers that are not whole, but it counts records "
-            "in the first table; it must count them here too"
+            f"the weight column {like.column!r} of {source.name} holds numbers that are not whole, but it counts "
+            "records in the first table; it must count them here too"
         )
     return records_of(source, weights, attributes, store)
