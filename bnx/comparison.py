@@ -21,7 +21,7 @@ from bnx.families import PairRequests
 from bnx.folds import sub_blocks
 from bnx.gains import edge_gains
 from bnx.gating import Bounds
-from bnx.held_out import score_held_out
+from bnx.held_out import checked_holdout, score_held_out
 from bnx.heldout import MOST_ROWS
 from bnx.independence import Statistics
 from bnx.judging import Against, Recommendation, against, inner_picks, recommend
@@ -42,7 +42,6 @@ from bnx.storing import MEMORY, Store
 from bnx.structure import Structure
 from bnx.tables import LeftOut, Lines
 from bnx.trainings import Training
-from bnx.weighing import as_records
 from bnx.wide_judging import MOST_JUDGED, judge_wide
 from bnx.wide_learning import takes_wide_road
 
@@ -108,9 +107,7 @@ def compare(
     progress("reading", 0, 0)
     coded = recipe.code(source, jobs, store)
     recipe, notes_on_structures = recipe.for_table(len(coded.table.target), len(coded.table.schema.attributes))
-    if holdout:
-        holdout.check([*coded.table.schema.names, recipe.target])
-        holdout = as_records(holdout, coded.weighing, len(coded.table.schema.attributes), store)
+    holdout = checked_holdout(holdout, coded, recipe, store) if holdout else None
     bounds = make_bounds(recipe, coded.table.schema.names)
     learners = [learner(name) for name in recipe.structures]
     early = _forewarned(matrix_notes(coded.table.schema, learners, bounds, recipe), warn)
@@ -126,8 +123,7 @@ def compare(
     pairs, judged = _tested(first.engine, learned, learners, bounds, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     progress("scoring", 0, 0)
-    weight = "" if coded.table.weights is None else recipe.weight
-    held_out, not_scored = score_held_out(classifiers, holdout, recipe, weight) if holdout else ((), [])
+    held_out, not_scored = score_held_out(classifiers, holdout, recipe, coded) if holdout else ((), [])
     recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
     progress("edge ledger", 0, 0)
     told, by_blanks = _told(first), judged.by_blanks(pairs.left, pairs.right)

@@ -5,26 +5,39 @@ from collections.abc import Sequence
 import numpy as np
 
 from bnx.classifier import Classifier
+from bnx.coding import Coded
 from bnx.encoding import encode
 from bnx.errors import DataError
 from bnx.losses import Scores, scores
 from bnx.reading import Source
 from bnx.recipe import Recipe
+from bnx.storing import Store
 from bnx.summing_out import summing_notes
 from bnx.text import count_of
 from bnx.weighed_losses import weighed_scores
-from bnx.weighing import checked_weights
+from bnx.weighing import as_records, checked_weights
 
-__all__ = ["score_held_out"]
+__all__ = ["checked_holdout", "score_held_out"]
+
+
+def checked_holdout(source: Source, coded: Coded, recipe: Recipe, store: Store) -> Source:
+    """Look for the columns that a table must have to be scored, and take its rows by their counts.
+
+    Raises:
+        DataError: a column is missing, or one of weights cannot be used.
+    """
+    source.check([*coded.table.schema.names, recipe.target])
+    return as_records(source, coded.weighing, len(coded.table.schema.attributes), store)
 
 
 def score_held_out(
-    classifiers: Sequence[Classifier], source: Source, recipe: Recipe, weight: str
+    classifiers: Sequence[Classifier], source: Source, recipe: Recipe, coded: Coded
 ) -> tuple[tuple[Scores, ...], list[str]]:
     """Score the final classifiers on a table that took no part in anything; say which rows could not be scored.
 
-    weight: the column of weights that are no counts, if there is one.
+    coded: the table that they were learnt from.
     """
+    weight = "" if coded.table.weights is None else recipe.weight
     target = classifiers[0].target
     parts: list[list[np.ndarray]] = [[] for _ in classifiers]
     truth, dropped, unknown, rough = [], 0, np.zeros(len(classifiers[0].domains), np.int64), 0

@@ -64,8 +64,8 @@ class RowWeights:
         else:
             notes.append(
                 f"rows carry the weights of {self.column}, worth {self.effective_rows:,.0f} rows of equal weight: "
-                "tables, smoothing, calibration and scores use them; structures, cut points, bits and tests are from rows "
-                "counted once, so the tests are descriptive"
+                "tables, smoothing, calibration and scores use them; structures, cut points, bits and tests are from "
+                "rows counted once, so the tests are descriptive"
             )
         return notes
 

@@ -15,8 +15,8 @@ FLOORS = (
     "kernels calibrating counts tiles discretising domains dot_text embedding files storing cells "
     "folds layers losses branching multiplicity paired picture structure svg effects ordered loglinear "
     "fibre homogeneity masked unobserved summing_out weighed_losses",
-    "tables views blocks columns columnar delimited malformed repeating reading weighing levelling screening duplicates "
-    "level_order",
+    "tables views blocks columns columnar delimited malformed repeating reading weighing levelling screening "
+    "duplicates level_order",
     "coarsening gathering passes coding encoding pair_counting engines",
     "parameters trainings dependence families profiling",
     "tails wide_tables independence classifier rebasing intervals refining sampling scoring tabulating verdicts "
