@@ -151,7 +151,7 @@ def choose(
     members = [range(s, s + 1) for s in range(len(trials[0].learned[held].structures))] if members is None else members
     structures = len(members)
     if not nested:
-        bare = uncalibrated(trials[0].learned[held].training.class_counts)
+        bare = uncalibrated(trials[0].learned[held].training.class_mass)
         return Choice(trials[0], (options[0],) * structures, (bare,) * structures, np.zeros((structures, 0)), 0, None)
     inner = inner_sets(held, folds)
     trial, chosen = trials[0], [options[0]] * structures
@@ -168,7 +168,7 @@ def choose(
         chosen = [options[v] for _, v in least]
         picked = [own[m] for own, (m, _) in zip(members, least, strict=True)]
         trial = trials[best].narrowed([held, *(one for one, _ in inner)], picked)
-    plain = None if calibrate else uncalibrated(trial.learned[held].training.class_counts)
+    plain = None if calibrate else uncalibrated(trial.learned[held].training.class_mass)
     return _calibrated(held, trial, tuple(chosen), inner, sample, plain, mix)
 
 
@@ -201,7 +201,7 @@ def _calibrated(
         for k, (held, _) in enumerate(inner):
             part = slice(rows.starts[k], rows.starts[k + 1])
             training = trial.learned[held].training
-            used = uncalibrated(training.class_counts) if plain else fitted
+            used = uncalibrated(training.class_mass) if plain else fitted
             losses[s, k] = mean_loss(own[part], training.log_prior, used, rows.truth[part], rows.weights[part])
             parts.append(probabilities(used, training.log_prior, own[part]) if mix else own[:0])
         predicted.append(np.concatenate(parts))

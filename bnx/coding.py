@@ -20,6 +20,7 @@ from bnx.screening import column_warnings, few_rows, reason_to_leave_out
 from bnx.storing import MEMORY, Store
 from bnx.tables import CodedTable, LeftOut, Lines
 from bnx.text import count_of, quoted
+from bnx.weighing import RowWeights, scaled, with_weight
 
 __all__ = ["MISSING", "Coded", "SideColumn", "code_table"]
 
@@ -44,7 +45,8 @@ class Coded:
     """A coded table with all that was noticed on the way.
 
     ``warnings`` are sentences; ``extra`` holds the columns asked for beside the attributes, by name; ``rows_read``
-    counts the rows of the source, ``duplicates`` those that repeat an earlier one in all attributes used and the class.
+    counts the rows of the source, ``duplicates`` those that repeat an earlier one in all attributes used and the class;
+    ``weighing``: the column of weights, if there is one, whose counts the rows follow already.
     """
 
     table: CodedTable
@@ -53,6 +55,7 @@ class Coded:
     extra: Mapping[str, SideColumn]
     rows_read: int
     duplicates: int
+    weighing: RowWeights | None = None
 
 
 @dataclass(frozen=True)
@@ -80,8 +83,11 @@ def code_table(
     extra: Sequence[str] = (),
     jobs: int = 1,
     store: Store = MEMORY,
+    weights: RowWeights | None = None,
 ) -> Coded:
     """Code a whole source on ``jobs`` threads, keeping what has a value per row in ``store``.
+
+    weights: of the rows, whose counts the source follows already.
 
     Rows with a blank class are dropped. A blank cell of an attribute becomes the level ``(blank)``; with
     ``missing="drop"`` its row is dropped, with ``"sum-out"`` the cell is one that was not observed. A column is numeric
@@ -95,13 +101,14 @@ def code_table(
         SettingError: two settings contradict each other.
     """
     _check(source, target, numeric, categorical, ignore, keep, extra)
-    wishes: dict[str, bool | None] = dict.fromkeys(
-        name for name in source.columns if name not in {target, *ignore, *extra}
-    )
+    apart = {target, *ignore, *extra, *([weights.column] if weights else [])}
+    wishes: dict[str, bool | None] = dict.fromkeys(name for name in source.columns if name not in apart)
     wishes |= dict.fromkeys((name for name in categorical if name in wishes), False)
     wishes |= dict.fromkeys((name for name in numeric if name in wishes), True)
     raw = _gathered(source, target, wishes, extra, jobs, store)
     raw, warnings = _with_class(raw)
+    if weights and not weights.counts:
+        raw = replace(raw, lines=with_weight(weights, raw.lines))
     used, left_out = _screened(raw, raw.attributes, keep, drops=missing != "level")
     if missing == "drop":
         raw, dropped = _without_blanks(raw, used)
@@ -114,8 +121,11 @@ def code_table(
     warnings += _table_warnings(raw, used, max_levels)
     side = {name: _side(column, raw) for name, column in raw.side.items()}
     table, pooled = _coded(raw, used, veiled=missing == "sum-out")
+    if weights and not weights.counts:
+        table = replace(table, weights=scaled(weights, raw.lines, store))
     warnings += _duplicate_warning(duplicates, raw.lines.count, table.schema)
-    return Coded(table, tuple(left_out), tuple(warnings + pooled), side, raw.lines.read, duplicates)
+    noted = (*(weights.notes if weights else []), *warnings, *pooled)
+    return Coded(table, tuple(left_out), noted, side, raw.lines.read, duplicates, weights)
 
 
 def _check(

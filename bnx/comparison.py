@@ -4,6 +4,7 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from hashlib import sha256
 from pathlib import PurePath
+from typing import Any
 
 import numpy as np
 
@@ -19,9 +20,9 @@ from bnx.errors import SettingError
 from bnx.evaluation import Evaluation, evaluate
 from bnx.families import PairRequests
 from bnx.folds import sub_blocks
-from bnx.fresh_rows import score_on_fresh_rows
 from bnx.gains import edge_gains
 from bnx.gating import Bounds
+from bnx.held_out import checked_holdout, score_held_out
 from bnx.independence import Statistics
 from bnx.judging import Against, Recommendation, against, inner_picks, mixed_picks, recommend
 from bnx.learners import Learner, learner
@@ -53,7 +54,7 @@ class Comparison:
 
     ``relevance`` (n,): bits each attribute shares with the class. ``pairs`` and ``judged``: all pairs, on all rows.
     ``mix``: of the structures, None where nothing is mixed; ``held_out``: scores on a table that took no part, of the
-    structures and last of the mix, empty without one.
+    structures and last of the mix, empty without one. ``weights``: of rows, in plain values.
     """
 
     recipe: Recipe
@@ -75,6 +76,7 @@ class Comparison:
     warnings: tuple[str, ...]
     evaluations: tuple[Evaluation, ...]
     lines: Lines
+    weights: dict[str, Any] | None
 
     @property
     def structures(self) -> tuple[Structure, ...]:
@@ -112,8 +114,7 @@ def compare(
     progress("reading", 0, 0)
     coded = recipe.code(source, jobs, store)
     recipe, notes_on_structures = recipe.for_table(len(coded.table.target), len(coded.table.schema.attributes))
-    if holdout:
-        holdout.check([*coded.table.schema.names, recipe.target])
+    holdout = checked_holdout(holdout, coded, recipe, store) if holdout else None
     bounds = make_bounds(recipe, coded.table.schema.names)
     learners = [learner(name) for name in recipe.structures]
     early = _forewarned(matrix_notes(coded.table.schema, learners, bounds, recipe), warn)
@@ -128,7 +129,7 @@ def compare(
     pairs, judged = _tested(first.engine, learned, learners, bounds, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     progress("scoring", 0, 0)
-    held_out, not_scored = score_on_fresh_rows(classifiers, mix, holdout, recipe.target)
+    held_out, not_scored = score_held_out(classifiers, mix, holdout, recipe, coded) if holdout else ((), [])
     recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
     progress("edge ledger", 0, 0)
     told, by_blanks = _told(first), judged.by_blanks(pairs.left, pairs.right)
@@ -155,6 +156,7 @@ def compare(
         warnings=(*early, *notes, *notes_on_structures, *judged.notes, *not_scored, *coded.warnings),
         evaluations=tuple(evaluations),
         lines=coded.table.lines,
+        weights=None if coded.weighing is None else coded.weighing.to_dict(),
     )
 
 
@@ -243,7 +245,7 @@ def _classifier(evaluation: Evaluation, s: int, coded: Coded) -> Classifier:
         coded.table.schema.target,
         own,
         tuple(counted.table(s, child) for child in kept),
-        learned.training.class_counts,
+        learned.training.class_mass,
         choice.smoothings[s],
         choice.calibrations[s],
         dropped=tuple(domains[child].name for child in structure.dropped),

@@ -77,6 +77,7 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
                 for domain, bits in zip(comparison.domains, comparison.relevance, strict=True)
             ],
             "settings": comparison.recipe.to_dict(),
+            "weights": comparison.weights,
             "structures": [structure_entry(comparison, s) for s in range(len(names))],
             "best": names[advice.best],
             "recommended": {

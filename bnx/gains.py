@@ -135,6 +135,6 @@ def _without(counted: Counted, which: np.ndarray, places: np.ndarray) -> Counted
         starts=starts,
         silent=None,
     )
-    counts = np.zeros((len(counted.counts), int(starts[-1])), np.int32)
+    counts = np.zeros((len(counted.counts), int(starts[-1])), counted.counts.dtype)
     drop_parent(counted.counts, one.starts, one.sizes, one.depths, which, places, starts, counts)
     return Counted(less, counts)

@@ -1,5 +1,6 @@
 """A column gathered block by block: as texts with a code each, or as numbers once texts would be too many."""
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -30,12 +31,21 @@ class Gatherer:
 
     A column counts as numeric if ``as_numbers`` says so or, when that is None, if every value is a plain number without
     zero padding and more than 20 are distinct. ``spoilt`` turns true when a column of numbers meets a text after its
-    own texts were given up: it must be gathered again with ``as_numbers`` false.
+    own texts were given up: it must be gathered again with ``as_numbers`` false. ``row_of`` finds the row of the source
+    that a refusal names.
     """
 
-    def __init__(self, name: str, as_numbers: bool | None, store: Store, expected: int) -> None:
+    def __init__(
+        self,
+        name: str,
+        as_numbers: bool | None,
+        store: Store,
+        expected: int,
+        row_of: Callable[[int], int] = lambda row: row,
+    ) -> None:
         self.name = name
         self.spoilt = False
+        self._row_of = row_of
         self._wish = as_numbers
         self._numbers = bool(as_numbers)
         self._index: dict[str, int] = {}
@@ -124,8 +134,9 @@ class Gatherer:
             self._cells.clear()
         else:
             value = array[int(rows[0])].as_py()
+            row = self._row_of(len(self._cells) + int(rows[0])) + 1
             raise DataError(
-                f"row {len(self._cells) + rows[0] + 1:,} has {str(value)!r} in the numeric column {self.name!r}; "
+                f"row {row:,} has {str(value)!r} in the numeric column {self.name!r}; "
                 "every cell of it must hold a finite number or be blank"
             )
 

@@ -9,7 +9,7 @@ from bnx.errors import DataError
 from bnx.kernels import add_to_histograms, pack_scores, rank_sums, sort_whole, tally
 from bnx.kernels.ranking import HISTOGRAM_BINS, HISTOGRAM_END, HISTOGRAM_WIDTH
 
-__all__ = ["Histograms", "Ranking", "Scores", "Tally", "log_losses", "ranking", "scores", "scores_of"]
+__all__ = ["Histograms", "Ranking", "Scores", "Tally", "bins_for", "log_losses", "ranking", "scores", "scores_of"]
 
 _BINS = 15
 _ROWS_PER_BIN = 20
@@ -22,7 +22,8 @@ class Scores:
     ``log_loss`` is in bits, mean over rows; it is infinite where a row's own class had probability exactly 0.
     ``brier`` is summed over classes, mean over rows. ``recall`` holds None for a class without rows, and
     ``balanced_accuracy`` is the mean over the others. ``auc`` (one class against the rest, mean over the classes that
-    have both) is None where every row has one class. ``confusion`` has a row per true class. ``auc_within`` and
+    have both) is None where every row has one class. ``confusion`` has a row per true class, of whole
+    numbers unless rows have weights. ``auc_within`` and
     ``calibration_within``: how far areas and calibration errors may lie from those of the rows themselves.
     """
 
@@ -32,7 +33,7 @@ class Scores:
     balanced_accuracy: float
     auc: float | None
     recall: tuple[float | None, ...]
-    confusion: tuple[tuple[int, ...], ...]
+    confusion: tuple[tuple[float, ...], ...]
     calibration_error: float
     classwise_calibration_error: float
     auc_within: float = 0.0
@@ -62,7 +63,8 @@ class Tally:
     """Sums over rows that can be merged.
 
     ``confusion`` (C, C) int64, a row per true class; ``sums`` (4,): rows, log losses in bits, their squared distances
-    from their mean, squared distances of the probabilities from the truth.
+    from their mean, squared distances of the probabilities from the truth. Of rows with weights, ``confusion`` is
+    float64, rows count by their weight, and a last sum is that of the squared weights.
     """
 
     confusion: np.ndarray
@@ -81,6 +83,14 @@ class Tally:
     def rows(self) -> int:
         """Rows added."""
         return int(self.sums[0])
+
+    @property
+    def effective_rows(self) -> float:
+        """Rows of equal weight that would be worth as much.
+
+        Source: Kish 1965 (effective sample size; from memory).
+        """
+        return float(self.sums[0]) if len(self.sums) == 4 else float(self.sums[0] ** 2 / self.sums[4])
 
     @property
     def errors(self) -> int:
@@ -163,7 +173,7 @@ def _binned_ranking(counts: np.ndarray, sums: np.ndarray) -> Ranking:
     misses, hits, scores_ = counts[used, 0], counts[used, 1], sums[used]
     ends = np.cumsum(misses + hits)
     starts, rows = ends - misses - hits, int(ends[-1])
-    bins = _bins_for(rows)
+    bins = bins_for(rows)
     place = (starts + ends) * bins // (2 * rows)
     apart = np.bincount(place, scores_ - hits, bins)
     moving = starts * bins // rows != (2 * ends - 1) * bins // (2 * rows)
@@ -180,7 +190,8 @@ def _binned_ranking(counts: np.ndarray, sums: np.ndarray) -> Ranking:
     return Ranking(area, float(np.abs(apart).sum() / rows), within, moved)
 
 
-def _bins_for(rows: int) -> int:
+def bins_for(rows: int) -> int:
+    """Choose how many bins of equal count so many rows are worth."""
     return min(_BINS, max(1, rows // _ROWS_PER_BIN))
 
 
@@ -217,18 +228,19 @@ def scores_of(whole: Tally, rankings: Sequence[Ranking]) -> Scores:
     """Make the scores of some rows from their sums and their rankings by every class and by the largest probability."""
     classes = len(whole.confusion)
     totals = whole.confusion.sum(axis=1)
-    recall = [int(whole.confusion[k, k]) / int(totals[k]) if totals[k] else None for k in range(classes)]
+    plain = float if whole.confusion.dtype.kind == "f" else int
+    recall = [float(whole.confusion[k, k]) / float(totals[k]) if totals[k] else None for k in range(classes)]
     known = [value for value in recall if value is not None]
     by_class, top = rankings[:-1], rankings[-1]
     auc, auc_within = _macro_auc(by_class)
     return Scores(
         log_loss=float(whole.sums[1] / whole.sums[0]),
         brier=float(whole.sums[3] / whole.sums[0]),
-        accuracy=int(np.trace(whole.confusion)) / whole.rows,
+        accuracy=float(np.trace(whole.confusion)) / float(whole.sums[0]),
         balanced_accuracy=sum(known) / len(known),
         auc=auc,
         recall=tuple(recall),
-        confusion=tuple(tuple(int(count) for count in row) for row in whole.confusion),
+        confusion=tuple(tuple(plain(count) for count in row) for row in whole.confusion),
         calibration_error=top.error,
         classwise_calibration_error=sum(one.error for one in by_class) / classes,
         auc_within=auc_within,
@@ -244,7 +256,7 @@ def ranking(p: np.ndarray, parts: Sequence[slice], truth: np.ndarray, column: in
         size = part.stop - part.start
         pack_scores(p, part.start, part.stop, truth, column, packed[at : at + size])
         at += size
-    rows, hits, bins = len(packed), int((packed & 1).sum()), _bins_for(len(packed))
+    rows, hits, bins = len(packed), int((packed & 1).sum()), bins_for(len(packed))
     score_sums, hit_sums = np.zeros(bins), np.zeros(bins)
     doubled = int(rank_sums(sort_whole(packed), score_sums, hit_sums))
     pairs = hits * (rows - hits)

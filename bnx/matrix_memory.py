@@ -1,8 +1,6 @@
 """How much memory the pairs of a wide table take where they are held in a matrix, said before the long part begins."""
 
-import os
 from collections.abc import Sequence
-from pathlib import Path
 
 from bnx.coarsening import needs_coarsening
 from bnx.domains import Schema
@@ -10,6 +8,7 @@ from bnx.errors import DataError
 from bnx.gating import Bounds
 from bnx.learners import Learner
 from bnx.recipe import Recipe
+from bnx.storing import available_memory
 from bnx.wide_learning import MOST_IN_MATRIX, TESTS, TREES
 
 __all__ = ["matrix_notes"]
@@ -28,7 +27,7 @@ def matrix_notes(schema: Schema, learners: Sequence[Learner], bounds: Bounds, re
     reasons = _reasons(schema, learners, bounds, recipe)
     if pairs <= MOST_IN_MATRIX or not reasons:
         return []
-    needed, available = pairs * _BYTES, _available()
+    needed, available = pairs * _BYTES, available_memory()
     why = (
         f"{' and '.join(reasons)}; attributes of two levels that are not cut, with --structures naive,tan,tan-tested, "
         "--test auto and without --require, take a faster road that holds no matrix"
@@ -50,16 +49,3 @@ def _reasons(schema: Schema, learners: Sequence[Learner], bounds: Bounds, recipe
     reasons += [f"--structures {','.join(other)}"] if other else []
     reasons += [f"--test {recipe.test}"] if recipe.test not in TESTS else []
     return reasons + (["--require"] if bounds.required else [])
-
-
-def _available() -> int | None:
-    """Look up the bytes of memory that a program can take now, None where the system does not tell."""
-    try:
-        lines = Path("/proc/meminfo").read_text(encoding="utf-8").splitlines()
-        return next(1024 * int(line.split()[1]) for line in lines if line.startswith("MemAvailable:"))
-    except (OSError, StopIteration):
-        pass
-    try:
-        return os.sysconf("SC_PHYS_PAGES") * os.sysconf("SC_PAGE_SIZE")
-    except (AttributeError, ValueError, OSError):
-        return None

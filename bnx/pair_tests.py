@@ -27,7 +27,7 @@ __all__ = ["PairTests", "run_pair_tests"]
 
 _SETTINGS = (
     *("test", "adjust", "alpha", "negligible", "seed", "bins", "numeric", "categorical", "ignore", "keep", "missing"),
-    "max_levels",
+    *("max_levels", "weight"),
 )
 
 
@@ -94,7 +94,7 @@ def run_pair_tests(
     """
     progress("reading", 0, 0)
     source.check([*asked.attributes, *asked.given, *asked.ordered])
-    coded = recipe.code(source, jobs, store)
+    coded = recipe.code(source, jobs, store, only_counts=True)
     progress("sorting rows", 0, 0)
     table = PairTable.of(coded, recipe, asked, jobs, progress, store)
     progress("judging pairs", 0, 0)

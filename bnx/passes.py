@@ -27,10 +27,10 @@ def gather(source: Source, wishes: Mapping[str, bool | None], jobs: int, store: 
     Raises:
         DataError: a cell or the file cannot be used; of several faults the one that comes first in the file.
     """
-    gatherers = {name: Gatherer(name, wish, store, source.rows) for name, wish in wishes.items()}
+    gatherers = {name: Gatherer(name, wish, store, source.rows, source.row_of) for name, wish in wishes.items()}
     if not gatherers:
         return {}
-    if isinstance(source.form, Delimited):
+    if isinstance(source.file_form, Delimited):
         _gather_blocks(source, list(gatherers.values()), jobs)
     else:
         _gather_columns(source, list(gatherers.values()), jobs)

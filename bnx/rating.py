@@ -11,6 +11,7 @@ from bnx.engines import LocalEngine
 from bnx.evaluation import Evaluation, predict
 from bnx.kernels import slope_sums
 from bnx.losses import Histograms, Ranking, Scores, Tally, ranking, scores_of
+from bnx.weighed_losses import weighed_ranking, weighed_slope, weighed_tally
 
 __all__ = ["EXACT_ROWS", "SLOPE_ROWS", "Cell", "FoldScore", "StructureScore", "cells_of", "score"]
 
@@ -61,12 +62,16 @@ class Cell:
 
 @dataclass(frozen=True)
 class _Run:
-    """All that is scored: ``truth`` (rows,) of all repeats; ``exact``: whether rows are kept and ranked one by one."""
+    """All that is scored: ``truth`` (rows,) of all repeats; ``exact``: whether rows are kept and ranked one by one.
+
+    ``weights`` (rows,): of the rows, None where all count alike.
+    """
 
     evaluations: Sequence[Evaluation]
     cells: Sequence[Cell]
     truth: np.ndarray
     exact: bool
+    weights: np.ndarray | None
 
     @property
     def engine(self) -> LocalEngine:
@@ -92,6 +97,7 @@ class _Part:
     p: np.ndarray
     truth: np.ndarray
     runs: tuple[slice, ...]
+    weights: np.ndarray | None = None
 
 
 def cells_of(evaluations: Sequence[Evaluation]) -> list[Cell]:
@@ -121,7 +127,7 @@ def score(
     rows = sum(one.engine.rows for one in evaluations)
     truth = [one.engine.target for one in evaluations]
     cells = cells_of(evaluations)
-    run = _Run(evaluations, cells, truth[0] if len(truth) == 1 else np.concatenate(truth), rows <= EXACT_ROWS)
+    run = _Run(evaluations, cells, truth[0] if len(truth) == 1 else np.concatenate(truth), *_weights(evaluations, rows))
     alike = _alike(run)
     rooms = [_Changing.empty(run, [alike[pick] for pick in picks]) for picks in choices]
     p = np.empty((rows if run.exact else 0, run.classes))
@@ -174,6 +180,12 @@ class _Changing:
         return scores_of(whole, _rankings(run, self.p, self.histograms))
 
 
+def _weights(evaluations: Sequence[Evaluation], rows: int) -> tuple[bool, np.ndarray | None]:
+    """Tell whether rows are ranked one by one, as they always are where they have weights; and the weights."""
+    weighed = [one.engine.weighed.of_rows for one in evaluations if one.engine.weighed]
+    return (True, np.concatenate(weighed)) if weighed else (rows <= EXACT_ROWS, None)
+
+
 def _alike(run: _Run) -> list[int]:
     """Find for every structure the first that has the same parents, smoothing and calibration in every fold."""
     choices = [(run.evaluations[cell.repeat].choices[(cell.fold,)], cell.fold) for cell in run.cells]
@@ -196,10 +208,20 @@ def _part(run: _Run, s: int, p: np.ndarray, k: int) -> _Part:
     evaluation, whole = run.evaluations[cell.repeat], Tally.empty(run.classes)
     own = evaluation.fold_rows[cell.fold]
     predict(evaluation, cell.fold, s, own, p[cell.shift : cell.shift + evaluation.engine.rows])
-    for rows in cell.runs:
-        whole.add(p, rows, run.truth)
-    rankings = [ranking(p, cell.runs, run.truth, column) for column in range(run.classes + 1)]
-    return _Part(whole, rankings, [], p, run.truth, cell.runs)
+    if run.weights is not None:
+        whole = weighed_tally(p, cell.runs, run.truth, run.weights)
+    else:
+        for rows in cell.runs:
+            whole.add(p, rows, run.truth)
+    rankings = [_ranking(run, p, cell.runs, column) for column in range(run.classes + 1)]
+    return _Part(whole, rankings, [], p, run.truth, cell.runs, run.weights)
+
+
+def _ranking(run: _Run, p: np.ndarray, parts: Sequence[slice], column: int) -> Ranking:
+    """Rank some rows by the probability of a class or by the largest."""
+    if run.weights is None:
+        return ranking(p, parts, run.truth, column)
+    return weighed_ranking(p, parts, run.truth, run.weights, column)
 
 
 def _streamed(run: _Run, s: int, cell: Cell) -> _Part:
@@ -236,7 +258,7 @@ def _joined(run: _Run, parts: Sequence[_Part], p: np.ndarray, histograms: list[H
         for cell, part, slope in zip(run.cells, parts, slopes, strict=True)
     )
     with np.errstate(invalid="ignore"):
-        error = whole.loss_deviation / np.sqrt(whole.rows / len(run.evaluations))
+        error = whole.loss_deviation / np.sqrt(whole.effective_rows / len(run.evaluations))
     known = [slope for slope in slopes if slope is not None]
     return StructureScore(
         scores_of(whole, _rankings(run, p, histograms)), float(error), _pooled_slope(run, parts, known), by_fold
@@ -253,10 +275,12 @@ def _rankings(run: _Run, p: np.ndarray, histograms: Sequence[Histograms]) -> lis
     if histograms:
         return histograms[0].rankings()
     every = [slice(0, len(p))]
-    return run.engine.map(lambda column: ranking(p, every, run.truth, column), range(run.classes + 1))
+    return run.engine.map(lambda column: _ranking(run, p, every, column), range(run.classes + 1))
 
 
 def _derivatives(part: _Part, t: float) -> np.ndarray:
+    if part.weights is not None:
+        return weighed_slope(part.p, part.runs, part.truth, part.weights, t)
     sums = np.zeros(2)
     for rows in part.runs:
         slope_sums(part.p, rows.start, rows.stop, part.truth, t, sums)

@@ -17,9 +17,10 @@ from bnx.columnar import ArrowFile, ParquetFiles, open_arrow, open_parquet
 from bnx.delimited import Delimited, OddQuotesError, check_names, open_bytes, open_delimited
 from bnx.errors import DataError
 from bnx.malformed import not_text, ragged
+from bnx.repeating import Repeated
 from bnx.text import nearest
 
-__all__ = ["Source", "open_source"]
+__all__ = ["Source", "open_source", "repeated"]
 
 TEXT_ENDINGS = {".csv", ".tsv", ".tab", ".txt", ".dat", ".data", ""}
 PARQUET_ENDINGS = {".parquet", ".pq"}
@@ -34,7 +35,12 @@ class Source:
     name: str
     columns: tuple[str, ...]
     files: tuple[Path, ...]
-    form: Delimited | ParquetFiles | ArrowFile
+    form: Delimited | ParquetFiles | ArrowFile | Repeated
+
+    @property
+    def file_form(self) -> Delimited | ParquetFiles | ArrowFile:
+        """Give the form that the files have, however often their rows are taken."""
+        return self.form.form if isinstance(self.form, Repeated) else self.form
 
     @property
     def rows(self) -> int:
@@ -51,9 +57,13 @@ class Source:
         try:
             yield from self.form.blocks(columns)
         except OddQuotesError:
-            _refuse_open_quote(self.name, self.form)
+            _refuse_open_quote(self.name, self.file_form)
         except (pa.ArrowException, OSError, UnicodeDecodeError) as error:
-            raise _explained(error, self.name, self.form) from error
+            raise _explained(error, self.name, self.file_form) from error
+
+    def row_of(self, record: int) -> int:
+        """Find the row of the files, from 0 on, behind a record from 0 on."""
+        return self.form.row_of(record) if isinstance(self.form, Repeated) else record
 
     def check(self, columns: Sequence[str]) -> None:
         """Refuse column names that the table does not have.
@@ -93,6 +103,12 @@ def open_source(path: str, delimiter: str | None = None) -> Source:
     if place.is_dir():
         return _opened(_parquet_files(place), path, delimiter, "parquet")
     return _opened((place,), path, delimiter, _form(place, path))
+
+
+def repeated(source: Source, column: str, records: int) -> Source:
+    """Take every row as often as a column counts, ``records`` in all; the column is no column any more."""
+    form = Repeated(source.file_form, column, records)
+    return Source(source.name, form.names, source.files, form)
 
 
 def _near(place: Path) -> str:

@@ -6,7 +6,7 @@ from typing import Any
 
 from bnx.coding import MISSING, Coded, code_table
 from bnx.discretising import parse_bins
-from bnx.errors import SettingError
+from bnx.errors import DataError, SettingError
 from bnx.independence import TESTS
 from bnx.learners import learner
 from bnx.multiplicity import METHODS as ADJUSTMENTS
@@ -14,6 +14,7 @@ from bnx.parameters import candidates
 from bnx.reading import Source
 from bnx.storing import MEMORY, Store
 from bnx.text import quoted
+from bnx.weighing import read_weights, records_of
 
 __all__ = ["DEFAULT_STRUCTURES", "MOST_FOLDS", "Recipe"]
 
@@ -46,6 +47,7 @@ class Recipe:
     group: str = ""
     fold_column: str = ""
     holdout: str = ""
+    weight: str = ""
     seed: int = 1
     bins: str = "auto"
     numeric: tuple[str, ...] = ()
@@ -91,10 +93,26 @@ class Recipe:
             raise SettingError(
                 f"--repeats {self.repeats} cannot be used with --fold-column, whose folds are given; leave it at 1"
             )
+        self._check_weight()
         for option, pairs in (("require", self.require), ("forbid", self.forbid)):
             for pair in pairs:
                 if not all(pair.partition(":")):
                     raise SettingError(f"--{option}: {pair!r} is not a pair of attributes; write PARENT:CHILD")
+
+    def _check_weight(self) -> None:
+        """Refuse a column of weights that is to be something else too."""
+        for names, other in (
+            ((self.target,), "the class"),
+            ((self.group, self.fold_column), "the group or fold column"),
+            (self.numeric, "numeric"),
+            (self.categorical, "categorical"),
+            (self.ignore, "ignore"),
+            (self.keep, "keep"),
+        ):
+            if self.weight and self.weight in names:
+                raise SettingError(
+                    f"column {self.weight!r} is given as the weight and also as {other}; it can be only one of them"
+                )
 
     def for_table(self, rows: int, attributes: int) -> tuple["Recipe", list[str]]:
         """Settle which structures are compared unless they are named; say what a large table leaves out.
@@ -113,18 +131,27 @@ class Recipe:
         )
         return replace(self, structures=fewer), [note]
 
-    def code(self, source: Source, jobs: int = 1, store: Store = MEMORY) -> Coded:
+    def code(self, source: Source, jobs: int = 1, store: Store = MEMORY, only_counts: bool = False) -> Coded:
         """Code a table as these settings say; ``keep`` = all keeps every column that could be left out.
 
-        What has a value per row is kept in ``store``.
+        What has a value per row is kept in ``store``. ``only_counts``: refuse weights that are no whole numbers.
 
         Raises:
             DataError, SettingError: the table or a setting cannot be used.
         """
         extra = [name for name in (self.group, self.fold_column) if name]
+        weights = read_weights(source, self.weight, store) if self.weight else None
+        if weights is not None:
+            if only_counts and not weights.counts:
+                raise DataError(
+                    f"the weight column {self.weight!r} of {source.name} holds numbers that are not whole, but only "
+                    "records can be counted here; give a column of counts, or bnx learn, which takes any weights"
+                )
+            attributes = len(source.columns) - len({self.target, self.weight, *self.ignore, *extra})
+            source = records_of(source, weights, attributes, store) if weights.counts else source
         keep: Sequence[str] = self.keep
         if self.keep == ("all",) and "all" not in source.columns:
-            keep = [name for name in source.columns if name not in {self.target, *self.ignore, *extra}]
+            keep = [name for name in source.columns if name not in {self.target, self.weight, *self.ignore, *extra}]
         return code_table(
             source,
             self.target,
@@ -137,6 +164,7 @@ class Recipe:
             extra=extra,
             jobs=jobs,
             store=store,
+            weights=weights,
         )
 
     def to_dict(self) -> dict[str, Any]:

@@ -57,10 +57,10 @@ def run_notes(
 def _rating_notes(results: Sequence[StructureScore]) -> list[str]:
     """Say how far rankings may be off where rows are too many to be ranked one by one."""
     rows = sum(fold.rows for fold in results[0].by_fold)
-    if rows <= EXACT_ROWS:
-        return []
     every = [one for result in results for one in (result.pooled, *(fold.scores for fold in result.by_fold))]
     area, error = (max(getattr(one, name) for one in every) for name in ("auc_within", "calibration_within"))
+    if rows <= EXACT_ROWS or not area + error:
+        return []
     return [
         f"{rows:,} rows are too many to rank one by one: areas under the curve come from histograms and are within "
         f"{area:.1g}, calibration errors within {error:.1g}; calibration slopes are found from {SLOPE_ROWS:,} rows"

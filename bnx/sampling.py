@@ -17,7 +17,8 @@ _ROWS_PER_CLASS_FOR_GAINS = 5_000
 class Sample:
     """Rows of every fold, fold by fold.
 
-    ``codes`` (n, S) as stored; ``target`` (S,); ``weights`` (S,): rows of the table that each stands for;
+    ``codes`` (n, S) as stored; ``target`` (S,); ``weights`` (S,): rows of the table that each stands for,
+    by their weight;
     ``starts`` (folds + 1,): first row of each fold.
     """
 
@@ -81,6 +82,9 @@ def _sample(engine: LocalEngine, folds: int, per_class: int) -> Sample:
         starts.append(starts[-1] + taken)
     if starts[-1] == engine.rows and chunks == 1:  # all rows, which lie fold by fold already
         first = engine.starts[groups[:, 0, 0]]
-        return Sample(engine.codes, engine.target, np.ones(engine.rows), np.append(first, engine.rows))
-    index = np.concatenate(chosen)
-    return Sample(np.take(engine.codes, index, axis=1), engine.target[index], np.concatenate(weights), np.array(starts))
+        whole = engine.weighed.of_rows if engine.weighed else np.ones(engine.rows)
+        return Sample(engine.codes, engine.target, whole, np.append(first, engine.rows))
+    index, standing = np.concatenate(chosen), np.concatenate(weights)
+    if engine.weighed:
+        standing = standing * engine.weighed.of_rows[index]
+    return Sample(np.take(engine.codes, index, axis=1), engine.target[index], standing, np.array(starts))

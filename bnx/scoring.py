@@ -55,7 +55,10 @@ class Families:
 
 @dataclass(frozen=True)
 class Counted:
-    """Families with their counts in the training set, ``counts`` (C, cells) int32, cells not observed included."""
+    """Families with their counts in the training set, ``counts`` (C, cells), cells not observed included.
+
+    Int32, or float64 where rows have weights.
+    """
 
     families: Families
     counts: np.ndarray

@@ -130,7 +130,7 @@ def table_text(classifier: Classifier, name: str) -> str:
     rows = []
     for place in product(*(range(len(own)) for own in levels)):
         context = [own[k] for own, k in zip(levels, place, strict=True)]
-        behind = int(classifier.counts[child][place].sum())
+        behind = round(classifier.counts[child][place].sum())
         rows.append((*context, *(fixed(float(p)) for p in table[place]), f"{behind:,}"))
     header = (classifier.target.name, *(names[parent] for parent in parents), *classifier.domains[child].levels, "rows")
     return f"{name}\n" + aligned(header, rows, left=1 + len(parents))

@@ -16,12 +16,25 @@ from numpy.typing import DTypeLike
 
 from bnx.errors import DataError
 
-__all__ = ["MEMORY", "Memory", "Spill", "Store"]
+__all__ = ["MEMORY", "Memory", "Spill", "Store", "available_memory"]
 
 _PAGE = mmap.PAGESIZE
 _FIRST, _LONGEST = 1 << 24, 1 << 30  # bytes of a file: each is twice as long as the one before, up to a limit
 
 _NO_ROOM = {errno.ENOSPC, errno.EDQUOT, errno.EFBIG}
+
+
+def available_memory() -> int | None:
+    """Look up the bytes of memory that a program can take now, None where the system does not tell."""
+    try:
+        lines = Path("/proc/meminfo").read_text(encoding="utf-8").splitlines()
+        return next(1024 * int(line.split()[1]) for line in lines if line.startswith("MemAvailable:"))
+    except (OSError, StopIteration):
+        pass
+    try:
+        return os.sysconf("SC_PHYS_PAGES") * os.sysconf("SC_PAGE_SIZE")
+    except (AttributeError, ValueError, OSError):
+        return None
 
 
 class Memory:
@@ -33,6 +46,10 @@ class Memory:
 
     def let_go(self, array: np.ndarray) -> None:
         """Hear that an array is not read for a while."""
+
+    def room(self) -> int | None:
+        """Look up how many bytes can be kept, None where the system does not tell."""
+        return available_memory()
 
 
 class Spill:
@@ -81,6 +98,10 @@ class Spill:
             start, stop = -(-(first - address) // _PAGE) * _PAGE, (first - address + array.nbytes) // _PAGE * _PAGE
             if 0 <= start < stop <= len(one):
                 one.madvise(mmap.MADV_DONTNEED, start, stop - start)
+
+    def room(self) -> int | None:
+        """Look up how many bytes can be kept."""
+        return shutil.disk_usage(self._folder).free
 
     def _held(self) -> Iterator[tuple[int, mmap.mmap]]:
         with self._lock:

@@ -78,10 +78,12 @@ class CodedTable:
     ``codes`` (n, N) uint8 or uint16, C-contiguous: code of attribute i in row j under ``schema.attributes[i]``.
     ``target`` (N,) uint8: code of the class. ``lines``: where the rows stand in the source.
     Numeric columns hold up to 256 fine bins and columns with very many levels hold all of them; each training fold
-    merges those into its own cut points and pooled levels (`Coarsening`).
+    merges those into its own cut points and pooled levels (`Coarsening`). ``weights`` (N,) float64: of rows that do not
+    count alike, else None; their mean is 1, and their sums are exact in any order (`weighing.scaled`).
     """
 
     schema: Schema
     codes: np.ndarray
     target: np.ndarray
     lines: Lines
+    weights: np.ndarray | None = None

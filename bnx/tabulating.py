@@ -8,6 +8,7 @@ import numpy as np
 
 from bnx.engines import LocalEngine
 from bnx.kernels import count_families, take_margins, take_training
+from bnx.kernels.weighing import weigh_families
 from bnx.scoring import Counted, Families
 from bnx.trainings import Training
 
@@ -47,7 +48,8 @@ def tabulate(engine: LocalEngine, trainings: Sequence[Training], families: Seque
     Single attributes are known from their margins. A family of attributes that are used as stored is counted once, by
     the parts of the table that training sets are made of, and added up; any other is counted in its own training rows.
     """
-    out = [Counted(own, np.zeros((engine.classes, int(own.starts[-1])), np.int32)) for own in families]
+    kind = np.float64 if engine.weighed else np.int32
+    out = [Counted(own, np.zeros((engine.classes, int(own.starts[-1])), kind)) for own in families]
     parts = _parts(trainings)
     _fill_margins(engine, trainings, parts, out)
     most = _DENSE * int(engine.starts[-1]) // (parts.held.shape[1] * engine.classes)
@@ -73,11 +75,12 @@ def _parts(trainings: Sequence[Training]) -> _Parts:
 
 def _fill_margins(engine: LocalEngine, trainings: Sequence[Training], parts: _Parts, out: Sequence[Counted]) -> None:
     """Fill in the families without parents."""
-    flat = [margin.reshape(engine.blocks, -1) for margin in engine.margins]
+    every = engine.weighed.margins if engine.weighed else engine.margins
+    flat = [margin.reshape(engine.blocks, -1) for margin in every]
     widths = np.array([one.shape[1] for one in flat]) // engine.classes
     offsets = np.concatenate([[0], np.cumsum(widths)])
-    by_part = np.zeros((parts.held.shape[1], engine.classes, int(offsets[-1])), np.int64)
-    for i, margin in enumerate(engine.margins):
+    by_part = np.zeros((parts.held.shape[1], engine.classes, int(offsets[-1])), every[0].dtype)
+    for i, margin in enumerate(every):
         np.add.at(by_part[:, :, offsets[i] : offsets[i + 1]], parts.of_block, margin)
     for number, (training, one) in enumerate(zip(trainings, out, strict=True)):
         alone = np.flatnonzero(one.families.depths == 1)
@@ -134,7 +137,7 @@ def _fill_batch(
     """Count the shared families ``low:high`` by part, and add them up."""
     starts = np.concatenate([[0], np.cumsum(shared.cells[low:high])])
     pieces = parts.held.shape[1]
-    found = np.zeros((pieces * engine.classes, int(starts[-1])), np.int32)
+    found = np.zeros((pieces * engine.classes, int(starts[-1])), out[0].counts.dtype)
     slots = (parts.of_block[:, None] * engine.classes + np.arange(engine.classes)).ravel()
     own = (shared.members[low:high], shared.sizes[low:high], shared.depths[low:high], np.ones(high - low, bool))
     unread, nothing = np.zeros((1, 1), np.int32), np.zeros((0, 0), np.int64)
@@ -142,7 +145,7 @@ def _fill_batch(
     shares = np.array_split(np.arange(high - low), min(high - low, 8 * engine.jobs))
     engine.map(lambda share: _count(engine, batch, share, starts[share], slots, found), shares, "counting families")
     by_part = found.reshape(pieces, engine.classes, -1)
-    total = by_part.sum(axis=0, dtype=np.int32)
+    total = by_part.sum(axis=0, dtype=found.dtype)
 
     def take(number: int) -> None:
         here = (shared.number[number] >= low) & (shared.number[number] < high)
@@ -162,6 +165,9 @@ def _count(
     slots: np.ndarray,
     out: np.ndarray,
 ) -> None:
-    """Count some families by slot."""
+    """Count some families by slot, rows as they weigh."""
     fixed = (families.recode, families.plain, families.members, families.sizes, families.depths)
-    count_families(engine.codes, *fixed, which, out_starts, engine.starts, slots, out)
+    if engine.weighed:
+        weigh_families(engine.codes, engine.weighed.of_rows, *fixed, which, out_starts, engine.starts, slots, out)
+    else:
+        count_families(engine.codes, *fixed, which, out_starts, engine.starts, slots, out)

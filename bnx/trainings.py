@@ -17,19 +17,26 @@ __all__ = ["Training", "held_sets", "make_trainings", "mask_without"]
 class Training:
     """One training set.
 
-    ``held``: the folds left out; ``mask`` (blocks,) bool: the blocks it holds; ``class_counts`` (C,): its rows.
+    ``held``: the folds left out; ``mask`` (blocks,) bool: the blocks it holds; ``class_counts`` (C,): its rows;
+    ``class_weights`` (C,): their weights, None where all rows count alike.
     """
 
     held: tuple[int, ...]
     mask: np.ndarray
     view: View
     class_counts: np.ndarray
+    class_weights: np.ndarray | None = None
+
+    @property
+    def class_mass(self) -> np.ndarray:
+        """What the rows of each class weigh, (C,)."""
+        return self.class_counts if self.class_weights is None else self.class_weights
 
     @property
     def log_prior(self) -> np.ndarray:
         """Log share of each class (nats), (C,); minus infinity for a class without a row."""
         with np.errstate(divide="ignore"):
-            return np.asarray(np.log(self.class_counts / self.class_counts.sum()))
+            return np.asarray(np.log(self.class_mass / self.class_mass.sum()))
 
 
 def held_sets(folds: int, nested: bool) -> list[tuple[int, ...]]:
@@ -66,7 +73,8 @@ def make_trainings(
             counts = {i: engine.margins[i][mask].sum(axis=0).T for i in coarse}
             view = make_view(schema, {i: coarsen(schema.attributes[i], counts[i], bins, max_levels) for i in coarse})
         view = replace(view, unknown=_unknown(engine.sizes, rows[number[held]], rows[-1], view))
-        return Training(held, mask, view, engine.class_counts[mask].sum(axis=0))
+        weights = engine.weighed.by_class[mask].sum(axis=0) if engine.weighed else None
+        return Training(held, mask, view, engine.class_counts[mask].sum(axis=0), weights)
 
     return engine.map(make, masks)
 

@@ -66,7 +66,7 @@ def test_every_option_changes_what_is_found(options: str, tmp_path: Path) -> Non
 
 READ = {
     *("test", "adjust", "alpha", "negligible", "seed", "bins", "numeric", "categorical", "ignore", "keep", "missing"),
-    "max_levels",
+    *("max_levels", "weight"),
 }
 
 

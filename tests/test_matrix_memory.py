@@ -48,11 +48,11 @@ def test_tables_that_are_not_so_wide_say_nothing():
 
 @pytest.mark.usefixtures("few")
 def test_a_matrix_that_memory_cannot_hold_is_refused(monkeypatch):
-    monkeypatch.setattr("bnx.matrix_memory._available", lambda: 3_749)
+    monkeypatch.setattr("bnx.matrix_memory.available_memory", lambda: 3_749)
     with pytest.raises(DataError, match=r"^3 pairs would be held in a matrix of about 0.0 GB, but 0.0 GB of memory"):
         notes(test="chi2")
     assert notes() == []
-    monkeypatch.setattr("bnx.matrix_memory._available", lambda: None)
+    monkeypatch.setattr("bnx.matrix_memory.available_memory", lambda: None)
     assert notes(test="chi2")
 
 

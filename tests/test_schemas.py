@@ -72,6 +72,10 @@ def test_a_missing_key_is_refused(kind: str, path: tuple[str | int, ...]) -> Non
     if path[0] == "left_out" and len(path) > 1:
         document["left_out"] = [{"name": "id", "reason": "a different value in every row"}]
         assert accepts(kind, document)
+    if path[0] == "weights" and len(path) > 1:
+        document["weights"] = {"column": "n", "kind": "counts", "rows": 24, "left_out": 0, "total": 360}
+        document["weights"]["effective_rows"] = 360
+        assert accepts(kind, document)
     del holder(document, path[:-1])[path[-1]]
     assert not accepts(kind, document)
 
@@ -89,6 +93,7 @@ def put(*path: str | int, value: Any) -> Callable[[Document], None]:
         ("comparison", put("format", value="bnx-comparison/2")),
         ("comparison", put("rows", value="360")),
         ("comparison", put("rows", value=0)),
+        ("comparison", put("weights", value="n")),
         ("comparison", put("unknown", value=1)),
         ("comparison", put("sha256", value="abc")),
         ("comparison", put("structures", value=[])),
@@ -105,7 +110,7 @@ def put(*path: str | int, value: Any) -> Callable[[Document], None]:
         ("comparison", put("attributes", value=["a", "a"])),
         ("comparison", put("class_levels", value=["one"])),
         ("structure", put("format", value="bnx-comparison/1")),
-        ("structure", put("attributes", 0, "counts", 0, value=[1.5])),
+        ("structure", put("attributes", 0, "counts", 0, value=[-1.5])),
         ("structure", put("attributes", 0, "counts", 0, value="1")),
         ("structure", put("attributes", 0, "probabilities", 0, value=[1.2])),
         ("structure", put("attributes", 0, "parents", value=["x", "x"])),

@@ -28,6 +28,7 @@ from bnx.cli.shared import (
     SpillFolder,
     Test,
     Timings,
+    Weight,
     recipe_of,
     say,
     store_of,
@@ -82,6 +83,7 @@ def run(
     holdout: Annotated[
         str | None, typer.Option(metavar="FILE", help="A further table that takes no part and is scored at the end.")
     ] = None,
+    weight: Weight = Recipe.weight,
     seed: Seed = Recipe.seed,
     bins: Bins = Recipe.bins,
     numeric: Numeric = None,

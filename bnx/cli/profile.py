@@ -15,6 +15,7 @@ from bnx.cli.shared import (
     Missing,
     Numeric,
     SpillFolder,
+    Weight,
     recipe_of,
     store_of,
     threads,
@@ -36,10 +37,12 @@ def run(
     keep: Keep = None,
     missing: Missing = Recipe.missing,
     max_levels: MaxLevels = Recipe.max_levels,
+    weight: Weight = Recipe.weight,
     spill: SpillFolder = None,
     json_out: JsonOut = False,
 ) -> None:
     """Say what is in a table: types, levels, blanks, rare levels, duplicates, columns that give the class away."""
     source = open_source(data)
-    found = profile(recipe_of(ctx, source).code(source, threads(0), store_of(spill)))
+    coded = recipe_of(ctx, source).code(source, threads(0), store_of(spill), only_counts=True)
+    found = profile(coded)
     typer.echo(json.dumps(found.to_dict(), ensure_ascii=False, allow_nan=False, indent=1) if json_out else str(found))

@@ -44,6 +44,7 @@ __all__ = [
     "Test",
     "Theme",
     "Timings",
+    "Weight",
     "check_spared",
     "colours",
     "listed",
@@ -96,6 +97,15 @@ Adjust = Annotated[str, typer.Option("--adjust", metavar="|".join(ADJUSTMENTS), 
 Alpha = Annotated[float, typer.Option("--alpha", metavar="P", help="Level of the tests.")]
 Negligible = Annotated[
     float, typer.Option("--negligible", metavar="BITS", help="Bits given the class that do not matter.")
+]
+Weight = Annotated[
+    str,
+    typer.Option(
+        "--weight",
+        metavar="COL",
+        help="A column that says how many records a row stands for; in bnx learn also weights that are no counts.",
+        show_default=False,
+    ),
 ]
 Seed = Annotated[int, typer.Option("--seed", metavar="N", help="Seed of folds, halves and random tables.")]
 Jobs = Annotated[

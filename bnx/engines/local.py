@@ -27,13 +27,26 @@ _RUN = 32  # items that a thread takes at a time, at most
 
 
 @dataclass(frozen=True)
+class RowsWeighed:
+    """The weights of rows that do not count alike, whose sums are exact in any order.
+
+    ``of_rows`` (N,) float64, in the order of the rows; ``by_class`` (blocks, C): their sums; ``margins``: per
+    attribute, sums (blocks, C, stored levels).
+    """
+
+    of_rows: np.ndarray
+    by_class: np.ndarray
+    margins: tuple[np.ndarray, ...]
+
+
+@dataclass(frozen=True)
 class LocalEngine:
     """Rows sorted by (block, class) within chunks of the table, and the counting of them.
 
     ``codes`` (n, N) as stored and ``target`` (N,), sorted; ``groups`` (N,): number block * C + class of each row in the
     table's own order; ``chunk``: rows of a chunk; ``starts`` (S + 1,): first sorted row of each segment, where segment
     s holds the rows of group s % G, G = blocks * C, in chunk s // G. ``margins``: per attribute, counts (blocks, C,
-    stored levels) int64.
+    stored levels) int64. ``weighed``: the weights of rows, None where all count alike.
     """
 
     codes: np.ndarray
@@ -48,6 +61,7 @@ class LocalEngine:
     jobs: int
     progress: Progress
     store: Store
+    weighed: RowsWeighed | None = None
 
     @property
     def class_counts(self) -> np.ndarray:
@@ -106,7 +120,11 @@ class LocalEngine:
 
         self.map(recode, range(len(codes)))
         margins = tuple(view.merge(i, margin) for i, margin in enumerate(self.margins))
-        return replace(self, codes=codes, sizes=view.codes, margins=margins)
+        weighed = self.weighed
+        if weighed:
+            merged = tuple(view.merge(i, margin) for i, margin in enumerate(weighed.margins))
+            weighed = replace(weighed, margins=merged)
+        return replace(self, codes=codes, sizes=view.codes, margins=margins, weighed=weighed)
 
     def pair_counts(self, layout: PairLayout) -> PairCounts:
         """Count pairs of attributes, as stored, by block and class."""
@@ -173,7 +191,38 @@ def start_local(
     margins = tuple(one.astype(np.int64).reshape(blocks, classes, -1) for one in counts)
     starts = np.concatenate([[0], np.cumsum(np.concatenate(lengths))]).astype(np.int64)
     target = _sorted_target(starts, blocks, classes, store)
-    return LocalEngine(codes, target, groups, chunk, starts, blocks, classes, sizes, margins, jobs, progress, store)
+    fixed = (codes, target, groups, chunk, starts, blocks, classes, sizes, margins, jobs, progress, store)
+    if table.weights is None:
+        return LocalEngine(*fixed)
+    return LocalEngine(*fixed, _weighed(table.weights, codes, groups, chunk, blocks * classes, blocks, sizes, store))
+
+
+def _weighed(
+    weights: np.ndarray,
+    codes: np.ndarray,
+    groups: np.ndarray,
+    chunk: int,
+    number: int,
+    blocks: int,
+    sizes: np.ndarray,
+    store: Store,
+) -> RowsWeighed:
+    """Bring the weights (N,) of a table's rows into the order of the sorted codes, and sum them up.
+
+    groups (N,): of each row in the table's own order, one of ``number``.
+    """
+    of_rows = store.empty(weights.shape, np.float64)
+    total = np.zeros(number)
+    sums = [np.zeros(number * int(size)) for size in sizes]
+    for part in _chunks(len(weights), chunk):
+        order = np.argsort(groups[part], kind="stable")
+        of_rows[part] = weights[part][order]
+        slots = groups[part][order].astype(np.int64)
+        total += np.bincount(slots, of_rows[part], number)
+        for i, size in enumerate(sizes.tolist()):
+            sums[i] += np.bincount(slots * size + codes[i, part], of_rows[part], number * size)
+    margins = tuple(one.reshape(blocks, number // blocks, -1) for one in sums)
+    return RowsWeighed(of_rows, total.reshape(blocks, -1), margins)
 
 
 def _groups(table: CodedTable, blocks_of_rows: np.ndarray, blocks: int, chunk: int, store: Store) -> np.ndarray:

@@ -129,12 +129,12 @@ def _classifier(document: Mapping[str, Any]) -> Classifier:
         raise ValueError("two columns have the same name")
     for domain in (target, *domains):
         _check_domain(domain)
-    counts = tuple(np.array(one["counts"], dtype=np.int32) for one in attributes)
+    counts = tuple(_counts(one["counts"]) for one in attributes)
     for table, domain, own in zip(counts, domains, parents, strict=True):
         shape = (len(target), *(len(domains[parent]) for parent in own), len(domain))
-        if table.shape != shape or (table < 0).any():
+        if table.shape != shape or not (table >= 0).all():
             raise ValueError(f"the counts of {domain.name} have the shape {table.shape}, not {shape}")
-    rows = np.array(document["class"]["rows"], dtype=np.int64)
+    rows = np.array(document["class"]["rows"])
     _check_class(document["class"], rows)
     return Classifier(
         domains,
@@ -165,6 +165,11 @@ def _dropped(found: Any, names: Sequence[str]) -> tuple[str, ...]:
     return tuple(found)
 
 
+def _counts(values: Any) -> np.ndarray:
+    """Read counts, which are no whole numbers where rows had weights."""
+    return np.array(values, dtype=np.float64 if np.array(values).dtype.kind == "f" else np.int32)
+
+
 def _check_domain(domain: Domain) -> None:
     """Refuse levels that cannot be told apart, or that do not follow from the cut points."""
     texts = all(isinstance(level, str) for level in (domain.name, *domain.levels))
@@ -180,7 +185,7 @@ def _check_domain(domain: Domain) -> None:
 
 def _check_class(target: Mapping[str, Any], rows: np.ndarray) -> None:
     """Refuse rows per class that cannot be, or a prior that does not follow from them."""
-    if rows.shape != (len(target["levels"]),) or (rows < 0).any() or not rows.sum():
+    if rows.shape != (len(target["levels"]),) or not (rows >= 0).all() or not rows.sum():
         raise ValueError(f"the rows {rows.tolist()} do not fit the {len(target['levels'])} levels of the class")
     prior = np.array(target["prior"], dtype=float)
     if prior.shape != rows.shape or not np.allclose(prior, rows / rows.sum(), rtol=0, atol=1e-9):
