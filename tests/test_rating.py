@@ -8,8 +8,7 @@ import pandas as pd
 import pytest
 from builders import compared, folds_of, in_turns, predicted
 
-from bnx import comparison as main
-from bnx import rating
+from bnx import observing, rating
 from bnx.calibrating import slope
 from bnx.comparison import Comparison
 from bnx.documents import predictions_table
@@ -107,11 +106,11 @@ def test_histograms_bound_what_they_leave_open(repeats: int, monkeypatch: pytest
 
 def test_the_note_names_the_bounds(monkeypatch: pytest.MonkeyPatch) -> None:
     found = run()
-    assert main._rating_notes(found.results) == []
+    assert observing.rating_notes(found.results) == []
     monkeypatch.setattr(rating, "EXACT_ROWS", 100)
-    monkeypatch.setattr(main, "EXACT_ROWS", 100)
+    monkeypatch.setattr(observing, "EXACT_ROWS", 100)
     results, _ = rating.score(found.evaluations, inner_picks(found.evaluations))
-    note = main._rating_notes(results)[0]
+    note = observing.rating_notes(results)[0]
     assert note.startswith("900 rows are too many to rank one by one: areas under the curve come from histograms")
     assert note.endswith("calibration slopes are found from 200,000 rows")
 
