@@ -24,9 +24,9 @@ _FEWEST_CELLS = 1024
 class InnerRows:
     """Rows of one training set, sorted by inner fold and class.
 
-    ``codes`` (n, N) as the training set sees them, of ``sizes`` (n,) levels; ``starts`` (folds * C + 1,): first row of
-    each fold and class; ``log_prior`` (folds, C) nats: share of each class outside each fold, minus infinity for none;
-    ``floor`` (C,): added to every chance.
+    ``codes`` (n, N) as the training set sees them, of ``sizes`` (n,) levels, cells not observed being one;
+    ``starts`` (folds * C + 1,): first row of each fold and class; ``log_prior`` (folds, C) nats: share of each class
+    outside each fold, minus infinity for none; ``floor`` (C,): added to every chance.
     """
 
     codes: np.ndarray
@@ -53,7 +53,7 @@ def inner_rows(engine: LocalEngine, training: Training, most: int) -> InnerRows:
     with np.errstate(divide="ignore"):
         log_prior = np.log(others / np.maximum(others.sum(axis=1, keepdims=True), 1))
     starts = np.concatenate([[0], np.cumsum(rows)]).astype(np.int64)
-    return InnerRows(codes, view.sizes, starts, log_prior, by_fold.sum(axis=0) / max(len(index), 1) ** 2)
+    return InnerRows(codes, view.codes, starts, log_prior, by_fold.sum(axis=0) / max(len(index), 1) ** 2)
 
 
 def _spread(engine: LocalEngine, blocks: np.ndarray, c: int, share: float) -> np.ndarray:

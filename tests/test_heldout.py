@@ -305,3 +305,17 @@ def test_rows_by_rule_are_those_of_the_publication() -> None:
     """The table that the target is set on: 432 rows, 142 of the class (Thrun et al. 1991)."""
     rows, _ = monk1()
     assert ((rows == 0).sum(axis=1) == 2).sum() == 142
+
+
+def test_cells_not_observed_are_a_level_of_their_own_while_parents_are_sought() -> None:
+    """Their code lies beyond the levels: tables must have room for it."""
+    random = np.random.default_rng(4)
+    frame = pd.DataFrame({name: random.choice(list("xy"), 200) for name in ("one", "two", "three")})
+    frame["kind"] = np.where((frame["one"] == frame["two"]) ^ (random.random(200) < 0.1), "a", "b")
+    frame.loc[::5, "two"] = ""
+    found = compared(frame, "kind", structures=("naive", "heldout"), folds=4, missing="sum-out")
+    one = found.evaluations[0]
+    rows = inner_rows(one.engine, one.learned(()).training, 200)
+    assert (rows.codes.max(axis=1) < rows.sizes).all()
+    assert rows.sizes.tolist() == [2, 3, 2]
+    assert found.results[1].pooled.log_loss < 0.8 * found.results[0].pooled.log_loss

@@ -162,7 +162,7 @@ def test_equal_weights_change_nothing_but_what_is_said() -> None:
 def test_results_do_not_depend_on_threads_and_fit_the_schema(missing: str) -> None:
     frame = weighted(300, seed=8)
     frame.loc[::17, "two"] = ""
-    chosen = {"structures": ("naive", "tan-tested", "kdb2"), "folds": 4, "repeats": 2, "missing": missing}
+    chosen = {"structures": ("naive", "tan-tested", "heldout"), "folds": 4, "repeats": 2, "missing": missing}
     texts = [json_text(comparison_document(compared(frame, "kind", jobs, weight="w", **chosen))) for jobs in (1, 2)]
     assert texts[0] == texts[1]
     document = json.loads(texts[0])
