@@ -1,7 +1,7 @@
 """Class log loss by leave-one-out in one pass: every number of parents, with every number of attributes."""
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TypeVar
 
 import numpy as np
@@ -82,15 +82,16 @@ def leave_out(
     """Call ``use(k, ...)`` for each training set k, whose structure is counted in all its rows.
 
     At most 50,000 rows of it are judged, spread evenly by block and class, and stand for all. As many training sets are
-    counted at a time as a fixed amount of memory takes.
+    counted at a time as a fixed amount of memory takes. Every row counts once, whatever it weighs.
     """
     families = [families_of([one], training.view) for one, training in zip(structures, trainings, strict=True)]
     cells = [int(own.starts[-1]) * engine.classes for own in families]
     found: list[Result] = []
+    once = replace(engine, weighed=None)
     while len(found) < len(families):
         first = len(found)
         part = slice(first, first + max(1, int(np.searchsorted(np.cumsum(cells[first:]), _CELLS))))
-        counted = tabulate(engine, trainings[part], families[part])
+        counted = tabulate(once, trainings[part], families[part])
 
         def one(k: int, first: int = first, counted: Sequence[Counted] = counted) -> Result:
             training = trainings[first + k]

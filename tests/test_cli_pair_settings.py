@@ -52,6 +52,7 @@ OPTIONS = {
     "--close 0": ("--all",),
     "--missing drop": ("dock", "alarm"),
     "--max-levels 3": ("dock", "site"),
+    "--weight trips": ("dock", "alarm"),
 }
 
 

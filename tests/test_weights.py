@@ -3,13 +3,14 @@
 import json
 import math
 import re
+from dataclasses import replace
 from pathlib import Path
 
 import jsonschema
 import numpy as np
 import pandas as pd
 import pytest
-from builders import compared, folds_of, predicted
+from builders import coded, compared, folds_of, predicted, silent
 from commandline import call, refusal
 from hypothesis import given, settings
 from hypothesis import strategies as st
@@ -19,6 +20,7 @@ from sklearn.naive_bayes import CategoricalNB
 from bnx.cells import Cells
 from bnx.comparison import Comparison
 from bnx.documents import comparison_document
+from bnx.engines import start_local
 from bnx.kernels import slope_sums
 from bnx.losses import scores
 from bnx.results import json_text
@@ -162,7 +164,7 @@ def test_equal_weights_change_nothing_but_what_is_said() -> None:
 def test_results_do_not_depend_on_threads_and_fit_the_schema(missing: str) -> None:
     frame = weighted(300, seed=8)
     frame.loc[::17, "two"] = ""
-    chosen = {"structures": ("naive", "tan-tested", "kdb2"), "folds": 4, "repeats": 2, "missing": missing}
+    chosen = {"structures": ("naive", "tan-tested", "heldout"), "folds": 4, "repeats": 2, "missing": missing}
     texts = [json_text(comparison_document(compared(frame, "kind", jobs, weight="w", **chosen))) for jobs in (1, 2)]
     assert texts[0] == texts[1]
     document = json.loads(texts[0])
@@ -257,3 +259,42 @@ def test_weights_that_leave_no_row_or_are_missing_in_a_further_table_are_refused
     command = ("--class", "kind", "--weight", "w", "-o", str(tmp_path / "o"))
     assert "the weight in w is 0 wherever the class is not blank" in refusal("learn", table, *command)
     assert "has no column 'w'" in refusal("learn", good, *command, "--holdout", bare)
+
+
+def test_numeric_columns_are_cut_by_rows_and_summed_by_weights() -> None:
+    frame = weighted(500, seed=3)
+    draw = np.random.default_rng(9)
+    frame["size"] = np.round(draw.normal(0, 1, 500) + (frame["kind"] == "a"), 2)
+    frame = frame[["size", "one", "two", "w", "kind"]]
+    fixed = {"smoothing": "laplace:1", "folds": 4, "bins": "frequency:5"}
+    found = compared(frame, "kind", weight="w", structures=("naive", "kdb2"), **fixed)
+    left = frame.assign(kind=frame["kind"].where(frame["w"] > 0, "")).drop(columns="w")
+    assert found.classifiers[1].domains == compared(left, "kind", structures=("naive",), **fixed).classifiers[0].domains
+    rows, mass = used(frame)
+    cut = np.searchsorted(found.classifiers[1].domains[0].cuts, rows["size"], side="left")
+    texts = [np.unique(rows[name], return_inverse=True)[1] for name in ("one", "two", "kind")]
+    cells = np.array([cut, *texts])
+    assert any(0 in parents or child == 0 < len(parents) for child, parents in enumerate(found.structures[1].parents))
+    for child, parents in enumerate(found.structures[1].parents):
+        expected = np.zeros(found.classifiers[1].counts[child].shape)
+        np.add.at(expected, tuple(cells[[3, *parents, child]]), mass)
+        assert np.abs(found.classifiers[1].counts[child] - expected).max() < 1e-9
+
+
+@pytest.mark.parametrize("in_place", [False, True])
+def test_chunks_of_rows_change_no_sum(in_place: bool) -> None:
+    draw = np.random.default_rng(1)
+    rows, target = draw.integers(0, 3, (4, 101)), draw.integers(0, 2, 101)
+    mass, blocks = draw.integers(1, 99, 101) / 64, draw.integers(0, 5, 101).astype(np.uint8)
+    whole, parts = (
+        start_local(replace(coded(rows, target), weights=mass), blocks, 5, 1, silent, chunk=chunk, in_place=in_place)
+        for chunk in (1000, 7)
+    )
+    for engine in (whole, parts):
+        assert engine.weighed is not None
+        assert (engine.weighed.of_rows == mass[engine.order]).all()
+        for i, margin in enumerate(engine.weighed.margins):
+            expected = np.zeros(margin.shape)
+            np.add.at(expected, (blocks, target, rows[i]), mass)
+            assert (margin == expected).all()
+        assert (engine.weighed.by_class == engine.weighed.margins[0].sum(axis=2)).all()
