@@ -2,7 +2,7 @@
 
 import hashlib
 import time
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -15,13 +15,15 @@ from quality.scoring_rows import calibration_if_perfect, judged, nats, paired
 
 from bnx.comparison import Comparison, compare
 from bnx.documents import predictions_table
+from bnx.losses import Scores
 from bnx.rating import cells_of
 from bnx.reading import open_source
 from bnx.recipe import Recipe
 
-__all__ = ["DisagreementError", "Rows", "measure_bnx", "measure_rivals", "read_rows", "recipe_for", "run"]
+__all__ = ["MIX", "DisagreementError", "Rows", "measure_bnx", "measure_rivals", "read_rows", "recipe_for", "run"]
 
 Figures = dict[str, Any]
+MIX = "mix"
 
 
 class DisagreementError(Exception):
@@ -32,11 +34,13 @@ class DisagreementError(Exception):
 class Rows:
     """Out-of-fold predictions of one comparison, in the order of the table.
 
-    ``p``: by structure, (N, C); ``honest`` (N, C): by what was picked without each row's fold; ``truth``, ``folds``
-    (N,): codes of the classes and folds; ``lines`` (N,): of the table.
+    ``p``: by structure and by their mix, (N, C); ``single``, ``honest`` (N, C): by the structure that was picked
+    without each row's fold, and by the mix where that was taken; ``truth``, ``folds`` (N,): codes of the classes and
+    folds; ``lines`` (N,): of the table.
     """
 
     p: Mapping[str, np.ndarray]
+    single: np.ndarray
     honest: np.ndarray
     truth: np.ndarray
     folds: np.ndarray
@@ -65,19 +69,37 @@ def read_rows(comparison: Comparison) -> Rows:
         DisagreementError: the honest log loss is not the one that the comparison reports.
     """
     table = predictions_table(comparison)
-    names, levels = comparison.recipe.structures, comparison.classifiers[0].target.levels
+    names = [*comparison.recipe.structures, *([MIX] if comparison.mix else [])]
+    levels = comparison.classifiers[0].target.levels
     shape = (len(names), comparison.rows)
     every = np.column_stack([table[f"p:{level}"].to_numpy() for level in levels]).reshape(*shape, len(levels))
     p = dict(zip(names, every, strict=True))
     lines, folds = (table[name].to_numpy()[: comparison.rows] for name in ("row", "fold"))
     truth = pd.Index(levels).get_indexer(table["truth"].to_pandas().astype(str)[: comparison.rows])
-    honest = np.empty(every.shape[1:])
-    for cell, pick in zip(cells_of(comparison.evaluations), comparison.recommendation.picks, strict=True):
-        honest[folds == cell.fold] = every[pick][folds == cell.fold]
-    own, reported = nats(honest, truth).mean() / np.log(2), comparison.recommendation.honest.log_loss
-    if abs(own - reported) > 1e-9:
-        raise DisagreementError(f"the honest log loss is reported as {reported} bits, but predictions give {own}")
-    return Rows(p, honest, truth, folds, lines)
+    advice, mix = comparison.recommendation, comparison.mix
+    single = _picked(comparison, every, folds, truth, advice.picks, advice.honest)
+    honest = _picked(comparison, every, folds, truth, mix.picks, mix.honest) if mix else single
+    return Rows(p, single, honest, truth, folds, lines)
+
+
+def _picked(
+    comparison: Comparison,
+    every: np.ndarray,
+    folds: np.ndarray,
+    truth: np.ndarray,
+    picks: Sequence[int],
+    reported: Scores,
+) -> np.ndarray:
+    """Take each fold's rows from what was picked without them."""
+    p = np.empty(every.shape[1:])
+    for cell, pick in zip(cells_of(comparison.evaluations), picks, strict=True):
+        p[folds == cell.fold] = every[pick][folds == cell.fold]
+    own = nats(p, truth).mean() / np.log(2)
+    if abs(own - reported.log_loss) > 1e-9:
+        raise DisagreementError(
+            f"the honest log loss is reported as {reported.log_loss} bits, but predictions give {own}"
+        )
+    return p
 
 
 def measure_bnx(frame: pd.DataFrame, recipe: Recipe, folder: Path) -> tuple[Figures, Rows]:
@@ -88,7 +110,7 @@ def measure_bnx(frame: pd.DataFrame, recipe: Recipe, folder: Path) -> tuple[Figu
     rows = read_rows(comparison)
     names, advice = comparison.recipe.structures, comparison.recommendation
     difference, error = paired(nats(rows.honest, rows.truth), nats(rows.p["naive"], rows.truth))
-    picks = [names[number] for number in advice.picks]
+    picks = [[*names, MIX][number] for number in (comparison.mix or advice).picks]
     return {
         "rows": comparison.rows,
         "attributes": len(comparison.names),
@@ -97,12 +119,23 @@ def measure_bnx(frame: pd.DataFrame, recipe: Recipe, folder: Path) -> tuple[Figu
         "folds": comparison.folds,
         "settings": _settings(recipe),
         "recommended": names[advice.recommended],
-        "picks": {name: picks.count(name) for name in names if name in picks},
+        "picks": {name: picks.count(name) for name in [*names, MIX] if name in picks},
         "honest": judged(rows.honest, rows.truth) | {"calibration_if_perfect": calibration_if_perfect(rows.honest)},
+        "single": judged(rows.single, rows.truth),
         "against_naive": {"difference": difference, "error": error},
-        "structures": {name: judged(p, rows.truth) | _settled(comparison, name) for name, p in rows.p.items()},
+        "structures": {name: judged(rows.p[name], rows.truth) | _settled(comparison, name) for name in names},
+        "mix": judged(rows.p[MIX], rows.truth) | _weights(comparison, names) if MIX in rows.p else None,
         "seconds": seconds,
     }, rows
+
+
+def _weights(comparison: Comparison, names: Sequence[str]) -> Figures:
+    """Say what the mix of all rows is made of."""
+    members = comparison.mix.members if comparison.mix else {}
+    return {
+        "offered": bool(comparison.mix and comparison.mix.offered),
+        "weights": {names[s]: weight for s, weight in members.items()},
+    }
 
 
 def _settings(recipe: Recipe) -> Figures:

@@ -4,8 +4,10 @@ from collections.abc import Mapping, Sequence
 from statistics import geometric_mean, median
 from typing import Any
 
-from quality.requirements import ratios, requirements
+from quality.requirements import every_score, ratios, requirements
 from quality.rival_models import RIVALS
+
+from bnx.mixed_classifier import mix_words
 
 __all__ = ["page"]
 
@@ -16,9 +18,9 @@ Written by `python tests/quality/report.py`, which can run table by table (`repo
 `pytest -m quality tests/quality` measures anew and asserts what is met.
 
 All log losses here are in **nats**, on rows that took no part in learning: 10 folds, dealt by the program, and the very
-same ones for the rivals. *Honest* is the score of the recommended structure when all of it is chosen again inside every
-outer fold: cut points, smoothing, calibration, and the structure itself among those compared. Rivals are of
-scikit-learn: `CategoricalNB(alpha=1)`; one-hot `LogisticRegression(C=1)`;
+same ones for the rivals. *Honest* is the score of the recommended model when all of it is chosen again inside every
+outer fold: cut points, smoothing, calibration, the weights of the mix, and whether the mix or which structure is taken;
+*single*: without the mix. Rivals are of scikit-learn: `CategoricalNB(alpha=1)`; one-hot `LogisticRegression(C=1)`;
 `HistGradientBoostingClassifier(l2_regularization=1, early_stopping=False)` with categorical columns marked as such.
 The first two take numeric columns in 5 bins of equal frequency, cut in each training fold; blanks are a level of their
 own. Settings: the default ones, with columns of numbers and of levels named as such; random halves (`--resamples`),
@@ -91,16 +93,18 @@ def _both(score: Figures) -> str:
 
 
 def _structure_table(figures: Mapping[str, Figures]) -> list[str]:
-    names = list(dict.fromkeys(name for one in figures.values() for name in one["bnx"]["structures"]))
+    every = {table: every_score(one) for table, one in figures.items()}
+    names = list(dict.fromkeys(name for scores in every.values() for name in scores))
     rows = []
     for table, one in figures.items():
         own = one["bnx"]
-        losses = {name: score["log_loss"] for name, score in own["structures"].items()}
+        losses = {name: score["log_loss"] for name, score in every[table].items()}
         least = min(losses.values())
         cells = [_marked(losses.get(name), least) for name in names]
         picks = ", ".join(f"{name} {count}" for name, count in own["picks"].items())
-        rows.append([table, *cells, f"{own['honest']['log_loss']:.4f}", own["recommended"], picks])
-    head = ["table", *names, "honest", "recommended", "picked in outer folds"]
+        both = (f"{own[which]['log_loss']:.4f}" for which in ("single", "honest"))
+        rows.append([table, *cells, *both, own["recommended"], picks])
+    head = ["table", *names, "single", "honest", "recommended structure", "taken in outer folds"]
     return ["## Every structure", "", "Log loss; the least in bold.", "", *_table(head, rows)]
 
 
@@ -156,8 +160,26 @@ def _ways(figures: Mapping[str, Figures]) -> list[str]:
                 chosen["smoothing"],
                 f"{chosen['temperature']:.2f}",
                 f"{naive['temperature']:.2f}",
+                _mix_words(own["mix"]),
                 ", ".join(own["left_out"]),
             ]
         )
-    head = ["table", "recommended", "edges", "smoothing", "temperature", "temperature of naive", "columns left out"]
+    head = [
+        "table",
+        "recommended",
+        "edges",
+        "smoothing",
+        "temperature",
+        "temperature of naive",
+        "mix",
+        "columns left out",
+    ]
     return ["## What was settled on from all rows", "", *_table(head, rows)]
+
+
+def _mix_words(mix: Figures | None) -> str:
+    """Say what is mixed, in brackets if it is not offered."""
+    if not mix:
+        return ""
+    words = mix_words(list(mix["weights"]), list(mix["weights"].values()))
+    return words if mix["offered"] else f"({words})"

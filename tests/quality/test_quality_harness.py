@@ -108,7 +108,8 @@ def test_nothing_has_seen_the_row_that_is_scored(tmp_path: Path) -> None:
     own = before.folds == 2
     assert (own == part).all()
     assert (before.honest[own] == after.honest[own]).all()
-    for name in STRUCTURES:
+    assert (before.single[own] == after.single[own]).all()
+    for name in (*STRUCTURES, "mix"):
         assert (before.p[name][own] == after.p[name][own]).all()
         assert (before.p[name][~own] != after.p[name][~own]).any()
 
@@ -126,6 +127,11 @@ def test_a_score_that_predictions_do_not_give_is_refused() -> None:
     advice = dataclasses.replace(compared().recommendation, honest=wrong)
     with pytest.raises(DisagreementError, match="honest log loss is reported as"):
         read_rows(dataclasses.replace(compared(), recommendation=advice))
+    mix = compared().mix
+    assert mix is not None
+    wrong = dataclasses.replace(mix.honest, log_loss=mix.honest.log_loss + 1e-6)
+    with pytest.raises(DisagreementError, match="honest log loss is reported as"):
+        read_rows(dataclasses.replace(compared(), mix=dataclasses.replace(mix, honest=wrong)))
 
 
 def test_rivals_are_measured_again_only_on_other_rows_or_folds(monkeypatch: pytest.MonkeyPatch) -> None:
@@ -161,6 +167,8 @@ def figures_of(honest: float, naive: float, rival: float, **more: float) -> dict
         "recommended": "tan",
         "picks": {"naive": 4, "tan": 6},
         "honest": score(honest, **more) | {"calibration_if_perfect": 0.008},
+        "single": score(honest * 1.1),
+        "mix": score(honest) | {"offered": True, "weights": {"tan": 0.75, "naive": 0.25}},
         "against_naive": {"difference": honest - naive, "error": 0.01},
         "structures": {
             name: score(loss) | {"edges": 1, "smoothing": "backoff:2", "temperature": 0.6}
@@ -181,6 +189,9 @@ def test_requirements_by_hand() -> None:
     against = found["log loss to CategoricalNB, geometric mean"]
     assert against.measured == "0.707, median 0.750"  # ratios .5 and 1
     assert [against.met, found["log loss to gradient boosting, geometric mean"].met] == [False, True]
+    mixed = [one for text, one in found.items() if text.startswith("log loss with the mix")]
+    assert [one.measured for one in mixed] == ["0.912", "0.913"]
+    assert all(one.met for one in mixed)
     assert found["log loss on monk2"].met
     assert "log loss on tic_tac_toe" not in found
     naive = [one for text, one in found.items() if text.startswith("tables worse than naive")]
@@ -204,7 +215,8 @@ def test_the_page_shows_every_table() -> None:
     assert "## What is required (2 tables)" in text
     assert "| monk2 | 0.500 | 0.500 | 0.500 |" in text
     assert "| **geometric mean** | **0.707** | **0.707** | **0.707** |" in text
-    assert "| iris | **0.9000** | 0.9900 | 0.9900 | tan | naive 4, tan 6 |" in text
+    assert "| iris | **0.9000** | 0.9900 | 0.9900 | 1.0890 | 0.9900 | tan | naive 4, tan 6 |" in text
+    assert "| .75 tan + .25 naive | veil |" in text
     assert all(len(line) <= 120 or line.startswith("|") for line in text.splitlines())
 
 
