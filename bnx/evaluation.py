@@ -17,6 +17,7 @@ from bnx.parameters import candidates
 from bnx.recipe import Recipe
 from bnx.sampling import Sample, sample_for_choices
 from bnx.scoring import Terms, terms_of
+from bnx.sharpening import sharpened
 from bnx.trainings import held_sets, make_trainings, mask_without
 
 __all__ = ["Evaluation", "MixedPredictor", "Predictor", "evaluate", "predict"]
@@ -48,10 +49,12 @@ class MixedPredictor:
 
     members: tuple[Predictor, ...]
     weights: tuple[float, ...]
+    sharpness: float
 
     def probabilities(self, first: int, last: int) -> np.ndarray:
         """Predict rows ``first:last`` of the engine, (last - first, C)."""
-        return mixed([member.probabilities(first, last) for member in self.members], self.weights)
+        p = mixed([member.probabilities(first, last) for member in self.members], self.weights)
+        return sharpened(p, self.sharpness)
 
 
 @dataclass(frozen=True)
@@ -100,7 +103,7 @@ class Evaluation:
         if mix is None or number < self.structures:
             return self.predictor(fold, number)
         members = tuple(self.predictor(fold, s) for s in mix.members)
-        return MixedPredictor(members, tuple(mix.members.values()))
+        return MixedPredictor(members, tuple(mix.members.values()), mix.sharpness)
 
 
 def bins_to_try(schema: Schema, bins: str) -> tuple[str, ...]:

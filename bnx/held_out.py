@@ -87,4 +87,4 @@ def _scored_on_it(classifiers: Sequence[Classifier], mix: JudgedMix | None) -> l
     if mix is None:
         return list(classifiers)
     members = tuple(classifiers[s] for s in mix.members)
-    return [*classifiers, MixedClassifier(members, tuple(mix.members.values()))]
+    return [*classifiers, MixedClassifier(members, tuple(mix.members.values()), mix.sharpness)]

@@ -24,6 +24,7 @@ def mix_entry(comparison: Comparison) -> dict[str, Any] | None:
     entry = {
         "words": mix_words(members, list(mix.members.values())),
         "members": [{"name": names[s], "weight": weight} for s, weight in mix.members.items()],
+        "sharpness": mix.sharpness,
         "offered": mix.offered,
         "reason": mix_reason(mix, names, names[comparison.recommendation.recommended]),
         **score_entry(mix.score, levels),
@@ -50,10 +51,10 @@ def mix_document(comparison: Comparison, structures: Sequence[Mapping[str, Any]]
     mix, entry = comparison.mix, mix_entry(comparison)
     if mix is None or entry is None:
         raise ValueError("there is no mix to describe")
-    given = {"words", "members", "by_fold", "honest_if_allowed", "offered", "reason"}
+    given = {"words", "members", "sharpness", "by_fold", "honest_if_allowed", "offered", "reason"}
     document: dict[str, Any] = finite(
         {
-            **mixed_document([structures[s] for s in mix.members], list(mix.members.values())),
+            **mixed_document([structures[s] for s in mix.members], list(mix.members.values()), mix.sharpness),
             "scores": {key: value for key, value in entry.items() if key not in given},
             "offered": entry["offered"],
             "reason": entry["reason"],

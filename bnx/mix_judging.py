@@ -20,13 +20,15 @@ __all__ = ["JudgedMix", "judge_mix"]
 class JudgedMix:
     """The mix of structures, judged.
 
-    ``members``: weights from all rows, by number of the structure, largest first; ``score``: everything fitted anew in
-    every outer fold; ``against``: the baseline; ``apart``: its log losses less those of the structure picked inside
-    each outer fold, bits, and the chance that it is ``better``; ``picks``, ``honest``: what is taken inside each outer
-    fold where the mix may be, and how that scores on rows that it never saw.
+    ``members``: weights from all rows, by number of the structure, largest first, with the ``sharpness`` of what they
+    give; ``score``: everything fitted anew in every outer fold; ``against``: the baseline; ``apart``: its log losses
+    less those of the structure picked inside each outer fold, bits, and the chance that it is ``better``; ``picks``,
+    ``honest``: what is taken inside each outer fold where the mix may be, and how that scores on rows that it never
+    saw.
     """
 
     members: dict[int, float]
+    sharpness: float
     score: StructureScore
     against: Against | None
     apart: Difference | None
@@ -61,6 +63,7 @@ def judge_mix(
     differences = score.fold_losses - single
     return JudgedMix(
         members,
+        found.sharpness,
         score,
         against(results, baseline, folds)[-1],
         corrected_t(differences, folds) if np.isfinite(differences).all() else None,

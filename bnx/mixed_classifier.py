@@ -8,17 +8,23 @@ import numpy as np
 from bnx.classifier import Classifier
 from bnx.domains import Domain, codes_of, together
 from bnx.mixing import mixed
-from bnx.rebasing import rebased
+from bnx.rebasing import check_known
+from bnx.sharpening import sharpened
 
 __all__ = ["MixedClassifier", "mix_words"]
 
 
 @dataclass(frozen=True)
 class MixedClassifier:
-    """Classifiers of the same attributes and class, and their ``weights``, which sum to 1."""
+    """Classifiers of the same class, their ``weights``, which sum to 1, and the ``sharpness`` of what they give.
+
+    ``other_prior`` (C,): the class prior that stands in the place of the training shares, if any does.
+    """
 
     members: tuple[Classifier, ...]
     weights: tuple[float, ...]
+    sharpness: float
+    other_prior: np.ndarray | None = None
 
     @property
     def domains(self) -> tuple[Domain, ...]:
@@ -35,27 +41,29 @@ class MixedClassifier:
         """Training rows of each class, (C,)."""
         return self.members[0].class_counts
 
-    @property
-    def other_prior(self) -> np.ndarray | None:
-        """The class prior (C,) that stands in the place of the training shares, if any does."""
-        return self.members[0].other_prior
-
     def rebased(self, prior: np.ndarray) -> "MixedClassifier":
-        """Put another class prior (C,) in the place of the training shares of every member, as their weights sum to 1.
+        """Put another class prior (C,) in the place of the training shares.
 
         Raises:
             SettingError: the training rows of a class are none, so nothing is known of it.
         """
-        return replace(self, members=tuple(rebased(member, prior) for member in self.members))
+        check_known(self.target.levels, self.class_counts)
+        return replace(self, other_prior=prior)
 
     def classified(self, codes: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """Class probabilities (N, C) of records with codes (n, N), -1 for what was never seen, and which are rough.
 
         A row is rough (N,) if what it lacks could be summed out only approximately in any member.
+
+        Source: Saerens, Latinne & Decaestecker 2002 (another prior).
         """
         domains = self.domains
         found = [member.classified(codes_of(member.domains, codes, domains)) for member in self.members]
-        return mixed([p for p, _ in found], self.weights), np.any([rough for _, rough in found], axis=0)
+        p = sharpened(mixed([p for p, _ in found], self.weights), self.sharpness)
+        if self.other_prior is not None:
+            p = p * (self.other_prior / (self.class_counts / self.class_counts.sum()))
+            p /= p.sum(axis=1, keepdims=True)
+        return p, np.any([rough for _, rough in found], axis=0)
 
     def probabilities(self, codes: np.ndarray) -> np.ndarray:
         """Class probabilities (N, C) of records with codes (n, N), -1 for what was never seen."""

@@ -6,6 +6,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from bnx.picking import chances_of
+from bnx.sharpening import fit_sharpness, sharpened
 from bnx.simplex import least_on_simplex
 from bnx.structure import Structure
 
@@ -26,11 +27,13 @@ _TINIEST = 2.2250738585072014e-308  # the smallest normal number
 class Mix:
     """What a training set mixes.
 
-    ``weights`` (structures,), none below 0, sum 1; ``losses`` (inner folds,): mean log loss in bits of each, mixed by
-    weights fitted without it; ``taken``: whether the mix is taken there instead of the single structure.
+    ``weights`` (structures,), none below 0, sum 1; ``sharpness``: of what they give; ``losses`` (inner folds,): mean
+    log loss in bits of each, mixed by weights fitted without it; ``taken``: whether the mix is taken there instead of
+    the single structure.
     """
 
     weights: np.ndarray
+    sharpness: float
     losses: np.ndarray
     taken: bool
 
@@ -120,13 +123,14 @@ def fit_mix(
     whole[list(members)] = np.where(point >= _LEAST, point, 0.0)
     whole /= whole.sum()
     if whole[single] == 1.0:
-        return Mix(whole, single_losses, False)
+        return Mix(whole, 0.0, single_losses, False)
+    sharpness = fit_sharpness(mixed(posteriors, whole[list(members)].tolist()), truth, weights)
     losses = np.zeros(len(sizes))
     for k, fold in enumerate(filled.tolist()):
         without = replace(rows, towards=_falling(np.delete(nats, k, axis=1).sum(axis=1) + handicap))
-        losses[fold] = _loss_without(without, point, sums, k, int(sizes[fold]))
+        losses[fold] = _loss_without(without, point, sums, k, truth[starts[fold] : starts[fold + 1]], sharpness)
     least = _LEVEL if structures[single].edges else _AHEAD
-    return Mix(whole, losses, chances_of(losses, single_losses, len(sizes), 0.0).better > least)
+    return Mix(whole, sharpness, losses, chances_of(losses, single_losses, len(sizes), 0.0).better > least)
 
 
 def _nats(posteriors: Sequence[np.ndarray], truth: np.ndarray, weights: np.ndarray, starts: np.ndarray) -> np.ndarray:
@@ -223,12 +227,13 @@ def _powers(ratios: np.ndarray, point: np.ndarray) -> np.ndarray:
     return power
 
 
-def _loss_without(rows: _Rows, point: np.ndarray, sums: _Sums, k: int, size: int) -> float:
-    """Take the mean loss of fold k of ``size`` rows in bits, mixed by weights that its rows had no part in."""
-    part = slice(int(rows.starts[k]), int(rows.starts[k]) + size)
+def _loss_without(rows: _Rows, point: np.ndarray, sums: _Sums, k: int, truth: np.ndarray, sharpness: float) -> float:
+    """Take the mean loss of fold k in bits, mixed by weights that its rows had no part in; truth: their classes."""
+    part = slice(int(rows.starts[k]), int(rows.starts[k]) + len(truth))
     gradient, hessian = (np.delete(of, k, axis=0).sum(axis=0) for of in (sums.gradient, sums.hessian))
-    power = _powers(rows.ratios[:, :, part], _stepped(rows, point, gradient, hessian))
-    top = power.max(axis=0)
-    nats = np.log(np.exp(power - top).sum(axis=0)) + top
+    power = _powers(rows.ratios[:, :, part], _stepped(rows, point, gradient, hessian)).T
+    p = np.exp(power - power.max(axis=1, keepdims=True))
+    p = sharpened(p / p.sum(axis=1, keepdims=True), sharpness)
+    nats = -np.log(np.maximum(p[np.arange(len(truth)), truth], _TINIEST))
     mean = (rows.weights[part] * nats).sum() / max(rows.weights[part].sum(), 1e-300)
     return float(mean / np.log(2))

@@ -10,7 +10,7 @@ from bnx.classifier import Classifier
 from bnx.errors import SettingError
 from bnx.text import nearest, quoted
 
-__all__ = ["parse_prior", "rebased"]
+__all__ = ["check_known", "parse_prior", "rebased"]
 
 _TOLERANCE = 1e-6  # of the sum of shares that were typed
 
@@ -79,9 +79,18 @@ def rebased(classifier: Classifier, prior: np.ndarray) -> Classifier:
 
     Source: Saerens, Latinne & Decaestecker 2002, equation 2.4 (from memory of its number).
     """
-    empty = [level for level, rows in zip(classifier.target.levels, classifier.class_counts, strict=True) if not rows]
+    check_known(classifier.target.levels, classifier.class_counts)
+    return replace(classifier, other_prior=prior, calibration=replace(classifier.calibration, shares=prior))
+
+
+def check_known(levels: Sequence[str], class_counts: np.ndarray) -> None:
+    """Refuse classes that training held no record of.
+
+    Raises:
+        SettingError: there is one.
+    """
+    empty = [level for level, rows in zip(levels, class_counts, strict=True) if not rows]
     if empty:
         raise SettingError(
             f"--prior: training held no record of {quoted(empty)}; nothing is known of it, so drop --prior"
         )
-    return replace(classifier, other_prior=prior, calibration=replace(classifier.calibration, shares=prior))

@@ -60,14 +60,22 @@ def test_an_offered_mix_is_told_and_written() -> None:
 def test_a_mix_classifies_as_its_members_say(tmp_path: Path) -> None:
     table, out = str(results() / "table.csv"), tmp_path / "p.csv"
     assert call("classify", str(results() / "out/mix.json"), table, "-o", str(out)).code == 0
-    power = 0.0
-    for one in read_mix(str(results() / "out/mix.json"))["members"]:
+    power, mix = 0.0, read_mix(str(results() / "out/mix.json"))
+    for one in mix["members"]:
         own = tmp_path / f"{one['name']}.csv"
         call("classify", str(results() / f"out/{one['name']}.json"), table, "-o", str(own))
         power = power + one["weight"] * np.log(pd.read_csv(own)[["p:p", "p:q"]].to_numpy())
     p = np.exp(power)
     p /= p.sum(axis=1, keepdims=True)
+    p /= (1 - p) ** mix["sharpness"]
+    p /= p.sum(axis=1, keepdims=True)
     assert pd.read_csv(out)[["p:p", "p:q"]].to_numpy() == pytest.approx(p, abs=1e-12)
+    moved = tmp_path / "moved.csv"
+    call("classify", str(results() / "out/mix.json"), table, "-o", str(moved), "--prior", "p=.2,q=.8")
+    counts = mix["members"][0]["structure"]["class"]["rows"]
+    p *= np.array([0.2, 0.8]) / counts
+    p /= p.sum(axis=1, keepdims=True)
+    assert pd.read_csv(moved)[["p:p", "p:q"]].to_numpy() == pytest.approx(p, abs=1e-12)
 
 
 def test_a_mix_is_shown_and_drawn_member_by_member(tmp_path: Path) -> None:

@@ -13,8 +13,8 @@ PACKAGE = ROOT / "bnx"
 FLOORS = (
     "bnx errors text palette plain unfinished",
     "kernels calibrating simplex counts tiles discretising domains dot_text embedding files storing cells "
-    "folds layers losses branching multiplicity paired picture structure picking mixing svg effects ordered loglinear "
-    "fibre homogeneity masked unobserved summing_out weighed_losses",
+    "folds layers losses branching multiplicity paired picture structure picking sharpening mixing svg effects ordered "
+    "loglinear fibre homogeneity masked unobserved summing_out weighed_losses",
     "tables views blocks columns columnar delimited malformed repeating reading weighing levelling screening "
     "duplicates level_order",
     "coarsening gathering passes coding encoding pair_counting engines",

@@ -25,6 +25,7 @@ from bnx.mixed_classifier import MixedClassifier, mix_words
 from bnx.mixing import Mix, fit_mix, members_of, mixed
 from bnx.picking import chances_of
 from bnx.recipe import Recipe
+from bnx.sharpening import sharpened
 from bnx.simplex import least_on_simplex
 from bnx.structure import Structure
 
@@ -118,7 +119,8 @@ def test_identical_members_share_their_weight() -> None:
     assert three[1] == pytest.approx(three[2], abs=1e-6)
     alone = fitted([p[0]] * 3, truth)
     assert alone.weights == pytest.approx(drawn_to([p[0]] * 3, truth, np.ones(200)), abs=1e-6)
-    assert alone.losses == pytest.approx(fold_losses(p[0], truth), abs=1e-9), "the same posterior, whatever the weights"
+    same = fold_losses(sharpened(p[0], alone.sharpness), truth)
+    assert alone.losses == pytest.approx(same, abs=1e-9), "the same posterior, whatever the weights"
 
 
 def test_structures_far_behind_leave_the_mix_and_edges_need_a_lead() -> None:
@@ -144,7 +146,7 @@ def test_losses_of_a_fold_come_from_weights_without_it() -> None:
         ).x
         part = slice(first, last)
         assert found.losses[k] == pytest.approx(
-            log_losses(mixed([one[part] for one in p], own), truth[part]).mean(), abs=2e-3
+            log_losses(sharpened(mixed([one[part] for one in p], own), found.sharpness), truth[part]).mean(), abs=2e-3
         ), "one step of Newton's is within a few thousandths of a bit of the whole way"
 
 
@@ -215,7 +217,7 @@ def test_a_run_scores_its_mix_as_rows_say() -> None:
     for k in range(5):
         mix = one.choices[(k,)].mix
         assert mix is not None
-        own = mixed([predicted(found, s) for s in range(3)], mix.weights.tolist())
+        own = sharpened(mixed([predicted(found, s) for s in range(3)], mix.weights.tolist()), mix.sharpness)
         p[fold == k] = own[fold == k]
     assert predicted(found, 3) == pytest.approx(p, abs=1e-14)
     expected = scores(p, truth, 3)
@@ -298,9 +300,10 @@ def test_the_file_of_a_mix_classifies_as_the_run_does() -> None:
     schema = json.loads((DOCS / "mix.schema.json").read_text(encoding="utf-8"))
     assert [error.message for error in Draft202012Validator(schema).iter_errors(document)] == []
     codes = np.random.default_rng(2).integers(-1, 3, (5, 100))
-    own = MixedClassifier(tuple(found.classifiers[s] for s in found.mix.members), tuple(found.mix.members.values()))
+    chosen, weights = found.mix.members, tuple(found.mix.members.values())
+    own = MixedClassifier(tuple(found.classifiers[s] for s in chosen), weights, found.mix.sharpness)
     assert mixed_of(document, "mix.json").probabilities(codes).tolist() == own.probabilities(codes).tolist()
-    by_hand = mixed([found.classifiers[s].probabilities(codes) for s in found.mix.members], own.weights)
+    by_hand = sharpened(mixed([found.classifiers[s].probabilities(codes) for s in chosen], weights), own.sharpness)
     assert own.probabilities(codes).tolist() == by_hand.tolist()
 
 

@@ -25,17 +25,17 @@ def test_a_mix_gives_each_member_its_own_attributes() -> None:
     found = run()
     trimmed, every = found.classifiers[2], found.classifiers[1]
     assert len(trimmed.domains) < len(every.domains)
-    mix = MixedClassifier((trimmed, every), (0.25, 0.75))
+    mix = MixedClassifier((trimmed, every), (0.25, 0.75), 0.0)
     assert {one.name for one in mix.domains} == set(found.names)
     rng = np.random.default_rng(1)
     codes = np.array([rng.integers(0, len(one), 40) for one in mix.domains])
     own = [one.probabilities(codes_of(one.domains, codes, mix.domains)) for one in (trimmed, every)]
     expected = own[0] ** 0.25 * own[1] ** 0.75
     assert mix.probabilities(codes) == pytest.approx(expected / expected.sum(axis=1, keepdims=True), abs=1e-12)
-    alone = MixedClassifier((trimmed,), (1.0,))
+    alone = MixedClassifier((trimmed,), (1.0,), 0.0)
     assert alone.domains == trimmed.domains
     members = [structure_document(found, s) for s in (2, 1)]
-    read = mixed_of(mixed_document(members, (0.25, 0.75)), "mix.json")
+    read = mixed_of(mixed_document(members, (0.25, 0.75), 0.0), "mix.json")
     assert np.array_equal(read.probabilities(codes), mix.probabilities(codes))
 
 

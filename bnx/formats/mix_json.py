@@ -14,8 +14,8 @@ __all__ = ["MIX_FORMAT", "is_mix", "members_of_mix", "mixed_document", "mixed_of
 MIX_FORMAT = "bnx-mix/1"
 
 
-def mixed_document(members: Sequence[Mapping[str, Any]], weights: Sequence[float]) -> dict[str, Any]:
-    """Put structure documents together with their weights, which sum to 1."""
+def mixed_document(members: Sequence[Mapping[str, Any]], weights: Sequence[float], sharpness: float) -> dict[str, Any]:
+    """Put structure documents together with their weights, which sum to 1, and the sharpness of what they give."""
     first = members[0]["class"]
     return {
         "format": MIX_FORMAT,
@@ -26,6 +26,7 @@ def mixed_document(members: Sequence[Mapping[str, Any]], weights: Sequence[float
             {"name": member["name"], "weight": weight, "structure": member}
             for member, weight in zip(members, weights, strict=True)
         ],
+        "sharpness": sharpness,
     }
 
 
@@ -82,4 +83,11 @@ def mixed_of(document: Mapping[str, Any], path: str) -> MixedClassifier:
     alike = all(known[domain.name] == domain for one in members for domain in one.domains)
     if not alike or any(one.target != members[0].target for one in members):
         raise FormatError(f"{path}: its members differ in attributes or class; write it anew with bnx learn")
-    return MixedClassifier(members, tuple(weight for _, weight in found))
+    return MixedClassifier(members, tuple(weight for _, weight in found), _sharpness(document, path))
+
+
+def _sharpness(document: Mapping[str, Any], path: str) -> float:
+    found = document.get("sharpness")
+    if isinstance(found, bool) or not isinstance(found, int | float) or not abs(found) <= 1:
+        raise FormatError(f"{path}: the sharpness is {found}, not a number from -1 to 1; write it anew with bnx learn")
+    return float(found)

@@ -1,0 +1,37 @@
+"""How sure probabilities are made: against a general optimiser and the formula."""
+
+import numpy as np
+import pytest
+from scipy.optimize import minimize_scalar
+from scipy.special import softmax
+
+from bnx.sharpening import fit_sharpness, sharpened
+
+
+@pytest.mark.parametrize("power", [0.6, 1.0, 1.7])
+def test_sharpness_is_that_of_a_general_optimiser(power: float) -> None:
+    random = np.random.default_rng(4)
+    told = softmax(random.normal(0, 1.5, (2_000, 3)), axis=1)
+    truth = np.array([random.choice(3, p=row) for row in softmax(power * np.log(told), axis=1)])
+    weights = random.uniform(0.5, 2, 2_000)
+    every = np.arange(2_000)
+
+    def loss(sharpness: float) -> float:
+        p = told / (1 - told) ** sharpness
+        return float(-(weights * np.log(p[every, truth] / p.sum(axis=1))).sum() + 20 * sharpness**2)
+
+    best = minimize_scalar(loss, bounds=(-1, 1), method="bounded", options={"xatol": 1e-10}).x
+    found = fit_sharpness(told, truth, weights)
+    assert found == pytest.approx(best, abs=1e-6)
+    assert (found > 0.05) == (power > 1.5)
+    p = told / (1 - told) ** found
+    assert sharpened(told, found) == pytest.approx(p / p.sum(axis=1, keepdims=True), abs=1e-14)
+    assert sharpened(told, 0.0) is told
+
+
+def test_sharpening_keeps_certainty_finite_and_two_classes_alike() -> None:
+    p = sharpened(np.array([[1.0, 0.0], [0.5, 0.5], [0.9, 0.1]]), 0.5)
+    assert np.isfinite(p).all()
+    assert p.sum(axis=1) == pytest.approx(1)
+    assert p[1] == pytest.approx([0.5, 0.5])
+    assert np.log(p[2, 0] / p[2, 1]) == pytest.approx(1.5 * np.log(9)), "of two classes it is a power"
