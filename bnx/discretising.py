@@ -17,17 +17,20 @@ TIE = 1e-12  # bits; entropies nearer than this are equal, and the lowest cut wi
 
 
 def parse_bins(text: str) -> tuple[str, int]:
-    """Read the setting ``bins``: ``auto``, ``mdl``, ``frequency:K`` or ``width:K``; K is 0 for the first two.
+    """Read the setting ``bins``: ``auto``, ``mdl``, ``frequency:K``, ``width:K`` or ``mdl+frequency:K``.
+
+    Returns the kind and K, which is 0 for the first two.
 
     Raises:
         SettingError: the text is none of these, or K is not in 2 to 255.
     """
     if text in {"auto", "mdl"}:
         return text, 0
-    found = re.fullmatch(r"(frequency|width):([0-9]+)", text)
+    found = re.fullmatch(r"(frequency|width|mdl\+frequency):([0-9]+)", text)
     if not found or not 2 <= int(found[2]) <= 255:
         raise SettingError(
-            f"--bins: {text!r} cannot be used; give auto, mdl, frequency:K or width:K with K from 2 to 255"
+            f"--bins: {text!r} cannot be used; give auto, mdl, frequency:K, width:K or mdl+frequency:K with K from "
+            "2 to 255"
         )
     return found[1], int(found[2])
 

@@ -172,7 +172,13 @@ def test_a_cut_keeps_its_neighbours_apart(values):
 
 @pytest.mark.parametrize(
     ("text", "expected"),
-    [("auto", ("auto", 0)), ("mdl", ("mdl", 0)), ("frequency:5", ("frequency", 5)), ("width:255", ("width", 255))],
+    [
+        ("auto", ("auto", 0)),
+        ("mdl", ("mdl", 0)),
+        ("frequency:5", ("frequency", 5)),
+        ("width:255", ("width", 255)),
+        ("mdl+frequency:5", ("mdl+frequency", 5)),
+    ],
 )
 def test_parse_bins(text, expected):
     assert parse_bins(text) == expected
@@ -183,7 +189,7 @@ def test_parse_bins_refuses(text):
     with pytest.raises(SettingError) as caught:
         parse_bins(text)
     assert str(caught.value) == (
-        f"--bins: {text!r} cannot be used; give auto, mdl, frequency:K or width:K with K from 2 to 255"
+        f"--bins: {text!r} cannot be used; give auto, mdl, frequency:K, width:K or mdl+frequency:K with K from 2 to 255"
     )
 
 
