@@ -73,7 +73,9 @@ def test_no_row_of_a_fold_has_a_say_in_the_cut_points_that_predict_it():
 
     def settled(held: tuple[int, ...]) -> list[tuple[object, ...]]:
         choices = [one.choices[held] for one in (before, after)]
-        return [(one.trial.bins, one.trial.learned[held].training.view.domains, str(one.calibrations)) for one in choices]
+        return [
+            (one.trial.bins, one.trial.learned[held].training.view.domains, str(one.calibrations)) for one in choices
+        ]
 
     untouched, touched = settled((1,)), settled((0,))
     assert untouched[0][0] == FILLED

@@ -166,6 +166,8 @@ def test_a_spike_does_not_cost_the_other_values_their_bins():
 def test_a_cut_keeps_its_neighbours_apart(values):
     values = np.array(sorted(values)) + 0.0
     values = np.unique(values)
+    with np.errstate(over="ignore"):
+        values = values[np.append(True, np.diff(values) > 1e-15 * np.abs(values[:-1]))]
     cuts = fine_cuts(values, np.ones(len(values), dtype=int), 255)
     assert list(np.searchsorted(cuts, values, side="left")) == list(range(len(values)))
 
