@@ -25,7 +25,7 @@ def cut_notes(evaluation: Evaluation, schema: Schema, bins: str) -> list[str]:
 def _fate(chosen: str, bins: str, one: bool) -> str:
     """Say what becomes of columns without a cut point where ``bins`` is asked for and ``chosen`` is taken."""
     it, kept = ("it", "it is kept") if one else ("them", "they are kept")
-    silent = "it has one level and says nothing" if one else "each has one level and they say nothing"
+    silent = f"{'all its numbers' if one else 'the numbers of each'} are one level and say nothing"
     would = f"--bins {FILLED} would cut {it}"
     _, k = parse_bins(FILLED if chosen == "mdl" else chosen)
     equal = f"{k} bins of equal frequency"

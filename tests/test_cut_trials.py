@@ -88,8 +88,8 @@ def test_no_row_of_a_fold_has_a_say_in_the_cut_points_that_predict_it():
     [
         (
             *(0.0, 0.9, "auto", "mdl"),
-            "ash has no MDL cut point and 5 bins of equal frequency did not clearly lower the held-out loss, so it has "
-            f"one level and says nothing; --bins {FILLED} would cut it",
+            "ash has no MDL cut point and 5 bins of equal frequency did not clearly lower the held-out loss, so all "
+            f"its numbers are one level and say nothing; --bins {FILLED} would cut it",
         ),
         (
             *(0.18, 0.0, "auto", "frequency:5"),
@@ -98,12 +98,12 @@ def test_no_row_of_a_fold_has_a_say_in_the_cut_points_that_predict_it():
         ),
         (
             *(0.18, 0.9, "mdl", "mdl"),
-            f"ash has no MDL cut point, so it has one level and says nothing; --bins {FILLED} would cut it",
+            f"ash has no MDL cut point, so all its numbers are one level and say nothing; --bins {FILLED} would cut it",
         ),
         (
             *(0.18, 0.0, "mdl", "mdl"),
-            f"ash, heat have no MDL cut point, so each has one level and they say nothing; --bins {FILLED} would cut "
-            "them",
+            f"ash, heat have no MDL cut point, so the numbers of each are one level and say nothing; --bins {FILLED} "
+            "would cut them",
         ),
         (
             0.18,
