@@ -12,6 +12,7 @@ __all__ = [
     "array_numbers",
     "array_texts",
     "distinct_texts",
+    "infinite_numbers",
     "part_numbers",
     "plain_numbers",
     "split",
@@ -20,6 +21,7 @@ __all__ = [
 
 NUMBER = r"^[+-]?(\d+(\.\d*)?|\.\d+)([eE][+-]?\d+)?$"
 ZERO_PADDED = r"^[+-]?0\d+$"
+INFINITE = r"(?i)^[+-]?inf(inity)?$"
 
 
 def typed_number(kind: pa.DataType) -> bool:
@@ -97,6 +99,14 @@ def plain_numbers(texts: Sequence[str]) -> np.ndarray | None:
 def part_numbers(texts: Sequence[str]) -> np.ndarray:
     """Tell which texts are plain finite numbers (zero padding allowed), bool."""
     return _numbers(pc.utf8_trim_whitespace(pa.array(texts, pa.string())), padded=True)[1]
+
+
+def infinite_numbers(texts: Sequence[str]) -> np.ndarray:
+    """Tell which texts are numbers, but infinite ones: in words, or too large for float64; bool."""
+    trimmed = pc.utf8_trim_whitespace(pa.array(texts, pa.string()))
+    words = pc.match_substring_regex(trimmed, INFINITE).to_numpy(zero_copy_only=False)
+    digits = pc.match_substring_regex(trimmed, NUMBER).to_numpy(zero_copy_only=False)
+    return np.asarray(words | (digits & ~_numbers(trimmed, padded=True)[1]), np.bool_)
 
 
 def _numbers(trimmed: pa.Array, padded: bool) -> tuple[np.ndarray, np.ndarray]:

@@ -17,9 +17,10 @@ from bnx.scoring import Counted, Terms, families_of, terms_of
 from bnx.structure import Structure
 from bnx.tabulating import tabulate
 
-__all__ = ["Choice", "Trial", "choose", "inner_losses", "make_trial", "mean_loss"]
+__all__ = ["Choice", "Losses", "Trial", "choose", "inner_losses", "make_trial", "mean_loss"]
 
 Held = tuple[int, ...]
+Losses = Mapping[tuple[Held, int], np.ndarray]  # of smoothings, see ``inner_losses``
 
 _TEMPERATURES = 3  # 1, 3/4 and 1/2
 _SMOOTHING_LEAD = 2.0  # nats in all by which a smoothing must be ahead of the first one
@@ -132,7 +133,7 @@ def choose(
     held: Held,
     folds: int,
     trials: Sequence[Trial],
-    losses: Sequence[Mapping[tuple[Held, int], np.ndarray]],
+    losses: Sequence[Losses],
     options: Sequence[Smoothing],
     sample: Sample,
     calibrate: bool,

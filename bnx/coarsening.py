@@ -19,9 +19,10 @@ def coarsen(domain: Domain, counts: np.ndarray, bins: str, max_levels: int) -> C
     """Choose coarser levels from the training rows.
 
     ``counts`` (levels of ``domain``, C) int64 training rows per fine level and class; ``bins`` is ``mdl``,
-    ``frequency:K`` or ``width:K`` and rules numeric columns. A text column keeps its ``max_levels`` most frequent
-    levels (ties: in order of the domain) and pools the others. Every fine level gets a coarse one, also without
-    training rows; blank stays apart, and so do cells not observed.
+    ``frequency:K``, ``width:K`` or ``mdl+frequency:K`` and rules numeric columns (the last is ``mdl``, and
+    ``frequency:K`` where that makes no cut). A text column keeps its ``max_levels`` most frequent levels (ties: in
+    order of the domain) and pools the others. Every fine level gets a coarse one, also without training rows; blank
+    stays apart, and so do cells not observed.
 
     Raises:
         SettingError: ``bins`` does not name one way to cut.
@@ -52,13 +53,16 @@ def _cut(domain: Domain, counts: np.ndarray, bins: str) -> Coarsening:
 def _positions(cuts: np.ndarray, counts: np.ndarray, bins: str) -> np.ndarray:
     """Choose after which fine bins to cut."""
     kind, k = parse_bins(bins)
-    if kind == "mdl":
-        return mdl_cuts(counts)
+    if kind in {"mdl", "mdl+frequency"}:
+        found = mdl_cuts(counts)
+        return found if len(found) or kind == "mdl" else frequency_cuts(counts.sum(axis=1), k)
     if kind == "frequency":
         return frequency_cuts(counts.sum(axis=1), k)
     if kind == "width":
         return width_cuts(cuts, counts.sum(axis=1), k)
-    raise SettingError(f"--bins: {bins!r} cannot be used here; give one way to cut: mdl, frequency:K or width:K")
+    raise SettingError(
+        f"--bins: {bins!r} cannot be used here; give one way to cut: mdl, frequency:K, width:K or mdl+frequency:K"
+    )
 
 
 def _pool(domain: Domain, counts: np.ndarray, max_levels: int) -> Coarsening:

@@ -162,6 +162,9 @@ def _gathered(
     gathered = gather(source, {**wishes, **texts}, jobs, store)
     spoilt = dict.fromkeys((name for name, gatherer in gathered.items() if gatherer.spoilt), False)
     gathered |= gather(source, spoilt, jobs, store)
+    for name, wish in wishes.items():
+        if wish is None:
+            gathered[name].refuse_infinite()
     side = {name: gathered[name].finish_texts() for name in texts}
     columns = {name: gathered[name].finish() for name in wishes}
     classes = side.pop(target)

@@ -14,37 +14,39 @@ from bnx.errors import SettingError
 __all__ = ["fine_cuts", "frequency_cuts", "mdl_cuts", "ordered_cuts", "parse_bins", "width_cuts"]
 
 TIE = 1e-12  # bits; entropies nearer than this are equal, and the lowest cut wins on every machine
+_NOISE = 2.0**-50  # of a number: 4 to 8 units in its last place
+_HUGE = 1e300  # numbers beyond are not added up
+_STEPS = 1 << 16  # values looked at together
 
 
 def parse_bins(text: str) -> tuple[str, int]:
-    """Read the setting ``bins``: ``auto``, ``mdl``, ``frequency:K`` or ``width:K``; K is 0 for the first two.
+    """Read the setting ``bins``: ``auto``, ``mdl``, ``frequency:K``, ``width:K`` or ``mdl+frequency:K``.
+
+    Returns the kind and K, which is 0 for the first two.
 
     Raises:
         SettingError: the text is none of these, or K is not in 2 to 255.
     """
     if text in {"auto", "mdl"}:
         return text, 0
-    found = re.fullmatch(r"(frequency|width):([0-9]+)", text)
+    found = re.fullmatch(r"(frequency|width|mdl\+frequency):([0-9]+)", text)
     if not found or not 2 <= int(found[2]) <= 255:
         raise SettingError(
-            f"--bins: {text!r} cannot be used; give auto, mdl, frequency:K or width:K with K from 2 to 255"
+            f"--bins: {text!r} cannot be used; give auto, mdl, frequency:K, width:K or mdl+frequency:K with K from "
+            "2 to 255"
         )
     return found[1], int(found[2])
 
 
 @dataclass(frozen=True)
 class _Weighted:
-    """Distinct sorted values; ``totals`` (m + 1,): how many rows come before each, and all rows."""
+    """``totals`` (m + 1,): how many rows come before each of the distinct sorted values, and all rows."""
 
-    values: np.ndarray
     totals: np.ndarray
 
     @property
     def rows(self) -> int:
         return int(self.totals[-1])
-
-    def at(self, rows: np.ndarray) -> np.ndarray:
-        return np.asarray(self.values[np.searchsorted(self.totals, rows, side="right") - 1])
 
     def first(self, row: int) -> int:
         return int(self.totals[np.searchsorted(self.totals, row, side="right") - 1])
@@ -66,9 +68,6 @@ class _Ordered:
     def rows(self) -> int:
         return len(self.values)
 
-    def at(self, rows: np.ndarray) -> np.ndarray:
-        return np.asarray(self.values[rows])
-
     def first(self, row: int) -> int:
         return int(np.searchsorted(self.values, self.values[row], side="left")) if row < self.rows else self.rows
 
@@ -88,31 +87,66 @@ def fine_cuts(values: np.ndarray, weights: np.ndarray, limit: int) -> np.ndarray
     Up to ``limit`` values get a bin each. More values get bins as equal in rows as they allow: the smallest T is taken
     such that ``limit`` bins suffice when a bin holds at most T rows or a single value, so a value shared by many rows
     has a bin of its own and does not cost the others theirs; bins still free then halve the heaviest of several values.
+    Values that agree in about 15 digits, as .1 + .2 and .3 do, differ by rounding only and count as one.
     Returns cuts (bins - 1,), halfway between neighbours.
     """
+    firsts = np.delete(np.arange(len(values)), [first for first, _, _ in _join(values.copy())])
     totals = np.concatenate([[0], np.cumsum(weights, dtype=np.int64)])
-    return _cut(_Weighted(values, totals), len(values), limit)
+    starts = _starts(_Weighted(totals[np.append(firsts, len(values))]), len(firsts), limit)
+    place = np.searchsorted(totals, starts)
+    return _halfway(values[place - 1], values[place])
 
 
 def ordered_cuts(ordered: np.ndarray, distinct: int, limit: int) -> np.ndarray:
-    """Cut sorted values, one per row (N,), as ``fine_cuts`` does, without listing the ``distinct`` ones."""
-    return _cut(_Ordered(ordered), distinct, limit)
+    """Cut sorted values, one per row (N,), as ``fine_cuts`` does, without listing the ``distinct`` ones.
+
+    ``ordered`` is written to meanwhile, and is afterwards as it was.
+    """
+    joined = _join(ordered)
+    starts = _starts(_Ordered(ordered), distinct - len(joined), limit)
+    for first, stop, value in joined:
+        ordered[first:stop] = value
+    return _halfway(ordered[starts - 1], ordered[starts])
 
 
-def _cut(runs: _Runs, distinct: int, limit: int) -> np.ndarray:
-    """Choose the first row of every bin, and cut before it."""
+def _join(ordered: np.ndarray) -> list[tuple[int, int, float]]:
+    """Lower values that differ from the one before by rounding only to that one, in place.
+
+    Values are joined to the first of theirs, so that a chain of neighbours does not become one value. Returns the rows
+    changed, from where to where, and what they were.
+    """
+    steps = [np.zeros(0, np.int64)]
+    for start in range(0, len(ordered) - 1, _STEPS):
+        part = ordered[start : start + _STEPS + 1]
+        steps.append(start + np.flatnonzero((part[1:] > part[:-1]) & _alike(part[:-1], part[1:])))
+    joined = []
+    for before in np.concatenate(steps).tolist():
+        value = ordered[before + 1]
+        if _alike(ordered[before], value):
+            stop = int(np.searchsorted(ordered, value, side="right"))
+            ordered[before + 1 : stop] = ordered[before]
+            joined.append((before + 1, stop, float(value)))
+    return joined
+
+
+def _alike(low: np.ndarray, high: np.ndarray) -> np.ndarray:
+    """Tell which pairs of numbers differ by rounding only."""
+    with np.errstate(over="ignore"):
+        return np.asarray(high - low <= _NOISE * np.abs(low))
+
+
+def _starts(runs: _Runs, distinct: int, limit: int) -> np.ndarray:
+    """Choose the first row of every bin but the first."""
     if distinct <= limit:
-        starts = runs.inside(0, runs.rows)
-    else:
-        low, high = 1, runs.rows
-        while low < high:
-            middle = (low + high) // 2
-            if len(_filled(runs, middle, limit)) > limit:
-                low = middle + 1
-            else:
-                high = middle
-        starts = _halved(runs, [*_filled(runs, low, limit), runs.rows], limit)[1:-1]
-    return _halfway(runs.at(starts - 1), runs.at(starts))
+        return runs.inside(0, runs.rows)
+    low, high = 1, runs.rows
+    while low < high:
+        middle = (low + high) // 2
+        if len(_filled(runs, middle, limit)) > limit:
+            low = middle + 1
+        else:
+            high = middle
+    return _halved(runs, [*_filled(runs, low, limit), runs.rows], limit)[1:-1]
 
 
 def _filled(runs: _Runs, most: int, limit: int) -> list[int]:
@@ -144,8 +178,9 @@ def _halved(runs: _Runs, bounds: list[int], limit: int) -> np.ndarray:
 def _halfway(low: np.ndarray, high: np.ndarray) -> np.ndarray:
     """Cut halfway between neighbours; where no float lies between them, at the lower one."""
     middle = low / 2 + high / 2
-    simple = (low + high) / 2 if np.abs(high).max(initial=0) < 1e300 and np.abs(low).max(initial=0) < 1e300 else middle
-    return np.where((simple >= low) & (simple < high), simple, low)
+    huge = max(np.abs(high).max(initial=0), np.abs(low).max(initial=0)) > _HUGE
+    simple = middle if huge else (low + high) / 2
+    return np.where((simple >= low) & (simple < high), simple, low) + 0.0
 
 
 def mdl_cuts(counts: np.ndarray) -> np.ndarray:
@@ -242,6 +277,7 @@ def width_cuts(cuts: np.ndarray, counts: np.ndarray, k: int) -> np.ndarray:
     used = np.flatnonzero(counts)
     if len(used) < 2:
         return np.zeros(0, dtype=np.int64)
+    cuts = cuts / 8 if np.abs(cuts).max() > _HUGE else cuts
     outer = [2 * cuts[0] - cuts[1], 2 * cuts[-1] - cuts[-2]] if len(cuts) > 1 else [cuts[0] - 1, cuts[0] + 1]
     edges = np.concatenate([outer[:1], cuts, outer[1:]])
     middles = edges[:-1] / 2 + edges[1:] / 2

@@ -6,19 +6,20 @@ from dataclasses import dataclass
 import numpy as np
 
 from bnx.calibrating import Calibration, probabilities, without_evidence
-from bnx.choosing import Choice, choose, inner_losses, make_trial
+from bnx.choosing import Choice, choose
+from bnx.cut_trials import bins_to_try, try_cuts
 from bnx.domains import Schema
 from bnx.engines import LocalEngine
 from bnx.gating import Bounds
 from bnx.learners import Learner, singles
-from bnx.learning import Learned, learn
+from bnx.learning import Learned
 from bnx.mixing import mixed
 from bnx.parameters import candidates
 from bnx.recipe import Recipe
 from bnx.sampling import Sample, sample_for_choices
 from bnx.scoring import Terms, terms_of
 from bnx.sharpening import sharpened
-from bnx.trainings import held_sets, make_trainings, mask_without
+from bnx.trainings import held_sets, mask_without
 
 __all__ = ["Evaluation", "MixedPredictor", "Predictor", "evaluate", "predict"]
 
@@ -106,13 +107,6 @@ class Evaluation:
         return MixedPredictor(members, tuple(mix.members.values()), mix.sharpness)
 
 
-def bins_to_try(schema: Schema, bins: str) -> tuple[str, ...]:
-    """List the kinds of cut points to choose from; without numeric columns there is nothing to choose."""
-    if bins != "auto":
-        return (bins,)
-    return ("mdl", "frequency:5") if any(domain.numeric for domain in schema.attributes) else ("mdl",)
-
-
 def evaluate(
     engine: LocalEngine, schema: Schema, folds: int, learners: Sequence[Learner], bounds: Bounds, recipe: Recipe
 ) -> Evaluation:
@@ -121,20 +115,13 @@ def evaluate(
     engine: its blocks are ``folds`` runs of equal length.
     """
     options = candidates(recipe.smoothing)
-    kinds = bins_to_try(schema, recipe.bins)
     members, own = singles(learners, bounds)
-    choices_open = len(options) > 1 or len(kinds) > 1 or len(members) > len(own)
+    choices_open = len(options) > 1 or len(bins_to_try(schema, recipe.bins)) > 1 or len(members) > len(own)
     nested = choices_open or recipe.temperature or len(learners) > 1
     parts = engine.blocks // folds
     masks = {held: mask_without(held, folds, parts) for held in held_sets(folds, nested)}
     sample = sample_for_choices(engine, folds)
-    trials, losses = [], []
-    for kind in kinds:
-        trainings = make_trainings(engine, schema, masks, kind, recipe.max_levels)
-        trial = make_trial(engine, kind, learn(engine, trainings, members, bounds, recipe))
-        trials.append(trial)
-        if choices_open:
-            losses.append(inner_losses(engine, trial, sample, options, recipe.temperature))
+    trials, losses = try_cuts(engine, schema, masks, members, bounds, recipe, sample, choices_open)
     outer: list[tuple[int, ...]] = [(), *((fold,) for fold in range(folds))]
 
     def settle(held: tuple[int, ...]) -> Choice:

@@ -6,8 +6,16 @@ from dataclasses import dataclass
 import numpy as np
 import pyarrow as pa
 
-from bnx.blocks import array_numbers, distinct_texts, plain_numbers, split, typed_number
-from bnx.cells import Cells
+from bnx.blocks import (
+    array_numbers,
+    distinct_texts,
+    infinite_numbers,
+    part_numbers,
+    plain_numbers,
+    split,
+    typed_number,
+)
+from bnx.cells import Cells, stretches
 from bnx.columns import Column, NumberColumn, TextColumn
 from bnx.errors import DataError
 from bnx.storing import Store
@@ -79,6 +87,21 @@ class Gatherer:
         """Hand over a column that was gathered with ``as_numbers`` false."""
         return TextColumn(self.name, tuple(self._index), self._cells)
 
+    def refuse_infinite(self) -> None:
+        """Refuse a column that is text by type and would be numeric, were it not for infinite numbers.
+
+        Raises:
+            DataError: naming the first of them.
+        """
+        texts = list(self._index)
+        infinite = infinite_numbers(texts)
+        if self._typed or not infinite.any():
+            return
+        values = plain_numbers([text for text, one in zip(texts, infinite.tolist(), strict=True) if not one])
+        if values is not None and len(np.unique(values)) > FEW_NUMBERS:
+            plain = self._no_number(*self._first(infinite))
+            raise DataError(f"{plain}; --categorical {self.name} would take its values as levels")
+
     def _add_texts(self, array: pa.Array) -> None:
         dictionary, codes = split(array, self.name)
         if not dictionary.equals(self._known.dictionary):
@@ -117,11 +140,26 @@ class Gatherer:
         """
         values = plain_numbers(texts)
         if values is None and self._typed:
-            raise DataError(
-                f"the numeric column {self.name!r} holds an infinite number; "
-                "every cell of it must hold a finite number or be blank"
-            )
+            raise self._no_number(*self._first(~part_numbers(texts)))
         return values
+
+    def _first(self, marked: np.ndarray) -> tuple[int, str]:
+        """Find the first cell whose text is among those marked: its record, and the text."""
+        texts = list(self._index)
+        codes = np.flatnonzero(marked) + 1
+        for rows in stretches(len(self._cells)):
+            cells = self._cells.part(rows)
+            found = np.flatnonzero(np.isin(cells, codes))
+            if len(found):
+                return rows.start + int(found[0]), texts[int(cells[found[0]]) - 1]
+        raise AssertionError("every text has a cell")
+
+    def _no_number(self, record: int, text: str) -> DataError:
+        """Say which cell of a numeric column holds something else."""
+        return DataError(
+            f"row {self._row_of(record) + 1:,} has {text!r} in the numeric column {self.name!r}; "
+            "every cell of it must hold a finite number or be blank"
+        )
 
     def _add_numbers(self, array: pa.Array) -> None:
         values, wrong = array_numbers(array, self.name, padded=bool(self._wish))
@@ -133,12 +171,7 @@ class Gatherer:
             self.spoilt = True
             self._cells.clear()
         else:
-            value = array[int(rows[0])].as_py()
-            row = self._row_of(len(self._cells) + int(rows[0])) + 1
-            raise DataError(
-                f"row {row:,} has {str(value)!r} in the numeric column {self.name!r}; "
-                "every cell of it must hold a finite number or be blank"
-            )
+            raise self._no_number(len(self._cells) + int(rows[0]), str(array[int(rows[0])].as_py()))
 
 
 def _narrowest(most: int) -> type[np.unsignedinteger]:

@@ -3,6 +3,7 @@
 from collections.abc import Sequence
 
 from bnx.coding import Coded
+from bnx.cut_notes import cut_notes
 from bnx.evaluation import Evaluation
 from bnx.heldout import MOST_ROWS
 from bnx.learners import Heldout, Learner
@@ -32,6 +33,7 @@ def run_notes(
             f"are judged on {gained:,}, a seeded sample by fold and class; scores and tests use all rows"
         )
     notes += unobserved_notes(evaluations[0], coded.table.schema.names)
+    notes += cut_notes(evaluations[0], coded.table.schema, recipe.bins)
     if any(isinstance(member, Heldout) for member in learners) and engine.rows > MOST_ROWS:
         notes.append(
             f"parents of heldout are chosen on at most {MOST_ROWS:,} rows of every training set, spread evenly by fold "

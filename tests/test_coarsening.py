@@ -32,4 +32,6 @@ def test_numeric_coarsening_keeps_blanks_apart():
     assert nothing.codes.tolist() == [0, 0, 0, 0, 1]
     with pytest.raises(SettingError) as caught:
         coarsen(fine, counts, "auto", 50)
-    assert str(caught.value) == "--bins: 'auto' cannot be used here; give one way to cut: mdl, frequency:K or width:K"
+    assert str(caught.value) == (
+        "--bins: 'auto' cannot be used here; give one way to cut: mdl, frequency:K, width:K or mdl+frequency:K"
+    )

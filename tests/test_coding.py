@@ -51,7 +51,8 @@ def test_the_order_of_rows_does_not_matter(tmp_path):
         ([f"+{k}.5" for k in range(30)], True),
         ([*(f"{k / 7:.3f}" for k in range(30)), "", "  "], True),
         ([*(f"{k / 7:.3f}" for k in range(30)), "n/a"], False),
-        ([*(f"{k / 7:.3f}" for k in range(30)), "inf"], False),
+        ([*(f"{k / 7:.3f}" for k in range(20)), "inf"], False),
+        ([*(f"{k / 7:.3f}" for k in range(30)), "inf", "n/a"], False),
         ([*(f"{k / 7:.3f}" for k in range(30)), "nan"], False),
         ([*(f"{k / 7:.3f}" for k in range(30)), "1_000"], False),
         ([*(str(k) for k in range(30)), "007"] * 2, False),
@@ -83,17 +84,35 @@ def test_a_bad_value_in_a_numeric_column_is_named(tmp_path, bad):
     )
 
 
-def test_an_infinite_value_in_a_column_of_numbers_is_named(tmp_path):
-    must = "every cell of it must hold a finite number or be blank"
-    for size, sentence in (
-        (30, f"the numeric column 'x' holds an infinite number; {must}"),
-        (70_000, f"row 70,000 has 'inf' in the numeric column 'x'; {must}"),
-    ):
-        values = [k / 7 for k in range(size)]
-        values[-1] = float("inf")
-        with pytest.raises(DataError) as caught:
-            code_table(parquet_of(tmp_path, with_class({"x": values})), "arrival")
-        assert str(caught.value) == sentence
+@pytest.mark.parametrize("rows", [30, 900, 1100, 70_000])
+@pytest.mark.parametrize("value", ["inf", "-inf"])
+def test_an_infinite_value_in_a_column_of_numbers_is_named(tmp_path, rows, value):
+    values = [float(k % 1500) / 7 for k in range(rows)]
+    values[rows - 2] = float(value)
+    values[rows - 1] = float("inf")
+    sentence = (
+        f"row {rows - 1:,} has {value!r} in the numeric column 'x'; "
+        "every cell of it must hold a finite number or be blank"
+    )
+    with pytest.raises(DataError) as caught:
+        code_table(parquet_of(tmp_path, with_class({"x": values})), "arrival")
+    assert str(caught.value) == sentence
+    texts = source_of(tmp_path, with_class({"x": [str(one) for one in values]}))
+    with pytest.raises(DataError) as caught:
+        code_table(texts, "arrival")
+    assert str(caught.value) == f"{sentence}; --categorical x would take its values as levels"
+    with pytest.raises(DataError) as caught:
+        code_table(texts, "arrival", numeric=["x"])
+    assert str(caught.value) == sentence
+    assert value in domain(code_table(texts, "arrival", categorical=["x"], keep=["x"]), "x").levels
+
+
+@pytest.mark.parametrize("value", ["Infinity", "+INF", " -inf ", "1e999", "-2E+400"])
+def test_infinite_numbers_are_known_in_all_their_spellings(tmp_path, value):
+    source = source_of(tmp_path, with_class({"x": [*(f"{k / 7:.3f}" for k in range(30)), "", value]}))
+    with pytest.raises(DataError) as caught:
+        code_table(source, "arrival")
+    assert str(caught.value).startswith(f"row 32 has {value!r} in the numeric column 'x'; ")
 
 
 def test_fine_bins_are_exact_up_to_256_levels(tmp_path):

@@ -25,8 +25,8 @@ FLOORS = (
     "learners",
     "recipe wide_forests wide wide_learning matrix_memory heldout leaving_out learning pair_judging many_tests "
     "wide_testing wide_judging pair_table",
-    "choosing evaluation gains rating resampling pair_tests",
-    "dealing judging mix_judging ledger observing held_out run_notes comparison",
+    "choosing cut_trials evaluation gains rating resampling pair_tests",
+    "dealing judging mix_judging ledger observing held_out cut_notes run_notes comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
     "chosen score_entries mix_documents documents charts findings printed report results tested_text tested_picture",
     "cli",

@@ -90,7 +90,11 @@ MaxLevels = Annotated[
 ]
 Bins = Annotated[
     str,
-    typer.Option("--bins", metavar="RULE", help="Cut points of numeric columns: auto, mdl, frequency:K or width:K."),
+    typer.Option(
+        "--bins",
+        metavar="RULE",
+        help="Cut points of numeric columns: auto, mdl, frequency:K, width:K or mdl+frequency:K.",
+    ),
 ]
 Test = Annotated[str, typer.Option("--test", metavar="|".join(TESTS), help="Test of independence.")]
 Adjust = Annotated[str, typer.Option("--adjust", metavar="|".join(ADJUSTMENTS), help="Correction for many pairs.")]

@@ -15,10 +15,10 @@ from quality.smoothing_schemes import PROGRAM, SCHEMES, Way
 from bnx import choosing
 from bnx.calibrating import probabilities
 from bnx.choosing import Trial, choose, inner_losses, make_trial
+from bnx.cut_trials import bins_to_try
 from bnx.dealing import deal
 from bnx.engines import start_local
 from bnx.engines.local import LocalEngine
-from bnx.evaluation import bins_to_try
 from bnx.folds import sub_blocks
 from bnx.learners import learner
 from bnx.learning import learn, make_bounds
