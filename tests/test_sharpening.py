@@ -8,13 +8,13 @@ from scipy.special import softmax
 from bnx.sharpening import fit_sharpness, sharpened
 
 
-@pytest.mark.parametrize("power", [0.6, 1.0, 1.7])
-def test_sharpness_is_that_of_a_general_optimiser(power: float) -> None:
+@pytest.mark.parametrize(("power", "rows"), [(0.6, 2_000), (1.0, 150), (1.7, 2_000)])
+def test_sharpness_is_that_of_a_general_optimiser(power: float, rows: int) -> None:
     random = np.random.default_rng(4)
-    told = softmax(random.normal(0, 1.5, (2_000, 3)), axis=1)
+    told = softmax(random.normal(0, 1.5, (rows, 3)), axis=1)
     truth = np.array([random.choice(3, p=row) for row in softmax(power * np.log(told), axis=1)])
-    weights = random.uniform(0.5, 2, 2_000)
-    every = np.arange(2_000)
+    weights = random.uniform(0.5, 2, rows)
+    every = np.arange(rows)
 
     def loss(sharpness: float) -> float:
         p = told / (1 - told) ** sharpness
