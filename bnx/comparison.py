@@ -43,6 +43,8 @@ from bnx.tables import LeftOut, Lines
 from bnx.trainings import Training
 from bnx.wide_judging import MOST_JUDGED, judge_wide
 from bnx.wide_learning import takes_wide_road
+from bnx.yardstick import Yardstick, measure_yardsticks, yardstick_notes
+from bnx.yardstick_models import check_installed
 
 __all__ = ["Comparison", "compare"]
 
@@ -53,7 +55,7 @@ class Comparison:
 
     ``relevance`` (n,): bits each attribute shares with the class. ``pairs`` and ``judged``: all pairs, on all rows.
     ``mix``: of the structures, None where nothing is mixed; ``held_out``: scores on a table that took no part, of the
-    structures and last of the mix, empty without one.
+    structures and last of the mix, empty without one; ``yardsticks``: models that are no structures.
     """
 
     recipe: Recipe
@@ -71,6 +73,7 @@ class Comparison:
     recommendation: Recommendation
     mix: JudgedMix | None
     held_out: tuple[Scores, ...]
+    yardsticks: tuple[Yardstick, ...]
     left_out: tuple[LeftOut, ...]
     warnings: tuple[str, ...]
     evaluations: tuple[Evaluation, ...]
@@ -109,6 +112,8 @@ def compare(
     Raises:
         DataError, SettingError, StructureError: the table or a setting cannot be used.
     """
+    if recipe.yardstick:
+        check_installed()
     progress("reading", 0, 0)
     coded = recipe.code(source, jobs, store)
     recipe, notes_on_structures = recipe.for_table(len(coded.table.target), len(coded.table.schema.attributes))
@@ -133,7 +138,8 @@ def compare(
     progress("edge ledger", 0, 0)
     told, by_blanks = _told(first), judged.by_blanks(pairs.left, pairs.right)
     edges = edge_ledger(told, _strengths(learned, pairs), gains, stable, learners, bounds, recipe, folds, by_blanks)
-    notes = run_notes(evaluations, coded, recipe, learners, results)
+    yardsticks = measure_yardsticks(evaluations, results, picks, recipe, folds)
+    notes = run_notes(evaluations, coded, recipe, learners, results) + yardstick_notes(yardsticks)
     progress("reading", 0, 0)
     return Comparison(
         recipe=recipe,
@@ -151,6 +157,7 @@ def compare(
         recommendation=recommendation,
         mix=mix,
         held_out=held_out,
+        yardsticks=yardsticks,
         left_out=coded.left_out,
         warnings=(*early, *notes, *notes_on_structures, *judged.notes, *not_scored, *coded.warnings),
         evaluations=tuple(evaluations),

@@ -23,6 +23,7 @@ from bnx.score_entries import against_entry, fold_entries, score_entry
 from bnx.structure import words
 from bnx.text import count_of
 from bnx.verdicts import OUTCOMES, VERDICTS, TestResult
+from bnx.yardstick_documents import yardstick_entries
 
 __all__ = [
     "COMPARISON_FORMAT",
@@ -87,6 +88,7 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
                 "picks": [names[number] for number in advice.picks],
             },
             "mix": mix_entry(comparison),
+            "yardsticks": yardstick_entries(comparison),
             "pairs": [result.to_dict() for result in pair_results(comparison)],
             "pairs_total": comparison.judged.family,
             "pairs_rejected": comparison.judged.rejected,

@@ -2,6 +2,7 @@
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from typing import Protocol
 
 import numpy as np
 
@@ -19,9 +20,16 @@ from bnx.sampling import Sample, sample_for_choices
 from bnx.scoring import Terms, terms_of
 from bnx.trainings import held_sets, make_trainings, mask_without
 
-__all__ = ["Evaluation", "MixedPredictor", "Predictor", "evaluate", "predict"]
+__all__ = ["Evaluation", "MixedPredictor", "Predictor", "Predicts", "evaluate", "predict", "write"]
 
 _ROWS = 16_384  # predicted at a time
+
+
+class Predicts(Protocol):
+    """Whatever gives rows of the engine their probabilities."""
+
+    def probabilities(self, first: int, last: int) -> np.ndarray:
+        """Predict rows ``first:last`` of the engine, (last - first, C)."""
 
 
 @dataclass(frozen=True)
@@ -144,7 +152,11 @@ def evaluate(
 
 def predict(evaluation: Evaluation, fold: int, structure: int, runs: Sequence[slice], out: np.ndarray) -> None:
     """Write the probabilities of some of a fold's rows, given as runs of the engine's rows, to the same rows of out."""
-    predictor = evaluation.predictor_of(fold, structure)
+    write(evaluation.predictor_of(fold, structure), runs, out)
+
+
+def write(predictor: Predicts, runs: Sequence[slice], out: np.ndarray) -> None:
+    """Write the probabilities of some of the engine's rows to the same rows of out."""
     for run in runs:
         for first in range(run.start, run.stop, _ROWS):
             last = min(first + _ROWS, run.stop)

@@ -19,6 +19,7 @@ __all__ = [
     "pair_row",
     "score_row",
     "setting",
+    "yardstick_row",
 ]
 
 _DASH = "–"
@@ -164,10 +165,20 @@ def score_row(document: Mapping[str, Any], entry: Mapping[str, Any]) -> ScoreRow
 
 def mix_row(entry: Mapping[str, Any]) -> ScoreRow:
     """Write the scores of the mix, which has no edges, tables and temperature of its own."""
-    own = {"name": "mix", "edges": [], "free_parameters": 0, "temperature": None, "smoothing": "", **entry}
+    return _row_of_none({"name": "mix", **entry}, "offered" if entry["offered"] else "not offered")
+
+
+def yardstick_row(entry: Mapping[str, Any]) -> ScoreRow:
+    """Write the scores of a model that is no structure."""
+    against = {"p_value": None, "probability_better": None, **entry["against_baseline"]}
+    return _row_of_none({"words": "not a structure", **entry, "against_baseline": against}, "")
+
+
+def _row_of_none(entry: Mapping[str, Any], role: str) -> ScoreRow:
+    """Write the scores of what is no structure."""
+    own = {"edges": [], "free_parameters": 0, "temperature": None, "smoothing": "", **entry}
     nobody = {"recommended": {"name": ""}, "best": "", "settings": {"baseline": ""}}
-    row = score_row(nobody, own)
-    return replace(row, role="offered" if entry["offered"] else "not offered", edges=_DASH, parameters=_DASH)
+    return replace(score_row(nobody, own), role=role, edges=_DASH, parameters=_DASH)
 
 
 def edge_row(edge: Mapping[str, Any], tries: int) -> EdgeRow:

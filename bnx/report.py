@@ -26,6 +26,7 @@ from bnx.printed import (
     pair_row,
     score_row,
     setting,
+    yardstick_row,
 )
 
 __all__ = [
@@ -87,6 +88,8 @@ class Report:
     scores: tuple[ScoreRow, ...]
     mix: ScoreRow | None
     mix_reason: str
+    yardsticks: tuple[ScoreRow, ...]
+    yardstick_sentences: tuple[str, ...]
     has_holdout: bool
     structures: tuple[Drawn, ...]
     folds_chart: FoldChart | None
@@ -159,6 +162,8 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         scores=tuple(one.score for one in structures),
         mix=mix_row(document["mix"]) if document["mix"] else None,
         mix_reason=document["mix"]["reason"] if document["mix"] else "",
+        yardsticks=tuple(yardstick_row(one) for one in document["yardsticks"] or ()),
+        yardstick_sentences=tuple(one["sentence"] for one in document["yardsticks"] or ()),
         has_holdout=any("holdout" in one for one in ranked),
         structures=tuple(structures),
         folds_chart=fold_chart(document),

@@ -109,6 +109,10 @@ def run(
     resamples: Annotated[
         int, typer.Option(metavar="N", help="Random halves for the stability of edges; 0 for none.")
     ] = Recipe.resamples,
+    yardstick: Annotated[
+        bool,
+        typer.Option("--yardstick", help="Also fit logistic regression and gradient boosting, for comparison only."),
+    ] = Recipe.yardstick,
     predictions: Annotated[bool, typer.Option("--predictions", help="Also write out-of-fold probabilities.")] = False,
     all_pairs: Annotated[bool, typer.Option("--all-pairs", help="Also write every pair to pairs.parquet.")] = False,
     jobs: Jobs = 0,
