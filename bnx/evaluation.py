@@ -119,11 +119,18 @@ def bins_to_try(schema: Schema, bins: str) -> tuple[str, ...]:
 
 
 def evaluate(
-    engine: LocalEngine, schema: Schema, folds: int, learners: Sequence[Learner], bounds: Bounds, recipe: Recipe
+    engine: LocalEngine,
+    schema: Schema,
+    folds: int,
+    learners: Sequence[Learner],
+    bounds: Bounds,
+    recipe: Recipe,
+    used: np.ndarray | None = None,
 ) -> Evaluation:
     """Learn, choose and calibrate in every training fold, and on all rows.
 
-    engine: its blocks are ``folds`` runs of equal length.
+    engine: its blocks are ``folds`` runs of equal length; used: the blocks of every run that are learnt from, bool, all
+    if None.
     """
     options = candidates(recipe.smoothing)
     kinds = bins_to_try(schema, recipe.bins)
@@ -131,8 +138,9 @@ def evaluate(
     choices_open = len(options) > 1 or len(kinds) > 1 or len(members) > len(own)
     nested = choices_open or recipe.temperature or len(learners) > 1
     parts = engine.blocks // folds
-    masks = {held: mask_without(held, folds, parts) for held in held_sets(folds, nested)}
-    sample = sample_for_choices(engine, folds)
+    used = np.ones(parts, np.bool_) if used is None else used
+    masks = {held: mask_without(held, folds, parts) & np.tile(used, folds) for held in held_sets(folds, nested)}
+    sample = sample_for_choices(engine, folds, used)
     trials, losses = [], []
     for kind in kinds:
         trainings = make_trainings(engine, schema, masks, kind, recipe.max_levels)

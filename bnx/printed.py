@@ -9,11 +9,13 @@ from bnx.text import fixed, signed
 
 __all__ = [
     "AttributeRow",
+    "CurveTable",
     "EdgeRow",
     "PairRow",
     "ScoreRow",
     "attribute_rows",
     "confusion_rows",
+    "curve_table",
     "edge_row",
     "mix_row",
     "pair_row",
@@ -108,6 +110,15 @@ class AttributeRow:
     bar: float
 
 
+@dataclass(frozen=True)
+class CurveTable:
+    """Log loss by training rows, as printed: ``rows`` of (training rows, (log loss, cost) per structure)."""
+
+    names: tuple[str, ...]
+    rows: tuple[tuple[str, tuple[tuple[str, str], ...]], ...]
+    sentence: str
+
+
 def _p(value: float | None) -> str:
     """Write a p-value: four decimals, or a power of ten below a thousandth."""
     if value is None:
@@ -179,6 +190,24 @@ def _row_of_none(entry: Mapping[str, Any], role: str) -> ScoreRow:
     own = {"edges": [], "free_parameters": 0, "temperature": None, "smoothing": "", **entry}
     nobody = {"recommended": {"name": ""}, "best": "", "settings": {"baseline": ""}}
     return replace(score_row(nobody, own), role=role, edges=_DASH, parameters=_DASH)
+
+
+def curve_table(curve: Mapping[str, Any]) -> CurveTable:
+    """Write log loss by training rows."""
+    rows = tuple(
+        (
+            f"{point['training_rows']:,.0f}",
+            tuple(
+                (
+                    _loss(one["log_loss"]) + ("" if one["log_loss_se"] is None else f" ± {fixed(one['log_loss_se'])}"),
+                    _DASH if one["cost"] is None else f"{signed(one['cost'])} {_range(one['interval'])}",
+                )
+                for one in point["structures"]
+            ),
+        )
+        for point in curve["points"]
+    )
+    return CurveTable(tuple(one["name"] for one in curve["points"][0]["structures"]), rows, curve["sentence"])
 
 
 def edge_row(edge: Mapping[str, Any], tries: int) -> EdgeRow:

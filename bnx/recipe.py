@@ -61,6 +61,7 @@ class Recipe:
     forbid: tuple[str, ...] = ()
     resamples: int = 100
     yardstick: bool = False
+    learning_curve: bool = False
 
     def __post_init__(self) -> None:
         """Check every setting that can be checked without the table."""

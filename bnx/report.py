@@ -16,11 +16,13 @@ from bnx.findings import Findings, drawn_pairs, findings
 from bnx.palette import PALETTES
 from bnx.printed import (
     AttributeRow,
+    CurveTable,
     EdgeRow,
     PairRow,
     ScoreRow,
     attribute_rows,
     confusion_rows,
+    curve_table,
     edge_row,
     mix_row,
     pair_row,
@@ -90,6 +92,7 @@ class Report:
     mix_reason: str
     yardsticks: tuple[ScoreRow, ...]
     yardstick_sentences: tuple[str, ...]
+    curve: CurveTable | None
     has_holdout: bool
     structures: tuple[Drawn, ...]
     folds_chart: FoldChart | None
@@ -164,6 +167,7 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         mix_reason=document["mix"]["reason"] if document["mix"] else "",
         yardsticks=tuple(yardstick_row(one) for one in document["yardsticks"] or ()),
         yardstick_sentences=tuple(one["sentence"] for one in document["yardsticks"] or ()),
+        curve=curve_table(document["learning_curve"]) if document["learning_curve"] else None,
         has_holdout=any("holdout" in one for one in ranked),
         structures=tuple(structures),
         folds_chart=fold_chart(document),

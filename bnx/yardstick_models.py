@@ -33,12 +33,14 @@ _FLOOR = 0.5  # records by which the class shares are mixed in
 _SEEDS = 2**32
 
 
-def check_installed() -> None:
-    """Refuse to go on without scikit-learn.
+def check_installed(wanted: bool) -> None:
+    """Refuse to go on without scikit-learn if it is wanted.
 
     Raises:
         SettingError: it cannot be imported.
     """
+    if not wanted:
+        return
     try:
         _classes()
     except ImportError:

@@ -25,10 +25,11 @@ FLOORS = (
     "recipe wide_forests wide wide_learning matrix_memory heldout leaving_out learning pair_judging many_tests "
     "wide_testing wide_judging pair_table",
     "choosing evaluation gains rating resampling pair_tests",
-    "dealing judging mix_judging ledger observing fresh_rows run_notes yardstick_models yardstick comparison",
+    "dealing judging mix_judging ledger observing fresh_rows run_notes yardstick_models yardstick "
+    "learning_curve comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
-    "chosen score_entries mix_documents yardstick_documents documents charts findings printed report results "
-    "tested_text tested_picture",
+    "chosen score_entries mix_documents yardstick_documents curve_documents documents charts findings printed report "
+    "results tested_text tested_picture",
     "cli",
 )
 PLACES = {name: (floor, place) for floor, names in enumerate(FLOORS) for place, name in enumerate(names.split())}

@@ -15,7 +15,14 @@ _FEW = 8
 
 def summary(document: Mapping[str, Any], output: str) -> str:
     """Say in one screen what a run found out."""
-    parts = [_head(document), [_table(document)], _legend(document), _held_out(document), _advice(document)]
+    parts = [
+        _head(document),
+        [_table(document)],
+        _legend(document),
+        _held_out(document),
+        _curve(document),
+        _advice(document),
+    ]
     return "\n\n".join("\n".join(part) for part in [*parts, [_files(document, output)]] if part)
 
 
@@ -122,6 +129,25 @@ def _held_out(document: Mapping[str, Any]) -> list[str]:
     rows = [(f"  {one['name']}", _bits(one["holdout"]["log_loss"]), *_scores(one["holdout"])) for one in scored]
     head = "On the --holdout table, by the structures learnt from all rows of this one:"
     return [head, aligned(("structure", "log loss, bits", *_SCORES), rows)]
+
+
+def _curve(document: Mapping[str, Any]) -> list[str]:
+    """Lay out log loss by training rows, if it was asked for."""
+    curve = document["learning_curve"]
+    if curve is None:
+        return []
+    names = [one["name"] for one in curve["points"][0]["structures"]]
+    header = ("training rows", *(text for name in names for text in (f"{name}, bits", "costs, bits")))
+    rows = []
+    for point in curve["points"]:
+        cells = [f"  {point['training_rows']:,.0f}"]
+        for one in point["structures"]:
+            ends = one["interval"]
+            cost = f"{signed(one['cost'])} [{signed(ends[0])}, {signed(ends[1])}]" if ends else ""
+            error = "" if one["log_loss_se"] is None else f" +- {fixed(one['log_loss_se'])}"
+            cells += [_bits(one["log_loss"]) + error, cost]
+        rows.append(cells)
+    return [aligned(header, rows), _wrapped(curve["sentence"])]
 
 
 def _advice(document: Mapping[str, Any]) -> list[str]:
