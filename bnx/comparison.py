@@ -156,9 +156,7 @@ def compare(
         mix=mix,
         held_out=held_out,
         yardsticks=yardsticks,
-        curve=measure_curve(
-            evaluations, coded.table.schema, results, recommendation.recommended, bounds, recipe, folds
-        ),
+        curve=measure_curve(evaluations, coded, results, recommendation, bounds, recipe, folds),
         left_out=coded.left_out,
         warnings=(*early, *notes, *notes_on_structures, *judged.notes, *not_scored, *coded.warnings),
         evaluations=tuple(evaluations),

@@ -38,10 +38,15 @@ def curve_entry(comparison: Comparison) -> dict[str, Any] | None:
 
 def curve_sentence(curve: LearningCurve, name: str) -> str:
     """Say in one sentence what half the rows cost, and what that says of more rows."""
+    if curve.share is None:
+        return "Whether more rows would help cannot be told, as every fold is one group."
+    rows = "Half the rows" if round(curve.share, 1) == 0.5 else f"Training on {curve.share:.0%} of the rows"
     if curve.half is None:
-        return f"What half the rows cost {name} cannot be told, as a log loss is infinite."
+        return f"{rows}: what that costs {name} cannot be told, as a log loss is infinite."
     half = f"[{signed(curve.half.low)}, {signed(curve.half.high)}]"
-    cost = f"Half the rows cost {name} {signed(curve.half.mean)} bits per record {half}"
+    cost = (
+        f"{rows} cost{'' if rows.startswith('Half') else 's'} {name} {signed(curve.half.mean)} bits per record {half}"
+    )
     if curve.verdict == HELPS:
         return f"{cost}: more rows would probably help."
     if curve.verdict == FLAT:

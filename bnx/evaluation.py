@@ -129,8 +129,8 @@ def evaluate(
 ) -> Evaluation:
     """Learn, choose and calibrate in every training fold, and on all rows.
 
-    engine: its blocks are ``folds`` runs of equal length; used: the blocks of every run that are learnt from, bool, all
-    if None.
+    engine: its blocks are ``folds`` runs of equal length; used: the blocks of every run that are learnt from, (folds,
+    blocks of a fold) bool, all if None.
     """
     options = candidates(recipe.smoothing)
     kinds = bins_to_try(schema, recipe.bins)
@@ -138,8 +138,8 @@ def evaluate(
     choices_open = len(options) > 1 or len(kinds) > 1 or len(members) > len(own)
     nested = choices_open or recipe.temperature or len(learners) > 1
     parts = engine.blocks // folds
-    used = np.ones(parts, np.bool_) if used is None else used
-    masks = {held: mask_without(held, folds, parts) & np.tile(used, folds) for held in held_sets(folds, nested)}
+    used = np.ones((folds, parts), np.bool_) if used is None else used
+    masks = {held: mask_without(held, folds, parts) & used.ravel() for held in held_sets(folds, nested)}
     sample = sample_for_choices(engine, folds, used)
     trials, losses = [], []
     for kind in kinds:

@@ -5,11 +5,11 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from bnx.domains import Schema
+from bnx.coding import Coded
 from bnx.engines import LocalEngine
 from bnx.evaluation import Evaluation, evaluate
-from bnx.folds import sub_blocks
 from bnx.gating import Bounds
+from bnx.judging import Recommendation
 from bnx.learners import learner
 from bnx.paired import Difference, corrected_t
 from bnx.picking import apart, region_of
@@ -40,27 +40,37 @@ class CurvePoint:
 class LearningCurve:
     """Log loss by training rows of ``structures`` (by number, the recommended one last), all rows last.
 
-    ``half``: what half the rows cost the recommended structure, bits; ``region`` of no practical difference, bits.
+    ``region`` of no practical difference, bits.
     """
 
     structures: tuple[int, ...]
     points: tuple[CurvePoint, ...]
-    half: Difference | None
     region: float
+
+    @property
+    def share(self) -> float | None:
+        """The largest share before all rows, about half; None where rows of a group cannot be told apart."""
+        return self.points[-2].share if len(self.points) > 1 else None
+
+    @property
+    def half(self) -> Difference | None:
+        """What that share costs the recommended structure, bits."""
+        return self.points[-2].costs[-1] if len(self.points) > 1 else None
 
     @property
     def verdict(self) -> str:
         """Tell what half the rows say of more rows."""
-        if self.half is None or self.half.low <= 0 <= self.region < self.half.high:
+        half = self.half
+        if half is None or half.low <= 0 <= self.region < half.high:
             return UNKNOWN
-        return FLAT if self.half.high <= self.region else HELPS
+        return FLAT if half.high <= self.region else HELPS
 
 
 def measure_curve(
     evaluations: Sequence[Evaluation],
-    schema: Schema,
+    coded: Coded,
     results: Sequence[StructureScore],
-    recommended: int,
+    recommendation: Recommendation,
     bounds: Bounds,
     recipe: Recipe,
     folds: int,
@@ -73,24 +83,43 @@ def measure_curve(
     """
     if not recipe.learning_curve:
         return None
-    chosen = tuple(dict.fromkeys((recipe.structures.index(recipe.baseline), recommended)))
+    chosen = tuple(dict.fromkeys((recipe.structures.index(recipe.baseline), recommendation.recommended)))
     names = [recipe.structures[s] for s in chosen]
     whole = [results[s] for s in chosen]
-    parts, points = sub_blocks(folds), []
-    shares = sorted({max(1, round(parts * share)) for share in _SHARES})
-    for k, taken in enumerate(shares):
-        used = np.arange(parts) < taken
+    shares, points = _shares(evaluations, folds), []
+    for k, masks in enumerate(shares):
         ones = []
-        for r, one in enumerate(evaluations):
+        for r, (one, used) in enumerate(zip(evaluations, masks, strict=True)):
             engine = _told(one.engine, k * len(evaluations) + r, len(shares) * len(evaluations))
             learners = [learner(name) for name in names]
-            ones.append(evaluate(engine, schema, folds, learners, bounds, replace(recipe, mix=False), used))
-        scores = score(ones, ())[0]
+            ones.append(evaluate(engine, coded.table.schema, folds, learners, bounds, replace(recipe, mix=False), used))
+        scores, rows = score(ones, ())[0], _training_rows(ones)
         costs = tuple(_cost(own, all_rows, folds) for own, all_rows in zip(scores, whole, strict=True))
-        points.append(CurvePoint(taken / parts, _training_rows(ones), tuple(scores), costs))
-    half = next(point.costs[-1] for point in points if point.share == 0.5)
+        points.append(CurvePoint(rows / _training_rows(evaluations), rows, tuple(scores), costs))
     points.append(CurvePoint(1.0, _training_rows(evaluations), tuple(whole), (None,) * len(whole)))
-    return LearningCurve(chosen, tuple(points), half, region_of([one.pooled.log_loss for one in results]))
+    return LearningCurve(chosen, tuple(points), region_of([one.pooled.log_loss for one in results]))
+
+
+def _shares(evaluations: Sequence[Evaluation], folds: int) -> list[list[np.ndarray]]:
+    """List different shares but all, smallest first: the blocks to use in every repeat, (folds, blocks of a fold) bool.
+
+    In every fold the first blocks are used, as many as come nearest to the share of its rows: where rows of a group
+    stay together, blocks differ in size.
+    """
+    blocks = [one.engine.class_counts.sum(axis=1).reshape(folds, -1) for one in evaluations]
+    found: dict[tuple[bytes, ...], list[np.ndarray]] = {}
+    for share in _SHARES:
+        masks = [_nearest(rows, share) for rows in blocks]
+        if any(rows[~used].any() for rows, used in zip(blocks, masks, strict=True)):
+            found.setdefault(tuple(used.tobytes() for used in masks), masks)
+    return list(found.values())
+
+
+def _nearest(rows: np.ndarray, share: float) -> np.ndarray:
+    """Mark the first blocks of every fold that hold about a share of its rows (folds, blocks), but not none of them."""
+    reached = np.cumsum(rows, axis=1) / np.maximum(rows.sum(axis=1, keepdims=True), 1)
+    last = np.where(reached > 0, np.abs(reached - share), np.inf).argmin(axis=1)
+    return np.asarray(np.arange(rows.shape[1]) <= last[:, None])
 
 
 def _told(engine: LocalEngine, done: int, total: int) -> LocalEngine:
