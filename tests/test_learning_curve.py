@@ -16,6 +16,7 @@ from test_yardstick import table
 
 from bnx.comparison import Comparison
 from bnx.curve_documents import curve_entry, curve_sentence
+from bnx.engines.local import CHUNK
 from bnx.evaluation import evaluate
 from bnx.folds import assign_blocks, sub_blocks
 from bnx.gating import Bounds
@@ -96,7 +97,8 @@ def test_half_the_rows_by_hand() -> None:
     assert half.rows == np.mean([((fold != k) & (block % parts < parts // 2)).sum() for k in range(4)])
 
 
-def test_rows_that_a_share_leaves_out_change_nothing_that_is_learnt() -> None:
+@pytest.mark.parametrize("chunk", [CHUNK, 100])
+def test_rows_that_a_share_leaves_out_change_nothing_that_is_learnt(chunk: int) -> None:
     frame, folds = table(), 4
     parts = sub_blocks(folds)
     target = np.unique(frame["grade"], return_inverse=True)[1]
@@ -111,7 +113,7 @@ def test_rows_that_a_share_leaves_out_change_nothing_that_is_learnt() -> None:
 
     def learnt(rows: pd.DataFrame, which: np.ndarray | None) -> list[Any]:
         coded = coded_frame(rows, "grade")
-        engine = started(coded, blocks, folds * parts)
+        engine = started(coded, blocks, folds * parts, chunk=chunk)
         found = evaluate(engine, coded.schema, folds, learners, bounds, recipe, which)
         return [
             (

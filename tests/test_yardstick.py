@@ -17,6 +17,7 @@ from sklearn.ensemble import HistGradientBoostingClassifier
 from sklearn.linear_model import LogisticRegression
 from sklearn.preprocessing import OneHotEncoder, OrdinalEncoder
 
+from bnx import rating
 from bnx.report import report_html
 from bnx.yardstick_documents import yardstick_entries
 from bnx.yardstick_models import BOOSTING, LOGISTIC, Seen, seen_by
@@ -168,6 +169,17 @@ def test_the_number_of_threads_changes_nothing() -> None:
     one, two = (compared(table(), "grade", jobs, structures=("naive",), folds=3, yardstick=True) for jobs in (1, 2))
     assert yardstick_entries(one) == yardstick_entries(two)
     assert compared(table(), "grade", structures=("naive",), folds=3).yardsticks == ()
+
+
+def test_rows_too_many_to_be_kept_score_alike(monkeypatch: pytest.MonkeyPatch) -> None:
+    kept = compared(table(), "grade", structures=("naive",), folds=3, yardstick=True).yardsticks
+    monkeypatch.setattr(rating, "EXACT_ROWS", 100)
+    for one, other in zip(
+        kept, compared(table(), "grade", structures=("naive",), folds=3, yardstick=True).yardsticks, strict=True
+    ):
+        assert other.score.pooled.log_loss == pytest.approx(one.score.pooled.log_loss, rel=1e-12)
+        assert other.score.pooled.confusion == one.score.pooled.confusion
+        assert other.score.pooled.auc_within > one.score.pooled.auc_within == 0
 
 
 def test_numbers_blanks_and_cells_not_observed() -> None:
