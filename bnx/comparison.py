@@ -27,6 +27,7 @@ from bnx.independence import Statistics
 from bnx.judging import Against, Recommendation, against, inner_picks, mixed_picks, recommend
 from bnx.learners import Learner, learner
 from bnx.learning import Learned, make_bounds
+from bnx.learning_curve import LearningCurve, measure_curve
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores
 from bnx.matrix_memory import matrix_notes
@@ -44,6 +45,8 @@ from bnx.tables import LeftOut, Lines
 from bnx.trainings import Training
 from bnx.wide_judging import MOST_JUDGED, judge_wide
 from bnx.wide_learning import takes_wide_road
+from bnx.yardstick import Yardstick, measure_yardsticks, yardstick_notes
+from bnx.yardstick_models import check_installed
 
 __all__ = ["Comparison", "compare"]
 
@@ -54,7 +57,8 @@ class Comparison:
 
     ``relevance`` (n,): bits each attribute shares with the class. ``pairs`` and ``judged``: all pairs, on all rows.
     ``mix``: of the structures, None where nothing is mixed; ``held_out``: scores on a table that took no part, of the
-    structures and last of the mix, empty without one. ``weights``: of rows, in plain values.
+    structures and last of the mix, empty without one; ``yardsticks``: models that are no structures;
+    ``curve``: log loss by training rows, None if not asked for. ``weights``: of rows, in plain values.
     """
 
     recipe: Recipe
@@ -72,6 +76,8 @@ class Comparison:
     recommendation: Recommendation
     mix: JudgedMix | None
     held_out: tuple[Scores, ...]
+    yardsticks: tuple[Yardstick, ...]
+    curve: LearningCurve | None
     left_out: tuple[LeftOut, ...]
     warnings: tuple[str, ...]
     evaluations: tuple[Evaluation, ...]
@@ -111,6 +117,7 @@ def compare(
     Raises:
         DataError, SettingError, StructureError: the table or a setting cannot be used.
     """
+    check_installed(recipe.yardstick)
     progress("reading", 0, 0)
     coded = recipe.code(source, jobs, store)
     recipe, notes_on_structures = recipe.for_table(len(coded.table.target), len(coded.table.schema.attributes))
@@ -124,17 +131,14 @@ def compare(
     learned = first.learned(())
     progress("stability", 0, 0)
     stable = stability(_under("stability", first.engine), learned, folds, learners, bounds, recipe)
-    picks, results, honest, mix = _scores(evaluations, recipe, folds)
-    progress("judging pairs", 0, 0)
+    results, recommendation, mix, yardsticks = _scores(evaluations, recipe, folds)
     pairs, judged = _tested(first.engine, learned, learners, bounds, recipe)
     classifiers = tuple(_classifier(first, s, coded) for s in range(len(learners)))
     progress("scoring", 0, 0)
     held_out, not_scored = score_held_out(classifiers, mix, holdout, recipe, coded) if holdout else ((), [])
-    recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
-    progress("edge ledger", 0, 0)
     told, by_blanks = _told(first), judged.by_blanks(pairs.left, pairs.right)
     edges = edge_ledger(told, _strengths(learned, pairs), gains, stable, learners, bounds, recipe, folds, by_blanks)
-    notes = run_notes(evaluations, coded, recipe, learners, results)
+    notes = run_notes(evaluations, coded, recipe, learners, results) + yardstick_notes(yardsticks)
     progress("reading", 0, 0)
     return Comparison(
         recipe=recipe,
@@ -152,6 +156,8 @@ def compare(
         recommendation=recommendation,
         mix=mix,
         held_out=held_out,
+        yardsticks=yardsticks,
+        curve=measure_curve(evaluations, coded, results, recommendation, bounds, recipe, folds),
         left_out=coded.left_out,
         warnings=(*early, *notes, *notes_on_structures, *judged.notes, *not_scored, *coded.warnings),
         evaluations=tuple(evaluations),
@@ -171,6 +177,7 @@ def _tested(
     engine: LocalEngine, learned: Learned, learners: Sequence[Learner], bounds: Bounds, recipe: Recipe
 ) -> tuple[Pairs, JudgedPairs]:
     """Test all pairs on all rows, and judge them; in very wide tables the strongest, and those that are drawn."""
+    engine.progress("judging pairs", 0, 0)
     training = learned.training
     if takes_wide_road(engine, [training], learners, bounds, recipe):
         drawn = [edge for structure in learned.structures for edge in structure.edges]
@@ -194,7 +201,8 @@ def _under(stage: str, engine: LocalEngine) -> LocalEngine:
 
 
 def _told(evaluation: Evaluation) -> Evaluation:
-    """Let the tests of the ledger be told as one stage."""
+    """Let the tests of the ledger be told as one stage, which begins here."""
+    evaluation.engine.progress("edge ledger", 0, 0)
     return replace(evaluation, engine=_under("edge ledger", evaluation.engine))
 
 
@@ -254,9 +262,11 @@ def _classifier(evaluation: Evaluation, s: int, coded: Coded) -> Classifier:
 
 def _scores(
     evaluations: Sequence[Evaluation], recipe: Recipe, folds: int
-) -> tuple[list[int], list[StructureScore], Scores, JudgedMix | None]:
-    """Score every structure, what is picked inside every outer fold, which comes first, and the mix."""
+) -> tuple[list[StructureScore], Recommendation, JudgedMix | None, tuple[Yardstick, ...]]:
+    """Score every structure, recommend one by what is picked inside every outer fold, and score what stands beside."""
     picks, with_mix = inner_picks(evaluations), mixed_picks(evaluations)
     results, (honest, mixed) = score(evaluations, (picks, with_mix))
     mix = judge_mix(evaluations, results, picks, (with_mix, mixed), recipe.structures.index(recipe.baseline), folds)
-    return picks, results[: len(recipe.structures)], honest, mix
+    results = results[: len(recipe.structures)]
+    recommendation = recommend(evaluations, results, picks, honest, recipe.structures, folds)
+    return results, recommendation, mix, measure_yardsticks(evaluations, results, picks, recipe, folds)

@@ -13,6 +13,7 @@ import scipy
 from bnx import __version__
 from bnx.chosen import chosen_entry, words_of
 from bnx.comparison import Comparison
+from bnx.curve_documents import curve_entry
 from bnx.formats.dot import dot_source
 from bnx.formats.structure_json import classifier_document
 from bnx.ledger import EdgeEvidence
@@ -23,6 +24,7 @@ from bnx.score_entries import against_entry, fold_entries, score_entry
 from bnx.structure import words
 from bnx.text import count_of
 from bnx.verdicts import OUTCOMES, VERDICTS, TestResult
+from bnx.yardstick_documents import yardstick_entries
 
 __all__ = [
     "COMPARISON_FORMAT",
@@ -88,6 +90,8 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
                 "picks": [names[number] for number in advice.picks],
             },
             "mix": mix_entry(comparison),
+            "yardsticks": yardstick_entries(comparison),
+            "learning_curve": curve_entry(comparison),
             "pairs": [result.to_dict() for result in pair_results(comparison)],
             "pairs_total": comparison.judged.family,
             "pairs_rejected": comparison.judged.rejected,

@@ -2,6 +2,7 @@
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from typing import Protocol
 
 import numpy as np
 
@@ -21,9 +22,16 @@ from bnx.scoring import Terms, terms_of
 from bnx.sharpening import sharpened
 from bnx.trainings import held_sets, mask_without
 
-__all__ = ["Evaluation", "MixedPredictor", "Predictor", "evaluate", "predict"]
+__all__ = ["Evaluation", "MixedPredictor", "Predictor", "Predicts", "evaluate", "predict", "write"]
 
 _ROWS = 16_384  # predicted at a time
+
+
+class Predicts(Protocol):
+    """Whatever gives rows of the engine their probabilities."""
+
+    def probabilities(self, first: int, last: int) -> np.ndarray:
+        """Predict rows ``first:last`` of the engine, (last - first, C)."""
 
 
 @dataclass(frozen=True)
@@ -108,19 +116,27 @@ class Evaluation:
 
 
 def evaluate(
-    engine: LocalEngine, schema: Schema, folds: int, learners: Sequence[Learner], bounds: Bounds, recipe: Recipe
+    engine: LocalEngine,
+    schema: Schema,
+    folds: int,
+    learners: Sequence[Learner],
+    bounds: Bounds,
+    recipe: Recipe,
+    used: np.ndarray | None = None,
 ) -> Evaluation:
     """Learn, choose and calibrate in every training fold, and on all rows.
 
-    engine: its blocks are ``folds`` runs of equal length.
+    engine: its blocks are ``folds`` runs of equal length; used: the blocks of every run that are learnt from, (folds,
+    blocks of a fold) bool, all if None.
     """
     options = candidates(recipe.smoothing)
     members, own = singles(learners, bounds)
     choices_open = len(options) > 1 or len(bins_to_try(schema, recipe.bins)) > 1 or len(members) > len(own)
     nested = choices_open or recipe.temperature or len(learners) > 1
     parts = engine.blocks // folds
-    masks = {held: mask_without(held, folds, parts) for held in held_sets(folds, nested)}
-    sample = sample_for_choices(engine, folds)
+    used = np.ones((folds, parts), np.bool_) if used is None else used
+    masks = {held: mask_without(held, folds, parts) & used.ravel() for held in held_sets(folds, nested)}
+    sample = sample_for_choices(engine, folds, used)
     trials, losses = try_cuts(engine, schema, masks, members, bounds, recipe, sample, choices_open)
     outer: list[tuple[int, ...]] = [(), *((fold,) for fold in range(folds))]
 
@@ -134,7 +150,11 @@ def evaluate(
 
 def predict(evaluation: Evaluation, fold: int, structure: int, runs: Sequence[slice], out: np.ndarray) -> None:
     """Write the probabilities of some of a fold's rows, given as runs of the engine's rows, to the same rows of out."""
-    predictor = evaluation.predictor_of(fold, structure)
+    write(evaluation.predictor_of(fold, structure), runs, out)
+
+
+def write(predictor: Predicts, runs: Sequence[slice], out: np.ndarray) -> None:
+    """Write the probabilities of some of the engine's rows to the same rows of out."""
     for run in runs:
         for first in range(run.start, run.stop, _ROWS):
             last = min(first + _ROWS, run.stop)

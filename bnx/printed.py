@@ -9,16 +9,19 @@ from bnx.text import fixed, signed
 
 __all__ = [
     "AttributeRow",
+    "CurveTable",
     "EdgeRow",
     "PairRow",
     "ScoreRow",
     "attribute_rows",
     "confusion_rows",
+    "curve_table",
     "edge_row",
     "mix_row",
     "pair_row",
     "score_row",
     "setting",
+    "yardstick_row",
 ]
 
 _DASH = "–"
@@ -107,6 +110,15 @@ class AttributeRow:
     bar: float
 
 
+@dataclass(frozen=True)
+class CurveTable:
+    """Log loss by training rows, as printed: ``rows`` of (training rows, (log loss, cost) per structure)."""
+
+    names: tuple[str, ...]
+    rows: tuple[tuple[str, tuple[tuple[str, str], ...]], ...]
+    sentence: str
+
+
 def _p(value: float | None) -> str:
     """Write a p-value: four decimals, or a power of ten below a thousandth."""
     if value is None:
@@ -164,10 +176,38 @@ def score_row(document: Mapping[str, Any], entry: Mapping[str, Any]) -> ScoreRow
 
 def mix_row(entry: Mapping[str, Any]) -> ScoreRow:
     """Write the scores of the mix, which has no edges, tables and temperature of its own."""
-    own = {"name": "mix", "edges": [], "free_parameters": 0, "temperature": None, "smoothing": "", **entry}
+    return _row_of_none({"name": "mix", **entry}, "offered" if entry["offered"] else "not offered")
+
+
+def yardstick_row(entry: Mapping[str, Any]) -> ScoreRow:
+    """Write the scores of a model that is no structure."""
+    against = {"p_value": None, "probability_better": None, **entry["against_baseline"]}
+    return _row_of_none({"words": "not a structure", **entry, "against_baseline": against}, "")
+
+
+def _row_of_none(entry: Mapping[str, Any], role: str) -> ScoreRow:
+    """Write the scores of what is no structure."""
+    own = {"edges": [], "free_parameters": 0, "temperature": None, "smoothing": "", **entry}
     nobody = {"recommended": {"name": ""}, "best": "", "settings": {"baseline": ""}}
-    row = score_row(nobody, own)
-    return replace(row, role="offered" if entry["offered"] else "not offered", edges=_DASH, parameters=_DASH)
+    return replace(score_row(nobody, own), role=role, edges=_DASH, parameters=_DASH)
+
+
+def curve_table(curve: Mapping[str, Any]) -> CurveTable:
+    """Write log loss by training rows."""
+    rows = tuple(
+        (
+            f"{point['training_rows']:,.0f}",
+            tuple(
+                (
+                    _loss(one["log_loss"]) + ("" if one["log_loss_se"] is None else f" ± {fixed(one['log_loss_se'])}"),
+                    _DASH if one["cost"] is None else f"{signed(one['cost'])} {_range(one['interval'])}",
+                )
+                for one in point["structures"]
+            ),
+        )
+        for point in curve["points"]
+    )
+    return CurveTable(tuple(one["name"] for one in curve["points"][0]["structures"]), rows, curve["sentence"])
 
 
 def edge_row(edge: Mapping[str, Any], tries: int) -> EdgeRow:

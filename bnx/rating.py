@@ -8,12 +8,12 @@ import numpy as np
 
 from bnx.calibrating import FEWEST_ERRORS, steepness
 from bnx.engines import LocalEngine
-from bnx.evaluation import Evaluation, predict
+from bnx.evaluation import Evaluation, Predicts, write
 from bnx.kernels import slope_sums
 from bnx.losses import Histograms, Ranking, Scores, Tally, ranking, scores_of
 from bnx.weighed_losses import weighed_ranking, weighed_slope, weighed_tally
 
-__all__ = ["EXACT_ROWS", "SLOPE_ROWS", "Cell", "FoldScore", "StructureScore", "cells_of", "score"]
+__all__ = ["EXACT_ROWS", "SLOPE_ROWS", "Cell", "FoldScore", "StructureScore", "cells_of", "score", "score_of"]
 
 EXACT_ROWS = 5_000_000  # beyond, rankings come from histograms and slopes from some rows
 SLOPE_ROWS = 200_000
@@ -64,7 +64,8 @@ class Cell:
 class _Run:
     """All that is scored: ``truth`` (rows,) of all repeats; ``exact``: whether rows are kept and ranked one by one.
 
-    ``weights`` (rows,): of the rows, None where all count alike.
+    ``weights`` (rows,): of the rows, None where all count alike; ``others``: what predicts each cell in the place of
+    the evaluations, None where these do.
     """
 
     evaluations: Sequence[Evaluation]
@@ -72,6 +73,24 @@ class _Run:
     truth: np.ndarray
     exact: bool
     weights: np.ndarray | None
+    others: Sequence[Predicts] | None = None
+
+    @classmethod
+    def of(cls, evaluations: Sequence[Evaluation], others: Sequence[Predicts] | None = None) -> "_Run":
+        """Lay the rows of all repeats one after the other."""
+        truth = [one.engine.target for one in evaluations]
+        rows = sum(one.engine.rows for one in evaluations)
+        every = truth[0] if len(truth) == 1 else np.concatenate(truth)
+        return cls(evaluations, cells_of(evaluations), every, *_weights(evaluations, rows), others)
+
+    def room(self) -> np.ndarray:
+        """Make room for the probabilities of all rows, of none where they are not kept."""
+        return np.empty((len(self.truth) if self.exact else 0, self.classes))
+
+    def predictor(self, k: int, s: int) -> Predicts:
+        """Give what predicts the rows of a cell."""
+        cell = self.cells[k]
+        return self.others[k] if self.others else self.evaluations[cell.repeat].predictor_of(cell.fold, s)
 
     @property
     def engine(self) -> LocalEngine:
@@ -124,22 +143,30 @@ def score(
     Returns:
         The scores of every structure and of the mix, and those of every choice.
     """
-    rows = sum(one.engine.rows for one in evaluations)
-    truth = [one.engine.target for one in evaluations]
-    cells = cells_of(evaluations)
-    run = _Run(evaluations, cells, truth[0] if len(truth) == 1 else np.concatenate(truth), *_weights(evaluations, rows))
+    run = _Run.of(evaluations)
     alike = _alike(run)
     rooms = [_Changing.empty(run, [alike[pick] for pick in picks]) for picks in choices]
-    p = np.empty((rows if run.exact else 0, run.classes))
+    p = run.room()
     found: dict[int, StructureScore] = {}
     for s in sorted(set(alike)):
-        histograms = [] if run.exact else [Histograms.empty(run.classes)]
-        parts = run.engine.map(partial(_part, run, s, p), range(len(cells)), "scoring folds")
-        found[s] = _joined(run, parts, p, histograms)
+        parts = _parts(run, s, p)
+        found[s] = _joined(run, parts, p)
         for room in rooms:
             room.take(run, s, parts, p)
     every = [found[s] for s in alike]
     return every, [every[room.wanted[0]].pooled if room.same else room.joined(run) for room in rooms]
+
+
+def score_of(evaluations: Sequence[Evaluation], predictors: Sequence[Predicts]) -> StructureScore:
+    """Score what predicts the rows of each of ``cells_of``, as the structures are scored."""
+    run = _Run.of(evaluations, predictors)
+    p = run.room()
+    return _joined(run, _parts(run, 0, p), p)
+
+
+def _parts(run: _Run, s: int, p: np.ndarray) -> list[_Part]:
+    """Predict and sum up all folds."""
+    return run.engine.map(partial(_part, run, s, p), range(len(run.cells)), "scoring folds")
 
 
 @dataclass(frozen=True)
@@ -204,10 +231,10 @@ def _part(run: _Run, s: int, p: np.ndarray, k: int) -> _Part:
     """Predict one fold's rows and sum them up; p (all rows, C) takes the probabilities where they are kept."""
     cell = run.cells[k]
     if not run.exact:
-        return _streamed(run, s, cell)
+        return _streamed(run, k, s)
     evaluation, whole = run.evaluations[cell.repeat], Tally.empty(run.classes)
     own = evaluation.fold_rows[cell.fold]
-    predict(evaluation, cell.fold, s, own, p[cell.shift : cell.shift + evaluation.engine.rows])
+    write(run.predictor(k, s), own, p[cell.shift : cell.shift + evaluation.engine.rows])
     if run.weights is not None:
         whole = weighed_tally(p, cell.runs, run.truth, run.weights)
     else:
@@ -224,14 +251,10 @@ def _ranking(run: _Run, p: np.ndarray, parts: Sequence[slice], column: int) -> R
     return weighed_ranking(p, parts, run.truth, run.weights, column)
 
 
-def _streamed(run: _Run, s: int, cell: Cell) -> _Part:
+def _streamed(run: _Run, k: int, s: int) -> _Part:
     """Predict one fold's rows a few at a time, keeping nothing but sums and every so manieth row."""
-    evaluation, whole, histograms = (
-        run.evaluations[cell.repeat],
-        Tally.empty(run.classes),
-        Histograms.empty(run.classes),
-    )
-    predictor = evaluation.predictor_of(cell.fold, s)
+    cell, whole, histograms = run.cells[k], Tally.empty(run.classes), Histograms.empty(run.classes)
+    evaluation, predictor = run.evaluations[cell.repeat], run.predictor(k, s)
     every, seen = -(-len(run.truth) // SLOPE_ROWS), 0
     kept, truths = [], []
     for rows in evaluation.fold_rows[cell.fold]:
@@ -247,8 +270,9 @@ def _streamed(run: _Run, s: int, cell: Cell) -> _Part:
     return _Part(whole, histograms.rankings(), [histograms], sampled, np.concatenate(truths), (slice(0, len(sampled)),))
 
 
-def _joined(run: _Run, parts: Sequence[_Part], p: np.ndarray, histograms: list[Histograms]) -> StructureScore:
-    """Join the folds of one structure; p (all rows, C) where they are kept, else ``histograms`` to be filled."""
+def _joined(run: _Run, parts: Sequence[_Part], p: np.ndarray) -> StructureScore:
+    """Join the folds of one structure; p (all rows, C) where they are kept."""
+    histograms = [] if run.exact else [Histograms.empty(run.classes)]
     for part in parts:
         _merge(histograms, part.histograms)
     whole = Tally.merged([part.whole for part in parts])

@@ -62,6 +62,8 @@ class Recipe:
     require: tuple[str, ...] = ()
     forbid: tuple[str, ...] = ()
     resamples: int = 100
+    yardstick: bool = False
+    learning_curve: bool = False
 
     def __post_init__(self) -> None:
         """Check every setting that can be checked without the table."""

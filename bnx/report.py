@@ -16,16 +16,19 @@ from bnx.findings import Findings, drawn_pairs, findings
 from bnx.palette import PALETTES
 from bnx.printed import (
     AttributeRow,
+    CurveTable,
     EdgeRow,
     PairRow,
     ScoreRow,
     attribute_rows,
     confusion_rows,
+    curve_table,
     edge_row,
     mix_row,
     pair_row,
     score_row,
     setting,
+    yardstick_row,
 )
 
 __all__ = [
@@ -87,6 +90,9 @@ class Report:
     scores: tuple[ScoreRow, ...]
     mix: ScoreRow | None
     mix_reason: str
+    yardsticks: tuple[ScoreRow, ...]
+    yardstick_sentences: tuple[str, ...]
+    curve: CurveTable | None
     has_holdout: bool
     structures: tuple[Drawn, ...]
     folds_chart: FoldChart | None
@@ -159,6 +165,9 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         scores=tuple(one.score for one in structures),
         mix=mix_row(document["mix"]) if document["mix"] else None,
         mix_reason=document["mix"]["reason"] if document["mix"] else "",
+        yardsticks=tuple(yardstick_row(one) for one in document["yardsticks"] or ()),
+        yardstick_sentences=tuple(one["sentence"] for one in document["yardsticks"] or ()),
+        curve=curve_table(document["learning_curve"]) if document["learning_curve"] else None,
         has_holdout=any("holdout" in one for one in ranked),
         structures=tuple(structures),
         folds_chart=fold_chart(document),

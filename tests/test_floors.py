@@ -26,9 +26,11 @@ FLOORS = (
     "recipe wide_forests wide wide_learning matrix_memory heldout leaving_out learning pair_judging many_tests "
     "wide_testing wide_judging pair_table",
     "choosing cut_trials evaluation gains rating resampling pair_tests",
-    "dealing judging mix_judging ledger observing held_out cut_notes run_notes comparison",
+    "dealing judging mix_judging ledger observing held_out cut_notes run_notes yardstick_models yardstick "
+    "learning_curve comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
-    "chosen score_entries mix_documents documents charts findings printed report results tested_text tested_picture",
+    "chosen score_entries mix_documents yardstick_documents curve_documents documents charts findings printed report "
+    "results tested_text tested_picture",
     "cli",
 )
 PLACES = {name: (floor, place) for floor, names in enumerate(FLOORS) for place, name in enumerate(names.split())}
@@ -48,10 +50,14 @@ ONLY_IN = {
     # documents names its version
     "numba": {"kernels", "documents"},
     "matplotlib": {"lettering"},
-    "sklearn": set(),
+    "sklearn": {"yardstick_models"},
+    "threadpoolctl": {"yardstick_models"},
     "statsmodels": set(),
 }
-LAZY = {"cli": {"bnx.tested_picture"}}  # module -> what it may import inside a function
+LAZY = {  # module -> what it may import inside a function
+    "cli": {"bnx.tested_picture"},
+    "yardstick_models": {"sklearn.ensemble", "sklearn.linear_model", "threadpoolctl"},  # optional
+}
 LONGEST = 330
 
 FILES = sorted(PACKAGE.rglob("*.py"))

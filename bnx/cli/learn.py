@@ -111,6 +111,13 @@ def run(
     resamples: Annotated[
         int, typer.Option(metavar="N", help="Random halves for the stability of edges; 0 for none.")
     ] = Recipe.resamples,
+    yardstick: Annotated[
+        bool,
+        typer.Option("--yardstick", help="Also fit logistic regression and gradient boosting, for comparison only."),
+    ] = Recipe.yardstick,
+    learning_curve: Annotated[
+        bool, typer.Option("--learning-curve", help="Also learn from shares of the rows: would more rows help?")
+    ] = Recipe.learning_curve,
     predictions: Annotated[bool, typer.Option("--predictions", help="Also write out-of-fold probabilities.")] = False,
     all_pairs: Annotated[bool, typer.Option("--all-pairs", help="Also write every pair to pairs.parquet.")] = False,
     jobs: Jobs = 0,

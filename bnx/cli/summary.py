@@ -15,7 +15,14 @@ _FEW = 8
 
 def summary(document: Mapping[str, Any], output: str) -> str:
     """Say in one screen what a run found out."""
-    parts = [_head(document), [_table(document)], _legend(document), _held_out(document), _advice(document)]
+    parts = [
+        _head(document),
+        [_table(document)],
+        _legend(document),
+        _held_out(document),
+        _curve(document),
+        _advice(document),
+    ]
     return "\n\n".join("\n".join(part) for part in [*parts, [_files(document, output)]] if part)
 
 
@@ -54,15 +61,21 @@ def _left_out(columns: Sequence[Mapping[str, Any]]) -> list[str]:
 def _ranked(document: Mapping[str, Any], mix: Mapping[str, Any] | None = None) -> list[Mapping[str, Any]]:
     """List structures by log loss, and the mix among them if it is given."""
     every = [*document["structures"], *([{"name": "mix"} | dict(mix)] if mix else [])]
-    return sorted(every, key=lambda one: (one["log_loss"] is None, one["log_loss"]))
+    return sorted(every, key=_by_loss)
+
+
+def _by_loss(one: Mapping[str, Any]) -> tuple[bool, float]:
+    return one["log_loss"] is None, one["log_loss"] or 0.0
 
 
 def _table(document: Mapping[str, Any]) -> str:
     against = f"against {document['settings']['baseline']}, bits"
     header = ("structure", "edges", "params", "log loss, bits", against, "p", *_SCORES, "temp.")
-    return aligned(header, [_row(one, document) for one in _ranked(document, document["mix"])])
+    every = sorted([*_ranked(document, document["mix"]), *(document["yardsticks"] or ())], key=_by_loss)
+    return aligned(header, [_row(one, document) for one in every])
 
 
+_NO_STRUCTURE = ("not a", "structure")  # read on from one column to the next
 _SCORES = ("Brier", "accuracy", "AUC", "calib.")
 
 
@@ -82,12 +95,13 @@ def _row(one: Mapping[str, Any], document: Mapping[str, Any]) -> tuple[str, ...]
         else (f"{signed(against['difference'])} [{signed(against['interval'][0])}, {signed(against['interval'][1])}]")
     )
     error = "" if one["log_loss_se"] is None else f" +- {fixed(one['log_loss_se'])}"
-    p = "" if against["p_value"] is None else "<.001" if against["p_value"] < 0.001 else fixed(against["p_value"])
+    p_value = against.get("p_value")
+    p = "" if p_value is None else "<.001" if p_value < 0.001 else fixed(p_value)
+    sizes = (f"{len(one['edges']):,}", f"{one['free_parameters']:,}") if "edges" in one else ("", "")
     mark = "*" if one["name"] == document["recommended"]["name"] else " "
     return (
         f"{mark} {one['name']}",
-        f"{len(one['edges']):,}" if "edges" in one else "",
-        f"{one['free_parameters']:,}" if "edges" in one else "",
+        *(_NO_STRUCTURE if "against_recommended" in one and "words" not in one else sizes),
         _bits(one["log_loss"]) + error,
         difference,
         p,
@@ -102,6 +116,8 @@ def _legend(document: Mapping[str, Any]) -> list[str]:
     names = "; ".join(f"{one['name']}: {one['words']}" for one in ranked if one["words"] != one["name"])
     columns = "scores after calibration; interval 95 %; p adjusted over the structures; calib.: calibration error; "
     columns += "temp.: temperature"
+    if document["yardsticks"]:
+        columns += "; not a structure: fitted on the same folds and levels for comparison only, and not calibrated"
     return [_wrapped(part + ".") for part in (names, columns) if part]
 
 
@@ -115,6 +131,25 @@ def _held_out(document: Mapping[str, Any]) -> list[str]:
     return [head, aligned(("structure", "log loss, bits", *_SCORES), rows)]
 
 
+def _curve(document: Mapping[str, Any]) -> list[str]:
+    """Lay out log loss by training rows, if it was asked for."""
+    curve = document["learning_curve"]
+    if curve is None:
+        return []
+    names = [one["name"] for one in curve["points"][0]["structures"]]
+    header = ("training rows", *(text for name in names for text in (f"{name}, bits", "costs, bits")))
+    rows = []
+    for point in curve["points"]:
+        cells = [f"  {point['training_rows']:,.0f}"]
+        for one in point["structures"]:
+            ends = one["interval"]
+            cost = f"{signed(one['cost'])} [{signed(ends[0])}, {signed(ends[1])}]" if ends else ""
+            error = "" if one["log_loss_se"] is None else f" +- {fixed(one['log_loss_se'])}"
+            cells += [_bits(one["log_loss"]) + error, cost]
+        rows.append(cells)
+    return [aligned(header, rows), _wrapped(curve["sentence"])]
+
+
 def _advice(document: Mapping[str, Any]) -> list[str]:
     advice = document["recommended"]
     honest = advice["honest_log_loss"]
@@ -125,6 +160,7 @@ def _advice(document: Mapping[str, Any]) -> list[str]:
     ]
     if document["mix"]:
         lines.append(f"mix of {document['mix']['words']}. {document['mix']['reason']}")
+    lines += [one["sentence"] for one in document["yardsticks"] or ()]
     naive = next((one for one in document["structures"] if one["name"] == "naive"), None)
     if naive and naive["temperature"] < 0.95:
         lines.append(
