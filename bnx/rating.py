@@ -13,7 +13,7 @@ from bnx.kernels import slope_sums
 from bnx.losses import Histograms, Ranking, Scores, Tally, ranking, scores_of
 from bnx.weighed_losses import weighed_ranking, weighed_slope, weighed_tally
 
-__all__ = ["EXACT_ROWS", "SLOPE_ROWS", "Cell", "FoldScore", "StructureScore", "cells_of", "score"]
+__all__ = ["EXACT_ROWS", "SLOPE_ROWS", "Cell", "FoldScore", "StructureScore", "cells_of", "rows_ranked", "score"]
 
 EXACT_ROWS = 5_000_000  # beyond, rankings come from histograms and slopes from some rows
 SLOPE_ROWS = 200_000
@@ -127,7 +127,9 @@ def score(
     rows = sum(one.engine.rows for one in evaluations)
     truth = [one.engine.target for one in evaluations]
     cells = cells_of(evaluations)
-    run = _Run(evaluations, cells, truth[0] if len(truth) == 1 else np.concatenate(truth), *_weights(evaluations, rows))
+    run = _Run(
+        evaluations, cells, truth[0] if len(truth) == 1 else np.concatenate(truth), *rows_ranked(evaluations, rows)
+    )
     alike = _alike(run)
     rooms = [_Changing.empty(run, [alike[pick] for pick in picks]) for picks in choices]
     p = np.empty((rows if run.exact else 0, run.classes))
@@ -180,7 +182,7 @@ class _Changing:
         return scores_of(whole, _rankings(run, self.p, self.histograms))
 
 
-def _weights(evaluations: Sequence[Evaluation], rows: int) -> tuple[bool, np.ndarray | None]:
+def rows_ranked(evaluations: Sequence[Evaluation], rows: int) -> tuple[bool, np.ndarray | None]:
     """Tell whether rows are ranked one by one, as they always are where they have weights; and the weights."""
     weighed = [one.engine.weighed.of_rows for one in evaluations if one.engine.weighed]
     return (True, np.concatenate(weighed)) if weighed else (rows <= EXACT_ROWS, None)
