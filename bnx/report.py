@@ -27,6 +27,7 @@ from bnx.printed import (
     score_row,
     setting,
 )
+from bnx.reliability_chart import ReliabilityChart, reliability_charts
 
 __all__ = [
     "ATTRIBUTES_ON_PAGE",
@@ -88,6 +89,7 @@ class Report:
     mix: ScoreRow | None
     mix_reason: str
     has_holdout: bool
+    reliability: tuple[ReliabilityChart, ...]
     structures: tuple[Drawn, ...]
     folds_chart: FoldChart | None
     pairs: tuple[PairRow, ...]
@@ -160,6 +162,7 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         mix=mix_row(document["mix"]) if document["mix"] else None,
         mix_reason=document["mix"]["reason"] if document["mix"] else "",
         has_holdout=any("holdout" in one for one in ranked),
+        reliability=reliability_charts(document),
         structures=tuple(structures),
         folds_chart=fold_chart(document),
         pairs=tuple(pair_row(pair, drawn) for pair in _strongest_pairs(document)),

@@ -28,7 +28,8 @@ FLOORS = (
     "choosing evaluation gains rating before_after resampling pair_tests",
     "dealing judging mix_judging ledger observing held_out run_notes comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
-    "chosen score_entries mix_documents documents charts findings printed report results tested_text tested_picture",
+    "chosen score_entries mix_documents documents charts findings printed reliability_words "
+    "reliability_chart report results tested_text tested_picture",
     "cli",
 )
 PLACES = {name: (floor, place) for floor, names in enumerate(FLOORS) for place, name in enumerate(names.split())}
