@@ -62,9 +62,10 @@ def curve_of(sums: BinSums, repeats: int, log_loss: float) -> Curve:
     """Make a curve of the sums; repeats: how often each row was predicted, which makes it no further evidence."""
     bins = []
     for k in np.flatnonzero(sums.rows).tolist():
-        rows, right = float(sums.rows[k]), float(sums.hits[k] / sums.rows[k])
+        rows = float(sums.rows[k])
+        mean, right = (min(1.0, float(one[k]) / rows) for one in (sums.scores, sums.hits))
         effective = rows * rows / float(sums.squares[k]) / repeats
-        bins.append(Bin(float(sums.scores[k]) / rows, right, rows, effective, wilson(right * effective, effective)))
+        bins.append(Bin(mean, right, rows, effective, wilson(right * effective, effective)))
     error = float(np.abs(sums.scores - sums.hits).sum() / sums.rows.sum())
     return Curve(tuple(bins), error, log_loss)
 

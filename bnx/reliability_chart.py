@@ -9,7 +9,7 @@ from bnx.reliability_words import calibration_words, sure
 
 __all__ = ["ReliabilityChart", "ReliabilityMark", "ReliabilityRow", "ReliabilitySide", "reliability_charts"]
 
-_LEFT, _TOP, _SIDE = 62.0, 8.0, 270.0
+_LEFT, _TOP, _SIDE = 60.0, 8.0, 258.0
 _RIGHT, _BOTTOM = 14.0, 44.0
 
 

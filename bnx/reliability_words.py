@@ -8,7 +8,7 @@ from bnx.text import fixed
 __all__ = ["calibration_words", "sure"]
 
 _ABOUT_ONE = (0.95, 1.05)
-_FAR = 0.03  # answers further apart are not called as sure as one another
+_FAR = 0.1  # answers further apart are not nearly as sure as one another
 
 
 def sure(share: float) -> str:
@@ -62,7 +62,7 @@ def _answers(before: Sequence[Mapping[str, Any]], after: Sequence[Mapping[str, A
     near = min(after, key=lambda one: abs(one["mean_probability"] - worst["mean_probability"]))
     told = f"Before calibration, its answers that were {_right(worst)} of records"
     if abs(near["mean_probability"] - worst["mean_probability"]) > _FAR:
-        return f"{told}; after it, it gives no answers as sure as that."
+        return f"{told}; after it, no group of answers is nearly as sure."
     return f"{told}; after it, those that were {_right(near)}."
 
 
