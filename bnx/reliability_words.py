@@ -22,10 +22,10 @@ def calibration_words(document: Mapping[str, Any], name: str) -> str:
     """Say what the temperature of a structure means, and what calibration did to its answers."""
     found = document["reliability"][name]
     entry = next((one for one in document["structures"] if one["name"] == name), None)
-    if entry is None:
-        return "A mix of calibrated structures: there is nothing before calibration. " + _after(found["after"])
     if not document["settings"]["temperature"]:
-        return "Nothing was calibrated, so this is both before and after. " + _after(found["after"])
+        return "Nothing was calibrated, so this is both before and after. " + _figures_of(found["after"])
+    if entry is None:
+        return "A mix of calibrated structures: there is nothing before calibration. " + _figures_of(found["after"])
     return " ".join(
         [
             _temperature(name, entry["temperature"], document["pairs_verdicts"]["dependent"]),
@@ -79,5 +79,5 @@ def _figures(before: Mapping[str, Any], after: Mapping[str, Any]) -> str:
     return f"Calibration error {error} before, {then} after; log loss {_loss(before)} before, {_loss(after)} after."
 
 
-def _after(curve: Mapping[str, Any]) -> str:
+def _figures_of(curve: Mapping[str, Any]) -> str:
     return f"Calibration error {fixed(curve['calibration_error'])}, log loss {_loss(curve)}."
