@@ -2,12 +2,14 @@
 
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
+from functools import cached_property
 from hashlib import sha256
 from pathlib import PurePath
 from typing import Any
 
 import numpy as np
 
+from bnx.before_after import Reliability, reliability_of
 from bnx.choosing import Choice
 from bnx.classifier import Classifier
 from bnx.coding import Coded
@@ -98,6 +100,17 @@ class Comparison:
     def names(self) -> tuple[str, ...]:
         """Names of the attributes."""
         return tuple(domain.name for domain in self.domains)
+
+    @cached_property
+    def reliability(self) -> dict[str, Reliability]:
+        """Reliability of naive and the recommended structure, by name, and of the mix if it is offered."""
+        names = self.recipe.structures
+        taken = [s for s, name in enumerate(names) if name == "naive" or s == self.recommendation.recommended]
+        pooled = {names[s]: (s, self.results[s].pooled) for s in taken}
+        if self.mix and self.mix.offered:
+            pooled["mix"] = (len(names), self.mix.score.pooled)
+        tempered = self.recipe.temperature
+        return {name: reliability_of(self.evaluations, s, own, tempered) for name, (s, own) in pooled.items()}
 
 
 def compare(

@@ -20,7 +20,7 @@ from bnx.ledger import EdgeEvidence
 from bnx.mix_documents import mix_entry
 from bnx.picture import Arrow, Chip, Picture
 from bnx.plain import finite
-from bnx.score_entries import against_entry, fold_entries, score_entry
+from bnx.score_entries import against_entry, fold_entries, reliability_entry, score_entry
 from bnx.structure import words
 from bnx.text import count_of
 from bnx.verdicts import OUTCOMES, VERDICTS, TestResult
@@ -92,6 +92,7 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
             "mix": mix_entry(comparison),
             "yardsticks": yardstick_entries(comparison),
             "learning_curve": curve_entry(comparison),
+            "reliability": {name: reliability_entry(one) for name, one in comparison.reliability.items()},
             "pairs": [result.to_dict() for result in pair_results(comparison)],
             "pairs_total": comparison.judged.family,
             "pairs_rejected": comparison.judged.rejected,

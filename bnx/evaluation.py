@@ -45,10 +45,12 @@ class Predictor:
 
     def probabilities(self, first: int, last: int) -> np.ndarray:
         """Predict rows ``first:last`` of the engine, (last - first, C)."""
-        p = probabilities(self.calibration, self.log_prior, self.terms.evidence(self.codes, first, last))
-        p[self.terms.rows_of_nothing(self.codes, first, last) - first] = without_evidence(
-            self.calibration, self.log_prior
-        )
+        return self.calibrated(self.terms.evidence(self.codes, first, last), self.calibration, first, last)
+
+    def calibrated(self, evidence: np.ndarray, calibration: Calibration, first: int, last: int) -> np.ndarray:
+        """Turn the evidence of rows ``first:last``, (last - first, at least C - 1) nats, into probabilities."""
+        p = probabilities(calibration, self.log_prior, evidence)
+        p[self.terms.rows_of_nothing(self.codes, first, last) - first] = without_evidence(calibration, self.log_prior)
         return p
 
 

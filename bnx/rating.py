@@ -13,7 +13,17 @@ from bnx.kernels import slope_sums
 from bnx.losses import Histograms, Ranking, Scores, Tally, ranking, scores_of
 from bnx.weighed_losses import weighed_ranking, weighed_slope, weighed_tally
 
-__all__ = ["EXACT_ROWS", "SLOPE_ROWS", "Cell", "FoldScore", "StructureScore", "cells_of", "score", "score_of"]
+__all__ = [
+    "EXACT_ROWS",
+    "SLOPE_ROWS",
+    "Cell",
+    "FoldScore",
+    "StructureScore",
+    "cells_of",
+    "rows_ranked",
+    "score",
+    "score_of",
+]
 
 EXACT_ROWS = 5_000_000  # beyond, rankings come from histograms and slopes from some rows
 SLOPE_ROWS = 200_000
@@ -81,7 +91,7 @@ class _Run:
         truth = [one.engine.target for one in evaluations]
         rows = sum(one.engine.rows for one in evaluations)
         every = truth[0] if len(truth) == 1 else np.concatenate(truth)
-        return cls(evaluations, cells_of(evaluations), every, *_weights(evaluations, rows), others)
+        return cls(evaluations, cells_of(evaluations), every, *rows_ranked(evaluations, rows), others)
 
     def room(self) -> np.ndarray:
         """Make room for the probabilities of all rows, of none where they are not kept."""
@@ -207,7 +217,7 @@ class _Changing:
         return scores_of(whole, _rankings(run, self.p, self.histograms))
 
 
-def _weights(evaluations: Sequence[Evaluation], rows: int) -> tuple[bool, np.ndarray | None]:
+def rows_ranked(evaluations: Sequence[Evaluation], rows: int) -> tuple[bool, np.ndarray | None]:
     """Tell whether rows are ranked one by one, as they always are where they have weights; and the weights."""
     weighed = [one.engine.weighed.of_rows for one in evaluations if one.engine.weighed]
     return (True, np.concatenate(weighed)) if weighed else (rows <= EXACT_ROWS, None)

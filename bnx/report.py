@@ -30,6 +30,7 @@ from bnx.printed import (
     setting,
     yardstick_row,
 )
+from bnx.reliability_chart import ReliabilityChart, reliability_charts
 
 __all__ = [
     "ATTRIBUTES_ON_PAGE",
@@ -94,6 +95,7 @@ class Report:
     yardstick_sentences: tuple[str, ...]
     curve: CurveTable | None
     has_holdout: bool
+    reliability: tuple[ReliabilityChart, ...]
     structures: tuple[Drawn, ...]
     folds_chart: FoldChart | None
     pairs: tuple[PairRow, ...]
@@ -169,6 +171,7 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         yardstick_sentences=tuple(one["sentence"] for one in document["yardsticks"] or ()),
         curve=curve_table(document["learning_curve"]) if document["learning_curve"] else None,
         has_holdout=any("holdout" in one for one in ranked),
+        reliability=reliability_charts(document),
         structures=tuple(structures),
         folds_chart=fold_chart(document),
         pairs=tuple(pair_row(pair, drawn) for pair in _strongest_pairs(document)),

@@ -3,10 +3,12 @@
 from collections.abc import Sequence
 from typing import Any
 
+from bnx.before_after import Reliability
 from bnx.judging import Against
 from bnx.rating import StructureScore
+from bnx.reliability import Curve
 
-__all__ = ["against_entry", "fold_entries", "score_entry"]
+__all__ = ["against_entry", "fold_entries", "reliability_entry", "score_entry"]
 
 
 def score_entry(result: StructureScore, levels: Sequence[str]) -> dict[str, Any]:
@@ -45,4 +47,26 @@ def against_entry(against: Against | None) -> dict[str, Any]:
         "region_bits": against.region,
         "probability_better": against.chances.better,
         "probability_equivalent": against.chances.equivalent,
+    }
+
+
+def reliability_entry(found: Reliability) -> dict[str, Any]:
+    """Describe reliability before and after calibration."""
+    return {"before": found.before and _curve_entry(found.before), "after": _curve_entry(found.after)}
+
+
+def _curve_entry(curve: Curve) -> dict[str, Any]:
+    return {
+        "log_loss": curve.log_loss,
+        "calibration_error": curve.calibration_error,
+        "bins": [
+            {
+                "mean_probability": one.mean,
+                "share_right": one.right,
+                "interval": list(one.interval),
+                "rows": int(one.rows) if one.rows.is_integer() else one.rows,
+                "effective_rows": one.effective_rows,
+            }
+            for one in curve.bins
+        ],
     }

@@ -14,7 +14,7 @@ FLOORS = (
     "bnx errors text palette plain unfinished",
     "kernels calibrating simplex counts tiles discretising domains dot_text embedding files storing cells "
     "folds layers losses branching multiplicity paired picture structure picking sharpening mixing svg effects ordered "
-    "loglinear fibre homogeneity masked unobserved summing_out weighed_losses",
+    "loglinear fibre homogeneity masked unobserved summing_out weighed_losses reliability",
     "tables views blocks columns columnar delimited malformed repeating reading weighing levelling screening "
     "duplicates level_order",
     "coarsening gathering passes coding encoding pair_counting engines",
@@ -25,12 +25,12 @@ FLOORS = (
     "learners",
     "recipe wide_forests wide wide_learning matrix_memory heldout leaving_out learning pair_judging many_tests "
     "wide_testing wide_judging pair_table",
-    "choosing cut_trials evaluation gains rating resampling pair_tests",
+    "choosing cut_trials evaluation gains rating before_after resampling pair_tests",
     "dealing judging mix_judging ledger observing held_out cut_notes run_notes yardstick_models yardstick "
     "learning_curve comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
-    "chosen score_entries mix_documents yardstick_documents curve_documents documents charts findings printed report "
-    "results tested_text tested_picture",
+    "chosen score_entries mix_documents yardstick_documents curve_documents documents charts findings printed "
+    "reliability_words reliability_chart report results tested_text tested_picture",
     "cli",
 )
 PLACES = {name: (floor, place) for floor, names in enumerate(FLOORS) for place, name in enumerate(names.split())}
@@ -38,9 +38,9 @@ PLACES = {name: (floor, place) for floor, names in enumerate(FLOORS) for place, 
 WITHOUT_DATA = ("gating", "independence", "learners")
 PLAIN = (
     *("kernels", "multiplicity", "folds", "losses", "discretising", "calibrating", "paired"),
-    *("effects", "ordered", "loglinear", "weighed_losses"),
+    *("effects", "ordered", "loglinear", "weighed_losses", "reliability"),
 )
-LENT = {"weighed_losses": {"losses"}}  # a plain module -> plain modules that it goes on from
+LENT = {"weighed_losses": {"losses"}, "reliability": {"losses"}}  # a plain module -> plain modules that it goes on from
 ONLY_IN = {
     "typer": {"cli"},
     "rich": {"cli"},

@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 import pandas as pd
 import pytest
-from builders import compared
+from builders import compared, folds_of
 from commandline import FAST, call, refusal
 from jsonschema import Draft202012Validator
 from sklearn.ensemble import HistGradientBoostingClassifier
@@ -236,3 +236,25 @@ def test_without_scikit_learn_one_sentence_and_no_work(tmp_path: Path, monkeypat
     )
     assert not (tmp_path / "out").exists()
     assert call("learn", *given).code == 0
+
+
+def test_rows_count_as_they_weigh() -> None:
+    """Scikit-learn with sample_weight on the same folds; weights are scaled to the mean 1 by the program."""
+    frame = table(240).drop(columns="site")
+    heavy = np.random.default_rng(2).choice([0.5, 1.25, 3.0], 240)
+    found = compared(frame.assign(w=heavy), "grade", structures=("naive",), weight="w", yardstick=True, keep=("all",))
+    fold, columns = folds_of(found.evaluations[0]), ATTRIBUTES
+    weights = heavy / heavy.mean()
+    total = 0.0
+    for number in np.unique(fold):
+        train, test = fold != number, fold == number
+        encoder = OneHotEncoder(handle_unknown="ignore").fit(frame.loc[train, columns])
+        model = LogisticRegression(C=1, max_iter=5_000)
+        model.fit(encoder.transform(frame.loc[train, columns]), frame.loc[train, "grade"], sample_weight=weights[train])
+        p = model.predict_proba(encoder.transform(frame.loc[test, columns]))
+        mass = np.array([weights[train & (frame["grade"] == name)].sum() for name in model.classes_])
+        floor = 0.5 / mass.sum()
+        p = (1 - floor) * p + floor * (mass + 1 / 3) / (mass.sum() + 1)
+        own = p[np.arange(len(p)), frame.loc[test, "grade"].map({"x": 0, "y": 1, "z": 2})]
+        total -= (weights[test] * np.log2(own)).sum()
+    assert found.yardsticks[0].score.pooled.log_loss == pytest.approx(total / weights.sum(), abs=2e-4)
