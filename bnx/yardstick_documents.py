@@ -52,7 +52,7 @@ def yardstick_sentence(one: Yardstick) -> str:
         f"per record [{signed(low)}, {signed(high)}]"
     )
     if low <= 0 <= high:
-        return f"{told}, which can be chance: no cost of a model one can read is seen here."
-    if not better:
-        return f"{told}: a model one can read costs nothing here."
-    return told + (": that is what a model one can read costs here." if one.name == BOOSTING else ".")
+        told, what = f"{told}, which can be chance", "no cost of a model one can read is seen here"
+    else:
+        what = "that is what a model one can read costs here" if better else "a model one can read costs nothing here"
+    return f"{told}: {what}." if one.name == BOOSTING else f"{told}."

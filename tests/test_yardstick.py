@@ -18,8 +18,10 @@ from sklearn.linear_model import LogisticRegression
 from sklearn.preprocessing import OneHotEncoder, OrdinalEncoder
 
 from bnx import rating
+from bnx.paired import Difference
 from bnx.report import report_html
-from bnx.yardstick_documents import yardstick_entries
+from bnx.yardstick import Yardstick
+from bnx.yardstick_documents import yardstick_entries, yardstick_sentence
 from bnx.yardstick_models import BOOSTING, LOGISTIC, Seen, seen_by
 
 ATTRIBUTES = ["dock", "alarm", "lane", "rare"]
@@ -156,6 +158,26 @@ def picks(document: dict[str, Any]) -> list[str]:
 
 def without_print(document: dict[str, Any]) -> dict[str, Any]:
     return {key: value for key, value in document.items() if key != "printed"}
+
+
+@pytest.mark.parametrize(
+    ("name", "apart", "words"),
+    [
+        (BOOSTING, (-0.02, -0.03, -0.01), "is better than the recommended structure by 0.020 bits per record [+0.010, "
+         "+0.030]: that is what a model one can read costs here."),
+        (BOOSTING, (-0.02, -0.05, 0.01), "[-0.010, +0.050], which can be chance: no cost of a model one can read is"),
+        (BOOSTING, (0.02, 0.01, 0.03), "is worse than the recommended structure by 0.020 bits per record [+0.010, "
+         "+0.030]: a model one can read costs nothing here."),
+        (LOGISTIC, (-0.02, -0.03, -0.01), "is better than the recommended structure by 0.020 bits per record [+0.010, "
+         "+0.030]."),
+        (LOGISTIC, None, "cannot be compared with the recommended structure, as a log loss is infinite."),
+    ],
+)  # fmt: skip
+def test_the_sentence(name: str, apart: tuple[float, float, float] | None, words: str) -> None:
+    score = compared(table(), "grade", structures=("naive",), folds=3).results[0]
+    one = Yardstick(name, score, None, Difference(*apart, 0.1) if apart else None, None, 0, ())
+    assert yardstick_sentence(one).startswith(f"{name.capitalize()} ")
+    assert words in yardstick_sentence(one)
 
 
 @pytest.mark.parametrize("key", SCHEMA["$defs"]["yardstick"]["required"])
