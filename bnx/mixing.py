@@ -12,9 +12,9 @@ from bnx.structure import Structure
 __all__ = ["LIKELY", "Mix", "fit_mix", "members_of", "mixed"]
 
 LIKELY = 0.5
-_TAKEN = 0.1  # the least chance of being better than the single structure
+_AHEAD, _LEVEL = 0.95, 0.1  # the least chance of being better than a single structure without edges, and with some
 _FOLD = 10.0  # nats behind that lower a weight by a factor of e
-_EDGES = 30.0  # nats that a structure with edges must be ahead to start like one without
+_EDGES = 20.0  # nats that a structure with edges must be ahead to start like one without
 _PENALTY = 20.0
 _LEAST = 0.01
 _STEPS = 50
@@ -102,10 +102,10 @@ def fit_mix(
     posteriors: of each of ``members``, (N, C); structures: all of them; single: the one of the members that is taken
     where none is mixed, with its mean losses by fold in bits; truth (N,); weights (N,): how many rows each stands for;
     starts (folds + 1,): the first row of each fold. Minimises total log loss (nats) + 20 sum (w - u)^2 over the
-    simplex. The u are proportional to exp(-nats / 10), the total log loss of each structure, with 30 nats added to
+    simplex. The u are proportional to exp(-nats / 10), the total log loss of each structure, with 20 nats added to
     those that have edges: of a few rows a fit alone would follow chance. Weights below .01 are dropped. The loss of a
-    fold is that by weights without it, from one step of Newton's off the weights of all. The mix is taken unless the
-    single structure is better with a probability of .9.
+    fold is that by weights without it, from one step of Newton's off the weights of all. The mix is taken if it is
+    better than the single structure with a probability of .95 where that one has no edges, and of .1 where it has.
 
     Source: Genest & Zidek 1986 (logarithmic opinion pool); Vovk 1990 (weights that fall exponentially with the loss).
     """
@@ -125,7 +125,8 @@ def fit_mix(
     for k, fold in enumerate(filled.tolist()):
         without = replace(rows, towards=_falling(np.delete(nats, k, axis=1).sum(axis=1) + handicap))
         losses[fold] = _loss_without(without, point, sums, k, int(sizes[fold]))
-    return Mix(whole, losses, chances_of(losses, single_losses, len(sizes), 0.0).better > _TAKEN)
+    least = _LEVEL if structures[single].edges else _AHEAD
+    return Mix(whole, losses, chances_of(losses, single_losses, len(sizes), 0.0).better > least)
 
 
 def _nats(posteriors: Sequence[np.ndarray], truth: np.ndarray, weights: np.ndarray, starts: np.ndarray) -> np.ndarray:

@@ -109,9 +109,9 @@ def test_files_that_are_no_table() -> None:
 
 SETTINGS = {
     "--structures bayes": "--structures: 'bayes' is not a structure; known: naive, tan, tan-tested, kdbK, kdbK-tested "
-    "(K = 1, 2, ...), heldout",
+    "(K = 1, 2, ...), kdb, kdb-trimmed, heldout",
     "--structures kdb0": "--structures: 'kdb0' is not a structure; known: naive, tan, tan-tested, kdbK, kdbK-tested "
-    "(K = 1, 2, ...), heldout",
+    "(K = 1, 2, ...), kdb, kdb-trimmed, heldout",
     "--structures tan": "--structures names one structure twice (naive, tan, tan); name each once",
     "--structures ,": "--structures: ',' names nothing; give one or more names, or drop the option",
     "--baseline kdb2": "--baseline kdb2 is not among the structures; add it to --structures, or choose one of naive, "

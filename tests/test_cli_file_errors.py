@@ -123,7 +123,7 @@ def test_results_folders_without_the_structure_asked_for() -> None:
         f"{folder} holds no structure 'kdb22'; did you mean kdb2?"
     )
     assert refusal("export", folder, "--structure", "comparison", "-o", "f.json") == (
-        f"{folder} holds no structure 'comparison'; known: kdb2, naive, tan"
+        f"{folder} holds no structure 'comparison'; known: kdb2, mix, naive, tan"
     )
     assert refusal("export", ".", "--structure", "tan", "-o", "f.json") == (
         ". holds no comparison.json; give the folder that bnx learn -o wrote"

@@ -23,6 +23,7 @@ from bnx.mix_documents import mix_document
 from bnx.mix_judging import judge_mix
 from bnx.mixed_classifier import MixedClassifier, mix_words
 from bnx.mixing import Mix, fit_mix, members_of, mixed
+from bnx.picking import chances_of
 from bnx.recipe import Recipe
 from bnx.simplex import least_on_simplex
 from bnx.structure import Structure
@@ -56,7 +57,7 @@ def shapes(number: int) -> list[Structure]:
 def drawn_to(p: list[np.ndarray], truth: np.ndarray, weights: np.ndarray) -> np.ndarray:
     """Weights that the fit is drawn to, from their definition."""
     nats = np.array(
-        [(weights * log_losses(one, truth)).sum() * np.log(2) + (30 if k else 0) for k, one in enumerate(p)]
+        [(weights * log_losses(one, truth)).sum() * np.log(2) + (20 if k else 0) for k, one in enumerate(p)]
     )
     falling = np.exp(-(nats - nats.min()) / 10)
     return np.asarray(falling / falling.sum())
@@ -125,7 +126,7 @@ def test_structures_far_behind_leave_the_mix_and_edges_need_a_lead() -> None:
     sure = np.eye(3)[truth] * 0.98 + 0.005
     assert fitted([p[0], sure], truth).weights == pytest.approx([0, 1], abs=0.02)
     start = drawn_to([p[0], p[0]], truth, np.ones(200))
-    assert start == pytest.approx([1 / (1 + np.exp(-3)), 1 / (1 + np.exp(3))])
+    assert start == pytest.approx([1 / (1 + np.exp(-2)), 1 / (1 + np.exp(2))])
 
 
 def test_losses_of_a_fold_come_from_weights_without_it() -> None:
@@ -301,3 +302,16 @@ def test_the_file_of_a_mix_classifies_as_the_run_does() -> None:
     assert mixed_of(document, "mix.json").probabilities(codes).tolist() == own.probabilities(codes).tolist()
     by_hand = mixed([found.classifiers[s].probabilities(codes) for s in found.mix.members], own.weights)
     assert own.probabilities(codes).tolist() == by_hand.tolist()
+
+
+def test_naive_bayes_is_left_for_good_reason_only() -> None:
+    """Where the single structure has no edges the mix must be ahead; where it has some it must not be behind."""
+    p, truth = experts(2, 9)
+    usual = fold_losses(p[0], truth)
+    chance = chances_of(fitted(p, truth).losses, usual, 3, 0.0).better
+    assert 0.1 < chance < 0.95
+    plain, drawn = shapes(2)
+    taken = [
+        fit_mix(p, range(2), order, 0, truth, np.ones(200), STARTS, usual).taken for order in ([plain] * 2, [drawn] * 2)
+    ]
+    assert taken == [False, True]

@@ -2,6 +2,7 @@
 
 import json
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -16,7 +17,8 @@ from bnx.reading import open_source
 from bnx.recipe import Recipe
 
 FAST = ("--structures", "naive,tan-tested", "--folds", "4", "--resamples", "6", "--quiet", "--jobs", "2")
-OF_THE_FILE = {"sha256", "source", "settings", "weights", "warnings"}
+OF_THE_FILE = {"sha256", "source", "settings"}
+OF_THE_WEIGHTS = {"weights", "warnings"}
 
 
 def cells(names: list[str], levels: list[list[str]], counts: np.ndarray) -> pd.DataFrame:
@@ -46,13 +48,22 @@ def written(table: pd.DataFrame, path: Path) -> str:
     return str(path)
 
 
+def without_file(document: Any) -> Any:
+    """Leave out of a document what names the file, also of the members of a mix."""
+    if isinstance(document, dict):
+        return {key: without_file(one) for key, one in document.items() if key not in OF_THE_FILE}
+    return [without_file(one) for one in document] if isinstance(document, list) else document
+
+
 def results(folder: Path) -> dict[str, object]:
     """Read a results folder but what names the file; the page shows the same and the file's name."""
     found: dict[str, object] = {}
     for path in sorted(folder.iterdir()):
         if path.suffix == ".json":
-            document = json.loads(path.read_text())
-            found[path.name] = json.dumps({key: one for key, one in document.items() if key not in OF_THE_FILE})
+            document, told = json.loads(path.read_text()), OF_THE_WEIGHTS if path.stem == "comparison" else set()
+            found[path.name] = json.dumps(
+                without_file({key: document[key] for key in document.keys() - told}), sort_keys=True
+            )
         elif path.suffix != ".html":
             found[path.name] = path.read_bytes()
     return found

@@ -144,6 +144,17 @@ def test_inner_choices_and_gains_weigh_the_rows_of_their_sample(plain: Compariso
     assert one.sample.weights == pytest.approx(mass[one.engine.order], rel=1e-12)
 
 
+def test_the_mix_is_judged_by_weights_and_so_are_structures_that_choose_for_themselves() -> None:
+    frame = weighted(500, seed=4)
+    rows, mass = used(frame)
+    found = compared(frame, "kind", weight="w", structures=("naive", "kdb", "kdb-trimmed", "heldout"), folds=4)
+    assert found.mix is not None
+    numbers = range(5 if found.evaluations[0].mixes else 4)
+    expected = [log_loss(rows["kind"], predicted(found, s), sample_weight=mass) / np.log(2) for s in numbers]
+    told = [*(result.pooled.log_loss for result in found.results), found.mix.score.pooled.log_loss]
+    assert told[: len(expected)] == pytest.approx(expected, rel=1e-9)
+
+
 def test_equal_weights_change_nothing_but_what_is_said() -> None:
     frame = weighted().assign(w=0.5)
     chosen = {"structures": ("naive", "tan", "kdb2-tested"), "folds": 5}
@@ -164,7 +175,7 @@ def test_equal_weights_change_nothing_but_what_is_said() -> None:
 def test_results_do_not_depend_on_threads_and_fit_the_schema(missing: str) -> None:
     frame = weighted(300, seed=8)
     frame.loc[::17, "two"] = ""
-    chosen = {"structures": ("naive", "tan-tested", "heldout"), "folds": 4, "repeats": 2, "missing": missing}
+    chosen = {"structures": ("naive", "kdb-trimmed", "heldout"), "folds": 4, "repeats": 2, "missing": missing}
     texts = [json_text(comparison_document(compared(frame, "kind", jobs, weight="w", **chosen))) for jobs in (1, 2)]
     assert texts[0] == texts[1]
     document = json.loads(texts[0])

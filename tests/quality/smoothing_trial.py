@@ -112,7 +112,7 @@ def _scored(engine: LocalEngine, trials: Sequence[Trial], recipe: Recipe, ways: 
     total, settled = np.zeros(len(recipe.structures)), [list[str]() for _ in recipe.structures]
     parts = engine.blocks // recipe.folds
     for fold in range(recipe.folds):
-        choice = choose((fold,), recipe.folds, trials, losses, ways, sample, True, True)  # type: ignore[arg-type]
+        choice = choose((fold,), recipe.folds, trials, losses, ways, sample, True, True, False)  # type: ignore[arg-type]
         counted = choice.trial.counts[(fold,)]
         prior = choice.trial.learned[(fold,)].training.log_prior
         for s in range(len(recipe.structures)):
