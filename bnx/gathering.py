@@ -2,6 +2,7 @@
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from itertools import islice
 
 import numpy as np
 import pyarrow as pa
@@ -24,6 +25,7 @@ __all__ = ["Gatherer"]
 
 TEXTS_AT_MOST = 1000  # distinct texts of a column of numbers that are kept apart; beyond, only their values are
 FEW_NUMBERS = 20
+_FIRST = 64  # texts that tell most columns of words from those of numbers
 
 
 @dataclass(frozen=True)
@@ -93,9 +95,12 @@ class Gatherer:
         Raises:
             DataError: naming the first of them.
         """
+        some = list(islice(self._index, _FIRST))
+        if self._typed or not (part_numbers(some) | infinite_numbers(some)).all():
+            return
         texts = list(self._index)
         infinite = infinite_numbers(texts)
-        if self._typed or not infinite.any():
+        if not infinite.any():
             return
         values = plain_numbers([text for text, one in zip(texts, infinite.tolist(), strict=True) if not one])
         if values is not None and len(np.unique(values)) > FEW_NUMBERS:

@@ -35,3 +35,14 @@ def test_numeric_coarsening_keeps_blanks_apart():
     assert str(caught.value) == (
         "--bins: 'auto' cannot be used here; give one way to cut: mdl, frequency:K, width:K or mdl+frequency:K"
     )
+
+
+def test_equal_frequencies_stand_in_only_where_mdl_makes_no_cut():
+    fine = Domain("x", ("<= 1", "1 to 2", "2 to 3", "> 3", "(blank)"), numeric=True, cuts=(1.0, 2.0, 3.0), blank=True)
+    parted = np.array([[30, 0], [30, 0], [0, 30], [0, 30], [9, 9]])
+    alike = np.array([[10, 10], [10, 10], [10, 10], [10, 10], [9, 9]])
+    assert coarsen(fine, parted, "mdl+frequency:4", 50).domain == coarsen(fine, parted, "mdl", 50).domain
+    assert coarsen(fine, alike, "mdl", 50).domain.cuts == ()
+    assert coarsen(fine, alike, "mdl+frequency:4", 50).domain.cuts == (1.0, 2.0, 3.0)
+    assert coarsen(fine, alike, "mdl+frequency:2", 50).domain.cuts == (2.0,)
+    assert coarsen(fine, alike * [[1], [0], [0], [0], [1]], "mdl+frequency:2", 50).domain.cuts == ()

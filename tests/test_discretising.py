@@ -201,3 +201,63 @@ def test_sorted_rows_are_cut_like_distinct_values_with_weights(weights, limit):
     values = np.arange(len(weights)) ** 2 / 3
     cuts = ordered_cuts(np.repeat(values, weights), len(values), limit)
     assert cuts.tolist() == fine_cuts(values, weights, limit).tolist()
+
+
+def joined_by_definition(values):
+    """Number the groups: a value that differs from the first of its group by 2^-50 of that at most belongs to it."""
+    numbers, first = [], None
+    for value in values:
+        if first is None or value - first > abs(first) * 2.0**-50:
+            first, numbers = value, [*numbers, (numbers[-1] + 1 if numbers else 0)]
+        else:
+            numbers = [*numbers, numbers[-1]]
+    return numbers
+
+
+@settings(deadline=None, max_examples=200)
+@given(
+    st.lists(st.tuples(st.integers(-4, 4), st.integers(0, 20)), min_size=1, max_size=40, unique=True),
+    st.integers(1, 20),
+    st.data(),
+)
+def test_values_that_differ_by_rounding_only_share_a_bin(places, limit, data):
+    values = np.unique([whole / 3 + steps * np.spacing(whole / 3) for whole, steps in places if whole])
+    weights = np.array(data.draw(st.lists(st.integers(1, 5), min_size=len(values), max_size=len(values))), np.int64)
+    numbers = np.array(joined_by_definition(values.tolist()), np.int64)
+    groups = int(numbers[-1]) + 1 if len(values) else 0
+    rows = np.repeat(values, weights)
+    cuts = ordered_cuts(rows, len(values), limit)
+    assert rows.tolist() == np.repeat(values, weights).tolist(), "rows are as they were"
+    assert cuts.tolist() == fine_cuts(values, weights, limit).tolist()
+    assert len(cuts) == max(min(groups, limit) - 1, 0)
+    bins = np.searchsorted(cuts, values)
+    assert all(len(set(bins[numbers == number])) == 1 for number in range(groups))
+
+
+def test_cut_points_of_huge_numbers_do_not_overflow():
+    values = np.array([-1.7e308, -1e300, -1e-300, 0.0, 1e-300, 1e300, 1.7e308])
+    rows = np.ones(7, dtype=int)
+    cuts = fine_cuts(values, rows, 255)
+    assert np.isfinite(cuts).all()
+    assert list(np.searchsorted(cuts, values)) == list(range(7))
+    # Middles run from -1.275e308 to 1.275e308; a quarter of that range is cut near -6.4e307, 0 and 6.4e307.
+    assert [float(cuts[k]) for k in width_cuts(cuts, rows, 4)][::2] == pytest.approx([-8.5e307, 8.5e307])
+    assert list(fine_cuts(np.array([-1.5e308, 1.5e308]), rows[:2], 255)) == [0.0]
+    assert str(fine_cuts(np.array([-1.0, 1.0]), rows[:2], 255)[0]) == "0.0"
+
+
+def test_an_outlier_takes_widths_away_but_leaves_no_bin_without_rows():
+    values = np.append(np.arange(100) / 100, 1e6)
+    rows = np.ones(101, dtype=int)
+    cuts = fine_cuts(values, rows, 255)
+    assert all(groups(rows, width_cuts(cuts, rows, 5)))
+    assert 1 < len(groups(rows, width_cuts(cuts, rows, 5))) <= 5
+    assert groups(rows, frequency_cuts(rows, 5)) == [20, 20, 20, 20, 21]
+
+
+def test_half_of_the_rows_at_one_value():
+    # Only -0.5, 0 and 0.5 share the other half: bins must neither be empty nor stand twice.
+    counts = np.array([10, 50, 20, 20])
+    assert groups(counts, frequency_cuts(counts, 5)) == [10, 50, 20, 20]
+    counts = np.append(np.full(25, 2), [50])
+    assert groups(counts, frequency_cuts(counts, 5)) == [12, 12, 12, 14, 50]
