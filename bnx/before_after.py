@@ -9,9 +9,10 @@ import numpy as np
 from bnx.calibrating import Calibration, uncalibrated
 from bnx.engines import LocalEngine
 from bnx.evaluation import Evaluation, MixedPredictor, Predictor
+from bnx.fold_cells import Cell, cells_of
 from bnx.kernels import pack_scores
 from bnx.losses import Histograms, Scores, log_losses
-from bnx.rating import Cell, cells_of, rows_ranked
+from bnx.rating import rows_ranked
 from bnx.reliability import BinSums, Curve, curve_of, sums_of_histogram, sums_of_packed, sums_of_weighed
 
 __all__ = ["Reliability", "reliability_of"]

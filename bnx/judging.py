@@ -6,11 +6,12 @@ from dataclasses import dataclass
 import numpy as np
 
 from bnx.evaluation import Evaluation
+from bnx.fold_cells import cells_of
 from bnx.losses import Scores
 from bnx.multiplicity import adjusted
 from bnx.paired import Chances, Difference, bayesian_t, corrected_t
 from bnx.picking import apart, pick, region_of
-from bnx.rating import StructureScore, cells_of
+from bnx.rating import StructureScore
 from bnx.structure import Structure
 
 __all__ = ["Against", "Recommendation", "against", "inner_picks", "mixed_picks", "recommend"]

@@ -9,6 +9,7 @@ import numpy as np
 from bnx.calibrating import FEWEST_ERRORS, steepness
 from bnx.engines import LocalEngine
 from bnx.evaluation import Evaluation, Predicts, write
+from bnx.fold_cells import Cell, cells_of
 from bnx.kernels import slope_sums
 from bnx.losses import Histograms, Ranking, Scores, Tally, ranking, scores_of
 from bnx.weighed_losses import weighed_ranking, weighed_slope, weighed_tally
@@ -16,10 +17,8 @@ from bnx.weighed_losses import weighed_ranking, weighed_slope, weighed_tally
 __all__ = [
     "EXACT_ROWS",
     "SLOPE_ROWS",
-    "Cell",
     "FoldScore",
     "StructureScore",
-    "cells_of",
     "rows_ranked",
     "score",
     "score_of",
@@ -54,20 +53,6 @@ class StructureScore:
     def fold_losses(self) -> np.ndarray:
         """Mean log loss of each fold of each repeat, bits."""
         return np.array([fold.scores.log_loss for fold in self.by_fold])
-
-
-@dataclass(frozen=True)
-class Cell:
-    """One fold of one repeat that holds rows.
-
-    ``runs``: its rows where those of all repeats lie one after the other, from ``shift`` on those of its own.
-    """
-
-    repeat: int
-    fold: int
-    rows: int
-    runs: tuple[slice, ...]
-    shift: int
 
 
 @dataclass(frozen=True)
@@ -127,18 +112,6 @@ class _Part:
     truth: np.ndarray
     runs: tuple[slice, ...]
     weights: np.ndarray | None = None
-
-
-def cells_of(evaluations: Sequence[Evaluation]) -> list[Cell]:
-    """List the folds that hold rows, repeat by repeat."""
-    cells, shift = [], 0
-    for repeat, one in enumerate(evaluations):
-        for fold, (runs, rows) in enumerate(zip(one.fold_rows, one.rows_by_fold, strict=True)):
-            if rows:
-                moved = tuple(slice(run.start + shift, run.stop + shift) for run in runs)
-                cells.append(Cell(repeat, fold, rows, moved, shift))
-        shift += one.engine.rows
-    return cells
 
 
 def score(

@@ -7,9 +7,10 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from bnx.evaluation import Evaluation
+from bnx.fold_cells import Cell, cells_of
 from bnx.paired import Chances, Difference, bayesian_t, corrected_t
 from bnx.picking import apart
-from bnx.rating import Cell, StructureScore, cells_of, score_of
+from bnx.rating import StructureScore, score_of
 from bnx.recipe import Recipe
 from bnx.text import count_of, quoted
 from bnx.yardstick_models import MODELS, MOST_LEVELS, Fitted, fit_model, limited, seen_by

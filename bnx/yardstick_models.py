@@ -164,7 +164,8 @@ def fit_model(name: str, engine: LocalEngine, training: Training, runs: Sequence
 
     Logistic regression takes a column of 0 and 1 per level and the penalty sum w^2 / 2 (C = 1). Gradient boosting takes
     levels as such, those of numeric columns in their order; attributes of more than 255 levels keep the 254 most
-    frequent. Rows count as they weigh. Every probability then gives way to the class shares by half a record, so that none is 0.
+    frequent. Rows count as they weigh. Every probability then gives way to the class shares by half a record, so that
+    none is 0.
     """
     counts, seen, weighed = training.class_mass, seen_by(training), engine.weighed
     known, rows = np.flatnonzero(counts), float(counts.sum())

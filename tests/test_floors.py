@@ -25,7 +25,7 @@ FLOORS = (
     "learners",
     "recipe wide_forests wide wide_learning matrix_memory heldout leaving_out learning pair_judging many_tests "
     "wide_testing wide_judging pair_table",
-    "choosing cut_trials evaluation gains rating before_after resampling pair_tests",
+    "choosing cut_trials evaluation gains fold_cells rating before_after resampling pair_tests",
     "dealing judging mix_judging ledger observing held_out cut_notes run_notes yardstick_models yardstick "
     "learning_curve comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",

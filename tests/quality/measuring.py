@@ -15,8 +15,8 @@ from quality.scoring_rows import calibration_if_perfect, judged, nats, paired
 
 from bnx.comparison import Comparison, compare
 from bnx.documents import predictions_table
+from bnx.fold_cells import cells_of
 from bnx.losses import Scores
-from bnx.rating import cells_of
 from bnx.reading import open_source
 from bnx.recipe import Recipe
 
