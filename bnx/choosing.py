@@ -208,19 +208,25 @@ def _calibrated(
         predicted.append(np.concatenate(parts))
     structures = trial.learned[without].structures
     single = pick(losses, structures, losses.mean(axis=1).tolist(), len(inner))[1] if len(chosen) > 1 else 0
-    found = _mixed(predicted, structures, single, losses, rows) if mix else None
+    found = _mixed(predicted, structures, single, losses, rows, plain is None) if mix else None
     return Choice(trial, chosen, tuple(calibrations), losses, single, found)
 
 
 def _mixed(
-    predicted: Sequence[np.ndarray], structures: Sequence[Structure], single: int, losses: np.ndarray, rows: _Inner
+    predicted: Sequence[np.ndarray],
+    structures: Sequence[Structure],
+    single: int,
+    losses: np.ndarray,
+    rows: _Inner,
+    calibrate: bool,
 ) -> Mix | None:
     """Fit the weights of different structures; there is nothing to mix in fewer than two."""
     if len(structures) < 2:
         return None
     members = members_of(structures, single)
     own = [predicted[s] for s in members]
-    return fit_mix(own, members, structures, single, rows.truth, rows.weights, rows.starts, losses[single])
+    prior = np.exp(rows.prior) if calibrate else None
+    return fit_mix(own, members, structures, single, rows.truth, rows.weights, rows.starts, losses[single], prior)
 
 
 def _inner_rows(trial: Trial, inner: Sequence[tuple[Held, int]], sample: Sample) -> _Inner:

@@ -123,7 +123,8 @@ def code_table(
     table, pooled = _coded(raw, used, veiled=missing == "sum-out")
     if weights and not weights.counts:
         table = replace(table, weights=scaled(weights, raw.lines, store))
-    warnings += _duplicate_warning(duplicates, raw.lines.count, table.schema)
+    if weights is None or not weights.counts:  # records that a row stands for are alike by intent
+        warnings += _duplicate_warning(duplicates, raw.lines.count, table.schema)
     noted = (*(weights.notes if weights else []), *warnings, *pooled)
     return Coded(table, tuple(left_out), noted, side, raw.lines.read, duplicates, weights)
 

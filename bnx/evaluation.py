@@ -65,7 +65,7 @@ class MixedPredictor:
     def probabilities(self, first: int, last: int) -> np.ndarray:
         """Predict rows ``first:last`` of the engine, (last - first, C)."""
         p = mixed([member.probabilities(first, last) for member in self.members], self.weights)
-        return sharpened(p, self.sharpness)
+        return sharpened(p, self.sharpness, np.exp(self.members[0].log_prior))
 
 
 @dataclass(frozen=True)

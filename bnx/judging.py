@@ -109,7 +109,8 @@ def _reason(
     if chosen == best:
         return f"It has the lowest log loss, and {fewer}."
     if structures[chosen].what_it_says == structures[best].what_it_says:
-        return f"From all rows it learnt the same edges as {names[best]}, which has the lowest log loss; {fewer}."
+        same = f"From all rows it learnt the same edges as {names[best]}, which has the lowest log loss"
+        return f"{same}; {fewer}." if structures[chosen].edges else f"{same}: none, so no dependence pays here."
     return (
         f"It has the fewest edges of all structures that are not credibly worse than the best, {names[best]}: the "
         f"difference is {means[chosen] - means[best]:.4f} bits, with a chance of {chances.worse:.0%} to exceed "

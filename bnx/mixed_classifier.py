@@ -59,9 +59,10 @@ class MixedClassifier:
         """
         domains = self.domains
         found = [member.classified(codes_of(member.domains, codes, domains)) for member in self.members]
-        p = sharpened(mixed([p for p, _ in found], self.weights), self.sharpness)
+        shares = self.class_counts / self.class_counts.sum()
+        p = sharpened(mixed([p for p, _ in found], self.weights), self.sharpness, shares)
         if self.other_prior is not None:
-            p = p * (self.other_prior / (self.class_counts / self.class_counts.sum()))
+            p = p * (self.other_prior / shares)
             p /= p.sum(axis=1, keepdims=True)
         return p, np.any([rough for _, rough in found], axis=0)
 

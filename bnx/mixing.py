@@ -49,13 +49,15 @@ class _Rows:
 
     ``ratios`` (members, C, N) nats: log posterior of each class less that of the row's own; ``weights`` (N,): how many
     rows each stands for; ``starts``: the first row of each fold that has any; ``towards`` (members,): the weights that
-    they are drawn to.
+    they are drawn to; ``truth`` (N,); ``prior`` (N, C).
     """
 
     ratios: np.ndarray
     weights: np.ndarray
     starts: np.ndarray
     towards: np.ndarray
+    truth: np.ndarray
+    prior: np.ndarray
 
 
 @dataclass(frozen=True)
@@ -99,16 +101,19 @@ def fit_mix(
     weights: np.ndarray,
     starts: np.ndarray,
     single_losses: np.ndarray,
+    prior: np.ndarray | None,
 ) -> Mix:
     """Fit the weights of some structures on out-of-fold predictions.
 
     posteriors: of each of ``members``, (N, C); structures: all of them; single: the one of the members that is taken
     where none is mixed, with its mean losses by fold in bits; truth (N,); weights (N,): how many rows each stands for;
-    starts (folds + 1,): the first row of each fold. Minimises total log loss (nats) + 20 sum (w - u)^2 over the
-    simplex. The u are proportional to exp(-nats / 10), the total log loss of each structure, with 20 nats added to
-    those that have edges: of a few rows a fit alone would follow chance. Weights below .01 are dropped. The loss of a
-    fold is that by weights without it, from one step of Newton's off the weights of all. The mix is taken if it is
-    better than the single structure with a probability of .95 where that one has no edges, and of .1 where it has.
+    starts (folds + 1,): the first row of each fold; prior (N, C): to sharpen over, None for no sharpness.
+
+    Minimises total log loss (nats) + 20 sum (w - u)^2 over the simplex. The u are proportional to exp(-nats / 10), the
+    total log loss of each structure, with 20 nats added to those that have edges: of a few rows a fit alone would
+    follow chance. Weights below .01 are dropped. The loss of a fold is that by weights without it, from one step of
+    Newton's off the weights of all, but as sharp as all. The mix is taken if it is better than the single structure
+    with a probability of .95 where that one has no edges, and of .1 where it has.
 
     Source: Genest & Zidek 1986 (logarithmic opinion pool); Vovk 1990 (weights that fall exponentially with the loss).
     """
@@ -117,18 +122,22 @@ def fit_mix(
     first = starts[filled]
     nats = _nats(posteriors, truth, weights, first)
     handicap = np.array([_EDGES if structures[member].edges else 0.0 for member in members])
-    rows = _Rows(_ratios(posteriors, truth), weights, first, _falling(nats.sum(axis=1) + handicap))
+    over = np.full(posteriors[0].shape, 1 / posteriors[0].shape[1]) if prior is None else prior
+    towards = _falling(nats.sum(axis=1) + handicap)
+    rows = _Rows(_ratios(posteriors, truth), weights, first, towards, truth, over)
     point, sums = _minimum(rows, _guess(rows))
     whole = np.zeros(len(structures))
     whole[list(members)] = np.where(point >= _LEAST, point, 0.0)
     whole /= whole.sum()
     if whole[single] == 1.0:
         return Mix(whole, 0.0, single_losses, False)
-    sharpness = fit_sharpness(mixed(posteriors, whole[list(members)].tolist()), truth, weights)
+    together = mixed(posteriors, whole[list(members)].tolist())
+    sharpness = 0.0 if prior is None else fit_sharpness(together, prior, truth, weights)
     losses = np.zeros(len(sizes))
     for k, fold in enumerate(filled.tolist()):
         without = replace(rows, towards=_falling(np.delete(nats, k, axis=1).sum(axis=1) + handicap))
-        losses[fold] = _loss_without(without, point, sums, k, truth[starts[fold] : starts[fold + 1]], sharpness)
+        part = slice(int(starts[fold]), int(starts[fold + 1]))
+        losses[fold] = _loss_without(without, point, sums, k, part, sharpness)
     least = _LEVEL if structures[single].edges else _AHEAD
     return Mix(whole, sharpness, losses, chances_of(losses, single_losses, len(sizes), 0.0).better > least)
 
@@ -164,7 +173,8 @@ def _guess(rows: _Rows) -> np.ndarray:
     if every < 2:
         return equal
     some = np.ascontiguousarray(rows.ratios[:, :, ::every])
-    thin = _Rows(some, rows.weights[::every] * every, np.zeros(1, np.int64), rows.towards)
+    mass, first = rows.weights[::every] * every, np.zeros(1, np.int64)
+    thin = _Rows(some, mass, first, rows.towards, rows.truth[::every], rows.prior[::every])
     return _minimum(thin, equal)[0]
 
 
@@ -227,13 +237,12 @@ def _powers(ratios: np.ndarray, point: np.ndarray) -> np.ndarray:
     return power
 
 
-def _loss_without(rows: _Rows, point: np.ndarray, sums: _Sums, k: int, truth: np.ndarray, sharpness: float) -> float:
-    """Take the mean loss of fold k in bits, mixed by weights that its rows had no part in; truth: their classes."""
-    part = slice(int(rows.starts[k]), int(rows.starts[k]) + len(truth))
+def _loss_without(rows: _Rows, point: np.ndarray, sums: _Sums, k: int, part: slice, sharpness: float) -> float:
+    """Take the mean loss of fold k, whose rows are ``part``, in bits, mixed by weights that they had no part in."""
     gradient, hessian = (np.delete(of, k, axis=0).sum(axis=0) for of in (sums.gradient, sums.hessian))
     power = _powers(rows.ratios[:, :, part], _stepped(rows, point, gradient, hessian)).T
     p = np.exp(power - power.max(axis=1, keepdims=True))
-    p = sharpened(p / p.sum(axis=1, keepdims=True), sharpness)
-    nats = -np.log(np.maximum(p[np.arange(len(truth)), truth], _TINIEST))
+    p = sharpened(p / p.sum(axis=1, keepdims=True), sharpness, rows.prior[part])
+    nats = -np.log(np.maximum(p[np.arange(len(p)), rows.truth[part]], _TINIEST))
     mean = (rows.weights[part] * nats).sum() / max(rows.weights[part].sum(), 1e-300)
     return float(mean / np.log(2))

@@ -6,7 +6,7 @@ from bnx.coding import Coded
 from bnx.cut_notes import cut_notes
 from bnx.evaluation import Evaluation
 from bnx.heldout import MOST_ROWS
-from bnx.learners import Heldout, Learner
+from bnx.learners import Heldout, KdbTrimmed, Learner
 from bnx.learning import make_bounds
 from bnx.observing import rare_classes, short_of_room, unobserved_notes
 from bnx.rating import EXACT_ROWS, SLOPE_ROWS, StructureScore
@@ -44,6 +44,11 @@ def run_notes(
         notes.append(
             f"rows of one {recipe.group} may be alike, but the tests assume independent records: every p is descriptive"
         )
+        if any(isinstance(member, KdbTrimmed) for member in learners):
+            notes.append(
+                f"kdb-trimmed leaves out single rows, not whole {recipe.group}, while it chooses: it may keep too many "
+                "parents where rows of one are alike, and its scores show that"
+            )
     sizes = evaluations[0].rows_by_fold
     if max(sizes) > 1.2 * min(sizes):
         notes.append(

@@ -58,8 +58,9 @@ class RowWeights:
         if self.counts:
             notes.append(
                 f"{count_of(len(self.values) - self.zeros, 'row')} stand for {count_of(int(self.total), 'record')}, as "
-                f"{self.column} counts; the tests take each of these as an independent record, and are descriptive "
-                "where they are not"
+                f"{self.column} counts; the tests and the folds take each of these as an independent record: where "
+                "they are copies of one, every p is descriptive, and scores are too good unless --group keeps them "
+                "together"
             )
         else:
             notes.append(

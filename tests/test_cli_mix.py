@@ -67,12 +67,12 @@ def test_a_mix_classifies_as_its_members_say(tmp_path: Path) -> None:
         power = power + one["weight"] * np.log(pd.read_csv(own)[["p:p", "p:q"]].to_numpy())
     p = np.exp(power)
     p /= p.sum(axis=1, keepdims=True)
-    p /= (1 - p) ** mix["sharpness"]
+    counts = np.array(mix["members"][0]["structure"]["class"]["rows"])
+    p *= ((1 - counts / counts.sum()) / (1 - p)) ** mix["sharpness"]
     p /= p.sum(axis=1, keepdims=True)
     assert pd.read_csv(out)[["p:p", "p:q"]].to_numpy() == pytest.approx(p, abs=1e-12)
     moved = tmp_path / "moved.csv"
     call("classify", str(results() / "out/mix.json"), table, "-o", str(moved), "--prior", "p=.2,q=.8")
-    counts = mix["members"][0]["structure"]["class"]["rows"]
     p *= np.array([0.2, 0.8]) / counts
     p /= p.sum(axis=1, keepdims=True)
     assert pd.read_csv(moved)[["p:p", "p:q"]].to_numpy() == pytest.approx(p, abs=1e-12)

@@ -47,7 +47,7 @@ def softmax(power: np.ndarray) -> np.ndarray:
 
 def fitted(p: list[np.ndarray], truth: np.ndarray, weights: np.ndarray | None = None, single: int = 0) -> Mix:
     mass = np.ones(len(truth)) if weights is None else weights
-    return fit_mix(p, range(len(p)), shapes(len(p)), single, truth, mass, STARTS, fold_losses(p[single], truth))
+    return fit_mix(p, range(len(p)), shapes(len(p)), single, truth, mass, STARTS, fold_losses(p[single], truth), None)
 
 
 def shapes(number: int) -> list[Structure]:
@@ -119,7 +119,7 @@ def test_identical_members_share_their_weight() -> None:
     assert three[1] == pytest.approx(three[2], abs=1e-6)
     alone = fitted([p[0]] * 3, truth)
     assert alone.weights == pytest.approx(drawn_to([p[0]] * 3, truth, np.ones(200)), abs=1e-6)
-    same = fold_losses(sharpened(p[0], alone.sharpness), truth)
+    same = fold_losses(p[0], truth)
     assert alone.losses == pytest.approx(same, abs=1e-9), "the same posterior, whatever the weights"
 
 
@@ -146,7 +146,7 @@ def test_losses_of_a_fold_come_from_weights_without_it() -> None:
         ).x
         part = slice(first, last)
         assert found.losses[k] == pytest.approx(
-            log_losses(sharpened(mixed([one[part] for one in p], own), found.sharpness), truth[part]).mean(), abs=2e-3
+            log_losses(mixed([one[part] for one in p], own), truth[part]).mean(), abs=2e-3
         ), "one step of Newton's is within a few thousandths of a bit of the whole way"
 
 
@@ -154,7 +154,7 @@ def test_folds_without_rows_change_nothing() -> None:
     p, truth = experts(3, 6)
     usual, own = fitted(p, truth), fold_losses(p[0], truth)
     starts = np.array([0, 0, 60, 120, 200, 200])
-    other = fit_mix(p, range(3), shapes(3), 0, truth, np.ones(200), starts, np.array([0, *own, 0]))
+    other = fit_mix(p, range(3), shapes(3), 0, truth, np.ones(200), starts, np.array([0, *own, 0]), None)
     assert other.weights.tolist() == usual.weights.tolist()
     assert other.losses.tolist() == [0, *usual.losses.tolist(), 0]
 
@@ -217,7 +217,8 @@ def test_a_run_scores_its_mix_as_rows_say() -> None:
     for k in range(5):
         mix = one.choices[(k,)].mix
         assert mix is not None
-        own = sharpened(mixed([predicted(found, s) for s in range(3)], mix.weights.tolist()), mix.sharpness)
+        together = mixed([predicted(found, s) for s in range(3)], mix.weights.tolist())
+        own = sharpened(together, mix.sharpness, np.bincount(truth[fold != k]) / (fold != k).sum())
         p[fold == k] = own[fold == k]
     assert predicted(found, 3) == pytest.approx(p, abs=1e-14)
     expected = scores(p, truth, 3)
@@ -303,8 +304,13 @@ def test_the_file_of_a_mix_classifies_as_the_run_does() -> None:
     chosen, weights = found.mix.members, tuple(found.mix.members.values())
     own = MixedClassifier(tuple(found.classifiers[s] for s in chosen), weights, found.mix.sharpness)
     assert mixed_of(document, "mix.json").probabilities(codes).tolist() == own.probabilities(codes).tolist()
-    by_hand = sharpened(mixed([found.classifiers[s].probabilities(codes) for s in chosen], weights), own.sharpness)
+    together = mixed([found.classifiers[s].probabilities(codes) for s in chosen], weights)
+    by_hand = sharpened(together, own.sharpness, own.class_counts / own.class_counts.sum())
     assert own.probabilities(codes).tolist() == by_hand.tolist()
+    blank, prior = np.full((5, 1), -1), np.array([0.2, 0.3, 0.5])
+    sharp = replace(own, sharpness=0.8)
+    assert sharp.probabilities(blank)[0] == pytest.approx(own.class_counts / own.class_counts.sum(), abs=1e-12)
+    assert sharp.rebased(prior).probabilities(blank)[0] == pytest.approx(prior, abs=1e-12)
 
 
 def test_naive_bayes_is_left_for_good_reason_only() -> None:
@@ -315,6 +321,7 @@ def test_naive_bayes_is_left_for_good_reason_only() -> None:
     assert 0.1 < chance < 0.95
     plain, drawn = shapes(2)
     taken = [
-        fit_mix(p, range(2), order, 0, truth, np.ones(200), STARTS, usual).taken for order in ([plain] * 2, [drawn] * 2)
+        fit_mix(p, range(2), order, 0, truth, np.ones(200), STARTS, usual, None).taken
+        for order in ([plain] * 2, [drawn] * 2)
     ]
     assert taken == [False, True]

@@ -29,6 +29,7 @@ from bnx.cli.shared import (
     Test,
     Timings,
     Weight,
+    named,
     recipe_of,
     say,
     store_of,
@@ -75,10 +76,13 @@ def run(
     ] = None,
     repeats: Annotated[int, typer.Option(metavar="N", help="Repeats of the cross-validation.")] = Recipe.repeats,
     group: Annotated[
-        str, typer.Option(metavar="COL", help="Rows of one group stay in one fold.", show_default=False)
+        str, typer.Option(metavar="COL", callback=named, help="Rows of one group stay in one fold.", show_default=False)
     ] = Recipe.group,
     fold_column: Annotated[
-        str, typer.Option(metavar="COL", help="A column that holds the folds (sites, months).", show_default=False)
+        str,
+        typer.Option(
+            metavar="COL", callback=named, help="A column that holds the folds (sites, months).", show_default=False
+        ),
     ] = Recipe.fold_column,
     holdout: Annotated[
         str | None, typer.Option(metavar="FILE", help="A further table that takes no part and is scored at the end.")

@@ -67,6 +67,20 @@ Data = Annotated[
 StructureFile = Annotated[
     str, typer.Argument(metavar="NAME.json", help="A structure file, or a mix, of bnx learn or bnx export.")
 ]
+
+
+def named(ctx: typer.Context, param: typer.CallbackParam, value: str) -> str:
+    """Refuse an empty name of a column, as an unset variable of a shell gives it.
+
+    Raises:
+        SettingError: the option was given, but names nothing.
+    """
+    source = ctx.get_parameter_source(param.name or "")
+    if not value and source is not None and source.name == "COMMANDLINE":
+        raise SettingError(f"{param.opts[0]} names no column; give the name of one, or drop the option")
+    return value
+
+
 ClassColumn = Annotated[str, typer.Option("--class", metavar="COL", help="The column to classify by.")]
 Numeric = Annotated[Columns, typer.Option("--numeric", metavar="COL,...", help="Treat columns as numeric.")]
 Categorical = Annotated[
@@ -107,6 +121,7 @@ Weight = Annotated[
     typer.Option(
         "--weight",
         metavar="COL",
+        callback=named,
         help="A column that says how many records a row stands for; in bnx learn also weights that are no counts.",
         show_default=False,
     ),

@@ -114,7 +114,8 @@ def _legend(document: Mapping[str, Any]) -> list[str]:
     """Say the names in words, and the short headings in full."""
     ranked = _ranked(document, document["mix"])
     names = "; ".join(f"{one['name']}: {one['words']}" for one in ranked if one["words"] != one["name"])
-    columns = "scores after calibration; interval 95 %; p adjusted over the structures; calib.: calibration error; "
+    scores = "scores after calibration" if document["settings"]["temperature"] else "scores without calibration"
+    columns = f"{scores}; interval 95 %; p adjusted over the structures; calib.: calibration error; "
     columns += "temp.: temperature"
     if document["yardsticks"]:
         columns += "; not a structure: fitted on the same folds and levels for comparison only, and not calibrated"

@@ -1,11 +1,10 @@
 """The mix file: structures with their weights in one self-contained JSON."""
 
-import json
 from collections.abc import Mapping, Sequence
-from pathlib import Path
 from typing import Any
 
 from bnx.errors import DataError, FormatError
+from bnx.formats.reading_json import read_json
 from bnx.formats.structure_json import STRUCTURE_FORMAT, classifier_of
 from bnx.mixed_classifier import MixedClassifier, mix_words
 
@@ -33,8 +32,8 @@ def mixed_document(members: Sequence[Mapping[str, Any]], weights: Sequence[float
 def is_mix(path: str) -> bool:
     """Tell whether a file claims to be a mix; one that cannot be read is left to those who read it."""
     try:
-        document = json.loads(Path(path).read_text(encoding="utf-8"))
-    except (OSError, ValueError):
+        document = read_json(path)
+    except (DataError, FormatError):
         return False
     return isinstance(document, dict) and document.get("format") == MIX_FORMAT
 
@@ -45,11 +44,10 @@ def read_mix(path: str) -> dict[str, Any]:
     Raises:
         DataError, FormatError: there is no such file, or it is not a mix file of this version.
     """
-    if not Path(path).is_file():
-        raise DataError(f"there is no file {path}; give the mix.json that bnx learn or bnx export wrote")
-    if not is_mix(path):
+    document = read_json(path)
+    if not isinstance(document, dict) or document.get("format") != MIX_FORMAT:
         raise FormatError(f"{path} is not a mix file of the format {MIX_FORMAT!r}; give a mix.json of bnx learn")
-    return dict(json.loads(Path(path).read_text(encoding="utf-8")))
+    return document
 
 
 def members_of_mix(document: Mapping[str, Any], path: str) -> list[tuple[dict[str, Any], float]]:
@@ -59,10 +57,12 @@ def members_of_mix(document: Mapping[str, Any], path: str) -> list[tuple[dict[st
         FormatError: there are none, or the weights are none.
     """
     try:
-        found = [(dict(one["structure"]), float(one["weight"])) for one in document["members"]]
+        found = [(dict(one["structure"]), _weight(one["weight"])) for one in document["members"]]
         formats = {one.get("format") for one, _ in found}
     except (KeyError, TypeError, ValueError, AttributeError):
         raise FormatError(f"{path}: the members are no structures with weights; write it anew with bnx learn") from None
+    if not found:
+        raise FormatError(f"{path}: it has no members; write it anew with bnx learn")
     if formats != {STRUCTURE_FORMAT}:
         raise FormatError(f"{path}: its members are not all {STRUCTURE_FORMAT!r}; write it anew with bnx learn")
     weights = [weight for _, weight in found]
@@ -79,11 +79,22 @@ def mixed_of(document: Mapping[str, Any], path: str) -> MixedClassifier:
     """
     found = members_of_mix(document, path)
     members = tuple(classifier_of(one, f"{path}, member {one.get('name')}") for one, _ in found)
+    names = [one.get("name") for one, _ in found]
+    if len(set(names)) < len(names):
+        raise FormatError(f"{path}: two of its members have the same name; write it anew with bnx learn")
     known = {domain.name: domain for one in members for domain in one.domains}
     alike = all(known[domain.name] == domain for one in members for domain in one.domains)
-    if not alike or any(one.target != members[0].target for one in members):
+    told, target = document.get("class"), members[0].target
+    own = {"name": target.name, "levels": list(target.levels)}
+    if not alike or told != own or any(one.target != target for one in members):
         raise FormatError(f"{path}: its members differ in attributes or class; write it anew with bnx learn")
     return MixedClassifier(members, tuple(weight for _, weight in found), _sharpness(document, path))
+
+
+def _weight(found: Any) -> float:
+    if isinstance(found, bool) or not isinstance(found, int | float):
+        raise ValueError(f"{found!r} is no number")
+    return float(found)
 
 
 def _sharpness(document: Mapping[str, Any], path: str) -> float:

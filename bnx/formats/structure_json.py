@@ -1,8 +1,6 @@
 """The structure file: one self-contained JSON that others can read, check and score with."""
 
-import json
 from collections.abc import Mapping, Sequence
-from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -10,7 +8,8 @@ import numpy as np
 from bnx.calibrating import Calibration
 from bnx.classifier import Classifier
 from bnx.domains import Domain
-from bnx.errors import BnxError, DataError, FormatError
+from bnx.errors import BnxError, FormatError
+from bnx.formats.reading_json import read_json
 from bnx.parameters import parse_smoothing
 from bnx.structure import Structure, words
 
@@ -69,19 +68,10 @@ def read_structure(path: str) -> dict[str, Any]:
     Raises:
         DataError: there is no such file. FormatError: it is not a structure file of this version.
     """
-    try:
-        text = Path(path).read_text(encoding="utf-8")
-    except FileNotFoundError:
-        raise DataError(f"there is no file {path}; give the NAME.json that bnx learn or bnx export wrote") from None
-    except (OSError, UnicodeDecodeError) as error:
-        raise FormatError(f"{path} cannot be read as text ({error}); give the NAME.json that bnx learn wrote") from None
-    try:
-        document = json.loads(text)
-    except json.JSONDecodeError as error:
-        raise FormatError(f"{path} is not JSON (line {error.lineno}: {error.msg}); give a NAME.json of bnx") from None
+    document = read_json(path)
     if not isinstance(document, dict) or document.get("format") != STRUCTURE_FORMAT:
-        found = document.get("format") if isinstance(document, dict) else None
-        raise FormatError(f"{path} has the format {found!r}, not {STRUCTURE_FORMAT!r}; give a NAME.json of bnx learn")
+        found = repr(document.get("format", "none")) if isinstance(document, dict) else "no JSON object"
+        raise FormatError(f"{path} has the format {found}, not {STRUCTURE_FORMAT!r}; give a NAME.json of bnx learn")
     return document
 
 
