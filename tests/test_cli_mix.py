@@ -107,7 +107,12 @@ def test_a_mix_is_exported_whole(tmp_path: Path) -> None:
 @pytest.mark.parametrize(
     ("change", "sentence"),
     [
-        ({"members": []}, "its members are not all 'bnx-structure/1'"),
+        ({"members": []}, "it has no members"),
+        ({"members": [{"weight": 1, "structure": {"format": "other"}}]}, "its members are not all 'bnx-structure/1'"),
+        ({"members": [{"weight": "1", "structure": {}}]}, "the members are no structures with weights"),
+        ({"sharpness": 2}, "the sharpness is 2, not a number from -1 to 1"),
+        ({"sharpness": None}, "the sharpness is None, not a number from -1 to 1"),
+        ({"class": {"name": "kind", "levels": ["a", "b"]}}, "its members differ in attributes or class"),
         ({"members": [{"weight": 1}]}, "the members are no structures with weights"),
         ({"members": 3}, "the members are no structures with weights"),
     ],
@@ -141,3 +146,36 @@ def test_without_the_mix_there_is_no_word_of_it(tmp_path: Path) -> None:
     assert "mix" not in run.out.rpartition("\n")[0].replace(str(tmp_path), "")
     assert not (tmp_path / "out/mix.json").exists()
     assert json.loads((tmp_path / "out/comparison.json").read_text(encoding="utf-8"))["mix"] is None
+
+
+@pytest.mark.parametrize(
+    ("content", "sentence"),
+    [
+        (b"[" * 100_000, "nests brackets too deeply"),
+        (b'{"format": "bnx-mix/1", "x": ' + b"9" * 5_000 + b"}", "holds a number with too many digits"),
+        ("{}".encode("utf-16"), "is not text in UTF-8 (at byte 0)"),
+        (b'{"format": ', "is not JSON (line 1"),
+        (b"[]", "has the format no JSON object"),
+    ],
+)
+def test_a_file_that_is_no_json_of_ours_is_told_in_a_sentence(content: bytes, sentence: str, tmp_path: Path) -> None:
+    path = tmp_path / "mix.json"
+    path.write_bytes(content)
+    assert sentence in refusal("classify", str(path), str(results() / "table.csv"), "-o", "-")
+    assert sentence in refusal("show", str(path))
+    assert "is a folder, not a file" in refusal("show", str(tmp_path))
+
+
+def test_two_members_of_one_name_are_refused(tmp_path: Path) -> None:
+    document = read_mix(str(results() / "out/mix.json"))
+    one = document["members"][0]
+    twice = [{**one, "weight": 0.5}, {**one, "weight": 0.5}]
+    path = tmp_path / "mix.json"
+    path.write_text(json.dumps(document | {"members": twice}), encoding="utf-8")
+    assert "two of its members have the same name" in refusal("show", str(path))
+
+
+@pytest.mark.parametrize("option", ["--weight", "--group", "--fold-column"])
+def test_an_empty_name_of_a_column_is_refused(option: str) -> None:
+    sentence = refusal("learn", str(results() / "table.csv"), "--class", "kind", option, "")
+    assert sentence == f"{option} names no column; give the name of one, or drop the option"

@@ -156,9 +156,9 @@ def test_a_tampered_document_is_refused_in_one_sentence(what: str) -> None:
     [
         (b"", "is not JSON"),
         (b"{", "is not JSON"),
-        (b"[1]", "has the format None"),
+        (b"[1]", "has the format no JSON object"),
         (b'{"format": "bnx-comparison/1"}', "has the format 'bnx-comparison/1', not 'bnx-structure/1'"),
-        (b"\xff\xfe\x00", "cannot be read as text"),
+        (b"\xff\xfe\x00", "is not text in UTF-8"),
     ],
 )
 def test_a_file_of_another_kind_is_refused(content: bytes, words: str, tmp_path: Path) -> None:

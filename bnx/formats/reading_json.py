@@ -15,7 +15,7 @@ def read_json(path: str) -> Any:
     Raises:
         DataError: there is no such file. FormatError: it is no text, or no JSON that can be read.
     """
-    wanted = "give a NAME.json that bnx learn or bnx export wrote"
+    wanted = "give the NAME.json that bnx learn or bnx export wrote"
     try:
         text = Path(path).read_text(encoding="utf-8")
     except FileNotFoundError:
