@@ -52,7 +52,10 @@ def test_structure_files_that_are_none() -> None:
     assert refusal("show", "none.json") == (
         "there is no file none.json; give the NAME.json that bnx learn or bnx export wrote"
     )
-    assert refusal("show", table) == f"{table} is not JSON (line 1: Expecting value); give the NAME.json that bnx learn or bnx export wrote"
+    assert (
+        refusal("show", table)
+        == f"{table} is not JSON (line 1: Expecting value); give the NAME.json that bnx learn or bnx export wrote"
+    )
     comparison = f"{small_results()}/comparison.json"
     assert refusal("classify", comparison, table, "-o", "-") == (
         f"{comparison} has the format 'bnx-comparison/1', not 'bnx-structure/1'; give a NAME.json of bnx learn"

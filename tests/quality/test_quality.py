@@ -15,7 +15,18 @@ from tablestore import TableUnavailable
 pytestmark = [pytest.mark.quality, pytest.mark.tables, pytest.mark.timeout(14_400)]
 
 MET = (
+    "log loss to CategoricalNB, geometric mean",
+    "log loss to logistic regression, geometric mean",
+    "log loss to gradient boosting, geometric mean",
+    "log loss with the mix to that of the structure picked alone, geometric mean",
+    "log loss with the mix to that of the structure picked alone, any table",
     "tables worse than naive by more than 2 paired standard errors + .005",
+    "tables worse than naive in mean",
+    "tables worse than naive: above 1.05 times its loss + .02",
+    "log loss on tic_tac_toe",
+    "log loss on monk2",
+    "calibration error at most half of naive's, or 1.25 times what perfect calibration would show",
+    "calibration error at most half of CategoricalNB's, or 1.25 times what perfect calibration would show",
     "calibration slope on tables with at least 50 errors",
     "probabilities of 0 or 1, in any structure, so an infinite loss",
 )
