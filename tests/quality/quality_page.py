@@ -27,7 +27,7 @@ own. Settings: the default ones, with columns of numbers and of levels named as 
 which change no score, are left out.
 
 How the mix is drawn together, when it is taken, and how far structures must lead was settled on these tables under this
-deal of folds (seed 1): what is met narrowly here may be missed under another one, and other tables are the better judge.
+deal of folds (seed 1): what is met narrowly here may be missed under another one; other tables are the better judge.
 
 A ratio compares (loss + .01) with (rival's loss + .01), so that tables which are all but certain do not decide a mean.
 """
