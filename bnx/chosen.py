@@ -37,8 +37,11 @@ def words_of(name: str, chosen: dict[str, Any] | None) -> str:
     told = [_often([one["most_parents"] for one in by_fold])]
     left_out = [len(one["dropped"]) for one in by_fold]
     if any(left_out):
-        told.append(f"without {min(left_out)} to {max(left_out)} attributes" if min(left_out) < max(left_out) else "")
-    what = "; ".join(part for part in told if part)
+        least, most = min(left_out), max(left_out)
+        told.append(
+            f"without {count_of(most, 'attribute')}" if least == most else f"without {least} to {most} attributes"
+        )
+    what = "; ".join(told)
     return f"{words(name, chosen['most_parents'], chosen['dropped'])} (in {count_of(len(by_fold), 'fold')}: {what})"
 
 

@@ -97,8 +97,9 @@ class Evaluation:
 
     @property
     def mixes(self) -> bool:
-        """Whether several structures are mixed in any training set."""
-        return any(one.mix is not None and len(one.mix.members) > 1 for one in self.choices.values())
+        """Whether any training set mixes structures, or takes its mix, be it all of one that is not picked."""
+        mixes = [one.mix for one in self.choices.values() if one.mix]
+        return any(mix.taken or len(mix.members) > 1 for mix in mixes)
 
     def predictor(self, fold: int, structure: int) -> Predictor:
         """Make the tables that predict a fold."""

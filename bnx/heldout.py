@@ -78,7 +78,7 @@ def _spread(engine: LocalEngine, blocks: np.ndarray, c: int, share: float) -> np
     segments = (blocks * engine.classes + c + turns[:, None]).ravel()
     ends = np.cumsum(engine.starts[segments + 1] - engine.starts[segments])
     rows = int(ends[-1]) if len(ends) else 0
-    wanted = min(rows, int(np.ceil(share * rows)))
+    wanted = rows if share >= 1 else min(rows, max(1, int(share * rows)))
     places = np.arange(wanted) * rows // max(wanted, 1)
     places = np.concatenate([places[first::_EIGHTHS] for first in range(_EIGHTHS)])
     held = np.searchsorted(ends, places, side="right")

@@ -8,6 +8,7 @@ from bnx.evaluation import Evaluation
 from bnx.heldout import MOST_ROWS
 from bnx.learners import Heldout, KdbTrimmed, Learner
 from bnx.learning import make_bounds
+from bnx.leaving_out import MOST_JUDGED
 from bnx.observing import rare_classes, short_of_room, unobserved_notes
 from bnx.rating import EXACT_ROWS, SLOPE_ROWS, StructureScore
 from bnx.recipe import Recipe
@@ -38,6 +39,11 @@ def run_notes(
         notes.append(
             f"parents of heldout are chosen on at most {MOST_ROWS:,} rows of every training set, spread evenly by fold "
             "and class"
+        )
+    if any(isinstance(member, KdbTrimmed) for member in learners) and engine.rows > MOST_JUDGED:
+        notes.append(
+            f"kdb-trimmed judges parents and attributes on at most {MOST_JUDGED:,} rows of every training set, spread "
+            "evenly by block and class; its counts are of all rows"
         )
     notes += short_of_room(evaluations[0], make_bounds(recipe, coded.table.schema.names))
     if recipe.group:

@@ -17,9 +17,8 @@ _ROWS_PER_CLASS_FOR_GAINS = 5_000
 class Sample:
     """Rows of every fold, fold by fold.
 
-    ``codes`` (n, S) as stored; ``target`` (S,); ``weights`` (S,): rows of the table that each stands for,
-    by their weight;
-    ``starts`` (folds + 1,): first row of each fold.
+    ``codes`` (n, S) as stored; ``target`` (S,); ``weights`` (S,): rows of the table that each stands for, by their
+    weight; ``starts`` (folds + 1,): first row of each fold.
     """
 
     codes: np.ndarray

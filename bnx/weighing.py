@@ -64,9 +64,9 @@ class RowWeights:
             )
         else:
             notes.append(
-                f"rows carry the weights of {self.column}, worth {self.effective_rows:,.0f} rows of equal weight: "
-                "tables, smoothing, calibration and scores use them; structures, cut points, bits and tests are from "
-                "rows counted once, so the tests are descriptive"
+                f"rows carry the weights of {self.column}; those read are worth {self.effective_rows:,.0f} of equal "
+                "weight. Tables, smoothing, calibration and scores use them; structures, cut points, bits and tests "
+                "are from rows counted once, so the tests are descriptive"
             )
         return notes
 

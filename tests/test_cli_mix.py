@@ -179,3 +179,43 @@ def test_two_members_of_one_name_are_refused(tmp_path: Path) -> None:
 def test_an_empty_name_of_a_column_is_refused(option: str) -> None:
     sentence = refusal("learn", str(results() / "table.csv"), "--class", "kind", option, "")
     assert sentence == f"{option} names no column; give the name of one, or drop the option"
+
+
+def test_a_mix_may_be_all_of_a_structure_that_is_not_picked(tmp_path: Path) -> None:
+    """Two attributes depend a little: the tree is better by .006 bits, within the region, so naive Bayes is picked."""
+    random = np.random.default_rng(0)
+    shift = 0.0216
+    cells = []
+    for first, second, sign in ((0.35, 0.4, -1), (0.65, 0.6, 1)):
+        alone = np.outer([1 - first, first], [1 - second, second])
+        cells.append(alone / 2 + sign * shift / 2 * np.array([[1, -1], [-1, 1]]))
+    drawn = random.choice(8, 30_000, p=np.ravel(cells))
+    kind, one, two = np.unravel_index(drawn, (2, 2, 2))
+    frame = pd.DataFrame({"one": one, "two": two, "kind": kind}).astype(str)
+    frame.to_csv(tmp_path / "t.csv", index=False)
+    given = (str(tmp_path / "t.csv"), "--class", "kind", "--structures", "naive,tan", "--resamples", "0")
+    assert call("learn", *given, "-o", str(tmp_path / "out")).code == 0
+    document = json.loads((tmp_path / "out/comparison.json").read_text(encoding="utf-8"))
+    assert document["recommended"]["name"] == "naive"
+    assert document["mix"]["words"] == "1.00 tan"
+    assert not document["mix"]["offered"]
+
+
+def test_names_and_words_that_are_not_those_of_the_members_are_refused(tmp_path: Path) -> None:
+    document = read_mix(str(results() / "out/mix.json"))
+    renamed = [{**one, "name": "../x"} for one in document["members"]]
+    path = tmp_path / "mix.json"
+    for change in ({"members": renamed}, {"words": None}):
+        path.write_text(json.dumps(document | change), encoding="utf-8")
+        assert "its words or the names of its members are not theirs" in refusal("show", str(path))
+        assert "its words or the names of its members are not theirs" in refusal(
+            "draw", str(path), "-o", str(tmp_path / "m.svg")
+        )
+
+
+def test_no_picture_is_drawn_where_one_is_there_already(tmp_path: Path) -> None:
+    path = str(results() / "out/mix.json")
+    last = read_mix(path)["members"][-1]["name"]
+    (tmp_path / f"m-{last}.dot").write_text("mine", encoding="utf-8")
+    assert "exists already" in refusal("draw", path, "-o", str(tmp_path / "m.dot"))
+    assert [one.name for one in tmp_path.iterdir()] == [f"m-{last}.dot"]

@@ -35,8 +35,10 @@ def run(
     if not (math.isfinite(least_bits) and least_bits >= 0):
         raise SettingError(f"--least-bits: {least_bits:g} cannot be used; give 0 or a number above")
     shades = colours(theme, f".{form}")
-    for place, picture in _pictures(structure, Path(output)):
+    pictures = _pictures(structure, Path(output))
+    for place, _ in pictures:
         check_free(place, overwrite)
+    for place, picture in pictures:
         dot = dot_source(picture, shades, least_bits, everything)
         write_bytes(place, dot.encode() if form == "dot" else render(dot, cast(Form, form)), overwrite)
         say(f"{place} written")

@@ -80,13 +80,16 @@ def mixed_of(document: Mapping[str, Any], path: str) -> MixedClassifier:
     found = members_of_mix(document, path)
     members = tuple(classifier_of(one, f"{path}, member {one.get('name')}") for one, _ in found)
     names = [one.get("name") for one, _ in found]
+    told = [one.get("name") for one in document["members"]]
+    if told != names or not isinstance(document.get("words"), str):
+        raise FormatError(f"{path}: its words or the names of its members are not theirs; write it anew with bnx learn")
     if len(set(names)) < len(names):
         raise FormatError(f"{path}: two of its members have the same name; write it anew with bnx learn")
     known = {domain.name: domain for one in members for domain in one.domains}
     alike = all(known[domain.name] == domain for one in members for domain in one.domains)
-    told, target = document.get("class"), members[0].target
+    target = members[0].target
     own = {"name": target.name, "levels": list(target.levels)}
-    if not alike or told != own or any(one.target != target for one in members):
+    if not alike or document.get("class") != own or any(one.target != target for one in members):
         raise FormatError(f"{path}: its members differ in attributes or class; write it anew with bnx learn")
     return MixedClassifier(members, tuple(weight for _, weight in found), _sharpness(document, path))
 
