@@ -3,8 +3,8 @@
 ``python tests/quality/report.py`` measures all tables, ``--tables iris,wine`` some of them, ``--tables none`` none: it
 writes the page from what is there. The figures of a table are stored as soon as it is done, in tests/quality/measured,
 so that a run that was cut goes on with ``--resume``, which leaves out the tables that are stored. Rivals are measured
-again only where rows or folds have changed. ``--smoothing`` compares ways to smooth instead; there ``--resume`` leaves
-out the ways that are stored.
+again only where rows or folds have changed. ``--seed`` deals other folds, for a ``--folder`` of its own.
+``--smoothing`` compares ways to smooth instead; there ``--resume`` leaves out the ways that are stored.
 """
 
 import argparse
@@ -39,12 +39,12 @@ LEFT_OUT = {
 NAMES = tuple(name for name in TABLES if name not in LEFT_OUT)
 
 
-def measure(name: str, measured: Path) -> None:
+def measure(name: str, measured: Path, seed: int = 1) -> None:
     """Measure one table, and store its figures."""
     path, target = measured / f"{name}.json", TABLES[name].target
     frame = load(name)
     with tempfile.TemporaryDirectory(prefix="bnx-quality-") as folder:
-        own, rows = measure_bnx(frame, recipe_for(frame, target), Path(folder))
+        own, rows = measure_bnx(frame, recipe_for(frame, target, seed=seed), Path(folder))
     before = _read(path).get("rivals", {})
     figures = {"bnx": own, "rivals": measure_rivals(frame, target, rows, before)}
     measured.mkdir(parents=True, exist_ok=True)
@@ -75,7 +75,7 @@ def _read(path: Path) -> dict[str, Any]:
     return dict(json.loads(path.read_text(encoding="utf-8"))) if path.exists() else {}
 
 
-def _all(names: Iterable[str], measured: Path, resume: bool, smoothing: bool) -> list[str]:
+def _all(names: Iterable[str], measured: Path, resume: bool, smoothing: bool, seed: int) -> list[str]:
     """Measure tables; list those that cannot be had."""
     failed = []
     for name in names:
@@ -86,7 +86,7 @@ def _all(names: Iterable[str], measured: Path, resume: bool, smoothing: bool) ->
             if smoothing:
                 measure_ways(name, measured, resume)
             else:
-                measure(name, measured)
+                measure(name, measured, seed)
         except TableUnavailable as reason:
             print(f"{name}: {reason}", file=sys.stderr, flush=True)
             failed.append(name)
@@ -114,13 +114,16 @@ def main() -> None:
         "--smoothing", action="store_true", help="compare ways to smooth instead of measuring the program"
     )
     parser.add_argument("--folder", type=Path, default=None, help="for figures and page, instead of the repository")
+    parser.add_argument("--seed", type=int, default=1, help="of the folds; others than 1 need a --folder")
     chosen = parser.parse_args()
+    if chosen.seed != 1 and chosen.folder is None:
+        parser.error("--seed deals other folds than those of the page; give a --folder for their figures")
     names = [name for name in chosen.tables.split(",") if name not in ("", "none")]
     unknown = [name for name in names if name not in NAMES]
     if unknown:
         parser.error(f"no table is called {unknown[0]!r}; choose from {', '.join(NAMES)}, none")
     measured, written = (HERE / "measured", DOCS) if chosen.folder is None else (chosen.folder, chosen.folder)
-    failed = _all(names, measured, chosen.resume, chosen.smoothing)
+    failed = _all(names, measured, chosen.resume, chosen.smoothing, chosen.seed)
     write(measured, written)
     print(f"written: {written / 'probabilities.md'}", file=sys.stderr)
     if failed:

@@ -223,8 +223,9 @@ def test_the_page_shows_every_table() -> None:
 def test_figures_are_stored_and_resumed(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     done: list[str] = []
 
-    def measured(name: str, folder: Path) -> None:
+    def measured(name: str, folder: Path, seed: int) -> None:
         done.append(name)
+        assert seed == 1
         (folder / f"{name}.json").write_text(json.dumps(figures_of(0.2, 0.3, 0.4)), encoding="utf-8")
 
     monkeypatch.setattr(report, "measure", measured)
@@ -232,6 +233,9 @@ def test_figures_are_stored_and_resumed(tmp_path: Path, monkeypatch: pytest.Monk
         monkeypatch.setattr("sys.argv", ["report.py", *more, "--folder", str(tmp_path)])
         report.main()
     assert done == ["iris", "monk1"]
+    monkeypatch.setattr("sys.argv", ["report.py", "--tables", "iris", "--seed", "2"])
+    with pytest.raises(SystemExit):
+        report.main()
     assert "| monk1 |" in (tmp_path / "probabilities.md").read_text(encoding="utf-8")
 
 
