@@ -8,9 +8,8 @@ import numpy as np
 from bnx.evaluation import Evaluation
 from bnx.judging import Against, against
 from bnx.losses import Scores
-from bnx.mixing import LIKELY
 from bnx.paired import Difference, corrected_t
-from bnx.picking import chances_of
+from bnx.picking import LIKELY, chances_of
 from bnx.rating import StructureScore
 
 __all__ = ["JudgedMix", "judge_mix"]

@@ -10,9 +10,8 @@ from bnx.sharpening import fit_sharpness, sharpened
 from bnx.simplex import least_on_simplex
 from bnx.structure import Structure
 
-__all__ = ["LIKELY", "Mix", "fit_mix", "members_of", "mixed"]
+__all__ = ["Mix", "fit_mix", "members_of", "mixed"]
 
-LIKELY = 0.5
 _AHEAD, _LEVEL = 0.95, 0.1  # the least chance of being better than a single structure without edges, and with some
 _FOLD = 10.0  # nats behind that lower a weight by a factor of e
 _EDGES = 20.0  # nats that a structure with edges must be ahead to start like one without

@@ -7,7 +7,9 @@ import numpy as np
 from bnx.paired import Chances, bayesian_t
 from bnx.structure import Structure
 
-__all__ = ["apart", "chances_of", "pick", "region_of"]
+__all__ = ["LIKELY", "apart", "chances_of", "pick", "region_of"]
+
+LIKELY = 0.5
 
 
 def region_of(losses: Sequence[float]) -> float:
@@ -35,7 +37,7 @@ def pick(
     best = int(np.argmin(means))
     region = region_of(means)
     chances = [chances_of(row, losses[best], folds, region) for row in losses]
-    able = [s for s in range(len(structures)) if s == best or chances[s].worse < 0.5]
+    able = [s for s in range(len(structures)) if s == best or chances[s].worse < LIKELY]
     first = {structures[s].what_it_says: s for s in reversed(able)}
     chosen = min(first.values(), key=lambda s: (len(structures[s].edges), means[s], s))
     return best, chosen, chances[chosen]

@@ -11,7 +11,8 @@ import pandas as pd
 import pytest
 from commandline import FAST, call, refusal
 
-from bnx.formats.mix_json import members_of_mix, mixed_of, read_mix
+from bnx.formats.mix_json import members_of_mix, mixed_of
+from bnx.formats.reading_json import read_json
 
 
 @cache
@@ -48,7 +49,7 @@ def test_an_offered_mix_is_told_and_written() -> None:
     assert f"mix: {mix['words']}" in printed
     assert "Offered beside" in printed
     assert "mix.json" in printed
-    document = read_mix(str(results() / "out/mix.json"))
+    document = read_json(str(results() / "out/mix.json"))
     assert [(one["name"], one["weight"]) for one in document["members"]] == [
         (one["name"], one["weight"]) for one in mix["members"]
     ]
@@ -60,7 +61,7 @@ def test_an_offered_mix_is_told_and_written() -> None:
 def test_a_mix_classifies_as_its_members_say(tmp_path: Path) -> None:
     table, out = str(results() / "table.csv"), tmp_path / "p.csv"
     assert call("classify", str(results() / "out/mix.json"), table, "-o", str(out)).code == 0
-    power, mix = 0.0, read_mix(str(results() / "out/mix.json"))
+    power, mix = 0.0, read_json(str(results() / "out/mix.json"))
     for one in mix["members"]:
         own = tmp_path / f"{one['name']}.csv"
         call("classify", str(results() / f"out/{one['name']}.json"), table, "-o", str(own))
@@ -80,7 +81,7 @@ def test_a_mix_classifies_as_its_members_say(tmp_path: Path) -> None:
 
 def test_a_mix_is_shown_and_drawn_member_by_member(tmp_path: Path) -> None:
     path = str(results() / "out/mix.json")
-    members = read_mix(path)["members"]
+    members = read_json(path)["members"]
     shown = call("show", path, "a1").out
     assert shown.startswith("mix: ")
     assert [f"weight {one['weight']:.3f}: {one['name']}" in shown for one in members] == [True] * len(members)
@@ -118,14 +119,14 @@ def test_a_mix_is_exported_whole(tmp_path: Path) -> None:
     ],
 )
 def test_a_broken_mix_is_refused(change: dict[str, object], sentence: str, tmp_path: Path) -> None:
-    document = read_mix(str(results() / "out/mix.json"))
+    document = read_json(str(results() / "out/mix.json"))
     path = tmp_path / "mix.json"
     path.write_text(json.dumps(document | change), encoding="utf-8")
     assert sentence in refusal("classify", str(path), str(results() / "table.csv"), "-o", "-")
 
 
 def test_weights_that_are_no_shares_and_strange_members_are_refused(tmp_path: Path) -> None:
-    document = read_mix(str(results() / "out/mix.json"))
+    document = read_json(str(results() / "out/mix.json"))
     path = tmp_path / "mix.json"
     document["members"][0]["weight"] += 0.5
     path.write_text(json.dumps(document), encoding="utf-8")
@@ -134,7 +135,7 @@ def test_weights_that_are_no_shares_and_strange_members_are_refused(tmp_path: Pa
     document["members"][0]["structure"]["class"]["levels"] = ["p", "other"]
     path.write_text(json.dumps(document), encoding="utf-8")
     assert refusal("show", str(path))
-    assert mixed_of(read_mix(str(results() / "out/mix.json")), "mix.json").weights
+    assert mixed_of(read_json(str(results() / "out/mix.json")), "mix.json").weights
 
 
 def test_without_the_mix_there_is_no_word_of_it(tmp_path: Path) -> None:
@@ -167,7 +168,7 @@ def test_a_file_that_is_no_json_of_ours_is_told_in_a_sentence(content: bytes, se
 
 
 def test_two_members_of_one_name_are_refused(tmp_path: Path) -> None:
-    document = read_mix(str(results() / "out/mix.json"))
+    document = read_json(str(results() / "out/mix.json"))
     one = document["members"][0]
     twice = [{**one, "weight": 0.5}, {**one, "weight": 0.5}]
     path = tmp_path / "mix.json"
@@ -202,7 +203,7 @@ def test_a_mix_may_be_all_of_a_structure_that_is_not_picked(tmp_path: Path) -> N
 
 
 def test_names_and_words_that_are_not_those_of_the_members_are_refused(tmp_path: Path) -> None:
-    document = read_mix(str(results() / "out/mix.json"))
+    document = read_json(str(results() / "out/mix.json"))
     renamed = [{**one, "name": "../x"} for one in document["members"]]
     path = tmp_path / "mix.json"
     for change in ({"members": renamed}, {"words": None}):
@@ -215,7 +216,7 @@ def test_names_and_words_that_are_not_those_of_the_members_are_refused(tmp_path:
 
 def test_no_picture_is_drawn_where_one_is_there_already(tmp_path: Path) -> None:
     path = str(results() / "out/mix.json")
-    last = read_mix(path)["members"][-1]["name"]
+    last = read_json(path)["members"][-1]["name"]
     (tmp_path / f"m-{last}.dot").write_text("mine", encoding="utf-8")
     assert "exists already" in refusal("draw", path, "-o", str(tmp_path / "m.dot"))
     assert [one.name for one in tmp_path.iterdir()] == [f"m-{last}.dot"]

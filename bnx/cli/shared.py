@@ -11,7 +11,8 @@ import typer
 from bnx.classifier import Classifier
 from bnx.errors import SettingError
 from bnx.formats.evidence import check_evidence
-from bnx.formats.mix_json import is_mix, members_of_mix, mixed_of, read_mix
+from bnx.formats.mix_json import is_mix, members_of_mix, mixed_of
+from bnx.formats.reading_json import read_json
 from bnx.formats.structure_json import classifier_of, read_structure
 from bnx.independence import TESTS
 from bnx.mixed_classifier import MixedClassifier
@@ -233,11 +234,11 @@ def opened_mix(path: str) -> tuple[dict[str, Any], MixedClassifier] | None:
     """Read a mix file and everything in it that a command may show; None for a file that is no mix.
 
     Raises:
-        FormatError: it is not what it claims to be.
+        DataError, FormatError: there is no such file, or it is not what it claims to be.
     """
-    if not is_mix(path):
+    document = read_json(path)
+    if not is_mix(document):
         return None
-    document = read_mix(path)
     classifier = mixed_of(document, path)
     for one, _ in members_of_mix(document, path):
         check_evidence(one, f"{path}, member {one['name']}")

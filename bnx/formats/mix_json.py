@@ -3,12 +3,11 @@
 from collections.abc import Mapping, Sequence
 from typing import Any
 
-from bnx.errors import DataError, FormatError
-from bnx.formats.reading_json import read_json
+from bnx.errors import FormatError
 from bnx.formats.structure_json import STRUCTURE_FORMAT, classifier_of
 from bnx.mixed_classifier import MixedClassifier, mix_words
 
-__all__ = ["MIX_FORMAT", "is_mix", "members_of_mix", "mixed_document", "mixed_of", "read_mix"]
+__all__ = ["MIX_FORMAT", "is_mix", "members_of_mix", "mixed_document", "mixed_of"]
 
 MIX_FORMAT = "bnx-mix/1"
 
@@ -29,25 +28,9 @@ def mixed_document(members: Sequence[Mapping[str, Any]], weights: Sequence[float
     }
 
 
-def is_mix(path: str) -> bool:
-    """Tell whether a file claims to be a mix; one that cannot be read is left to those who read it."""
-    try:
-        document = read_json(path)
-    except (DataError, FormatError):
-        return False
+def is_mix(document: Any) -> bool:
+    """Tell whether what was read from a file claims to be a mix."""
     return isinstance(document, dict) and document.get("format") == MIX_FORMAT
-
-
-def read_mix(path: str) -> dict[str, Any]:
-    """Read a mix file.
-
-    Raises:
-        DataError, FormatError: there is no such file, or it is not a mix file of this version.
-    """
-    document = read_json(path)
-    if not isinstance(document, dict) or document.get("format") != MIX_FORMAT:
-        raise FormatError(f"{path} is not a mix file of the format {MIX_FORMAT!r}; give a mix.json of bnx learn")
-    return document
 
 
 def members_of_mix(document: Mapping[str, Any], path: str) -> list[tuple[dict[str, Any], float]]:

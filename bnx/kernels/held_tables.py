@@ -7,6 +7,7 @@ less its own.
 import numpy as np
 
 from bnx.kernels.compiling import inlined, kernel, part
+from bnx.kernels.joint_levels import cells_of, number_levels
 
 __all__ = ["held_tables"]
 
@@ -37,13 +38,13 @@ def held_tables(
     segments = starts.size - 1
     most = 1
     for k in range(depths.size):
-        most = max(most, _cells_of(sizes, k, depths[k]))
+        most = max(most, cells_of(sizes, k, depths[k]))
     cells = np.empty(codes.shape[1], np.uint32)
     counts, whole = np.empty(segments * most, np.int32), np.empty(classes * most, np.int32)
     for k in range(depths.size):
         depth = depths[k]
-        size, parents = _cells_of(sizes, k, depth), depth - 1
-        _number(codes, members, sizes, k, depth, cells)
+        size, parents = cells_of(sizes, k, depth), depth - 1
+        number_levels(codes, members, sizes, k, depth, 0, cells.size, cells)
         _count(cells, starts, size, counts)
         for m in range(depth):
             if levels[k, m] < sizes[k, m]:
@@ -91,26 +92,6 @@ def _back_off(
             pool[table + here + x] = (own + strength * pool[before + x]) * share
         for x in range(known, child):
             pool[table + here + x] = 1.0
-
-
-@inlined
-def _cells_of(sizes: np.ndarray, k: int, depth: int) -> int:
-    """Count the cells of a family."""
-    cells = 1
-    for m in range(depth):
-        cells *= sizes[k, m]
-    return cells
-
-
-@inlined
-def _number(codes: np.ndarray, members: np.ndarray, sizes: np.ndarray, k: int, depth: int, cells: np.ndarray) -> None:
-    """Number the joint level of every row, the last member fastest."""
-    for row in range(cells.size):
-        cells[row] = 0
-    for m in range(depth):
-        step, own = np.uint32(sizes[k, m]), codes[members[k, m]]
-        for row in range(cells.size):
-            cells[row] = cells[row] * step + np.uint32(own[row])
 
 
 @inlined

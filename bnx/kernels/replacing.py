@@ -8,6 +8,7 @@ import numpy as np
 
 from bnx.kernels.compiling import inlined, kernel, part
 from bnx.kernels.exponentials import exponentials
+from bnx.kernels.joint_levels import cells_of, number_levels
 
 __all__ = ["held_weights", "present_loss", "replace_family", "replaced_savings"]
 
@@ -59,7 +60,7 @@ def replaced_savings(
     parts = stages[stages.size - 1]
     for k in range(1, which.size):
         f = which[k]
-        size = _cells_of(sizes, f, depths[f])
+        size = cells_of(sizes, f, depths[f])
         sums[0] = sums[1] = 0.0
         seen = 0
         for stage in range(stages.size):
@@ -73,7 +74,7 @@ def replaced_savings(
                 seen += end - start
                 for low in range(start, end, _ROWS):
                     high = min(low + _ROWS, end)
-                    _number(codes, members, sizes, f, depths[f], low, high, cells)
+                    number_levels(codes, members, sizes, f, depths[f], low, high, cells)
                     _add_block(rest, cells, pool, first, size, y, low, high, scale, floor[y], present, whole, own, sums)
             if seen < used and seen > 0:
                 scaled = used / seen
@@ -152,12 +153,12 @@ def replace_family(
     _take_away(codes, starts, members, sizes, which[0], depths[which[0]], places[which[0]], pool, weights, rest)
     cells, top = np.empty(_ROWS, np.uint32), np.empty(_ROWS)
     f = which[1]
-    size, lowest = _cells_of(sizes, f, depths[f]), np.exp(_LOWEST)
+    size, lowest = cells_of(sizes, f, depths[f]), np.exp(_LOWEST)
     for s in range(starts.size - 1):
         first = places[f] + (s - s % classes) * size
         for low in range(starts[s], starts[s + 1], _ROWS):
             high = min(low + _ROWS, starts[s + 1])
-            _number(codes, members, sizes, f, depths[f], low, high, cells)
+            number_levels(codes, members, sizes, f, depths[f], low, high, cells)
             for k in range(high - low):
                 top[k] = 0.0
             for c in range(classes):
@@ -219,14 +220,14 @@ def held_weights(
             for row in range(starts[s], starts[s + 1]):
                 out[c, row] = log_prior[s // classes, c]
         for f in which:
-            size = _cells_of(sizes, f, depths[f])
+            size = cells_of(sizes, f, depths[f])
             first = places[f] + (s - s % classes) * size
             logs = np.empty(classes * size)
             for cell in range(logs.size):
                 logs[cell] = np.log(pool[first + cell])
             for low in range(starts[s], starts[s + 1], _ROWS):
                 high = min(low + _ROWS, starts[s + 1])
-                _number(codes, members, sizes, f, depths[f], low, high, cells)
+                number_levels(codes, members, sizes, f, depths[f], low, high, cells)
                 for c in range(classes):
                     for row in range(high - low):
                         out[c, low + row] += logs[c * size + cells[row]]
@@ -267,26 +268,17 @@ def _take_away(
 ) -> None:
     """Write the weights of classes (C, N) without what the table of the first family says."""
     classes = weights.shape[0]
-    size = _cells_of(sizes, f, depth)
+    size = cells_of(sizes, f, depth)
     cells = np.empty(_ROWS, np.uint32)
     for s in range(starts.size - 1):
         first = place + (s - s % classes) * size
         for low in range(starts[s], starts[s + 1], _ROWS):
             high = min(low + _ROWS, starts[s + 1])
-            _number(codes, members, sizes, f, depth, low, high, cells)
+            number_levels(codes, members, sizes, f, depth, low, high, cells)
             for c in range(classes):
                 table = pool[first + c * size : first + (c + 1) * size]
                 for k in range(high - low):
                     rest[c, low + k] = weights[c, low + k] / table[cells[k]]
-
-
-@inlined
-def _cells_of(sizes: np.ndarray, f: int, depth: int) -> int:
-    """Count the cells of a family."""
-    cells = 1
-    for m in range(depth):
-        cells *= sizes[f, m]
-    return cells
 
 
 @inlined
@@ -296,23 +288,3 @@ def _scale(floor: np.ndarray) -> float:
     for c in range(floor.size):
         scale -= floor[c]
     return scale
-
-
-@part
-def _number(
-    codes: np.ndarray,
-    members: np.ndarray,
-    sizes: np.ndarray,
-    f: int,
-    depth: int,
-    low: int,
-    high: int,
-    cells: np.ndarray,
-) -> None:
-    """Number the joint level of some rows in family f, the last member fastest."""
-    for row in range(high - low):
-        cells[row] = 0
-    for m in range(depth):
-        size, own = np.uint32(sizes[f, m]), codes[members[f, m], low:high]
-        for row in range(high - low):
-            cells[row] = cells[row] * size + np.uint32(own[row])
