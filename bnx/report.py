@@ -1,19 +1,15 @@
 """The report: a comparison summed up, then rendered as one page that needs nothing else."""
 
-import base64
-import hashlib
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import PurePath
 from typing import Any
 
-import jinja2
 from markupsafe import Markup
 
 from bnx.charts import FoldChart, HeatMap, fold_chart, heat_map
 from bnx.embedding import embed
 from bnx.findings import Findings, drawn_pairs, findings
-from bnx.palette import PALETTES
 from bnx.printed import (
     AttributeRow,
     CurveTable,
@@ -31,6 +27,7 @@ from bnx.printed import (
     yardstick_row,
 )
 from bnx.reliability_chart import ReliabilityChart, reliability_charts
+from bnx.report_page import page_html
 
 __all__ = [
     "ATTRIBUTES_ON_PAGE",
@@ -57,7 +54,6 @@ _ADJUSTMENTS = {
     "by": "after adjustment for the number of pairs (Benjamini and Yekutieli)",
     "none": "without any adjustment for the number of pairs",
 }
-_UNPRINTABLE = {code: "�" for code in (*range(32), *range(127, 160)) if chr(code) not in "\t\n\r"}
 
 
 @dataclass(frozen=True)
@@ -130,17 +126,7 @@ def report_html(comparison: Mapping[str, Any], pictures: Mapping[str, str]) -> s
         FormatError: a picture is no SVG.
     """
     report, styles = summarise(comparison, pictures)
-    engine = jinja2.Environment(
-        loader=jinja2.PackageLoader("bnx", "templates"),
-        autoescape=True,
-        undefined=jinja2.StrictUndefined,
-        trim_blocks=True,
-        lstrip_blocks=True,
-    )
-    style = engine.get_template("report.css.j2").render(palettes=PALETTES) + "".join(styles)
-    digest = base64.b64encode(hashlib.sha256(style.encode()).digest()).decode()
-    html = engine.get_template("report.html.j2").render(report=report, style=Markup(style), digest=digest)
-    return html.translate(_UNPRINTABLE)
+    return page_html(report, styles, ())
 
 
 def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple[Report, tuple[str, ...]]:

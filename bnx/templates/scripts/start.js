@@ -1,0 +1,4 @@
+// Starts every part of the page.
+
+for (const start of [startTheme]) start();
+document.documentElement.classList.add("scripted");
