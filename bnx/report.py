@@ -10,6 +10,7 @@ from markupsafe import Markup
 from bnx.charts import FoldChart, HeatMap, fold_chart, heat_map
 from bnx.embedding import embed
 from bnx.findings import Findings, drawn_pairs, findings
+from bnx.pair_figures import pairs_block
 from bnx.printed import (
     AttributeRow,
     CurveTable,
@@ -126,7 +127,7 @@ def report_html(comparison: Mapping[str, Any], pictures: Mapping[str, str]) -> s
         FormatError: a picture is no SVG.
     """
     report, styles = summarise(comparison, pictures)
-    return page_html(report, styles, ())
+    return page_html(report, styles, (pairs_block(comparison),))
 
 
 def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple[Report, tuple[str, ...]]:
