@@ -1,4 +1,4 @@
-"""What the panel of one pair says: the figures of the ledger, and the verdict in words that no figure can be read past."""
+"""What the panel of one pair says: the figures of the ledger, and the verdict in words that cannot be misread."""
 
 from collections.abc import Mapping
 from typing import Any

@@ -30,7 +30,8 @@ FLOORS = (
     "learning_curve comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
     "chosen score_entries mix_documents yardstick_documents curve_documents documents charts findings printed "
-    "reliability_words reliability_chart report_data report_page pair_figures report results tested_text tested_picture",
+    "reliability_words reliability_chart report_data report_page pair_figures report results tested_text "
+    "tested_picture",
     "cli",
 )
 PLACES = {name: (floor, place) for floor, names in enumerate(FLOORS) for place, name in enumerate(names.split())}
