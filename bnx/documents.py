@@ -57,9 +57,6 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
     """Describe a whole run, ready for JSON."""
     advice = comparison.recommendation
     names = comparison.recipe.structures
-    judged = comparison.judged.judgement
-    listed = pair_results(comparison)
-    tables, missing = pair_table_entries(comparison, listed)
     document: dict[str, Any] = finite(
         {
             "format": COMPARISON_FORMAT,
@@ -95,22 +92,29 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
             "yardsticks": yardstick_entries(comparison),
             "learning_curve": curve_entry(comparison),
             "reliability": {name: reliability_entry(one) for name, one in comparison.reliability.items()},
-            "pairs": [result.to_dict() for result in listed],
-            "pairs_total": comparison.judged.family,
-            "pairs_rejected": comparison.judged.rejected,
-            "pairs_judged": len(comparison.pairs.left),
-            "pairs_verdicts": {word: int((judged.verdict == code).sum()) for code, word in enumerate(VERDICTS)},
-            "pairs_outcomes": {
-                word: int((comparison.judged.outcome == code).sum()) for code, word in enumerate(OUTCOMES)
-            },
-            "pair_tables": tables,
-            "pair_tables_left_out": missing,
+            **pair_entries(comparison),
             "left_out": [{"name": one.name, "reason": one.reason} for one in comparison.left_out],
             "warnings": list(comparison.warnings),
             "versions": versions(),
         }
     )
     return document
+
+
+def pair_entries(comparison: Comparison) -> dict[str, Any]:
+    """Describe the pairs: those listed, how many there are of each kind, and tables of those worth looking at."""
+    listed, judged = pair_results(comparison), comparison.judged
+    tables, without_table = pair_table_entries(comparison, listed)
+    return {
+        "pairs": [result.to_dict() for result in listed],
+        "pairs_total": judged.family,
+        "pairs_rejected": judged.rejected,
+        "pairs_judged": len(comparison.pairs.left),
+        "pairs_verdicts": {word: int((judged.judgement.verdict == code).sum()) for code, word in enumerate(VERDICTS)},
+        "pairs_outcomes": {word: int((judged.outcome == code).sum()) for code, word in enumerate(OUTCOMES)},
+        "pair_tables": tables,
+        "pair_tables_left_out": without_table,
+    }
 
 
 def structure_entry(comparison: Comparison, s: int) -> dict[str, Any]:
