@@ -51,6 +51,7 @@ PAIR_KEYS = {
         "marginal_bits_corrected",
     ),
     *("marginal_p_value", "marginal_adjusted_p", "explained_bits", "bits_without_blanks", "outcome"),
+    "double_counted_bits",
     *("x2", "g", "statistic", "df", "p_value", "adjusted_p", "method"),
     *("sample_carries_it", "strata", "strata_informative", "min_expected", "share_expected_below_5", "cramers_v"),
     *("detectable_bits", "detectable_at", "verdict"),
