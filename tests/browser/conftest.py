@@ -1,0 +1,45 @@
+"""A browser, and the pages that tests look at: the demo's, and one whose names and levels are hostile."""
+
+import json
+import os
+from collections.abc import Iterator
+from pathlib import Path
+
+import pytest
+from commandline import call
+from pages import Made, chromium_path, launched
+from playwright.sync_api import Browser, sync_playwright
+from smallrun import small_run
+
+from bnx.report import report_html
+
+DEMO = Path(__file__).parents[2] / "datasets" / "cold_chain.csv"
+
+
+@pytest.fixture(scope="module")
+def browser() -> Iterator[Browser]:
+    program = chromium_path()
+    if program is None:
+        if os.environ.get("BNX_BROWSER") == "required":
+            pytest.fail("no Chromium is here, but BNX_BROWSER says that it is required")
+        pytest.skip("no Chromium is here: install Debian's package chromium, or name the program in BNX_CHROMIUM")
+    with sync_playwright() as driver:
+        one = launched(driver, program)
+        yield one
+        one.close()
+
+
+@pytest.fixture(scope="session")
+def demo(tmp_path_factory: pytest.TempPathFactory) -> Made:
+    folder = tmp_path_factory.mktemp("demo") / "results"
+    done = call("learn", str(DEMO), "--class", "arrival", "-o", str(folder), "--quiet")
+    assert done.code == 0, done.err
+    return Made(folder / "report.html", json.loads((folder / "comparison.json").read_text(encoding="utf-8")))
+
+
+@pytest.fixture(scope="session")
+def hostile(tmp_path_factory: pytest.TempPathFactory) -> Made:
+    run = small_run(hostile=True)
+    path = tmp_path_factory.mktemp("hostile") / "report.html"
+    path.write_text(report_html(run.comparison, run.pictures), encoding="utf-8")
+    return Made(path, run.comparison)
