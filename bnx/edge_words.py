@@ -54,8 +54,8 @@ WHAT_IF = MappingProxyType(
 
 PAIR_SENTENCES = MappingProxyType(
     {
-        "dependent": "Dependent: given {class} the two share {bits} bits more than chance would show in an average"
-        " record, and the test rejects independence (adjusted p {p}).",
+        "dependent": "Dependent: given {class} the two share {corrected} bits in an average record, less what chance"
+        " alone would show, and the test rejects independence (adjusted p {p}).",
         "detected, but negligible": "Dependent, but so little that it is negligible: even the upper end of what they"
         " may share given {class}, {upper} bits, lies below {negligible} bits.",
         "negligible": "Independent enough: the test found no dependence given {class}, and even the upper end of what"
@@ -68,7 +68,7 @@ PAIR_SENTENCES = MappingProxyType(
         "twice": "Because of this pair naive counts {twice} bits of evidence about {class} twice in an average record.",
         "too little": "Because of this pair naive counts {less} bits of evidence about {class} too little in an average"
         " record.",
-        "harmless": "What naive counts twice because of this pair rounds to nothing in an average record: {twice} bits.",
+        "harmless": "What naive counts twice because of this pair rounds to nothing: {twice} bits in an average record.",
     }
 )
 """What a pair's verdict means, where *not enough data* has two reasons, and what naive makes of the pair."""

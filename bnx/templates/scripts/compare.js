@@ -21,7 +21,7 @@ const markArrow = (group, kind) => {
   const casing = (extra, token) => svgEl("path", { d: path.getAttribute("d"), fill: "none", "stroke-width": width + extra,
     class: `casing bnx-stroke-${token}` });
   const at = path.getPointAtLength(path.getTotalLength() * 0.4);
-  if (kind === "only") group.prepend(casing(7, "text"), casing(4.4, "frame"));
+  if (kind === "only") group.prepend(casing(5.6, "text"), casing(3.8, "frame"));
   group.append(svgEl("circle", { cx: at.x, cy: at.y, r: 6.5, class: "casing bnx-fill-text" }),
     svgEl("text", { x: at.x, y: at.y + 3.6, "text-anchor": "middle", "font-size": 11, "font-weight": 700,
       class: "casing bnx-fill-background" }, DIFFERENCE_SIGNS[kind]));

@@ -22,28 +22,28 @@ const pairFigures = (row) => {
   return [el("h3", {}, "Figures of the ledger"), el("dl", { class: "figures", id: "pair-panel-figures" }, ...cells)];
 };
 
-// What each structure makes of the pair, and what would change without the edge.
-const pairInStructure = (structure, edge) => {
-  const gains = edge.folds.length ? [foldDots(edge)] : [];
-  return el("li", { "data-structure": structure.name }, el("b", {}, structure.name), ": ", ...asNodes(edgeEnds(edge)),
-    `, ${edge.verdict}; chosen in ${edge.chosen} folds, stability ${edge.stability}. `,
-    el("span", { class: "what-if" }, ...asNodes(whatIfWords(structure, edge))), ...gains);
-};
+// The structure whose tab is open, where it joins the two; else the first that does, the recommended one before all.
+const toldFirst = (joining) => joining.find((one) => one === openStructure()) || joining[0];
 
-const pairInStructures = (key) => {
+const whatIfItem = (structure, edge) =>
+  el("li", { "data-structure": structure.name }, ...asNodes(whatIfWords(structure, edge)));
+
+const pairWhatIf = (key) => {
   const joining = structures.filter((one) => one.byPair.has(key));
-  const others = structures.filter((one) => !one.byPair.has(key)).map((one) => one.name);
   const heading = el("h3", {}, "What if this edge were left out");
   if (!joining.length) return [heading, el("p", {}, "No structure joins the two, so there is no edge to leave out.")];
-  return [heading, el("ul", { class: "joining", id: "pair-panel-structures" },
-    ...joining.map((one) => pairInStructure(one, one.byPair.get(key)))),
-  ...(others.length ? [el("p", { class: "quiet" }, `Not joined in ${others.join(", ")}.`)] : [])];
+  const first = toldFirst(joining);
+  const rest = joining.filter((one) => one !== first).map((one) => whatIfItem(one, one.byPair.get(key)));
+  const more = el("details", {}, el("summary", { class: "quiet" }, "In the other structures that join the two"), el("ul", {}, ...rest));
+  return [heading, el("p", { id: "pair-panel-what-if" }, ...asNodes(whatIfWords(first, first.byPair.get(key)))),
+    ...(rest.length ? [more] : [])];
 };
 
 const pairBody = (a, b) => {
   const row = panelRows.get(pairKey(a, b));
+  const key = pairKey(a, b);
   const said = row ? pairVerdict(row) : [el("p", {}, "This page holds the strongest pairs only, and this is none of them.")];
-  return [...said, ...pairInStructures(pairKey(a, b)), ...pairTables(pairKey(a, b)), ...(row ? pairFigures(row) : [])];
+  return [...said, ...pairWhatIf(key), ...pairTables(key), ...pairByStructure(key), ...(row ? pairFigures(row) : [])];
 };
 
 let panelOpener = null;
