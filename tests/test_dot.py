@@ -100,6 +100,30 @@ def test_both_reasons_for_leaving_out_are_said():
     )
 
 
+def test_least_gain_leaves_out_what_gains_less_and_what_nobody_judged():
+    given = picture(
+        5,
+        [
+            Arrow(0, 1, 0.2, "gains", 0.03, 0.001),
+            Arrow(1, 2, 0.2, "loses", -0.01, 0.001),
+            Arrow(2, 3, 0.2),
+            Arrow(3, 4, 0.001, "gains", 0.02, 0.001),
+        ],
+    )
+    assert [arrow.parent for arrow in showing(given, least_gain=-0.01).arrows] == [0, 1, 3]
+    assert showing(given, least_gain=-0.01).left_out == (
+        "3 of 4 arrows drawn; left out: those not judged on held-out rows"
+    )
+    found = showing(given, 0.01, least_gain=0.0)
+    assert [arrow.parent for arrow in found.arrows] == [0]
+    assert found.left_out == (
+        "1 of 4 arrows drawn; left out: those under 0.01 bits, those that gain less than 0 bits on held-out rows and"
+        " those not judged on held-out rows"
+    )
+    assert len(edge_lines(dot_source(given, least_gain=0.03))) == 1
+    assert len(edge_lines(dot_source(given))) == 4
+
+
 def test_fifteen_attributes_without_arrows_are_a_fan_and_sixteen_a_grid():
     fan, grid = dot_source(picture(15)), dot_source(picture(16))
     assert len(edge_lines(fan, "fan")) == 15

@@ -51,14 +51,21 @@ class _Sheet:
         return cut(self.picture.target, 30)
 
 
-def dot_source(picture: Picture, theme: Theme = "light", least_bits: float = 0.0, everything: bool = False) -> str:
+def dot_source(
+    picture: Picture,
+    theme: Theme = "light",
+    least_bits: float = 0.0,
+    everything: bool = False,
+    least_gain: float | None = None,
+) -> str:
     """Write a picture as DOT.
 
-    Arrows under ``least_bits`` bits are left out; among more than 40, all but the clear gains are too, and of more than
+    Arrows under ``least_bits`` bits are left out, with ``least_gain`` also those that are not known to gain so many
+    held-out bits per row; among more than 40, all but the clear gains are too, and of more than
     150 attributes all but those of the strongest arrows, unless ``everything`` is asked for. What is left out is said
     under the title.
     """
-    shown = showing(picture, least_bits, everything)
+    shown = showing(picture, least_bits, everything, least_gain)
     chips = [picture.chips[place] for place in shown.chips]
     widest = max(width_of(cut(chip.name), 12) for chip in chips)
     sheet = _Sheet(picture, PALETTES[theme], max(96, widest), max(chip.bits for chip in chips), len(chips))

@@ -1,7 +1,7 @@
 // What every structure makes of a pair: its edge, and the held-out gain of it in every fold, a dot a fold around a line
 // at 0, all on one scale; the figures of the folds stand below as a list.
 
-const DOTS = { width: 190, height: 30, margin: 8, middle: 13 };
+const DOTS = { width: 170, height: 30, margin: 8, middle: 13 };
 
 const dotScale = (figures) => {
   const values = figures.map(Number);
@@ -26,7 +26,7 @@ const foldDots = (edge, at) =>
 const joiningRow = (structure, edge, at) =>
   el("tr", { "data-structure": structure.name }, el("th", { scope: "row" }, structure.name, el("span", { class: "role" },
     ...asNodes(edgeEnds(edge)))),
-  el("td", {}, edge.verdict), el("td", { class: "num" }, `${edge.gain} ± ${edge.error}`),
+  el("td", { class: "num" }, `${edge.gain} ± ${edge.error}`, el("span", { class: "role" }, edge.verdict)),
   el("td", {}, edge.folds.length ? foldDots(edge, at) : "–"), el("td", { class: "num" }, edge.chosen),
   el("td", { class: "num" }, edge.stability));
 
@@ -40,7 +40,7 @@ const pairByStructure = (key) => {
   const heading = el("h3", {}, "In the structures");
   if (!joining.length) return [heading, ...left];
   const at = dotScale(joining.flatMap(([, edge]) => edge.folds.filter(Boolean)));
-  const heads = [["structure", ""], ["verdict", ""], ["held-out gain, bits", "num"], ["by fold, around 0", ""],
+  const heads = [["structure", ""], ["held-out gain, bits", "num"], ["by fold, around 0", ""],
     ["chosen in folds", "num"], ["random halves", "num"]];
   const table = el("table", { id: "pair-panel-structures" }, el("thead", {}, el("tr", {},
     ...heads.map(([words, kind]) => el("th", { scope: "col", class: kind }, words)))),
