@@ -113,6 +113,7 @@ def showing(
     With ``least_gain``, arrows of less held-out gain (bits per row) are left out, and so are those whose gain is not
     known, since nothing says that they reach it.
 
+    Where none of many is a clear gain, the strongest are drawn, since a frame without arrows would claim independence.
     Among very many attributes those are drawn that the strongest arrows join, clear gains before others; without
     arrows, those that share most bits with the class.
     """
@@ -123,8 +124,9 @@ def showing(
         drawn = _strongest(strong)
         reasons += ["weaker ones"] if len(drawn) < len(strong) else []
     elif not everything and len(strong) > MANY_ARROWS:
-        drawn = tuple(arrow for arrow in strong if arrow.verdict == "gains")
-        reasons += ["those that are not a clear gain"] if len(drawn) < len(strong) else []
+        drawn = tuple(arrow for arrow in strong if arrow.verdict == "gains") or _strongest(strong)
+        kind = "those that are not a clear gain" if drawn and drawn[0].verdict == "gains" else "weaker ones"
+        reasons += [kind] if len(drawn) < len(strong) else []
     chips = _joined(picture, drawn) if crowded else tuple(range(len(picture.chips)))
     number = f"{len(drawn):,} of {len(picture.arrows):,} arrows drawn"
     return Showing(

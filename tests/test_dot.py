@@ -206,7 +206,7 @@ def test_evidence_is_in_the_tooltip():
 def test_bars_share_one_scale():
     dot = dot_source(Picture("naive", "arrival", (Chip("a", 2, 0.4), Chip("b", 2, 0.1), Chip("c", 2, 0.0))))
     bars = re.findall(rf'WIDTH="(\d+)" HEIGHT="5" BGCOLOR="{PALETTES["light"]["bar"]}"', dot)
-    assert [int(bar) for bar in bars] == [66, round(66 / 4)]
+    assert [int(bar) for bar in bars] == [62, round(62 / 4)]
 
 
 def test_same_picture_same_text():
