@@ -69,9 +69,8 @@ const differenceWords = (one, other) => {
   const found = pairDifferences(one, other);
   const count = found.both === 1 ? "1 pair" : `${found.both} pairs`;
   return el("div", { class: "differences", id: "differences" },
-    el("p", {}, `${one.name} and ${other.name} both join ${count}. Of the others, ${found.onlyOne.length} are joined `
-      + `only in ${one.name} and ${found.onlyOther.length} only in ${other.name}; ${found.turned.length} of those joined `
-      + "in both are turned round."),
+    el("p", {}, `${one.name} and ${other.name} both join ${count}, ${found.turned.length} of them turned round; only in `
+      + `${one.name}: ${found.onlyOne.length}; only in ${other.name}: ${found.onlyOther.length}.`),
     el("dl", {}, ...differenceItem(DIFFERENCE_SIGNS.only, `Only in ${one.name}`, found.onlyOne),
       ...differenceItem(DIFFERENCE_SIGNS.only, `Only in ${other.name}`, found.onlyOther),
       ...differenceItem(DIFFERENCE_SIGNS.turned, `Turned round in ${other.name}`, found.turned)));
