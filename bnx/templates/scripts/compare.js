@@ -59,7 +59,7 @@ const pairButton = (edge) => {
 };
 
 const differenceItem = (sign, words, edges) => {
-  const items = inARow(edges.slice(0, DIFFERENCES_LISTED).map(pairButton));
+  const items = edges.slice(0, DIFFERENCES_LISTED).map(pairButton);
   const more = edges.length > DIFFERENCES_LISTED ? ` and ${edges.length - DIFFERENCES_LISTED} more` : "";
   return [el("dt", {}, el("span", { class: "disc", "aria-hidden": "true" }, sign), `${words} (${edges.length})`),
     el("dd", {}, ...(edges.length ? items : ["none"]), more)];

@@ -27,8 +27,8 @@ const joiningRow = (structure, edge, at) =>
   el("tr", { "data-structure": structure.name }, el("th", { scope: "row" }, structure.name, el("span", { class: "role" },
     ...asNodes(edgeEnds(edge)))),
   el("td", { class: "num" }, `${edge.gain} ± ${edge.error}`, el("span", { class: "role" }, edge.verdict)),
-  el("td", {}, edge.folds.length ? foldDots(edge, at) : "–"), el("td", { class: "num" }, edge.chosen),
-  el("td", { class: "num" }, edge.stability));
+  el("td", {}, edge.folds.length ? foldDots(edge, at) : "–"), el("td", { class: "num" }, edge.chosen,
+    el("span", { class: "role" }, edge.stability)));
 
 const foldItem = (structure, edge) =>
   el("li", {}, el("b", {}, structure.name), `: ${edge.folds.map(foldWords).join("; ")}.`);
@@ -41,12 +41,12 @@ const pairByStructure = (key) => {
   if (!joining.length) return [heading, ...left];
   const at = dotScale(joining.flatMap(([, edge]) => edge.folds.filter(Boolean)));
   const heads = [["structure", ""], ["held-out gain, bits", "num"], ["by fold, around 0", ""],
-    ["chosen in folds", "num"], ["random halves", "num"]];
+    ["folds; halves", "num"]];
   const table = el("table", { id: "pair-panel-structures" }, el("thead", {}, el("tr", {},
     ...heads.map(([words, kind]) => el("th", { scope: "col", class: kind }, words)))),
   el("tbody", {}, ...joining.map(([one, edge]) => joiningRow(one, edge, at))));
   return [heading, el("p", { class: "quiet" }, "A dot is one fold; right of the upright line at 0 the edge helps there. "
-    + "Random halves: share of them in which learning joins the two again."),
+    + "Last column: folds that chose it, and the share of random halves in which learning joins the two again."),
   el("div", { class: "box", tabindex: 0, role: "region", "aria-label": "The pair in the structures" }, table), ...left,
   el("details", {}, el("summary", { class: "quiet" }, "The figures fold by fold"), el("ul", { class: "fold-list" },
     ...joining.filter(([, edge]) => edge.folds.length).map(([one, edge]) => foldItem(one, edge))))];

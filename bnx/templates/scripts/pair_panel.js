@@ -56,6 +56,7 @@ const openPair = (a, b, opener) => {
   if (panel.open) panel.close();
   if (window.matchMedia("(max-width: 62rem)").matches) panel.showModal();
   else panel.show();
+  document.documentElement.classList.add("with-panel");
   panel.scrollTop = 0;
   byId("pair-panel-title").focus({ preventScroll: true });
 };
@@ -64,6 +65,7 @@ const closePair = () => {
   const panel = byId("pair-panel");
   if (!panel.open) return;
   panel.close();
+  document.documentElement.classList.remove("with-panel");
   if (panelOpener && panelOpener.isConnected) panelOpener.focus({ preventScroll: true });
   panelOpener = null;
 };
