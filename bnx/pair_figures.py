@@ -45,7 +45,7 @@ def pairs_block(document: Mapping[str, Any]) -> Markup:
     rows = []
     for pair in _known(document):
         figures = _figures(pair)
-        sentences = [told.index(one) for one in pair_sentences(pair, figures["twice"])]
+        sentences = [told.index(one) for one in pair_sentences(pair, document["settings"]["negligible"])]
         rows.append([number[pair["a"]], number[pair["b"]], sentences, *(figures[key] for key, _ in FIGURES)])
     return json_block(
         "panel",

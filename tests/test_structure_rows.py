@@ -93,9 +93,9 @@ def test_what_would_change_without_an_edge(edge: dict[str, Any], amount: str, ki
     [
         ("dependent", 0.003, 0.2, 0.12, ("dependent", "twice")),
         ("dependent", 0.003, 0.2, -0.02, ("dependent", "too little")),
-        ("negligible", 0.003, 0.004, 0.00001, ("negligible", "harmless")),
+        ("negligible", 0.003, 0.004, -0.0049, ("negligible", "harmless")),
         ("detected, but negligible", 0.003, 0.004, None, ("detected, but negligible",)),
-        ("not enough data", 0.02, 0.03, 0.001, ("blunt", "bounded", "twice")),
+        ("not enough data", 0.02, 0.03, 0.005, ("blunt", "bounded", "twice")),
         ("not enough data", 0.02, None, None, ("blunt",)),
         ("not enough data", None, None, None, ("untested",)),
     ],
@@ -109,7 +109,7 @@ def test_what_a_verdict_means(
         "bits_at_most": upper,
         "double_counted_bits": twice,
     }
-    assert pair_sentences(pair, "–" if twice is None else f"{twice:.4f}") == told
+    assert pair_sentences(pair, 0.005) == told
 
 
 def test_only_a_negligible_pair_is_called_independent() -> None:
