@@ -68,7 +68,7 @@ PAIR_SENTENCES = MappingProxyType(
         "twice": "Because of this pair naive counts {twice} bits of evidence about {class} twice in an average record.",
         "too little": "Because of this pair naive counts {less} bits of evidence about {class} too little in an average"
         " record.",
-        "harmless": "What naive counts twice because of this pair is next to nothing: {twice} bits in an average record.",
+        "harmless": "What naive counts twice because of this pair is next to nothing: {twice} bits per record.",
     }
 )
 """What a pair's verdict means, where *not enough data* has two reasons, and what naive makes of the pair."""
