@@ -134,12 +134,13 @@ def test_every_pair_is_in_the_panel_with_the_figures_of_the_document(document: d
     assert len(found["pairs"]) == len(ranked)
     for pair, (a, b, _, *printed) in zip(ranked, found["pairs"], strict=True):
         row = dict(zip(keys, printed, strict=True))
+        row |= {key: words[row[key]] for key, words in found["words"].items()}
         assert (found["names"][a], found["names"][b]) == (pair["a"], pair["b"])
         assert row["bits"] == f"{pair['bits']:.4f}"
         assert row["corrected"] == f"{max(0.0, pair['bits_corrected']):.4f}"
         assert row["upper"] == ("–" if pair["bits_at_most"] is None else f"{pair['bits_at_most']:.4f}")
         assert row["twice"] == f"{pair['double_counted_bits']:.4f}"
-        assert row["verdict"] == pair["verdict"]
+        assert (row["verdict"], row["outcome"], row["df"]) == (pair["verdict"], pair["outcome"], f"{pair['df']:,}")
 
 
 def test_weak_pairs_beyond_the_limit_stay_when_a_structure_joins_them(document: dict[str, Any]) -> None:

@@ -5,8 +5,11 @@ const panelData = data("panel");
 const panelPlaces = new Map(panelData.names.map((name, place) => [name, place]));
 const panelRows = new Map(panelData.pairs.map((row) => [pairKey(row[0], row[1]), row]));
 
+// A figure as printed; those of few words are numbered.
+const pairFigure = (row, key, place) => (panelData.words[key] ? panelData.words[key][row[place + 3]] : row[place + 3]);
+
 const pairValues = (row) => {
-  const figures = Object.fromEntries(panelData.figures.map(([key], place) => [key, row[place + 3]]));
+  const figures = Object.fromEntries(panelData.figures.map(([key], place) => [key, pairFigure(row, key, place)]));
   return { ...figures, less: figures.twice.replace("-", ""), p: figures.adjusted_p, class: { name: panelData.class },
     negligible: panelData.negligible };
 };
@@ -18,7 +21,8 @@ const pairVerdict = (row) => {
 };
 
 const pairFigures = (row) => {
-  const cells = panelData.figures.flatMap(([, label], place) => [el("dt", {}, label), el("dd", {}, row[place + 3])]);
+  const cells = panelData.figures.flatMap(([key, label], place) => [el("dt", {}, label),
+    el("dd", {}, pairFigure(row, key, place))]);
   return [el("h3", {}, "Figures of the ledger"), el("dl", { class: "figures", id: "pair-panel-figures" }, ...cells)];
 };
 

@@ -60,7 +60,7 @@ const leavesOut = (view) => view.svg && (view.late || leftOut(view).length > 0);
 
 const countWords = (view, count) => {
   const { edges, total, own } = view.structure;
-  const unseen = view.svg && view.chips.size < own.length ? `; ${own.length - view.chips.size} attributes are not drawn` : "";
+  const unseen = view.svg && view.chips.size < own.length ? `; ${own.length - view.chips.size} attributes are not drawn, the table below holds their edges` : "";
   return total || edges.length ? `${count} of ${total} edges shown${unseen}` : "no edges";
 };
 
