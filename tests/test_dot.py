@@ -295,3 +295,16 @@ def test_arrows_in_a_circle_are_refused():
 def test_what_cannot_be_drawn_is_refused(make, words):
     with pytest.raises(StructureError, match=re.escape(words)):
         make()
+
+
+def test_where_none_of_many_is_a_clear_gain_the_strongest_are_drawn():
+    found = showing(picture(60, arrows_of(45, ["undecided", "loses"])))
+    assert len(found.arrows) == 40
+    assert found.left_out == "40 of 45 arrows drawn; left out: weaker ones"
+
+
+def test_the_plug_carries_its_caption_inside():
+    dot = dot_source(picture(6, [Arrow(0, 1, 0.1, "gains")]))
+    plug = next(line for line in dot.splitlines() if line.strip().startswith("class ["))
+    assert "parent of all 6 attributes in the frame" in plug
+    assert "label=" not in next(line for line in dot.splitlines() if 'id="cable"' in line)
