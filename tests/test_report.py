@@ -337,6 +337,7 @@ def test_two_attributes_and_one(document: dict[str, Any]) -> None:
     assert len(chart.marks) == 1
     assert heat_map({"attributes": ["alone"], "pairs": []}, frozenset()) is None
     document |= {"attributes": ["alone"], "pairs": [], "pairs_total": 0, "pairs_rejected": 0, "pairs_judged": 0}
+    document["pair_tables"] = []
     document["schema"] = [{**document["schema"][0], "name": "alone"}]
     for one in document["structures"]:
         one["edges"] = []
