@@ -1,47 +1,44 @@
 """The report: a comparison summed up, then rendered as one page that needs nothing else."""
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from pathlib import PurePath
 from typing import Any
 
 from markupsafe import Markup
 
-from bnx.charts import FoldChart, HeatMap, fold_chart, heat_map
+from bnx.charts import FoldChart, fold_chart
 from bnx.embedding import embed
 from bnx.findings import Findings, drawn_pairs, findings
 from bnx.pair_figures import pairs_block
+from bnx.pair_rows import PairLedger, pair_ledger
 from bnx.printed import (
     AttributeRow,
     CurveTable,
     EdgeRow,
-    PairRow,
     ScoreRow,
     attribute_rows,
     confusion_rows,
     curve_table,
     edge_row,
     mix_row,
-    pair_row,
     score_row,
     setting,
     yardstick_row,
 )
 from bnx.reliability_chart import ReliabilityChart, reliability_charts
 from bnx.report_page import page_html
+from bnx.triangle import Triangle, triangle, triangle_block
 
 __all__ = [
     "ATTRIBUTES_ON_PAGE",
     "EDGES_ON_PAGE",
     "LINES_ON_PAGE",
-    "PAIRS_ON_PAGE",
     "Report",
     "report_html",
     "summarise",
 ]
 
-PAIRS_ON_PAGE = 300
-"""Rows of the ledger of pairs that the page shows, strongest first."""
 EDGES_ON_PAGE = 300
 """Rows of the ledger of each structure that the page shows, strongest first."""
 ATTRIBUTES_ON_PAGE = 300
@@ -95,11 +92,11 @@ class Report:
     reliability: tuple[ReliabilityChart, ...]
     structures: tuple[Drawn, ...]
     folds_chart: FoldChart | None
-    pairs: tuple[PairRow, ...]
+    pairs: PairLedger
     pairs_total: str
     pairs_rejected: str
     pairs_judged: str
-    heat: HeatMap | None
+    triangle: Triangle | None
     attributes: tuple[AttributeRow, ...]
     left_out: tuple[tuple[str, str], ...]
     left_out_total: int
@@ -127,7 +124,15 @@ def report_html(comparison: Mapping[str, Any], pictures: Mapping[str, str]) -> s
         FormatError: a picture is no SVG.
     """
     report, styles = summarise(comparison, pictures)
-    return page_html(report, styles, (pairs_block(comparison),))
+    blocks = (pairs_block(comparison), *_pair_blocks(report))
+    return page_html(report, styles, blocks)
+
+
+def _pair_blocks(report: Report) -> Iterator[Markup]:
+    """Give what the scripts of the ledger of pairs and of the triangle read."""
+    yield report.pairs.block
+    if report.triangle:
+        yield triangle_block(report.triangle, report.pairs.place)
 
 
 def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple[Report, tuple[str, ...]]:
@@ -141,6 +146,7 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         structures.append(one)
         styles.update(dict.fromkeys(rules))
     settings = document["settings"]
+    triangular = triangle(document, drawn)
     report = Report(
         target=document["class"],
         class_levels=tuple(document["class_levels"]),
@@ -161,11 +167,11 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         reliability=reliability_charts(document),
         structures=tuple(structures),
         folds_chart=fold_chart(document),
-        pairs=tuple(pair_row(pair, drawn) for pair in _strongest_pairs(document)),
+        pairs=pair_ledger(document, triangular.pairs if triangular else frozenset()),
         pairs_total=f"{document['pairs_total']:,}",
         pairs_rejected=f"{document['pairs_rejected']:,}",
         pairs_judged=f"{document['pairs_judged']:,}",
-        heat=heat_map(document, drawn),
+        triangle=triangular,
         attributes=attribute_rows(document["schema"], ATTRIBUTES_ON_PAGE),
         left_out=tuple((one["name"], one["reason"]) for one in document["left_out"][:LINES_ON_PAGE]),
         left_out_total=len(document["left_out"]),
@@ -178,10 +184,6 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         negligible=f"{settings['negligible']:g}",
     )
     return report, tuple(styles)
-
-
-def _strongest_pairs(document: Mapping[str, Any]) -> list[Mapping[str, Any]]:
-    return sorted(document["pairs"], key=lambda one: -one["bits"])[:PAIRS_ON_PAGE]
 
 
 def _drawn(

@@ -31,7 +31,7 @@ FLOORS = (
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
     "chosen score_entries mix_documents yardstick_documents curve_documents listed_pairs pair_table_entries documents "
     "charts findings printed "
-    "reliability_words reliability_chart report_data report_page pair_figures edge_words structure_rows report results "
+    "reliability_words reliability_chart report_data report_page pair_columns pair_rows triangle pair_figures edge_words structure_rows report results "
     "tested_text tested_picture",
     "cli",
 )
