@@ -20,7 +20,7 @@ _ALPHABET = ("A to Z", "Z to A")
 class PairColumn:
     """One column: ``told`` explains it, ``brief`` ones are shown at first.
 
-    ``orders`` put its two directions in words, up and down, empty where it is not sorted by; ``falls``: down comes first.
+    ``orders``: its two directions in words, up and down, empty where it is not sorted by; ``falls``: down comes first.
     """
 
     key: str
@@ -113,7 +113,7 @@ def column_text(row: PairRow, key: str) -> str:
 
 
 def column_value(pair: Mapping[str, Any], row: PairRow, key: str) -> Any:
-    """Give what a column other than ``joined`` is sorted by: the exact figure of the document, None if there is none."""
+    """Give what a column other than ``joined`` is sorted by: an exact figure, None if there is none."""
     own = _VALUES.get(key)
     return own(pair, row) if own else pair[_FIGURES.get(key, key)]
 

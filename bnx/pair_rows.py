@@ -164,7 +164,7 @@ def _block(
 
 
 def _written(column: PairColumn, pairs: Sequence[Mapping[str, Any]], rows: Sequence[LedgerRow]) -> dict[str, Any]:
-    """Write one column for the script; ``rank`` only if it is sorted by, ``words`` not of pairs, whose names are known."""
+    """Write one column for the script; ``rank`` only if it is sorted by; names of pairs are known."""
     key = column.key
     written: dict[str, Any] = {
         "key": key,

@@ -8,19 +8,16 @@ from typing import Any
 from markupsafe import Markup
 
 from bnx.charts import FoldChart, fold_chart
-from bnx.embedding import embed
 from bnx.findings import Findings, drawn_pairs, findings
 from bnx.pair_figures import pairs_block
 from bnx.pair_rows import PairLedger, pair_ledger
+from bnx.pair_tables_page import tables_block
 from bnx.printed import (
     AttributeRow,
     CurveTable,
-    EdgeRow,
     ScoreRow,
     attribute_rows,
-    confusion_rows,
     curve_table,
-    edge_row,
     mix_row,
     score_row,
     setting,
@@ -28,19 +25,17 @@ from bnx.printed import (
 )
 from bnx.reliability_chart import ReliabilityChart, reliability_charts
 from bnx.report_page import page_html
+from bnx.structure_rows import Drawn, Sliders, draw_structure, edges_block, sliders
 from bnx.triangle import Triangle, triangle, triangle_block
 
 __all__ = [
     "ATTRIBUTES_ON_PAGE",
-    "EDGES_ON_PAGE",
     "LINES_ON_PAGE",
     "Report",
     "report_html",
     "summarise",
 ]
 
-EDGES_ON_PAGE = 300
-"""Rows of the ledger of each structure that the page shows, strongest first."""
 ATTRIBUTES_ON_PAGE = 300
 """Attributes that the page lists, those with most bits first."""
 LINES_ON_PAGE = 100
@@ -52,21 +47,6 @@ _ADJUSTMENTS = {
     "by": "after adjustment for the number of pairs (Benjamini and Yekutieli)",
     "none": "without any adjustment for the number of pairs",
 }
-
-
-@dataclass(frozen=True)
-class Drawn:
-    """One structure: its drawing (empty without a drawing engine), its ledger, its confusion table and recalls.
-
-    ``edges`` are the strongest of ``edges_total``.
-    """
-
-    score: ScoreRow
-    picture: Markup
-    edges: tuple[EdgeRow, ...]
-    edges_total: int
-    confusion: tuple[tuple[str, tuple[tuple[str, str, int], ...], str], ...]
-    is_open: bool
 
 
 @dataclass(frozen=True)
@@ -91,6 +71,7 @@ class Report:
     has_holdout: bool
     reliability: tuple[ReliabilityChart, ...]
     structures: tuple[Drawn, ...]
+    sliders: Sliders | None
     folds_chart: FoldChart | None
     pairs: PairLedger
     pairs_total: str
@@ -111,7 +92,7 @@ class Report:
     @property
     def by_blanks(self) -> bool:
         """Tell whether an edge listed is carried by blank cells."""
-        return any(edge.by_blanks for one in self.structures for edge in one.edges)
+        return any(edge.by_blanks for one in self.structures for _, edge in one.ledger)
 
 
 def report_html(comparison: Mapping[str, Any], pictures: Mapping[str, str]) -> str:
@@ -124,8 +105,14 @@ def report_html(comparison: Mapping[str, Any], pictures: Mapping[str, str]) -> s
         FormatError: a picture is no SVG.
     """
     report, styles = summarise(comparison, pictures)
-    blocks = (pairs_block(comparison), *_pair_blocks(report))
-    return page_html(report, styles, blocks)
+    return page_html(
+        report,
+        styles,
+        (
+            *(edges_block(comparison, _ordered(comparison)), pairs_block(comparison), tables_block(comparison)),
+            *_pair_blocks(report),
+        ),
+    )
 
 
 def _pair_blocks(report: Report) -> Iterator[Markup]:
@@ -141,8 +128,8 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
     drawn = drawn_pairs(chosen)
     ranked = sorted(document["structures"], key=lambda one: (one["log_loss"] is None, one["log_loss"] or 0.0))
     structures, styles = [], dict.fromkeys("")
-    for number, entry in enumerate(ranked):
-        one, rules = _drawn(document, entry, pictures.get(entry["name"], ""), f"s{number}")
+    for prefix, entry in _ordered(document):
+        one, rules = draw_structure(document, entry, pictures.get(entry["name"], ""), prefix)
         structures.append(one)
         styles.update(dict.fromkeys(rules))
     settings = document["settings"]
@@ -157,7 +144,7 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         folds=document["folds"],
         repeats=settings["repeats"],
         findings=findings(document),
-        scores=tuple(one.score for one in structures),
+        scores=tuple(score_row(document, one) for one in ranked),
         mix=mix_row(document["mix"]) if document["mix"] else None,
         mix_reason=document["mix"]["reason"] if document["mix"] else "",
         yardsticks=tuple(yardstick_row(one) for one in document["yardsticks"] or ()),
@@ -166,6 +153,7 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         has_holdout=any("holdout" in one for one in ranked),
         reliability=reliability_charts(document),
         structures=tuple(structures),
+        sliders=sliders(document["structures"]),
         folds_chart=fold_chart(document),
         pairs=pair_ledger(document, triangular.pairs if triangular else frozenset()),
         pairs_total=f"{document['pairs_total']:,}",
@@ -186,18 +174,11 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
     return report, tuple(styles)
 
 
-def _drawn(
-    document: Mapping[str, Any], entry: Mapping[str, Any], svg: str, prefix: str
-) -> tuple[Drawn, tuple[str, ...]]:
-    picture = embed(svg, prefix) if svg else None
-    tries = document["folds"] * document["settings"]["repeats"]
-    strongest = sorted(entry["edges"], key=lambda one: -one["bits"])
-    one = Drawn(
-        score=score_row(document, entry),
-        picture=Markup(picture.markup) if picture else Markup(),
-        edges=tuple(edge_row(edge, tries) for edge in strongest[:EDGES_ON_PAGE]),
-        edges_total=len(strongest),
-        confusion=confusion_rows(entry, document["class_levels"]),
-        is_open=entry["name"] == document["recommended"]["name"],
+def _ordered(document: Mapping[str, Any]) -> list[tuple[str, Mapping[str, Any]]]:
+    """Put the recommended structure first, the others by log loss; each with the prefix of the ids of its drawing."""
+    chosen = document["recommended"]["name"]
+    ranked = sorted(
+        document["structures"],
+        key=lambda one: (one["name"] != chosen, one["log_loss"] is None, one["log_loss"] or 0.0),
     )
-    return one, picture.styles if picture else ()
+    return [(f"s{number}", entry) for number, entry in enumerate(ranked)]

@@ -136,7 +136,7 @@ def triangle(document: Mapping[str, Any], drawn: frozenset[frozenset[str]]) -> T
 
 
 def triangle_block(shown: Triangle, place: Mapping[frozenset[str], int]) -> Markup:
-    """Write for the script where each mark stands, which row of the ledger it is, and its sides in tenths of a pixel."""
+    """Write for the script where each mark stands, which row of the ledger it is, and its sides."""
     return json_block(
         "triangle",
         {
@@ -254,6 +254,6 @@ def _scale(most: float, room: float) -> tuple[tuple[float, float, str], ...]:
     numbers = [factor * 10.0**exponent for exponent in (power - 1, power) for factor in (1, 2, 5)]
     inside = [number for number in numbers if number <= most * (1 + 1e-9)][-4:]
     return tuple(
-        (18.0 + 84.0 * place, max(_SMALLEST["full"], _side(number, most, room)), f"{number:g}")
+        (22.0 + 100.0 * place, max(_SMALLEST["full"], _side(number, most, room)), f"{number:g}")
         for place, number in enumerate(inside)
     )

@@ -64,7 +64,8 @@ def judge_all(
     """Test and judge pairs as one family, given the class and without it."""
     judgement, without = (judge(stats, p_values(stats, test), **options) for stats in (given, marginal))
     outcome = outcomes(given, judgement, marginal, without)
-    return results(names, given, judgement, marginal, without, outcome, np.full(len(names), np.nan))
+    nothing = np.full(len(names), np.nan)
+    return results(names, given, judgement, marginal, without, outcome, nothing, nothing)
 
 
 def judged(table: np.ndarray, **options: float) -> TestResult:
