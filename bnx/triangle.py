@@ -217,9 +217,7 @@ def _name(place: int, cell: float, name: str) -> Name:
     return Name(middle, round((place + 1) * cell + 2.0, 1), round(middle + 4.0, 1), shortened(name), name)
 
 
-def _mark(
-    row: int, column: int, pair: Mapping[str, Any], cell: float, room: float, most: Mapping[str, float]
-) -> Mark:
+def _mark(row: int, column: int, pair: Mapping[str, Any], cell: float, room: float, most: Mapping[str, float]) -> Mark:
     shape = _SHAPES[pair["verdict"]]
     numbered = room < cell - 2.0
     return Mark(
