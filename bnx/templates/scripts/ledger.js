@@ -132,10 +132,20 @@ const listenToLedger = () => {
   });
 };
 
+const MOST_SIGNS_IN_LINE = 24;
+
+const hasLongNames = () => {
+  for (let row = 0; row < pairsHeld.rows; row += 1) {
+    if (pairNames(row).join("").length > MOST_SIGNS_IN_LINE) return true;
+  }
+  return false;
+};
+
 const startLedger = () => {
   if (!allPairs()) return;
   const table = byId("pair-table");
   table.classList.add("held-table", "brief");
+  table.classList.toggle("stacked", hasLongNames());
   pairsHeld.names.forEach((name, number) => byId("pair-attribute").append(el("option", { value: number }, name)));
   ledger.window = windowOn(byId("pair-box"), table, ledgerRow);
   addSortButtons();
