@@ -54,8 +54,8 @@ WHAT_IF = MappingProxyType(
 
 PAIR_SENTENCES = MappingProxyType(
     {
-        "dependent": "Dependent: given {class} the two share {bits} bits more than chance would show in an average"
-        " record, and the test rejects independence (adjusted p {p}).",
+        "dependent": "Dependent: given {class} the two share {corrected} bits in an average record, less what chance"
+        " alone would show, and the test rejects independence (adjusted p {p}).",
         "detected, but negligible": "Dependent, but so little that it is negligible: even the upper end of what they"
         " may share given {class}, {upper} bits, lies below {negligible} bits.",
         "negligible": "Independent enough: the test found no dependence given {class}, and even the upper end of what"
@@ -68,7 +68,7 @@ PAIR_SENTENCES = MappingProxyType(
         "twice": "Because of this pair naive counts {twice} bits of evidence about {class} twice in an average record.",
         "too little": "Because of this pair naive counts {less} bits of evidence about {class} too little in an average"
         " record.",
-        "harmless": "What naive counts twice because of this pair rounds to nothing in an average record: {twice} bits.",
+        "harmless": "What naive counts twice because of this pair is next to nothing: {twice} bits per record.",
     }
 )
 """What a pair's verdict means, where *not enough data* has two reasons, and what naive makes of the pair."""
@@ -88,17 +88,16 @@ def what_if(edge: Mapping[str, Any], tries: int, amount: str) -> str:
     return "may lose" if edge["gain"] > 0 else "may gain"
 
 
-def pair_sentences(pair: Mapping[str, Any], twice: str) -> tuple[str, ...]:
+def pair_sentences(pair: Mapping[str, Any], negligible: float) -> tuple[str, ...]:
     """Say which of PAIR_SENTENCES a pair of the document calls for, in their order.
 
-    twice: the bits counted twice as printed, which may be all noughts or a dash.
+    negligible: bits below which a dependence does not matter, and what is counted twice neither.
     """
     told = [pair["verdict"]]
     if pair["verdict"] == "not enough data":
         told = ["untested" if pair["detectable_bits"] is None else "blunt"]
         told += ["bounded"] if pair["bits_at_most"] is not None else []
-    if pair["double_counted_bits"] is not None:
-        told.append(
-            "harmless" if not twice.strip("-0.") else "twice" if pair["double_counted_bits"] > 0 else "too little"
-        )
+    twice = pair["double_counted_bits"]
+    if twice is not None:
+        told.append("harmless" if abs(twice) < negligible else "twice" if twice > 0 else "too little")
     return tuple(told)

@@ -35,6 +35,7 @@ FIGURES = (
 PAIRS_IN_PANEL = 10_000
 """The strongest pairs that the panel knows; those that a structure joins come on top."""
 
+_REPEATED = ("outcome", "df", "method", "carried", "verdict")  # in few words, which are written once and numbered
 _DASH = "–"
 
 
@@ -42,11 +43,20 @@ def pairs_block(document: Mapping[str, Any]) -> Markup:
     """Write the pairs for the panel: its two attributes by number, its sentences, its figures as printed."""
     number = {name: place for place, name in enumerate(document["attributes"])}
     told = list(PAIR_SENTENCES)
+    known = [(pair, _figures(pair)) for pair in _known(document)]
+    words = {key: list(dict.fromkeys(figures[key] for _, figures in known)) for key in _REPEATED}
+    codes = {key: {word: code for code, word in enumerate(found)} for key, found in words.items()}
     rows = []
-    for pair in _known(document):
-        figures = _figures(pair)
-        sentences = [told.index(one) for one in pair_sentences(pair, figures["twice"])]
-        rows.append([number[pair["a"]], number[pair["b"]], sentences, *(figures[key] for key, _ in FIGURES)])
+    for pair, figures in known:
+        sentences = [told.index(one) for one in pair_sentences(pair, document["settings"]["negligible"])]
+        rows.append(
+            [
+                number[pair["a"]],
+                number[pair["b"]],
+                sentences,
+                *(codes[key][figures[key]] if key in codes else figures[key] for key, _ in FIGURES),
+            ]
+        )
     return json_block(
         "panel",
         {
@@ -54,6 +64,7 @@ def pairs_block(document: Mapping[str, Any]) -> Markup:
             "negligible": f"{document['settings']['negligible']:g}",
             "names": document["attributes"],
             "figures": FIGURES,
+            "words": words,
             "sentences": list(PAIR_SENTENCES.values()),
             "pairs": rows,
         },

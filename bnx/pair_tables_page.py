@@ -55,7 +55,7 @@ def _class_table(one: Mapping[str, Any]) -> dict[str, Any]:
     }
 
 
-def _cell(observed: float, expected: float | None, residual: float | None) -> list[str | int]:
+def _cell(observed: int, expected: float | None, residual: float | None) -> list[str | int]:
     """Print records, expected records and the residual with its sign, and give the step of its shade."""
     nan = math.nan
     cell = Cell(observed, nan if expected is None else expected, nan if residual is None else residual)

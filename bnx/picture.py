@@ -105,30 +105,52 @@ class Showing:
     chips_left_out: str
 
 
-def showing(picture: Picture, least_bits: float = 0.0, everything: bool = False) -> Showing:
+def showing(
+    picture: Picture, least_bits: float = 0.0, everything: bool = False, least_gain: float | None = None
+) -> Showing:
     """Choose what to draw: arrows of at least ``least_bits`` bits and, among very many, only the clear gains.
 
+    With ``least_gain``, arrows of less held-out gain (bits per row) are left out, and so are those whose gain is not
+    known, since nothing says that they reach it.
+
+    Where none of many is a clear gain, the strongest are drawn, since a frame without arrows would claim independence.
     Among very many attributes those are drawn that the strongest arrows join, clear gains before others; without
     arrows, those that share most bits with the class.
     """
-    strong = tuple(arrow for arrow in picture.arrows if arrow.bits >= least_bits)
-    reasons = [f"those under {least_bits:g} bits"] if len(strong) < len(picture.arrows) else []
+    strong, reasons = _strong(picture.arrows, least_bits, least_gain)
     crowded = not everything and len(picture.chips) > MANY_CHIPS
     drawn = strong
     if crowded:
         drawn = _strongest(strong)
         reasons += ["weaker ones"] if len(drawn) < len(strong) else []
     elif not everything and len(strong) > MANY_ARROWS:
-        drawn = tuple(arrow for arrow in strong if arrow.verdict == "gains")
-        reasons += ["those that are not a clear gain"] if len(drawn) < len(strong) else []
+        drawn = tuple(arrow for arrow in strong if arrow.verdict == "gains") or _strongest(strong)
+        kind = "those that are not a clear gain" if drawn and drawn[0].verdict == "gains" else "weaker ones"
+        reasons += [kind] if len(drawn) < len(strong) else []
     chips = _joined(picture, drawn) if crowded else tuple(range(len(picture.chips)))
     number = f"{len(drawn):,} of {len(picture.arrows):,} arrows drawn"
     return Showing(
         drawn,
         chips,
-        f"{number}; left out: {' and '.join(reasons)}" if reasons else "",
+        f"{number}; left out: {_series(reasons)}" if reasons else "",
         _sentence(picture, drawn, chips) if crowded else "",
     )
+
+
+def _strong(
+    arrows: tuple[Arrow, ...], least_bits: float, least_gain: float | None
+) -> tuple[tuple[Arrow, ...], list[str]]:
+    """Take the arrows of enough bits and of enough held-out gain, and say which are left out."""
+    strong = tuple(arrow for arrow in arrows if arrow.bits >= least_bits)
+    reasons = [f"those under {least_bits:g} bits"] if len(strong) < len(arrows) else []
+    if least_gain is None:
+        return strong, reasons
+    helpful = tuple(arrow for arrow in strong if arrow.gain is not None and arrow.gain >= least_gain)
+    if any(arrow.gain is not None and arrow.gain < least_gain for arrow in strong):
+        reasons.append(f"those that gain less than {least_gain:g} bits on held-out rows")
+    if any(arrow.gain is None for arrow in strong):
+        reasons.append("those not judged on held-out rows")
+    return helpful, reasons
 
 
 def _strongest(arrows: Sequence[Arrow]) -> tuple[Arrow, ...]:
@@ -147,6 +169,10 @@ def _strongest(arrows: Sequence[Arrow]) -> tuple[Arrow, ...]:
         ends = more
         taken.add(number)
     return tuple(arrow for number, arrow in enumerate(arrows) if number in taken)
+
+
+def _series(reasons: Sequence[str]) -> str:
+    return " and ".join(filter(None, (", ".join(reasons[:-1]), reasons[-1])))
 
 
 def _joined(picture: Picture, arrows: Sequence[Arrow]) -> tuple[int, ...]:

@@ -68,6 +68,18 @@ def test_draw_leaves_out_weak_edges(tmp_path: Path) -> None:
     assert drawn["all"] > drawn["strongest"]
 
 
+def test_draw_leaves_out_edges_of_little_held_out_gain(tmp_path: Path) -> None:
+    document = read_structure(f"{small_results()}/kdb2.json")
+    most = max(edge["gain"] for edge in document["edges"])
+    for name, least in (("all", "-1"), ("best", str(most))):
+        call("draw", f"{small_results()}/kdb2.json", "-o", str(tmp_path / f"{name}.dot"), "--least-gain", least)
+    drawn = {name: (tmp_path / f"{name}.dot").read_text() for name in ("all", "best")}
+    assert drawn["all"].count('id="e') == len(document["edges"])
+    best = [edge for edge in document["edges"] if edge["gain"] == most]
+    assert drawn["best"].count('id="e') == len(best)
+    assert f"left out: those that gain less than {most:g} bits on held-out rows" in drawn["best"]
+
+
 def test_export_hands_over_the_same_classifier(tmp_path: Path) -> None:
     out = tmp_path / "chosen.json"
     assert call("export", small_results(), "--structure", "kdb2", "-o", str(out)).code == 0

@@ -149,6 +149,10 @@ OUTPUTS = [
         "--least-bits: nan cannot be used; give 0 or a number above",
     ),
     (
+        ("draw", "kdb2.json", "-o", "f.svg", "--least-gain", "inf"),
+        "--least-gain: inf cannot be used; give a number, which may be below 0",
+    ),
+    (
         ("draw", "kdb2.json", "-o", "none/f.svg"),
         "cannot write none/f.svg: there is no folder none; make it, or give another -o",
     ),

@@ -100,6 +100,30 @@ def test_both_reasons_for_leaving_out_are_said():
     )
 
 
+def test_least_gain_leaves_out_what_gains_less_and_what_nobody_judged():
+    given = picture(
+        5,
+        [
+            Arrow(0, 1, 0.2, "gains", 0.03, 0.001),
+            Arrow(1, 2, 0.2, "loses", -0.01, 0.001),
+            Arrow(2, 3, 0.2),
+            Arrow(3, 4, 0.001, "gains", 0.02, 0.001),
+        ],
+    )
+    assert [arrow.parent for arrow in showing(given, least_gain=-0.01).arrows] == [0, 1, 3]
+    assert showing(given, least_gain=-0.01).left_out == (
+        "3 of 4 arrows drawn; left out: those not judged on held-out rows"
+    )
+    found = showing(given, 0.01, least_gain=0.0)
+    assert [arrow.parent for arrow in found.arrows] == [0]
+    assert found.left_out == (
+        "1 of 4 arrows drawn; left out: those under 0.01 bits, those that gain less than 0 bits on held-out rows and"
+        " those not judged on held-out rows"
+    )
+    assert len(edge_lines(dot_source(given, least_gain=0.03))) == 1
+    assert len(edge_lines(dot_source(given))) == 4
+
+
 def test_fifteen_attributes_without_arrows_are_a_fan_and_sixteen_a_grid():
     fan, grid = dot_source(picture(15)), dot_source(picture(16))
     assert len(edge_lines(fan, "fan")) == 15
@@ -182,7 +206,7 @@ def test_evidence_is_in_the_tooltip():
 def test_bars_share_one_scale():
     dot = dot_source(Picture("naive", "arrival", (Chip("a", 2, 0.4), Chip("b", 2, 0.1), Chip("c", 2, 0.0))))
     bars = re.findall(rf'WIDTH="(\d+)" HEIGHT="5" BGCOLOR="{PALETTES["light"]["bar"]}"', dot)
-    assert [int(bar) for bar in bars] == [66, round(66 / 4)]
+    assert [int(bar) for bar in bars] == [62, round(62 / 4)]
 
 
 def test_same_picture_same_text():
@@ -271,3 +295,16 @@ def test_arrows_in_a_circle_are_refused():
 def test_what_cannot_be_drawn_is_refused(make, words):
     with pytest.raises(StructureError, match=re.escape(words)):
         make()
+
+
+def test_where_none_of_many_is_a_clear_gain_the_strongest_are_drawn():
+    found = showing(picture(60, arrows_of(45, ["undecided", "loses"])))
+    assert len(found.arrows) == 40
+    assert found.left_out == "40 of 45 arrows drawn; left out: weaker ones"
+
+
+def test_the_plug_carries_its_caption_inside():
+    dot = dot_source(picture(6, [Arrow(0, 1, 0.1, "gains")]))
+    plug = next(line for line in dot.splitlines() if line.strip().startswith("class ["))
+    assert "parent of all 6 attributes in the frame" in plug
+    assert "label=" not in next(line for line in dot.splitlines() if 'id="cable"' in line)

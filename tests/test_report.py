@@ -310,14 +310,8 @@ def test_the_same_document_gives_the_same_page(plain: SmallRun) -> None:
 
 
 def test_one_attribute_has_no_pairs(document: dict[str, Any]) -> None:
-    document |= {
-        "attributes": ["alone"],
-        "pairs": [],
-        "pair_tables": [],
-        "pairs_total": 0,
-        "pairs_rejected": 0,
-        "pairs_judged": 0,
-    }
+    document |= {"attributes": ["alone"], "pairs": [], "pair_tables": []}
+    document |= dict.fromkeys(("pairs_total", "pairs_rejected", "pairs_judged"), 0)
     document["schema"] = [{**document["schema"][0], "name": "alone"}]
     for one in document["structures"]:
         one["edges"] = []

@@ -146,6 +146,9 @@ def widened(attributes: int) -> dict[str, Any]:
     one["edges"] = [
         {**one["edges"][0], "parent": names[k // 2], "child": names[k], "bits": k / 1e5} for k in range(1, attributes)
     ]
+    for entry in document["structures"]:
+        entry["edges"] = one["edges"] if entry is one else []
+    document |= {"pairs": [], "pair_tables": []}
     document["left_out"] = [
         {"name": f"c{k}", "reason": ("every cell is blank", "it is the class")[k % 2]} for k in range(1500)
     ]

@@ -25,6 +25,13 @@ def run(
     least_bits: Annotated[
         float, typer.Option(metavar="BITS", help="Leave out edges below so many bits given the class.")
     ] = 0.0,
+    least_gain: Annotated[
+        float | None,
+        typer.Option(
+            metavar="BITS",
+            help="Leave out edges whose held-out gain is less, or was never judged; may be below 0.",
+        ),
+    ] = None,
     everything: Annotated[bool, typer.Option("--everything", help="Draw all edges, however many.")] = False,
     overwrite: Overwrite = False,
 ) -> None:
@@ -34,12 +41,14 @@ def run(
         raise SettingError(f"-o {output}: the ending says nothing that can be drawn; use .svg, .png, .pdf or .dot")
     if not (math.isfinite(least_bits) and least_bits >= 0):
         raise SettingError(f"--least-bits: {least_bits:g} cannot be used; give 0 or a number above")
+    if least_gain is not None and not math.isfinite(least_gain):
+        raise SettingError(f"--least-gain: {least_gain:g} cannot be used; give a number, which may be below 0")
     shades = colours(theme, f".{form}")
     pictures = _pictures(structure, Path(output))
     for place, _ in pictures:
         check_free(place, overwrite)
     for place, picture in pictures:
-        dot = dot_source(picture, shades, least_bits, everything)
+        dot = dot_source(picture, shades, least_bits, everything, least_gain)
         write_bytes(place, dot.encode() if form == "dot" else render(dot, cast(Form, form)), overwrite)
         say(f"{place} written")
 

@@ -5,7 +5,7 @@ from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from itertools import pairwise
 
-from bnx.dot_text import cell, cut, hint, lines_of, quote, width_of
+from bnx.dot_text import cell, cut, hint, lines_of, width_of
 from bnx.layers import layers, parents_first, rows
 from bnx.palette import PALETTES, Theme
 from bnx.picture import Arrow, Chip, Picture, Showing, Verdict, showing
@@ -17,6 +17,8 @@ MOST_NUMBERED = 60
 """Above so many arrows they carry no numbers."""
 LARGEST_FAN = 15
 """Up to so many attributes without arrows are a fan; more are a grid."""
+
+_CLEARANCE = '<TD WIDTH="5"></TD>'  # right of a number, where a thick line may pass
 
 _STYLES: Mapping[Verdict, tuple[str, str, str]] = {
     "gains": ("solid", "gain", "gain"),
@@ -51,14 +53,21 @@ class _Sheet:
         return cut(self.picture.target, 30)
 
 
-def dot_source(picture: Picture, theme: Theme = "light", least_bits: float = 0.0, everything: bool = False) -> str:
+def dot_source(
+    picture: Picture,
+    theme: Theme = "light",
+    least_bits: float = 0.0,
+    everything: bool = False,
+    least_gain: float | None = None,
+) -> str:
     """Write a picture as DOT.
 
-    Arrows under ``least_bits`` bits are left out; among more than 40, all but the clear gains are too, and of more than
+    Arrows under ``least_bits`` bits are left out, with ``least_gain`` also those that are not known to gain so many
+    held-out bits per row; among more than 40, all but the clear gains are too, and of more than
     150 attributes all but those of the strongest arrows, unless ``everything`` is asked for. What is left out is said
     under the title.
     """
-    shown = showing(picture, least_bits, everything)
+    shown = showing(picture, least_bits, everything, least_gain)
     chips = [picture.chips[place] for place in shown.chips]
     widest = max(width_of(cut(chip.name), 12) for chip in chips)
     sheet = _Sheet(picture, PALETTES[theme], max(96, widest), max(chip.bits for chip in chips), len(chips))
@@ -132,12 +141,21 @@ def _table(cells: str) -> str:
     return f'<TABLE BORDER="0" CELLBORDER="0" CELLSPACING="0" CELLPADDING="0"><TR>{cells}</TR></TABLE>'
 
 
-def _class_node(sheet: _Sheet) -> str:
+def _stacked(cells: Iterable[str]) -> str:
+    rows_of_cells = "".join(f"<TR>{one}</TR>" for one in cells)
+    return f'<TABLE BORDER="0" CELLBORDER="0" CELLSPACING="0" CELLPADDING="0">{rows_of_cells}</TABLE>'
+
+
+def _class_node(sheet: _Sheet, caption: str = "") -> str:
+    """Write the plug: the class, and inside it what it is plugged into, so that no words stand beside the frame."""
     colours, name = sheet.colours, sheet.target
+    lines = [(name, 14, 18), *([(caption, 10, 14)] if caption else [])]
+    width = max(80, *(width_of(words, points, 0.58) for words, points, _ in lines))
+    label = _stacked(cell(words, points, colours["class-text"], width, high) for words, points, high in lines)
     return (
-        f'class [id="class", class="class", style=filled, penwidth=0, fillcolor="{colours["class"]}", fontsize=14,'
-        f' fontcolor="{colours["class-text"]}", width={max(80, width_of(name, 14) + 24) / 72:.3f}, height=0.44,'
-        f" label={quote(name)}, tooltip={hint(sheet.picture.target + ': the class')}]"
+        f'class [id="class", class="class", style=filled, penwidth=0, fillcolor="{colours["class"]}",'
+        f" width={(width + 24) / 72:.3f}, height={0.62 if caption else 0.44},"
+        f" label=<{label}>, tooltip={hint(sheet.picture.target + ': the class')}]"
     )
 
 
@@ -154,14 +172,14 @@ def _chip_node(sheet: _Sheet, place: int) -> str:
 
 
 def _bar(sheet: _Sheet, chip: Chip) -> str:
-    length = sheet.chip_width - 30
+    length = sheet.chip_width - 34
     share = max(0.0, chip.bits) / sheet.most_bits if sheet.most_bits > 0 else 0.0
     filled = max(1, round(length * share)) if chip.bits > 0 else 0
     parts = ((filled, sheet.colours["bar"]), (length - filled, sheet.colours["bar-track"]))
     pieces = "".join(
         f'<TD FIXEDSIZE="TRUE" WIDTH="{width}" HEIGHT="5" BGCOLOR="{colour}"></TD>' for width, colour in parts if width
     )
-    number = cell(_hundredths(chip.bits), 9, sheet.colours["small-text"], 26, 12)
+    number = cell(_hundredths(chip.bits), 9, sheet.colours["small-text"], 30, 12)
     return _table(f'<TD>{_table(pieces)}</TD><TD WIDTH="4"></TD>{number}')
 
 
@@ -187,7 +205,7 @@ def _number(sheet: _Sheet, arrow: Arrow, colour: str) -> str:
     words = _table(cell(text, 9, colour, width_of(text, 9), 12))
     gap = f'<TD WIDTH="{3 + round(0.75 * pen_width(arrow.bits))}"></TD>'
     patch = f'<TD BGCOLOR="{sheet.colours["frame"]}">{words}</TD>'
-    return f"<{_table(gap + patch)}>"
+    return f"<{_table(gap + patch + _CLEARANCE)}>"
 
 
 def _evidence(sheet: _Sheet, arrow: Arrow) -> str:
@@ -220,7 +238,7 @@ def _plug_and_frame(sheet: _Sheet, shown: Showing) -> list[str]:
     grid = rows(lone, max((len(layer) for layer in standing), default=1))
     numbered = len(shown.arrows) <= MOST_NUMBERED
     return [
-        f"  {_class_node(sheet)}",
+        f"  {_class_node(sheet, _everyone(sheet).removeprefix(f'{sheet.target}: '))}",
         "  subgraph cluster_frame {",
         f'    graph [id="frame", class="frame", style="filled,rounded", penwidth=1.6, margin=14, label="",'
         f' color="{sheet.colours["frame-edge"]}", fillcolor="{sheet.colours["frame"]}",'
@@ -268,12 +286,9 @@ def _socket(sheet: _Sheet) -> str:
 
 
 def _cable(sheet: _Sheet) -> str:
-    caption = _everyone(sheet).removeprefix(f"{sheet.target}: ")
-    words = cell(caption, 10, sheet.colours["small-text"], width_of(caption, 10, 0.55), 14)
-    label = _table(f'<TD WIDTH="8"></TD>{words}')
     return (
         f'class -> socket [id="cable", class="cable", color="{sheet.colours["cable"]}", penwidth=4, arrowhead=none,'
-        f" weight=20, tooltip={hint(_everyone(sheet))}, label=<{label}>]"
+        f" weight=20, tooltip={hint(_everyone(sheet))}, minlen=2]"
     )
 
 

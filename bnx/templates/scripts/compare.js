@@ -21,7 +21,7 @@ const markArrow = (group, kind) => {
   const casing = (extra, token) => svgEl("path", { d: path.getAttribute("d"), fill: "none", "stroke-width": width + extra,
     class: `casing bnx-stroke-${token}` });
   const at = path.getPointAtLength(path.getTotalLength() * 0.4);
-  if (kind === "only") group.prepend(casing(7, "text"), casing(4.4, "frame"));
+  if (kind === "only") group.prepend(casing(5.6, "text"), casing(3.8, "frame"));
   group.append(svgEl("circle", { cx: at.x, cy: at.y, r: 6.5, class: "casing bnx-fill-text" }),
     svgEl("text", { x: at.x, y: at.y + 3.6, "text-anchor": "middle", "font-size": 11, "font-weight": 700,
       class: "casing bnx-fill-background" }, DIFFERENCE_SIGNS[kind]));
@@ -59,7 +59,7 @@ const pairButton = (edge) => {
 };
 
 const differenceItem = (sign, words, edges) => {
-  const items = inARow(edges.slice(0, DIFFERENCES_LISTED).map(pairButton));
+  const items = edges.slice(0, DIFFERENCES_LISTED).map(pairButton);
   const more = edges.length > DIFFERENCES_LISTED ? ` and ${edges.length - DIFFERENCES_LISTED} more` : "";
   return [el("dt", {}, el("span", { class: "disc", "aria-hidden": "true" }, sign), `${words} (${edges.length})`),
     el("dd", {}, ...(edges.length ? items : ["none"]), more)];
@@ -69,9 +69,8 @@ const differenceWords = (one, other) => {
   const found = pairDifferences(one, other);
   const count = found.both === 1 ? "1 pair" : `${found.both} pairs`;
   return el("div", { class: "differences", id: "differences" },
-    el("p", {}, `${one.name} and ${other.name} both join ${count}. Of the others, ${found.onlyOne.length} are joined `
-      + `only in ${one.name} and ${found.onlyOther.length} only in ${other.name}; ${found.turned.length} of those joined `
-      + "in both are turned round."),
+    el("p", {}, `${one.name} and ${other.name} both join ${count}, ${found.turned.length} of them turned round; only in `
+      + `${one.name}: ${found.onlyOne.length}; only in ${other.name}: ${found.onlyOther.length}.`),
     el("dl", {}, ...differenceItem(DIFFERENCE_SIGNS.only, `Only in ${one.name}`, found.onlyOne),
       ...differenceItem(DIFFERENCE_SIGNS.only, `Only in ${other.name}`, found.onlyOther),
       ...differenceItem(DIFFERENCE_SIGNS.turned, `Turned round in ${other.name}`, found.turned)));

@@ -87,7 +87,7 @@ const viewOf = (structure, prefix, svg, told, rows) => {
     const group = byId(`${prefix}-n${number}`);
     if (group) addChip(view, place, group);
   });
-  svg.style.minWidth = `min(${svg.getAttribute("width")}px, 44rem)`;
+  svg.style.setProperty("--natural", `${svg.getAttribute("width")}px`);
   return view;
 };
 

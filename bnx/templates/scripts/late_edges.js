@@ -32,7 +32,7 @@ const headAt = (curve, size) => {
 
 const lateGroup = (view, edge) => {
   const [from, to] = [edge.parent, edge.child].map((place) => chipBox(view.chips.get(place)));
-  const width = Math.min(9, 0.8 + 26 * Number(edge.bits));
+  const width = Math.min(9, 0.8 + 26 * Number(edge.bits)) / 3; // thin, so that many do not hide the arrows laid out
   const curve = curveBetween(from, to);
   const head = headAt(curve, 10 * (0.5 + 0.025 * width));
   const points = [curve.start, curve.bend, head.back].map((one) => `${one.x.toFixed(1)} ${one.y.toFixed(1)}`);

@@ -5,8 +5,11 @@ const panelData = data("panel");
 const panelPlaces = new Map(panelData.names.map((name, place) => [name, place]));
 const panelRows = new Map(panelData.pairs.map((row) => [pairKey(row[0], row[1]), row]));
 
+// A figure as printed; those of few words are numbered.
+const pairFigure = (row, key, place) => (panelData.words[key] ? panelData.words[key][row[place + 3]] : row[place + 3]);
+
 const pairValues = (row) => {
-  const figures = Object.fromEntries(panelData.figures.map(([key], place) => [key, row[place + 3]]));
+  const figures = Object.fromEntries(panelData.figures.map(([key], place) => [key, pairFigure(row, key, place)]));
   return { ...figures, less: figures.twice.replace("-", ""), p: figures.adjusted_p, class: { name: panelData.class },
     negligible: panelData.negligible };
 };
@@ -18,32 +21,33 @@ const pairVerdict = (row) => {
 };
 
 const pairFigures = (row) => {
-  const cells = panelData.figures.flatMap(([, label], place) => [el("dt", {}, label), el("dd", {}, row[place + 3])]);
+  const cells = panelData.figures.flatMap(([key, label], place) => [el("dt", {}, label),
+    el("dd", {}, pairFigure(row, key, place))]);
   return [el("h3", {}, "Figures of the ledger"), el("dl", { class: "figures", id: "pair-panel-figures" }, ...cells)];
 };
 
-// What each structure makes of the pair, and what would change without the edge.
-const pairInStructure = (structure, edge) => {
-  const gains = edge.folds.length ? [foldDots(edge)] : [];
-  return el("li", { "data-structure": structure.name }, el("b", {}, structure.name), ": ", ...asNodes(edgeEnds(edge)),
-    `, ${edge.verdict}; chosen in ${edge.chosen} folds, stability ${edge.stability}. `,
-    el("span", { class: "what-if" }, ...asNodes(whatIfWords(structure, edge))), ...gains);
-};
+// The structure whose tab is open, where it joins the two; else the first that does, the recommended one before all.
+const toldFirst = (joining) => joining.find((one) => one === openStructure()) || joining[0];
 
-const pairInStructures = (key) => {
+const whatIfItem = (structure, edge) =>
+  el("li", { "data-structure": structure.name }, ...asNodes(whatIfWords(structure, edge)));
+
+const pairWhatIf = (key) => {
   const joining = structures.filter((one) => one.byPair.has(key));
-  const others = structures.filter((one) => !one.byPair.has(key)).map((one) => one.name);
   const heading = el("h3", {}, "What if this edge were left out");
   if (!joining.length) return [heading, el("p", {}, "No structure joins the two, so there is no edge to leave out.")];
-  return [heading, el("ul", { class: "joining", id: "pair-panel-structures" },
-    ...joining.map((one) => pairInStructure(one, one.byPair.get(key)))),
-  ...(others.length ? [el("p", { class: "quiet" }, `Not joined in ${others.join(", ")}.`)] : [])];
+  const first = toldFirst(joining);
+  const rest = joining.filter((one) => one !== first).map((one) => whatIfItem(one, one.byPair.get(key)));
+  const more = el("details", {}, el("summary", { class: "quiet" }, "In the other structures that join the two"), el("ul", {}, ...rest));
+  return [heading, el("p", { id: "pair-panel-what-if" }, ...asNodes(whatIfWords(first, first.byPair.get(key)))),
+    ...(rest.length ? [more] : [])];
 };
 
 const pairBody = (a, b) => {
   const row = panelRows.get(pairKey(a, b));
+  const key = pairKey(a, b);
   const said = row ? pairVerdict(row) : [el("p", {}, "This page holds the strongest pairs only, and this is none of them.")];
-  return [...said, ...pairInStructures(pairKey(a, b)), ...pairTables(pairKey(a, b)), ...(row ? pairFigures(row) : [])];
+  return [...said, ...pairWhatIf(key), ...pairTables(key), ...pairByStructure(key), ...(row ? pairFigures(row) : [])];
 };
 
 let panelOpener = null;
@@ -56,6 +60,7 @@ const openPair = (a, b, opener) => {
   if (panel.open) panel.close();
   if (window.matchMedia("(max-width: 62rem)").matches) panel.showModal();
   else panel.show();
+  document.documentElement.classList.add("with-panel");
   panel.scrollTop = 0;
   byId("pair-panel-title").focus({ preventScroll: true });
 };
@@ -64,6 +69,7 @@ const closePair = () => {
   const panel = byId("pair-panel");
   if (!panel.open) return;
   panel.close();
+  document.documentElement.classList.remove("with-panel");
   if (panelOpener && panelOpener.isConnected) panelOpener.focus({ preventScroll: true });
   panelOpener = null;
 };

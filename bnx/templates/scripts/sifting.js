@@ -1,8 +1,10 @@
 // Which edges are shown: at least so many bits, at least so much held-out gain, clear gains alone or all.
 
+const atStart = (slider) => Number(slider.value) === Number(slider.min);
+
 const leastOf = (name) => {
   const slider = byId(name);
-  return slider && slider.value !== slider.min ? Number(slider.value) : -Infinity;
+  return slider && !atStart(slider) ? Number(slider.value) : -Infinity;
 };
 
 const edgePasses = (edge, least) => Number(edge.bits) >= least.bits && Number(edge.gain) >= least.gain;
@@ -10,7 +12,7 @@ const edgePasses = (edge, least) => Number(edge.bits) >= least.bits && Number(ed
 const tellSlider = (name, digits) => {
   const slider = byId(name);
   if (!slider) return;
-  const words = slider.value === slider.min ? "all" : `${Number(slider.value).toFixed(digits)} bits`;
+  const words = atStart(slider) ? "all" : `${Number(slider.value).toFixed(digits)} bits`;
   byId(`${name}-told`).textContent = words;
   slider.setAttribute("aria-valuetext", words);
 };

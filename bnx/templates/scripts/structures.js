@@ -4,6 +4,8 @@ const structureSheets = []; // by structure: {structure, tab, panel, view}
 let openSheet = 0;
 let beside = null; // {sheet, view, parts} of the second drawing
 
+const openStructure = () => structureSheets[openSheet].structure;
+
 // What stands open or closed without scripts becomes the panel of a tab.
 const panelOf = (structure) => {
   const details = byId(`structure-${structure.prefix}`);
@@ -58,7 +60,7 @@ const leavesOut = (view) => view.svg && (view.late || leftOut(view).length > 0);
 
 const countWords = (view, count) => {
   const { edges, total, own } = view.structure;
-  const unseen = view.svg && view.chips.size < own.length ? `; ${own.length - view.chips.size} attributes are not drawn` : "";
+  const unseen = view.svg && view.chips.size < own.length ? `; ${own.length - view.chips.size} attributes are not drawn, the table below holds their edges` : "";
   return total || edges.length ? `${count} of ${total} edges shown${unseen}` : "no edges";
 };
 
@@ -91,6 +93,7 @@ const markDifferences = () => {
 const closeBeside = () => {
   if (!beside) return;
   for (const part of beside.parts) part.remove();
+  for (const two of document.querySelectorAll(".drawings.two")) two.classList.remove("two");
   beside = null;
 };
 
@@ -107,7 +110,9 @@ const openBeside = (prefix) => {
   if (svg && sheet.view.svg) {
     const copy = copyDrawing(svg, `${prefix}-`, "beside-");
     const box = el("div", { class: "box drawing", tabindex: 0, role: "region", "aria-label": `Drawing of ${other.name}` }, copy);
-    sheet.panel.querySelector(".drawings").append(box);
+    const drawings = sheet.panel.querySelector(".drawings");
+    drawings.append(box);
+    drawings.classList.add("two");
     beside.parts.push(box);
     beside.view = viewOf(other, "beside", copy, sheet.view.told, new Map());
   }
