@@ -84,7 +84,9 @@ class PairRow:
     b: str
     bits: str
     interval: str
+    at_most: str
     marginal: str
+    double_counted: str
     outcome: str
     cramers_v: str
     statistic: str
@@ -250,7 +252,9 @@ def pair_row(pair: Mapping[str, Any], drawn: frozenset[frozenset[str]]) -> PairR
         b=pair["b"],
         bits=fixed(pair["bits"], 4),
         interval=_range((pair["bits_low"], pair["bits_high"]), 3, sign=False) or _DASH,
+        at_most=_number(pair["bits_at_most"], 4),
         marginal=_number(pair["marginal_bits"], 4),
+        double_counted=_number(pair["double_counted_bits"], 4),
         outcome=pair["outcome"],
         cramers_v=_number(pair["cramers_v"], 2),
         statistic=_number(pair["statistic"], 1),

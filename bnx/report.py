@@ -1,23 +1,24 @@
 """The report: a comparison summed up, then rendered as one page that needs nothing else."""
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from pathlib import PurePath
 from typing import Any
 
-from bnx.charts import FoldChart, HeatMap, fold_chart, heat_map
+from markupsafe import Markup
+
+from bnx.charts import FoldChart, fold_chart
 from bnx.findings import Findings, drawn_pairs, findings
 from bnx.pair_figures import pairs_block
+from bnx.pair_rows import PairLedger, pair_ledger
 from bnx.pair_tables_page import tables_block
 from bnx.printed import (
     AttributeRow,
     CurveTable,
-    PairRow,
     ScoreRow,
     attribute_rows,
     curve_table,
     mix_row,
-    pair_row,
     score_row,
     setting,
     yardstick_row,
@@ -25,18 +26,16 @@ from bnx.printed import (
 from bnx.reliability_chart import ReliabilityChart, reliability_charts
 from bnx.report_page import page_html
 from bnx.structure_rows import Drawn, Sliders, draw_structure, edges_block, sliders
+from bnx.triangle import Triangle, triangle, triangle_block
 
 __all__ = [
     "ATTRIBUTES_ON_PAGE",
     "LINES_ON_PAGE",
-    "PAIRS_ON_PAGE",
     "Report",
     "report_html",
     "summarise",
 ]
 
-PAIRS_ON_PAGE = 300
-"""Rows of the ledger of pairs that the page shows, strongest first."""
 ATTRIBUTES_ON_PAGE = 300
 """Attributes that the page lists, those with most bits first."""
 LINES_ON_PAGE = 100
@@ -74,11 +73,11 @@ class Report:
     structures: tuple[Drawn, ...]
     sliders: Sliders | None
     folds_chart: FoldChart | None
-    pairs: tuple[PairRow, ...]
+    pairs: PairLedger
     pairs_total: str
     pairs_rejected: str
     pairs_judged: str
-    heat: HeatMap | None
+    triangle: Triangle | None
     attributes: tuple[AttributeRow, ...]
     left_out: tuple[tuple[str, str], ...]
     left_out_total: int
@@ -109,8 +108,18 @@ def report_html(comparison: Mapping[str, Any], pictures: Mapping[str, str]) -> s
     return page_html(
         report,
         styles,
-        (edges_block(comparison, _ordered(comparison)), pairs_block(comparison), tables_block(comparison)),
+        (
+            *(edges_block(comparison, _ordered(comparison)), pairs_block(comparison), tables_block(comparison)),
+            *_pair_blocks(report),
+        ),
     )
+
+
+def _pair_blocks(report: Report) -> Iterator[Markup]:
+    """Give what the scripts of the ledger of pairs and of the triangle read."""
+    yield report.pairs.block
+    if report.triangle:
+        yield triangle_block(report.triangle, report.pairs.place)
 
 
 def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple[Report, tuple[str, ...]]:
@@ -124,6 +133,7 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         structures.append(one)
         styles.update(dict.fromkeys(rules))
     settings = document["settings"]
+    triangular = triangle(document, drawn)
     report = Report(
         target=document["class"],
         class_levels=tuple(document["class_levels"]),
@@ -145,11 +155,11 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         structures=tuple(structures),
         sliders=sliders(document["structures"]),
         folds_chart=fold_chart(document),
-        pairs=tuple(pair_row(pair, drawn) for pair in _strongest_pairs(document)),
+        pairs=pair_ledger(document, triangular.pairs if triangular else frozenset()),
         pairs_total=f"{document['pairs_total']:,}",
         pairs_rejected=f"{document['pairs_rejected']:,}",
         pairs_judged=f"{document['pairs_judged']:,}",
-        heat=heat_map(document, drawn),
+        triangle=triangular,
         attributes=attribute_rows(document["schema"], ATTRIBUTES_ON_PAGE),
         left_out=tuple((one["name"], one["reason"]) for one in document["left_out"][:LINES_ON_PAGE]),
         left_out_total=len(document["left_out"]),
@@ -162,10 +172,6 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         negligible=f"{settings['negligible']:g}",
     )
     return report, tuple(styles)
-
-
-def _strongest_pairs(document: Mapping[str, Any]) -> list[Mapping[str, Any]]:
-    return sorted(document["pairs"], key=lambda one: -one["bits"])[:PAIRS_ON_PAGE]
 
 
 def _ordered(document: Mapping[str, Any]) -> list[tuple[str, Mapping[str, Any]]]:

@@ -5,7 +5,7 @@ from html.parser import HTMLParser
 import pytest
 from smallrun import small_run
 
-from bnx.charts import fold_chart, heat_map, round_ticks
+from bnx.charts import fold_chart, round_ticks
 from bnx.embedding import embed
 
 
@@ -28,41 +28,6 @@ def test_folds_are_paired_with_the_same_fold_of_the_baseline() -> None:
     assert row.mean is not None
     assert row.high is not None
     assert 0 <= row.low <= row.mean <= row.high <= chart.width
-
-
-def test_the_triangle_holds_every_pair_once_and_blocks_stand_together() -> None:
-    names = [f"{block}{number}" for number in range(4) for block in "ab"]
-    base = {"verdict": "dependent"}
-    pairs = [
-        {**base, "a": a, "b": b, "bits": 0.2 if a[0] == b[0] else 0.01}
-        for row, a in enumerate(names)
-        for b in names[row + 1 :]
-    ]
-    chart = heat_map({"attributes": names, "pairs": pairs}, frozenset({frozenset(("a0", "a1"))}))
-    assert chart is not None
-    order = [full for _, _, _, full in chart.names]
-    assert len({name[0] for name in order[:4]}) == 1
-    assert {frozenset((mark.a, mark.b)) for mark in chart.marks} == {frozenset((one["a"], one["b"])) for one in pairs}
-    assert len({(mark.x, mark.y) for mark in chart.marks}) == len(pairs)
-    for mark in chart.marks:
-        ends = {order[round(mark.x / chart.cell)], order[round(mark.y / chart.cell)]}
-        assert ends == {mark.a, mark.b}
-    assert [mark.drawn for mark in chart.marks].count(True) == 1
-    strong, weak = chart.marks[0].side, min(mark.side for mark in chart.marks)
-    assert (strong / weak) ** 2 == pytest.approx(20, rel=0.1)
-
-
-def test_above_sixty_attributes_those_of_the_strongest_pairs_are_taken() -> None:
-    names = [f"n{number:02d}" for number in range(70)]
-    pairs = [
-        {"a": a, "b": b, "bits": 0.001 * (row + 1), "verdict": "negligible"}
-        for row, a in enumerate(names)
-        for b in names[row + 1 :]
-    ]
-    chart = heat_map({"attributes": names, "pairs": pairs}, frozenset())
-    assert chart is not None
-    assert sorted(full for _, _, _, full in chart.names) == names[10:]
-    assert (chart.attributes_left_out, chart.pairs_not_listed, len(chart.marks)) == (10, 0, 60 * 59 // 2)
 
 
 @pytest.mark.parametrize(

@@ -31,8 +31,8 @@ FLOORS = (
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
     "chosen score_entries mix_documents yardstick_documents curve_documents listed_pairs pair_table_entries documents "
     "charts findings printed "
-    "reliability_words reliability_chart report_data report_page edge_words pair_figures pair_tables_page "
-    "structure_rows report results tested_text tested_picture",
+    "reliability_words reliability_chart report_data report_page pair_columns pair_rows triangle edge_words "
+    "pair_figures pair_tables_page structure_rows report results tested_text tested_picture",
     "cli",
 )
 PLACES = {name: (floor, place) for floor, names in enumerate(FLOORS) for place, name in enumerate(names.split())}

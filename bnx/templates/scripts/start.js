@@ -1,4 +1,4 @@
 // Starts every part of the page.
 
-for (const start of [startTheme, startPairPanel, startStructures]) start();
+for (const start of [startTheme, startPairPanel, startStructures, startLedger, startTriangle]) start();
 document.documentElement.classList.add("scripted");
