@@ -36,16 +36,17 @@ def tables_by_shape(
     engine: LocalEngine, training: Training, left: np.ndarray, right: np.ndarray
 ) -> Iterator[tuple[np.ndarray, np.ndarray]]:
     """Count P pairs, those of one shape together: yield their places (k,) and records, int32 (k, C, r, q)."""
-    sizes = training.view.sizes
-    heights, widths = sizes[left], sizes[right]
+    heights, widths = training.view.sizes[left], training.view.sizes[right]
     order = np.lexsort((widths, heights))
-    changes = np.flatnonzero((np.diff(heights[order]) != 0) | (np.diff(widths[order]) != 0)) + 1
-    for same in np.split(order, changes) if len(order) else []:
-        height, width = int(heights[same[0]]), int(widths[same[0]])
-        step = max(1, _CELLS // (engine.classes * height * width))
-        for first in range(0, len(same), step):
-            places = same[first : first + step]
-            requests = PairRequests(0, left[places], right[places])
-            counted = for_each_family(engine, [training], requests, lambda counts, _: counts)
-            tables = np.stack([counted[request] for request in requests])
-            yield places, tables.reshape(len(places), engine.classes, height, width)
+    filled = np.cumsum((engine.classes * heights * widths)[order])
+    for together in _cut(order, (filled - 1) // _CELLS):
+        requests = PairRequests(0, left[together], right[together])
+        counted = for_each_family(engine, [training], requests, lambda counts, _: counts)
+        for places in _cut(together, heights[together] * (int(widths.max()) + 1) + widths[together]):
+            tables = np.stack([counted[0, (int(left[k]), int(right[k]))] for k in places.tolist()])
+            yield places, tables.reshape(len(places), engine.classes, heights[places[0]], widths[places[0]])
+
+
+def _cut(numbers: np.ndarray, group: np.ndarray) -> list[np.ndarray]:
+    """Cut numbers (k,) where their groups, which come in order, change."""
+    return np.split(numbers, np.flatnonzero(np.diff(group)) + 1) if len(numbers) else []
