@@ -19,7 +19,6 @@ LARGEST_FAN = 15
 """Up to so many attributes without arrows are a fan; more are a grid."""
 
 _CLEARANCE = '<TD WIDTH="5"></TD>'  # right of a number, where a thick line may pass
-
 _STYLES: Mapping[Verdict, tuple[str, str, str]] = {
     "gains": ("solid", "gain", "gain"),
     "undecided": ("dashed", "undecided", "small-text"),
