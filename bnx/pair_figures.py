@@ -6,6 +6,7 @@ from typing import Any
 from markupsafe import Markup
 
 from bnx.edge_words import PAIR_SENTENCES, pair_sentences
+from bnx.findings import drawn_pairs
 from bnx.printed import pair_row
 from bnx.report_data import json_block
 from bnx.text import fixed
@@ -72,7 +73,7 @@ def pairs_block(document: Mapping[str, Any]) -> Markup:
 
 
 def _known(document: Mapping[str, Any]) -> list[Mapping[str, Any]]:
-    joined = {frozenset((edge["parent"], edge["child"])) for one in document["structures"] for edge in one["edges"]}
+    joined = frozenset().union(*(drawn_pairs(one) for one in document["structures"]))
     ranked = sorted(document["pairs"], key=lambda one: -one["bits"])
     rest = (pair for pair in ranked[PAIRS_IN_PANEL:] if frozenset((pair["a"], pair["b"])) in joined)
     return [*ranked[:PAIRS_IN_PANEL], *rest]
@@ -80,9 +81,10 @@ def _known(document: Mapping[str, Any]) -> list[Mapping[str, Any]]:
 
 def _figures(pair: Mapping[str, Any]) -> dict[str, str]:
     """Print the figures of a pair; those that the ledger has too, as there."""
+    row = pair_row(pair)
     return {
-        **vars(pair_row(pair, frozenset())),
+        **vars(row),
         "corrected": _DASH if pair["bits_corrected"] is None else fixed(max(0.0, pair["bits_corrected"]), 4),
-        "upper": _DASH if pair["bits_at_most"] is None else fixed(pair["bits_at_most"], 4),
-        "twice": _DASH if pair["double_counted_bits"] is None else fixed(pair["double_counted_bits"], 4),
+        "upper": row.at_most,
+        "twice": row.double_counted,
     }

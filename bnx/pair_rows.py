@@ -11,6 +11,7 @@ from typing import Any
 
 from markupsafe import Markup
 
+from bnx.findings import drawn_pairs
 from bnx.pair_columns import PAIR_COLUMNS, VERDICT_ORDER, PairColumn, column_text, column_value
 from bnx.printed import PairRow, pair_row
 from bnx.report_data import json_block
@@ -106,7 +107,7 @@ def pair_ledger(document: Mapping[str, Any], shown: frozenset[frozenset[str]]) -
     sets = [joining.get(frozenset((pair["a"], pair["b"])), ()) for pair in pairs]
     rows = [
         LedgerRow(
-            figures=pair_row(pair, frozenset()),
+            figures=pair_row(pair),
             joined=f"{len(by)} of {len(names)}",
             joined_by=tuple(names[number] for number in by),
             framed=chosen in by,
@@ -132,7 +133,7 @@ def _joining(structures: Iterable[Mapping[str, Any]]) -> dict[frozenset[str], tu
     """List for every pair that is joined the structures that join it, by number."""
     joining: dict[frozenset[str], tuple[int, ...]] = {}
     for number, one in enumerate(structures):
-        for key in {frozenset((edge["parent"], edge["child"])) for edge in one["edges"]}:
+        for key in drawn_pairs(one):
             joining[key] = (*joining.get(key, ()), number)
     return joining
 

@@ -97,7 +97,6 @@ class PairRow:
     min_expected: str
     detectable: str
     verdict: str
-    drawn: bool
 
 
 @dataclass(frozen=True)
@@ -245,8 +244,8 @@ def confusion_rows(
     return tuple(table)
 
 
-def pair_row(pair: Mapping[str, Any], drawn: frozenset[frozenset[str]]) -> PairRow:
-    """Write one pair; drawn: the pairs that the recommended structure joins."""
+def pair_row(pair: Mapping[str, Any]) -> PairRow:
+    """Write one pair."""
     return PairRow(
         a=pair["a"],
         b=pair["b"],
@@ -267,7 +266,6 @@ def pair_row(pair: Mapping[str, Any], drawn: frozenset[frozenset[str]]) -> PairR
         if pair["detectable_bits"] is None
         else ("" if pair["bits_low"] is not None else "about ") + fixed(pair["detectable_bits"], 4),
         verdict=pair["verdict"],
-        drawn=frozenset((pair["a"], pair["b"])) in drawn,
     )
 
 

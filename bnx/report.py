@@ -1,11 +1,9 @@
 """The report: a comparison summed up, then rendered as one page that needs nothing else."""
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import PurePath
 from typing import Any
-
-from markupsafe import Markup
 
 from bnx.charts import FoldChart, fold_chart
 from bnx.findings import Findings, drawn_pairs, findings
@@ -105,21 +103,15 @@ def report_html(comparison: Mapping[str, Any], pictures: Mapping[str, str]) -> s
         FormatError: a picture is no SVG.
     """
     report, styles = summarise(comparison, pictures)
-    return page_html(
-        report,
-        styles,
-        (
-            *(edges_block(comparison, _ordered(comparison)), pairs_block(comparison), tables_block(comparison)),
-            *_pair_blocks(report),
-        ),
-    )
-
-
-def _pair_blocks(report: Report) -> Iterator[Markup]:
-    """Give what the scripts of the ledger of pairs and of the triangle read."""
-    yield report.pairs.block
+    blocks = [
+        edges_block(comparison, _ordered(comparison)),
+        pairs_block(comparison),
+        tables_block(comparison),
+        report.pairs.block,
+    ]
     if report.triangle:
-        yield triangle_block(report.triangle, report.pairs.place)
+        blocks.append(triangle_block(report.triangle, report.pairs.place))
+    return page_html(report, styles, blocks)
 
 
 def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple[Report, tuple[str, ...]]:

@@ -54,7 +54,7 @@ const copyDrawing = (svg, from, to) => {
 
 const pairButton = (edge) => {
   const button = el("button", { type: "button", class: "link" }, ...asNodes(edgeEnds(edge)));
-  button.addEventListener("click", () => openPair(edgesData.names[edge.parent], edgesData.names[edge.child], button));
+  button.addEventListener("click", () => openEdge(edge, button));
   return button;
 };
 

@@ -67,7 +67,7 @@ const addArrow = (view, edge, group) => {
   view.arrows.set(edge.key, { edge, group });
   lightWidth(group);
   makeAnswer(view, group, edgeWords(edge), () => lightEdge(view, edge), () =>
-    openPair(edgesData.names[edge.parent], edgesData.names[edge.child], group));
+    openEdge(edge, group));
 };
 
 const addChip = (view, place, group) => {

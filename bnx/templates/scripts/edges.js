@@ -22,6 +22,8 @@ const structures = edgesData.structures.map((one) => {
 
 const edgeEnds = (edge) => [attributeNamed(edge.parent), " → ", attributeNamed(edge.child)];
 
+const openEdge = (edge, opener) => openPair(edgesData.names[edge.parent], edgesData.names[edge.child], opener);
+
 const edgeWords = (edge) => {
   const values = { ...edge, class: { name: edgesData.class }, given: inARow(edge.given.map(attributeNamed)) };
   const told = {

@@ -41,7 +41,7 @@ const makeView = (structure, panel) => {
 const wireRow = (view, edge, row) => {
   const button = el("button", { type: "button", class: "link", "aria-label":
     `Tables of ${asText([attributeNamed(edge.parent), " and ", attributeNamed(edge.child)])}` }, "tables");
-  button.addEventListener("click", () => openPair(edgesData.names[edge.parent], edgesData.names[edge.child], button));
+  button.addEventListener("click", () => openEdge(edge, button));
   row.append(el("td", {}, button));
   if (!view.svg) return;
   row.addEventListener("pointerenter", () => lightEdge(view, edge));
