@@ -14,7 +14,7 @@ TURNED = frozenset({"difference", "interval", "gain", "cost", "double_counted_bi
 def numbers_in(text: str) -> list[str]:
     """List the numbers of a text, the sign of negative ones and the % of shares with them."""
     return [
-        f"{'-' if sign in '-−' and sign else ''}{'0' if size.startswith('.') else ''}{size}{power}{'%' if share else ''}"
+        "-" * (sign in ("-", "−")) + "0" * size.startswith(".") + size + power + "%" * bool(share)
         for sign, size, power, share in NUMBER.findall(text)
     ]
 
@@ -22,6 +22,12 @@ def numbers_in(text: str) -> list[str]:
 def tells(printed: str, value: float) -> bool:
     """Judge whether a printed number is a value, to the digits printed; with % it is a hundred times a share."""
     return printed in _written(value, range(9)) | _shares(value)
+
+
+def told(text: str, *values: float | None) -> bool:
+    """Judge whether a text prints exactly these values in this order; those that are None are left out of it."""
+    printed, present = numbers_in(text), [value for value in values if value is not None]
+    return len(printed) == len(present) and all(map(tells, printed, present))
 
 
 def _written(value: float, decimals: Iterable[int]) -> set[str]:

@@ -34,7 +34,7 @@ YEAR = re.compile(r"\b(?:19|20)\d\d\b")  # of the publications
 WORDING = {"0", "1", "2", "4", "8", "80%", "95%", "1,000", "256"}
 """Of explanations: shades at 2, 4 and 8, power, intervals, mistakes in 1,000 records, the digest of the file."""
 LARGE = {"pairs": ("pairs", "answer"), "pair_tables": ("pairs",), "records": ("records",)}
-"""Long parts of the comparison, in which a wrong number could be found by chance, and the sections that tell of them."""
+"""Long parts of the comparison, where a wrong number could be found by chance, and the sections that tell of them."""
 LEAST = {"answer": 20, "structures": 200, "scores": 100, "pairs": 200, "attributes": 12, "method": 12}
 
 
