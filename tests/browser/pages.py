@@ -88,3 +88,12 @@ def opened(
         yield found
     finally:
         context.close()
+
+
+def unfolded(page: Page) -> None:
+    """Open all that is folded away, and make the window as high as the page, so that all of it is in sight."""
+    page.evaluate("document.querySelectorAll('details').forEach((one) => { one.open = true; })")
+    size = page.viewport_size
+    assert size is not None
+    height = page.evaluate("document.scrollingElement.scrollHeight")
+    page.set_viewport_size({"width": size["width"], "height": height})
