@@ -9,6 +9,7 @@ from typing import Any
 import pytest
 from commandline import call
 from hostile_table import TARGET, learnt, write_hostile
+from large_tables import write_large
 from pages import Made, chromium_path, launched
 from playwright.sync_api import Browser, sync_playwright
 
@@ -49,3 +50,19 @@ def hostile(tmp_path_factory: pytest.TempPathFactory) -> Made:
     folder = tmp_path_factory.mktemp("hostile")
     write_hostile(folder / "table.csv")
     return page_made(folder, *learnt(folder / "table.csv", TARGET))
+
+
+@pytest.fixture(scope="session")
+def wide(tmp_path_factory: pytest.TempPathFactory) -> Made:
+    """60 attributes x 10 classes."""
+    folder = tmp_path_factory.mktemp("wide")
+    write_large(folder / "table.csv", attributes=60, classes=10, rows=1500)
+    return page_made(folder, *learnt(folder / "table.csv", "outcome"))
+
+
+@pytest.fixture(scope="session")
+def very_wide(tmp_path_factory: pytest.TempPathFactory) -> Made:
+    """400 attributes, 79,800 pairs."""
+    folder = tmp_path_factory.mktemp("very_wide")
+    write_large(folder / "table.csv", attributes=400, classes=2, rows=600)
+    return page_made(folder, *learnt(folder / "table.csv", "outcome", ("naive", "tan")))
