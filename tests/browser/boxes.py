@@ -31,7 +31,7 @@ OUT_OF_DRAWINGS = """() => [...document.querySelectorAll('svg text')].filter((te
 
 # Text of a cell, line or button that is cut or spills over; a box that scrolls shows it, and so does a title.
 CUT = """() => [...document.querySelectorAll('body *')].filter((one) => {
-  if (one instanceof SVGElement || !one.clientWidth) return false;
+  if (one instanceof SVGElement || !one.clientWidth || !one.checkVisibility()) return false;
   if (one.matches('.unseen, .unseen *, .skip, select, input')) return false;
   const style = getComputedStyle(one);
   if (['auto', 'scroll'].includes(style.overflowX) || style.display === 'inline') return false;
@@ -59,7 +59,7 @@ OVERLAPPING = """() => {
   for (let text = walker.nextNode(); text; text = walker.nextNode()) {
     const own = text.parentElement;
     if (!text.data.trim() || own.closest('script, style, title, desc, select, .unseen, .skip, [hidden]')) continue;
-    if (own.closest('nav.sections, thead, dialog')) continue;
+    if (own.closest('nav.sections, thead, dialog') || !own.checkVisibility()) continue;
     const range = document.createRange();
     range.selectNodeContents(text);
     for (const one of range.getClientRects()) {
