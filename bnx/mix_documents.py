@@ -69,10 +69,13 @@ def mix_reason(mix: JudgedMix, names: Sequence[str], recommended: str) -> str:
         return f"Not offered: of all rows, {names[next(iter(mix.members))]} takes all the weight."
     if mix.apart is None:
         return "Not offered: it cannot be compared, as a log loss is infinite."
-    against = (
-        f"fold by fold its honest log loss differs from that of the recommended structure by {signed(mix.apart.mean)} "
-        f"bits [{signed(mix.apart.low)}, {signed(mix.apart.high)}], and it is better with a chance of {mix.better:.0%}"
+    low, high = -mix.apart.high, -mix.apart.low
+    saved = f"fold by fold it saves {signed(-mix.apart.mean)} bits [{signed(low)}, {signed(high)}] against what is picked"
+    chance = f"{saved} without the fold, and the chance that it is better is {100 * mix.better:.0f} %"
+    if not mix.offered:
+        return f"Not offered: {chance}."
+    told = "that is more than chance" if low > 0 else "that can be chance"
+    return (
+        f"Offered beside {recommended}: {chance}; {told}. Take {recommended} where one graph has to be explained or "
+        "handed over, the mix where only the probabilities count."
     )
-    if mix.offered:
-        return f"Offered beside {recommended}: {against}."
-    return f"Not offered: {against}."
