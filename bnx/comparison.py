@@ -33,8 +33,10 @@ from bnx.learning_curve import LearningCurve, measure_curve
 from bnx.ledger import EdgeEvidence, edge_ledger
 from bnx.losses import Scores
 from bnx.matrix_memory import matrix_notes
+from bnx.metric_differences import differences
 from bnx.mix_judging import JudgedMix, judge_mix
 from bnx.pair_judging import JudgedPairs, judge_pairs
+from bnx.paired import Difference
 from bnx.rating import StructureScore, score
 from bnx.reading import Source
 from bnx.recipe import Recipe
@@ -100,6 +102,11 @@ class Comparison:
     def names(self) -> tuple[str, ...]:
         """Names of the attributes."""
         return tuple(domain.name for domain in self.domains)
+
+    def by_metric(self, score: StructureScore) -> dict[str, Difference | None] | None:
+        """Compare scores with the baseline's by every metric; None for the baseline itself."""
+        baseline = self.results[self.recipe.structures.index(self.recipe.baseline)]
+        return None if score is baseline else differences(score, baseline, self.folds)
 
     @cached_property
     def reliability(self) -> dict[str, Reliability]:

@@ -17,18 +17,19 @@ from bnx.curve_documents import curve_entry
 from bnx.formats.dot import dot_source
 from bnx.formats.structure_json import classifier_document
 from bnx.ledger import EdgeEvidence
+from bnx.listed_pairs import pair_results
 from bnx.mix_documents import mix_entry
+from bnx.pair_table_entries import pair_table_entries
 from bnx.picture import Arrow, Chip, Picture
 from bnx.plain import finite
 from bnx.score_entries import against_entry, fold_entries, reliability_entry, score_entry
 from bnx.structure import words
 from bnx.text import count_of
-from bnx.verdicts import OUTCOMES, VERDICTS, TestResult
+from bnx.verdicts import OUTCOMES, VERDICTS
 from bnx.yardstick_documents import yardstick_entries
 
 __all__ = [
     "COMPARISON_FORMAT",
-    "PAIRS_SHOWN",
     "comparison_document",
     "dot_of",
     "pair_results",
@@ -39,7 +40,6 @@ __all__ = [
 ]
 
 COMPARISON_FORMAT = "bnx-comparison/1"
-PAIRS_SHOWN = 20_000
 
 
 def versions() -> dict[str, str]:
@@ -57,7 +57,6 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
     """Describe a whole run, ready for JSON."""
     advice = comparison.recommendation
     names = comparison.recipe.structures
-    judged = comparison.judged.judgement
     document: dict[str, Any] = finite(
         {
             "format": COMPARISON_FORMAT,
@@ -93,20 +92,29 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
             "yardsticks": yardstick_entries(comparison),
             "learning_curve": curve_entry(comparison),
             "reliability": {name: reliability_entry(one) for name, one in comparison.reliability.items()},
-            "pairs": [result.to_dict() for result in pair_results(comparison)],
-            "pairs_total": comparison.judged.family,
-            "pairs_rejected": comparison.judged.rejected,
-            "pairs_judged": len(comparison.pairs.left),
-            "pairs_verdicts": {word: int((judged.verdict == code).sum()) for code, word in enumerate(VERDICTS)},
-            "pairs_outcomes": {
-                word: int((comparison.judged.outcome == code).sum()) for code, word in enumerate(OUTCOMES)
-            },
+            **pair_entries(comparison),
             "left_out": [{"name": one.name, "reason": one.reason} for one in comparison.left_out],
             "warnings": list(comparison.warnings),
             "versions": versions(),
         }
     )
     return document
+
+
+def pair_entries(comparison: Comparison) -> dict[str, Any]:
+    """Describe the pairs: those listed, how many there are of each kind, and tables of those worth looking at."""
+    listed, judged = pair_results(comparison), comparison.judged
+    tables, without_table = pair_table_entries(comparison, listed)
+    return {
+        "pairs": [result.to_dict() for result in listed],
+        "pairs_total": judged.family,
+        "pairs_rejected": judged.rejected,
+        "pairs_judged": len(comparison.pairs.left),
+        "pairs_verdicts": {word: int((judged.judgement.verdict == code).sum()) for code, word in enumerate(VERDICTS)},
+        "pairs_outcomes": {word: int((judged.outcome == code).sum()) for code, word in enumerate(OUTCOMES)},
+        "pair_tables": tables,
+        "pair_tables_left_out": without_table,
+    }
 
 
 def structure_entry(comparison: Comparison, s: int) -> dict[str, Any]:
@@ -126,7 +134,7 @@ def structure_entry(comparison: Comparison, s: int) -> dict[str, Any]:
         "floor": calibration.floor,
         "smoothing": str(classifier.smoothing),
         "by_fold": fold_entries(result, levels),
-        "against_baseline": against_entry(comparison.against[s]),
+        "against_baseline": against_entry(comparison.against[s], comparison.by_metric(result)),
     }
     if comparison.held_out:
         entry["holdout"] = comparison.held_out[s].to_dict(levels)
@@ -141,6 +149,7 @@ def edge_entry(names: Sequence[str], edge: EdgeEvidence) -> dict[str, Any]:
         "bits": edge.bits,
         "gain": edge.gain,
         "gain_se": edge.gain_se,
+        "gain_by_fold": list(edge.gain_by_fold),
         "chosen_in": edge.chosen_in,
         "stability": edge.stability,
         "gate_p": edge.gate_p,
@@ -148,43 +157,6 @@ def edge_entry(names: Sequence[str], edge: EdgeEvidence) -> dict[str, Any]:
         "carried_by_blanks": edge.carried_by_blanks,
         "verdict": edge.verdict,
     }
-
-
-def pair_results(comparison: Comparison, everything: bool = False) -> list[TestResult]:
-    """List tested pairs, most bits first: all up to 20,000, else the drawn, the rejected and the strongest."""
-    bits = comparison.judged.statistics.bits
-    chosen = np.arange(len(bits)) if everything or len(bits) <= PAIRS_SHOWN else _first(comparison)
-    order = chosen[np.argsort(-bits[chosen], kind="stable")]
-    names = comparison.names
-    left, right = comparison.pairs.left[order].tolist(), comparison.pairs.right[order].tolist()
-    ends = [(names[i], names[j]) for i, j in zip(left, right, strict=True)]
-    return comparison.judged.results(ends, order)
-
-
-def _first(comparison: Comparison) -> np.ndarray:
-    """Choose pairs: drawn ones, then rejected ones, then the strongest, 20,000 in all; in their own order."""
-    attributes, bits = len(comparison.names), comparison.judged.statistics.bits
-    left, right = comparison.pairs.left, comparison.pairs.right
-    ends = {tuple(sorted((edge.parent, edge.child))) for edges in comparison.edges for edge in edges}
-    number = np.array([a * attributes + b for a, b in ends], dtype=np.int64)
-    is_drawn = np.isin(np.minimum(left, right) * np.int64(attributes) + np.maximum(left, right), number)
-    rejected = comparison.judged.judgement.rejected
-    chosen = np.empty(0, np.int64)
-    for group in (is_drawn, rejected & ~is_drawn, ~rejected & ~is_drawn):
-        chosen = np.concatenate([chosen, _strongest(bits, np.flatnonzero(group), PAIRS_SHOWN - len(chosen))])
-    return np.sort(chosen)
-
-
-def _strongest(bits: np.ndarray, group: np.ndarray, most: int) -> np.ndarray:
-    """Take the members of a group with most bits, the first ones among equals, without sorting the others."""
-    if len(group) <= most:
-        return group
-    if not most:
-        return group[:0]
-    own = bits[group]
-    least = np.partition(own, -most)[-most]
-    above = group[own > least]
-    return np.concatenate([above, group[own == least][: most - len(above)]])
 
 
 def structure_document(comparison: Comparison, s: int) -> dict[str, Any]:

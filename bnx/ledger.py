@@ -23,11 +23,11 @@ class EdgeEvidence:
     """What speaks for one edge of the structure learnt from all rows.
 
     ``bits``: shared given the class; ``gain``: held-out bits per row, mean over folds, with its standard error;
-    ``chosen_in``: how many folds' own structures join the two, in either direction; ``stability``: share of random
-    halves that do, None if none were drawn; ``gate_p``: p of the test that let it in given the class and
-    ``gate_given``, None if the structure does not test or the edge was required; ``carried_by_blanks``: the pair is
-    dependent, but less than half its bits is left where neither cell is blank. A fold whose loss is infinite with and
-    without the edge counts as no gain.
+    ``gain_by_fold``: of every fold of every repeat, None where its own structure does not join the two, in either
+    direction; ``chosen_in``: how many do; ``stability``: share of random halves that do, None if none were drawn;
+    ``gate_p``: p of the test that let it in given the class and ``gate_given``, None if the structure does not test or
+    the edge was required; ``carried_by_blanks``: the pair is dependent, but less than half its bits is left where
+    neither cell is blank. A fold whose loss is infinite with and without the edge counts as no gain.
     """
 
     parent: int
@@ -35,6 +35,7 @@ class EdgeEvidence:
     bits: float
     gain: float
     gain_se: float
+    gain_by_fold: tuple[float | None, ...]
     chosen_in: int
     stability: float | None
     gate_p: float | None
@@ -89,6 +90,7 @@ def edge_ledger(
                     bits=strength[question.candidate, question.child],
                     gain=float(by_fold.mean()),
                     gain_se=float(spread),
+                    gain_by_fold=tuple(found),
                     chosen_in=chosen,
                     stability=stable.get((s, ends), 0.0) if recipe.resamples else None,
                     gate_p=gate_p.get(question),

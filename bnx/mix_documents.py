@@ -29,7 +29,7 @@ def mix_entry(comparison: Comparison) -> dict[str, Any] | None:
         "reason": mix_reason(mix, names, names[comparison.recommendation.recommended]),
         **score_entry(mix.score, levels),
         "by_fold": fold_entries(mix.score, levels),
-        "against_baseline": against_entry(mix.against),
+        "against_baseline": against_entry(mix.against, comparison.by_metric(mix.score)),
         "against_recommended": {
             "difference": mix.apart.mean if mix.apart else None,
             "interval": [mix.apart.low, mix.apart.high] if mix.apart else None,

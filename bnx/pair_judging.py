@@ -40,8 +40,10 @@ class JudgedPairs:
         chosen = self.without_blanks < self.statistics.bits_corrected / 2
         return set(map(frozenset, zip(left[chosen].tolist(), right[chosen].tolist(), strict=True)))
 
-    def results(self, names: Sequence[tuple[str, str]], order: np.ndarray) -> list[TestResult]:
-        """Write the pairs in this order; names: of the two attributes of every pair written."""
+    def results(
+        self, names: Sequence[tuple[str, str]], order: np.ndarray, double_counted: np.ndarray
+    ) -> list[TestResult]:
+        """Write the pairs in this order; names, double_counted: of every pair written."""
         return results(
             names,
             self.statistics.take(order),
@@ -50,6 +52,7 @@ class JudgedPairs:
             self.without.take(order),
             self.outcome[order],
             self.without_blanks[order],
+            double_counted,
         )
 
 

@@ -7,6 +7,7 @@ from typing import Any
 
 import numpy as np
 
+from bnx.class_tables import measure_double_counting
 from bnx.engines.local import Progress
 from bnx.explaining import Explanation, explanations
 from bnx.families import family_statistics, for_each_family
@@ -106,12 +107,13 @@ def run_pair_tests(
     judged = judge_pairs(visit, *_statistics(table, requests), ends, recipe)
     names = [(table.names[a], table.names[b]) for a, b in pairs]
     order = np.argsort(-judged.statistics.bits_corrected, kind="stable")
+    twice = measure_double_counting(table.engine, table.training, *np.array(pairs, np.int64)[order].T)
     rejected = order[judged.judgement.rejected[order]]
     close = rejected[: CLOSE if asked.close is None else asked.close] if asked.everything else order
     return PairTests(
         recipe.target,
         asked,
-        tuple(judged.results([names[k] for k in order], order)),
+        tuple(judged.results([names[k] for k in order], order, twice)),
         _details(table, [pairs[k] for k in close], recipe),
         _explained(table, [pairs[k] for k in close if judged.judgement.rejected[k]], recipe) if asked.explain else {},
         dict(zip(names, _given_class(table, pairs), strict=True)) if asked.given else {},

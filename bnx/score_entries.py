@@ -1,10 +1,12 @@
 """Scores as plain values ready to be written."""
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 from bnx.before_after import Reliability
 from bnx.judging import Against
+from bnx.metric_differences import REGIONS
+from bnx.paired import Difference
 from bnx.rating import StructureScore
 from bnx.reliability import Curve
 
@@ -34,11 +36,12 @@ def fold_entries(result: StructureScore, levels: Sequence[str]) -> list[dict[str
     ]
 
 
-def against_entry(against: Against | None) -> dict[str, Any]:
+def against_entry(against: Against | None, by_metric: Mapping[str, Difference | None] | None) -> dict[str, Any]:
     """Describe the difference to the baseline; nulls for the baseline itself."""
+    metrics = None if by_metric is None else _metric_entries(by_metric, against.region if against else None)
     if against is None:
         keys = ("difference", "interval", "p_value", "region_bits", "probability_better", "probability_equivalent")
-        return dict.fromkeys(keys)
+        return {**dict.fromkeys(keys), "by_metric": metrics}
     return {
         "difference": against.difference.mean,
         "interval": [against.difference.low, against.difference.high],
@@ -47,6 +50,20 @@ def against_entry(against: Against | None) -> dict[str, Any]:
         "region_bits": against.region,
         "probability_better": against.chances.better,
         "probability_equivalent": against.chances.equivalent,
+        "by_metric": metrics,
+    }
+
+
+def _metric_entries(by_metric: Mapping[str, Difference | None], region: float | None) -> dict[str, Any]:
+    """Describe differences by metric; region: of the log loss."""
+    regions = {"log_loss": region, **REGIONS}
+    return {
+        metric: {
+            "difference": found.mean if found else None,
+            "interval": [found.low, found.high] if found else None,
+            "region": regions.get(metric),
+        }
+        for metric, found in by_metric.items()
     }
 
 

@@ -122,6 +122,7 @@ class TestResult:
     marginal_adjusted_p: float
     explained_bits: float
     bits_without_blanks: float
+    double_counted_bits: float
     outcome: str
     x2: float
     g: float
@@ -166,14 +167,15 @@ def results(
     without: Judgement,
     outcome: np.ndarray,
     without_blanks: np.ndarray,
+    double_counted: np.ndarray,
 ) -> list[TestResult]:
     """Write P judged pairs as one result each; ``without``: judged without the class."""
     method, verdict, explained = (np.array(words, dtype=object) for words in (METHODS, VERDICTS, OUTCOMES))
     at = np.full(stats.rows.shape, judgement.at)
     shared = (stats.bits, stats.bits_corrected, judgement.low, judgement.high, judgement.upper)
     whole = (marginal.bits, marginal.bits_corrected, without.p, without.adjusted)
-    apart = (marginal.bits_corrected - stats.bits_corrected, without_blanks, explained[outcome], stats.x2, stats.g)
-    tested = (judgement.statistic, stats.df.astype(np.int64), judgement.p, judgement.adjusted)
+    apart = (marginal.bits_corrected - stats.bits_corrected, without_blanks, double_counted, explained[outcome])
+    tested = (stats.x2, stats.g, judgement.statistic, stats.df.astype(np.int64), judgement.p, judgement.adjusted)
     strata = (stats.strata.astype(np.int64), stats.informative.astype(np.int64))
     trust = (method[judgement.method], judgement.carried, *strata, stats.min_expected, stats.share_below_5)
     effect = (stats.cramers_v, judgement.detectable, at, verdict[judgement.verdict])

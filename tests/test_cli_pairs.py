@@ -23,6 +23,7 @@ PAIR_KEYS = {
     "marginal_adjusted_p",
     "explained_bits",
     "bits_without_blanks",
+    "double_counted_bits",
     "outcome",
     "x2",
     "g",

@@ -14,11 +14,11 @@ FLOORS = (
     "bnx errors text palette plain unfinished",
     "kernels calibrating simplex counts tiles discretising domains dot_text embedding files storing cells "
     "folds layers losses branching multiplicity paired picture structure picking sharpening mixing svg effects ordered "
-    "loglinear fibre homogeneity masked unobserved summing_out weighed_losses reliability",
+    "loglinear fibre homogeneity masked unobserved summing_out weighed_losses reliability double_counting",
     "tables views blocks columns columnar delimited malformed repeating reading weighing levelling screening "
     "duplicates level_order",
     "coarsening gathering passes coding encoding pair_counting engines",
-    "parameters trainings room dependence families profiling",
+    "parameters trainings room dependence families class_tables profiling",
     "tails wide_tables independence classifier rebasing mixed_classifier intervals refining sampling scoring "
     "tabulating verdicts explaining pair_details",
     "gating doubts drawing formats showing",
@@ -26,11 +26,12 @@ FLOORS = (
     "recipe wide_forests wide wide_learning matrix_memory heldout leaving_out learning pair_judging many_tests "
     "wide_testing wide_judging pair_table",
     "choosing cut_trials evaluation gains fold_cells rating before_after resampling pair_tests",
-    "dealing judging mix_judging ledger observing held_out cut_notes run_notes yardstick_models yardstick "
-    "learning_curve comparison",
+    "dealing judging metric_differences mix_judging ledger observing held_out cut_notes run_notes yardstick_models "
+    "yardstick learning_curve comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
-    "chosen score_entries mix_documents yardstick_documents curve_documents documents charts findings printed "
-    "reliability_words reliability_chart report_data report_page pair_figures report results tested_text tested_picture",
+    "chosen score_entries mix_documents yardstick_documents curve_documents listed_pairs pair_table_entries documents "
+    "charts reliability_words sureness counted_twice findings metric_charts printed score_tables setting_words method_words "
+    "reliability_chart report_data report_page pair_figures report results tested_text tested_picture",
     "cli",
 )
 PLACES = {name: (floor, place) for floor, names in enumerate(FLOORS) for place, name in enumerate(names.split())}

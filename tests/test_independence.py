@@ -51,6 +51,7 @@ PAIR_KEYS = {
         "marginal_bits_corrected",
     ),
     *("marginal_p_value", "marginal_adjusted_p", "explained_bits", "bits_without_blanks", "outcome"),
+    "double_counted_bits",
     *("x2", "g", "statistic", "df", "p_value", "adjusted_p", "method"),
     *("sample_carries_it", "strata", "strata_informative", "min_expected", "share_expected_below_5", "cramers_v"),
     *("detectable_bits", "detectable_at", "verdict"),
@@ -63,7 +64,8 @@ def judge_all(
     """Test and judge pairs as one family, given the class and without it."""
     judgement, without = (judge(stats, p_values(stats, test), **options) for stats in (given, marginal))
     outcome = outcomes(given, judgement, marginal, without)
-    return results(names, given, judgement, marginal, without, outcome, np.full(len(names), np.nan))
+    nothing = np.full(len(names), np.nan)
+    return results(names, given, judgement, marginal, without, outcome, nothing, nothing)
 
 
 def judged(table: np.ndarray, **options: float) -> TestResult:

@@ -11,7 +11,7 @@ import pytest
 from builders import compared
 from smallrun import small_run
 
-from bnx import documents
+from bnx import listed_pairs
 from bnx.cli.summary import summary
 from bnx.documents import pair_results
 from bnx.formats.dot import dot_source
@@ -123,7 +123,7 @@ def test_the_pairs_that_are_written_are_those_that_sorting_all_would_choose(monk
     assert drawn - rejected
     assert rejected - drawn
     for most in (1, 4, len(drawn), 10, 15, 20, len(every) - 1):
-        monkeypatch.setattr(documents, "PAIRS_SHOWN", most)
+        monkeypatch.setattr(listed_pairs, "PAIRS_SHOWN", most)
 
         def rank(one: Any) -> tuple[int, float, int]:
             ends = frozenset((one.a, one.b))
