@@ -69,13 +69,16 @@ def mix_reason(mix: JudgedMix, names: Sequence[str], recommended: str) -> str:
         return f"Not offered: of all rows, {names[next(iter(mix.members))]} takes all the weight."
     if mix.apart is None:
         return "Not offered: it cannot be compared, as a log loss is infinite."
-    low, high = -mix.apart.high, -mix.apart.low
-    saved = f"fold by fold it saves {signed(-mix.apart.mean)} bits [{signed(low)}, {signed(high)}] against what is picked"
-    chance = f"{saved} without the fold, and the chance that it is better is {100 * mix.better:.0f} %"
+    saves = mix.apart.mean <= 0
+    low, high = (-mix.apart.high, -mix.apart.low) if saves else (mix.apart.low, mix.apart.high)
+    told = (
+        f"fold by fold it {'saves' if saves else 'costs'} {abs(mix.apart.mean):.3f} bits [{signed(low)}, {signed(high)}] "
+        f"against what is picked without the fold, {'which can be chance' if low <= 0 <= high else 'more than chance'}"
+    )
+    chance = f"better with a chance of {100 * mix.better:.0f} %"
     if not mix.offered:
-        return f"Not offered: {chance}."
-    told = "that is more than chance" if low > 0 else "that can be chance"
+        return f"Not offered: {told}; it is {chance}."
     return (
-        f"Offered beside {recommended}: {chance}; {told}. Take {recommended} where one graph has to be explained or "
-        "handed over, the mix where only the probabilities count."
+        f"Offered beside {recommended}: take {recommended} where one graph has to be explained or handed over, the mix "
+        f"where only the probabilities count. It is {chance}: {told}."
     )

@@ -7,9 +7,11 @@ from typing import Any
 
 from markupsafe import Markup
 
-from bnx.charts import FoldChart, HeatMap, fold_chart, heat_map
+from bnx.charts import HeatMap, heat_map
 from bnx.embedding import embed
 from bnx.findings import Findings, drawn_pairs, findings
+from bnx.method_words import GLOSSARY, SOURCES, VERDICTS_READ
+from bnx.metric_charts import MetricChart, metric_charts
 from bnx.pair_figures import pairs_block
 from bnx.printed import (
     AttributeRow,
@@ -18,17 +20,22 @@ from bnx.printed import (
     PairRow,
     ScoreRow,
     attribute_rows,
-    confusion_rows,
     curve_table,
     edge_row,
-    mix_row,
     pair_row,
     score_row,
-    setting,
-    yardstick_row,
 )
 from bnx.reliability_chart import ReliabilityChart, reliability_charts
 from bnx.report_page import page_html
+from bnx.score_tables import (
+    ClassTable,
+    DifferenceTable,
+    class_tables,
+    difference_table,
+    ranked_rows,
+    why_below,
+)
+from bnx.setting_words import SettingRow, setting_rows
 
 __all__ = [
     "ATTRIBUTES_ON_PAGE",
@@ -59,7 +66,7 @@ _ADJUSTMENTS = {
 
 @dataclass(frozen=True)
 class Drawn:
-    """One structure: its drawing (empty without a drawing engine), its ledger, its confusion table and recalls.
+    """One structure: its drawing (empty without a drawing engine) and its ledger.
 
     ``edges`` are the strongest of ``edges_total``.
     """
@@ -68,7 +75,6 @@ class Drawn:
     picture: Markup
     edges: tuple[EdgeRow, ...]
     edges_total: int
-    confusion: tuple[tuple[str, tuple[tuple[str, str, int], ...], str], ...]
     is_open: bool
 
 
@@ -86,15 +92,16 @@ class Report:
     repeats: int
     findings: Findings
     scores: tuple[ScoreRow, ...]
-    mix: ScoreRow | None
+    why_below: str
     mix_reason: str
-    yardsticks: tuple[ScoreRow, ...]
     yardstick_sentences: tuple[str, ...]
     curve: CurveTable | None
     has_holdout: bool
     reliability: tuple[ReliabilityChart, ...]
     structures: tuple[Drawn, ...]
-    folds_chart: FoldChart | None
+    metrics: tuple[MetricChart, ...]
+    differences: DifferenceTable | None
+    classes: tuple[ClassTable, ...]
     pairs: tuple[PairRow, ...]
     pairs_total: str
     pairs_rejected: str
@@ -103,13 +110,18 @@ class Report:
     attributes: tuple[AttributeRow, ...]
     left_out: tuple[tuple[str, str], ...]
     left_out_total: int
-    settings: tuple[tuple[str, str], ...]
+    weighted: bool
+    settings: tuple[SettingRow, ...]
+    seed: int
     versions: tuple[tuple[str, str], ...]
     warnings: tuple[str, ...]
     warnings_total: int
     alpha: str
     adjust: str
     negligible: str
+    sources: tuple[tuple[str, str], ...]
+    verdicts_read: tuple[tuple[str, str], ...]
+    glossary: tuple[tuple[str, str], ...]
 
     @property
     def by_blanks(self) -> bool:
@@ -140,7 +152,7 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         one, rules = _drawn(document, entry, pictures.get(entry["name"], ""), f"s{number}")
         structures.append(one)
         styles.update(dict.fromkeys(rules))
-    settings = document["settings"]
+    settings, metrics = document["settings"], metric_charts(document)
     report = Report(
         target=document["class"],
         class_levels=tuple(document["class_levels"]),
@@ -151,16 +163,17 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         folds=document["folds"],
         repeats=settings["repeats"],
         findings=findings(document),
-        scores=tuple(one.score for one in structures),
-        mix=mix_row(document["mix"]) if document["mix"] else None,
+        scores=ranked_rows(document),
+        why_below=why_below(document),
         mix_reason=document["mix"]["reason"] if document["mix"] else "",
-        yardsticks=tuple(yardstick_row(one) for one in document["yardsticks"] or ()),
         yardstick_sentences=tuple(one["sentence"] for one in document["yardsticks"] or ()),
         curve=curve_table(document["learning_curve"]) if document["learning_curve"] else None,
         has_holdout=any("holdout" in one for one in ranked),
         reliability=reliability_charts(document),
         structures=tuple(structures),
-        folds_chart=fold_chart(document),
+        metrics=metrics,
+        differences=difference_table(metrics),
+        classes=class_tables(document),
         pairs=tuple(pair_row(pair, drawn) for pair in _strongest_pairs(document)),
         pairs_total=f"{document['pairs_total']:,}",
         pairs_rejected=f"{document['pairs_rejected']:,}",
@@ -169,13 +182,18 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         attributes=attribute_rows(document["schema"], ATTRIBUTES_ON_PAGE),
         left_out=tuple((one["name"], one["reason"]) for one in document["left_out"][:LINES_ON_PAGE]),
         left_out_total=len(document["left_out"]),
-        settings=tuple((key, setting(value)) for key, value in settings.items()),
+        weighted=bool(settings["weight"]),
+        settings=setting_rows(settings),
+        seed=settings["seed"],
         versions=tuple(document["versions"].items()),
         warnings=tuple(document["warnings"][:LINES_ON_PAGE]),
         warnings_total=len(document["warnings"]),
         alpha=f"{settings['alpha']:g}",
         adjust=_ADJUSTMENTS[settings["adjust"]],
         negligible=f"{settings['negligible']:g}",
+        sources=SOURCES,
+        verdicts_read=VERDICTS_READ,
+        glossary=GLOSSARY,
     )
     return report, tuple(styles)
 
@@ -195,7 +213,6 @@ def _drawn(
         picture=Markup(picture.markup) if picture else Markup(),
         edges=tuple(edge_row(edge, tries) for edge in strongest[:EDGES_ON_PAGE]),
         edges_total=len(strongest),
-        confusion=confusion_rows(entry, document["class_levels"]),
         is_open=entry["name"] == document["recommended"]["name"],
     )
     return one, picture.styles if picture else ()

@@ -10,9 +10,9 @@ from bnx.report_data import digest
 
 __all__ = ["SCRIPTS", "STYLES", "page_html"]
 
-STYLES = ("base", "controls", "structures", "scores", "pairs", "pair_panel", "attributes", "print")
+STYLES = ("base", "controls", "answer", "structures", "scores", "pairs", "pair_panel", "attributes", "print")
 """Style sheets in the order in which they are joined."""
-SCRIPTS = ("page", "theme", "pair_panel", "start")
+SCRIPTS = ("page", "theme", "pair_panel", "links", "metrics", "start")
 """Scripts in the order in which they are joined."""
 
 _UNPRINTABLE = {code: "\ufffd" for code in (*range(32), *range(127, 160)) if chr(code) not in "\t\n\r"}
