@@ -1,46 +1,77 @@
-"""What the panel of one pair says: the figures of the ledger, and the verdict in words that no figure can be read past."""
+"""What the panel of one pair says: the figures of the ledger, and the verdict in words that cannot be misread."""
 
 from collections.abc import Mapping
 from typing import Any
 
 from markupsafe import Markup
 
-from bnx.printed import PairRow, pair_row
+from bnx.edge_words import PAIR_SENTENCES, pair_sentences
+from bnx.printed import pair_row
 from bnx.report_data import json_block
+from bnx.text import fixed
 
-__all__ = ["FIGURES", "pairs_block"]
+__all__ = ["FIGURES", "PAIRS_IN_PANEL", "pairs_block"]
 
 FIGURES = (
-    ("bits given the class", "bits"),
-    ("95 % interval", "interval"),
-    ("bits without the class", "marginal"),
-    ("what the class explains", "outcome"),
-    ("Cramér’s V", "cramers_v"),
+    ("bits", "bits given the class"),
+    ("corrected", "less what chance shows"),
+    ("interval", "95 % interval"),
+    ("upper", "at most, 95 %"),
+    ("twice", "counted twice by naive, bits"),
+    ("marginal", "bits without the class"),
+    ("outcome", "what the class explains"),
+    ("cramers_v", "Cramér’s V"),
     ("statistic", "statistic"),
     ("df", "df"),
-    ("adjusted p", "adjusted_p"),
+    ("adjusted_p", "adjusted p"),
     ("method", "method"),
-    ("sample carries it", "carried"),
-    ("smallest expected", "min_expected"),
-    ("detectable bits", "detectable"),
+    ("carried", "sample carries it"),
+    ("min_expected", "smallest expected"),
+    ("detectable", "detectable bits"),
     ("verdict", "verdict"),
 )
-"""The figures of a pair in the order in which the panel lists them: what each is called, and its field of a row."""
+"""The figures of a pair in the order in which the panel lists them: key, and what it is called."""
+
+PAIRS_IN_PANEL = 10_000
+"""The strongest pairs that the panel knows; those that a structure joins come on top."""
+
+_DASH = "–"
 
 
 def pairs_block(document: Mapping[str, Any]) -> Markup:
-    """Write every listed pair for the panel: its two attributes by number, then its figures as printed."""
+    """Write the pairs for the panel: its two attributes by number, its sentences, its figures as printed."""
     number = {name: place for place, name in enumerate(document["attributes"])}
-    rows = (pair_row(pair, frozenset()) for pair in document["pairs"])
+    told = list(PAIR_SENTENCES)
+    rows = []
+    for pair in _known(document):
+        figures = _figures(pair)
+        sentences = [told.index(one) for one in pair_sentences(pair, figures["twice"])]
+        rows.append([number[pair["a"]], number[pair["b"]], sentences, *(figures[key] for key, _ in FIGURES)])
     return json_block(
         "panel",
         {
+            "class": document["class"],
+            "negligible": f"{document['settings']['negligible']:g}",
             "names": document["attributes"],
-            "labels": [label for label, _ in FIGURES],
-            "pairs": [[number[row.a], number[row.b], *_figures(row)] for row in rows],
+            "figures": FIGURES,
+            "sentences": list(PAIR_SENTENCES.values()),
+            "pairs": rows,
         },
     )
 
 
-def _figures(row: PairRow) -> list[str]:
-    return [getattr(row, field) for _, field in FIGURES]
+def _known(document: Mapping[str, Any]) -> list[Mapping[str, Any]]:
+    joined = {frozenset((edge["parent"], edge["child"])) for one in document["structures"] for edge in one["edges"]}
+    ranked = sorted(document["pairs"], key=lambda one: -one["bits"])
+    rest = (pair for pair in ranked[PAIRS_IN_PANEL:] if frozenset((pair["a"], pair["b"])) in joined)
+    return [*ranked[:PAIRS_IN_PANEL], *rest]
+
+
+def _figures(pair: Mapping[str, Any]) -> dict[str, str]:
+    """Print the figures of a pair; those that the ledger has too, as there."""
+    return {
+        **vars(pair_row(pair, frozenset())),
+        "corrected": _DASH if pair["bits_corrected"] is None else fixed(max(0.0, pair["bits_corrected"]), 4),
+        "upper": _DASH if pair["bits_at_most"] is None else fixed(pair["bits_at_most"], 4),
+        "twice": _DASH if pair["double_counted_bits"] is None else fixed(pair["double_counted_bits"], 4),
+    }

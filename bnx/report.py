@@ -5,23 +5,19 @@ from dataclasses import dataclass
 from pathlib import PurePath
 from typing import Any
 
-from markupsafe import Markup
-
 from bnx.charts import HeatMap, heat_map
-from bnx.embedding import embed
 from bnx.findings import Findings, drawn_pairs, findings
 from bnx.method_words import GLOSSARY, SOURCES, VERDICTS_READ
 from bnx.metric_charts import MetricChart, metric_charts
 from bnx.pair_figures import pairs_block
+from bnx.pair_tables_page import tables_block
 from bnx.printed import (
     AttributeRow,
     CurveTable,
-    EdgeRow,
     PairRow,
     ScoreRow,
     attribute_rows,
     curve_table,
-    edge_row,
     pair_row,
     score_row,
 )
@@ -36,10 +32,10 @@ from bnx.score_tables import (
     why_below,
 )
 from bnx.setting_words import SettingRow, setting_rows
+from bnx.structure_rows import Drawn, Sliders, draw_structure, edges_block, sliders
 
 __all__ = [
     "ATTRIBUTES_ON_PAGE",
-    "EDGES_ON_PAGE",
     "LINES_ON_PAGE",
     "PAIRS_ON_PAGE",
     "Report",
@@ -49,8 +45,6 @@ __all__ = [
 
 PAIRS_ON_PAGE = 300
 """Rows of the ledger of pairs that the page shows, strongest first."""
-EDGES_ON_PAGE = 300
-"""Rows of the ledger of each structure that the page shows, strongest first."""
 ATTRIBUTES_ON_PAGE = 300
 """Attributes that the page lists, those with most bits first."""
 LINES_ON_PAGE = 100
@@ -62,20 +56,6 @@ _ADJUSTMENTS = {
     "by": "after adjustment for the number of pairs (Benjamini and Yekutieli)",
     "none": "without any adjustment for the number of pairs",
 }
-
-
-@dataclass(frozen=True)
-class Drawn:
-    """One structure: its drawing (empty without a drawing engine) and its ledger.
-
-    ``edges`` are the strongest of ``edges_total``.
-    """
-
-    score: ScoreRow
-    picture: Markup
-    edges: tuple[EdgeRow, ...]
-    edges_total: int
-    is_open: bool
 
 
 @dataclass(frozen=True)
@@ -99,6 +79,7 @@ class Report:
     has_holdout: bool
     reliability: tuple[ReliabilityChart, ...]
     structures: tuple[Drawn, ...]
+    sliders: Sliders | None
     metrics: tuple[MetricChart, ...]
     differences: DifferenceTable | None
     classes: tuple[ClassTable, ...]
@@ -126,7 +107,7 @@ class Report:
     @property
     def by_blanks(self) -> bool:
         """Tell whether an edge listed is carried by blank cells."""
-        return any(edge.by_blanks for one in self.structures for edge in one.edges)
+        return any(edge.by_blanks for one in self.structures for _, edge in one.ledger)
 
 
 def report_html(comparison: Mapping[str, Any], pictures: Mapping[str, str]) -> str:
@@ -139,7 +120,11 @@ def report_html(comparison: Mapping[str, Any], pictures: Mapping[str, str]) -> s
         FormatError: a picture is no SVG.
     """
     report, styles = summarise(comparison, pictures)
-    return page_html(report, styles, (pairs_block(comparison),))
+    return page_html(
+        report,
+        styles,
+        (edges_block(comparison, _ordered(comparison)), pairs_block(comparison), tables_block(comparison)),
+    )
 
 
 def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple[Report, tuple[str, ...]]:
@@ -148,8 +133,8 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
     drawn = drawn_pairs(chosen)
     ranked = sorted(document["structures"], key=lambda one: (one["log_loss"] is None, one["log_loss"] or 0.0))
     structures, styles = [], dict.fromkeys("")
-    for number, entry in enumerate(ranked):
-        one, rules = _drawn(document, entry, pictures.get(entry["name"], ""), f"s{number}")
+    for prefix, entry in _ordered(document):
+        one, rules = draw_structure(document, entry, pictures.get(entry["name"], ""), prefix)
         structures.append(one)
         styles.update(dict.fromkeys(rules))
     settings, metrics = document["settings"], metric_charts(document)
@@ -171,6 +156,7 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         has_holdout=any("holdout" in one for one in ranked),
         reliability=reliability_charts(document),
         structures=tuple(structures),
+        sliders=sliders(document["structures"]),
         metrics=metrics,
         differences=difference_table(metrics),
         classes=class_tables(document),
@@ -202,17 +188,11 @@ def _strongest_pairs(document: Mapping[str, Any]) -> list[Mapping[str, Any]]:
     return sorted(document["pairs"], key=lambda one: -one["bits"])[:PAIRS_ON_PAGE]
 
 
-def _drawn(
-    document: Mapping[str, Any], entry: Mapping[str, Any], svg: str, prefix: str
-) -> tuple[Drawn, tuple[str, ...]]:
-    picture = embed(svg, prefix) if svg else None
-    tries = document["folds"] * document["settings"]["repeats"]
-    strongest = sorted(entry["edges"], key=lambda one: -one["bits"])
-    one = Drawn(
-        score=score_row(document, entry),
-        picture=Markup(picture.markup) if picture else Markup(),
-        edges=tuple(edge_row(edge, tries) for edge in strongest[:EDGES_ON_PAGE]),
-        edges_total=len(strongest),
-        is_open=entry["name"] == document["recommended"]["name"],
+def _ordered(document: Mapping[str, Any]) -> list[tuple[str, Mapping[str, Any]]]:
+    """Put the recommended structure first, the others by log loss; each with the prefix of the ids of its drawing."""
+    chosen = document["recommended"]["name"]
+    ranked = sorted(
+        document["structures"],
+        key=lambda one: (one["name"] != chosen, one["log_loss"] is None, one["log_loss"] or 0.0),
     )
-    return one, picture.styles if picture else ()
+    return [(f"s{number}", entry) for number, entry in enumerate(ranked)]

@@ -12,7 +12,10 @@ __all__ = ["SCRIPTS", "STYLES", "page_html"]
 
 STYLES = ("base", "controls", "answer", "structures", "scores", "pairs", "pair_panel", "attributes", "print")
 """Style sheets in the order in which they are joined."""
-SCRIPTS = ("page", "theme", "pair_panel", "links", "metrics", "start")
+SCRIPTS = (
+    *("page", "theme", "words", "edges", "late_edges", "fold_dots", "pair_tables", "pair_panel", "links", "drawing"),
+    *("sifting", "compare", "structures", "metrics", "start"),
+)
 """Scripts in the order in which they are joined."""
 
 _UNPRINTABLE = {code: "\ufffd" for code in (*range(32), *range(127, 160)) if chr(code) not in "\t\n\r"}

@@ -31,7 +31,8 @@ FLOORS = (
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
     "chosen score_entries mix_documents yardstick_documents curve_documents listed_pairs pair_table_entries documents "
     "charts reliability_words sureness counted_twice findings metric_charts printed score_tables setting_words method_words "
-    "reliability_chart report_data report_page pair_figures report results tested_text tested_picture",
+    "reliability_chart report_data report_page edge_words pair_figures pair_tables_page structure_rows "
+    "report results tested_text tested_picture",
     "cli",
 )
 PLACES = {name: (floor, place) for floor, names in enumerate(FLOORS) for place, name in enumerate(names.split())}

@@ -17,8 +17,9 @@ from bnx.documents import pair_results
 from bnx.formats.dot import dot_source
 from bnx.layers import parents_first
 from bnx.picture import MANY_ARROWS, MANY_CHIPS, Arrow, Chip, Picture, Verdict, showing
-from bnx.report import ATTRIBUTES_ON_PAGE, EDGES_ON_PAGE, LINES_ON_PAGE, report_html
+from bnx.report import ATTRIBUTES_ON_PAGE, LINES_ON_PAGE, report_html
 from bnx.results import draw_all
+from bnx.structure_rows import EDGES_ON_PAGE
 
 
 def crowd(attributes: int, arrows: list[tuple[int, int, float, Verdict]]) -> Picture:

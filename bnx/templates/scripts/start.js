@@ -1,4 +1,4 @@
 // Starts every part of the page.
 
-for (const start of [startTheme, startPairPanel, startLinks, startScores]) start();
+for (const start of [startTheme, startPairPanel, startStructures, startLinks, startScores]) start();
 document.documentElement.classList.add("scripted");

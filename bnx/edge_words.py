@@ -1,0 +1,104 @@
+"""What is said of an edge, of an attribute and of a pair: sentences with places for figures printed elsewhere.
+
+A place is a name in braces. The page's scripts fill the places with the figures of one edge, attribute or pair, so that
+a sentence stands on the page once, however many edges there are.
+"""
+
+from collections.abc import Mapping
+from types import MappingProxyType
+from typing import Any
+
+__all__ = ["CHIP_SENTENCES", "EDGE_CLAUSES", "PAIR_SENTENCES", "WHAT_IF", "pair_sentences", "what_if"]
+
+EDGE_CLAUSES = MappingProxyType(
+    {
+        "bits": "{bits} bits given {class}",
+        "gain": "held-out gain {gain} ± {error} bits per record",
+        "chosen": "chosen in {chosen} folds",
+        "stability": "joined again in {stability} of the random halves",
+        "gate": "gate p {gate}",
+        "given": "tested given {given} as well",
+        "blanks": "carried by blank cells",
+        "verdict": "verdict: {verdict}",
+    }
+)
+"""Clauses on an edge, by the figure without which the clause is left out."""
+
+CHIP_SENTENCES = MappingProxyType(
+    {
+        "shared": "{bits} bits shared with {class}",
+        "levels": "{levels}",
+        "parents": "parents besides {class}: {parents}",
+        "children": "children: {children}",
+    }
+)
+"""Clauses on an attribute, by what they tell."""
+
+_SURE = "more than folds differ by chance"
+WHAT_IF = MappingProxyType(
+    {
+        "lose": f"Without it {{structure}} would lose {{amount}} ± {{error}} bits per record on records it did not"
+        f" learn from, {_SURE}.",
+        "gain": f"Without it {{structure}} would even gain {{amount}} ± {{error}} bits per record on records it did not"
+        f" learn from, {_SURE}.",
+        "may lose": "Whether it helps cannot be told: without it {structure} would lose {amount} ± {error} bits per"
+        " record on records it did not learn from, and folds differ by as much by chance.",
+        "may gain": "Whether it helps cannot be told: without it {structure} would gain {amount} ± {error} bits per"
+        " record on records it did not learn from, and folds differ by as much by chance.",
+        "same": "It makes no difference that could be told: without it {structure} would be as good, within ± {error}"
+        " bits per record, on records it did not learn from.",
+        "rare": "Whether it helps cannot be told: only {chosen} folds learnt it.",
+    }
+)
+"""What would change if one edge were left out, by what its held-out gain says."""
+
+PAIR_SENTENCES = MappingProxyType(
+    {
+        "dependent": "Dependent: given {class} the two share {bits} bits more than chance would show in an average"
+        " record, and the test rejects independence (adjusted p {p}).",
+        "detected, but negligible": "Dependent, but so little that it is negligible: even the upper end of what they"
+        " may share given {class}, {upper} bits, lies below {negligible} bits.",
+        "negligible": "Independent enough: the test found no dependence given {class}, and even the upper end of what"
+        " they may share, {upper} bits, lies below {negligible} bits.",
+        "blunt": "Not tested well enough: no dependence was found given {class}, but with 80 % power this sample would"
+        " only have found one of at least {detectable} bits. Do not take the two as independent.",
+        "untested": "Not tested: these records allow no test that could reject independence given {class}. Do not take"
+        " the two as independent.",
+        "bounded": "They may share up to {upper} bits.",
+        "twice": "Because of this pair naive counts {twice} bits of evidence about {class} twice in an average record.",
+        "too little": "Because of this pair naive counts {less} bits of evidence about {class} too little in an average"
+        " record.",
+        "harmless": "What naive counts twice because of this pair rounds to nothing in an average record: {twice} bits.",
+    }
+)
+"""What a pair's verdict means, where *not enough data* has two reasons, and what naive makes of the pair."""
+
+
+def what_if(edge: Mapping[str, Any], tries: int, amount: str) -> str:
+    """Say which sentence of WHAT_IF an edge of the document calls for.
+
+    tries: folds x repeats; amount: the size of its gain as printed, which may be all noughts.
+    """
+    if 2 * edge["chosen_in"] < tries:
+        return "rare"
+    if edge["verdict"] in ("gains", "loses"):
+        return "lose" if edge["verdict"] == "gains" else "gain"
+    if not amount.strip("0."):
+        return "same"
+    return "may lose" if edge["gain"] > 0 else "may gain"
+
+
+def pair_sentences(pair: Mapping[str, Any], twice: str) -> tuple[str, ...]:
+    """Say which of PAIR_SENTENCES a pair of the document calls for, in their order.
+
+    twice: the bits counted twice as printed, which may be all noughts or a dash.
+    """
+    told = [pair["verdict"]]
+    if pair["verdict"] == "not enough data":
+        told = ["untested" if pair["detectable_bits"] is None else "blunt"]
+        told += ["bounded"] if pair["bits_at_most"] is not None else []
+    if pair["double_counted_bits"] is not None:
+        told.append(
+            "harmless" if not twice.strip("-0.") else "twice" if pair["double_counted_bits"] > 0 else "too little"
+        )
+    return tuple(told)
