@@ -19,7 +19,6 @@ from bnx.printed import (
     attribute_rows,
     curve_table,
     pair_row,
-    score_row,
 )
 from bnx.reliability_chart import ReliabilityChart, reliability_charts
 from bnx.report_page import page_html
