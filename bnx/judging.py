@@ -108,7 +108,7 @@ def reason_for(
         return "It is the only structure compared."
     matters = f"an amount that matters (more than {region_of(means):.2g} bits)"
     least = not any(len(one.edges) < len(structures[chosen].edges) for one in structures)
-    fewer = "none has fewer edges" if least else f"each one with fewer edges is probably worse by {matters}"
+    fewer = "none has fewer edges" if least else f"each structure with fewer edges is probably worse by {matters}"
     if not structures[chosen].edges and chosen == best:
         return "It has the lowest log loss and no edges: no dependence pays here."
     if chosen == best:

@@ -49,6 +49,7 @@ _VALUES = {
         "bh": "bh: Benjamini and Hochberg, false-discovery rate",
         "by": "by: Benjamini and Yekutieli, false-discovery rate",
         "holm": "holm: Holm, family-wise rate",
+        "none": "none: every pair at the level of the tests",
     },
     "bins": {"auto": "auto: chosen inside every training fold, by held-out log loss"},
     "smoothing": {"auto": "auto: chosen inside every training fold, by held-out log loss"},

@@ -1,16 +1,13 @@
 """How sure a structure is of itself before correction, as sentences for the first screen."""
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
-from bnx.reliability_words import sure
+from bnx.reliability_words import ABOUT_RIGHT, strayed, sure
 from bnx.text import fixed
 
 __all__ = ["Sureness", "sureness"]
-
-_RIGHT = (0.95, 1.05)
-_FAR = 0.05  # answers further apart are not as sure as one another
 
 
 @dataclass(frozen=True)
@@ -35,7 +32,7 @@ def sureness(document: Mapping[str, Any]) -> Sureness:
     factor = entry["temperature"] if tempered else entry["calibration_slope"]
     if factor is None:
         return Sureness(entry["name"], "unknown", "", "Not measured: there are too few mistakes to tell.")
-    kind = "over" if factor < _RIGHT[0] else "timid" if factor > _RIGHT[1] else "right"
+    kind = "over" if factor < ABOUT_RIGHT[0] else "timid" if factor > ABOUT_RIGHT[1] else "right"
     parts = [_worth(document, entry["name"], kind, fixed(factor, 2)), _answers(document, entry["name"], kind)]
     parts.append(_others(document, entry["name"]) if tempered else "Nothing was corrected (--no-temperature).")
     return Sureness(entry["name"], kind, fixed(factor, 2), " ".join(part for part in parts if part))
@@ -65,26 +62,14 @@ def _answers(document: Mapping[str, Any], name: str, kind: str) -> str:
     found = document["reliability"].get(name)
     if found is None or found["before"] is None or kind == "right":
         return ""
-    straying = [one for one in found["before"]["bins"] if _strays(one, kind)]
-    if not straying:
+    groups = strayed(found["before"]["bins"], found["after"]["bins"], over=kind == "over", timid=kind == "timid")
+    if groups is None:
         return "No group of its answers strayed from what it said by more than chance."
-    worst = max(straying, key=lambda one: abs(one["mean_probability"] - one["share_right"]) * one["rows"])
+    worst, near = groups
     if not document["settings"]["temperature"]:
         return f"What it calls {_right(worst)}."
     told = f"Uncorrected, what it calls {_right(worst)}"
-    near = _nearest(found["after"]["bins"], worst["mean_probability"])
     return f"{told}; corrected, what it calls {_right(near)}." if near else f"{told}; corrected, it is never that sure."
-
-
-def _strays(one: Mapping[str, Any], kind: str) -> bool:
-    """Tell whether what a group says lies outside the interval of how often it is right, on the side kind names."""
-    low, high = one["interval"]
-    return bool(one["mean_probability"] > high if kind == "over" else one["mean_probability"] < low)
-
-
-def _nearest(bins: Sequence[Mapping[str, Any]], said: float) -> Mapping[str, Any] | None:
-    near = min(bins, key=lambda one: abs(one["mean_probability"] - said))
-    return near if abs(near["mean_probability"] - said) <= _FAR else None
 
 
 def _right(one: Mapping[str, Any]) -> str:

@@ -111,13 +111,13 @@ def test_the_reason_is_said_in_plain_words() -> None:
     assert reason((2,), 0, 0) == "It is the only structure compared."
     assert reason((0, 2), 0, 0) == "It has the lowest log loss and no edges: no dependence pays here."
     assert reason((2, 0), 0, 0) == (
-        "It has the lowest log loss, and each one with fewer edges is probably worse by an amount that matters (more "
-        "than 0.01 bits)."
+        "It has the lowest log loss, and each structure with fewer edges is probably worse by an amount that matters "
+        "(more than 0.01 bits)."
     )
     assert reason((1, 1, 2), 0, 0) == "It has the lowest log loss, and none has fewer edges."
     assert reason((2, 2, 0), 0, 1) == (
-        "From all rows it learnt the same edges as s0, which has the lowest log loss; each one with fewer edges is "
-        "probably worse by an amount that matters (more than 0.01 bits)."
+        "From all rows it learnt the same edges as s0, which has the lowest log loss; each structure with fewer edges "
+        "is probably worse by an amount that matters (more than 0.01 bits)."
     )
     assert reason((0, 0), 0, 1) == (
         "From all rows it learnt the same edges as s0, which has the lowest log loss: none, so no dependence pays here."
