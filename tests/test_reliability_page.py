@@ -5,8 +5,8 @@ import re
 from typing import Any
 
 import pytest
+from readpage import Page
 from smallrun import small_run
-from test_report import Page
 
 from bnx.reliability_chart import reliability_charts
 from bnx.reliability_words import calibration_words, sure
