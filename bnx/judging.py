@@ -14,7 +14,7 @@ from bnx.picking import apart, pick, region_of
 from bnx.rating import StructureScore
 from bnx.structure import Structure
 
-__all__ = ["Against", "Recommendation", "against", "inner_picks", "mixed_picks", "recommend"]
+__all__ = ["Against", "Recommendation", "against", "inner_picks", "mixed_picks", "reason_for", "recommend"]
 
 
 @dataclass(frozen=True)
@@ -87,10 +87,11 @@ def recommend(
     structures = evaluations[0].learned(()).structures
     means = [result.pooled.log_loss for result in results]
     best, chosen, chances = pick(losses, structures, means, folds)
-    return Recommendation(best, chosen, _reason(names, structures, means, best, chosen, chances), honest, tuple(picks))
+    reason = reason_for(names, structures, means, best, chosen, chances)
+    return Recommendation(best, chosen, reason, honest, tuple(picks))
 
 
-def _reason(
+def reason_for(
     names: Sequence[str],
     structures: Sequence[Structure],
     means: Sequence[float],
@@ -98,12 +99,16 @@ def _reason(
     chosen: int,
     chances: Chances,
 ) -> str:
-    """Say why a structure is recommended."""
+    """Say why a structure is recommended.
+
+    names, structures, means: of all compared, mean log losses in bits; best, chosen: numbers; chances: of the chosen
+    against the best.
+    """
     if len(names) == 1:
         return "It is the only structure compared."
-    fewer = (
-        f"every structure with fewer edges is more likely than not to be worse by more than {region_of(means):.2g} bits"
-    )
+    matters = f"an amount that matters (more than {region_of(means):.2g} bits)"
+    least = not any(len(one.edges) < len(structures[chosen].edges) for one in structures)
+    fewer = "none has fewer edges" if least else f"each structure with fewer edges is probably worse by {matters}"
     if not structures[chosen].edges and chosen == best:
         return "It has the lowest log loss and no edges: no dependence pays here."
     if chosen == best:
@@ -112,7 +117,7 @@ def _reason(
         same = f"From all rows it learnt the same edges as {names[best]}, which has the lowest log loss"
         return f"{same}; {fewer}." if structures[chosen].edges else f"{same}: none, so no dependence pays here."
     return (
-        f"It has the fewest edges of all structures that are not credibly worse than the best, {names[best]}: the "
-        f"difference is {means[chosen] - means[best]:.4f} bits, with a chance of {chances.worse:.0%} to exceed "
-        f"{region_of(means):.2g} bits."
+        f"It has the fewest edges of all that are probably as good as the best, {names[best]}: it is behind by "
+        f"{means[chosen] - means[best]:.4f} bits, and the chance that it is worse by {matters} is "
+        f"{100 * chances.worse:.0f} %."
     )

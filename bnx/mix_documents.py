@@ -69,10 +69,15 @@ def mix_reason(mix: JudgedMix, names: Sequence[str], recommended: str) -> str:
         return f"Not offered: of all rows, {names[next(iter(mix.members))]} takes all the weight."
     if mix.apart is None:
         return "Not offered: it cannot be compared, as a log loss is infinite."
-    against = (
-        f"fold by fold its honest log loss differs from that of the recommended structure by {signed(mix.apart.mean)} "
-        f"bits [{signed(mix.apart.low)}, {signed(mix.apart.high)}], and it is better with a chance of {mix.better:.0%}"
+    saves = mix.apart.mean <= 0
+    low, high = (-mix.apart.high, -mix.apart.low) if saves else (mix.apart.low, mix.apart.high)
+    gain = f"{'saves' if saves else 'costs'} {abs(mix.apart.mean):.3f} bits [{signed(low)}, {signed(high)}]"
+    likely = "which can be chance" if low <= 0 <= high else "more than chance"
+    told = f"fold by fold it {gain} against what is picked without the fold, {likely}"
+    chance = f"better with a chance of {100 * mix.better:.0f} %"
+    if not mix.offered:
+        return f"Not offered: {told}; it is {chance}."
+    return (
+        f"Offered beside {recommended}: take {recommended} where one graph has to be explained or handed over, the mix "
+        f"where only the probabilities count. It is {chance}: {told}."
     )
-    if mix.offered:
-        return f"Offered beside {recommended}: {against}."
-    return f"Not offered: {against}."

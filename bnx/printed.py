@@ -4,7 +4,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
-from bnx.findings import percent
+from bnx.findings import chance, percent
 from bnx.text import fixed, signed
 
 __all__ = [
@@ -20,7 +20,6 @@ __all__ = [
     "mix_row",
     "pair_row",
     "score_row",
-    "setting",
     "yardstick_row",
 ]
 
@@ -37,8 +36,9 @@ _METHODS = {
 
 @dataclass(frozen=True)
 class ScoreRow:
-    """One structure in the table of scores, as printed."""
+    """One row in the table of scores, as printed; ``kind``: ``structure``, ``mix`` or ``yardstick``."""
 
+    kind: str
     name: str
     words: str
     role: str
@@ -52,8 +52,11 @@ class ScoreRow:
     better: str
     brier: str
     accuracy: str
+    balanced: str
     auc: str
     calibration: str
+    classwise: str
+    slope: str
     temperature: str
     smoothing: str
     holdout: str
@@ -154,6 +157,7 @@ def score_row(document: Mapping[str, Any], entry: Mapping[str, Any]) -> ScoreRow
     }
     role = ", ".join(word for word, name in roles.items() if name == entry["name"])
     return ScoreRow(
+        kind="structure",
         name=entry["name"],
         words=entry["words"],
         role=role,
@@ -164,11 +168,14 @@ def score_row(document: Mapping[str, Any], entry: Mapping[str, Any]) -> ScoreRow
         difference=_DASH if against["difference"] is None else signed(against["difference"]),
         interval=_range(against["interval"]),
         p_value=_p(against["p_value"]),
-        better=percent(against["probability_better"]),
+        better=chance(against["probability_better"]),
         brier=_number(entry["brier"]),
         accuracy=_number(entry["accuracy"]),
+        balanced=_number(entry["balanced_accuracy"]),
         auc=_number(entry["auc"]),
         calibration=_number(entry["calibration_error"]),
+        classwise=_number(entry["classwise_calibration_error"]),
+        slope=_number(entry["calibration_slope"], 2),
         temperature=_number(entry["temperature"], 2),
         smoothing=entry["smoothing"],
         holdout=_loss(entry["holdout"]["log_loss"]) if "holdout" in entry else "",
@@ -177,20 +184,20 @@ def score_row(document: Mapping[str, Any], entry: Mapping[str, Any]) -> ScoreRow
 
 def mix_row(entry: Mapping[str, Any]) -> ScoreRow:
     """Write the scores of the mix, which has no edges, tables and temperature of its own."""
-    return _row_of_none({"name": "mix", **entry}, "offered" if entry["offered"] else "not offered")
+    return _row_of_none({"name": "mix", **entry}, "mix", "offered" if entry["offered"] else "not offered")
 
 
 def yardstick_row(entry: Mapping[str, Any]) -> ScoreRow:
     """Write the scores of a model that is no structure."""
     against = {"p_value": None, "probability_better": None, **entry["against_baseline"]}
-    return _row_of_none({"words": "not a structure", **entry, "against_baseline": against}, "")
+    return _row_of_none({"words": "not a structure", **entry, "against_baseline": against}, "yardstick", "")
 
 
-def _row_of_none(entry: Mapping[str, Any], role: str) -> ScoreRow:
+def _row_of_none(entry: Mapping[str, Any], kind: str, role: str) -> ScoreRow:
     """Write the scores of what is no structure."""
     own = {"edges": [], "free_parameters": 0, "temperature": None, "smoothing": "", **entry}
     nobody = {"recommended": {"name": ""}, "best": "", "settings": {"baseline": ""}}
-    return replace(score_row(nobody, own), role=role, edges=_DASH, parameters=_DASH)
+    return replace(score_row(nobody, own), kind=kind, role=role, edges=_DASH, parameters=_DASH)
 
 
 def curve_table(curve: Mapping[str, Any]) -> CurveTable:
@@ -283,12 +290,3 @@ def attribute_rows(schema: Sequence[Mapping[str, Any]], most_rows: int) -> tuple
         )
         for one in sorted(schema, key=lambda one: -one["bits_with_class"])[:most_rows]
     )
-
-
-def setting(value: Any) -> str:
-    """Write the value of a setting in words."""
-    if isinstance(value, list):
-        return ", ".join(str(one) for one in value) or "none"
-    if isinstance(value, bool):
-        return "yes" if value else "no"
-    return "none" if value == "" else str(value)

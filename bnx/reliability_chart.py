@@ -4,8 +4,8 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
-from bnx.charts import round_ticks
 from bnx.reliability_words import calibration_words, sure
+from bnx.ticks import round_ticks
 
 __all__ = ["ReliabilityChart", "ReliabilityMark", "ReliabilityRow", "ReliabilitySide", "reliability_charts"]
 

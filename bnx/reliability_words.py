@@ -5,10 +5,11 @@ from typing import Any
 
 from bnx.text import fixed
 
-__all__ = ["calibration_words", "sure"]
+__all__ = ["ABOUT_RIGHT", "calibration_words", "strayed", "sure"]
 
-_ABOUT_ONE = (0.95, 1.05)
-_FAR = 0.1  # answers further apart are not nearly as sure as one another
+ABOUT_RIGHT = (0.95, 1.05)
+"""Temperatures at which evidence is taken to be worth its face value."""
+_FAR = 0.05  # answers further apart are not as sure as one another
 
 
 def sure(share: float) -> str:
@@ -38,9 +39,9 @@ def calibration_words(document: Mapping[str, Any], name: str) -> str:
 def _temperature(name: str, temperature: float, dependent: int) -> str:
     """Say how much evidence counts, and why it may be less than all."""
     told = f"{'Naive Bayes' if name == 'naive' else name}: evidence counts"
-    if temperature > _ABOUT_ONE[1]:
+    if temperature > ABOUT_RIGHT[1]:
         return f"{told} more than its face value, {temperature:.2f} of it: as counted, it was too timid."
-    if temperature >= _ABOUT_ONE[0]:
+    if temperature >= ABOUT_RIGHT[0]:
         return f"{told} at about its face value ({temperature:.2f} of it)."
     told = f"{told} {temperature:.2f} of its face value"
     if not dependent:
@@ -48,22 +49,39 @@ def _temperature(name: str, temperature: float, dependent: int) -> str:
     return f"{told}, so it {'double-counts' if name == 'naive' else 'still counts some of it more than once'} here."
 
 
-def _off(one: Mapping[str, Any]) -> bool:
-    """Tell whether what a bin says lies outside the interval of how often it was right."""
-    return not one["interval"][0] <= one["mean_probability"] <= one["interval"][1]
+def strayed(
+    before: Sequence[Mapping[str, Any]], after: Sequence[Mapping[str, Any]], over: bool = True, timid: bool = True
+) -> tuple[Mapping[str, Any], Mapping[str, Any] | None] | None:
+    """Find the group of answers that strayed furthest from what it said, and the group as sure as it afterwards.
+
+    before, after: bins of a reliability curve. over, timid: on which sides straying counts. A group strays where what
+    it says lies outside the interval of how often it was right; the furthest has most wrongly told records. The second
+    is None where afterwards no group is as sure; nothing at all where none strayed.
+    """
+    straying = [one for one in before if (over and _is_over(one)) or (timid and _is_timid(one))]
+    if not straying:
+        return None
+    worst = max(straying, key=lambda one: abs(one["mean_probability"] - one["share_right"]) * one["rows"])
+    near = min(after, key=lambda one: abs(one["mean_probability"] - worst["mean_probability"]))
+    return worst, near if abs(near["mean_probability"] - worst["mean_probability"]) <= _FAR else None
+
+
+def _is_over(one: Mapping[str, Any]) -> bool:
+    return bool(one["mean_probability"] > one["interval"][1])
+
+
+def _is_timid(one: Mapping[str, Any]) -> bool:
+    return bool(one["mean_probability"] < one["interval"][0])
 
 
 def _answers(before: Sequence[Mapping[str, Any]], after: Sequence[Mapping[str, Any]]) -> str:
     """Tell how often the answers that strayed furthest were right, and what became of answers as sure as they."""
-    straying = [one for one in before if _off(one)]
-    if not straying:
+    found = strayed(before, after)
+    if found is None:
         return "Before calibration no group of answers strayed from what it said by more than chance."
-    worst = max(straying, key=lambda one: abs(one["mean_probability"] - one["share_right"]) * one["rows"])
-    near = min(after, key=lambda one: abs(one["mean_probability"] - worst["mean_probability"]))
+    worst, near = found
     told = f"Before calibration, its answers that were {_right(worst)} of records"
-    if abs(near["mean_probability"] - worst["mean_probability"]) > _FAR:
-        return f"{told}; after it, no group of answers is nearly as sure."
-    return f"{told}; after it, those that were {_right(near)}."
+    return f"{told}; after it, those that were {_right(near)}." if near else f"{told}; after it, it is never that sure."
 
 
 def _right(one: Mapping[str, Any]) -> str:

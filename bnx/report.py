@@ -5,8 +5,9 @@ from dataclasses import dataclass
 from pathlib import PurePath
 from typing import Any
 
-from bnx.charts import FoldChart, fold_chart
 from bnx.findings import Findings, drawn_pairs, findings
+from bnx.method_words import GLOSSARY, SOURCES, VERDICTS_READ
+from bnx.metric_charts import MetricChart, metric_charts
 from bnx.pair_figures import pairs_block
 from bnx.pair_rows import PairLedger, pair_ledger
 from bnx.pair_tables_page import tables_block
@@ -16,13 +17,18 @@ from bnx.printed import (
     ScoreRow,
     attribute_rows,
     curve_table,
-    mix_row,
-    score_row,
-    setting,
-    yardstick_row,
 )
 from bnx.reliability_chart import ReliabilityChart, reliability_charts
 from bnx.report_page import page_html
+from bnx.score_tables import (
+    ClassTable,
+    DifferenceTable,
+    class_tables,
+    difference_table,
+    ranked_rows,
+    why_below,
+)
+from bnx.setting_words import SettingRow, setting_rows
 from bnx.structure_rows import Drawn, Sliders, draw_structure, edges_block, sliders
 from bnx.triangle import Triangle, triangle, triangle_block
 
@@ -61,16 +67,17 @@ class Report:
     repeats: int
     findings: Findings
     scores: tuple[ScoreRow, ...]
-    mix: ScoreRow | None
+    why_below: str
     mix_reason: str
-    yardsticks: tuple[ScoreRow, ...]
     yardstick_sentences: tuple[str, ...]
     curve: CurveTable | None
     has_holdout: bool
     reliability: tuple[ReliabilityChart, ...]
     structures: tuple[Drawn, ...]
     sliders: Sliders | None
-    folds_chart: FoldChart | None
+    metrics: tuple[MetricChart, ...]
+    differences: DifferenceTable | None
+    classes: tuple[ClassTable, ...]
     pairs: PairLedger
     pairs_total: str
     pairs_rejected: str
@@ -79,13 +86,18 @@ class Report:
     attributes: tuple[AttributeRow, ...]
     left_out: tuple[tuple[str, str], ...]
     left_out_total: int
-    settings: tuple[tuple[str, str], ...]
+    weighted: bool
+    settings: tuple[SettingRow, ...]
+    seed: int
     versions: tuple[tuple[str, str], ...]
     warnings: tuple[str, ...]
     warnings_total: int
     alpha: str
     adjust: str
     negligible: str
+    sources: tuple[tuple[str, str], ...]
+    verdicts_read: tuple[tuple[str, str], ...]
+    glossary: tuple[tuple[str, str], ...]
 
     @property
     def by_blanks(self) -> bool:
@@ -124,7 +136,7 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         one, rules = draw_structure(document, entry, pictures.get(entry["name"], ""), prefix)
         structures.append(one)
         styles.update(dict.fromkeys(rules))
-    settings = document["settings"]
+    settings, metrics = document["settings"], metric_charts(document)
     triangular = triangle(document, drawn)
     report = Report(
         target=document["class"],
@@ -136,17 +148,18 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         folds=document["folds"],
         repeats=settings["repeats"],
         findings=findings(document),
-        scores=tuple(score_row(document, one) for one in ranked),
-        mix=mix_row(document["mix"]) if document["mix"] else None,
+        scores=ranked_rows(document),
+        why_below=why_below(document),
         mix_reason=document["mix"]["reason"] if document["mix"] else "",
-        yardsticks=tuple(yardstick_row(one) for one in document["yardsticks"] or ()),
         yardstick_sentences=tuple(one["sentence"] for one in document["yardsticks"] or ()),
         curve=curve_table(document["learning_curve"]) if document["learning_curve"] else None,
         has_holdout=any("holdout" in one for one in ranked),
         reliability=reliability_charts(document),
         structures=tuple(structures),
         sliders=sliders(document["structures"]),
-        folds_chart=fold_chart(document),
+        metrics=metrics,
+        differences=difference_table(metrics),
+        classes=class_tables(document),
         pairs=pair_ledger(document, triangular.pairs if triangular else frozenset()),
         pairs_total=f"{document['pairs_total']:,}",
         pairs_rejected=f"{document['pairs_rejected']:,}",
@@ -155,13 +168,18 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         attributes=attribute_rows(document["schema"], ATTRIBUTES_ON_PAGE),
         left_out=tuple((one["name"], one["reason"]) for one in document["left_out"][:LINES_ON_PAGE]),
         left_out_total=len(document["left_out"]),
-        settings=tuple((key, setting(value)) for key, value in settings.items()),
+        weighted=bool(settings["weight"]),
+        settings=setting_rows(settings),
+        seed=settings["seed"],
         versions=tuple(document["versions"].items()),
         warnings=tuple(document["warnings"][:LINES_ON_PAGE]),
         warnings_total=len(document["warnings"]),
         alpha=f"{settings['alpha']:g}",
         adjust=_ADJUSTMENTS[settings["adjust"]],
         negligible=f"{settings['negligible']:g}",
+        sources=SOURCES,
+        verdicts_read=VERDICTS_READ,
+        glossary=GLOSSARY,
     )
     return report, tuple(styles)
 

@@ -10,11 +10,15 @@ from bnx.report_data import digest
 
 __all__ = ["SCRIPTS", "STYLES", "page_html"]
 
-STYLES = ("base", "controls", "structures", "scores", "pairs", "triangle", "pair_panel", "attributes", "print")
+STYLES = (
+    *("base", "controls", "answer", "structures", "scores", "pairs", "triangle", "pair_panel", "attributes"),
+    "print",
+)
 """Style sheets in the order in which they are joined."""
 SCRIPTS = (
-    *("page", "theme", "words", "edges", "late_edges", "fold_dots", "pair_tables", "pair_panel", "drawing", "sifting"),
-    *("compare", "structures", "pair_data", "ledger_rows", "ledger_choice", "ledger", "triangle", "start"),
+    *("page", "theme", "words", "edges", "late_edges", "fold_dots", "pair_tables", "pair_panel", "links", "drawing"),
+    *("sifting", "compare", "structures", "metrics", "pair_data", "ledger_rows", "ledger_choice", "ledger"),
+    *("triangle", "start"),
 )
 """Scripts in the order in which they are joined."""
 

@@ -8,7 +8,7 @@ from markupsafe import Markup
 
 from bnx.edge_words import CHIP_SENTENCES, EDGE_CLAUSES, WHAT_IF, what_if
 from bnx.embedding import embed
-from bnx.printed import EdgeRow, ScoreRow, confusion_rows, edge_row, score_row
+from bnx.printed import EdgeRow, ScoreRow, edge_row, score_row
 from bnx.report_data import json_block
 from bnx.text import count_of, fixed, signed
 
@@ -34,7 +34,7 @@ _COLUMNS = ("parent", "child", "bits", "gain", "error", "chosen", "stability", "
 
 @dataclass(frozen=True)
 class Drawn:
-    """One structure: its drawing (empty without a drawing engine), its ledger, its confusion table and recalls.
+    """One structure: its drawing (empty without a drawing engine) and its ledger.
 
     ``prefix`` begins the ids of its drawing. ``ledger`` holds the strongest of ``edges_total`` edges, each with the id
     of its row.
@@ -45,7 +45,6 @@ class Drawn:
     picture: Markup
     ledger: tuple[tuple[str, EdgeRow], ...]
     edges_total: int
-    confusion: tuple[tuple[str, tuple[tuple[str, str, int], ...], str], ...]
     is_open: bool
 
 
@@ -86,7 +85,6 @@ def draw_structure(
             for edge in _strongest(entry)[:EDGES_ON_PAGE]
         ),
         edges_total=len(entry["edges"]),
-        confusion=confusion_rows(entry, document["class_levels"]),
         is_open=entry["name"] == document["recommended"]["name"],
     )
     return one, picture.styles if picture else ()

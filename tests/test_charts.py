@@ -1,33 +1,66 @@
 """Where the marks of the charts stand, and pictures made fit for a page."""
 
+import copy
 from html.parser import HTMLParser
 
 import pytest
 from smallrun import small_run
 
-from bnx.charts import fold_chart, round_ticks
 from bnx.embedding import embed
+from bnx.metric_charts import metric_charts
+from bnx.ticks import round_ticks
 
 
-def test_folds_are_paired_with_the_same_fold_of_the_baseline() -> None:
+@pytest.mark.parametrize("key", ["log_loss", "brier", "accuracy", "balanced_accuracy", "auc", "calibration_error"])
+def test_folds_are_paired_with_the_same_fold_of_the_baseline_in_every_score(key: str) -> None:
     document = small_run().comparison
-    chart = fold_chart(document)
-    assert chart is not None
+    chart = next(one for one in metric_charts(document) if one.metric.key == key)
     naive, tan = document["structures"][:2]
     row = next(row for row in chart.rows if row.name == "tan")
-    differences = [
-        mine["log_loss"] - base["log_loss"] for mine, base in zip(tan["by_fold"], naive["by_fold"], strict=True)
-    ]
+    both = [(mine[key], base[key]) for mine, base in zip(tan["by_fold"], naive["by_fold"], strict=True)]
     assert [told for _, told in row.points] == [
-        f"repeat 1, fold {fold + 1}: {value:+.3f} bits" for fold, value in enumerate(differences)
+        f"fold {fold + 1}: tan {own:.3f}, naive {base:.3f}: {own - base:+.3f}" for fold, (own, base) in enumerate(both)
     ]
-    order = sorted(range(len(differences)), key=differences.__getitem__)
-    assert order == sorted(range(len(differences)), key=lambda k: row.points[k][0])
-    assert all(0 <= x <= chart.width for x, _ in row.points)
-    assert row.low is not None
-    assert row.mean is not None
-    assert row.high is not None
-    assert 0 <= row.low <= row.mean <= row.high <= chart.width
+    far, (own, base) = max(enumerate(both), key=lambda one: abs(one[1][0] - one[1][1]))
+    scale = (row.points[far][0] - chart.zero) / (own - base)
+    for (x, _), (own, base) in zip(row.points, both, strict=True):
+        assert x == pytest.approx(chart.zero + scale * (own - base), abs=0.8)
+        assert 0 <= x <= chart.width
+    against = tan["against_baseline"]["by_metric"][key]
+    low, high = against["interval"]
+    assert row.told == f"{against['difference']:+.3f} [{low:+.3f}, {high:+.3f}]"
+    for x, value in ((row.low, low), (row.mean, against["difference"]), (row.high, high)):
+        assert x == pytest.approx(chart.zero + scale * value, abs=1.5)
+    assert chart.metric.lower_is_better == (key in {"log_loss", "brier", "calibration_error"})
+    assert chart.region == ("" if against["region"] is None else f"{against['region']:.2g}")
+
+
+def test_verdicts_of_differences_know_which_side_is_better() -> None:
+    document = copy.deepcopy(small_run().comparison)
+    tan = document["structures"][1]["against_baseline"]["by_metric"]
+    tan["log_loss"] |= {"interval": [-0.2, -0.1], "region": 0.01}
+    tan["accuracy"] |= {"interval": [-0.2, -0.1], "region": 0.01}
+    tan["brier"] |= {"interval": [-0.2, 0.1], "region": None}
+    tan["balanced_accuracy"] |= {"interval": [-0.008, 0.009], "region": 0.01}
+    tan["auc"] |= {"difference": None, "interval": None}
+    rows = {one.metric.key: next(row for row in one.rows if row.name == "tan") for one in metric_charts(document)}
+    assert rows["log_loss"].verdict == "better"
+    assert rows["accuracy"].verdict == "worse"
+    assert rows["brier"].verdict == "can be chance"
+    assert rows["balanced_accuracy"].verdict == "too little to matter"
+    assert (rows["auc"].verdict, rows["auc"].told, rows["auc"].mean) == ("", "no figure in some fold", None)
+
+
+def test_folds_without_a_figure_are_counted_and_one_structure_has_no_charts() -> None:
+    document = copy.deepcopy(small_run().comparison)
+    document["structures"][1]["by_fold"][0]["auc"] = None
+    chart = next(one for one in metric_charts(document) if one.metric.key == "auc")
+    assert chart.left_out == 1
+    for fold in document["structures"][0]["by_fold"]:
+        fold["auc"] = None
+    assert next(one for one in metric_charts(document) if one.metric.key == "auc").rows == ()
+    document |= {"structures": document["structures"][:1], "mix": None}
+    assert metric_charts(document) == ()
 
 
 @pytest.mark.parametrize(

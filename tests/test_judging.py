@@ -13,7 +13,8 @@ from scipy.stats import t as student
 
 from bnx.comparison import Comparison
 from bnx.folds import halves
-from bnx.judging import pick
+from bnx.judging import pick, reason_for
+from bnx.paired import Chances
 from bnx.structure import Structure
 from bnx.tables import Lines
 
@@ -97,6 +98,34 @@ def test_structures_that_are_the_same_stand_under_their_first_name() -> None:
     twins = tuple(Structure(name, ((), (0,))) for name in ("first", "second"))
     losses = np.array([[0.501, 0.502, 0.5], [0.5, 0.5, 0.5]])
     assert pick(losses, twins, losses.mean(axis=1).tolist(), 3)[:2] == (1, 0)
+
+
+def reason(edges: tuple[int, ...], best: int, chosen: int, worse: float = 0.0) -> str:
+    """Ask why, of structures with so many edges named s0, s1, ..., each .125 bits worse than the one before."""
+    structures = [Structure(f"s{k}", ((), *(((0,),) * own), *(((),) * (4 - own)))) for k, own in enumerate(edges)]
+    names, means = [one.name for one in structures], [0.5 + 0.125 * k for k in range(len(edges))]
+    return reason_for(names, structures, means, best, chosen, Chances(0.0, 1.0 - worse, worse))
+
+
+def test_the_reason_is_said_in_plain_words() -> None:
+    assert reason((2,), 0, 0) == "It is the only structure compared."
+    assert reason((0, 2), 0, 0) == "It has the lowest log loss and no edges: no dependence pays here."
+    assert reason((2, 0), 0, 0) == (
+        "It has the lowest log loss, and each structure with fewer edges is probably worse by an amount that matters "
+        "(more than 0.01 bits)."
+    )
+    assert reason((1, 1, 2), 0, 0) == "It has the lowest log loss, and none has fewer edges."
+    assert reason((2, 2, 0), 0, 1) == (
+        "From all rows it learnt the same edges as s0, which has the lowest log loss; each structure with fewer edges "
+        "is probably worse by an amount that matters (more than 0.01 bits)."
+    )
+    assert reason((0, 0), 0, 1) == (
+        "From all rows it learnt the same edges as s0, which has the lowest log loss: none, so no dependence pays here."
+    )
+    assert reason((3, 1), 0, 1, worse=0.3249) == (
+        "It has the fewest edges of all that are probably as good as the best, s0: it is behind by 0.1250 bits, and "
+        "the chance that it is worse by an amount that matters (more than 0.01 bits) is 32 %."
+    )
 
 
 @pytest.mark.parametrize("run", RUNS)

@@ -7,8 +7,8 @@ from typing import Any
 
 import pandas as pd
 import pytest
+from readpage import Page
 from smallrun import HOSTILE_NAMES, SmallRun, small_run
-from test_report import Page
 
 from bnx.findings import drawn_pairs
 from bnx.pair_columns import PAIR_COLUMNS, VERDICT_ORDER

@@ -4,66 +4,15 @@ import base64
 import copy
 import hashlib
 import re
-from html.parser import HTMLParser
 from typing import Any
 
 import pytest
+from readpage import Page
 from smallrun import HOSTILE_LEVELS, HOSTILE_NAMES, SmallRun, small_run
 
 from bnx.errors import FormatError
 from bnx.findings import findings
 from bnx.report import report_html
-
-VOID = {"meta", "br", "link", "img", "input", "hr", "col"}
-
-
-class Page(HTMLParser):
-    """Reads a page as a browser would: elements with attributes, texts, and the cells of tables by id."""
-
-    def __init__(self, html: str) -> None:
-        super().__init__()
-        self.elements: list[tuple[str, dict[str, str]]] = []
-        self.tables: dict[str, list[list[str]]] = {}
-        self.rows: list[list[str]] = []
-        self.texts: list[str] = []
-        self.style = ""
-        self.script = ""
-        self.data: list[str] = []
-        self._open: list[str] = []
-        self.feed(html)
-
-    def handle_starttag(self, tag: str, attrs: list[tuple[str, str | None]]) -> None:
-        found = {key: value or "" for key, value in attrs}
-        self.elements.append((tag, found))
-        if tag == "table":
-            self.rows = self.tables.setdefault(found.get("id", f"table {len(self.tables)}"), [])
-        if tag == "tr":
-            self.rows.append([])
-        if tag in {"td", "th"}:
-            self.rows[-1].append("")
-        if tag not in VOID:
-            self._open.append(tag)
-
-    def handle_endtag(self, tag: str) -> None:
-        assert self._open.pop() == tag
-
-    def handle_data(self, data: str) -> None:
-        if self._open and self._open[-1] == "style":
-            self.style += data
-            return
-        if self._open and self._open[-1] == "script":
-            if self.elements[-1][1].get("type") == "application/json":
-                self.data.append(data)
-            else:
-                self.script += data
-            return
-        self.texts.append(data)
-        if "td" in self._open or "th" in self._open:
-            self.rows[-1][-1] += data
-
-    @property
-    def text(self) -> str:
-        return re.sub(r"\s+", " ", "".join(self.texts))
 
 
 def page_of(run: SmallRun) -> Page:
@@ -162,32 +111,44 @@ def test_every_structure_stands_with_its_picture_and_every_edge(plain: SmallRun)
 
 
 def test_score_table_shows_the_figures_of_the_document(plain: SmallRun) -> None:
-    rows = page_of(plain).tables["score-table"][1:]
-    mix = plain.comparison["mix"]
-    assert rows[-1][0] == f"mix{mix['words']}{'offered' if mix['offered'] else 'not offered'}"
-    assert rows[-1][3] == f"{mix['log_loss']:.3f} ± {mix['log_loss_se']:.3f}"
-    assert f"{mix['words']}: {mix['reason']}" in " ".join(page_of(plain).text.split())
-    rows = rows[:-1]
-    assert len(rows) == len(plain.comparison["structures"])
-    losses = [one["log_loss"] for one in plain.comparison["structures"]]
+    head, *rows = page_of(plain).tables["score-table"]
+    document = plain.comparison
+    entries = {one["name"]: one for one in (*document["structures"], {"name": "mix", **document["mix"]})}
+    assert len(rows) == len(entries)
+    losses = [one["log_loss"] for one in entries.values()]
     assert [row[3].split()[0] for row in rows] == [f"{loss:.3f}" for loss in sorted(losses)]
-    for one in plain.comparison["structures"]:
-        row = next(row for row in rows if row[0].startswith(one["name"] + one["words"]))
-        against = one["against_baseline"]
-        assert row[1:4] == [
-            f"{len(one['edges'])}",
-            f"{one['free_parameters']:,}",
-            f"{one['log_loss']:.3f} ± {one['log_loss_se']:.3f}",
-        ]
-        if against["difference"] is not None:
-            low, high = against["interval"]
-            assert row[4] == f"{against['difference']:+.3f} [{low:+.3f}, {high:+.3f}]"
-            assert float(row[5]) == pytest.approx(against["p_value"], abs=5e-5)
-            assert row[6] == f"{100 * against['probability_better']:.1f} %"
+    advice, baseline = document["recommended"]["name"], document["settings"]["baseline"]
+    for one in entries.values():
+        row = next(row for row in rows if re.match(rf"{re.escape(one['name'])}\b.*{re.escape(one['words'])}$", row[0]))
+        assert ("recommended" in row[0]) == (one["name"] == advice)
+        assert ("baseline" in row[0]) == (one["name"] == baseline)
+        cells = dict(zip(head, row, strict=True))
+        if one["name"] == "mix":
+            assert ("not offered" not in row[0]) == one["offered"]
         else:
-            assert [cell.strip() for cell in row[4:7]] == ["–"] * 3
-        figures = [f"{one[key]:.3f}" for key in ("brier", "accuracy", "auc", "calibration_error")]
-        assert row[7:] == [*figures, f"{one['temperature']:.2f}"]
+            assert row[1:3] == [f"{len(one['edges'])}", f"{one['free_parameters']:,}"]
+            assert cells["temperature"] == f"{one['temperature']:.2f}"
+        assert cells["log loss, bits"] == f"{one['log_loss']:.3f} ± {one['log_loss_se']:.3f}"
+        assert cells["against naive, bits"].strip() == against_words(one["against_baseline"])
+        for words, key in (
+            ("Brier", "brier"), ("accuracy", "accuracy"), ("balanced accuracy", "balanced_accuracy"), ("AUC", "auc"),
+            ("calibration error", "calibration_error"),
+            ("class-wise calibration error", "classwise_calibration_error"),
+        ):  # fmt: skip
+            assert cells[words] == f"{one[key]:.3f}"
+        assert cells["calibration slope"] == f"{one['calibration_slope']:.2f}"
+
+
+def against_words(against: dict[str, Any]) -> str:
+    if against["difference"] is None:
+        return "–"
+    low, high = against["interval"]
+    p = against["p_value"]
+    told = "" if p is None else f"p {p:.4f}" if p >= 0.001 else f"p {p:.0e}"
+    return (
+        f"{against['difference']:+.3f} [{low:+.3f}, {high:+.3f}]{told}; "
+        f"matters: {100 * against['probability_better']:.1f} %"
+    )
 
 
 def test_confusion_and_recall_are_those_of_the_document(plain: SmallRun) -> None:
@@ -207,17 +168,13 @@ def test_the_first_screen_says_what_and_why_and_how_much(document: dict[str, Any
     naive = document["structures"][0]
     assert document["recommended"]["reason"] in text
     assert f"Model grade with {chosen['name']}" in text
-    assert (
-        f"It saves {-chosen['against_baseline']['difference']:.3f} bits of log loss per record against naive, " in text
-    )
-    share = -chosen["against_baseline"]["difference"] / naive["log_loss"]
-    assert f", {100 * share:.0f} % of what that leaves open (bits saved: 95 % interval" in text
-    assert (
-        f"{round(1000 * (1 - chosen['accuracy']))} mistakes; naive makes {round(1000 * (1 - naive['accuracy']))}"
-        in text
-    )
-    assert f"{document['recommended']['honest_log_loss']:.3f} bits of log loss (0 is perfect) and" in text
-    assert f"multiplied by {naive['temperature']:.2f}" in text
+    saved, whole = -chosen["against_baseline"]["difference"], naive["log_loss"]
+    assert f"It saves {saved:.3f} bits of log loss per record against naive (95 % interval" in text
+    assert f"), {100 * saved / whole:.0f} % of all that naive leaves open: " in text
+    own, base = (round(1000 * (1 - one["accuracy"])) for one in (chosen, naive))
+    assert f"In 1,000 records it makes {own} mistakes, naive {base}: " in text
+    assert f"{document['recommended']['honest_log_loss']:.3f} bits of log loss (0 is perfect), " in text
+    assert f"The evidence of naive is worth only {naive['temperature']:.2f} of its face value" in text
     assert "dock ~ alarm" in text
 
 
@@ -226,7 +183,7 @@ def test_a_worse_choice_and_an_even_one_are_called_so(document: dict[str, Any]) 
     chosen["against_baseline"] |= {"difference": 0.25, "interval": [0.125, 0.5]}
     gain = findings(document).gain
     assert gain is not None
-    assert (gain.kind, gain.bits, gain.interval, gain.credible) == ("worse", "0.250", ("-0.500", "-0.125"), True)
+    assert (gain.kind, gain.bits, gain.interval, gain.credible) == ("worse", "0.250", ("0.125", "0.500"), True)
     assert "It costs 0.250 bits of log loss per record more than naive" in Page(report_html(document, {})).text
     chosen["against_baseline"] |= {"difference": 0.0001, "interval": [-0.1, 0.1]}
     assert "Its log loss is that of naive" in Page(report_html(document, {})).text
@@ -235,9 +192,9 @@ def test_a_worse_choice_and_an_even_one_are_called_so(document: dict[str, Any]) 
 @pytest.mark.parametrize(
     ("temperature", "says"),
     [
-        (0.5, "Over-confident: before correction, naive is too sure: its evidence had to be multiplied by 0.50"),
-        (1.0, "About right: the evidence of naive had to be multiplied by 1.00"),
-        (1.25, "Too timid: the evidence of naive had to be multiplied by 1.25"),
+        (0.5, "Over-confident. The evidence of naive is worth only 0.50 of its face value"),
+        (1.0, "The evidence of naive is worth about its face value (1.00 of it)"),
+        (1.25, "Too timid. The evidence of naive is worth 1.25 times its face value"),
     ],
 )
 def test_the_temperature_is_put_in_words(document: dict[str, Any], temperature: float, says: str) -> None:
@@ -248,6 +205,9 @@ def test_the_temperature_is_put_in_words(document: dict[str, Any], temperature: 
 def test_without_temperature_the_calibration_slope_speaks_or_nothing(document: dict[str, Any]) -> None:
     document["settings"]["temperature"] = False
     document["structures"][0] |= {"temperature": 1.0, "calibration_slope": 0.5}
+    text = Page(report_html(document, {})).text
+    assert "The evidence of naive is worth only 0.50 of its face value" in text
+    assert "Nothing was corrected (--no-temperature)." in text
     document["structures"][0]["calibration_slope"] = None
     assert "Not measured: there are too few mistakes to tell" in Page(report_html(document, {})).text
 
@@ -285,9 +245,9 @@ def test_settings_warnings_versions_and_cautions_stand_on_the_page(document: dic
     document["warnings"] = ["the first <warning>", "the second"]
     document["left_out"] = [{"name": "id <b>", "reason": "a different value in every row"}]
     page = Page(report_html(document, {}))
-    cells = {row[0]: row[1] for rows in page.tables.values() for row in rows if len(row) == 2}
-    assert set(document["settings"]) <= set(cells)
-    assert cells["seed"] == "1"
+    options = {row[1]: row[2] for row in page.tables["setting-table"]}
+    assert len(page.tables["setting-table"]) == 1 + len(document["settings"])
+    assert options["--seed"] == "1"
     for words in (
         "the first <warning>", "the second", "id <b>: a different value in every row", document["sha256"],
         f"numpy {document['versions']['numpy']}", "A dependence is not a cause", "A probability is not a decision",

@@ -5,8 +5,8 @@ import re
 from typing import Any
 
 import pytest
+from readpage import Page
 from smallrun import small_run
-from test_report import Page
 
 from bnx.report import report_html
 from bnx.triangle import shortened, triangle, triangle_block

@@ -132,7 +132,7 @@ def _legend(sheet: _Sheet, shown: Showing) -> Iterable[tuple[str, str]]:
         if any(arrow.by_blanks for arrow in shown.arrows):
             yield "ring at the tail: carried by blank cells", small
     elif not sheet.picture.arrows:
-        yield f"no attribute depends on another once {sheet.target} is known", small
+        yield f"takes every two attributes as independent given {sheet.target}", small
     yield f"bar: bits shared with {sheet.target}", small
 
 

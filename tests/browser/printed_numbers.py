@@ -38,7 +38,10 @@ def _written(value: float, decimals: Iterable[int]) -> set[str]:
 
 
 def _shares(value: float) -> set[str]:
-    return {f"{one}%" for one in _written(100 * value, range(3))} if abs(value) <= 1 else set()
+    if abs(value) > 1:
+        return set()
+    bounds = {"99.9%"} if 0.9995 <= value < 1 else {"0.1%"} if 0 < value < 0.0005 else set()  # over, under
+    return bounds | {f"{one}%" for one in _written(100 * value, range(3))}
 
 
 def forms(value: Any, turned: bool = False) -> set[str]:

@@ -11,9 +11,7 @@ from playwright.sync_api import Browser
 A4 = (794, 1123)  # pixels at 96 to the inch
 PAGE = re.compile(rb"/Type\s*/Page\b")
 BOOKMARK = re.compile(rb"/Title\s*\(((?:\\.|[^\\)])*)\)")
-HEADINGS = (
-    """[...document.querySelectorAll('main > section')].map((one) => one.querySelector('h2').textContent.trim())"""
-)
+HEADINGS = """[...document.querySelectorAll('main > section')].map((one) => one.querySelector('h1, h2').textContent)"""
 HIDDEN_BEHIND_AN_EDGE = """() => [...document.querySelectorAll('.box')].filter((one) => one.checkVisibility()
   && (one.scrollWidth > one.clientWidth + 1 || one.scrollHeight > one.clientHeight + 1))
   .map((one) => one.getAttribute('aria-label'))"""

@@ -1,4 +1,6 @@
 // Starts every part of the page.
 
-for (const start of [startTheme, startPairPanel, startStructures, startLedger, startTriangle]) start();
+for (const start of [startTheme, startPairPanel, startStructures, startLinks, startScores, startLedger, startTriangle]) {
+  start();
+}
 document.documentElement.classList.add("scripted");
