@@ -1,6 +1,7 @@
-"""Make the pictures of the page that README and docs/tour.md show: ``python tests/browser/pictures.py [FOLDER]``.
+"""Make the pictures of the page that docs/tour.md shows: ``python tests/browser/pictures.py [FOLDER [REPORT]]``.
 
-Takes the demo through the main job and photographs its report; the folder is docs/pictures unless another is named.
+Takes the demo through the main job and photographs its report, or the report named; the folder is docs/pictures unless
+another is named. A section that is higher than the part shown is cut below it.
 """
 
 import io
@@ -15,7 +16,8 @@ from PIL import Image
 from playwright.sync_api import Browser, Page, sync_playwright
 
 ROOT = Path(__file__).parents[2]
-MOST_BYTES = 150_000
+MOST_BYTES = 80_000
+MARGIN = 40.0
 
 Shot = Callable[[Page], bytes]
 
@@ -24,16 +26,17 @@ def top(page: Page) -> bytes:
     return page.screenshot()
 
 
-def section(name: str, most: int = 1000) -> Shot:
-    """Photograph a section, at most so many pixels of its height."""
+def part(selector: str, most: int = 1000) -> Shot:
+    """Photograph a part of the page from its top, at most so many pixels of its height, with a margin on its left."""
 
     def taken(page: Page) -> bytes:
-        place = page.locator(f"section#{name}")
+        place = page.locator(selector)
         place.evaluate("(one) => scrollTo(0, one.getBoundingClientRect().top + scrollY - 60)")
         box = place.bounding_box()
         assert box is not None
-        height = min(most, box["height"])
-        return page.screenshot(clip={"x": box["x"], "y": max(0, box["y"]), "width": box["width"], "height": height})
+        left, top = max(0.0, box["x"] - MARGIN), max(0.0, box["y"])
+        width = min(box["width"] + box["x"] - left + MARGIN, page.evaluate("innerWidth") - left)
+        return page.screenshot(clip={"x": left, "y": top, "width": width, "height": min(most, box["height"])})
 
     return taken
 
@@ -48,27 +51,29 @@ def pair(page: Page) -> bytes:
 
 def beside(page: Page) -> bytes:
     """Photograph two structures side by side."""
-    page.locator("#beside").select_option(label="tan")
-    return section("structures", 760)(page)
+    page.locator("#beside").select_option(label="heldout")
+    return part(".drawings:visible", 560)(page)
 
 
 PICTURES: dict[str, tuple[int, int, Theme, Shot]] = {
     "answer": (1280, 900, "light", top),
     "answer-dark": (1280, 900, "dark", top),
-    "structures": (1280, 1100, "light", section("structures")),
+    "structures": (1280, 1200, "light", part("#structures", 1110)),
     "side-by-side": (1280, 1100, "light", beside),
     "pair": (1280, 1000, "light", pair),
-    "pairs": (1280, 1100, "light", section("pairs")),
-    "pairs-dark": (1280, 1100, "dark", section("pairs")),
-    "scores": (1280, 1100, "light", section("scores")),
+    "pairs": (1280, 1100, "light", part("#pairs", 970)),
+    "pairs-dark": (1280, 1100, "dark", part("#pairs", 970)),
+    "scores": (1280, 1100, "light", part("#scores", 840)),
     "phone": (420, 860, "light", top),
 }
 
 
 def small(picture: bytes) -> bytes:
-    """Write a picture with at most 128 colours, which drawings and text do not miss."""
+    """Write a picture with at most 64 colours, which drawings and text do not miss."""
     out = io.BytesIO()
-    Image.open(io.BytesIO(picture)).convert("RGB").quantize(128).save(out, "PNG", optimize=True)
+    Image.open(io.BytesIO(picture)).convert("RGB").quantize(64, Image.Quantize.MAXCOVERAGE, kmeans=2).save(
+        out, "PNG", optimize=True
+    )
     return out.getvalue()
 
 
@@ -82,21 +87,28 @@ def take(browser: Browser, report: Path, name: str, folder: Path) -> Path:
     return path
 
 
-def main(folder: Path) -> None:
+def demo_report(folder: Path) -> Path:
+    """Take the demo through the main job; give its report."""
+    command = "from bnx.cli import main; main()"
+    table = ROOT / "datasets" / "cold_chain.csv"
+    call = [sys.executable, "-c", command, "learn", str(table), "--class", "arrival", "-o", str(folder), "--quiet"]
+    subprocess.run(call, check=True, stdout=subprocess.DEVNULL, cwd=ROOT)
+    return folder / "report.html"
+
+
+def main(folder: Path, report: Path | None) -> None:
     program = chromium_path()
     if program is None:
         sys.exit("no Chromium is here: install Debian's package chromium, or name the program in BNX_CHROMIUM")
     with TemporaryDirectory() as place, sync_playwright() as driver:
-        results = Path(place) / "results"
-        table = ROOT / "datasets" / "cold_chain.csv"
-        command = "from bnx.cli import main; main()"
-        call = [sys.executable, "-c", command, "learn", str(table), "--class", "arrival", "-o", str(results), "--quiet"]
-        subprocess.run(call, check=True, stdout=subprocess.DEVNULL, cwd=ROOT)
+        shown = report or demo_report(Path(place) / "results")
         browser = launched(driver, program)
         for name in PICTURES:
-            print(take(browser, results / "report.html", name, folder))
+            path = take(browser, shown, name, folder)
+            print(f"{path} {path.stat().st_size:,} bytes")
         browser.close()
 
 
 if __name__ == "__main__":
-    main(Path(sys.argv[1]) if len(sys.argv) > 1 else ROOT / "docs" / "pictures")
+    named = [Path(one) for one in sys.argv[1:]]
+    main(named[0] if named else ROOT / "docs" / "pictures", named[1] if len(named) > 1 else None)
