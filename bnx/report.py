@@ -130,7 +130,6 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
     """Turn a comparison document into what the page shows, and the style rules its pictures need."""
     chosen = next(one for one in document["structures"] if one["name"] == document["recommended"]["name"])
     drawn = drawn_pairs(chosen)
-    ranked = sorted(document["structures"], key=lambda one: (one["log_loss"] is None, one["log_loss"] or 0.0))
     structures, styles = [], dict.fromkeys("")
     for prefix, entry in _ordered(document):
         one, rules = draw_structure(document, entry, pictures.get(entry["name"], ""), prefix)
@@ -153,7 +152,7 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         mix_reason=document["mix"]["reason"] if document["mix"] else "",
         yardstick_sentences=tuple(one["sentence"] for one in document["yardsticks"] or ()),
         curve=curve_table(document["learning_curve"]) if document["learning_curve"] else None,
-        has_holdout=any("holdout" in one for one in ranked),
+        has_holdout=any("holdout" in one for one in document["structures"]),
         reliability=reliability_charts(document),
         structures=tuple(structures),
         sliders=sliders(document["structures"]),

@@ -10,7 +10,7 @@ import pytest
 from commandline import call
 from hostile_table import TARGET, learnt, write_hostile
 from large_tables import write_large
-from pages import Made, chromium_path, launched
+from pages import Made, Opened, chromium_path, launched, opened
 from playwright.sync_api import Browser, sync_playwright
 
 from bnx.report import report_html
@@ -66,3 +66,11 @@ def very_wide(tmp_path_factory: pytest.TempPathFactory) -> Made:
     folder = tmp_path_factory.mktemp("very_wide")
     write_large(folder / "table.csv", attributes=400, classes=2, rows=600)
     return page_made(folder, *learnt(folder / "table.csv", "outcome", ("naive", "tan")))
+
+
+@pytest.fixture
+def found(browser: Browser, demo: Made) -> Iterator[Opened]:
+    """Open the demo's page, which must have been quiet when a test is done with it."""
+    with opened(browser, demo.path, height=1200) as one:
+        yield one
+        one.assert_quiet()

@@ -97,3 +97,9 @@ def unfolded(page: Page) -> None:
     assert size is not None
     height = page.evaluate("document.scrollingElement.scrollHeight")
     page.set_viewport_size({"width": size["width"], "height": height})
+
+
+def rgb(colour: str) -> str:
+    """Write a colour of a palette as a browser does."""
+    red, green, blue = (int(colour[place : place + 2], 16) for place in (1, 3, 5))
+    return f"rgb({red}, {green}, {blue})"

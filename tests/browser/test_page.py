@@ -5,7 +5,7 @@ from typing import Any
 
 import pytest
 from axe_playwright_python.sync_playwright import Axe
-from pages import Made, Opened, Theme, opened, unfolded
+from pages import Made, Opened, Theme, opened, rgb, unfolded
 from playwright.sync_api import Browser, expect
 
 from bnx.palette import PALETTES
@@ -13,11 +13,6 @@ from bnx.palette import PALETTES
 WIDTHS = (1280, 420)
 THEMES: tuple[Theme, ...] = ("light", "dark")
 SECTIONS = ("answer", "structures", "scores", "pairs", "attributes", "method")
-
-
-def rgb(colour: str) -> str:
-    red, green, blue = (int(colour[place : place + 2], 16) for place in (1, 3, 5))
-    return f"rgb({red}, {green}, {blue})"
 
 
 def faults(found: Opened) -> Sequence[str]:

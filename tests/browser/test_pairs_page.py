@@ -1,12 +1,12 @@
 """The ledger of pairs: every column sorts and every filter sifts, by mouse and by keyboard, as the comparison says."""
 
-from collections.abc import Callable, Iterator
+from collections.abc import Callable
 from typing import Any
 
 import pytest
 from ledger_reading import all_rows, listed
-from pages import Made, Opened, opened
-from playwright.sync_api import Browser, Locator, Page, expect
+from pages import Made, Opened
+from playwright.sync_api import Locator, Page, expect
 
 WAYS = ("mouse", "keyboard")
 VERDICTS = ("dependent", "detected, but negligible", "negligible", "not enough data")
@@ -42,13 +42,6 @@ COLUMNS: dict[str, Callable[[dict[str, Any], Pair], Any]] = {
     "detectable": lambda _, pair: pair["detectable_bits"],
     "joined": joined_key,
 }
-
-
-@pytest.fixture
-def found(browser: Browser, demo: Made) -> Iterator[Opened]:
-    with opened(browser, demo.path, height=1200) as one:
-        yield one
-        one.assert_quiet()
 
 
 def ranked(demo: Made) -> list[Pair]:

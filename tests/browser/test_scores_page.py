@@ -3,7 +3,7 @@
 import re
 
 import pytest
-from pages import Made, opened
+from pages import Made, opened, rgb
 from playwright.sync_api import Browser, Page, expect
 
 from bnx.palette import PALETTES
@@ -105,8 +105,7 @@ def test_paper_is_light_and_bears_no_control(browser: Browser, demo: Made) -> No
         page.get_by_role("radio", name="dark", exact=True).check()
         page.emulate_media(media="print")
         assert page.evaluate("getComputedStyle(document.documentElement).backgroundColor") == "rgb(255, 255, 255)"
-        red, green, blue = (int(PALETTES["light"]["text"][place : place + 2], 16) for place in (1, 3, 5))
-        ink = f"rgb({red}, {green}, {blue})"
+        ink = rgb(PALETTES["light"]["text"])
         assert page.evaluate("getComputedStyle(document.body).color") == ink
         assert page.evaluate("getComputedStyle(document.querySelector('.bnx-picture .bnx-fill-text')).fill") == ink
         assert [one for one in page.locator("input, select").all() if one.is_visible()] == []

@@ -1,21 +1,13 @@
 """The triangle of pairs: mouse and arrow keys go to the cell of two attributes, which is told and opens their panel."""
 
 import json
-from collections.abc import Iterator
 from typing import Any
 
 import pytest
-from pages import Made, Opened, opened
-from playwright.sync_api import Browser, Page, expect
+from pages import Made, Opened
+from playwright.sync_api import Page, expect
 from printed_numbers import numbers_in, tells
 from table_reading import pair_of
-
-
-@pytest.fixture
-def found(browser: Browser, demo: Made) -> Iterator[Opened]:
-    with opened(browser, demo.path, height=1200) as one:
-        yield one
-        one.assert_quiet()
 
 
 def order(page: Page) -> list[str]:
