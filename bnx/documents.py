@@ -149,6 +149,7 @@ def edge_entry(names: Sequence[str], edge: EdgeEvidence) -> dict[str, Any]:
         "bits": edge.bits,
         "gain": edge.gain,
         "gain_se": edge.gain_se,
+        "gain_interval": list(edge.gain_interval),
         "gain_by_fold": list(edge.gain_by_fold),
         "chosen_in": edge.chosen_in,
         "stability": edge.stability,
@@ -207,7 +208,7 @@ def picture_of(document: dict[str, Any]) -> Picture:
             edge["bits"],
             edge["verdict"],
             edge["gain"],
-            edge["gain_se"],
+            tuple(edge["gain_interval"]) if edge["gain_interval"] else None,
             edge.get("carried_by_blanks", False),
         )
         for edge in document["edges"]

@@ -13,7 +13,7 @@ __all__ = ["CHIP_SENTENCES", "EDGE_CLAUSES", "PAIR_SENTENCES", "WHAT_IF", "pair_
 EDGE_CLAUSES = MappingProxyType(
     {
         "bits": "{bits} bits given {class}",
-        "gain": "held-out gain {gain} ± {error} bits per record",
+        "gain": "held-out gain {gain} bits per record {interval}",
         "chosen": "chosen in {chosen} folds",
         "stability": "joined again in {stability} of the random halves",
         "gate": "gate p {gate}",
@@ -34,20 +34,22 @@ CHIP_SENTENCES = MappingProxyType(
 )
 """Clauses on an attribute, by what they tell."""
 
-_SURE = "more than folds differ by chance"
+_UNSEEN = "on records it did not learn from"
+_ITS_GAIN = "(95 % interval of its held-out gain {interval})"
+_OPEN = "Whether it helps cannot be told"
 WHAT_IF = MappingProxyType(
     {
-        "lose": f"Without it {{structure}} would lose {{amount}} ± {{error}} bits per record on records it did not"
-        f" learn from, {_SURE}.",
-        "gain": f"Without it {{structure}} would even gain {{amount}} ± {{error}} bits per record on records it did not"
-        f" learn from, {_SURE}.",
-        "may lose": "Whether it helps cannot be told: without it {structure} would lose {amount} ± {error} bits per"
-        " record on records it did not learn from, and folds differ by as much by chance.",
-        "may gain": "Whether it helps cannot be told: without it {structure} would gain {amount} ± {error} bits per"
-        " record on records it did not learn from, and folds differ by as much by chance.",
-        "same": "It makes no difference that could be told: without it {structure} would be as good, within ± {error}"
-        " bits per record, on records it did not learn from.",
-        "rare": "Whether it helps cannot be told: only {chosen} folds learnt it.",
+        "lose": f"Without it {{structure}} would lose {{amount}} bits per record {_UNSEEN}, more than chance"
+        f" explains {_ITS_GAIN}.",
+        "gain": f"Without it {{structure}} would even gain {{amount}} bits per record {_UNSEEN}, more than"
+        f" chance explains {_ITS_GAIN}.",
+        "may lose": f"{_OPEN}: without it {{structure}} would lose {{amount}} bits per record {_UNSEEN}, but that"
+        f" can be chance {_ITS_GAIN}.",
+        "may gain": f"{_OPEN}: without it {{structure}} would gain {{amount}} bits per record {_UNSEEN}, but that"
+        f" can be chance {_ITS_GAIN}.",
+        "same": f"It makes no difference that could be told: without it {{structure}} would be as good {_UNSEEN}"
+        f" {_ITS_GAIN}.",
+        "rare": f"{_OPEN}: only {{chosen}} folds learnt it.",
     }
 )
 """What would change if one edge were left out, by what its held-out gain says."""

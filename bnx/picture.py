@@ -36,8 +36,9 @@ class Chip:
 class Arrow:
     """One dependence between attributes, given by their places among the chips.
 
-    ``bits``: shared by the two given the class. ``gain``, ``gain_se``: held-out bits per row this one edge is worth,
-    with its standard error; None where no folds were scored. ``by_blanks``: most of the bits come from blank cells.
+    ``bits``: shared by the two given the class. ``gain``, ``gain_interval``: held-out bits per row this one edge is
+    worth, and its 95 % interval; None where no folds were scored. ``by_blanks``: most of the bits come from blank
+    cells.
 
     Raises:
         StructureError: the bits are not a finite number, or the verdict is unknown.
@@ -48,7 +49,7 @@ class Arrow:
     bits: float
     verdict: Verdict = "not judged"
     gain: float | None = None
-    gain_se: float | None = None
+    gain_interval: tuple[float, float] | None = None
     by_blanks: bool = False
 
     def __post_init__(self) -> None:

@@ -5,7 +5,7 @@ from dataclasses import dataclass, replace
 from typing import Any
 
 from bnx.findings import chance, percent
-from bnx.text import fixed, signed
+from bnx.text import bracketed, fixed, signed
 
 __all__ = [
     "AttributeRow",
@@ -70,7 +70,7 @@ class EdgeRow:
     child: str
     bits: str
     gain: str
-    error: str
+    interval: str
     chosen: str
     stability: str
     gate_p: str
@@ -136,13 +136,6 @@ def _number(value: float | None, digits: int = 3) -> str:
     return _DASH if value is None else fixed(value, digits)
 
 
-def _range(ends: Sequence[float | None] | None, digits: int = 3, sign: bool = True) -> str:
-    if ends is None or ends[0] is None or ends[1] is None:
-        return ""
-    write = signed if sign else fixed
-    return f"[{write(ends[0], digits)}, {write(ends[1], digits)}]"
-
-
 def _loss(value: float | None) -> str:
     return "infinite" if value is None else fixed(value)
 
@@ -166,7 +159,7 @@ def score_row(document: Mapping[str, Any], entry: Mapping[str, Any]) -> ScoreRow
         log_loss=_loss(entry["log_loss"]),
         error="" if entry["log_loss_se"] is None else fixed(entry["log_loss_se"]),
         difference=_DASH if against["difference"] is None else signed(against["difference"]),
-        interval=_range(against["interval"]),
+        interval=bracketed(against["interval"]),
         p_value=_p(against["p_value"]),
         better=chance(against["probability_better"]),
         brier=_number(entry["brier"]),
@@ -208,7 +201,7 @@ def curve_table(curve: Mapping[str, Any]) -> CurveTable:
             tuple(
                 (
                     _loss(one["log_loss"]) + ("" if one["log_loss_se"] is None else f" ± {fixed(one['log_loss_se'])}"),
-                    _DASH if one["cost"] is None else f"{signed(one['cost'])} {_range(one['interval'])}",
+                    _DASH if one["cost"] is None else f"{signed(one['cost'])} {bracketed(one['interval'])}",
                 )
                 for one in point["structures"]
             ),
@@ -225,7 +218,7 @@ def edge_row(edge: Mapping[str, Any], tries: int) -> EdgeRow:
         child=edge["child"],
         bits=fixed(edge["bits"]),
         gain=signed(edge["gain"], 4),
-        error=fixed(edge["gain_se"], 4),
+        interval=bracketed(edge["gain_interval"], 4),
         chosen=f"{edge['chosen_in']} of {tries}",
         stability=percent(edge["stability"], 0),
         gate_p=_p(edge["gate_p"]),
@@ -257,7 +250,7 @@ def pair_row(pair: Mapping[str, Any]) -> PairRow:
         a=pair["a"],
         b=pair["b"],
         bits=fixed(pair["bits"], 4),
-        interval=_range((pair["bits_low"], pair["bits_high"]), 3, sign=False) or _DASH,
+        interval=bracketed((pair["bits_low"], pair["bits_high"]), 3, sign=False) or _DASH,
         at_most=_number(pair["bits_at_most"], 4),
         marginal=_number(pair["marginal_bits"], 4),
         double_counted=_number(pair["double_counted_bits"], 4),

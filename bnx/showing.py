@@ -9,7 +9,7 @@ import networkx as nx
 
 from bnx.classifier import Classifier
 from bnx.errors import DataError
-from bnx.text import aligned, count_of, fixed, nearest, signed
+from bnx.text import aligned, bracketed, count_of, fixed, nearest, signed
 
 __all__ = ["Separation", "separation", "structure_text", "table_text"]
 
@@ -102,7 +102,7 @@ def _edges(document: Mapping[str, Any]) -> str:
             f"{edge['parent']} -> {edge['child']}",
             edge["verdict"] + (" o" if edge.get("carried_by_blanks", False) else ""),
             fixed(edge["bits"]),
-            f"{signed(edge['gain'], 4)} +- {fixed(edge['gain_se'], 4)}",
+            f"{signed(edge['gain'], 4)} {bracketed(edge['gain_interval'], 4)}",
             f"{edge['chosen_in']}{folds}",
             fixed(edge["stability"], 2),
             "" if edge["gate_p"] is None else f"{edge['gate_p']:.2g}",

@@ -29,7 +29,7 @@ EDGES_IN_DATA = 1500
 """Edges of each structure that the scripts know: clear gains before others, then those of most bits."""
 
 _BITS_STEP, _GAIN_STEP = 0.005, 0.0005
-_COLUMNS = ("parent", "child", "bits", "gain", "error", "chosen", "stability", "gate", "given", "blanks", "verdict")
+_COLUMNS = ("parent", "child", "bits", "gain", "interval", "chosen", "stability", "gate", "given", "blanks", "verdict")
 
 
 @dataclass(frozen=True)
@@ -166,7 +166,7 @@ def _edge(edge: Mapping[str, Any], tries: int, number: Mapping[str, int], by_fol
     return [
         number[row.parent],
         number[row.child],
-        *(row.bits, row.gain, row.error, row.chosen, row.stability, row.gate_p),
+        *(row.bits, row.gain, row.interval, row.chosen, row.stability, row.gate_p),
         [number[name] for name in row.given],
         int(row.by_blanks),
         row.verdict,

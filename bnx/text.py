@@ -4,7 +4,18 @@ import difflib
 import math
 from collections.abc import Iterable, Sequence
 
-__all__ = ["aligned", "count_of", "cut_middle", "fixed", "nearest", "of_p", "printable", "quoted", "signed"]
+__all__ = [
+    "aligned",
+    "bracketed",
+    "count_of",
+    "cut_middle",
+    "fixed",
+    "nearest",
+    "of_p",
+    "printable",
+    "quoted",
+    "signed",
+]
 
 
 _LEAST = 8  # characters of a name that is cut
@@ -18,6 +29,14 @@ def fixed(value: float | None, digits: int = 3) -> str:
 def signed(value: float | None, digits: int = 3) -> str:
     """Format a number with its sign; nothing for None."""
     return "" if value is None else f"{value:+.{digits}f}"
+
+
+def bracketed(ends: Sequence[float | None] | None, digits: int = 3, sign: bool = True) -> str:
+    """Write an interval, its ends with their signs unless told otherwise; nothing where an end is not known."""
+    if ends is None or ends[0] is None or ends[1] is None:
+        return ""
+    write = signed if sign else fixed
+    return f"[{write(ends[0], digits)}, {write(ends[1], digits)}]"
 
 
 def of_p(p: float) -> str:

@@ -126,7 +126,7 @@ STRUCTURE = (
     "name words edges free_parameters log_loss log_loss_se brier accuracy balanced_accuracy auc recall confusion "
     "calibration_error calibration_slope temperature class_offsets floor smoothing by_fold against_baseline"
 )
-EDGE = "parent child bits gain gain_se chosen_in stability gate_p gate_given carried_by_blanks verdict"
+EDGE = "parent child bits gain gain_se gain_interval chosen_in stability gate_p gate_given carried_by_blanks verdict"
 AGAINST = "difference interval p_value region_bits probability_better probability_equivalent"
 PAIR = (
     "a b bits bits_corrected marginal_bits x2 g statistic df p_value adjusted_p method sample_carries_it min_expected "

@@ -165,7 +165,10 @@ def test_the_gain_of_an_edge_follows_its_definition() -> None:
             )
         assert chosen == edge.chosen_in >= 1
         assert edge.gain == pytest.approx(np.mean(gains), abs=1e-10)
-        assert edge.gain_se == pytest.approx(np.std(gains, ddof=1) * np.sqrt(1 / 10 + 1 / 9), abs=1e-10)
+        error = np.std(gains, ddof=1) * np.sqrt(1 / 10 + 1 / 9)
+        assert edge.gain_se == pytest.approx(error, abs=1e-10)
+        # Student's t of 9 degrees of freedom, two-sided 5 %: 2.262, common table (from memory)
+        assert edge.gain_interval == pytest.approx((edge.gain - 2.2622 * error, edge.gain + 2.2622 * error), rel=1e-4)
 
 
 def held_out_bits(

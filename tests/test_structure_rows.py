@@ -42,7 +42,8 @@ def test_every_edge_is_there_with_the_figures_of_the_document(document: dict[str
         for edge, row in zip(expected, found[entry["name"]], strict=True):
             assert (names[row["parent"]], names[row["child"]]) == (edge["parent"], edge["child"])
             assert row["bits"] == f"{edge['bits']:.3f}"
-            assert (row["gain"], row["error"]) == (f"{edge['gain']:+.4f}", f"{edge['gain_se']:.4f}")
+            low, high = edge["gain_interval"]
+            assert (row["gain"], row["interval"]) == (f"{edge['gain']:+.4f}", f"[{low:+.4f}, {high:+.4f}]")
             assert row["chosen"] == f"{edge['chosen_in']} of {document['folds']}"
             assert row["stability"] == f"{100 * edge['stability']:.0f} %"
             assert [names[place] for place in row["given"]] == edge["gate_given"]
@@ -84,7 +85,7 @@ def test_attributes_left_out_shift_the_numbers_of_a_drawing(document: dict[str, 
 )
 def test_what_would_change_without_an_edge(edge: dict[str, Any], amount: str, kind: str) -> None:
     assert what_if(edge, 10, amount) == kind
-    sure = "more than folds differ by chance" in WHAT_IF[kind]
+    sure = "than chance explains" in WHAT_IF[kind]
     assert sure == (edge["verdict"] in {"gains", "loses"})
 
 

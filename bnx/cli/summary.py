@@ -4,7 +4,7 @@ import textwrap
 from collections.abc import Mapping, Sequence
 from typing import Any
 
-from bnx.text import aligned, count_of, fixed, quoted, signed
+from bnx.text import aligned, bracketed, count_of, fixed, quoted, signed
 
 __all__ = ["summary"]
 
@@ -90,9 +90,7 @@ def _scores(one: Mapping[str, Any]) -> tuple[str, ...]:
 def _row(one: Mapping[str, Any], document: Mapping[str, Any]) -> tuple[str, ...]:
     against = one["against_baseline"]
     difference = (
-        ""
-        if against["difference"] is None
-        else (f"{signed(against['difference'])} [{signed(against['interval'][0])}, {signed(against['interval'][1])}]")
+        "" if against["difference"] is None else f"{signed(against['difference'])} {bracketed(against['interval'])}"
     )
     error = "" if one["log_loss_se"] is None else f" +- {fixed(one['log_loss_se'])}"
     p_value = against.get("p_value")
@@ -144,7 +142,7 @@ def _curve(document: Mapping[str, Any]) -> list[str]:
         cells = [f"  {point['training_rows']:,.0f}"]
         for one in point["structures"]:
             ends = one["interval"]
-            cost = f"{signed(one['cost'])} [{signed(ends[0])}, {signed(ends[1])}]" if ends else ""
+            cost = f"{signed(one['cost'])} {bracketed(ends)}" if ends else ""
             error = "" if one["log_loss_se"] is None else f" +- {fixed(one['log_loss_se'])}"
             cells += [_bits(one["log_loss"]) + error, cost]
         rows.append(cells)

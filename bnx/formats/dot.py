@@ -210,10 +210,11 @@ def _number(sheet: _Sheet, arrow: Arrow, colour: str) -> str:
 def _evidence(sheet: _Sheet, arrow: Arrow) -> str:
     parent, child = (sheet.picture.chips[end].name for end in (arrow.parent, arrow.child))
     gain = "" if arrow.gain is None else f", held-out gain {arrow.gain:+.3f}"
-    error = "" if arrow.gain is None or arrow.gain_se is None else f" ± {arrow.gain_se:.3f}"
+    ends = arrow.gain_interval
+    interval = "" if ends is None else f" [{ends[0]:+.3f}, {ends[1]:+.3f}]"
     unit = " bits per row" if gain else ""
     verdict = f"{arrow.verdict}; carried by blank cells" if arrow.by_blanks else arrow.verdict
-    return f"{parent} to {child}: {arrow.bits:.3f} bits given {sheet.picture.target}{gain}{error}{unit}; {verdict}"
+    return f"{parent} to {child}: {arrow.bits:.3f} bits given {sheet.picture.target}{gain}{unit}{interval}; {verdict}"
 
 
 def _fan(sheet: _Sheet) -> list[str]:

@@ -29,6 +29,7 @@ _EDGE: Mapping[str, Kinds] = {
     "bits": _NUMBER,
     "gain": _NUMBER_OR_NONE,
     "gain_se": _NUMBER_OR_NONE,
+    "gain_interval": (list, type(None)),
     "chosen_in": (int,),
     "stability": _NUMBER_OR_NONE,
     "gate_p": _NUMBER_OR_NONE,
@@ -48,6 +49,9 @@ def check_evidence(document: Mapping[str, Any], path: str) -> None:
     _check(document["bits_with_class"], {one["name"]: _NUMBER for one in attributes}, path, "bits_with_class.")
     for place, edge in enumerate(document["edges"]):
         _check(edge, _EDGE, path, f"edges[{place}].")
+        ends = edge["gain_interval"]
+        if ends is not None and [type(end) in _NUMBER for end in ends] != [True, True]:
+            raise FormatError(f"{path}: edges[{place}].gain_interval is {ends!r}, not two numbers; write it anew")
     told = sorted((edge["parent"], edge["child"]) for edge in document["edges"])
     if told != sorted((parent, one["name"]) for one in attributes for parent in one["parents"]):
         raise FormatError(f"{path}: the edges are not those of the attributes' parents; write it anew with bnx learn")

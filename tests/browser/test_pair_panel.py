@@ -143,7 +143,7 @@ def test_gains_stand_by_structure_and_fold(panels: list[dict[str, Any]], demo: M
             edge = edge_of(structure(document, row["name"]), panel["names"])
             assert edge is not None
             assert row["names"] == [edge["parent"], edge["child"]]
-            assert told(row["gain"], edge["gain"], edge["gain_se"])
+            assert told(row["gain"], edge["gain"], *edge["gain_interval"])
             assert row["verdict"] == edge["verdict"]
             assert told(row["chosen"], edge["chosen_in"], tries)
             assert told(row["stability"], edge["stability"])
@@ -168,6 +168,6 @@ def test_what_would_change_is_told_by_the_gain(panels: list[dict[str, Any]], dem
             edge = joining[name or first.pop()]
             rare = 2 * edge["chosen_in"] < document["folds"] * document["settings"]["repeats"]
             amount = [] if f"{abs(edge['gain']):.4f}" == "0.0000" else [abs(edge["gain"])]
-            figures = [edge["chosen_in"], document["folds"]] if rare else [*amount, edge["gain_se"]]
+            figures = [edge["chosen_in"], document["folds"]] if rare else [*amount, 0.95, *edge["gain_interval"]]
             assert told(sentence, *figures), (panel["names"], sentence)
             assert rare or not amount or ("lose" in sentence) == (edge["gain"] > 0)

@@ -26,7 +26,7 @@ const foldDots = (edge, at) =>
 const joiningRow = (structure, edge, at) =>
   el("tr", { "data-structure": structure.name }, el("th", { scope: "row" }, structure.name, el("span", { class: "role" },
     ...asNodes(edgeEnds(edge)))),
-  el("td", { class: "num" }, `${edge.gain} ± ${edge.error}`, el("span", { class: "role" }, edge.verdict)),
+  el("td", { class: "num" }, `${edge.gain} ${edge.interval}`, el("span", { class: "role" }, edge.verdict)),
   el("td", {}, edge.folds.length ? foldDots(edge, at) : "–"), el("td", { class: "num" }, edge.chosen,
     el("span", { class: "role" }, edge.stability)));
 
