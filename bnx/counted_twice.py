@@ -6,7 +6,7 @@ from typing import Any
 
 from bnx.text import fixed
 
-__all__ = ["CountedTwice", "PairLine", "counted_twice", "drawn_pairs"]
+__all__ = ["CountedTwice", "PairLine", "bits_twice", "counted_twice", "drawn_pairs"]
 
 _SHOWN = 3
 _LEAST = 0.0005  # bits that are not printed as 0.000
@@ -42,6 +42,15 @@ def drawn_pairs(entry: Mapping[str, Any]) -> frozenset[frozenset[str]]:
     return frozenset(frozenset((edge["parent"], edge["child"])) for edge in entry["edges"])
 
 
+def bits_twice(pair: Mapping[str, Any]) -> float | None:
+    """Give the bits of evidence that naive counts twice because of a pair of the document, if it is dependent.
+
+    None otherwise: of a pair that was not found to depend the figure is what chance makes of it.
+    """
+    bits: float | None = pair["double_counted_bits"] if pair["verdict"] == "dependent" else None
+    return bits
+
+
 def counted_twice(document: Mapping[str, Any], chosen: Mapping[str, Any]) -> CountedTwice:
     """Rank the dependent pairs by what naive counts twice because of them; chosen: the structure recommended.
 
@@ -63,7 +72,7 @@ def counted_twice(document: Mapping[str, Any], chosen: Mapping[str, Any]) -> Cou
 
 
 def _twice(pair: Mapping[str, Any]) -> float:
-    return pair["double_counted_bits"] or 0.0
+    return bits_twice(pair) or 0.0
 
 
 def _line(pair: Mapping[str, Any], drawn: frozenset[frozenset[str]], dropped: frozenset[str], most: float) -> PairLine:

@@ -8,6 +8,8 @@ from collections.abc import Mapping
 from types import MappingProxyType
 from typing import Any
 
+from bnx.counted_twice import bits_twice
+
 __all__ = ["CHIP_SENTENCES", "EDGE_CLAUSES", "PAIR_SENTENCES", "WHAT_IF", "pair_sentences", "what_if"]
 
 EDGE_CLAUSES = MappingProxyType(
@@ -54,6 +56,7 @@ WHAT_IF = MappingProxyType(
 )
 """What would change if one edge were left out, by what its held-out gain says."""
 
+_NOT_INDEPENDENT = "Do not take the two as independent."
 PAIR_SENTENCES = MappingProxyType(
     {
         "dependent": "Dependent: given {class} the two share {corrected} bits in an average record, less what chance"
@@ -63,9 +66,13 @@ PAIR_SENTENCES = MappingProxyType(
         "negligible": "Independent enough: the test found no dependence given {class}, and even the upper end of what"
         " they may share, {upper} bits, lies below {negligible} bits.",
         "blunt": "Not tested well enough: no dependence was found given {class}, but with 80 % power this sample would"
-        " only have found one of at least {detectable} bits. Do not take the two as independent.",
-        "untested": "Not tested: these records allow no test that could reject independence given {class}. Do not take"
-        " the two as independent.",
+        f" only have found one of at least {{detectable}} bits. {_NOT_INDEPENDENT}",
+        "missed": "Not settled: no dependence was found given {class}, and with 80 % power this sample would have found"
+        f" one of {{detectable}} bits; but that it is {{negligible}} bits or more is not ruled out. {_NOT_INDEPENDENT}",
+        "thin": "Not tested well enough: the records are spread too thinly over the cells of this pair to say how much"
+        f" the two may share given {{class}}. {_NOT_INDEPENDENT}",
+        "untested": "Not tested: these records allow no test that could reject independence given {class}."
+        f" {_NOT_INDEPENDENT}",
         "bounded": "They may share up to {upper} bits.",
         "twice": "Because of this pair naive counts {twice} bits of evidence about {class} twice in an average record.",
         "too little": "Because of this pair naive counts {less} bits of evidence about {class} too little in an average"
@@ -73,7 +80,7 @@ PAIR_SENTENCES = MappingProxyType(
         "harmless": "What naive counts twice because of this pair is next to nothing: {twice} bits per record.",
     }
 )
-"""What a pair's verdict means, where *not enough data* has two reasons, and what naive makes of the pair."""
+"""What a pair's verdict means, where *not enough data* has four reasons, and what naive makes of the pair."""
 
 
 def what_if(edge: Mapping[str, Any], tries: int, amount: str) -> str:
@@ -97,9 +104,18 @@ def pair_sentences(pair: Mapping[str, Any], negligible: float) -> tuple[str, ...
     """
     told = [pair["verdict"]]
     if pair["verdict"] == "not enough data":
-        told = ["untested" if pair["detectable_bits"] is None else "blunt"]
+        told = [_why_not_told(pair, negligible)]
         told += ["bounded"] if pair["bits_at_most"] is not None else []
-    twice = pair["double_counted_bits"]
+    twice = bits_twice(pair)
     if twice is not None:
         told.append("harmless" if abs(twice) < negligible else "twice" if twice > 0 else "too little")
     return tuple(told)
+
+
+def _why_not_told(pair: Mapping[str, Any], negligible: float) -> str:
+    """Say why the data do not suffice for a verdict: no test, no bounds, a blunt test, or chance."""
+    if pair["detectable_bits"] is None:
+        return "untested"
+    if pair["bits_at_most"] is None:
+        return "thin"
+    return "blunt" if pair["detectable_bits"] >= negligible else "missed"

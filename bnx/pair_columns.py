@@ -4,6 +4,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from typing import Any
 
+from bnx.counted_twice import bits_twice
 from bnx.printed import PairRow
 from bnx.verdicts import OUTCOMES
 
@@ -55,7 +56,7 @@ PAIR_COLUMNS = (
         "double_counted",
         "counted twice, bits",
         "Evidence about the class that naive counts twice because of this pair, in an average record; below 0 it "
-        "counts too little.",
+        "counts too little. Told of dependent pairs only.",
         brief=True,
     ),
     PairColumn(
@@ -121,7 +122,6 @@ def column_value(pair: Mapping[str, Any], row: PairRow, key: str) -> Any:
 _FIGURES = {
     "marginal": "marginal_bits",
     "at_most": "bits_at_most",
-    "double_counted": "double_counted_bits",
     "carried": "sample_carries_it",
     "detectable": "detectable_bits",
 }
@@ -130,4 +130,5 @@ _VALUES: Mapping[str, Callable[[Mapping[str, Any], PairRow], Any]] = {
     "verdict": lambda pair, _: VERDICT_ORDER.index(pair["verdict"]),
     "outcome": lambda pair, _: OUTCOMES.index(pair["outcome"]),
     "method": lambda _, row: row.method,
+    "double_counted": lambda pair, _: bits_twice(pair),
 }

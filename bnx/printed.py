@@ -4,6 +4,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
+from bnx.counted_twice import bits_twice
 from bnx.findings import chance, percent
 from bnx.text import bracketed, fixed, signed
 
@@ -253,7 +254,7 @@ def pair_row(pair: Mapping[str, Any]) -> PairRow:
         interval=bracketed((pair["bits_low"], pair["bits_high"]), 3, sign=False) or _DASH,
         at_most=_number(pair["bits_at_most"], 4),
         marginal=_number(pair["marginal_bits"], 4),
-        double_counted=_number(pair["double_counted_bits"], 4),
+        double_counted=_number(bits_twice(pair), 4),
         outcome=pair["outcome"],
         cramers_v=_number(pair["cramers_v"], 2),
         statistic=_number(pair["statistic"], 1),

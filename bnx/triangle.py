@@ -2,7 +2,7 @@
 
 import math
 import unicodedata
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -10,6 +10,7 @@ import numpy as np
 from markupsafe import Markup
 from scipy.cluster.hierarchy import leaves_list, linkage
 
+from bnx.counted_twice import bits_twice
 from bnx.report_data import json_block
 from bnx.text import fixed
 
@@ -23,10 +24,10 @@ _WIDTH, _NAMES = 1095.0, 200.0
 _WIDEST, _LEAST = 34.0, 12.0
 _SHAPES = {"dependent": "full", "detected, but negligible": "hollow", "negligible": "dot", "not enough data": "open"}
 _SMALLEST = {"full": 5.0, "hollow": 6.0, "dot": 2.8, "open": 6.0}
-_MEASURES = (
-    ("bits", "bits given the class"),
-    ("marginal_bits", "bits without the class"),
-    ("double_counted_bits", "counted twice, bits"),
+_MEASURES: tuple[tuple[str, str, Callable[[Mapping[str, Any]], float | None]], ...] = (
+    ("bits", "bits given the class", lambda pair: pair["bits"]),
+    ("marginal_bits", "bits without the class", lambda pair: pair["marginal_bits"]),
+    ("double_counted_bits", "counted twice, bits", bits_twice),
 )
 
 
@@ -116,8 +117,9 @@ def triangle(document: Mapping[str, Any], drawn: frozenset[frozenset[str]]) -> T
         if (key := frozenset((a, b))) in pairs
     ]
     shown = [pair for _, _, pair in cells]
-    measures = [one for one in _MEASURES if any(pair[one[0]] is not None for pair in shown)]
-    most = {key: max((pair[key] or 0.0 for pair in shown), default=0.0) for key, _ in measures}
+    values = {key: [bits_of(pair) for pair in shown] for key, _, bits_of in _MEASURES}
+    measures = [(key, label) for key, label, _ in _MEASURES if any(bits is not None for bits in values[key])]
+    most = {key: max((bits or 0.0 for bits in values[key]), default=0.0) for key, _ in measures}
     return Triangle(
         cell=cell,
         width=round((len(names) + 1) * cell + _NAMES, 1),
@@ -125,7 +127,10 @@ def triangle(document: Mapping[str, Any], drawn: frozenset[frozenset[str]]) -> T
         ground=_ground(len(names), cell),
         lines=_lines(len(names), cell),
         names=tuple(_name(place, cell, name) for place, name in enumerate(names)),
-        marks=tuple(_mark(row, column, pair, cell, room, most) for row, column, pair in cells),
+        marks=tuple(
+            _mark(cells[number], {key: values[key][number] for key in most}, cell, room, most)
+            for number in range(len(cells))
+        ),
         frames=tuple(
             (column * cell, row * cell) for row, column, pair in cells if frozenset((pair["a"], pair["b"])) in drawn
         ),
@@ -217,7 +222,15 @@ def _name(place: int, cell: float, name: str) -> Name:
     return Name(middle, round((place + 1) * cell + 2.0, 1), round(middle + 4.0, 1), shortened(name), name)
 
 
-def _mark(row: int, column: int, pair: Mapping[str, Any], cell: float, room: float, most: Mapping[str, float]) -> Mark:
+def _mark(
+    place: tuple[int, int, Mapping[str, Any]],
+    bits: Mapping[str, float | None],
+    cell: float,
+    room: float,
+    most: Mapping[str, float],
+) -> Mark:
+    """Draw one pair; bits, most: its own and the largest by measure."""
+    row, column, pair = place
     shape = _SHAPES[pair["verdict"]]
     numbered = room < cell - 2.0
     return Mark(
@@ -226,8 +239,8 @@ def _mark(row: int, column: int, pair: Mapping[str, Any], cell: float, room: flo
         x=round((column + 0.5) * cell, 1),
         y=round(row * cell + (room / 2 + 2.0 if numbered else cell / 2), 1),
         shape=shape,
-        sides=tuple(max(_SMALLEST[shape], _side(pair[key], most[key], room)) for key in most),
-        numbers=tuple(_short(pair[key]) if numbered else "" for key in most),
+        sides=tuple(max(_SMALLEST[shape], _side(bits[key], most[key], room)) for key in most),
+        numbers=tuple(_short(bits[key]) if numbered else "" for key in most),
         a=pair["a"],
         b=pair["b"],
         told=f"{fixed(pair['bits'], 4)} bits, {pair['verdict']}",

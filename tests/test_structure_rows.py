@@ -94,10 +94,13 @@ def test_what_would_change_without_an_edge(edge: dict[str, Any], amount: str, ki
     [
         ("dependent", 0.003, 0.2, 0.12, ("dependent", "twice")),
         ("dependent", 0.003, 0.2, -0.02, ("dependent", "too little")),
-        ("negligible", 0.003, 0.004, -0.0049, ("negligible", "harmless")),
+        ("dependent", 0.003, 0.2, -0.0049, ("dependent", "harmless")),
+        ("negligible", 0.003, 0.004, 0.02, ("negligible",)),
         ("detected, but negligible", 0.003, 0.004, None, ("detected, but negligible",)),
-        ("not enough data", 0.02, 0.03, 0.005, ("blunt", "bounded", "twice")),
-        ("not enough data", 0.02, None, None, ("blunt",)),
+        ("not enough data", 0.02, 0.03, 0.005, ("blunt", "bounded")),
+        ("not enough data", 0.005, 0.03, 0.005, ("blunt", "bounded")),
+        ("not enough data", 0.0049, 0.03, 0.005, ("missed", "bounded")),
+        ("not enough data", 0.02, None, None, ("thin",)),
         ("not enough data", None, None, None, ("untested",)),
     ],
 )
@@ -116,7 +119,7 @@ def test_what_a_verdict_means(
 def test_only_a_negligible_pair_is_called_independent() -> None:
     for kind, words in PAIR_SENTENCES.items():
         assert ("ndependent enough" in words) == (kind == "negligible")
-    for kind in ("blunt", "untested"):
+    for kind in ("blunt", "missed", "thin", "untested"):
         assert "Do not take the two as independent" in PAIR_SENTENCES[kind]
 
 
@@ -140,7 +143,8 @@ def test_every_pair_is_in_the_panel_with_the_figures_of_the_document(document: d
         assert row["bits"] == f"{pair['bits']:.4f}"
         assert row["corrected"] == f"{max(0.0, pair['bits_corrected']):.4f}"
         assert row["upper"] == ("–" if pair["bits_at_most"] is None else f"{pair['bits_at_most']:.4f}")
-        assert row["twice"] == f"{pair['double_counted_bits']:.4f}"
+        is_dependent = pair["verdict"] == "dependent"
+        assert row["twice"] == (f"{pair['double_counted_bits']:.4f}" if is_dependent else "–")
         assert (row["verdict"], row["outcome"], row["df"]) == (pair["verdict"], pair["outcome"], f"{pair['df']:,}")
 
 

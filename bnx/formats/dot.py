@@ -9,7 +9,7 @@ from bnx.dot_text import cell, cut, hint, lines_of, width_of
 from bnx.layers import layers, parents_first, rows
 from bnx.palette import PALETTES, Theme
 from bnx.picture import Arrow, Chip, Picture, Showing, Verdict, showing
-from bnx.text import count_of
+from bnx.text import bracketed, count_of
 
 __all__ = ["dot_source", "pen_width"]
 
@@ -209,12 +209,11 @@ def _number(sheet: _Sheet, arrow: Arrow, colour: str) -> str:
 
 def _evidence(sheet: _Sheet, arrow: Arrow) -> str:
     parent, child = (sheet.picture.chips[end].name for end in (arrow.parent, arrow.child))
-    gain = "" if arrow.gain is None else f", held-out gain {arrow.gain:+.3f}"
-    ends = arrow.gain_interval
-    interval = "" if ends is None else f" [{ends[0]:+.3f}, {ends[1]:+.3f}]"
-    unit = " bits per row" if gain else ""
+    gain = (
+        "" if arrow.gain is None else f", held-out gain {arrow.gain:+.3f} bits per row {bracketed(arrow.gain_interval)}"
+    )
     verdict = f"{arrow.verdict}; carried by blank cells" if arrow.by_blanks else arrow.verdict
-    return f"{parent} to {child}: {arrow.bits:.3f} bits given {sheet.picture.target}{gain}{unit}{interval}; {verdict}"
+    return f"{parent} to {child}: {arrow.bits:.3f} bits given {sheet.picture.target}{gain.rstrip()}; {verdict}"
 
 
 def _fan(sheet: _Sheet) -> list[str]:

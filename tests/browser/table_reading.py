@@ -32,5 +32,10 @@ def structure(document: Mapping[str, Any], name: str) -> dict[str, Any]:
 
 
 def pair_of(document: Mapping[str, Any], names: list[str], part: str = "pairs") -> dict[str, Any]:
-    """Find a pair by its two attributes in either order."""
-    return next(one for one in document[part] if {one["a"], one["b"]} == set(names))
+    """Find a pair by its two attributes in either order; what is counted twice is told of dependent pairs only."""
+    found = next(one for one in document[part] if {one["a"], one["b"]} == set(names))
+    return found if part != "pairs" else {**found, "double_counted_bits": bits_twice(found)}
+
+
+def bits_twice(pair: Mapping[str, Any]) -> float | None:
+    return pair["double_counted_bits"] if pair["verdict"] == "dependent" else None

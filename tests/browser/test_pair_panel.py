@@ -91,13 +91,13 @@ def test_figures_are_those_of_the_pair(panels: list[dict[str, Any]], demo: Made)
 
 def test_sentences_tell_figures_of_the_pair(panels: list[dict[str, Any]], demo: Made) -> None:
     settings = demo.document["settings"]
-    keys = ("bits_corrected", "bits_at_most", "double_counted_bits", "detectable_bits", "adjusted_p")
+    keys = ("bits_corrected", "bits_at_most", "detectable_bits", "adjusted_p")
     for panel in panels:
         pair = pair_of(demo.document, panel["names"])
         values = [pair[key] for key in keys if pair[key] is not None]
-        values += [settings["negligible"], 0.8, abs(pair["double_counted_bits"])]
+        values += [settings["negligible"], 0.8, abs(pair["double_counted_bits"] or 0.0)]
         told_numbers = numbers_in(" ".join(panel["said"]))
-        assert len(told_numbers) >= 2
+        assert len(told_numbers) >= 2 or pair["bits_at_most"] is None
         for one in told_numbers:
             assert any(tells(one, value) for value in values), (panel["names"], one, panel["said"])
 

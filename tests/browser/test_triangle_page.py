@@ -43,6 +43,7 @@ def test_the_triangle_starts_at_the_strongest_pair_and_tells_its_figures(found: 
     assert told_pair(page) == {pair["a"], pair["b"]}
     text = page.locator("#triangle-strip").inner_text()
     keys = ("bits", "bits_low", "bits_high", "marginal_bits", "double_counted_bits")
+    assert pair["verdict"] == "dependent"
     for printed in numbers_in(text.replace("95 % interval", "")):
         assert any(tells(printed, pair[key]) for key in keys), printed
     assert f"{pair['bits']:.4f}" in text

@@ -10,10 +10,11 @@ const stripParts = (row) => {
   const word = (key) => pairWord(key, row);
   const names = structureNames(row);
   const joined = names.length ? `Joined by ${names.join(", ")}.` : "No structure joins them.";
-  const twice = `Counted twice: ${word("double_counted")} bits.`;
+  const counted = word("double_counted");
+  const twice = counted === "–" ? "" : `Counted twice: ${counted} bits. `;
   const without = `${word("marginal")} without the class, which leaves it: ${word("outcome")}.`;
-  const interval = `${word("bits")} bits given the class, 95 % interval ${word("interval")}; ${without}`;
-  return [verdictEl(word("verdict")), `. ${interval} ${twice} ${joined}`];
+  const interval = `${word("bits")} bits given the class, 95 % interval ${word("interval")}; ${without} `;
+  return [verdictEl(word("verdict")), `. ${interval}${twice}${joined}`];
 };
 
 const tellCell = () => {
