@@ -13,6 +13,7 @@ from bnx.paired import Chances, Difference, bayesian_t, corrected_t
 from bnx.picking import apart, pick, region_of
 from bnx.rating import StructureScore
 from bnx.structure import Structure
+from bnx.text import quoted
 
 __all__ = ["Against", "Recommendation", "against", "inner_picks", "mixed_picks", "reason_for", "recommend"]
 
@@ -107,17 +108,20 @@ def reason_for(
     if len(names) == 1:
         return "It is the only structure compared."
     matters = f"an amount that matters (more than {region_of(means):.2g} bits)"
-    least = not any(len(one.edges) < len(structures[chosen].edges) for one in structures)
+    own = structures[chosen]
+    least = not any(len(one.edges) < len(own.edges) for one in structures)
     fewer = "none has fewer edges" if least else f"each structure with fewer edges is probably worse by {matters}"
-    if not structures[chosen].edges and chosen == best:
+    alike = [s for s, one in enumerate(structures) if s not in (chosen, best) and one.what_it_says == own.what_it_says]
+    twins = f" {quoted([names[s] for s in alike])} learnt the same edges from all rows." if alike and own.edges else ""
+    if not own.edges and chosen == best:
         return "It has the lowest log loss and no edges: no dependence pays here."
     if chosen == best:
-        return f"It has the lowest log loss, and {fewer}."
-    if structures[chosen].what_it_says == structures[best].what_it_says:
+        return f"It has the lowest log loss, and {fewer}.{twins}"
+    if own.what_it_says == structures[best].what_it_says:
         same = f"From all rows it learnt the same edges as {names[best]}, which has the lowest log loss"
-        return f"{same}; {fewer}." if structures[chosen].edges else f"{same}: none, so no dependence pays here."
+        return f"{same}; {fewer}.{twins}" if own.edges else f"{same}: none, so no dependence pays here."
     return (
-        f"It has the fewest edges of all that are probably as good as the best, {names[best]}: it is behind by "
-        f"{means[chosen] - means[best]:.4f} bits, and the chance that it is worse by {matters} is "
-        f"{100 * chances.worse:.0f} %."
+        f"It has the fewest edges of all that are probably as good as {names[best]}, which has the lowest log loss: it "
+        f"is behind by {means[chosen] - means[best]:.4f} bits, and the chance that it is worse by {matters} is "
+        f"{100 * chances.worse:.0f} %.{twins}"
     )

@@ -9,7 +9,7 @@ from bnx.mix_judging import JudgedMix
 from bnx.mixed_classifier import mix_words
 from bnx.plain import finite
 from bnx.score_entries import against_entry, fold_entries, score_entry
-from bnx.text import signed
+from bnx.text import bracketed
 
 __all__ = ["mix_document", "mix_entry"]
 
@@ -64,20 +64,22 @@ def mix_document(comparison: Comparison, structures: Sequence[Mapping[str, Any]]
 
 
 def mix_reason(mix: JudgedMix, names: Sequence[str], recommended: str) -> str:
-    """Say in one sentence whether the mix is offered, and why."""
+    """Say whether the mix is offered, and why."""
     if len(mix.members) == 1:
         return f"Not offered: of all rows, {names[next(iter(mix.members))]} takes all the weight."
     if mix.apart is None:
         return "Not offered: it cannot be compared, as a log loss is infinite."
     saves = mix.apart.mean <= 0
     low, high = (-mix.apart.high, -mix.apart.low) if saves else (mix.apart.low, mix.apart.high)
-    gain = f"{'saves' if saves else 'costs'} {abs(mix.apart.mean):.3f} bits [{signed(low)}, {signed(high)}]"
-    likely = "which can be chance" if low <= 0 <= high else "more than chance"
-    told = f"fold by fold it {gain} against what is picked without the fold, {likely}"
-    chance = f"better with a chance of {100 * mix.better:.0f} %"
+    chance = "which can be chance" if low <= 0 <= high else "more than chance"
+    told = (
+        f"{'saves' if saves else 'costs'} {abs(mix.apart.mean):.3f} bits per record {bracketed((low, high))} against "
+        f"the structure picked without each fold, {chance}; the chance "
+        f"that it is better is {100 * mix.better:.0f} %."
+    )
     if not mix.offered:
-        return f"Not offered: {told}; it is {chance}."
+        return f"Not offered: it {told}"
     return (
-        f"Offered beside {recommended}: take {recommended} where one graph has to be explained or handed over, the mix "
-        f"where only the probabilities count. It is {chance}: {told}."
+        f"Take it where only the probabilities count, {recommended} where one graph has to be explained or handed "
+        f"over. It {told}"
     )

@@ -146,7 +146,7 @@ def score_row(document: Mapping[str, Any], entry: Mapping[str, Any]) -> ScoreRow
     against = entry["against_baseline"]
     roles = {
         "recommended": document["recommended"]["name"],
-        "best": document["best"],
+        "lowest log loss": document["best"],
         "baseline": document["settings"]["baseline"],
     }
     role = ", ".join(word for word, name in roles.items() if name == entry["name"])

@@ -149,7 +149,7 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         findings=findings(document),
         scores=ranked_rows(document),
         why_below=why_below(document),
-        mix_reason=document["mix"]["reason"] if document["mix"] else "",
+        mix_reason="{words}. {reason}".format_map(document["mix"]) if document["mix"] else "",
         yardstick_sentences=tuple(one["sentence"] for one in document["yardsticks"] or ()),
         curve=curve_table(document["learning_curve"]) if document["learning_curve"] else None,
         has_holdout=any("holdout" in one for one in document["structures"]),

@@ -114,7 +114,9 @@ def test_the_reason_is_said_in_plain_words() -> None:
         "It has the lowest log loss, and each structure with fewer edges is probably worse by an amount that matters "
         "(more than 0.01 bits)."
     )
-    assert reason((1, 1, 2), 0, 0) == "It has the lowest log loss, and none has fewer edges."
+    assert reason((1, 1, 2), 0, 0) == (
+        "It has the lowest log loss, and none has fewer edges. s1 learnt the same edges from all rows."
+    )
     assert reason((2, 2, 0), 0, 1) == (
         "From all rows it learnt the same edges as s0, which has the lowest log loss; each structure with fewer edges "
         "is probably worse by an amount that matters (more than 0.01 bits)."
@@ -123,8 +125,8 @@ def test_the_reason_is_said_in_plain_words() -> None:
         "From all rows it learnt the same edges as s0, which has the lowest log loss: none, so no dependence pays here."
     )
     assert reason((3, 1), 0, 1, worse=0.3249) == (
-        "It has the fewest edges of all that are probably as good as the best, s0: it is behind by 0.1250 bits, and "
-        "the chance that it is worse by an amount that matters (more than 0.01 bits) is 32 %."
+        "It has the fewest edges of all that are probably as good as s0, which has the lowest log loss: it is behind "
+        "by 0.1250 bits, and the chance that it is worse by an amount that matters (more than 0.01 bits) is 32 %."
     )
 
 
