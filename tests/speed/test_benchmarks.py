@@ -8,6 +8,7 @@ import numpy as np
 import part_pairs
 import pyarrow.parquet
 import pytest
+from charts import measured as charts_measured
 from child import Child, ChildError, python
 from counting import engine_of, layout_of, plane_words, same_tables, statistics_of, tables_of
 from make_table import BenchTable, make_table, write_table
@@ -32,6 +33,7 @@ from setting import Claim, Part, Setting
 from sklearn.metrics import log_loss
 from sklearn.model_selection import StratifiedKFold, cross_val_predict
 from sklearn.naive_bayes import CategoricalNB
+from smallrun import small_run
 from timing import side_by_side
 
 from bnx.kernels.contingency import DF, X2
@@ -211,3 +213,9 @@ def test_small_run_of_the_pairs_gives_a_page(tmp_path: Path, monkeypatch: pytest
     assert "| 500 x 50 | 2 |" in text
     assert "its time is multiplied by 612" in text
     assert len(PARTS["pairs"].claims(figures["pairs"])) == 4
+
+
+def test_matplotlib_draws_every_chart_of_the_page_once_for_each_theme() -> None:
+    found = charts_measured(small_run().comparison)
+    assert found.numbers[1] == 2 * found.numbers[0] > 0
+    assert found.bytes[1] > found.bytes[0]
