@@ -52,7 +52,12 @@ KEYS = {
 STILL = {"region", "application"}  # boxes that scroll, and the triangle, whose keys are tested on their own
 
 
+SETTLED = "new Promise((done) => requestAnimationFrame(() => requestAnimationFrame(done)))"
+
+
 def controls(page: Page) -> list[dict[str, Any]]:
+    """Number the controls once all is drawn, as rows drawn anew afterwards would lose their numbers."""
+    page.evaluate(SETTLED)
     found: list[dict[str, Any]] = page.evaluate(NUMBERED)
     return found
 
