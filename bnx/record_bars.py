@@ -10,7 +10,7 @@ from bnx.ticks import round_ticks
 
 __all__ = ["Culprit", "EvidenceBar", "RecordCard", "RecordSection", "culprits", "record_section", "who_is_right"]
 
-_WIDTH, _EDGE = 320.0, 8.0
+_WIDTH, _EDGE = 320.0, 16.0
 _DASH = "–"
 _TOLD = 3  # attributes named in the sentences above the records
 _MATTERS = 0.05  # bits from which an attribute counts as counted twice in a record
