@@ -1,11 +1,15 @@
 """What single attributes say of a record out of fold: by counts made by hand, and against a classifier of the fold."""
 
+import json
 from functools import cache
+from pathlib import Path
 from typing import Any
 
 import numpy as np
+import pandas as pd
 import pytest
 from builders import compared, folds_of, predicted
+from commandline import call
 from hypothesis import given
 from hypothesis import strategies as st
 from test_disagreement import run, table
@@ -221,3 +225,36 @@ def test_the_document_names_what_is_numbered() -> None:
         for line, own in zip(row["attributes"], one.lines, strict=True):
             assert line["name"] == f"x{own.attribute}"
             assert line["parents"] == [f"x{parent}" for parent in own.parents]
+
+
+def test_files_tell_of_as_many_records_as_asked_for_by_any_number_of_threads(tmp_path: Path) -> None:
+    table().drop(columns=["site", "heavy"]).to_csv(tmp_path / "t.csv", index=False)
+    given_ = ("learn", str(tmp_path / "t.csv"), "--class", "kind", "--structures", "naive,tan", "--resamples", "0")
+    found = {}
+    for name, options in {"none": ("--records", "0"), "one": ("--records", "5"), "three": ("--records", "5")}.items():
+        jobs = "3" if name == "three" else "1"
+        done = call(*given_, "--folds", "4", "--jobs", jobs, "-o", str(tmp_path / name), "--quiet", *options)
+        assert done.code == 0, done.err
+        found[name] = json.loads((tmp_path / name / "comparison.json").read_text(encoding="utf-8"))
+        page = (tmp_path / name / "report.html").read_text(encoding="utf-8")
+        assert page.count('<details class="record"') == (0 if name == "none" else 5)
+    assert found["none"]["records"] is None
+    assert len(found["one"]["records"]["rows"]) == 5
+    assert found["one"]["records"] == found["three"]["records"]
+
+
+def test_lines_are_those_of_the_predictions_where_rows_are_left_out(tmp_path: Path) -> None:
+    frame = table(blanks=0.05).drop(columns=["site", "heavy"])
+    frame.to_csv(tmp_path / "t.csv", index=False)
+    out = tmp_path / "out"
+    given_ = ("learn", str(tmp_path / "t.csv"), "--class", "kind", "--structures", "naive,tan", "--resamples", "0")
+    done = call(*given_, "--missing", "drop", "--folds", "4", "--predictions", "-o", str(out), "--quiet")
+    assert done.code == 0, done.err
+    rows = json.loads((out / "comparison.json").read_text(encoding="utf-8"))["records"]["rows"]
+    said = pd.read_parquet(out / "predictions.parquet").set_index(["structure", "row"])
+    assert max(row["line"] for row in rows) > len(frame.dropna())
+    for row in rows:
+        for side, name in (("naive", "naive"), ("structure", "tan")):
+            own = said.loc[name, row["line"]]
+            assert [own[f"p:{level}"] for level in "pqr"] == pytest.approx(row["probabilities"][side], abs=1e-12)
+            assert (own["truth"], own["fold"]) == (row["truth"], row["fold"])

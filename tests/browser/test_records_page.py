@@ -240,6 +240,30 @@ def test_the_page_says_why_no_records_are_shown(
         found.assert_quiet()
 
 
+def test_cells_not_observed_stand_in_a_line_of_their_own(browser: Browser, demo: Made, tmp_path: Path) -> None:
+    document = copy.deepcopy(demo.document)
+    row = document["records"]["rows"][0]
+    child = next(one for one in row["attributes"] if one["parents"])
+    root, dropped = [one for one in row["attributes"] if not one["parents"]][:2]
+    unknown = {"structure_bits": None, "twice_bits": None, "adds_bits": None}
+    child |= unknown
+    root |= unknown | {"level": None, "naive_bits": 0.0}
+    dropped |= {"left_out": True, "structure_bits": 0.0, "twice_bits": 0.0, "adds_bits": -dropped["naive_bits"]}
+    row["structure"]["summed_out_bits"] = -1.23
+    made = page_made(tmp_path, document, {})
+    with opened(browser, made.path) as found:
+        card = cards(found.page.locator(RECORDS).first)[0]
+        found.assert_quiet()
+    by_name = {line["name"]: line for line in card["rows"]}
+    assert by_name[child["name"]]["role"].endswith("a cell is not observed")
+    assert by_name[child["name"]]["cells"][3:] == ["–", "–", "–"]
+    assert by_name[root["name"]]["level"] == "not observed"
+    assert by_name[child["name"]]["given"] is None
+    assert by_name[dropped["name"]]["role"] == f"left out by {document['records']['structure']}"
+    assert by_name[dropped["name"]]["twice"] is None
+    assert card["foot"][0] == ["what hangs on cells not observed", "0.00", "", "", "-1.23"]
+
+
 def test_the_section_can_be_reached_from_the_top(browser: Browser, demo: Made) -> None:
     with opened(browser, demo.path) as found:
         links = found.page.locator("nav.sections a").all_text_contents()
