@@ -47,6 +47,7 @@ from bnx.storing import MEMORY, Store
 from bnx.structure import Structure
 from bnx.tables import LeftOut, Lines
 from bnx.trainings import Training
+from bnx.weight_of_evidence import Records, records_of_disagreement
 from bnx.wide_judging import MOST_JUDGED, judge_wide
 from bnx.wide_learning import takes_wide_road
 from bnx.yardstick import Yardstick, measure_yardsticks, yardstick_notes
@@ -118,6 +119,16 @@ class Comparison:
             pooled["mix"] = (len(names), self.mix.score.pooled)
         tempered = self.recipe.temperature
         return {name: reliability_of(self.evaluations, s, own, tempered) for name, (s, own) in pooled.items()}
+
+    @cached_property
+    def records(self) -> Records | None:
+        """Records on which naive and the recommended structure disagree most; None where none are asked for."""
+        if not self.recipe.records:
+            return None
+        losses = [result.pooled.log_loss for result in self.results]
+        recommended = self.recommendation.recommended
+        first, names = self.evaluations[0], self.recipe.structures
+        return records_of_disagreement(first, names, losses, recommended, self.recipe.records)
 
 
 def compare(

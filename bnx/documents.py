@@ -22,6 +22,7 @@ from bnx.mix_documents import mix_entry
 from bnx.pair_table_entries import pair_table_entries
 from bnx.picture import Arrow, Chip, Picture
 from bnx.plain import finite
+from bnx.record_entries import records_entry
 from bnx.score_entries import against_entry, fold_entries, reliability_entry, score_entry
 from bnx.structure import words
 from bnx.text import count_of
@@ -92,6 +93,7 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
             "yardsticks": yardstick_entries(comparison),
             "learning_curve": curve_entry(comparison),
             "reliability": {name: reliability_entry(one) for name, one in comparison.reliability.items()},
+            "records": records_entry(comparison),
             **pair_entries(comparison),
             "left_out": [{"name": one.name, "reason": one.reason} for one in comparison.left_out],
             "warnings": list(comparison.warnings),

@@ -31,6 +31,7 @@ SOURCES = (
         "Robins, Breslow & Greenland 1986; whether it is the same in all, Breslow & Day 1980, Tarone 1985",
     ),
     ("Weight of evidence, and evidence counted twice", "Good 1950; the average over records and classes is our own"),
+    ("Records on which two structures disagree", "Jensen-Shannon divergence, Lin 1991"),
     (
         "Tables and calibration",
         "back-off smoothing, Friedman, Geiger & Goldszmidt 1997, Petitjean, Buntine, Webb & Zaidi 2018; temperature, "

@@ -62,6 +62,7 @@ class Recipe:
     require: tuple[str, ...] = ()
     forbid: tuple[str, ...] = ()
     resamples: int = 100
+    records: int = 12
     yardstick: bool = False
     learning_curve: bool = False
 
@@ -77,6 +78,7 @@ class Recipe:
         _whole("seed", self.seed, 0, 2**63 - 1)
         _whole("max-levels", self.max_levels, 2, 60_000)
         _whole("resamples", self.resamples, 0, 100_000)
+        _whole("records", self.records, 0, 100)
         candidates(self.smoothing)
         parse_bins(self.bins)
         if len(set(self.structures)) < len(self.structures):

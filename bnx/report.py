@@ -18,6 +18,7 @@ from bnx.printed import (
     attribute_rows,
     curve_table,
 )
+from bnx.record_bars import RecordSection, record_section
 from bnx.reliability_chart import ReliabilityChart, reliability_charts
 from bnx.report_page import page_html
 from bnx.score_tables import (
@@ -84,6 +85,7 @@ class Report:
     pairs_judged: str
     triangle: Triangle | None
     attributes: tuple[AttributeRow, ...]
+    records: RecordSection
     left_out: tuple[tuple[str, str], ...]
     left_out_total: int
     weighted: bool
@@ -165,6 +167,7 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         pairs_judged=f"{document['pairs_judged']:,}",
         triangle=triangular,
         attributes=attribute_rows(document["schema"], ATTRIBUTES_ON_PAGE),
+        records=record_section(document),
         left_out=tuple((one["name"], one["reason"]) for one in document["left_out"][:LINES_ON_PAGE]),
         left_out_total=len(document["left_out"]),
         weighted=bool(settings["weight"]),

@@ -12,6 +12,7 @@ __all__ = ["SCRIPTS", "STYLES", "page_html"]
 
 STYLES = (
     *("base", "controls", "answer", "structures", "scores", "pairs", "triangle", "pair_panel", "attributes"),
+    "records",
     "print",
 )
 """Style sheets in the order in which they are joined."""

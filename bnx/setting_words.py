@@ -34,6 +34,7 @@ _WORDS = {
     "require": "edges that must be there, parent first",
     "forbid": "attributes that no edge may join",
     "resamples": "random halves for the stability of edges",
+    "records": "records shown on which naive and the recommended structure disagree most",
     "yardstick": "models that are no structures are fitted for comparison",
     "learning_curve": "learnt again from shares of the rows",
 }

@@ -125,6 +125,7 @@ SETTINGS = {
     "--repeats 0": "--repeats: 0 cannot be used; give a whole number from 1 to 1000",
     "--max-levels 1": "--max-levels: 1 cannot be used; give a whole number from 2 to 60000",
     "--resamples -1": "--resamples: -1 cannot be used; give a whole number from 0 to 100000",
+    "--records 101": "--records: 101 cannot be used; give a whole number from 0 to 100",
     "--jobs -1": "--jobs: -1 cannot be used; give a number of threads, or 0 for one per processor",
     "--smoothing laplace:0": "--smoothing: 'laplace:0' cannot be used; give auto, laplace:A, backoff:S or "
     "backoff:S,D with numbers above 0",

@@ -25,12 +25,15 @@ FLOORS = (
     "learners",
     "recipe wide_forests wide wide_learning matrix_memory heldout leaving_out learning pair_judging many_tests "
     "wide_testing wide_judging pair_table",
-    "choosing cut_trials evaluation gains fold_cells rating before_after resampling pair_tests",
+    "choosing cut_trials evaluation gains fold_cells rating before_after disagreement "
+    "weight_of_evidence resampling pair_tests",
     "dealing judging metric_differences mix_judging ledger observing held_out cut_notes run_notes yardstick_models "
     "yardstick learning_curve comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
-    "chosen score_entries mix_documents yardstick_documents curve_documents listed_pairs pair_table_entries documents "
-    "ticks reliability_words sureness counted_twice findings metric_charts printed score_tables setting_words "
+    "chosen score_entries mix_documents yardstick_documents curve_documents listed_pairs pair_table_entries "
+    "record_entries documents "
+    "ticks reliability_words sureness counted_twice findings metric_charts printed "
+    "record_bars score_tables setting_words "
     "method_words reliability_chart report_data report_page pair_columns pair_rows triangle edge_words "
     "pair_figures pair_tables_page structure_rows report results tested_text tested_picture",
     "cli",

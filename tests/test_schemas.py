@@ -109,6 +109,9 @@ def put(*path: str | int, value: Any) -> Callable[[Document], None]:
         ("comparison", put("pairs", 0, "sample_carries_it", value="yes")),
         ("comparison", put("attributes", value=["a", "a"])),
         ("comparison", put("class_levels", value=["one"])),
+        ("comparison", put("records", "rows", 0, "disagreement", value=1.5)),
+        ("comparison", put("records", "rows", 0, "naive", "temperature", value=0)),
+        ("comparison", put("records", "rows", 0, "attributes", 0, "naive_bits", value=None)),
         ("structure", put("format", value="bnx-comparison/1")),
         ("structure", put("attributes", 0, "counts", 0, value=[-1.5])),
         ("structure", put("attributes", 0, "counts", 0, value="1")),
@@ -132,6 +135,9 @@ def test_figures_that_may_be_missing_may_be_null() -> None:
     document["structures"][0] |= {"log_loss": None, "log_loss_se": None, "auc": None, "calibration_slope": None}
     document["structures"][1]["edges"][0] |= {"stability": None, "gate_p": None}
     document["pairs"][0] |= dict.fromkeys(("statistic", "p_value", "adjusted_p", "cramers_v", "detectable_bits"))
+    document["records"]["rows"][0]["attributes"][0] |= {"level": None, "structure_bits": None, "twice_bits": None}
+    document["records"]["rows"][0] |= {"prior_bits": None}
     assert accepts("comparison", document)
+    assert accepts("comparison", document | {"records": None})
     document["structures"][0]["brier"] = None
     assert not accepts("comparison", document)

@@ -115,6 +115,9 @@ def run(
     resamples: Annotated[
         int, typer.Option(metavar="N", help="Random halves for the stability of edges; 0 for none.")
     ] = Recipe.resamples,
+    records: Annotated[
+        int, typer.Option(metavar="N", help="Records told of, on which naive is farthest off the rest; 0 for none.")
+    ] = Recipe.records,
     yardstick: Annotated[
         bool,
         typer.Option("--yardstick", help="Also fit logistic regression and gradient boosting, for comparison only."),

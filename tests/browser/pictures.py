@@ -64,6 +64,7 @@ PICTURES: dict[str, tuple[int, int, Theme, Shot]] = {
     "pairs": (1280, 1100, "light", part("#pairs", 970)),
     "pairs-dark": (1280, 1100, "dark", part("#pairs", 970)),
     "scores": (1280, 1100, "light", part("#scores", 840)),
+    "records": (1280, 1100, "light", part("#records", 900)),
     "phone": (420, 860, "light", top),
 }
 

@@ -14,6 +14,7 @@ import pytest
 from pages import Made, opened
 from playwright.sync_api import Browser
 from printed_numbers import forms, known_numbers, numbers_in, only
+from record_reading import record_counts, record_means
 
 SECTIONS = "[...document.querySelectorAll('main > section')].map((one) => one.id)"
 # The texts of a section, with what only hovering or a screen reader tells; axes and scales bear numbers of their own.
@@ -51,6 +52,7 @@ def counted(document: dict[str, Any]) -> Iterator[int]:
     yield from (sum(pairs[pair] == "dependent" for pair in one if pair in pairs) for one in joined)
     yield from Counter(document["recommended"]["picks"]).values()
     yield from (sum(row) for row in document["structures"][0]["confusion"])
+    yield from record_counts(document)
 
 
 def measured(document: dict[str, Any]) -> Iterator[float]:
@@ -59,6 +61,7 @@ def measured(document: dict[str, Any]) -> Iterator[float]:
     base = next(one for one in entries if one["name"] == document["settings"]["baseline"])
     yield from ((base["log_loss"] - one["log_loss"]) / base["log_loss"] for one in entries)
     yield from (count / sum(row) for one in entries for row in one["confusion"] for count in row)
+    yield from record_means(document)
     for one in [*entries, *([document["mix"]] if document["mix"] else [])]:
         for fold, other in zip(one["by_fold"], base["by_fold"], strict=True):
             yield from (value - other[key] for key, value in fold.items() if isinstance(value, float))
