@@ -27,9 +27,9 @@ def outer_edges(fine: np.ndarray, lowest: float, highest: float, distinct: int) 
 def chosen_edges(fine: np.ndarray, rows: np.ndarray, cuts: np.ndarray, ends: tuple[float, float]) -> np.ndarray:
     """Choose at most 47 of the fine cut points (m,), or as many as there are ``cuts``; sorted positions.
 
-    All are taken where they are so few. Else those nearest to edges of equal width, as far as most rows reach, and
-    every cut point; beyond lies one wide bin on either side. rows (m + 1,) of the fine bins; cuts (k,) are some of
-    ``fine``; ends: where the outermost bins begin and end.
+    All are taken where they are so few. Else every cut point, and those nearest to edges of equal width, as far as most
+    rows reach and they leave no sliver; beyond lies one wide bin on either side. rows (m + 1,) of the fine bins; cuts
+    (k,) are some of ``fine``; ends: where the outermost bins begin and end.
     """
     if len(fine) < MOST_BINS:
         return np.arange(len(fine))
@@ -43,8 +43,13 @@ def chosen_edges(fine: np.ndarray, rows: np.ndarray, cuts: np.ndarray, ends: tup
     grid = np.linspace(low, high, steps + 1)
     inner = edges[1:-1]
     nearest = np.unique(np.abs(inner[None, :] - grid[:, None]).argmin(axis=1))
-    apart = np.abs(inner[nearest, None] - inner[own][None, :]).min(axis=1, initial=np.inf)
-    return np.union1d(nearest[apart >= (high - low) / steps / 2], own)
+    fixed = [edges[0], edges[-1], *inner[own]]
+    least, kept = (high - low) / steps / 2, []
+    for place in nearest.tolist():
+        if min(abs(inner[place] - edge) for edge in fixed) >= least:
+            kept.append(place)
+            fixed.append(inner[place])
+    return np.union1d(np.array(kept, np.int64), own)
 
 
 def _reach(edges: np.ndarray, rows: np.ndarray) -> tuple[float, float]:

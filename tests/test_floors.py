@@ -33,6 +33,7 @@ FLOORS = (
     "chosen score_entries mix_documents yardstick_documents curve_documents listed_pairs pair_table_entries "
     "level_entries documents "
     "ticks reliability_words sureness counted_twice findings metric_charts printed score_tables setting_words "
+    "level_charts attribute_rows "
     "method_words reliability_chart report_data report_page pair_columns pair_rows triangle edge_words "
     "pair_figures pair_tables_page structure_rows report results tested_text tested_picture",
     "cli",
