@@ -3,6 +3,7 @@
 import math
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
@@ -20,10 +21,11 @@ FEW_RECORDS = 30
 _WIDTH, _SIDE = 460.0, 10.0
 _HEAD, _BARS, _GAP, _AXIS = 17.0, 42.0, 6.0, 24.0
 _LABEL, _SIGN, _MOST_LINES = 15.0, 6.4, 4
-_LONG = 0.25  # an outermost bin of so large a share of the others' range is drawn shorter ...
-_SHORT = 0.05  # ... of this share
+_LONG, _WIDER = 0.25, 3.0  # an outermost bin of this share of the others' range, so many times as wide as any ...
+_SHORT = 0.05  # ... is drawn of this share of the width
 _TALL = 3.0  # a bar so many times as high as the next is cut
 _LARGEST, _SMALLEST = 1e300, 1e-250  # numbers and ranges beyond are not drawn
+_LEAST_PLAIN, _MOST_PLAIN, _MOST_DECIMALS = 1e-4, 1e12, 15  # of numbers written without a power of ten
 _NAME = 40
 
 
@@ -130,11 +132,12 @@ def _scaled(distribution: Mapping[str, Any], edges: Sequence[float]) -> tuple[_S
     """Choose what is drawn to scale: all but outermost bins that would take too much of the width."""
     low, high, left, right = edges[0], edges[-1], _SIDE, _WIDTH - _SIDE
     beyond = []
-    inner = edges[-2] - edges[1]
-    if inner > 0 and edges[1] - low > _LONG * inner:
+    widest = max((high - low for low, high in pairwise(edges[1:-1])), default=math.inf)
+    most = max(_LONG * (edges[-2] - edges[1]), _WIDER * widest)
+    if edges[1] - low > most:
         low, left = edges[1], left + _SHORT * _WIDTH
         beyond.append(f"The first bar reaches down to {distribution['lowest']:.6g}.")
-    if inner > 0 and high - edges[-2] > _LONG * inner:
+    if high - edges[-2] > most:
         high, right = edges[-2], right - _SHORT * _WIDTH
         beyond.append(f"The last bar reaches up to {distribution['highest']:.6g}.")
     return _Scale(low, high, left, right), tuple(beyond)
@@ -216,13 +219,22 @@ def _labels(xs: Sequence[float], values: Sequence[str]) -> tuple[list[tuple[floa
     return placed, sum(line == 0 for _, _, line in placed)
 
 
-def _ticks(scale: _Scale) -> Iterator[tuple[float, str]]:
-    """Round numbers along the axis, as many as there is room for."""
+def _ticks(scale: _Scale) -> list[tuple[float, str]]:
+    """Give round numbers along the axis, as many as there is room for."""
+    for about in (6, 3):
+        ticks = list(_round(scale, about))
+        if sum(_SIGN * len(text) + 8 for _, text in ticks) <= scale.right - scale.left:
+            return ticks
+    return [ticks[0], ticks[-1]]
+
+
+def _round(scale: _Scale, about: int) -> Iterator[tuple[float, str]]:
+    """List round numbers, with their places."""
     power = 10.0 ** math.floor(math.log10(scale.high - scale.low))
-    ticks = round_ticks(scale.low / power, scale.high / power, 6)
+    ticks = round_ticks(scale.low / power, scale.high / power, about)
     step = power * (ticks[1] - ticks[0] if len(ticks) > 1 else 1.0)
     decimals = max(0, -math.floor(math.log10(step) + 1e-9))
+    plain = decimals <= _MOST_DECIMALS and _LEAST_PLAIN <= max(abs(scale.low), abs(scale.high)) < _MOST_PLAIN
     for tick in ticks:
         value = tick * power
-        plain = decimals <= 6 and abs(value) < 1e7
         yield scale.x(value), (f"{value + 0.0:.{decimals}f}" if plain else f"{value:.6g}")
