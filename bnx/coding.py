@@ -9,7 +9,7 @@ from typing import Literal
 import numpy as np
 
 from bnx.cells import Cells
-from bnx.columns import Column, Tally, TextColumn, tally
+from bnx.columns import Column, Extent, Tally, TextColumn, tally
 from bnx.domains import Domain, Schema
 from bnx.duplicates import count_duplicates
 from bnx.errors import DataError, SettingError
@@ -46,7 +46,8 @@ class Coded:
 
     ``warnings`` are sentences; ``extra`` holds the columns asked for beside the attributes, by name; ``rows_read``
     counts the rows of the source, ``duplicates`` those that repeat an earlier one in all attributes used and the class;
-    ``weighing``: the column of weights, if there is one, whose counts the rows follow already.
+    ``weighing``: the column of weights, if there is one, whose counts the rows follow already; ``extents``: of the
+    attributes used, in their order.
     """
 
     table: CodedTable
@@ -56,6 +57,7 @@ class Coded:
     rows_read: int
     duplicates: int
     weighing: RowWeights | None = None
+    extents: tuple[Extent, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -126,7 +128,8 @@ def code_table(
     if weights is None or not weights.counts:  # records that a row stands for are alike by intent
         warnings += _duplicate_warning(duplicates, raw.lines.count, table.schema)
     noted = (*(weights.notes if weights else []), *warnings, *pooled)
-    return Coded(table, tuple(left_out), noted, side, raw.lines.read, duplicates, weights)
+    extents = tuple(found.extent for found in used.values())
+    return Coded(table, tuple(left_out), noted, side, raw.lines.read, duplicates, weights, extents)
 
 
 def _check(

@@ -1,5 +1,6 @@
 """One raw column, as texts with a code each or as numbers, and what it holds."""
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -10,7 +11,7 @@ from bnx.kernels import count_cells
 from bnx.storing import Store
 from bnx.tables import Lines
 
-__all__ = ["FINE_LEVELS", "Column", "NumberColumn", "Tally", "TextColumn", "tally"]
+__all__ = ["FINE_LEVELS", "Column", "Extent", "NumberColumn", "Tally", "TextColumn", "tally"]
 
 FINE_LEVELS = 256
 _NO_RECODE = np.zeros((1, 1), np.int32)
@@ -56,21 +57,40 @@ Column = TextColumn | NumberColumn
 
 
 @dataclass(frozen=True)
+class Extent:
+    """How many different values a column holds; the lowest and the highest of numbers, NaN without any."""
+
+    distinct: int
+    lowest: float = math.nan
+    highest: float = math.nan
+
+    @classmethod
+    def of(cls, ordered: np.ndarray, distinct: int) -> "Extent":
+        """Take the ends of sorted numbers."""
+        return cls(distinct, float(ordered[0]), float(ordered[-1])) if len(ordered) else cls(distinct)
+
+
+@dataclass(frozen=True)
 class Tally:
     """What a column holds: distinct values with their rows, and the count of blank cells.
 
     ``values`` (m,) float64 ascending, or for a text column the raw codes (m,) that occur; ``counts`` (m,) int64 rows.
-    Of measurements of more than 256 values, only ``distinct`` (how many), ``whole`` (whether all are whole numbers) and
-    the fine ``cuts`` are kept.
+    Of measurements of more than 256 values, only the ``extent``, ``whole`` (whether all are whole numbers) and the fine
+    ``cuts`` are kept.
     """
 
     values: np.ndarray
     counts: np.ndarray
     blanks: int
-    distinct: int
+    extent: Extent
     filled: int
     whole: bool
     cuts: np.ndarray
+
+    @property
+    def distinct(self) -> int:
+        """Count the different values."""
+        return self.extent.distinct
 
 
 def tally(column: Column, lines: Lines, store: Store) -> Tally:
@@ -80,7 +100,7 @@ def tally(column: Column, lines: Lines, store: Store) -> Tally:
     rows = _count_codes(column.cells, len(column.texts) + 1, lines)
     present = np.flatnonzero(rows[1:]) + 1
     counts = rows[present]
-    return Tally(present, counts, int(rows[0]), len(present), int(counts.sum()), False, np.zeros(0))
+    return Tally(present, counts, int(rows[0]), Extent(len(present)), int(counts.sum()), False, np.zeros(0))
 
 
 def _count_codes(cells: Cells, size: int, lines: Lines) -> np.ndarray:
@@ -107,14 +127,15 @@ def _tally_numbers(column: NumberColumn, lines: Lines, store: Store) -> Tally:
         np.add.at(counts, place, rows[used])
         cuts = fine_cuts(values, counts, FINE_LEVELS - (rows[0] > 0))
         whole = bool(np.all(values == np.floor(values)))
-        return Tally(values, counts, int(rows[0]), len(values), int(counts.sum()), whole, cuts)
+        extent = Extent.of(values, len(values))
+        return Tally(values, counts, int(rows[0]), extent, int(counts.sum()), whole, cuts)
     ordered = _in_order(column.cells, lines, store)
     blanks = lines.count - len(ordered)
     distinct, whole = _described(ordered)
     cuts = ordered_cuts(ordered, distinct, FINE_LEVELS - (blanks > 0))
     few = ordered[: len(ordered) if distinct <= FINE_LEVELS else 0]
     values, counts = np.unique(few, return_counts=True)
-    return Tally(values, counts, blanks, distinct, len(ordered), whole, cuts)
+    return Tally(values, counts, blanks, Extent.of(ordered, distinct), len(ordered), whole, cuts)
 
 
 def _described(ordered: np.ndarray) -> tuple[int, bool]:

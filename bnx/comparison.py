@@ -31,6 +31,7 @@ from bnx.learners import Learner, learner
 from bnx.learning import Learned, make_bounds
 from bnx.learning_curve import LearningCurve, measure_curve
 from bnx.ledger import EdgeEvidence, edge_ledger
+from bnx.level_counts import LevelCounts, count_levels
 from bnx.losses import Scores
 from bnx.matrix_memory import matrix_notes
 from bnx.metric_differences import differences
@@ -60,7 +61,8 @@ __all__ = ["Comparison", "compare"]
 class Comparison:
     """Everything that one run found out; per structure in the order asked for.
 
-    ``relevance`` (n,): bits each attribute shares with the class. ``pairs`` and ``judged``: all pairs, on all rows.
+    ``relevance`` (n,): bits each attribute shares with the class; ``levels``: its records by level and class, None
+    where they are too many to keep. ``pairs`` and ``judged``: all pairs, on all rows.
     ``mix``: of the structures, None where nothing is mixed; ``held_out``: scores on a table that took no part, of the
     structures and last of the mix, empty without one; ``yardsticks``: models that are no structures;
     ``curve``: log loss by training rows, None if not asked for. ``weights``: of rows, in plain values.
@@ -73,6 +75,7 @@ class Comparison:
     folds: int
     classifiers: tuple[Classifier, ...]
     relevance: np.ndarray
+    levels: tuple[LevelCounts | None, ...]
     pairs: Pairs
     judged: JudgedPairs
     results: tuple[StructureScore, ...]
@@ -158,8 +161,7 @@ def compare(
     early = _forewarned(matrix_notes(coded.table.schema, learners, bounds, recipe), warn)
     evaluations, folds = _evaluations(coded, recipe, learners, bounds, jobs, progress, store)
     gains = [fold for one in evaluations for fold in edge_gains(one)]
-    first = evaluations[0]
-    learned = first.learned(())
+    first, learned = evaluations[0], evaluations[0].learned(())
     progress("stability", 0, 0)
     stable = stability(_under("stability", first.engine), learned, folds, learners, bounds, recipe)
     results, recommendation, mix, yardsticks = _scores(evaluations, recipe, folds)
@@ -179,6 +181,7 @@ def compare(
         folds=folds,
         classifiers=classifiers,
         relevance=relevance_of(first.engine, learned.training),
+        levels=count_levels(first.engine, learned.training, coded.table.schema, coded.extents),
         pairs=pairs,
         judged=judged,
         results=tuple(results),

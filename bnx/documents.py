@@ -17,6 +17,7 @@ from bnx.curve_documents import curve_entry
 from bnx.formats.dot import dot_source
 from bnx.formats.structure_json import classifier_document
 from bnx.ledger import EdgeEvidence
+from bnx.level_entries import attribute_entries
 from bnx.listed_pairs import pair_results
 from bnx.mix_documents import mix_entry
 from bnx.pair_table_entries import pair_table_entries
@@ -68,16 +69,8 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
             "rows": comparison.rows,
             "folds": comparison.folds,
             "attributes": list(comparison.names),
-            "schema": [
-                {
-                    "name": domain.name,
-                    "numeric": domain.numeric,
-                    "levels": list(domain.levels),
-                    "cuts": list(domain.cuts),
-                    "bits_with_class": float(bits),
-                }
-                for domain, bits in zip(comparison.domains, comparison.relevance, strict=True)
-            ],
+            "schema": attribute_entries(comparison),
+            "attributes_counted": sum(one is not None for one in comparison.levels),
             "settings": comparison.recipe.to_dict(),
             "weights": comparison.weights,
             "structures": [structure_entry(comparison, s) for s in range(len(names))],

@@ -9,12 +9,10 @@ from bnx.findings import chance, percent
 from bnx.text import bracketed, fixed, signed
 
 __all__ = [
-    "AttributeRow",
     "CurveTable",
     "EdgeRow",
     "PairRow",
     "ScoreRow",
-    "attribute_rows",
     "confusion_rows",
     "curve_table",
     "edge_row",
@@ -101,18 +99,6 @@ class PairRow:
     min_expected: str
     detectable: str
     verdict: str
-
-
-@dataclass(frozen=True)
-class AttributeRow:
-    """One attribute: its levels, cut points, and the bits it shares with the class; ``bar`` in 0 to 100."""
-
-    name: str
-    kind: str
-    levels: tuple[str, ...]
-    cuts: tuple[str, ...]
-    bits: str
-    bar: float
 
 
 @dataclass(frozen=True)
@@ -267,20 +253,4 @@ def pair_row(pair: Mapping[str, Any]) -> PairRow:
         if pair["detectable_bits"] is None
         else ("" if pair["bits_low"] is not None else "about ") + fixed(pair["detectable_bits"], 4),
         verdict=pair["verdict"],
-    )
-
-
-def attribute_rows(schema: Sequence[Mapping[str, Any]], most_rows: int) -> tuple[AttributeRow, ...]:
-    """List at most so many attributes, most bits with the class first."""
-    most = max((one["bits_with_class"] for one in schema), default=0.0) or 1.0
-    return tuple(
-        AttributeRow(
-            name=one["name"],
-            kind="numeric, cut" if one["numeric"] else "levels",
-            levels=tuple(one["levels"]),
-            cuts=tuple(f"{cut:.6g}" for cut in one["cuts"]),
-            bits=fixed(one["bits_with_class"]),
-            bar=round(100 * one["bits_with_class"] / most, 1),
-        )
-        for one in sorted(schema, key=lambda one: -one["bits_with_class"])[:most_rows]
     )

@@ -5,6 +5,7 @@ from dataclasses import dataclass
 from pathlib import PurePath
 from typing import Any
 
+from bnx.attribute_rows import Attribute, attribute_rows
 from bnx.findings import Findings, drawn_pairs, findings
 from bnx.method_words import GLOSSARY, SOURCES, VERDICTS_READ
 from bnx.metric_charts import MetricChart, metric_charts
@@ -12,10 +13,8 @@ from bnx.pair_figures import pairs_block
 from bnx.pair_rows import PairLedger, pair_ledger
 from bnx.pair_tables_page import tables_block
 from bnx.printed import (
-    AttributeRow,
     CurveTable,
     ScoreRow,
-    attribute_rows,
     curve_table,
 )
 from bnx.record_bars import RecordSection, record_section
@@ -84,7 +83,7 @@ class Report:
     pairs_rejected: str
     pairs_judged: str
     triangle: Triangle | None
-    attributes: tuple[AttributeRow, ...]
+    attributes: tuple[Attribute, ...]
     records: RecordSection
     left_out: tuple[tuple[str, str], ...]
     left_out_total: int
@@ -166,7 +165,7 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         pairs_rejected=f"{document['pairs_rejected']:,}",
         pairs_judged=f"{document['pairs_judged']:,}",
         triangle=triangular,
-        attributes=attribute_rows(document["schema"], ATTRIBUTES_ON_PAGE),
+        attributes=attribute_rows(document, ATTRIBUTES_ON_PAGE),
         records=record_section(document),
         left_out=tuple((one["name"], one["reason"]) for one in document["left_out"][:LINES_ON_PAGE]),
         left_out_total=len(document["left_out"]),

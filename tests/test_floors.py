@@ -14,11 +14,12 @@ FLOORS = (
     "bnx errors text palette plain unfinished",
     "kernels calibrating simplex counts tiles discretising domains dot_text embedding files storing cells "
     "folds layers losses branching multiplicity paired picture structure picking sharpening mixing svg effects ordered "
-    "loglinear fibre homogeneity masked unobserved summing_out weighed_losses reliability double_counting",
+    "loglinear fibre homogeneity masked unobserved summing_out weighed_losses reliability double_counting "
+    "distributions level_evidence",
     "tables views blocks columns columnar delimited malformed repeating reading weighing levelling screening "
     "duplicates level_order",
     "coarsening gathering passes coding encoding pair_counting engines",
-    "parameters trainings room dependence families class_tables profiling",
+    "parameters trainings room dependence families class_tables profiling level_counts",
     "tails wide_tables independence classifier rebasing mixed_classifier intervals refining sampling scoring "
     "tabulating verdicts explaining pair_details",
     "gating doubts drawing formats showing",
@@ -31,9 +32,9 @@ FLOORS = (
     "yardstick learning_curve comparison",
     "marks lettering residual_panels residual_chip residual_key residual_cells residual_picture",
     "chosen score_entries mix_documents yardstick_documents curve_documents listed_pairs pair_table_entries "
-    "record_entries documents "
+    "level_entries record_entries documents "
     "ticks reliability_words sureness counted_twice findings metric_charts printed "
-    "record_bars score_tables setting_words "
+    "record_bars score_tables setting_words level_charts attribute_rows "
     "method_words reliability_chart report_data report_page pair_columns pair_rows triangle edge_words "
     "pair_figures pair_tables_page structure_rows report results tested_text tested_picture",
     "cli",
@@ -44,8 +45,12 @@ WITHOUT_DATA = ("gating", "independence", "learners")
 PLAIN = (
     *("kernels", "multiplicity", "folds", "losses", "discretising", "calibrating", "paired"),
     *("effects", "ordered", "loglinear", "weighed_losses", "reliability"),
+    *("distributions", "level_evidence"),
 )
-LENT = {"weighed_losses": {"losses"}, "reliability": {"losses"}}  # a plain module -> plain modules that it goes on from
+LENT = {  # a plain module -> plain modules that it goes on from
+    **{"weighed_losses": {"losses"}, "reliability": {"losses"}},
+    "level_evidence": {"effects"},
+}
 ONLY_IN = {
     "typer": {"cli"},
     "rich": {"cli"},

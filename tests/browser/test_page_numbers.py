@@ -32,11 +32,15 @@ TEXTS = """(id) => {
 }"""
 BLOCKS = """[...document.querySelectorAll('script[type="application/json"]')].map((one) => [one.id, one.textContent])"""
 YEAR = re.compile(r"\b(?:19|20)\d\d\b")  # of the publications
-WORDING = {"0", "1", "2", "4", "8", "80%", "95%", "1,000", "256"}
-"""Of explanations: shades at 2, 4 and 8, power, intervals, mistakes in 1,000 records, the digest of the file."""
-LARGE = {"pairs": ("pairs", "answer"), "pair_tables": ("pairs",), "records": ("records",)}
+WORDING = {"0", "1", "2", "3", "4", "8", "30", "80%", "95%", "1,000", "256"}
+"""Of explanations: shades at 2, 4 and 8, residuals above 3, levels of under 30 records, power, intervals, mistakes in
+1,000 records, the digest of the file."""
+LARGE = {
+    **{"pairs": ("pairs", "answer"), "pair_tables": ("pairs",), "records": ("records",)},
+    "schema": ("attributes", "structures"),
+}
 """Long parts of the comparison, where a wrong number could be found by chance, and the sections that tell of them."""
-LEAST = {"answer": 20, "structures": 200, "scores": 100, "pairs": 200, "attributes": 12, "method": 12}
+LEAST = {"answer": 20, "structures": 200, "scores": 100, "pairs": 200, "attributes": 300, "method": 12}
 
 
 def counted(document: dict[str, Any]) -> Iterator[int]:
@@ -67,6 +71,32 @@ def measured(document: dict[str, Any]) -> Iterator[float]:
             yield from (value - other[key] for key, value in fold.items() if isinstance(value, float))
 
 
+def counted_levels(document: dict[str, Any]) -> Iterator[int]:
+    """Count what the page counts of levels: their records, those of a class, those drawn, and values without a name."""
+    for one in (entry["counted"] for entry in document["schema"] if entry["counted"]):
+        yield from map(sum, one["rows"])
+        for table in (one["rows"], one["distribution"]["rows"] if one["distribution"] else []):
+            yield from map(sum, zip(*table, strict=True))
+        yield sum(one["blanks"]["rows"]) if one["blanks"] else 0
+        yield one["pooled"]["values"] - len(one["pooled"]["most_frequent"]) if one["pooled"] else 0
+
+
+def shared_levels(document: dict[str, Any]) -> Iterator[float]:
+    """Give the shares of classes in levels, of levels in all, and of blanks in a class and in all others."""
+    for one in (entry["counted"] for entry in document["schema"] if entry["counted"]):
+        of_class = [sum(column) for column in zip(*one["rows"], strict=True)]
+        yield from (count / sum(rows) for rows in [*one["rows"], of_class] for count in rows if sum(rows))
+        yield from (sum(rows) / sum(of_class) for rows in one["rows"])
+        blank = one["blanks"]["rows"] if one["blanks"] else [0] * len(of_class)
+        yield from (few / many for few, many in zip(blank, of_class, strict=True))
+        yield from ((sum(blank) - few) / (sum(of_class) - c) for few, c in zip(blank, of_class, strict=True))
+
+
+def of_levels(document: dict[str, Any]) -> set[str]:
+    shares = {form for value in set(shared_levels(document)) for form in forms(value)}
+    return shares | {f"{one:,}" for one in counted_levels(document)}
+
+
 def derived(document: dict[str, Any]) -> set[str]:
     counts = {f"{one:,}" for one in counted(document)}
     return counts | {form for value in set(measured(document)) for form in forms(value)}
@@ -74,7 +104,8 @@ def derived(document: dict[str, Any]) -> set[str]:
 
 def known(document: dict[str, Any], section: str) -> set[str]:
     left_out = [part for part, sections in LARGE.items() if section not in sections]
-    return known_numbers(only(document, left_out)) | derived(document) | WORDING
+    own = of_levels(document) if section == "attributes" else set()
+    return known_numbers(only(document, left_out)) | derived(document) | WORDING | own
 
 
 def unexplained(texts: list[str], numbers: set[str]) -> dict[str, str]:
