@@ -30,13 +30,13 @@ _LIGHT = {
 
 _DARK = {
     "background": "#14181D",
-    "frame": "#1A1A22",
+    "frame": "#222030",
     "frame-edge": "#8D74AB",
     "class": "#CDB7E6",
     "class-text": "#191320",
     "cable": "#A98CC8",
-    "chip": "#20262D",
-    "chip-edge": "#4A525C",
+    "chip": "#2A323B",
+    "chip-edge": "#68727D",
     "bar": "#B396D4",
     "bar-track": "#352F3F",
     "gain": "#5BB4F0",

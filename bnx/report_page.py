@@ -17,8 +17,8 @@ STYLES = (
 )
 """Style sheets in the order in which they are joined."""
 SCRIPTS = (
-    *("page", "theme", "words", "edges", "late_edges", "fold_dots", "pair_tables", "pair_panel", "links", "drawing"),
-    *("sifting", "compare", "structures", "metrics", "pair_data", "ledger_rows", "ledger_choice", "ledger"),
+    *("page", "theme", "box_edges", "words", "edges", "late_edges", "fold_dots", "pair_tables", "pair_panel", "links"),
+    *("drawing", "sifting", "compare", "structures", "metrics", "pair_data", "ledger_rows", "ledger_choice", "ledger"),
     *("triangle", "start"),
 )
 """Scripts in the order in which they are joined."""

@@ -23,7 +23,7 @@ _NUMBERED = 16
 _WIDTH, _NAMES = 1095.0, 200.0
 _WIDEST, _LEAST = 34.0, 12.0
 _SHAPES = {"dependent": "full", "detected, but negligible": "hollow", "negligible": "dot", "not enough data": "open"}
-_SMALLEST = {"full": 5.0, "hollow": 6.0, "dot": 2.8, "open": 6.0}
+_SMALLEST = {"full": 7.5, "hollow": 8.5, "dot": 4.4, "open": 8.5}
 _MEASURES: tuple[tuple[str, str, Callable[[Mapping[str, Any]], float | None]], ...] = (
     ("bits", "bits given the class", lambda pair: pair["bits"]),
     ("marginal_bits", "bits without the class", lambda pair: pair["marginal_bits"]),

@@ -231,7 +231,7 @@ def test_palette_keeps_the_agreed_colours():
     light, dark = PALETTES["light"], PALETTES["dark"]
     tokens = ("background", "frame", "gain", "undecided", "loss", "class")
     assert [light[token] for token in tokens] == ["#FBFAF7", "#F1EEF5", "#0A66A8", "#7B838C", "#C4520A", "#5B3F7A"]
-    assert [dark[token] for token in tokens] == ["#14181D", "#1A1A22", "#5BB4F0", "#8C959F", "#FF9A4D", "#CDB7E6"]
+    assert [dark[token] for token in tokens] == ["#14181D", "#222030", "#5BB4F0", "#8C959F", "#FF9A4D", "#CDB7E6"]
     assert [light[token] for token in ("loss-text", "bar", "small-text")] == ["#B84A00", "#7A5C99", "#5F6771"]
 
 

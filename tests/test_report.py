@@ -173,7 +173,7 @@ def test_the_first_screen_says_what_and_why_and_how_much(document: dict[str, Any
     assert f"It saves {saved:.3f} bits of log loss per record against naive (95 % interval" in text
     assert f"), {100 * saved / whole:.0f} % of all that naive leaves open: " in text
     own, base = (round(1000 * (1 - one["accuracy"])) for one in (chosen, naive))
-    assert f"In 1,000 records it makes {own} mistakes, naive {base}: " in text
+    assert f"In 1,000 records {chosen['name']} makes {own} mistakes, naive {base}: " in text
     assert f"{document['recommended']['honest_log_loss']:.3f} bits of log loss (0 is perfect), " in text
     assert f"The evidence of naive is worth only {naive['temperature']:.2f} of its face value" in text
     assert "dock ~ alarm" in text
@@ -282,3 +282,9 @@ def test_one_attribute_has_no_pairs(document: dict[str, Any]) -> None:
 def test_a_picture_that_is_no_svg_is_refused(document: dict[str, Any]) -> None:
     with pytest.raises(FormatError, match="the picture for s0 is no SVG"):
         report_html(document, dict.fromkeys((one["name"] for one in document["structures"]), "<svg"))
+
+
+def test_no_pairs_are_counted_in_words_and_not_as_zero(document: dict[str, Any]) -> None:
+    document["pairs_verdicts"] = {**dict.fromkeys(document["pairs_verdicts"], 0), "dependent": len(document["pairs"])}
+    text = Page(report_html(document, {})).text
+    assert "none is negligible, and none is left open by the sample size." in text

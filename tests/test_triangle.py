@@ -60,7 +60,7 @@ def test_marks_stay_inside_their_cells_and_none_is_too_small_to_tell(size: int) 
     assert chart.is_numbered == (size <= 16)
     assert chart.width <= 1104
     assert chart.cell >= 12
-    least = {"full": 5.0, "hollow": 6.0, "dot": 2.8, "open": 6.0}
+    least = {"full": 7.5, "hollow": 8.5, "dot": 4.4, "open": 8.5}
     for mark in chart.marks:
         assert least[mark.shape] <= mark.sides[0] <= chart.cell - 2
         assert bool(mark.numbers[0]) <= chart.is_numbered

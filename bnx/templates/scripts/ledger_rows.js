@@ -1,6 +1,6 @@
 // A window on a long table: only rows in sight stand in the page, and the row in hand stays, so that focus is never lost.
 
-const SPARE_ROWS = 8;
+const SPARE_ROWS = 24; // more than a window of rows on either side, so that none is missing while it scrolls fast
 const PRINTED_ROWS = 40;
 
 // body: the element of rows; make(row, place): one row. Rows are numbers; show(rows) takes them in the order to show.
@@ -91,6 +91,7 @@ const windowOn = (box, table, make) => {
     drawSoon();
   }).observe(box);
   window.addEventListener("beforeprint", () => print(true));
+  window.matchMedia("print").addEventListener("change", (event) => print(event.matches));
   window.addEventListener("afterprint", () => print(false));
 
   return {

@@ -61,6 +61,7 @@ const openPair = (a, b, opener) => {
   if (window.matchMedia("(max-width: 62rem)").matches) panel.showModal();
   else panel.show();
   document.documentElement.classList.add("with-panel");
+  watchBoxes(panel);
   panel.scrollTop = 0;
   byId("pair-panel-title").focus({ preventScroll: true });
 };

@@ -1,6 +1,6 @@
 // Starts every part of the page.
 
-for (const start of [startTheme, startPairPanel, startStructures, startLinks, startScores, startLedger, startTriangle]) {
+for (const start of [startTheme, startPairPanel, startStructures, startLinks, startScores, startLedger, startTriangle, startBoxEdges]) {
   start();
 }
 document.documentElement.classList.add("scripted");

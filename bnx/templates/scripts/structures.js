@@ -114,6 +114,7 @@ const openBeside = (prefix) => {
     drawings.append(box);
     drawings.classList.add("two");
     beside.parts.push(box);
+    watchBoxes(drawings);
     beside.view = viewOf(other, "beside", copy, sheet.view.told, new Map());
   }
 };
