@@ -8,7 +8,7 @@ __all__ = ["MOST_BINS", "chosen_edges", "outer_edges"]
 
 MOST_BINS = 48
 _FEWEST = 8  # bins of equal width that are worth their name
-_TAIL = 0.02  # share of the rows on either side of what decides the width of bins
+_TAIL = 0.05  # share of the rows on either side of what decides the width of bins
 _HUGE = 1e300  # numbers beyond are not added up
 
 

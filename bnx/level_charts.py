@@ -23,6 +23,7 @@ _HEAD, _BARS, _GAP, _AXIS = 17.0, 42.0, 6.0, 24.0
 _LABEL, _SIGN, _MOST_LINES = 15.0, 6.4, 4
 _LONG, _WIDER = 0.25, 3.0  # an outermost bin of this share of the others' range, so many times as wide as any ...
 _SHORT = 0.05  # ... is drawn of this share of the width
+_THIN = 3.0  # pixels that a bar is wide at least, so that it is seen
 _TALL = 3.0  # a bar so many times as high as the next is cut
 _LARGEST, _SMALLEST = 1e300, 1e-250  # numbers and ranges beyond are not drawn
 _LEAST_PLAIN, _MOST_PLAIN, _MOST_DECIMALS = 1e-4, 1e12, 15  # of numbers written without a power of ten
@@ -31,11 +32,12 @@ _NAME = 40
 
 @dataclass(frozen=True)
 class CutLine:
-    """A cut point, in pixels, with its value; ``line``: height of its words above the first panel, 0 for none."""
+    """A cut point, in pixels, and its value with the place of its words, 0 from above where there is no room for it."""
 
     x: float
     value: str
-    y: float
+    words_x: float
+    words_y: float
 
 
 @dataclass(frozen=True)
@@ -99,7 +101,7 @@ def level_chart(
     scale, beyond = _scaled(distribution, edges)
     places = _places(edges, scale)
     labels, without = _labels([scale.x(cut) for cut in cuts], [f"{cut:.6g}" for cut in cuts])
-    top = _LABEL * max((1.0, *(line for _, _, line in labels))) + 6.0
+    top = _LABEL * max((1.0, *(line for *_, line in labels))) + 6.0
     rows = np.array(distribution["rows"], float)
     order = np.argsort(-rows.sum(axis=0), kind="stable")[:MOST_PANELS].tolist()
     panels, clipped = _panels(rows, sorted(order), classes, places, top)
@@ -114,7 +116,8 @@ def level_chart(
         axis=axis,
         panels=panels,
         cuts=tuple(
-            CutLine(x, value, round(top - 6.0 - _LABEL * (line - 1), 1) if line else 0.0) for x, value, line in labels
+            CutLine(x, value, middle, round(top - 6.0 - _LABEL * (line - 1), 1) if line else 0.0)
+            for x, value, middle, line in labels
         ),
         ticks=tuple(_ticks(scale)),
         breaks=tuple(
@@ -152,17 +155,21 @@ def _places(edges: Sequence[float], scale: _Scale) -> np.ndarray:
 def _panels(
     rows: np.ndarray, order: Sequence[int], classes: Sequence[str], places: np.ndarray, top: float
 ) -> tuple[tuple[Panel, ...], bool]:
-    """Draw some classes one below the other, rows (b, C): the area of a bar is its share of the rows of its class."""
+    """Draw some classes one below the other, rows (b, C): the area of a bar is its share of the rows of its class.
+
+    All stand on one scale but classes of few records, whose bars may be so high that they need their own.
+    """
     widths = np.maximum(np.diff(places), 0.1)
     of_class = rows.sum(axis=0)
     shares = rows / np.maximum(of_class, 1.0) / widths[:, None]
     every = rows.sum(axis=1) / rows.sum() / widths
     many = [c for c in order if of_class[c] >= FEW_RECORDS]
-    highest = _highest(np.stack([every, *(shares[:, c] for c in many)]).max(axis=0))
+    common = _highest(np.stack([every, *(shares[:, c] for c in many)]).max(axis=0))
     clipped, panels = False, []
     for place, c in enumerate(order):
         above = top + place * (_HEAD + _BARS + _GAP)
         bottom = above + _HEAD + _BARS
+        highest = common if c in many else max(common, _highest(shares[:, c]))
         over = np.flatnonzero(shares[:, c] > highest * 1.001)
         clipped = clipped or len(over) > 0
         panels.append(
@@ -196,27 +203,32 @@ def _path(places: np.ndarray, heights: np.ndarray, bottom: float, closed: bool) 
     """Draw bars from left to right, heights as shares of a panel: as shapes of their own, or as one line."""
     tops = (bottom - _BARS * np.minimum(heights, 1.0)).round(1)
     if closed:
+        room = np.maximum(_THIN - np.diff(places), 0.0) / 2
+        lefts = np.clip(places[:-1] - room, places[0], places[-1] - _THIN)
+        rights = np.maximum(np.minimum(places[1:] + room, places[-1]), lefts + _THIN)
+        lefts = np.minimum(lefts, places[:-1])
         return "".join(
             f"M{left:.1f} {bottom:.1f}V{y:.1f}H{right:.1f}V{bottom:.1f}z"
-            for left, right, y in zip(places, places[1:], tops, strict=False)
+            for left, right, y in zip(lefts, rights, tops, strict=True)
             if y < bottom
         )
     steps = "".join(f"V{y:.1f}H{right:.1f}" for right, y in zip(places[1:], tops, strict=True))
     return f"M{places[0]:.1f} {bottom:.1f}{steps}V{bottom:.1f}"
 
 
-def _labels(xs: Sequence[float], values: Sequence[str]) -> tuple[list[tuple[float, str, int]], int]:
+def _labels(xs: Sequence[float], values: Sequence[str]) -> tuple[list[tuple[float, str, float, int]], int]:
     """Put the value of each cut point on the lowest line where there is room; count those without room (line 0)."""
     ends = [-math.inf] * _MOST_LINES
     placed = []
     for x, value in zip(xs, values, strict=True):
         half = _SIGN * len(value) / 2 + 2
-        free = [line for line, end in enumerate(ends) if max(x - half, 0.0) >= end]
+        middle = round(min(max(x, half), _WIDTH - half), 1)
+        free = [line for line, end in enumerate(ends) if middle - half >= end]
         line = free[0] + 1 if free else 0
         if line:
-            ends[line - 1] = x + half
-        placed.append((x, value, line))
-    return placed, sum(line == 0 for _, _, line in placed)
+            ends[line - 1] = middle + half
+        placed.append((x, value, middle, line))
+    return placed, sum(not line for *_, line in placed)
 
 
 def _ticks(scale: _Scale) -> list[tuple[float, str]]:

@@ -54,7 +54,7 @@ def test_cut_points_stand_at_the_edges_of_bars_and_bear_their_values() -> None:
     chart = drawn(edges, [[40, 40]] * 4, (0.25, 0.75))
     ends = {right for _, right, _ in bars(chart.panels[0])}
     assert [cut.value for cut in chart.cuts] == ["0.25", "0.75"]
-    assert all(cut.x in ends and cut.y > 0 for cut in chart.cuts)
+    assert all(cut.x in ends and cut.words_y > 0 for cut in chart.cuts)
     assert chart.cuts_without_words == 0
     assert chart.words == "wait: how its values are spread in each class, cut at 0.25, 0.75"
     assert drawn(edges, [[40, 40]] * 4).words.endswith("not cut")
@@ -65,12 +65,12 @@ def test_values_of_cut_points_never_lie_on_one_another() -> None:
     cuts = tuple(edges[3:36])
     chart = drawn(edges, [[40, 40]] * 40, cuts)
     assert len(chart.cuts) == len(cuts)
-    lines = {cut.y for cut in chart.cuts if cut.y}
+    lines = {cut.words_y for cut in chart.cuts if cut.words_y}
     assert len(lines) > 1
     for line in lines:
-        own = [cut for cut in chart.cuts if cut.y == line]
-        assert all(two.x - one.x > 6 * len(one.value) for one, two in pairwise(own))
-    assert chart.cuts_without_words == sum(not cut.y for cut in chart.cuts)
+        own = [cut for cut in chart.cuts if cut.words_y == line]
+        assert all(two.words_x - one.words_x > 6 * len(one.value) for one, two in pairwise(own))
+    assert chart.cuts_without_words == sum(not cut.words_y for cut in chart.cuts)
     assert min(lines) > 8
     assert max(lines) < chart.panels[0].top
 
@@ -107,12 +107,23 @@ def test_one_bar_that_towers_is_cut_and_this_is_said() -> None:
     assert heights[0] < 2 * heights[2]
 
 
+def test_many_rows_of_one_value_are_seen_however_narrow_their_bin() -> None:
+    edges = [0.0, 0.001, *(float(k) for k in range(1, 9))]
+    chart = drawn(edges, [[500, 500], *([50, 60] for _ in range(8))], (0.001,))
+    for panel in chart.panels:
+        left, right, height = bars(panel)[0]
+        assert (left, round(height)) == (chart.left, 42)
+        assert right - left >= 1.5
+        assert panel.cut
+
+
 def test_a_class_of_few_records_is_marked_and_sets_no_scale() -> None:
     rows = [[0, 1000], [FEW_RECORDS - 1, 1000], [0, 1000]]
     chart = drawn([0.0, 1.0, 2.0, 3.0], rows)
     assert [panel.few for panel in chart.panels] == [True, False]
     assert [height for _, _, height in bars(chart.panels[1])] == pytest.approx([42] * 3, abs=1.5)
-    assert chart.panels[0].cut
+    assert [height for _, _, height in bars(chart.panels[0])] == [42]
+    assert not chart.clipped
     assert chart.panels[0].rows == "29 records"
 
 

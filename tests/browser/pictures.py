@@ -55,6 +55,15 @@ def beside(page: Page) -> bytes:
     return part(".drawings:visible", 560)(page)
 
 
+def attributes(page: Page) -> bytes:
+    """Photograph the attributes with the first one and the first numeric one open."""
+    every = page.locator("details.attribute")
+    every.evaluate_all("(all) => all.forEach((one, place) => { one.open = place === 0; })")
+    every.filter(has=page.locator("svg.spread")).first.locator("summary").click()
+    page.mouse.move(0, 0)
+    return part("#attributes", 1000)(page)
+
+
 PICTURES: dict[str, tuple[int, int, Theme, Shot]] = {
     "answer": (1280, 900, "light", top),
     "answer-dark": (1280, 900, "dark", top),
@@ -64,6 +73,7 @@ PICTURES: dict[str, tuple[int, int, Theme, Shot]] = {
     "pairs": (1280, 1100, "light", part("#pairs", 970)),
     "pairs-dark": (1280, 1100, "dark", part("#pairs", 970)),
     "scores": (1280, 1100, "light", part("#scores", 840)),
+    "attributes": (1280, 1100, "light", attributes),
     "records": (1280, 1100, "light", part("#records", 900)),
     "phone": (420, 860, "light", top),
 }
