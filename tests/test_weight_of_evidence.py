@@ -17,6 +17,7 @@ from test_kdb_chosen import planted
 
 from bnx.classifier import Classifier
 from bnx.comparison import Comparison
+from bnx.plain import finite
 from bnx.record_entries import records_entry
 from bnx.weight_of_evidence import Told, split
 
@@ -225,6 +226,27 @@ def test_the_document_names_what_is_numbered() -> None:
         for line, own in zip(row["attributes"], one.lines, strict=True):
             assert line["name"] == f"x{own.attribute}"
             assert line["parents"] == [f"x{parent}" for parent in own.parents]
+
+
+def test_a_class_without_training_rows_is_none_of_the_two_told_of() -> None:
+    """Fold f3 holds all records of one class, so that what predicts it never saw the class."""
+    random, rows = np.random.default_rng(2), 240
+    fold = np.arange(rows) % 4
+    target = np.where((fold == 3) & (random.random(rows) < 0.3), 2, random.integers(0, 2, rows))
+    first = np.where(random.random(rows) < 0.6, target, random.integers(0, 3, rows))
+    columns = {"fold": fold, "a": first}
+    for name in "bcd":
+        columns[name] = np.where(random.random(rows) < 0.8, first, random.integers(0, 3, rows))
+    frame = pd.DataFrame(columns).astype(str).assign(kind=np.array(["p", "q", "rare"])[target])
+    found = compared(frame, "kind", folds=4, structures=("naive", "tan"), fold_column="fold", records=100)
+    entry = finite(records_entry(found))
+    own = [row for row in entry["rows"] if row["fold"] == 3]
+    assert len(own) > 5
+    assert any(row["truth"] == "rare" for row in own)
+    for row in own:
+        assert {row["for"], row["against"]} == {"p", "q"}
+        assert 0 < row["probabilities"]["naive"][2] < 0.05
+        assert row["prior_bits"] is not None
 
 
 def test_files_tell_of_as_many_records_as_asked_for_by_any_number_of_threads(tmp_path: Path) -> None:
