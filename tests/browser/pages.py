@@ -20,6 +20,7 @@ FLAGS = (
     "--disable-sync",
 )
 Theme = Literal["light", "dark"]
+HIGHEST = 60_000  # pixels of a window; Chromium stands still for ten seconds above 65,535
 
 
 def chromium_path() -> str | None:
@@ -91,12 +92,12 @@ def opened(
 
 
 def unfolded(page: Page) -> None:
-    """Open all that is folded away, and make the window as high as the page, so that all of it is in sight."""
+    """Open all that is folded away, and make the window as high as the page, so that all of it is drawn."""
     page.evaluate("document.querySelectorAll('details').forEach((one) => { one.open = true; })")
     size = page.viewport_size
     assert size is not None
     height = page.evaluate("document.scrollingElement.scrollHeight")
-    page.set_viewport_size({"width": size["width"], "height": height})
+    page.set_viewport_size({"width": size["width"], "height": min(height, HIGHEST)})
 
 
 def rgb(colour: str) -> str:

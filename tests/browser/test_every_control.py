@@ -138,10 +138,18 @@ def test_every_control_does_something(browser: Browser, demo: Made, way: str) ->
             control.scroll_into_view_if_needed()
             before = page.evaluate(STATE)
             work(page, control, one["kind"], way)
-            page.wait_for_timeout(30)
-            if page.evaluate(STATE) == before and "reset" not in str(one["id"]):
+            if "reset" not in str(one["id"]) and not changes(page, before):
                 idle.append(one["words"])
         check(found, idle)
+
+
+def changes(page: Page, before: str) -> bool:
+    """Wait until the page is another one than before, for at most a second."""
+    for _ in range(20):
+        if page.evaluate(STATE) != before:
+            return True
+        page.wait_for_timeout(50)
+    return False
 
 
 def check(found: Opened, idle: list[str]) -> None:

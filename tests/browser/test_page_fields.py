@@ -153,7 +153,7 @@ def test_marks_grow_with_the_bits_of_their_pairs(found: Opened, demo: Made) -> N
     bits = [pair_of(demo.document, [names[row], names[column]])["bits"] for row, column, _ in block["marks"]]
     sides = [float(one) for one in block["measures"][0]["sides"]]
     assert sides[bits.index(max(bits))] == max(sides)
-    large = [(side, one) for side, one in zip(sides, bits, strict=True) if side > 7]
+    large = [(side, one) for side, one in zip(sides, bits, strict=True) if side > 8.5]
     assert len(large) >= 5
     for side, one in large:
         assert (side / max(sides)) ** 2 == pytest.approx(one / max(bits), abs=0.02)
