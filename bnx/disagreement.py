@@ -90,7 +90,7 @@ def jensen_shannon(p: np.ndarray, q: np.ndarray) -> np.ndarray:
 
     Source: Lin 1991 (Jensen-Shannon divergence, equal weights).
     """
-    middle = (p + q) / 2
+    middle = np.maximum((p + q) / 2, np.finfo(np.float64).tiny)  # half of the smallest number is 0
     nats = (rel_entr(p, middle) + rel_entr(q, middle)).sum(axis=1) / 2
     return np.asarray(np.clip(nats / np.log(2), 0.0, 1.0))
 

@@ -98,7 +98,8 @@ def record_section(document: Mapping[str, Any]) -> RecordSection:
     """Lay out the records of a comparison, the bars of each on a scale of its own."""
     records = document["records"] or {"rows": [], "structure": None, "reason": "", "differ": None}
     rows, differ = records["rows"], records["differ"]
-    cards = tuple(_card(row, document["class_levels"]) for row in rows)
+    calibrated = document["settings"]["temperature"]
+    cards = tuple(_card(row, document["class_levels"], calibrated) for row in rows)
     counts = [differ[key] for key in ("records", "structure_right", "naive_right")] if differ else []
     return RecordSection(
         structure=records["structure"] or "",
@@ -109,7 +110,7 @@ def record_section(document: Mapping[str, Any]) -> RecordSection:
         differ=tuple(f"{one:,}" for one in counts),
         twice=_named(culprits(rows, "twice_bits"), len(rows)),
         adds=_named(culprits(rows, "adds_bits"), len(rows)),
-        calibrated=document["settings"]["temperature"],
+        calibrated=calibrated,
         width=_WIDTH,
         zero=_WIDTH / 2,
     )
@@ -154,7 +155,7 @@ def _said(p: Sequence[float], levels: Sequence[str]) -> tuple[str, str]:
     return levels[most], chance(p[most])
 
 
-def _card(row: Mapping[str, Any], levels: Sequence[str]) -> RecordCard:
+def _card(row: Mapping[str, Any], levels: Sequence[str], calibrated: bool) -> RecordCard:
     p, q = row["probabilities"]["naive"], row["probabilities"]["structure"]
     ends = [levels.index(row[key]) for key in ("for", "against")]
     bits = [one[key] for one in row["attributes"] for key in ("naive_bits", "structure_bits")]
@@ -171,14 +172,14 @@ def _card(row: Mapping[str, Any], levels: Sequence[str]) -> RecordCard:
         others_alike=sum(row["alike"].values()) - 1,
         alike=tuple((level, f"{count:,}") for level, count in row["alike"].items() if count),
         bars=tuple(_bar(one, most) for one in row["attributes"]),
-        sums=tuple(_sums(row)),
+        sums=tuple(_sums(row, calibrated)),
         temperatures=(f"{row['naive']['temperature']:.3f}", f"{row['structure']['temperature']:.3f}"),
         offsets=(_bits(row["naive"]["offset_bits"]), _bits(row["structure"]["offset_bits"])),
         ticks=tuple((_x(one, most), f"{abs(one):g}") for one in round_ticks(-most, most, 5)),
     )
 
 
-def _sums(row: Mapping[str, Any]) -> list[tuple[str, ...]]:
+def _sums(row: Mapping[str, Any], calibrated: bool) -> list[tuple[str, ...]]:
     """List what else enters the log odds, and these themselves."""
     found: list[tuple[str, ...]] = []
     rest, prior = row["rest"], _bits(row["prior_bits"])
@@ -191,7 +192,7 @@ def _sums(row: Mapping[str, Any]) -> list[tuple[str, ...]]:
         found.append(("what hangs on cells not observed", _bits(summed[0]), "", "", _bits(summed[1])))
     found.append(("shares of the two classes", prior, "", "", prior))
     odds = [_bits(row[side]["log_odds_bits"]) for side in ("naive", "structure")]
-    return [*found, ("log odds before calibration", odds[0], "", "", odds[1])]
+    return [*found, ("log odds before calibration" if calibrated else "log odds", odds[0], "", "", odds[1])]
 
 
 def _bits(value: float | None) -> str:

@@ -68,7 +68,15 @@ def test_two_distributions_by_hand() -> None:
     assert jensen_shannon(p, q) == pytest.approx([0.3112781244591328, 1.0, 0.0], abs=1e-12)
 
 
-@given(arrays(np.float64, (2, 4), elements=st.floats(0.0, 1.0)).filter(lambda both: (both.sum(axis=1) > 0.01).all()))
+def test_the_smallest_numbers_make_no_difference() -> None:
+    p, q = np.array([[0.0, 0.5, 0.5]]), np.array([[5e-324, 0.5, 0.5]])
+    assert jensen_shannon(p, q) == pytest.approx([0.0], abs=1e-12)
+
+
+SHARES = st.floats(0.0, 1.0, allow_subnormal=False)
+
+
+@given(arrays(np.float64, (2, 4), elements=SHARES).filter(lambda both: (both.sum(axis=1) > 0.01).all()))
 def test_divergence_is_that_of_a_second_library(both: np.ndarray) -> None:
     p, q = both / both.sum(axis=1, keepdims=True)
     assert jensen_shannon(p[None], q[None])[0] == pytest.approx(float(jensenshannon(p, q, base=2)) ** 2, abs=1e-9)
