@@ -140,18 +140,15 @@ def _notes(one: Entry, counted: Entry) -> Iterator[str]:
         yield f"{count_of(counted['pooled']['values'], 'rare value')} pooled"
 
 
-def _every(counted: Entry) -> list[list[int]]:
-    """List the rows of all levels and, where they are none, of cells not observed, by class."""
-    apart = counted["blanks"] and counted["blanks"]["level"] is None
-    return [*counted["rows"], *([counted["blanks"]["rows"]] if apart else [])]
+def _every(counted: Entry, key: str = "rows") -> list[list[Any]]:
+    """List the rows of all levels and, where they are none, of cells not observed, by class; or their ``masses``."""
+    blanks = counted["blanks"]
+    return [*counted[key], *([blanks[key]] if blanks and blanks["level"] is None else [])]
 
 
 def _masses(counted: Entry) -> list[list[float]]:
-    """List what those rows weigh."""
-    if counted["masses"] is None:
-        return [[float(rows) for rows in level] for level in _every(counted)]
-    apart = counted["blanks"] and counted["blanks"]["level"] is None
-    return [*counted["masses"], *([counted["blanks"]["masses"]] if apart else [])]
+    """List what those rows weigh: the rows themselves where all count alike."""
+    return _every(counted, "rows" if counted["masses"] is None else "masses")
 
 
 def _heads(counted: Entry, classes: Sequence[str]) -> tuple[ClassHead, ...]:

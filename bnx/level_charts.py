@@ -100,13 +100,13 @@ def level_chart(
         return None
     scale, beyond = _scaled(distribution, edges)
     places = _places(edges, scale)
-    labels, without = _labels([scale.x(cut) for cut in cuts], [f"{cut:.6g}" for cut in cuts])
+    values = [f"{cut:.6g}" for cut in cuts]
+    labels, without = _labels([scale.x(cut) for cut in cuts], values)
     top = _LABEL * max((1.0, *(line for *_, line in labels))) + 6.0
     rows = np.array(distribution["rows"], float)
     order = np.argsort(-rows.sum(axis=0), kind="stable")[:MOST_PANELS].tolist()
     panels, clipped = _panels(rows, sorted(order), classes, places, top)
     axis = panels[-1].bottom
-    told = ", ".join(f"{cut:.6g}" for cut in cuts)
     return LevelChart(
         width=_WIDTH,
         height=axis + _AXIS,
@@ -127,7 +127,8 @@ def level_chart(
         clipped=clipped,
         classes_left_out=len(classes) - len(panels),
         cuts_without_words=without,
-        words=f"{name}: how its values are spread in each class" + (f", cut at {told}" if cuts else ", not cut"),
+        words=f"{name}: how its values are spread in each class"
+        + (f", cut at {', '.join(values)}" if cuts else ", not cut"),
     )
 
 

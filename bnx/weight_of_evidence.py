@@ -5,7 +5,6 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from bnx.calibrating import Calibration
 from bnx.disagreement import Contrast, Differ, Pick, alike_by_class, contrast_of, picked
 from bnx.evaluation import Evaluation, Predictor
 from bnx.structure import Structure
@@ -201,7 +200,7 @@ def _evidence(predictor: Predictor, place: int) -> _Evidence:
 
 def _side(predictor: Predictor, evidence: _Evidence, bits: np.ndarray, ends: tuple[int, int], prior: float) -> Side:
     chosen, against = ends
-    calibration: Calibration = predictor.calibration
+    calibration = predictor.calibration
     summed = float(evidence.summed_out[chosen] - evidence.summed_out[against]) * _BITS
     offset = float(calibration.offsets[chosen] - calibration.offsets[against]) * _BITS
     log_odds = prior + float(bits.sum()) + summed
