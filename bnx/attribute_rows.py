@@ -10,9 +10,8 @@ from bnx.text import count_of, fixed
 
 __all__ = ["Attribute", "ClassCell", "ClassHead", "LevelRow", "Words", "attribute_rows"]
 
-OPEN_AT_FIRST = 3
-CELLS_ON_PAGE = 12_000
-"""Cells of all tables of levels on the page; six bars of a chart count as one."""
+_OPEN_AT_FIRST = 3
+_CELLS_ON_PAGE = 12_000  # of all tables of levels; six bars of a chart count as one
 _NAMED = 3  # levels in a sentence
 _DASH = "–"
 
@@ -42,10 +41,10 @@ class ClassCell:
 
 @dataclass(frozen=True)
 class LevelRow:
-    """One level; ``kind``: ``level``, ``pooled``, ``blank`` or ``unknown``; ``speaks``: class and bits, or nothing."""
+    """One level, or the cells not observed, which are none; ``speaks``: class and bits, or nothing."""
 
     name: str
-    kind: str
+    is_level: bool
     soft: bool
     rows: str
     share: str
@@ -76,7 +75,7 @@ def attribute_rows(document: Entry, most: int) -> tuple[Attribute, ...]:
     """List at most so many attributes, most bits with the class first; tables as far as there is room on the page."""
     schema, classes = document["schema"], document["class_levels"]
     highest = max((one["bits_with_class"] for one in schema), default=0.0) or 1.0
-    room, found = CELLS_ON_PAGE, []
+    room, found = _CELLS_ON_PAGE, []
     for place, one in enumerate(sorted(schema, key=lambda one: -one["bits_with_class"])[:most]):
         counted = one["counted"]
         size = _size(counted) if counted else 0
@@ -110,7 +109,7 @@ def _attribute(
         bits=fixed(one["bits_with_class"]),
         bar=round(bar, 1),
         notes=tuple(_notes(one, known)) if known else (),
-        is_open=place < OPEN_AT_FIRST,
+        is_open=place < _OPEN_AT_FIRST,
         cautions=tuple(_cautions(one, counted, classes)) if counted else (),
         pooled=_pooled(counted) if counted else None,
         heads=_heads(counted, classes) if counted else (),
@@ -161,28 +160,23 @@ def _heads(counted: Entry, classes: Sequence[str]) -> tuple[ClassHead, ...]:
 
 def _levels(one: Entry, counted: Entry) -> tuple[LevelRow, ...]:
     """Write all levels, and last the cells not observed."""
-    every, masses, blanks, pooled = _every(counted), _masses(counted), counted["blanks"], counted["pooled"]
+    every, masses = _every(counted), _masses(counted)
     apart = len(every) > len(one["levels"])
     names = [*one["levels"], *(["not observed"] if apart else [])]
-    spoken = [*counted["speaks_for"], *([blanks["speaks_for"]] if apart else [])]
+    spoken = [*counted["speaks_for"], *([counted["blanks"]["speaks_for"]] if apart else [])]
     usual = [sum(column) / sum(map(sum, masses)) for column in zip(*masses, strict=True)]
     total = sum(map(sum, every))
-    kinds = ["level"] * len(names)
-    if pooled:
-        kinds[one["levels"].index(pooled["level"])] = "pooled"
-    if blanks:
-        kinds[-1] = "unknown" if apart else "blank"
     return tuple(
         LevelRow(
             name=name,
-            kind=kind,
+            is_level=place < len(one["levels"]),
             soft=sum(rows) < FEW_RECORDS,
             rows=f"{sum(rows):,}",
             share=percent(sum(rows) / total),
             cells=_cells(rows, weights, usual),
             speaks=(says["class"], fixed(says["bits"], 2)) if says else None,
         )
-        for name, kind, rows, weights, says in zip(names, kinds, every, masses, spoken, strict=True)
+        for place, (name, rows, weights, says) in enumerate(zip(names, every, masses, spoken, strict=True))
     )
 
 

@@ -44,7 +44,6 @@ class CutLine:
 class Panel:
     """The bars of one class as a path, and those of all classes behind them as an outline; ``cut``: bars cut short."""
 
-    name: str
     shown: str
     rows: str
     few: bool
@@ -175,14 +174,13 @@ def _panels(
         clipped = clipped or len(over) > 0
         panels.append(
             Panel(
-                name=classes[c],
                 shown=cut_middle(classes[c], _NAME),
                 rows=count_of(int(of_class[c]), "record"),
                 few=bool(of_class[c] < FEW_RECORDS),
                 top=above,
                 bottom=bottom,
-                bars=_path(places, shares[:, c] / highest, bottom, closed=True),
-                every=_path(places, every / highest, bottom, closed=False),
+                bars=_bars(places, shares[:, c] / highest, bottom),
+                every=_outline(places, every / highest, bottom),
                 cut="".join(
                     f"M{places[k]:.1f} {bottom - _BARS + 4:.1f}L{places[k + 1]:.1f} {bottom - _BARS + 1:.1f}"
                     for k in over.tolist()
@@ -200,19 +198,27 @@ def _highest(heights: np.ndarray) -> float:
     return float(ordered[-1]) or 1.0
 
 
-def _path(places: np.ndarray, heights: np.ndarray, bottom: float, closed: bool) -> str:
-    """Draw bars from left to right, heights as shares of a panel: as shapes of their own, or as one line."""
-    tops = (bottom - _BARS * np.minimum(heights, 1.0)).round(1)
-    if closed:
-        room = np.maximum(_THIN - np.diff(places), 0.0) / 2
-        lefts = np.clip(places[:-1] - room, places[0], places[-1] - _THIN)
-        rights = np.maximum(np.minimum(places[1:] + room, places[-1]), lefts + _THIN)
-        lefts = np.minimum(lefts, places[:-1])
-        return "".join(
-            f"M{left:.1f} {bottom:.1f}V{y:.1f}H{right:.1f}V{bottom:.1f}z"
-            for left, right, y in zip(lefts, rights, tops, strict=True)
-            if y < bottom
-        )
+def _tops(heights: np.ndarray, bottom: float) -> np.ndarray:
+    """Place the tops of bars, heights as shares of a panel, in pixels."""
+    return np.asarray((bottom - _BARS * np.minimum(heights, 1.0)).round(1))
+
+
+def _bars(places: np.ndarray, heights: np.ndarray, bottom: float) -> str:
+    """Draw bars from left to right as shapes of their own, none too thin to be seen."""
+    room = np.maximum(_THIN - np.diff(places), 0.0) / 2
+    lefts = np.clip(places[:-1] - room, places[0], places[-1] - _THIN)
+    rights = np.maximum(np.minimum(places[1:] + room, places[-1]), lefts + _THIN)
+    lefts = np.minimum(lefts, places[:-1])
+    return "".join(
+        f"M{left:.1f} {bottom:.1f}V{y:.1f}H{right:.1f}V{bottom:.1f}z"
+        for left, right, y in zip(lefts, rights, _tops(heights, bottom), strict=True)
+        if y < bottom
+    )
+
+
+def _outline(places: np.ndarray, heights: np.ndarray, bottom: float) -> str:
+    """Draw the outline of bars from left to right as one line."""
+    tops = _tops(heights, bottom)
     steps = "".join(f"V{y:.1f}H{right:.1f}" for right, y in zip(places[1:], tops, strict=True))
     return f"M{places[0]:.1f} {bottom:.1f}{steps}V{bottom:.1f}"
 

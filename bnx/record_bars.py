@@ -5,7 +5,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from bnx.findings import chance
-from bnx.text import signed
+from bnx.text import count_of, fixed, signed
 from bnx.ticks import round_ticks
 
 __all__ = ["Culprit", "EvidenceBar", "RecordCard", "RecordSection", "culprits", "record_section", "who_is_right"]
@@ -146,7 +146,7 @@ def culprits(rows: Sequence[Mapping[str, Any]], key: str) -> list[tuple[str, flo
 
 
 def _named(found: Sequence[tuple[str, float, int]], records: int) -> tuple[Culprit, ...]:
-    return tuple(Culprit(name, f"{bits / records:.2f}", n) for name, bits, n in found[:_TOLD])
+    return tuple(Culprit(name, fixed(bits / records, 2), n) for name, bits, n in found[:_TOLD])
 
 
 def _said(p: Sequence[float], levels: Sequence[str]) -> tuple[str, str]:
@@ -165,7 +165,7 @@ def _card(row: Mapping[str, Any], levels: Sequence[str], calibrated: bool) -> Re
         truth=row["truth"],
         says=(_said(p, levels), _said(q, levels)),
         right=who_is_right(row, levels),
-        bits=f"{row['disagreement']:.3f}",
+        bits=fixed(row["disagreement"]),
         towards=row["for"],
         away=row["against"],
         chances=((chance(p[ends[0]]), chance(p[ends[1]])), (chance(q[ends[0]]), chance(q[ends[1]]))),
@@ -173,7 +173,7 @@ def _card(row: Mapping[str, Any], levels: Sequence[str], calibrated: bool) -> Re
         alike=tuple((level, f"{count:,}") for level, count in row["alike"].items() if count),
         bars=tuple(_bar(one, most) for one in row["attributes"]),
         sums=tuple(_sums(row, calibrated)),
-        temperatures=(f"{row['naive']['temperature']:.3f}", f"{row['structure']['temperature']:.3f}"),
+        temperatures=(fixed(row["naive"]["temperature"]), fixed(row["structure"]["temperature"])),
         offsets=(_bits(row["naive"]["offset_bits"]), _bits(row["structure"]["offset_bits"])),
         ticks=tuple((_x(one, most), f"{abs(one):g}") for one in round_ticks(-most, most, 5)),
     )
@@ -184,7 +184,7 @@ def _sums(row: Mapping[str, Any], calibrated: bool) -> list[tuple[str, ...]]:
     found: list[tuple[str, ...]] = []
     rest, prior = row["rest"], _bits(row["prior_bits"])
     if rest["attributes"]:
-        words = f"{rest['attributes']:,} more attributes"
+        words = count_of(rest["attributes"], "more attribute")
         parts = (_bits(rest[f"{part}_bits"]) for part in ("naive", "twice", "adds", "structure"))
         found.append((words, *parts))
     summed = [row[side]["summed_out_bits"] for side in ("naive", "structure")]

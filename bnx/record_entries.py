@@ -6,9 +6,9 @@ from typing import Any
 from bnx.comparison import Comparison
 from bnx.weight_of_evidence import Line, Side, Told
 
-__all__ = ["MEASURE", "records_entry"]
+__all__ = ["records_entry"]
 
-MEASURE = "Jensen-Shannon divergence, bits"
+_MEASURE = "Jensen-Shannon divergence, bits"
 
 
 def records_entry(comparison: Comparison) -> dict[str, Any] | None:
@@ -20,7 +20,7 @@ def records_entry(comparison: Comparison) -> dict[str, Any] | None:
     return {
         "structure": None if other is None else names[other],
         "reason": records.contrast.reason,
-        "measure": MEASURE,
+        "measure": _MEASURE,
         "asked": records.asked,
         "differ": None
         if differ is None

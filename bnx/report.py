@@ -7,6 +7,8 @@ from typing import Any
 
 from bnx.attribute_rows import Attribute, attribute_rows
 from bnx.findings import Findings, drawn_pairs, findings
+from bnx.level_charts import FEW_RECORDS
+from bnx.level_evidence import BEYOND_CHANCE
 from bnx.method_words import GLOSSARY, SOURCES, VERDICTS_READ
 from bnx.metric_charts import MetricChart, metric_charts
 from bnx.pair_figures import pairs_block
@@ -84,6 +86,8 @@ class Report:
     pairs_judged: str
     triangle: Triangle | None
     attributes: tuple[Attribute, ...]
+    few_records: int
+    beyond_chance: str
     records: RecordSection
     left_out: tuple[tuple[str, str], ...]
     left_out_total: int
@@ -166,6 +170,8 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         pairs_judged=f"{document['pairs_judged']:,}",
         triangle=triangular,
         attributes=attribute_rows(document, ATTRIBUTES_ON_PAGE),
+        few_records=FEW_RECORDS,
+        beyond_chance=f"{BEYOND_CHANCE:g}",
         records=record_section(document),
         left_out=tuple((one["name"], one["reason"]) for one in document["left_out"][:LINES_ON_PAGE]),
         left_out_total=len(document["left_out"]),

@@ -82,7 +82,7 @@ def test_levels_hold_records_shares_and_bars(level: dict[str, Any]) -> None:
         (name, f"{100 * usual[name]:.1f} %") for name in level["class_levels"]
     ]
     assert {row.name for row in found["kind"].levels if row.soft} == {"rare"}
-    assert {row.kind for row in found["town"].levels} == {"level", "pooled"}
+    assert all(row.is_level for row in found["town"].levels)
 
 
 def test_cautions_tell_of_blanks_and_of_levels_of_one_class(level: dict[str, Any]) -> None:
@@ -102,7 +102,7 @@ def test_blanks_that_are_no_level_stand_below_the_levels() -> None:
     one = document("sum-out")
     row = shown(one)["weight"]
     last = row.levels[-1]
-    assert (last.name, last.kind) == ("not observed", "unknown")
+    assert (last.name, last.is_level) == ("not observed", False)
     assert last.rows == f"{frame()['weight'].isna().sum():,}"
     assert last.speaks is not None
     assert last.speaks[0] == "late"
@@ -141,7 +141,7 @@ def test_what_is_not_counted_or_has_no_room_is_said(level: dict[str, Any], monke
     found = shown(one)
     assert found["town"].missing == "There are too many levels and classes to count them all."
     assert (found["town"].levels, found["town"].notes) == ((), ())
-    monkeypatch.setattr(rows_of, "CELLS_ON_PAGE", 9)
+    monkeypatch.setattr(rows_of, "_CELLS_ON_PAGE", 9)
     found = shown(one)
     assert [name for name, row in found.items() if row.levels] == ["route"]
     assert found["weight"].missing == "There is no room for its levels on this page; comparison.json counts them."

@@ -133,7 +133,7 @@ def test_the_largest_of_many_classes_are_drawn_in_their_order() -> None:
     chart = drawn([0.0, 1.0, 2.0, 3.0], rows, classes=classes)
     assert len(chart.panels) == MOST_PANELS
     assert chart.classes_left_out == 8
-    names = [panel.name for panel in chart.panels]
+    names = [panel.shown for panel in chart.panels]
     assert names == sorted(names, key=classes.index)
     smallest = min(rows[0][classes.index(name)] for name in names)
     assert sum(one > smallest for one in rows[0]) < MOST_PANELS
