@@ -3,7 +3,7 @@
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import PurePath
-from typing import Any
+from typing import Any, ClassVar
 
 from bnx.attribute_rows import Attribute, attribute_rows
 from bnx.findings import Findings, drawn_pairs, findings
@@ -86,8 +86,6 @@ class Report:
     pairs_judged: str
     triangle: Triangle | None
     attributes: tuple[Attribute, ...]
-    few_records: int
-    beyond_chance: str
     records: RecordSection
     left_out: tuple[tuple[str, str], ...]
     left_out_total: int
@@ -100,9 +98,11 @@ class Report:
     alpha: str
     adjust: str
     negligible: str
-    sources: tuple[tuple[str, str], ...]
-    verdicts_read: tuple[tuple[str, str], ...]
-    glossary: tuple[tuple[str, str], ...]
+    few_records: ClassVar[int] = FEW_RECORDS
+    beyond_chance: ClassVar[str] = f"{BEYOND_CHANCE:g}"
+    sources: ClassVar[tuple[tuple[str, str], ...]] = SOURCES
+    verdicts_read: ClassVar[tuple[tuple[str, str], ...]] = VERDICTS_READ
+    glossary: ClassVar[tuple[tuple[str, str], ...]] = GLOSSARY
 
     @property
     def by_blanks(self) -> bool:
@@ -170,8 +170,6 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         pairs_judged=f"{document['pairs_judged']:,}",
         triangle=triangular,
         attributes=attribute_rows(document, ATTRIBUTES_ON_PAGE),
-        few_records=FEW_RECORDS,
-        beyond_chance=f"{BEYOND_CHANCE:g}",
         records=record_section(document),
         left_out=tuple((one["name"], one["reason"]) for one in document["left_out"][:LINES_ON_PAGE]),
         left_out_total=len(document["left_out"]),
@@ -184,9 +182,6 @@ def summarise(document: Mapping[str, Any], pictures: Mapping[str, str]) -> tuple
         alpha=f"{settings['alpha']:g}",
         adjust=_ADJUSTMENTS[settings["adjust"]],
         negligible=f"{settings['negligible']:g}",
-        sources=SOURCES,
-        verdicts_read=VERDICTS_READ,
-        glossary=GLOSSARY,
     )
     return report, tuple(styles)
 
