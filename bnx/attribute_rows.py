@@ -210,8 +210,8 @@ def _cautions(one: Entry, counted: Entry, classes: Sequence[str]) -> Iterator[Wo
         says = blanks["speaks_for"]["class"]
         inside, outside = _blank_shares(counted, classes.index(says))
         yield (
-            *(("Blanks speak about the class: of ", False), (says, True)),
-            (f", {percent(inside)} are blank, of the others {percent(outside)}.", False),
+            *(("Blanks are more frequent in ", False), (says, True)),
+            (f": {percent(inside)} of its records are blank, of all others {percent(outside)}.", False),
         )
     alone = [
         (level, says["class"])

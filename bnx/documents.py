@@ -144,7 +144,7 @@ def edge_entry(names: Sequence[str], edge: EdgeEvidence) -> dict[str, Any]:
         "bits": edge.bits,
         "gain": edge.gain,
         "gain_se": edge.gain_se,
-        "gain_interval": list(edge.gain_interval),
+        "gain_interval": list(edge.gain_interval) if edge.gain_interval else None,
         "gain_by_fold": list(edge.gain_by_fold),
         "chosen_in": edge.chosen_in,
         "stability": edge.stability,

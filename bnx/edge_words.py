@@ -37,21 +37,19 @@ CHIP_SENTENCES = MappingProxyType(
 """Clauses on an attribute, by what they tell."""
 
 _UNSEEN = "on records it did not learn from"
-_ITS_GAIN = "(95 % interval of its held-out gain {interval})"
+_ITS_GAIN = "(95 % interval of the held-out gain of this edge alone: {interval})"
 _OPEN = "Whether it helps cannot be told"
 WHAT_IF = MappingProxyType(
     {
-        "lose": f"Without it {{structure}} would lose {{amount}} bits per record {_UNSEEN}, more than chance"
-        f" explains {_ITS_GAIN}.",
-        "gain": f"Without it {{structure}} would even gain {{amount}} bits per record {_UNSEEN}, more than"
-        f" chance explains {_ITS_GAIN}.",
+        "lose": f"Without it {{structure}} would lose {{amount}} bits per record {_UNSEEN} {_ITS_GAIN}.",
+        "gain": f"Without it {{structure}} would even gain {{amount}} bits per record {_UNSEEN} {_ITS_GAIN}.",
         "may lose": f"{_OPEN}: without it {{structure}} would lose {{amount}} bits per record {_UNSEEN}, but that"
         f" can be chance {_ITS_GAIN}.",
         "may gain": f"{_OPEN}: without it {{structure}} would gain {{amount}} bits per record {_UNSEEN}, but that"
         f" can be chance {_ITS_GAIN}.",
-        "same": f"It makes no difference that could be told: without it {{structure}} would be as good {_UNSEEN}"
-        f" {_ITS_GAIN}.",
+        "same": f"No difference was found {_UNSEEN}; the interval says what is not ruled out {_ITS_GAIN}.",
         "rare": f"{_OPEN}: only {{chosen}} folds learnt it.",
+        "never": f"{_OPEN}: no fold learnt it, so its held-out gain was never measured.",
     }
 )
 """What would change if one edge were left out, by what its held-out gain says."""
@@ -61,23 +59,25 @@ PAIR_SENTENCES = MappingProxyType(
     {
         "dependent": "Dependent: given {class} the two share {corrected} bits in an average record, less what chance"
         " alone would show, and the test rejects independence (adjusted p {p}).",
-        "detected, but negligible": "Dependent, but so little that it is negligible: even the upper end of what they"
-        " may share given {class}, {upper} bits, lies below {negligible} bits.",
-        "negligible": "Independent enough: the test found no dependence given {class}, and even the upper end of what"
-        " they may share, {upper} bits, lies below {negligible} bits.",
-        "blunt": "Not tested well enough: no dependence was found given {class}, but with 80 % power this sample would"
-        f" only have found one of at least {{detectable}} bits. {_NOT_INDEPENDENT}",
-        "missed": "Not settled: no dependence was found given {class}, and with 80 % power this sample would have found"
-        f" one of {{detectable}} bits; but that it is {{negligible}} bits or more is not ruled out. {_NOT_INDEPENDENT}",
-        "thin": "Not tested well enough: the records are spread too thinly over the cells of this pair to say how much"
-        f" the two may share given {{class}}. {_NOT_INDEPENDENT}",
-        "untested": "Not tested: these records allow no test that could reject independence given {class}."
+        "detected, but negligible": "Dependent, but so little that it is negligible: given {class} they share at most"
+        " {upper} bits (95 % bound, less what chance alone would show), below {negligible}.",
+        "negligible": "Negligible: the test found no dependence given {class}, and they share at most {upper} bits (95"
+        " % bound, less what chance alone would show), below {negligible}. For practical purposes independent.",
+        "blunt": "Not tested well enough: no dependence was found given {class}, but one of less than {detectable} bits"
+        f" would be missed in more than 1 of 5 such samples. {_NOT_INDEPENDENT}",
+        "missed": "Not settled: no dependence was found given {class}, and one of {detectable} bits would be found in 4"
+        f" of 5 such samples; but that it is {{negligible}} bits or more is not ruled out. {_NOT_INDEPENDENT}",
+        "thin": "Not settled: the test found no dependence given {class} (adjusted p {p}), but the records are spread"
+        f" too thinly over the cells for any bound on what the two may share. {_NOT_INDEPENDENT}",
+        "untested": "Not tested: with so few records no outcome could have rejected independence given {class}."
         f" {_NOT_INDEPENDENT}",
-        "bounded": "They may share up to {upper} bits.",
-        "twice": "Because of this pair naive counts {twice} bits of evidence about {class} twice in an average record.",
-        "too little": "Because of this pair naive counts {less} bits of evidence about {class} too little in an average"
-        " record.",
-        "harmless": "What naive counts twice because of this pair is next to nothing: {twice} bits per record.",
+        "bounded": "They may share up to {upper} bits (95 % bound).",
+        "twice": "Taken alone, this pair makes the evidence of naive for the true {class} {twice} bits too strong in an"
+        " average record: so much is counted twice.",
+        "too little": "Taken alone, this pair makes the evidence of naive for the true {class} {less} bits too weak in"
+        " an average record.",
+        "harmless": "What naive counts twice because of this pair is next to nothing on average ({twice} bits); in"
+        " single records it can be more, either way.",
     }
 )
 """What a pair's verdict means, where *not enough data* has four reasons, and what naive makes of the pair."""
@@ -89,7 +89,7 @@ def what_if(edge: Mapping[str, Any], tries: int, amount: str) -> str:
     tries: folds x repeats; amount: the size of its gain as printed, which may be all noughts.
     """
     if 2 * edge["chosen_in"] < tries:
-        return "rare"
+        return "rare" if edge["chosen_in"] else "never"
     if edge["verdict"] in ("gains", "loses"):
         return "lose" if edge["verdict"] == "gains" else "gain"
     if not amount.strip("0."):
@@ -114,7 +114,7 @@ def pair_sentences(pair: Mapping[str, Any], negligible: float) -> tuple[str, ...
 
 def _why_not_told(pair: Mapping[str, Any], negligible: float) -> str:
     """Say why the data do not suffice for a verdict: no test, no bounds, a blunt test, or chance."""
-    if pair["detectable_bits"] is None:
+    if pair["method"] == "none" or pair["detectable_bits"] is None:
         return "untested"
     if pair["bits_at_most"] is None:
         return "thin"

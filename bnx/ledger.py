@@ -23,12 +23,12 @@ class EdgeEvidence:
     """What speaks for one edge of the structure learnt from all rows.
 
     ``bits``: shared given the class; ``gain``: held-out bits per row, mean over folds, with its corrected standard
-    error and 95 % interval (Nadeau & Bengio 2003); ``gain_by_fold``: of every fold of every repeat, None where its own
-    structure does not join the two, in either direction; ``chosen_in``: how many do; ``stability``: share of random
-    halves that do, None if none were drawn; ``gate_p``: p of the test that let it in given the class and
-    ``gate_given``, None if the structure does not test or the edge was required; ``carried_by_blanks``: the pair is
-    dependent, but less than half its bits is left where neither cell is blank. A fold whose loss is infinite with and
-    without the edge counts as no gain.
+    error and 95 % interval (Nadeau & Bengio 2003), None where no fold drew it; ``gain_by_fold``: of every fold of every
+    repeat, None where its own structure does not join the two, in either direction; ``chosen_in``: how many do;
+    ``stability``: share of random halves that do, None if none were drawn; ``gate_p``: p of the test that let it in
+    given the class and ``gate_given``, None if the structure does not test or the edge was required;
+    ``carried_by_blanks``: the pair is dependent, but less than half its bits is left where neither cell is blank. A
+    fold whose loss is infinite with and without the edge counts as no gain.
     """
 
     parent: int
@@ -36,7 +36,7 @@ class EdgeEvidence:
     bits: float
     gain: float
     gain_se: float
-    gain_interval: tuple[float, float]
+    gain_interval: tuple[float, float] | None
     gain_by_fold: tuple[float | None, ...]
     chosen_in: int
     stability: float | None
@@ -93,7 +93,7 @@ def edge_ledger(
                     bits=strength[question.candidate, question.child],
                     gain=gain.mean,
                     gain_se=float(spread),
-                    gain_interval=(gain.low, gain.high),
+                    gain_interval=(gain.low, gain.high) if chosen else None,
                     gain_by_fold=tuple(found),
                     chosen_in=chosen,
                     stability=stable.get((s, ends), 0.0) if recipe.resamples else None,

@@ -80,6 +80,6 @@ def mix_reason(mix: JudgedMix, names: Sequence[str], recommended: str) -> str:
     if not mix.offered:
         return f"Not offered: it {told}"
     return (
-        f"Take it where only the probabilities count, {recommended} where one graph has to be explained or handed "
-        f"over. It {told}"
+        f"It may serve where only the probabilities count; take {recommended} where one graph has to be explained or "
+        f"handed over. It {told}"
     )

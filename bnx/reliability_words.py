@@ -46,7 +46,7 @@ def _temperature(name: str, temperature: float, dependent: int) -> str:
     told = f"{told} {temperature:.2f} of its face value"
     if not dependent:
         return f"{told}; with no dependent pair in sight, a small table may be why."
-    return f"{told}, so it {'double-counts' if name == 'naive' else 'still counts some of it more than once'} here."
+    return f"{told}, as happens where dependence is not modelled, or tables hold few records."
 
 
 def strayed(

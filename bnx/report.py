@@ -8,7 +8,7 @@ from typing import Any, ClassVar
 from bnx.attribute_rows import Attribute, attribute_rows
 from bnx.findings import Findings, drawn_pairs, findings
 from bnx.level_charts import FEW_RECORDS
-from bnx.level_evidence import BEYOND_CHANCE
+from bnx.level_evidence import BEYOND_CHANCE, LEAST_EXPECTED
 from bnx.method_words import GLOSSARY, SOURCES, VERDICTS_READ
 from bnx.metric_charts import MetricChart, metric_charts
 from bnx.pair_figures import pairs_block
@@ -99,6 +99,7 @@ class Report:
     adjust: str
     negligible: str
     few_records: ClassVar[int] = FEW_RECORDS
+    least_expected: ClassVar[int] = LEAST_EXPECTED
     beyond_chance: ClassVar[str] = f"{BEYOND_CHANCE:g}"
     sources: ClassVar[tuple[tuple[str, str], ...]] = SOURCES
     verdicts_read: ClassVar[tuple[tuple[str, str], ...]] = VERDICTS_READ

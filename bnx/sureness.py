@@ -9,6 +9,8 @@ from bnx.text import fixed
 
 __all__ = ["Sureness", "sureness"]
 
+_SCOPE = "Scores are those after this correction, bits of evidence those before it."
+
 
 @dataclass(frozen=True)
 class Sureness:
@@ -54,7 +56,7 @@ def _worth(document: Mapping[str, Any], name: str, kind: str, factor: str) -> st
         return f"{told} only {factor} of its face value; with no dependent pair in sight, a small table may be why."
     if name == "naive":
         return f"{told} only {factor} of its face value, as happens where dependent attributes each count as news."
-    return f"{told} only {factor} of its face value: some of it is still counted more than once, or the table is small."
+    return f"{told} only {factor} of its face value: dependence that it does not model, or tables of few records."
 
 
 def _answers(document: Mapping[str, Any], name: str, kind: str) -> str:
@@ -67,19 +69,19 @@ def _answers(document: Mapping[str, Any], name: str, kind: str) -> str:
         return "No group of its answers strayed from what it said by more than chance."
     worst, near = groups
     if not document["settings"]["temperature"]:
-        return f"What it calls {_right(worst)}."
-    told = f"Uncorrected, what it calls {_right(worst)}"
-    return f"{told}; corrected, what it calls {_right(near)}." if near else f"{told}; corrected, it is never that sure."
+        return f"Where its answers stray furthest it is {_right(worst)}."
+    told = f"Where its answers stray furthest it is, uncorrected, {_right(worst)}"
+    return f"{told}; corrected, {_right(near)}." if near else f"{told}; corrected, it is never that sure."
 
 
 def _right(one: Mapping[str, Any]) -> str:
-    return f"{sure(one['mean_probability'])} sure is right in {sure(one['share_right'])} of records"
+    return f"{sure(one['mean_probability'])} sure and right in {sure(one['share_right'])} of records"
 
 
 def _others(document: Mapping[str, Any], name: str) -> str:
     """Say what the evidence of the recommended structure is worth, where that is another one."""
     chosen = next(one for one in document["structures"] if one["name"] == document["recommended"]["name"])
     if chosen["name"] == name:
-        return "All other figures are those after this correction."
+        return _SCOPE
     worth = fixed(chosen["temperature"], 2)
-    return f"That of {chosen['name']} is worth {worth}. All other figures are those after this correction."
+    return f"That of {chosen['name']} is worth {worth}. {_SCOPE}"

@@ -90,8 +90,8 @@ def test_cautions_tell_of_blanks_and_of_levels_of_one_class(level: dict[str, Any
     blank = table["weight"].isna().groupby(table["end"]).mean()
     caution = found["weight"].cautions[0]
     assert said(caution) == (
-        f"Blanks speak about the class: of late, {100 * blank['late']:.1f} % are blank, "
-        f"of the others {100 * blank['in time']:.1f} %."
+        f"Blanks are more frequent in late: {100 * blank['late']:.1f} % of its records are blank, "
+        f"of all others {100 * blank['in time']:.1f} %."
     )
     assert [text for text, named in caution if named] == ["late"]
     assert [said(one) for one in found["route"].cautions] == ["Seen in one class only: ferry in late."]
@@ -107,7 +107,7 @@ def test_blanks_that_are_no_level_stand_below_the_levels() -> None:
     assert last.speaks is not None
     assert last.speaks[0] == "late"
     assert sum(int(level.rows.replace(",", "")) for level in row.levels) == len(frame())
-    assert said(row.cautions[0]).startswith("Blanks speak about the class: of late, ")
+    assert said(row.cautions[0]).startswith("Blanks are more frequent in late: ")
     assert "<em>not observed</em>" in report_html(one, {})
     assert shown(document("drop"))["weight"].notes == ()
 

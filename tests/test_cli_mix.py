@@ -47,7 +47,7 @@ def test_an_offered_mix_is_told_and_written() -> None:
     assert mix["offered"], "drawn so that it is"
     printed = (results() / "printed.txt").read_text(encoding="utf-8")
     assert f"mix: {mix['words']}" in printed
-    assert "Take it where only the probabilities count" in printed
+    assert "It may serve where only the probabilities count" in printed
     assert "mix.json" in printed
     document = read_json(str(results() / "out/mix.json"))
     assert [(one["name"], one["weight"]) for one in document["members"]] == [

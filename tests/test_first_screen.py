@@ -84,7 +84,10 @@ def test_what_strayed_is_told_with_the_figures_of_the_document(document: dict[st
         "after": {"bins": [group(0.68, 0.66, 100)]},
     }
     told = sureness(document).sentence
-    assert "Uncorrected, what it calls 70 % sure is right in 60 % of records; corrected, what it calls 68 %" in told
+    assert (
+        "furthest it is, uncorrected, 70 % sure and right in 60 % of records; corrected, 68 % sure and right in 66 %"
+        in told
+    )
     document["reliability"]["naive"]["after"]["bins"] = [group(0.5, 0.5, 100)]
     assert "60 % of records; corrected, it is never that sure." in sureness(document).sentence
     document["reliability"]["naive"]["before"]["bins"] = [group(0.6, 0.7, 100)]

@@ -47,6 +47,17 @@ def test_chance_speaks_for_no_class() -> None:
     assert sum(one is not None for one in spoken) <= 20
 
 
+def test_a_few_records_of_a_rare_class_make_no_level_speak() -> None:
+    """One record in a class of 8 % lies 3.4 standard errors out; from five expected records on the residual is heard."""
+    rows = np.array([[1, 0], [79, 920]])
+    assert evidence_of(rows, rows)[0] is None
+    rows = np.array([[15, 48], [65, 872]])
+    assert rows[0].sum() * 80 / 1000 > 5
+    found = evidence_of(rows, rows)[0]
+    assert found is not None
+    assert found.target == 0
+
+
 def test_rows_decide_and_masses_give_the_bits() -> None:
     rows = np.array([[30, 10], [20, 60]])
     masses = np.array([[60.0, 10.0], [10.0, 60.0]])

@@ -101,9 +101,10 @@ OFF, GOOD = curve((0.6, 0.6, 0.5, 0.7), (0.95, 0.88, 0.8, 0.94)), curve((0.94, 0
 def test_too_sure_is_said_with_its_reason(document: dict[str, Any]) -> None:
     document["pairs_verdicts"]["dependent"] = 3
     assert told(document, 0.654, OFF, GOOD) == (
-        "Naive Bayes: evidence counts 0.65 of its face value, so it double-counts here. Before calibration, its "
-        "answers that were 95 % sure were right in 88 % of records; after it, those that were 94 % sure were right in "
-        "94 %. Calibration error 0.125 before, 0.062 after; log loss 0.500 bits before, 0.500 bits after."
+        "Naive Bayes: evidence counts 0.65 of its face value, as happens where dependence is not modelled, or tables "
+        "hold few records. Before calibration, its answers that were 95 % sure were right in 88 % of records; after "
+        "it, those that were 94 % sure were right in 94 %. Calibration error 0.125 before, 0.062 after; log loss "
+        "0.500 bits before, 0.500 bits after."
     )
     document["pairs_verdicts"]["dependent"] = 0
     assert "with no dependent pair in sight, a small table may be why" in told(document, 0.654, OFF, GOOD)

@@ -81,11 +81,12 @@ def test_attributes_left_out_shift_the_numbers_of_a_drawing(document: dict[str, 
         ({"chosen_in": 5, "verdict": "undecided", "gain": -0.005}, "0.0050", "may gain"),
         ({"chosen_in": 10, "verdict": "undecided", "gain": 0.00001}, "0.0000", "same"),
         ({"chosen_in": 4, "verdict": "undecided", "gain": 0.5}, "0.5000", "rare"),
+        ({"chosen_in": 0, "verdict": "undecided", "gain": 0.0}, "0.0000", "never"),
     ],
 )
 def test_what_would_change_without_an_edge(edge: dict[str, Any], amount: str, kind: str) -> None:
     assert what_if(edge, 10, amount) == kind
-    sure = "than chance explains" in WHAT_IF[kind]
+    sure = not any(words in WHAT_IF[kind] for words in ("can be chance", "cannot be told", "No difference"))
     assert sure == (edge["verdict"] in {"gains", "loses"})
 
 
@@ -112,13 +113,16 @@ def test_what_a_verdict_means(
         "detectable_bits": detectable,
         "bits_at_most": upper,
         "double_counted_bits": twice,
+        "method": "exact",
     }
     assert pair_sentences(pair, 0.005) == told
+    if verdict == "not enough data":
+        assert pair_sentences(pair | {"method": "none"}, 0.005)[0] == "untested", "whatever others of its size tell"
 
 
 def test_only_a_negligible_pair_is_called_independent() -> None:
     for kind, words in PAIR_SENTENCES.items():
-        assert ("ndependent enough" in words) == (kind == "negligible")
+        assert ("practical purposes independent" in words) == (kind == "negligible")
     for kind in ("blunt", "missed", "thin", "untested"):
         assert "Do not take the two as independent" in PAIR_SENTENCES[kind]
 
