@@ -28,6 +28,7 @@ class EvidenceBar:
     level: str | None
     parents: tuple[str, ...]
     left_out: bool
+    turned: bool
     naive: str
     twice: str
     adds: str
@@ -89,6 +90,7 @@ class RecordSection:
     differ: tuple[str, ...]
     twice: tuple[Culprit, ...]
     adds: tuple[Culprit, ...]
+    turned: tuple[Culprit, ...]
     calibrated: bool
     width: float
     zero: float
@@ -110,6 +112,7 @@ def record_section(document: Mapping[str, Any]) -> RecordSection:
         differ=tuple(f"{one:,}" for one in counts),
         twice=_named(culprits(rows, "twice_bits"), len(rows)),
         adds=_named(culprits(rows, "adds_bits"), len(rows)),
+        turned=_named(culprits(rows, "adds_bits", turned=True), len(rows)),
         calibrated=calibrated,
         width=_WIDTH,
         zero=_WIDTH / 2,
@@ -131,15 +134,16 @@ def who_is_right(row: Mapping[str, Any], levels: Sequence[str]) -> str:
     return {(True, True): "both", (True, False): "naive", (False, True): "structure"}.get((naive, structure), "neither")
 
 
-def culprits(rows: Sequence[Mapping[str, Any]], key: str) -> list[tuple[str, float, int]]:
+def culprits(rows: Sequence[Mapping[str, Any]], key: str, turned: bool = False) -> list[tuple[str, float, int]]:
     """Sum up a kind of bits by attribute over the records told of, its sign apart: (name, bits, records it matters in).
 
-    Attributes without parents tell nothing here: only smoothing tells their evidence apart. The most first.
+    turned: of attributes whose evidence the parents turn round, or else of the others. Those without parents tell
+    nothing here: only smoothing tells their evidence apart. The most first.
     """
     sums: dict[str, tuple[float, int]] = {}
     for row in rows:
         for one in row["attributes"]:
-            bits = abs(one[key] or 0.0) if one["parents"] else 0.0
+            bits = abs(one[key] or 0.0) if one["parents"] and one["turned_round"] == turned else 0.0
             total, records = sums.get(one["name"], (0.0, 0))
             sums[one["name"]] = total + bits, records + (bits >= _MATTERS)
     return sorted(((name, bits, n) for name, (bits, n) in sums.items() if n), key=lambda one: (-one[1], one[0]))
@@ -225,6 +229,7 @@ def _bar(one: Mapping[str, Any], most: float) -> EvidenceBar:
         level=one["level"],
         parents=tuple(one["parents"]),
         left_out=one["left_out"],
+        turned=one["turned_round"],
         naive=_bits(naive),
         twice=_part(one["twice_bits"]),
         adds=_part(one["adds_bits"]),

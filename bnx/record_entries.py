@@ -69,6 +69,7 @@ def _attribute(names: Sequence[str], line: Line) -> dict[str, Any]:
         "structure_bits": line.structure,
         "twice_bits": line.twice,
         "adds_bits": line.adds,
+        "turned_round": line.is_turned,
     }
 
 

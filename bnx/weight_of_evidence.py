@@ -22,9 +22,9 @@ class Line:
     """One attribute of a record, bits for one class against another.
 
     ``level``: as the fold's training rows see it, None if it was not observed; ``left_out``: of the structure.
-    ``structure``: given the parents; ``twice``: what naive counts that the parents told already; ``adds``: what is
-    told beyond that, so that structure = naive - twice + adds. The three are None where a cell of the family was not
-    observed, and summed out together with others.
+    ``structure``: given the parents; ``twice``: what naive counts that the parents told already; ``adds``: what is told
+    beyond that, or the other way round, so that structure = naive - twice + adds. The three are None where a cell of
+    the family was not observed, and summed out together with others.
     """
 
     attribute: int
@@ -35,6 +35,11 @@ class Line:
     structure: float | None
     twice: float | None
     adds: float | None
+
+    @property
+    def is_turned(self) -> bool:
+        """Tell whether the attribute speaks for the other class as soon as its parents are given."""
+        return bool(self.parents and np.sign(self.naive) * np.sign(self.structure or 0.0) < 0)
 
 
 @dataclass(frozen=True)
@@ -134,10 +139,12 @@ def records_of_disagreement(
 def split(naive: float, structure: float) -> tuple[float, float]:
     """Split what the parents change of an attribute's evidence (bits) into ``twice`` and ``adds``.
 
-    What naive counts beyond the evidence that is left given the parents was told by them already, as far as that lies
-    on naive's side of zero; more on this side, or any on the other, is what the attribute adds.
+    Where less of it is left given the parents, the rest was told by them already. Where more is left, the attribute
+    adds that; where it then speaks for the other class, nothing was told twice: the parents turn it round.
     """
-    left = min(max(structure, min(naive, 0.0)), max(naive, 0.0))
+    if np.sign(naive) * np.sign(structure) < 0:
+        return 0.0, structure - naive
+    left = min(naive, structure, key=abs)
     return naive - left, structure - left
 
 

@@ -48,7 +48,7 @@ def test_chance_speaks_for_no_class() -> None:
 
 
 def test_a_few_records_of_a_rare_class_make_no_level_speak() -> None:
-    """One record in a class of 8 % lies 3.4 standard errors out; from five expected records on the residual is heard."""
+    """One record in a class of 8 % lies 3.4 standard errors out; five expected records are enough."""
     rows = np.array([[1, 0], [79, 920]])
     assert evidence_of(rows, rows)[0] is None
     rows = np.array([[15, 48], [65, 872]])

@@ -112,7 +112,8 @@ def test_too_sure_is_said_with_its_reason(document: dict[str, Any]) -> None:
     document["pairs_verdicts"]["dependent"] = 3
     document["structures"][1]["temperature"] = 0.8
     assert calibration_words(document, "tan").startswith(
-        "tan: evidence counts 0.80 of its face value, so it still counts some of it more than once here."
+        "tan: evidence counts 0.80 of its face value, as happens where dependence is not modelled, or tables hold "
+        "few records."
     )
 
 

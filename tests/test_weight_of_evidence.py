@@ -35,6 +35,8 @@ def test_what_the_parents_change_is_split_into_two(naive: float, structure: floa
         assert adds == 0.0
     if same and abs(structure) >= abs(naive):
         assert twice == 0.0
+    if naive * structure < 0:
+        assert (twice, adds) == (0.0, structure - naive)
 
 
 @pytest.mark.parametrize(
@@ -42,9 +44,11 @@ def test_what_the_parents_change_is_split_into_two(naive: float, structure: floa
     [
         (2.0, 0.5, 1.5, 0.0),
         (2.0, 3.0, 0.0, 1.0),
-        (2.0, -0.5, 2.0, -0.5),
+        (2.0, -0.5, 0.0, -2.5),
+        (2.0, 0.0, 2.0, 0.0),
+        (0.0, 2.0, 0.0, 2.0),
         (-2.0, -0.5, -1.5, 0.0),
-        (-1.0, 1.0, -1.0, 1.0),
+        (-1.0, 1.0, 0.0, 2.0),
     ],
 )
 def test_the_split_by_hand(naive: float, structure: float, twice: float, adds: float) -> None:

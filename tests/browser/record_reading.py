@@ -55,14 +55,18 @@ def right(row: Mapping[str, Any], levels: list[str]) -> str:
     return "naive" if naive else "structure" if structure else "neither"
 
 
-def told_of(document: Mapping[str, Any], kind: str) -> dict[str, tuple[float, int]]:
+KINDS = (("twice_bits", False), ("adds_bits", False), ("adds_bits", True))
+"""Of each kind of bits, whether the parents turn the attribute round, in the order of the page."""
+
+
+def told_of(document: Mapping[str, Any], kind: str, turned: bool) -> dict[str, tuple[float, int]]:
     """Give attribute -> (mean bits of a kind over the records shown, records with .05 or more), by its parents only."""
     rows = document["records"]["rows"]
     sums: Counter[str] = Counter()
     records: Counter[str] = Counter()
     for row in rows:
         for one in row["attributes"]:
-            if one["parents"]:
+            if one["parents"] and turned == (one["naive_bits"] * (one["structure_bits"] or 0.0) < 0):
                 sums[one["name"]] += abs(one[kind] or 0.0)
                 records[one["name"]] += abs(one[kind] or 0.0) >= MATTERS
     return {name: (bits / len(rows), records[name]) for name, bits in sums.items()}
@@ -72,10 +76,10 @@ def record_counts(document: Mapping[str, Any]) -> Iterator[int]:
     """Count what the page counts: records by who is right, records in which an attribute matters, records alike."""
     rows, levels = document["records"]["rows"], document["class_levels"]
     yield from Counter(right(row, levels) for row in rows).values()
-    yield from (records for kind in ("twice_bits", "adds_bits") for _, records in told_of(document, kind).values())
+    yield from (records for kind in KINDS for _, records in told_of(document, *kind).values())
     yield from (sum(row["alike"].values()) - 1 for row in rows)
 
 
 def record_means(document: Mapping[str, Any]) -> Iterator[float]:
     """Give the mean bits that the page gives of an attribute."""
-    yield from (bits for kind in ("twice_bits", "adds_bits") for bits, _ in told_of(document, kind).values())
+    yield from (bits for kind in KINDS for bits, _ in told_of(document, *kind).values())
