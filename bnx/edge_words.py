@@ -37,16 +37,16 @@ CHIP_SENTENCES = MappingProxyType(
 """Clauses on an attribute, by what they tell."""
 
 _UNSEEN = "on records it did not learn from"
-_ITS_GAIN = "(95 % interval of the held-out gain of this edge alone: {interval})"
+_ITS_GAIN = "(held-out gain of this edge alone {gain}, 95 % interval {interval})"
 _OPEN = "Whether it helps cannot be told"
 WHAT_IF = MappingProxyType(
     {
         "lose": f"Without it {{structure}} would lose {{amount}} bits per record {_UNSEEN} {_ITS_GAIN}.",
-        "gain": f"Without it {{structure}} would even gain {{amount}} bits per record {_UNSEEN} {_ITS_GAIN}.",
+        "gain": f"Without it {{structure}} would even be {{amount}} bits per record better {_UNSEEN} {_ITS_GAIN}.",
         "may lose": f"{_OPEN}: without it {{structure}} would lose {{amount}} bits per record {_UNSEEN}, but that"
         f" can be chance {_ITS_GAIN}.",
-        "may gain": f"{_OPEN}: without it {{structure}} would gain {{amount}} bits per record {_UNSEEN}, but that"
-        f" can be chance {_ITS_GAIN}.",
+        "may gain": f"{_OPEN}: without it {{structure}} would be {{amount}} bits per record better {_UNSEEN}, but"
+        f" that can be chance {_ITS_GAIN}.",
         "same": f"No difference was found {_UNSEEN}; the interval says what is not ruled out {_ITS_GAIN}.",
         "rare": f"{_OPEN}: only {{chosen}} folds learnt it.",
         "never": f"{_OPEN}: no fold learnt it, so its held-out gain was never measured.",

@@ -66,6 +66,8 @@ VERDICTS_READ = (
 """A verdict of the page and how to read it."""
 
 GLOSSARY = (
+    ("naive, tan, kdb2", "no edges; a tree of edges; up to so many parents besides the class; -tested: with a gate"),
+    ("out of fold", "by what was learnt from all other folds only"),
     ("bits", "the unit of information: one bit halves or doubles the odds"),
     ("log loss", "mean of −log2 of the probability given to what came true: 0 is perfect, 1 bit is a coin toss"),
     (
@@ -88,6 +90,13 @@ GLOSSARY = (
         "region of practical equivalence",
         "differences too small to matter: 0.01 bits of log loss, or 5 % of the best log loss if that is less",
     ),
+    ("balanced accuracy", "mean over the classes of the share of their records that are right"),
+    (
+        "smoothing",
+        "what is added to counts so that no probability is 0: laplace:1 a record to each level, backoff:16 sixteen "
+        "records spread as in the table with a parent less",
+    ),
+    ("free parameters", "probabilities in the tables that are free to choose"),
     ("Brier", "squared error of the probabilities, summed over the classes: 0 is perfect"),
     ("AUC", "chance that a record of a class gets a higher probability of it than a record of the rest"),
     ("calibration error", "mean distance between how sure the answers are and how often they are right"),

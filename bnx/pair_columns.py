@@ -49,7 +49,15 @@ PAIR_COLUMNS = (
         False,
     ),
     _figure("bits", "bits given the class", "What the two share within a class, as counted.", brief=True),
-    PairColumn("interval", "95 % interval", "Of those bits, less what chance alone would show.", True, True, (), False),
+    PairColumn(
+        "interval",
+        "95 % interval, less chance",
+        "Of those bits, less what chance alone would show.",
+        True,
+        True,
+        (),
+        False,
+    ),
     _figure("at_most", "at most, bits", "Bound from above (95 %); “negligible” goes by it."),
     _figure("marginal", "bits without the class", "What the two share when the class is not known, as counted."),
     _figure(

@@ -16,7 +16,7 @@ __all__ = ["FIGURES", "PAIRS_IN_PANEL", "pairs_block"]
 FIGURES = (
     ("bits", "bits given the class"),
     ("corrected", "less what chance shows"),
-    ("interval", "95 % interval"),
+    ("interval", "95 % interval, less chance"),
     ("upper", "at most, 95 %"),
     ("twice", "counted twice by naive, bits"),
     ("marginal", "bits without the class"),

@@ -80,7 +80,7 @@ def test_every_edge_is_told_as_in_its_structure(found: Opened, demo: Made) -> No
         for row in rows:
             edge = next(e for e in entry["edges"] if [e["parent"], e["child"]] == row["names"][:2])
             numbers = " ".join(row["cells"][2:7])
-            figures = [edge["bits"], edge["gain"], *edge["gain_interval"], edge["chosen_in"]]
+            figures = [edge["bits"], edge["gain"], *(edge["gain_interval"] or []), edge["chosen_in"]]
             assert told(numbers, *figures, tries, edge["stability"], edge["gate_p"]), (row, edge)
             assert row["names"][2:] == edge["gate_given"]
             assert edge["verdict"] in row["cells"][8]
@@ -99,7 +99,7 @@ def test_the_data_of_edges_are_those_of_their_structures(found: Opened, demo: Ma
             cell = dict(zip(block["columns"], row, strict=True))
             ends = [block["names"][cell[end]] for end in ("parent", "child")]
             edge = next(e for e in entry["edges"] if [e["parent"], e["child"]] == ends)
-            gained = [edge["gain"], *edge["gain_interval"]]
+            gained = [edge["gain"], *(edge["gain_interval"] or [])]
             assert told(f"{cell['bits']} {cell['gain']} {cell['interval']}", edge["bits"], *gained)
             assert told(cell["amount"], abs(edge["gain"]))
             assert told(cell["chosen"], edge["chosen_in"], tries)

@@ -49,7 +49,7 @@ def test_the_strongest_edge_tells_the_figures_of_the_comparison(found: Opened, d
         arrow.focus()
     strip = panel.locator(".told")
     text = strip.inner_text()
-    figures = [edge["bits"], edge["gain"], *edge["gain_interval"], edge["chosen_in"]]
+    figures = [edge["bits"], edge["gain"], *(edge["gain_interval"] or []), edge["chosen_in"]]
     assert [one.inner_text() for one in strip.locator("bdi").all()[:2]] == [edge["parent"], edge["child"]]
     assert told(text, *figures, tries, edge["stability"], edge["gate_p"])
     assert edge["verdict"] in text

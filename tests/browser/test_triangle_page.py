@@ -44,7 +44,7 @@ def test_the_triangle_starts_at_the_strongest_pair_and_tells_its_figures(found: 
     text = page.locator("#triangle-strip").inner_text()
     keys = ("bits", "bits_low", "bits_high", "marginal_bits", "double_counted_bits")
     assert pair["verdict"] == "dependent"
-    for printed in numbers_in(text.replace("95 % interval", "")):
+    for printed in numbers_in(text.replace("95 % interval less chance", "")):
         assert any(tells(printed, pair[key]) for key in keys), printed
     assert f"{pair['bits']:.4f}" in text
     assert pair["verdict"] in text

@@ -37,9 +37,12 @@ const pairWhatIf = (key) => {
   const heading = el("h3", {}, "What if this edge were left out");
   if (!joining.length) return [heading, el("p", {}, "No structure joins the two, so there is no edge to leave out.")];
   const first = toldFirst(joining);
+  const open = openStructure();
+  const elsewhere = open && open !== first
+    ? [el("p", { class: "quiet" }, `${open.name}, which is shown, does not join the two. Where another structure does:`)] : [];
   const rest = joining.filter((one) => one !== first).map((one) => whatIfItem(one, one.byPair.get(key)));
   const more = el("details", {}, el("summary", { class: "quiet" }, "In the other structures that join the two"), el("ul", {}, ...rest));
-  return [heading, el("p", { id: "pair-panel-what-if" }, ...asNodes(whatIfWords(first, first.byPair.get(key)))),
+  return [heading, ...elsewhere, el("p", { id: "pair-panel-what-if" }, ...asNodes(whatIfWords(first, first.byPair.get(key)))),
     ...(rest.length ? [more] : [])];
 };
 

@@ -13,7 +13,7 @@ const stripParts = (row) => {
   const counted = word("double_counted");
   const twice = counted === "–" ? "" : `Counted twice: ${counted} bits. `;
   const without = `${word("marginal")} without the class, which leaves it: ${word("outcome")}.`;
-  const interval = `${word("bits")} bits given the class, 95 % interval ${word("interval")}; ${without} `;
+  const interval = `${word("bits")} bits given the class, 95 % interval less chance ${word("interval")}; ${without} `;
   return [verdictEl(word("verdict")), `. ${interval}${twice}${joined}`];
 };
 
