@@ -65,6 +65,7 @@ class Findings:
     rival: Gain | None
     mistakes: Mistakes
     honest_log_loss: str
+    baseline_log_loss: str
     honest_right: str
     picked: str
     confidence: Sureness
@@ -110,7 +111,8 @@ def findings(document: Mapping[str, Any]) -> Findings:
         gain=_gain(chosen, baseline["log_loss"]),
         rival=_rival(document["structures"], baseline) if chosen is baseline else None,
         mistakes=_mistakes(chosen, baseline),
-        honest_log_loss="infinite" if advice["honest_log_loss"] is None else fixed(advice["honest_log_loss"]),
+        honest_log_loss=_loss(advice["honest_log_loss"]),
+        baseline_log_loss=_loss(baseline["log_loss"]),
         honest_right=percent(advice["honest_accuracy"]),
         picked=_picked(advice["picks"], chosen["name"]),
         confidence=sureness(document),
@@ -123,6 +125,10 @@ def findings(document: Mapping[str, Any]) -> Findings:
         rarest_rows=f"{records[rarest]:,.0f}",
         rarest_few=records[rarest] < _FEW,
     )
+
+
+def _loss(bits: float | None) -> str:
+    return "infinite" if bits is None else fixed(bits)
 
 
 def _picked(picks: Sequence[str], chosen: str) -> str:

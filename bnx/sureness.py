@@ -84,4 +84,4 @@ def _others(document: Mapping[str, Any], name: str) -> str:
     if chosen["name"] == name:
         return _SCOPE
     worth = fixed(chosen["temperature"], 2)
-    return f"That of {chosen['name']} is worth {worth}. {_SCOPE}"
+    return f"The evidence of {chosen['name']} is worth {worth}. {_SCOPE}"

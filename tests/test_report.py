@@ -171,10 +171,11 @@ def test_the_first_screen_says_what_and_why_and_how_much(document: dict[str, Any
     assert f"Model grade with {chosen['name']}" in text
     saved, whole = -chosen["against_baseline"]["difference"], naive["log_loss"]
     assert f"It saves {saved:.3f} bits of log loss per record against naive (95 % interval" in text
-    assert f"), {100 * saved / whole:.0f} % of that of naive: " in text
+    assert f"), {100 * saved / whole:.0f} % of the log loss of naive: " in text
     own, base = (round(1000 * (1 - one["accuracy"])) for one in (chosen, naive))
     assert f"In 1,000 records {chosen['name']} makes {own} mistakes, naive {base}: " in text
-    assert f"{document['recommended']['honest_log_loss']:.3f} bits of log loss (0 is perfect), " in text
+    honest = document["recommended"]["honest_log_loss"]
+    assert f"{honest:.3f} bits of log loss (0 is perfect; naive has {whole:.3f}), " in text
     assert f"The evidence of naive is worth only {naive['temperature']:.2f} of its face value" in text
     assert "dock ~ alarm" in text
 
