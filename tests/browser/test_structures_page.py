@@ -189,3 +189,30 @@ def test_two_structures_side_by_side_differ_in_the_edges_marked(found: Opened, d
     press(page, page.locator("#structures-reset"), way)
     assert drawings.count() == 1
     assert panel_of(page, one["name"]).locator(".casing").count() == 0
+
+
+def test_two_drawings_side_by_side_stand_on_one_scale(found: Opened) -> None:
+    page = found.page
+    scale = "(one) => one.getBoundingClientRect().width / Number(one.getAttribute('width'))"
+    choice = page.locator("#beside")
+    for name in ("heldout", "tan"):
+        choice.select_option(label=name)
+        scales = [one.evaluate(scale) for one in page.locator(".drawings.two svg").all()]
+        assert len(scales) == 2
+        assert scales[0] == pytest.approx(scales[1], rel=0.02)
+
+
+HIDDEN_NUMBERS = """[...document.querySelectorAll('.drawings.two .arrow:has(circle.casing)')].filter((arrow) => {
+  const [sign, number] = ['circle.casing', 'text:not(.casing)'].map((part) => arrow.querySelector(part));
+  const [disc, box] = [sign.getBoundingClientRect(), number.getBoundingClientRect()];
+  const [x, y] = [disc.x + disc.width / 2, disc.y + disc.height / 2];
+  return x > box.left && x < box.right && y > box.top && y < box.bottom;
+}).length"""
+
+
+def test_signs_on_arrows_leave_their_numbers_free(found: Opened) -> None:
+    page = found.page
+    page.locator("#beside").select_option(label="heldout")
+    hidden = page.evaluate(HIDDEN_NUMBERS)
+    assert page.locator(".drawings.two circle.casing").count() > 8
+    assert hidden == 0

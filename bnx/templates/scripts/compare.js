@@ -14,13 +14,23 @@ const pairDifferences = (one, other) => {
   };
 };
 
+// Where on an arrow a sign is clear of the number beside it.
+const clearOf = (path, number) => {
+  const length = path.getTotalLength();
+  const places = [0.4, 0.3, 0.6, 0.7].map((share) => path.getPointAtLength(length * share));
+  if (!number) return places[0];
+  const box = number.getBBox();
+  const away = ({ x, y }) => Math.hypot(Math.max(box.x - x, x - box.x - box.width, 0), Math.max(box.y - y, y - box.y - box.height, 0));
+  return places.reduce((best, one) => (away(best) < 9 && away(one) > away(best) ? one : best));
+};
+
 // A sign on a disc, on the arrow; the casing makes the arrow a double line.
 const markArrow = (group, kind) => {
   const path = group.querySelector("path:not(.bnx-reach)");
   const width = Number(path.getAttribute("stroke-width") || 1);
   const casing = (extra, token) => svgEl("path", { d: path.getAttribute("d"), fill: "none", "stroke-width": width + extra,
     class: `casing bnx-stroke-${token}` });
-  const at = path.getPointAtLength(path.getTotalLength() * 0.4);
+  const at = clearOf(path, group.querySelector("text"));
   if (kind === "only") group.prepend(casing(5.6, "text"), casing(3.8, "frame"));
   group.append(svgEl("circle", { cx: at.x, cy: at.y, r: 6.5, class: "casing bnx-fill-text" }),
     svgEl("text", { x: at.x, y: at.y + 3.6, "text-anchor": "middle", "font-size": 11, "font-weight": 700,

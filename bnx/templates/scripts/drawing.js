@@ -88,6 +88,7 @@ const viewOf = (structure, prefix, svg, told, rows) => {
     if (group) addChip(view, place, group);
   });
   svg.style.setProperty("--natural", `${svg.getAttribute("width")}px`);
+  svg.closest(".box").style.setProperty("--share", svg.getAttribute("width"));
   return view;
 };
 
