@@ -243,6 +243,13 @@ def test_one_structure_and_no_drawing_engine(plain: SmallRun) -> None:
     assert "There is nothing to compare with naive." in text
 
 
+@pytest.mark.parametrize(("rows", "words"), [(1, "only 1 record, too few"), (2, "only 2 records, too few")])
+def test_a_class_of_few_records_is_warned_of(document: dict[str, Any], rows: int, words: str) -> None:
+    for one in document["structures"]:
+        one["confusion"][0] = [rows, *([0] * (len(document["class_levels"]) - 1))]
+    assert words in Page(report_html(document, {})).text
+
+
 def test_settings_warnings_versions_and_cautions_stand_on_the_page(document: dict[str, Any]) -> None:
     document["warnings"] = ["the first <warning>", "the second"]
     document["left_out"] = [{"name": "id <b>", "reason": "a different value in every row"}]
